@@ -1,0 +1,270 @@
+"""What ADES allows in each column: record kinds, lexical form, range and unit; imports only the
+standard library.
+
+Source: A Concise Description of ADES, version 2022 (IAU-ADES repository, 2 May 2024), tables 3 to
+17, and the element types of its schema. Order of the columns is the order that the standard
+prescribes for XML.
+"""
+
+import re
+from dataclasses import dataclass
+
+OPTICAL, OFFSET, OCCULTATION, RADAR = "optical", "offset", "occultation", "radar"
+OPTICAL_RESIDUAL, RADAR_RESIDUAL = "opticalResidual", "radarResidual"
+RECORD_KINDS = (OPTICAL, OFFSET, OCCULTATION, RADAR, OPTICAL_RESIDUAL, RADAR_RESIDUAL)
+VERSIONS = ("2017", "2022")
+_LETTER = dict(zip("OFCRor", RECORD_KINDS, strict=True))
+
+REQUIRED = {
+    OPTICAL: ("mode", "stn", "obsTime", "ra", "dec", "astCat"),
+    OFFSET: ("mode", "stn", "obsTime", "obsCenter"),
+    OCCULTATION: ("mode", "stn", "obsTime", "raStar", "decStar", "astCat"),
+    RADAR: ("trx", "rcv", "obsTime", "frq"),
+    OPTICAL_RESIDUAL: ("obsTime",),
+    RADAR_RESIDUAL: ("obsTime",),
+}
+"""Columns that every record of a kind must fill (an identification comes on top)."""
+
+
+@dataclass(frozen=True)
+class ColumnRule:
+    """One ADES column.
+
+    ``form`` is "text", "time", "decimal", "double" or "integer"; ``pattern`` holds for text;
+    ``low``/``high`` bound numbers and are themselves excluded where ``open_low``/``open_high``;
+    ``width`` is the longest form without a sign (2022).
+    """
+
+    name: str
+    kinds: frozenset[str]
+    form: str
+    unit: str = ""
+    pattern: str = ""
+    width: int = 0
+    low: float = -float("inf")
+    high: float = float("inf")
+    open_low: bool = False
+    open_high: bool = False
+    signed: bool = True
+    places: int = 99
+
+    @property
+    def words(self) -> str:
+        """The rule as the end of a sentence."""
+        if self.form == "text":
+            return _TEXT_WORDS.get(self.name, f"it must match {self.pattern}")
+        what = {"integer": "a whole number", "double": "a number"}.get(
+            self.form, "a decimal number"
+        )
+        unit = f" in {self.unit}" if self.unit else ""
+        span = ""
+        if self.low > -float("inf") or self.high < float("inf"):
+            left = "(" if self.open_low else "["
+            right = ")" if self.open_high else "]"
+            high = "no upper limit" if self.high == float("inf") else f"{self.high:g}"
+            span = f" in the range {left}{self.low:g}, {high}{right}"
+        return f"it must be {what}{unit}{span}"
+
+
+_PLANETS = "Mercury|Venus|Earth|Moon|Mars|Jupiter|Saturn|Uranus|Neptune"
+_PERM = r"\d+([IPD](-[A-Z]{1,2})?)?|(Mars|Jupiter|Saturn|Uranus|Neptune) \d{1,3}|\(\d+\) \d{1,3}"
+_PROV = (
+    r"\d{4} [A-HJ-Y][A-HJ-Z]\d*|\d{4} (P-L|T-1|T-2|T-3)|A[89]\d{2} [A-HJ-Y][A-HJ-Z]?\d*"
+    r"|[ADCPX]/\d{4} [A-HJ-Y][A-HJ-Z]?\d*(-[A-Z])?|S/\d{4} ([A-Z]|\(\d+\)) \d+"
+)
+_TEXT_WORDS = {
+    "permID": "it must be an unpacked designation such as 433, 73P, 73P-C, 1I or Jupiter 13",
+    "provID": "it must be an unpacked designation such as 2014 AA360, C/1999 K7 or 2040 P-L",
+    "trkSub": "it must have 1 to 8 letters, digits, _ or -",
+    "stn": "it must be an observatory code of 3 or 4 letters or digits",
+    "trx": "it must be an observatory code of 3 or 4 letters or digits",
+    "rcv": "it must be an observatory code of 3 or 4 letters or digits",
+    "mode": "it must be a code of at most 3 letters such as CCD, CMO, PHO, VID, OCC or UNK",
+    "astCat": "it must be a catalogue name of at most 8 characters such as Gaia2, UCAC4 or UNK",
+    "sys": "it must be WGS84, ITRF, IAU, ICRF_AU or ICRF_KM",
+    "disc": "it must be * or +",
+    "deprecated": "it must be X",
+    "band": "it must be a band of at most 3 letters or digits",
+}
+
+# name | kinds (O optical F offset C occultation R radar o, r their residuals) | form | more
+_TABLE = rf"""
+permID OFCRor text pattern={_PERM}
+provID OFCRor text pattern={_PROV}
+artSat OFCRor text pattern=.{{1,25}}
+trkSub OFCRor text pattern=[A-Za-z0-9_\-?+@./()\\ ]{{1,8}}
+obsID OFCRor text pattern=[A-Za-z0-9_]{{1,25}}
+obsSubID OFCo text pattern=.{{1,35}}
+trkID OFCo text pattern=[-A-Za-z0-9_]{{1,12}}
+trkMPC OFCo text pattern=[-A-Za-z0-9_]{{1,12}}
+mode OFC text pattern=[A-Za-z0-9_]{{1,3}}
+stn OFC text pattern=[A-Za-z0-9_]{{3,4}}
+trx R text pattern=[A-Za-z0-9_]{{3,4}}
+rcv R text pattern=[A-Za-z0-9_]{{3,4}}
+sys OFC text pattern=WGS84|ITRF|IAU|ICRF_AU|ICRF_KM
+ctr OFC integer low=-999999999 high=999999999
+pos1 OFC decimal width=13
+pos2 OFC decimal width=13
+pos3 OFC decimal width=13
+vel1 OFC decimal width=13
+vel2 OFC decimal width=13
+vel3 OFC decimal width=13
+posCov11 OFC double
+posCov12 OFC double
+posCov13 OFC double
+posCov22 OFC double
+posCov23 OFC double
+posCov33 OFC double
+prog OFCR text pattern=[A-Za-z0-9_]{{1,2}}
+obsTime OFCRor time
+rmsTime OFC positive unit=s width=8
+ra O decimal unit=deg low=0 high=360 open_high signed=no places=9
+dec O decimal unit=deg low=-90 high=90 places=9
+raStar C decimal unit=deg low=0 high=360 open_high signed=no places=9
+decStar C decimal unit=deg low=-90 high=90 places=9
+obsCenter F text pattern={_PLANETS}|{_PERM}|{_PROV}
+deltaRA FC decimal unit=arcsec width=9
+deltaDec FC decimal unit=arcsec width=9
+dist FC positive unit=arcsec width=10
+pa FC decimal unit=deg low=0 high=360 open_high signed=no places=9
+rmsRA OFC positive unit=arcsec width=7
+rmsDec OFC positive unit=arcsec width=7
+rmsDist FC positive unit=arcsec width=6
+rmsPA FC positive unit=deg width=6
+rmsCorr OFC decimal low=-1 high=1 places=11
+delay R positive unit=s width=14
+rmsDelay R positive unit=microseconds width=6
+doppler R decimal unit=Hz width=13
+rmsDoppler R positive unit=Hz width=6
+astCat OC text pattern=[.A-Za-z0-9_]{{1,8}}
+mag OFC decimal unit=mag low=-5 high=35 width=7
+rmsMag OFC positive unit=mag width=6
+band OFC text pattern=[A-Za-z0-9_]{{1,3}}
+fltr OFC text pattern=[A-Za-z0-9_]{{1,3}}
+photCat OFC text pattern=[.A-Za-z0-9_]{{1,8}}
+photAp OFC positive unit=arcsec width=6
+nucMag OFC integer low=0 high=1
+logSNR OFCR decimal width=5
+shapeOcc C integer low=0 high=1
+seeing OFC positive unit=arcsec width=6
+exp OF positive unit=s width=6
+rmsFit OF positive unit=arcsec width=6
+nStars OF integer low=1 high=999999
+com R integer low=0 high=1
+frq R positive unit=MHz width=16 high=inf
+ref OFCR text pattern=.{{1,28}}
+disc OFC text pattern=[*+]
+subFrm OFC text pattern=[BJ]\d{{4}}.0|APP\.
+subFmt OFC text pattern=[A-Za-z0-9_]{{1,4}}
+precTime OFC decimal low=1 high=100000
+precRA OFC decimal unit=seconds_of_time low=0.001 high=60
+precDec OFC decimal unit=arcsec low=0.001 high=60
+uncTime OFC positive unit=s width=8
+notes OFC text pattern=[A-Za-z0-9_]{{1,6}}
+remarks OFCR text pattern=.{{1,300}}
+deprecated OFC text pattern=X
+orbProd OFCRor text pattern=.{{1,100}}
+orbID OFCRor text pattern=.{{1,25}}
+resRA OFCo double unit=arcsec
+resDec OFCo double unit=arcsec
+selAst OFCo text pattern=[AaDd]
+sigRA OFCo positive unit=arcsec width=7
+sigDec OFCo positive unit=arcsec width=7
+sigCorr OFCo decimal low=-1 high=1 places=11
+sigTime OFCo positive unit=s width=8
+biasRA OFCo decimal unit=arcsec width=7
+biasDec OFCo decimal unit=arcsec width=7
+biasTime OFCo decimal unit=s width=9
+photProd OFCo text pattern=.{{1,100}}
+resMag OFCo double unit=mag
+selPhot OFCo text pattern=[AaDd]
+sigMag OFCo positive unit=mag width=6
+biasMag OFCo decimal unit=mag width=5
+photMod OFCo text pattern=[A-Za-z0-9_]{{1,8}}
+resDelay Rr double unit=microseconds
+selDelay Rr text pattern=[AaDd]
+sigDelay Rr positive unit=microseconds width=6
+resDoppler Rr double unit=Hz
+selDoppler Rr text pattern=[AaDd]
+sigDoppler Rr positive unit=Hz width=6
+"""
+
+
+def _parse(line: str) -> ColumnRule:
+    name, letters, form, *rest = line.split(" ", 3)
+    more = rest[0] if rest else ""
+    kinds = frozenset(_LETTER[c] for c in letters)
+    if more.startswith("pattern="):
+        return ColumnRule(name, kinds, form, pattern=more.removeprefix("pattern="))
+    options = {}
+    for item in more.split():
+        key, _, value = item.partition("=")
+        options[key] = value or "yes"
+    positive = form == "positive"
+    return ColumnRule(
+        name=name,
+        kinds=kinds,
+        form="decimal" if positive else form,
+        unit=options.get("unit", "").replace("_", " "),
+        width=int(options.get("width", 0)),
+        low=float(options.get("low", 0.0 if positive else "-inf")),
+        high=float(options.get("high", 1e5 if positive else "inf")),
+        open_low=positive,
+        open_high=positive or "open_high" in options,
+        signed=not positive and options.get("signed") != "no",
+        places=int(options.get("places", 99)),
+    )
+
+
+COLUMNS: dict[str, ColumnRule] = {
+    rule.name: rule for rule in (_parse(line) for line in _TABLE.strip().splitlines())
+}
+"""All ADES columns but localUse, in the order of the standard."""
+
+TEXT_COLUMNS = tuple(c for c, rule in COLUMNS.items() if rule.form in ("text", "time"))
+NUMBER_COLUMNS = tuple(c for c, rule in COLUMNS.items() if rule.form not in ("text", "time"))
+
+PREC_TIME = (1.0, 10.0, 69.0, 100.0, 694.0, 1000.0, 4167.0, 10000.0, 41667.0, 100000.0)
+PREC_ANGLE = (0.001, 0.01, 0.1, 0.6, 1.0, 6.0, 60.0)
+"""Values that precTime (1e-6 d) and precRA (s of time), precDec (arcsec) may take."""
+
+CONTEXT_ELEMENTS: dict[str, tuple[str, ...]] = {
+    "observatory": ("mpcCode", "name"),
+    "submitter": ("name", "institution"),
+    "observers": ("name",),
+    "measurers": ("name",),
+    "telescope": (
+        "name",
+        "design",
+        "aperture",
+        "detector",
+        "fRatio",
+        "filter",
+        "arraySize",
+        "pixelScale",
+    ),
+    "software": ("astrometry", "fitOrder", "photometry", "objectDetection"),
+    "coinvestigators": ("name",),
+    "collaborators": ("name",),
+    "fundingSource": (),
+    "comment": ("line",),
+}
+"""Elements of obsContext and the children that each may have."""
+
+
+def kind_of_columns(names: set[str]) -> str | None:
+    """The record kind whose required columns are all among ``names`` (None when there is no such
+    kind)."""
+    for kind in (OPTICAL, OCCULTATION, OFFSET, RADAR):
+        if set(REQUIRED[kind]) <= names:
+            return kind
+    if "obsTime" in names:
+        for kind in (OPTICAL_RESIDUAL, RADAR_RESIDUAL):
+            if all(kind in COLUMNS[c].kinds for c in names if c in COLUMNS):
+                return kind
+    return None
+
+
+def matches(rule: ColumnRule, text: str) -> bool:
+    """Whether a text fulfils the pattern of a text column."""
+    return re.fullmatch(rule.pattern, text) is not None

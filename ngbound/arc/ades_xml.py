@@ -1,0 +1,257 @@
+"""ADES in XML: read and write; imports lxml, errors and this room.
+
+The parser resolves no entity, loads no document type and opens no network connection; a document
+that declares a document type is refused.
+"""
+
+import warnings
+
+import numpy as np
+from lxml import etree
+
+from ngbound.arc.ades_psv import grouped_cells
+from ngbound.arc.ades_rules import COLUMNS, CONTEXT_ELEMENTS, RECORD_KINDS, VERSIONS
+from ngbound.arc.observations import Arc, Context, ObjectArray, Records
+from ngbound.arc.whole_file import PathLike, write_whole
+from ngbound.errors import ArcError, NgboundWarning
+
+
+def xml_records(content: bytes, source: str) -> Records:
+    """Records of an ADES XML document; ArcError names line and element."""
+    parser = etree.XMLParser(
+        resolve_entities=False,
+        no_network=True,
+        huge_tree=False,
+        load_dtd=False,
+        dtd_validation=False,
+        remove_comments=True,
+        remove_pis=True,
+    )
+    try:
+        root = etree.fromstring(content, parser)
+    except (etree.XMLSyntaxError, ValueError, LookupError) as error:
+        line = getattr(error, "lineno", None) or 1
+        raise ArcError(
+            f"{source}, line {line}: the XML text is broken ({str(error).splitlines()[0]}). Mend "
+            "it or get the file again.",
+            file=source,
+            line=line,
+        ) from error
+    if root.getroottree().docinfo.doctype:
+        raise ArcError(
+            f"{source}: the XML document declares a document type, which ADES does not have and "
+            "ngbound does not read. "
+            "Remove the DOCTYPE.",
+            file=source,
+        )
+    if root.tag != "ades":
+        raise ArcError(
+            f"{source}, line {root.sourceline}: the root element is {root.tag!r}; an ADES document "
+            "has 'ades' (no namespace). "
+            "Give an ADES file.",
+            file=source,
+            line=root.sourceline,
+        )
+    version = root.get("version", "")
+    if version not in VERSIONS:
+        raise ArcError(
+            f"{source}, line {root.sourceline}: the attribute version of ades is {version!r}; it "
+            "must be "
+            f"{' or '.join(VERSIONS)}. Correct it.",
+            file=source,
+            line=root.sourceline,
+            value=version,
+        )
+    return _walk(root, source, version)
+
+
+def _walk(root: etree._Element, source: str, version: str) -> Records:
+    contexts: list[Context] = []
+    kinds: list[str] = []
+    lines: list[int] = []
+    blocks: list[int] = []
+    cells: dict[str, dict[int, str]] = {}
+    skipped = 0
+
+    def record(element: etree._Element, block: int) -> None:
+        nonlocal skipped
+        row = len(kinds)
+        kinds.append(element.tag)
+        lines.append(element.sourceline or 0)
+        blocks.append(block)
+        for child in _leaves(element):
+            name = child.tag
+            if name == "localUse":
+                skipped += 1
+                continue
+            rule = COLUMNS.get(name)
+            if rule is None or element.tag not in rule.kinds:
+                raise _fail(
+                    child,
+                    source,
+                    name,
+                    f"it is not an element of {element.tag} records",
+                    "Remove it.",
+                )
+            if row in cells.setdefault(name, {}):
+                raise _fail(
+                    child,
+                    source,
+                    name,
+                    f"it stands twice in one {element.tag} record",
+                    "Keep one of them.",
+                )
+            if len(child):
+                raise _fail(
+                    child, source, name, "it holds something besides text", "Give plain text."
+                )
+            text = (child.text or "").strip()
+            if not text:
+                raise _fail(
+                    child, source, name, "it is empty", "Leave out an element that has no value."
+                )
+            cells[name][row] = text
+
+    for element in root:
+        if element.tag in RECORD_KINDS:
+            record(element, -1)
+        elif element.tag == "obsBlock":
+            parts = [child.tag for child in element]
+            if parts != ["obsContext", "obsData"]:
+                raise _fail(
+                    element,
+                    source,
+                    "obsBlock",
+                    "it must hold obsContext and then obsData, once each",
+                    "Correct the block.",
+                )
+            contexts.append(_context(element[0], source))
+            data = element[1]
+            for child in data:
+                if child.tag not in RECORD_KINDS:
+                    raise _fail(
+                        child,
+                        source,
+                        str(child.tag),
+                        "it is not a kind of record",
+                        f"Use one of {', '.join(RECORD_KINDS)}.",
+                    )
+                if child.tag != data[0].tag:
+                    raise _fail(
+                        child,
+                        source,
+                        str(child.tag),
+                        "an obsData holds records of one kind only",
+                        "Give it an obsBlock of its own.",
+                    )
+                record(child, len(contexts) - 1)
+        else:
+            raise _fail(
+                element,
+                source,
+                str(element.tag),
+                "it is not a child of ades",
+                f"Use obsBlock or one of {', '.join(RECORD_KINDS)}.",
+            )
+    if skipped:
+        warnings.warn(
+            f"{source}: localUse was left out of {skipped} records; ngbound has no use for it.",
+            NgboundWarning,
+            stacklevel=2,
+        )
+    n = len(kinds)
+    text: dict[str, ObjectArray] = {}
+    for name in COLUMNS:
+        if name in cells:
+            column = np.full(n, "", dtype=object)
+            column[list(cells[name])] = list(cells[name].values())
+            text[name] = column
+    return Records(
+        source=source,
+        text=text,
+        kind=np.array(kinds, dtype=object),
+        line=np.array(lines, dtype=np.int64),
+        block=np.array(blocks, dtype=np.int64),
+        set_aside=np.full(n, "", dtype=object),
+        contexts=tuple(contexts),
+        strict=version == "2022",
+    )
+
+
+_GROUPS = ("location", "photometry", "precision", "residuals", "opticalRes", "radarRes")
+
+
+def _leaves(element: etree._Element) -> list[etree._Element]:
+    """Children of a record, entities refused."""
+    return [child for child in element if isinstance(child.tag, str)]
+
+
+def _context(element: etree._Element, source: str) -> Context:
+    out = []
+    for child in element:
+        if child.tag not in CONTEXT_ELEMENTS:
+            raise _fail(
+                child,
+                source,
+                str(child.tag),
+                "it is not an element of obsContext",
+                f"Use one of {', '.join(CONTEXT_ELEMENTS)}.",
+            )
+        grand = []
+        for leaf in child:
+            if leaf.tag not in CONTEXT_ELEMENTS[child.tag]:
+                raise _fail(
+                    leaf,
+                    source,
+                    str(leaf.tag),
+                    f"it is not an element of {child.tag}",
+                    "Remove it.",
+                )
+            grand.append((str(leaf.tag), " ".join((leaf.text or "").split())))
+        text = " ".join((child.text or "").split()) if child.tag == "fundingSource" else ""
+        out.append((str(child.tag), text, tuple(grand)))
+    return tuple(out)
+
+
+def _fail(element: etree._Element, source: str, name: str, problem: str, remedy: str) -> ArcError:
+    return ArcError(
+        f"{source}, line {element.sourceline}, element {name}: {problem}. {remedy}",
+        file=source,
+        line=element.sourceline,
+        column=name,
+        value=element.text if isinstance(element.text, str) else "",
+    )
+
+
+def write_xml(arc: Arc, path: PathLike, *, version: str = "2022") -> None:
+    """Write every record of an arc as ADES XML, headers included, in one step; the rules of
+    `write_psv` hold."""
+    if version not in VERSIONS:
+        raise ArcError(
+            f"The ADES version {version!r} is not known; it must be {' or '.join(VERSIONS)}.",
+            value=version,
+        )
+    root = etree.Element("ades", version=version)
+    for block, kind, rows, columns in grouped_cells(arc):
+        parent = root
+        if block >= 0:
+            holder = etree.SubElement(root, "obsBlock")
+            _context_elements(etree.SubElement(holder, "obsContext"), arc.contexts[block])
+            parent = etree.SubElement(holder, "obsData")
+        for i in range(len(rows)):
+            element = etree.SubElement(parent, kind)
+            for name, cells in columns.items():
+                if cells[i]:
+                    etree.SubElement(element, name).text = cells[i]
+    write_whole(
+        path, etree.tostring(root, xml_declaration=True, encoding="UTF-8", pretty_print=True)
+    )
+
+
+def _context_elements(parent: etree._Element, context: Context) -> None:
+    for name, text, children in context:
+        element = etree.SubElement(parent, name)
+        if text:
+            element.text = text
+        for child, value in children:
+            etree.SubElement(element, child).text = value

@@ -1,0 +1,562 @@
+"""Sigma, correlation and common error of each observation, and the whitening that follows; imports
+errors and this room.
+
+The covariance of a station-night with m observations is 2m x 2m (RA times cos dec and Dec of each
+observation):
+
+    C = blockdiag(independent part of each observation) + c c' for RA + c c' for Dec,
+
+where the independent part holds the random error (stated rms and correlation, or the table), and
+the timing error times the motion, and c is the common error of the night (catalogue zone,
+refraction, clock: what averaging over a night does not reduce). Where sigma is implied by the
+table, the common part is taken out of it, so that one observation alone keeps the sigma of the
+table.
+
+Table: P. Veres et al. 2017, Icarus 296, 139; its values stand in data/station_weights.csv and are
+from memory. Their rule for many observations in a night, sigma times sqrt(N/4), is the choice
+``over_observing="sqrt"``; a common error of half of sigma has the same limit for large N (sigma/2
+for the mean of the night) and is the default.
+"""
+
+import csv
+from dataclasses import asdict, dataclass
+from functools import cached_property, lru_cache
+from importlib.resources import files
+from typing import Any
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from ngbound.arc.fields import civil_day
+from ngbound.arc.observations import Arc
+from ngbound.constants import ARCSEC_RAD
+from ngbound.errors import ArcError, CaseError
+
+FloatArray = NDArray[np.float64]
+IntArray = NDArray[np.int64]
+
+SCHEMES = ("stated-then-table", "uniform")
+OVER_OBSERVING = ("common", "sqrt", "none")
+NIGHT_GAP_D = 0.5
+"""A gap of this many days or more ends a station-night."""
+NIGHT_LONGEST_D = 1.0
+"""A station-night ends a day after its first observation, which bounds the blocks of spacecraft and
+polar sites."""
+COMMON_FRACTION = 0.5
+"""Common part of the night as a fraction of an implied sigma."""
+TOO_MANY = 4
+"""Observations of a station-night from which the sqrt(N/4) rule counts (Veres et al. 2017, from
+memory)."""
+JANUARY_1996 = 50083
+"""MJD of 1996-01-01."""
+
+
+@dataclass(frozen=True)
+class WeightRow:
+    """One row of the table of default sigmas; dates as MJD, ``catalogues`` and ``modes`` as lists
+    of ADES codes."""
+
+    kind: str
+    station: str
+    program: str
+    catalogues: tuple[str, ...]
+    modes: tuple[str, ...]
+    from_day: int
+    to_day: int
+    sigma_arcsec: float
+    source: str
+    status: str
+    confidence: str
+    note: str
+
+    @property
+    def label(self) -> str:
+        """What the row is about, with its status."""
+        what = f"station {self.station}" if self.station else self.note
+        if self.program:
+            what += f" programme {self.program}"
+        if self.station and self.catalogues not in (("*",), ("UNK",)):
+            what += f" with {'/'.join(self.catalogues)}"
+        return f"table: {what} ({self.status})"
+
+
+@lru_cache(maxsize=1)
+def weight_table() -> tuple[WeightRow, ...]:
+    """The table of default sigmas; a later row wins over an earlier one."""
+    text = files("ngbound").joinpath("data/station_weights.csv").read_text(encoding="utf-8")
+    lines = [line for line in text.splitlines() if not line.startswith("#")]
+    return tuple(
+        WeightRow(
+            kind=row["kind"],
+            station=row["station"],
+            program=row["program"],
+            catalogues=tuple(row["catalogues"].split(";")),
+            modes=tuple(row["modes"].split(";")),
+            from_day=_mjd(row["from_date"], -(10**6)),
+            to_day=_mjd(row["to_date"], 10**6),
+            sigma_arcsec=float(row["sigma_arcsec"]),
+            source=row["source"],
+            status=row["status"],
+            confidence=row["confidence"],
+            note=row["note"],
+        )
+        for row in csv.DictReader(lines)
+    )
+
+
+def _mjd(date: str, absent: int) -> int:
+    if not date:
+        return absent
+    year, month, day = (np.array([int(p)], dtype=np.int64) for p in date.split("-"))
+    return int(civil_day(year, month, day)[0][0])
+
+
+@dataclass(frozen=True)
+class Factors:
+    """Inverse Cholesky factors of all station-night blocks, flat, for kernels.
+
+    ``order`` (n,): the observations sorted so that blocks are contiguous. Block b holds the sorted
+    observations ``start[b]:start[b+1]``; its L^-1, with L L' = C in rad^2, is lower-triangular,
+    row-major, of side 2m, at ``flat[flat_start[b]:flat_start[b+1]]``. With r the residuals (RA cos
+    dec and Dec interleaved, radians) of the block, whitened = L^-1 r and chi2 = |whitened|^2.
+    """
+
+    order: IntArray
+    start: IntArray
+    flat: FloatArray
+    flat_start: IntArray
+
+
+@dataclass(frozen=True, eq=False)
+class Noise:
+    """The error of each of n observations, with correlations inside an observation and inside a
+    station-night.
+
+    Parameters
+    ----------
+    sigma_ra_arcsec, sigma_dec_arcsec : ndarray (n,)
+        Whole standard deviation in RA times cos dec and in Dec: random, timing and common part
+        together.
+    corr : ndarray (n,)
+        Correlation of the two inside one observation.
+    night_common_arcsec : ndarray (n,)
+        The part of sigma that all observations of the station-night share, in RA and,
+        independently, in Dec.
+    night : ndarray (n,) of int
+        Station-night of each observation, counted from 0.
+    source : ndarray (n,) of str
+        Where each sigma came from.
+    """
+
+    sigma_ra_arcsec: FloatArray
+    sigma_dec_arcsec: FloatArray
+    corr: FloatArray
+    night_common_arcsec: FloatArray
+    night: IntArray
+    source: NDArray[np.object_]
+
+    def __len__(self) -> int:
+        return len(self.sigma_ra_arcsec)
+
+    def covariance_rad2(self, rows: IntArray) -> FloatArray:
+        """Dense covariance (2m, 2m) in rad^2 of some observations, interleaved; zero between
+        different nights."""
+        m = len(rows)
+        ra, dec = self.sigma_ra_arcsec[rows], self.sigma_dec_arcsec[rows]
+        common, night = self.night_common_arcsec[rows], self.night[rows]
+        shared = np.where(night[:, None] == night[None, :], np.outer(common, common), 0.0)
+        cov = np.zeros((2 * m, 2 * m))
+        cov[0::2, 0::2] = shared
+        cov[1::2, 1::2] = shared
+        i = np.arange(m)
+        cov[2 * i, 2 * i] = ra**2
+        cov[2 * i + 1, 2 * i + 1] = dec**2
+        cov[2 * i, 2 * i + 1] = cov[2 * i + 1, 2 * i] = self.corr[rows] * ra * dec
+        return cov * ARCSEC_RAD**2
+
+    @cached_property
+    def _factors(self) -> Factors:
+        order = np.argsort(self.night, kind="stable").astype(np.int64)
+        night = self.night[order]
+        edges = np.flatnonzero(np.diff(night)) + 1 if len(night) else np.zeros(0, dtype=np.int64)
+        start = (
+            np.concatenate([[0], edges, [len(night)]]).astype(np.int64)
+            if len(night)
+            else np.zeros(1, dtype=np.int64)
+        )
+        size = np.diff(start)
+        sides = 2 * size
+        flat_start = np.concatenate([[0], np.cumsum(sides**2)]).astype(np.int64)
+        flat = np.zeros(int(flat_start[-1]))
+        for m in np.unique(size):
+            blocks = np.flatnonzero(size == m)
+            cov = np.stack([self.covariance_rad2(order[start[b] : start[b + 1]]) for b in blocks])
+            scale = np.sqrt(np.einsum("bii->bi", cov))
+            try:
+                lower = np.linalg.cholesky(cov / (scale[:, :, None] * scale[:, None, :]))
+            except np.linalg.LinAlgError as error:
+                rows = np.concatenate([order[start[b] : start[b + 1]] for b in blocks])
+                raise ArcError(
+                    f"The covariance of a station-night with {int(m)} observations is not positive "
+                    "definite: the common error of the night must stay below sigma, and |rmsCorr| "
+                    "below 1. Lower night_common_arcsec or correct the records.",
+                    rows=rows.tolist(),
+                ) from error
+            inverse = np.tril(np.linalg.inv(lower)) / scale[:, None, :]
+            for b, block in zip(blocks, inverse, strict=True):
+                flat[flat_start[b] : flat_start[b + 1]] = block.ravel()
+        return Factors(order, start, flat, flat_start)
+
+    def factors(self) -> Factors:
+        """The inverse Cholesky factors (computed once)."""
+        return self._factors
+
+    @cached_property
+    def _blocks(self) -> list[tuple[IntArray, FloatArray]]:
+        f = self._factors
+        blocks = []
+        for b in range(len(f.start) - 1):
+            members = f.order[f.start[b] : f.start[b + 1]]
+            rows = np.stack([2 * members, 2 * members + 1], axis=1).ravel()
+            side = len(rows)
+            blocks.append((rows, f.flat[f.flat_start[b] : f.flat_start[b + 1]].reshape(side, side)))
+        return blocks
+
+    def whiten(self, m: ArrayLike) -> FloatArray:
+        """L^-1 m for m of shape (2n,) or (2n, k), rows RA cos dec and Dec of each observation in
+        turn, in radians.
+
+        The result is dimensionless, of the same shape; chi2 of residuals is the sum of its squares.
+        The rows keep
+        their places, but inside a station-night they are mixed.
+        """
+        values = np.asarray(m, dtype=np.float64)
+        if values.ndim not in (1, 2) or values.shape[0] != 2 * len(self):
+            raise ValueError(
+                f"whiten needs 2 x {len(self)} rows (RA and Dec of each observation), not "
+                f"{values.shape}"
+            )
+        out = np.empty_like(values)
+        for rows, inverse in self._blocks:
+            out[rows] = inverse @ values[rows]
+        return out
+
+    def mask(self, keep: ArrayLike) -> "Noise":
+        """The noise of a subset (bool (n,) or positions); sigmas stay as they are, nights are
+        counted anew."""
+        keep = np.asarray(keep)
+        if keep.dtype == bool and len(keep) != len(self):
+            raise ValueError(f"the mask has {len(keep)} entries, the noise {len(self)}")
+        _, night = np.unique(self.night[keep], return_inverse=True)
+        return Noise(
+            self.sigma_ra_arcsec[keep],
+            self.sigma_dec_arcsec[keep],
+            self.corr[keep],
+            self.night_common_arcsec[keep],
+            night.astype(np.int64),
+            self.source[keep],
+        )
+
+    def scaled(self, f: ArrayLike) -> "Noise":
+        """All errors times ``f`` (a number, or one per observation)."""
+        factor = np.broadcast_to(np.asarray(f, dtype=np.float64), (len(self),))
+        if not (np.isfinite(factor) & (factor > 0.0)).all():
+            raise ValueError("errors can only be scaled by finite, positive factors")
+        return Noise(
+            self.sigma_ra_arcsec * factor,
+            self.sigma_dec_arcsec * factor,
+            self.corr,
+            self.night_common_arcsec * factor,
+            self.night,
+            self.source,
+        )
+
+    def to_dict(self) -> dict[str, Any]:
+        """JSON-able summary: counts by source with the median sigma of each."""
+        sources = {}
+        for label in dict.fromkeys(self.source.tolist()):
+            mine = self.source == label
+            sources[str(label)] = {
+                "n": int(mine.sum()),
+                "median_sigma_ra_arcsec": float(np.median(self.sigma_ra_arcsec[mine])),
+                "median_sigma_dec_arcsec": float(np.median(self.sigma_dec_arcsec[mine])),
+                "median_night_common_arcsec": float(np.median(self.night_common_arcsec[mine])),
+            }
+        return {"n": len(self), "n_nights": len(np.unique(self.night)), "sources": sources}
+
+    def __str__(self) -> str:
+        told = self.to_dict()
+        lines = [f"Errors of {told['n']} observations in {told['n_nights']} station-nights:"]
+        lines += [
+            f"  {v['n']:6d}  {v['median_sigma_ra_arcsec']:.3f} x "
+            f"{v['median_sigma_dec_arcsec']:.3f} arcsec, "
+            f"common {v['median_night_common_arcsec']:.3f}  {k}"
+            for k, v in told["sources"].items()
+        ]
+        return "\n".join(lines)
+
+
+@dataclass(frozen=True)
+class ErrorModel:
+    """The choices from which the error of each observation follows.
+
+    Parameters
+    ----------
+    scheme : str
+        "stated-then-table": the observer's rmsRA, rmsDec where stated, else the table. "uniform":
+        one value for all.
+    uniform_arcsec : float
+        Sigma of the scheme "uniform".
+    uniform_before_1996_arcsec : float, optional
+        Another one for observations before 1996.
+    floor_arcsec : float
+        No sigma is taken smaller than this.
+    scale : float
+        Factor on all errors, at the end.
+    night_common_arcsec : float, optional
+        Common error of each station-night, added to the rest. None: nothing where sigma is stated
+        or uniform, half of sigma (taken out of it) where it is implied by the table and
+        ``over_observing`` is "common".
+    timing_s : float
+        Error of the time where rmsTime is absent; it acts along the motion.
+    over_observing : str
+        What tames many observations of one night with implied sigmas: "common" (see above), "sqrt"
+        (sigma times sqrt(N/4) for N > 4: Veres et al. 2017, Icarus 296, 139) or "none".
+    """
+
+    scheme: str = "stated-then-table"
+    uniform_arcsec: float = 1.0
+    uniform_before_1996_arcsec: float | None = None
+    floor_arcsec: float = 0.0
+    scale: float = 1.0
+    night_common_arcsec: float | None = None
+    timing_s: float = 0.0
+    over_observing: str = "common"
+
+    def __post_init__(self) -> None:
+        for name, allowed in (("scheme", SCHEMES), ("over_observing", OVER_OBSERVING)):
+            if getattr(self, name) not in allowed:
+                raise CaseError(
+                    f"The error model's {name} = {getattr(self, name)!r} is not known; choose "
+                    f"{', '.join(allowed)}.",
+                    key=name,
+                    value=getattr(self, name),
+                )
+        limits = {
+            "uniform_arcsec": (0.0, True),
+            "uniform_before_1996_arcsec": (0.0, True),
+            "scale": (0.0, True),
+            "floor_arcsec": (0.0, False),
+            "night_common_arcsec": (0.0, False),
+            "timing_s": (0.0, False),
+        }
+        for name, (low, is_open) in limits.items():
+            value = getattr(self, name)
+            if value is None and name in ("uniform_before_1996_arcsec", "night_common_arcsec"):
+                continue
+            number = isinstance(value, int | float) and not isinstance(value, bool)
+            if not number or not np.isfinite(value) or value < low or (is_open and value == low):
+                raise CaseError(
+                    f"The error model's {name} = {value!r} is not allowed; it must be a finite "
+                    "number "
+                    f"{'above' if is_open else 'of at least'} {low:g}.",
+                    key=name,
+                    value=value,
+                )
+
+    def to_dict(self) -> dict[str, Any]:
+        """The choices, JSON-able."""
+        return asdict(self)
+
+    def __str__(self) -> str:
+        return "Error model: " + ", ".join(f"{k} = {v}" for k, v in self.to_dict().items())
+
+    def apply(self, arc_used: Arc, motion_arcsec_s: ArrayLike | None = None) -> Noise:
+        """The noise of the observations of an arc.
+
+        Parameters
+        ----------
+        arc_used : Arc
+            Usable observations (``arc.used``), n rows.
+        motion_arcsec_s : ndarray (n, 2), optional
+            Rates in RA times cos dec and Dec, arcsec/s; needed for timing errors and for the
+            resolution of the time to act.
+
+        Returns
+        -------
+        Noise
+        """
+        table = arc_used.table
+        n = len(table)
+        night = station_nights(arc_used)
+        ra, dec, stated_ra, stated_dec, source = self._sigmas(arc_used)
+        implied = ~stated_ra & ~stated_dec & (self.scheme != "uniform")
+
+        if self.over_observing == "sqrt":
+            count = np.bincount(night, minlength=1)[night] if n else np.zeros(0)
+            swell = np.where(implied & (count > TOO_MANY), np.sqrt(count / TOO_MANY), 1.0)
+            ra, dec = ra * swell, dec * swell
+            source = _marked(source, swell > 1.0, "times sqrt(N/4)")
+
+        digits_ra = table["digits_ra_arcsec"].to_numpy(dtype=float) / np.sqrt(12.0)
+        digits_dec = table["digits_dec_arcsec"].to_numpy(dtype=float) / np.sqrt(12.0)
+        low_ra, low_dec = (
+            np.fmax(digits_ra, self.floor_arcsec),
+            np.fmax(digits_dec, self.floor_arcsec),
+        )
+        source = _marked(source, (low_ra > ra) | (low_dec > dec), "raised to digits or floor")
+        ra, dec = np.fmax(ra, low_ra), np.fmax(dec, low_dec)
+
+        rho = np.where(
+            stated_ra & stated_dec, np.nan_to_num(table["rmsCorr"].to_numpy(dtype=float)), 0.0
+        )
+        rho = np.clip(rho, -0.999, 0.999)
+        if self.night_common_arcsec is None:
+            use = implied & (self.over_observing == "common")
+            common = np.where(use, COMMON_FRACTION * np.minimum(ra, dec), 0.0)
+            added = np.zeros(n)
+        else:
+            common = np.full(n, float(self.night_common_arcsec))
+            added = common
+        var_ra, var_dec, cov = ra**2 + added**2, dec**2 + added**2, rho * ra * dec
+        if motion_arcsec_s is not None:
+            motion = np.asarray(motion_arcsec_s, dtype=float)
+            if motion.shape != (n, 2):
+                raise ValueError(
+                    f"motion_arcsec_s must have the shape ({n}, 2), not {motion.shape}"
+                )
+            clock = table["rmsTime"].to_numpy(dtype=float)
+            clock2 = np.where(np.isfinite(clock), clock, self.timing_s) ** 2
+            clock2 = clock2 + table["digits_time_s"].to_numpy(dtype=float) ** 2 / 12.0
+            var_ra = var_ra + clock2 * motion[:, 0] ** 2
+            var_dec = var_dec + clock2 * motion[:, 1] ** 2
+            cov = cov + clock2 * motion[:, 0] * motion[:, 1]
+        s_ra, s_dec = np.sqrt(var_ra), np.sqrt(var_dec)
+        return Noise(
+            s_ra * self.scale,
+            s_dec * self.scale,
+            cov / (s_ra * s_dec),
+            common * self.scale,
+            night,
+            source,
+        )
+
+    def _sigmas(
+        self, arc: Arc
+    ) -> tuple[FloatArray, FloatArray, NDArray[np.bool_], NDArray[np.bool_], NDArray[np.object_]]:
+        table = arc.table
+        n = len(table)
+        day = table["utc_day"].to_numpy()
+        if self.scheme == "uniform":
+            early = day < JANUARY_1996
+            before = (
+                self.uniform_arcsec
+                if self.uniform_before_1996_arcsec is None
+                else self.uniform_before_1996_arcsec
+            )
+            value = np.where(early, before, self.uniform_arcsec).astype(float)
+            never = np.zeros(n, dtype=bool)
+            return value, value.copy(), never, never, np.full(n, "uniform", dtype=object)
+        implied, source = table_sigma(arc)
+        rms_ra, rms_dec = (
+            table["rmsRA"].to_numpy(dtype=float),
+            table["rmsDec"].to_numpy(dtype=float),
+        )
+        has_ra, has_dec = (
+            np.isfinite(rms_ra) & (rms_ra > 0.0),
+            np.isfinite(rms_dec) & (rms_dec > 0.0),
+        )
+        source[has_ra & has_dec] = "stated"
+        source = _marked(source, has_ra & ~has_dec, "for Dec, RA stated")
+        source = _marked(source, has_dec & ~has_ra, "for RA, Dec stated")
+        return (
+            np.where(has_ra, rms_ra, implied),
+            np.where(has_dec, rms_dec, implied),
+            has_ra,
+            has_dec,
+            source,
+        )
+
+
+def _marked(
+    source: NDArray[np.object_], where: NDArray[np.bool_], words: str
+) -> NDArray[np.object_]:
+    out = source.copy()
+    out[where] = [f"{s}, {words}" for s in source[where]]
+    return out
+
+
+def table_sigma(arc: Arc) -> tuple[FloatArray, NDArray[np.object_]]:
+    """Sigma (n,) in arcsec that the table gives for each observation, and the label of its row."""
+    table = arc.table
+    n = len(table)
+    stn, cat = table["stn"].to_numpy(dtype=object), table["astCat"].to_numpy(dtype=object)
+    cat = np.where(cat == "", "UNK", cat)
+    mode, prog = table["mode"].to_numpy(dtype=object), table["prog"].to_numpy(dtype=object)
+    day, site = table["utc_day"].to_numpy(), table["site"].to_numpy(dtype=object)
+    known_modes = {m for row in weight_table() for m in row.modes}
+    mode = np.where(np.isin(mode, list(known_modes)), mode, "UNK")
+    sigma = np.full(n, np.nan)
+    source = np.full(n, "", dtype=object)
+    present = set(stn.tolist())
+    for row in weight_table():
+        if row.station and row.station not in present:
+            continue
+        take = (day >= row.from_day) & (day < row.to_day)
+        if row.station:
+            take &= stn == row.station
+        if row.kind == "space":
+            take &= site == "space"
+        if row.program:
+            take &= prog == row.program
+        if row.modes != ("*",):
+            take &= np.isin(mode, row.modes)
+        if row.catalogues != ("*",):
+            take &= _any_catalogue(cat, row.catalogues)
+        sigma[take], source[take] = row.sigma_arcsec, row.label
+    return sigma, source
+
+
+def _any_catalogue(cat: NDArray[np.object_], wanted: tuple[str, ...]) -> NDArray[np.bool_]:
+    found = np.zeros(len(cat), dtype=bool)
+    for name in set(cat.tolist()):
+        if any(name.startswith(w[:-1]) if w.endswith("*") else name == w for w in wanted):
+            found |= cat == name
+    return found
+
+
+def station_nights(arc: Arc) -> IntArray:
+    """Station-night (n,) of each observation, counted from 0 in the order of first appearance in
+    time.
+
+    A night is a run of observations of one station, each less than half a day after the one before
+    it, and at most a day long. Two roving observers under one code are two stations.
+    """
+    table = arc.table
+    n = len(table)
+    night = np.zeros(n, dtype=np.int64)
+    if n == 0:
+        return night
+    time = table["utc_day"].to_numpy() + table["utc_sec"].to_numpy() / 86400.0
+    stn = table["stn"].to_numpy(dtype=object)
+    roving = (table["site"] == "roving").to_numpy(dtype=bool)
+    if roving.any():
+        pos = table[["pos1", "pos2"]].to_numpy(dtype=float)
+        stn = np.array(
+            [
+                f"{s} {p[0]:.3f} {p[1]:.3f}" if r else s
+                for s, p, r in zip(stn, pos, roving, strict=True)
+            ],
+            dtype=object,
+        )
+    current: dict[str, tuple[float, float, int]] = {}
+    count = 0
+    for row in np.argsort(time, kind="stable"):
+        code, t = stn[row], time[row]
+        begun, last, label = current.get(code, (-np.inf, -np.inf, -1))
+        if t - last >= NIGHT_GAP_D or t - begun >= NIGHT_LONGEST_D:
+            begun, label = t, count
+            count += 1
+        current[code] = (begun, t, label)
+        night[row] = label
+    return night

@@ -1,0 +1,179 @@
+"""What is doubtful in an arc, before any orbit; imports this room's table and nights.
+
+Nothing is taken out: each finding names the rows and says what it would do to a thrust estimate.
+"""
+
+from dataclasses import asdict, dataclass
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ngbound.arc.errors_model import station_nights
+from ngbound.arc.observations import Arc
+
+SAME_INSTANT_S = 2.0
+"""Two records of one station closer than this are one observation, or a repeated one."""
+SAME_PLACE_ARCSEC = 0.05
+NEAR_PLACE_ARCSEC = 3.0
+JUMP_DEG_D = 10.0
+"""Departure from the usual rate of the night that no small body beyond the Moon shows between
+neighbours."""
+JUMP_SLACK_ARCSEC = 15.0
+FEWEST = 3
+
+
+@dataclass(frozen=True)
+class Finding:
+    """Something doubtful: row positions in ``arc.table``, a kind, and one sentence."""
+
+    rows: tuple[int, ...]
+    kind: str
+    sentence: str
+
+    def __str__(self) -> str:
+        return f"{self.kind}: {self.sentence}"
+
+    def to_dict(self) -> dict[str, Any]:
+        """JSON-able content."""
+        return asdict(self) | {"rows": list(self.rows)}
+
+
+def vet(arc: Arc) -> list[Finding]:
+    """Findings about the usable observations of an arc, in the order of their rows.
+
+    Kinds: "exact-duplicate", "near-duplicate", "impossible-rate", "few-observations",
+    "single-station", "surplus-position".
+    """
+    table = arc.table
+    rows = np.flatnonzero(table["use"].to_numpy(dtype=bool))
+    findings: list[Finding] = []
+    if len(rows) < FEWEST:
+        findings.append(
+            Finding(
+                tuple(int(r) for r in rows),
+                "few-observations",
+                f"only {len(rows)} usable observations: an orbit needs at least {FEWEST}, and a "
+                "thrust more.",
+            )
+        )
+    if len(rows) == 0:
+        return findings
+    used = arc.select(rows)
+    t = used.table
+    time = t["utc_day"].to_numpy() + t["utc_sec"].to_numpy() / 86400.0
+    findings.extend(_duplicates(used, rows, time))
+    findings.extend(_jumps(used, rows, time))
+    codes = sorted(set(t["stn"]))
+    if len(codes) == 1 and len(rows) >= FEWEST:
+        findings.append(
+            Finding(
+                (),
+                "single-station",
+                f"all {len(rows)} observations come from station {codes[0]}: an error of its clock "
+                "or catalogue cannot be "
+                "told from a thrust.",
+            )
+        )
+    surplus = (t["site"] == "fixed").to_numpy(dtype=bool) & (t["sys"] != "").to_numpy(dtype=bool)
+    if surplus.any():
+        findings.append(
+            Finding(
+                tuple(int(r) for r in rows[surplus]),
+                "surplus-position",
+                f"{int(surplus.sum())} records of fixed stations give a position of their own, "
+                "which is passed over in favour "
+                "of the list of stations.",
+            )
+        )
+    return sorted(findings, key=lambda f: f.rows[:1])
+
+
+def _sky(arc: Arc) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
+    return arc.table["ra_rad"].to_numpy(dtype=float), arc.table["dec_rad"].to_numpy(dtype=float)
+
+
+def _step_arcsec(ra: NDArray, dec: NDArray, a: int, b: int) -> NDArray[np.float64]:
+    """Step from a to b in RA times cos dec and Dec (arcsec), across the RA seam too."""
+    d_ra = (ra[b] - ra[a] + np.pi) % (2.0 * np.pi) - np.pi
+    return np.degrees(np.array([d_ra * np.cos(0.5 * (dec[a] + dec[b])), dec[b] - dec[a]])) * 3600.0
+
+
+def _duplicates(arc: Arc, rows: NDArray[np.int64], time: NDArray[np.float64]) -> list[Finding]:
+    ra, dec = _sky(arc)
+    stn = arc.table["stn"].to_numpy(dtype=object)
+    line = arc.table["line"].to_numpy()
+    order = np.lexsort((time, stn.astype(str)))
+    found = []
+    for i, a in enumerate(order):
+        for b in order[i + 1 :]:
+            gap = (time[b] - time[a]) * 86400.0
+            if stn[a] != stn[b] or gap > SAME_INSTANT_S:
+                break
+            apart = float(np.hypot(*_step_arcsec(ra, dec, a, b)))
+            pair = tuple(sorted((int(rows[a]), int(rows[b]))))
+            where = (
+                f"lines {min(line[a], line[b])} and {max(line[a], line[b])} "
+                f"(station {stn[a]}, {gap:.1f} s and {apart:.2f} arcsec apart)"
+            )
+            if apart <= SAME_PLACE_ARCSEC:
+                found.append(
+                    Finding(
+                        pair,
+                        "exact-duplicate",
+                        f"{where} are the same observation: it would count twice, and the thrust's "
+                        "error "
+                        "come out too small.",
+                    )
+                )
+            elif apart <= NEAR_PLACE_ARCSEC:
+                found.append(
+                    Finding(
+                        pair,
+                        "near-duplicate",
+                        f"{where} look like two reductions of one observation: keep the better "
+                        "one, or "
+                        "the thrust's error comes out too small.",
+                    )
+                )
+    return found
+
+
+def _jumps(arc: Arc, rows: NDArray[np.int64], time: NDArray[np.float64]) -> list[Finding]:
+    ra, dec = _sky(arc)
+    night = station_nights(arc)
+    line, stn = arc.table["line"].to_numpy(), arc.table["stn"].to_numpy(dtype=object)
+    order = np.lexsort((time, night))
+    pairs, steps, gaps = [], [], []
+    for a, b in zip(order[:-1], order[1:], strict=True):
+        gap_d = time[b] - time[a]
+        if night[a] == night[b] and gap_d * 86400.0 > SAME_INSTANT_S:
+            pairs.append((a, b))
+            steps.append(_step_arcsec(ra, dec, a, b))
+            gaps.append(gap_d)
+    if not pairs:
+        return []
+    step, gap = np.array(steps), np.array(gaps)
+    rate = step / gap[:, None]
+    of_night = np.array([night[a] for a, _ in pairs])
+    overall = np.median(rate, axis=0)
+    found = []
+    for k, (a, b) in enumerate(pairs):
+        mine = rate[of_night == of_night[k]]
+        usual = np.median(mine, axis=0) if len(mine) >= 3 else overall
+        if len(pairs) == 1:
+            usual = np.zeros(2)
+        apart = float(np.hypot(*(step[k] - usual * gap[k])))
+        if apart > JUMP_DEG_D * 3600.0 * gap[k] + JUMP_SLACK_ARCSEC:
+            found.append(
+                Finding(
+                    (int(rows[a]), int(rows[b])),
+                    "impossible-rate",
+                    f"from line {line[a]} to line {line[b]} (station {stn[a]}) the position "
+                    f"departs by {apart:.0f} arcsec in "
+                    f"{gap[k] * 1440.0:.1f} min from the night's usual motion: one of the two is "
+                    "wrong, and would pull the orbit "
+                    "unless rejected.",
+                )
+            )
+    return found

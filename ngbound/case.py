@@ -1,0 +1,550 @@
+"""The case file: every choice of an analysis, validated before any work begins.
+
+A case file is TOML.  Every key has a documented default except ``[arc] file``; a key that does not
+exist is an error that suggests the nearest one that does.  Paths in a case file count from the
+folder of the case file.
+
+May import errors, arc, sky, motion, fit, limits, mass and report; never run or cli.
+"""
+
+import difflib
+import hashlib
+import re
+import tomllib
+from collections import Counter
+from collections.abc import Callable
+from pathlib import Path
+from typing import Annotated, Any, Literal, Self, TypeVar
+
+import numpy as np
+from pydantic import BaseModel, ConfigDict, Field, ValidationError, field_validator, model_validator
+
+from ngbound.arc import ErrorModel, user_stations
+from ngbound.errors import CaseError, StationError
+from ngbound.limits import PRIOR_NAMES
+from ngbound.mass import Outgassing
+from ngbound.motion import LAWS, ForceModel, Orbit, TableLaw, Thrust, Window
+from ngbound.sky import parse_time
+
+MODEL_CONFIG = ConfigDict(extra="forbid", frozen=True, allow_inf_nan=False)
+
+Positive = Annotated[float, Field(gt=0.0)]
+NotNegative = Annotated[float, Field(ge=0.0)]
+Probability = Annotated[float, Field(gt=0.0, lt=1.0)]
+Vector = tuple[float, float, float]
+
+
+def nearest(word: str, known: list[str]) -> str:
+    """``"did you mean 'x'?"`` when a known word is near, else the list of the known words."""
+    near = difflib.get_close_matches(word, known, n=1, cutoff=0.5)
+    return f"did you mean {near[0]!r}?" if near else f"known are {', '.join(known)}."
+
+
+def _as_value_error(make: Callable[..., Any], *arguments: Any, **options: Any) -> None:
+    """Build something from choices only to see whether they are sound."""
+    try:
+        make(*arguments, **options)
+    except (CaseError, StationError) as error:
+        raise ValueError(str(error)) from error
+
+
+class Table(BaseModel):
+    """Any table of a case file: frozen, finite numbers only, no unknown keys."""
+
+    model_config = MODEL_CONFIG
+
+
+class ObjectTable(Table):
+    """``[object]``: what the arc is an arc of."""
+
+    name: str | None = Field(
+        default=None,
+        description="Designation as the arc file spells it; needed only when a file holds several.",
+    )
+
+
+class StationTable(Table):
+    """``[arc.stations.CODE]``: a station of the user's own, WGS84."""
+
+    longitude_deg: float = Field(ge=-180.0, le=360.0, description="East longitude.")
+    latitude_deg: float = Field(ge=-90.0, le=90.0, description="Geodetic latitude.")
+    altitude_m: float = Field(description="Height above the ellipsoid.")
+    name: str = Field(default="user-defined station", description="For the report.")
+
+
+class ArcTable(Table):
+    """``[arc]``: where the observations stand."""
+
+    file: Path = Field(description="ADES PSV, ADES XML, 80-column or JSON file.")
+    stations: dict[str, StationTable] = Field(
+        default_factory=dict, description="Stations whose codes no public list has."
+    )
+
+    @field_validator("stations")
+    @classmethod
+    def _sound(cls, stations: dict[str, StationTable]) -> dict[str, StationTable]:
+        _as_value_error(user_stations, {code: s.model_dump() for code, s in stations.items()})
+        return stations
+
+
+class ErrorsTable(Table):
+    """``[errors]``: the error of each observation."""
+
+    scheme: str = Field(
+        default=ErrorModel.scheme,
+        description="stated-then-table (the observer's rms, else a published table) or uniform.",
+    )
+    uniform_arcsec: float = Field(
+        default=ErrorModel.uniform_arcsec, description="Sigma of the scheme uniform."
+    )
+    uniform_before_1996_arcsec: float | None = Field(
+        default=ErrorModel.uniform_before_1996_arcsec, description="Another one before 1996."
+    )
+    floor_arcsec: float = Field(
+        default=ErrorModel.floor_arcsec, description="No sigma is taken smaller."
+    )
+    scale: float = Field(default=ErrorModel.scale, description="Factor on all errors.")
+    night_common_arcsec: float | None = Field(
+        default=ErrorModel.night_common_arcsec,
+        description="Error that all records of a station-night share.",
+    )
+    timing_s: float = Field(
+        default=ErrorModel.timing_s, description="Error of the time where none is stated."
+    )
+    over_observing: str = Field(
+        default=ErrorModel.over_observing,
+        description="What tames many records of a night: common, sqrt or none.",
+    )
+
+    def error_model(self) -> ErrorModel:
+        """The error model of these choices."""
+        return ErrorModel(**self.model_dump())
+
+    @model_validator(mode="after")
+    def _sound(self) -> Self:
+        _as_value_error(self.error_model)
+        return self
+
+
+class ForcesTable(Table):
+    """``[forces]``: what pulls on the object besides the thrust."""
+
+    asteroids: bool = Field(default=True, description="The 16 massive asteroids as perturbers.")
+    exclude: tuple[str, ...] = Field(
+        default=(), description="Perturbers left out, for instance because the object is one."
+    )
+    relativity: Literal["sun", "all", "none"] = Field(
+        default="sun", description="First post-Newtonian term of the Sun, of all bodies, or none."
+    )
+    sun_j2: bool = Field(default=False, description="The Sun's quadrupole.")
+    frame_dragging: bool = Field(default=False, description="The Sun's Lense-Thirring term.")
+
+    def force_model(self) -> ForceModel:
+        """The force model of these choices."""
+        return ForceModel(**self.model_dump())
+
+
+class OrbitTable(Table):
+    """``[orbit]``: a starting orbit, when the first orbit shall not be found from the angles.
+
+    Either ``position_au`` and ``velocity_au_d`` (barycentric ICRF, TDB), or the cometary elements
+    ``q_au``, ``e``, ``i_deg``, ``node_deg``, ``argperi_deg`` and ``tp`` (heliocentric, ecliptic
+    and equinox J2000.0, TDB).
+    """
+
+    epoch: str = Field(description="Epoch of the orbit, TDB, as 2031-05-01 or with a time of day.")
+    position_au: Vector | None = Field(default=None, description="Barycentric ICRF.")
+    velocity_au_d: Vector | None = Field(default=None, description="Barycentric ICRF.")
+    q_au: Positive | None = Field(default=None, description="Perihelion distance.")
+    e: NotNegative | None = Field(default=None, description="Eccentricity.")
+    i_deg: Annotated[float, Field(ge=0.0, le=180.0)] | None = Field(
+        default=None, description="Inclination."
+    )
+    node_deg: float | None = Field(default=None, description="Longitude of the ascending node.")
+    argperi_deg: float | None = Field(default=None, description="Argument of perihelion.")
+    tp: str | None = Field(default=None, description="Time of perihelion, TDB.")
+
+    @model_validator(mode="after")
+    def _one_kind(self) -> Self:
+        state = (self.position_au, self.velocity_au_d)
+        elements = (self.q_au, self.e, self.i_deg, self.node_deg, self.argperi_deg, self.tp)
+        complete = [all(x is not None for x in kind) for kind in (state, elements)]
+        started = [any(x is not None for x in kind) for kind in (state, elements)]
+        if complete != started or sum(complete) != 1:
+            raise ValueError(
+                "must hold either position_au and velocity_au_d, "
+                "or all of q_au, e, i_deg, node_deg, argperi_deg and tp"
+            )
+        return self
+
+    def orbit(self, thrust: Thrust | None = None, forces: ForceModel | None = None) -> Orbit:
+        """The orbit that the table describes."""
+        forces = forces or ForceModel()
+        if self.position_au and self.velocity_au_d:
+            state = np.array([*self.position_au, *self.velocity_au_d])
+            return Orbit(float(parse_time(self.epoch, "tdb")), state, thrust, forces)
+        return Orbit.from_elements(
+            epoch=self.epoch,
+            q=self.q_au,
+            e=self.e,
+            i=self.i_deg,
+            node=self.node_deg,
+            argperi=self.argperi_deg,
+            tp=self.tp,
+            thrust=thrust,
+            forces=forces,
+        )
+
+
+class ThrustTable(Table):
+    """``[thrust]``: the thrust that is looked for."""
+
+    law: str = Field(
+        default="inverse-square",
+        description="How the thrust falls with distance: a named law, or power with an exponent.",
+    )
+    exponent: float | None = Field(default=None, description="m of r^-m for law = 'power'.")
+    table: tuple[tuple[Positive, Positive], ...] | None = Field(
+        default=None, description="Pairs of r (au) and g for law = 'table'."
+    )
+    components: str = Field(
+        default="RTN", description="Which of radial, transverse and normal are free."
+    )
+    lag_d: float = Field(default=0.0, description="Delay of the law behind the Sun, days.")
+    window_dates: tuple[str, str] | None = Field(
+        default=None, description="First and last date (TDB) at which the thrust acts."
+    )
+    window_au: tuple[NotNegative, Positive] | None = Field(
+        default=None, description="Least and largest heliocentric distance at which it acts."
+    )
+
+    def thrust(self, A_au_d2: Vector = (0.0, 0.0, 0.0)) -> Thrust:
+        """The thrust law with given amounts."""
+        window = None
+        if self.window_dates and self.window_au:
+            raise CaseError("the activity window goes by window_dates or by window_au, not by both")
+        if self.window_dates:
+            window = Window.between_dates(*self.window_dates)
+        if self.window_au:
+            window = Window.between_distances(*self.window_au)
+        law: str | TableLaw = self.law
+        if self.law == "table":
+            if self.table is None:
+                raise CaseError("law = 'table' needs table = [[r, g], ...] beside it")
+            law = TableLaw(*zip(*self.table, strict=True))
+        return Thrust(
+            law,
+            components=self.components,
+            A=A_au_d2,
+            lag=self.lag_d,
+            window=window,
+            exponent=self.exponent,
+        )
+
+    @field_validator("law")
+    @classmethod
+    def _known(cls, law: str) -> str:
+        known = [*LAWS, "power", "table"]
+        if law not in known:
+            raise ValueError(f"there is no such thrust law; {nearest(law, known)}")
+        return law
+
+    @model_validator(mode="after")
+    def _sound(self) -> Self:
+        _as_value_error(self.thrust)
+        return self
+
+
+class FitTable(Table):
+    """``[fit]``: how the orbit is fitted."""
+
+    reject: bool = Field(default=True, description="Set outliers aside, and take them back.")
+
+
+class DetectionTable(Table):
+    """``[detection]``: what counts as a detection, and what a limit promises."""
+
+    false_alarm: Probability = Field(
+        default=0.0027, description="Probability of a detection where there is no thrust."
+    )
+    power: Probability = Field(
+        default=0.95, description="Probability that a thrust at the threshold is detected."
+    )
+    confidence: Probability = Field(default=0.95, description="Of the upper limits.")
+
+
+class SamplingTable(Table):
+    """``[sampling]``: how the posterior is drawn."""
+
+    seed: int = Field(default=1, ge=0, description="Of every random number of the analysis.")
+    prior: str = Field(
+        default=PRIOR_NAMES[0], description="On the thrust; named in the record beside the limit."
+    )
+    walkers: int | None = Field(
+        default=None, ge=2, description="Walkers, an even number; 64 or more unless given."
+    )
+    max_steps: int = Field(
+        default=5000, ge=24, description="The chain ends there even if it has not converged."
+    )
+    effective_samples: Positive = Field(
+        default=5000.0, description="Wanted of each thrust component."
+    )
+
+    @field_validator("prior")
+    @classmethod
+    def _known(cls, prior: str) -> str:
+        if prior not in PRIOR_NAMES:
+            raise ValueError(f"there is no such prior; {nearest(prior, list(PRIOR_NAMES))}")
+        return prior
+
+
+Spec = float | str | dict[str, Any]
+"""A number, a text such as "(2.0 +- 0.5)e26", or a table such as {low = 1, high = 2}."""
+
+
+class OutgassingTable(Table):
+    """``[[outgassing]]``: one species that leaves the nucleus and pushes it.
+
+    Rate, speed and collimation take a number, a text with an uncertainty, or a table.
+    """
+
+    species: str = Field(default="H2O", description="Formula, which gives the molecular mass.")
+    rate: Spec = Field(description="Production, molecules/s unless a unit stands beside it.")
+    at: float | str = Field(description="Heliocentric distance at which the rate holds, au.")
+    speed: Spec | None = Field(
+        default=None, description="Outflow speed, km/s, or the name of a law; default 0.85 r^-0.5."
+    )
+    collimation: Spec | None = Field(
+        default=None, description="Momentum not cancelled: 0 even, 1 a beam; default about 0.5."
+    )
+
+    def given(self) -> dict[str, Any]:
+        """The keys that were given, as `Outgassing.from_dict` takes them."""
+        return self.model_dump(exclude_none=True)
+
+    @model_validator(mode="after")
+    def _sound(self) -> Self:
+        _as_value_error(Outgassing.from_dict, self.given())
+        return self
+
+
+class NucleusTable(Table):
+    """``[nucleus]``: what is assumed about the body."""
+
+    density: Spec = Field(
+        default=500.0,
+        description="Bulk density, kg/m3; about 500 is common practice for comet nuclei.",
+    )
+    H: float | None = Field(default=None, description="Absolute magnitude of the bare nucleus.")
+    albedo: Annotated[float, Field(gt=0.0, le=1.0)] | None = Field(
+        default=None, description="Geometric albedo, for the photometric diameter."
+    )
+
+
+class OutputTable(Table):
+    """``[output]``: where the results go."""
+
+    folder: Path | None = Field(
+        default=None, description="Output folder; out/<name of the case file> unless given."
+    )
+    figures: Literal["png", "pdf"] = Field(default="png", description="Format of the figures.")
+
+
+class Case(Table):
+    """Every choice of one analysis.
+
+    Read one with `read_case`; ``str(case)`` lists the choices, ``case.to_dict()`` is what the
+    record keeps.
+    """
+
+    object: ObjectTable = ObjectTable()
+    arc: ArcTable
+    errors: ErrorsTable = ErrorsTable()
+    forces: ForcesTable = ForcesTable()
+    orbit: OrbitTable | None = None
+    thrust: ThrustTable = ThrustTable()
+    fit: FitTable = FitTable()
+    detection: DetectionTable = DetectionTable()
+    sampling: SamplingTable = SamplingTable()
+    outgassing: tuple[OutgassingTable, ...] = ()
+    nucleus: NucleusTable = NucleusTable()
+    output: OutputTable = OutputTable()
+
+    def own_stations(self) -> dict[str, dict[str, Any]]:
+        """The user's own stations, as `read_arc` takes them."""
+        return {code: table.model_dump() for code, table in self.arc.stations.items()}
+
+    def budget(self) -> Outgassing | None:
+        """The outgassing budget, or None when the case gives none."""
+        if not self.outgassing:
+            return None
+        first, *others = (table.given() for table in self.outgassing)
+        return Outgassing.from_dict({**first, "more": others})
+
+    def __str__(self) -> str:
+        lines = []
+        for table, choices in self.to_dict().items():
+            lines.append(f"[{table}]")
+            rows = choices if isinstance(choices, list) else [choices or {}]
+            lines += [f"  {key} = {value}" for row in rows for key, value in row.items()]
+        return "\n".join(lines)
+
+    def to_dict(self) -> dict[str, Any]:
+        """All choices, defaults included, as JSON-able values."""
+        return self.model_dump(mode="json")
+
+
+Model = TypeVar("Model", bound=BaseModel)
+
+
+def read_toml(path: str | Path, model: type[Model]) -> Model:
+    """Read a TOML file into a pydantic model, every fault told as a sentence.
+
+    Raises
+    ------
+    CaseError
+        When the file cannot be read, is not TOML, or holds an unknown or impossible choice.
+    """
+    path = Path(path)
+    try:
+        text = path.read_bytes().decode("utf-8")
+    except OSError as error:
+        reason = error.strerror or str(error)
+        raise CaseError(
+            f"{path} cannot be read: {reason}; give the path of a TOML file."
+        ) from error
+    except UnicodeDecodeError as error:
+        raise CaseError(
+            f"{path} is not a TOML file: byte {error.start} is not UTF-8 text."
+        ) from error
+    try:
+        content = tomllib.loads(text)
+    except tomllib.TOMLDecodeError as error:
+        raise CaseError(f"{path} is not valid TOML: {_lower_first(str(error))}.") from error
+    if not content:
+        raise CaseError(f"{path} is empty; it must hold at least {_required_keys(model)}.")
+    try:
+        return model.model_validate(content)
+    except ValidationError as error:
+        problems = [_sentence(path, text, model, dict(fault)) for fault in error.errors()]
+        more = f"  ({len(problems) - 1} more: {' '.join(problems[1:])})" if problems[1:] else ""
+        raise CaseError(problems[0] + more, problems=problems) from error
+
+
+def read_case(path: str | Path) -> Case:
+    """Read and validate a case file.
+
+    Parameters
+    ----------
+    path : path of a TOML file
+
+    Returns
+    -------
+    Case
+        With the paths in it made absolute.
+
+    Raises
+    ------
+    CaseError
+        One sentence with file, line, table and key, and the nearest right key.
+    """
+    case = read_toml(path, Case)
+    path = Path(path)
+    base = path.resolve().parent
+    folder = case.output.folder or Path("out") / path.stem
+    return case.model_copy(
+        update={
+            "arc": case.arc.model_copy(update={"file": base / case.arc.file}),
+            "output": case.output.model_copy(update={"folder": base / folder}),
+        }
+    )
+
+
+def sha256_of(path: str | Path) -> str:
+    """SHA-256 of a file's bytes, as 64 hexadecimal digits."""
+    return hashlib.sha256(Path(path).read_bytes()).hexdigest()
+
+
+def _lower_first(text: str) -> str:
+    return text[:1].lower() + text[1:]
+
+
+def _required_keys(model: type[BaseModel]) -> str:
+    names = [name for name, field in model.model_fields.items() if field.is_required()]
+    return " and ".join(f"[{name}]" for name in names) or "one table"
+
+
+def _model_at(model: type[BaseModel], loc: list[Any]) -> type[BaseModel] | None:
+    """The model of the table that a location of pydantic lies in."""
+    current: type[BaseModel] | None = model
+    for part in loc:
+        if isinstance(part, int) or current is None:
+            continue
+        field = current.model_fields.get(part)
+        if field is None:
+            return None
+        current = next(iter(_models_in(field.annotation)), None)
+    return current
+
+
+def _models_in(annotation: Any) -> list[type[BaseModel]]:
+    """Pydantic models mentioned anywhere in a type annotation."""
+    if isinstance(annotation, type) and issubclass(annotation, BaseModel):
+        return [annotation]
+    found = []
+    for part in getattr(annotation, "__args__", ()):
+        found += _models_in(part)
+    return found
+
+
+def _line_of(text: str, loc: list[Any]) -> int | None:
+    """Line (from 1) where a key of a TOML text stands, or else the head of its table."""
+    names = tuple(part for part in loc if isinstance(part, str))
+    index = loc[1] if len(loc) > 1 and isinstance(loc[1], int) else 0
+    head: tuple[str, ...] = ()
+    seen: Counter[tuple[str, ...]] = Counter()
+    parent = None
+    for number, line in enumerate(text.splitlines(), start=1):
+        opened = re.match(r"\s*\[\[?\s*([^\[\]=]+?)\s*\]\]?\s*(#.*)?$", line)
+        key = re.match(r"\s*([\w.\"' -]+?)\s*=", line)
+        if opened:
+            head = _dotted(opened.group(1))
+            seen[head] += 1
+            here = head
+        elif key:
+            here = head + _dotted(key.group(1))
+        else:
+            continue
+        if not head or seen[head] == index + 1:
+            if here == names:
+                return number
+            if here == names[:-1]:
+                parent = number
+    return parent
+
+
+def _dotted(text: str) -> tuple[str, ...]:
+    return tuple(part.strip("\"' ") for part in text.split("."))
+
+
+def _sentence(path: Path, text: str, model: type[BaseModel], fault: dict[str, Any]) -> str:
+    """One fault that pydantic found, as a sentence with file, line, table and key."""
+    loc = [part for part in fault["loc"] if not str(part).startswith("function-")]
+    line = _line_of(text, loc)
+    where = f"{path}, line {line}" if line else f"{path}"
+    names = [part for part in loc if isinstance(part, str)]
+    table = f"[{'.'.join(names[:-1])}] " if len(names) > 1 else ""
+    key = names[-1] if names else "the file"
+    kind, given = fault["type"], fault.get("input")
+    if kind == "extra_forbidden":
+        home = _model_at(model, loc[:-1]) or model
+        noun = "table" if isinstance(given, dict | list) else "key"
+        holder = f"{table}has no" if table else "there is no"
+        return f"{where}: {holder} {noun} {key!r}; {nearest(key, list(home.model_fields))}"
+    if kind == "missing":
+        return f"{where}: {table}{key} is missing and has no default."
+    message = fault["msg"].removeprefix("Value error, ")
+    message = re.sub(r"^(Input|String|List|Tuple|Value) should ", "must ", message)
+    message = _lower_first(message)
+    shown = "" if isinstance(given, dict) else f" = {given!r}"
+    return f"{where}: {table}{key}{shown}: {message.rstrip('.')}."

@@ -1,0 +1,260 @@
+"""The command line: it parses, calls one function, and prints the text that comes back.
+
+May import errors and the public names of ngbound, which are loaded only when a verb needs them, so
+that ``ngbound --help`` stays quick.
+"""
+
+import functools
+import json
+import math
+import sys
+import warnings
+from collections.abc import Callable
+from pathlib import Path
+from typing import IO, Any
+
+import click
+
+import ngbound as ng
+from ngbound.errors import NgboundError, NgboundWarning
+
+INTERRUPTED = 130
+"""Exit status after Ctrl-C, as shells have it (128 + SIGINT)."""
+
+
+class Sentence(click.ClickException):
+    """An end of the program that is told in one sentence on stderr."""
+
+    def __init__(self, message: str, exit_code: int) -> None:
+        super().__init__(message)
+        self.exit_code = exit_code
+
+    def show(self, file: IO[Any] | None = None) -> None:
+        click.echo(f"ngbound: {self.format_message()}", file=file or sys.stderr)
+
+
+class Verbs(click.Group):
+    """The group of verbs; every expected failure of a verb becomes a sentence and a status."""
+
+    def invoke(self, ctx: click.Context) -> Any:
+        try:
+            with warnings.catch_warnings():
+                warnings.showwarning = _show_warning
+                warnings.simplefilter("once", NgboundWarning)
+                return super().invoke(ctx)
+        except NgboundError as error:
+            raise Sentence(str(error), error.exit_status) from error
+        except BrokenPipeError:
+            raise
+        except OSError as error:
+            name = f"{error.filename}: " if error.filename else ""
+            raise Sentence(
+                f"{name}{error.strerror or error}; choose a place that can be read and written.",
+                NgboundError.exit_status,
+            ) from error
+        except MemoryError as error:
+            raise Sentence(
+                "There is not enough memory for this analysis; try a shorter arc, or fewer "
+                "[sampling] walkers and steps.",
+                NgboundError.exit_status,
+            ) from error
+        except KeyboardInterrupt as error:
+            raise Sentence(
+                "Interrupted; no record was written.", INTERRUPTED
+            ) from error
+
+
+def _show_warning(
+    message: Warning | str,
+    category: type[Warning],
+    filename: str,
+    lineno: int,
+    file: Any = None,
+    line: str | None = None,
+) -> None:
+    """Warnings of ngbound as a sentence, all others as Python shows them, on stderr."""
+    if issubclass(category, NgboundWarning):
+        text = f"ngbound: warning: {message}"
+    else:
+        text = warnings.formatwarning(message, category, filename, lineno, line).rstrip()
+    click.echo(text, err=True)
+
+
+def _finite(value: Any) -> Any:
+    """The same JSON-able value with null where a number is not finite (JSON has no NaN)."""
+    if isinstance(value, dict):
+        return {key: _finite(item) for key, item in value.items()}
+    if isinstance(value, list | tuple):
+        return [_finite(item) for item in value]
+    if isinstance(value, float) and not math.isfinite(value):
+        return None
+    return value
+
+
+def _print(result: Any, as_json: bool) -> None:
+    """Print a result as text, or as one JSON document."""
+    if as_json:
+        click.echo(json.dumps(_finite(result.to_dict()), indent=2, allow_nan=False))
+    else:
+        click.echo(str(result))
+
+
+def _step(help_text: str, **settings: Any) -> Callable[[Callable[..., Any]], click.Command]:
+    """Register a verb that works on a case file or an arc, with the options all of them have."""
+
+    def register(function: Callable[..., Any]) -> click.Command:
+        @functools.wraps(function)
+        def verb(input_file: Path, as_json: bool, progress: bool | None, **options: Any) -> None:
+            show = sys.stderr.isatty() if progress is None else progress
+            _print(function(input_file, progress=show, **options), as_json)
+
+        command = click.argument("input_file", metavar="INPUT", type=click.Path(path_type=Path))(
+            verb
+        )
+        command = click.option(
+            "--json", "as_json", is_flag=True, help="Print one JSON document instead of text."
+        )(command)
+        command = click.option(
+            "--progress/--no-progress",
+            default=None,
+            help="Show progress on stderr; by default only on a terminal.",
+        )(command)
+        return main.command(help=help_text, **settings)(command)
+
+    return register
+
+
+LAW = click.option(
+    "--law", metavar="LAW", help="Thrust law, instead of the one in the case file."
+)
+COMPONENTS = click.option(
+    "--components", metavar="RTN", help="Free thrust components, any of R, T, N in this order."
+)
+SEED = click.option(
+    "--seed", type=click.IntRange(min=0), help="Seed of every random number of the analysis."
+)
+OBJECT = click.option(
+    "--object", "object_name", metavar="NAME", help="Which object, when the arc holds several."
+)
+
+
+@click.group(cls=Verbs, context_settings={"help_option_names": ["-h", "--help"]})
+@click.version_option(ng.__version__, prog_name="ngbound")
+def main() -> None:
+    """Find out how large a non-gravitational acceleration an arc of astrometry would have shown,
+    and what mass that demands.
+
+    INPUT is a case file (TOML), or an arc of observations (ADES PSV, ADES XML or 80-column), for
+    which every choice then has its default.
+
+    The exit status is 0 when the work was done, 1 when the analysis could not be done, and 2 when
+    the input or the usage is wrong; the reason is one sentence on stderr.
+    """
+
+
+@_step(
+    "Do the whole job: fit with and without thrust, threshold, limits, mass, figure and record.\n\n"
+    "The results go into the output folder of the case, the record last, so that an interrupted "
+    "run leaves no half-written record.\n\n"
+    "Example: ngbound run data_demo/quiet.toml",
+    name="run",
+)
+@click.option(
+    "-o",
+    "--output",
+    type=click.Path(path_type=Path),
+    help="Output folder, instead of the one in the case file.",
+)
+@SEED
+@LAW
+@COMPONENTS
+@OBJECT
+def run(input_file: Path, **options: Any) -> Any:
+    return ng.run_case(input_file, **options)
+
+
+@_step(
+    "Tell what is in the arc at a glance: stations, catalogues, span, gaps, errors, doubts.\n\n"
+    "Example: ngbound inspect data_demo/quiet.psv",
+    name="inspect",
+)
+@OBJECT
+def inspect(input_file: Path, **options: Any) -> Any:
+    return ng.inspect_case(input_file, **options)
+
+
+@_step(
+    "Fit the orbit by gravity alone and with thrust, and compare the two.\n\n"
+    "Example: ngbound fit data_demo/pushed.psv --components RT",
+    name="fit",
+)
+@LAW
+@COMPONENTS
+@OBJECT
+def fit(input_file: Path, **options: Any) -> Any:
+    return ng.fit_case(input_file, **options)
+
+
+@_step(
+    "State the detection threshold of the arc and the upper limit on the thrust.\n\n"
+    "Example: ngbound limit data_demo/quiet.psv --seed 7",
+    name="limit",
+)
+@SEED
+@LAW
+@COMPONENTS
+@OBJECT
+def limit(input_file: Path, **options: Any) -> Any:
+    return ng.limit_case(input_file, **options)
+
+
+@_step(
+    "State the mass and the diameter that the limit demands.\n\n"
+    "The outgassing budget stands in the case file, in one [[outgassing]] table for each species.\n\n"
+    "Example: ngbound mass data_demo/quiet.toml",
+    name="mass",
+)
+@SEED
+@LAW
+@COMPONENTS
+@OBJECT
+def mass(input_file: Path, **options: Any) -> Any:
+    return ng.mass_case(input_file, **options)
+
+
+@_step(
+    "Draw the residual fan: residuals along and across the track, with the departures that "
+    "a ladder of accelerations would have left.\n\n"
+    "Example: ngbound fan data_demo/quiet.toml -o fan.pdf",
+    name="fan",
+)
+@click.option(
+    "-o",
+    "--output",
+    type=click.Path(path_type=Path, dir_okay=False),
+    default=Path("residual_fan.png"),
+    show_default=True,
+    help="File of the figure; the ending tells the format.",
+)
+@LAW
+@COMPONENTS
+@OBJECT
+def fan(input_file: Path, **options: Any) -> Any:
+    return ng.fan_case(input_file, **options)
+
+
+@main.command(
+    name="simulate",
+    help="Make an invented arc from a recipe (TOML) and write it as ADES PSV.\n\n"
+    "Example: ngbound simulate data_demo/quiet_recipe.toml -o quiet.psv",
+)
+@click.argument("recipe", metavar="RECIPE", type=click.Path(path_type=Path))
+@click.option(
+    "-o",
+    "--output",
+    type=click.Path(path_type=Path, dir_okay=False),
+    help="Arc file to write; the name of the recipe with the ending .psv unless given.",
+)
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON document instead of text.")
+def simulate(recipe: Path, output: Path | None, as_json: bool) -> None:
+    _print(ng.simulate_arc(recipe, output=output), as_json)

@@ -1,0 +1,230 @@
+"""Differential correction of an orbit, with or without thrust.
+
+Imports numpy, scipy, constants, errors, arc, sky, motion. The normal equations of C. F. Gauss 1809, Theoria Motus, solved by
+a singular value decomposition of the whitened, column-scaled design matrix, damped after K. Levenberg 1944,
+Q. Appl. Math. 2, 164 and D. W. Marquardt 1963, SIAM J. 11, 431.
+"""
+
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ngbound.arc import Noise
+from ngbound.constants import C_AU_D
+from ngbound.errors import FitError, PropagationError
+from ngbound.motion import (
+    ForceModel,
+    Partials,
+    Records,
+    Sight,
+    Thrust,
+    Track,
+    design_matrix,
+    integrate_track,
+    partials_along,
+    residuals,
+    see,
+)
+
+Floats = NDArray[np.float64]
+Bools = NDArray[np.bool_]
+
+STATE_NAMES = ("x", "y", "z", "vx", "vy", "vz")
+MOVED_ENOUGH = 1e-3
+CHI2_SETTLED = 1e-4
+MAX_SWEEPS = 40
+MAX_DAMPING = 1e12
+UNDETERMINED = 1e-12
+
+
+@dataclass(frozen=True, eq=False)
+class Linearised:
+    """An orbit with everything that follows from it at the records.
+
+    Attributes
+    ----------
+    theta : (p,) state at the epoch (au, au/d), then the free thrust components (au/d2)
+    track, sight, partials
+    seen : (n, 2) observed minus computed, radians, all records
+    design : (n, 2, p) partials of the computed place, radians per unit
+    chi2 : of the kept records
+    """
+
+    theta: Floats
+    track: Track = field(repr=False)
+    sight: Sight = field(repr=False)
+    partials: Partials = field(repr=False)
+    seen: Floats = field(repr=False)
+    design: Floats = field(repr=False)
+    chi2: float
+
+
+@dataclass(frozen=True, eq=False)
+class Correction:
+    """A converged differential correction.
+
+    Attributes
+    ----------
+    at : Linearised
+    normal, cov : (p, p) normal matrix of the kept records and its inverse
+    sweeps : int
+    condition : float
+        Largest over smallest singular value of the scaled design.
+    """
+
+    at: Linearised
+    normal: Floats
+    cov: Floats
+    sweeps: int
+    condition: float
+
+
+def thrust_of(theta: Floats, thrust: Thrust | None, components: str) -> Thrust | None:
+    """The thrust with the amounts of a parameter vector."""
+    if thrust is None:
+        return None
+    amounts = thrust.amounts_au_d2.copy()
+    for i, c in enumerate(components):
+        amounts["RTN".index(c)] = theta[6 + i]
+    return thrust.with_amounts(amounts)
+
+
+def parameter_names(components: str) -> tuple[str, ...]:
+    """Names of the parameters of a fit."""
+    return STATE_NAMES + tuple(f"A{'RTN'.index(c) + 1}" for c in components)
+
+
+def light_margin_d(records: Records, state: Floats) -> float:
+    """Days of light time that the span must hold before the first record, with room to spare."""
+    far = np.linalg.norm(records.observer_au, axis=1).max() + np.linalg.norm(state[:3])
+    return 3.0 * far / C_AU_D + 0.5
+
+
+def linearise(
+    theta: Floats,
+    epoch_d: float,
+    records: Records,
+    noise: Noise,
+    keep: Bools,
+    thrust: Thrust | None,
+    components: str,
+    forces: ForceModel,
+) -> Linearised:
+    """Integrate a parameter vector and take residuals and partials at every record."""
+    push = thrust_of(theta, thrust, components)
+    start = float(records.tdb_d.min()) - light_margin_d(records, theta)
+    track = integrate_track(epoch_d, theta[:6], start, float(records.tdb_d.max()), push, forces)
+    sight = see(track, records)
+    seen = residuals(sight, records)
+    partials = partials_along(track, parameter_names(components))
+    design = design_matrix(sight, records, partials)
+    chi2 = float(np.sum(noise.whiten(seen[keep].ravel()) ** 2))
+    return Linearised(theta, track, sight, partials, seen, design, chi2)
+
+
+def _solve(white: Floats, miss: Floats, damping: float) -> tuple[Floats, Floats, Floats]:
+    """Step, singular values and the scale of the columns of a damped linear problem."""
+    scale = np.linalg.norm(white, axis=0)
+    scale[scale == 0.0] = 1.0
+    u, s, vt = np.linalg.svd(white / scale, full_matrices=False)
+    gain = s / (s**2 + damping * s[0] ** 2) if damping > 0.0 else 1.0 / np.maximum(s, s[0] * 1e-15)
+    return (vt.T @ (gain * (u.T @ miss))) / scale, s, scale
+
+
+def _covariance(white: Floats) -> tuple[Floats, Floats, float]:
+    scale = np.linalg.norm(white, axis=0)
+    scale[scale == 0.0] = 1.0
+    _, s, vt = np.linalg.svd(white / scale, full_matrices=False)
+    normal = white.T @ white
+    half = vt.T / np.maximum(s, s[0] * 1e-15)
+    cov = (half @ half.T) / np.outer(scale, scale)
+    return normal, cov, float(s[0] / max(s[-1], 1e-300))
+
+
+def differential_correction(
+    theta: Floats,
+    epoch_d: float,
+    records: Records,
+    noise: Noise,
+    keep: Bools,
+    thrust: Thrust | None,
+    components: str,
+    forces: ForceModel,
+    max_sweeps: int = MAX_SWEEPS,
+) -> Correction:
+    """Correct a parameter vector until nothing moves.
+
+    Parameters
+    ----------
+    theta : (p,) first guess
+    noise : Noise of all records; only ``keep`` enters the fit
+
+    Raises
+    ------
+    FitError
+        No convergence, too few records, or an orbit that the records do not determine.
+    """
+    theta = np.array(theta, dtype=float)
+    if 2 * int(keep.sum()) < theta.size:
+        raise FitError(
+            f"{int(keep.sum())} observations give {2 * int(keep.sum())} numbers, fewer than the "
+            f"{theta.size} parameters of the fit; observe longer or fit fewer thrust components.",
+            theta=theta,
+        )
+    kept = noise.mask(keep)
+
+    def at(vector: Floats) -> Linearised:
+        return linearise(vector, epoch_d, records, kept, keep, thrust, components, forces)
+
+    try:
+        here = at(theta)
+    except PropagationError as error:
+        raise FitError(f"The first guess of the orbit cannot be used: {error}", theta=theta) from error
+    damping = 0.0
+    for sweep in range(1, max_sweeps + 1):
+        rows = here.design[keep].reshape(-1, theta.size)
+        white = kept.whiten(rows)
+        miss = kept.whiten(here.seen[keep].ravel())
+        while True:
+            step, s, _ = _solve(white, miss, damping)
+            size = float(np.linalg.norm(white @ step))
+            expected = here.chi2 - float(np.sum((miss - white @ step) ** 2))
+            try:
+                there = at(here.theta + step)
+            except PropagationError:
+                there = None
+            if there is not None and there.chi2 <= here.chi2 + CHI2_SETTLED:
+                break
+            if size < MOVED_ENOUGH:
+                there = here
+                break
+            damping = max(damping * 10.0, 1e-9)
+            if damping > MAX_DAMPING:
+                raise FitError(
+                    "The differential correction found no step that lowers the residuals; give a "
+                    "better first orbit, or shorten the arc.",
+                    theta=here.theta,
+                    chi2=here.chi2,
+                )
+        settled = size < MOVED_ENOUGH or (
+            damping == 0.0 and abs(here.chi2 - there.chi2) < CHI2_SETTLED and expected < CHI2_SETTLED
+        )
+        damping = damping * 0.1 if damping > 1e-9 else 0.0
+        here = there
+        if settled and damping == 0.0:
+            rows = here.design[keep].reshape(-1, theta.size)
+            normal, cov, condition = _covariance(kept.whiten(rows))
+            if s[-1] < UNDETERMINED * s[0]:
+                raise FitError(
+                    "These observations do not determine the orbit: some change of it moves no "
+                    "observation. Add observations over a longer time, or fit fewer thrust components.",
+                    theta=here.theta,
+                )
+            return Correction(here, normal, cov, sweep, condition)
+    raise FitError(
+        f"The differential correction did not converge in {max_sweeps} steps (chi2 = {here.chi2:.6g}); "
+        "give a better first orbit, or look for records of another object.",
+        theta=here.theta,
+        chi2=here.chi2,
+    )

@@ -1,0 +1,72 @@
+"""The residual table of a fit; imports numpy, pandas, constants, arc, sky, motion."""
+
+import numpy as np
+import pandas as pd
+from numpy.typing import NDArray
+
+from ngbound.arc import Arc, Noise
+from ngbound.constants import ARCSEC_RAD
+from ngbound.motion import Records, Sight
+from ngbound.sky import Observers, load_ephemeris, tdb_d_to_iso
+
+Floats = NDArray[np.float64]
+Bools = NDArray[np.bool_]
+
+
+def motion_rad_d(sight: Sight, records: Records, observers: Observers) -> Floats:
+    """Apparent motion east and north, (n, 2) radians per day."""
+    relative = sight.speed_au_d - observers.velocity_au_d
+    distance = np.linalg.norm(sight.rho_au, axis=1)
+    return np.einsum("nij,nj->ni", records.basis[:, :2, :], relative) / distance[:, None]
+
+
+def residual_table(
+    used: Arc,
+    records: Records,
+    observers: Observers,
+    sight: Sight,
+    seen: Floats,
+    noise: Noise,
+    keep: Bools,
+    chi2: Floats,
+    epoch_d: float,
+) -> pd.DataFrame:
+    """One row per observation, in order of time.
+
+    Returns
+    -------
+    pandas.DataFrame
+        tdb_d, utc, stn, mode, astCat, line; ra_arcsec (times cos dec) and dec_arcsec, observed minus computed; their
+        sigmas; along_arcsec and across_arcsec, the residual along and 90 degrees (towards north from
+        east, that is to the left) off the apparent motion; chi, the root of the record's chi2; keep;
+        motion_ra_arcsec_h, motion_dec_arcsec_h; r_au and delta_au.
+    """
+    motion = motion_rad_d(sight, records, observers)
+    speed = np.linalg.norm(motion, axis=1)
+    ahead = motion / np.where(speed > 0.0, speed, 1.0)[:, None]
+    arcsec = seen / ARCSEC_RAD
+    emitted = epoch_d + sight.tau_d
+    sun = load_ephemeris().position_au("sun", emitted)
+    body = sight.rho_au + records.observer_au
+    return pd.DataFrame(
+        {
+            "tdb_d": records.tdb_d,
+            "utc": np.atleast_1d(tdb_d_to_iso(records.tdb_d, scale="utc")),
+            "stn": used.table["stn"].to_numpy(),
+            "mode": used.table["mode"].to_numpy(),
+            "astCat": used.table["astCat"].to_numpy(),
+            "line": used.table["line"].to_numpy(),
+            "ra_arcsec": arcsec[:, 0],
+            "dec_arcsec": arcsec[:, 1],
+            "sigma_ra_arcsec": noise.sigma_ra_arcsec,
+            "sigma_dec_arcsec": noise.sigma_dec_arcsec,
+            "along_arcsec": np.einsum("ni,ni->n", arcsec, ahead),
+            "across_arcsec": arcsec[:, 1] * ahead[:, 0] - arcsec[:, 0] * ahead[:, 1],
+            "chi": np.sqrt(np.maximum(chi2, 0.0)),
+            "keep": keep,
+            "motion_ra_arcsec_h": motion[:, 0] / ARCSEC_RAD / 24.0,
+            "motion_dec_arcsec_h": motion[:, 1] / ARCSEC_RAD / 24.0,
+            "r_au": np.linalg.norm(body - sun, axis=1),
+            "delta_au": np.linalg.norm(sight.rho_au, axis=1),
+        }
+    )

@@ -1,0 +1,424 @@
+"""Fit: an orbit with its covariance and residuals, and the comparison of two; imports arc, sky, motion and this room."""
+
+import math
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from functools import cached_property
+from typing import Any
+
+import astropy.units as u
+import numpy as np
+import pandas as pd
+from numpy.typing import ArrayLike, NDArray
+from scipy import stats
+
+from ngbound.arc import Arc, ErrorModel, Noise
+from ngbound.constants import ARCSEC_RAD
+from ngbound.errors import FitError
+from ngbound.fit.least_squares import Correction, parameter_names, thrust_of
+from ngbound.fit.orbit_search import Converged, at_epoch, find_orbit, middle_epoch, settle
+from ngbound.fit.outliers import residual_chi2
+from ngbound.fit.residuals import motion_rad_d, residual_table
+from ngbound.motion import ForceModel, Neighbourhood, Orbit, Records, Thrust
+from ngbound.sky import Observers, load_ephemeris, observer_states
+
+Floats = NDArray[np.float64]
+Bools = NDArray[np.bool_]
+AU_PER_D2 = u.au / u.day**2
+MIN_OBSERVATIONS = 3
+
+
+@dataclass(frozen=True, eq=False)
+class Fit:
+    """An orbit fitted to an arc.
+
+    Attributes
+    ----------
+    arc, used : Arc
+        The whole arc, and its usable observations in order of time (n rows).
+    error_model : ErrorModel
+    noise : Noise
+        Of the used observations, rejected ones included.
+    orbit : Orbit
+        With the fitted thrust in it.
+    components : str
+        Fitted thrust components, "" for none.
+    names : tuple of str, (p,)
+    theta : (p,) array
+        Barycentric state at the epoch (au, au/d), then thrust (au/d2).
+    theta_cov, normal : (p, p) arrays
+        Covariance and normal matrix, without priors and without rescaling of the noise.
+    chi2 : float
+        Of the kept observations.
+    keep : (n,) bool
+        False where the outlier rule rejected.
+    design : (2n, p) array
+        Partials of the computed place, radians per unit; rows RA cos(dec) and Dec by turns.
+    seen : (n, 2) array
+        Observed minus computed, radians.
+    """
+
+    arc: Arc = field(repr=False)
+    used: Arc = field(repr=False)
+    error_model: ErrorModel = field(repr=False)
+    noise: Noise = field(repr=False)
+    orbit: Orbit
+    components: str
+    names: tuple[str, ...]
+    theta: Floats
+    theta_cov: Floats = field(repr=False)
+    normal: Floats = field(repr=False)
+    chi2: float
+    keep: Bools = field(repr=False)
+    design: Floats = field(repr=False)
+    seen: Floats = field(repr=False)
+    records: Records = field(repr=False)
+    observers: Observers = field(repr=False)
+    correction: Correction = field(repr=False)
+    rounds: int
+
+    n_state = 6
+
+    @property
+    def thrust(self) -> Thrust | None:
+        """The fitted thrust, or None."""
+        return self.orbit.thrust
+
+    @property
+    def n_obs(self) -> int:
+        """Observations in the fit."""
+        return int(self.keep.sum())
+
+    @property
+    def n_rejected(self) -> int:
+        """Observations the outlier rule rejected."""
+        return int((~self.keep).sum())
+
+    @property
+    def dof(self) -> int:
+        """Degrees of freedom: two per kept observation less the parameters."""
+        return 2 * self.n_obs - self.theta.size
+
+    @property
+    def reduced_chi2(self) -> float:
+        """chi2 over degrees of freedom; nan when there are none."""
+        return self.chi2 / self.dof if self.dof > 0 else math.nan
+
+    @property
+    def rms_arcsec(self) -> float:
+        """Root mean square of both coordinates of the kept residuals, arcsec."""
+        return float(np.sqrt(np.mean(self.seen[self.keep] ** 2)) / ARCSEC_RAD)
+
+    @property
+    def weighted_rms_arcsec(self) -> float:
+        """Root of the mean of the squared kept residuals, weighted by 1/sigma^2, arcsec."""
+        sigma = np.stack([self.noise.sigma_ra_arcsec, self.noise.sigma_dec_arcsec], axis=1)[self.keep]
+        weight = sigma**-2
+        return float(np.sqrt(np.sum(weight * (self.seen[self.keep] / ARCSEC_RAD) ** 2) / weight.sum()))
+
+    @property
+    def A(self) -> u.Quantity:
+        """Fitted thrust components in the order of ``components``, au/d2, (k,)."""
+        return self.theta[6:] * AU_PER_D2
+
+    @property
+    def A_cov(self) -> u.Quantity:
+        """Their covariance, (k, k)."""
+        return self.theta_cov[6:, 6:] * AU_PER_D2**2
+
+    @property
+    def A_sigma(self) -> u.Quantity:
+        """Their standard deviations, (k,)."""
+        return np.sqrt(np.diag(self.theta_cov)[6:]) * AU_PER_D2
+
+    @property
+    def significance(self) -> float:
+        """sqrt(A' C^-1 A) of the fitted thrust; 0 without thrust."""
+        if not self.components:
+            return 0.0
+        a = self.theta[6:]
+        scale = np.sqrt(np.diag(self.theta_cov)[6:])
+        c = self.theta_cov[6:, 6:] / np.outer(scale, scale)
+        return float(np.sqrt((a / scale) @ np.linalg.solve(c, a / scale)))
+
+    @cached_property
+    def residuals(self) -> pd.DataFrame:
+        """The residual table; columns in `ngbound.fit.residuals.residual_table`."""
+        chi2 = residual_chi2(
+            self.seen, self.design.reshape(-1, 2, self.theta.size), self.theta_cov, self.noise, self.keep
+        )
+        return residual_table(
+            self.used, self.records, self.observers, self.correction.at.sight, self.seen, self.noise,
+            self.keep, chi2, self.orbit.epoch_tdb_d,
+        )
+
+    @cached_property
+    def neighbourhood(self) -> Neighbourhood:
+        """Tables for the exact chi2 of many nearby orbits, kept observations only."""
+        return Neighbourhood.around(
+            self.correction.at.track,
+            self.records.subset(self.keep),
+            self.noise.mask(self.keep).factors(),
+            self.thrust,
+            self.components,
+            self.orbit.forces,
+        )
+
+    def chi2_many(self, thetas: ArrayLike) -> Floats:
+        """Exact chi2 (m,) of parameter vectors (m, p); inf where an orbit cannot be integrated."""
+        return self.neighbourhood.chi2(thetas)
+
+    @property
+    def distance_range_au(self) -> tuple[float, float]:
+        """Smallest and largest heliocentric distance at the used observations."""
+        r = self.residuals["r_au"]
+        return float(r.min()), float(r.max())
+
+    def to_dict(self) -> dict[str, Any]:
+        """Plain values for the record."""
+        return {
+            "orbit": self.orbit.to_dict(),
+            "components": self.components,
+            "names": list(self.names),
+            "theta": self.theta.tolist(),
+            "theta_cov": self.theta_cov.tolist(),
+            "chi2": self.chi2,
+            "dof": self.dof,
+            "n_obs": self.n_obs,
+            "n_rejected": self.n_rejected,
+            "rms_arcsec": self.rms_arcsec,
+            "weighted_rms_arcsec": self.weighted_rms_arcsec,
+            "A_au_d2": self.theta[6:].tolist(),
+            "A_sigma_au_d2": np.sqrt(np.diag(self.theta_cov)[6:]).tolist(),
+            "significance_sigma": self.significance,
+            "condition": self.correction.condition,
+        }
+
+    def __str__(self) -> str:
+        what = f"with {self.components} thrust" if self.components else "gravity only"
+        lines = [
+            f"Fit {what}: {self.n_obs} observations ({self.n_rejected} rejected), rms {self.rms_arcsec:.3f} arcsec, "
+            f"weighted {self.weighted_rms_arcsec:.3f} arcsec, chi2 {self.chi2:.2f} for {self.dof} degrees of freedom",
+        ]
+        for c, a, s in zip(self.components, self.theta[6:], np.sqrt(np.diag(self.theta_cov)[6:]), strict=True):
+            lines.append(
+                f"  A{'RTN'.index(c) + 1} ({c}) = {a:+.4g} +- {s:.2g} au/d2 ({a / s:+.1f} sigma)"
+            )
+        lines.append(str(self.orbit.elements()))
+        return "\n".join(lines)
+
+
+def fit_orbit(
+    arc: Arc,
+    thrust: Thrust | None = None,
+    error_model: ErrorModel | None = None,
+    initial: Orbit | Fit | None = None,
+    forces: ForceModel | None = None,
+    reject: bool = True,
+    epoch_tdb_d: float | None = None,
+    keep: ArrayLike | None = None,
+    progress: Callable[[str], None] | None = None,
+) -> Fit:
+    """Fit an orbit to an arc, by gravity alone or with thrust.
+
+    Parameters
+    ----------
+    arc : Arc
+    thrust : Thrust, optional
+        Its law, lag and window are taken as they are, its ``components`` are estimated.
+    error_model : ErrorModel, optional
+    initial : Orbit or Fit, optional
+        First guess; found from the angles when absent.
+    forces : ForceModel, optional
+    reject : bool
+        Whether the outlier rule applies.
+    epoch_tdb_d : float, optional
+        Epoch of the fitted state; the middle of the arc by default.
+    keep : (n,) bool, optional
+        Observations to start with (with ``reject=False``: the ones to use).
+    progress : callable, optional
+        Is given a sentence now and then.
+
+    Raises
+    ------
+    FirstOrbitError, FitError, PropagationError
+    """
+    error_model = error_model or ErrorModel()
+    if isinstance(initial, Fit):
+        forces = forces or initial.orbit.forces
+        keep = initial.keep if keep is None else keep
+        initial = initial.orbit
+    forces = forces or (initial.forces if initial is not None else ForceModel())
+    used = arc.used
+    if len(used) < MIN_OBSERVATIONS:
+        raise FitError(
+            f"The arc of {arc.name} has {len(used)} usable observations; an orbit needs at least "
+            f"{MIN_OBSERVATIONS}. Add observations.",
+            arc=arc,
+        )
+    ephemeris = load_ephemeris()
+    observers = observer_states(used, ephemeris)
+    table = used.table
+    records = Records.from_angles(
+        observers.tdb_d, observers.position_au, table["ra_rad"].to_numpy(), table["dec_rad"].to_numpy()
+    )
+    noise = error_model.apply(used)
+    components = "" if thrust is None else thrust.components
+    mask = np.ones(len(used), dtype=bool) if keep is None else np.asarray(keep, dtype=bool).copy()
+    epoch = middle_epoch(records) if epoch_tdb_d is None else float(epoch_tdb_d)
+    if initial is None:
+        start = find_orbit(records, noise, forces, progress)
+        theta = at_epoch(start.correction.at.theta, start.epoch_d, epoch, None, forces)
+        mask = mask & start.keep
+        guess = thrust
+    else:
+        theta = at_epoch(initial.state_vector, initial.epoch_tdb_d, epoch, initial.thrust, forces)
+        guess = thrust
+        if thrust is not None and initial.thrust is not None:
+            guess = thrust.with_amounts(initial.thrust.amounts_au_d2)
+    free = ["RTN".index(c) for c in components]
+    amounts = np.zeros(3) if guess is None else guess.amounts_au_d2
+    theta = np.concatenate([theta[:6], amounts[free]])
+    found = settle(theta, epoch, records, noise, mask, guess, components, forces, reject)
+    # timing errors act along the motion, which is known only now
+    motion = motion_rad_d(found.correction.at.sight, records, observers) / ARCSEC_RAD / 86400.0
+    noise = error_model.apply(used, motion)
+    found = settle(
+        found.correction.at.theta, epoch, records, noise, found.keep, guess, components, forces, reject
+    )
+    return _as_fit(arc, used, error_model, noise, records, observers, found, guess, components, forces)
+
+
+def _as_fit(
+    arc: Arc,
+    used: Arc,
+    error_model: ErrorModel,
+    noise: Noise,
+    records: Records,
+    observers: Observers,
+    found: Converged,
+    thrust: Thrust | None,
+    components: str,
+    forces: ForceModel,
+) -> Fit:
+    at = found.correction.at
+    orbit = Orbit(found.epoch_d, at.theta[:6].copy(), thrust_of(at.theta, thrust, components), forces)
+    return Fit(
+        arc=arc,
+        used=used,
+        error_model=error_model,
+        noise=noise,
+        orbit=orbit,
+        components=components,
+        names=parameter_names(components),
+        theta=at.theta,
+        theta_cov=found.correction.cov,
+        normal=found.correction.normal,
+        chi2=at.chi2,
+        keep=found.keep,
+        design=at.design.reshape(-1, at.theta.size),
+        seen=at.seen,
+        records=records,
+        observers=observers,
+        correction=found.correction,
+        rounds=found.rounds,
+    )
+
+
+@dataclass(frozen=True)
+class Comparison:
+    """Two fits of the same observations, one with more parameters.
+
+    Attributes
+    ----------
+    delta_chi2 : float
+        How much the richer fit lowers chi2.
+    delta_dof : int
+    p_value : float
+        Probability of at least this much under the simpler hypothesis (chi2 with delta_dof).
+    delta_bic : float
+        BIC of the simpler less that of the richer: above 0 favours the richer
+        (G. Schwarz 1978, Ann. Statist. 6, 461).
+    n_obs : int
+        Observations both were fitted to for this comparison.
+    refitted : bool
+        Whether the outlier rule had kept different observations, so that both were fitted anew to common ones.
+    """
+
+    delta_chi2: float
+    delta_dof: int
+    p_value: float
+    delta_bic: float
+    n_obs: int
+    refitted: bool
+
+    @property
+    def sigma(self) -> float:
+        """The two-sided normal quantile of the p-value."""
+        return float(stats.norm.isf(max(self.p_value, 1e-300) / 2.0))
+
+    def to_dict(self) -> dict[str, Any]:
+        """Plain values."""
+        return {
+            "delta_chi2": self.delta_chi2,
+            "delta_dof": self.delta_dof,
+            "p_value": self.p_value,
+            "sigma": self.sigma,
+            "delta_bic": self.delta_bic,
+            "n_obs": self.n_obs,
+            "refitted": self.refitted,
+        }
+
+    def __str__(self) -> str:
+        favoured = "thrust" if self.delta_bic > 0 else "gravity alone"
+        return (
+            f"Thrust lowers chi2 by {self.delta_chi2:.2f} for {self.delta_dof} parameters (p = {self.p_value:.3g}); the BIC "
+            f"favours {favoured} by {abs(self.delta_bic):.1f}, over {self.n_obs} observations."
+        )
+
+
+def compare_fits(null: Fit, push: Fit) -> Comparison:
+    """Compare a fit with another that has more thrust components.
+
+    Where the outlier rule kept different observations, both are fitted anew to those that both kept.
+
+    Raises
+    ------
+    FitError
+        If the fits are of different arcs, or the second has no more parameters than the first.
+    """
+    if len(null.used) != len(push.used) or not np.array_equal(null.records.tdb_d, push.records.tdb_d):
+        raise FitError("The two fits are of different arcs and cannot be compared; fit the same arc twice.")
+    extra = push.theta.size - null.theta.size
+    if extra <= 0:
+        raise FitError(
+            f"The second fit must have more parameters than the first; it has {push.theta.size} and the "
+            f"first {null.theta.size}. Swap them?"
+        )
+    refitted = not np.array_equal(null.keep, push.keep)
+    if refitted:
+        both = null.keep & push.keep
+        null, push = (
+            fit_orbit(
+                f.arc,
+                f.thrust,
+                f.error_model,
+                initial=f.orbit,
+                forces=f.orbit.forces,
+                reject=False,
+                epoch_tdb_d=f.orbit.epoch_tdb_d,
+                keep=both,
+            )
+            for f in (null, push)
+        )
+    delta = null.chi2 - push.chi2
+    return Comparison(
+        delta,
+        extra,
+        float(stats.chi2.sf(max(delta, 0.0), extra)),
+        float(delta - extra * math.log(2 * push.n_obs)),
+        push.n_obs,
+        refitted,
+    )
+
+

@@ -1,0 +1,56 @@
+"""What this room needs to know of a fitted orbit; imports nothing of ngbound.
+
+Any object with these attributes will do: the fit of a real arc, or a linear problem written down
+by hand.
+"""
+
+from typing import Any, Protocol
+
+import numpy as np
+
+
+class ThrustFit(Protocol):
+    """A fitted orbit with ``k`` thrust components among its ``p`` parameters.
+
+    Attributes
+    ----------
+    components : str
+        Letters of the fitted thrust components, a subset of "RTN" in the order of ``theta``; "" if
+        none.
+    names : sequence of str, length p
+    theta : (p,) float
+        Orbit parameters (au, au/d), then the thrust (au/d2) from index ``n_state`` on.
+    normal : (p, p) float
+        Normal matrix (Fisher information) of ``theta`` for whitened residuals, without priors.
+    n_state : int
+        Number of orbit parameters that stand before the thrust.
+    chi2 : float
+        Weighted sum of squares at ``theta``.
+    dof : int
+        Number of residual components less ``p``.
+    """
+
+    @property
+    def components(self) -> str: ...
+
+    @property
+    def names(self) -> Any: ...
+
+    @property
+    def theta(self) -> np.ndarray: ...
+
+    @property
+    def normal(self) -> np.ndarray: ...
+
+    @property
+    def n_state(self) -> int: ...
+
+    @property
+    def chi2(self) -> float: ...
+
+    @property
+    def dof(self) -> int: ...
+
+    def chi2_many(self, thetas: np.ndarray, /) -> np.ndarray:
+        """Exact chi2 (m,) of many parameter vectors (m, p)."""
+        ...

@@ -1,0 +1,268 @@
+"""One line that cannot mislead; may import errors and this room.
+
+Four answers, decided in this order:
+
+- "not trustworthy": the thrust is significant at the false-alarm rate of the threshold, but the
+  noise is not as the error model says, or it vanishes under another defensible error model, or it
+  is larger than anything plausible.
+- "detection": it is significant, and none of that holds.
+- "arc cannot tell": it is not significant, and the arc would not have shown a plausible thrust
+  either (the threshold in the worst seen direction exceeds the largest plausible acceleration), or
+  the noise is not as the error model says, so that the threshold means nothing.
+- "non-detection": it is not significant, and a thrust above the threshold would have been seen.
+
+The test is the likelihood ratio of the two fits, chi2 with k degrees of freedom without thrust (S.
+S. Wilks 1938, Ann. Math. Stat. 9, 60); where the two fits kept different observations it is the
+Wald statistic A_hat' F_A A_hat instead.
+"""
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+from astropy import units as u
+from scipy.stats import chi2, f, norm
+
+from ngbound.errors import LimitError
+from ngbound.limits.fit_protocol import ThrustFit
+from ngbound.limits.information import AU_D2
+from ngbound.limits.posterior import Posterior
+from ngbound.limits.threshold import DetectionThreshold
+from ngbound.limits.upper_limit import UpperLimit, upper_limit
+
+KINDS = ("detection", "non-detection", "arc cannot tell", "not trustworthy")
+
+
+@dataclass(frozen=True)
+class Verdict:
+    """What the arc says about thrust.
+
+    Attributes
+    ----------
+    kind : str
+        "detection", "non-detection", "arc cannot tell" or "not trustworthy".
+    sentence : str
+    reasons : tuple of str
+        Why a caveat was made; empty for a plain verdict.
+    p_value : float
+        Probability of so large a statistic without thrust.
+    significance_sigma : float
+        ``p_value`` as two-sided Gaussian sigma.
+    statistic : float
+        Of the test, chi2_k without thrust.
+    test : str
+        "likelihood ratio" or "Wald".
+    false_alarm : float
+        Rate at which the thrust is called significant.
+    estimate, estimate_sigma : Quantity
+        |A_hat| and its sigma along A_hat, others free.
+    threshold_here : Quantity
+        Direction-free threshold along A_hat.
+    threshold_best, threshold_worst : Quantity
+    limit : Quantity or None
+    confidence : float or None
+    """
+
+    kind: str
+    sentence: str
+    reasons: tuple[str, ...]
+    p_value: float
+    significance_sigma: float
+    statistic: float
+    test: str
+    false_alarm: float
+    estimate: u.Quantity
+    estimate_sigma: u.Quantity
+    threshold_here: u.Quantity
+    threshold_best: u.Quantity
+    threshold_worst: u.Quantity
+    limit: u.Quantity | None
+    confidence: float | None
+
+    def __str__(self) -> str:
+        return self.sentence
+
+    def to_dict(self) -> dict[str, Any]:
+        """JSON-able record; accelerations in au/d2."""
+        return {
+            "kind": self.kind,
+            "sentence": self.sentence,
+            "reasons": list(self.reasons),
+            "p_value": self.p_value,
+            "significance_sigma": self.significance_sigma,
+            "statistic": self.statistic,
+            "test": self.test,
+            "false_alarm": self.false_alarm,
+            "estimate_au_d2": float(self.estimate.value),
+            "estimate_sigma_au_d2": float(self.estimate_sigma.value),
+            "threshold_here_au_d2": float(self.threshold_here.value),
+            "threshold_best_au_d2": float(self.threshold_best.value),
+            "threshold_worst_au_d2": float(self.threshold_worst.value),
+            "limit_au_d2": None if self.limit is None else float(self.limit.value),
+            "confidence": self.confidence,
+        }
+
+
+def verdict(
+    fit_null: ThrustFit | None,
+    fit_push: ThrustFit,
+    threshold: DetectionThreshold,
+    limit: UpperLimit | Posterior | None = None,
+    *,
+    noise_trusted: bool = True,
+    why: str = "",
+    largest_plausible: u.Quantity | float | None = None,
+    other_p_values: Mapping[str, float] | None = None,
+) -> Verdict:
+    """Judge a pair of fits; see the module for the rules.
+
+    Parameters
+    ----------
+    fit_null : ThrustFit or None
+        The gravity-only fit of the same arc; without it the Wald statistic is used.
+    fit_push : ThrustFit
+        The fit with thrust, from which ``threshold`` was computed.
+    limit : UpperLimit or Posterior, optional
+        Quoted in a verdict that is not a detection.
+    noise_trusted : bool
+        False if the residuals say that the noise is not as the error model says.
+    why : str
+        What the residuals say, as a clause.
+    largest_plausible : Quantity or float (au/d2), optional
+        The largest acceleration that makes physical sense for such an object.
+    other_p_values : mapping, optional
+        p-value of the same test under other defensible error models, by name.
+
+    Raises
+    ------
+    LimitError
+        If the threshold belongs to other components, or ``largest_plausible`` is not positive.
+    """
+    information = threshold.information
+    if information.components != fit_push.components:
+        raise LimitError(
+            f"The threshold is for the components {information.components}, the fit has "
+            f"{fit_push.components}; compute "
+            "the threshold from the same fit.",
+        )
+    plausible = _acceleration(largest_plausible)
+    k = information.k
+    statistic, test = _statistic(fit_null, fit_push, information.wald)
+    scaled = statistic / threshold.noise_scale**2
+    if threshold.noise_dof is None:
+        p_value = float(chi2.sf(scaled, k))
+    else:
+        p_value = float(f.sf(scaled / k, k, threshold.noise_dof))
+    alpha = threshold.false_alarm_per_trial
+    sigma = _sigma(p_value, scaled, k)
+    size = float(np.linalg.norm(information.A_hat))
+    axis = information.A_hat if size > 0.0 else threshold.worst_direction
+    along = threshold.along(axis)
+    error = float(information.sigma_free(axis).value) * threshold.noise_scale
+    if isinstance(limit, Posterior):
+        limit = upper_limit(limit)
+
+    reasons = []
+    significant = p_value < alpha
+    if not noise_trusted:
+        reasons.append(f"the noise is not as the error model says{f' ({why})' if why else ''}")
+    if significant:
+        for name, p_other in (other_p_values or {}).items():
+            if not p_other < alpha:
+                reasons.append(f"it vanishes under the error model {name} (p = {p_other:.2g})")
+        if plausible is not None and size > plausible:
+            reasons.append(
+                f"it is larger than the largest plausible acceleration, {plausible:.2e} au/d2"
+            )
+        kind = "not trustworthy" if reasons else "detection"
+    else:
+        if plausible is not None and float(threshold.worst.value) > plausible:
+            reasons.append(
+                "a thrust in the worst seen direction would have to exceed "
+                f"{threshold.worst.value:.2e} au/d2 to be "
+                f"found, more than the largest plausible acceleration, {plausible:.2e} au/d2"
+            )
+        kind = "arc cannot tell" if reasons else "non-detection"
+
+    numbers = (
+        f"|A| = {size:.2e} +- {error:.1e} au/d2, p = {p_value:.2g} ({sigma:.1f} sigma, {test} "
+        "test of "
+        f"{', '.join(information.components)})"
+    )
+    found = (
+        f"a thrust in that direction is found with probability {threshold.power:g} from "
+        f"{along.value:.2e} au/d2 on, in "
+        f"any direction from {threshold.worst.value:.2e} on, at the false-alarm rate {alpha:.2g}"
+    )
+    bound = ""
+    if isinstance(limit, UpperLimit):
+        bound = (
+            f"; |A| < {limit.magnitude.value:.2e} au/d2 at {100.0 * limit.confidence:g} % "
+            "confidence"
+        )
+        if not limit.converged:
+            bound += " (from a chain that has not converged)"
+    because = f", because {' and '.join(reasons)}" if reasons else ""
+    sentence = {
+        "detection": f"Detection: {numbers}; {found}.",
+        "not trustworthy": f"Significant but not trustworthy{because}: {numbers}; {found}.",
+        "non-detection": f"Non-detection: {numbers}; {found}{bound}.",
+        "arc cannot tell": f"The arc cannot tell{because}: {numbers}; {found}{bound}.",
+    }[kind]
+    return Verdict(
+        kind=kind,
+        sentence=sentence,
+        reasons=tuple(reasons),
+        p_value=p_value,
+        significance_sigma=sigma,
+        statistic=scaled,
+        test=test,
+        false_alarm=alpha,
+        estimate=size * AU_D2,
+        estimate_sigma=error * AU_D2,
+        threshold_here=along,
+        threshold_best=threshold.best,
+        threshold_worst=threshold.worst,
+        limit=limit.magnitude if isinstance(limit, UpperLimit) else None,
+        confidence=limit.confidence if isinstance(limit, UpperLimit) else None,
+    )
+
+
+def _acceleration(value: u.Quantity | float | None) -> float | None:
+    if value is None:
+        return None
+    number = float(value.to_value(AU_D2)) if isinstance(value, u.Quantity) else float(value)
+    if not number > 0.0:
+        raise LimitError(
+            f"The largest plausible acceleration must be positive, in au/d2; {value!r} was given.",
+            value=value,
+        )
+    return number
+
+
+def _statistic(fit_null: ThrustFit | None, fit_push: ThrustFit, wald: float) -> tuple[float, str]:
+    """Likelihood ratio where both fits stand on the same observations, else Wald."""
+    if fit_null is None:
+        return wald, "Wald"
+    kept_null, kept_push = getattr(fit_null, "keep", None), getattr(fit_push, "keep", None)
+    same = fit_null.dof - fit_push.dof == len(fit_push.components) and (
+        kept_null is None or kept_push is None or np.array_equal(kept_null, kept_push)
+    )
+    if not same:
+        return wald, "Wald"
+    return max(0.0, float(fit_null.chi2 - fit_push.chi2)), "likelihood ratio"
+
+
+def _sigma(p_value: float, statistic: float, k: int) -> float:
+    """Two-sided Gaussian sigma of a p-value; beyond the smallest double, from the logarithm of the
+    chi2 tail.
+    """
+    if p_value > 1e-300:
+        return max(0.0, float(norm.isf(0.5 * p_value)))
+    # leading terms of the two tails, equated
+    log_p = 0.5 * (k - 2) * np.log(0.5 * statistic) - 0.5 * statistic
+    x = np.sqrt(-2.0 * log_p)
+    for _ in range(20):
+        x = np.sqrt(max(1.0, -2.0 * (log_p + np.log(x) + 0.5 * np.log(0.5 * np.pi))))
+    return float(x)

@@ -1,0 +1,667 @@
+"""Force over acceleration: the mass and size that a limit on the thrust demands.
+
+May import: constants, errors, and from its own room distributions, outgassing and size.
+
+M = zeta Q m v / (A g(r_Q)), with A the thrust at 1 au and g the thrust law at the distance r_Q
+where the rate was measured (see the room's docstring). Only a lower bound is quoted, because the
+posterior of A reaches zero.
+"""
+
+import math
+import warnings
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass, field
+from typing import Any, Protocol, TypeAlias
+
+import astropy.units as u
+import numpy as np
+from astropy.units import Quantity
+
+from ngbound.constants import AU_D2_TO_M_S2
+from ngbound.errors import CaseError, MassError, NgboundWarning
+
+from .distributions import Distribution, DistributionSpec, Fixed, UpperLimit, number_text
+from .outgassing import Emission, Outgassing
+from .size import (
+    DEFAULT_DENSITY,
+    DEFAULT_DENSITY_SOURCE,
+    Photometry,
+    SizeCheck,
+    size_check,
+    sphere_diameter_m,
+)
+from .size import (
+    density as density_from,
+)
+
+AU_D2 = u.au / u.day**2
+ACCELERATION = "acceleration"
+DENSITY = "bulk density"
+MIN_DRAWS = 20_000
+_MAX_POSTERIOR = 200_000
+
+GAt: TypeAlias = Callable[[float], float] | float
+
+
+class HasWorst(Protocol):
+    """A detection threshold that knows its value in the worst direction."""
+
+    @property
+    def worst(self) -> Quantity: ...
+
+
+@dataclass(frozen=True)
+class InputShare:
+    """How much one input matters.
+
+    ``low``, ``high``: its 16th and 84th percentile, ``median`` between, in ``unit``;
+    ``mass_at_low``, ``mass_at_high``: mass (kg) with only this input moved there, all others at
+    their median; ``bound_if_known``: the lower mass bound (kg) if this input were exactly its
+    median; ``first_order``, ``total``: share of the variance of ln M by this input alone, and with
+    its interactions (NaN if ln M does not vary); ``of_diameter``: share (total) of the variance of
+    ln D.
+    """
+
+    name: str
+    unit: str
+    low: float
+    median: float
+    high: float
+    mass_at_low: float
+    mass_at_high: float
+    bound_if_known: float
+    first_order: float
+    total: float
+    of_diameter: float
+
+    def to_dict(self) -> dict[str, Any]:
+        """JSON-able description; NaN becomes None."""
+        return {
+            k: None if isinstance(v, float) and math.isnan(v) else v for k, v in vars(self).items()
+        }
+
+
+@dataclass(frozen=True)
+class LawCheck:
+    """One species measured at two distances: do its rates follow the thrust law?
+
+    ``ratio``: force over g at the second distance, divided by the same at the first; 1 if they
+    agree. ``sigma``: its distance from 1 in standard deviations (logarithmic; common inputs
+    cancel).
+    """
+
+    species: str
+    r1_au: float
+    r2_au: float
+    ratio: float
+    sigma: float
+
+    def __str__(self) -> str:
+        return (
+            f"{self.species}: force / g(r) at {self.r2_au:g} au is {self.ratio:.3g} times that at "
+            f"{self.r1_au:g} au ({self.sigma:.1f} sigma)"
+        )
+
+    def to_dict(self) -> dict[str, Any]:
+        """JSON-able description."""
+        return dict(vars(self))
+
+
+@dataclass(frozen=True, eq=False)
+class MassBound:
+    """Lower bound on mass and diameter, from a thrust limit and an outgassing budget.
+
+    Attributes
+    ----------
+    mass, mass_error : Quantity, kg
+        The bound: the (1 - confidence) quantile of M, and its Monte Carlo standard error.
+    diameter, diameter_error : Quantity, m
+        The same for the diameter of a sphere of the assumed bulk density.
+    confidence : float
+        Of the quantile. Where the acceleration is one quoted limit (``acceleration_kind`` "upper
+        limit"), it is that of the budget alone; ``joint_confidence`` is what can be claimed
+        together.
+    mass_median : Quantity, kg
+        Median of the draws, for orientation; no estimate (it depends on the prior of A).
+    mass_detection, diameter_detection : Quantity or None
+        From the detection threshold: a lighter body with this budget would have been detected.
+    inputs : tuple of InputShare
+        Largest share first. ``dominant`` is the name of the first ("" if nothing varies).
+    size_check : SizeCheck or None
+    law_checks : tuple of LawCheck
+    mass_draws_kg : ndarray (n,)
+    """
+
+    mass: Quantity
+    mass_error: Quantity
+    diameter: Quantity
+    diameter_error: Quantity
+    confidence: float
+    joint_confidence: float
+    mass_median: Quantity
+    mass_detection: Quantity | None
+    diameter_detection: Quantity | None
+    acceleration_kind: str
+    acceleration_median: Quantity
+    acceleration_upper: Quantity
+    threshold: Quantity | None
+    force: Quantity
+    density: Distribution
+    outgassing: Outgassing
+    inputs: tuple[InputShare, ...]
+    size_check: SizeCheck | None
+    law_checks: tuple[LawCheck, ...]
+    assumptions: tuple[str, ...]
+    n_draws: int
+    n_effective: float
+    seed: int | None
+    mass_draws_kg: np.ndarray = field(repr=False)
+
+    @property
+    def dominant(self) -> str:
+        """Name of the input with the largest total share of the variance of ln M; "" if none."""
+        if not self.inputs or math.isnan(self.inputs[0].total):
+            return ""
+        return self.inputs[0].name
+
+    def sentence(self) -> str:
+        """The bound in words, with what it rests on."""
+        sources = "; ".join(str(e) for e in self.outgassing.emissions)
+        joint = ""
+        if self.acceleration_kind == "upper limit":
+            held = f"|A| held at its limit of {number_text(self.acceleration_upper.value)} au/d2"
+            if self.joint_confidence < self.confidence:
+                joint = (
+                    f" (at least {100 * self.joint_confidence:g} % together with that of the limit)"
+                )
+        else:
+            held = (
+                f"the posterior of |A| ({100 * self.confidence:g} % below "
+                f"{number_text(self.acceleration_upper.value)} au/d2)"
+            )
+        text = (
+            f"With {sources}, and {held}, the mass is above {number_text(self.mass.value)} kg "
+            f"(Monte Carlo error {number_text(self.mass_error.value, 1)} kg) at "
+            f"{100 * self.confidence:g} % confidence{joint}; at a bulk density of {self.density} "
+            f"kg/m3 the diameter is above {number_text(self.diameter.value)} m."
+        )
+        if self.mass_detection is not None and self.diameter_detection is not None:
+            text += (
+                " Under the same budget a body lighter than "
+                f"{number_text(self.mass_detection.value)} kg "
+                f"({number_text(self.diameter_detection.value)} m) would have shown a thrust above "
+                "the detection threshold."
+            )
+        if self.dominant:
+            text += (
+                f" The {self.dominant} dominates: {100 * self.inputs[0].total:.0f} % of the "
+                "variance of ln M."
+            )
+        if self.size_check is not None:
+            text += f" {str(self.size_check)[0].upper()}{str(self.size_check)[1:]}."
+        return text
+
+    def table(self) -> str:
+        """The one-at-a-time table and the variance decomposition as aligned text."""
+        head = (
+            f"{'input':32s} {'16 %':>10s} {'median':>10s} {'84 %':>10s} {'M at 16 %':>10s} "
+            f"{'M at 84 %':>10s} {'M> if known':>11s} {'ln M':>6s} {'ln D':>6s}  unit"
+        )
+        rows = [head]
+        for s in self.inputs:
+            rows.append(
+                f"{s.name:32s} {s.low:10.3g} {s.median:10.3g} {s.high:10.3g} {s.mass_at_low:10.3g} "
+                f"{s.mass_at_high:10.3g} {s.bound_if_known:11.3g} {_percent(s.total):>6s} "
+                f"{_percent(s.of_diameter):>6s}  {s.unit}"
+            )
+        return "\n".join(rows)
+
+    def __str__(self) -> str:
+        lines = [self.sentence(), "", self.table()]
+        lines += [str(check) for check in self.law_checks]
+        lines += [f"assumed: {text}" for text in self.assumptions]
+        return "\n".join(lines)
+
+    def to_dict(self) -> dict[str, Any]:
+        """JSON-able record (without the draws)."""
+
+        def number(q: Quantity | None) -> float | None:
+            return None if q is None else float(q.value)
+
+        return {
+            "mass_kg": number(self.mass),
+            "mass_error_kg": number(self.mass_error),
+            "diameter_m": number(self.diameter),
+            "diameter_error_m": number(self.diameter_error),
+            "confidence": self.confidence,
+            "joint_confidence": self.joint_confidence,
+            "mass_median_kg": number(self.mass_median),
+            "mass_detection_kg": number(self.mass_detection),
+            "diameter_detection_m": number(self.diameter_detection),
+            "acceleration_kind": self.acceleration_kind,
+            "acceleration_median_au_d2": number(self.acceleration_median),
+            "acceleration_upper_au_d2": number(self.acceleration_upper),
+            "threshold_au_d2": number(self.threshold),
+            "force_over_g_n": number(self.force),
+            "density_kg_m3": self.density.to_dict(),
+            "outgassing": self.outgassing.to_dict(),
+            "inputs": [s.to_dict() for s in self.inputs],
+            "dominant": self.dominant,
+            "size_check": None if self.size_check is None else self.size_check.to_dict(),
+            "law_checks": [c.to_dict() for c in self.law_checks],
+            "assumptions": list(self.assumptions),
+            "n_draws": self.n_draws,
+            "n_effective": self.n_effective,
+            "seed": self.seed,
+            "sentence": self.sentence(),
+        }
+
+
+def momentum_mass(force: Quantity, acceleration: Quantity | float, g: float = 1.0) -> Quantity:
+    """Mass (kg) that ``force`` (N) accelerates by ``acceleration`` (Quantity, or au/d2) times
+    ``g``."""
+    per_m_s2 = _au_d2(acceleration, "acceleration") * AU_D2_TO_M_S2 * g
+    if np.any(per_m_s2 <= 0):
+        raise MassError("The acceleration must be positive for a mass to follow from a force.")
+    return force.to_value(u.N) / per_m_s2 * u.kg
+
+
+def mass_bound(
+    limit_or_samples: Any,
+    outgassing: Outgassing,
+    *,
+    g_at: GAt,
+    density: DistributionSpec | None = None,
+    confidence: float = 0.95,
+    threshold: "HasWorst | Quantity | float | None" = None,
+    seed: int | np.random.Generator = 1,
+    photometry: Photometry | None = None,
+    n_draws: int | None = None,
+    limit_confidence: float | None = None,
+    n_effective: float | None = None,
+) -> MassBound:
+    """Lower bound on mass and diameter.
+
+    Parameters
+    ----------
+    limit_or_samples : number, Quantity or array
+        Draws of |A| (n,), or of the components (n, k), in au/d2 or as a Quantity; or one upper
+        limit, at which A is then held. A is the thrust at g = 1.
+    outgassing : Outgassing
+    g_at : callable or float
+        Thrust law g(r) with r in au; or its value at the one distance of the measurement.
+    density : spec, optional
+        Bulk density, kg/m3; default `DEFAULT_DENSITY`.
+    confidence : float
+        Of the lower bound.
+    threshold : number, Quantity or detection threshold, optional
+        A_det at g = 1 (au/d2 if bare); of several values the largest, and of an object with
+        ``worst`` that one, so that "would have been detected" holds in every direction.
+    seed : int or numpy Generator
+    photometry : Photometry, optional
+    n_draws : int, optional
+        Monte Carlo draws; default the number of posterior draws, 20000 at least.
+    limit_confidence : float, optional
+        Confidence of a quoted limit, for ``joint_confidence`` (Bonferroni).
+    n_effective : float, optional
+        Independent draws in a correlated chain; default all. Enters the Monte Carlo error.
+
+    Raises
+    ------
+    MassError
+        No rate has a lower bound; the law is off at a measurement; the limit is zero.
+    CaseError
+        A value outside its range.
+    """
+    if not 0.5 <= confidence < 1:
+        raise CaseError(
+            f"confidence = {confidence!r} must be at least 0.5 and below 1, such as 0.95.",
+            value=confidence,
+        )
+    rng = np.random.default_rng(seed)
+    bulk = density_from(density)
+    samples = _magnitudes(limit_or_samples)
+    n = max(MIN_DRAWS, min(len(samples), _MAX_POSTERIOR)) if n_draws is None else n_draws
+    if n < 1000:
+        raise CaseError(f"n_draws = {n} must be at least 1000.", value=n)
+    known = _with_measured_rates(outgassing)
+    model = _Model(known, _g_values(g_at, known), samples)
+    first, second = model.draw(rng, n), model.draw(rng, n)
+    model.weigh(first)
+    log_mass = model.log_mass(first)
+    mass = np.exp(log_mass)
+    n_eff = float(
+        min(
+            n,
+            n_effective if n_effective is not None else (n if len(samples) == 1 else len(samples)),
+        )
+    )
+    level = 1 - confidence
+    rho = bulk.draw(rng, n)
+    diameter = sphere_diameter_m(mass, rho)
+    mass_low, mass_err = _quantile(mass, level, n_eff)
+    diameter_low, diameter_err = _quantile(diameter, level, n_eff)
+    single = len(samples) == 1
+    joint = confidence
+    if single and limit_confidence is not None:
+        joint = max(0.0, confidence + limit_confidence - 1)
+    mass_detection = diameter_detection = a_det = None
+    if threshold is not None:
+        worst = getattr(threshold, "worst", threshold)
+        a_det = float(np.max(_au_d2(worst, "threshold")))
+        if not (a_det > 0 and math.isfinite(a_det)):
+            raise MassError(f"The detection threshold {a_det!r} au/d2 must be positive and finite.")
+        revealed = np.exp(model.log_force(first)) / (a_det * AU_D2_TO_M_S2)
+        mass_detection = float(np.quantile(revealed, level))
+        diameter_detection = float(np.quantile(sphere_diameter_m(revealed, rho), level))
+    check = None
+    if photometry is not None:
+        check = size_check(mass, photometry, bulk, confidence, rng)
+    return MassBound(
+        mass=mass_low * u.kg,
+        mass_error=mass_err * u.kg,
+        diameter=diameter_low * u.m,
+        diameter_error=diameter_err * u.m,
+        confidence=confidence,
+        joint_confidence=joint,
+        mass_median=float(np.median(mass)) * u.kg,
+        mass_detection=None if mass_detection is None else mass_detection * u.kg,
+        diameter_detection=None if diameter_detection is None else diameter_detection * u.m,
+        acceleration_kind="upper limit" if single else "posterior",
+        acceleration_median=float(np.median(samples)) * AU_D2,
+        acceleration_upper=float(np.quantile(samples, confidence)) * AU_D2,
+        threshold=None if a_det is None else a_det * AU_D2,
+        force=float(np.exp(np.median(model.log_force(first)))) * u.N,
+        density=bulk,
+        outgassing=outgassing,
+        inputs=_shares(model, first, second, bulk, rho, level),
+        size_check=check,
+        law_checks=model.law_checks(first),
+        assumptions=_assumptions(outgassing, bulk, single),
+        n_draws=n,
+        n_effective=n_eff,
+        seed=seed if isinstance(seed, int) else None,
+        mass_draws_kg=mass,
+    )
+
+
+def _with_measured_rates(outgassing: Outgassing) -> Outgassing:
+    """The part of the budget that has a lower bound; MassError if there is none."""
+    measured = [e for e in outgassing.emissions if not isinstance(e.rate, UpperLimit)]
+    if not measured:
+        raise MassError(
+            "Every rate of the budget is an upper limit: with the thrust limited from above too, "
+            "no mass is excluded. Give a measured rate of at least one species, or ask "
+            "`revealed_rate` which rate this arc would have shown."
+        )
+    return Outgassing(measured)
+
+
+class _Model:
+    """ln M as a function of named inputs; the acceleration is one of them."""
+
+    def __init__(self, outgassing: Outgassing, g: tuple[float, ...], samples: np.ndarray) -> None:
+        self.outgassing = outgassing
+        self.g = np.array(g)[:, np.newaxis]
+        self.samples = np.sort(samples)
+        self.distributions = outgassing.inputs()
+        emissions = outgassing.emissions
+        self.groups = {
+            name: np.array([k for k, e in enumerate(emissions) if e.species == name])
+            for name in dict.fromkeys(e.species for e in emissions)
+        }
+        self.weights = {
+            name: np.full(len(rows), 1.0 / len(rows)) for name, rows in self.groups.items()
+        }
+
+    @property
+    def names(self) -> list[str]:
+        varying = [
+            name for name, found in self.distributions.items() if not isinstance(found, Fixed)
+        ]
+        return varying + ([ACCELERATION] if len(self.samples) > 1 else [])
+
+    def draw(self, rng: np.random.Generator, n: int) -> dict[str, np.ndarray]:
+        values = {name: found.draw(rng, n) for name, found in self.distributions.items()}
+        turns = -(-n // len(self.samples))
+        order = np.concatenate([rng.permutation(len(self.samples)) for _ in range(turns)])[:n]
+        values[ACCELERATION] = self.samples[order]
+        return values
+
+    def quantile(self, name: str, p: float) -> float:
+        if name == ACCELERATION:
+            return float(np.quantile(self.samples, p))
+        return float(self.distributions[name].ppf(np.asarray(p)))
+
+    def medians(self) -> dict[str, np.ndarray]:
+        return {
+            name: np.array([self.quantile(name, 0.5)])
+            for name in [*self.distributions, ACCELERATION]
+        }
+
+    def log_over_g(self, values: dict[str, np.ndarray]) -> np.ndarray:
+        """ln of force over g by emission, (m, n); -inf where the force is zero."""
+        force, _ = self.outgassing.evaluate(values)
+        with np.errstate(divide="ignore"):
+            return np.log(force / self.g)
+
+    def weigh(self, values: dict[str, np.ndarray]) -> None:
+        """Weigh several distances of one species by the inverse variance of ln(force / g)."""
+        logs = self.log_over_g(values)
+        for name, rows in self.groups.items():
+            if len(rows) > 1:
+                weight = 1.0 / np.maximum(logs[rows].var(axis=1), 1e-6)
+                self.weights[name] = weight / weight.sum()
+
+    def log_force(self, values: dict[str, np.ndarray]) -> np.ndarray:
+        """ln of the force at g = 1, (n,): a weighted mean over distances, a sum over species."""
+        logs = self.log_over_g(values)
+        by_species = [self.weights[name] @ logs[rows] for name, rows in self.groups.items()]
+        return np.logaddexp.reduce(np.array(by_species), axis=0)
+
+    def log_mass(self, values: dict[str, np.ndarray]) -> np.ndarray:
+        return self.log_force(values) - np.log(values[ACCELERATION] * AU_D2_TO_M_S2)
+
+    def law_checks(self, values: dict[str, np.ndarray]) -> tuple[LawCheck, ...]:
+        logs = self.log_over_g(values)
+        found = []
+        for species, rows in self.groups.items():
+            emissions = [self.outgassing.emissions[k] for k in rows]
+            order = np.argsort([e.at_au for e in emissions], kind="stable")
+            for i, j in zip(order[:-1], order[1:], strict=True):
+                if emissions[i].at_au == emissions[j].at_au:
+                    continue
+                difference = logs[rows[j]] - logs[rows[i]]
+                spread = float(difference.std())
+                middle = float(np.median(difference))
+                sigma = abs(middle) / spread if spread > 0 else (math.inf if middle else 0.0)
+                found.append(
+                    LawCheck(
+                        species, emissions[i].at_au, emissions[j].at_au, math.exp(middle), sigma
+                    )
+                )
+        for check in found:
+            if check.sigma > 2:
+                warnings.warn(
+                    f"The measured rates do not follow the thrust law: {check}. The mass assumes "
+                    "that they do; try another law, or one distance at a time.",
+                    NgboundWarning,
+                    stacklevel=3,
+                )
+        return tuple(found)
+
+
+def _shares(
+    model: _Model,
+    first: dict[str, np.ndarray],
+    second: dict[str, np.ndarray],
+    bulk: Distribution,
+    rho: np.ndarray,
+    level: float,
+) -> tuple[InputShare, ...]:
+    """One-at-a-time table and Sobol indices of ln M.
+
+    First-order and total indices by the estimators of M. J. W. Jansen 1999, Comput. Phys. Commun.
+    117, 35 (in the form of A. Saltelli et al. 2010, ibid. 181, 259; both from memory): with f(A),
+    f(B) two independent designs and f(A_B) design A with one input taken from B.
+    """
+    f_a, f_b = model.log_mass(first), model.log_mass(second)
+    variance = float(np.concatenate([f_a, f_b]).var())
+    varies = variance > 1e-12
+    log_rho_variance = float(np.log(rho).var())
+    whole = variance + log_rho_variance
+    middle = model.medians()
+    shares = []
+    for name in model.names:
+        swapped = model.log_mass({**first, name: second[name]})
+        only = 1 - float(((f_b - swapped) ** 2).mean()) / (2 * variance) if varies else math.nan
+        total = float(((f_a - swapped) ** 2).mean()) / (2 * variance) if varies else math.nan
+        low, mid, high = (model.quantile(name, p) for p in (0.15866, 0.5, 0.84134))
+        at_low, at_high = (
+            float(np.exp(model.log_mass({**middle, name: np.array([x])}))[0]) for x in (low, high)
+        )
+        known = model.log_mass({**first, name: np.full(len(f_a), mid)})
+        shares.append(
+            InputShare(
+                name,
+                _unit_of(name, model.outgassing),
+                low,
+                mid,
+                high,
+                at_low,
+                at_high,
+                float(np.exp(np.quantile(known, level))),
+                max(0.0, only) if varies else math.nan,
+                total,
+                total * variance / whole if varies else math.nan,
+            )
+        )
+    shares.sort(key=lambda s: -s.total if varies else 0.0)
+    if not isinstance(bulk, Fixed):
+        low, mid, high = (float(bulk.ppf(np.asarray(p))) for p in (0.15866, 0.5, 0.84134))
+        mass = float(np.exp(model.log_mass(middle))[0])
+        shares.append(
+            InputShare(
+                DENSITY,
+                "kg/m3",
+                low,
+                mid,
+                high,
+                mass,
+                mass,
+                float(np.exp(np.quantile(f_a, level))),
+                0.0 if varies else math.nan,
+                0.0 if varies else math.nan,
+                log_rho_variance / whole,
+            )
+        )
+    return tuple(shares)
+
+
+def _unit_of(name: str, outgassing: Outgassing) -> str:
+    if name == ACCELERATION:
+        return "au/d2"
+    emission, kind = outgassing.owner(name)
+    if kind == "rate":
+        return emission.rate_unit
+    if kind == "speed":
+        return "of the law" if emission.speed_is_law else "m/s"
+    return "-"
+
+
+def _assumptions(outgassing: Outgassing, bulk: Distribution, single: bool) -> tuple[str, ...]:
+    lines = list(outgassing.assumptions())
+    if bulk == DEFAULT_DENSITY:
+        lines.append(f"bulk density: {bulk} kg/m3, {DEFAULT_DENSITY_SOURCE}")
+    if single:
+        lines.append(
+            "acceleration: held at the quoted limit, so the confidence of the bound is that of the "
+            "outgassing budget alone"
+        )
+    lines.append("the rate is taken to follow the thrust law g(r), and the body to be a sphere")
+    return tuple(lines)
+
+
+def _quantile(values: np.ndarray, level: float, n_effective: float) -> tuple[float, float]:
+    """Quantile and its standard error from the order statistics (binomial ranks)."""
+    half = math.sqrt(level * (1 - level) / n_effective)
+    low, mid, high = np.quantile(values, [max(level - half, 0.0), level, min(level + half, 1.0)])
+    return float(mid), float(high - low) / 2
+
+
+def _magnitudes(limit_or_samples: Any) -> np.ndarray:
+    """|A| in au/d2, (n,), from a number, a Quantity, draws (n,) or components (n, k)."""
+    values = _au_d2(limit_or_samples, "acceleration")
+    if values.ndim > 2:
+        raise CaseError(
+            f"Draws of the acceleration have the shape {values.shape}; allowed: (n,) magnitudes or "
+            "(n, k) components."
+        )
+    values = np.linalg.norm(values, axis=1) if values.ndim == 2 else np.abs(np.atleast_1d(values))
+    if not len(values) or not np.all(np.isfinite(values)):
+        raise MassError("The acceleration is empty or not finite; no mass follows from it.")
+    if not values.any():
+        raise MassError("The acceleration is zero; no finite mass follows from it.")
+    if 1 < len(values) < 100:
+        raise MassError(
+            f"{len(values)} posterior draws of the acceleration are too few for a quantile; at "
+            "least 100 are needed."
+        )
+    return np.maximum(values, values[values > 0].min())
+
+
+def _au_d2(value: Any, name: str) -> np.ndarray:
+    if isinstance(value, Quantity):
+        try:
+            return np.asarray(value.to_value(AU_D2), dtype=float)
+        except u.UnitConversionError as error:
+            raise CaseError(f"{name} has the unit {value.unit}; allowed: au/d2, m/s2.") from error
+    try:
+        return np.asarray(value, dtype=float)
+    except (TypeError, ValueError) as error:
+        raise CaseError(
+            f"{name} of type {type(value).__name__} cannot be read as numbers in au/d2; give a "
+            "number, an array or a Quantity."
+        ) from error
+
+
+def _g_values(g_at: GAt, outgassing: Outgassing) -> tuple[float, ...]:
+    if not callable(g_at) and len(outgassing.distances_au) > 1:
+        raise CaseError(
+            f"The rates were measured at {len(outgassing.distances_au)} distances, so g_at must be "
+            "a function of the distance in au, not one number."
+        )
+
+    def value(emission: Emission) -> float:
+        g = float(g_at(emission.at_au)) if callable(g_at) else float(g_at)
+        if not (g > 0 and math.isfinite(g)):
+            raise MassError(
+                f"The thrust law gives g = {g:g} at {emission.at_au:g} au, where the "
+                f"{emission.species} rate was measured: the rate says nothing about a thrust that "
+                "is off there. Take a rate inside the window of the law, or another law."
+            )
+        return g
+
+    return tuple(value(emission) for emission in outgassing.emissions)
+
+
+def _percent(share: float) -> str:
+    return "-" if math.isnan(share) else f"{100 * share:.0f} %"
+
+
+def bounds_by_distance(
+    limit_or_samples: Any, outgassing: Outgassing, *, g_at: Callable[[float], float], **options: Any
+) -> Sequence[tuple[float, MassBound]]:
+    """`mass_bound` from the measurements of one heliocentric distance at a time: (r au, bound)."""
+    return [
+        (
+            r,
+            mass_bound(
+                limit_or_samples,
+                Outgassing([e for e in outgassing.emissions if e.at_au == r]),
+                g_at=g_at,
+                **options,
+            ),
+        )
+        for r in outgassing.distances_au
+    ]

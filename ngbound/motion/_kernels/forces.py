@@ -1,0 +1,361 @@
+"""Accelerations of the massless body, their gradients, and the second-order tide.
+
+Newtonian point masses; the Sun's first post-Newtonian term in its isotropic one-body form (T. D. Moyer 2003,
+Formulation for Observed and Computed Values, eq. 4-26 reduced to one static mass); the full point-mass
+equations of A. Einstein, L. Infeld & B. Hoffmann 1938, Ann. Math. 39, 65 in the form of the same eq. 4-26;
+the quadrupoles of the Sun and, near it, of the Earth; the Sun's Lense-Thirring term (IERS Conventions 2010, eq. 10.12).
+"""
+
+import math
+
+import numpy as np
+from numba import njit
+
+from .laws import add_thrust, thrust_partials
+from .layout import RELATIVITY_ALL, RELATIVITY_SUN
+
+
+@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
+def point_masses(gm, pos, x, acc):
+    """Newtonian acceleration (au/d2) of all bodies at barycentric ``x``, written to ``acc``."""
+    ax = 0.0
+    ay = 0.0
+    az = 0.0
+    for b in range(gm.size):
+        dx = x[0] - pos[b, 0]
+        dy = x[1] - pos[b, 1]
+        dz = x[2] - pos[b, 2]
+        d2 = dx * dx + dy * dy + dz * dz
+        f = gm[b] / (d2 * math.sqrt(d2))
+        ax -= f * dx
+        ay -= f * dy
+        az -= f * dz
+    acc[0] = ax
+    acc[1] = ay
+    acc[2] = az
+
+
+@njit(cache=True, error_model="numpy")
+def add_sun_relativity(gm, c, x, v, acc):
+    """The Sun's first post-Newtonian acceleration at heliocentric ``x``, ``v``."""
+    r2 = x[0] * x[0] + x[1] * x[1] + x[2] * x[2]
+    r = math.sqrt(r2)
+    rv = x[0] * v[0] + x[1] * v[1] + x[2] * v[2]
+    v2 = v[0] * v[0] + v[1] * v[1] + v[2] * v[2]
+    k = gm / (c * c * r2 * r)
+    s = 4.0 * gm / r - v2
+    for i in range(3):
+        acc[i] += k * (s * x[i] + 4.0 * rv * v[i])
+
+
+@njit(cache=True, error_model="numpy")
+def add_sun_relativity_partials(gm, c, x, v, gx, gv):
+    """Partials of the Sun's post-Newtonian term, added to ``gx``, ``gv`` (3, 3)."""
+    r2 = x[0] * x[0] + x[1] * x[1] + x[2] * x[2]
+    r = math.sqrt(r2)
+    rv = x[0] * v[0] + x[1] * v[1] + x[2] * v[2]
+    v2 = v[0] * v[0] + v[1] * v[1] + v[2] * v[2]
+    k = gm / (c * c * r2 * r)
+    s = 4.0 * gm / r - v2
+    for i in range(3):
+        w = s * x[i] + 4.0 * rv * v[i]
+        for j in range(3):
+            gx[i, j] += k * (
+                -4.0 * gm * x[i] * x[j] / (r2 * r) + 4.0 * v[i] * v[j] - 3.0 * w * x[j] / r2
+            )
+            gv[i, j] += k * (-2.0 * x[i] * v[j] + 4.0 * v[i] * x[j])
+        gx[i, i] += k * s
+        gv[i, i] += 4.0 * k * rv
+
+
+@njit(cache=True, error_model="numpy")
+def planet_accelerations(gm, parent, pos, acc):
+    """Newtonian acceleration of each body that is not heliocentric in its series, due to the others."""
+    n = 0
+    while n < gm.size and parent[n] < 0:
+        n += 1
+    for i in range(n):
+        ax = 0.0
+        ay = 0.0
+        az = 0.0
+        for j in range(n):
+            if j != i:
+                dx = pos[i, 0] - pos[j, 0]
+                dy = pos[i, 1] - pos[j, 1]
+                dz = pos[i, 2] - pos[j, 2]
+                d2 = dx * dx + dy * dy + dz * dz
+                f = gm[j] / (d2 * math.sqrt(d2))
+                ax -= f * dx
+                ay -= f * dy
+                az -= f * dz
+        acc[i, 0] = ax
+        acc[i, 1] = ay
+        acc[i, 2] = az
+    return n
+
+
+@njit(cache=True, error_model="numpy")
+def full_relativity(gm, parent, c, pos, vel, x, v, out, gx, gv, with_partials):
+    """Einstein-Infeld-Hoffmann terms of a massless body at barycentric ``x``, ``v``.
+
+    ``out`` (3,) receives the acceleration beyond Newton's; with ``with_partials`` the partials are added to
+    ``gx`` and ``gv``.
+    """
+    nb = gm.size
+    body_acc = np.empty((nb, 3))
+    n = planet_accelerations(gm, parent, pos, body_acc)
+    c2 = c * c
+    potential = 0.0
+    d_pot = np.zeros(3)
+    for j in range(n):
+        d2 = 0.0
+        for i in range(3):
+            d2 += (x[i] - pos[j, i]) ** 2
+        d = math.sqrt(d2)
+        potential += gm[j] / d
+        for i in range(3):
+            d_pot[i] -= gm[j] * (x[i] - pos[j, i]) / (d2 * d)
+    v2 = v[0] * v[0] + v[1] * v[1] + v[2] * v[2]
+    out[:] = 0.0
+    d = np.empty(3)
+    w = np.empty(3)
+    b_x = np.empty(3)
+    b_v = np.empty(3)
+    for j in range(n):
+        d2 = 0.0
+        vj2 = 0.0
+        vvj = 0.0
+        dvj = 0.0
+        daj = 0.0
+        for i in range(3):
+            d[i] = x[i] - pos[j, i]
+            d2 += d[i] * d[i]
+            vj2 += vel[j, i] * vel[j, i]
+            vvj += v[i] * vel[j, i]
+            dvj += d[i] * vel[j, i]
+            daj += d[i] * body_acc[j, i]
+        dist = math.sqrt(d2)
+        f = gm[j] / (d2 * dist)
+        own = 0.0
+        for k in range(n):
+            if k != j:
+                s2 = 0.0
+                for i in range(3):
+                    s2 += (pos[j, i] - pos[k, i]) ** 2
+                own += gm[k] / math.sqrt(s2)
+        bracket = (
+            -4.0 * potential
+            - own
+            + v2
+            + 2.0 * vj2
+            - 4.0 * vvj
+            - 1.5 * dvj * dvj / d2
+            - 0.5 * daj
+        ) / c2
+        drag = 0.0
+        for i in range(3):
+            drag += d[i] * (4.0 * v[i] - 3.0 * vel[j, i])
+            w[i] = v[i] - vel[j, i]
+        for i in range(3):
+            out[i] += (
+                -f * d[i] * bracket
+                + f * drag * w[i] / c2
+                + 3.5 * gm[j] * body_acc[j, i] / (c2 * dist)
+            )
+        if with_partials:
+            for i in range(3):
+                b_x[i] = (
+                    -4.0 * d_pot[i]
+                    - 3.0 * dvj * vel[j, i] / d2
+                    + 3.0 * dvj * dvj * d[i] / (d2 * d2)
+                    - 0.5 * body_acc[j, i]
+                ) / c2
+                b_v[i] = (2.0 * v[i] - 4.0 * vel[j, i]) / c2
+            for i in range(3):
+                for k in range(3):
+                    radial = -3.0 * d[k] / d2
+                    gx[i, k] += -f * d[i] * (b_x[k] + radial * bracket)
+                    gx[i, k] += f * w[i] * (4.0 * v[k] - 3.0 * vel[j, k] + radial * drag) / c2
+                    gx[i, k] -= 3.5 * gm[j] * body_acc[j, i] * d[k] / (c2 * d2 * dist)
+                    gv[i, k] += -f * d[i] * b_v[k] + f * w[i] * 4.0 * d[k] / c2
+                gx[i, i] -= f * bracket
+                gv[i, i] += f * drag / c2
+
+
+@njit(cache=True, error_model="numpy")
+def add_quadrupole(gm, j2_r2, pole, d, acc):
+    """Quadrupole acceleration of an oblate body at the vector ``d`` from its centre."""
+    d2 = d[0] * d[0] + d[1] * d[1] + d[2] * d[2]
+    dist = math.sqrt(d2)
+    s = (d[0] * pole[0] + d[1] * pole[1] + d[2] * pole[2]) / dist
+    f = 1.5 * gm * j2_r2 / (d2 * d2)
+    for i in range(3):
+        acc[i] += f * ((5.0 * s * s - 1.0) * d[i] / dist - 2.0 * s * pole[i])
+
+
+@njit(cache=True, error_model="numpy")
+def add_quadrupole_partials(gm, j2_r2, pole, d, gx):
+    """Partials of the quadrupole acceleration, added to ``gx``."""
+    d2 = d[0] * d[0] + d[1] * d[1] + d[2] * d[2]
+    z = d[0] * pole[0] + d[1] * pole[1] + d[2] * pole[2]
+    d5 = d2 * d2 * math.sqrt(d2)
+    k = 1.5 * gm * j2_r2
+    # acceleration = k [ (5 z^2/d^7 - 1/d^5) d - 2 z/d^5 pole ]
+    p = 5.0 * z * z / (d5 * d2) - 1.0 / d5
+    for j in range(3):
+        dp = (
+            10.0 * z * pole[j] / (d5 * d2) - 35.0 * z * z * d[j] / (d5 * d2 * d2) + 5.0 * d[j] / (d5 * d2)
+        )
+        for i in range(3):
+            gx[i, j] += k * (
+                dp * d[i] - 2.0 * pole[i] * (pole[j] / d5 - 5.0 * z * d[j] / (d5 * d2))
+            )
+        gx[j, j] += k * p
+
+
+@njit(cache=True, error_model="numpy")
+def add_frame_dragging(gm, c, spin, pole, x, v, acc, gx, gv, with_partials):
+    """The Sun's Lense-Thirring acceleration at heliocentric ``x``, ``v``; ``spin`` in au2/d."""
+    r2 = x[0] * x[0] + x[1] * x[1] + x[2] * x[2]
+    r = math.sqrt(r2)
+    k = 2.0 * gm * spin / (c * c * r2 * r)
+    xj = x[0] * pole[0] + x[1] * pole[1] + x[2] * pole[2]
+    f = 3.0 * xj / r2
+    for i in range(3):
+        p = (i + 1) % 3
+        q = (i + 2) % 3
+        h = x[p] * v[q] - x[q] * v[p]
+        vj = v[p] * pole[q] - v[q] * pole[p]
+        acc[i] += k * (f * h + vj)
+        if with_partials:
+            for j in range(3):
+                df = 3.0 * pole[j] / r2 - 2.0 * f * x[j] / r2
+                gx[i, j] += k * (df * h - 3.0 * x[j] / r2 * (f * h + vj))
+            gx[i, p] += k * f * v[q]
+            gx[i, q] -= k * f * v[p]
+            gv[i, q] += k * (f * x[p] - pole[p])
+            gv[i, p] += k * (pole[q] - f * x[q])
+
+
+EARTH_ZONE_AU = 0.02
+EARTH_POLE = np.array([0.0, 0.0, 1.0])
+
+
+@njit(cache=True, error_model="numpy")
+def acceleration(tab, push, phys, active, pos, vel, x, v, acc):
+    """Total acceleration (au/d2) at barycentric ``x``, ``v`` with the bodies at ``pos``, ``vel``.
+
+    ``active``: whether the activity window is open over this step.
+    """
+    point_masses(tab.gm, pos, x, acc)
+    h = np.empty(3)
+    w = np.empty(3)
+    for i in range(3):
+        h[i] = x[i] - pos[0, i]
+        w[i] = v[i] - vel[0, i]
+    gm_sun = tab.gm[0]
+    if phys.relativity == RELATIVITY_SUN:
+        add_sun_relativity(gm_sun, phys.c_au_d, h, w, acc)
+    elif phys.relativity == RELATIVITY_ALL:
+        extra = np.empty(3)
+        none = np.empty((3, 3))
+        full_relativity(tab.gm, tab.parent, phys.c_au_d, pos, vel, x, v, extra, none, none, False)
+        for i in range(3):
+            acc[i] += extra[i]
+    if phys.sun_j2 != 0.0:
+        add_quadrupole(gm_sun, phys.sun_j2, phys.sun_pole, h, acc)
+    if phys.sun_spin != 0.0:
+        none = np.empty((3, 3))
+        add_frame_dragging(
+            gm_sun, phys.c_au_d, phys.sun_spin, phys.sun_pole, h, w, acc, none, none, False
+        )
+    if phys.earth_row >= 0 and phys.earth_j2 != 0.0:
+        d = np.empty(3)
+        for i in range(3):
+            d[i] = x[i] - pos[phys.earth_row, i]
+        if d[0] * d[0] + d[1] * d[1] + d[2] * d[2] < EARTH_ZONE_AU * EARTH_ZONE_AU:
+            add_quadrupole(tab.gm[phys.earth_row], phys.earth_j2, EARTH_POLE, d, acc)
+    add_thrust(push, gm_sun, active, h, w, acc)
+
+
+@njit(cache=True, error_model="numpy")
+def tides(tab, pos, x, first, gx, third):
+    """Newtonian gradient of the bodies from row ``first`` on (added to ``gx``) and their third derivative.
+
+    ``third`` (10,) receives T_xxx, xxy, xxz, xyy, xyz, xzz, yyy, yyz, yzz, zzz with acceleration to second
+    order T_ijk d_j d_k / 2. Returns the sum of GM/d^5, the scale of the next order.
+    """
+    scale = 0.0
+    for b in range(first, tab.gm.size):
+        dx = x[0] - pos[b, 0]
+        dy = x[1] - pos[b, 1]
+        dz = x[2] - pos[b, 2]
+        d2 = dx * dx + dy * dy + dz * dz
+        d = math.sqrt(d2)
+        f = tab.gm[b] / (d2 * d)
+        g = 3.0 * f / d2
+        gx[0, 0] += g * dx * dx - f
+        gx[1, 1] += g * dy * dy - f
+        gx[2, 2] += g * dz * dz - f
+        gx[0, 1] += g * dx * dy
+        gx[0, 2] += g * dx * dz
+        gx[1, 2] += g * dy * dz
+        gx[1, 0] += g * dx * dy
+        gx[2, 0] += g * dx * dz
+        gx[2, 1] += g * dy * dz
+        q = 5.0 * g / d2
+        third[0] += 3.0 * g * dx - q * dx * dx * dx
+        third[1] += g * dy - q * dx * dx * dy
+        third[2] += g * dz - q * dx * dx * dz
+        third[3] += g * dx - q * dx * dy * dy
+        third[4] -= q * dx * dy * dz
+        third[5] += g * dx - q * dx * dz * dz
+        third[6] += 3.0 * g * dy - q * dy * dy * dy
+        third[7] += g * dz - q * dy * dy * dz
+        third[8] += g * dy - q * dy * dz * dz
+        third[9] += 3.0 * g * dz - q * dz * dz * dz
+        scale += f / d2
+    return scale
+
+
+@njit(cache=True, error_model="numpy")
+def other_partials(tab, push, phys, active, pos, vel, x, v, gx, gv, unit, unit_x, unit_v, extra):
+    """Partials of everything but the point masses.
+
+    Relativity, quadrupoles and frame dragging are added to ``gx``, ``gv``, and so is radiation pressure;
+    the thrust goes to ``unit``, ``unit_x``, ``unit_v``, ``extra`` (rows 0, 1; row 2: radiation pressure for srp = 1).
+    """
+    h = np.empty(3)
+    w = np.empty(3)
+    for i in range(3):
+        h[i] = x[i] - pos[0, i]
+        w[i] = v[i] - vel[0, i]
+    gm_sun = tab.gm[0]
+    scrap = np.zeros(3)
+    if phys.relativity == RELATIVITY_SUN:
+        add_sun_relativity_partials(gm_sun, phys.c_au_d, h, w, gx, gv)
+    elif phys.relativity == RELATIVITY_ALL:
+        full_relativity(tab.gm, tab.parent, phys.c_au_d, pos, vel, x, v, scrap, gx, gv, True)
+    if phys.sun_j2 != 0.0:
+        add_quadrupole_partials(gm_sun, phys.sun_j2, phys.sun_pole, h, gx)
+    if phys.sun_spin != 0.0:
+        add_frame_dragging(
+            gm_sun, phys.c_au_d, phys.sun_spin, phys.sun_pole, h, w, scrap, gx, gv, True
+        )
+    if phys.earth_row >= 0 and phys.earth_j2 != 0.0:
+        d = np.empty(3)
+        for i in range(3):
+            d[i] = x[i] - pos[phys.earth_row, i]
+        if d[0] * d[0] + d[1] * d[1] + d[2] * d[2] < EARTH_ZONE_AU * EARTH_ZONE_AU:
+            add_quadrupole_partials(tab.gm[phys.earth_row], phys.earth_j2, EARTH_POLE, d, gx)
+    r2 = h[0] * h[0] + h[1] * h[1] + h[2] * h[2]
+    r = math.sqrt(r2)
+    thrust_partials(push, gm_sun, active, h, w, unit, unit_x, unit_v, extra[0:2])
+    for i in range(3):
+        extra[2, i] = h[i] / (r2 * r)
+    if push.srp != 0.0:
+        f = push.srp / (r2 * r)
+        for i in range(3):
+            for j in range(3):
+                gx[i, j] -= 3.0 * f * h[i] * h[j] / r2
+            gx[i, i] += f

@@ -1,0 +1,273 @@
+"""Thrust laws g(r), their slopes, the lag, and the radial/transverse/normal axes with their partials.
+
+The form law is alpha (r/r0)^-m [1 + (r/r0)^n]^-k of B. G. Marsden, Z. Sekanina & D. K. Yeomans 1973, AJ 78, 211; a pure
+power law has k = 0. The lag takes g at t - DT (D. K. Yeomans & P. W. Chodas 1989, AJ 98, 1083), with the
+distance then from two-body motion in universal variables (R. H. Battin 1999, An Introduction to the
+Mathematics and Methods of Astrodynamics, ch. 4).
+"""
+
+import math
+
+import numpy as np
+from numba import njit
+
+from .layout import LAW_FORM, WINDOW_DATE, WINDOW_NONE
+
+
+@njit(cache=True, error_model="numpy")
+def law_of_distance(push, r, out):
+    """g, dg/dr and dg/dm into ``out``; r in au."""
+    if push.law == LAW_FORM:
+        alpha = push.par[0]
+        u = r / push.par[1]
+        m = push.par[2]
+        k = push.par[4]
+        log_u = math.log(u)
+        slope = -m
+        g = alpha * math.exp(-m * log_u)
+        if k != 0.0:
+            n = push.par[3]
+            un = math.exp(n * log_u)
+            g *= math.exp(-k * math.log1p(un))
+            slope -= n * k * un / (1.0 + un)
+        out[0] = g
+        out[1] = slope * g / r
+        out[2] = -log_u * g
+        # a law normalised at 1 au by alpha = r0^m keeps g(1) = 1 when m varies
+        if k == 0.0:
+            out[2] = -math.log(r) * g
+    else:
+        knots = push.table
+        last = knots.shape[1] - 1
+        x = math.log(r)
+        if x <= knots[0, 0] or x >= knots[0, last]:
+            end = 0 if x <= knots[0, 0] else last
+            slope = knots[2, end]
+            y = knots[1, end] + slope * (x - knots[0, end])
+        else:
+            i = np.searchsorted(knots[0], x) - 1
+            w = knots[0, i + 1] - knots[0, i]
+            s = (x - knots[0, i]) / w
+            dy = knots[1, i + 1] - knots[1, i]
+            p = knots[2, i] * w
+            q = knots[2, i + 1] * w
+            c2 = 3.0 * dy - 2.0 * p - q
+            c3 = p + q - 2.0 * dy
+            y = knots[1, i] + s * (p + s * (c2 + s * c3))
+            slope = (p + s * (2.0 * c2 + 3.0 * s * c3)) / w
+        g = math.exp(y)
+        out[0] = g
+        out[1] = slope * g / r
+        out[2] = 0.0
+
+
+@njit(cache=True, error_model="numpy")
+def stumpff(z, c):
+    """Stumpff functions c0..c5 of z into ``c``."""
+    halvings = 0
+    while abs(z) > 0.1:
+        z *= 0.25
+        halvings += 1
+    # series for c4 and c5, the rest by c_n = 1/n! - z c_{n+2}
+    c4 = 0.0
+    c5 = 0.0
+    for i in range(8, 0, -1):
+        c5 = (1.0 - z * c5) / ((2 * i + 4) * (2 * i + 5))
+        c4 = (1.0 - z * c4) / ((2 * i + 3) * (2 * i + 4))
+    c5 = (1.0 - z * c5) / 120.0
+    c4 = (1.0 - z * c4) / 24.0
+    c[5] = c5
+    c[4] = c4
+    c[3] = 1.0 / 6.0 - z * c5
+    c[2] = 0.5 - z * c4
+    c[1] = 1.0 - z * c[3]
+    c[0] = 1.0 - z * c[2]
+    for _ in range(halvings):
+        c5 = (c[5] + c[4] + c[3] * c[2]) / 16.0
+        c4 = (c[3] * (1.0 + c[1])) / 8.0
+        c[5] = c5
+        c[4] = c4
+        z *= 4.0
+        c[3] = 1.0 / 6.0 - z * c5
+        c[2] = 0.5 - z * c4
+        c[1] = 1.0 - z * c[3]
+        c[0] = 1.0 - z * c[2]
+
+
+@njit(cache=True, error_model="numpy")
+def distance_at_lag(gm, x, v, dt, out):
+    """Two-body distance after ``dt`` days, and its partials.
+
+    ``out[0]`` r' (au); ``out[1:4]`` dr'/dx, ``out[4:7]`` dr'/dv, ``out[7]`` dr'/d(dt).
+    """
+    root = math.sqrt(gm)
+    r = math.sqrt(x[0] * x[0] + x[1] * x[1] + x[2] * x[2])
+    sigma = (x[0] * v[0] + x[1] * v[1] + x[2] * v[2]) / root
+    alpha = 2.0 / r - (v[0] * v[0] + v[1] * v[1] + v[2] * v[2]) / gm
+    c = np.empty(6)
+    target = root * dt
+    chi = target / r
+    r1 = r
+    for _ in range(60):
+        stumpff(alpha * chi * chi, c)
+        u1 = chi * c[1]
+        u2 = chi * chi * c[2]
+        u3 = chi * chi * chi * c[3]
+        miss = r * u1 + sigma * u2 + u3 - target
+        r1 = r * c[0] + sigma * u1 + u2
+        # Laguerre's method of degree 5 (B. A. Conway 1986, Celest. Mech. 39, 199)
+        curve = sigma * c[0] + (1.0 - alpha * r) * u1
+        disc = math.sqrt(abs(16.0 * r1 * r1 - 20.0 * miss * curve))
+        step = 5.0 * miss / (r1 + disc)
+        chi -= step
+        if abs(step) <= 1e-14 * (1.0 + abs(chi)):
+            break
+    stumpff(alpha * chi * chi, c)
+    chi2 = chi * chi
+    u0 = c[0]
+    u1 = chi * c[1]
+    u2 = chi2 * c[2]
+    u3 = chi2 * chi * c[3]
+    u4 = chi2 * chi2 * c[4]
+    u5 = chi2 * chi2 * chi * c[5]
+    r1 = r * u0 + sigma * u1 + u2
+    sigma1 = sigma * u0 + (1.0 - alpha * r) * u1
+    # partials of the universal functions with respect to alpha at fixed chi
+    u0a = -0.5 * chi * u1
+    u1a = 0.5 * (u3 - chi * u2)
+    u2a = 0.5 * (2.0 * u4 - chi * u3)
+    u3a = 0.5 * (3.0 * u5 - chi * u4)
+    by_r = u0 - sigma1 * u1 / r1
+    by_sigma = u1 - sigma1 * u2 / r1
+    by_alpha = r * u0a + sigma * u1a + u2a - sigma1 * (r * u1a + sigma * u2a + u3a) / r1
+    out[0] = r1
+    for i in range(3):
+        out[1 + i] = by_r * x[i] / r + by_sigma * v[i] / root - by_alpha * 2.0 * x[i] / (r * r * r)
+        out[4 + i] = by_sigma * x[i] / root - by_alpha * 2.0 * v[i] / gm
+    out[7] = sigma1 * root / r1
+
+
+@njit(cache=True, error_model="numpy")
+def is_active(push, t, r):
+    """True while the activity window is open."""
+    if push.window_kind == WINDOW_NONE:
+        return True
+    at = t if push.window_kind == WINDOW_DATE else r
+    return push.window_from <= at <= push.window_to
+
+
+@njit(cache=True, error_model="numpy")
+def axes(x, v, e):
+    """Rows R, T, N into ``e`` (3, 3); returns r and |x cross v|."""
+    r = math.sqrt(x[0] * x[0] + x[1] * x[1] + x[2] * x[2])
+    hx = x[1] * v[2] - x[2] * v[1]
+    hy = x[2] * v[0] - x[0] * v[2]
+    hz = x[0] * v[1] - x[1] * v[0]
+    h = math.sqrt(hx * hx + hy * hy + hz * hz)
+    for i in range(3):
+        e[0, i] = x[i] / r
+    e[2, 0] = hx / h
+    e[2, 1] = hy / h
+    e[2, 2] = hz / h
+    e[1, 0] = e[2, 1] * e[0, 2] - e[2, 2] * e[0, 1]
+    e[1, 1] = e[2, 2] * e[0, 0] - e[2, 0] * e[0, 2]
+    e[1, 2] = e[2, 0] * e[0, 1] - e[2, 1] * e[0, 0]
+    return r, h
+
+
+@njit(cache=True, error_model="numpy")
+def add_thrust(push, gm_sun, active, x, v, acc):
+    """Add thrust (while ``active``) and radiation pressure (au/d2) at heliocentric x, v to ``acc``."""
+    a1 = push.a[0]
+    a2 = push.a[1]
+    a3 = push.a[2]
+    if a1 == 0.0 and a2 == 0.0 and a3 == 0.0 and push.srp == 0.0:
+        return
+    e = np.empty((3, 3))
+    r, _ = axes(x, v, e)
+    if push.srp != 0.0:
+        f = push.srp / (r * r)
+        for i in range(3):
+            acc[i] += f * e[0, i]
+    if (a1 == 0.0 and a2 == 0.0 and a3 == 0.0) or not active:
+        return
+    at = r
+    if push.lag_d != 0.0:
+        back = np.empty(8)
+        distance_at_lag(gm_sun, x, v, -push.lag_d, back)
+        at = back[0]
+    g = np.empty(3)
+    law_of_distance(push, at, g)
+    for i in range(3):
+        acc[i] += g[0] * (a1 * e[0, i] + a2 * e[1, i] + a3 * e[2, i])
+
+
+@njit(cache=True, error_model="numpy")
+def thrust_partials(push, gm_sun, active, x, v, unit, unit_x, unit_v, extra):
+    """Thrust per unit A along R, T, N and its partials.
+
+    ``unit`` (3, 3): g times the axis, row per component; ``unit_x``, ``unit_v`` (3, 3, 3): partials
+    [component, axis, with respect to]; ``extra`` (2, 3): partial of the thrust with the push's own A
+    with respect to the lag (per day) and to the law's exponent m.
+    """
+    e = np.empty((3, 3))
+    r, h = axes(x, v, e)
+    unit[:] = 0.0
+    unit_x[:] = 0.0
+    unit_v[:] = 0.0
+    extra[:] = 0.0
+    if not active:
+        return
+    at = r
+    back = np.zeros(8)
+    if push.lag_d != 0.0:
+        distance_at_lag(gm_sun, x, v, -push.lag_d, back)
+        at = back[0]
+    else:
+        for i in range(3):
+            back[1 + i] = e[0, i]
+        back[7] = (x[0] * v[0] + x[1] * v[1] + x[2] * v[2]) / r
+    g = np.empty(3)
+    law_of_distance(push, at, g)
+    d_n = np.empty(3)
+    d_r = np.empty(3)
+    d_h = np.empty(3)
+    for j in range(6):
+        # change of the angular momentum, then of N, R and T, for a unit change of x_j or v_j
+        k = j % 3
+        p = (k + 1) % 3
+        q = (k + 2) % 3
+        d_h[k] = 0.0
+        if j < 3:
+            d_h[p] = -v[q]
+            d_h[q] = v[p]
+        else:
+            d_h[p] = x[q]
+            d_h[q] = -x[p]
+        along = d_h[0] * e[2, 0] + d_h[1] * e[2, 1] + d_h[2] * e[2, 2]
+        for i in range(3):
+            d_n[i] = (d_h[i] - along * e[2, i]) / h
+            d_r[i] = 0.0
+        if j < 3:
+            for i in range(3):
+                d_r[i] = -e[0, k] * e[0, i] / r
+            d_r[k] += 1.0 / r
+        slope = g[1] * back[1 + j]
+        for i in range(3):
+            a = (i + 1) % 3
+            b = (i + 2) % 3
+            d_t = d_n[a] * e[0, b] - d_n[b] * e[0, a] + e[2, a] * d_r[b] - e[2, b] * d_r[a]
+            if j < 3:
+                unit_x[0, i, k] = slope * e[0, i] + g[0] * d_r[i]
+                unit_x[1, i, k] = slope * e[1, i] + g[0] * d_t
+                unit_x[2, i, k] = slope * e[2, i] + g[0] * d_n[i]
+            else:
+                unit_v[0, i, k] = slope * e[0, i] + g[0] * d_r[i]
+                unit_v[1, i, k] = slope * e[1, i] + g[0] * d_t
+                unit_v[2, i, k] = slope * e[2, i] + g[0] * d_n[i]
+    for i in range(3):
+        along = push.a[0] * e[0, i] + push.a[1] * e[1, i] + push.a[2] * e[2, i]
+        for c in range(3):
+            unit[c, i] = g[0] * e[c, i]
+        extra[0, i] = -g[1] * back[7] * along
+        extra[1, i] = g[2] * along

@@ -1,0 +1,304 @@
+"""Many neighbours of one reference orbit, sixteen at a time, on the shared grid.
+
+Each lane integrates its offset from the reference (the method of J. F. Encke, Berliner Astron. Jahrbuch
+für 1857) by the same collocation: the Sun's attraction exactly, the planets' to second order in the
+offset, relativity and thrust to first order, thrust amounts exactly. A lane also sums what these orders leave
+out; the caller sends lanes where that is not small to the adaptive integrator.
+"""
+
+import math
+
+import numpy as np
+from numba import njit
+
+from .grid import GV, GX, SCALE, SECOND_PUSH, SECOND_RELATIVITY, SUN, THIRD, UNIT, UNIT_V, UNIT_X
+from .radau import N_NODES, NODES, V_WEIGHTS, X_WEIGHTS
+
+LANES = 16
+SWEEPS = 6
+SETTLED_AU = 2e-15
+_FAST = {"contract", "nsz", "nnan", "ninf", "arcp"}
+
+
+@njit(cache=True, error_model="numpy", fastmath=_FAST)
+def _offset_acceleration(gm_sun, row, d, w, da, amount, acc):
+    """Second derivative of the offsets ``d`` (3, LANES) with their velocities ``w``.
+
+    ``da`` (3, LANES): thrust of the lane less that of the reference; ``amount``: thrust of the lane.
+    """
+    sx = row[SUN]
+    sy = row[SUN + 1]
+    sz = row[SUN + 2]
+    r2 = sx * sx + sy * sy + sz * sz
+    inv_r2 = 1.0 / r2
+    f = gm_sun * inv_r2 / math.sqrt(r2)
+    for lane in range(LANES):
+        x = d[0, lane]
+        y = d[1, lane]
+        z = d[2, lane]
+        q = (x * (x + 2.0 * sx) + y * (y + 2.0 * sy) + z * (z + 2.0 * sz)) * inv_r2
+        one = 1.0 + q
+        root = one * math.sqrt(one)
+        e = q * (3.0 + q * (3.0 + q)) / ((1.0 + root) * root)
+        acc[0, lane] = f * (e * (sx + x) - x)
+        acc[1, lane] = f * (e * (sy + y) - y)
+        acc[2, lane] = f * (e * (sz + z) - z)
+    t = THIRD
+    for lane in range(LANES):
+        x = d[0, lane]
+        y = d[1, lane]
+        z = d[2, lane]
+        u = w[0, lane]
+        v = w[1, lane]
+        s = w[2, lane]
+        a1 = amount[0, lane]
+        a2 = amount[1, lane]
+        a3 = amount[2, lane]
+        xx = 0.5 * x * x
+        yy = 0.5 * y * y
+        zz = 0.5 * z * z
+        xy = x * y
+        xz = x * z
+        yz = y * z
+        acc[0, lane] += (
+            row[t] * xx + row[t + 3] * yy + row[t + 5] * zz
+            + row[t + 1] * xy + row[t + 2] * xz + row[t + 4] * yz
+        )
+        acc[1, lane] += (
+            row[t + 1] * xx + row[t + 6] * yy + row[t + 8] * zz
+            + row[t + 3] * xy + row[t + 4] * xz + row[t + 7] * yz
+        )
+        acc[2, lane] += (
+            row[t + 2] * xx + row[t + 7] * yy + row[t + 9] * zz
+            + row[t + 4] * xy + row[t + 5] * xz + row[t + 8] * yz
+        )
+        for i in range(3):
+            g = GX + 3 * i
+            h = GV + 3 * i
+            p = UNIT_X + 3 * i
+            q = UNIT_V + 3 * i
+            acc[i, lane] += (
+                row[g] * x + row[g + 1] * y + row[g + 2] * z
+                + row[h] * u + row[h + 1] * v + row[h + 2] * s
+                + da[0, lane] * row[UNIT + i]
+                + da[1, lane] * row[UNIT + 3 + i]
+                + da[2, lane] * row[UNIT + 6 + i]
+                + a1 * (
+                    row[p] * x + row[p + 1] * y + row[p + 2] * z
+                    + row[q] * u + row[q + 1] * v + row[q + 2] * s
+                )
+                + a2 * (
+                    row[p + 9] * x + row[p + 10] * y + row[p + 11] * z
+                    + row[q + 9] * u + row[q + 10] * v + row[q + 11] * s
+                )
+                + a3 * (
+                    row[p + 18] * x + row[p + 19] * y + row[p + 20] * z
+                    + row[q + 18] * u + row[q + 19] * v + row[q + 20] * s
+                )
+            )
+
+
+@njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
+def offsets_to_records(
+    gm_sun, a_ref, grid_h, nodes, columns, step_of, weight_x, fraction_h, first, last, theta, out, doubt
+):
+    """Offsets from the reference at the records of one direction of time, for one block of lanes.
+
+    ``theta`` (p, LANES): parameter offsets (state, then thrust); ``columns`` (steps, 8, 6, p) the
+    linear solution at the nodes, used as the first guess. Records ``first`` to ``last`` of the sorted list lie in this
+    direction; ``out`` (records, 3, LANES) receives their offsets, ``doubt`` (2, LANES) the estimated error of
+    position (au) and the last change of a sweep (au).
+    """
+    p = theta.shape[0]
+    steps = grid_h.size
+    begin = np.zeros((6, LANES))
+    acc = np.zeros((N_NODES, 3, LANES))
+    d = np.zeros((3, LANES))
+    w = np.zeros((3, LANES))
+    new = np.zeros((3, LANES))
+    da = np.zeros((3, LANES))
+    amount = np.zeros((3, LANES))
+    drift = np.zeros(LANES)
+    change = np.zeros(LANES)
+    for i in range(6):
+        for lane in range(LANES):
+            begin[i, lane] = theta[i, lane]
+    for i in range(3):
+        for lane in range(LANES):
+            if 6 + i < p:
+                da[i, lane] = theta[6 + i, lane]
+            amount[i, lane] = a_ref[i] + da[i, lane]
+    record = first
+    for k in range(steps):
+        h = grid_h[k]
+        # first guess from the linear solution
+        for j in range(N_NODES):
+            for i in range(3):
+                for lane in range(LANES):
+                    d[i, lane] = 0.0
+                    w[i, lane] = 0.0
+                for c in range(p):
+                    cx = columns[k, j, i, c]
+                    cv = columns[k, j, 3 + i, c]
+                    for lane in range(LANES):
+                        d[i, lane] += cx * theta[c, lane]
+                        w[i, lane] += cv * theta[c, lane]
+                if j == 0:
+                    for lane in range(LANES):
+                        d[i, lane] = begin[i, lane]
+                        w[i, lane] = begin[3 + i, lane]
+            _offset_acceleration(gm_sun, nodes[k, j], d, w, da, amount, acc[j])
+        for _ in range(SWEEPS):
+            for lane in range(LANES):
+                change[lane] = 0.0
+            for j in range(1, N_NODES):
+                s = NODES[j] * h
+                for i in range(3):
+                    for lane in range(LANES):
+                        d[i, lane] = begin[i, lane] + s * begin[3 + i, lane]
+                        w[i, lane] = begin[3 + i, lane]
+                    for m in range(N_NODES):
+                        wx = X_WEIGHTS[j, m] * h * h
+                        wv = V_WEIGHTS[j, m] * h
+                        for lane in range(LANES):
+                            d[i, lane] += wx * acc[m, i, lane]
+                            w[i, lane] += wv * acc[m, i, lane]
+                _offset_acceleration(gm_sun, nodes[k, j], d, w, da, amount, new)
+                for i in range(3):
+                    for lane in range(LANES):
+                        change[lane] = max(change[lane], abs(new[i, lane] - acc[j, i, lane]))
+                        acc[j, i, lane] = new[i, lane]
+            worst = 0.0
+            for lane in range(LANES):
+                worst = max(worst, change[lane])
+            if worst * h * h < SETTLED_AU:
+                break
+        # what the orders left out, at the last node
+        row = nodes[k, N_NODES - 1]
+        for lane in range(LANES):
+            size2 = d[0, lane] ** 2 + d[1, lane] ** 2 + d[2, lane] ** 2
+            size = math.sqrt(size2)
+            push = abs(amount[0, lane]) + abs(amount[1, lane]) + abs(amount[2, lane])
+            missing = 10.0 * row[SCALE] * size2 * size + size2 * (
+                push * row[SECOND_PUSH] + row[SECOND_RELATIVITY]
+            )
+            drift[lane] += abs(h) * missing
+            doubt[0, lane] += abs(h) * drift[lane]
+            doubt[1, lane] = max(doubt[1, lane], change[lane] * h * h)
+        while record < last and step_of[record] == k:
+            for i in range(3):
+                for lane in range(LANES):
+                    out[record, i, lane] = begin[i, lane] + fraction_h[record] * begin[3 + i, lane]
+                for m in range(N_NODES):
+                    wx = weight_x[record, m]
+                    for lane in range(LANES):
+                        out[record, i, lane] += wx * acc[m, i, lane]
+            record += 1
+        for i in range(3):
+            for lane in range(LANES):
+                begin[i, lane] += h * begin[3 + i, lane]
+            for m in range(N_NODES):
+                wx = X_WEIGHTS[N_NODES, m] * h * h
+                wv = V_WEIGHTS[N_NODES, m] * h
+                for lane in range(LANES):
+                    begin[i, lane] += wx * acc[m, i, lane]
+                    begin[3 + i, lane] += wv * acc[m, i, lane]
+
+
+@njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
+def sight_residuals(c_au_d, rho, speed, basis, offset, out):
+    """Observed minus computed direction of the lanes, radians in the tangent plane at the observed place.
+
+    ``rho`` (n, 3) observer to object on the reference at its emission time, ``speed`` (n, 3) its velocity
+    then, ``basis`` (n, 3, 3) rows east, north and the observed direction, ``offset`` (n, 3, LANES);
+    ``out`` (n, 2, LANES).
+    """
+    for k in range(rho.shape[0]):
+        x = rho[k, 0]
+        y = rho[k, 1]
+        z = rho[k, 2]
+        ref = math.sqrt(x * x + y * y + z * z)
+        vx = speed[k, 0]
+        vy = speed[k, 1]
+        vz = speed[k, 2]
+        slow = 1.0 / (c_au_d + (x * vx + y * vy + z * vz) / ref)
+        for lane in range(LANES):
+            dx = offset[k, 0, lane]
+            dy = offset[k, 1, lane]
+            dz = offset[k, 2, lane]
+            px = x + dx
+            py = y + dy
+            pz = z + dz
+            far = math.sqrt(px * px + py * py + pz * pz)
+            late = -slow * (dx * (px + x) + dy * (py + y) + dz * (pz + z)) / (far + ref)
+            px += vx * late
+            py += vy * late
+            pz += vz * late
+            depth = basis[k, 2, 0] * px + basis[k, 2, 1] * py + basis[k, 2, 2] * pz
+            east = basis[k, 0, 0] * px + basis[k, 0, 1] * py + basis[k, 0, 2] * pz
+            north = basis[k, 1, 0] * px + basis[k, 1, 1] * py + basis[k, 1, 2] * pz
+            out[k, 0, lane] = -east / depth
+            out[k, 1, lane] = -north / depth
+
+
+@njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
+def whitened_chi2(order, start, flat, flat_start, residual, chi2):
+    """chi2 (LANES,) of residuals (n, 2, LANES) whitened by lower-triangular factors, block by block."""
+    for lane in range(LANES):
+        chi2[lane] = 0.0
+    total = np.empty(LANES)
+    for b in range(start.size - 1):
+        first = start[b]
+        m = 2 * (start[b + 1] - first)
+        at = flat_start[b]
+        for i in range(m):
+            for lane in range(LANES):
+                total[lane] = 0.0
+            for j in range(i + 1):
+                f = flat[at + i * m + j]
+                k = order[first + j // 2]
+                for lane in range(LANES):
+                    total[lane] += f * residual[k, j % 2, lane]
+            for lane in range(LANES):
+                chi2[lane] += total[lane] * total[lane]
+
+
+@njit(cache=True, error_model="numpy", nogil=True)
+def batch(
+    gm_sun, c_au_d, a_ref, back, ahead, rho, speed, basis, whiten, n_back, theta, want_residuals, chi2, doubt,
+    residuals,
+):
+    """chi2 and doubt of many parameter offsets ``theta`` (m, p); m a multiple of LANES.
+
+    ``back`` and ``ahead``: (grid_h, nodes, columns, step_of, weight_x, fraction_h) of the two directions of time; the records
+    are sorted so that the first ``n_back`` lie before the epoch (latest first), the others after it.
+    """
+    n = rho.shape[0]
+    p = theta.shape[1]
+    lanes = np.empty((p, LANES))
+    offset = np.zeros((n, 3, LANES))
+    residual = np.zeros((n, 2, LANES))
+    unsure = np.empty((2, LANES))
+    for block in range(theta.shape[0] // LANES):
+        at = block * LANES
+        for c in range(p):
+            for lane in range(LANES):
+                lanes[c, lane] = theta[at + lane, c]
+        unsure[:] = 0.0
+        offsets_to_records(
+            gm_sun, a_ref, back[0], back[1], back[2], back[3], back[4], back[5], 0, n_back, lanes, offset, unsure
+        )
+        offsets_to_records(
+            gm_sun, a_ref, ahead[0], ahead[1], ahead[2], ahead[3], ahead[4], ahead[5], n_back, n, lanes, offset,
+            unsure,
+        )
+        sight_residuals(c_au_d, rho, speed, basis, offset, residual)
+        whitened_chi2(whiten[0], whiten[1], whiten[2], whiten[3], residual, chi2[at : at + LANES])
+        for lane in range(LANES):
+            doubt[at + lane, 0] = unsure[0, lane]
+            doubt[at + lane, 1] = unsure[1, lane]
+        if want_residuals:
+            for k in range(n):
+                for lane in range(LANES):
+                    residuals[at + lane, k, 0] = residual[k, 0, lane]
+                    residuals[at + lane, k, 1] = residual[k, 1, lane]

@@ -1,0 +1,235 @@
+"""The likelihood's engine: chi2 of many orbits near one reference, exact to stated tolerance.
+
+Imports numpy, constants, errors, the kernels, and the other modules of this room. The neighbours run on the shared
+grid of the reference; those for which the grid's orders are not enough are integrated one by one.
+"""
+
+import os
+from collections.abc import Callable
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from ngbound.arc import Factors
+from ngbound.constants import C_AU_D
+from ngbound.errors import PropagationError
+from ngbound.motion._kernels.grid import weights_at
+from ngbound.motion._kernels.neighbours import LANES, batch
+from ngbound.motion._kernels.radau import N_NODES
+from ngbound.motion.gravity import ForceModel
+from ngbound.motion.observables import Records, Sight, residuals, see
+from ngbound.motion.partials import GridLeg, Partials, partials_along
+from ngbound.motion.propagate import Track, integrate_track
+from ngbound.motion.thrust import Thrust
+
+Floats = NDArray[np.float64]
+Ints = NDArray[np.int64]
+
+NEIGHBOUR_NAMES = ("x", "y", "z", "vx", "vy", "vz", "A1", "A2", "A3")
+GRID_EPS = 5e-6
+TOLERANCE_AU = 3e-11
+SETTLED_AU = 1e-12
+
+
+def _leg_arrays(leg: GridLeg | None, tau_d: Floats) -> tuple[Floats, Floats, Floats, Ints, Floats, Floats]:
+    n = tau_d.size
+    if leg is None:
+        return (
+            np.zeros(0), np.zeros((0, N_NODES, 1)), np.zeros((0, N_NODES, 6, 1)), np.zeros(n, dtype=np.int64),
+            np.zeros((n, N_NODES)), np.zeros(n),
+        )
+    sign = 1.0 if leg.forward else -1.0
+    step_of = np.searchsorted(sign * leg.tau_d, sign * tau_d, side="right") - 1
+    step_of = np.clip(step_of, 0, leg.h_d.size - 1).astype(np.int64)
+    h = leg.h_d[step_of]
+    fraction_h = tau_d - leg.tau_d[step_of]
+    weight = np.empty((n, N_NODES))
+    scrap = np.empty(N_NODES)
+    for i in range(n):
+        weights_at(fraction_h[i] / h[i], weight[i], scrap)
+    weight *= (h**2)[:, None]
+    return leg.h_d, leg.nodes, leg.node_columns(), step_of, weight, fraction_h
+
+
+@dataclass(frozen=True, eq=False)
+class Neighbourhood:
+    """A reference orbit, the records, their noise, and all tables a batch of neighbours needs.
+
+    Build it with `Neighbourhood.around`. A parameter vector is the state at the epoch (au, au/d) followed by the
+    amounts of the free thrust components (au/d2).
+    """
+
+    epoch_d: float
+    theta: Floats
+    thrust: Thrust | None
+    components: str
+    forces: ForceModel
+    records: Records
+    whitening: Factors
+    sight: Sight = field(repr=False)
+    partials: Partials = field(repr=False)
+    tables: tuple = field(repr=False)
+    threads: int = 1
+
+    @classmethod
+    def around(
+        cls,
+        track: Track,
+        records: Records,
+        whitening: Factors,
+        thrust: Thrust | None,
+        components: str,
+        forces: ForceModel,
+        threads: int | None = None,
+    ) -> "Neighbourhood":
+        """Tabulate the surroundings of a track that covers the records."""
+        span = (float(records.tdb_d.min()), float(records.tdb_d.max()))
+        low = min(_lower(track), span[0])
+        high = max(_upper(track), span[1])
+        coarse = integrate_track(track.epoch_d, track.state, low, high, thrust, forces, eps=GRID_EPS)
+        partials = partials_along(track, NEIGHBOUR_NAMES, coarse)
+        sight = see(track, records)
+        behind = np.flatnonzero(sight.tau_d < 0.0)
+        ahead = np.flatnonzero(sight.tau_d >= 0.0)
+        back_order = behind[np.argsort(-sight.tau_d[behind], kind="stable")]
+        ahead_order = ahead[np.argsort(sight.tau_d[ahead], kind="stable")]
+        order = np.concatenate([back_order, ahead_order])
+        place = np.empty_like(order)
+        place[order] = np.arange(order.size)
+        tau = sight.tau_d[order]
+        n_back = back_order.size
+        back = _leg_arrays(partials.back, tau)
+        front = _leg_arrays(partials.ahead, tau)
+        white = (place[whitening.order], whitening.start, whitening.flat, whitening.flat_start)
+        amounts = np.zeros(3) if thrust is None else thrust.amounts_au_d2
+        tables = (
+            float(track.tab.gm[0]), C_AU_D, amounts.copy(), back, front,
+            np.ascontiguousarray(sight.rho_au[order]), np.ascontiguousarray(sight.speed_au_d[order]),
+            np.ascontiguousarray(records.basis[order]), white, int(n_back), order,
+        )
+        free = ["RTN".index(c) for c in components]
+        theta = np.concatenate([track.state, amounts[free]])
+        return cls(
+            track.epoch_d, theta, thrust, components, forces, records, whitening, sight, partials, tables,
+            threads or os.cpu_count() or 1,
+        )
+
+    def _lanes(self, thetas: Floats) -> Floats:
+        """Offsets from the reference, all nine parameters, padded to whole blocks of lanes."""
+        m = thetas.shape[0]
+        full = np.zeros((-(-m // LANES) * LANES, 9))
+        full[:m, :6] = thetas[:, :6] - self.theta[:6]
+        for i, c in enumerate(self.components):
+            full[:m, 6 + "RTN".index(c)] = thetas[:, 6 + i] - self.theta[6 + i]
+        return full
+
+    def chi2(self, thetas: ArrayLike, want_residuals: bool = False) -> Floats | tuple[Floats, Floats]:
+        """chi2 of parameter vectors (m, p); with ``want_residuals`` also O-C (m, n, 2) in radians.
+
+        A vector whose orbit cannot be integrated, or is seen on the other side of the sky, has chi2 = inf.
+        """
+        thetas = np.atleast_2d(np.asarray(thetas, dtype=float))
+        m = thetas.shape[0]
+        full = self._lanes(thetas)
+        bad = ~np.all(np.isfinite(full[:m]), axis=1)
+        full[:m][bad] = 0.0
+        chi2 = np.empty(full.shape[0])
+        doubt = np.empty((full.shape[0], 2))
+        n = len(self.records)
+        keep = np.empty((full.shape[0] if want_residuals else 1, n if want_residuals else 1, 2))
+        gm, c, amounts, back, front, rho, speed, basis, white, n_back, order = self.tables
+        blocks = full.shape[0] // LANES
+        parts = min(self.threads, blocks)
+        edges = np.linspace(0, blocks, parts + 1).astype(int) * LANES
+
+        def work(part: int) -> None:
+            low, high = edges[part], edges[part + 1]
+            batch(
+                gm, c, amounts, back, front, rho, speed, basis, white, n_back, full[low:high], want_residuals,
+                chi2[low:high], doubt[low:high], keep[low:high] if want_residuals else keep,
+            )
+
+        _run(work, parts)
+        chi2 = chi2[:m]
+        astray = (doubt[:m, 0] > TOLERANCE_AU) | (doubt[:m, 1] > SETTLED_AU) | ~np.isfinite(chi2)
+        seen = np.empty((m, n, 2)) if want_residuals else np.empty((0, 0, 0))
+        if want_residuals:
+            seen[:, order, :] = keep[:m]
+        chi2[bad] = np.inf
+        for i in np.flatnonzero(astray & ~bad):
+            chi2[i], one = self.chi2_alone(thetas[i])
+            if want_residuals:
+                seen[i] = one
+        return (chi2, seen) if want_residuals else chi2
+
+    def strays(self, thetas: ArrayLike) -> NDArray[np.bool_]:
+        """Which parameter vectors (m, p) leave the neighbourhood and are integrated one by one."""
+        thetas = np.atleast_2d(np.asarray(thetas, dtype=float))
+        m = thetas.shape[0]
+        full = self._lanes(thetas)
+        chi2 = np.empty(full.shape[0])
+        doubt = np.empty((full.shape[0], 2))
+        gm, c, amounts, back, front, rho, speed, basis, white, n_back, _ = self.tables
+        batch(
+            gm, c, amounts, back, front, rho, speed, basis, white, n_back, full, False, chi2, doubt,
+            np.empty((1, 1, 2)),
+        )
+        return (doubt[:m, 0] > TOLERANCE_AU) | (doubt[:m, 1] > SETTLED_AU)
+
+    def chi2_alone(self, theta: ArrayLike) -> tuple[float, Floats]:
+        """chi2 and O-C (n, 2) of one parameter vector by the adaptive integrator: the slow twin."""
+        theta = np.asarray(theta, dtype=float)
+        thrust = self.thrust
+        if thrust is not None:
+            amounts = thrust.amounts_au_d2.copy()
+            for i, c in enumerate(self.components):
+                amounts["RTN".index(c)] = theta[6 + i]
+            thrust = thrust.with_amounts(amounts)
+        low = float(self.records.tdb_d.min()) - 0.2
+        high = float(self.records.tdb_d.max())
+        try:
+            span = _light_margin(self.sight)
+            track = integrate_track(self.epoch_d, theta[:6], low - span, high, thrust, self.forces)
+            seen = residuals(see(track, self.records), self.records)
+        except PropagationError:
+            return np.inf, np.full((len(self.records), 2), np.nan)
+        return float(np.sum(self.whiten(seen) ** 2)), seen
+
+    def whiten(self, seen: Floats) -> Floats:
+        """Whitened residuals (2 n,) of residuals (n, 2), in the order of the blocks."""
+        w = self.whitening
+        out = []
+        for b in range(w.start.size - 1):
+            rows = w.order[w.start[b] : w.start[b + 1]]
+            m = 2 * rows.size
+            factor = w.flat[w.flat_start[b] : w.flat_start[b] + m * m].reshape(m, m)
+            out.append(np.tril(factor) @ seen[rows].ravel())
+        return np.concatenate(out)
+
+
+def _run(work: Callable[[int], None], parts: int) -> None:
+    if parts <= 1:
+        for part in range(parts):
+            work(part)
+        return
+    with ThreadPoolExecutor(parts) as pool:
+        for done in [pool.submit(work, part) for part in range(parts)]:
+            done.result()
+
+
+def _lower(track: Track) -> float:
+    if track.back is None:
+        return track.epoch_d
+    return track.epoch_d + float(track.back.start_d[-1] + track.back.length_d[-1])
+
+
+def _upper(track: Track) -> float:
+    if track.ahead is None:
+        return track.epoch_d
+    return track.epoch_d + float(track.ahead.start_d[-1] + track.ahead.length_d[-1])
+
+
+def _light_margin(sight: Sight) -> float:
+    return 2.0 * float(np.max(np.linalg.norm(sight.rho_au, axis=1))) / C_AU_D

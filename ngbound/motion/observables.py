@@ -1,0 +1,120 @@
+"""What an observer sees of a trajectory: light time, direction, residuals in the tangent plane, their partials.
+
+Imports numpy, constants, errors, sky, and propagate and partials of this room. Places are astrometric: light
+time is applied, stellar aberration is not (it is common to object and comparison stars), nor is the
+deflection of light by the Sun, of which relative astrometry keeps only the small difference between the object's and
+the stars' (below 1 mas further than 40 degrees from the Sun for objects within a few au).
+"""
+
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from ngbound.constants import C_AU_D
+from ngbound.errors import PropagationError
+from ngbound.motion.partials import Partials
+from ngbound.motion.propagate import Track
+from ngbound.sky import angles_to_direction, sky_axes
+
+Floats = NDArray[np.float64]
+LIGHT_TIME_SWEEPS = 20
+LIGHT_TIME_SETTLED_D = 1e-11
+
+
+@dataclass(frozen=True, eq=False)
+class Records:
+    """Observed directions.
+
+    Attributes
+    ----------
+    tdb_d : (n,) days of TDB past J2000.0
+    observer_au : (n, 3) barycentric ICRF
+    basis : (n, 3, 3) rows: east, north, and the observed direction
+    """
+
+    tdb_d: Floats
+    observer_au: Floats = field(repr=False)
+    basis: Floats = field(repr=False)
+
+    @classmethod
+    def from_angles(cls, tdb_d: ArrayLike, observer_au: ArrayLike, ra_rad: ArrayLike, dec_rad: ArrayLike) -> "Records":
+        """Records of observed right ascensions and declinations (radians, ICRF)."""
+        toward = angles_to_direction(ra_rad, dec_rad)
+        east, north = sky_axes(ra_rad, dec_rad)
+        basis = np.ascontiguousarray(np.stack([east, north, toward], axis=1))
+        return cls(
+            np.ascontiguousarray(tdb_d, dtype=float), np.ascontiguousarray(observer_au, dtype=float), basis
+        )
+
+    def __len__(self) -> int:
+        return self.tdb_d.size
+
+    def subset(self, keep: ArrayLike) -> "Records":
+        """The records of a mask or an index array."""
+        return Records(self.tdb_d[keep], self.observer_au[keep], self.basis[keep])
+
+
+@dataclass(frozen=True, eq=False)
+class Sight:
+    """A trajectory as seen at the records.
+
+    Attributes
+    ----------
+    rho_au : (n, 3) observer to object at the time the light left it
+    speed_au_d : (n, 3) barycentric velocity of the object then
+    tau_d : (n,) that time, days from the epoch
+    """
+
+    rho_au: Floats
+    speed_au_d: Floats
+    tau_d: Floats
+
+
+def see(track: Track, records: Records) -> Sight:
+    """Solve the light time of every record.
+
+    Raises
+    ------
+    PropagationError
+        If the light time does not settle.
+    """
+    received = records.tdb_d - track.epoch_d
+    tau = received.copy()
+    for _ in range(LIGHT_TIME_SWEEPS):
+        state = track.at_offset(tau)
+        rho = state[:, :3] - records.observer_au
+        new = received - np.linalg.norm(rho, axis=1) / C_AU_D
+        moved = np.max(np.abs(new - tau), initial=0.0)
+        tau = new
+        if moved < LIGHT_TIME_SETTLED_D:
+            break
+    else:
+        raise PropagationError("The light time of a record does not settle; check the orbit.")
+    state = track.at_offset(tau)
+    return Sight(state[:, :3] - records.observer_au, state[:, 3:], tau)
+
+
+def residuals(sight: Sight, records: Records) -> Floats:
+    """Observed minus computed, (n, 2) radians east and north in the tangent plane at the observed place."""
+    local = np.einsum("nij,nj->ni", records.basis, sight.rho_au)
+    if np.any(local[:, 2] <= 0.0):
+        raise PropagationError(
+            "The orbit is seen more than 90 degrees from an observed place; it is not the orbit of this arc."
+        )
+    return -local[:, :2] / local[:, 2:3]
+
+
+def design_matrix(sight: Sight, records: Records, partials: Partials) -> Floats:
+    """Partials of the computed place, (n, 2, p) radians per unit of each parameter."""
+    columns = partials.at_offset(sight.tau_d)[:, :3, :]
+    distance = np.linalg.norm(sight.rho_au, axis=1)
+    toward = sight.rho_au / distance[:, None]
+    slow = C_AU_D + np.einsum("ni,ni->n", toward, sight.speed_au_d)
+    late = -np.einsum("ni,nip->np", toward, columns) / slow[:, None]
+    moved = columns + sight.speed_au_d[:, :, None] * late[:, None, :]
+    local = np.einsum("nij,nj->ni", records.basis, sight.rho_au)
+    depth = local[:, 2]
+    xi = local[:, :2] / depth[:, None]
+    across = records.basis[:, :2, :] - xi[:, :, None] * records.basis[:, 2:3, :]
+    return np.einsum("naj,njp->nap", across, moved) / depth[:, None, None]

@@ -1,0 +1,247 @@
+"""From an orbit to where the object is: integrates and turns a kernel's status into a sentence.
+
+Imports numpy, constants, errors, sky, the kernels, and gravity, thrust of this room.
+"""
+
+from dataclasses import dataclass, field
+
+import numpy as np
+from numpy.typing import ArrayLike, NDArray
+
+from ngbound.errors import PropagationError
+from ngbound.motion._kernels.layout import (
+    INSIDE_BODY,
+    NOT_CONVERGED,
+    OK,
+    STEP_UNDERFLOW,
+    TOO_MANY_STEPS,
+    WINDOW_DATE,
+    WINDOW_DISTANCE,
+    Perturbers,
+    Physics,
+    Push,
+)
+from ngbound.motion._kernels.radau import STEP_CAP_D, dense_many, integrate
+from ngbound.motion.gravity import ForceModel
+from ngbound.motion.thrust import NO_PUSH, Thrust
+from ngbound.sky import load_ephemeris, tdb_d_to_iso
+
+Floats = NDArray[np.float64]
+MAX_STEPS = 200_000
+FIRST_GUESS_STEPS = 512
+MARGIN_D = 1e-6
+
+
+@dataclass(frozen=True, eq=False)
+class Leg:
+    """Integration from the epoch in one direction of time: steps and the polynomial of each.
+
+    ``start_d``, ``length_d`` (n,) days from the epoch, signed; ``begin`` (n + 1, 6) barycentric au, au/d;
+    ``power`` (n, 8, 3) coefficients of the acceleration in powers of the step fraction.
+    """
+
+    start_d: Floats = field(repr=False)
+    length_d: Floats = field(repr=False)
+    begin: Floats = field(repr=False)
+    power: Floats = field(repr=False)
+    forward: bool
+
+    @property
+    def n(self) -> int:
+        """Number of steps."""
+        return self.length_d.size
+
+    def at(self, tau_d: Floats) -> Floats:
+        """Barycentric states (m, 6) at days from the epoch."""
+        out = np.empty((tau_d.size, 6))
+        dense_many(self.start_d, self.length_d, self.begin, self.power, self.n, self.forward, tau_d, out)
+        return out
+
+
+@dataclass(frozen=True, eq=False)
+class Track:
+    """A trajectory that can be asked for any time of its span.
+
+    Attributes
+    ----------
+    epoch_d : float
+        TDB days past J2000.0.
+    state : (6,) array
+        Barycentric ICRF at the epoch, au and au/d.
+    back, ahead : Leg or None
+    tab, physics, push
+        What the kernels integrated with.
+    """
+
+    epoch_d: float
+    state: Floats
+    back: Leg | None
+    ahead: Leg | None
+    tab: Perturbers = field(repr=False)
+    physics: Physics = field(repr=False)
+    push: Push = field(repr=False)
+
+    def at_offset(self, tau_d: ArrayLike) -> Floats:
+        """Barycentric states (m, 6) at days from the epoch."""
+        tau = np.atleast_1d(np.asarray(tau_d, dtype=float))
+        out = np.empty((tau.size, 6))
+        out[:] = self.state
+        behind = tau < 0.0
+        if self.back is not None:
+            out[behind] = self.back.at(tau[behind])
+        if self.ahead is not None:
+            out[~behind] = self.ahead.at(tau[~behind])
+        return out
+
+    def at(self, tdb_d: ArrayLike) -> Floats:
+        """Barycentric states (m, 6) at TDB days past J2000.0."""
+        return self.at_offset(np.atleast_1d(np.asarray(tdb_d, dtype=float)) - self.epoch_d)
+
+
+def _body_names(forces: ForceModel, start_d: float, end_d: float) -> tuple[str, ...]:
+    return load_ephemeris().table(
+        start_d, end_d, asteroids=forces.asteroids, exclude=forces.exclude
+    ).names
+
+
+def _explain(
+    status: int, met: Floats, epoch_d: float, steps: int, forces: ForceModel, span: tuple[float, float]
+) -> PropagationError:
+    when = tdb_d_to_iso(epoch_d + float(met[1]))
+    if status == INSIDE_BODY:
+        name = _body_names(forces, *span)[int(met[0])]
+        return PropagationError(
+            f"The orbit runs into the {name} at {when} TDB; check the state or elements, or "
+            "shorten the span to end before it.",
+            body=name,
+            tau_d=float(met[1]),
+        )
+    if status in (STEP_UNDERFLOW, NOT_CONVERGED):
+        return PropagationError(
+            f"The integration stalls at {when} TDB: its step shrinks below a millisecond, as "
+            "it does in the centre of a body; check the state or elements.",
+            tau_d=float(met[1]),
+        )
+    if status == TOO_MANY_STEPS:
+        return PropagationError(
+            f"The integration needed more than {steps} steps and stopped at {when} TDB; shorten "
+            "the span, or check whether the orbit circles a planet.",
+            tau_d=float(met[1]),
+        )
+    return PropagationError(f"The integration failed at {when} TDB (status {status}).", status=status)
+
+
+def _integrate_leg(
+    tab: Perturbers,
+    physics: Physics,
+    push: Push,
+    epoch_d: float,
+    state: Floats,
+    tau_d: float,
+    forces: ForceModel,
+    eps: float,
+    breaks: Floats,
+    span: tuple[float, float],
+) -> Leg:
+    n_max = FIRST_GUESS_STEPS
+    while True:
+        status, n, start, length, begin, power, met = integrate(
+            tab, push, physics, epoch_d, state, tau_d, eps, STEP_CAP_D, breaks, n_max
+        )
+        if status != TOO_MANY_STEPS or n_max >= MAX_STEPS:
+            break
+        n_max = min(MAX_STEPS, n_max * 8)
+    if status != OK:
+        raise _explain(int(status), met, epoch_d, n_max, forces, span)
+    return Leg(start[:n].copy(), length[:n].copy(), begin[: n + 1].copy(), power[:n].copy(), tau_d >= 0)
+
+
+def _switch_times(leg: Leg, tab: Perturbers, epoch_d: float, window: tuple[float, float]) -> Floats:
+    """Days from the epoch at which the heliocentric distance crosses an end of the window."""
+    ephemeris = load_ephemeris()
+    fractions = np.linspace(0.0, 1.0, 9)
+    taus = np.unique((leg.start_d[:, None] + leg.length_d[:, None] * fractions).ravel())
+
+    def distance(tau: Floats) -> Floats:
+        sun = ephemeris.position_au("sun", epoch_d + tau)
+        return np.linalg.norm(leg.at(tau)[:, :3] - sun, axis=1)
+
+    r = distance(taus)
+    found = []
+    for edge in window:
+        if not np.isfinite(edge):
+            continue
+        for i in np.flatnonzero((r[:-1] - edge) * (r[1:] - edge) < 0.0):
+            low, high = taus[i], taus[i + 1]
+            sign = np.sign(r[i] - edge)
+            for _ in range(60):
+                middle = 0.5 * (low + high)
+                if np.sign(distance(np.array([middle]))[0] - edge) == sign:
+                    low = middle
+                else:
+                    high = middle
+            found.append(0.5 * (low + high))
+    return np.array(sorted(found))
+
+
+def integrate_track(
+    epoch_d: float,
+    state: ArrayLike,
+    start_d: float,
+    end_d: float,
+    thrust: Thrust | None = None,
+    forces: ForceModel | None = None,
+    eps: float | None = None,
+) -> Track:
+    """Integrate a state over a span.
+
+    Parameters
+    ----------
+    epoch_d, start_d, end_d : float
+        TDB days past J2000.0; the span is widened to hold the epoch.
+    state : (6,) array
+        Barycentric ICRF, au and au/d.
+    thrust : Thrust, optional
+    forces : ForceModel, optional
+    eps : float, optional
+        Step control, instead of that of ``forces``.
+
+    Raises
+    ------
+    PropagationError
+        Collision, stalled steps, too long a span.
+    EphemerisRangeError
+        A time outside the ephemeris.
+    """
+    forces = forces or ForceModel()
+    eps = forces.eps if eps is None else eps
+    state = np.ascontiguousarray(state, dtype=float)
+    if state.shape != (6,) or not np.all(np.isfinite(state)):
+        raise PropagationError(
+            f"A state has six finite numbers (au, au/d); got {state.tolist()}.", state=state
+        )
+    low = min(start_d, epoch_d)
+    high = max(end_d, epoch_d)
+    tab, physics = forces.perturbers(low, high)
+    push = (thrust or NO_PUSH).push()
+    legs: list[Leg | None] = []
+    for tau in (low - epoch_d, high - epoch_d):
+        if tau == 0.0:
+            legs.append(None)
+            continue
+        breaks = np.zeros(0)
+        if push.window_kind == WINDOW_DATE:
+            ends = np.array([push.window_from, push.window_to]) - epoch_d
+            breaks = ends[np.isfinite(ends)]
+        args = (tab, physics, push, epoch_d, state, tau, forces, eps)
+        leg = _integrate_leg(*args, breaks, (low, high))
+        if push.window_kind == WINDOW_DISTANCE:
+            # the crossings move a little with the thrust they switch, so they are found again until they rest
+            for _ in range(4):
+                last = breaks
+                breaks = _switch_times(leg, tab, epoch_d, (push.window_from, push.window_to))
+                if breaks.size == last.size and np.all(np.abs(breaks - last) < 1e-8):
+                    break
+                leg = _integrate_leg(*args, breaks, (low, high))
+        legs.append(leg)
+    return Track(epoch_d, state, legs[0], legs[1], tab, physics, push)

@@ -1,0 +1,170 @@
+"""Arithmetic of quoted numbers: five sound invented papers, five with one planted slip, and more.
+
+The sound sets follow from M = zeta Q m v / (A g) and the sphere, worked out by hand to the digits
+given.
+"""
+
+import json
+
+import astropy.units as u
+import pytest
+
+from ngbound.errors import CaseError, MassError
+from ngbound.mass import audit_numbers
+
+# zeta Q m v = 0.5 x 1e27 x 2.9915e-26 x 800 = 11966 N; A = 1.43e-8 au/d2 = 2.866e-7 m/s2, times
+# 0.6:
+# 6.959e10 kg; 500 kg/m3: 643 m
+COMET = {
+    "acceleration": "1.43e-8 au/d2",
+    "at": 1.3,
+    "g_at_r": 0.6,
+    "rate": "1.00e27 molecules/s",
+    "speed": "0.80 km/s",
+    "collimation": "0.50",
+    "mass": "6.96e10 kg",
+    "density": "500 kg/m3",
+    "diameter": "643 m",
+}
+# kg/s, radius, local acceleration: 3.6 kg/s x 400 m/s = 1440 N; 2.51e-6 m/s2: 5.74e8 kg;
+# 1000 kg/m3: D = 103.1 m
+INTERSTELLAR = {
+    "local_acceleration": "2.51e-6 m/s2",
+    "at": 1.4,
+    "mass_loss": "3.6 kg/s",
+    "speed": "400 m/s",
+    "collimation": 1.0,
+    "mass": "5.7e8 kg",
+    "density": "1000 kg/m3",
+    "radius": "52 m",
+}
+# CO at 6 au: 0.4 x 1e28 x 4.6512e-26 x 450 = 83721 N; A = 2.0e-9 au/d2 = 4.008e-8 m/s2, over 36:
+# 1.113e-9 m/s2; 7.52e13 kg; fraction of gravity: GM/r^2 = 1.6473e-4 m/s2: 6.76e-6;
+# 9.62e-5 m/s per day
+DISTANT = {
+    "acceleration": "2.00e-9 au/d2",
+    "at": "6.0 au",
+    "rate": "1.00e28 molecules/s",
+    "species": "CO",
+    "speed": "450 m/s",
+    "collimation": "0.40",
+    "mass": "7.52e13 kg",
+    "gravity_fraction": "6.76e-6",
+    "velocity_change": "9.62e-5 m / (s d)",
+}
+# a limit of 1.96 sigma at 95 %, its mass and the photometric size of H = 18.0, p = 0.04: 1669 m
+LIMIT = {
+    "acceleration": "1.96e-9 au/d2",
+    "acceleration_sigma": "1.00e-9 au/d2",
+    "confidence": 0.95,
+    "diameter": "1670 m",
+    "H": "18.00",
+    "albedo": "0.040",
+    "density": "450 kg/m3",
+    "mass": "1.10e12 kg",
+}
+# force alone: 5000 N; 1.0e-7 m/s2; 5.0e10 kg; D 586 m at 475
+FORCE = {
+    "force": "5000 N",
+    "local_acceleration": "1.00e-7 m/s2",
+    "mass": "5.00e10 kg",
+    "density": "475 kg/m3",
+    "diameter": "586 m",
+    "radius": "293 m",
+}
+SOUND = {
+    "comet": COMET,
+    "interstellar": INTERSTELLAR,
+    "distant": DISTANT,
+    "limit": LIMIT,
+    "force": FORCE,
+}
+
+
+@pytest.mark.parametrize("paper", SOUND.values(), ids=SOUND)
+def test_sound_papers_are_called_sound(paper):
+    found = audit_numbers(**paper)
+    assert found.verdict == "sound", str(found)
+    assert found.tests and not found.changes
+
+
+@pytest.mark.parametrize(
+    ("paper", "planted", "quantity", "words"),
+    [
+        (COMET, {"mass": "6.96e13 kg"}, "mass", "factor 1000"),
+        (COMET, {"acceleration": "1.43e-8 m/s2"}, "acceleration", "au/d2 and m/s2"),
+        (LIMIT, {"acceleration": "1.645e-9 au/d2"}, "acceleration", "one-sided and two-sided"),
+        (FORCE, {"mass": "4.00e11 kg"}, "mass", "radius and diameter exchanged"),
+        (COMET, {"rate": "6.00e26 molecules/s"}, "rate", "wrong distance"),
+        (COMET, {"diameter": "322 m"}, "diameter", "radius and diameter"),
+        (COMET, {"speed": "0.80 m/s"}, "speed", "km/s and m/s"),
+        (COMET, {"density": "0.500 kg/m3"}, "density", "g/cm3"),
+        (INTERSTELLAR, {"mass_loss": "3600 kg/s"}, "mass_loss", "g/s and kg/s"),
+        (DISTANT, {"velocity_change": "9.62e-5 m/s2"}, "velocity_change", "per second"),
+        (DISTANT, {"gravity_fraction": "1.88e-7"}, "gravity_fraction", "gravity at 1 au"),
+        (DISTANT, {"rate": "1.66e4 molecules/s"}, "rate", "moles"),
+        (LIMIT, {"albedo": "4.0"}, "albedo", "per cent"),
+    ],
+)
+def test_planted_slips_are_named(paper, planted, quantity, words):
+    found = audit_numbers(**{**paper, **planted})
+    assert found.verdict == "slip", str(found)
+    single = {c.quantities[0]: c for c in found.changes if len(c.quantities) == 1}
+    assert any(words in slip for slip in single[quantity].slips), str(found)
+    # nothing ranks above the planted slip unless it is as well named
+    best = found.changes[0]
+    assert best.quantities == (quantity,) or best.slips
+
+
+def test_the_value_needed_is_given():
+    found = audit_numbers(**{**COMET, "mass": "6.96e13 kg"})
+    assert found.changes[0].quantities == ("mass",)
+    assert found.changes[0].needed["mass"] == pytest.approx(6.96e10, rel=0.01)
+    assert found.changes[0].ratios["mass"] == pytest.approx(1000, rel=0.01)
+
+
+def test_two_slips_need_two_changes():
+    found = audit_numbers(**{**COMET, "rate": "5.00e29 1/s", "diameter": "3000 m"})
+    assert found.verdict == "inconsistent"
+    assert {len(c.quantities) for c in found.changes} == {2}
+    assert any(set(c.quantities) == {"rate", "diameter"} for c in found.changes)
+    assert "2 numbers" in str(found)
+
+
+def test_no_relation_is_said_to_be_untestable():
+    assert audit_numbers(speed="1 km/s", density="500 kg/m3").verdict == "untestable"
+
+
+def test_limits_and_quantities_are_read():
+    found = audit_numbers(mass="> 5.24e8 kg", density=1 * u.g / u.cm**3, diameter=100.0)
+    assert found.verdict == "sound"
+    assert found.quoted["density"] == pytest.approx(1000)
+
+
+def test_rounding_is_forgiven_only_as_far_as_the_digits_go():
+    rough = {"mass": "5e8 kg", "density": "1000 kg/m3", "diameter": "100 m"}
+    assert audit_numbers(**rough).verdict == "sound"
+    assert audit_numbers(**{**rough, "mass": "5.00e8 kg"}).verdict == "inconsistent"
+
+
+def test_magnitude_needed():
+    found = audit_numbers(H=20.0, albedo=0.04, diameter=1669.0)
+    by_name = {c.quantities: c for c in found.changes}
+    assert by_name["absolute_magnitude",].needed["absolute_magnitude"] == pytest.approx(
+        18.0, abs=0.01
+    )
+
+
+def test_the_record_is_json():
+    json.dumps(audit_numbers(**{**COMET, "mass": "1e13 kg"}).to_dict(), allow_nan=False)
+
+
+def test_refusals():
+    with pytest.raises(CaseError, match="masss"):
+        audit_numbers(masss=1.0)
+    with pytest.raises(CaseError, match="km"):
+        audit_numbers(mass="5 km")
+    with pytest.raises(MassError, match="off there"):
+        audit_numbers(mass=1.0, g_at_r=0.0)
+    with pytest.raises(CaseError, match="confidence"):
+        audit_numbers(mass=1.0, confidence=95.0)

@@ -1,0 +1,144 @@
+"""Case files: defaults, paths, and a sentence for every fault."""
+
+import pytest
+
+from ngbound.case import Case, nearest, read_case
+from ngbound.errors import CaseError
+
+
+@pytest.fixture
+def write(tmp_path):
+    def write_case(text: str, name: str = "my.toml"):
+        path = tmp_path / name
+        path.write_text(text, encoding="utf-8")
+        return path
+
+    return write_case
+
+
+def fault(path) -> str:
+    with pytest.raises(CaseError) as caught:
+        read_case(path)
+    message = str(caught.value)
+    assert "\n" not in message
+    assert message.endswith((".", "?", ")"))
+    assert str(path) in message
+    return message
+
+
+def test_the_smallest_case_has_a_default_for_everything_else(write, tmp_path):
+    case = read_case(write('[arc]\nfile = "a.psv"\n'))
+    assert case.arc.file == tmp_path / "a.psv"
+    assert case.output.folder == tmp_path / "out" / "my"
+    assert case.detection.false_alarm == 0.0027
+    assert case.thrust.law == "inverse-square"
+    assert case.outgassing == ()
+    assert set(case.to_dict()) == set(Case.model_fields)
+
+
+def test_every_key_is_documented():
+    def undocumented(model):
+        for name, field in model.model_fields.items():
+            inner = [
+                part
+                for part in (field.annotation, *getattr(field.annotation, "__args__", ()))
+                if hasattr(part, "model_fields")
+            ]
+            if inner:
+                assert all(part.__doc__ for part in inner)
+                for part in inner:
+                    yield from undocumented(part)
+            elif not field.description:
+                yield f"{model.__name__}.{name}"
+
+    assert list(undocumented(Case)) == []
+
+
+def test_absolute_paths_are_kept(write, tmp_path):
+    elsewhere = tmp_path / "elsewhere" / "a.psv"
+    case = read_case(write(f'[arc]\nfile = "{elsewhere}"\n[output]\nfolder = "/tmp/x"\n'))
+    assert case.arc.file == elsewhere
+    assert str(case.output.folder) == "/tmp/x"
+
+
+def test_a_case_is_frozen(write):
+    case = read_case(write('[arc]\nfile = "a.psv"\n'))
+    with pytest.raises(ValueError, match="frozen"):
+        case.detection.power = 0.5
+
+
+def test_a_misspelt_key_gets_the_right_one_with_its_line(write):
+    message = fault(write('[arc]\nfile = "a.psv"\n\n[detection]\nfalse_alarms = 0.01\n'))
+    assert "line 5" in message
+    assert "[detection] has no key 'false_alarms'; did you mean 'false_alarm'?" in message
+
+
+def test_a_misspelt_table_gets_the_right_one_with_its_line(write):
+    message = fault(write('[arc]\nfile = "a.psv"\n[detektion]\npower = 0.9\n'))
+    assert "line 3: there is no table 'detektion'; did you mean 'detection'?" in message
+
+
+def test_a_key_in_the_second_of_two_tables_is_found_there(write):
+    budget = '[[outgassing]]\nrate = 1e26\nat = 1.2\n'
+    message = fault(write(f'[arc]\nfile = "a.psv"\n{budget}{budget}spedd = 800\n'))
+    assert "line 9" in message
+    assert "did you mean 'speed'?" in message
+
+
+def test_an_impossible_value_is_told_with_the_allowed_range(write):
+    message = fault(write('[arc]\nfile = "a.psv"\n[detection]\npower = 1.7\n'))
+    assert "line 4: [detection] power = 1.7: must be less than 1" in message
+
+
+def test_not_a_number_is_no_number(write):
+    assert "power" in fault(write('[arc]\nfile = "a.psv"\n[detection]\npower = nan\n'))
+
+
+def test_several_faults_are_all_told(write):
+    message = fault(write('[arc]\nfile = "a.psv"\n[detection]\npower = 2\nfalse_alarm = 2\n'))
+    assert "1 more" in message
+    assert "false_alarm" in message
+
+
+def test_the_arc_is_compulsory(write):
+    assert "arc is missing" in fault(write('[detection]\npower = 0.9\n'))
+
+
+def test_half_an_orbit_is_refused(write):
+    message = fault(write('[arc]\nfile = "a"\n[orbit]\nepoch = "2031-01-01"\nq_au = 1.2\n'))
+    assert "line 3" in message
+    assert "position_au and velocity_au_d" in message
+
+
+@pytest.mark.parametrize(
+    ("content", "word"),
+    [
+        (b"", "empty"),
+        (b"# only a remark\n", "empty"),
+        (b"\x89PNG\r\n\x1a\n\x00\xff", "UTF-8"),
+        (b"[arc\nfile = 1\n", "line 1"),
+        (b'[arc]\nfile = "a"\nfile = "b"\n', "line 3"),
+    ],
+)
+def test_what_is_no_case_file_is_told_in_one_sentence(tmp_path, content, word):
+    path = tmp_path / "bad.toml"
+    path.write_bytes(content)
+    assert word in fault(path)
+
+
+def test_a_folder_and_a_missing_file_are_told_in_one_sentence(tmp_path):
+    assert "directory" in fault(tmp_path)
+    assert "No such file" in fault(tmp_path / "absent.toml")
+
+
+@pytest.mark.parametrize(
+    ("law", "meant"), [("water_ice", "water-ice"), ("inverse-sqare", "inverse-square")]
+)
+def test_an_unknown_law_gets_the_nearest(write, law, meant):
+    message = fault(write(f'[arc]\nfile = "a"\n[thrust]\nlaw = "{law}"\n'))
+    assert "line 4" in message
+    assert meant in message
+
+
+def test_nearest_lists_what_is_known_when_nothing_is_near():
+    assert nearest("zzz", ["alpha", "beta"]) == "known are alpha, beta."
