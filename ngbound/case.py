@@ -8,7 +8,6 @@ May import errors, arc, sky, motion, fit, limits, mass and report; never run or 
 """
 
 import difflib
-import hashlib
 import re
 import tomllib
 from collections import Counter
@@ -22,7 +21,7 @@ from pydantic import BaseModel, ConfigDict, Field, ValidationError, field_valida
 from ngbound.arc import ErrorModel, user_stations
 from ngbound.errors import CaseError, StationError
 from ngbound.limits import PRIOR_NAMES
-from ngbound.mass import Outgassing
+from ngbound.mass import Outgassing, Photometry
 from ngbound.motion import LAWS, ForceModel, Orbit, TableLaw, Thrust, Window
 from ngbound.sky import parse_time
 
@@ -335,10 +334,20 @@ class NucleusTable(Table):
         default=500.0,
         description="Bulk density, kg/m3; about 500 is common practice for comet nuclei.",
     )
-    H: float | None = Field(default=None, description="Absolute magnitude of the bare nucleus.")
-    albedo: Annotated[float, Field(gt=0.0, le=1.0)] | None = Field(
-        default=None, description="Geometric albedo, for the photometric diameter."
+    H: Spec | None = Field(default=None, description="Absolute magnitude of the bare nucleus.")
+    albedo: Spec | None = Field(
+        default=None, description="Geometric albedo, for the diameter from brightness."
     )
+    coma: bool = Field(default=False, description="Whether H may hold light of a coma.")
+
+    def photometry(self) -> Photometry | None:
+        """The brightness of the nucleus, or None when the case gives no H."""
+        return None if self.H is None else Photometry(self.H, self.albedo, self.coma)
+
+    @model_validator(mode="after")
+    def _sound(self) -> Self:
+        _as_value_error(self.photometry)
+        return self
 
 
 class OutputTable(Table):
@@ -448,9 +457,12 @@ def read_case(path: str | Path) -> Case:
     CaseError
         One sentence with file, line, table and key, and the nearest right key.
     """
-    case = read_toml(path, Case)
     path = Path(path)
-    base = path.resolve().parent
+    return _in_folder(read_toml(path, Case), path, path.parent)
+
+
+def _in_folder(case: Case, path: Path, base: Path) -> Case:
+    """The case with its paths counted from ``base``, and with an output folder."""
     folder = case.output.folder or Path("out") / path.stem
     return case.model_copy(
         update={
@@ -460,9 +472,49 @@ def read_case(path: str | Path) -> Case:
     )
 
 
-def sha256_of(path: str | Path) -> str:
-    """SHA-256 of a file's bytes, as 64 hexadecimal digits."""
-    return hashlib.sha256(Path(path).read_bytes()).hexdigest()
+def case_for(path: str | Path, **choices: Any) -> Case:
+    """The case of a case file, or of a bare arc with a default for everything else.
+
+    Parameters
+    ----------
+    path : path
+        What ends in .toml is a case file, anything else an arc.
+    **choices
+        Choices that override those of the file; None leaves a choice as it is.  The names are
+        those of `CHOICES`.
+
+    Raises
+    ------
+    CaseError
+        As `read_case`, and for a choice that is not allowed.
+    """
+    path = Path(path)
+    if path.suffix == ".toml":
+        case = read_case(path)
+    else:
+        case = _in_folder(Case(arc=ArcTable(file=path)), path, Path())
+    given = {name: value for name, value in choices.items() if value is not None}
+    if not given:
+        return case
+    content = case.model_dump()
+    for name, value in given.items():
+        table, key = CHOICES[name]
+        content[table][key] = value
+    try:
+        return Case.model_validate(content)
+    except ValidationError as error:
+        fault = error.errors()[0]
+        raise CaseError(_fault("the command line", Case, dict(fault))) from error
+
+
+CHOICES = {
+    "law": ("thrust", "law"),
+    "components": ("thrust", "components"),
+    "seed": ("sampling", "seed"),
+    "object_name": ("object", "name"),
+    "output": ("output", "folder"),
+}
+"""Choices that can be made beside a case file: their table and key in it."""
 
 
 def _lower_first(text: str) -> str:
@@ -529,22 +581,25 @@ def _dotted(text: str) -> tuple[str, ...]:
 
 def _sentence(path: Path, text: str, model: type[BaseModel], fault: dict[str, Any]) -> str:
     """One fault that pydantic found, as a sentence with file, line, table and key."""
-    loc = [part for part in fault["loc"] if not str(part).startswith("function-")]
-    line = _line_of(text, loc)
-    where = f"{path}, line {line}" if line else f"{path}"
+    line = _line_of(text, list(fault["loc"]))
+    return _fault(f"{path}, line {line}" if line else str(path), model, fault)
+
+
+def _fault(where: str, model: type[BaseModel], fault: dict[str, Any]) -> str:
+    """One fault that pydantic found, as a sentence that begins with ``where``."""
+    loc = list(fault["loc"])
     names = [part for part in loc if isinstance(part, str)]
     table = f"[{'.'.join(names[:-1])}] " if len(names) > 1 else ""
     key = names[-1] if names else "the file"
-    kind, given = fault["type"], fault.get("input")
-    if kind == "extra_forbidden":
+    given = fault.get("input")
+    if fault["type"] == "extra_forbidden":
         home = _model_at(model, loc[:-1]) or model
         noun = "table" if isinstance(given, dict | list) else "key"
         holder = f"{table}has no" if table else "there is no"
         return f"{where}: {holder} {noun} {key!r}; {nearest(key, list(home.model_fields))}"
-    if kind == "missing":
+    if fault["type"] == "missing":
         return f"{where}: {table}{key} is missing and has no default."
     message = fault["msg"].removeprefix("Value error, ")
     message = re.sub(r"^(Input|String|List|Tuple|Value) should ", "must ", message)
-    message = _lower_first(message)
     shown = "" if isinstance(given, dict) else f" = {given!r}"
-    return f"{where}: {table}{key}{shown}: {message.rstrip('.')}."
+    return f"{where}: {table}{key}{shown}: {_lower_first(message).rstrip('.')}."

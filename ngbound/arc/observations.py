@@ -111,8 +111,8 @@ Context = tuple[tuple[str, str, tuple[tuple[str, str], ...]], ...]
 
 @dataclass(frozen=True)
 class Angles:
-    """Positions that a reader has parsed itself: degrees, reported text, resolution (RA not times
-    cos dec), arcsec."""
+    """Positions that a reader has parsed itself: degrees, reported text, resolution in arcsec (RA
+    not times cos dec) and s (NaN: what the digits of obsTime say)."""
 
     ra_deg: FloatArray
     dec_deg: FloatArray
@@ -278,7 +278,7 @@ class Arc:
         frame = frame.reset_index(drop=True)
         known = [c for c in frame.columns if c in COLUMNS]
         for column in frame.columns:
-            if column not in COLUMNS and column not in DERIVED and column != "obsType80":
+            if column not in COLUMNS and column not in DERIVED:
                 near = difflib.get_close_matches(str(column), list(COLUMNS), n=3, cutoff=0.4)
                 raise ArcError(
                     f"data frame: the column {column!r} is not an ADES column; near matches: "
@@ -288,23 +288,31 @@ class Arc:
                 )
         n = len(frame)
         text = {c: texts_of(frame[c]) for c in known}
-        kind = np.array([""] * n, dtype=object)
-        if "kind" in frame:
-            kind[:] = frame["kind"].to_numpy(dtype=object)
-        else:
-            filled = {c for c in known if (text[c] != "").any()}
-            kind[:] = kind_of_columns(filled) or kind_of_columns(set(known)) or OPTICAL
-        if not name and not {"permID", "provID", "artSat", "trkSub"} & set(known):
-            name = "unnamed object"
         if n == 0:
             raise ArcError("data frame: it has no rows; an arc needs at least one observation.")
+        if "kind" in frame:
+            kind = frame["kind"].to_numpy(dtype="O")
+            strange = [str(k) for k in pd.unique(kind) if k not in REQUIRED]
+            if strange:
+                raise ArcError(
+                    f"data frame: the kind {strange[0]!r} is not a kind of record; use one of "
+                    f"{', '.join(REQUIRED)}, or leave the column out.",
+                    column="kind",
+                    value=strange[0],
+                )
+        else:
+            filled = {c for c in known if (text[c] != "").any()}
+            one = kind_of_columns(filled) or kind_of_columns(set(known)) or OPTICAL
+            kind = np.full(n, one, dtype="O")
+        if not name and not {"permID", "provID", "artSat", "trkSub"} & set(known):
+            name = "unnamed object"
         records = Records(
             source="data frame",
             text=text,
             kind=kind,
             line=np.arange(n, dtype=np.int64),
             block=np.full(n, -1, dtype=np.int64),
-            set_aside=np.array([""] * n, dtype=object),
+            set_aside=np.array([""] * n, dtype="O"),
             unit_name="row",
             angles=_frame_angles(frame, text) if n and "ra" in known else None,
         )
@@ -357,6 +365,7 @@ def _frame_angles(frame: pd.DataFrame, text: Mapping[str, ObjectArray]) -> Angle
     n = len(frame)
     ra = frame["ra"].to_numpy(dtype=np.float64, copy=True)
     dec = frame["dec"].to_numpy(dtype=np.float64, copy=True)
+    timed_by_text = "obsTime" in frame and pd.api.types.is_string_dtype(frame["obsTime"])
     again = "digits_ra_arcsec" in frame and "raText" in frame
     ra_step = np.zeros(n)
     if again:
@@ -371,9 +380,7 @@ def _frame_angles(frame: pd.DataFrame, text: Mapping[str, ObjectArray]) -> Angle
         dec_step_arcsec=frame["digits_dec_arcsec"].to_numpy(dtype=float, copy=True)
         if again
         else np.zeros(n),
-        time_step_s=frame["digits_time_s"].to_numpy(dtype=float, copy=True)
-        if again
-        else np.zeros(n),
+        time_step_s=np.full(n, np.nan if timed_by_text else 0.0),
     )
 
 
@@ -404,10 +411,10 @@ def assemble(
     checker.required()
     columns: dict[str, Any] = {}
     for column in TEXT_COLUMNS:
-        if column in records.text or column in ALWAYS_TEXT:
+        if column in ALWAYS_TEXT or checker.filled(column).any():
             columns[column] = checker.text_column(column)
     for column in NUMBER_COLUMNS:
-        if column in records.text or column in ALWAYS_NUMBER:
+        if column in ALWAYS_NUMBER or checker.filled(column).any():
             columns[column] = checker.number_column(column)
     checker.groups()
     day, sec, time_step = checker.times()
@@ -479,7 +486,7 @@ class _Checker:
 
     def required(self) -> None:
         for kind in self.kinds:
-            mine = self.records.kind == kind
+            mine = (self.records.kind == kind) & (self.records.set_aside == "")
             for column in REQUIRED[kind]:
                 if self.records.angles is not None and column in ("ra", "dec"):
                     continue
@@ -635,7 +642,8 @@ class _Checker:
             ra, dec = given.ra_deg.copy(), given.dec_deg.copy()
             ra_text, dec_text = given.ra_text.copy(), given.dec_text.copy()
             ra_step, dec_step = given.ra_step_arcsec.copy(), given.dec_step_arcsec.copy()
-            time_step = given.time_step_s
+            said = np.isfinite(given.time_step_s)
+            time_step = np.where(said, given.time_step_s, time_step)
             mine = self.records.kind == OPTICAL
             self._refuse_angle(
                 mine & ~((ra >= 0.0) & (ra < 360.0)), "ra", ra_text, "from 0 to below 360 deg"

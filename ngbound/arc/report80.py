@@ -420,10 +420,10 @@ class _Reader:
             if self.type80[row] == "S":
                 if unit not in "12":
                     raise self._second_fail(second, "33", "the unit must be 1 (km) or 2 (au)")
-                values = [_signed(line[a:b]) for a, b in ((34, 45), (46, 57), (58, 69))]
+                values = [_signed(line[a:b]) for a, b in ((34, 46), (46, 58), (58, 70))]
                 if any(v is None for v in values):
                     raise self._second_fail(
-                        second, "35-69", "this is not a geocentric position in x, y, z"
+                        second, "35-70", "this is not a geocentric position in x, y, z"
                     )
                 text["sys"][row] = "ICRF_KM" if unit == "1" else "ICRF_AU"
             else:

@@ -28,9 +28,12 @@ from numpy.typing import ArrayLike, NDArray
 from ngbound.constants import ARCSEC_RAD, C_AU_D, GM_SUN_AU3_D2, J2000_JD, OBLIQUITY_J2000_RAD
 from ngbound.errors import FirstOrbitError, PropagationError
 from ngbound.fit.gauss import gauss_orbits
-from ngbound.motion.elements import CometaryElements
-from ngbound.motion.kepler import propagate_two_body, two_body_sightlines
-from ngbound.motion.lambert import two_point_scan
+from ngbound.motion import (
+    CometaryElements,
+    propagate_two_body,
+    two_body_sightlines,
+    two_point_scan,
+)
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
@@ -43,6 +46,8 @@ _NIGHT_GAP_D = 0.3
 _WINDOWS_D = ((10.0, 40.0), (40.0, 120.0), (3.0, 10.0), (120.0, 400.0), (0.0, 3.0))
 _LONGEST_D = 1000.0
 _HOPELESS_RAD = 120.0 * ARCSEC_RAD
+_ATTEMPTS = 5
+_MOST_WINDOWS = 7
 _MOST_ROWS = 150
 _SCAN_ROWS = 12
 _EXCESS_WEIGHT = 3.0
@@ -219,6 +224,8 @@ def preliminary_orbits(
     found: list[_Solution] = []
     tried = 0
     for window in _windows(sights):
+        if tried == _MOST_WINDOWS and not any(_acceptable(s) for s in found):
+            break
         tried += 1
         grown = [_grow(sights, s) for s in _solve(window, rng)]
         found += grown
@@ -351,16 +358,12 @@ def _acceptable(solution: _Solution) -> bool:
 
 
 def _merit(solution: _Solution) -> tuple[float, ...]:
-    span = solution.sights.span_d
-    octave = 0.0 if span <= 0 else -round(2.0 * math.log2(max(span, 1e-3)))
-    return (
-        0.0 if _acceptable(solution) else 1.0,
-        octave if _acceptable(solution) else 0.0,
-        -0.5 * round(2.0 * math.log10(max(1, solution.keep.sum()))),
-        solution.chi2 + 4.0 * len(solution.keep) - 4.0 * solution.keep.sum() + solution.penalty
-        if _acceptable(solution)
-        else solution.rms_rad,
-    )
+    """Sorting key: acceptable ones first, then by what they explain, then by chi2 and prior."""
+    if not _acceptable(solution):
+        return (1.0, 0.0, solution.rms_rad / float(solution.keep.mean()))
+    explained = 2.0 * math.log2(max(solution.sights.span_d, 1e-3)) + math.log2(len(solution.keep))
+    rejected = len(solution.keep) - int(solution.keep.sum())
+    return (0.0, -round(explained), solution.chi2 + _REJECT**2 * rejected + solution.penalty)
 
 
 def _distinct(solutions: list[_Solution], most: int) -> list[_Solution]:
@@ -410,7 +413,7 @@ def _solve(window: _Sights, rng: np.random.Generator) -> list[_Solution]:
     rows = window.thinned(_MOST_ROWS)
     label = f"{window.span_d:.3g} d"
     solutions: list[_Solution] = []
-    for attempt in range(6):
+    for attempt in range(_ATTEMPTS):
         starts: list[tuple[float, FloatArray, str]] = []
         for triple in _triples(rows, rng, attempt):
             picked = rows.take(triple)
@@ -424,6 +427,8 @@ def _solve(window: _Sights, rng: np.random.Generator) -> list[_Solution]:
             if fitted is not None:
                 solutions.append(fitted)
         if any(_acceptable(s) for s in solutions) or len(rows) <= 3:
+            break
+        if attempt == 2 and not solutions:
             break
     solutions.sort(key=_merit)
     good = [s for s in solutions if _acceptable(s)]
@@ -549,7 +554,7 @@ def _zoom(
 
 
 def _correct(
-    sights: _Sights, epoch: float, state: FloatArray, method: str, rounds: int = 3
+    sights: _Sights, epoch: float, state: FloatArray, method: str, rounds: int = 8
 ) -> _Solution | None:
     """Two-body differential correction with Huber weights, then rejection of what stands out."""
     middle = int(np.argmin(np.abs(sights.t - 0.5 * (sights.t[0] + sights.t[-1]))))
@@ -567,17 +572,24 @@ def _correct(
         if stepped is None:
             return None
         state = stepped
-        pulls = np.abs(_miss(sights, new_epoch, state) / sights.sigma)
+        miss = _miss(sights, new_epoch, state)
+        pulls = np.abs(miss / sights.sigma)
         size = pulls.max(axis=1)
+        middling = float(np.median(pulls))
+        if middling > 50.0 and float(np.median(np.abs(miss))) > _HOPELESS_RAD:
+            return None
         if len(sights) > 4:
             # two-body misfit and optimistic sigmas both widen the scale
-            scale = max(1.0, 1.4826 * float(np.median(pulls)))
+            scale = max(1.0, 1.4826 * middling)
+        before = keep
         keep = size < _REJECT * scale
         if keep.sum() < max(3, 0.5 * len(sights)):
             keep = size <= np.quantile(size, 0.9)
+        old_weight = weight
         weight = np.minimum(1.0, _HUBER * scale / np.maximum(pulls, 1e-12))
         weight[~keep] = 0.0
-        if len(sights) <= 4 or (size < _HUBER * scale).all():
+        settled = bool((keep == before).all()) and float(np.abs(weight - old_weight).max()) < 0.1
+        if len(sights) <= 4 or settled:
             break
     miss = _miss(sights, new_epoch, state)
     if not np.isfinite(miss).all() or keep.sum() < 3:

@@ -14,7 +14,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from ngbound.constants import C_AU_D, GM_SUN_AU3_D2
 from ngbound.errors import PropagationError
-from ngbound.motion.kepler import propagate_two_body
+from ngbound.motion import propagate_two_body
 
 FloatArray = NDArray[np.float64]
 

@@ -33,7 +33,7 @@ Bools = NDArray[np.bool_]
 STATE_NAMES = ("x", "y", "z", "vx", "vy", "vz")
 MOVED_ENOUGH = 1e-3
 CHI2_SETTLED = 1e-4
-MAX_SWEEPS = 40
+MAX_SWEEPS = 60
 MAX_DAMPING = 1e12
 UNDETERMINED = 1e-12
 
@@ -180,7 +180,9 @@ def differential_correction(
     try:
         here = at(theta)
     except PropagationError as error:
-        raise FitError(f"The first guess of the orbit cannot be used: {error}", theta=theta) from error
+        raise FitError(
+            f"The first guess of the orbit cannot be used: {error}", theta=theta
+        ) from error
     damping = 0.0
     for sweep in range(1, max_sweeps + 1):
         rows = here.design[keep].reshape(-1, theta.size)
@@ -208,9 +210,14 @@ def differential_correction(
                     chi2=here.chi2,
                 )
         settled = size < MOVED_ENOUGH or (
-            damping == 0.0 and abs(here.chi2 - there.chi2) < CHI2_SETTLED and expected < CHI2_SETTLED
+            damping == 0.0
+            and abs(here.chi2 - there.chi2) < CHI2_SETTLED
+            and expected < CHI2_SETTLED
         )
-        damping = damping * 0.1 if damping > 1e-9 else 0.0
+        gain = (here.chi2 - there.chi2) / expected if expected > 0.0 else 1.0
+        if damping > 0.0:
+            damping *= 0.01 if settled or gain > 0.75 else 0.1 if gain > 0.25 else 1.0
+            damping = damping if damping > 1e-10 else 0.0
         here = there
         if settled and damping == 0.0:
             rows = here.design[keep].reshape(-1, theta.size)

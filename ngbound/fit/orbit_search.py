@@ -16,7 +16,13 @@ from ngbound.arc import Noise
 from ngbound.constants import ARCSEC_RAD
 from ngbound.errors import FirstOrbitError, NgboundError
 from ngbound.fit.first_orbit import Preliminary, preliminary_orbits
-from ngbound.fit.least_squares import Correction, differential_correction, linearise
+from ngbound.fit.least_squares import (
+    Correction,
+    Linearised,
+    differential_correction,
+    linearise,
+    thrust_of,
+)
 from ngbound.fit.outliers import RECOVER_CHI2, REJECT_CHI2, judge, residual_chi2
 from ngbound.motion import ForceModel, Records, Thrust, integrate_track
 from ngbound.sky import direction_to_angles, load_ephemeris
@@ -30,7 +36,11 @@ LINEAR_RAD = 3e-3
 LOOSE = 4.0
 MAX_ROUNDS = 15
 GOOD_REDUCED_CHI2 = 3.0
+GOOD_LOST = 0.1
 FEW = 5
+ROOM = 4
+LEAST_GAIN = 30.0
+FEE = 25.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -41,6 +51,8 @@ class Converged:
     correction: Correction = field(repr=False)
     keep: Bools
     rounds: int
+    thrust: Thrust | None = None
+    components: str = ""
 
     @property
     def reduced_chi2(self) -> float:
@@ -81,7 +93,9 @@ def settle(
             break
         seen_before.append(keep.tobytes())
         keep = new
-    return Converged(epoch_d, correction, keep, turn)
+    return Converged(
+        epoch_d, correction, keep, turn, thrust_of(theta, thrust, components), components
+    )
 
 
 def middle_epoch(records: Records) -> float:
@@ -111,60 +125,100 @@ def _next_window(
 ) -> tuple[int, int, Bools]:
     """The wider window, and which of its records to keep at first."""
     t = records.tdb_d
-    n = t.size
     half = 0.5 * (t[high - 1] - t[low]) * WIDEN + 0.5
     centre = 0.5 * (t[high - 1] + t[low])
-    new_low = min(int(np.searchsorted(t, centre - half)), max(low - 1, 0))
-    new_high = max(int(np.searchsorted(t, centre + half, side="right")), min(high + 1, n))
-    theta = found.correction.at.theta
-    while True:
-        part = slice(new_low, new_high)
-        subset = records.subset(part)
-        mask = np.ones(new_high - new_low, dtype=bool)
-        local = noise.mask(np.arange(new_low, new_high))
-        there = linearise(theta, found.epoch_d, subset, local, mask, None, "", forces)
-        spread = _spread_rad(there.design, found.correction.cov)
-        fresh = np.ones(mask.size, dtype=bool)
-        fresh[low - new_low : high - new_low] = False
-        if not fresh.any() or spread[fresh].max() < LINEAR_RAD:
-            break
-        # only as far as the orbit is known: keep the nearest of the new records
-        fine = np.flatnonzero(~fresh | (spread < LINEAR_RAD)) + new_low
-        left = low
-        while left - 1 >= new_low and (left - 1) in set(fine.tolist()):
-            left -= 1
-        right = high
-        while right < new_high and right in set(fine.tolist()):
-            right += 1
-        if (left, right) == (low, high):
-            # no record is near enough: take the one that is known best
-            before = spread[low - 1 - new_low] if low > new_low else np.inf
-            after = spread[high - new_low] if high < new_high else np.inf
-            left, right = (low - 1, high) if before < after else (low, high + 1)
-            new_low, new_high = left, right
-            part = slice(new_low, new_high)
-            subset = records.subset(part)
-            mask = np.ones(new_high - new_low, dtype=bool)
-            local = noise.mask(np.arange(new_low, new_high))
-            there = linearise(theta, found.epoch_d, subset, local, mask, None, "", forces)
-            break
-        new_low, new_high = left, right
-    inside = np.zeros(new_high - new_low, dtype=bool)
-    inside[low - new_low : high - new_low] = found.keep
-    old = np.zeros(new_high - new_low, dtype=bool)
-    old[low - new_low : high - new_low] = True
+    left = min(int(np.searchsorted(t, centre - half)), max(low - 1, 0))
+    right = max(int(np.searchsorted(t, centre + half, side="right")), min(high + 1, t.size))
+    local, there = _seen_over(records, noise, left, right, found, forces)
+    vague = _spread_rad(there.design, found.correction.cov) > LINEAR_RAD
+    if vague.any():
+        # only as far as the orbit is known, and always one record further
+        before, after = vague[: low - left], vague[high - left :]
+        near = int(np.flatnonzero(before)[-1]) + 1 if before.any() else 0
+        far = int(np.flatnonzero(after)[0]) if after.any() else after.size
+        wider_left, wider_right = left + near, high + far
+        if (wider_left, wider_right) == (low, high):
+            gap_before = t[low] - t[low - 1] if low > left else np.inf
+            gap_after = t[high] - t[high - 1] if high < right else np.inf
+            wider_left, wider_right = (low - 1, high) if gap_before < gap_after else (low, high + 1)
+        if (wider_left, wider_right) != (left, right):
+            left, right = wider_left, wider_right
+            local, there = _seen_over(records, noise, left, right, found, forces)
+    inside = np.zeros(right - left, dtype=bool)
+    inside[low - left : high - left] = found.keep
+    old = np.zeros(right - left, dtype=bool)
+    old[low - left : high - left] = True
     chi2 = residual_chi2(there.seen, there.design, found.correction.cov, local, inside)
     keep = np.where(old, inside, chi2 < 25.0 * REJECT_CHI2)
     if not np.any(keep & ~old):
         # all new records disagree with the orbit: it is the orbit that must move
         keep = keep | ~old
-    return new_low, new_high, keep
+    return left, right, keep
+
+
+def _seen_over(
+    records: Records, noise: Noise, left: int, right: int, found: Converged, forces: ForceModel
+) -> tuple[Noise, Linearised]:
+    """The noise of a window and the orbit linearised over it."""
+    rows = np.arange(left, right)
+    local = noise.mask(rows)
+    there = linearise(
+        found.correction.at.theta, found.epoch_d, records.subset(rows), local,
+        np.ones(rows.size, dtype=bool), found.thrust, found.components, forces,
+    )  # fmt: skip
+    return local, there
+
+
+def _room_for(components: str, keep: Bools) -> bool:
+    return bool(components) and 2 * int(keep.sum()) >= 6 + len(components) + ROOM
+
+
+def _settle_leanest(
+    wanted: tuple[str, ...],
+    theta: Floats,
+    epoch_d: float,
+    records: Records,
+    noise: Noise,
+    keep: Bools,
+    thrust: Thrust | None,
+    forces: ForceModel,
+) -> Converged:
+    """Settle with the first set of components that explains the records, else with the best."""
+    best: Converged | None = None
+    refusal: NgboundError | None = None
+    for letters in wanted:
+        start = theta if len(theta) == 6 + len(letters) else np.pad(theta[:6], (0, len(letters)))
+        try:
+            found = settle(
+                start, epoch_d, records, noise, keep, thrust if letters else None, letters, forces,
+                keep.size > FEW, LOOSE,
+            )  # fmt: skip
+        except NgboundError as error:
+            refusal = refusal or error
+            continue
+        if best is None or _merit(found) < _merit(best) - LEAST_GAIN:
+            best = found
+        if _explains(best):
+            break
+    if best is None:
+        assert refusal is not None
+        raise refusal
+    return best
 
 
 def grow(
-    first: Preliminary, records: Records, noise: Noise, forces: ForceModel, say: Progress | None = None
+    first: Preliminary,
+    records: Records,
+    noise: Noise,
+    forces: ForceModel,
+    say: Progress | None = None,
+    thrust: Thrust | None = None,
+    components: str = "",
 ) -> Converged:
-    """Grow a gravity-only orbit from a preliminary one over all records (sorted by time).
+    """Grow an orbit from a preliminary one over all records (sorted by time).
+
+    Gravity alone is tried first; the thrust components are set free, once and for all, at the
+    length of arc that gravity alone does not explain.
 
     Raises
     ------
@@ -178,10 +232,15 @@ def grow(
     keep = np.zeros(high - low, dtype=bool)
     keep[first.indices - low] = True
     epoch = first.epoch_tdb_d
+    free = ""
     while True:
         part = records.subset(slice(low, high))
         local = noise.mask(np.arange(low, high))
-        found = settle(theta, epoch, part, local, keep, None, "", forces, keep.size > FEW, LOOSE)
+        wanted = (free,) if free or not _room_for(components, keep) else ("", components)
+        found = _settle_leanest(wanted, theta, epoch, part, local, keep, thrust, forces)
+        if found.components and not free and say is not None:
+            say("gravity alone does not explain the arc any more: thrust is set free")
+        free = found.components
         theta = found.correction.at.theta
         if say is not None:
             days = float(part.tdb_d[-1] - part.tdb_d[0])
@@ -192,9 +251,14 @@ def grow(
 
 
 def find_orbit(
-    records: Records, noise: Noise, forces: ForceModel, say: Progress | None = None
+    records: Records,
+    noise: Noise,
+    forces: ForceModel,
+    say: Progress | None = None,
+    thrust: Thrust | None = None,
+    components: str = "",
 ) -> Converged:
-    """A gravity-only orbit over all records, from the angles alone.
+    """An orbit over all records, from the angles alone; with thrust only where gravity alone fails.
 
     Raises
     ------
@@ -211,27 +275,31 @@ def find_orbit(
         if say is not None:
             say(str(candidate))
         try:
-            found = grow(candidate, records, noise, forces, say)
+            found = grow(candidate, records, noise, forces, say, thrust, components)
         except NgboundError as error:
             refusals.append(str(error))
             continue
-        lost = 1.0 - float(found.keep.mean())
         if best is None or _merit(found) < _merit(best):
             best = found
-        if found.reduced_chi2 < GOOD_REDUCED_CHI2 and lost < 0.1:
+        if _explains(best):
             break
     if best is None:
+        days = float(records.tdb_d[-1] - records.tdb_d[0])
         raise FirstOrbitError(
-            f"None of {len(candidates)} preliminary orbits could be carried over the whole arc; the last refusal was: "
-            f"{refusals[-1]} Give an initial state or elements, or split the arc.",
+            f"None of {len(candidates)} preliminary orbits could be carried over all "
+            f"{len(records)} observations in {days:.4g} d. Add observations over a longer time, "
+            "look for records of another object, or give an initial state or elements. The last "
+            f"refusal was: {refusals[-1]}",
             candidates=candidates,
         )
     return best
 
 
+def _explains(found: Converged) -> bool:
+    """Whether nearly all records are kept with a sane chi2."""
+    return found.reduced_chi2 < GOOD_REDUCED_CHI2 and found.keep.mean() > 1.0 - GOOD_LOST
+
+
 def _merit(found: Converged) -> float:
     """Lower is better: chi2 of the kept records with a fee for each rejected one."""
-    lost = int((~found.keep).sum())
-    return found.correction.at.chi2 + 25.0 * lost
-
-
+    return found.correction.at.chi2 + FEE * int((~found.keep).sum())

@@ -1,9 +1,15 @@
-"""Rejection of outliers, with recovery.
+"""Rejection of outliers, with recovery; imports numpy, constants, arc.
 
-M. Carpino, A. Milani & S. R. Chesley 2003, Icarus 166, 248: a record is rejected where the chi2 of its residual, with the
-covariance the residual should have (noise less what the fit absorbed for a record in the fit, noise plus the orbit's
-own error for one outside it), exceeds 8, and comes back below 7. Deviation: while very large residuals are about,
-the bar is a quarter of the largest, so that a gross error does not take its neighbours with it. Imports numpy, constants.
+M. Carpino, A. Milani & S. R. Chesley 2003, Icarus 166, 248: a record is rejected where the chi2 of
+its residual, with the covariance the residual should have (noise less what the fit absorbed for a
+record in the fit, noise plus the orbit's own error for one outside it), exceeds 8, and comes back
+below 7.
+
+Deviations. While very large residuals are about, the bar is a quarter of the largest, so that a
+gross error does not take its neighbours with it. Where more than half of the records miss by more
+than they should, it is the orbit or the sigmas that are wrong, not the records: the bars are
+multiplied by the median chi2 over its expectation, so that a gravity-only fit does not throw out
+the very records that show a thrust.
 """
 
 import numpy as np
@@ -18,6 +24,8 @@ Bools = NDArray[np.bool_]
 REJECT_CHI2 = 8.0
 RECOVER_CHI2 = 7.0
 BAR_FRACTION = 0.25
+MEDIAN_CHI2 = 1.3862943611198906
+"""Median of chi2 with two degrees of freedom, 2 ln 2."""
 
 
 def residual_chi2(seen: Floats, design: Floats, cov: Floats, noise: Noise, keep: Bools) -> Floats:
@@ -47,8 +55,12 @@ def residual_chi2(seen: Floats, design: Floats, cov: Floats, noise: Noise, keep:
     return np.einsum("ni,nij,nj->n", seen, np.linalg.inv(total), seen)
 
 
-def judge(chi2: Floats, keep: Bools, reject: float = REJECT_CHI2, recover: float = RECOVER_CHI2) -> Bools:
+def judge(
+    chi2: Floats, keep: Bools, reject: float = REJECT_CHI2, recover: float = RECOVER_CHI2
+) -> Bools:
     """The records to keep in the next round."""
+    scale = max(1.0, float(np.median(chi2)) / MEDIAN_CHI2) if chi2.size else 1.0
+    reject, recover = reject * scale, recover * scale
     largest = float(np.max(chi2[keep], initial=0.0))
     bar = max(reject, BAR_FRACTION * largest)
     back = recover if bar == reject else min(recover, bar)

@@ -26,6 +26,10 @@ Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
 AU_PER_D2 = u.au / u.day**2
 MIN_OBSERVATIONS = 3
+WEAK_DISTANCE_ERROR = 0.1
+"""Relative error of the distance above which a fit warns that it is only linear theory."""
+HOPELESS_DISTANCE_ERROR = 2.0
+"""Relative error of the distance above which there is no orbit to speak of."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -112,9 +116,13 @@ class Fit:
     @property
     def weighted_rms_arcsec(self) -> float:
         """Root of the mean of the squared kept residuals, weighted by 1/sigma^2, arcsec."""
-        sigma = np.stack([self.noise.sigma_ra_arcsec, self.noise.sigma_dec_arcsec], axis=1)[self.keep]
+        sigma = np.stack([self.noise.sigma_ra_arcsec, self.noise.sigma_dec_arcsec], axis=1)[
+            self.keep
+        ]
         weight = sigma**-2
-        return float(np.sqrt(np.sum(weight * (self.seen[self.keep] / ARCSEC_RAD) ** 2) / weight.sum()))
+        return float(
+            np.sqrt(np.sum(weight * (self.seen[self.keep] / ARCSEC_RAD) ** 2) / weight.sum())
+        )
 
     @property
     def A(self) -> u.Quantity:
@@ -142,14 +150,45 @@ class Fit:
         return float(np.sqrt((a / scale) @ np.linalg.solve(c, a / scale)))
 
     @cached_property
+    def distance_error(self) -> float:
+        """Standard error of the topocentric distance at the epoch over that distance."""
+        rho = self.correction.at.sight.rho_au
+        near = rho[int(np.argmin(np.abs(self.records.tdb_d - self.orbit.epoch_tdb_d)))]
+        distance = float(np.linalg.norm(near))
+        toward = near / distance
+        return float(np.sqrt(toward @ self.theta_cov[:3, :3] @ toward)) / distance
+
+    @property
+    def weakness(self) -> str:
+        """A sentence about an orbit that the arc hardly determines; "" for a good one."""
+        if self.distance_error <= WEAK_DISTANCE_ERROR:
+            return ""
+        return (
+            f"The arc hardly determines this orbit: its distance is uncertain by "
+            f"{100.0 * self.distance_error:.0f} %, too much for linear error propagation; take "
+            "limits from the exact posterior, or observe longer."
+        )
+
+    @cached_property
     def residuals(self) -> pd.DataFrame:
         """The residual table; columns in `ngbound.fit.residuals.residual_table`."""
         chi2 = residual_chi2(
-            self.seen, self.design.reshape(-1, 2, self.theta.size), self.theta_cov, self.noise, self.keep
+            self.seen,
+            self.design.reshape(-1, 2, self.theta.size),
+            self.theta_cov,
+            self.noise,
+            self.keep,
         )
         return residual_table(
-            self.used, self.records, self.observers, self.correction.at.sight, self.seen, self.noise,
-            self.keep, chi2, self.orbit.epoch_tdb_d,
+            self.used,
+            self.records,
+            self.observers,
+            self.correction.at.sight,
+            self.seen,
+            self.noise,
+            self.keep,
+            chi2,
+            self.orbit.epoch_tdb_d,
         )
 
     @cached_property
@@ -192,6 +231,8 @@ class Fit:
             "A_sigma_au_d2": np.sqrt(np.diag(self.theta_cov)[6:]).tolist(),
             "significance_sigma": self.significance,
             "condition": self.correction.condition,
+            "distance_error": self.distance_error,
+            "weakness": self.weakness,
         }
 
     def __str__(self) -> str:
@@ -200,10 +241,14 @@ class Fit:
             f"Fit {what}: {self.n_obs} observations ({self.n_rejected} rejected), rms {self.rms_arcsec:.3f} arcsec, "
             f"weighted {self.weighted_rms_arcsec:.3f} arcsec, chi2 {self.chi2:.2f} for {self.dof} degrees of freedom",
         ]
-        for c, a, s in zip(self.components, self.theta[6:], np.sqrt(np.diag(self.theta_cov)[6:]), strict=True):
+        for c, a, s in zip(
+            self.components, self.theta[6:], np.sqrt(np.diag(self.theta_cov)[6:]), strict=True
+        ):
             lines.append(
                 f"  A{'RTN'.index(c) + 1} ({c}) = {a:+.4g} +- {s:.2g} au/d2 ({a / s:+.1f} sigma)"
             )
+        if self.weakness:
+            lines.append("  " + self.weakness)
         lines.append(str(self.orbit.elements()))
         return "\n".join(lines)
 
@@ -260,17 +305,23 @@ def fit_orbit(
     observers = observer_states(used, ephemeris)
     table = used.table
     records = Records.from_angles(
-        observers.tdb_d, observers.position_au, table["ra_rad"].to_numpy(), table["dec_rad"].to_numpy()
+        observers.tdb_d,
+        observers.position_au,
+        table["ra_rad"].to_numpy(),
+        table["dec_rad"].to_numpy(),
     )
     noise = error_model.apply(used)
     components = "" if thrust is None else thrust.components
     mask = np.ones(len(used), dtype=bool) if keep is None else np.asarray(keep, dtype=bool).copy()
     epoch = middle_epoch(records) if epoch_tdb_d is None else float(epoch_tdb_d)
     if initial is None:
-        start = find_orbit(records, noise, forces, progress)
-        theta = at_epoch(start.correction.at.theta, start.epoch_d, epoch, None, forces)
+        fallback = thrust if components else Thrust("inverse-square")
+        start = find_orbit(records, noise, forces, progress, fallback, components or "RTN")
+        theta = at_epoch(start.correction.at.theta, start.epoch_d, epoch, start.thrust, forces)
         mask = mask & start.keep
         guess = thrust
+        if components and start.thrust is not None:
+            guess = start.thrust
     else:
         theta = at_epoch(initial.state_vector, initial.epoch_tdb_d, epoch, initial.thrust, forces)
         guess = thrust
@@ -284,9 +335,29 @@ def fit_orbit(
     motion = motion_rad_d(found.correction.at.sight, records, observers) / ARCSEC_RAD / 86400.0
     noise = error_model.apply(used, motion)
     found = settle(
-        found.correction.at.theta, epoch, records, noise, found.keep, guess, components, forces, reject
+        found.correction.at.theta,
+        epoch,
+        records,
+        noise,
+        found.keep,
+        guess,
+        components,
+        forces,
+        reject,
     )
-    return _as_fit(arc, used, error_model, noise, records, observers, found, guess, components, forces)
+    fit = _as_fit(
+        arc, used, error_model, noise, records, observers, found, guess, components, forces
+    )
+    if fit.distance_error > HOPELESS_DISTANCE_ERROR:
+        raise FitError(
+            f"The {fit.n_obs} observations of {arc.name} over {arc.used.span_d:.3g} d do not "
+            f"determine {'the orbit and the thrust' if components else 'the orbit'}: the distance "
+            f"at the epoch is uncertain by {fit.distance_error:.2g} times itself, so that no limit "
+            "on a thrust exists. Add observations over a longer time"
+            f"{', or fit fewer thrust components' if components else ''}.",
+            fit=fit,
+        )
+    return fit
 
 
 def _as_fit(
@@ -302,7 +373,9 @@ def _as_fit(
     forces: ForceModel,
 ) -> Fit:
     at = found.correction.at
-    orbit = Orbit(found.epoch_d, at.theta[:6].copy(), thrust_of(at.theta, thrust, components), forces)
+    orbit = Orbit(
+        found.epoch_d, at.theta[:6].copy(), thrust_of(at.theta, thrust, components), forces
+    )
     return Fit(
         arc=arc,
         used=used,
@@ -380,15 +453,21 @@ class Comparison:
 def compare_fits(null: Fit, push: Fit) -> Comparison:
     """Compare a fit with another that has more thrust components.
 
-    Where the outlier rule kept different observations, both are fitted anew to those that both kept.
+    Where the outlier rule kept different observations, both are fitted anew to all that either
+    kept: what one of the two orbits explains is no outlier, and a gravity-only fit must not win by
+    having thrown out the records that speak against it.
 
     Raises
     ------
     FitError
         If the fits are of different arcs, or the second has no more parameters than the first.
     """
-    if len(null.used) != len(push.used) or not np.array_equal(null.records.tdb_d, push.records.tdb_d):
-        raise FitError("The two fits are of different arcs and cannot be compared; fit the same arc twice.")
+    if len(null.used) != len(push.used) or not np.array_equal(
+        null.records.tdb_d, push.records.tdb_d
+    ):
+        raise FitError(
+            "The two fits are of different arcs and cannot be compared; fit the same arc twice."
+        )
     extra = push.theta.size - null.theta.size
     if extra <= 0:
         raise FitError(
@@ -397,7 +476,7 @@ def compare_fits(null: Fit, push: Fit) -> Comparison:
         )
     refitted = not np.array_equal(null.keep, push.keep)
     if refitted:
-        both = null.keep & push.keep
+        either = null.keep | push.keep
         null, push = (
             fit_orbit(
                 f.arc,
@@ -407,7 +486,7 @@ def compare_fits(null: Fit, push: Fit) -> Comparison:
                 forces=f.orbit.forces,
                 reject=False,
                 epoch_tdb_d=f.orbit.epoch_tdb_d,
-                keep=both,
+                keep=either,
             )
             for f in (null, push)
         )
@@ -420,5 +499,3 @@ def compare_fits(null: Fit, push: Fit) -> Comparison:
         push.n_obs,
         refitted,
     )
-
-

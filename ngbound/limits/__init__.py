@@ -34,6 +34,7 @@ sigma_A -> sigma_theta D sqrt(720 / N) / T^2 (R. L. Gluckstern 1963, NIM 24, 381
 
 from ngbound.limits.fit_protocol import ThrustFit
 from ngbound.limits.information import AU_D2, ThrustInformation, thrust_information
+from ngbound.limits.injection import Rate, Recovery, inject_and_recover, linear_refit
 from ngbound.limits.posterior import Posterior, sample_posterior
 from ngbound.limits.priors import PRIOR_NAMES, ThrustPrior, thrust_prior
 from ngbound.limits.threshold import (
@@ -52,6 +53,8 @@ __all__ = [
     "DetectionThreshold",
     "DirectionMap",
     "Posterior",
+    "Rate",
+    "Recovery",
     "ThrustFit",
     "ThrustInformation",
     "ThrustPrior",
@@ -59,6 +62,8 @@ __all__ = [
     "Verdict",
     "detection_threshold",
     "flat_prior_limit",
+    "inject_and_recover",
+    "linear_refit",
     "noncentrality",
     "profile_limit",
     "sample_posterior",

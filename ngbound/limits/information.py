@@ -7,7 +7,7 @@ transpose, are the Schur complement. No badly scaled matrix is ever inverted (N.
 Accuracy and Stability of Numerical Algorithms, 2nd ed., chapter 10).
 """
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -42,13 +42,10 @@ class OrbitConditional:
         -F_xx^-1 F_xA.
     spread : (n, n) float
         Square root of F_xx^-1: spread @ spread.T is the covariance of the orbit at a given thrust.
-    log_det_spread : float
-        Natural logarithm of the determinant of ``spread``.
     """
 
     gain: np.ndarray
     spread: np.ndarray
-    log_det_spread: float
 
 
 @dataclass(frozen=True)
@@ -108,6 +105,10 @@ class ThrustInformation:
     def wald(self) -> float:
         """A_hat' F_A A_hat: chi2 with k degrees of freedom if there is no thrust."""
         return float(self.A_hat @ self.matrix @ self.A_hat)
+
+    def with_estimate(self, A: np.ndarray) -> "ThrustInformation":
+        """The same information about another estimate A (k,), au/d2."""
+        return replace(self, A_hat=np.asarray(A, dtype=float))
 
     def direction(
         self, direction: "str | np.ndarray | list[float] | tuple[float, ...]"
@@ -300,7 +301,6 @@ def thrust_information(fit: ThrustFit) -> ThrustInformation:
         orbit=OrbitConditional(
             gain=gain_scaled * a_scale[None, :] / x_scale[:, None],
             spread=spread_scaled / x_scale[:, None],
-            log_det_spread=float(-np.sum(np.log(np.diag(orbit_factor))) - np.sum(np.log(x_scale))),
         ),
     )
 

@@ -13,8 +13,8 @@ uses it as its proposal).
 from dataclasses import dataclass
 
 import numpy as np
-from scipy.special import log_ndtr
-from scipy.stats import truncnorm
+from scipy.special import log_ndtr, ndtri, ndtri_exp
+from scipy.stats import qmc
 
 from ngbound.limits.information import ThrustInformation
 from ngbound.limits.priors import ThrustPrior
@@ -56,12 +56,20 @@ class LinearPosterior:
 
     def draw(self, random: "np.random.Generator | np.random.RandomState", n: int) -> np.ndarray:
         """``n`` draws A (n, k), au/d2."""
-        k = self.information.k
+        return self.from_uniform(np.asarray(random.random(size=(n, self.information.k + 1))))
+
+    def from_uniform(self, uniform: np.ndarray) -> np.ndarray:
+        """Draws A (n, k) from points (n, k + 1) of the unit cube."""
+        uniform = np.clip(uniform, 2.0**-54, 1.0 - 2.0**-53)
         if self.prior.name == "outward-radial":
-            return self._draw_outward(random, n)
-        weight = np.exp(self.log_weight)
-        which = random.choice(len(weight), size=n, p=weight / weight.sum())
-        b = self.mean[which] + self.sigma[which] * random.standard_normal(size=(n, k))
+            return self._outward_from_uniform(uniform)
+        z = ndtri(uniform[:, 1:])
+        if len(self.log_weight) == 1:
+            b = self.mean + self.sigma * z
+        else:
+            steps = np.cumsum(np.exp(self.log_weight))
+            which = np.searchsorted(steps / steps[-1], uniform[:, 0])
+            b = self.mean[which] + self.sigma[which] * z
         return b @ self.information.eigenvectors.T
 
     def log_density(self, A: np.ndarray) -> np.ndarray:
@@ -83,16 +91,15 @@ class LinearPosterior:
         ) / self.inflation**2 + (self.prior.log_density(A))
 
     def weighted_draws(self, seed: int, n: int) -> tuple[np.ndarray, np.ndarray]:
-        """Draws A (n, k) and importance weights (n,) that stand for the linear-theory posterior
-        exactly.
+        """Draws A (n, k) and importance weights (n,) that stand for the linear-theory posterior.
+
+        The draws come from a scrambled Sobol sequence, so that their averages are better than
+        those of n random draws; ``n`` is a power of two.
         """
-        A = self.draw(np.random.default_rng(seed), n)
-        log_w = np.concatenate(
-            [
-                self.log_target(part) - self.log_density(part)
-                for part in np.array_split(A, max(1, n // 4096))
-            ]
-        )
+        points = qmc.Sobol(self.information.k + 1, seed=np.random.default_rng(seed)).random(n)
+        A = self.from_uniform(points)
+        parts = np.array_split(A, max(1, n // 2048))
+        log_w = np.concatenate([self.log_target(part) - self.log_density(part) for part in parts])
         return A, np.exp(log_w - np.max(log_w))
 
     def _outward(self) -> tuple[int, float, float, np.ndarray, np.ndarray]:
@@ -110,20 +117,17 @@ class LinearPosterior:
         )
         return i, float(self.information.A_hat[i]), sigma_r, slope, factor
 
-    def _draw_outward(
-        self, random: "np.random.Generator | np.random.RandomState", n: int
-    ) -> np.ndarray:
+    def _outward_from_uniform(self, uniform: np.ndarray) -> np.ndarray:
         i, mean, sigma, slope, factor = self._outward()
         others = np.delete(np.arange(self.information.k), i)
-        radial = truncnorm.rvs(
-            -mean / sigma, np.inf, loc=mean, scale=sigma, size=n, random_state=random
-        )
-        A = np.empty((n, self.information.k))
-        A[:, i] = np.maximum(radial, 0.0)
+        # the share of the upper tail beyond A_R is uniform; as a logarithm it keeps its digits
+        log_tail = log_ndtr(mean / sigma) + np.log(uniform[:, 0])
+        A = np.empty((len(uniform), self.information.k))
+        A[:, i] = np.maximum(mean - sigma * ndtri_exp(log_tail), 0.0)
         A[:, others] = (
             self.information.A_hat[others]
             + np.outer(A[:, i] - mean, slope)
-            + random.standard_normal(size=(n, len(others))) @ factor.T
+            + ndtri(uniform[:, 1 : 1 + len(others)]) @ factor.T
         )
         return A
 

@@ -177,7 +177,7 @@ class Posterior:
         return pd.DataFrame(rows).set_index("parameter")
 
     def __str__(self) -> str:
-        table = self.summary().to_string(float_format=lambda value: f"{value:.6g}")
+        table = self.summary().to_string(float_format=lambda value: f"{value:.10g}")
         return f"Posterior under the prior {self.prior}\n{self.message}\n{table}"
 
     def to_dict(self) -> dict[str, Any]:
@@ -363,6 +363,8 @@ class _Run:
     share: float
     goal: int
     random_state: tuple[Any, ...]
+    start: np.ndarray
+    start_log_prob: np.ndarray
 
 
 def sample_posterior(
@@ -545,7 +547,9 @@ def _start(
                 evaluations=target.evaluations,
                 share=1.0,
                 goal=PILOT_STEPS,
-                random_state=("MT19937", bits["key"], int(bits["pos"]), 0, 0.0, coords, log_prob),
+                random_state=("MT19937", bits["key"], int(bits["pos"]), 0, 0.0),
+                start=coords,
+                start_log_prob=log_prob,
             )
     raise SamplingError(
         f"Of {30 * walkers} orbits drawn within the uncertainty of the solution only "
@@ -562,7 +566,7 @@ def _advance(
 ) -> None:
     """Make ``steps`` more steps, in place."""
     if len(run.chain) == 0:
-        coords, log_prob = run.random_state[5], run.random_state[6]
+        coords, log_prob = run.start, run.start_log_prob
     else:
         coords, log_prob = run.chain[-1], run.log_prob[-1]
     pilot = len(run.chain) < PILOT_STEPS
@@ -574,7 +578,7 @@ def _advance(
         rest = 1.0 - run.share
         moves = [(independence, run.share), (evolution, 0.8 * rest), (leap, 0.2 * rest)]
     sampler = emcee.EnsembleSampler(walkers, target.p, target.log_prob, moves=moves, vectorize=True)
-    state = emcee.State(coords, log_prob=log_prob, random_state=run.random_state[:5])
+    state = emcee.State(coords, log_prob=log_prob, random_state=run.random_state)
     grown, values = np.empty((steps, walkers, target.p)), np.empty((steps, walkers))
     previous = coords
     for i, now in enumerate(
@@ -713,6 +717,8 @@ def _load(path: Path, mark: str) -> _Run:
                 int(data["position"][1]),
                 float(data["cached"]),
             ),
+            start=data["chain"][0],
+            start_log_prob=data["log_prob"][0],
         )
     except (OSError, ValueError, KeyError, EOFError, zipfile.BadZipFile) as fault:
         raise SamplingError(

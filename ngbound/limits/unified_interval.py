@@ -46,7 +46,8 @@ def unified_interval(x: float, sigma: float, confidence: float = 0.95) -> tuple[
     x, sigma : float
         Any one unit; the interval has the same.
     confidence : float
-        Coverage, between 0 and 1.
+        Coverage, above 0.5 and below 1: at mu = 0 every x < 0 has R = 1, and these alone hold one
+        half, so that a smaller coverage has no unique region.
 
     Raises
     ------
@@ -54,6 +55,12 @@ def unified_interval(x: float, sigma: float, confidence: float = 0.95) -> tuple[
         If an argument is out of its range.
     """
     x0 = _checked(float(x), float(sigma), confidence)
+    if confidence <= 0.5:
+        raise LimitError(
+            "The unified interval needs a confidence above 0.5, for instance 0.95; "
+            f"{confidence!r} was given.",
+            confidence=confidence,
+        )
     half = float(ndtri(0.5 + 0.5 * confidence))
 
     def coverage_at_lower_edge(mu: float) -> float:

@@ -30,7 +30,7 @@ from ngbound.limits.posterior import Posterior
 from ngbound.limits.priors import ThrustPrior, thrust_prior
 from ngbound.limits.unified_interval import unified_interval
 
-LINEAR_DRAWS = 65536
+LINEAR_DRAWS = 16384
 LINEAR_SEED = 20
 
 
@@ -49,7 +49,8 @@ class UpperLimit:
     outward_radial, outward_radial_error : Quantity or None
         Quantile of A_R given A_R >= 0; None without R or without samples there.
     unified_radial : (2,) Quantity or None
-        Unified interval of A_R >= 0, other components free, linear theory.
+        Unified interval of A_R >= 0, other components free, linear theory; None without R or at a
+        confidence of 0.5 and less.
     profile_magnitude : Quantity
     profile_component : (k,) Quantity
         Profile likelihood in linear theory.
@@ -202,7 +203,9 @@ def upper_limit(
     other, other_error, other_name, other_source = _under_other_prior(
         information, belief, confidence, alternative
     )
-    linear, _ = _linear_magnitude(information, belief, confidence)
+    linear = magnitude
+    if weights is None:
+        linear, _ = _linear_magnitude(information, belief, confidence)
     outward, outward_error, unified = _outward(information, A, weights, confidence)
     z = float(ndtri(confidence))
     sigma_free = np.sqrt(np.diag(information.covariance))
@@ -260,7 +263,10 @@ def _outward(
         return None, None, None
     i = information.components.index("R")
     sigma = float(information.covariance[i, i] ** 0.5)
-    unified = np.array(unified_interval(float(information.A_hat[i]), sigma, confidence)) * AU_D2
+    unified = None
+    if confidence > 0.5:
+        edges = unified_interval(float(information.A_hat[i]), sigma, confidence)
+        unified = np.array(edges) * AU_D2
     radial = A[:, :, i]
     share = (radial >= 0.0).astype(float)
     share = share if weights is None else share * weights

@@ -1,7 +1,7 @@
 """Room mass: what mass a limit on the thrust demands.
 
 May import: constants, errors, and the rooms arc, sky, motion, fit, limits through what they export
-(it needs none of them: the thrust law comes in as a function g(r) or its value).
+(it needs only limits; the thrust law comes in as a function g(r) or its value).
 
 A nucleus of mass M that loses molecules of mass m at the rate Q, with outflow speed v and a
 collimation zeta (net momentum over that of one perfect beam), is pushed with
@@ -35,6 +35,7 @@ Sublimation: (1 - A) S cos z / r^2 = eps sigma T^4 + Z(T) L(T), Z = P / sqrt(2 p
 
 from .audit import Change, NumberAudit, RelationTest, audit_numbers
 from .distributions import (
+    AtMost,
     Distribution,
     Fixed,
     LogNormal,
@@ -43,7 +44,6 @@ from .distributions import (
     SplitNormal,
     Triangular,
     Uniform,
-    UpperLimit,
     parse_distribution,
 )
 from .mass_bound import (
@@ -121,7 +121,7 @@ __all__ = [
     "Sublimation",
     "Triangular",
     "Uniform",
-    "UpperLimit",
+    "AtMost",
     "active_area",
     "active_areas",
     "area_to_mass",

@@ -33,7 +33,7 @@ from scipy.special import ndtri
 from ngbound.constants import AU_D2_TO_M_S2, AU_KM, AU_M, DAY_S, GM_KM3_S2
 from ngbound.errors import CaseError, MassError
 
-from .distributions import Normal, SplitNormal, UpperLimit, number_text, parse_distribution
+from .distributions import AtMost, Normal, SplitNormal, number_text, parse_distribution
 from .outgassing import AVOGADRO, MOLAR_MASS_G, molecule_mass_kg
 from .size import ASTEROID_DIAMETER_KM
 
@@ -291,7 +291,7 @@ def _read(name: str, spec: Any, default: u.UnitBase, inside: u.UnitBase) -> tupl
             f"{default or 'none'}.",
             unit=unit,
         ) from problem
-    middle = found.limit if isinstance(found, UpperLimit) else found.median
+    middle = found.limit if isinstance(found, AtMost) else found.median
     if isinstance(found, Normal):
         error = found.sigma / abs(middle)
     elif isinstance(found, SplitNormal):

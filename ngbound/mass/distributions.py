@@ -233,7 +233,7 @@ class LogNormal(Distribution):
 
 
 @dataclass(frozen=True)
-class UpperLimit(Distribution):
+class AtMost(Distribution):
     """Known only to lie below ``limit`` (at ``confidence`` if that was quoted).
 
     `ppf` spreads it uniformly from 0 to the limit; who needs a lower bound must count it as zero
@@ -264,7 +264,7 @@ def _require(condition: bool, name: str, value: float, allowed: str) -> None:
 
 KINDS: dict[str, type[Distribution]] = {
     cls.kind: cls
-    for cls in (Fixed, Normal, SplitNormal, Uniform, LogUniform, Triangular, LogNormal, UpperLimit)
+    for cls in (Fixed, Normal, SplitNormal, Uniform, LogUniform, Triangular, LogNormal, AtMost)
 }
 """Distribution names as a case file writes them."""
 

@@ -1,6 +1,6 @@
 """Force over acceleration: the mass and size that a limit on the thrust demands.
 
-May import: constants, errors, and from its own room distributions, outgassing and size.
+May import: constants, errors, limits, and from its own room distributions, outgassing and size.
 
 M = zeta Q m v / (A g(r_Q)), with A the thrust at 1 au and g the thrust law at the distance r_Q
 where the rate was measured (see the room's docstring). Only a lower bound is quoted, because the
@@ -11,7 +11,7 @@ import math
 import warnings
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
-from typing import Any, Protocol, TypeAlias
+from typing import Any, TypeAlias
 
 import astropy.units as u
 import numpy as np
@@ -19,8 +19,9 @@ from astropy.units import Quantity
 
 from ngbound.constants import AU_D2_TO_M_S2
 from ngbound.errors import CaseError, MassError, NgboundWarning
+from ngbound.limits import DetectionThreshold, Posterior, UpperLimit
 
-from .distributions import Distribution, DistributionSpec, Fixed, UpperLimit, number_text
+from .distributions import AtMost, Distribution, DistributionSpec, Fixed, number_text
 from .outgassing import Emission, Outgassing
 from .size import (
     DEFAULT_DENSITY,
@@ -43,11 +44,14 @@ _MAX_POSTERIOR = 200_000
 GAt: TypeAlias = Callable[[float], float] | float
 
 
-class HasWorst(Protocol):
-    """A detection threshold that knows its value in the worst direction."""
+@dataclass(frozen=True)
+class _Acceleration:
+    """|A| in au/d2, (n,), and what is known about where it comes from."""
 
-    @property
-    def worst(self) -> Quantity: ...
+    magnitudes: np.ndarray
+    limit_confidence: float | None = None
+    n_effective: float | None = None
+    remarks: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -226,7 +230,7 @@ class MassBound:
         """JSON-able record (without the draws)."""
 
         def number(q: Quantity | None) -> float | None:
-            return None if q is None else float(q.value)
+            return float(q.value) if q is not None and np.isfinite(q.value) else None
 
         return {
             "mass_kg": number(self.mass),
@@ -273,7 +277,7 @@ def mass_bound(
     g_at: GAt,
     density: DistributionSpec | None = None,
     confidence: float = 0.95,
-    threshold: "HasWorst | Quantity | float | None" = None,
+    threshold: DetectionThreshold | Quantity | float | None = None,
     seed: int | np.random.Generator = 1,
     photometry: Photometry | None = None,
     n_draws: int | None = None,
@@ -284,9 +288,9 @@ def mass_bound(
 
     Parameters
     ----------
-    limit_or_samples : number, Quantity or array
-        Draws of |A| (n,), or of the components (n, k), in au/d2 or as a Quantity; or one upper
-        limit, at which A is then held. A is the thrust at g = 1.
+    limit_or_samples : Posterior, UpperLimit, number, Quantity or array
+        A posterior, or draws of |A| (n,) or of the components (n, k) in au/d2 or as a Quantity; or
+        one upper limit, at which A is then held. A is the thrust at g = 1.
     outgassing : Outgassing
     g_at : callable or float
         Thrust law g(r) with r in au; or its value at the one distance of the measurement.
@@ -320,7 +324,8 @@ def mass_bound(
         )
     rng = np.random.default_rng(seed)
     bulk = density_from(density)
-    samples = _magnitudes(limit_or_samples)
+    acceleration = _acceleration(limit_or_samples, limit_confidence, n_effective)
+    samples = acceleration.magnitudes
     n = max(MIN_DRAWS, min(len(samples), _MAX_POSTERIOR)) if n_draws is None else n_draws
     if n < 1000:
         raise CaseError(f"n_draws = {n} must be at least 1000.", value=n)
@@ -330,12 +335,8 @@ def mass_bound(
     model.weigh(first)
     log_mass = model.log_mass(first)
     mass = np.exp(log_mass)
-    n_eff = float(
-        min(
-            n,
-            n_effective if n_effective is not None else (n if len(samples) == 1 else len(samples)),
-        )
-    )
+    independent = acceleration.n_effective or (n if len(samples) == 1 else len(samples))
+    n_eff = float(min(n, independent))
     level = 1 - confidence
     rho = bulk.draw(rng, n)
     diameter = sphere_diameter_m(mass, rho)
@@ -343,14 +344,20 @@ def mass_bound(
     diameter_low, diameter_err = _quantile(diameter, level, n_eff)
     single = len(samples) == 1
     joint = confidence
-    if single and limit_confidence is not None:
-        joint = max(0.0, confidence + limit_confidence - 1)
+    if single and acceleration.limit_confidence is not None:
+        joint = max(0.0, confidence + acceleration.limit_confidence - 1)
     mass_detection = diameter_detection = a_det = None
+    remarks = acceleration.remarks
     if threshold is not None:
-        worst = getattr(threshold, "worst", threshold)
+        worst = threshold.worst if isinstance(threshold, DetectionThreshold) else threshold
         a_det = float(np.max(_au_d2(worst, "threshold")))
-        if not (a_det > 0 and math.isfinite(a_det)):
-            raise MassError(f"The detection threshold {a_det!r} au/d2 must be positive and finite.")
+        if not a_det > 0:
+            raise MassError(f"The detection threshold {a_det!r} au/d2 must be positive.")
+        if not math.isfinite(a_det):
+            remarks += (
+                "threshold: infinite in some direction, so no mass would surely have shown",
+            )
+    if a_det is not None and math.isfinite(a_det):
         revealed = np.exp(model.log_force(first)) / (a_det * AU_D2_TO_M_S2)
         mass_detection = float(np.quantile(revealed, level))
         diameter_detection = float(np.quantile(sphere_diameter_m(revealed, rho), level))
@@ -377,7 +384,7 @@ def mass_bound(
         inputs=_shares(model, first, second, bulk, rho, level),
         size_check=check,
         law_checks=model.law_checks(first),
-        assumptions=_assumptions(outgassing, bulk, single),
+        assumptions=(*_assumptions(outgassing, bulk, single), *remarks),
         n_draws=n,
         n_effective=n_eff,
         seed=seed if isinstance(seed, int) else None,
@@ -387,7 +394,7 @@ def mass_bound(
 
 def _with_measured_rates(outgassing: Outgassing) -> Outgassing:
     """The part of the budget that has a lower bound; MassError if there is none."""
-    measured = [e for e in outgassing.emissions if not isinstance(e.rate, UpperLimit)]
+    measured = [e for e in outgassing.emissions if not isinstance(e.rate, AtMost)]
     if not measured:
         raise MassError(
             "Every rate of the budget is an upper limit: with the thrust limited from above too, "
@@ -587,6 +594,29 @@ def _quantile(values: np.ndarray, level: float, n_effective: float) -> tuple[flo
     half = math.sqrt(level * (1 - level) / n_effective)
     low, mid, high = np.quantile(values, [max(level - half, 0.0), level, min(level + half, 1.0)])
     return float(mid), float(high - low) / 2
+
+
+def _acceleration(
+    limit_or_samples: Any, limit_confidence: float | None, n_effective: float | None
+) -> _Acceleration:
+    """Read a posterior, a limit, or plain numbers; warn where a chain has not converged."""
+    values: Any = limit_or_samples
+    remarks: tuple[str, ...] = ()
+    if isinstance(limit_or_samples, Posterior):
+        values = limit_or_samples.A_mag
+        n_effective = n_effective or limit_or_samples.ess.get("|A|")
+        remarks = (f"prior of the thrust: {limit_or_samples.prior.name}",)
+    elif isinstance(limit_or_samples, UpperLimit):
+        values = limit_or_samples.magnitude
+        limit_confidence = limit_or_samples.confidence
+        remarks = (f"prior of the thrust: {limit_or_samples.prior}",)
+    if isinstance(limit_or_samples, (Posterior, UpperLimit)) and not limit_or_samples.converged:
+        warnings.warn(
+            f"The mass rests on a posterior that has not converged: {limit_or_samples.message}",
+            NgboundWarning,
+            stacklevel=3,
+        )
+    return _Acceleration(_magnitudes(values), limit_confidence, n_effective, remarks)
 
 
 def _magnitudes(limit_or_samples: Any) -> np.ndarray:

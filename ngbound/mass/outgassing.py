@@ -24,6 +24,7 @@ from ngbound.constants import ATOMIC_MASS_KG, BOLTZMANN_J_K
 from ngbound.errors import CaseError, NgboundWarning
 
 from .distributions import (
+    AtMost,
     Distribution,
     DistributionSpec,
     Fixed,
@@ -31,7 +32,6 @@ from .distributions import (
     Normal,
     SplitNormal,
     Triangular,
-    UpperLimit,
     parse_distribution,
 )
 
@@ -364,7 +364,7 @@ class Outgassing:
 
     def inputs(self) -> dict[str, Distribution]:
         """Every input by name; `Fixed` ones included. Rates that are upper limits keep their
-        `UpperLimit`."""
+        `AtMost`."""
         return {name: found for names in self._wiring() for name, found in names.values()}
 
     def owner(self, name: str) -> tuple[Emission, str]:
@@ -465,7 +465,7 @@ class Outgassing:
                     f"{emission.species} collimation: {emission.collimation}, "
                     f"{DEFAULT_COLLIMATION_SOURCE}"
                 )
-            if isinstance(emission.rate, UpperLimit):
+            if isinstance(emission.rate, AtMost):
                 lines.append(
                     f"{emission.species} rate is an upper limit and counts as zero in a lower mass "
                     "bound"
@@ -484,7 +484,7 @@ class Outgassing:
 
 
 def _limited(found: Distribution, limits_as: LimitsAs, u01: np.ndarray) -> np.ndarray:
-    if isinstance(found, UpperLimit) and limits_as != "uniform":
+    if isinstance(found, AtMost) and limits_as != "uniform":
         return np.full(np.shape(u01), 0.0 if limits_as == "zero" else found.limit)
     return found.ppf(u01)
 
@@ -625,7 +625,7 @@ def _emission(
         molecule_mass_kg(species)
     if factor != 1.0:
         found = found.scaled(factor)
-    limit_per_s = found.limit if isinstance(found, UpperLimit) else found.median
+    limit_per_s = found.limit if isinstance(found, AtMost) else found.median
     if not in_kg and limit_per_s < 1e15:
         warnings.warn(
             f"The {species} rate of {limit_per_s:.3g} molecules/s is under a microgram per second; "

@@ -15,9 +15,9 @@ from ngbound.constants import AU_D2_TO_M_S2
 from ngbound.errors import CaseError, MassError
 
 from .distributions import (
+    AtMost,
     Distribution,
     DistributionSpec,
-    UpperLimit,
     number_text,
     parse_distribution,
 )
@@ -107,7 +107,7 @@ def revealed_rate(
     if not 0 < confidence < 1:
         raise CaseError(f"confidence = {confidence!r} must be between 0 and 1.")
     size, unit = parse_distribution(diameter, "diameter", lower=0.0)
-    if isinstance(size, UpperLimit):
+    if isinstance(size, AtMost):
         raise CaseError("diameter is only an upper limit; the rate needs a size, such as a range.")
     try:
         size = size.scaled(float(u.Unit(unit or "m").to(u.m)))

@@ -44,10 +44,10 @@ _CAL_J = 4.1868
 class Ice:
     """Vapour pressure and latent heat of one ice.
 
-    ln(P / unit) = sum_i pressure[i] T^-i; latent_cal_mol, if given, are the coefficients of
-    L = sum_i c_i T^i in cal/mol, else L follows from the pressure curve. ``branches`` holds
-    (upper temperature K, coefficients); range_k is where the curve is meant to hold: below it the
-    pressure is taken as zero, above it no balance is sought.
+    ln(P / unit) = sum_i c_i T^-i with the c_i of a branch; latent_cal_mol, if given, are the
+    coefficients of L = sum_i c_i T^i in cal/mol, else L follows from the pressure curve.
+    ``branches`` holds (upper temperature K, coefficients); range_k is where the curve is meant to
+    hold: below it the pressure is taken as zero, above it no balance is sought.
     """
 
     name: str
@@ -59,20 +59,23 @@ class Ice:
     status: str
     latent_cal_mol: tuple[float, ...] | None = None
 
-    def _coefficients(self, temperature_k: np.ndarray) -> np.ndarray:
-        """Coefficients per temperature, shape (n_coefficients, n)."""
-        width = max(len(c) for _, c in self.branches)
-        padded = np.array([np.pad(c, (0, width - len(c))) for _, c in self.branches])
-        edges = np.array([top for top, _ in self.branches[:-1]])
-        return padded[np.searchsorted(edges, temperature_k)].T
+    def _by_branch(self, temperature_k: np.ndarray, slope: bool) -> np.ndarray:
+        """ln P, or its negative slope against 1/T, of the branch each temperature (n,) lies in."""
+        inverse = 1.0 / temperature_k
+        value = np.zeros_like(inverse)
+        lower = 0.0
+        for top, coefficients in self.branches:
+            c = -np.polynomial.polynomial.polyder(coefficients) if slope else coefficients
+            inside = (temperature_k > lower) & (temperature_k <= top)
+            value = np.where(inside, np.polynomial.polynomial.polyval(inverse, c), value)
+            lower = top
+        return value
 
     def pressure_pa(self, temperature_k: np.ndarray) -> np.ndarray:
         """Saturation vapour pressure in Pa at temperatures (n,) K."""
         t = np.atleast_1d(np.asarray(temperature_k, dtype=float))
-        warm = np.maximum(t, self.range_k[0])
-        coefficients = self._coefficients(warm)
-        powers = warm[np.newaxis] ** -np.arange(len(coefficients), dtype=float)[:, np.newaxis]
-        pressure = self.unit_pa * np.exp((coefficients * powers).sum(axis=0))
+        warm = np.clip(t, *self.range_k)
+        pressure = self.unit_pa * np.exp(self._by_branch(warm, slope=False))
         return np.where(t < self.range_k[0], 0.0, pressure)
 
     def latent_heat_j(self, temperature_k: np.ndarray) -> np.ndarray:
@@ -80,9 +83,7 @@ class Ice:
         t = np.atleast_1d(np.asarray(temperature_k, dtype=float))
         if self.latent_cal_mol is not None:
             return np.polynomial.polynomial.polyval(t, self.latent_cal_mol) * _CAL_J / AVOGADRO
-        coefficients = self._coefficients(t)
-        order = np.arange(len(coefficients))[:, np.newaxis]
-        return -BOLTZMANN_J_K * (order * coefficients * t[np.newaxis] ** (1.0 - order)).sum(axis=0)
+        return BOLTZMANN_J_K * self._by_branch(t, slope=True)
 
     def flux_per_m2_s(self, temperature_k: np.ndarray) -> np.ndarray:
         """Free-sublimation flux, molecules m^-2 s^-1, at temperatures (n,) K (Hertz-Knudsen)."""
@@ -266,18 +267,39 @@ def sublimation(
     ):
         if not ok:
             raise CaseError(f"{name} = {value!r} must be {allowed}.", value=value)
-    absorbed = (1 - bond_albedo) * solar_constant_w_m2 / r_au**2
-    if geometry == "sphere":
-        t = _temperature(found, absorbed * _MU, emissivity)
-        flux = float((_MU_WEIGHT * found.flux_per_m2_s(t)).sum())
-        hottest = float(_temperature(found, np.array([absorbed]), emissivity)[0])
-    else:
-        lit = absorbed if geometry == "subsolar" else absorbed / 4
-        t = _temperature(found, np.array([lit]), emissivity)
-        flux, hottest = float(found.flux_per_m2_s(t)[0]), float(t[0])
-    return Sublimation(
-        ice, r_au, geometry, bond_albedo, emissivity, flux / (u.m**2 * u.s), hottest * u.K
+    flux, hottest = _fluxes(
+        found, np.array([r_au]), geometry, bond_albedo, emissivity, solar_constant_w_m2
     )
+    return Sublimation(
+        ice,
+        r_au,
+        geometry,
+        bond_albedo,
+        emissivity,
+        float(flux[0]) / (u.m**2 * u.s),
+        float(hottest[0]) * u.K,
+    )
+
+
+def _fluxes(
+    ice: Ice,
+    r_au: np.ndarray,
+    geometry: str,
+    bond_albedo: float,
+    emissivity: float,
+    solar_constant_w_m2: float,
+) -> tuple[np.ndarray, np.ndarray]:
+    """Fluxes (n,) m^-2 s^-1 and temperatures (n,) K of the hottest facet at distances (n,)."""
+    absorbed = (1 - bond_albedo) * solar_constant_w_m2 / r_au**2
+    if geometry == "isothermal":
+        t = _temperature(ice, absorbed / 4, emissivity)
+        return ice.flux_per_m2_s(t), t
+    subsolar = _temperature(ice, absorbed, emissivity)
+    if geometry == "subsolar":
+        return ice.flux_per_m2_s(subsolar), subsolar
+    t = _temperature(ice, np.outer(absorbed, _MU).ravel(), emissivity)
+    flux = ice.flux_per_m2_s(t).reshape(len(r_au), len(_MU)) @ _MU_WEIGHT
+    return flux, subsolar
 
 
 def _temperature(ice: Ice, absorbed_w_m2: np.ndarray, emissivity: float) -> np.ndarray:
@@ -386,16 +408,15 @@ def sublimation_law(
 
     The outflow speed is taken as the same everywhere, as the published g(r) do.
     """
-
-    def flux(r: float) -> float:
-        return float(
-            sublimation(
-                ice, r, geometry=geometry, bond_albedo=bond_albedo, emissivity=emissivity
-            ).flux.value
+    r = np.atleast_1d(np.asarray(r_au, dtype=float))
+    for edge in (r.min(), r.max()):
+        sublimation(
+            ice, float(edge), geometry=geometry, bond_albedo=bond_albedo, emissivity=emissivity
         )
-
-    one = flux(1.0)
-    return np.array([flux(float(r)) / one for r in np.atleast_1d(r_au)])
+    flux, _ = _fluxes(
+        ICES[ice], np.append(r, 1.0), geometry, bond_albedo, emissivity, SOLAR_CONSTANT_W_M2
+    )
+    return flux[:-1] / flux[-1]
 
 
 def largest_rate(

@@ -18,7 +18,7 @@ The elements are then still a faithful image of the state, but their partials do
 
 import math
 from dataclasses import asdict, dataclass
-from typing import Any, Literal, Self
+from typing import Any, Self
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -30,11 +30,10 @@ from ngbound.constants import (
     KM3_S2_TO_AU3_D2,
     OBLIQUITY_J2000_RAD,
 )
-from ngbound.errors import AnalysisError, PropagationError
+from ngbound.errors import AnalysisError, InputError, PropagationError
 from ngbound.motion._kepler_kernels import solve_universal_kepler, universal_functions
 
 FloatArray = NDArray[np.float64]
-Centre = Literal["heliocentric", "barycentric"]
 
 CENTRE_GM_AU3_D2: dict[str, float] = {
     "heliocentric": GM_SUN_AU3_D2,
@@ -57,7 +56,7 @@ ECLIPTIC_TO_ICRF.setflags(write=False)
 
 def _gm(centre: str) -> float:
     if centre not in CENTRE_GM_AU3_D2:
-        raise ValueError(
+        raise InputError(
             f"The centre of elements must be one of {sorted(CENTRE_GM_AU3_D2)}, not {centre!r}."
         )
     return CENTRE_GM_AU3_D2[centre]
@@ -68,7 +67,7 @@ def _check_finite(elements: "CometaryElements | KeplerianElements") -> None:
         if name == "centre":
             continue
         if not math.isfinite(value):
-            raise ValueError(f"The element {name} must be a finite number, not {value!r}.")
+            raise InputError(f"The element {name} must be a finite number, not {value!r}.")
         object.__setattr__(elements, name, float(value))
 
 
@@ -101,20 +100,18 @@ class CometaryElements:
     node_rad: float
     argperi_rad: float
     tp_tdb_d: float
-    centre: Centre = "heliocentric"
+    centre: str = "heliocentric"
 
     def __post_init__(self) -> None:
         _gm(self.centre)
         _check_finite(self)
         if not self.q_au > 0:
-            raise ValueError(f"The perihelion distance q_au must be above 0, not {self.q_au!r}.")
+            raise InputError(f"The perihelion distance q_au must be above 0, not {self.q_au!r}.")
         if not self.e >= 0:
-            raise ValueError(f"The eccentricity e must be at least 0, not {self.e!r}.")
+            raise InputError(f"The eccentricity e must be at least 0, not {self.e!r}.")
 
     @classmethod
-    def from_state(
-        cls, epoch_tdb_d: float, state: ArrayLike, centre: Centre = "heliocentric"
-    ) -> Self:
+    def from_state(cls, epoch_tdb_d: float, state: ArrayLike, centre: str = "heliocentric") -> Self:
         """Elements that osculate an ICRF state (6,), au and au/d, relative to the centre.
 
         The perihelion is the nearest one in time when the orbit is an ellipse.
@@ -252,26 +249,24 @@ class KeplerianElements:
     node_rad: float
     argperi_rad: float
     mean_anomaly_rad: float
-    centre: Centre = "heliocentric"
+    centre: str = "heliocentric"
 
     def __post_init__(self) -> None:
         _gm(self.centre)
         _check_finite(self)
         if self.e < 0 or self.e == 1:
-            raise ValueError(
+            raise InputError(
                 f"The eccentricity e must be at least 0 and other than 1, not {self.e!r}; "
                 "a parabola needs CometaryElements."
             )
         if not self.a_au * (1.0 - self.e) > 0:
-            raise ValueError(
+            raise InputError(
                 "The semimajor axis a_au must be positive for e < 1 and negative for e > 1, "
                 f"not {self.a_au!r} with e = {self.e!r}."
             )
 
     @classmethod
-    def from_state(
-        cls, epoch_tdb_d: float, state: ArrayLike, centre: Centre = "heliocentric"
-    ) -> Self:
+    def from_state(cls, epoch_tdb_d: float, state: ArrayLike, centre: str = "heliocentric") -> Self:
         """Elements that osculate an ICRF state (6,), au and au/d, relative to the centre."""
         k = CometaryElements.from_state(epoch_tdb_d, state, centre).to_keplerian()
         return cls(

@@ -68,6 +68,7 @@ class Neighbourhood:
     forces: ForceModel
     records: Records
     whitening: Factors
+    modes: Floats = field(repr=False)
     sight: Sight = field(repr=False)
     partials: Partials = field(repr=False)
     tables: tuple = field(repr=False)
@@ -83,8 +84,14 @@ class Neighbourhood:
         components: str,
         forces: ForceModel,
         threads: int | None = None,
+        modes: Floats | None = None,
     ) -> "Neighbourhood":
-        """Tabulate the surroundings of a track that covers the records."""
+        """Tabulate the surroundings of a track that covers the records.
+
+        ``modes`` (k, 2n): errors shared across station-nights, whose squared products with the whitened
+        residuals are taken off chi2; columns RA, Dec by turns in the order of the records.
+        """
+        shared = np.zeros((0, 2 * len(records))) if modes is None else np.asarray(modes, dtype=float)
         span = (float(records.tdb_d.min()), float(records.tdb_d.max()))
         low = min(_lower(track), span[0])
         high = max(_upper(track), span[1])
@@ -102,7 +109,11 @@ class Neighbourhood:
         n_back = back_order.size
         back = _leg_arrays(partials.back, tau)
         front = _leg_arrays(partials.ahead, tau)
-        white = (place[whitening.order], whitening.start, whitening.flat, whitening.flat_start)
+        columns = np.stack([2 * whitening.order, 2 * whitening.order + 1], axis=1).ravel()
+        white = (
+            place[whitening.order], whitening.start, whitening.flat, whitening.flat_start,
+            np.ascontiguousarray(shared[:, columns]),
+        )
         amounts = np.zeros(3) if thrust is None else thrust.amounts_au_d2
         tables = (
             float(track.tab.gm[0]), C_AU_D, amounts.copy(), back, front,
@@ -112,7 +123,7 @@ class Neighbourhood:
         free = ["RTN".index(c) for c in components]
         theta = np.concatenate([track.state, amounts[free]])
         return cls(
-            track.epoch_d, theta, thrust, components, forces, records, whitening, sight, partials, tables,
+            track.epoch_d, theta, thrust, components, forces, records, whitening, shared, sight, partials, tables,
             threads or os.cpu_count() or 1,
         )
 
@@ -195,18 +206,21 @@ class Neighbourhood:
             seen = residuals(see(track, self.records), self.records)
         except PropagationError:
             return np.inf, np.full((len(self.records), 2), np.nan)
-        return float(np.sum(self.whiten(seen) ** 2)), seen
+        white = self.whiten(seen)
+        return float(np.sum(white**2) - np.sum((self.modes @ white) ** 2)), seen
 
     def whiten(self, seen: Floats) -> Floats:
-        """Whitened residuals (2 n,) of residuals (n, 2), in the order of the blocks."""
+        """Block-whitened residuals (2 n,) of residuals (n, 2), in the order of the records."""
         w = self.whitening
-        out = []
+        out = np.empty(2 * len(self.records))
         for b in range(w.start.size - 1):
             rows = w.order[w.start[b] : w.start[b + 1]]
             m = 2 * rows.size
             factor = w.flat[w.flat_start[b] : w.flat_start[b] + m * m].reshape(m, m)
-            out.append(np.tril(factor) @ seen[rows].ravel())
-        return np.concatenate(out)
+            white = np.tril(factor) @ seen[rows].ravel()
+            out[2 * rows] = white[0::2]
+            out[2 * rows + 1] = white[1::2]
+        return out
 
 
 def _run(work: Callable[[int], None], parts: int) -> None:

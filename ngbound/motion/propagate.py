@@ -171,12 +171,13 @@ def _switch_times(leg: Leg, tab: Perturbers, epoch_d: float, window: tuple[float
     for edge in window:
         if not np.isfinite(edge):
             continue
-        for i in np.flatnonzero((r[:-1] - edge) * (r[1:] - edge) < 0.0):
+        # a sample may fall on the edge itself, where a step was made to end
+        outside = r >= edge
+        for i in np.flatnonzero(outside[:-1] != outside[1:]):
             low, high = taus[i], taus[i + 1]
-            sign = np.sign(r[i] - edge)
             for _ in range(60):
                 middle = 0.5 * (low + high)
-                if np.sign(distance(np.array([middle]))[0] - edge) == sign:
+                if (distance(np.array([middle]))[0] >= edge) == outside[i]:
                     low = middle
                 else:
                     high = middle

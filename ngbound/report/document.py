@@ -8,8 +8,8 @@ The record is a plain mapping; every section is written if its key is there and 
 - ``arc``: n_obs, span_d, first_utc, last_utc, r_min_au, r_max_au, delta_min_au, delta_max_au,
   n_nights, n_stations, n_records, and whatever else, shown as it is
 - ``law`` (str), ``fits``: {"null": ..., "push": ...} with chi2, dof, rms_arcsec, n_obs,
-  n_rejected, components, A_au_d2, A_sigma_au_d2; ``comparison``: delta_chi2, delta_dof, p_value,
-  delta_bic
+  n_rejected, components, A_au_d2, A_sigma_au_d2, weakness; ``comparison``: delta_chi2, delta_dof,
+  p_value, delta_bic (positive where it favours thrust)
 - ``threshold``, ``limit``, ``posterior``, ``verdict``, ``mass``: the ``to_dict()`` of the
   corresponding objects; ``limits``: list of further limits
 - ``degeneracies``: what each thrust component is confused with, in sentences
@@ -121,7 +121,7 @@ def the_sentence(
     if is_number(threshold_au_d2):
         clauses.append(
             _threshold(
-                law if not estimate else "",
+                "" if estimate else law,
                 significance_sigma,
                 false_alarm,
                 power,
@@ -187,7 +187,7 @@ def _threshold(
     worst: float,
     best: float | None,
 ) -> str:
-    following = f" following {_law(law)}" if law else " following this law"
+    following = f" following {_law(law)}" if law else ""
     at = ""
     if is_number(sigma):
         at = f" at {sigma:.1f} sigma"
@@ -264,11 +264,11 @@ def budget_words(mass: Mapping[str, Any]) -> str:
     """The outgassing behind a mass bound in words: ``budget`` if given, else its emission."""
     if mass.get("budget"):
         return str(mass["budget"])
-    emissions = (mass.get("outgassing") or {}).get("emissions") or ()
+    emissions = list((mass.get("outgassing") or {}).get("emissions") or ())
     if len(emissions) != 1:
         names = sorted({str(e.get("species")) for e in emissions})
         return f"the outgassing of {' and '.join(names)} given" if names else ""
-    (one,) = emissions
+    one = emissions[0]
     rate = _distribution_words(one.get("rate") or {})
     if not rate:
         return ""
@@ -514,11 +514,15 @@ def _write_fits(page: _Page, record: Mapping[str, Any]) -> None:
             told.append(f"chi2 {fit['chi2']:.1f} for {fit['dof']:.0f} degrees of freedom")
         if is_number(fit.get("rms_arcsec")):
             told.append(f"rms {fit['rms_arcsec']:.3f} arcsec")
+        if is_number(fit.get("weighted_rms_arcsec")):
+            told.append(f"weighted {fit['weighted_rms_arcsec']:.3f} arcsec")
         if is_number(fit.get("n_obs")):
             told.append(counted(int(fit["n_obs"]), "observation") + " kept")
         if is_number(fit.get("n_rejected")):
             told.append(f"{int(fit['n_rejected'])} rejected")
         page.item(f"{title}: {', '.join(told)}")
+        if fit.get("weakness"):
+            page.item(str(fit["weakness"]))
         values, errors = fit.get("A_au_d2") or (), fit.get("A_sigma_au_d2") or ()
         letters = str(fit.get("components") or "")
         if letters and len(values) == len(letters):
@@ -538,7 +542,8 @@ def _write_fits(page: _Page, record: Mapping[str, Any]) -> None:
         if is_number(compared.get("p_value")):
             text += f", p = {compared['p_value']:.2g}"
         if is_number(compared.get("delta_bic")):
-            text += f"; difference of BIC {compared['delta_bic']:+.1f}"
+            better = "thrust" if compared["delta_bic"] > 0 else "gravity alone"
+            text += f"; the BIC favours {better} by {abs(compared['delta_bic']):.1f}"
         page.item(text)
 
 

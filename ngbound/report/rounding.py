@@ -1,8 +1,9 @@
 """Numbers as people read them: rounded by their uncertainty; imports the standard library only.
 
-Rounding rules: an uncertainty keeps two digits when its first three lie below 355, else one (the
-habit of the Particle Data Group), and its value ends at the same digit. A limit keeps two digits and is
-rounded outward, so that the printed statement is never stronger than the computed one.
+Rounding rules: an uncertainty keeps two digits when its first three lie below 355, else one
+(the habit of the Particle Data Group), and its value ends at the same digit. A limit keeps two
+digits and is rounded outward, so that the printed statement is never stronger than the computed
+one.
 """
 
 import math

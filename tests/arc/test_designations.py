@@ -1,4 +1,5 @@
-"""Packed designations. The examples are those of the Minor Planet Center's published description of packed forms, recalled
+"""Packed designations. The examples are those of the Minor Planet Center's published description of
+packed forms, recalled
 from memory, where marked "published"; the others follow from its rules."""
 
 import pytest

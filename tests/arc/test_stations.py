@@ -28,7 +28,8 @@ def test_kinds() -> None:
 
 
 def test_parallax_constants_of_a_known_site() -> None:
-    """Greenwich: latitude 51.4769 N, longitude 0 (from memory); parallax constants carry five decimals, 64 m."""
+    """Greenwich: latitude 51.4769 N, longitude 0 (from memory); parallax constants carry five
+    decimals, 64 m."""
     expected = geodetic_to_itrf_km(0.0, 51.4769, 65.0)
     np.testing.assert_allclose(station("000").itrf_km, expected, atol=150 * METRE)
 

@@ -35,19 +35,20 @@ def size_density(A: float, k: int):
 def test_isotropic_uniform_against_quadrature(k, A):
     fit = isotropic(k=k, sigma=SIGMA, A=np.eye(3)[0, :k] * A * SIGMA)
     info = thrust_information(fit)
-    draws, w = linear_posterior(info, thrust_prior(info)).weighted_draws(1, 40000)
+    draws, w = linear_posterior(info, thrust_prior(info)).weighted_draws(1, 16384)
     size = np.linalg.norm(draws, axis=1)[:, None] / SIGMA
     value, error = quantile_with_error(size, 0.95, w[:, None])
     expected = radial_quantile(size_density(A, k), 0.95, A + 8.0)
     assert abs(value - expected) < 4.0 * error
-    assert error < 0.02
+    assert abs(value - expected) < 0.01
+    assert error < 0.03
 
 
 @pytest.mark.parametrize("name", PRIOR_NAMES)
 @pytest.mark.parametrize("A_sigmas", [0.0, 1.5])
 def test_draws_stand_for_the_target_with_little_waste(name, A_sigmas):
     info = thrust_information(correlated(A_sigmas=A_sigmas))
-    _, w = linear_posterior(info, thrust_prior(info, name)).weighted_draws(2, 20000)
+    _, w = linear_posterior(info, thrust_prior(info, name)).weighted_draws(2, 16384)
     assert np.sum(w) ** 2 / np.sum(w**2) > 0.8 * len(w)
 
 

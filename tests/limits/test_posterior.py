@@ -49,7 +49,7 @@ def test_isotropic_flat_components_limit_is_2_7955_sigma():
     post = sample_posterior(isotropic(sigma=SIGMA), seed=4, prior="flat-components")
     limit = upper_limit(post, confidence=0.95)
     assert abs(limit.magnitude.value / SIGMA - 2.7955) < 4.0 * limit.magnitude_error.value / SIGMA
-    assert limit.magnitude_error.value / SIGMA < 0.03
+    assert limit.magnitude_error.value / SIGMA < 0.04
 
 
 @pytest.mark.parametrize("k", [1, 2, 3])
@@ -66,7 +66,7 @@ def test_isotropic_uniform_limit_without_signal_is_1_96_sigma(k):
 @pytest.mark.parametrize("A_sigmas", [0.0, 3.0])
 def test_every_prior_agrees_with_linear_theory_on_a_linear_arc(prior, A_sigmas):
     fit = correlated(A_sigmas=A_sigmas)
-    post = sample_posterior(fit, seed=6, prior=prior, target_ess=3000)
+    post = sample_posterior(fit, seed=6, prior=prior, target_ess=2000)
     sampled, linear = upper_limit(post), upper_limit(fit, prior=prior)
     error = np.hypot(sampled.magnitude_error.value, linear.magnitude_error.value)
     assert abs(sampled.magnitude.value - linear.magnitude.value) < 4.5 * error
@@ -78,7 +78,7 @@ def test_curved_likelihood_against_importance_sampling():
     fit = correlated(curvature=0.08)
     post = sample_posterior(fit, seed=7, prior="flat-components")
     random = np.random.default_rng(8)
-    z = 1.3 * random.standard_normal((200_000, 9))
+    z = 1.3 * random.standard_normal((60_000, 9))
     theta = fit.theta + np.linalg.solve(np.linalg.cholesky(fit.normal).T, z.T).T
     log_w = -0.5 * (fit.chi2_many(theta) - fit.chi2) + 0.5 * np.sum((z / 1.3) ** 2, axis=1)
     w = np.exp(log_w - log_w.max())
@@ -93,16 +93,18 @@ def test_curved_likelihood_against_importance_sampling():
 
 
 def test_same_seed_same_numbers_other_seed_others():
-    one, two, other = (sample_posterior(correlated(), seed=s, target_ess=500) for s in (3, 3, 4))
+    one, two, other = (
+        sample_posterior(correlated(), seed=s, n_walkers=32, target_ess=100) for s in (3, 3, 4)
+    )
     assert np.array_equal(one.samples, two.samples)
     assert not np.array_equal(one.samples[: len(other.samples)], other.samples[: len(one.samples)])
 
 
 def test_two_solutions_are_not_called_converged():
     # the bend has a second exact solution some fifteen sigma away
-    post = sample_posterior(correlated(curvature=0.2, A_sigmas=5.0), seed=1, max_steps=400)
+    post = sample_posterior(correlated(curvature=0.2, A_sigmas=5.0), seed=1, max_steps=200)
     assert not post.converged
-    assert "NOT converged within 400 steps" in post.message
+    assert "NOT converged within 200 steps" in post.message
     assert "not converged" in str(upper_limit(post)).lower()
 
 
@@ -123,10 +125,10 @@ class Interrupted(Exception):
     """Stands for the process being killed."""
 
 
-@pytest.mark.parametrize("stop_at", [1, 2, 4])
+@pytest.mark.parametrize("stop_at", [1, 3])
 def test_interrupted_run_resumes_to_the_same_numbers(tmp_path, stop_at):
-    fit = correlated(curvature=0.1)
-    whole = sample_posterior(fit, seed=11, target_ess=2000)
+    fit = correlated(curvature=0.05)
+    whole = sample_posterior(fit, seed=11, target_ess=500)
     path = tmp_path / "chain.npz"
     calls = []
 
@@ -136,8 +138,8 @@ def test_interrupted_run_resumes_to_the_same_numbers(tmp_path, stop_at):
             raise Interrupted
 
     with pytest.raises(Interrupted):
-        sample_posterior(fit, seed=11, target_ess=2000, checkpoint=path, progress=kill)
-    resumed = sample_posterior(fit, seed=11, target_ess=2000, checkpoint=path)
+        sample_posterior(fit, seed=11, target_ess=500, checkpoint=path, progress=kill)
+    resumed = sample_posterior(fit, seed=11, target_ess=500, checkpoint=path)
     assert np.array_equal(whole.samples, resumed.samples)
     assert whole.to_dict() == resumed.to_dict()
     assert [p.name for p in tmp_path.iterdir()] == ["chain.npz"]

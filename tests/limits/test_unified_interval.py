@@ -12,7 +12,7 @@ def test_interval_scales_with_sigma():
     assert (low, high) == pytest.approx((2.0 * one[0], 2.0 * one[1]))
 
 
-@pytest.mark.parametrize("confidence", [0.5, 0.6827, 0.9, 0.95, 0.99])
+@pytest.mark.parametrize("confidence", [0.51, 0.6827, 0.9, 0.95, 0.99])
 def test_edges_rise_with_the_measurement_and_join_smoothly(confidence):
     x = np.linspace(-6.0, 8.0, 1401)
     edges = np.array([unified_interval(v, 1.0, confidence) for v in x])
@@ -44,6 +44,11 @@ def test_flat_prior_limit_far_below_zero_keeps_its_digits():
     assert flat_prior_limit(-40.0, 1.0, 0.95) == pytest.approx(-np.log(0.05) / 40.0, rel=0.01)
     assert flat_prior_limit(0.0, 1.0, 0.95) == pytest.approx(ndtri(0.975))
     assert flat_prior_limit(0.0, 3.0, 0.95) == pytest.approx(3.0 * ndtri(0.975))
+
+
+def test_half_coverage_has_no_unique_region():
+    with pytest.raises(LimitError, match="above 0.5"):
+        unified_interval(-1.0, 1.0, 0.5)
 
 
 @pytest.mark.parametrize("x, sigma, confidence", [(np.nan, 1, 0.9), (0, 0, 0.9), (0, 1, 1.0)])

@@ -67,6 +67,11 @@ def test_without_samples_linear_theory_is_used_and_said():
     assert "linear theory" in str(limit)
 
 
+def test_median_has_no_unified_interval():
+    limit = upper_limit(isotropic(), confidence=0.5)
+    assert limit.unified_radial is None and limit.outward_radial is not None
+
+
 def test_no_radial_component_no_outward_limit():
     fit = isotropic(k=1)
     limit = upper_limit(type(fit)(**{**vars(fit), "components": "N"}))

@@ -9,6 +9,7 @@ import pytest
 
 from ngbound.errors import CaseError
 from ngbound.mass import (
+    AtMost,
     Fixed,
     LogNormal,
     LogUniform,
@@ -16,7 +17,6 @@ from ngbound.mass import (
     SplitNormal,
     Triangular,
     Uniform,
-    UpperLimit,
     parse_distribution,
 )
 
@@ -30,7 +30,7 @@ ALL = [
     LogUniform(0.1, 10.0),
     Triangular(0.2, 0.5, 0.7),
     LogNormal(3.0, 1.5),
-    UpperLimit(2.0, 0.95),
+    AtMost(2.0, 0.95),
 ]
 
 
@@ -98,8 +98,8 @@ def test_the_same_seed_gives_the_same_draws():
         ("2 */ 1.5", LogNormal(2.0, 1.5), ""),
         ("0.2 to 0.7", Uniform(0.2, 0.7), ""),
         ("0.2..0.7 g/cm3", Uniform(0.2, 0.7), "g/cm3"),
-        ("< 4e23 molecules/s", UpperLimit(4e23), "molecules/s"),
-        ("<=5 kg/s", UpperLimit(5.0), "kg/s"),
+        ("< 4e23 molecules/s", AtMost(4e23), "molecules/s"),
+        ("<=5 kg/s", AtMost(5.0), "kg/s"),
     ],
 )
 def test_text_forms(text, expected, unit):
@@ -116,7 +116,7 @@ def test_text_forms(text, expected, unit):
         ({"low": 1, "high": 2, "distribution": "log-uniform"}, LogUniform(1.0, 2.0)),
         ({"low": 1, "mode": 1.5, "high": 2}, Triangular(1.0, 1.5, 2.0)),
         ({"value": 5, "factor": 2}, LogNormal(5.0, 2.0)),
-        ({"limit": 5, "confidence": 0.9}, UpperLimit(5.0, 0.9)),
+        ({"limit": 5, "confidence": 0.9}, AtMost(5.0, 0.9)),
     ],
 )
 def test_table_forms(table, expected):

@@ -2,6 +2,7 @@
 
 import json
 import math
+from types import SimpleNamespace
 
 import astropy.units as u
 import numpy as np
@@ -9,6 +10,7 @@ import pytest
 
 from ngbound.constants import AU_D2_TO_M_S2
 from ngbound.errors import CaseError, MassError, NgboundWarning
+from ngbound.limits import DetectionThreshold, Posterior, UpperLimit
 from ngbound.mass import (
     Fixed,
     Outgassing,
@@ -19,6 +21,7 @@ from ngbound.mass import (
     momentum_mass,
 )
 
+AU_D2 = u.au / u.day**2
 WATER_KG = 2.99150e-26
 NO_SPREAD = {"speed": "0.8 km/s", "collimation": 0.5}
 
@@ -147,11 +150,51 @@ def test_a_quoted_limit_says_what_its_confidence_covers():
     assert any("held at the quoted limit" in a for a in bound.assumptions)
 
 
-def test_threshold_gives_the_mass_that_would_have_been_revealed():
-    class Threshold:
-        worst = 4e-8 * u.au / u.day**2
+def blank(cls, **attributes):
+    """An object of a class of the room limits with only the attributes a mass needs."""
+    made = object.__new__(cls)
+    for name, value in attributes.items():
+        object.__setattr__(made, name, value)
+    return made
 
-    bound = mass_bound(1e-8, log_normal_budget(), g_at=1.0, threshold=Threshold(), density=500.0)
+
+def test_a_posterior_brings_its_draws_its_prior_and_its_effective_size():
+    components = np.random.default_rng(1).normal(0, 1e-8, (30_000, 3))
+    posterior = blank(
+        Posterior,
+        A_samples=components,
+        ess={"|A|": 400.0},
+        prior=SimpleNamespace(name="isotropic-uniform"),
+        converged=True,
+        message="",
+    )
+    budget = Outgassing("1e27 1/s", **NO_SPREAD, at=1.0)
+    bound = mass_bound(posterior, budget, g_at=1.0, seed=3)
+    assert bound.mass == mass_bound(components, budget, g_at=1.0, seed=3).mass
+    assert bound.n_effective == 400
+    assert any("isotropic-uniform" in a for a in bound.assumptions)
+
+
+def test_a_limit_brings_its_confidence_and_a_warning_where_it_is_not_converged():
+    limit = blank(
+        UpperLimit,
+        magnitude=1e-8 * AU_D2,
+        confidence=0.9,
+        prior="uniform in |A|",
+        converged=False,
+        message="too few steps.",
+    )
+    budget = Outgassing("1e27 1/s", **NO_SPREAD, at=1.0)
+    with pytest.warns(NgboundWarning, match="too few steps"):
+        bound = mass_bound(limit, budget, g_at=1.0)
+    assert bound.joint_confidence == pytest.approx(0.85)
+    assert bound.mass == mass_bound(1e-8, budget, g_at=1.0).mass
+
+
+def test_threshold_gives_the_mass_that_would_have_been_revealed():
+    bound = mass_bound(
+        1e-8, log_normal_budget(), g_at=1.0, threshold=blank(DetectionThreshold, worst=4e-8 * AU_D2)
+    )
     assert bound.mass_detection is not None and bound.diameter_detection is not None
     assert bound.mass_detection.value == pytest.approx(bound.mass.value / 4, rel=1e-9)
     assert bound.diameter_detection.value == pytest.approx(bound.diameter.value / 4 ** (1 / 3))
@@ -160,6 +203,13 @@ def test_threshold_gives_the_mass_that_would_have_been_revealed():
     )
     assert several.threshold == bound.threshold
     assert "would have shown a thrust" in bound.sentence()
+
+
+def test_a_direction_the_arc_cannot_see_leaves_no_revealed_mass():
+    bound = mass_bound(1e-8, log_normal_budget(), g_at=1.0, threshold=[1e-8, math.inf])
+    assert bound.mass_detection is None
+    assert any("infinite in some direction" in a for a in bound.assumptions)
+    json.dumps(bound.to_dict(), allow_nan=False)
 
 
 def test_an_upper_limit_among_the_rates_counts_as_zero():

@@ -10,12 +10,12 @@ from ngbound.errors import CaseError, NgboundWarning
 from ngbound.mass import (
     DEFAULT_COLLIMATION,
     SPEED_LAWS,
+    AtMost,
     Fixed,
     Outgassing,
     SpeedLaw,
     Triangular,
     Uniform,
-    UpperLimit,
     mass_loss_rate,
     thermal_speed,
 )
@@ -142,7 +142,7 @@ def test_draws_have_the_right_mean_and_spread_and_repeat():
 
 def test_upper_limits_count_as_asked():
     budget = Outgassing("< 1e27 1/s", "1 km/s", 0.5, at=1.0)
-    assert budget.emissions[0].rate == UpperLimit(1e27)
+    assert budget.emissions[0].rate == AtMost(1e27)
     assert budget.force().value == 0
     assert budget.force("limit").value == pytest.approx(0.5 * 1e27 * WATER_KG * 1e3, rel=1e-5)
     rng = np.random.default_rng(1)

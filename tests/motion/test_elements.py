@@ -7,7 +7,7 @@ import numpy as np
 import pytest
 
 from ngbound.constants import GM_SUN_AU3_D2
-from ngbound.errors import AnalysisError, PropagationError
+from ngbound.errors import AnalysisError, InputError, PropagationError
 from ngbound.motion.elements import (
     CENTRE_GM_AU3_D2,
     ECLIPTIC_TO_ICRF,
@@ -96,14 +96,14 @@ def test_covariance_matches_a_cloud():
     rng = np.random.default_rng(6)
     elements = CometaryElements(EPOCH, 0.9, 0.6, 0.3, 1.0, 2.0, EPOCH - 120.0)
     sigma = np.array([1e-7, 1e-7, 1e-7, 1e-9, 1e-9, 1e-9])
-    cloud = elements.state() + rng.normal(size=(4000, 6)) * sigma
+    cloud = elements.state() + rng.normal(size=(1500, 6)) * sigma
     values = []
     for state in cloud:
         k = CometaryElements.from_state(EPOCH, state)
         values.append([k.q_au, k.e, k.i_rad, k.node_rad, k.argperi_rad, k.tp_tdb_d])
     spread = np.std(values, axis=0)
     predicted = np.sqrt(np.diag(elements.elements_covariance(np.diag(sigma**2))))
-    np.testing.assert_allclose(spread, predicted, rtol=0.05)
+    np.testing.assert_allclose(spread, predicted, rtol=0.08)
 
 
 @pytest.mark.parametrize("e", [0.01, 0.6, 1.3])
@@ -176,16 +176,16 @@ def test_barycentric_gm_is_that_of_the_whole_system():
     elements = CometaryElements(0.0, 1.0, 0.999, 1.0, 2.0, 3.0, 100.0, "barycentric")
     same = CometaryElements.from_state(0.0, elements.state(), "barycentric")
     assert same.e == pytest.approx(0.999, abs=1e-14)
-    with pytest.raises(ValueError, match="barycentric"):
+    with pytest.raises(InputError, match="barycentric"):
         CometaryElements(0.0, 1.0, 0.5, 0.1, 0.2, 0.3, 5.0, centre="geocentric")
 
 
 def test_wrong_values_are_named():
-    with pytest.raises(ValueError, match="q_au must be above 0"):
+    with pytest.raises(InputError, match="q_au must be above 0"):
         CometaryElements(0.0, -1.0, 0.5, 0.1, 0.2, 0.3, 5.0)
-    with pytest.raises(ValueError, match="i_rad must be a finite"):
+    with pytest.raises(InputError, match="i_rad must be a finite"):
         CometaryElements(0.0, 1.0, 0.5, math.nan, 0.2, 0.3, 5.0)
-    with pytest.raises(ValueError, match="negative for e > 1"):
+    with pytest.raises(InputError, match="negative for e > 1"):
         KeplerianElements(0.0, 1.0, 1.5, 0.1, 0.2, 0.3, 5.0)
     with pytest.raises(PropagationError, match="sideways"):
         CometaryElements.from_state(0.0, [1.0, 0, 0, 0.01, 0, 0])

@@ -213,7 +213,7 @@ def test_sightlines_solve_the_light_time_and_their_partials():
         tau = 0.0
         for _ in range(30):
             look = propagate_two_body(state, t[k] - tau - 5.0)[:3] - observer[k]
-            tau = np.linalg.norm(look) / 173.144632674
+            tau = float(np.linalg.norm(look)) / 173.144632674
         assert np.linalg.norm(look / np.linalg.norm(look) - u[k]) < 1e-4 * mas
     for j in range(6):
         h = 1e-5 if j < 3 else 1e-7
@@ -231,5 +231,5 @@ def test_far_sightline_is_within_a_kilometre_of_the_iterated_one():
     tau = 0.0
     for _ in range(30):
         look = propagate_two_body(state, 900.0 - tau)[:3] - [0, 1.0, 0]
-        tau = np.linalg.norm(look) / 173.144632674
+        tau = float(np.linalg.norm(look)) / 173.144632674
     assert np.linalg.norm(look) * np.linalg.norm(look / np.linalg.norm(look) - u[1]) < km

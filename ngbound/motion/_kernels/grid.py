@@ -12,8 +12,8 @@ from numba import njit
 
 from .bodies import all_positions
 from .forces import other_partials, tides
-from .laws import is_active
-from .layout import RELATIVITY_ALL
+from .laws import is_active, thrust_partials
+from .layout import RELATIVITY_ALL, WINDOW_DISTANCE
 from .radau import N_NODES, NODES, TO_POWERS, V_WEIGHTS, X_WEIGHTS, dense, find_step
 
 # columns of a node's row
@@ -28,7 +28,8 @@ EXTRA = 94
 SCALE = 103
 SECOND_PUSH = 104
 SECOND_RELATIVITY = 105
-ROW = 106
+JUMP = 106
+ROW = 115
 
 
 @njit(cache=True, error_model="numpy")
@@ -46,6 +47,9 @@ def tabulate(tab, push, phys, epoch_d, start, length, begin, power, n, forward, 
     unit_x = np.empty((3, 3, 3))
     unit_v = np.empty((3, 3, 3))
     extra = np.empty((3, 3))
+    h = np.empty(3)
+    w = np.empty(3)
+    before = False
     for k in range(grid_tau.size):
         tau = grid_tau[k] + 0.5 * grid_h[k]
         all_positions(tab, epoch_d + tau, pos, vel, False)
@@ -79,6 +83,19 @@ def tabulate(tab, push, phys, epoch_d, start, length, begin, power, n, forward, 
             row[UNIT_V : UNIT_V + 27] = unit_v.ravel()
             row[EXTRA : EXTRA + 9] = extra.ravel()
             row[SCALE] = scale
+            row[JUMP : JUMP + 9] = 0.0
+            if j == 0 and k > 0 and active != before and push.window_kind == WINDOW_DISTANCE:
+                # where the distance switches the thrust, a shifted path meets the switch at another time
+                speed = 0.0
+                for i in range(3):
+                    h[i] = state[i] - pos[0, i]
+                    w[i] = state[3 + i] - vel[0, i]
+                    speed += h[i] * w[i] / math.sqrt(r2)
+                thrust_partials(push, tab.gm[0], True, h, w, unit, unit_x, unit_v, extra[0:2])
+                sign = 1.0 if active else -1.0
+                row[JUMP : JUMP + 9] = sign * unit.ravel() / speed
+                unit[:] = row[UNIT : UNIT + 9].copy().reshape(3, 3)
+                unit_x[:] = row[UNIT_X : UNIT_X + 27].copy().reshape(3, 3, 3)
             # sizes of the second-order terms that the neighbours leave out
             r = math.sqrt(r2)
             g = 0.0
@@ -92,6 +109,26 @@ def tabulate(tab, push, phys, epoch_d, start, length, begin, power, n, forward, 
             else:
                 row[SECOND_PUSH] = 0.0
             row[SECOND_RELATIVITY] = 30.0 * (tab.gm[0] / (phys.c_au_d * r2)) ** 2 / r
+        before = active
+
+
+@njit(cache=True, error_model="numpy")
+def apply_jump(row, amounts, columns):
+    """Change of the velocity columns (6, p) where a distance window switches the thrust.
+
+    A path shifted by d meets the switch later by -(R . d) / r', and has the thrust that much longer or shorter.
+    """
+    r = math.sqrt(row[SUN] ** 2 + row[SUN + 1] ** 2 + row[SUN + 2] ** 2)
+    for i in range(3):
+        jump = (
+            amounts[0] * row[JUMP + i] + amounts[1] * row[JUMP + 3 + i] + amounts[2] * row[JUMP + 6 + i]
+        )
+        if jump != 0.0:
+            for c in range(columns.shape[1]):
+                along = (
+                    row[SUN] * columns[0, c] + row[SUN + 1] * columns[1, c] + row[SUN + 2] * columns[2, c]
+                ) / r
+                columns[3 + i, c] += jump * along
 
 
 @njit(cache=True, error_model="numpy")
@@ -113,6 +150,7 @@ def variations(gm_sun, a_ref, columns, grid_h, nodes, begin, accel):
     dv = np.empty((3, p))
     for k in range(grid_h.size):
         h = grid_h[k]
+        apply_jump(nodes[k, 0], a_ref, begin[k])
         for j in range(N_NODES):
             row = nodes[k, j]
             r2 = row[SUN] ** 2 + row[SUN + 1] ** 2 + row[SUN + 2] ** 2

@@ -11,7 +11,7 @@ import math
 import numpy as np
 from numba import njit
 
-from .grid import GV, GX, SCALE, SECOND_PUSH, SECOND_RELATIVITY, SUN, THIRD, UNIT, UNIT_V, UNIT_X
+from .grid import GV, GX, JUMP, SCALE, SECOND_PUSH, SECOND_RELATIVITY, SUN, THIRD, UNIT, UNIT_V, UNIT_X
 from .radau import N_NODES, NODES, V_WEIGHTS, X_WEIGHTS
 
 LANES = 16
@@ -131,6 +131,21 @@ def offsets_to_records(
     record = first
     for k in range(steps):
         h = grid_h[k]
+        row = nodes[k, 0]
+        r = math.sqrt(row[SUN] ** 2 + row[SUN + 1] ** 2 + row[SUN + 2] ** 2)
+        for i in range(3):
+            if row[JUMP + i] != 0.0 or row[JUMP + 3 + i] != 0.0 or row[JUMP + 6 + i] != 0.0:
+                # the switch of a distance window, see ``apply_jump``
+                for lane in range(LANES):
+                    jump = (
+                        amount[0, lane] * row[JUMP + i]
+                        + amount[1, lane] * row[JUMP + 3 + i]
+                        + amount[2, lane] * row[JUMP + 6 + i]
+                    )
+                    along = (
+                        row[SUN] * begin[0, lane] + row[SUN + 1] * begin[1, lane] + row[SUN + 2] * begin[2, lane]
+                    )
+                    begin[3 + i, lane] += jump * along / r
         # first guess from the linear solution
         for j in range(N_NODES):
             for i in range(3):
@@ -242,11 +257,17 @@ def sight_residuals(c_au_d, rho, speed, basis, offset, out):
 
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
-def whitened_chi2(order, start, flat, flat_start, residual, chi2):
-    """chi2 (LANES,) of residuals (n, 2, LANES) whitened by lower-triangular factors, block by block."""
+def whitened_chi2(order, start, flat, flat_start, modes, residual, chi2):
+    """chi2 (LANES,) of residuals (n, 2, LANES) whitened by lower-triangular factors, block by block.
+
+    ``modes`` (k, 2n), columns in the order of the blocks: what the errors shared across blocks take off,
+    |w|^2 - |modes w|^2.
+    """
     for lane in range(LANES):
         chi2[lane] = 0.0
     total = np.empty(LANES)
+    shared = np.zeros((modes.shape[0], LANES))
+    row = 0
     for b in range(start.size - 1):
         first = start[b]
         m = 2 * (start[b + 1] - first)
@@ -261,6 +282,14 @@ def whitened_chi2(order, start, flat, flat_start, residual, chi2):
                     total[lane] += f * residual[k, j % 2, lane]
             for lane in range(LANES):
                 chi2[lane] += total[lane] * total[lane]
+            for k in range(modes.shape[0]):
+                f = modes[k, row]
+                for lane in range(LANES):
+                    shared[k, lane] += f * total[lane]
+            row += 1
+    for k in range(modes.shape[0]):
+        for lane in range(LANES):
+            chi2[lane] -= shared[k, lane] * shared[k, lane]
 
 
 @njit(cache=True, error_model="numpy", nogil=True)
@@ -293,7 +322,7 @@ def batch(
             unsure,
         )
         sight_residuals(c_au_d, rho, speed, basis, offset, residual)
-        whitened_chi2(whiten[0], whiten[1], whiten[2], whiten[3], residual, chi2[at : at + LANES])
+        whitened_chi2(whiten[0], whiten[1], whiten[2], whiten[3], whiten[4], residual, chi2[at : at + LANES])
         for lane in range(LANES):
             doubt[at + lane, 0] = unsure[0, lane]
             doubt[at + lane, 1] = unsure[1, lane]

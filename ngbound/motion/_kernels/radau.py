@@ -23,6 +23,8 @@ N_NODES = 8
 STEP_CAP_D = 40.0
 EPS_FLOOR = 1e-11
 SAFETY = 0.9
+SMOOTH = 0.01
+"""Below this part of the local dynamical time the last coefficient of a step is rounding, and the step stands."""
 
 
 def node_positions() -> np.ndarray:
@@ -62,21 +64,15 @@ BINOMIAL = np.array([[math.comb(j, k) for j in range(N_NODES)] for k in range(N_
 
 
 @njit(cache=True, error_model="numpy")
-def _trial_steps(tab, push, phys, x0, v0, t0, direction, cap):
-    """A first step: a small part of the shortest time scale set by the nearest strong body."""
-    nb = tab.gm.size
-    pos = np.empty((nb, 3))
-    vel = np.zeros((nb, 3))
-    all_positions(tab, t0, pos, vel, False)
-    shortest = cap
-    for b in range(nb):
+def local_time(gm, pos, x):
+    """The shortest dynamical time sqrt(d^3 / GM) of the bodies around ``x``, days."""
+    largest = 0.0
+    for b in range(gm.size):
         d2 = 0.0
         for i in range(3):
-            d2 += (x0[i] - pos[b, i]) ** 2
-        if tab.gm[b] > 0.0:
-            scale = math.sqrt(d2 * math.sqrt(d2) / tab.gm[b])
-            shortest = min(shortest, 0.2 * scale)
-    return direction * shortest
+            d2 += (x[i] - pos[b, i]) ** 2
+        largest = max(largest, gm[b] / (d2 * math.sqrt(d2)))
+    return 1.0 / math.sqrt(largest)
 
 
 @njit(cache=True, error_model="numpy")
@@ -117,11 +113,11 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_ma
         begin[0, 3 + i] = v0[i]
     if tau_end == 0.0:
         return OK, 0, start, length, begin, power, met
-    h = _trial_steps(tab, push, phys, x0, v0, epoch_d, direction, cap_d)
-    wanted = h
     last_h = 0.0
     fresh = True
     all_positions(tab, epoch_d, pos[0], vel[0], every)
+    pace = local_time(tab.gm, pos[0], x0)
+    wanted = direction * min(cap_d, 0.2 * pace)
     while True:
         # the step ends at the end, or at a break, where one is near
         limit = tau_end
@@ -219,7 +215,7 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_ma
             factor = SAFETY * (eps / ratio) ** (1.0 / 7.0)
         else:
             factor = 4.0
-        if factor < 0.5 or not converged:
+        if (factor < 0.5 and abs(h) > SMOOTH * pace) or not converged:
             if abs(h) < 1e-9:
                 met[1] = tau
                 return NOT_CONVERGED, n, start, length, begin, power, met
@@ -268,6 +264,7 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_ma
             begin[n, i] = x0[i]
             begin[n, 3 + i] = v0[i]
         all_positions(tab, epoch_d + tau, pos[0], vel[0], every)
+        pace = local_time(tab.gm, pos[0], x0)
         for b in range(nb):
             d2 = 0.0
             for i in range(3):
@@ -287,8 +284,7 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_ma
             wanted = direction * max(abs(wanted), abs(h) * min(factor, 4.0))
         else:
             wanted = h * min(factor, 4.0)
-        if abs(wanted) > cap_d:
-            wanted = direction * cap_d
+        wanted = direction * min(cap_d, max(abs(wanted), SMOOTH * pace))
 
 
 @njit(cache=True, error_model="numpy")

@@ -4,7 +4,6 @@ May import constants, errors and the public names of the rooms to the left of re
 """
 
 import math
-import textwrap
 from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
@@ -41,6 +40,8 @@ LONG_LADDER = (1.0, 3.0, 10.0, 30.0)
 AXES = {"radial": "R", "transverse": "T", "normal": "N"}
 SIGNIFICANT = 0.0027
 """The fitted thrust is drawn as well where chance gives one as significant less often than this."""
+DWARFED = 5.0
+"""A fan that reaches so many times further than the residuals is drawn on a symmetric-log scale."""
 NOTE_POINTS = 6.4
 MOST_STATIONS = 6
 """More stations than this share one colour and shape."""
@@ -202,6 +203,7 @@ def _drawn(
     )
     colours = _rung_colours(len(rungs))
     place, night_place = clock.place(date), clock.place(night_date)
+    dwarfed = any(top > DWARFED * seen for seen, top in (_reach(p, keep) for p in panels))
     for ax, panel in zip(axes, panels, strict=True):
         _draw_fan(ax, night_date, clock, panel.fan, colours)
         if fitted is not None:
@@ -210,7 +212,7 @@ def _drawn(
             _draw_fitted(ax, night_date, clock, np.array(means))
         _draw_points(ax, place, panel, keep, table["stn"].to_numpy(), codes)
         _draw_nights(ax, night_place, panel, night_stn, codes)
-        _set_scale(ax, panel, keep)
+        _set_scale(ax, *_reach(panel, keep), dwarfed)
         _mark_beyond(ax, place, panel.value, keep)
         roomy = ax.get_window_extent().height / fig.dpi > 1.5
         ax.set_ylabel(f"{panel.label} the motion (arcsec)" if roomy else f"{panel.label} (arcsec)")
@@ -273,6 +275,7 @@ def _direction_note(direction: np.ndarray, single: bool, push: Any) -> str:
         parts = ", ".join(f"{x:+.2f}" for x in np.round(direction, 2) + 0.0)
         which = f"in the direction this arc shows best, ({', '.join(push.components)}) = ({parts})"
     law = getattr(push.thrust, "law", None)
+    law = getattr(law, "name", law)
     return f"thrust {which}" + (f", law {law}" if law else "")
 
 
@@ -374,7 +377,15 @@ def _draw_fan(
             x, -np.abs(y[:, j]), np.abs(y[:, j]), color=colours[j], alpha=0.10, lw=0, zorder=1
         )
         for sign in (1.0, -1.0):
-            ax.plot(x, sign * y[:, j], color=colours[j], lw=0.9, zorder=3, solid_capstyle="butt")
+            ax.plot(
+                x,
+                sign * y[:, j],
+                color=colours[j],
+                lw=0.9,
+                zorder=3,
+                solid_capstyle="butt",
+                gid="fan",
+            )
 
 
 def _curves(
@@ -494,17 +505,21 @@ def _draw_nights(
         )
 
 
-def _set_scale(ax: Axes, panel: _Panel, keep: np.ndarray) -> None:
-    """Linear where residuals and ladder are alike; symmetric-log where the ladder dwarfs them."""
-    seen = float(np.quantile(np.abs(panel.value[keep]), 0.98))
+def _reach(panel: _Panel, keep: np.ndarray) -> tuple[float, float]:
+    """How far residuals and night means go, and how far the fan goes, arcsec."""
     means = np.abs(panel.night_value)
     seen = max(
-        seen,
+        float(np.quantile(np.abs(panel.value[keep]), 0.98)),
         1.05 * float(np.quantile(means, 0.98 if len(means) > 50 else 1.0)),
         2.0 * float(np.median(panel.sigma[keep])),
     )
-    top = float(np.max(np.abs(panel.fan), initial=0.0))
-    if top > 8.0 * seen:
+    return seen, float(np.max(np.abs(panel.fan), initial=0.0))
+
+
+def _set_scale(ax: Axes, seen: float, top: float, dwarfed: bool) -> None:
+    """Linear where residuals and ladder are alike; symmetric-log where the ladder dwarfs them."""
+    if dwarfed:
+        top = max(top, 1.2 * seen)
         ax.set_yscale("symlog", linthresh=seen, linscale=1.2)
         ax.set_ylim(-1.5 * top, 1.5 * top)
         for edge in (-seen, seen):  # linear between these two
@@ -620,18 +635,22 @@ def _label_rungs(
 
 
 def _wrapped(note: str, width: float) -> list[str]:
-    """The note under the title in lines that fit the figure."""
+    """The note under the title in lines that fit the figure (width in inches)."""
     if not note:
         return []
-    letters = int((width - 0.7) * 72.0 / (0.50 * NOTE_POINTS))
-    return textwrap.wrap(
-        f"shaded: departure of the best gravity-only refit, {note}", letters, break_on_hyphens=False
-    )
+    lines = [""]
+    for word in f"shaded: departure of the best gravity-only refit, {note}".split():
+        longer = f"{lines[-1]} {word}".strip()
+        if style.text_inch(longer, NOTE_POINTS) > width - 0.66:
+            lines.append(word)
+        else:
+            lines[-1] = longer
+    return lines
 
 
 def _title(fig: Figure, null: Any, lines: Sequence[str], width: float, height: float) -> None:
     title = f"{null.arc.name}: residuals of the gravity-only fit"
-    if len(title) * 8.5 * 0.62 / 72.0 > width - 0.6:
+    if style.text_inch(title, 8.5, "bold") > width - 0.60:
         title = str(null.arc.name)
     fig.text(
         0.58 / width,

@@ -112,12 +112,13 @@ def _draw(ax: Axes, means: pd.DataFrame, axis: str) -> None:
             elinewidth=0.8,
             zorder=3,
         )
+    extent = np.abs(mean) + error
     solid = means["n"].to_numpy() >= 10
-    if solid.any():
-        reach = 1.15 * float(np.max(np.abs(mean[solid]) + error[solid]))
-        low, high = ax.get_xlim() if ax.get_autoscalex_on() is False else (0.0, 0.0)
-        reach = max(reach, high)
-        ax.set_xlim(-reach, reach)
+    reach = np.quantile(extent[solid] if solid.any() else extent, 0.8)
+    reach = 1.2 * max(reach, np.max(extent[far & solid], initial=0.0))
+    if not ax.get_autoscalex_on():  # shared with the panel above
+        reach = max(reach, ax.get_xlim()[1])
+    ax.set_xlim(-reach, reach)
     style.tidy(ax)
     ax.spines["left"].set_visible(False)
     ax.tick_params(axis="y", length=0)

@@ -1,0 +1,534 @@
+"""The whole job, from a case file to the record, written to be read from the top down.
+
+`run_case` does all of it; `inspect_case`, `fit_case`, `limit_case`, `mass_case` and `fan_case` stop
+earlier and hand back what they have, which prints itself.  May import every room to its left and
+ngbound.case; never cli.
+"""
+
+import os
+import secrets
+import sys
+import time
+import warnings
+from collections.abc import Iterator
+from contextlib import contextmanager
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import Any
+
+import matplotlib
+import numpy as np
+from matplotlib.figure import Figure
+from tqdm import tqdm
+
+from ngbound.arc import Arc, Finding, Noise, read_arc, vet
+from ngbound.case import Case, case_for
+from ngbound.errors import CaseError, NgboundWarning
+from ngbound.fit import Comparison, Fit, compare_fits, fit_orbit
+from ngbound.limits import (
+    DetectionThreshold,
+    Posterior,
+    UpperLimit,
+    Verdict,
+    detection_threshold,
+    sample_posterior,
+    upper_limit,
+    verdict,
+)
+from ngbound.mass import MassBound, mass_bound
+from ngbound.report import (
+    Record,
+    SmallTable,
+    catalogue_table,
+    direction_map,
+    mass_figure,
+    posterior_figure,
+    provenance,
+    render_report,
+    residual_by_station,
+    residual_fan,
+    residual_suspicions,
+    residuals_csv,
+    station_table,
+    the_sentence,
+)
+
+FIGURE_ENDINGS = (".png", ".pdf", ".svg")
+
+
+def run_case(path: str | Path, *, progress: bool = False, **choices: Any) -> Record:
+    """Do the whole job and write report, figures and record into the output folder.
+
+    Parameters
+    ----------
+    path : path
+        A case file (TOML), or an arc, for which every choice then has its default.
+    progress : bool
+        Show the steps on stderr.
+    **choices
+        Choices that override those of the case file: law, components, seed, object_name, output.
+
+    Returns
+    -------
+    Record
+        As it was written; nothing is written unless everything succeeded.
+
+    Raises
+    ------
+    InputError
+        The case or the arc cannot be read or is wrong.
+    AnalysisError
+        The analysis cannot be done on this arc.
+    """
+    with hear_warnings() as heard:
+        case = case_for(path, **choices)
+        step = Steps(progress)
+        arc = read_the_arc(case, step)
+        fits = fit_both(case, arc, step)
+        bounds = bound_the_thrust(fits, step)
+        mass = bound_the_mass(bounds, step)
+        with step("draw the figures"):
+            figures = draw_figures(bounds, mass)
+    tables = [station_table(fits.push), catalogue_table(fits.push)]
+    record = compose_record(Path(path), bounds, mass, heard, step.seconds)
+    with step("write the results"):
+        write_results(case, record, fits, tables, figures)
+    return record
+
+
+def inspect_case(path: str | Path, *, progress: bool = False, **choices: Any) -> "Inspection":
+    """What is in an arc at a glance, before any orbit."""
+    case = case_for(path, **choices)
+    arc = read_the_arc(case, Steps(progress))
+    return Inspection(arc, case.errors.error_model().apply(arc.used), tuple(vet(arc)))
+
+
+def fit_case(path: str | Path, *, progress: bool = False, **choices: Any) -> "Fits":
+    """The orbit by gravity alone and with thrust, and the comparison of the two."""
+    case, step = case_for(path, **choices), Steps(progress)
+    return fit_both(case, read_the_arc(case, step), step)
+
+
+def limit_case(path: str | Path, *, progress: bool = False, **choices: Any) -> "Bounds":
+    """Detection threshold, posterior, upper limit and verdict."""
+    case, step = case_for(path, **choices), Steps(progress)
+    return bound_the_thrust(fit_both(case, read_the_arc(case, step), step), step)
+
+
+def mass_case(path: str | Path, *, progress: bool = False, **choices: Any) -> MassBound:
+    """The mass and the diameter that the limit demands.
+
+    Raises
+    ------
+    CaseError
+        The case holds no outgassing budget.
+    """
+    case, step = case_for(path, **choices), Steps(progress)
+    if not case.outgassing:
+        raise CaseError(
+            f"{path} holds no outgassing budget, without which no mass follows from a limit; "
+            "add an [[outgassing]] table with rate and at."
+        )
+    bounds = bound_the_thrust(fit_both(case, read_the_arc(case, step), step), step)
+    found = bound_the_mass(bounds, step)
+    assert found is not None
+    return found
+
+
+def fan_case(
+    path: str | Path, *, output: str | Path, progress: bool = False, **choices: Any
+) -> "Drawing":
+    """Draw the residual fan into a file.
+
+    Raises
+    ------
+    CaseError
+        The ending of the file is no format of a figure.
+    """
+    target = Path(output)
+    if target.suffix not in FIGURE_ENDINGS:
+        raise CaseError(
+            f"The figure {target} must end in {', '.join(FIGURE_ENDINGS)}, which tells its format."
+        )
+    case, step = case_for(path, **choices), Steps(progress)
+    fits = fit_both(case, read_the_arc(case, step), step)
+    threshold = threshold_of(fits)
+    save_whole(residual_fan(fits.null, fits.push, threshold=threshold), target)
+    return Drawing(target, fits, threshold)
+
+
+# ---------------------------------------------------------------------------------- the steps
+
+
+def read_the_arc(case: Case, step: "Steps") -> Arc:
+    """The arc that the case names, own stations included."""
+    with step("read the arc"):
+        return read_arc(case.arc.file, object=case.object.name, stations=case.own_stations())
+
+
+def fit_both(case: Case, arc: Arc, step: "Steps") -> "Fits":
+    """Fit by gravity alone from the start the case gives, then with thrust from there."""
+    start = case.orbit.orbit(forces=case.forces.force_model()) if case.orbit else None
+    common: dict[str, Any] = {
+        "error_model": case.errors.error_model(),
+        "forces": case.forces.force_model(),
+        "reject": case.fit.reject,
+    }
+    with step("fit by gravity alone") as bar:
+        null = fit_orbit(arc, initial=start, progress=bar.say, **common)
+    with step("fit with thrust") as bar:
+        push = fit_orbit(
+            arc, thrust=case.thrust.thrust(), initial=null.orbit, progress=bar.say, **common
+        )
+    with step("compare the fits"):
+        comparison = compare_fits(null, push)
+    return Fits(case, arc, null, push, comparison)
+
+
+def bound_the_thrust(fits: "Fits", step: "Steps") -> "Bounds":
+    """Threshold of the arc, posterior of the exact model, upper limit, verdict."""
+    case = fits.case
+    with step("detection threshold"):
+        threshold = threshold_of(fits)
+    with step("sample the posterior") as bar:
+        posterior = sample_posterior(
+            fits.push,
+            seed=case.sampling.seed,
+            prior=case.sampling.prior,
+            n_walkers=case.sampling.walkers,
+            max_steps=case.sampling.max_steps,
+            target_ess=case.sampling.effective_samples,
+            progress=bar.report,
+        )
+    with step("upper limit"):
+        limit = upper_limit(posterior, confidence=case.detection.confidence)
+    suspicions = tuple(residual_suspicions(fits.push))
+    judged = verdict(
+        fits.null,
+        fits.push,
+        threshold,
+        limit,
+        noise_trusted=not suspicions,
+        why="; ".join(text.rstrip(".") for text in suspicions),
+    )
+    return Bounds(fits, threshold, posterior, limit, judged, suspicions)
+
+
+def threshold_of(fits: "Fits") -> DetectionThreshold:
+    """The detection threshold at the false-alarm rate and power of the case."""
+    chosen = fits.case.detection
+    return detection_threshold(fits.push, false_alarm=chosen.false_alarm, power=chosen.power)
+
+
+def bound_the_mass(bounds: "Bounds", step: "Steps") -> MassBound | None:
+    """The mass that the outgassing budget demands, or None where the case gives no budget."""
+    case = bounds.fits.case
+    budget = case.budget()
+    if budget is None:
+        return None
+    nucleus, posterior = case.nucleus, bounds.posterior
+    with step("mass bound"):
+        return mass_bound(
+            posterior.A_mag,
+            budget,
+            g_at=case.thrust.thrust().g,
+            density=nucleus.density,
+            confidence=case.detection.confidence,
+            threshold=bounds.threshold,
+            seed=case.sampling.seed,
+            photometry=nucleus.photometry(),
+            n_effective=posterior.ess["|A|"],
+        )
+
+
+def draw_figures(bounds: "Bounds", mass: MassBound | None) -> dict[str, Figure]:
+    """All figures of the report, by file name without ending."""
+    fits = bounds.fits
+    with matplotlib.rc_context({"backend": "Agg"}):
+        figures = {
+            "residual_fan": residual_fan(fits.null, fits.push, threshold=bounds.threshold),
+            "residuals_by_station": residual_by_station(fits.push),
+            "posterior": posterior_figure(bounds.posterior, bounds.limit),
+        }
+        if len(fits.push.components) > 1:
+            figures["direction_map"] = direction_map(bounds.threshold)
+        if mass is not None:
+            figures["mass"] = mass_figure(mass)
+    return figures
+
+
+def compose_record(
+    path: Path,
+    bounds: "Bounds",
+    mass: MassBound | None,
+    heard: list[str],
+    seconds: dict[str, float],
+) -> Record:
+    """Everything found and chosen, with what produced it."""
+    fits, case = bounds.fits, bounds.fits.case
+    inputs = {"arc": case.arc.file} | ({"case": path} if path != case.arc.file else {})
+    data = {
+        "object": fits.arc.name,
+        "law": case.thrust.law,
+        "arc": summary_of(fits),
+        "fits": {"null": fits.null, "push": fits.push},
+        "comparison": fits.comparison,
+        "threshold": bounds.threshold,
+        "posterior": bounds.posterior,
+        "limit": bounds.limit,
+        "verdict": bounds.judged,
+        "mass": mass,
+        "suspicions": bounds.suspicions,
+        "findings": vet(fits.arc),
+        "warnings": heard,
+        "choices": case,
+        "seeds": {"sampling": case.sampling.seed, "mass": case.sampling.seed},
+        "provenance": provenance(inputs),
+        "timings_s": seconds,
+    }
+    return Record({"sentence": bounds.sentence(mass), **data})
+
+
+def write_results(
+    case: Case,
+    record: Record,
+    fits: "Fits",
+    tables: list[SmallTable],
+    figures: dict[str, Figure],
+) -> None:
+    """Write texts, figures and record into the output folder, all of them or none."""
+    ending = case.output.figures
+    report = render_report(record.data, tables, [f"{name}.{ending}" for name in figures])
+    texts = {"report.txt": report, "residuals.csv": residuals_csv(fits.null)}
+    assert case.output.folder is not None
+    record.write(case.output.folder, figures, texts, formats=(ending,))
+
+
+def summary_of(fits: "Fits") -> dict[str, Any]:
+    """The arc in numbers: what was used, when, and from how far away."""
+    arc, seen = fits.arc, fits.null.residuals
+    told = arc.to_dict()
+    return {
+        "n_records": told["n_records"],
+        "n_obs": len(seen),
+        "span_d": fits.null.used.span_d,
+        "first_utc": str(seen["utc"].iloc[0]),
+        "last_utc": str(seen["utc"].iloc[-1]),
+        "r_min_au": float(seen["r_au"].min()),
+        "r_max_au": float(seen["r_au"].max()),
+        "delta_min_au": float(seen["delta_au"].min()),
+        "delta_max_au": float(seen["delta_au"].max()),
+        "n_nights": len(np.unique(fits.null.noise.night)),
+        "n_stations": len(told["stations"]),
+        "stations": told["stations"],
+        "catalogues": told["catalogues"],
+        "set_aside": told["set_aside"],
+    }
+
+
+# ------------------------------------------------------------------------ what the steps hand on
+
+
+@dataclass(frozen=True, eq=False)
+class Inspection:
+    """An arc before any orbit: what is in it, its errors, and what is doubtful."""
+
+    arc: Arc
+    noise: Noise
+    findings: tuple[Finding, ...]
+
+    def __str__(self) -> str:
+        told = self.to_dict()
+        lines = [str(self.arc)]
+        for title in ("stations", "catalogues", "kinds"):
+            counts = ", ".join(f"{name} {n}" for name, n in told[title].items())
+            lines.append(f"  {title}: {counts}")
+        lines.append(f"  longest gap: {told['longest_gap_d']:.1f} d")
+        lines.append(str(self.noise))
+        lines += [f"  {finding}" for finding in self.findings] or ["  Nothing doubtful was found."]
+        return "\n".join(lines)
+
+    def to_dict(self) -> dict[str, Any]:
+        """Counts, gaps, errors and findings."""
+        table = self.arc.used.table
+        day = table["utc_day"].to_numpy() + table["utc_sec"].to_numpy() / 86400.0
+        return {
+            **self.arc.to_dict(),
+            "longest_gap_d": float(np.diff(day).max()) if len(day) > 1 else 0.0,
+            "errors": self.noise.to_dict(),
+            "findings": [finding.to_dict() for finding in self.findings],
+        }
+
+
+@dataclass(frozen=True, eq=False)
+class Fits:
+    """The same arc fitted by gravity alone and with thrust."""
+
+    case: Case = field(repr=False)
+    arc: Arc = field(repr=False)
+    null: Fit
+    push: Fit
+    comparison: Comparison
+
+    def __str__(self) -> str:
+        return "\n\n".join(
+            [
+                str(self.arc),
+                f"Gravity alone\n{self.null}",
+                f"With thrust\n{self.push}",
+                str(self.comparison),
+                str(station_table(self.push)),
+                str(catalogue_table(self.push)),
+            ]
+        )
+
+    def to_dict(self) -> dict[str, Any]:
+        """Both fits and their comparison."""
+        return {
+            "object": self.arc.name,
+            "null": self.null.to_dict(),
+            "push": self.push.to_dict(),
+            "comparison": self.comparison.to_dict(),
+        }
+
+
+@dataclass(frozen=True, eq=False)
+class Bounds:
+    """What thrust the arc would have shown, and what its data allow."""
+
+    fits: Fits = field(repr=False)
+    threshold: DetectionThreshold
+    posterior: Posterior = field(repr=False)
+    limit: UpperLimit
+    judged: Verdict
+    suspicions: tuple[str, ...]
+
+    def __str__(self) -> str:
+        parts = [self.sentence(), str(self.judged), str(self.threshold), str(self.limit)]
+        return "\n\n".join([*parts, *self.suspicions])
+
+    def to_dict(self) -> dict[str, Any]:
+        """Threshold, limit, posterior (without its samples) and verdict."""
+        return {
+            "object": self.fits.arc.name,
+            "sentence": self.sentence(),
+            "threshold": self.threshold.to_dict(),
+            "posterior": self.posterior.to_dict(),
+            "limit": self.limit.to_dict(),
+            "verdict": self.judged.to_dict(),
+            "suspicions": list(self.suspicions),
+        }
+
+    def sentence(self, mass: MassBound | None = None) -> str:
+        """The sentence the program exists to write."""
+        arc = summary_of(self.fits)
+        judged, threshold, limit = self.judged, self.threshold.to_dict(), self.limit.to_dict()
+        return the_sentence(
+            name=self.fits.arc.name,
+            n_obs=self.fits.null.n_obs,
+            span_d=arc["span_d"],
+            r_min_au=arc["r_min_au"],
+            r_max_au=arc["r_max_au"],
+            law=self.fits.case.thrust.law,
+            verdict=judged.kind,
+            significance_sigma=threshold["significance_sigma"],
+            false_alarm=threshold["false_alarm"],
+            power=threshold["power"],
+            threshold_au_d2=threshold["worst_au_d2"],
+            best_threshold_au_d2=threshold["best_au_d2"],
+            confidence=limit["confidence"],
+            limit_au_d2=limit["magnitude_au_d2"],
+            estimate_au_d2=float(judged.estimate.value),
+            estimate_sigma_au_d2=float(judged.estimate_sigma.value),
+            found_sigma=judged.significance_sigma,
+            reasons=judged.reasons,
+            mass_kg=None if mass is None else float(mass.mass.value),
+            diameter_m=None if mass is None else float(mass.diameter.value),
+            mass_confidence=None if mass is None else mass.confidence,
+        )
+
+
+@dataclass(frozen=True, eq=False)
+class Drawing:
+    """A figure in a file, and what it shows."""
+
+    path: Path
+    fits: Fits = field(repr=False)
+    threshold: DetectionThreshold
+
+    def __str__(self) -> str:
+        return (
+            f"The residual fan of {self.fits.arc.name} ({self.fits.null.n_obs} observations) was "
+            f"drawn into {self.path}."
+        )
+
+    def to_dict(self) -> dict[str, Any]:
+        """Path, object and threshold."""
+        return {
+            "path": str(self.path),
+            "object": self.fits.arc.name,
+            "n_obs": self.fits.null.n_obs,
+            "threshold": self.threshold.to_dict(),
+        }
+
+
+# --------------------------------------------------------------------------- progress and files
+
+
+class Steps:
+    """Tells the steps on stderr as they are taken, and remembers how long each took."""
+
+    def __init__(self, show: bool) -> None:
+        self.show = show
+        self.seconds: dict[str, float] = {}
+
+    @contextmanager
+    def __call__(self, what: str) -> Iterator["StepBar"]:
+        begin = time.perf_counter()
+        with tqdm(total=1, desc=what, file=sys.stderr, disable=not self.show, leave=True) as bar:
+            yield StepBar(bar)
+            bar.n = bar.total
+            bar.refresh()
+        self.seconds[what] = time.perf_counter() - begin
+
+
+@dataclass(frozen=True)
+class StepBar:
+    """The progress bar of one step."""
+
+    bar: "tqdm[Any]"
+
+    def say(self, message: str) -> None:
+        """Show what is being done."""
+        self.bar.set_postfix_str(message)
+
+    def report(self, done: int, total: int, message: str) -> None:
+        """Show how far a long step has come."""
+        self.bar.total, self.bar.n = max(total, 1), min(done, total)
+        self.bar.set_postfix_str(message)
+
+
+@contextmanager
+def hear_warnings() -> Iterator[list[str]]:
+    """Collect the warnings of ngbound while they are shown as ever."""
+    heard: list[str] = []
+    with warnings.catch_warnings():
+        show = warnings.showwarning
+
+        def hear(message: Any, category: Any, *place: Any, **more: Any) -> None:
+            if issubclass(category, NgboundWarning) and str(message) not in heard:
+                heard.append(str(message))
+            show(message, category, *place, **more)
+
+        warnings.showwarning = hear
+        yield heard
+
+
+def save_whole(figure: Figure, path: Path) -> None:
+    """Save a figure so that the file is never seen half-written."""
+    part = path.with_name(f".{path.stem}.{secrets.token_hex(4)}{path.suffix}")
+    try:
+        figure.savefig(part, dpi=200)
+        os.replace(part, path)
+    finally:
+        part.unlink(missing_ok=True)

@@ -1,0 +1,140 @@
+"""The integrator against itself: convergence, round trips, breaks, failures."""
+
+import numpy as np
+import pytest
+
+from ngbound.errors import EphemerisRangeError, PropagationError
+from ngbound.motion import ForceModel, Thrust, Window, integrate_track
+from ngbound.motion._kernels.radau import NODES, TO_POWERS, V_WEIGHTS, X_WEIGHTS
+from ngbound.sky import load_ephemeris
+from tests.motion.orbits import BELT, HYPERBOLA, at_perihelion
+from tests.units import metre
+
+THRUST = Thrust(A=(1e-8, 1e-9, 1e-9))
+
+
+def test_nodes_are_gauss_radau_points() -> None:
+    # E. Everhart 1985: h_1 = 0.05626256053692215, h_7 = 0.97752061356128750 (from memory)
+    assert NODES[0] == 0.0
+    assert NODES[1] == pytest.approx(0.05626256053692215, abs=1e-15)
+    assert NODES[7] == pytest.approx(0.97752061356128750, abs=1e-15)
+
+
+@pytest.mark.parametrize("power", range(15))
+def test_weights_integrate_polynomials_exactly(power: int) -> None:
+    values = NODES**power
+    assert V_WEIGHTS[8] @ values == pytest.approx(1.0 / (power + 1), abs=2e-15)
+    if power < 14:
+        assert X_WEIGHTS[8] @ values == pytest.approx(1.0 / ((power + 1) * (power + 2)), abs=1e-15)
+    if power < 8:
+        assert TO_POWERS @ values == pytest.approx(np.eye(8)[power], abs=1e-11)
+
+
+@pytest.mark.parametrize(
+    ("state", "days", "tolerance"),
+    [(BELT, 365.25, 5e-3 * metre), (HYPERBOLA, 120.0, 2e-3 * metre), (BELT, 7305.0, 0.2 * metre)],
+    ids=["main belt 1 yr", "hyperbola 120 d", "main belt 20 yr"],
+)
+def test_error_against_tighter_steps(state: np.ndarray, days: float, tolerance: float) -> None:
+    times = np.linspace(0.0, days, 200)
+    normal = integrate_track(0.0, state, 0.0, days, THRUST).at(times)
+    tight = integrate_track(0.0, state, 0.0, days, THRUST, eps=1e-10).at(times)
+    assert np.abs(normal - tight)[:, :3].max() < tolerance
+
+
+def test_round_trip_of_twenty_years() -> None:
+    days = 7305.0
+    there = integrate_track(0.0, BELT, 0.0, days, THRUST, eps=1e-8).at(days)[0]
+    back = integrate_track(days, there, 0.0, days, THRUST, eps=1e-8).at(0.0)[0]
+    assert np.linalg.norm(back[:3] - BELT[:3]) < 0.5 * metre
+
+
+def test_order_of_convergence() -> None:
+    # the steps follow eps^(1/7); an error that falls at least with the 12th power of the step shows the high order
+    times = np.linspace(0.0, 120.0, 50)
+    best = integrate_track(0.0, HYPERBOLA, 0.0, 120.0, THRUST, eps=1e-10).at(times)
+    steps, errors = [], []
+    for eps in (1e-2, 1e-3, 1e-4):
+        track = integrate_track(0.0, HYPERBOLA, 0.0, 120.0, THRUST, eps=eps)
+        assert track.ahead is not None
+        steps.append(track.ahead.n)
+        errors.append(np.abs(track.at(times) - best)[:, :3].max())
+    slope = np.polyfit(np.log(steps), np.log(errors), 1)[0]
+    assert slope < -10.0
+
+
+def test_backward_and_forward_legs_meet_at_the_epoch() -> None:
+    track = integrate_track(100.0, BELT, 0.0, 200.0)
+    h = 1e-6
+    before, after = track.at([100.0 - h, 100.0 + h])
+    assert before[:3] + h * BELT[3:] == pytest.approx(BELT[:3], abs=1e-3 * metre)
+    assert after[:3] - h * BELT[3:] == pytest.approx(BELT[:3], abs=1e-3 * metre)
+    assert track.at(100.0)[0] == pytest.approx(BELT, abs=1e-15)
+
+
+def test_velocity_is_the_derivative_of_position() -> None:
+    track = integrate_track(0.0, HYPERBOLA, 0.0, 60.0)
+    h = 1e-3
+    t = np.linspace(1.0, 59.0, 25)
+    slope = (track.at(t + h)[:, :3] - track.at(t - h)[:, :3]) / (2 * h)
+    assert slope == pytest.approx(track.at(t)[:, 3:], rel=1e-6)
+
+
+def test_date_window_switches_the_thrust_on_and_off() -> None:
+    window = Window.between_dates(30.0, 60.0)
+    burst = Thrust(A=(1e-6, 0.0, 0.0), window=window)
+    with_burst = integrate_track(0.0, BELT, 0.0, 90.0, burst)
+    without = integrate_track(0.0, BELT, 0.0, 90.0)
+    difference = with_burst.at([29.9, 45.0, 90.0]) - without.at([29.9, 45.0, 90.0])
+    assert np.abs(difference[0]).max() < 1e-15
+    r = 2.3
+    assert np.linalg.norm(difference[1, 3:]) == pytest.approx(1e-6 / r**2 * 15.0, rel=0.02)
+    assert np.linalg.norm(difference[2, 3:]) == pytest.approx(1e-6 / r**2 * 30.0, rel=0.06)
+    tight = integrate_track(0.0, BELT, 0.0, 90.0, burst, eps=1e-9)
+    assert np.abs(tight.at(90.0) - with_burst.at(90.0))[0, :3].max() < 1e-3 * metre
+
+
+def test_distance_window_switches_where_the_distance_is_reached() -> None:
+    inside = Thrust(A=(1e-6, 0.0, 0.0), window=Window.between_distances(0.0, 0.5))
+    always = Thrust(A=(1e-6, 0.0, 0.0))
+    a = integrate_track(0.0, HYPERBOLA, 0.0, 40.0, inside)
+    b = integrate_track(0.0, HYPERBOLA, 0.0, 40.0, always)
+    assert a.ahead is not None
+    sun = np.linalg.norm(a.at(5.0)[0, :3])
+    assert sun < 0.5
+    assert np.abs(a.at(5.0) - b.at(5.0)).max() < 1e-14
+    assert np.linalg.norm((a.at(40.0) - b.at(40.0))[0, :3]) > 1000 * metre
+    tight = integrate_track(0.0, HYPERBOLA, 0.0, 40.0, inside, eps=1e-9)
+    assert np.abs(tight.at(40.0) - a.at(40.0))[0, :3].max() < 1e-2 * metre
+
+
+def test_flyby_of_the_earth_at_40000_km() -> None:
+    from_earth = 40000e3 * metre
+    ephemeris_epoch = 50.0
+    position, velocity = load_ephemeris().posvel("earth", ephemeris_epoch)
+    state = np.concatenate([position + [from_earth, 0.0, 0.0], velocity + [0.0, 7.0e-3, 2e-3]])
+    times = np.linspace(0.0, 100.0, 101)
+    normal = integrate_track(ephemeris_epoch, state, 0.0, 100.0)
+    tight = integrate_track(ephemeris_epoch, state, 0.0, 100.0, eps=1e-10)
+    assert np.abs(normal.at(times) - tight.at(times))[:, :3].max() < 5.0 * metre
+    assert normal.ahead is not None and normal.ahead.n < 400
+
+
+def test_orbit_into_the_sun_is_refused_in_a_sentence() -> None:
+    state = at_perihelion(1.0, 0.0)
+    sun = state.copy()
+    sun[3:] = 0.0
+    with pytest.raises(PropagationError, match=r"runs into the sun at 2000-.* TDB"):
+        integrate_track(0.0, sun, 0.0, 100.0)
+
+
+def test_span_outside_the_ephemeris_is_refused() -> None:
+    with pytest.raises(EphemerisRangeError, match="covers 1549-12-31 to 2650"):
+        integrate_track(0.0, BELT, 0.0, 365.25 * 700, forces=ForceModel(asteroids=False))
+
+
+def test_state_that_is_not_finite_is_refused() -> None:
+    bad = BELT.copy()
+    bad[0] = np.nan
+    with pytest.raises(PropagationError, match="six finite numbers"):
+        integrate_track(0.0, bad, 0.0, 10.0)

@@ -1,0 +1,125 @@
+"""Analytic partials against Richardson-extrapolated differences of the same trajectory."""
+
+from collections.abc import Callable
+
+import numpy as np
+import pytest
+
+from ngbound.motion import (
+    PARAMETERS,
+    ForceModel,
+    TableLaw,
+    Thrust,
+    Window,
+    integrate_track,
+    partials_along,
+    radiation_pressure_au_d2,
+)
+from tests.motion.orbits import BELT, HYPERBOLA, at_perihelion
+
+AMOUNTS = (1e-6, 3e-7, 2e-7)
+AREA_TO_MASS = 1e-4
+STEP = {"lag": 0.5, "exponent": 1e-2, "srp": 1e-6}
+KNOTS = np.geomspace(0.1, 10.0, 9)
+LAWS: dict[str, Callable[..., Thrust]] = {
+    "power": lambda **k: Thrust("power", **({"exponent": 2.3} | k)),
+    "water-ice": lambda **k: Thrust("water-ice", **{n: v for n, v in k.items() if n != "exponent"}),
+    "co-5au": lambda **k: Thrust("co-5au", **{n: v for n, v in k.items() if n != "exponent"}),
+    "table": lambda **k: Thrust(
+        TableLaw(tuple(KNOTS), tuple(KNOTS**-2.0)),
+        **{n: v for n, v in k.items() if n != "exponent"},
+    ),
+}
+
+
+def numeric(
+    name: str, state: np.ndarray, times: np.ndarray, make: Callable[..., Thrust], forces: ForceModel, lag: float
+) -> np.ndarray:
+    """Central differences extrapolated twice (L. F. Richardson 1911)."""
+
+    def at(change: float) -> np.ndarray:
+        moved = state.copy()
+        amounts = list(AMOUNTS)
+        choices: dict[str, object] = {"lag": lag, "area_to_mass": AREA_TO_MASS}
+        number = PARAMETERS.index(name)
+        if number < 6:
+            moved[number] += change
+        elif number < 9:
+            amounts[number - 6] += change
+        elif name == "lag":
+            choices["lag"] = lag + change
+        elif name == "exponent":
+            choices["exponent"] = 2.3 + change
+        else:
+            choices["area_to_mass"] = AREA_TO_MASS + change / radiation_pressure_au_d2(1.0)
+        thrust = make(A=amounts, **choices)
+        return integrate_track(0.0, moved, 0.0, times[-1], thrust, forces, eps=1e-9).at_offset(times)
+
+    number = PARAMETERS.index(name)
+    step = STEP.get(name, 1e-4 if number < 3 else 1e-6)
+    rows = [(at(step / 2**k) - at(-step / 2**k)) / (2 * step / 2**k) for k in range(3)]
+    once = [(4 * rows[k + 1] - rows[k]) / 3 for k in range(2)]
+    return (16 * once[1] - once[0]) / 15
+
+
+@pytest.mark.parametrize("law", LAWS)
+@pytest.mark.parametrize(("state", "days"), [(BELT, 365.0), (HYPERBOLA, 120.0)], ids=["belt", "hyperbola"])
+@pytest.mark.parametrize("relativity", ["sun", "all"])
+def test_all_parameters_of_all_laws(law: str, state: np.ndarray, days: float, relativity: str) -> None:
+    lag = 0.0 if law == "power" else 20.0
+    names = [n for n in PARAMETERS if n != "exponent" or law == "power"]
+    forces = ForceModel(relativity=relativity, sun_j2=True, frame_dragging=True)
+    thrust = LAWS[law](A=AMOUNTS, lag=lag, area_to_mass=AREA_TO_MASS)
+    track = integrate_track(0.0, state, 0.0, days, thrust, forces)
+    times = np.array([days / 3, days])
+    exact = partials_along(track, names).at_offset(times)
+    for c, name in enumerate(names):
+        truth = numeric(name, state, times, LAWS[law], forces, lag)
+        error = np.abs(exact[:, :3, c] - truth[:, :3]).max(axis=1)
+        # differences across a table's knots are themselves no better than 1e-6, those of a lag than 1e-7
+        tolerance = 1e-6 if law == "table" else 1e-7 if name == "lag" else 1e-8
+        assert np.all(error < tolerance * np.abs(truth[:, :3]).max(axis=1)), name
+
+
+@pytest.mark.parametrize("backward", [False, True])
+def test_switch_by_distance_moves_with_the_orbit(backward: bool) -> None:
+    state = at_perihelion(0.3, 0.9)
+    window = Window.between_distances(0.0, 0.6)
+    end = -40.0 if backward else 40.0
+    thrust = Thrust(A=(3e-6, 1e-6, 5e-7), window=window)
+    track = integrate_track(0.0, state, min(0.0, end), max(0.0, end), thrust)
+    exact = partials_along(track, PARAMETERS[:9]).at_offset([end])[0]
+    for c in range(9):
+        step = 1e-5 if c < 3 else 1e-7
+
+        def at(change: float, c: int = c) -> np.ndarray:
+            moved = state.copy()
+            amounts = np.array([3e-6, 1e-6, 5e-7])
+            if c < 6:
+                moved[c] += change
+            else:
+                amounts[c - 6] += change
+            push = Thrust(A=amounts, window=window)
+            return integrate_track(0.0, moved, min(0.0, end), max(0.0, end), push).at_offset([end])[0]
+
+        rough = (at(step) - at(-step)) / (2 * step)
+        fine = (at(step / 2) - at(-step / 2)) / step
+        truth = (4 * fine - rough) / 3
+        assert np.abs(exact[:3, c] - truth[:3]).max() < 1e-6 * np.abs(truth[:3]).max(), c
+        # the kick at the switch is a part of this that the tolerance resolves
+    without = partials_along(
+        integrate_track(0.0, state, min(0.0, end), max(0.0, end), Thrust(A=(3e-6, 1e-6, 5e-7))), ("x",)
+    )
+    assert np.abs(without.at_offset([end])[0, :3, 0] - exact[:3, 0]).max() > 1e-5
+
+
+def test_coarse_steps_give_the_same_partials() -> None:
+    thrust = Thrust("water-ice", A=AMOUNTS, lag=10.0)
+    track = integrate_track(0.0, HYPERBOLA, 0.0, 120.0, thrust)
+    coarse = integrate_track(0.0, HYPERBOLA, 0.0, 120.0, thrust, eps=5e-6)
+    assert coarse.ahead is not None and track.ahead is not None and coarse.ahead.n < track.ahead.n
+    times = np.linspace(0.0, 120.0, 13)
+    fine = partials_along(track, PARAMETERS[:9]).at_offset(times)
+    rough = partials_along(track, PARAMETERS[:9], coarse).at_offset(times)
+    scale = np.abs(fine).max(axis=(0, 1))
+    assert np.all(np.abs(fine - rough).max(axis=(0, 1)) < 1e-9 * scale)

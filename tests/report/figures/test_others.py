@@ -1,0 +1,100 @@
+"""Direction map, posterior, mass and station figures: structure and labels."""
+
+from types import SimpleNamespace
+
+import numpy as np
+import pytest
+from astropy import units as u
+
+from ngbound.errors import LimitError, MassError
+from ngbound.limits import detection_threshold, sample_posterior, upper_limit
+from ngbound.report import (
+    direction_map,
+    mass_figure,
+    posterior_figure,
+    residual_by_station,
+)
+from tests.report.standins import archive_pair, demo_pair
+
+
+def texts(fig) -> str:
+    return " ".join(t.get_text() for owner in (fig, *fig.axes) for t in owner.texts)
+
+
+@pytest.mark.parametrize("pair", [demo_pair, archive_pair])
+def test_direction_map(pair):
+    fig = direction_map(detection_threshold(pair()[1]))
+    fig.canvas.draw()
+    assert fig.axes[0].name == "mollweide"
+    assert {"R", "T", "N", "\u2212R", "\u2212T", "\u2212N"} <= set(texts(fig).split())
+    assert "95 %" in texts(fig) and "best" in texts(fig)
+    assert "threshold" in fig.axes[1].get_xlabel()
+
+
+def without(push, keep: str):
+    """The same fit with fewer thrust components."""
+    chosen = [*range(6), *(6 + "RTN".index(c) for c in keep)]
+    normal = push.normal[np.ix_(chosen, chosen)]
+    return SimpleNamespace(
+        components=keep,
+        n_state=6,
+        normal=normal,
+        theta=push.theta[chosen],
+        chi2=push.chi2,
+        dof=push.dof,
+        names=tuple(push.names[i] for i in chosen),
+    )
+
+
+def test_direction_map_of_two_and_one_components():
+    push = demo_pair()[1]
+    fig = direction_map(detection_threshold(without(push, "RT")))
+    assert fig.axes[0].get_yscale() == "log" and "radial" in fig.axes[0].get_xlabel()
+    with pytest.raises(LimitError, match="two or three"):
+        direction_map(detection_threshold(without(push, "T")))
+
+
+def test_posterior_figure():
+    push = demo_pair()[1]
+    post = sample_posterior(push, seed=1, target_ess=300.0)
+    fig = posterior_figure(post, upper_limit(post))
+    fig.canvas.draw()
+    assert len(fig.axes) == 4
+    assert "A_R" in fig.axes[0].get_xlabel() and "|A|" in fig.axes[3].get_xlabel()
+    assert "isotropic-uniform" in texts(fig) and "flat-components" in texts(fig)
+
+
+def a_bound(**more):
+    rng = np.random.default_rng(4)
+    shares = tuple(
+        SimpleNamespace(name=n, mass_at_low=a, mass_at_high=b, total=t)
+        for n, a, b, t in (("acceleration", 2e11, 2e10, 0.8), ("collimation", 3e10, 7e10, 0.2))
+    )
+    known = {
+        "mass_draws_kg": 5e10 * np.exp(rng.standard_normal(4000)),
+        "mass": 8e9 * u.kg,
+        "diameter": 310 * u.m,
+        "confidence": 0.95,
+        "inputs": shares,
+        "mass_detection": 1e9 * u.kg,
+    }
+    return SimpleNamespace(**{**known, **more})
+
+
+def test_mass_figure():
+    fig = mass_figure(a_bound())
+    fig.canvas.draw()
+    assert len(fig.axes) == 2 and fig.axes[0].get_xscale() == "log"
+    assert "310 m" in texts(fig) and "95 %" in texts(fig) and "80 %" in texts(fig)
+    assert len(mass_figure(a_bound(inputs=())).axes) == 1
+    with pytest.raises(MassError, match="at least 100"):
+        mass_figure(a_bound(mass_draws_kg=np.ones(5)))
+
+
+def test_residual_by_station():
+    fig = residual_by_station(archive_pair()[0], most=10)
+    fig.canvas.draw()
+    catalogues = [t.get_text() for t in fig.axes[0].get_yticklabels()]
+    assert "USNOA2" in catalogues
+    assert len(fig.axes[2].get_yticklabels()) == 10
+    assert "not shown" in texts(fig)
