@@ -182,13 +182,14 @@ class OrbitTable(Table):
         if self.position_au and self.velocity_au_d:
             state = np.array([*self.position_au, *self.velocity_au_d])
             return Orbit(float(parse_time(self.epoch, "tdb")), state, thrust, forces)
+        given = self.model_dump()
         return Orbit.from_elements(
             epoch=self.epoch,
-            q=self.q_au,
-            e=self.e,
-            i=self.i_deg,
-            node=self.node_deg,
-            argperi=self.argperi_deg,
+            q=given["q_au"],
+            e=given["e"],
+            i=given["i_deg"],
+            node=given["node_deg"],
+            argperi=given["argperi_deg"],
             tp=self.tp,
             thrust=thrust,
             forces=forces,
@@ -230,7 +231,7 @@ class ThrustTable(Table):
         if self.law == "table":
             if self.table is None:
                 raise CaseError("law = 'table' needs table = [[r, g], ...] beside it")
-            law = TableLaw(*zip(*self.table, strict=True))
+            law = TableLaw(tuple(r for r, _ in self.table), tuple(g for _, g in self.table))
         return Thrust(
             law,
             components=self.components,

@@ -11,7 +11,7 @@ import sys
 import warnings
 from collections.abc import Callable
 from pathlib import Path
-from typing import IO, Any
+from typing import Any, NoReturn
 
 import click
 
@@ -22,17 +22,6 @@ INTERRUPTED = 130
 """Exit status after Ctrl-C, as shells have it (128 + SIGINT)."""
 
 
-class Sentence(click.ClickException):
-    """An end of the program that is told in one sentence on stderr."""
-
-    def __init__(self, message: str, exit_code: int) -> None:
-        super().__init__(message)
-        self.exit_code = exit_code
-
-    def show(self, file: IO[Any] | None = None) -> None:
-        click.echo(f"ngbound: {self.format_message()}", file=file or sys.stderr)
-
-
 class Verbs(click.Group):
     """The group of verbs; every expected failure of a verb becomes a sentence and a status."""
 
@@ -40,28 +29,30 @@ class Verbs(click.Group):
         try:
             with warnings.catch_warnings():
                 warnings.showwarning = _show_warning
-                warnings.simplefilter("once", NgboundWarning)
                 return super().invoke(ctx)
         except NgboundError as error:
-            raise Sentence(str(error), error.exit_status) from error
+            _end(ctx, str(error), error.exit_status)
         except BrokenPipeError:
             raise
         except OSError as error:
             name = f"{error.filename}: " if error.filename else ""
-            raise Sentence(
-                f"{name}{error.strerror or error}; choose a place that can be read and written.",
-                NgboundError.exit_status,
-            ) from error
-        except MemoryError as error:
-            raise Sentence(
+            reason = error.strerror or str(error)
+            _end(ctx, f"{name}{reason}; choose a place that can be read and written.", 1)
+        except MemoryError:
+            _end(
+                ctx,
                 "There is not enough memory for this analysis; try a shorter arc, or fewer "
-                "[sampling] walkers and steps.",
-                NgboundError.exit_status,
-            ) from error
-        except KeyboardInterrupt as error:
-            raise Sentence(
-                "Interrupted; no record was written.", INTERRUPTED
-            ) from error
+                "[sampling] walkers and max_steps.",
+                1,
+            )
+        except KeyboardInterrupt:
+            _end(ctx, "Interrupted; no record was written.", INTERRUPTED)
+
+
+def _end(ctx: click.Context, sentence: str, status: int) -> NoReturn:
+    """End the program with a sentence on stderr."""
+    click.echo(f"ngbound: {sentence}", err=True)
+    ctx.exit(status)
 
 
 def _show_warning(
@@ -153,7 +144,9 @@ def main() -> None:
 
 
 @_step(
-    "Do the whole job: fit with and without thrust, threshold, limits, mass, figure and record.\n\n"
+    "Do the whole job, from the arc to the record.\n\n"
+    "The orbit is fitted with and without thrust; detection threshold, upper limits and mass bound "
+    "follow, with report, figures and a machine-readable record.\n\n"
     "The results go into the output folder of the case, the record last, so that an interrupted "
     "run leaves no half-written record.\n\n"
     "Example: ngbound run data_demo/quiet.toml",
@@ -174,7 +167,8 @@ def run(input_file: Path, **options: Any) -> Any:
 
 
 @_step(
-    "Tell what is in the arc at a glance: stations, catalogues, span, gaps, errors, doubts.\n\n"
+    "Tell what is in an arc at a glance.\n\n"
+    "Stations, catalogues, span, gaps, stated and implied errors, and whatever is doubtful.\n\n"
     "Example: ngbound inspect data_demo/quiet.psv",
     name="inspect",
 )
@@ -184,7 +178,8 @@ def inspect(input_file: Path, **options: Any) -> Any:
 
 
 @_step(
-    "Fit the orbit by gravity alone and with thrust, and compare the two.\n\n"
+    "Fit with and without thrust, and compare.\n\n"
+    "The first orbit is found from the angles, unless the case file gives one.\n\n"
     "Example: ngbound fit data_demo/pushed.psv --components RT",
     name="fit",
 )
@@ -196,7 +191,8 @@ def fit(input_file: Path, **options: Any) -> Any:
 
 
 @_step(
-    "State the detection threshold of the arc and the upper limit on the thrust.\n\n"
+    "State detection threshold and upper limit.\n\n"
+    "The threshold is what the arc would have shown, the limit what its data allow.\n\n"
     "Example: ngbound limit data_demo/quiet.psv --seed 7",
     name="limit",
 )
@@ -209,8 +205,9 @@ def limit(input_file: Path, **options: Any) -> Any:
 
 
 @_step(
-    "State the mass and the diameter that the limit demands.\n\n"
-    "The outgassing budget stands in the case file, in one [[outgassing]] table for each species.\n\n"
+    "State the mass that the limit demands.\n\n"
+    "The outgassing budget stands in the case file, in one [[outgassing]] table for each "
+    "species.\n\n"
     "Example: ngbound mass data_demo/quiet.toml",
     name="mass",
 )
@@ -223,8 +220,9 @@ def mass(input_file: Path, **options: Any) -> Any:
 
 
 @_step(
-    "Draw the residual fan: residuals along and across the track, with the departures that "
-    "a ladder of accelerations would have left.\n\n"
+    "Draw the residual fan into a file.\n\n"
+    "Residuals along and across the motion, with the departures that a ladder of accelerations "
+    "would have left.\n\n"
     "Example: ngbound fan data_demo/quiet.toml -o fan.pdf",
     name="fan",
 )
@@ -245,7 +243,8 @@ def fan(input_file: Path, **options: Any) -> Any:
 
 @main.command(
     name="simulate",
-    help="Make an invented arc from a recipe (TOML) and write it as ADES PSV.\n\n"
+    help="Make an invented arc from a recipe.\n\n"
+    "The recipe is a TOML file; the arc is written as ADES PSV.\n\n"
     "Example: ngbound simulate data_demo/quiet_recipe.toml -o quiet.psv",
 )
 @click.argument("recipe", metavar="RECIPE", type=click.Path(path_type=Path))

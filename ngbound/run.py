@@ -226,12 +226,12 @@ def bound_the_mass(bounds: "Bounds", step: "Steps") -> MassBound | None:
     budget = case.budget()
     if budget is None:
         return None
-    nucleus, posterior = case.nucleus, bounds.posterior
+    nucleus, posterior, thrust = case.nucleus, bounds.posterior, case.thrust.thrust()
     with step("mass bound"):
         return mass_bound(
             posterior.A_mag,
             budget,
-            g_at=case.thrust.thrust().g,
+            g_at=lambda r_au: float(thrust.g(r_au)),
             density=nucleus.density,
             confidence=case.detection.confidence,
             threshold=bounds.threshold,

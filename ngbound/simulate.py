@@ -264,7 +264,7 @@ class Campaign:
         thrust = self.plan.thrust
         return self.plan.orbit.orbit(thrust.thrust(thrust.A_au_d2))
 
-    def _report(self, instrument: "Instrument") -> pd.DataFrame:
+    def _report(self, instrument: Site | Spacecraft) -> pd.DataFrame:
         """All records of one instrument."""
         if isinstance(instrument, Site):
             utc_s, night = self._nights_on_ground(instrument)
@@ -308,7 +308,7 @@ class Campaign:
         return frame
 
     def _errors_arcsec(
-        self, instrument: "Instrument", night: NDArray[np.int64]
+        self, instrument: Site | Spacecraft, night: NDArray[np.int64]
     ) -> tuple[Floats, Floats]:
         """Error of each record along RA and Dec: its own, and the one its night shares."""
         _, block = np.unique(night, return_inverse=True)
@@ -317,7 +317,7 @@ class Campaign:
         east, north = own + shared[:, block]
         return east, north
 
-    def _place(self, instrument: "Instrument", utc_s: Floats) -> dict[str, Any]:
+    def _place(self, instrument: Site | Spacecraft, utc_s: Floats) -> dict[str, Any]:
         """ADES location columns."""
         if isinstance(instrument, Site):
             return {
@@ -336,7 +336,7 @@ class Campaign:
             f"pos{axis + 1}": [f"{value:.3f}" for value in km[:, axis]] for axis in range(3)
         }
 
-    def _visits(self, instrument: "Instrument") -> list[date]:
+    def _visits(self, instrument: Site | Spacecraft) -> list[date]:
         """Nights on which the instrument tries, weather permitting."""
         first, last = self.plan.schedule.first, self.plan.schedule.last
         days = range(
@@ -348,7 +348,7 @@ class Campaign:
             if self.rng.random() < instrument.clear_fraction
         ]
 
-    def _nights_on_ground(self, site: "Site") -> tuple[Floats, NDArray[np.int64]]:
+    def _nights_on_ground(self, site: Site) -> tuple[Floats, NDArray[np.int64]]:
         """Seconds of UTC past MJD 0 of a site's frames, and the night of each."""
         midnight_s = np.array(
             [
@@ -362,7 +362,7 @@ class Campaign:
         good = self._visible_from_ground(site, place, starts_s.ravel()).reshape(starts_s.shape)
         return self._frames(site, starts_s, good)
 
-    def _nights_in_space(self, craft: "Spacecraft") -> tuple[Floats, NDArray[np.int64]]:
+    def _nights_in_space(self, craft: Spacecraft) -> tuple[Floats, NDArray[np.int64]]:
         """Seconds of UTC past MJD 0 of a spacecraft's frames, and the night of each."""
         day_s = np.array([_mjd(night) * DAY_S for night in self._visits(craft)])
         starts_s = day_s[:, None] + np.arange(0.0, DAY_S, NIGHT_STEP_S)
@@ -376,7 +376,7 @@ class Campaign:
         return self._frames(craft, starts_s, good.reshape(starts_s.shape))
 
     def _frames(
-        self, instrument: "Instrument", starts_s: Floats, good: Bools
+        self, instrument: Site | Spacecraft, starts_s: Floats, good: Bools
     ) -> tuple[Floats, NDArray[np.int64]]:
         """A run of frames on each night in which first and last frame see the object."""
         length_s = (instrument.frames - 1) * instrument.spacing_min * MINUTE_S
@@ -396,7 +396,7 @@ class Campaign:
         return np.concatenate(times), np.concatenate(nights)
 
     def _visible_from_ground(
-        self, site: "Site", place: tuple[float, float, float], utc_s: Floats
+        self, site: Site, place: tuple[float, float, float], utc_s: Floats
     ) -> Bools:
         """Where the object stands high, the Sun low, and the object is bright enough."""
         observers = station_states(place, _tdb_d(utc_s), self.ephemeris)

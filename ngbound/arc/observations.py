@@ -101,6 +101,7 @@ REASON_OFFSET = "offsets from another body are not used in fits yet"
 REASON_RESIDUAL = "a residual record holds no observed position"
 REASON_DEPRECATED = "marked as deprecated"
 REASON_NO_POSITION = "the record gives no position of the {site} station"
+REASON_NO_ANGLES = "the record gives no position of the object"
 REASON_SYSTEM = "the position system {system} of the station cannot be used"
 REASON_CENTRE = "the station's position is not counted from the Earth"
 EARTH_CENTRE = 399
@@ -660,10 +661,10 @@ class _Checker:
             ra_text[mine], dec_text[mine] = self.text(ra_column)[mine], self.text(dec_column)[mine]
             ra_step[mine] = 3600.0 * 10.0 ** -parse_decimals(ra_text[mine]).places.astype(float)
             dec_step[mine] = 3600.0 * 10.0 ** -parse_decimals(dec_text[mine]).places.astype(float)
-        if "precRA" in columns:
-            ra_step = np.fmax(ra_step, 15.0 * columns["precRA"])
-            dec_step = np.fmax(dec_step, columns["precDec"])
-            time_step = np.fmax(time_step, 1e-6 * 86400.0 * columns["precTime"])
+        absent = np.full(n, np.nan)
+        ra_step = np.fmax(ra_step, 15.0 * columns.get("precRA", absent))
+        dec_step = np.fmax(dec_step, columns.get("precDec", absent))
+        time_step = np.fmax(time_step, 1e-6 * 86400.0 * columns.get("precTime", absent))
         occultation = self.records.kind == OCCULTATION
         if occultation.any():
             d_ra, d_dec = _offset_arcsec(columns, n)
@@ -764,7 +765,7 @@ def _offset_arcsec(columns: Mapping[str, Any], n: int) -> tuple[FloatArray, Floa
 def _error_of_offset(columns: dict[str, Any], kind: ObjectArray) -> None:
     """Errors given as rmsDist (arcsec) and rmsPA (deg), turned into rmsRA, rmsDec, rmsCorr of
     occultations."""
-    if "rmsDist" not in columns or "rmsPA" not in columns:
+    if not {"dist", "pa", "rmsDist", "rmsPA"} <= set(columns):
         return
     s_d, s_p = columns["rmsDist"], np.radians(columns["rmsPA"]) * columns["dist"]
     pa = np.radians(columns["pa"])
@@ -808,6 +809,8 @@ def _why_not(records: Records, columns: Mapping[str, Any]) -> ObjectArray:
     set_aside((kind == OPTICAL_RESIDUAL) | (kind == RADAR_RESIDUAL), REASON_RESIDUAL)
     if "deprecated" in columns:
         set_aside(columns["deprecated"] != "", REASON_DEPRECATED)
+    lost = ~(np.isfinite(columns["ra_rad"]) & np.isfinite(columns["dec_rad"]))
+    set_aside(lost, REASON_NO_ANGLES)
     site, sys = columns["site"], columns["sys"]
     placed = (
         np.isfinite(columns["pos1"]) & np.isfinite(columns["pos2"]) & np.isfinite(columns["pos3"])

@@ -462,8 +462,9 @@ def compare_fits(null: Fit, push: Fit) -> Comparison:
     FitError
         If the fits are of different arcs, or the second has no more parameters than the first.
     """
-    if len(null.used) != len(push.used) or not np.array_equal(
-        null.records.tdb_d, push.records.tdb_d
+    if len(null.used) != len(push.used) or not (
+        np.array_equal(null.records.tdb_d, push.records.tdb_d)
+        and np.array_equal(null.records.basis, push.records.basis)
     ):
         raise FitError(
             "The two fits are of different arcs and cannot be compared; fit the same arc twice."

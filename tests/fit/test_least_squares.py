@@ -94,10 +94,10 @@ def test_only_kept_records_count(belt):
 
 
 def test_covariance_covers_the_truth():
-    """Forty arcs: the squared Mahalanobis distance of the truth follows chi2 with six degrees."""
+    """Thirty arcs: the squared Mahalanobis distance of the truth follows chi2 with six degrees."""
     rng = np.random.default_rng(11)
     distance = []
-    for _ in range(40):
+    for _ in range(30):
         truth = simulate(orbit_of(NEAR_EARTH), nights(MJD_2020, 200, 8, 2), rng)
         records, noise = made(truth)
         keep = np.ones(len(records), dtype=bool)

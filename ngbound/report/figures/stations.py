@@ -11,7 +11,7 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 from ngbound.report.figures import style
-from ngbound.report.tables import SUSPICIOUS_SIGMA, group_means
+from ngbound.report.tables import SUSPICIOUS_LEAST_RECORDS, SUSPICIOUS_SIGMA, group_means
 
 MOST_ROWS = 24
 
@@ -62,9 +62,10 @@ def residual_by_station(
             "height_ratios": [len(p) + 0.6 for _, p in parts],
         },
     )
+    reach = {axis: _reach(parts, axis) for axis in ("ra", "dec")}
     for (noun, means), line in zip(parts, grid, strict=True):
         for ax, axis in zip(line, ("ra", "dec"), strict=True):
-            _draw(ax, means, axis)
+            _draw(ax, means, axis, reach[axis])
         line[0].set_yticks(np.arange(len(means)), [str(g) for g in means["group"]])
         line[0].set_ylim(len(means) - 0.4, -0.6)
         line[0].set_title(f"by {noun}", loc="left", fontsize=7.5, color="#555555", pad=3)
@@ -90,7 +91,18 @@ def residual_by_station(
     return fig
 
 
-def _draw(ax: Axes, means: pd.DataFrame, axis: str) -> None:
+def _reach(parts: list[tuple[str, pd.DataFrame]], axis: str) -> float:
+    """Half the width of a column, arcsec: what is significant and most of what is well known."""
+    means = pd.concat([p for _, p in parts])
+    mean = np.abs(means[f"mean_{axis}_arcsec"].to_numpy(float))
+    error = means[f"mean_{axis}_error_arcsec"].to_numpy(float)
+    solid = means["n"].to_numpy() >= SUSPICIOUS_LEAST_RECORDS
+    far = solid & (mean > SUSPICIOUS_SIGMA * error)
+    most = np.quantile((mean + error)[solid] if solid.any() else mean + error, 0.8)
+    return 1.2 * max(float(most), float(np.max((mean + error)[far], initial=0.0)))
+
+
+def _draw(ax: Axes, means: pd.DataFrame, axis: str, reach: float) -> None:
     mean = means[f"mean_{axis}_arcsec"].to_numpy(float)
     error = means[f"mean_{axis}_error_arcsec"].to_numpy(float)
     far = np.abs(mean) > SUSPICIOUS_SIGMA * error
@@ -112,13 +124,18 @@ def _draw(ax: Axes, means: pd.DataFrame, axis: str) -> None:
             elinewidth=0.8,
             zorder=3,
         )
-    extent = np.abs(mean) + error
-    solid = means["n"].to_numpy() >= 10
-    reach = np.quantile(extent[solid] if solid.any() else extent, 0.8)
-    reach = 1.2 * max(reach, np.max(extent[far & solid], initial=0.0))
-    if not ax.get_autoscalex_on():  # shared with the panel above
-        reach = max(reach, ax.get_xlim()[1])
     ax.set_xlim(-reach, reach)
+    for out, edge, arrow in ((mean > reach, 0.985, ">"), (mean < -reach, 0.015, "<")):
+        ax.plot(
+            np.full(out.sum(), edge),
+            y[out],
+            arrow,
+            ms=3.4,
+            mew=0,
+            color=style.BLUE,
+            transform=ax.get_yaxis_transform(),
+            zorder=4,
+        )
     style.tidy(ax)
     ax.spines["left"].set_visible(False)
     ax.tick_params(axis="y", length=0)
@@ -134,7 +151,8 @@ def _heads(fig: Figure, fit: Any, left_out: int, width: float, height: float) ->
         fontweight="bold",
     )
     note = (
-        f"filled diamonds: beyond {SUSPICIOUS_SIGMA:g} sigma, common errors of a night allowed for"
+        f"filled diamonds: beyond {SUSPICIOUS_SIGMA:g} sigma, common errors of a night allowed for; "
+        "arrowheads: off the scale"
     )
     if left_out > 0:
         note += f"; {left_out} stations with fewer observations not shown"

@@ -1,0 +1,89 @@
+"""A real arc: asteroid 12893, 1401 records from 1983 to 2019, 14 of them from a spacecraft.
+
+Source: the answer of the Minor Planet Center's observations database that the PyPI package
+astroquery carries in its tests (astroquery/mpc/tests/data/mpc_obs.dat). With uniform weights the
+arc shows an impossible normal thrust in a dead rock, at 15 sigma, because old star catalogues are
+off in declination: two independent programs written for this purpose agree on
+A3 = (2.63 +- 0.17)e-10 au/d2.
+"""
+
+import importlib.util
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+from ngbound.arc import ErrorModel, read_arc
+from ngbound.fit import compare_fits, fit_orbit
+from ngbound.motion import Thrust
+from ngbound.report import catalogue_table, station_table
+
+pytestmark = pytest.mark.slow
+
+UNIFORM = ErrorModel(scheme="uniform", uniform_arcsec=0.6, uniform_before_1996_arcsec=1.0)
+USNO_A_FAMILY = ("USNOA1", "USNOSA1", "USNOA2", "USNOSA2")
+
+
+@pytest.fixture(scope="module")
+def arc():
+    spec = importlib.util.find_spec("astroquery")
+    if spec is None or spec.origin is None:
+        pytest.skip("the PyPI package astroquery, which carries the records, is not installed")
+    return read_arc(Path(spec.origin).parent / "mpc" / "tests" / "data" / "mpc_obs.dat")
+
+
+@pytest.fixture(scope="module")
+def null(arc):
+    return fit_orbit(arc)
+
+
+@pytest.fixture(scope="module")
+def uniform(arc, null):
+    calm = fit_orbit(arc, error_model=UNIFORM, initial=null)
+    return calm, fit_orbit(arc, Thrust("inverse-square"), UNIFORM, initial=calm)
+
+
+def test_all_records_are_read(arc):
+    assert len(arc) == 1401
+    assert len(arc.used) == 1401
+    assert (arc.table["site"] == "space").sum() == 14
+    assert 35.0 < arc.span_d / 365.25 < 35.5
+
+
+def test_gravity_alone_from_nothing_over_all_35_years(null):
+    assert null.weighted_rms_arcsec < 0.6
+    assert null.n_rejected < 0.03 * 1401
+    seen = null.residuals
+    first, last = seen["utc"].min(), seen["utc"].max()
+    assert first < "1984" and last > "2018-12"
+    kept = seen[seen["keep"]]
+    assert kept["utc"].min() == first and kept["utc"].max() == last
+    # the elements of a main-belt asteroid: those in its published ephemerides, from memory
+    k = null.orbit.elements()
+    assert k.q_au == pytest.approx(2.64, abs=0.02)
+    assert np.degrees(k.i_rad) == pytest.approx(2.3, abs=0.05)
+
+
+def test_uniform_weights_show_the_known_false_normal_thrust(uniform):
+    calm, push = uniform
+    a3, sigma = push.A.value[2], push.A_sigma.value[2]
+    assert a3 == pytest.approx(2.6e-10, abs=0.2e-10)
+    assert a3 / sigma == pytest.approx(15.0, abs=2.0)
+    # nothing else is seen
+    assert (np.abs(push.A.value / push.A_sigma.value)[:2] < 3.0).all()
+    told = compare_fits(calm, push)
+    assert told.delta_chi2 == pytest.approx(240.0, abs=60.0)
+    assert told.delta_bic > 100.0
+
+
+def test_the_catalogue_table_gives_the_cause_away(uniform):
+    calm, _ = uniform
+    table = catalogue_table(calm).frame.set_index("catalogue")
+    old = [name for name in USNO_A_FAMILY if name in table.index]
+    assert old
+    dec = [c for c in table.columns if "dec" in c and "mean" in c and "error" not in c][0]
+    for name in old:
+        if table.loc[name, "n"] >= 20:
+            assert 0.1 < table.loc[name, dec] < 0.6
+    assert "*" in str(catalogue_table(calm))
+    assert "*" in str(station_table(calm))
