@@ -81,8 +81,8 @@ def run_case(path: str | Path, *, progress: bool = False, **choices: Any) -> Rec
         The analysis cannot be done on this arc.
     """
     with hear_warnings() as heard:
-        case = case_for(path, **choices)
-        step = Steps(progress)
+        case, step = case_for(path, **choices), Steps(progress)
+        check_the_output(case)
         arc = read_the_arc(case, step)
         fits = fit_both(case, arc, step)
         bounds = bound_the_thrust(fits, step)
@@ -158,6 +158,25 @@ def fan_case(
 
 
 # ---------------------------------------------------------------------------------- the steps
+
+
+def check_the_output(case: Case) -> None:
+    """See that the output folder can be made, before hours of work.
+
+    Raises
+    ------
+    CaseError
+        A file stands in its way, or its place cannot be written.
+    """
+    folder = case.output.folder
+    assert folder is not None
+    place = next(path for path in (folder, *folder.parents) if path.exists())
+    if not place.is_dir() or not os.access(place, os.W_OK):
+        why = "cannot be written" if place.is_dir() else "is a file"
+        raise CaseError(
+            f"The output folder {folder} cannot be made, because {place} {why}; choose another "
+            "with [output] folder or --output."
+        )
 
 
 def read_the_arc(case: Case, step: "Steps") -> Arc:
@@ -304,6 +323,11 @@ def write_results(
     record.write(case.output.folder, figures, texts, formats=(ending,))
 
 
+def budget_in_words(mass: MassBound) -> str:
+    """What leaves the nucleus, species by species."""
+    return "; ".join(str(emission) for emission in mass.outgassing.emissions)
+
+
 def summary_of(fits: "Fits") -> dict[str, Any]:
     """The arc in numbers: what was used, when, and from how far away."""
     arc, seen = fits.arc, fits.null.residuals
@@ -442,6 +466,7 @@ class Bounds:
             estimate_sigma_au_d2=float(judged.estimate_sigma.value),
             found_sigma=judged.significance_sigma,
             reasons=judged.reasons,
+            budget="" if mass is None else f"outgassing of {budget_in_words(mass)}",
             mass_kg=None if mass is None else float(mass.mass.value),
             diameter_m=None if mass is None else float(mass.diameter.value),
             mass_confidence=None if mass is None else mass.confidence,

@@ -3,8 +3,8 @@
 A recipe is a TOML file validated like a case file.  It names an orbit, a thrust, roving sites and
 spacecraft that nobody has, nights, weather and errors, and a seed; the same recipe gives the same
 arc.  A site observes only when the object stands high enough and the Sun low enough, a spacecraft
-only within its range of solar elongations.  Invented stations carry the code 247 (roving observer)
-or a code of their own that no observatory has, and every record brings its own position.
+only within its range of solar elongations.  Every record brings its own position, and invented
+places carry a code that belongs to no observatory: 247 (roving observer) on the ground.
 
 May import every room to its left and ngbound.case; never run or cli.
 """
@@ -243,7 +243,7 @@ class Campaign:
 
     def observe(self) -> Arc:
         """The arc that all sites and spacecraft report together, one block each."""
-        instruments = (*self.plan.site, *self.plan.spacecraft)
+        instruments: tuple[Site | Spacecraft, ...] = (*self.plan.site, *self.plan.spacecraft)
         reports = [(one, frame) for one in instruments if len(frame := self._report(one))]
         if not reports:
             raise CaseError(

@@ -79,7 +79,7 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
         kinds.append(element.tag)
         lines.append(element.sourceline or 0)
         blocks.append(block)
-        for child in _leaves(element):
+        for child in element:
             name = child.tag
             if name == "localUse":
                 skipped += 1
@@ -176,14 +176,6 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
         contexts=tuple(contexts),
         strict=version == "2022",
     )
-
-
-_GROUPS = ("location", "photometry", "precision", "residuals", "opticalRes", "radarRes")
-
-
-def _leaves(element: etree._Element) -> list[etree._Element]:
-    """Children of a record, entities refused."""
-    return [child for child in element if isinstance(child.tag, str)]
 
 
 def _context(element: etree._Element, source: str) -> Context:

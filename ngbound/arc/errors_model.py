@@ -212,15 +212,18 @@ class Noise:
         return self._factors
 
     @cached_property
-    def _blocks(self) -> list[tuple[IntArray, FloatArray]]:
+    def _batches(self) -> list[tuple[IntArray, FloatArray]]:
+        """Blocks of one size together: their rows (nb, 2m) and factors (nb, 2m, 2m)."""
         f = self._factors
-        blocks = []
-        for b in range(len(f.start) - 1):
-            members = f.order[f.start[b] : f.start[b + 1]]
-            rows = np.stack([2 * members, 2 * members + 1], axis=1).ravel()
-            side = len(rows)
-            blocks.append((rows, f.flat[f.flat_start[b] : f.flat_start[b + 1]].reshape(side, side)))
-        return blocks
+        size = np.diff(f.start)
+        batches = []
+        for m in np.unique(size):
+            blocks = np.flatnonzero(size == m)
+            members = f.order[f.start[blocks][:, None] + np.arange(m)]
+            rows = np.stack([2 * members, 2 * members + 1], axis=-1).reshape(len(blocks), 2 * m)
+            pieces = f.flat[f.flat_start[blocks][:, None] + np.arange(4 * m * m)]
+            batches.append((rows, pieces.reshape(len(blocks), 2 * m, 2 * m)))
+        return batches
 
     def whiten(self, m: ArrayLike) -> FloatArray:
         """L^-1 m for m of shape (2n,) or (2n, k), rows RA cos dec and Dec of each observation in
@@ -236,10 +239,11 @@ class Noise:
                 f"whiten needs 2 x {len(self)} rows (RA and Dec of each observation), not "
                 f"{values.shape}"
             )
-        out = np.empty_like(values)
-        for rows, inverse in self._blocks:
-            out[rows] = inverse @ values[rows]
-        return out
+        table = values.reshape(len(values), -1)
+        out = np.empty_like(table)
+        for rows, inverse in self._batches:
+            out[rows] = inverse @ table[rows]
+        return out.reshape(values.shape)
 
     def mask(self, keep: ArrayLike) -> "Noise":
         """The noise of a subset (bool (n,) or positions); sigmas stay as they are, nights are

@@ -8,6 +8,7 @@ record that cannot be used in a fit stays in the table with ``use`` False and th
 """
 
 import difflib
+import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
@@ -105,6 +106,8 @@ REASON_NO_ANGLES = "the record gives no position of the object"
 REASON_SYSTEM = "the position system {system} of the station cannot be used"
 REASON_CENTRE = "the station's position is not counted from the Earth"
 EARTH_CENTRE = 399
+UNWRITABLE = re.compile(r"[\x00-\x1f\x7f|\ud800-\udfff\ufffe\uffff]")
+"""What neither PSV nor XML can hold in a value."""
 
 Context = tuple[tuple[str, str, tuple[tuple[str, str], ...]], ...]
 """One obsContext: (element, its own text, ((child, text), ...)) in the order of the file."""
@@ -565,11 +568,15 @@ class _Checker:
             return texts
         rule = COLUMNS[column]
         codes, uniques = pd.factorize(texts)
-        bad_codes = [
-            i for i, u in enumerate(uniques) if u != "" and ("|" in u or not matches(rule, str(u)))
-        ]
-        if bad_codes and self.records.strict:
-            self.refuse(np.isin(codes, bad_codes), column, rule.words, "Correct the value.")
+        control = [i for i, u in enumerate(uniques) if UNWRITABLE.search(str(u))]
+        if control:
+            remedy = "Take the characters out."
+            rule_text = "control characters and '|' cannot stand in a value"
+            self.refuse(np.isin(codes, control), column, rule_text, remedy)
+        if self.records.strict:
+            bad = [i for i, u in enumerate(uniques) if u != "" and not matches(rule, str(u))]
+            if bad:
+                self.refuse(np.isin(codes, bad), column, rule.words, "Correct the value.")
         return texts
 
     def number_column(self, column: str) -> FloatArray | NDArray[Any]:

@@ -1,6 +1,7 @@
 """`read_arc`: an arc from a file whose format is told by its content; imports errors and this
 room."""
 
+import re
 from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
@@ -13,6 +14,7 @@ from ngbound.arc.report80 import HEADER_KEYS, looks_like_80, report80_records
 from ngbound.arc.whole_file import MAX_BYTES, PathLike, read_whole
 from ngbound.errors import ArcError
 
+CONTROL = re.compile(r"[\x00-\x08\x0b\x0c\x0e-\x1f\x7f\ufffe\uffff]")
 FORMATS = "ADES PSV, ADES XML, the 80-column format, or JSON with such records"
 
 
@@ -106,4 +108,14 @@ def _decode(content: bytes, source: str) -> str:
             file=source,
             line=line,
         ) from error
-    return text.replace("\r\n", "\n").replace("\r", "\n")
+    text = text.replace("\r\n", "\n").replace("\r", "\n").removesuffix("\x1a")
+    control = CONTROL.search(text)
+    if control:
+        line = text.count("\n", 0, control.start()) + 1
+        raise ArcError(
+            f"{source}, line {line}: the control character {control.group()!r} stands in the text; "
+            "take it out.",
+            file=source,
+            line=line,
+        )
+    return text

@@ -78,7 +78,7 @@ class _Line:
 def looks_like_80(line: str) -> bool:
     """Whether a line has the shape of an 80-column record: a date at column 16 and a station code
     at column 78."""
-    if len(line.rstrip()) not in (80, 160) and not (80 <= len(line) and len(line.rstrip()) >= 80):
+    if len(line.rstrip()) < WIDTH - 2:
         return False
     date = line[15:32]
     return (

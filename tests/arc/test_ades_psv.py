@@ -72,7 +72,8 @@ def test_several_blocks(tmp_path: Path) -> None:
         + "654321|CCD|G96|2024-03-03T05:06:07Z|10.5|20.5|Gaia2\n"
     )
     text += "# observatory\n! mpcCode 703\n# fundingSource Nobody at all\n"
-    text += "permID|mode|stn|obsTime|ra|dec|astCat\n654321|CCD|703|2024-03-04T05:06:07Z|10.5|20.5|Gaia2\n"
+    text += "permID|mode|stn|obsTime|ra|dec|astCat\n"
+    text += "654321|CCD|703|2024-03-04T05:06:07Z|10.5|20.5|Gaia2\n"
     arc = read(tmp_path, text)
     assert arc.table.block.tolist() == [0, 0, 0, -1, 1]
     assert arc.contexts[1][1] == ("fundingSource", "Nobody at all", ())
@@ -149,9 +150,12 @@ def test_occultation_in_distance_and_angle(tmp_path: Path) -> None:
 def test_other_kinds_are_kept(tmp_path: Path) -> None:
     text = HEAD + ROW + "\n"
     text += "permID|trx|rcv|obsTime|frq|delay|rmsDelay|doppler|rmsDoppler\n"
-    text += "123|251|251|2024-03-01T05:06:00Z|2380|12.5|2.0||\n123|251|251|2024-03-01T05:06:00Z|2380|||-15.5|0.2\n"
-    text += "permID|mode|stn|obsTime|obsCenter|deltaRA|deltaDec\n123|CCD|G96|2024-03-01T05:06:00Z|Jupiter|1.5|-3\n"
-    text += "permID|obsTime|orbProd|orbID|resRA|resDec|selAst|sigRA|sigDec\n123|2024-03-01T05:06:07Z|Me|1|1e-2|0.1|A|0.1|0.1\n"
+    text += "123|251|251|2024-03-01T05:06:00Z|2380|12.5|2.0||\n"
+    text += "123|251|251|2024-03-01T05:06:00Z|2380|||-15.5|0.2\n"
+    text += "permID|mode|stn|obsTime|obsCenter|deltaRA|deltaDec\n"
+    text += "123|CCD|G96|2024-03-01T05:06:00Z|Jupiter|1.5|-3\n"
+    text += "permID|obsTime|orbProd|orbID|resRA|resDec|selAst|sigRA|sigDec\n"
+    text += "123|2024-03-01T05:06:07Z|Me|1|1e-2|0.1|A|0.1|0.1\n"
     arc = read(tmp_path, text)
     assert arc.table.kind.tolist() == ["optical", "radar", "radar", "offset", "opticalResidual"]
     assert arc.table.use.tolist() == [True, False, False, False, False]

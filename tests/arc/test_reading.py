@@ -27,6 +27,7 @@ from tests.arc.test_ades_psv import same
         (b"# version=2022\n\xff\xe9\n", "line 2: byte 0xff is not UTF-8"),
         (b"hello world\n", "format is not recognised .the first line is 'hello world'"),
         (b"permID|mode\n1|CCD\n", "version=2022"),
+        (b"# version=2022\n# comment\n! line a\x0eb\n", r"line 3: the control character '\\x0e'"),
         (b"{}", "no list of observations"),
         (b"[1, 2]", "no list of observations"),
         (b'[{"a": 1}, {"b": 2}]', "neither an 80-column string nor ADES"),
@@ -107,6 +108,20 @@ def test_json_with_ades_fields(tmp_path: Path) -> None:
     listed[1]["dec"] = "95"
     with pytest.raises(ArcError, match="record 2, column dec: the value '95'"):
         read_arc(put(tmp_path, "a.json", json.dumps(listed)))
+
+
+@pytest.mark.parametrize("value", ["a|b", "a\nb", "a\ud800"])
+def test_json_values_that_cannot_be_written(tmp_path: Path, value: str) -> None:
+    row = {
+        "trkSub": "a1",
+        "stn": "G96",
+        "mode": "CCD",
+        "obsTime": "2024-03-01T00:00:00Z",
+        "ra": "1",
+    }
+    row |= {"dec": "2", "astCat": "UNK", "remarks": value}
+    with pytest.raises(ArcError, match="record 1, column remarks.*control characters"):
+        read_arc(put(tmp_path, "a.json", json.dumps([row])))
 
 
 def test_json_with_a_gap(tmp_path: Path) -> None:
@@ -194,7 +209,7 @@ def test_bad_xml(tmp_path: Path, old: str, new: str, words: str) -> None:
 
 def test_entity_bomb_is_refused(tmp_path: Path) -> None:
     levels = "".join(f'<!ENTITY e{i} "{f"&e{i - 1};" * 10}">' for i in range(1, 12))
-    bomb = f'<?xml version="1.0"?><!DOCTYPE ades [<!ENTITY e0 "x">{levels}]><ades version="2022">&e11;</ades>'
+    bomb = f'<!DOCTYPE ades [<!ENTITY e0 "x">{levels}]><ades version="2022">&e11;</ades>'
     with pytest.raises(ArcError):
         read_arc(put(tmp_path, "a.xml", bomb))
 

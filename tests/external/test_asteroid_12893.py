@@ -79,11 +79,13 @@ def test_uniform_weights_show_the_known_false_normal_thrust(uniform):
 def test_the_catalogue_table_gives_the_cause_away(uniform):
     calm, _ = uniform
     table = catalogue_table(calm).frame.set_index("catalogue")
-    old = [name for name in USNO_A_FAMILY if name in table.index]
-    assert old
-    dec = [c for c in table.columns if "dec" in c and "mean" in c and "error" not in c][0]
-    for name in old:
-        if table.loc[name, "n"] >= 20:
-            assert 0.1 < table.loc[name, dec] < 0.6
+    north = table["mean_dec_arcsec"]
+    family = [name for name in USNO_A_FAMILY if name in table.index and table.loc[name, "n"] >= 20]
+    assert "USNOA2" in family and "USNOSA2" in family
+    assert (north[family] > 0.05).all()
+    assert (north[["USNOA2", "USNOSA2"]] > 0.2).all() and (north[family] < 0.6).all()
+    assert table.loc["USNOA2", "flag_dec"] == "*"
+    # modern catalogues are near zero
+    assert (north[["UCAC2", "UCAC4", "Gaia1", "2MASS"]].abs() < 0.12).all()
     assert "*" in str(catalogue_table(calm))
     assert "*" in str(station_table(calm))

@@ -151,8 +151,8 @@ def _heads(fig: Figure, fit: Any, left_out: int, width: float, height: float) ->
         fontweight="bold",
     )
     note = (
-        f"filled diamonds: beyond {SUSPICIOUS_SIGMA:g} sigma, common errors of a night allowed for; "
-        "arrowheads: off the scale"
+        f"filled diamonds: beyond {SUSPICIOUS_SIGMA:g} sigma, common errors of a night allowed "
+        "for; arrowheads: off the scale"
     )
     if left_out > 0:
         note += f"; {left_out} stations with fewer observations not shown"

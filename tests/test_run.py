@@ -1,0 +1,215 @@
+"""The whole job on the demo, quiet and pushed, and what it leaves on the disk."""
+
+import hashlib
+import json
+import tomllib
+from pathlib import Path
+
+import numpy as np
+import pytest
+from scipy.stats import chi2
+
+import ngbound as ng
+from ngbound import run
+from ngbound.errors import CaseError, NgboundError
+from ngbound.report import load_record
+
+DEMO = Path(__file__).parent.parent / "data_demo"
+WITHIN = 0.9973
+"""Probability content of 3 sigma, for one or for three components together."""
+
+
+def sha256_of(path: Path) -> str:
+    return hashlib.sha256(path.read_bytes()).hexdigest()
+
+
+def truth_of(history: str) -> np.ndarray:
+    recipe = tomllib.loads((DEMO / f"{history}_recipe.toml").read_text(encoding="utf-8"))
+    return np.array(recipe["thrust"]["A_au_d2"])
+
+
+@pytest.fixture(scope="module")
+def results(tmp_path_factory):
+    """Both histories, run once: (record, folder) by name."""
+    found = {}
+    for history in ("quiet", "pushed"):
+        folder = tmp_path_factory.mktemp("out") / history
+        found[history] = (run.run_case(DEMO / f"{history}.toml", output=folder), folder)
+    return found
+
+
+@pytest.fixture
+def quick(tmp_path):
+    """A case on the quiet arc with a known orbit and a short chain."""
+    recipe = tomllib.loads((DEMO / "quiet_recipe.toml").read_text(encoding="utf-8"))
+    orbit = "\n".join(f"{key} = {value!r}" for key, value in recipe["orbit"].items())
+    path = tmp_path / "quick.toml"
+    path.write_text(
+        f'[arc]\nfile = "{DEMO / "quiet.psv"}"\n[orbit]\n{orbit}\n'
+        "[thrust]\ncomponents = \"R\"\n"
+        "[sampling]\nmax_steps = 60\neffective_samples = 200\n",
+        encoding="utf-8",
+    )
+    return path
+
+
+@pytest.mark.slow
+def test_the_quiet_arc_is_a_non_detection_with_limits_above_the_truth(results):
+    record, _ = results["quiet"]
+    assert record["verdict"]["kind"] == "non-detection"
+    assert record["comparison"]["p_value"] > record["threshold"]["false_alarm"]
+    assert 0.0 < record["limit"]["magnitude_au_d2"] < record["threshold"]["worst_au_d2"]
+    assert "is explained by gravity alone" in record["sentence"]
+    assert record["mass"]["mass_kg"] > 0.0
+
+
+@pytest.mark.slow
+def test_the_pushed_arc_is_a_detection_of_the_thrust_that_was_put_in(results):
+    record, _ = results["pushed"]
+    truth, push = truth_of("pushed"), record["fits"]["push"]
+    assert record["verdict"]["kind"] == "detection"
+    estimate = np.array(push["A_au_d2"])
+    assert np.all(np.abs(estimate - truth) < 3.0 * np.array(push["A_sigma_au_d2"]))
+    covariance = np.array(push["theta_cov"])[6:, 6:]
+    distance = (estimate - truth) @ np.linalg.solve(covariance, estimate - truth)
+    assert distance < chi2.ppf(WITHIN, 3)
+    assert np.linalg.norm(truth) < record["limit"]["magnitude_au_d2"]
+    assert "is not explained by gravity alone" in record["sentence"]
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("history", ["quiet", "pushed"])
+def test_the_fits_describe_the_residuals(results, history):
+    push = results[history][0]["fits"]["push"]
+    assert 0.85 < push["chi2"] / push["dof"] < 1.15
+    assert push["n_rejected"] < 0.04 * push["n_obs"]
+    assert results[history][0]["suspicions"] == []
+
+
+@pytest.mark.slow
+def test_the_record_tells_inputs_versions_seeds_and_every_choice(results):
+    record, folder = results["quiet"]
+    assert load_record(folder)["sentence"] == record["sentence"]
+    inputs = record["provenance"]["inputs"]
+    assert inputs["arc"]["sha256"] == sha256_of(DEMO / "quiet.psv")
+    assert inputs["case"]["sha256"] == sha256_of(DEMO / "quiet.toml")
+    assert {"ngbound", "numpy", "numba", "astropy"} <= set(record["provenance"]["packages"])
+    assert record["seeds"]["sampling"] == 1
+    assert record["choices"]["detection"]["power"] == 0.95
+    assert set(record["timings_s"]) >= {"read the arc", "sample the posterior"}
+
+
+@pytest.mark.slow
+def test_the_folder_holds_report_figures_and_record_and_nothing_else(results):
+    _, folder = results["quiet"]
+    written = {path.name for path in folder.iterdir()}
+    assert written == {
+        "record.json",
+        "report.txt",
+        "residuals.csv",
+        "residual_fan.png",
+        "residuals_by_station.png",
+        "posterior.png",
+        "direction_map.png",
+        "mass.png",
+    }
+    assert [path.name for path in folder.parent.iterdir()] == ["quiet"]
+    report = (folder / "report.txt").read_text(encoding="utf-8")
+    for heading in ("Verdict", "Detection thresholds", "Upper limits", "Residuals by station"):
+        assert heading in report
+    json.loads((folder / "record.json").read_text(encoding="utf-8"))
+
+
+@pytest.mark.slow
+def test_the_same_seed_gives_the_same_numbers_and_another_does_not(quick):
+    first, again, other = (run.limit_case(quick, seed=seed) for seed in (5, 5, 6))
+    assert first.limit.to_dict() == again.limit.to_dict()
+    assert first.limit.magnitude != other.limit.magnitude
+    assert first.threshold.to_dict() == other.threshold.to_dict()
+
+
+@pytest.mark.parametrize("moment", ["fit_orbit", "sample_posterior", "residual_fan"])
+def test_an_interrupted_run_leaves_nothing(quick, tmp_path, monkeypatch, moment):
+    def interrupt(*arguments, **options):
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(run, moment, interrupt)
+    with pytest.raises(KeyboardInterrupt):
+        run.run_case(quick, output=tmp_path / "results")
+    assert list(tmp_path.iterdir()) == [quick]
+
+
+def test_a_file_in_the_way_of_the_output_is_told_before_any_work(quick, tmp_path, monkeypatch):
+    monkeypatch.setattr(run, "read_arc", None)
+    taken = tmp_path / "taken"
+    taken.write_text("mine")
+    for folder in (taken, taken / "below"):
+        with pytest.raises(CaseError, match="is a file"):
+            run.run_case(quick, output=folder)
+    assert taken.read_text() == "mine"
+
+
+def test_a_bare_arc_is_a_case_with_defaults(tmp_path):
+    case = run.case_for(DEMO / "quiet.psv", seed=7, components="RT")
+    assert case.arc.file == DEMO / "quiet.psv"
+    assert (case.sampling.seed, case.thrust.components) == (7, "RT")
+
+
+@pytest.mark.parametrize(
+    ("choice", "words"),
+    [
+        ({"law": "water-ise"}, "did you mean 'water-ice'?"),
+        ({"components": "RX"}, "R, T and N"),
+        ({"seed": -1}, "seed = -1"),
+    ],
+)
+def test_a_wrong_choice_beside_the_case_is_told(choice, words):
+    with pytest.raises(CaseError) as caught:
+        run.case_for(DEMO / "quiet.toml", **choice)
+    assert words in str(caught.value)
+
+
+def test_inspect_tells_what_is_in_the_arc():
+    seen = run.inspect_case(DEMO / "quiet.psv")
+    told = seen.to_dict()
+    assert told["n_records"] == len(ng.read_arc(DEMO / "quiet.psv"))
+    assert told["longest_gap_d"] > 0.0
+    assert "Arc of Ember" in str(seen)
+    json.dumps(told)
+
+
+def test_fit_reads_the_starting_orbit_of_the_case(quick):
+    fits = run.fit_case(quick)
+    assert fits.push.components == "R"
+    assert "Gravity alone" in str(fits)
+    assert fits.to_dict()["comparison"]["delta_dof"] == 1
+
+
+def test_fan_writes_the_figure_whole(quick, tmp_path):
+    drawn = run.fan_case(quick, output=tmp_path / "fan.png")
+    assert (tmp_path / "fan.png").read_bytes().startswith(b"\x89PNG")
+    assert sorted(path.name for path in tmp_path.iterdir()) == ["fan.png", "quick.toml"]
+    assert "fan.png" in str(drawn)
+
+
+def test_fan_refuses_an_unknown_ending(tmp_path):
+    with pytest.raises(CaseError, match="must end in"):
+        run.fan_case(DEMO / "quiet.toml", output=tmp_path / "fan.gif")
+
+
+def test_a_mass_needs_a_budget(quick):
+    with pytest.raises(CaseError, match="outgassing"):
+        run.mass_case(quick)
+
+
+def test_progress_is_told_on_stderr_only_when_asked(capsys):
+    run.inspect_case(DEMO / "quiet.psv", progress=True)
+    assert "read the arc" in capsys.readouterr().err
+    run.inspect_case(DEMO / "quiet.psv")
+    assert capsys.readouterr().err == ""
+
+
+def test_every_expected_failure_is_of_our_own_tree(tmp_path):
+    with pytest.raises(NgboundError):
+        run.run_case(tmp_path / "absent.psv", output=tmp_path / "out")
+    assert list(tmp_path.iterdir()) == []
