@@ -143,12 +143,17 @@ def fan_case(
     Raises
     ------
     CaseError
-        The ending of the file is no format of a figure.
+        The ending of the file is no format of a figure, or its folder does not exist.
     """
     target = Path(output)
     if target.suffix not in FIGURE_ENDINGS:
         raise CaseError(
             f"The figure {target} must end in {', '.join(FIGURE_ENDINGS)}, which tells its format."
+        )
+    if not target.parent.is_dir():
+        raise CaseError(
+            f"The figure {target} cannot be written, because there is no folder {target.parent}; "
+            "choose a folder that exists."
         )
     case, step = case_for(path, **choices), Steps(progress)
     fits = fit_both(case, read_the_arc(case, step), step)
@@ -324,8 +329,13 @@ def write_results(
 
 
 def budget_in_words(mass: MassBound) -> str:
-    """What leaves the nucleus, species by species."""
-    return "; ".join(str(emission) for emission in mass.outgassing.emissions)
+    """Median mass loss, speed and collimation of each species."""
+    return "a mass loss of " + " and ".join(
+        f"{emission.rate.median * emission.kg_per_count:.2g} kg/s of {emission.species} at "
+        f"{emission.at_au:g} au (speed {emission.median_speed_m_s:.0f} m/s, collimation "
+        f"{emission.collimation.median:.2g})"
+        for emission in mass.outgassing.emissions
+    )
 
 
 def summary_of(fits: "Fits") -> dict[str, Any]:
@@ -466,7 +476,7 @@ class Bounds:
             estimate_sigma_au_d2=float(judged.estimate_sigma.value),
             found_sigma=judged.significance_sigma,
             reasons=judged.reasons,
-            budget="" if mass is None else f"outgassing of {budget_in_words(mass)}",
+            budget="" if mass is None else budget_in_words(mass),
             mass_kg=None if mass is None else float(mass.mass.value),
             diameter_m=None if mass is None else float(mass.diameter.value),
             mass_confidence=None if mass is None else mass.confidence,

@@ -134,7 +134,9 @@ def test_warnings_of_ngbound_are_sentences(ngbound, monkeypatch):
     assert result.stdout == "all is well\n"
 
 
-@pytest.mark.parametrize("arguments", [["run"], ["run", "a", "b"], ["runn"], ["run", "--what", "a"]])
+@pytest.mark.parametrize(
+    "arguments", [["run"], ["run", "a", "b"], ["runn"], ["run", "--what", "a"]]
+)
 def test_wrong_usage_is_status_2(ngbound, arguments):
     result = ngbound(*arguments)
     assert result.exit_code == 2

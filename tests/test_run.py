@@ -197,6 +197,12 @@ def test_fan_refuses_an_unknown_ending(tmp_path):
         run.fan_case(DEMO / "quiet.toml", output=tmp_path / "fan.gif")
 
 
+def test_fan_refuses_a_folder_that_is_not_there(tmp_path):
+    with pytest.raises(CaseError, match="no folder"):
+        run.fan_case(DEMO / "quiet.toml", output=tmp_path / "absent" / "fan.png")
+    assert list(tmp_path.iterdir()) == []
+
+
 def test_a_mass_needs_a_budget(quick):
     with pytest.raises(CaseError, match="outgassing"):
         run.mass_case(quick)

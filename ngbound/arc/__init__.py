@@ -12,6 +12,7 @@ from ngbound.arc.ades_xml import write_xml
 from ngbound.arc.errors_model import ErrorModel, Factors, Noise, station_nights, weight_table
 from ngbound.arc.observations import Arc
 from ngbound.arc.reading import read_arc
+from ngbound.arc.shared_errors import Modes, SharedErrors
 from ngbound.arc.stations import (
     EARTH_EQUATORIAL_RADIUS_KM,
     Station,
@@ -30,7 +31,9 @@ __all__ = [
     "ErrorModel",
     "Factors",
     "Finding",
+    "Modes",
     "Noise",
+    "SharedErrors",
     "Station",
     "all_stations",
     "geodetic_to_itrf_km",

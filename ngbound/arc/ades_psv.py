@@ -5,48 +5,55 @@ mark: it opens a header. There is no quoting. A second keyword row ends the bloc
 records then stand without a header.
 """
 
-import csv
 import difflib
-import io
 import warnings
 from dataclasses import dataclass, field
 
 import numpy as np
-import pandas as pd
 from numpy.typing import NDArray
 
 from ngbound.arc.ades_rules import (
     COLUMNS,
     CONTEXT_ELEMENTS,
-    PREC_ANGLE,
-    PREC_TIME,
+    OPTICAL_RESIDUAL,
+    RADAR_RESIDUAL,
     VERSIONS,
+    context_problem,
     kind_of_columns,
 )
-from ngbound.arc.fields import format_times, plain_number
-from ngbound.arc.observations import Arc, Context, ObjectArray, Records, concatenate
+from ngbound.arc.ades_text import checked_contexts, grouped_cells
+from ngbound.arc.fields import Packed
+from ngbound.arc.observations import Arc
+from ngbound.arc.psv_cells import Cells, Lines, trimmed_of_odd_blanks
+from ngbound.arc.records import Coded, Context, ObjectArray, Records, concatenate, merge_contexts
 from ngbound.arc.whole_file import PathLike, write_whole
 from ngbound.errors import ArcError, NgboundWarning
 
 
 @dataclass
 class _Block:
-    """Data rows under one keyword row."""
+    """Data rows under one keyword row, as spans of line numbers counted from 0."""
 
     names: list[str]
     names_line: int
     context: int
-    rows: list[str] = field(default_factory=list)
     spans: list[tuple[int, int]] = field(default_factory=list)
 
-    def add(self, rows: list[str], first_line: int) -> None:
-        """Put consecutive lines of the file under the keyword row."""
-        self.rows.extend(rows)
-        self.spans.append((first_line, first_line + len(rows)))
-
-    def lines(self) -> NDArray[np.int64]:
-        """Line number of each row."""
+    def rows(self) -> NDArray[np.int64]:
+        """Every row."""
         return np.concatenate([np.arange(a, b, dtype=np.int64) for a, b in self.spans])
+
+
+@dataclass
+class _Header:
+    """A header while it is read: its elements, and the line of each."""
+
+    elements: list[tuple[str, str, list[tuple[str, str]]]] = field(default_factory=list)
+    lines: list[int] = field(default_factory=list)
+
+    def frozen(self) -> Context:
+        """The header as it stands in an arc."""
+        return tuple((name, text, tuple(children)) for name, text, children in self.elements)
 
 
 def psv_records(text: str, source: str) -> Records:
@@ -64,30 +71,79 @@ def psv_records(text: str, source: str) -> Records:
     ArcError
         For anything that breaks the form; the message names line and column.
     """
-    version, contexts, blocks = _split(text, source)
-    blocks = [b for b in blocks if b.rows]
-    if not blocks:
+    lines = Lines(trimmed_of_odd_blanks(text))
+    version, headers, blocks = _split(lines, source)
+    strict = version == "2022"
+    filled = [b for b in blocks if b.spans]
+    if not filled:
         raise ArcError(
             f"{source}: there is no observation in it; an arc needs at least one.", file=source
         )
-    parts, sizes, kinds, lines, numbers = [], [], [], [], []
+    _refuse_the_empty(headers, blocks, source)
+    if strict:
+        for header in headers:
+            _check_header(header, source)
+    contexts, place = merge_contexts([header.frozen() for header in headers])
+    parts, rows, kinds, numbers = [], [], [], []
+    coded: dict[str, Coded] = {}
+    packed: dict[str, Packed] = {}
     for block in blocks:
-        kinds.append(np.full(len(block.rows), _kind(block, source), dtype=object))
-        parts.append(_cells(block, source))
-        sizes.append(len(block.rows))
-        lines.append(block.lines())
-        numbers.append(np.full(len(block.rows), block.context, dtype=np.int64))
+        rows.append(block.rows())
+        n = len(rows[-1])
+        kinds.append(np.full(n, _kind(block, source), dtype=object))
+        texts, coded, packed = _cells(block, lines, rows[-1], source)
+        parts.append(texts)
+        number = int(place[block.context]) if block.context >= 0 else -1
+        numbers.append(np.full(n, number, dtype=np.int64))
     kind = np.concatenate(kinds)
+    alone = len(blocks) == 1
     return Records(
         source=source,
-        text=concatenate(parts, sizes),
+        text=parts[0] if alone else concatenate(parts, [len(r) for r in rows]),
         kind=kind,
-        line=np.concatenate(lines),
+        line=np.concatenate(rows) + 1,
         block=np.concatenate(numbers),
         set_aside=np.full(len(kind), "", dtype=object),
         contexts=contexts,
-        strict=version == "2022",
+        strict=strict,
+        coded=coded if alone else {},
+        packed=packed if alone else {},
     )
+
+
+def _refuse_the_empty(headers: list[_Header], blocks: list[_Block], source: str) -> None:
+    """A keyword row without records, and a header without a keyword row."""
+    for block in blocks:
+        if not block.spans:
+            raise ArcError(
+                f"{source}, line {block.names_line}: no record follows the keyword row. Remove it, "
+                "or add the records.",
+                file=source,
+                line=block.names_line,
+            )
+    used = {block.context for block in blocks}
+    for i, header in enumerate(headers):
+        if i not in used:
+            raise ArcError(
+                f"{source}, line {header.lines[0]}: no record follows the header. Remove it, or "
+                "add a keyword row and records.",
+                file=source,
+                line=header.lines[0],
+            )
+
+
+def _check_header(header: _Header, source: str) -> None:
+    """The rules of version 2022 for a header."""
+    problem = context_problem(header.frozen())
+    if problem is not None:
+        at, name, value, sentence = problem
+        raise ArcError(
+            f"{source}, line {header.lines[at]}, header element {name}: {sentence}.",
+            file=source,
+            line=header.lines[at],
+            column=name,
+            value=value,
+        )
 
 
 def _is_keyword_row(line: str) -> bool:
@@ -102,20 +158,19 @@ def _begins_a_name(token: str) -> bool:
     return not token or token[0] == "_" or (token[0].isascii() and token[0].isalpha())
 
 
-def _split(text: str, source: str) -> tuple[str, tuple[Context, ...], list[_Block]]:
+def _split(lines: Lines, source: str) -> tuple[str, list[_Header], list[_Block]]:
     version = ""
-    contexts: list[list[tuple[str, str, list[tuple[str, str]]]]] = []
+    headers: list[_Header] = []
     blocks: list[_Block] = []
     block: _Block | None = None
     in_header = False
-    raw_lines = text.split("\n")
-    special = [i for i, raw in enumerate(raw_lines) if not raw[:1].isdigit()]
-    ends = [*special[1:], len(raw_lines)] if special else []
-    if not special or special[0] > 0:
-        version = _version(raw_lines[0].strip(), source, 1)
-    for index, end in zip(special, ends, strict=True):
-        number, line = index + 1, raw_lines[index].strip()
-        rows = raw_lines[index + 1 : end]
+    special = np.flatnonzero(~lines.plainly_data())
+    ends = [*special[1:].tolist(), len(lines)] if len(special) else []
+    if not len(special) or special[0] > 0:
+        version = _version(lines.text(0), source, 1)
+    for index, end in zip(special.tolist(), ends, strict=True):
+        number, line = index + 1, lines.text(index)
+        span = (index + 1, end)
         first = line[:1]
         if not line:
             pass
@@ -123,7 +178,7 @@ def _split(text: str, source: str) -> tuple[str, tuple[Context, ...], list[_Bloc
             version = _version(line, source, number)
         elif first == "#":
             if not in_header:
-                contexts.append([])
+                headers.append(_Header())
                 in_header, block = True, None
             name, _, rest = line[1:].strip().partition(" ")
             _check_element(name, None, source, number)
@@ -136,7 +191,8 @@ def _split(text: str, source: str) -> tuple[str, tuple[Context, ...], list[_Bloc
                     file=source,
                     line=number,
                 )
-            contexts[-1].append((name, rest.strip(), []))
+            headers[-1].elements.append((name, rest.strip(), []))
+            headers[-1].lines.append(number)
         elif first == "!":
             if not in_header:
                 raise ArcError(
@@ -147,13 +203,13 @@ def _split(text: str, source: str) -> tuple[str, tuple[Context, ...], list[_Bloc
                     line=number,
                 )
             name, _, rest = line[1:].strip().partition(" ")
-            parent = contexts[-1][-1]
+            parent = headers[-1].elements[-1]
             _check_element(parent[0], name, source, number)
             parent[2].append((name, rest.strip()))
         elif (first.isalpha() or first in "_|") and _is_keyword_row(line):
             names = [token.strip() for token in line.split("|")]
             _check_names(names, source, number)
-            if block is not None and not block.rows:
+            if block is not None and not block.spans:
                 raise ArcError(
                     f"{source}, line {number}: this is a second keyword row with no record after "
                     "the first one "
@@ -161,24 +217,25 @@ def _split(text: str, source: str) -> tuple[str, tuple[Context, ...], list[_Bloc
                     file=source,
                     line=number,
                 )
-            block = _Block(names, number, len(contexts) - 1 if in_header else -1)
+            block = _Block(names, number, len(headers) - 1 if in_header else -1)
             blocks.append(block)
             in_header = False
         else:
-            rows, number = [line, *rows], number - 1
-        if rows and block is None:
+            span = (index, end)
+        if span[0] < span[1] and block is None:
             if not version:
-                version = _version(rows[0].strip(), source, number + 1)
+                version = _version(lines.text(span[0]), source, span[0] + 1)
             raise ArcError(
-                f"{source}, line {number + 1}: a record stands before any keyword row. "
+                f"{source}, line {span[0] + 1}: a record stands before any keyword row. "
                 "Put the row of column names (permID|mode|stn|...) above it.",
                 file=source,
-                line=number + 1,
+                line=span[0] + 1,
             )
-        if rows and block is not None:
-            block.add(rows, number + 1)
-    frozen = tuple(tuple((n, t, tuple(c)) for n, t, c in context) for context in contexts)
-    return version, frozen, blocks
+        if span[0] < span[1] and block is not None:
+            if block.spans and block.spans[-1][1] == span[0]:
+                span = (block.spans.pop()[0], span[1])
+            block.spans.append(span)
+    return version, headers, blocks
 
 
 def _version(line: str, source: str, number: int) -> str:
@@ -277,68 +334,50 @@ def _kind(block: _Block, source: str) -> str:
             line=block.names_line,
             column=alien[0],
         )
+    if block.context >= 0 and kind in (OPTICAL_RESIDUAL, RADAR_RESIDUAL):
+        raise ArcError(
+            f"{source}, line {block.names_line}: records of the kind {kind} cannot stand under a "
+            "header. Put them before the first header, or under a second keyword row.",
+            file=source,
+            line=block.names_line,
+        )
     return kind
 
 
-def _cells(block: _Block, source: str) -> dict[str, ObjectArray]:
+def _cells(
+    block: _Block, lines: Lines, rows: NDArray[np.int64], source: str
+) -> tuple[dict[str, ObjectArray], dict[str, Coded], dict[str, Packed]]:
     width = len(block.names)
-    counts = (
-        np.fromiter((row.count("|") for row in block.rows), dtype=np.int64, count=len(block.rows))
-        + 1
-    )
+    cells = Cells(lines, rows)
+    counts = cells.counts
     if (counts > width).any():
         row = int(np.argmax(counts > width))
         raise ArcError(
-            f"{source}, line {block.lines()[row]}: the record has {counts[row]} cells, the keyword "
+            f"{source}, line {rows[row] + 1}: the record has {counts[row]} cells, the keyword "
             f"row (line {block.names_line}) "
             f"{width} names. Remove the surplus '|', or name the column.",
             file=source,
-            line=block.lines()[row],
+            line=int(rows[row]) + 1,
         )
     if (counts < width).any():
         row = int(np.argmax(counts < width))
         warnings.warn(
-            f"{source}, line {block.lines()[row]}: the record has {counts[row]} cells, the keyword "
+            f"{source}, line {rows[row] + 1}: the record has {counts[row]} cells, the keyword "
             f"row {width} names; "
             f"the missing ones are taken as empty ({int((counts < width).sum())} such records).",
             NgboundWarning,
             stacklevel=2,
         )
-    text = "\n".join(block.rows)
-    simple = text.isascii() and not any(c in text for c in "\t\v\f\r\x1c\x1d\x1e\x1f")
-    if simple:
-        text = _without_padding(text)
-    frame = pd.read_csv(
-        io.StringIO(text),
-        sep="|",
-        header=None,
-        names=range(width),
-        dtype=object,
-        quoting=csv.QUOTE_NONE,
-        na_filter=False,
-        skip_blank_lines=False,
-        engine="c",
-        encoding="utf-8",
-        index_col=False,
-    )
-    out: dict[str, ObjectArray] = {}
+    texts: dict[str, ObjectArray] = {}
+    coded: dict[str, Coded] = {}
+    packed: dict[str, Packed] = {}
     for i, name in enumerate(block.names):
-        column = frame[i].to_numpy(dtype=object)
-        if not simple or (counts < width).any():
-            cleaned = [c.strip() if isinstance(c, str) else "" for c in column]
-            column = np.array(cleaned, dtype=object)
-        out[name] = column
-    return out
-
-
-def _without_padding(text: str) -> str:
-    """The text without the blanks beside pipes and line ends."""
-    for padded, bare in ((" |", "|"), ("| ", "|"), (" \n", "\n"), ("\n ", "\n")):
-        for width in (16, 4, 1):
-            longer = padded.replace(" ", " " * width)
-            while longer in text:
-                text = text.replace(longer, bare)
-    return text.strip(" ")
+        texts[name], codes, raw = cells.column(i, name)
+        if codes is not None:
+            coded[name] = codes
+        if raw is not None:
+            packed[name] = raw
+    return texts, coded, packed
 
 
 # --------------------------------------------------------------------------- writing
@@ -353,23 +392,20 @@ def write_psv(arc: Arc, path: PathLike, *, version: str = "2022") -> None:
     that were reported in sexagesimal form are written in degrees, with their resolution in
     precTime, precRA and precDec.
     """
-    if version not in VERSIONS:
-        raise ArcError(
-            f"The ADES version {version!r} is not known; it must be {' or '.join(VERSIONS)}.",
-            value=version,
-        )
     write_whole(path, psv_text(arc, version))
 
 
 def psv_text(arc: Arc, version: str = "2022") -> str:
     """The PSV text of an arc."""
+    checked_contexts(arc, version)
     pieces = [f"# version={version}"]
-    for block, _, _, columns in grouped_cells(arc):
-        if block >= 0:
-            pieces.extend(_header_lines(arc.contexts[block]))
-        names = [c for c in COLUMNS if c in columns]
+    for run in grouped_cells(arc, version):
+        if run.block >= 0:
+            pieces.extend(_header_lines(arc.contexts[run.block]))
+        names = list(run.columns)
         pieces.append("|".join(names))
-        pieces.extend("|".join(cells) for cells in zip(*(columns[c] for c in names), strict=True))
+        rows = zip(*(run.columns[c] for c in names), strict=True)
+        pieces.extend("|".join(cells) for cells in rows)
     return "\n".join(pieces) + "\n"
 
 
@@ -379,135 +415,3 @@ def _header_lines(context: Context) -> list[str]:
         lines.append(f"# {name} {text}".rstrip())
         lines.extend(f"! {child} {value}".rstrip() for child, value in children)
     return lines
-
-
-def grouped_cells(arc: Arc) -> list[tuple[int, str, np.ndarray, dict[str, ObjectArray]]]:
-    """Runs of records of one block and kind: (block, kind, row positions, filled ADES columns as
-    texts)."""
-    table = arc.table
-    if len(table) == 0:
-        raise ArcError("There is no observation to write; an arc needs at least one.")
-    block, kind = table["block"].to_numpy(), table["kind"].to_numpy(dtype=object)
-    change = np.flatnonzero((block[1:] != block[:-1]) | (kind[1:] != kind[:-1])) + 1
-    cells = _ades_cells(arc)
-    runs = []
-    for rows in np.split(np.arange(len(table)), change):
-        mine = {c: v[rows] for c, v in cells.items() if kind[rows[0]] in COLUMNS[c].kinds}
-        runs.append(
-            (
-                int(block[rows[0]]),
-                str(kind[rows[0]]),
-                rows,
-                {c: v for c, v in mine.items() if (v != "").any()},
-            )
-        )
-    return runs
-
-
-def _ades_cells(arc: Arc) -> dict[str, ObjectArray]:
-    """All ADES columns of an arc as texts that the standard allows."""
-    table, n = arc.table, len(arc.table)
-    cells: dict[str, ObjectArray] = {}
-    for name, rule in COLUMNS.items():
-        if name not in table:
-            continue
-        column = table[name]
-        if rule.form in ("text", "time"):
-            cells[name] = np.array(
-                [v if isinstance(v, str) else "" for v in column.to_numpy(dtype=object)],
-                dtype=object,
-            )
-        else:
-            values = column.to_numpy(dtype=float)
-            cells[name] = np.array(
-                ["" if v != v else _number(v, rule.places) for v in values], dtype=object
-            )
-    optical = (table["kind"] == "optical").to_numpy(dtype=bool)
-    occultation = (table["kind"] == "occultation").to_numpy(dtype=bool)
-    steps_dec = table["digits_dec_arcsec"].to_numpy(dtype=float)
-    ra_text, dec_text = (
-        table["raText"].to_numpy(dtype=object),
-        table["decText"].to_numpy(dtype=object),
-    )
-    for name, texts in (
-        ("ra", ra_text),
-        ("dec", dec_text),
-        ("raStar", ra_text),
-        ("decStar", dec_text),
-    ):
-        if name in cells:
-            mine = occultation if name.endswith("Star") else optical
-            cells[name] = np.array(
-                [
-                    _angle(t, v) if m else ""
-                    for t, v, m in zip(texts, table[name].to_numpy(dtype=float), mine, strict=True)
-                ],
-                dtype=object,
-            )
-    sexagesimal = optical & np.array([" " in t or ":" in t for t in ra_text], dtype=bool)
-    if sexagesimal.any():
-        cos = np.abs(np.cos(table["dec_rad"].to_numpy()))
-        ra_step = table["digits_ra_arcsec"].to_numpy() / np.maximum(cos, 1e-9) / 15.0
-        for name, values, steps in (
-            ("precTime", table["digits_time_s"].to_numpy() / 0.0864, PREC_TIME),
-            ("precRA", ra_step, PREC_ANGLE),
-            ("precDec", steps_dec, PREC_ANGLE),
-        ):
-            had = cells.get(name, np.full(n, "", dtype=object))
-            cells[name] = np.array(
-                [
-                    _step(v, steps) if s and not h else h
-                    for v, s, h in zip(values, sexagesimal, had, strict=True)
-                ],
-                dtype=object,
-            )
-    cells["obsTime"] = _times(arc)
-    if "mag" in cells:
-        bare = (cells["mag"] != "") & (cells["band"] == "")
-        cells["band"] = np.where(bare, "UNK", cells["band"])
-    named = cells["permID"] != ""
-    for name in ("provID", "artSat", "trkSub"):
-        if name in cells:
-            named |= cells[name] != ""
-    if not named.all():
-        label = "".join(c for c in arc.name if c.isalnum())[:8] or "object"
-        cells["trkSub"] = np.where(named, cells["trkSub"], label)
-    if "stn" in cells and "mode" in cells:
-        cells["mode"] = np.where(optical & (cells["mode"] == ""), "UNK", cells["mode"])
-    return cells
-
-
-def _number(value: float, places: int) -> str:
-    text = plain_number(value)
-    if "." in text and len(text.split(".")[1]) > places:
-        return plain_number(value, places)
-    return text
-
-
-def _angle(text: str, value: float) -> str:
-    """The reported decimal text in the spelling of 2022; degrees with nine decimals when it was not
-    decimal."""
-    if text and set(text) <= set("+-.0123456789"):
-        whole, point, places = text.lstrip("+-").partition(".")
-        if len(places) <= 9:
-            return ("-" if text[0] == "-" else "") + (whole.lstrip("0") or "0") + point + places
-    rounded = plain_number(value, 9)
-    return "0.000000000" if rounded.startswith("360.") else rounded
-
-
-def _step(value: float, allowed: tuple[float, ...]) -> str:
-    """The smallest allowed resolution that is not finer than the one found."""
-    for step in allowed:
-        if step >= value * (1.0 - 1e-9):
-            return plain_number(step)
-    return plain_number(allowed[-1])
-
-
-def _times(arc: Arc) -> ObjectArray:
-    table = arc.table
-    texts = table["obsTime"].to_numpy(dtype=object).copy()
-    long = np.array(["." in t and len(t) > 27 for t in texts], dtype=bool)
-    if long.any():
-        day, sec = table["utc_day"].to_numpy()[long], table["utc_sec"].to_numpy()[long]
-        texts[long] = format_times(day, sec, np.full(int(long.sum()), 6))
-    return texts

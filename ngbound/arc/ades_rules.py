@@ -31,8 +31,11 @@ class ColumnRule:
     """One ADES column.
 
     ``form`` is "text", "time", "decimal", "double" or "integer"; ``pattern`` holds for text;
-    ``low``/``high`` bound numbers and are themselves excluded where ``open_low``/``open_high``;
-    ``width`` is the longest form without a sign (2022).
+    ``low``/``high`` bound numbers and are themselves excluded where ``open_low``/``open_high``.
+    The rest are lexical rules of version 2022: ``width`` is the longest form without a sign,
+    ``places`` the most decimals, ``signed`` whether a sign may stand, ``bare_point`` whether the
+    digit before the point may be left out, ``zeros`` whether leading zeros may stand, ``values``
+    the only values allowed (any, when empty), ``inside`` that the bounds themselves are excluded.
     """
 
     name: str
@@ -47,6 +50,10 @@ class ColumnRule:
     open_high: bool = False
     signed: bool = True
     places: int = 99
+    bare_point: bool = False
+    zeros: bool = False
+    inside: bool = False
+    values: tuple[float, ...] = ()
 
     @property
     def words(self) -> str:
@@ -63,14 +70,20 @@ class ColumnRule:
             right = ")" if self.open_high else "]"
             high = "no upper limit" if self.high == float("inf") else f"{self.high:g}"
             span = f" in the range {left}{self.low:g}, {high}{right}"
+        if self.values:
+            span = ", one of " + ", ".join(f"{value:g}" for value in self.values)
         return f"it must be {what}{unit}{span}"
 
 
 _PLANETS = "Mercury|Venus|Earth|Moon|Mars|Jupiter|Saturn|Uranus|Neptune"
-_PERM = r"\d+([IPD](-[A-Z]{1,2})?)?|(Mars|Jupiter|Saturn|Uranus|Neptune) \d{1,3}|\(\d+\) \d{1,3}"
+_PERM = (
+    r"(?=.{1,25}\Z)(?:\d+([IPD](-[A-Z]{1,2})?)?|(Mars|Jupiter|Saturn|Uranus|Neptune) \d{1,3}"
+    r"|\(\d+\) \d{1,3})"
+)
 _PROV = (
-    r"\d{4} [A-HJ-Y][A-HJ-Z]\d*|\d{4} (P-L|T-1|T-2|T-3)|A[89]\d{2} [A-HJ-Y][A-HJ-Z]?\d*"
-    r"|[ADCPX]/\d{4} [A-HJ-Y][A-HJ-Z]?\d*(-[A-Z])?|S/\d{4} ([A-Z]|\(\d+\)) \d+"
+    r"(?=.{1,25}\Z)(?:\d{4} [A-HJ-Y][A-HJ-Z]\d*|\d{4} (P-L|T-[123])|A[89]\d{2} [A-HJ-Y][A-HJ-Z]"
+    r"|[ADCPX]/\d{4} [A-Z]{1,2}\d*(-[A-Z])?"
+    r"|S/\d{4} ([MJSUN]|\((\d+|\d{4} [A-HJ-Y][A-HJ-Z]?\d+)\)) \d+)"
 )
 _TEXT_WORDS = {
     "permID": "it must be an unpacked designation such as 433, 73P, 73P-C, 1I or Jupiter 13",
@@ -87,12 +100,17 @@ _TEXT_WORDS = {
     "band": "it must be a band of at most 3 letters or digits",
 }
 
+PREC_TIME = (1.0, 10.0, 69.0, 100.0, 694.0, 1000.0, 4167.0, 10000.0, 41667.0, 100000.0)
+PREC_ANGLE = (0.001, 0.01, 0.1, 0.6, 1.0, 6.0, 60.0)
+"""Values that precTime (1e-6 d) and precRA (s of time), precDec (arcsec) may take."""
+_VALUES = {"time": PREC_TIME, "angle": PREC_ANGLE, "399": (399.0,)}
+
 # name | kinds (O optical F offset C occultation R radar o, r their residuals) | form | more
 _TABLE = rf"""
 permID OFCRor text pattern={_PERM}
 provID OFCRor text pattern={_PROV}
 artSat OFCRor text pattern=.{{1,25}}
-trkSub OFCRor text pattern=[A-Za-z0-9_\-?+@./()\\ ]{{1,8}}
+trkSub OFCRor text pattern=[- ?+@./()\\A-Za-z0-9_]{{1,8}}
 obsID OFCRor text pattern=[A-Za-z0-9_]{{1,25}}
 obsSubID OFCo text pattern=.{{1,35}}
 trkID OFCo text pattern=[-A-Za-z0-9_]{{1,12}}
@@ -102,36 +120,36 @@ stn OFC text pattern=[A-Za-z0-9_]{{3,4}}
 trx R text pattern=[A-Za-z0-9_]{{3,4}}
 rcv R text pattern=[A-Za-z0-9_]{{3,4}}
 sys OFC text pattern=WGS84|ITRF|IAU|ICRF_AU|ICRF_KM
-ctr OFC integer low=-999999999 high=999999999
+ctr OFC integer low=-999999999 high=999999999 values=399
 pos1 OFC decimal width=13
 pos2 OFC decimal width=13
 pos3 OFC decimal width=13
 vel1 OFC decimal width=13
 vel2 OFC decimal width=13
 vel3 OFC decimal width=13
-posCov11 OFC double
-posCov12 OFC double
-posCov13 OFC double
-posCov22 OFC double
-posCov23 OFC double
-posCov33 OFC double
+posCov11 OFC double width=20
+posCov12 OFC double width=20
+posCov13 OFC double width=20
+posCov22 OFC double width=20
+posCov23 OFC double width=20
+posCov33 OFC double width=20
 prog OFCR text pattern=[A-Za-z0-9_]{{1,2}}
 obsTime OFCRor time
 rmsTime OFC positive unit=s width=8
-ra O decimal unit=deg low=0 high=360 open_high signed=no places=9
-dec O decimal unit=deg low=-90 high=90 places=9
-raStar C decimal unit=deg low=0 high=360 open_high signed=no places=9
-decStar C decimal unit=deg low=-90 high=90 places=9
+ra O decimal unit=deg low=0 high=360 open_high signed=no places=9 bare_point
+dec O decimal unit=deg low=-90 high=90 places=9 bare_point
+raStar C decimal unit=deg low=0 high=360 open_high signed=no places=9 bare_point
+decStar C decimal unit=deg low=-90 high=90 places=9 bare_point
 obsCenter F text pattern={_PLANETS}|{_PERM}|{_PROV}
 deltaRA FC decimal unit=arcsec width=9
 deltaDec FC decimal unit=arcsec width=9
 dist FC positive unit=arcsec width=10
-pa FC decimal unit=deg low=0 high=360 open_high signed=no places=9
+pa FC decimal unit=deg low=0 high=360 open_high signed=no places=9 bare_point
 rmsRA OFC positive unit=arcsec width=7
 rmsDec OFC positive unit=arcsec width=7
 rmsDist FC positive unit=arcsec width=6
 rmsPA FC positive unit=deg width=6
-rmsCorr OFC decimal low=-1 high=1 places=11
+rmsCorr OFC decimal low=-1 high=1 places=11 inside
 delay R positive unit=s width=14
 rmsDelay R positive unit=microseconds width=6
 doppler R decimal unit=Hz width=13
@@ -151,40 +169,40 @@ exp OF positive unit=s width=6
 rmsFit OF positive unit=arcsec width=6
 nStars OF integer low=1 high=999999
 com R integer low=0 high=1
-frq R positive unit=MHz width=16 high=inf
+frq R positive unit=MHz width=16 high=inf bare_point zeros
 ref OFCR text pattern=.{{1,28}}
 disc OFC text pattern=[*+]
 subFrm OFC text pattern=[BJ]\d{{4}}.0|APP\.
 subFmt OFC text pattern=[A-Za-z0-9_]{{1,4}}
-precTime OFC decimal low=1 high=100000
-precRA OFC decimal unit=seconds_of_time low=0.001 high=60
-precDec OFC decimal unit=arcsec low=0.001 high=60
+precTime OFC decimal unit=1e-6_d low=1 high=100000 bare_point zeros values=time
+precRA OFC decimal unit=seconds_of_time low=0.001 high=60 bare_point zeros values=angle
+precDec OFC decimal unit=arcsec low=0.001 high=60 bare_point zeros values=angle
 uncTime OFC positive unit=s width=8
 notes OFC text pattern=[A-Za-z0-9_]{{1,6}}
 remarks OFCR text pattern=.{{1,300}}
-deprecated OFC text pattern=X
 orbProd OFCRor text pattern=.{{1,100}}
 orbID OFCRor text pattern=.{{1,25}}
-resRA OFCo double unit=arcsec
-resDec OFCo double unit=arcsec
+resRA OFCo double unit=arcsec width=6
+resDec OFCo double unit=arcsec width=6
 selAst OFCo text pattern=[AaDd]
 sigRA OFCo positive unit=arcsec width=7
 sigDec OFCo positive unit=arcsec width=7
-sigCorr OFCo decimal low=-1 high=1 places=11
+sigCorr OFCo decimal low=-1 high=1 places=11 inside
 sigTime OFCo positive unit=s width=8
 biasRA OFCo decimal unit=arcsec width=7
 biasDec OFCo decimal unit=arcsec width=7
 biasTime OFCo decimal unit=s width=9
 photProd OFCo text pattern=.{{1,100}}
-resMag OFCo double unit=mag
+resMag OFCo double unit=mag width=6
 selPhot OFCo text pattern=[AaDd]
 sigMag OFCo positive unit=mag width=6
 biasMag OFCo decimal unit=mag width=5
 photMod OFCo text pattern=[A-Za-z0-9_]{{1,8}}
-resDelay Rr double unit=microseconds
+deprecated OFC text pattern=X
+resDelay Rr double unit=microseconds width=6
 selDelay Rr text pattern=[AaDd]
 sigDelay Rr positive unit=microseconds width=6
-resDoppler Rr double unit=Hz
+resDoppler Rr double unit=Hz width=6
 selDoppler Rr text pattern=[AaDd]
 sigDoppler Rr positive unit=Hz width=6
 """
@@ -213,6 +231,10 @@ def _parse(line: str) -> ColumnRule:
         open_high=positive or "open_high" in options,
         signed=not positive and options.get("signed") != "no",
         places=int(options.get("places", 99)),
+        bare_point="bare_point" in options,
+        zeros="zeros" in options or form == "integer",
+        inside="inside" in options,
+        values=_VALUES.get(options.get("values", ""), ()),
     )
 
 
@@ -224,9 +246,40 @@ COLUMNS: dict[str, ColumnRule] = {
 TEXT_COLUMNS = tuple(c for c, rule in COLUMNS.items() if rule.form in ("text", "time"))
 NUMBER_COLUMNS = tuple(c for c, rule in COLUMNS.items() if rule.form not in ("text", "time"))
 
-PREC_TIME = (1.0, 10.0, 69.0, 100.0, 694.0, 1000.0, 4167.0, 10000.0, 41667.0, 100000.0)
-PREC_ANGLE = (0.001, 0.01, 0.1, 0.6, 1.0, 6.0, 60.0)
-"""Values that precTime (1e-6 d) and precRA (s of time), precDec (arcsec) may take."""
+NEW_IN_2022 = ("obsSubID", "trkMPC", "shapeOcc", "fltr", "vel1", "vel2", "vel3")
+"""Columns that version 2017 does not have."""
+
+_LOCATION = ("sys", "ctr", "pos1", "pos2", "pos3")
+_ASTROMETRY = ("resRA", "resDec", "selAst", "sigRA", "sigDec")
+_PHOTOMETRY = ("resMag", "selPhot", "sigMag")
+_DELAY = ("resDelay", "selDelay", "sigDelay")
+_DOPPLER = ("resDoppler", "selDoppler", "sigDoppler")
+
+TOGETHER: tuple[tuple[tuple[str, ...], tuple[str, ...]], ...] = (
+    (
+        (
+            *_LOCATION,
+            *("vel1", "vel2", "vel3"),
+            *("posCov11", "posCov12", "posCov13", "posCov22", "posCov23", "posCov33"),
+        ),
+        _LOCATION,
+    ),
+    (("mag", "rmsMag", "band", "fltr", "photCat", "photAp", "nucMag"), ("mag", "band")),
+    (("precTime", "precRA", "precDec"), ("precTime", "precRA", "precDec")),
+    (("deltaRA", "deltaDec"), ("deltaRA", "deltaDec")),
+    (("dist", "pa", "rmsDist", "rmsPA"), ("dist", "pa")),
+    (
+        (*_ASTROMETRY, "sigCorr", "sigTime", "biasRA", "biasDec", "biasTime"),
+        _ASTROMETRY,
+    ),
+    (("photProd", *_PHOTOMETRY, "biasMag", "photMod"), _PHOTOMETRY),
+    (_DELAY, _DELAY),
+    (_DOPPLER, _DOPPLER),
+    (("orbProd", "orbID", *_ASTROMETRY, *_PHOTOMETRY, *_DELAY, *_DOPPLER), ("orbProd", "orbID")),
+    (("rmsDelay",), ("delay",)),
+    (("rmsDoppler",), ("doppler",)),
+)
+"""Where one of the first columns is filled, all of the second must be."""
 
 CONTEXT_ELEMENTS: dict[str, tuple[str, ...]] = {
     "observatory": ("mpcCode", "name"),
@@ -250,6 +303,90 @@ CONTEXT_ELEMENTS: dict[str, tuple[str, ...]] = {
     "comment": ("line",),
 }
 """Elements of obsContext and the children that each may have."""
+
+CONTEXT_REQUIRED: dict[str, tuple[str, ...]] = {
+    "observatory": ("mpcCode",),
+    "submitter": ("name",),
+    "measurers": ("name",),
+    "telescope": ("design", "aperture", "detector"),
+    "observers": ("name",),
+    "coinvestigators": ("name",),
+    "collaborators": ("name",),
+    "comment": ("line",),
+}
+"""Children that an element of obsContext must have (2022)."""
+CONTEXT_ALWAYS = ("observatory", "submitter", "measurers", "telescope")
+"""Elements that every obsContext must have (2022)."""
+CONTEXT_REPEATED = ("observers", "measurers", "coinvestigators", "collaborators", "comment")
+"""Elements whose child may be repeated."""
+_CONTEXT_WIDTH = {
+    ("telescope", "design"): 35,
+    ("telescope", "detector"): 25,
+    ("telescope", "filter"): 25,
+    ("telescope", "arraySize"): 25,
+    ("software", "fitOrder"): 25,
+}
+_CONTEXT_WIDTH_ELSEWHERE = 100
+_CONTEXT_NUMBERS = (("telescope", "aperture"), ("telescope", "fRatio"), ("telescope", "pixelScale"))
+
+
+def context_value_problem(name: str, child: str, text: str) -> str:
+    """What version 2022 has against the text of an element of obsContext ("" for ``child`` when
+    it is the element's own text); "" when nothing."""
+    if not text.strip():
+        return "it is empty"
+    if (name, child) == ("observatory", "mpcCode"):
+        return "" if matches(COLUMNS["stn"], text) else _TEXT_WORDS["stn"]
+    if (name, child) in _CONTEXT_NUMBERS:
+        good = re.fullmatch(r"(?=.{1,6}\Z)(0|[1-9][0-9]*)(\.[0-9]*)?", text)
+        if good is None or not 0.0 < float(text) < 1e5:
+            return "it must be a positive decimal number of at most 6 characters"
+        return ""
+    width = _CONTEXT_WIDTH.get((name, child), _CONTEXT_WIDTH_ELSEWHERE)
+    if len(text) > width or "|" in text:
+        return f"it must be a text of at most {width} characters without '|'"
+    return ""
+
+
+def context_problem(
+    context: tuple[tuple[str, str, tuple[tuple[str, str], ...]], ...],
+) -> tuple[int, str, str, str] | None:
+    """The first thing that version 2022 has against an obsContext.
+
+    Returns
+    -------
+    (position, name, value, sentence) or None
+        Position of the element in the context (0 when one is missing), the name of what is wrong,
+        its text, and the problem with its remedy.
+    """
+    seen: set[str] = set()
+    for at, (name, text, children) in enumerate(context):
+        if name in seen:
+            return at, name, "", "it stands twice in one header. Keep one of them"
+        seen.add(name)
+        if name == "fundingSource":
+            problem = context_value_problem(name, "", text)
+            if problem:
+                return at, name, text, f"{problem}. Correct the text"
+        names = [child for child, _ in children]
+        for child in CONTEXT_REQUIRED.get(name, ()):
+            if child not in names:
+                return at, name, "", f"it has no {child}, which the standard asks for. Add it"
+        for child, value in children:
+            if names.count(child) > 1 and name not in CONTEXT_REPEATED:
+                return at, f"{name}/{child}", value, "it stands twice. Keep one of them"
+            problem = context_value_problem(name, child, value)
+            if problem:
+                return (
+                    at,
+                    f"{name}/{child}",
+                    value,
+                    f"the value {value[:60]!r} is not allowed; {problem}. Correct it",
+                )
+    for name in CONTEXT_ALWAYS:
+        if name not in seen:
+            return 0, name, "", "the header lacks it, and the standard asks for it. Add it"
+    return None
 
 
 def kind_of_columns(names: set[str]) -> str | None:

@@ -9,9 +9,18 @@ import warnings
 import numpy as np
 from lxml import etree
 
-from ngbound.arc.ades_psv import grouped_cells
-from ngbound.arc.ades_rules import COLUMNS, CONTEXT_ELEMENTS, RECORD_KINDS, VERSIONS
-from ngbound.arc.observations import Arc, Context, ObjectArray, Records
+from ngbound.arc.ades_rules import (
+    COLUMNS,
+    CONTEXT_ELEMENTS,
+    OPTICAL_RESIDUAL,
+    RADAR_RESIDUAL,
+    RECORD_KINDS,
+    VERSIONS,
+    context_problem,
+)
+from ngbound.arc.ades_text import checked_contexts, grouped_cells
+from ngbound.arc.observations import Arc
+from ngbound.arc.records import Context, ObjectArray, Records, merge_contexts
 from ngbound.arc.whole_file import PathLike, write_whole
 from ngbound.errors import ArcError, NgboundWarning
 
@@ -72,6 +81,8 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
     blocks: list[int] = []
     cells: dict[str, dict[int, str]] = {}
     skipped = 0
+    strict = version == "2022"
+    order = {name: at for at, name in enumerate(COLUMNS)}
 
     def record(element: etree._Element, block: int) -> None:
         nonlocal skipped
@@ -79,6 +90,9 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
         kinds.append(element.tag)
         lines.append(element.sourceline or 0)
         blocks.append(block)
+        last, behind = -1, ""
+        if strict:
+            _refuse_loose_text(element, source)
         for child in element:
             name = child.tag
             if name == "localUse":
@@ -93,6 +107,15 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
                     f"it is not an element of {element.tag} records",
                     "Remove it.",
                 )
+            if strict and order[name] < last and {name, behind} != {"delay", "doppler"}:
+                raise _fail(
+                    child,
+                    source,
+                    name,
+                    f"it stands after {behind}, and the standard fixes the order",
+                    f"Put it before {behind}.",
+                )
+            last, behind = order[name], name
             if row in cells.setdefault(name, {}):
                 raise _fail(
                     child,
@@ -125,16 +148,18 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
                     "it must hold obsContext and then obsData, once each",
                     "Correct the block.",
                 )
-            contexts.append(_context(element[0], source))
+            contexts.append(_context(element[0], source, strict))
             data = element[1]
+            if not len(data):
+                raise _fail(data, source, "obsData", "it holds no record", "Add records.")
             for child in data:
-                if child.tag not in RECORD_KINDS:
+                if child.tag not in RECORD_KINDS or child.tag in (OPTICAL_RESIDUAL, RADAR_RESIDUAL):
                     raise _fail(
                         child,
                         source,
                         str(child.tag),
-                        "it is not a kind of record",
-                        f"Use one of {', '.join(RECORD_KINDS)}.",
+                        "it is not a kind of record that may stand in obsData",
+                        f"Use one of {', '.join(RECORD_KINDS[:4])}.",
                     )
                 if child.tag != data[0].tag:
                     raise _fail(
@@ -160,6 +185,7 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
             stacklevel=2,
         )
     n = len(kinds)
+    distinct, place = merge_contexts(contexts)
     text: dict[str, ObjectArray] = {}
     for name in COLUMNS:
         if name in cells:
@@ -171,15 +197,17 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
         text=text,
         kind=np.array(kinds, dtype=object),
         line=np.array(lines, dtype=np.int64),
-        block=np.array(blocks, dtype=np.int64),
+        block=np.array([place[b] if b >= 0 else -1 for b in blocks], dtype=np.int64),
         set_aside=np.full(n, "", dtype=object),
-        contexts=tuple(contexts),
+        contexts=distinct,
         strict=version == "2022",
     )
 
 
-def _context(element: etree._Element, source: str) -> Context:
+def _context(element: etree._Element, source: str, strict: bool) -> Context:
     out = []
+    if strict:
+        _refuse_loose_text(element, source)
     for child in element:
         if child.tag not in CONTEXT_ELEMENTS:
             raise _fail(
@@ -189,6 +217,8 @@ def _context(element: etree._Element, source: str) -> Context:
                 "it is not an element of obsContext",
                 f"Use one of {', '.join(CONTEXT_ELEMENTS)}.",
             )
+        if strict and child.tag != "fundingSource":
+            _refuse_loose_text(child, source)
         grand = []
         for leaf in child:
             if leaf.tag not in CONTEXT_ELEMENTS[child.tag]:
@@ -199,15 +229,39 @@ def _context(element: etree._Element, source: str) -> Context:
                     f"it is not an element of {child.tag}",
                     "Remove it.",
                 )
+            if len(leaf) or leaf.attrib:
+                raise _fail(
+                    leaf, source, leaf.tag, "it holds something besides text", "Give plain text."
+                )
             grand.append((str(leaf.tag), " ".join((leaf.text or "").split())))
         text = " ".join((child.text or "").split()) if child.tag == "fundingSource" else ""
         out.append((str(child.tag), text, tuple(grand)))
-    return tuple(out)
+    context = tuple(out)
+    problem = context_problem(context) if strict else None
+    if problem is not None:
+        at, name, _, sentence = problem
+        where = element[at] if len(element) else element
+        raise _fail(where, source, name, *sentence.rsplit(". ", 1))
+    return context
+
+
+def _refuse_loose_text(element: etree._Element, source: str) -> None:
+    """Text between the children of an element, and attributes, which the standard does not have."""
+    loose = [element.text, *(child.tail for child in element)]
+    if any(text and text.strip() for text in loose):
+        raise _fail(
+            element, source, str(element.tag), "text stands between its elements", "Remove it."
+        )
+    for child in (element, *element):
+        if child.attrib:
+            raise _fail(
+                child, source, str(child.tag), "it has an attribute", "Remove the attribute."
+            )
 
 
 def _fail(element: etree._Element, source: str, name: str, problem: str, remedy: str) -> ArcError:
     return ArcError(
-        f"{source}, line {element.sourceline}, element {name}: {problem}. {remedy}",
+        f"{source}, line {element.sourceline}, element {name}: {problem}. {remedy.rstrip('.')}.",
         file=source,
         line=element.sourceline,
         column=name,
@@ -218,21 +272,17 @@ def _fail(element: etree._Element, source: str, name: str, problem: str, remedy:
 def write_xml(arc: Arc, path: PathLike, *, version: str = "2022") -> None:
     """Write every record of an arc as ADES XML, headers included, in one step; the rules of
     `write_psv` hold."""
-    if version not in VERSIONS:
-        raise ArcError(
-            f"The ADES version {version!r} is not known; it must be {' or '.join(VERSIONS)}.",
-            value=version,
-        )
+    checked_contexts(arc, version)
     root = etree.Element("ades", version=version)
-    for block, kind, rows, columns in grouped_cells(arc):
+    for run in grouped_cells(arc, version):
         parent = root
-        if block >= 0:
+        if run.block >= 0:
             holder = etree.SubElement(root, "obsBlock")
-            _context_elements(etree.SubElement(holder, "obsContext"), arc.contexts[block])
+            _context_elements(etree.SubElement(holder, "obsContext"), arc.contexts[run.block])
             parent = etree.SubElement(holder, "obsData")
-        for i in range(len(rows)):
-            element = etree.SubElement(parent, kind)
-            for name, cells in columns.items():
+        for i in range(len(run.rows)):
+            element = etree.SubElement(parent, run.kind)
+            for name, cells in run.columns.items():
                 if cells[i]:
                     etree.SubElement(element, name).text = cells[i]
     write_whole(

@@ -27,8 +27,11 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from ngbound.arc.catalogue_offsets import catalogue_offsets
 from ngbound.arc.fields import civil_day
+from ngbound.arc.instrument_offsets import photocentre_offset, station_clocks, station_offsets
 from ngbound.arc.observations import Arc
+from ngbound.arc.shared_errors import Modes, SharedErrors, joined
 from ngbound.constants import ARCSEC_RAD
 from ngbound.errors import ArcError, CaseError
 
@@ -44,6 +47,9 @@ NIGHT_LONGEST_D = 1.0
 polar sites."""
 COMMON_FRACTION = 0.5
 """Common part of the night as a fraction of an implied sigma."""
+STATION_FRACTION = 0.2
+"""Offset of a station over the whole arc as a fraction of an implied sigma (from memory)."""
+OPTIONAL = ("uniform_before_1996_arcsec", "night_common_arcsec", "station_offset_arcsec")
 TOO_MANY = 4
 """Observations of a station-night from which the sqrt(N/4) rule counts (Veres et al. 2017, from
 memory)."""
@@ -146,6 +152,9 @@ class Noise:
         Station-night of each observation, counted from 0.
     source : ndarray (n,) of str
         Where each sigma came from.
+    shared : SharedErrors, optional
+        Errors that observations of many nights share; not in the sigmas above, but in the
+        whitening.
     """
 
     sigma_ra_arcsec: FloatArray
@@ -154,13 +163,14 @@ class Noise:
     night_common_arcsec: FloatArray
     night: IntArray
     source: NDArray[np.object_]
+    shared: SharedErrors | None = None
 
     def __len__(self) -> int:
         return len(self.sigma_ra_arcsec)
 
     def covariance_rad2(self, rows: IntArray) -> FloatArray:
         """Dense covariance (2m, 2m) in rad^2 of some observations, interleaved; zero between
-        different nights."""
+        different nights, shared errors left out."""
         m = len(rows)
         ra, dec = self.sigma_ra_arcsec[rows], self.sigma_dec_arcsec[rows]
         common, night = self.night_common_arcsec[rows], self.night[rows]
@@ -208,7 +218,8 @@ class Noise:
         return Factors(order, start, flat, flat_start)
 
     def factors(self) -> Factors:
-        """The inverse Cholesky factors (computed once)."""
+        """The inverse Cholesky factors (computed once); shared errors left out, see
+        `mode_rows`."""
         return self._factors
 
     @cached_property
@@ -225,14 +236,8 @@ class Noise:
             batches.append((rows, pieces.reshape(len(blocks), 2 * m, 2 * m)))
         return batches
 
-    def whiten(self, m: ArrayLike) -> FloatArray:
-        """L^-1 m for m of shape (2n,) or (2n, k), rows RA cos dec and Dec of each observation in
-        turn, in radians.
-
-        The result is dimensionless, of the same shape; chi2 of residuals is the sum of its squares.
-        The rows keep
-        their places, but inside a station-night they are mixed.
-        """
+    def whiten_nights(self, m: ArrayLike) -> FloatArray:
+        """As `whiten`, with the shared errors left out: L^-1 m of the station-nights."""
         values = np.asarray(m, dtype=np.float64)
         if values.ndim not in (1, 2) or values.shape[0] != 2 * len(self):
             raise ValueError(
@@ -244,6 +249,29 @@ class Noise:
         for rows, inverse in self._batches:
             out[rows] = inverse @ table[rows]
         return out.reshape(values.shape)
+
+    def whiten(self, m: ArrayLike) -> FloatArray:
+        """C^(-1/2) m for m of shape (2n,) or (2n, k), rows RA cos dec and Dec of each observation
+        in turn, in radians.
+
+        The result is dimensionless, of the same shape; chi2 of residuals is the sum of its squares.
+        The rows keep their places, but inside a station-night they are mixed, and so are all
+        observations that share an error.
+        """
+        white = self.whiten_nights(m)
+        return white if self.modes is None else self.modes.shrink(white)
+
+    @cached_property
+    def modes(self) -> Modes | None:
+        """The singular vectors of the whitened shared errors; None without shared errors."""
+        if self.shared is None or not len(self.shared) or not len(self):
+            return None
+        return Modes.of(self.whiten_nights(self.shared.matrix))
+
+    def mode_rows(self) -> FloatArray | None:
+        """(k, 2n) rows M with chi2 = |w|^2 - |M w|^2, where w is ``whiten_nights`` of the residuals
+        in the order of the observations; None without shared errors."""
+        return None if self.modes is None else self.modes.rows()
 
     def mask(self, keep: ArrayLike) -> "Noise":
         """The noise of a subset (bool (n,) or positions); sigmas stay as they are, nights are
@@ -259,10 +287,11 @@ class Noise:
             self.night_common_arcsec[keep],
             night.astype(np.int64),
             self.source[keep],
+            None if self.shared is None else self.shared.rows(keep),
         )
 
     def scaled(self, f: ArrayLike) -> "Noise":
-        """All errors times ``f`` (a number, or one per observation)."""
+        """All errors but the shared ones times ``f`` (a number, or one per observation)."""
         factor = np.broadcast_to(np.asarray(f, dtype=np.float64), (len(self),))
         if not (np.isfinite(factor) & (factor > 0.0)).all():
             raise ValueError("errors can only be scaled by finite, positive factors")
@@ -273,7 +302,19 @@ class Noise:
             self.night_common_arcsec * factor,
             self.night,
             self.source,
+            self.shared,
         )
+
+    def with_parts_scaled(self, random: ArrayLike, common: ArrayLike) -> "Noise":
+        """The independent part of all errors times ``random`` and the part common to a night times
+        ``common`` (numbers, or one per observation)."""
+        f = np.broadcast_to(np.asarray(random, dtype=np.float64), (len(self),))
+        new_common = self.night_common_arcsec * np.asarray(common, dtype=np.float64)
+        shared2, old2 = new_common**2, self.night_common_arcsec**2
+        ra = np.sqrt(f**2 * (self.sigma_ra_arcsec**2 - old2) + shared2)
+        dec = np.sqrt(f**2 * (self.sigma_dec_arcsec**2 - old2) + shared2)
+        corr = self.corr * f**2 * self.sigma_ra_arcsec * self.sigma_dec_arcsec / (ra * dec)
+        return Noise(ra, dec, corr, new_common, self.night, self.source, self.shared)
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able summary: counts by source with the median sigma of each."""
@@ -326,6 +367,27 @@ class ErrorModel:
     over_observing : str
         What tames many observations of one night with implied sigmas: "common" (see above), "sqrt"
         (sigma times sqrt(N/4) for N > 4: Veres et al. 2017, Icarus 296, 139) or "none".
+    catalogue_offsets : bool, optional
+        Whether offsets of the star catalogues, with priors from published sizes
+        (`ngbound.arc.catalogue_offsets`), are marginalised. None: yes, but not where the scheme is
+        "uniform".
+    catalogue_seasons : bool
+        Whether each catalogue has an offset for each season besides that of the whole arc.
+    catalogue_scale : float
+        Factor on the priors of the catalogues.
+    station_offset_arcsec : float, optional
+        Prior standard deviation of an offset of each station in RA and Dec; 0 for none. None: a
+        fifth of sigma where it is implied by the table, nothing where it is stated or uniform.
+    clock_s : float
+        Prior standard deviation of a clock error of each station; 0 for none.
+    photocentre_arcsec_au : float
+        Prior standard deviation of the photocentre's offset along the direction to the Sun, arcsec
+        at 1 au; 0 for none.
+    rescale_stations : bool, optional
+        Whether a fit rescales the errors of stations that have enough records. None: those that
+        come from the table, but neither stated nor uniform ones; True: all; False: none.
+    rescale_least : int
+        Records that are enough.
     """
 
     scheme: str = "stated-then-table"
@@ -336,6 +398,14 @@ class ErrorModel:
     night_common_arcsec: float | None = None
     timing_s: float = 0.0
     over_observing: str = "common"
+    catalogue_offsets: bool | None = None
+    catalogue_seasons: bool = True
+    catalogue_scale: float = 1.0
+    station_offset_arcsec: float | None = None
+    clock_s: float = 0.0
+    photocentre_arcsec_au: float = 0.0
+    rescale_stations: bool | None = None
+    rescale_least: int = 20
 
     def __post_init__(self) -> None:
         for name, allowed in (("scheme", SCHEMES), ("over_observing", OVER_OBSERVING)):
@@ -353,10 +423,15 @@ class ErrorModel:
             "floor_arcsec": (0.0, False),
             "night_common_arcsec": (0.0, False),
             "timing_s": (0.0, False),
+            "catalogue_scale": (0.0, True),
+            "station_offset_arcsec": (0.0, False),
+            "clock_s": (0.0, False),
+            "photocentre_arcsec_au": (0.0, False),
+            "rescale_least": (2, False),
         }
         for name, (low, is_open) in limits.items():
             value = getattr(self, name)
-            if value is None and name in ("uniform_before_1996_arcsec", "night_common_arcsec"):
+            if value is None and name in OPTIONAL:
                 continue
             number = isinstance(value, int | float) and not isinstance(value, bool)
             if not number or not np.isfinite(value) or value < low or (is_open and value == low):
@@ -375,7 +450,40 @@ class ErrorModel:
     def __str__(self) -> str:
         return "Error model: " + ", ".join(f"{k} = {v}" for k, v in self.to_dict().items())
 
-    def apply(self, arc_used: Arc, motion_arcsec_s: ArrayLike | None = None) -> Noise:
+    def rescalable(self, noise: Noise) -> NDArray[np.bool_]:
+        """Observations (n,) whose errors a fit may rescale."""
+        if self.rescale_stations is not None:
+            return np.full(len(noise), self.rescale_stations)
+        return np.array([str(label).startswith("table") for label in noise.source], dtype=bool)
+
+    def _shared(
+        self,
+        arc: Arc,
+        implied_arcsec: FloatArray,
+        motion_arcsec_s: FloatArray | None,
+        sunward_per_au: FloatArray | None,
+    ) -> SharedErrors | None:
+        parts = []
+        wanted = self.catalogue_offsets
+        if wanted or (wanted is None and self.scheme != "uniform"):
+            parts.append(catalogue_offsets(arc, self.catalogue_scale, self.catalogue_seasons))
+        if self.station_offset_arcsec is None:
+            where = "a fifth of the sigma of the table (from memory)"
+            parts.append(station_offsets(arc, STATION_FRACTION * implied_arcsec, where))
+        elif self.station_offset_arcsec > 0.0:
+            parts.append(station_offsets(arc, np.full(len(arc), self.station_offset_arcsec)))
+        if self.clock_s > 0.0 and motion_arcsec_s is not None:
+            parts.append(station_clocks(arc, self.clock_s, motion_arcsec_s))
+        if self.photocentre_arcsec_au > 0.0 and sunward_per_au is not None:
+            parts.append(photocentre_offset(self.photocentre_arcsec_au, sunward_per_au))
+        return joined(parts)
+
+    def apply(
+        self,
+        arc_used: Arc,
+        motion_arcsec_s: ArrayLike | None = None,
+        sunward_per_au: ArrayLike | None = None,
+    ) -> Noise:
         """The noise of the observations of an arc.
 
         Parameters
@@ -383,8 +491,11 @@ class ErrorModel:
         arc_used : Arc
             Usable observations (``arc.used``), n rows.
         motion_arcsec_s : ndarray (n, 2), optional
-            Rates in RA times cos dec and Dec, arcsec/s; needed for timing errors and for the
-            resolution of the time to act.
+            Rates in RA times cos dec and Dec, arcsec/s; needed for timing errors, clocks and for
+            the resolution of the time to act.
+        sunward_per_au : ndarray (n, 2), optional
+            Unit vector object to Sun projected on RA cos dec and Dec, over the distance to the
+            observer in au; needed for the photocentre.
 
         Returns
         -------
@@ -423,12 +534,8 @@ class ErrorModel:
             common = np.full(n, float(self.night_common_arcsec))
             added = common
         var_ra, var_dec, cov = ra**2 + added**2, dec**2 + added**2, rho * ra * dec
-        if motion_arcsec_s is not None:
-            motion = np.asarray(motion_arcsec_s, dtype=float)
-            if motion.shape != (n, 2):
-                raise ValueError(
-                    f"motion_arcsec_s must have the shape ({n}, 2), not {motion.shape}"
-                )
+        motion = _pairs(motion_arcsec_s, n, "motion_arcsec_s")
+        if motion is not None:
             clock = table["rmsTime"].to_numpy(dtype=float)
             clock2 = np.where(np.isfinite(clock), clock, self.timing_s) ** 2
             clock2 = clock2 + table["digits_time_s"].to_numpy(dtype=float) ** 2 / 12.0
@@ -443,6 +550,12 @@ class ErrorModel:
             common * self.scale,
             night,
             source,
+            self._shared(
+                arc_used,
+                np.where(implied, np.minimum(ra, dec), 0.0),
+                motion,
+                _pairs(sunward_per_au, n, "sunward_per_au"),
+            ),
         )
 
     def _sigmas(
@@ -480,6 +593,15 @@ class ErrorModel:
             has_dec,
             source,
         )
+
+
+def _pairs(values: ArrayLike | None, n: int, name: str) -> FloatArray | None:
+    if values is None:
+        return None
+    pairs = np.asarray(values, dtype=float)
+    if pairs.shape != (n, 2):
+        raise ValueError(f"{name} must have the shape ({n}, 2), not {pairs.shape}")
+    return pairs
 
 
 def _marked(

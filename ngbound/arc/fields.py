@@ -7,6 +7,8 @@ gets masks and words the sentence, because only the caller knows file, line and 
 """
 
 from dataclasses import dataclass
+from dataclasses import fields as dataclass_fields
+from typing import Any
 
 import erfa
 import numpy as np
@@ -20,18 +22,52 @@ FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
 
-def byte_matrix(texts: NDArray[np.object_]) -> tuple[NDArray[np.uint8], IntArray]:
-    """Texts (n,) as bytes (n, w), zero-padded, and their lengths (n,); a non-ASCII character
-    becomes ``?``."""
+LONGEST = 80
+"""Characters of a number or an instant beyond which it is not looked at: no form allows as many."""
+
+
+@dataclass(frozen=True, eq=False)
+class Packed:
+    """A column of texts as bytes: ``turned`` (w, n), zero-padded, and ``length`` (n,)."""
+
+    turned: NDArray[np.uint8]
+    length: IntArray
+
+    def __len__(self) -> int:
+        return len(self.length)
+
+    def take(self, rows: NDArray[Any]) -> "Packed":
+        """The texts of some rows (positions or mask)."""
+        return Packed(self.turned[:, rows], self.length[rows])
+
+    def texts(self) -> NDArray[np.object_]:
+        """The texts (n,) themselves."""
+        width, n = self.turned.shape
+        lines = np.full((n, width + 1), 10, dtype=np.uint8)
+        lines[:, :width] = self.turned.T
+        if n and int(self.length.min()) < width:
+            lines = lines[lines != 0]
+        flat = lines.tobytes().decode("utf-8")
+        out = np.empty(n, dtype=object)
+        out[:] = flat.split("\n")[:-1]
+        return out
+
+
+def pack(texts: NDArray[np.object_]) -> Packed:
+    """Texts (n,) as bytes; a character that is not ASCII becomes ``?``, and so does a text of more
+    than `LONGEST` characters."""
+    cut = [t if len(t) <= LONGEST else "?" for t in texts]
     try:
-        packed = np.array(texts, dtype="S") if len(texts) else np.zeros(0, dtype="S1")
+        packed = np.array(cut, dtype="S") if cut else np.zeros(0, dtype="S1")
     except UnicodeEncodeError:
-        packed = np.array([t.encode("ascii", "replace") for t in texts], dtype="S")
-    width = max(packed.dtype.itemsize, 1)
+        packed = np.array([t.encode("ascii", "replace") for t in cut], dtype="S")
     if packed.dtype.itemsize == 0:
         packed = packed.astype("S1")
+    width = packed.dtype.itemsize
     matrix = packed.view(np.uint8).reshape(len(packed), width)
-    return matrix, np.char.str_len(packed).astype(np.int64)
+    return Packed(
+        np.ascontiguousarray(matrix.T), np.char.str_len(packed).astype(np.int64)
+    )
 
 
 def is_digit(matrix: NDArray[np.uint8]) -> BoolArray:
@@ -43,7 +79,8 @@ def is_digit(matrix: NDArray[np.uint8]) -> BoolArray:
 class Decimals:
     """A parsed column of decimal numbers: value (NaN where not ok) and lexical facts.
 
-    ``places`` counts the digits after the point, ``width`` the characters without the sign.
+    ``places`` counts the digits after the point, ``width`` the characters without the sign;
+    ``point`` tells where a point stands, ``bare_point`` where no digit stands before it.
     """
 
     value: FloatArray
@@ -52,52 +89,63 @@ class Decimals:
     ok: BoolArray
     leading_zero: BoolArray
     plus: BoolArray
+    minus: BoolArray
+    point: BoolArray
     bare_point: BoolArray
+
+    def take(self, rows: NDArray[Any]) -> "Decimals":
+        """The facts of some rows (positions, which may repeat)."""
+        return Decimals(**{f.name: getattr(self, f.name)[rows] for f in dataclass_fields(self)})
 
 
 EXACT_DIGITS = 15
 """Digits that an int64 mantissa and a power of ten hold exactly as floats: their ratio is then
 the correctly rounded value."""
+_POWERS = 10.0 ** np.arange(EXACT_DIGITS + 1)
 
 
-def parse_decimals(texts: NDArray[np.object_]) -> Decimals:
+def parse_decimals(texts: NDArray[np.object_] | Packed) -> Decimals:
     """Decimal numbers without exponent (n,): optional sign, digits, optional point."""
-    matrix, length = byte_matrix(texts)
-    n, width = matrix.shape
-    turned = np.ascontiguousarray(matrix.T)
+    packed = texts if isinstance(texts, Packed) else pack(texts)
+    turned, length = packed.turned, packed.length
+    n, width = len(packed), len(turned)
     minus, plus = turned[0] == 45, turned[0] == 43
-    signed = (minus | plus).astype(np.int64)
+    signed = minus | plus
     mantissa = np.zeros(n, dtype=np.int64)
-    digits = np.zeros(n, dtype=np.int64)
-    places = np.zeros(n, dtype=np.int64)
-    points = np.zeros(n, dtype=np.int64)
+    digits = np.zeros(n, dtype=np.uint8)
+    places = np.zeros(n, dtype=np.uint8)
+    points = np.zeros(n, dtype=np.uint8)
     leading = np.zeros(n, dtype=bool)
     for j in range(width):
-        byte = turned[j]
-        digit = (byte >= 48) & (byte <= 57)
+        byte = turned[j] - np.uint8(48)
+        digit = byte <= 9
         if j < 2:
-            leading |= (byte == 48) & (signed == j)
+            leading |= (byte == 0) & (signed == j)
         if j < EXACT_DIGITS + 2:
-            mantissa = np.where(digit, mantissa * 10 + (byte.astype(np.int64) - 48), mantissa)
+            np.multiply(mantissa, 10, out=mantissa, where=digit)
+            np.add(mantissa, byte, out=mantissa, where=digit)
         digits += digit
         places += digit & (points > 0)
-        points += byte == 46
+        points += turned[j] == 46
     ok = (digits + points + signed == length) & (points <= 1) & (digits >= 1)
     value = np.full(n, np.nan)
     short = ok & (digits <= EXACT_DIGITS)
-    ratio = mantissa[short] / 10.0 ** places[short]
-    value[short] = np.where(minus[short], -ratio, ratio)
+    np.divide(mantissa, _POWERS[np.minimum(places, EXACT_DIGITS)], out=value, where=short)
+    np.negative(value, out=value, where=short & minus)
     long = ok & ~short
     if long.any():
-        value[long] = np.ascontiguousarray(matrix[long]).view(f"S{width}").ravel().astype(float)
+        some = np.ascontiguousarray(turned[:, long].T)
+        value[long] = some.view(f"S{width}").ravel().astype(float)
     integer_digits = digits - places
     return Decimals(
         value=value,
-        places=places,
+        places=places.astype(np.int64),
         width=length - signed,
         ok=ok,
         leading_zero=ok & leading & (integer_digits > 1),
         plus=ok & plus,
+        minus=ok & minus,
+        point=points > 0,
         bare_point=ok & (integer_digits == 0),
     )
 
@@ -131,9 +179,16 @@ def month_start(year: IntArray, month: IntArray) -> IntArray:
 def civil_day(year: IntArray, month: IntArray, day: IntArray) -> tuple[IntArray, BoolArray]:
     """MJD of calendar dates (n,), and where the date exists."""
     ok = (month >= 1) & (month <= 12) & (year >= 1)
-    safe_month, safe_year = np.where(ok, month, 1), np.where(ok, year, 2000)
-    start = month_start(safe_year, safe_month)
-    following = month_start(safe_year + (safe_month == 12), safe_month % 12 + 1)
+    count = np.where(ok, year * 12 + month - 1, 24000)
+    first = int(count.min()) if len(count) else 24000
+    span = (int(count.max()) if len(count) else 24000) - first + 2
+    if span <= 200_000:  # a table of month starts is quicker than the calendar of numpy
+        months = np.arange(first, first + span)
+        starts = month_start(months // 12, months % 12 + 1)
+        start, following = starts[count - first], starts[count - first + 1]
+    else:
+        start = month_start(count // 12, count % 12 + 1)
+        following = month_start((count + 1) // 12, (count + 1) % 12 + 1)
     ok &= (day >= 1) & (day <= following - start)
     return start + day - 1, ok
 
@@ -156,67 +211,70 @@ class Times:
     places: IntArray
     well_formed: BoolArray
     on_calendar: BoolArray
+    leap: BoolArray
 
 
-def parse_times(texts: NDArray[np.object_]) -> Times:
+def parse_times(texts: NDArray[np.object_] | Packed) -> Times:
     """``YYYY-MM-DDThh:mm:ss[.f]Z`` (n,), with 24:00:00 taken as 0 h of the next day and leap
     seconds as 86400.x.
 
     A second ``:60`` is accepted on days that did end in a leap second and, as the ADES schema does,
     at the end of any June or December from 2017 on.
     """
-    matrix, length = byte_matrix(texts)
-    n, width = matrix.shape
-    if width < 20:
-        matrix = np.pad(matrix, ((0, 0), (0, 20 - width)))
-        width = 20
-    rows = np.arange(n)
+    packed = texts if isinstance(texts, Packed) else pack(texts)
+    turned, length = packed.turned, packed.length
+    n = len(packed)
+    if len(turned) < 20:
+        turned = np.vstack([turned, np.zeros((20 - len(turned), n), dtype=np.uint8)])
     ok = length >= 20
-    layout = np.frombuffer(b"9999-99-99T99:99:99", dtype=np.uint8)
-    wants_digit = layout == 57
-    head = matrix[:, :19]
-    ok &= is_digit(head[:, wants_digit]).all(axis=1)
-    ok &= (head[:, ~wants_digit] == layout[~wants_digit]).all(axis=1)
-    last = np.maximum(length - 1, 0)
-    ok &= matrix[rows, last] == 90
-    tail = matrix[:, 19:].copy()
-    tail[rows[ok], last[ok] - 19] = 0
-    fraction_length = np.maximum(length - 20, 0)
-    has_fraction = fraction_length > 0
-    ok &= np.where(has_fraction, (tail[:, 0] == 46) & (fraction_length > 1), True)
-    ok &= is_digit(tail[:, 1:]).sum(axis=1) == np.maximum(fraction_length - 1, 0)
-    fraction = np.zeros(n)
-    read = ok & has_fraction
-    if read.any():
-        figures = np.zeros(n, dtype=np.int64)
-        for j in range(1, min(tail.shape[1], EXACT_DIGITS + 1)):
-            byte = tail[:, j].astype(np.int64)
-            figures = np.where(byte >= 48, figures * 10 + (byte - 48), figures)
-        kept = np.minimum(fraction_length - 1, EXACT_DIGITS)
-        fraction = np.where(read, figures / 10.0 ** np.maximum(kept, 0), 0.0)
-
-    value = np.where(is_digit(head), head.astype(np.int64) - 48, 0)
-    year = value[:, 0] * 1000 + value[:, 1] * 100 + value[:, 2] * 10 + value[:, 3]
-    month, day = value[:, 5] * 10 + value[:, 6], value[:, 8] * 10 + value[:, 9]
-    hour, minute = value[:, 11] * 10 + value[:, 12], value[:, 14] * 10 + value[:, 15]
-    second = value[:, 17] * 10 + value[:, 18]
-    mjd, on_calendar = civil_day(year, month, day)
-    places = np.where(has_fraction, fraction_length - 1, 0)
-    ordinary = (hour <= 23) & (minute <= 59) & (second <= 59)
-    midnight = (hour == 24) & (minute == 0) & (second == 0) & (fraction == 0.0)
-    sixty = (hour == 23) & (minute == 59) & (second == 60)
-    leap = sixty & (
-        np.isin(mjd, leap_second_days())
-        | ((year >= 2017) & (month == 6) & (day == 30))
-        | ((year >= 2017) & (month == 12) & (day == 31))
+    for j, wanted in enumerate(b"9999-99-99T99:99:99"):
+        ok &= is_digit(turned[j]) if wanted == 57 else turned[j] == wanted
+    figures = np.zeros(n, dtype=np.int64)
+    inside = length - 1
+    for j in range(20, len(turned)):
+        digit = is_digit(turned[j])
+        ok &= digit | (j >= inside)
+        if j < 20 + EXACT_DIGITS:
+            read = digit & (j < inside)
+            np.multiply(figures, 10, out=figures, where=read)
+            np.add(figures, turned[j] - np.uint8(48), out=figures, where=read)
+    last = turned[np.clip(length - 1, 0, len(turned) - 1), np.arange(n)]
+    ok &= last == 90
+    has_fraction = length > 20
+    ok &= ~has_fraction | ((turned[19] == 46) & (length > 21))
+    places = np.where(has_fraction & ok, length - 21, 0)
+    fraction = np.where(
+        has_fraction & ok, figures / _POWERS[np.clip(places, 0, EXACT_DIGITS)], 0.0
     )
-    on_calendar &= ordinary | midnight | leap
+
+    def number(*at: int) -> IntArray:
+        value = np.zeros(n, dtype=np.int64)
+        for j in at:
+            value = value * 10 + np.where(is_digit(turned[j]), turned[j] - np.uint8(48), 0)
+        return value
+
+    year, month, day = number(0, 1, 2, 3), number(5, 6), number(8, 9)
+    hour, minute, second = number(11, 12), number(14, 15), number(17, 18)
+    mjd, on_calendar = civil_day(year, month, day)
+    ordinary = (hour <= 23) & (minute <= 59) & (second <= 59)
+    if not ordinary.all():
+        midnight = (hour == 24) & (minute == 0) & (second == 0) & (fraction == 0.0)
+        leap = (hour == 23) & (minute == 59) & (second == 60)
+        leap &= (
+            np.isin(mjd, leap_second_days())
+            | ((year >= 2017) & (month == 6) & (day == 30))
+            | ((year >= 2017) & (month == 12) & (day == 31))
+        )
+        ordinary |= midnight | leap
+    else:
+        midnight = leap = np.zeros(n, dtype=bool)
+    on_calendar &= ordinary
     whole = hour * 3600 + minute * 60 + second
     exact = (whole * 1_000_000 + np.round(fraction * 1e6).astype(np.int64)) / 1e6
     utc_sec = np.where(places <= 6, exact, whole + fraction)
-    utc_sec = np.where(midnight, 0.0, utc_sec)
+    utc_sec[midnight] = 0.0
     mjd = mjd + midnight
-    return Times(mjd, utc_sec, places, ok, on_calendar)
+    return Times(mjd, utc_sec, places, ok, on_calendar, leap)
 
 
 def format_times(utc_day: IntArray, utc_sec: FloatArray, places: IntArray) -> NDArray[np.object_]:
@@ -248,3 +306,37 @@ def plain_number(value: float, places: int | None = None) -> str:
         text = f"{value:.{places}f}"
         return text[1:] if text.startswith("-") and float(text) == 0.0 else text
     return np.format_float_positional(value, trim="-")
+
+
+def shortest_double(value: float, width: int) -> str:
+    """The shortest decimal or exponential form of a finite float that reads back as the same
+    number; rounded when it would take more than ``width`` characters without the sign."""
+    for precision in range(17, 0, -1):
+        rounded = float(f"{value:.{precision - 1}e}") if precision < 17 else value
+        text = _shortest(abs(rounded))
+        if len(text) <= width:
+            return f"-{text}" if rounded < 0.0 else text
+    return plain_number(value)
+
+
+def _shortest(value: float) -> str:
+    if value == 0.0:
+        return "0"
+    plain = plain_number(value)
+    mantissa, _, power = np.format_float_scientific(value, trim="-").partition("e")
+    digits = mantissa.replace(".", "")
+    forms = [plain, plain.removeprefix("0") if "." in plain else plain]
+    for before in range(len(digits) + 1):
+        exponent = int(power) + 1 - before
+        after = digits[before:]
+        forms.append(f"{digits[:before]}{'.' if after else ''}{after}e{exponent}")
+    return min(forms, key=len)
+
+
+def fitted_decimal(value: float, places: int, width: int) -> str:
+    """The shortest exact decimal of a finite float, rounded when it has more than ``places``
+    decimals or more than ``width`` characters without the sign (0: no limit)."""
+    text = plain_number(value)
+    whole, point, after = text.lstrip("-").partition(".")
+    room = places if not width else min(places, max(width - len(whole) - 1, 0))
+    return plain_number(value, room) if point and len(after) > room else text

@@ -13,7 +13,7 @@ import numpy as np
 
 from ngbound.arc.ades_rules import COLUMNS, OPTICAL, kind_of_columns
 from ngbound.arc.fields import plain_number
-from ngbound.arc.observations import ObjectArray, Records, concatenate
+from ngbound.arc.records import ObjectArray, Records, concatenate
 from ngbound.arc.report80 import report80_records
 from ngbound.errors import ArcError
 

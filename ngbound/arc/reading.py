@@ -9,12 +9,14 @@ from typing import Any
 from ngbound.arc.ades_psv import psv_records
 from ngbound.arc.ades_xml import xml_records
 from ngbound.arc.json_records import json_records
-from ngbound.arc.observations import Arc, Records, assemble
+from ngbound.arc.observations import Arc, assemble
+from ngbound.arc.records import Records
 from ngbound.arc.report80 import HEADER_KEYS, looks_like_80, report80_records
 from ngbound.arc.whole_file import MAX_BYTES, PathLike, read_whole
 from ngbound.errors import ArcError
 
 CONTROL = re.compile(r"[\x00-\x08\x0b\x0c\x0e-\x1f\x7f\ufffe\uffff]")
+CONTROL_BYTES = bytes(b for b in (*range(32), 127) if b not in b"\t\n\r")
 FORMATS = "ADES PSV, ADES XML, the 80-column format, or JSON with such records"
 
 
@@ -59,11 +61,11 @@ def records_of(content: bytes, source: str) -> Records:
     wide = content[:2] in (b"\xff\xfe", b"\xfe\xff")
     if not wide and b"\x00" in content:
         raise ArcError(f"{source}: this is a binary file; give {FORMATS}.", file=source)
-    start = content.removeprefix(b"\xef\xbb\xbf").lstrip()
+    start = content[:50000].removeprefix(b"\xef\xbb\xbf").lstrip() or content.lstrip()[:1]
     if start[:1] == b"<":
         return xml_records(content.removeprefix(b"\xef\xbb\xbf").lstrip(), source)
     text = _decode(content, source)
-    head = text.lstrip()
+    head = text[:50000].lstrip() or text.lstrip()[:50000]
     if head[:1] in "[{":
         return json_records(text, source)
     first_lines = [line for line in head[:20000].split("\n") if line.strip()]
@@ -108,8 +110,11 @@ def _decode(content: bytes, source: str) -> str:
             file=source,
             line=line,
         ) from error
-    text = text.replace("\r\n", "\n").replace("\r", "\n").removesuffix("\x1a")
-    control = CONTROL.search(text)
+    if "\r" in text:
+        text = text.replace("\r\n", "\n").replace("\r", "\n")
+    text = text.removesuffix("\x1a")
+    suspect = len(content.translate(None, CONTROL_BYTES)) != len(content) or b"\xef\xbf" in content
+    control = CONTROL.search(text) if suspect else None
     if control:
         line = text.count("\n", 0, control.start()) + 1
         raise ArcError(

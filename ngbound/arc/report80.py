@@ -20,7 +20,7 @@ from numpy.typing import NDArray
 from ngbound.arc.ades_rules import OFFSET, OPTICAL, RADAR
 from ngbound.arc.designations import unpack_columns
 from ngbound.arc.fields import civil_day, format_times, plain_number
-from ngbound.arc.observations import Angles, ObjectArray, Records
+from ngbound.arc.records import Angles, ObjectArray, Records
 from ngbound.errors import ArcError
 
 WIDTH = 80

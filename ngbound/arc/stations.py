@@ -96,7 +96,7 @@ def geodetic_to_itrf_km(
     """Earth-fixed position (..., 3) in km from WGS84 longitude, geodetic latitude and height above
     the ellipsoid.
 
-    Source: B. Hofmann-Wellenhof et al., GNSS (Springer 2008), eq. 8.7.
+    Source: the closed form of any textbook of geodesy, written from memory.
     """
     lat = np.radians(np.asarray(latitude_deg, dtype=float))
     height = np.asarray(altitude_m, dtype=float) / 1e3

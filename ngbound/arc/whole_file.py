@@ -56,7 +56,7 @@ def read_whole(path: PathLike, *, max_bytes: int = MAX_BYTES) -> bytes:
             "split it.",
             file=str(place),
         )
-    if not content.strip():
+    if not content[:1000].strip() and not content.strip():
         raise ArcError(
             f"{place}: the file is empty; give a file with observations.", file=str(place)
         )

@@ -1,10 +1,11 @@
 """Differential correction of an orbit, with or without thrust.
 
-Imports numpy, scipy, constants, errors, arc, sky, motion. The normal equations of C. F. Gauss 1809, Theoria Motus, solved by
-a singular value decomposition of the whitened, column-scaled design matrix, damped after K. Levenberg 1944,
-Q. Appl. Math. 2, 164 and D. W. Marquardt 1963, SIAM J. 11, 431.
+Imports numpy, constants, errors, arc, motion. The normal equations of C. F. Gauss 1809, Theoria
+Motus, solved by a singular value decomposition of the whitened, column-scaled design matrix, damped
+after K. Levenberg 1944, Q. Appl. Math. 2, 164 and D. W. Marquardt 1963, SIAM J. 11, 431.
 """
 
+from collections.abc import Callable
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -31,8 +32,14 @@ Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
 
 STATE_NAMES = ("x", "y", "z", "vx", "vy", "vz")
-MOVED_ENOUGH = 1e-3
-CHI2_SETTLED = 1e-4
+MOVED_ENOUGH = 1e-2
+"""A step that moves the whitened residuals by less, all taken together, is no step: it is a
+hundredth of a standard deviation of the parameters."""
+NOISE_FLOOR = 0.1
+"""Up to this size of the undamped step, a chi2 that cannot be lowered any more is put down to the
+rounding of the integration."""
+CHI2_SETTLED = 2e-3
+"""A rise of chi2 that does not count: the step control of the integrator moves chi2 by as much."""
 MAX_SWEEPS = 60
 MAX_DAMPING = 1e12
 UNDETERMINED = 1e-12
@@ -123,13 +130,70 @@ def linearise(
     return Linearised(theta, track, sight, partials, seen, design, chi2)
 
 
-def _solve(white: Floats, miss: Floats, damping: float) -> tuple[Floats, Floats, Floats]:
-    """Step, singular values and the scale of the columns of a damped linear problem."""
-    scale = np.linalg.norm(white, axis=0)
-    scale[scale == 0.0] = 1.0
-    u, s, vt = np.linalg.svd(white / scale, full_matrices=False)
-    gain = s / (s**2 + damping * s[0] ** 2) if damping > 0.0 else 1.0 / np.maximum(s, s[0] * 1e-15)
-    return (vt.T @ (gain * (u.T @ miss))) / scale, s, scale
+@dataclass(frozen=True, eq=False)
+class _Step:
+    """A step of the damped linear problem.
+
+    ``size``: its length in whitened residuals; ``expected``: by how much it should lower chi2;
+    ``singular``: singular values of the scaled design.
+    """
+
+    step: Floats
+    size: float
+    expected: float
+    singular: Floats
+
+    @classmethod
+    def of(cls, white: Floats, miss: Floats, damping: float) -> "_Step":
+        scale = np.linalg.norm(white, axis=0)
+        scale[scale == 0.0] = 1.0
+        u, s, vt = np.linalg.svd(white / scale, full_matrices=False)
+        if damping > 0.0:
+            gain = s / (s**2 + damping * s[0] ** 2)
+        else:
+            gain = 1.0 / np.maximum(s, s[0] * 1e-15)
+        step = (vt.T @ (gain * (u.T @ miss))) / scale
+        moved = white @ step
+        return cls(
+            step,
+            float(np.linalg.norm(moved)),
+            float(miss @ miss - np.sum((miss - moved) ** 2)),
+            s,
+        )
+
+
+def _downhill(
+    here: Linearised,
+    white: Floats,
+    miss: Floats,
+    full: _Step,
+    damping: float,
+    at: Callable[[Floats], Linearised],
+) -> tuple[Linearised | None, _Step, float]:
+    """The least damped step that does not raise chi2, or None; with the damping it took."""
+    while damping <= MAX_DAMPING:
+        step = full if damping == 0.0 else _Step.of(white, miss, damping)
+        if damping > 0.0 and step.size < 0.1 * MOVED_ENOUGH:
+            break
+        try:
+            there = at(here.theta + step.step)
+        except PropagationError:
+            there = None
+        if there is not None and there.chi2 <= here.chi2 + CHI2_SETTLED:
+            return there, step, damping
+        damping = max(damping * 10.0, 1e-9)
+    return None, full, damping
+
+
+def _settled(here: Linearised, white: Floats, full: _Step, sweep: int) -> Correction:
+    if full.singular[-1] < UNDETERMINED * full.singular[0]:
+        raise FitError(
+            "These observations do not determine the orbit: some change of it moves no "
+            "observation. Add observations over a longer time, or fit fewer thrust components.",
+            theta=here.theta,
+        )
+    normal, cov, condition = _covariance(white)
+    return Correction(here, normal, cov, sweep, condition)
 
 
 def _covariance(white: Floats) -> tuple[Floats, Floats, float]:
@@ -185,50 +249,26 @@ def differential_correction(
         ) from error
     damping = 0.0
     for sweep in range(1, max_sweeps + 1):
-        rows = here.design[keep].reshape(-1, theta.size)
-        white = kept.whiten(rows)
+        white = kept.whiten(here.design[keep].reshape(-1, theta.size))
         miss = kept.whiten(here.seen[keep].ravel())
-        while True:
-            step, s, _ = _solve(white, miss, damping)
-            size = float(np.linalg.norm(white @ step))
-            expected = here.chi2 - float(np.sum((miss - white @ step) ** 2))
-            try:
-                there = at(here.theta + step)
-            except PropagationError:
-                there = None
-            if there is not None and there.chi2 <= here.chi2 + CHI2_SETTLED:
-                break
-            if size < MOVED_ENOUGH:
-                there = here
-                break
-            damping = max(damping * 10.0, 1e-9)
-            if damping > MAX_DAMPING:
-                raise FitError(
-                    "The differential correction found no step that lowers the residuals; give a "
-                    "better first orbit, or shorten the arc.",
-                    theta=here.theta,
-                    chi2=here.chi2,
-                )
-        settled = size < MOVED_ENOUGH or (
-            damping == 0.0
-            and abs(here.chi2 - there.chi2) < CHI2_SETTLED
-            and expected < CHI2_SETTLED
-        )
-        gain = (here.chi2 - there.chi2) / expected if expected > 0.0 else 1.0
+        full = _Step.of(white, miss, 0.0)
+        if full.size < MOVED_ENOUGH:
+            return _settled(here, white, full, sweep)
+        there, tried, damping = _downhill(here, white, miss, full, damping, at)
+        if there is None:
+            if full.size < NOISE_FLOOR:
+                return _settled(here, white, full, sweep)
+            raise FitError(
+                "The differential correction found no step that lowers the residuals; give a "
+                "better first orbit, or shorten the arc.",
+                theta=here.theta,
+                chi2=here.chi2,
+            )
+        gain = (here.chi2 - there.chi2) / tried.expected if tried.expected > 0.0 else 1.0
         if damping > 0.0:
-            damping *= 0.01 if settled or gain > 0.75 else 0.1 if gain > 0.25 else 1.0
+            damping *= 0.01 if gain > 0.75 else 0.1 if gain > 0.25 else 1.0
             damping = damping if damping > 1e-10 else 0.0
         here = there
-        if settled and damping == 0.0:
-            rows = here.design[keep].reshape(-1, theta.size)
-            normal, cov, condition = _covariance(kept.whiten(rows))
-            if s[-1] < UNDETERMINED * s[0]:
-                raise FitError(
-                    "These observations do not determine the orbit: some change of it moves no "
-                    "observation. Add observations over a longer time, or fit fewer thrust components.",
-                    theta=here.theta,
-                )
-            return Correction(here, normal, cov, sweep, condition)
     raise FitError(
         f"The differential correction did not converge in {max_sweeps} steps (chi2 = {here.chi2:.6g}); "
         "give a better first orbit, or look for records of another object.",

@@ -7,7 +7,7 @@ enter. Imports numpy, errors, arc, sky, motion and this room.
 
 import math
 from collections.abc import Callable
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -24,6 +24,7 @@ from ngbound.fit.least_squares import (
     thrust_of,
 )
 from ngbound.fit.outliers import RECOVER_CHI2, REJECT_CHI2, judge, residual_chi2
+from ngbound.fit.shared_estimates import freed
 from ngbound.motion import ForceModel, Records, Thrust, integrate_track
 from ngbound.sky import direction_to_angles, load_ephemeris
 
@@ -85,7 +86,10 @@ def settle(
         theta = correction.at.theta
         if not reject:
             break
-        chi2 = residual_chi2(correction.at.seen, correction.at.design, correction.cov, noise, keep)
+        seen, design, cov = correction.at.seen, correction.at.design, correction.cov
+        if noise.shared is not None:
+            seen, design, cov = freed(seen, design, noise, keep)
+        chi2 = residual_chi2(seen, design, cov, noise, keep)
         new = judge(chi2, keep, REJECT_CHI2 * loose, RECOVER_CHI2 * loose)
         if 2 * int(new.sum()) < theta.size + 4 or new.sum() < FEW:
             break
@@ -117,7 +121,7 @@ def at_epoch(
 
 def _spread_rad(design: Floats, cov: Floats) -> Floats:
     """The orbit's own uncertainty on the sky, (n,) radians: root of the trace of its covariance."""
-    return np.sqrt(np.einsum("nip,pq,niq->n", design, cov, design))
+    return np.sqrt(np.sum((design @ cov) * design, axis=(1, 2)))
 
 
 def _next_window(
@@ -265,6 +269,8 @@ def find_orbit(
     FirstOrbitError
         If no preliminary orbit exists or none grows over the arc.
     """
+    # shared errors are small against what tells one orbit from another
+    noise = replace(noise, shared=None)
     sun = load_ephemeris().position_au("sun", records.tdb_d)
     ra, dec = direction_to_angles(records.basis[:, 2])
     sigma = np.stack([noise.sigma_ra_arcsec, noise.sigma_dec_arcsec], axis=1) * ARCSEC_RAD

@@ -39,7 +39,7 @@ def residual_chi2(seen: Floats, design: Floats, cov: Floats, noise: Noise, keep:
     noise : Noise of all n records
     keep : (n,) records in the fit
     """
-    own = np.einsum("nip,pq,njq->nij", design, cov, design)
+    own = np.matmul(design @ cov, np.swapaxes(design, 1, 2))
     sign = np.where(keep, -1.0, 1.0)[:, None, None]
     error = np.zeros((seen.shape[0], 2, 2))
     error[:, 0, 0] = noise.sigma_ra_arcsec**2

@@ -20,6 +20,16 @@ def motion_rad_d(sight: Sight, records: Records, observers: Observers) -> Floats
     return np.einsum("nij,nj->ni", records.basis[:, :2, :], relative) / distance[:, None]
 
 
+def sunward_per_au(sight: Sight, records: Records, epoch_d: float) -> Floats:
+    """Direction object to Sun projected east and north, over the distance to the observer, (n, 2)
+    per au."""
+    sun = load_ephemeris().position_au("sun", epoch_d + sight.tau_d)
+    away = sun - (sight.rho_au + records.observer_au)
+    toward = away / np.linalg.norm(away, axis=1)[:, None]
+    flat = np.einsum("nij,nj->ni", records.basis[:, :2, :], toward)
+    return flat / np.linalg.norm(sight.rho_au, axis=1)[:, None]
+
+
 def residual_table(
     used: Arc,
     records: Records,

@@ -17,8 +17,10 @@ from ngbound.constants import ARCSEC_RAD
 from ngbound.errors import FitError
 from ngbound.fit.least_squares import Correction, parameter_names, thrust_of
 from ngbound.fit.orbit_search import Converged, at_epoch, find_orbit, middle_epoch, settle
+from ngbound.fit.noise_scale import StationScale, rescaled
 from ngbound.fit.outliers import residual_chi2
-from ngbound.fit.residuals import motion_rad_d, residual_table
+from ngbound.fit.residuals import motion_rad_d, residual_table, sunward_per_au
+from ngbound.fit.shared_estimates import JointSolution, freed, shared_table, solve_jointly
 from ngbound.motion import ForceModel, Neighbourhood, Orbit, Records, Thrust
 from ngbound.sky import Observers, load_ephemeris, observer_states
 
@@ -26,6 +28,9 @@ Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
 AU_PER_D2 = u.au / u.day**2
 MIN_OBSERVATIONS = 3
+RESCALED_LOOSE = 2.0
+"""Bars of the outlier rule are this much higher once the errors are the scatter of the residuals:
+chi2 16, which one normal record in 3000 exceeds, not 8, which one in 55 does."""
 WEAK_DISTANCE_ERROR = 0.1
 """Relative error of the distance above which a fit warns that it is only linear theory."""
 HOPELESS_DISTANCE_ERROR = 2.0
@@ -42,7 +47,9 @@ class Fit:
         The whole arc, and its usable observations in order of time (n rows).
     error_model : ErrorModel
     noise : Noise
-        Of the used observations, rejected ones included.
+        Of the used observations, rejected ones included, as rescaled by ``scales``.
+    scales : tuple of StationScale
+        Stations whose errors were rescaled.
     orbit : Orbit
         With the fitted thrust in it.
     components : str
@@ -80,6 +87,7 @@ class Fit:
     observers: Observers = field(repr=False)
     correction: Correction = field(repr=False)
     rounds: int
+    scales: tuple[StationScale, ...] = ()
 
     n_state = 6
 
@@ -170,15 +178,24 @@ class Fit:
         )
 
     @cached_property
+    def joint(self) -> JointSolution:
+        """Parameters and shared errors solved together."""
+        design = self.design.reshape(-1, 2, self.theta.size)
+        return solve_jointly(self.seen, design, self.noise, self.keep)
+
+    @cached_property
+    def offsets(self) -> pd.DataFrame:
+        """Estimates of the shared errors beside their priors and what is published:
+        `ngbound.fit.shared_estimates.shared_table`."""
+        return shared_table(self.noise, self.joint, self.theta.size)
+
+    @cached_property
     def residuals(self) -> pd.DataFrame:
         """The residual table; columns in `ngbound.fit.residuals.residual_table`."""
-        chi2 = residual_chi2(
-            self.seen,
-            self.design.reshape(-1, 2, self.theta.size),
-            self.theta_cov,
-            self.noise,
-            self.keep,
+        seen, design, cov = freed(
+            self.seen, self.design.reshape(-1, 2, self.theta.size), self.noise, self.keep
         )
+        chi2 = residual_chi2(seen, design, cov, self.noise, self.keep)
         return residual_table(
             self.used,
             self.records,
@@ -197,15 +214,26 @@ class Fit:
         return Neighbourhood.around(
             self.correction.at.track,
             self.records.subset(self.keep),
-            self.noise.mask(self.keep).factors(),
+            self._kept_noise.factors(),
             self.thrust,
             self.components,
             self.orbit.forces,
         )
 
+    @cached_property
+    def _kept_noise(self) -> Noise:
+        return self.noise.mask(self.keep)
+
     def chi2_many(self, thetas: ArrayLike) -> Floats:
         """Exact chi2 (m,) of parameter vectors (m, p); inf where an orbit cannot be integrated."""
-        return self.neighbourhood.chi2(thetas)
+        if self._kept_noise.modes is None:
+            return self.neighbourhood.chi2(thetas)
+        chi2, seen = self.neighbourhood.chi2(thetas, want_residuals=True)
+        good = np.isfinite(chi2)
+        if good.any():
+            white = self._kept_noise.whiten(seen[good].reshape(int(good.sum()), -1).T)
+            chi2[good] = np.sum(white**2, axis=0)
+        return chi2
 
     @property
     def distance_range_au(self) -> tuple[float, float]:
@@ -233,6 +261,7 @@ class Fit:
             "condition": self.correction.condition,
             "distance_error": self.distance_error,
             "weakness": self.weakness,
+            "station_scales": [scale.to_dict() for scale in self.scales],
         }
 
     def __str__(self) -> str:
@@ -263,6 +292,7 @@ def fit_orbit(
     epoch_tdb_d: float | None = None,
     keep: ArrayLike | None = None,
     progress: Callable[[str], None] | None = None,
+    noise: Noise | None = None,
 ) -> Fit:
     """Fit an orbit to an arc, by gravity alone or with thrust.
 
@@ -283,6 +313,8 @@ def fit_orbit(
         Observations to start with (with ``reject=False``: the ones to use).
     progress : callable, optional
         Is given a sentence now and then.
+    noise : Noise, optional
+        Of the used observations, instead of what the error model says; taken as it is.
 
     Raises
     ------
@@ -310,7 +342,8 @@ def fit_orbit(
         table["ra_rad"].to_numpy(),
         table["dec_rad"].to_numpy(),
     )
-    noise = error_model.apply(used)
+    given = noise
+    noise = error_model.apply(used) if given is None else given
     components = "" if thrust is None else thrust.components
     mask = np.ones(len(used), dtype=bool) if keep is None else np.asarray(keep, dtype=bool).copy()
     epoch = middle_epoch(records) if epoch_tdb_d is None else float(epoch_tdb_d)
@@ -331,22 +364,18 @@ def fit_orbit(
     amounts = np.zeros(3) if guess is None else guess.amounts_au_d2
     theta = np.concatenate([theta[:6], amounts[free]])
     found = settle(theta, epoch, records, noise, mask, guess, components, forces, reject)
-    # timing errors act along the motion, which is known only now
-    motion = motion_rad_d(found.correction.at.sight, records, observers) / ARCSEC_RAD / 86400.0
-    noise = error_model.apply(used, motion)
-    found = settle(
-        found.correction.at.theta,
-        epoch,
-        records,
-        noise,
-        found.keep,
-        guess,
-        components,
-        forces,
-        reject,
-    )
+    scales: tuple[StationScale, ...] = ()
+    if given is None:
+        # timing errors act along the motion, which is known only now
+        sight = found.correction.at.sight
+        motion = motion_rad_d(sight, records, observers) / ARCSEC_RAD / 86400.0
+        sunward = sunward_per_au(sight, records, epoch)
+        noise = error_model.apply(used, motion, sunward)
+        found, noise, scales = _settle_with_scales(
+            used, error_model, noise, found, records, guess, components, forces, reject
+        )
     fit = _as_fit(
-        arc, used, error_model, noise, records, observers, found, guess, components, forces
+        arc, used, error_model, noise, records, observers, found, guess, components, forces, scales
     )
     if fit.distance_error > HOPELESS_DISTANCE_ERROR:
         raise FitError(
@@ -360,6 +389,44 @@ def fit_orbit(
     return fit
 
 
+def _settle_with_scales(
+    used: Arc,
+    error_model: ErrorModel,
+    table_noise: Noise,
+    found: Converged,
+    records: Records,
+    thrust: Thrust | None,
+    components: str,
+    forces: ForceModel,
+    reject: bool,
+) -> tuple[Converged, Noise, tuple[StationScale, ...]]:
+    """Settle, and rescale the errors of stations with enough records.
+
+    Outliers are judged by the errors of the table first, and once more, by a higher bar, after
+    these have been replaced by the scatter of the very residuals.
+    """
+    stations = used.table["stn"].to_numpy(dtype=object)
+    allowed = error_model.rescalable(table_noise)
+    noise, scales = table_noise, ()
+    loose = 1.0
+    for turn in range(3):
+        found = settle(
+            found.correction.at.theta, found.epoch_d, records, noise, found.keep, thrust,
+            components, forces, reject and turn < 2, loose,
+        )  # fmt: skip
+        at = found.correction.at
+        if turn == 2 or not allowed.any():
+            break
+        noise, scales = rescaled(
+            at.seen, at.design, table_noise, found.keep, stations, allowed,
+            error_model.rescale_least,
+        )  # fmt: skip
+        if not scales:
+            break
+        loose = RESCALED_LOOSE
+    return found, noise, scales
+
+
 def _as_fit(
     arc: Arc,
     used: Arc,
@@ -371,6 +438,7 @@ def _as_fit(
     thrust: Thrust | None,
     components: str,
     forces: ForceModel,
+    scales: tuple[StationScale, ...],
 ) -> Fit:
     at = found.correction.at
     orbit = Orbit(
@@ -395,6 +463,7 @@ def _as_fit(
         observers=observers,
         correction=found.correction,
         rounds=found.rounds,
+        scales=scales,
     )
 
 
@@ -475,7 +544,7 @@ def compare_fits(null: Fit, push: Fit) -> Comparison:
             f"The second fit must have more parameters than the first; it has {push.theta.size} and the "
             f"first {null.theta.size}. Swap them?"
         )
-    refitted = not np.array_equal(null.keep, push.keep)
+    refitted = not np.array_equal(null.keep, push.keep) or null.scales != push.scales
     if refitted:
         either = null.keep | push.keep
         null, push = (
@@ -488,6 +557,7 @@ def compare_fits(null: Fit, push: Fit) -> Comparison:
                 reject=False,
                 epoch_tdb_d=f.orbit.epoch_tdb_d,
                 keep=either,
+                noise=push.noise,
             )
             for f in (null, push)
         )

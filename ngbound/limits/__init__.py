@@ -34,9 +34,16 @@ sigma_A -> sigma_theta D sqrt(720 / N) / T^2 (R. L. Gluckstern 1963, NIM 24, 381
 
 from ngbound.limits.fit_protocol import ThrustFit
 from ngbound.limits.information import AU_D2, ThrustInformation, thrust_information
-from ngbound.limits.injection import Rate, Recovery, inject_and_recover, linear_refit
+from ngbound.limits.injection import (
+    PowerCurve,
+    Rate,
+    Recovery,
+    inject_and_recover,
+    power_curve,
+)
 from ngbound.limits.posterior import Posterior, sample_posterior
 from ngbound.limits.priors import PRIOR_NAMES, ThrustPrior, thrust_prior
+from ngbound.limits.refit import ExactRefit, LinearRefit, Refits, Refitter
 from ngbound.limits.threshold import (
     DetectionThreshold,
     DirectionMap,
@@ -52,9 +59,14 @@ __all__ = [
     "PRIOR_NAMES",
     "DetectionThreshold",
     "DirectionMap",
+    "ExactRefit",
+    "LinearRefit",
     "Posterior",
+    "PowerCurve",
     "Rate",
     "Recovery",
+    "Refits",
+    "Refitter",
     "ThrustFit",
     "ThrustInformation",
     "ThrustPrior",
@@ -63,8 +75,8 @@ __all__ = [
     "detection_threshold",
     "flat_prior_limit",
     "inject_and_recover",
-    "linear_refit",
     "noncentrality",
+    "power_curve",
     "profile_limit",
     "sample_posterior",
     "thrust_information",

@@ -1,7 +1,6 @@
 """Room mass: what mass a limit on the thrust demands.
 
-May import: constants, errors, and the rooms arc, sky, motion, fit, limits through what they export
-(it needs only limits; the thrust law comes in as a function g(r) or its value).
+May import: constants, errors, and the rooms arc, sky, motion, fit, limits through what they export.
 
 A nucleus of mass M that loses molecules of mass m at the rate Q, with outflow speed v and a
 collimation zeta (net momentum over that of one perfect beam), is pushed with
@@ -28,12 +27,21 @@ then P(M > M_low) >= C + C_A - 1 (Bonferroni). Rates that are upper limits count
 Variance of ln M is shared out by Sobol's first-order and total indices (M. J. W. Jansen 1999). As
 ln D = (ln M - ln rho + const)/3, the density adds exactly its own variance.
 
+Results are set beside one another (`reconcile`) and quoted thresholds recomputed (`audit`) with the
+thrust information of each arc. Any acceleration a(t) moves the object by Phi(t) int Phi^-1 (0, a),
+so chi2 is a quadratic of the thrust under every law, window and direction:
+
+    chi2_i(A) = c_i - 2 b_i' A + A' F_i A       one arc, orbit projected out, own best fit = 0
+    min_A sum_i chi2_i(A) ~ chi2_(sum k_i - k)   tension under one and the same thrust
+
 Radiation pressure instead of gas: A_1 = (S/c) C_R (area/mass), so a radial limit bounds
 C_R area/mass from above and rho D from below (3 C_R / (2 area-to-mass) for a sphere).
 Sublimation: (1 - A) S cos z / r^2 = eps sigma T^4 + Z(T) L(T), Z = P / sqrt(2 pi m k T).
 """
 
-from .audit import Change, NumberAudit, RelationTest, audit_numbers
+from .arc_geometry import GeometryAudit, audit_geometry, sagitta_sigma
+from .arithmetic import Change, NumberAudit, RelationTest, audit_numbers
+from .audit import Audit, audit
 from .distributions import (
     AtMost,
     Distribution,
@@ -46,6 +54,7 @@ from .distributions import (
     Uniform,
     parse_distribution,
 )
+from .explanations import Explanation
 from .mass_bound import (
     InputShare,
     LawCheck,
@@ -65,8 +74,11 @@ from .outgassing import (
     mass_loss_rate,
     thermal_speed,
 )
+from .quoted import Geometry, QuotedPaper, QuotedResult, QuotedThreshold
 from .radiation import AreaToMass, area_to_mass, radiation_acceleration
 from .reach import RevealedRate, revealed_rate
+from .reconcile import Reconciliation, reconcile
+from .results import ThrustResult
 from .size import (
     DEFAULT_ALBEDO,
     DEFAULT_DENSITY,
@@ -87,53 +99,76 @@ from .sublimation import (
     sublimation,
     sublimation_law,
 )
+from .threshold_readings import Reading, ThresholdAudit, audit_threshold
+from .thrust_history import ArcResponse, History, Misfit, QuotedResponse, law_history
 
 __all__ = [
+    "ActiveArea",
+    "ArcResponse",
+    "AreaToMass",
+    "AtMost",
+    "Audit",
+    "BudgetDraws",
+    "Change",
     "DEFAULT_ALBEDO",
     "DEFAULT_COLLIMATION",
     "DEFAULT_DENSITY",
     "DEFAULT_SPEED_LAW",
-    "ICES",
-    "SPEED_LAWS",
-    "ActiveArea",
-    "AreaToMass",
-    "BudgetDraws",
-    "Change",
-    "NumberAudit",
-    "RelationTest",
-    "audit_numbers",
     "Distribution",
     "Emission",
+    "Explanation",
     "Fixed",
+    "Geometry",
+    "GeometryAudit",
+    "History",
+    "ICES",
     "Ice",
     "InputShare",
     "LawCheck",
     "LogNormal",
     "LogUniform",
     "MassBound",
+    "Misfit",
     "Normal",
+    "NumberAudit",
     "Outgassing",
     "Photometry",
+    "QuotedPaper",
+    "QuotedResponse",
+    "QuotedResult",
+    "QuotedThreshold",
+    "Reading",
+    "Reconciliation",
+    "RelationTest",
     "RevealedRate",
+    "SPEED_LAWS",
     "SizeCheck",
     "SpeedLaw",
     "SplitNormal",
     "Sublimation",
+    "ThresholdAudit",
+    "ThrustResult",
     "Triangular",
     "Uniform",
-    "AtMost",
     "active_area",
     "active_areas",
     "area_to_mass",
+    "audit",
+    "audit_geometry",
+    "audit_numbers",
+    "audit_threshold",
     "bounds_by_distance",
     "largest_rate",
+    "law_history",
     "mass_bound",
     "mass_loss_rate",
     "momentum_mass",
     "parse_distribution",
     "photometric_diameter_m",
     "radiation_acceleration",
+    "reconcile",
     "revealed_rate",
+    "sagitta_sigma",
     "sphere_diameter_m",
     "sphere_mass_kg",
     "sublimation",

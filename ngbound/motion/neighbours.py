@@ -28,7 +28,8 @@ Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 
 NEIGHBOUR_NAMES = ("x", "y", "z", "vx", "vy", "vz", "A1", "A2", "A3")
-GRID_EPS = 5e-6
+GRID_EPS = 1e-3
+GRID_CAP_D = 100.0
 TOLERANCE_AU = 3e-11
 SETTLED_AU = 1e-12
 
@@ -95,7 +96,7 @@ class Neighbourhood:
         span = (float(records.tdb_d.min()), float(records.tdb_d.max()))
         low = min(_lower(track), span[0])
         high = max(_upper(track), span[1])
-        coarse = integrate_track(track.epoch_d, track.state, low, high, thrust, forces, eps=GRID_EPS)
+        coarse = integrate_track(track.epoch_d, track.state, low, high, thrust, forces, GRID_EPS, GRID_CAP_D)
         partials = partials_along(track, NEIGHBOUR_NAMES, coarse)
         sight = see(track, records)
         behind = np.flatnonzero(sight.tau_d < 0.0)

@@ -140,13 +140,14 @@ def _integrate_leg(
     tau_d: float,
     forces: ForceModel,
     eps: float,
+    cap_d: float,
     breaks: Floats,
     span: tuple[float, float],
 ) -> Leg:
     n_max = FIRST_GUESS_STEPS
     while True:
         status, n, start, length, begin, power, met = integrate(
-            tab, push, physics, epoch_d, state, tau_d, eps, STEP_CAP_D, breaks, n_max
+            tab, push, physics, epoch_d, state, tau_d, eps, cap_d, breaks, n_max
         )
         if status != TOO_MANY_STEPS or n_max >= MAX_STEPS:
             break
@@ -193,6 +194,7 @@ def integrate_track(
     thrust: Thrust | None = None,
     forces: ForceModel | None = None,
     eps: float | None = None,
+    cap_d: float = STEP_CAP_D,
 ) -> Track:
     """Integrate a state over a span.
 
@@ -206,6 +208,8 @@ def integrate_track(
     forces : ForceModel, optional
     eps : float, optional
         Step control, instead of that of ``forces``.
+    cap_d : float
+        Longest step, days; beyond 40 the terms of the Moon and Mercury are under-resolved.
 
     Raises
     ------
@@ -234,7 +238,7 @@ def integrate_track(
         if push.window_kind == WINDOW_DATE:
             ends = np.array([push.window_from, push.window_to]) - epoch_d
             breaks = ends[np.isfinite(ends)]
-        args = (tab, physics, push, epoch_d, state, tau, forces, eps)
+        args = (tab, physics, push, epoch_d, state, tau, forces, eps, cap_d)
         leg = _integrate_leg(*args, breaks, (low, high))
         if push.window_kind == WINDOW_DISTANCE:
             # the crossings move a little with the thrust they switch, so they are found again until they rest

@@ -12,9 +12,12 @@ PSV = """\
 ! name Invented Ridge
 # submitter
 ! name A. Nobody
+# measurers
+! name A. Nobody
 # telescope
 ! aperture 1.5
 ! design Reflector
+! detector CCD
 permID |trkSub|mode|stn|obsTime                |ra        |dec       |rmsRA|rmsDec|astCat|mag |band
 654321 |      |CCD |G96|2024-03-01T05:06:07.8Z |123.450100|-12.345600|0.20 |0.25  |Gaia2 |20.1|V
 654321 |abc12 |CCD |G96|2024-03-01T05:26:07.80Z|123.46010 |-12.34570 |0.20 |0.25  |Gaia2 |20.2|V

@@ -10,6 +10,10 @@ from ngbound.arc import Arc, read_arc, write_psv
 from ngbound.errors import ArcError, NgboundWarning
 from tests.arc.samples import PSV, ROVING, put
 
+HEADER = (
+    "# observatory\n! mpcCode G96\n# submitter\n! name A. Nobody\n# measurers\n! name A. Nobody\n"
+    "# telescope\n! design Reflector\n! aperture 1.5\n! detector CCD\n"
+)
 HEAD = "# version=2022\npermID|mode|stn|obsTime|ra|dec|astCat\n"
 ROW = "123|CCD|G96|2024-03-01T05:06:07Z|10.5|20.5|Gaia2"
 
@@ -22,7 +26,7 @@ def test_the_sample(tmp_path: Path) -> None:
     arc = read(tmp_path, PSV)
     t = arc.table
     assert len(arc) == 3 and t.use.all() and arc.name == "654321"
-    assert t.line.tolist() == [11, 12, 13] and t.block.tolist() == [0, 0, 0]
+    assert t.line.tolist() == [14, 15, 16] and t.block.tolist() == [0, 0, 0]
     np.testing.assert_array_equal(t.ra, [123.4501, 123.4601, 123.9501])
     assert t.raText.tolist() == ["123.450100", "123.46010", "123.95010"]
     np.testing.assert_allclose(t.digits_dec_arcsec, [0.0036, 0.036, 0.036])
@@ -71,12 +75,12 @@ def test_several_blocks(tmp_path: Path) -> None:
         + "permID|mode|stn|obsTime|ra|dec|astCat\n"
         + "654321|CCD|G96|2024-03-03T05:06:07Z|10.5|20.5|Gaia2\n"
     )
-    text += "# observatory\n! mpcCode 703\n# fundingSource Nobody at all\n"
+    text += HEADER.replace("G96", "703") + "# fundingSource Nobody at all\n"
     text += "permID|mode|stn|obsTime|ra|dec|astCat\n"
     text += "654321|CCD|703|2024-03-04T05:06:07Z|10.5|20.5|Gaia2\n"
     arc = read(tmp_path, text)
     assert arc.table.block.tolist() == [0, 0, 0, -1, 1]
-    assert arc.contexts[1][1] == ("fundingSource", "Nobody at all", ())
+    assert arc.contexts[1][4] == ("fundingSource", "Nobody at all", ())
     write_psv(arc, tmp_path / "y.psv")
     again = read_arc(tmp_path / "y.psv")
     assert again.contexts == arc.contexts

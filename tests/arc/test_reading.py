@@ -134,7 +134,9 @@ XML = """<?xml version="1.0" encoding="UTF-8"?>
 <ades version="2022">
   <obsBlock>
     <obsContext>
-      <observatory><mpcCode>G96</mpcCode></observatory>
+      <observatory><mpcCode>G96</mpcCode></observatory><submitter><name>A. N.</name></submitter>
+      <measurers><name>A. N.</name></measurers><telescope><design>R</design>
+      <aperture>1.5</aperture><detector>CCD</detector></telescope>
       <comment><line>made up</line><line>twice</line></comment>
       <fundingSource>nobody</fundingSource>
     </obsContext>
@@ -156,8 +158,8 @@ def test_xml(tmp_path: Path) -> None:
     arc = read_arc(put(tmp_path, "a.xml", XML))
     assert arc.table.raText.tolist() == ["123.4500", "123.5"]
     assert arc.table.remarks.tolist() == ["a < b & c", ""]
-    assert arc.table.block.tolist() == [0, -1] and arc.name == "ab12" and arc.table.line[0] == 10
-    assert arc.contexts[0][1] == ("comment", "", (("line", "made up"), ("line", "twice")))
+    assert arc.table.block.tolist() == [0, -1] and arc.name == "ab12" and arc.table.line[0] == 12
+    assert arc.contexts[0][4] == ("comment", "", (("line", "made up"), ("line", "twice")))
     write_xml(arc, tmp_path / "b.xml")
     again = read_arc(tmp_path / "b.xml")
     same(arc, again)
@@ -182,12 +184,12 @@ def test_psv_through_xml(tmp_path: Path, text: str) -> None:
         (
             "<ra>123.4500</ra>",
             "<RA>123</RA>",
-            "line 12, element RA: it is not an element of optical",
+            "line 14, element RA: it is not an element of optical",
         ),
         ("<ra>123.4500</ra>", "<ra>1</ra><ra>2</ra>", "twice"),
         ("<ra>123.4500</ra>", "<ra/>", "is empty"),
         ("<ra>123.4500</ra>", "<ra>1<b>2</b></ra>", "besides text"),
-        ("<ra>123.4500</ra>", "", "line 10, column ra: the value is missing"),
+        ("<ra>123.4500</ra>", "", "line 12, column ra: the value is missing"),
         ("</ades>", "", "line .*the XML text is broken"),
         ("<ades", '<!DOCTYPE ades [<!ENTITY x "y">]><ades', "DOCTYPE"),
         ("<ades", '<!DOCTYPE ades SYSTEM "file:///etc/hostname"><ades', "DOCTYPE"),

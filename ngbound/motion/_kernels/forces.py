@@ -238,7 +238,6 @@ def add_frame_dragging(gm, c, spin, pole, x, v, acc, gx, gv, with_partials):
 
 
 EARTH_ZONE_AU = 0.02
-EARTH_POLE = np.array([0.0, 0.0, 1.0])
 
 
 @njit(cache=True, error_model="numpy")
@@ -274,7 +273,8 @@ def acceleration(tab, push, phys, active, pos, vel, x, v, acc):
         for i in range(3):
             d[i] = x[i] - pos[phys.earth_row, i]
         if d[0] * d[0] + d[1] * d[1] + d[2] * d[2] < EARTH_ZONE_AU * EARTH_ZONE_AU:
-            add_quadrupole(tab.gm[phys.earth_row], phys.earth_j2, EARTH_POLE, d, acc)
+            pole = np.array([0.0, 0.0, 1.0])
+            add_quadrupole(tab.gm[phys.earth_row], phys.earth_j2, pole, d, acc)
     add_thrust(push, gm_sun, active, h, w, acc)
 
 
@@ -347,10 +347,11 @@ def other_partials(tab, push, phys, active, pos, vel, x, v, gx, gv, unit, unit_x
         for i in range(3):
             d[i] = x[i] - pos[phys.earth_row, i]
         if d[0] * d[0] + d[1] * d[1] + d[2] * d[2] < EARTH_ZONE_AU * EARTH_ZONE_AU:
-            add_quadrupole_partials(tab.gm[phys.earth_row], phys.earth_j2, EARTH_POLE, d, gx)
+            pole = np.array([0.0, 0.0, 1.0])
+            add_quadrupole_partials(tab.gm[phys.earth_row], phys.earth_j2, pole, d, gx)
     r2 = h[0] * h[0] + h[1] * h[1] + h[2] * h[2]
     r = math.sqrt(r2)
-    thrust_partials(push, gm_sun, active, h, w, unit, unit_x, unit_v, extra[0:2])
+    thrust_partials(push, gm_sun, active, h, w, unit, unit_x, unit_v, extra)
     for i in range(3):
         extra[2, i] = h[i] / (r2 * r)
     if push.srp != 0.0:

@@ -52,7 +52,7 @@ def tabulate(tab, push, phys, epoch_d, start, length, begin, power, n, forward, 
     before = False
     for k in range(grid_tau.size):
         tau = grid_tau[k] + 0.5 * grid_h[k]
-        all_positions(tab, epoch_d + tau, pos, vel, False)
+        all_positions(tab, epoch_d + tau, pos, vel, every)
         dense(start, length, begin, power, find_step(start, n, forward, tau), tau, state)
         middle = math.sqrt(
             (state[0] - pos[0, 0]) ** 2 + (state[1] - pos[0, 1]) ** 2 + (state[2] - pos[0, 2]) ** 2
@@ -63,9 +63,12 @@ def tabulate(tab, push, phys, epoch_d, start, length, begin, power, n, forward, 
             t = epoch_d + tau
             all_positions(tab, t, pos, vel, every)
             dense(start, length, begin, power, find_step(start, n, forward, tau), tau, state)
-            gx[:] = 0.0
-            gv[:] = 0.0
-            third[:] = 0.0
+            for i in range(3):
+                for m in range(3):
+                    gx[i, m] = 0.0
+                    gv[i, m] = 0.0
+            for i in range(10):
+                third[i] = 0.0
             scale = tides(tab, pos, state[:3], 1, gx, third)
             other_partials(
                 tab, push, phys, active, pos, vel, state[:3], state[3:], gx, gv, unit, unit_x, unit_v, extra
@@ -75,27 +78,20 @@ def tabulate(tab, push, phys, epoch_d, start, length, begin, power, n, forward, 
             for i in range(3):
                 row[SUN + i] = state[i] - pos[0, i]
                 r2 += row[SUN + i] * row[SUN + i]
-            row[GX : GX + 9] = gx.ravel()
-            row[THIRD : THIRD + 10] = third
-            row[GV : GV + 9] = gv.ravel()
-            row[UNIT : UNIT + 9] = unit.ravel()
-            row[UNIT_X : UNIT_X + 27] = unit_x.ravel()
-            row[UNIT_V : UNIT_V + 27] = unit_v.ravel()
-            row[EXTRA : EXTRA + 9] = extra.ravel()
+            for i in range(10):
+                row[THIRD + i] = third[i]
+            for i in range(3):
+                for m in range(3):
+                    at = 3 * i + m
+                    row[GX + at] = gx[i, m]
+                    row[GV + at] = gv[i, m]
+                    row[UNIT + at] = unit[i, m]
+                    row[EXTRA + at] = extra[i, m]
+                    row[JUMP + at] = 0.0
+                    for n_axis in range(3):
+                        row[UNIT_X + 3 * at + n_axis] = unit_x[i, m, n_axis]
+                        row[UNIT_V + 3 * at + n_axis] = unit_v[i, m, n_axis]
             row[SCALE] = scale
-            row[JUMP : JUMP + 9] = 0.0
-            if j == 0 and k > 0 and active != before and push.window_kind == WINDOW_DISTANCE:
-                # where the distance switches the thrust, a shifted path meets the switch at another time
-                speed = 0.0
-                for i in range(3):
-                    h[i] = state[i] - pos[0, i]
-                    w[i] = state[3 + i] - vel[0, i]
-                    speed += h[i] * w[i] / math.sqrt(r2)
-                thrust_partials(push, tab.gm[0], True, h, w, unit, unit_x, unit_v, extra[0:2])
-                sign = 1.0 if active else -1.0
-                row[JUMP : JUMP + 9] = sign * unit.ravel() / speed
-                unit[:] = row[UNIT : UNIT + 9].copy().reshape(3, 3)
-                unit_x[:] = row[UNIT_X : UNIT_X + 27].copy().reshape(3, 3, 3)
             # sizes of the second-order terms that the neighbours leave out
             r = math.sqrt(r2)
             g = 0.0
@@ -109,6 +105,18 @@ def tabulate(tab, push, phys, epoch_d, start, length, begin, power, n, forward, 
             else:
                 row[SECOND_PUSH] = 0.0
             row[SECOND_RELATIVITY] = 30.0 * (tab.gm[0] / (phys.c_au_d * r2)) ** 2 / r
+            if j == 0 and k > 0 and active != before and push.window_kind == WINDOW_DISTANCE:
+                # where the distance switches the thrust, a shifted path meets the switch at another time
+                speed = 0.0
+                for i in range(3):
+                    h[i] = state[i] - pos[0, i]
+                    w[i] = state[3 + i] - vel[0, i]
+                    speed += h[i] * w[i] / math.sqrt(r2)
+                thrust_partials(push, tab.gm[0], active != before, h, w, unit, unit_x, unit_v, extra)
+                sign = 1.0 if active else -1.0
+                for i in range(3):
+                    for m in range(3):
+                        row[JUMP + 3 * i + m] = sign * unit[i, m] / speed
         before = active
 
 
@@ -139,7 +147,9 @@ def variations(gm_sun, a_ref, columns, grid_h, nodes, begin, accel):
     columns at the start of each step, ``accel`` (steps, 8, 3, p) their second derivatives at the nodes.
     """
     p = columns.size
-    begin[0] = 0.0
+    for i in range(6):
+        for c in range(p):
+            begin[0, i, c] = 0.0
     for c in range(p):
         if columns[c] < 6:
             begin[0, columns[c], c] = 1.0

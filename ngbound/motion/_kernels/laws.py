@@ -45,7 +45,14 @@ def law_of_distance(push, r, out):
             slope = knots[2, end]
             y = knots[1, end] + slope * (x - knots[0, end])
         else:
-            i = np.searchsorted(knots[0], x) - 1
+            i = 0
+            high = last
+            while high - i > 1:
+                middle = (i + high) // 2
+                if knots[0, middle] <= x:
+                    i = middle
+                else:
+                    high = middle
             w = knots[0, i + 1] - knots[0, i]
             s = (x - knots[0, i]) / w
             dy = knots[1, i + 1] - knots[1, i]
@@ -207,15 +214,19 @@ def thrust_partials(push, gm_sun, active, x, v, unit, unit_x, unit_v, extra):
     """Thrust per unit A along R, T, N and its partials.
 
     ``unit`` (3, 3): g times the axis, row per component; ``unit_x``, ``unit_v`` (3, 3, 3): partials
-    [component, axis, with respect to]; ``extra`` (2, 3): partial of the thrust with the push's own A
-    with respect to the lag (per day) and to the law's exponent m.
+    [component, axis, with respect to]; ``extra`` (rows 0 and 1): partial of the thrust with the push's own
+    A with respect to the lag (per day) and to the law's exponent m.
     """
     e = np.empty((3, 3))
     r, h = axes(x, v, e)
-    unit[:] = 0.0
-    unit_x[:] = 0.0
-    unit_v[:] = 0.0
-    extra[:] = 0.0
+    for i in range(3):
+        for j in range(3):
+            unit[i, j] = 0.0
+            for k in range(3):
+                unit_x[i, j, k] = 0.0
+                unit_v[i, j, k] = 0.0
+        extra[0, i] = 0.0
+        extra[1, i] = 0.0
     if not active:
         return
     at = r

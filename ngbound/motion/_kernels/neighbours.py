@@ -303,6 +303,7 @@ def batch(
     are sorted so that the first ``n_back`` lie before the epoch (latest first), the others after it.
     """
     n = rho.shape[0]
+    n_none = n - rho.shape[0]  # a variable: a literal would compile the kernel twice
     p = theta.shape[1]
     lanes = np.empty((p, LANES))
     offset = np.zeros((n, 3, LANES))
@@ -315,7 +316,7 @@ def batch(
                 lanes[c, lane] = theta[at + lane, c]
         unsure[:] = 0.0
         offsets_to_records(
-            gm_sun, a_ref, back[0], back[1], back[2], back[3], back[4], back[5], 0, n_back, lanes, offset, unsure
+            gm_sun, a_ref, back[0], back[1], back[2], back[3], back[4], back[5], n_none, n_back, lanes, offset, unsure
         )
         offsets_to_records(
             gm_sun, a_ref, ahead[0], ahead[1], ahead[2], ahead[3], ahead[4], ahead[5], n_back, n, lanes, offset,

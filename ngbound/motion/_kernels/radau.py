@@ -141,38 +141,19 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_ma
             x[i] = x0[i] + 0.5 * h * v0[i] - pos[0, 0, i]
         middle = math.sqrt(x[0] * x[0] + x[1] * x[1] + x[2] * x[2])
         active = is_active(push, epoch_d + (tau + 0.5 * h), middle)
-        acceleration(tab, push, phys, active, pos[0], vel[0], x0, v0, node[0])
-        # predictor: the last step's polynomial continued, plus what it missed by last time
-        if fresh:
-            for k in range(N_NODES):
-                for i in range(3):
-                    guess[k, i] = 0.0
+        for j in range(N_NODES):
             for i in range(3):
-                guess[0, i] = node[0, i]
-        else:
-            q = h / last_h
-            qk = 1.0
-            for k in range(N_NODES):
-                for i in range(3):
-                    total = 0.0
-                    for j in range(k, N_NODES):
-                        total += BINOMIAL[k, j] * power[n - 1, j, i]
-                    guess[k, i] = total * qk
-                qk *= q
-        for j in range(1, N_NODES):
-            s = NODES[j]
-            for i in range(3):
-                total = 0.0
-                for k in range(N_NODES - 1, 0, -1):
-                    total = (total + guess[k, i] + learnt[k, i]) * s
-                node[j, i] = node[0, i] + total
-        # corrector: Gauss-Seidel sweeps over the nodes until nothing moves
+                node[j, i] = 0.0
+        # sweep 0 takes the start alone and predicts the rest: the last step's polynomial continued, plus what
+        # it missed by last time; then Gauss-Seidel sweeps over the nodes until nothing moves
         previous = 1e300
         converged = False
-        for _ in range(14):
+        for sweep in range(15):
             change = 0.0
             largest = 0.0
-            for j in range(1, N_NODES):
+            first = 0 if sweep == 0 else 1
+            last = 1 if sweep == 0 else N_NODES
+            for j in range(first, last):
                 s = NODES[j]
                 for i in range(3):
                     px = 0.0
@@ -187,7 +168,27 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_ma
                     change = max(change, abs(acc[i] - node[j, i]))
                     largest = max(largest, abs(acc[i]))
                     node[j, i] = acc[i]
-            if change <= 1e-16 * largest:
+            if sweep == 0:
+                q = 0.0 if fresh else h / last_h
+                qk = 1.0
+                for k in range(N_NODES):
+                    for i in range(3):
+                        total = 0.0
+                        if not fresh:
+                            for j in range(k, N_NODES):
+                                total += BINOMIAL[k, j] * power[n - 1, j, i]
+                        guess[k, i] = total * qk
+                    qk *= q
+                for j in range(1, N_NODES):
+                    s = NODES[j]
+                    for i in range(3):
+                        total = 0.0
+                        for k in range(N_NODES - 1, 0, -1):
+                            total = (total + guess[k, i] + learnt[k, i]) * s
+                        node[j, i] = node[0, i] + total
+                continue
+            # the next change is about this one times the last ratio
+            if sweep > 1 and change * min(change / previous, 1.0) <= 1e-16 * largest:
                 converged = True
                 break
             if change >= 0.5 * previous and change < 1e-13 * largest:

@@ -1,0 +1,83 @@
+"""Offsets that belong to the observer or to the object: station, clock, photocentre; imports numpy,
+constants and this room.
+
+A station keeps an offset of its own over the years: refraction of different colours, optics, the
+habits of its reduction. M. Carpino, A. Milani & S. R. Chesley 2003, Icarus 166, 248, found mean
+residuals of many stations that are a sizeable part of their scatter (from memory); the default is a
+fifth of a sigma that is implied by the table, and nothing where the observer states his own.
+
+The others are off unless asked for. A clock error moves the observed place along the apparent motion; the
+photocentre of a comet lies off its nucleus along the direction to the Sun, by an angle that goes
+as 1/distance (for example D. K. Yeomans et al. 2004, in Comets II, p. 137; the size is the
+user's).
+"""
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ngbound.arc.observations import Arc
+from ngbound.arc.shared_errors import SharedErrors
+from ngbound.constants import ARCSEC_RAD
+
+FloatArray = NDArray[np.float64]
+USER = "chosen by the user"
+
+
+def station_offsets(arc: Arc, sigma_arcsec: FloatArray, source: str = USER) -> SharedErrors:
+    """An offset in RA and one in Dec for each station, over the whole arc.
+
+    Parameters
+    ----------
+    sigma_arcsec : ndarray (n,)
+        Prior standard deviation, per observation; stations where all are 0 have no offset.
+    source : str
+        Where the prior comes from.
+    """
+    stn = arc.table["stn"].to_numpy(dtype=object)
+    names, columns, sigma = [], [], []
+    for code in sorted(set(stn.tolist())):
+        mine = stn == code
+        if sigma_arcsec[mine].max() <= 0.0:
+            continue
+        for axis, letter in enumerate(("RA", "Dec")):
+            column = np.zeros((len(stn), 2))
+            column[mine, axis] = sigma_arcsec[mine] * ARCSEC_RAD
+            names.append(f"station {code}, {letter}")
+            columns.append(column.ravel())
+            sigma.append(float(np.median(sigma_arcsec[mine])))
+    return _made(names, columns, np.array(sigma), "arcsec", source)
+
+
+def _made(
+    names: list[str], columns: list[FloatArray], sigma: FloatArray, unit: str, source: str
+) -> SharedErrors:
+    k = len(names)
+    matrix = np.stack(columns, axis=1) if columns else np.zeros((0, 0))
+    return SharedErrors(tuple(names), matrix, sigma, (unit,) * k, (source,) * k)
+
+
+def station_clocks(arc: Arc, sigma_s: float, motion_arcsec_s: FloatArray) -> SharedErrors:
+    """A clock error for each station: along the motion (n, 2), arcsec/s in RA cos dec and Dec."""
+    stn = arc.table["stn"].to_numpy(dtype=object)
+    names, columns = [], []
+    for code in sorted(set(stn.tolist())):
+        column = np.where((stn == code)[:, None], motion_arcsec_s, 0.0) * sigma_s * ARCSEC_RAD
+        names.append(f"clock of station {code}")
+        columns.append(column.ravel())
+    return _made(names, columns, np.full(len(names), sigma_s), "s", USER)
+
+
+def photocentre_offset(sigma_arcsec_au: float, sunward_per_au: FloatArray) -> SharedErrors:
+    """The photocentre off the nucleus towards the Sun.
+
+    Parameters
+    ----------
+    sigma_arcsec_au : float
+        Prior standard deviation, arcsec at 1 au from the observer (725 km an arcsec), for the Sun
+        seen square to the sightline.
+    sunward_per_au : ndarray (n, 2)
+        Unit vector object to Sun projected on RA cos dec and Dec, over the distance in au.
+    """
+    column = sigma_arcsec_au * ARCSEC_RAD * sunward_per_au
+    sigma = np.array([sigma_arcsec_au])
+    return _made(["photocentre sunward"], [column.ravel()], sigma, "arcsec au", USER)

@@ -1,0 +1,555 @@
+"""Make arcs with a known thrust and fit each again, many at once; may import errors, arc, fit and
+this room.
+
+An injected arc has the records, observers and error model of a fitted one. Its object moves on the
+fitted orbit that goes with the injected thrust, integrated exactly. With r(theta) the exact
+residuals of the real records and e the drawn noise, the residuals of the injected arc are
+
+    r_i(theta) = r(theta) - r(theta_true) + e,
+
+which leaves out how the tangent plane turns when the observed place moves by a few arcsec: below
+1e-10 rad, 0.02 mas, at declinations under 75 degrees.
+
+Coordinates: theta = theta_ref + S y with S = R^-1, Q R = C^(-1/2) D the whitened design of the
+reference fit, the orbit's columns first, then the free thrust, then the thrust held at zero. In y
+the reference has unit information, a held thrust is a constant y, and the linear solution is Q' e.
+
+Each arc is fitted with and without thrust by C. F. Gauss's method, with exact residuals and the
+partials of its own orbit: J0 + H (y - y0), with J0 and the second derivatives H taken by
+differences of exact residuals about the injected truth (about its best orbit without thrust, for
+the fit without); where that changes a column by more than a tenth, by central differences at the
+arc's own orbit. A step that raises chi2 is halved, and an arc is done when its step is below 1e-3
+sigma. A rejected record is one more pair of free parameters, a shift of its own,
+which is the same as leaving it out and keeps the whitening of its station-night.
+"""
+
+from collections.abc import Callable, Sequence
+from dataclasses import dataclass
+from typing import Protocol
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy.linalg import qr, solve_triangular
+
+from ngbound.arc import Noise
+from ngbound.constants import C_AU_D
+from ngbound.errors import LimitError
+from ngbound.fit import Fit
+from ngbound.limits.fit_protocol import ThrustFit
+from ngbound.limits.information import ThrustInformation, thrust_information
+from ngbound.limits.rejection import judge_many, residual_chi2_many
+from ngbound.motion import Neighbourhood, integrate_track
+
+Floats = NDArray[np.float64]
+Bools = NDArray[np.bool_]
+Ints = NDArray[np.int64]
+
+SETTLED = 1e-3
+"""Step below which a fit is done, in sigma."""
+DIFFERENCE = 0.5
+"""Half-width of the differences that give the partials, in sigma."""
+BENT = 0.1
+"""Change of a whitened column from which an arc's partials are taken at its own orbit."""
+FRAMES_KEPT = 4
+MAX_SWEEPS = 12
+MAX_HALVINGS = 12
+MAX_ROUNDS = 15
+"""Rounds of the outlier rule."""
+FEW_DONORS = 5
+"""A station with fewer nights borrows residuals from all nights."""
+NOISES = ("model", "residuals")
+
+
+@dataclass(frozen=True, eq=False)
+class Refits:
+    """What became of m injected arcs.
+
+    Attributes
+    ----------
+    A_hat : (m, k) estimates, au/d2; nan where no fit was found
+    covariance : (m, k, k) of each at its own solution, (au/d2)^2
+    delta_chi2 : (m,) chi2 without less chi2 with thrust
+    n_rejected : (m,) records the outlier rule took out of the fit with thrust
+    failed : (m,) bool
+    """
+
+    A_hat: Floats
+    covariance: Floats
+    delta_chi2: Floats
+    n_rejected: Ints
+    failed: Bools
+
+
+class Refitter(Protocol):
+    """Whatever can make arcs with a thrust and fit them again."""
+
+    components: str
+    information: ThrustInformation
+
+    def refit(self, A: Floats, streams: Sequence[np.random.SeedSequence]) -> Refits:
+        """Fit arcs with the thrusts A (m, k), each with noise of its own random stream."""
+        ...
+
+
+@dataclass(frozen=True)
+class LinearRefit:
+    """Linear theory of a fit: the estimate scatters about the injected thrust with its covariance.
+
+    Parameters
+    ----------
+    information : ThrustInformation
+    """
+
+    information: ThrustInformation
+
+    @classmethod
+    def of(cls, fit: ThrustFit) -> "LinearRefit":
+        """Linear theory of ``fit``."""
+        return cls(thrust_information(fit))
+
+    @property
+    def components(self) -> str:
+        """Letters of the free components."""
+        return self.information.components
+
+    def refit(self, A: Floats, streams: Sequence[np.random.SeedSequence]) -> Refits:
+        """See `Refitter`."""
+        info = self.information
+        root = info.eigenvectors / np.sqrt(info.eigenvalues)
+        z = np.array([np.random.default_rng(s).standard_normal(info.k) for s in streams])
+        A_hat = A + z @ root.T
+        m = len(A_hat)
+        return Refits(
+            A_hat,
+            np.broadcast_to(info.covariance, (m, info.k, info.k)),
+            np.einsum("mi,ij,mj->m", A_hat, info.matrix, A_hat),
+            np.zeros(m, dtype=np.int64),
+            np.zeros(m, dtype=bool),
+        )
+
+
+class ExactRefit:
+    """Complete nonlinear injection and recovery on the records of a fit.
+
+    Parameters
+    ----------
+    fit : Fit
+        With thrust components; the records it kept are observed again.
+    free : str, optional
+        Components to fit; the others are held at zero. All that were fitted, by default.
+    noise : str
+        "model": drawn from the error model of the fit, errors shared by nights and by many nights
+        included. "residuals": whole station-nights of the fit's own whitened residuals, drawn with
+        replacement and random sign among the nights of the same station (of all stations where it
+        has fewer than 5), in the order they were taken, and scaled by sqrt(2n / dof) for what the
+        fit absorbed.
+    reject : bool
+        Apply the outlier rule to each arc and hypothesis; the two are then compared over the
+        records that either kept.
+
+    Raises
+    ------
+    LimitError
+        If the fit has no thrust, or a choice is out of its range.
+    """
+
+    def __init__(
+        self, fit: Fit, *, free: str | None = None, noise: str = "model", reject: bool = False
+    ) -> None:
+        information = thrust_information(fit)
+        free = fit.components if free is None else free
+        if not free or any(c not in fit.components for c in free) or len(set(free)) < len(free):
+            raise LimitError(
+                f"The components to fit must be some of {fit.components}, each once; {free!r} was "
+                "given.",
+                free=free,
+            )
+        if noise not in NOISES:
+            raise LimitError(
+                f"The noise of an injection is one of {', '.join(NOISES)}; {noise!r} was given.",
+                noise=noise,
+            )
+        self.fit, self.noise_kind, self.reject = fit, noise, reject
+        self.components = "".join(c for c in fit.components if c in free)
+        self.noise = fit.noise.mask(fit.keep)
+        p, n_state = fit.theta.size, fit.n_state
+        self.n = int(fit.keep.sum())
+        self.design = np.asarray(fit.design).reshape(-1, 2, p)[fit.keep]
+        held = [c for c in fit.components if c not in self.components]
+        self.order = np.array(
+            [*range(n_state)]
+            + [n_state + fit.components.index(c) for c in [*self.components, *held]]
+        )
+        self.n_orbit, self.k = n_state, len(self.components)
+        self.n_push = n_state + self.k
+        white = self.noise.whiten(self.design.reshape(2 * self.n, p))[:, self.order]
+        scale = np.linalg.norm(white, axis=0)
+        self.q, r = qr(white / scale, mode="economic")
+        self.to_y = r * scale
+        self.to_theta = solve_triangular(r, np.eye(p)) / scale[:, None]
+        self.design_y = self.design[:, :, self.order] @ self.to_theta
+        self.theta_ref = np.asarray(fit.theta, dtype=float)[self.order]
+        tail = self.to_y[n_state:, n_state:]
+        self.y_null = np.zeros(p)
+        self.y_null[n_state:] = -tail @ self.theta_ref[n_state:]
+        self._tail = tail
+        keep = [fit.components.index(c) for c in self.components]
+        self.information = information
+        if held:
+            part = np.ix_(keep, keep)
+            covariance = np.linalg.inv(information.matrix[part])
+            values, vectors = np.linalg.eigh(information.matrix[part])
+            self.information = ThrustInformation(
+                self.components, information.A_hat[keep], information.matrix[part], covariance,
+                values, vectors, information.orbit_names, information.correlation[keep],
+                information.inflation_by_orbit[keep], np.ones(self.k), information.orbit,
+            )  # fmt: skip
+        sizes = [self.noise.sigma_ra_arcsec, self.noise.sigma_dec_arcsec]
+        self._error_arcsec2 = np.einsum("in,jn->nij", sizes, sizes)
+        self._error_arcsec2[:, 0, 1] *= self.noise.corr
+        self._error_arcsec2[:, 1, 0] *= self.noise.corr
+        self._frames: dict[bytes, _Frame] = {}
+        self._blocks = self._block_roots()
+        self._batches = self._same_size()
+        self._donors = self._donor_nights() if noise == "residuals" else []
+
+    # ------------------------------------------------------------------------------- noise
+
+    def _block_roots(self) -> list[tuple[Ints, Floats]]:
+        """Rows (2 m,) of each station-night and the Cholesky factor of its covariance, rad."""
+        roots = []
+        for b in range(int(self.noise.night.max()) + 1):
+            rows = np.flatnonzero(self.noise.night == b)
+            cov = self.noise.covariance_rad2(rows)
+            size = np.sqrt(np.diag(cov))
+            root = np.linalg.cholesky(cov / np.outer(size, size)) * size[:, None]
+            roots.append((np.stack([2 * rows, 2 * rows + 1], axis=1).ravel(), root))
+        return roots
+
+    def _same_size(self) -> list[tuple[Ints, Floats]]:
+        """The station-nights of each size together: rows (nb, 2 m) and factors (nb, 2 m, 2 m)."""
+        sizes = sorted({rows.size for rows, _ in self._blocks})
+        grouped = [[each for each in self._blocks if each[0].size == size] for size in sizes]
+        return [
+            (np.stack([rows for rows, _ in group]), np.stack([root for _, root in group]))
+            for group in grouped
+        ]
+
+    def _donor_nights(self) -> list[list[Floats]]:
+        """For each station-night the whitened residuals (2 m,) of the nights it may borrow."""
+        white = self.noise.whiten(np.asarray(self.fit.seen)[self.fit.keep].ravel())
+        white = white * np.sqrt(2.0 * self.n / max(1, self.fit.dof))
+        station = self.fit.used.table["stn"].to_numpy()[self.fit.keep]
+        of_block = [station[rows[0] // 2] for rows, _ in self._blocks]
+        every = [white[rows] for rows, _ in self._blocks]
+        mine = {
+            code: [w for w, c in zip(every, of_block, strict=True) if c == code]
+            for code in set(of_block)
+        }
+        return [mine[code] if len(mine[code]) >= FEW_DONORS else every for code in of_block]
+
+    def draw(self, random: np.random.Generator) -> Floats:
+        """Noise (2n,) of one arc, radians."""
+        noise = np.empty(2 * self.n)
+        if self.noise_kind == "model":
+            z = random.standard_normal(2 * self.n)
+        else:
+            z = np.empty(2 * self.n)
+            for (rows, _), donors in zip(self._blocks, self._donors, strict=True):
+                pieces: list[Floats] = []
+                while sum(piece.size for piece in pieces) < rows.size:
+                    pieces.append(
+                        random.choice([-1.0, 1.0]) * donors[int(random.integers(len(donors)))]
+                    )
+                z[rows] = np.concatenate(pieces)[: rows.size]
+        for rows_of, roots in self._batches:
+            noise[rows_of] = (roots @ z[rows_of][:, :, None])[:, :, 0]
+        shared = self.noise.shared
+        if shared is not None and self.noise_kind == "model":
+            noise += shared.matrix @ random.standard_normal(len(shared))
+        return noise
+
+    # --------------------------------------------------------------------------------- fits
+
+    def theta(self, y: Floats) -> Floats:
+        """Parameters (m, p) in the order of the fit at y (m, p)."""
+        thetas = np.empty_like(y)
+        thetas[:, self.order] = self.theta_ref + y @ self.to_theta.T
+        return thetas
+
+    def frame(self, y: Floats, free: int) -> "_Frame":
+        """Neighbourhood, partials and second derivatives about y (p,)."""
+        key = y.tobytes() + bytes([free])
+        if key not in self._frames:
+            if len(self._frames) >= FRAMES_KEPT:
+                self._frames.pop(next(iter(self._frames)))
+            hood = self._hood_at(self.theta(y[None, :])[0])
+            self._frames[key] = _Frame.about(self, hood, y, free)
+        return self._frames[key]
+
+    def _hood_at(self, theta: Floats) -> Neighbourhood:
+        """The fit's own neighbourhood moved to another orbit and thrust."""
+        own = self.fit.neighbourhood
+        if np.array_equal(theta, own.theta) or own.thrust is None:
+            return own
+        amounts = own.thrust.amounts_au_d2.copy()
+        for i, c in enumerate(own.components):
+            amounts["RTN".index(c)] = theta[6 + i]
+        thrust = own.thrust.with_amounts(amounts)
+        times = own.records.tdb_d
+        margin = 2.0 * float(np.max(np.linalg.norm(own.sight.rho_au, axis=1))) / C_AU_D + 0.5
+        track = integrate_track(
+            own.epoch_d, theta[:6], float(times.min()) - margin, float(times.max()), thrust,
+            own.forces,
+        )  # fmt: skip
+        return Neighbourhood.around(
+            track, own.records, own.whitening, thrust, own.components, own.forces
+        )
+
+    def seen(self, y: Floats, hood: Neighbourhood) -> Floats:
+        """Exact residuals (m, 2n) of the real records at y (m, p), radians."""
+        _, seen = hood.chi2(self.theta(y), want_residuals=True)
+        return np.asarray(seen).reshape(len(y), 2 * self.n)
+
+    def whiten(self, rows: Floats) -> Floats:
+        """Whitened residuals (m, 2n) of residuals (m, 2n)."""
+        return np.ascontiguousarray(self.noise.whiten(np.ascontiguousarray(rows.T)).T)
+
+    def refit(self, A: Floats, streams: Sequence[np.random.SeedSequence]) -> Refits:
+        """See `Refitter`."""
+        m = len(A)
+        y_true = np.tile(self.y_null, (m, 1))
+        held = np.zeros((m, self.theta_ref.size - self.n_push))
+        y_true[:, self.n_orbit :] += np.hstack([A, held]) @ self._tail.T
+        same = bool(np.all(A == A[0]))
+        centre = y_true[0].copy()
+        if not same:
+            centre[: self.n_push] = 0.0
+        about = self.frame(centre, self.n_push)
+        without = self.frame(self.y_null, self.n_orbit)
+        noise = np.array([self.draw(np.random.default_rng(stream)) for stream in streams])
+        if same:
+            shift = noise - self.seen(y_true[:1], about.hood)
+        else:
+            shift = noise - self.seen(y_true, about.hood)
+        white = self.whiten(noise)
+        start_null = np.tile(self.y_null, (m, 1))
+        start_null[:, : self.n_orbit] += white @ self.q[:, : self.n_orbit]
+        start_push = y_true.copy()
+        start_push[:, : self.n_push] += white @ self.q[:, : self.n_push]
+        ok = np.all(np.isfinite(shift), axis=1)
+        all_in = np.ones((m, self.n), dtype=bool)
+        if self.reject:
+            null = self._settle(start_null, without, shift, ok, all_in)
+            push = self._settle(start_push, about, shift, null.ok, all_in)
+            either = null.keep | push.keep
+            a = self._minimise(null.y, without, shift, push.ok, either)
+            b = self._minimise(push.y, about, shift, a.ok, either)
+            delta, ok = a.chi2 - b.chi2, b.ok
+        else:
+            null = self._minimise(start_null, without, shift, ok, all_in)
+            push = self._minimise(start_push, about, shift, null.ok, all_in)
+            delta, ok = null.chi2 - push.chi2, push.ok
+        at = slice(self.n_orbit, self.n_push)
+        theta = self.theta_ref + push.y @ self.to_theta.T
+        root = self.to_theta[at, at]
+        covariance = np.full((m, self.k, self.k), np.nan)
+        covariance[ok] = root @ np.linalg.inv(push.normal[ok])[:, at, at] @ root.T
+        A_hat = theta[:, at]
+        A_hat[~ok] = np.nan
+        rejected = self.n - push.keep.sum(axis=1)
+        return Refits(A_hat, covariance, np.where(ok, delta, np.nan), rejected, ~ok)
+
+    def _settle(
+        self, y: Floats, frame: "_Frame", shift: Floats, ok: Bools, keep: Bools
+    ) -> "_Minima":
+        """Fit and judge by turns until the kept records no longer change."""
+        keep, free = keep.copy(), frame.free
+        found = self._minimise(y, frame, shift, ok, keep)
+        judged = [{row.tobytes()} for row in keep]
+        busy = found.ok.copy()
+        for _ in range(MAX_ROUNDS):
+            rows = np.flatnonzero(busy)
+            if not len(rows):
+                break
+            raw = self.seen(found.y[rows], frame.hood) + shift[rows]
+            chi2 = residual_chi2_many(
+                raw.reshape(len(rows), self.n, 2),
+                self.design_y[:, :, :free],
+                np.linalg.inv(found.normal[rows]),
+                self._error_arcsec2,
+                keep[rows],
+            )
+            for i, new in zip(rows, judge_many(chi2, keep[rows]), strict=True):
+                busy[i] = new.tobytes() not in judged[i] and 2 * int(new.sum()) >= free + 4
+                if busy[i]:
+                    judged[i].add(new.tobytes())
+                    keep[i] = new
+            rows = np.flatnonzero(busy)
+            if not len(rows):
+                break
+            part = self._minimise(found.y[rows], frame, shift[rows], found.ok[rows], keep[rows])
+            found.put(rows, part)
+            busy &= found.ok
+        return found
+
+    def _minimise(
+        self, y: Floats, frame: "_Frame", shift: Floats, ok: Bools, keep: Bools
+    ) -> "_Minima":
+        """Least chi2 over the free coordinates of each row of y."""
+        m, free = len(y), frame.free
+        y, ok = y.copy(), ok.copy()
+        outside = _Projector(self.noise, keep)
+        chi2 = np.full(m, np.inf)
+        normal = np.tile(np.eye(free), (m, 1, 1))
+        white = np.zeros((m, 2 * self.n))
+
+        def at(rows: Ints, points: Floats) -> Floats:
+            return outside(self.whiten(self.seen(points, frame.hood) + shift[rows]), rows)
+
+        busy = np.flatnonzero(ok)
+        if len(busy):
+            white[busy] = at(busy, y[busy])
+        chi2[busy] = np.sum(white[busy] ** 2, axis=1)
+        ok &= np.isfinite(chi2)
+        busy = busy[ok[busy]]
+        for _ in range(MAX_SWEEPS):
+            if not len(busy):
+                break
+            partials = frame.partials_at(y[busy])
+            bent = np.flatnonzero(frame.bend(y[busy]) > BENT)
+            for i in bent:
+                partials[i] = self.partials(y[busy[i]], frame)
+            partials = outside.columns(partials, busy)
+            normal[busy] = partials @ partials.transpose(0, 2, 1)
+            gradient = (partials @ white[busy][:, :, None])[:, :, 0]
+            step = np.linalg.solve(normal[busy], gradient[:, :, None])[:, :, 0]
+            finished = np.linalg.norm(step, axis=1) < SETTLED
+            length = np.ones(len(busy))
+            waiting = np.arange(len(busy))
+            for _ in range(MAX_HALVINGS):
+                rows = busy[waiting]
+                trial = y[rows].copy()
+                trial[:, :free] += length[waiting, None] * step[waiting]
+                there = at(rows, trial)
+                value = np.sum(there**2, axis=1)
+                better = value <= chi2[rows] + 1e-6
+                y[rows[better]], white[rows[better]] = trial[better], there[better]
+                chi2[rows[better]] = value[better]
+                waiting = waiting[~better]
+                if not len(waiting):
+                    break
+                length[waiting] *= 0.5
+            # without a step down only an arc that stands at its minimum is done
+            ok[busy[waiting[~finished[waiting]]]] = False
+            busy = busy[~finished & ok[busy]]
+        ok[busy] = False
+        return _Minima(y, chi2, normal, keep.copy(), ok)
+
+    def partials(self, y: Floats, frame: "_Frame") -> Floats:
+        """Central differences (free, 2n) of minus the whitened residuals at y (p,)."""
+        free = frame.free
+        points = np.tile(y, (2, free, 1))
+        turn = np.arange(free)
+        points[0, turn, turn] -= DIFFERENCE
+        points[1, turn, turn] += DIFFERENCE
+        white = self.whiten(self.seen(points.reshape(2 * free, -1), frame.hood))
+        return (white[:free] - white[free:]) / (2.0 * DIFFERENCE)
+
+
+@dataclass(frozen=True, eq=False)
+class _Frame:
+    """Exact model about one orbit: minus the whitened residuals to second order in y - centre."""
+
+    hood: Neighbourhood
+    centre: Floats
+    free: int
+    first: Floats
+    second: Floats
+
+    @classmethod
+    def about(
+        cls, model: ExactRefit, hood: Neighbourhood, centre: Floats, free: int
+    ) -> "_Frame":
+        """Differences of the exact residuals: first (free, 2n), second (free, free, 2n)."""
+        h = DIFFERENCE
+        one = np.zeros((2 * free, centre.size))
+        turn = np.arange(free)
+        one[turn, turn], one[free + turn, turn] = h, -h
+        i, j = np.triu_indices(free, 1)
+        pair = np.zeros((2, i.size, centre.size))
+        rows = np.arange(i.size)
+        pair[0, rows, i], pair[0, rows, j] = h, h
+        pair[1, rows, i], pair[1, rows, j] = -h, -h
+        points = np.concatenate([np.zeros((1, centre.size)), one, pair.reshape(-1, centre.size)])
+        white = -model.whiten(model.seen(centre + points, hood))
+        zero, up, down = white[0], white[1 : free + 1], white[free + 1 : 2 * free + 1]
+        both = white[2 * free + 1 :].reshape(2, i.size, -1).sum(axis=0)
+        second = np.zeros((free, free, zero.size))
+        second[turn, turn] = (up + down - 2.0 * zero) / h**2
+        ends = up + down
+        second[i, j] = (both + 2.0 * zero - ends[i] - ends[j]) / (2.0 * h**2)
+        second[j, i] = second[i, j]
+        return cls(hood, centre, free, (up - down) / (2.0 * h), second)
+
+    def partials_at(self, y: Floats) -> Floats:
+        """Partials (m, free, 2n) at y (m, p)."""
+        off = y[:, : self.free] - self.centre[: self.free]
+        f, n = self.free, self.first.shape[1]
+        return self.first + (off @ self.second.reshape(f, f * n)).reshape(-1, f, n)
+
+    def bend(self, y: Floats) -> Floats:
+        """Largest change (m,) of a column between the centre and y (m, p)."""
+        moved = self.partials_at(y) - self.first
+        return np.sqrt(np.max(np.sum(moved**2, axis=2), axis=1))
+
+
+@dataclass(eq=False)
+class _Minima:
+    y: Floats
+    chi2: Floats
+    normal: Floats
+    keep: Bools
+    ok: Bools
+
+    def put(self, rows: Ints, part: "_Minima") -> None:
+        for name in ("y", "chi2", "normal", "keep", "ok"):
+            getattr(self, name)[rows] = getattr(part, name)
+
+
+class _Projector:
+    """Takes the shifts of rejected records out of whitened residuals."""
+
+    def __init__(self, noise: Noise, keep: Bools) -> None:
+        self.any = not bool(np.all(keep))
+        self.bases: list[Floats | None] = [None] * len(keep)
+        if not self.any:
+            return
+        needed = np.flatnonzero(~np.all(keep, axis=0))
+        rows = np.stack([2 * needed, 2 * needed + 1], axis=1).ravel()
+        unit = np.zeros((2 * keep.shape[1], rows.size))
+        unit[rows, np.arange(rows.size)] = 1.0
+        white = noise.whiten(unit)
+        for i, mask in enumerate(keep):
+            if not mask.all():
+                columns = np.repeat(~mask[needed], 2)
+                self.bases[i] = np.linalg.qr(white[:, columns])[0]
+
+    def __call__(self, white: Floats, rows: Ints) -> Floats:
+        if not self.any:
+            return white
+        for place, i in enumerate(rows):
+            basis = self.bases[i]
+            if basis is not None:
+                white[place] -= basis @ (white[place] @ basis)
+        return white
+
+    def columns(self, partials: Floats, rows: Ints) -> Floats:
+        """The same of partials (len(rows), free, 2n)."""
+        if not self.any:
+            return partials
+        for place, i in enumerate(rows):
+            basis = self.bases[i]
+            if basis is not None:
+                partials[place] -= (partials[place] @ basis) @ basis.T
+        return partials

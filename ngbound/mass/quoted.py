@@ -1,0 +1,243 @@
+"""What a paper says of a thrust, as tables of a TOML file, checked on reading.
+
+May import: constants, errors, arc, motion, and from its own room distributions, outgassing.
+"""
+
+import math
+import tomllib
+from collections.abc import Mapping
+from pathlib import Path
+from typing import Annotated, Any, Literal, Self, TypeVar
+
+import astropy.units as u
+from astropy.units import Quantity
+from pydantic import BaseModel, ConfigDict, Field, ValidationError, model_validator
+
+from ngbound.arc import ErrorModel
+from ngbound.errors import CaseError
+from ngbound.motion import Thrust
+
+from .distributions import AtMost, Distribution, Normal, SplitNormal, parse_distribution
+
+AU_D2 = u.au / u.day**2
+Spec = str | float | dict[str, Any]
+Positive = Annotated[float, Field(gt=0.0)]
+Probability = Annotated[float, Field(gt=0.0, lt=1.0)]
+
+
+class Table(BaseModel):
+    """Any table: frozen, finite numbers only, no unknown keys."""
+
+    model_config = ConfigDict(extra="forbid", frozen=True, allow_inf_nan=False)
+
+
+class LawTable(Table):
+    """The law under which a number was quoted."""
+
+    law: str = Field(default="inverse-square", description="Thrust law, g(1 au) = 1.")
+    exponent: float | None = Field(default=None, description='Of the law "power".')
+
+    def thrust(self, components: str = "RTN") -> Thrust:
+        """The thrust of the law."""
+        return Thrust(self.law, components, exponent=self.exponent)
+
+
+class QuotedResult(LawTable):
+    """``[[result]]``: one estimate, limit or threshold, or an arc to be fitted."""
+
+    name: str
+    file: Path | None = Field(default=None, description="An arc, fitted here.")
+    object: str | None = Field(default=None, description="Which object of the arc file.")
+    errors: dict[str, Any] = Field(default_factory=dict, description="Error model of the arc.")
+    A: Spec | None = Field(default=None, description="Estimate with error; or a table by R, T, N.")
+    upper_limit: Spec | None = None
+    confidence: Probability = 0.95
+    threshold: Spec | None = Field(default=None, description="Would have been detected above.")
+    false_alarm: Probability = 0.0027
+    power: Probability = 0.95
+    sided: Literal[1, 2] = 2
+    component: Literal["R", "T", "N", "any"] = "any"
+    at_au: Positive | None = Field(
+        default=None, description="The acceleration is the one at this distance, not at g = 1."
+    )
+    dates: tuple[str, str] | None = Field(default=None, description="First and last, TDB.")
+    r_au: tuple[Positive, ...] = Field(default=(), description="Distances along the arc, in order.")
+    outgassing: dict[str, Any] | None = None
+    mass: Spec | None = None
+    diameter: Spec | None = None
+
+    @model_validator(mode="after")
+    def _one_kind(self) -> Self:
+        given = [k for k in ("file", "A", "upper_limit", "threshold") if getattr(self, k)]
+        if len(given) != 1:
+            raise ValueError(
+                "must hold exactly one of file, A, upper_limit and threshold; it holds "
+                f"{', '.join(given) or 'none'}"
+            )
+        if not self.file and not self.r_au:
+            raise ValueError("needs r_au, the heliocentric distances of the arc in au")
+        return self
+
+
+class Results(Table):
+    """A file for `reconcile`."""
+
+    result: tuple[QuotedResult, ...] = Field(min_length=2)
+    level: Probability = Field(default=0.95, description="Confidence of every interval.")
+    seed: int = Field(default=1, ge=0)
+
+
+class QuotedThreshold(LawTable):
+    """``[threshold]``: a quoted detection threshold or upper limit, and what it is said to mean."""
+
+    value: str | float = Field(description="At g = 1, au/d2 unless a unit is given.")
+    component: Literal["R", "T", "N", "any"] = "any"
+    others: Literal["held", "free"] = Field(
+        default="free", description="The other components of the fit."
+    )
+    sigma: Positive | None = Field(default=None, description="So many standard deviations, or ...")
+    confidence: Probability | None = Field(default=None, description="... this confidence, or ...")
+    false_alarm: Probability | None = Field(default=None, description="... this false-alarm rate.")
+    sided: Literal[1, 2] = 2
+    power: Probability = Field(
+        default=0.5, description="Chance to find it; 0.5 for a plain multiple of sigma."
+    )
+    at_au: Positive | None = Field(
+        default=None, description="The acceleration is the one at this distance, not at g = 1."
+    )
+
+    @model_validator(mode="after")
+    def _one_level(self) -> Self:
+        given = [k for k in ("sigma", "confidence", "false_alarm") if getattr(self, k) is not None]
+        if len(given) > 1:
+            raise ValueError(f"gives {' and '.join(given)}; give one of them")
+        return self
+
+
+class Geometry(Table):
+    """``[geometry]``: an arc of which only this is known."""
+
+    n_obs: int = Field(ge=3)
+    span_d: Positive
+    sigma_arcsec: Positive
+    nights: int | None = Field(default=None, ge=2, description="All observations apart by default.")
+    r_au: tuple[Positive, ...] = Field(
+        min_length=1, max_length=2, description="Heliocentric distance at the start and end."
+    )
+    delta_au: tuple[Positive, ...] = Field(
+        min_length=1, max_length=2, description="Smallest and largest geocentric distance."
+    )
+    q_au: Positive | None = None
+    e: float | None = Field(default=None, ge=0.0)
+
+
+class ArcTable(Table):
+    """``[arc]``: the observations behind the quoted threshold."""
+
+    file: Path
+    object: str | None = None
+
+
+class QuotedPaper(Table):
+    """A file for `audit`."""
+
+    title: str = "quoted numbers"
+    numbers: dict[str, Any] = Field(
+        default_factory=dict, description="Keys of `audit_numbers`, its options among them."
+    )
+    threshold: QuotedThreshold | None = None
+    arc: ArcTable | None = None
+    errors: dict[str, Any] = Field(
+        default_factory=dict, description="Quoted error level: a key arcsec, or of the error model."
+    )
+    geometry: Geometry | None = None
+    seed: int = Field(default=1, ge=0)
+
+    @model_validator(mode="after")
+    def _something(self) -> Self:
+        if not self.numbers and self.threshold is None:
+            raise ValueError("must hold a [numbers] or a [threshold] table")
+        if (self.arc or self.geometry) and self.threshold is None:
+            raise ValueError("has an [arc] or [geometry] table but no [threshold] to hold to it")
+        return self
+
+
+Model = TypeVar("Model", bound=BaseModel)
+
+
+def read_table(source: str | Path | Mapping[str, Any], model: type[Model]) -> tuple[Model, Path]:
+    """Read a TOML file or a mapping into a model; also the folder paths in it count from.
+
+    Raises
+    ------
+    CaseError
+        When it cannot be read, is not TOML, or holds an unknown or impossible choice.
+    """
+    content: Any
+    if isinstance(source, Mapping):
+        name, content, folder = "The table", dict(source), Path()
+    else:
+        path = Path(source)
+        name, folder = str(path), path.parent
+        try:
+            content = tomllib.loads(path.read_bytes().decode("utf-8"))
+        except OSError as error:
+            raise CaseError(
+                f"{path} cannot be read: {error.strerror or error}; give the path of a TOML file."
+            ) from error
+        except UnicodeDecodeError as error:
+            raise CaseError(
+                f"{path} is not a TOML file: byte {error.start} is not UTF-8 text."
+            ) from error
+        except tomllib.TOMLDecodeError as error:
+            raise CaseError(f"{path} is not valid TOML: {error}.") from error
+    try:
+        return model.model_validate(content), folder
+    except ValidationError as error:
+        faults = []
+        for fault in error.errors():
+            where = ".".join(str(part) for part in fault["loc"])
+            given = "" if isinstance(fault["input"], dict) else f" ({fault['input']!r} was given)"
+            faults.append(f"{where + ': ' if where else ''}{fault['msg']}{given}")
+        raise CaseError(f"{name}: {'; '.join(faults)}.", faults=faults) from error
+
+
+def amount_au_d2(spec: Any, name: str) -> tuple[Distribution, float]:
+    """A quoted acceleration: its distribution in au/d2, and one standard deviation (0: none)."""
+    found, unit = parse_distribution(spec, name)
+    try:
+        factor = float(Quantity(1.0, u.Unit(unit) if unit else AU_D2).to_value(AU_D2))
+    except (ValueError, TypeError, u.UnitConversionError) as error:
+        raise CaseError(
+            f"{name} has the unit {unit!r}; allowed: au/d2, m/s2 and the like.", unit=unit
+        ) from error
+    found = found.scaled(factor)
+    if isinstance(found, Normal):
+        return found, found.sigma
+    if isinstance(found, SplitNormal):
+        return found, 0.5 * (found.minus + found.plus)
+    return found, 0.0
+
+
+def size_au_d2(spec: Any, name: str) -> float:
+    """A quoted positive acceleration in au/d2."""
+    found, _ = amount_au_d2(spec, name)
+    value = found.limit if isinstance(found, AtMost) else found.median
+    if not (math.isfinite(value) and value > 0):
+        raise CaseError(f"{name} = {spec!r} must be positive.", value=spec)
+    return value
+
+
+def error_model(choices: Mapping[str, Any]) -> ErrorModel:
+    """The error model of an ``errors`` table; ``arcsec`` alone stands for one sigma for all."""
+    options = dict(choices)
+    if "arcsec" in options:
+        value, _ = parse_distribution(options.pop("arcsec"), "errors.arcsec", lower=0.0)
+        options = {"scheme": "uniform", "uniform_arcsec": value.median, **options}
+    try:
+        return ErrorModel(**options)
+    except TypeError as error:
+        raise CaseError(
+            f"The errors table has an unknown key: {error}; allowed: arcsec and the keys of the "
+            "error model."
+        ) from error

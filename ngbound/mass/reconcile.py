@@ -1,0 +1,230 @@
+"""What would have to be true for two or more results about one object to hold together?
+
+May import: errors, fit, and from its own room explanations, quoted, results, thrust_history.
+"""
+
+import itertools
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+from scipy.stats import chi2
+
+from ngbound.errors import CaseError, MassError
+from ngbound.fit import Fit
+
+from . import explanations as why
+from .distributions import number_text
+from .explanations import EXCLUDED, ORDER, POSSIBLE, STRAINED, Explanation, Pair
+from .quoted import Results, read_table
+from .results import THREE_SIGMA, ThrustResult
+from .thrust_history import freedom, joint
+
+__all__ = ["Reconciliation", "reconcile"]
+
+
+@dataclass(frozen=True)
+class Reconciliation:
+    """Results set beside one another.
+
+    Attributes
+    ----------
+    results : tuple of ThrustResult
+    chi2, dof, probability : float
+        Of one and the same thrust, each result under the law it was quoted with: the simplest
+        hypothesis, and the chance of at least this tension under it.
+    thrust_au_d2 : (3,) the thrust that fits all best
+    pair : (str, str)
+        Names of the quiet and the active one of the two results that agree least, which the
+        explanations are about.
+    explanations : tuple of Explanation
+        Possible ones first.
+    level : float
+        Confidence of every interval.
+    """
+
+    results: tuple[ThrustResult, ...]
+    chi2: float
+    dof: int
+    probability: float
+    thrust_au_d2: tuple[float, float, float]
+    pair: tuple[str, str]
+    explanations: tuple[Explanation, ...]
+    level: float
+
+    def verdict(self, key: str) -> str:
+        """Verdict on one explanation, by its key."""
+        return self[key].verdict
+
+    def __getitem__(self, key: str) -> Explanation:
+        for found in self.explanations:
+            if found.key == key:
+                return found
+        known = ", ".join(e.key for e in self.explanations)
+        raise CaseError(f"There is no explanation {key!r}; there are {known}.", key=key)
+
+    def _with(self, verdict: str) -> tuple[str, ...]:
+        return tuple(e.key for e in self.explanations if e.verdict == verdict)
+
+    @property
+    def possible(self) -> tuple[str, ...]:
+        """Keys of the possible explanations."""
+        return self._with(POSSIBLE)
+
+    @property
+    def strained(self) -> tuple[str, ...]:
+        """Keys of those that need a value outside the published range."""
+        return self._with(STRAINED)
+
+    @property
+    def excluded(self) -> tuple[str, ...]:
+        """Keys of those that these results rule out."""
+        return self._with(EXCLUDED)
+
+    @property
+    def headline(self) -> str:
+        """The simplest hypothesis in a sentence."""
+        chance = why.chance_text(self.probability)
+        text = (
+            f"One and the same thrust in all results gives chi2 = {number_text(self.chi2)} for "
+            f"{self.dof}; a tension at least this large has the probability {chance}"
+        )
+        if self.probability >= 1.0 - self.level:
+            return text + ": the results agree, and nothing needs explaining."
+        return text + f": it must be explained. {self.pair[0]} shows less than {self.pair[1]}."
+
+    def __str__(self) -> str:
+        lines = [self.headline, *(f"  {result}" for result in self.results), "Explanations:"]
+        lines += [f"  {found}." for found in self.explanations]
+        grounds = {e.title: e.plausible.ground for e in self.explanations if e.plausible}
+        lines += ["Published ranges:", *(f"  {title}: {g}." for title, g in grounds.items())]
+        assumed = [text for result in self.results for text in result.assumed]
+        if assumed:
+            lines.append("Assumed: " + "; ".join(assumed) + ".")
+        return "\n".join(lines)
+
+    def to_dict(self) -> dict[str, Any]:
+        """JSON-able record."""
+        return {
+            "headline": self.headline,
+            "results": [result.to_dict() for result in self.results],
+            "chi2": self.chi2,
+            "dof": self.dof,
+            "probability": self.probability,
+            "thrust_au_d2": list(self.thrust_au_d2),
+            "pair": list(self.pair),
+            "level": self.level,
+            "explanations": [found.to_dict() for found in self.explanations],
+        }
+
+
+def reconcile(
+    *results: ThrustResult | Fit | Mapping[str, Any] | str | Path,
+    level: float = 0.95,
+    seed: int = 1,
+    progress: Callable[[str], None] | None = None,
+) -> Reconciliation:
+    """Set two or more results beside one another and rank what could reconcile them.
+
+    Parameters
+    ----------
+    *results
+        `ThrustResult` objects, fits, or tables of quoted numbers (keys of `QuotedResult`); or one
+        path of a TOML file with two or more ``[[result]]`` tables.
+    level : float
+        Confidence of every interval.
+    seed : int
+        Of the draws of outgassing budgets.
+    progress : callable, optional
+        Is given a sentence before each fit.
+
+    Raises
+    ------
+    CaseError
+        Input that cannot be understood.
+    MassError
+        No two results measure an axis in common.
+    """
+    found: list[ThrustResult] = []
+    if len(results) == 1 and isinstance(results[0], str | Path):
+        table, folder = read_table(results[0], Results)
+        level, seed = table.level, table.seed
+        found = [ThrustResult.from_quoted(one, folder, progress) for one in table.result]
+    else:
+        for number, one in enumerate(results, 1):
+            if isinstance(one, ThrustResult):
+                found.append(one)
+            elif isinstance(one, Fit):
+                found.append(ThrustResult.from_fit(one, f"arc {number}"))
+            elif isinstance(one, Mapping):
+                found.append(ThrustResult.from_quoted(one, progress=progress))
+            else:
+                raise CaseError(
+                    f"Result {number} is {one!r}; give fits, ThrustResult objects or tables, or "
+                    "one TOML file alone."
+                )
+    if len(found) < 2:
+        raise CaseError("Reconciling needs at least two results.")
+    if not 0 < level < 1:
+        raise CaseError(f"level = {level!r} must be between 0 and 1.")
+    responses = [result.response for result in found]
+    dof = freedom(responses)
+    if dof == 0:
+        raise MassError(
+            "No two of the results measure the thrust along a common axis, so there is nothing to "
+            "reconcile; give the component of each quoted number."
+        )
+    value, thrust = joint(responses, [response.own for response in responses])
+    value = max(value, 0.0)
+    probability = float(chi2.sf(value, dof))
+    pair = _worst_pair(found, level, np.random.default_rng(seed))
+    chance = Explanation(
+        "chance", "chance alone",
+        POSSIBLE if probability >= 1 - level
+        else STRAINED if probability >= THREE_SIGMA
+        else EXCLUDED,
+        f"the same thrust in all results, law as quoted, has the probability "
+        f"{why.chance_text(probability)}",
+        {"thrust_au_d2": thrust.tolist()}, value, dof, probability,
+    )  # fmt: skip
+    ratios, best, scaled = why.amplitude_ratios(pair)
+    told = [
+        chance,
+        why.law(pair),
+        why.onset_distance(pair),
+        why.date(pair),
+        why.rotated(pair),
+        why.space_fixed(pair),
+        why.mass_change(pair, ratios, best, scaled),
+        why.production(pair, ratios, best, scaled),
+        why.collimation(pair, ratios, best, scaled),
+        why.density(tuple(found), pair.rng, level),
+    ]
+    told.sort(key=lambda e: (ORDER.index(e.verdict), -(e.probability or 0.0)))
+    return Reconciliation(
+        tuple(found), value, dof, probability,
+        (float(thrust[0]), float(thrust[1]), float(thrust[2])),
+        (pair.quiet.name, pair.active.name), tuple(told), level,
+    )  # fmt: skip
+
+
+def _worst_pair(found: list[ThrustResult], level: float, rng: np.random.Generator) -> Pair:
+    worst: tuple[float, Pair] | None = None
+    for one, other in itertools.combinations(found, 2):
+        responses = [one.response, other.response]
+        dof = freedom(responses)
+        if dof == 0:
+            continue
+        value, _ = joint(responses, [response.own for response in responses])
+        probability = float(chi2.logsf(max(value, 0.0), dof))
+        sizes = [float(np.linalg.norm(r.amounts_au_d2)) for r in (one, other)]
+        quiet, active = (one, other) if sizes[0] <= sizes[1] else (other, one)
+        if one.is_detection != other.is_detection:
+            quiet, active = (other, one) if one.is_detection else (one, other)
+        if worst is None or probability < worst[0]:
+            worst = probability, Pair(quiet, active, level, dof, rng)
+    if worst is None:
+        raise MassError("No two of the results measure the thrust along a common axis.")
+    return worst[1]

@@ -1,0 +1,39 @@
+"""Whether the compiled kernels are at hand, so that a first run can say why it takes longer; imports the kernels.
+
+numba keeps compiled code beside the source, or, where that folder cannot be written, in the user's cache folder
+(or where NUMBA_CACHE_DIR points); files appear whole, so processes that start at once do not disturb each other.
+"""
+
+from pathlib import Path
+
+from ngbound.motion._kernels.grid import tabulate, variations
+from ngbound.motion._kernels.neighbours import batch
+from ngbound.motion._kernels.radau import dense_many, integrate
+
+KERNELS = (integrate, dense_many, tabulate, variations, batch)
+
+
+def compiled_code_folder() -> Path:
+    """The folder that holds, or will hold, the compiled code."""
+    return Path(integrate.stats.cache_path)
+
+
+def missing_kernels() -> list[str]:
+    """Names of the main kernels that have not been compiled on this machine yet."""
+    missing = []
+    for kernel in KERNELS:
+        name = f"{Path(kernel.py_func.__code__.co_filename).stem}.{kernel.py_func.__qualname__}"
+        folder = Path(kernel.stats.cache_path)
+        if not kernel.signatures and not any(folder.glob(f"{name}-*.nbi")):
+            missing.append(name)
+    return missing
+
+
+def compile_notice() -> str:
+    """A sentence for a first run, or an empty text when the kernels are at hand."""
+    if not missing_kernels():
+        return ""
+    return (
+        "This is the first run here: the numerical kernels are being compiled, which takes about a minute and "
+        f"is kept for later runs in {compiled_code_folder()}."
+    )

@@ -1,0 +1,141 @@
+"""Speed of the propagator beside the plain twin, in one run.
+
+    python -m tests.benchmarks.propagator_speed
+
+Prints, for one main-belt year and for the hyperbola q = 0.25 au, e = 1.2 over 120 days, with 500 outputs and the 11
+bodies of DE440: times, errors against steps a thousand times tighter, and ratios to the plain twin; then the whole likelihood of a
+300-record arc with 27 bodies, and the operations it takes.
+"""
+
+import time
+from collections.abc import Callable
+
+import numpy as np
+
+from ngbound.motion import ForceModel, Neighbourhood, Thrust, integrate_track, partials_along
+from ngbound.motion._kernels.grid import columns_at
+from ngbound.motion._kernels.radau import dense_many, integrate
+from ngbound.motion.neighbours import LANES
+from tests.benchmarks.plain_twin import plain_track
+from tests.motion.orbits import BELT, HYPERBOLA, geocentric_records, neighbourhood, white_factors
+from tests.units import arcsec, metre
+
+AMOUNTS = np.array([1e-8, 1e-9, 1e-9])
+THRUST = Thrust(A=AMOUNTS)
+FORCES = ForceModel(asteroids=False)
+METRE_EPS = 5e-6
+
+
+def best_of(work: Callable[[], object], seconds: float = 2.0) -> float:
+    """Shortest of the repeats that fit into some seconds."""
+    work()
+    shortest, spent = np.inf, 0.0
+    while spent < seconds:
+        start = time.perf_counter()
+        work()
+        once = time.perf_counter() - start
+        shortest, spent = min(shortest, once), spent + once
+    return shortest
+
+
+def adaptive(state: np.ndarray, days: float, outputs: np.ndarray, eps: float) -> tuple[float, float, int]:
+    """Time, error and steps of the compiled adaptive integrator with its 500 outputs."""
+    track = integrate_track(0.0, state, 0.0, days, THRUST, FORCES, eps)
+    reference = integrate_track(0.0, state, 0.0, days, THRUST, FORCES, 1e-10).at(outputs)
+    error = np.abs(track.at(outputs) - reference)[:, :3].max()
+    out = np.empty((outputs.size, 6))
+    none = np.zeros(0)
+
+    def work() -> None:
+        _, n, start, length, begin, power, _ = integrate(
+            track.tab, track.push, track.physics, 0.0, state, days, eps, 40.0, none, 256
+        )
+        dense_many(start, length, begin, power, n, True, outputs, out)
+
+    assert track.ahead is not None
+    return best_of(work), error, track.ahead.n
+
+
+def batch_of(
+    state: np.ndarray, days: float, n: int, forces: ForceModel, lanes: int, threads: int
+) -> tuple[Neighbourhood, float]:
+    """A neighbourhood with ``n`` records and the time of one likelihood in it."""
+    near, track = neighbourhood(state, days, 0.5 * days, n=n, forces=forces)
+    near = Neighbourhood.around(
+        track, near.records, near.whitening, near.thrust, "RTN", forces, threads=threads
+    )
+    rng = np.random.default_rng(3)
+    thetas = near.theta + rng.standard_normal((lanes, 9)) * np.array([1e-7] * 3 + [1e-9] * 3 + [1e-11] * 3)
+    assert not near.strays(thetas).any()
+    return near, best_of(lambda: near.chi2(thetas)) / lanes
+
+
+def operations(near: Neighbourhood, sweeps: int = 3) -> float:
+    """Floating-point operations of one likelihood, counted from the loops of the kernel."""
+    legs = [leg for leg in (near.partials.back, near.partials.ahead) if leg is not None]
+    steps = sum(leg.h_d.size for leg in legs)
+    records = len(near.records)
+    force = 2 * 3 * (3 + 3 + 3 + 18 + 6) + 60
+    guess = 8 * 2 * 6 * 9
+    sweep = 7 * (2 * 2 * 3 * 8 + force)
+    step = guess + 8 * force + sweeps * sweep + 2 * 2 * 3 * 8
+    record = 2 * 3 * 9 + 70 + 2 * 3
+    return steps * step + records * record
+
+
+def main() -> None:
+    """Print the table."""
+    for name, state, days in (
+        ("main belt, 1 yr", BELT, 365.25),
+        ("hyperbola, 120 d", HYPERBOLA, 120.0),
+        ("hyperbola, 1 yr", HYPERBOLA, 365.25),
+    ):
+        outputs = np.linspace(0.0, days, 500)
+        start = time.perf_counter()
+        plain = plain_track(state, days, outputs, AMOUNTS, False)
+        twin = time.perf_counter() - start
+        best = integrate_track(0.0, state, 0.0, days, THRUST, FORCES, 1e-10).at(outputs)
+        print(f"{name}: plain twin {twin * 1e3:.0f} ms, {np.abs(plain - best)[:, :3].max() / metre:.2f} m")
+        for label, eps in (("metre", METRE_EPS), ("default", ForceModel().eps)):
+            spent, error, steps = adaptive(state, days, outputs, eps)
+            print(
+                f"  adaptive, {label:8s} {spent * 1e6:7.0f} us ({steps} steps, {error / metre:.1e} m): "
+                f"{twin / spent:,.0f} times"
+            )
+        track = integrate_track(0.0, state, 0.0, days, THRUST, FORCES)
+        coarse = integrate_track(0.0, state, 0.0, days, THRUST, FORCES, METRE_EPS)
+        names = ("x", "y", "z", "vx", "vy", "vz", "A1", "A2", "A3")
+        partials = partials_along(track, names, coarse)
+        leg = partials.ahead
+        assert leg is not None
+        out = np.empty((500, 6, 9))
+
+        def jacobian(track=track, coarse=coarse, names=names, leg=leg, out=out, outputs=outputs) -> None:
+            partials_along(track, names, coarse)
+            columns_at(leg.tau_d, leg.h_d, leg.begin, leg.accel, True, outputs, out)
+
+        spent = best_of(jacobian)
+        records = geocentric_records(track, 0.0, days - 1.0, 500, 0.3 * arcsec)
+        near = Neighbourhood.around(
+            track, records, white_factors(500, 0.3 * arcsec), THRUST, "RTN", FORCES, threads=1
+        )
+        one = best_of(lambda near=near: near.chi2(near.theta[None]))
+        many = near.theta + np.zeros((64 * LANES, 1))
+        lane = best_of(lambda near=near, many=many: near.chi2(many)) / many.shape[0]
+        print(
+            f"  batch with 500 places and chi2, {lane * 1e6:.1f} us a trajectory: {twin / lane:,.0f} times; "
+            f"one block of {LANES} lanes {one * 1e6:.0f} us"
+        )
+        print(f"  grid and 9-parameter Jacobian at 500 outputs {spent * 1e6:.0f} us, {spent / one:.2f} blocks")
+    for name, state, days in (("main belt, 1 yr", BELT, 365.0), ("hyperbola, 120 d", HYPERBOLA, 120.0)):
+        for threads in (1, 2):
+            near, spent = batch_of(state, days, 300, ForceModel(), 256 * LANES, threads)
+            work = operations(near)
+            print(
+                f"likelihood of 300 records, 27 bodies, {name}, {threads} thread(s): {1 / spent:,.0f} a second, "
+                f"{work / 1e3:.0f} thousand operations each, {work / spent / 1e9:.1f} Gflop/s"
+            )
+
+
+if __name__ == "__main__":
+    main()

@@ -1,0 +1,71 @@
+"""Brackets from the outline of an arc, held to arcs that were fitted."""
+
+import numpy as np
+import pytest
+
+from ngbound.limits import detection_threshold
+from ngbound.mass import audit, audit_geometry, sagitta_sigma
+
+from .simulated import EARLY, ROUND, SIGMA_ARCSEC, THRUST, fitted
+
+CLAIM = {"component": "any", "false_alarm": 0.0027, "power": 0.95}
+
+
+@pytest.fixture(scope="module")
+def fit():
+    return fitted(*EARLY, 0 * THRUST, 5, ROUND)
+
+
+@pytest.fixture(scope="module")
+def outline(fit):
+    table = fit.residuals
+    return {
+        "n_obs": len(table),
+        "nights": len(np.unique(np.floor(table["tdb_d"]))),
+        "span_d": float(np.ptp(table["tdb_d"])),
+        "sigma_arcsec": SIGMA_ARCSEC,
+        "r_au": [float(table["r_au"].iloc[0]), float(table["r_au"].iloc[-1])],
+        "delta_au": [float(table["delta_au"].min()), float(table["delta_au"].max())],
+    }
+
+
+def test_the_sagitta_law():
+    # 500 points at 0.3 arcsec over 100 d at 1.5 au: 1.4544e-6 rad x 1.5 x sqrt(720/500) / 1e4
+    assert sagitta_sigma(500, 100.0, 0.3, 1.5) == pytest.approx(2.618e-10, rel=1e-3)
+
+
+def test_the_fitted_threshold_lies_in_the_bracket_of_its_outline(fit, outline):
+    threshold = detection_threshold(fit, false_alarm=0.0027, power=0.95)
+    found = audit_geometry(outline, {**CLAIM, "value": float(threshold.worst.value)})
+    assert found.verdict == "plausible", str(found)
+    for i, letter in enumerate("RTN"):
+        claim = {**CLAIM, "component": letter, "value": float(threshold.free[i].value)}
+        assert audit_geometry(outline, claim).verdict == "plausible", letter
+
+
+@pytest.mark.parametrize(
+    ("factor", "words"), [(1e3, "1000"), (1e-3, "1000"), (86400.0**2, "days and seconds")]
+)
+def test_gross_slips_are_implausible_and_named(fit, outline, factor, words):
+    threshold = detection_threshold(fit, false_alarm=0.0027, power=0.95)
+    value = f"{factor * float(threshold.worst.value):.2e} au/d2"
+    found = audit({"threshold": {**CLAIM, "value": value}, "geometry": outline})
+    assert not found.sound
+    assert found.geometry.verdict == "implausible"
+    assert any(words in slip for slip in found.slips), str(found)
+
+
+def test_the_same_seed_gives_the_same_bracket(outline):
+    claim = {**CLAIM, "value": 1e-8}
+    one, two, other = (audit_geometry(outline, claim, seed) for seed in (3, 3, 4))
+    assert one == two and one != other
+
+
+def test_a_given_orbit_is_used(outline):
+    # round, as the object's own orbit: fewer arcs, a narrower bracket
+    given = {**outline, "q_au": 1.9, "e": 0.04}
+    claim = {**CLAIM, "value": 4e-9}
+    found, free = audit_geometry(given, claim), audit_geometry(outline, claim)
+    assert found.n_simulated < free.n_simulated
+    spread = [np.ptp(np.log(x.simulated_au_d2)) for x in (found, free)]
+    assert spread[0] < spread[1]

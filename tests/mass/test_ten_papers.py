@@ -1,0 +1,168 @@
+"""Ten invented papers through the front door: five sound, five with one planted slip each.
+
+The sound numbers follow from F = zeta Q m v, M = F / (A g), the sphere and the brightness, worked
+out apart from the program and rounded as a paper would. Thresholds come from the arc of an invented
+object with errors of 0.06 arcsec.
+"""
+
+import pytest
+
+from ngbound.mass import audit
+
+from .simulated import EARLY, ROUND, SIGMA_ARCSEC, THRUST, fitted
+
+# zeta Q m v = 0.45 x 4.2e26 x 18.01528 u x 640 m/s = 3618.5 N; 3.1e-9 au/d2 / 1.8^2 = 1.9174e-8
+# m/s2: 1.887e11 kg; 480 kg/m3: 909 m
+NEARBY = {
+    "acceleration": "3.10e-9 au/d2",
+    "at": 1.8,
+    "rate": "4.20e26 molecules/s",
+    "speed": "0.640 km/s",
+    "collimation": "0.45",
+    "mass": "1.89e11 kg",
+    "density": "480 kg/m3",
+    "diameter": "909 m",
+}
+# 0.30 x 7.5e27 x 28.0101 u x 380 = 39768 N; 6.4e-10 au/d2 / 5.2^2 = 4.743e-10 m/s2: 8.384e13 kg
+DISTANT_CO = {
+    "acceleration": "6.40e-10 au/d2",
+    "local_acceleration": "4.74e-10 m/s2",
+    "at": "5.20 au",
+    "species": "CO",
+    "rate": "7.50e27 molecules/s",
+    "speed": "380 m/s",
+    "collimation": "0.300",
+    "mass": "8.38e13 kg",
+    "density": "350 kg/m3",
+    "diameter": "7.71 km",
+}
+# 0.6 x 14 kg/s x 310 m/s = 2604 N; over 8.8e-8 m/s2: 2.959e10 kg; 900 kg/m3: 397 m
+MASS_LOSS = {
+    "force": "2604 N",
+    "mass_loss": "14.0 kg/s",
+    "speed": "310 m/s",
+    "collimation": "0.60",
+    "local_acceleration": "8.80e-8 m/s2",
+    "mass": "2.96e10 kg",
+    "density": "900 kg/m3",
+    "radius": "199 m",
+}
+# H = 19.20, p = 0.050: 859 m; 600 kg/m3: 1.99e11 kg
+PHOTOMETRIC = {
+    "H": "19.20",
+    "albedo": "0.050",
+    "diameter": "859 m",
+    "density": "600 kg/m3",
+    "mass": "1.99e11 kg",
+}
+# 0.55 x 8.8e26 x 18.01528 u x 590 = 8542.5 N; 5.5e-9 au/d2 / 2.1^2 = 2.4993e-8 m/s2: 3.418e11 kg,
+# quoted in g with the unit kg
+GRAMS = {
+    "acceleration": "5.50e-9 au/d2",
+    "at": 2.1,
+    "rate": "8.80e26 molecules/s",
+    "speed": "590 m/s",
+    "collimation": "0.550",
+    "mass": "3.42e14 kg",
+    "density": "520 kg/m3",
+    "diameter": "1.08 km",
+}
+# 0.40 x 3.3e27 x 18.01528 u x 720 = 28431 N; 2.7e-8 au/d2 / 1.4^2 = 2.7606e-7 m/s2: 1.030e11 kg;
+# the acceleration quoted in m/s2 with its number in au/d2
+METRES = {
+    "acceleration": "2.70e-8 m/s2",
+    "at": 1.4,
+    "rate": "3.30e27 molecules/s",
+    "speed": "720 m/s",
+    "collimation": "0.40",
+    "mass": "1.03e11 kg",
+    "density": "430 kg/m3",
+    "diameter": "771 m",
+}
+# 0.50 x 2.6e25 x 18.01528 u x 810 = 315.0 N; 9.0e-10 au/d2 / 1.1^2 = 1.4906e-8 m/s2: 2.113e10 kg,
+# D = 416 m; the mass quoted is that of a sphere whose radius is 416 m
+RADIUS = {
+    "acceleration": "9.00e-10 au/d2",
+    "at": 1.1,
+    "rate": "2.60e25 molecules/s",
+    "speed": "810 m/s",
+    "collimation": "0.500",
+    "mass": "1.69e11 kg",
+    "density": "560 kg/m3",
+    "diameter": "416 m",
+}
+# 0.50 x 1.6e27 x 18.01528 u x 540 = 12923 N at 2.5 au; 1.2e-8 au/d2 / 2.5^2 = 3.8477e-8 m/s2:
+# 3.359e11 kg; the rate quoted is the one scaled to 1 au, 1.00e28
+WRONG_DISTANCE = {
+    "acceleration": "1.20e-8 au/d2",
+    "at": 2.5,
+    "rate": "1.00e28 molecules/s",
+    "speed": "540 m/s",
+    "collimation": "0.500",
+    "mass": "3.36e11 kg",
+    "density": "400 kg/m3",
+    "diameter": "1171 m",
+}
+
+
+@pytest.fixture(scope="module")
+def fit():
+    return fitted(*EARLY, 0 * THRUST, 5, ROUND)
+
+
+def quoted_limit(fit, sigmas: float) -> dict:
+    """A 95 % limit on the transverse thrust, the others free: so many sigma of the fit."""
+    sigma = float(fit.A_sigma[1].value)
+    return {
+        "title": "limit from an arc",
+        "threshold": {
+            "value": f"{sigmas * sigma:.3e} au/d2",
+            "component": "T",
+            "others": "free",
+            "confidence": 0.95,
+            "sided": 2,
+        },
+        "errors": {"arcsec": SIGMA_ARCSEC},
+    }
+
+
+@pytest.mark.parametrize("numbers", [NEARBY, DISTANT_CO, MASS_LOSS, PHOTOMETRIC])
+def test_sound_papers(numbers):
+    found = audit({"title": "sound", "numbers": numbers})
+    assert found.sound, str(found)
+    assert found.numbers.verdict == "sound" and found.slips == ()
+
+
+def test_the_fifth_sound_paper_with_its_arc(fit):
+    # 1.960 sigma is the two-sided 95 % multiple
+    found = audit(quoted_limit(fit, 1.960), arc=fit)
+    assert found.sound, str(found)
+    assert found.threshold.verdict == "holds"
+    assert found.threshold.claimed.ratio == pytest.approx(1.0, abs=0.02)
+
+
+@pytest.mark.parametrize(
+    ("numbers", "quantity", "words"),
+    [
+        (GRAMS, "mass", "factor 1000"),
+        (METRES, "acceleration", "au/d2 and m/s2 exchanged"),
+        (RADIUS, "mass", "radius and diameter exchanged"),
+        (WRONG_DISTANCE, "rate", "wrong distance"),
+    ],
+    ids=["factor-1000", "au-against-m", "radius-for-diameter", "wrong-distance"],
+)
+def test_planted_slips_are_named(numbers, quantity, words):
+    found = audit({"title": "one slip", "numbers": numbers})
+    assert not found.sound and found.numbers.verdict == "slip", str(found)
+    named = {c.quantities: c for c in found.numbers.changes}
+    assert any(words in slip for slip in named[(quantity,)].slips), str(found)
+    best = found.numbers.changes[0]
+    assert best.slips and any(words in slip for slip in found.slips)
+
+
+def test_one_sided_called_two_sided_is_named(fit):
+    # 1.645 sigma is the one-sided 95 % multiple, quoted as two-sided
+    found = audit(quoted_limit(fit, 1.645), arc=fit)
+    assert not found.sound and found.threshold.verdict == "another reading", str(found)
+    assert found.threshold.closest.changes == ("one-sided instead of two-sided",)
+    assert "one-sided instead of two-sided" in found.slips

@@ -1,0 +1,77 @@
+"""Compiled code: where it is kept, what a first run says, read-only folders and two starts at once."""
+
+import os
+import shutil
+import subprocess
+import sys
+from pathlib import Path
+
+import ngbound
+from ngbound.motion.compilation import compile_notice, compiled_code_folder, missing_kernels
+from tests.motion.orbits import BELT, neighbourhood
+
+PROBE = """
+import sys
+from ngbound.motion.compilation import compile_notice, compiled_code_folder
+print(compile_notice())
+print(compiled_code_folder())
+import numpy as np
+from ngbound.motion._kernels.bodies import inside_table, series
+from ngbound.motion.gravity import ForceModel
+tab, _ = ForceModel(asteroids=False).perturbers(0.0, 10.0)
+print(inside_table(tab, 5.0))
+print(sum(inside_table.stats.cache_hits.values()), sum(inside_table.stats.cache_misses.values()))
+"""
+
+
+def probe(environment: dict[str, str], path: Path | None = None) -> list[str]:
+    clean = {k: v for k, v in os.environ.items() if k != "PYTHONPATH"} | environment
+    if path is not None:
+        clean["PYTHONPATH"] = str(path)
+    done = subprocess.run(
+        [sys.executable, "-c", PROBE], env=clean, capture_output=True, text=True, check=True, cwd="/"
+    )
+    return done.stdout.splitlines()
+
+
+def test_nothing_is_said_once_compiled() -> None:
+    near, _ = neighbourhood(BELT, 100.0, 50.0, n=8)
+    near.chi2(near.theta[None])
+    assert missing_kernels() == []
+    assert compile_notice() == ""
+    assert compiled_code_folder().exists()
+
+
+def test_a_first_run_says_that_it_compiles_and_the_second_finds_the_code(tmp_path: Path) -> None:
+    first = probe({"NUMBA_CACHE_DIR": str(tmp_path)})
+    assert "first run" in first[0] and str(tmp_path) in first[0]
+    assert first[3] == "0 1"
+    assert probe({"NUMBA_CACHE_DIR": str(tmp_path)})[3] == "1 0"
+
+
+def test_package_in_a_folder_that_cannot_be_written(tmp_path: Path) -> None:
+    package = tmp_path / "site" / "ngbound"
+    source = Path(ngbound.__file__).parent
+    shutil.copytree(source, package, ignore=shutil.ignore_patterns("__pycache__"))
+    home = tmp_path / "home"
+    home.mkdir()
+    # a file where numba would put its folder keeps even the superuser from writing there
+    for folder in [package, *[p for p in package.rglob("*") if p.is_dir()]]:
+        (folder / "__pycache__").write_text("")
+    environment = {"HOME": str(home), "XDG_CACHE_HOME": str(home / "cache")}
+    first = probe(environment, tmp_path / "site")
+    assert first[2] == "True" and str(home) in first[1]
+    assert probe(environment, tmp_path / "site")[3] == "1 0"
+
+
+def test_two_processes_that_start_at_once(tmp_path: Path) -> None:
+    environment = {**os.environ, "NUMBA_CACHE_DIR": str(tmp_path)}
+    started = [
+        subprocess.Popen([sys.executable, "-c", PROBE], env=environment, stdout=subprocess.PIPE, text=True)
+        for _ in range(2)
+    ]
+    for process in started:
+        out, _ = process.communicate()
+        assert process.returncode == 0
+        assert out.splitlines()[2] == "True"
+    assert probe({"NUMBA_CACHE_DIR": str(tmp_path)})[3] == "1 0"
