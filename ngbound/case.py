@@ -114,6 +114,34 @@ class ErrorsTable(Table):
         default=ErrorModel.over_observing,
         description="What tames many records of a night: common, sqrt or none.",
     )
+    catalogue_offsets: bool | None = Field(
+        default=ErrorModel.catalogue_offsets,
+        description="Whether offsets of the star catalogues are marginalised.",
+    )
+    catalogue_seasons: bool = Field(
+        default=ErrorModel.catalogue_seasons,
+        description="Whether each catalogue has an offset for each season too.",
+    )
+    catalogue_scale: float = Field(
+        default=ErrorModel.catalogue_scale, description="Factor on the priors of the catalogues."
+    )
+    station_offset_arcsec: float | None = Field(
+        default=ErrorModel.station_offset_arcsec, description="Prior of each station's offset."
+    )
+    clock_s: float = Field(
+        default=ErrorModel.clock_s, description="Prior of each station's clock error."
+    )
+    photocentre_arcsec_au: float = Field(
+        default=ErrorModel.photocentre_arcsec_au,
+        description="Prior of the photocentre's offset towards the Sun, at 1 au.",
+    )
+    rescale_stations: bool | None = Field(
+        default=ErrorModel.rescale_stations,
+        description="Whether the arc rescales the errors of stations with enough records.",
+    )
+    rescale_least: int = Field(
+        default=ErrorModel.rescale_least, description="Records that are enough for that."
+    )
 
     def error_model(self) -> ErrorModel:
         """The error model of these choices."""

@@ -331,7 +331,7 @@ def write_results(
 def budget_in_words(mass: MassBound) -> str:
     """Median mass loss, speed and collimation of each species."""
     return "a mass loss of " + " and ".join(
-        f"{emission.rate.median * emission.kg_per_count:.2g} kg/s of {emission.species} at "
+        f"{emission.rate.median * emission.kg_per_count:.3g} kg/s of {emission.species} at "
         f"{emission.at_au:g} au (speed {emission.median_speed_m_s:.0f} m/s, collimation "
         f"{emission.collimation.median:.2g})"
         for emission in mass.outgassing.emissions

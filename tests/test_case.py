@@ -1,9 +1,13 @@
 """Case files: defaults, paths, and a sentence for every fault."""
 
+from dataclasses import fields
+
 import pytest
 
-from ngbound.case import Case, nearest, read_case
+from ngbound.arc import ErrorModel
+from ngbound.case import Case, ErrorsTable, ForcesTable, nearest, read_case
 from ngbound.errors import CaseError
+from ngbound.motion import ForceModel
 
 
 @pytest.fixture
@@ -142,3 +146,62 @@ def test_an_unknown_law_gets_the_nearest(write, law, meant):
 
 def test_nearest_lists_what_is_known_when_nothing_is_near():
     assert nearest("zzz", ["alpha", "beta"]) == "known are alpha, beta."
+
+
+def test_the_error_table_offers_every_choice_of_the_error_model():
+    assert ErrorsTable().error_model() == ErrorModel()
+    assert set(ErrorsTable.model_fields) == {field.name for field in fields(ErrorModel)}
+
+
+def test_the_forces_table_has_the_defaults_of_the_force_model():
+    assert ForcesTable().force_model() == ForceModel()
+
+
+def test_a_thrust_window_and_a_table_of_g_reach_the_thrust(write):
+    case = read_case(
+        write(
+            '[arc]\nfile = "a"\n[thrust]\nlaw = "table"\ntable = [[1.0, 1.0], [2.0, 0.2]]\n'
+            "window_au = [0.5, 3.0]\n"
+        )
+    )
+    thrust = case.thrust.thrust()
+    assert thrust.window.to_dict() == {"by": "distance", "start": 0.5, "end": 3.0}
+    assert thrust.g(2.0) == pytest.approx(0.2)
+
+
+def test_two_windows_at_once_are_refused(write):
+    message = fault(
+        write(
+            '[arc]\nfile = "a"\n[thrust]\nwindow_au = [0.5, 3.0]\n'
+            'window_dates = ["2024-01-01", "2024-02-01"]\n'
+        )
+    )
+    assert "not by both" in message
+
+
+def test_stations_of_the_users_own(write):
+    case = read_case(
+        write(
+            '[arc]\nfile = "a"\n[arc.stations.ZZ1]\n'
+            "longitude_deg = 10.0\nlatitude_deg = 50.0\naltitude_m = 300.0\n"
+        )
+    )
+    assert case.own_stations()["ZZ1"]["latitude_deg"] == 50.0
+
+
+def test_a_bad_outgassing_rate_is_told_where_it_stands(write):
+    message = fault(
+        write('[arc]\nfile = "a"\n[[outgassing]]\nrate = "some"\nat = 1.0\n')
+    )
+    assert "line 3" in message
+    assert "'some'" in message
+
+
+def test_several_species_make_one_budget(write):
+    case = read_case(
+        write(
+            '[arc]\nfile = "a"\n[[outgassing]]\nrate = 1e26\nat = 1.0\n'
+            '[[outgassing]]\nspecies = "CO"\nrate = "3 kg/s"\nat = 2.0\nspeed = "0.5 km/s"\n'
+        )
+    )
+    assert [one.species for one in case.budget().emissions] == ["H2O", "CO"]

@@ -9,6 +9,7 @@ a station-night is the independent part of each observation plus a part common t
 from ngbound.arc.ades_psv import write_psv
 from ngbound.arc.ades_rules import COLUMNS as ADES_COLUMNS
 from ngbound.arc.ades_xml import write_xml
+from ngbound.arc.catalogue_offsets import CataloguePrior, catalogue_priors, prior_of, seasons
 from ngbound.arc.errors_model import ErrorModel, Factors, Noise, station_nights, weight_table
 from ngbound.arc.observations import Arc
 from ngbound.arc.reading import read_arc
@@ -28,6 +29,7 @@ __all__ = [
     "ADES_COLUMNS",
     "Arc",
     "EARTH_EQUATORIAL_RADIUS_KM",
+    "CataloguePrior",
     "ErrorModel",
     "Factors",
     "Finding",
@@ -37,8 +39,11 @@ __all__ = [
     "Station",
     "all_stations",
     "geodetic_to_itrf_km",
+    "catalogue_priors",
+    "prior_of",
     "read_arc",
     "record_position_km",
+    "seasons",
     "station",
     "station_nights",
     "user_stations",

@@ -131,6 +131,7 @@ def _ades_cells(arc: Arc) -> dict[str, ObjectArray]:
             texts = spelled[codes].tolist()
         cells[name] = np.array(texts, dtype=object)
     _spell_angles(arc, cells)
+    _spell_offset_errors(arc, cells)
     optical = (table["kind"] == OPTICAL).to_numpy(dtype=bool)
     _spell_precision(arc, cells, optical)
     cells["obsTime"] = _times(arc)
@@ -176,6 +177,22 @@ def _spell_angles(arc: Arc, cells: dict[str, ObjectArray]) -> None:
                 ],
                 dtype=object,
             )
+
+
+def _spell_offset_errors(arc: Arc, cells: dict[str, ObjectArray]) -> None:
+    """Errors of offsets in distance and angle as they were reported."""
+    if "dist" not in cells:
+        return
+    polar = cells["dist"] != ""
+    for name in ("rmsRA", "rmsDec"):
+        cells[name][polar] = ""
+    if "corrReported" in arc.table:
+        reported = arc.table["corrReported"].to_numpy(dtype=float)
+        turned = polar & (cells["rmsCorr"] != "") & (cells.get("rmsDist", polar) != "")
+        rule = COLUMNS["rmsCorr"]
+        for row in np.flatnonzero(turned & (arc.table["kind"] == OCCULTATION).to_numpy()):
+            value = reported[row]
+            cells["rmsCorr"][row] = "" if value != value else _number(value, rule)
 
 
 def _angle(text: str, value: float) -> str:

@@ -169,19 +169,23 @@ class Noise:
         return len(self.sigma_ra_arcsec)
 
     def covariance_rad2(self, rows: IntArray) -> FloatArray:
-        """Dense covariance (2m, 2m) in rad^2 of some observations, interleaved; zero between
-        different nights, shared errors left out."""
-        m = len(rows)
+        """Dense covariance (..., 2m, 2m) in rad^2 of some observations (..., m), interleaved; zero
+        between different nights, shared errors left out."""
+        rows = np.asarray(rows)
+        m = rows.shape[-1]
         ra, dec = self.sigma_ra_arcsec[rows], self.sigma_dec_arcsec[rows]
         common, night = self.night_common_arcsec[rows], self.night[rows]
-        shared = np.where(night[:, None] == night[None, :], np.outer(common, common), 0.0)
-        cov = np.zeros((2 * m, 2 * m))
-        cov[0::2, 0::2] = shared
-        cov[1::2, 1::2] = shared
+        shared = common[..., :, None] * common[..., None, :]
+        shared[night[..., :, None] != night[..., None, :]] = 0.0
+        cov = np.zeros((*rows.shape[:-1], 2 * m, 2 * m))
+        cov[..., 0::2, 0::2] = shared
+        cov[..., 1::2, 1::2] = shared
         i = np.arange(m)
-        cov[2 * i, 2 * i] = ra**2
-        cov[2 * i + 1, 2 * i + 1] = dec**2
-        cov[2 * i, 2 * i + 1] = cov[2 * i + 1, 2 * i] = self.corr[rows] * ra * dec
+        cov[..., 2 * i, 2 * i] = ra**2
+        cov[..., 2 * i + 1, 2 * i + 1] = dec**2
+        between = self.corr[rows] * ra * dec
+        cov[..., 2 * i, 2 * i + 1] = between
+        cov[..., 2 * i + 1, 2 * i] = between
         return cov * ARCSEC_RAD**2
 
     @cached_property
@@ -200,7 +204,7 @@ class Noise:
         flat = np.zeros(int(flat_start[-1]))
         for m in np.unique(size):
             blocks = np.flatnonzero(size == m)
-            cov = np.stack([self.covariance_rad2(order[start[b] : start[b + 1]]) for b in blocks])
+            cov = self.covariance_rad2(order[start[blocks][:, None] + np.arange(m)])
             scale = np.sqrt(np.einsum("bii->bi", cov))
             try:
                 lower = np.linalg.cholesky(cov / (scale[:, :, None] * scale[:, None, :]))

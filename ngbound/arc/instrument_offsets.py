@@ -6,7 +6,7 @@ habits of its reduction. M. Carpino, A. Milani & S. R. Chesley 2003, Icarus 166,
 residuals of many stations that are a sizeable part of their scatter (from memory); the default is a
 fifth of a sigma that is implied by the table, and nothing where the observer states his own.
 
-The others are off unless asked for. A clock error moves the observed place along the apparent motion; the
+The others are off unless asked for. A clock error moves the observed place along the motion; the
 photocentre of a comet lies off its nucleus along the direction to the Sun, by an angle that goes
 as 1/distance (for example D. K. Yeomans et al. 2004, in Comets II, p. 137; the size is the
 user's).

@@ -83,6 +83,7 @@ DERIVED = (
     "line",
     "block",
     "object",
+    "corrReported",
 )
 """Columns that ngbound adds to those of ADES."""
 
@@ -385,7 +386,7 @@ def assemble(
 
 def _error_of_offset(columns: dict[str, Any], kind: ObjectArray) -> None:
     """Errors given as rmsDist (arcsec) and rmsPA (deg), turned into rmsRA, rmsDec, rmsCorr of
-    occultations."""
+    occultations; the correlation as reported stays in corrReported."""
     if not {"dist", "pa", "rmsDist", "rmsPA"} <= set(columns):
         return
     s_d, s_p = columns["rmsDist"], np.radians(columns["rmsPA"]) * columns["dist"]
@@ -400,7 +401,10 @@ def _error_of_offset(columns: dict[str, Any], kind: ObjectArray) -> None:
     columns["rmsRA"] = np.where(take, np.sqrt(np.fmax(var_ra, 0.0)), columns["rmsRA"])
     columns["rmsDec"] = np.where(take, np.sqrt(np.fmax(var_dec, 0.0)), columns["rmsDec"])
     with np.errstate(invalid="ignore", divide="ignore"):
-        columns["rmsCorr"] = np.where(take, both / np.sqrt(var_ra * var_dec), columns["rmsCorr"])
+        turned = np.where(take, both / np.sqrt(var_ra * var_dec), columns["rmsCorr"])
+    if take.any():
+        columns["corrReported"] = np.where(take, columns["rmsCorr"], np.nan)
+    columns["rmsCorr"] = turned
 
 
 def _objects(columns: Mapping[str, Any], checker: Checker) -> ObjectArray:

@@ -4,7 +4,9 @@ May import: constants, errors, motion, sky, and from its own room outgassing, si
 thrust_history.
 
 Each function scans one free quantity, keeps the values at which one thrust fits both results (chi2
-above their own best fits within the chosen quantile), and compares these with the published range.
+above their own best fits within the chosen quantile, else within three sigma), and compares these
+with the published range. Excluded means: no value fits within three sigma, or none that was ever
+published or could be conceived.
 """
 
 import math
@@ -25,7 +27,7 @@ from .distributions import AtMost, number_text
 from .outgassing import DEFAULT_COLLIMATION_SOURCE, Outgassing
 from .results import THREE_SIGMA, ThrustResult
 from .size import DEFAULT_DENSITY_SOURCE, sphere_mass_kg
-from .thrust_history import ArcResponse, History, Misfit, joint, law_history
+from .thrust_history import ArcResponse, History, Misfit, joint, law_history, settle
 
 Floats = NDArray[np.float64]
 POSSIBLE, STRAINED, EXCLUDED, UNTESTABLE = "possible", "strained", "excluded", "not testable"
@@ -160,10 +162,14 @@ class Pair:
     dof: int
     rng: np.random.Generator
 
-    @property
-    def limit(self) -> float:
-        """chi2 up to which a thrust counts as fitting both."""
-        return float(chi2.isf(1.0 - self.level, self.dof))
+    def fitting(self, grid: Floats, values: Floats) -> Floats:
+        """Values of a grid at which a thrust fits both: within ``level``, or, if there are none,
+        within three sigma."""
+        for tail in (1.0 - self.level, THREE_SIGMA):
+            good = grid[values <= float(chi2.isf(tail, self.dof))]
+            if good.size:
+                return good
+        return grid[:0]
 
     @property
     def size_au_d2(self) -> float:
@@ -190,10 +196,10 @@ class Pair:
 
 def _scan(pair: Pair, grid: Floats, chi2_of: Callable[[float], float]) -> tuple[Floats, Floats]:
     values = np.array([chi2_of(float(x)) for x in grid])
-    return values, grid[values <= pair.limit]
+    return values, pair.fitting(grid, values)
 
 
-def _interval(values: Floats, unit: str = "", text: Callable[[float], str] = number_text) -> str:
+def _interval(values: Any, unit: str = "", text: Callable[[float], str] = number_text) -> str:
     low, high = text(float(values.min())), text(float(values.max()))
     unit = f" {unit}" if unit else ""
     return f"{low}{unit}" if low == high else f"{low} to {high}{unit}"
@@ -212,7 +218,8 @@ def law(pair: Pair) -> Explanation:
     for name, form in LAWS.items():
         history = law_history(LawThrust(form))
         named[name] = pair.chi2(history, history)
-    agreeing = [name for name, value in named.items() if value <= pair.limit]
+    names = np.array(list(named))
+    agreeing = [str(name) for name in pair.fitting(names, np.array(list(named.values())))]
     best = min(float(values.min()), min(named.values()))
     verdict = EXPONENTS.verdict(good)
     if agreeing and verdict != POSSIBLE:
@@ -285,7 +292,7 @@ def date(pair: Pair) -> Explanation:
         return Explanation("date", title, UNTESTABLE, "a result has no dates")
     first = min(r.response.first_d for r in (pair.quiet, pair.active))
     last = max(r.response.last_d for r in (pair.quiet, pair.active))
-    grid = np.linspace(first, last, 242)[1:-1]
+    grid = np.linspace(first, last, 152)[1:-1]
 
     def cut(result: ThrustResult, when: float) -> History:
         own = result.response.own
@@ -357,23 +364,23 @@ def rotated(pair: Pair) -> Explanation:
     rank = sum(r.response.misfit(r.response.own).rank for r in (pair.quiet, pair.active))
     dof = max(rank - 5, 1)
 
+    responses = [pair.quiet.response, pair.active.response]
+    asked = [response.ask(response.own) for response in responses]
+
     def at(size: float) -> tuple[float, list[Floats]]:
         value, where = 0.0, []
-        for result, guess in zip((pair.quiet, pair.active), guesses, strict=True):
-            found = result.response.misfit(result.response.own, guess)
-            low, point = found.lowest_on_sphere(size)
-            if getattr(result.response, "allowed_sigma", 0.0):
-                low, point = result.response.misfit(
-                    result.response.own, point
-                ).lowest_on_sphere(size)
+        for response, near, guess in zip(responses, asked, guesses, strict=True):
+            low, point = near(guess).lowest_on_sphere(size)
+            if response.allowed_sigma:
+                low, point = near(point).lowest_on_sphere(size)
             value += low
             where.append(point)
         return value, where
 
-    sizes = centre * np.geomspace(0.03, 3.0, 121)
+    sizes = centre * np.geomspace(0.03, 3.0, 61)
     values = np.array([at(float(size))[0] for size in sizes])
     sizes = np.concatenate(
-        [sizes, sizes[np.argmin(values)] * np.geomspace(0.96, 1.04, 21)]
+        [sizes, sizes[np.argmin(values)] * np.geomspace(0.93, 1.07, 29)]
     )
     values = np.array([at(float(size))[0] for size in sizes])
     best = int(np.argmin(values))
@@ -410,15 +417,13 @@ def rotated(pair: Pair) -> Explanation:
         verdict = EXCLUDED
         sentence = "no turn of the thrust makes its size the same in both"
     elif pair.quiet.is_detection:
-        verdict = POSSIBLE if probability >= 1.0 - pair.level else STRAINED
+        verdict = POSSIBLE
         sentence = (
             f"a thrust of {number_text(size)} au/d2 turned by about {turn:.0f} degrees between the "
             "two fits both"
         )
     else:
         verdict = POSSIBLE if fraction >= 0.05 else STRAINED if fraction >= 0.003 else EXCLUDED
-        if verdict == POSSIBLE and probability < 1.0 - pair.level:
-            verdict = STRAINED
         sentence = f"a thrust of {number_text(size)} au/d2 could hide in some directions"
     inward = points[0][0] < 0 <= points[1][0]
     if inward and verdict != EXCLUDED:
@@ -441,13 +446,7 @@ def space_fixed(pair: Pair) -> Explanation:
     ]
     value, amounts = joint(responses, histories)
     probability = pair.probability(value)
-    verdict = (
-        POSSIBLE
-        if probability >= 1.0 - pair.level
-        else STRAINED
-        if probability >= THREE_SIGMA
-        else EXCLUDED
-    )
+    verdict = POSSIBLE if probability >= THREE_SIGMA else EXCLUDED
     size = float(np.linalg.norm(amounts))
     ra = math.degrees(math.atan2(amounts[1], amounts[0])) % 360.0
     dec = math.degrees(math.asin(amounts[2] / size)) if size > 0 else 0.0
@@ -465,8 +464,9 @@ def amplitude_ratios(pair: Pair) -> tuple[Floats, float, float]:
     """Ratios quiet / active of one thrust, direction kept, that fit both; the best; its chi2."""
     grid = np.concatenate([[0.0], np.geomspace(1e-3, 10.0, 241)])
     responses = [pair.quiet.response, pair.active.response]
-    histories = [response.own for response in responses]
-    values, good = _scan(pair, grid, lambda s: joint(responses, histories, [s, 1.0])[0])
+    asked = [response.ask(response.own) for response in responses]
+    censored = any(response.allowed_sigma for response in responses)
+    values, good = _scan(pair, grid, lambda s: settle(asked, [s, 1.0], censored)[0])
     return good, float(grid[np.argmin(values)]), float(values.min())
 
 

@@ -217,7 +217,7 @@ def _numbers(
                 )
             i = AXES.index("R" if letter == "any" else letter)
             amounts[i], matrix[i, i] = found.median / scale, (scale / sigma) ** 2
-        assumed = ()
+        assumed: tuple[str, ...] = ()
         if table.component == "any" and not named:
             assumed = (f"the thrust of {table.name!r} is taken as radial",)
         return amounts, matrix, 0.0, "estimate", assumed
@@ -239,9 +239,9 @@ def _numbers(
     for i, letter in enumerate(AXES):
         if table.component in ("any", letter):
             matrix[i, i] = sigma**-2
-    assumed = (
+    taken = (
         (f"the estimate behind the limit of {table.name!r} is taken as zero",)
         if kind == "limit"
         else ()
     )
-    return amounts, matrix, allowed, kind, assumed
+    return amounts, matrix, allowed, kind, taken

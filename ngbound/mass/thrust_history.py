@@ -18,10 +18,11 @@ import math
 from collections.abc import Callable
 from dataclasses import dataclass, field, replace
 from functools import cached_property
-from typing import Any, Literal
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.optimize import brentq
 
 from ngbound.errors import MassError
 from ngbound.fit import Fit
@@ -36,6 +37,10 @@ UNSEEN = 1e-10
 TABLE_AU = (0.01, 200.0)
 TABLE_NODES = 4001
 """A law given as a table is looked up on so many nodes, evenly in ln r."""
+SAGITTA_POINTS = 400
+"""Points along an arc that is known only by its quoted numbers."""
+CENSORED_ROUNDS = 40
+"""Most rounds in which a censored estimate and the common thrust settle on one another."""
 STATE_NAMES = ("x", "y", "z", "vx", "vy", "vz")
 
 
@@ -148,15 +153,12 @@ class Misfit:
                 math.sqrt(size**2 - point[1:] @ point[1:]) - abs(point[0]), point[0] or 1.0
             )
         else:
-            high = float(np.linalg.norm(gain)) / size - values[0] + values[-1] * 1e-12
-            high = max(high, low * (1 + 1e-12) + 1e-300)
-            for _ in range(200):
-                middle = 0.5 * (low + high)
-                point = gain / (values + middle)
-                if np.linalg.norm(point) > size:
-                    low = middle
-                else:
-                    high = middle
+            # 1 / |A(mu)| is nearly straight in mu
+            def short_of(mu: float) -> float:
+                return size / float(np.linalg.norm(gain / (values + mu))) - 1.0
+
+            high = low + 2.0 * float(np.linalg.norm(gain)) / size
+            point = gain / (values + float(brentq(short_of, low, high, rtol=1e-14)))
         point *= size / np.linalg.norm(point)
         amounts = axes @ point
         return float(self(amounts)), amounts
@@ -191,6 +193,7 @@ class ArcResponse:
     orbit_axes: Floats = field(repr=False)
     data: Floats = field(repr=False)
     own_columns: Floats | None = field(repr=False)
+    allowed_sigma: float = 0.0
     floor: float = field(repr=False, default=0.0)
 
     @classmethod
@@ -206,7 +209,7 @@ class ArcResponse:
             [np.linspace(low, 0.0, n_back)[:-1], np.linspace(0.0, high, GRID - n_back)]
         )
         phi = partials_along(span, STATE_NAMES).at_offset(grid)
-        inverse = np.linalg.inv(phi)[:, :, 3:]
+        inverse = np.asarray(np.linalg.inv(phi)[:, :, 3:], dtype=float)
         sun = np.concatenate(load_ephemeris().posvel("sun", epoch + grid), axis=-1)
         state = span.at_offset(grid) - sun
         radial = state[:, :3] / np.linalg.norm(state[:, :3], axis=1)[:, None]
@@ -217,10 +220,10 @@ class ArcResponse:
         noise = fit.noise.mask(keep)
         design = fit.design[rows]
         white_state = noise.whiten(design[:, :6])
-        axes = np.linalg.qr(white_state / np.linalg.norm(white_state, axis=0))[0]
+        axes: Floats = np.linalg.qr(white_state / np.linalg.norm(white_state, axis=0))[0]
         thrust_design = design[:, 6:]
         data = noise.whiten(fit.seen[keep].ravel() + thrust_design @ fit.theta[6:])
-        data = data - axes @ (axes.T @ data)
+        data -= axes @ (axes.T @ data)
         law = fit.thrust or Thrust("inverse-square")
         r = np.linalg.norm(state[:, :3], axis=1)
         bare = cls(
@@ -256,16 +259,20 @@ class ArcResponse:
             [np.zeros((1, 6, 3)), np.cumsum(0.5 * step * (push[1:] + push[:-1]), axis=0)]
         )
         rising -= rising[int(np.argmin(np.abs(self.grid_d)))]
-        moved = np.empty((self.record_tau_d.size, 6, 3))
-        for i in range(6):
-            for j in range(3):
-                moved[:, i, j] = np.interp(self.record_tau_d, self.grid_d, rising[:, i, j])
+        left = np.clip(np.searchsorted(self.grid_d, self.record_tau_d), 1, self.grid_d.size - 1) - 1
+        share = (self.record_tau_d - self.grid_d[left]) / np.diff(self.grid_d)[left]
+        moved = rising[left] + share[:, None, None] * (rising[left + 1] - rising[left])
         shaped = self.state_design.reshape(-1, 2, 6)
         return np.einsum("nci,nij->ncj", shaped, moved).reshape(-1, 3)
 
     def misfit(self, history: History, guess: Floats | None = None) -> Misfit:
-        """chi2 of the amounts under a history; ``guess`` plays no part for an arc."""
+        """chi2 of the amounts under a history; ``guess`` plays no part."""
         return self.own_misfit if history is self.own else self._misfit(history)
+
+    def ask(self, history: History) -> Callable[[Floats | None], Misfit]:
+        """`misfit` as a function of the guess, which plays no part for an arc."""
+        found = self.misfit(history)
+        return lambda guess: found
 
     def _misfit(self, history: History) -> Misfit:
         white = self.whiten(self.columns(history))
@@ -309,41 +316,65 @@ class QuotedResponse:
         r = np.interp(np.linspace(0, n - 1, 101), np.arange(n), np.array(self.r_along_au))
         return float(np.mean(self.own.g(r)))
 
-    def _shape(self, history: History) -> Floats:
-        dated = math.isfinite(self.first_d)
-        t = np.linspace(self.first_d, self.last_d, 400) if dated else np.linspace(0.0, 1.0, 400)
-        if not dated and (math.isfinite(history.from_d) or math.isfinite(history.until_d)):
-            raise MassError("A result without dates cannot be asked about a date; give its dates.")
-        x = np.linspace(-1.0, 1.0, 400)
+    @cached_property
+    def _along(self) -> tuple[Floats, Floats, Floats]:
+        """Position in the arc -1..1, date (0..1 without dates) and distance of points of it."""
+        x = np.linspace(-1.0, 1.0, SAGITTA_POINTS)
+        first, last = (self.first_d, self.last_d) if self.dated else (0.0, 1.0)
         r = np.interp(x, np.linspace(-1.0, 1.0, len(self.r_along_au)), self.r_along_au)
+        return x, first + 0.5 * (x + 1.0) * (last - first), r
+
+    @property
+    def dated(self) -> bool:
+        """Whether dates were quoted."""
+        return math.isfinite(self.first_d)
+
+    @cached_property
+    def _own_shape(self) -> Floats:
+        return self._shape(self.own)
+
+    def _shape(self, history: History) -> Floats:
+        if not self.dated and (math.isfinite(history.from_d) or math.isfinite(history.until_d)):
+            raise MassError("A result without dates cannot be asked about a date; give its dates.")
+        x, t, r = self._along
         weight = history.weight(t, r)
         shape = np.cumsum(np.cumsum(weight) - 0.5 * weight)
-        line = np.stack([np.ones(400), x], axis=1)
-        return shape - line @ np.linalg.lstsq(line, shape, rcond=None)[0]
+        shape -= shape.mean()
+        return shape - x * float(x @ shape) / float(x @ x)
 
-    def misfit(self, history: History, guess: Floats | None = None) -> Misfit:
-        """chi2 of the amounts under a history.
-
-        ``guess`` (3,): amounts that a censored estimate is taken as near to as it may be.
-        """
+    def ask(self, history: History) -> Callable[[Floats | None], Misfit]:
+        """chi2 of the amounts under a history, given amounts (3,) that a censored estimate is taken
+        as near to as it may be."""
         if history.frame != "RTN":
             raise MassError("Quoted numbers say nothing about directions fixed in space.")
-        own, other = self._shape(self.own), self._shape(history)
+        own = self._own_shape
+        other = own if history is self.own else self._shape(history)
         square = float(own @ own)
         cross, full = float(own @ other) / square, float(other @ other) / square
-        amounts = self.amounts
-        if self.allowed_sigma and guess is not None:
-            wanted = cross * guess
-            size = math.sqrt(max(float(wanted @ self.matrix @ wanted), 1e-300))
-            amounts = wanted * min(1.0, self.allowed_sigma / size)
-        return Misfit(
-            full * self.matrix,
-            cross * (self.matrix @ amounts),
-            float(amounts @ self.matrix @ amounts),
-        )
+
+        def near(guess: Floats | None) -> Misfit:
+            amounts = self.amounts
+            if self.allowed_sigma and guess is not None:
+                wanted = cross * guess
+                size = math.sqrt(max(float(wanted @ self.matrix @ wanted), 1e-300))
+                amounts = wanted * min(1.0, self.allowed_sigma / size)
+            return Misfit(
+                full * self.matrix,
+                cross * (self.matrix @ amounts),
+                float(amounts @ self.matrix @ amounts),
+            )
+
+        return near
+
+    def misfit(self, history: History, guess: Floats | None = None) -> Misfit:
+        """`ask`, answered at once."""
+        return self.ask(history)(guess)
 
 
 Response = ArcResponse | QuotedResponse
+
+
+Asked = Callable[[Floats | None], Misfit]
 
 
 def joint(
@@ -355,21 +386,19 @@ def joint(
 
     ``scales``: the thrust in arc i is this many times the amounts.
     """
-    factors = scales or [1.0] * len(responses)
+    asked = [response.ask(history) for response, history in zip(responses, histories, strict=True)]
+    return settle(asked, scales or [1.0] * len(responses), any(r.allowed_sigma for r in responses))
+
+
+def settle(asked: list[Asked], scales: list[float], censored: bool) -> tuple[float, Floats]:
+    """`joint` of arcs that were asked already; censored estimates are settled by turns."""
     guess = np.zeros(3)
-    rounds = 40 if any(getattr(r, "allowed_sigma", 0.0) for r in responses) else 1
     value = math.inf
-    for _ in range(rounds):
-        parts = [
-            response.misfit(history, factor * guess).scaled(factor)
-            for response, history, factor in zip(responses, histories, factors, strict=True)
-        ]
-        total = parts[0]
-        for part in parts[1:]:
-            total = total + part
+    for _ in range(CENSORED_ROUNDS):
         previous = value
-        value, guess = total.lowest()
-        if abs(value - previous) < 1e-6:
+        parts = [near(s * guess).scaled(s) for near, s in zip(asked, scales, strict=True)]
+        value, guess = sum(parts[1:], start=parts[0]).lowest()
+        if abs(value - previous) < 1e-6 or not censored:
             break
     return value, guess
 
@@ -377,17 +406,5 @@ def joint(
 def freedom(responses: list[Response]) -> int:
     """Degrees of freedom of "one thrust in all": measured axes of all less those of the sum."""
     parts = [response.misfit(response.own) for response in responses]
-    whole = parts[0]
-    for part in parts[1:]:
-        whole = whole + part
+    whole = sum(parts[1:], start=parts[0])
     return max(sum(part.rank for part in parts) - whole.rank, 0)
-
-
-def to_dict(history: History) -> dict[str, Any]:
-    """JSON-able description of a history."""
-    finite = {
-        key: getattr(history, key)
-        for key in ("within_au", "from_d", "until_d")
-        if math.isfinite(getattr(history, key))
-    }
-    return {"words": history.words, "frame": history.frame, **finite}

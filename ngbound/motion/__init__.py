@@ -14,6 +14,7 @@ shared grid of the same nodes (`partials_along`, `Neighbourhood`).
 """
 
 from ngbound.motion._kernels.layout import PARAMETERS
+from ngbound.motion.compilation import compile_notice
 from ngbound.motion.elements import CometaryElements, KeplerianElements
 from ngbound.motion.gravity import ForceModel
 from ngbound.motion.kepler import propagate_two_body, two_body_sightlines, two_body_transition
@@ -21,8 +22,10 @@ from ngbound.motion.lambert import lambert, two_point_scan
 from ngbound.motion.neighbours import Neighbourhood
 from ngbound.motion.observables import Records, Sight, design_matrix, residuals, see
 from ngbound.motion.orbit import Orbit, Trajectory, predict, predict_for
+from ngbound.motion.original import ReciprocalAxis, reciprocal_axis
 from ngbound.motion.partials import Partials, partials_along
 from ngbound.motion.propagate import Track, integrate_track
+from ngbound.motion.radar import Echo, echo, echo_partials
 from ngbound.motion.thrust import (
     LAWS,
     FormLaw,
@@ -38,12 +41,14 @@ __all__ = [
     "LAWS",
     "PARAMETERS",
     "CometaryElements",
+    "Echo",
     "ForceModel",
     "FormLaw",
     "KeplerianElements",
     "Neighbourhood",
     "Orbit",
     "Partials",
+    "ReciprocalAxis",
     "Records",
     "Sight",
     "TableLaw",
@@ -51,7 +56,10 @@ __all__ = [
     "Track",
     "Trajectory",
     "Window",
+    "compile_notice",
     "design_matrix",
+    "echo",
+    "echo_partials",
     "find_law",
     "integrate_track",
     "lambert",
@@ -61,6 +69,7 @@ __all__ = [
     "predict_for",
     "propagate_two_body",
     "radiation_pressure_au_d2",
+    "reciprocal_axis",
     "residuals",
     "see",
     "two_body_sightlines",

@@ -15,7 +15,7 @@ from ngbound.constants import C_AU_D
 from ngbound.errors import PropagationError
 from ngbound.motion.partials import Partials
 from ngbound.motion.propagate import Track
-from ngbound.sky import angles_to_direction, sky_axes
+from ngbound.sky import angles_to_direction, deflection_by_sun, load_ephemeris, sky_axes
 
 Floats = NDArray[np.float64]
 LIGHT_TIME_SWEEPS = 20
@@ -71,8 +71,11 @@ class Sight:
     tau_d: Floats
 
 
-def see(track: Track, records: Records) -> Sight:
+def see(track: Track, records: Records, deflection: bool = False) -> Sight:
     """Solve the light time of every record.
+
+    With ``deflection`` the line of sight is bent by what the Sun bends the object's light more or less than the
+    stars'. It is off by default: astrometric places, as published and as reduced, leave it out.
 
     Raises
     ------
@@ -92,7 +95,17 @@ def see(track: Track, records: Records) -> Sight:
     else:
         raise PropagationError("The light time of a record does not settle; check the orbit.")
     state = track.at_offset(tau)
-    return Sight(state[:, :3] - records.observer_au, state[:, 3:], tau)
+    rho = state[:, :3] - records.observer_au
+    if deflection:
+        ephemeris = load_ephemeris()
+        distance = np.linalg.norm(rho, axis=1)[:, None]
+        bent = deflection_by_sun(
+            rho / distance,
+            state[:, :3] - ephemeris.position_au("sun", track.epoch_d + tau),
+            records.observer_au - ephemeris.position_au("sun", records.tdb_d),
+        )
+        rho = rho + bent * distance
+    return Sight(rho, state[:, 3:], tau)
 
 
 def residuals(sight: Sight, records: Records) -> Floats:

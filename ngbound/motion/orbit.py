@@ -13,6 +13,7 @@ import pandas as pd
 from numpy.typing import ArrayLike, NDArray
 
 from ngbound.arc import Station
+from ngbound.constants import C_AU_D
 from ngbound.errors import CaseError
 from ngbound.motion.elements import CometaryElements, KeplerianElements
 from ngbound.motion.gravity import ForceModel
@@ -210,6 +211,7 @@ def predict(
     station: str | tuple[float, float, float] = "500",
     scale: str = "utc",
     own_stations: Mapping[str, Station] | None = None,
+    deflection: bool = False,
 ) -> pd.DataFrame:
     """What an observer sees.
 
@@ -219,6 +221,9 @@ def predict(
     times : text, astropy Time, TDB days past J2000.0, or a list of them
     station : str or (longitude deg, latitude deg, altitude m)
         Station code; "500" is the geocentre.
+    deflection : bool
+        Add the Sun's deflection of the object's light against that of the stars; see
+        `ngbound.motion.observables.see` for why it is off.
 
     Returns
     -------
@@ -227,10 +232,12 @@ def predict(
     """
     tdb_d = np.atleast_1d(np.asarray(parse_time(times, scale), dtype=float))
     observers = station_states(station, tdb_d, load_ephemeris(), own_stations)
-    return predict_for(orbit, tdb_d, observers.position_au)
+    return predict_for(orbit, tdb_d, observers.position_au, deflection)
 
 
-def predict_for(orbit: Orbit, tdb_d: ArrayLike, observer_au: ArrayLike) -> pd.DataFrame:
+def predict_for(
+    orbit: Orbit, tdb_d: ArrayLike, observer_au: ArrayLike, deflection: bool = False
+) -> pd.DataFrame:
     """Astrometric places for observers at barycentric positions (n, 3) au; columns as in `predict`."""
     tdb_d = np.atleast_1d(np.asarray(tdb_d, dtype=float))
     observer = np.atleast_2d(np.asarray(observer_au, dtype=float))
@@ -239,10 +246,10 @@ def predict_for(orbit: Orbit, tdb_d: ArrayLike, observer_au: ArrayLike) -> pd.Da
     track = orbit.track(float(tdb_d.min()) - reach, float(tdb_d.max()))
     state = track.at(tdb_d)
     far = float(np.max(np.linalg.norm(state[:, :3] - observer, axis=1)))
-    if far / 173.0 > reach:
-        track = orbit.track(float(tdb_d.min()) - 2.0 * far / 173.0, float(tdb_d.max()))
+    if far / C_AU_D > reach:
+        track = orbit.track(float(tdb_d.min()) - 2.0 * far / C_AU_D, float(tdb_d.max()))
     zeros = np.zeros(tdb_d.size)
-    sight = see(track, Records.from_angles(tdb_d, observer, zeros, zeros))
+    sight = see(track, Records.from_angles(tdb_d, observer, zeros, zeros), deflection)
     ra, dec = direction_to_angles(sight.rho_au)
     emitted = track.epoch_d + sight.tau_d
     sun = load_ephemeris().position_au("sun", emitted)

@@ -1,4 +1,4 @@
-"""Simulated two-epoch histories: the true explanation is among the possible, a false one excluded."""
+"""Simulated two-epoch histories: the true explanation is possible, a false one excluded."""
 
 import json
 

@@ -9,6 +9,8 @@ from ngbound.motion import Thrust, Window
 
 from .simulated import EARLY, ROUND, THRUST, fitted
 
+FROM_MIDDLE = Window.between_dates("2021-01-15", "2031-01-01")
+
 
 @pytest.fixture(scope="module")
 def fit():
@@ -39,10 +41,8 @@ def test_own_law_gives_back_the_fit(fit, response):
         (Thrust("power", exponent=5.0), History("r^-5", lambda r: r**-5)),
         (Thrust("water-ice"), law_history(Thrust("water-ice"))),
         (
-            Thrust("inverse-square", window=Window.between_dates("2021-01-15", "2031-01-01")),
-            History(
-                "late", lambda r: r**-2.0, from_d=Window.between_dates("2021-01-15", "2031-01-01").start
-            ),
+            Thrust("inverse-square", window=FROM_MIDDLE),
+            History("late", lambda r: r**-2.0, from_d=FROM_MIDDLE.start),
         ),
     ],
     ids=["power", "water", "window"],

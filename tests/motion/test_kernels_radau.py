@@ -120,6 +120,21 @@ def test_flyby_of_the_earth_at_40000_km() -> None:
     assert normal.ahead is not None and normal.ahead.n < 400
 
 
+def test_pass_through_the_hill_sphere_of_jupiter() -> None:
+    # 0.15 au from Jupiter and slower than a circular orbit there: bound to it at first
+    epoch = 50.0
+    position, velocity = load_ephemeris().posvel("jupiter", epoch)
+    state = np.concatenate([position + [0.15, 0.0, 0.01], velocity + [0.0, 1.1e-3, 1e-4]])
+    days = 2000.0
+    times = np.linspace(epoch, epoch + days, 101)
+    normal = integrate_track(epoch, state, epoch, epoch + days)
+    tight = integrate_track(epoch, state, epoch, epoch + days, eps=1e-10)
+    assert np.abs(normal.at(times) - tight.at(times))[:, :3].max() < 5.0 * metre
+    assert normal.ahead is not None and normal.ahead.n < 600
+    back = integrate_track(epoch + days, normal.at(epoch + days)[0], epoch, epoch + days)
+    assert np.linalg.norm(back.at(epoch)[0, :3] - state[:3]) < 20.0 * metre
+
+
 def test_orbit_into_the_sun_is_refused_in_a_sentence() -> None:
     state = at_perihelion(1.0, 0.0)
     sun = state.copy()

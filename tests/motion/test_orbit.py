@@ -101,3 +101,13 @@ def test_residuals_are_observed_minus_computed() -> None:
     )
     seen = residuals(sight, records)[0]
     assert seen == pytest.approx([2 * arcsec, -1 * arcsec], abs=0.1 * mas)
+
+
+def test_deflection_is_small_and_off_by_default() -> None:
+    times = np.linspace(0.0, 300.0, 40)
+    plain = predict(ORBIT, times, "500", scale="tdb")
+    bent = predict(ORBIT, times, "500", scale="tdb", deflection=True)
+    shift = np.abs(np.radians(bent["dec_deg"] - plain["dec_deg"])).max()
+    assert 1e-3 * mas < shift < 60 * mas
+    again = predict(ORBIT, times, "500", scale="tdb", deflection=False)
+    assert np.array_equal(plain["ra_deg"], again["ra_deg"])

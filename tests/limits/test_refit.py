@@ -1,0 +1,118 @@
+"""Complete injections, held to the program's own fit of a synthetic arc."""
+
+from dataclasses import replace
+
+import numpy as np
+import pandas as pd
+import pytest
+
+from ngbound.arc import Arc
+from ngbound.errors import LimitError
+from ngbound.fit import fit_orbit
+from ngbound.limits import ExactRefit, detection_threshold, inject_and_recover
+from tests.limits.arcs import CLASSES, ERRORS, fitted
+
+NEAR_EARTH = CLASSES["near-Earth, 60 days"]
+SHORT = replace(NEAR_EARTH, span_d=40.0, n_nights=12, per_night=4)
+
+
+@pytest.fixture(scope="module")
+def push():
+    return fitted(SHORT)
+
+
+@pytest.fixture(scope="module")
+def threshold(push):
+    found = detection_threshold(push)
+    return found.worst.value * found.worst_direction
+
+
+def injected_arc(model: ExactRefit, A: np.ndarray, stream: np.random.SeedSequence) -> Arc:
+    """The arc that the model makes in its head, written down: real places moved by minus r_i."""
+    y = model.y_null.copy()
+    y[6:] += model._tail @ A
+    frame = model.frame(y, 9)
+    shift = model.draw(np.random.default_rng(stream)) - model.seen(y[None, :], frame.hood)[0]
+    table = model.fit.used.table
+    dec = table["dec_rad"].to_numpy()
+    places = pd.DataFrame(
+        {
+            "permID": "999999",
+            "mode": "CCD",
+            "stn": table["stn"].to_numpy(),
+            "obsTime": table["obsTime"].to_numpy(),
+            "ra": np.degrees(table["ra_rad"].to_numpy() + shift[0::2] / np.cos(dec)),
+            "dec": np.degrees(dec + shift[1::2]),
+            "astCat": "Gaia2",
+            "rmsRA": table["rmsRA"].to_numpy(),
+            "rmsDec": table["rmsDec"].to_numpy(),
+        }
+    )
+    return Arc.from_frame(places, name="injected")
+
+
+@pytest.mark.parametrize("reject", [False, True])
+def test_an_injection_is_what_the_program_finds_in_that_arc(push, threshold, reject):
+    model = ExactRefit(push, reject=reject)
+    stream = np.random.SeedSequence(3)
+    done = model.refit(threshold[None, :], [stream])
+    arc = injected_arc(model, threshold, stream)
+    thrust = push.thrust
+    found = fit_orbit(arc, thrust, ERRORS, initial=push.orbit, reject=reject)
+    sigma = np.sqrt(np.diag(found.theta_cov)[6:])
+    np.testing.assert_allclose(done.A_hat[0] / sigma, found.theta[6:] / sigma, atol=0.01)
+    np.testing.assert_allclose(np.sqrt(np.diag(done.covariance[0])), sigma, rtol=0.01)
+    assert done.n_rejected[0] == found.n_rejected
+    null = fit_orbit(arc, None, ERRORS, initial=push.orbit, reject=False, keep=found.keep)
+    if not reject:
+        assert done.delta_chi2[0] == pytest.approx(null.chi2 - found.chi2, abs=0.02)
+
+
+def test_counts_agree_with_linear_theory_and_do_not_depend_on_the_lot(push, threshold):
+    found = inject_and_recover(push, threshold, n=150, seed=1)
+    assert found.n_failed == 0
+    low, high = found.declared.interval
+    assert low - 0.02 < found.expected < high + 0.02
+    assert np.all(np.abs(found.bias.value) < 4.5 * found.bias_error.value)
+    np.testing.assert_allclose(found.scatter, 1.0, atol=0.25)
+    streams = np.random.SeedSequence(1).spawn(150)
+    alone = ExactRefit(push).refit(threshold[None, :], streams[70:71])
+    np.testing.assert_allclose(alone.A_hat[0], found.A_hat.value[70], rtol=1e-6)
+
+
+def test_one_component_with_the_others_held(push):
+    model = ExactRefit(push, free="R")
+    held = detection_threshold(push).held[0].value
+    sigma = float(model.information.covariance[0, 0] ** 0.5)
+    assert held / sigma == pytest.approx(detection_threshold(push).delta_one, rel=1e-9)
+    found = inject_and_recover(push, [held], n=100, seed=2, free="R")
+    assert found.components == "R"
+    assert found.scatter[0] == pytest.approx(1.0, abs=0.25)
+    assert found.coverage_unified is not None
+
+
+def test_noise_of_the_model_has_its_covariance(push):
+    model = ExactRefit(push)
+    white = np.array(
+        [model.noise.whiten(model.draw(np.random.default_rng(i))) for i in range(400)]
+    )
+    assert np.mean(white**2) == pytest.approx(1.0, abs=0.02)
+    correlation = white.T @ white / len(white) - np.eye(white.shape[1])
+    assert np.max(np.abs(correlation)) < 0.4
+    assert np.sqrt(np.mean(correlation**2)) < 0.055
+
+
+def test_noise_of_the_residuals_has_their_size(push):
+    model = ExactRefit(push, noise="residuals")
+    white = np.array(
+        [model.noise.whiten(model.draw(np.random.default_rng(i))) for i in range(400)]
+    )
+    assert np.mean(white**2) == pytest.approx(push.chi2 / push.dof, rel=0.1)
+    assert abs(np.mean(white)) < 0.03
+
+
+def test_choices_out_of_range_are_refused(push):
+    with pytest.raises(LimitError, match="some of RTN"):
+        ExactRefit(push, free="X")
+    with pytest.raises(LimitError, match="model, residuals"):
+        ExactRefit(push, noise="white")
