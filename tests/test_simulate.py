@@ -38,7 +38,14 @@ def changed(recipe: Recipe, **tables):
 @pytest.mark.parametrize("history", ["quiet", "pushed"])
 def test_the_checked_in_arcs_are_what_their_recipes_make(tmp_path, history):
     made = simulate_arc(DEMO / f"{history}_recipe.toml", output=tmp_path / "again.psv")
-    assert made.path.read_bytes() == (DEMO / f"{history}.psv").read_bytes()
+    again, kept = (ng.read_arc(path).table for path in (made.path, DEMO / f"{history}.psv"))
+    same = ["trkSub", "stn", "sys", "obsTime", "astCat", "block", "rmsRA", "rmsTime"]
+    assert again[same].equals(kept[same])
+    # the last digits may differ by rounding, and by what a better propagator moves
+    for column, digit in (("ra_rad", 1e-6), ("dec_rad", 1e-6)):
+        assert np.all(np.abs(again[column] - kept[column]) < np.radians(2.0 * digit))
+    for column in ("pos1", "pos2", "pos3"):
+        assert np.all(np.abs(again[column] - kept[column]) < 0.01)
 
 
 def test_the_arc_is_one_that_the_reader_reads(simulated):

@@ -135,6 +135,14 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
                 )
             cells[name][row] = text
 
+    if strict:
+        loose = [name for name in root.attrib if name != "version"]
+        if loose:
+            problem, remedy = f"it has the attribute {loose[0]!r}", "Remove the attribute."
+            raise _fail(root, source, "ades", problem, remedy)
+        for text, place in [(root.text, root), *((child.tail, child) for child in root)]:
+            if text and text.strip():
+                raise _fail(place, source, "ades", "text stands between its elements", "Remove it.")
     for element in root:
         if element.tag in RECORD_KINDS:
             record(element, -1)
@@ -150,6 +158,9 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
                 )
             contexts.append(_context(element[0], source, strict))
             data = element[1]
+            if strict:
+                _refuse_loose_text(element, source)
+                _refuse_loose_text(data, source)
             if not len(data):
                 raise _fail(data, source, "obsData", "it holds no record", "Add records.")
             for child in data:

@@ -134,19 +134,22 @@ class _Rest:
     noise: Noise
     joint: JointSolution
 
-    def z(self, rows: NDArray[np.bool_]) -> tuple[float, float]:
-        """Standard normal values of the mean of some kept observations in RA and in Dec."""
-        out = []
+    def z(self, labels: NDArray[Any]) -> tuple[NDArray[Any], Floats]:
+        """Names of the groups of kept observations and standard normal values (g, 2) of their
+        means in RA and in Dec."""
+        names, group = np.unique(labels, return_inverse=True)
+        g, n = len(names), len(self.noise)
+        ones = np.zeros((n, 2, g, 2))
         for axis in (0, 1):
-            ones = np.zeros((len(self.noise), 2))
-            ones[rows, axis] = 1.0
-            w = self.noise.whiten_nights(ones.ravel())
-            seen = self.joint.white.T @ w
-            variance = float(w @ w - seen @ self.joint.cov @ seen)
-            # a mean that the fit absorbs altogether cannot be judged
-            sure = variance > 1e-6 * float(w @ w)
-            out.append(float(w @ self.joint.rest) / math.sqrt(variance) if sure else 0.0)
-        return out[0], out[1]
+            ones[np.arange(n), axis, group, axis] = 1.0
+        w = self.noise.whiten_nights(ones.reshape(2 * n, 2 * g))
+        seen = self.joint.white.T @ w
+        length2 = np.sum(w**2, axis=0)
+        variance = length2 - np.sum(seen * (self.joint.cov @ seen), axis=0)
+        # a mean that the fit absorbs altogether cannot be judged
+        sure = variance > 1e-6 * length2
+        z = np.where(sure, self.joint.rest @ w / np.sqrt(np.where(sure, variance, 1.0)), 0.0)
+        return names, z.reshape(g, 2)
 
     def chi2_per_dof(self, rows: NDArray[np.bool_]) -> float:
         both = np.repeat(rows, 2)
@@ -244,10 +247,11 @@ def _nights(fit: Fit, rest: _Rest) -> pd.DataFrame:
     free = slice(fit.n_state, p)
     old = np.diag(fit.joint.cov)[free]
     rows = []
+    numbers, z = rest.z(night)
     for number in pd.unique(night):
         mine = night == number
         first = int(np.flatnonzero(mine)[0])
-        z_ra, z_dec = rest.z(mine)
+        z_ra, z_dec = z[int(np.searchsorted(numbers, number))].tolist()
         row = {
             "utc_day": int(day[first]),
             "stn": str(stn[first]),
@@ -275,9 +279,9 @@ def _groups(fit: Fit, rest: _Rest) -> pd.DataFrame:
     }
     rows = []
     for kind, labels in named.items():
-        for name in sorted(set(labels.tolist())):
+        names, z = rest.z(labels.astype(str))
+        for name, (z_ra, z_dec) in zip(names.tolist(), z.tolist(), strict=True):
             mine = labels == name
-            z_ra, z_dec = rest.z(mine)
             rows.append(
                 {
                     "kind": kind,

@@ -270,8 +270,9 @@ def differential_correction(
             damping = damping if damping > 1e-10 else 0.0
         here = there
     raise FitError(
-        f"The differential correction did not converge in {max_sweeps} steps (chi2 = {here.chi2:.6g}); "
-        "give a better first orbit, or look for records of another object.",
+        f"The differential correction did not converge in {max_sweeps} steps "
+        f"(chi2 = {here.chi2:.6g}); give a better first orbit, or look for records of another "
+        "object.",
         theta=here.theta,
         chi2=here.chi2,
     )

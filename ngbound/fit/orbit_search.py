@@ -1,8 +1,9 @@
 """From angles alone to a converged orbit over the whole arc.
 
-Preliminary orbits of a sub-arc are corrected with all forces, then the sub-arc grows: each time by as much as the orbit's
-own uncertainty allows to be called linear, with new records judged against that uncertainty before they
-enter. Imports numpy, errors, arc, sky, motion and this room.
+Preliminary orbits of a sub-arc are corrected with all forces, then the sub-arc grows: each time by
+as much as the orbit's own uncertainty allows to be called linear, with new records judged against
+that uncertainty before they enter. Imports numpy, constants, errors, arc, sky, motion and this
+room.
 """
 
 import math

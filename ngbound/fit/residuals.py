@@ -46,9 +46,10 @@ def residual_table(
     Returns
     -------
     pandas.DataFrame
-        tdb_d, utc, stn, mode, astCat, line; ra_arcsec (times cos dec) and dec_arcsec, observed minus computed; their
-        sigmas; along_arcsec and across_arcsec, the residual along and 90 degrees (towards north from
-        east, that is to the left) off the apparent motion; chi, the root of the record's chi2; keep;
+        tdb_d, utc, stn, mode, astCat, line; ra_arcsec (times cos dec) and dec_arcsec, observed
+        minus computed; their sigmas; along_arcsec and across_arcsec, the residual along and 90
+        degrees (towards north from east, that is to the left) off the apparent motion; chi, the
+        root of the record's chi2, freed of the errors it shares with others; keep;
         motion_ra_arcsec_h, motion_dec_arcsec_h; r_au and delta_au.
     """
     motion = motion_rad_d(sight, records, observers)

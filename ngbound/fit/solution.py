@@ -1,4 +1,7 @@
-"""Fit: an orbit with its covariance and residuals, and the comparison of two; imports arc, sky, motion and this room."""
+"""Fit: an orbit with its covariance and residuals, and the comparison of two.
+
+Imports numpy, pandas, scipy, astropy units, constants, errors, arc, sky, motion and this room.
+"""
 
 import math
 from collections.abc import Callable
@@ -267,8 +270,9 @@ class Fit:
     def __str__(self) -> str:
         what = f"with {self.components} thrust" if self.components else "gravity only"
         lines = [
-            f"Fit {what}: {self.n_obs} observations ({self.n_rejected} rejected), rms {self.rms_arcsec:.3f} arcsec, "
-            f"weighted {self.weighted_rms_arcsec:.3f} arcsec, chi2 {self.chi2:.2f} for {self.dof} degrees of freedom",
+            f"Fit {what}: {self.n_obs} observations ({self.n_rejected} rejected), rms "
+            f"{self.rms_arcsec:.3f} arcsec, weighted {self.weighted_rms_arcsec:.3f} arcsec, chi2 "
+            f"{self.chi2:.2f} for {self.dof} degrees of freedom",
         ]
         for c, a, s in zip(
             self.components, self.theta[6:], np.sqrt(np.diag(self.theta_cov)[6:]), strict=True
@@ -484,7 +488,8 @@ class Comparison:
     n_obs : int
         Observations both were fitted to for this comparison.
     refitted : bool
-        Whether the outlier rule had kept different observations, so that both were fitted anew to common ones.
+        Whether outlier rule or station scales had come out differently, so that both were fitted
+        anew to common observations with common errors.
     """
 
     delta_chi2: float
@@ -514,8 +519,8 @@ class Comparison:
     def __str__(self) -> str:
         favoured = "thrust" if self.delta_bic > 0 else "gravity alone"
         return (
-            f"Thrust lowers chi2 by {self.delta_chi2:.2f} for {self.delta_dof} parameters (p = {self.p_value:.3g}); the BIC "
-            f"favours {favoured} by {abs(self.delta_bic):.1f}, over {self.n_obs} observations."
+            f"Thrust lowers chi2 by {self.delta_chi2:.2f} for {self.delta_dof} parameters "
+            f"(p = {self.p_value:.3g}); the BIC favours {favoured} by {abs(self.delta_bic):.1f}, over {self.n_obs} observations."
         )
 
 
@@ -541,8 +546,8 @@ def compare_fits(null: Fit, push: Fit) -> Comparison:
     extra = push.theta.size - null.theta.size
     if extra <= 0:
         raise FitError(
-            f"The second fit must have more parameters than the first; it has {push.theta.size} and the "
-            f"first {null.theta.size}. Swap them?"
+            f"The second fit must have more parameters than the first; it has {push.theta.size} "
+            f"and the first {null.theta.size}. Swap them?"
         )
     refitted = not np.array_equal(null.keep, push.keep) or null.scales != push.scales
     if refitted:

@@ -1,6 +1,47 @@
 """What a paper says of a thrust, as tables of a TOML file, checked on reading.
 
-May import: constants, errors, arc, motion, and from its own room distributions, outgassing.
+May import: errors, arc, motion, and from its own room distributions.
+
+For `audit` (every table but one of numbers and threshold may be left out):
+
+    title = "an invented paper"
+    [numbers]                       # any keys of audit_numbers; text carries its rounding
+    acceleration = "1.43e-8 au/d2"
+    at = 1.3
+    rate = "1.00e27 molecules/s"
+    speed = "0.80 km/s"
+    collimation = "0.50"
+    mass = "4.0e10 kg"
+    [threshold]
+    value = "2.1e-9 au/d2"
+    component = "R"                 # R, T, N or any
+    others = "free"                 # or held
+    confidence = 0.95               # or sigma = 3, or false_alarm = 0.0027 with power = 0.95
+    sided = 2
+    [arc]
+    file = "paper.psv"
+    [errors]
+    arcsec = "0.50"                 # or keys of the error model
+    [geometry]                      # instead of, or beside, the arc
+    n_obs = 120
+    nights = 40
+    span_d = 180
+    sigma_arcsec = 0.5
+    r_au = [2.9, 2.1]
+    delta_au = [1.3, 2.6]
+
+For `reconcile`, two or more tables:
+
+    [[result]]
+    name = "early"
+    threshold = "2.0e-9 au/d2"      # or upper_limit, or A = "(1.0 +- 0.1)e-8 au/d2", or a file
+    component = "R"
+    law = "inverse-square"
+    r_au = [3.4, 2.9]
+    dates = ["2031-01-01", "2031-04-01"]
+    [result.outgassing]             # as in a case file
+    rate = "< 1e26"
+    at = 3.0
 """
 
 import math

@@ -30,7 +30,7 @@ from ngbound.motion import FormLaw, Thrust, partials_along
 from ngbound.sky import load_ephemeris
 
 Floats = NDArray[np.float64]
-GRID = 1501
+GRID = 1201
 """Nodes of the quadrature along an arc."""
 UNSEEN = 1e-10
 """An axis with less than this share of the largest information counts as not measured."""
@@ -249,21 +249,33 @@ class ArcResponse:
         if history is self.own and self.own_columns is not None:
             return self.own_columns
         weight = history.weight(self.epoch_d + self.grid_d, self.r_grid_au)
-        if history.frame == "RTN":
-            push = np.einsum("mij,maj->mia", self.inverse, self.basis)
-        else:
-            push = self.inverse
-        push = push * weight[:, None, None]
-        step = np.diff(self.grid_d)[:, None, None]
-        rising = np.concatenate(
-            [np.zeros((1, 6, 3)), np.cumsum(0.5 * step * (push[1:] + push[:-1]), axis=0)]
-        )
+        push = weight[:, None] * (self._along_rtn if history.frame == "RTN" else self._along_axes)
+        step, left, share = self._quadrature
+        rising = np.zeros_like(push)
+        np.cumsum(step * (push[1:] + push[:-1]), axis=0, out=rising[1:])
         rising -= rising[int(np.argmin(np.abs(self.grid_d)))]
-        left = np.clip(np.searchsorted(self.grid_d, self.record_tau_d), 1, self.grid_d.size - 1) - 1
-        share = (self.record_tau_d - self.grid_d[left]) / np.diff(self.grid_d)[left]
-        moved = rising[left] + share[:, None, None] * (rising[left + 1] - rising[left])
+        moved = rising[left] + share * (rising[left + 1] - rising[left])
         shaped = self.state_design.reshape(-1, 2, 6)
-        return np.einsum("nci,nij->ncj", shaped, moved).reshape(-1, 3)
+        return np.asarray(shaped @ moved.reshape(-1, 6, 3)).reshape(-1, 3)
+
+    @cached_property
+    def _along_rtn(self) -> Floats:
+        """Phi^-1 (0, a) of unit accelerations along R, T, N at the nodes, (m, 18)."""
+        return (self.inverse @ self.basis.transpose(0, 2, 1)).reshape(-1, 18)
+
+    @cached_property
+    def _along_axes(self) -> Floats:
+        """The same along the axes of the frame."""
+        return self.inverse.reshape(-1, 18)
+
+    @cached_property
+    def _quadrature(self) -> tuple[Floats, NDArray[np.int64], Floats]:
+        """Half steps (m - 1, 1); of each record the node before it and the share of the step."""
+        length = np.diff(self.grid_d)
+        found = np.searchsorted(self.grid_d, self.record_tau_d)
+        left = np.clip(found, 1, self.grid_d.size - 1) - 1
+        share = (self.record_tau_d - self.grid_d[left]) / length[left]
+        return 0.5 * length[:, None], left, share[:, None]
 
     def misfit(self, history: History, guess: Floats | None = None) -> Misfit:
         """chi2 of the amounts under a history; ``guess`` plays no part."""

@@ -4,10 +4,11 @@ Frame: barycentric ICRF, TDB, au and days. With the body massless,
 
     x'' = - sum_b GM_b (x - x_b) / |x - x_b|^3 + relativity + g(r) (A1 R + A2 T + A3 N),
 
-b the Sun, the planets, the Moon, Pluto and 16 asteroids at their places in the ephemeris (never integrated), R
-along the heliocentric position r, N along r x v (heliocentric), T = N x R. Relativity is the Sun's first post-Newtonian
-term or the full equations of Einstein, Infeld & Hoffmann. g is evaluated at t - DT where a lag DT is given (D. K. Yeomans &
-P. W. Chodas 1989, AJ 98, 1083).
+b the Sun, the planets, the Moon, Pluto and 16 asteroids at their places in the ephemeris (never
+integrated), R along the heliocentric position r, N along r x v (heliocentric), T = N x R.
+Relativity is the Sun's first post-Newtonian term or the full equations of Einstein, Infeld &
+Hoffmann. g is evaluated at t - DT where a lag DT is given (D. K. Yeomans & P. W. Chodas 1989, AJ
+98, 1083).
 
 One orbit is integrated adaptively (Gauss-Radau, order 15); its partials and its neighbours run on a
 shared grid of the same nodes (`partials_along`, `Neighbourhood`).

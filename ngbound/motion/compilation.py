@@ -1,7 +1,9 @@
-"""Whether the compiled kernels are at hand, so that a first run can say why it takes longer; imports the kernels.
+"""Whether the compiled kernels are at hand, so that a first run can say why it takes longer;
+imports the kernels.
 
-numba keeps compiled code beside the source, or, where that folder cannot be written, in the user's cache folder
-(or where NUMBA_CACHE_DIR points); files appear whole, so processes that start at once do not disturb each other.
+numba keeps compiled code beside the source, or, where that folder cannot be written, in the user's
+cache folder (or where NUMBA_CACHE_DIR points); files appear whole, so processes that start at once
+do not disturb each other.
 """
 
 from pathlib import Path
@@ -15,7 +17,7 @@ KERNELS = (integrate, dense_many, tabulate, variations, batch)
 
 def compiled_code_folder() -> Path:
     """The folder that holds, or will hold, the compiled code."""
-    return Path(integrate.stats.cache_path)
+    return Path(str(integrate.stats.cache_path))
 
 
 def missing_kernels() -> list[str]:
@@ -23,7 +25,7 @@ def missing_kernels() -> list[str]:
     missing = []
     for kernel in KERNELS:
         name = f"{Path(kernel.py_func.__code__.co_filename).stem}.{kernel.py_func.__qualname__}"
-        folder = Path(kernel.stats.cache_path)
+        folder = Path(str(kernel.stats.cache_path))
         if not kernel.signatures and not any(folder.glob(f"{name}-*.nbi")):
             missing.append(name)
     return missing
@@ -34,6 +36,6 @@ def compile_notice() -> str:
     if not missing_kernels():
         return ""
     return (
-        "This is the first run here: the numerical kernels are being compiled, which takes about a minute and "
-        f"is kept for later runs in {compiled_code_folder()}."
+        "This is the first run here: the numerical kernels are being compiled, "
+        f"which takes about a minute and is kept for later runs in {compiled_code_folder()}."
     )

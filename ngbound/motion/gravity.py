@@ -1,7 +1,8 @@
-"""The force model: which bodies pull, and which relativity; imports numpy, constants, errors, sky and the kernels.
+"""The force model: which bodies pull, and which relativity; imports numpy, constants, errors, sky
+and the kernels.
 
-The equation of motion stands in the room's docstring. `ForceModel` holds the choices, `ForceModel.perturbers`
-cuts the ephemeris tables that the kernels read.
+The equation of motion stands in the room's docstring. `ForceModel` holds the choices,
+`ForceModel.perturbers` cuts the ephemeris tables that the kernels read.
 """
 
 import math
@@ -36,7 +37,8 @@ BODY_RADIUS_KM = {
     "neptune": 24622.0,
     "pluto": 1188.3,
 }
-"""Mean radii in km below which an orbit counts as a collision: nominal solar radius of IAU 2015 Resolution B3;
+"""Mean radii in km below which an orbit counts as a collision: nominal solar radius of IAU 2015
+Resolution B3;
 planets from B. A. Archinal et al. 2018, Celest. Mech. Dyn. Astr. 130, 22 (values from memory)."""
 
 SUN_J2 = 2.1961391516529825e-07
@@ -45,7 +47,8 @@ SUN_RADIUS_KM = 696000.0
 """Radius that goes with the Sun's J2: comment block of DE440 (ASUN)."""
 SUN_POLE_RA_DEG = 286.13
 SUN_POLE_DEC_DEG = 63.87
-"""Rotation axis of the Sun in ICRF: B. A. Archinal et al. 2018, Celest. Mech. Dyn. Astr. 130, 22."""
+"""Rotation axis of the Sun in ICRF: B. A. Archinal et al. 2018, Celest. Mech. Dyn. Astr. 130, 22.
+"""
 SUN_SPIN_KG_M2_S = 1.90e41
 """Angular momentum of the Sun: F. P. Pijpers 1998, MNRAS 297, L76 (190.0e39 kg m2/s)."""
 SUN_MASS_KG = 1.98841e30
@@ -73,8 +76,8 @@ class ForceModel:
         The Earth's quadrupole within 0.02 au of it.
     eps : float
         Step control: size of the last term of the acceleration's polynomial over the acceleration.
-        1e-8 keeps a main-belt year to a millimetre and twenty years to two centimetres; 5e-6 keeps a year to
-        some centimetres.
+        1e-8 keeps a main-belt year to a millimetre and twenty years to two centimetres; 5e-6 keeps
+        a year to some centimetres.
     """
 
     asteroids: bool = True

@@ -1,13 +1,15 @@
 """The likelihood's engine: chi2 of many orbits near one reference, exact to stated tolerance.
 
-Imports numpy, constants, errors, the kernels, and the other modules of this room. The neighbours run on the shared
-grid of the reference; those for which the grid's orders are not enough are integrated one by one.
+Imports numpy, constants, errors, the kernels, and the other modules of this room. The neighbours
+run on the shared grid of the reference; those for which the grid's orders are not enough are
+integrated one by one.
 """
 
 import os
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass, field
+from typing import Literal, overload
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -34,12 +36,18 @@ TOLERANCE_AU = 3e-11
 SETTLED_AU = 1e-12
 
 
-def _leg_arrays(leg: GridLeg | None, tau_d: Floats) -> tuple[Floats, Floats, Floats, Ints, Floats, Floats]:
+def _leg_arrays(
+    leg: GridLeg | None, tau_d: Floats
+) -> tuple[Floats, Floats, Floats, Ints, Floats, Floats]:
     n = tau_d.size
     if leg is None:
         return (
-            np.zeros(0), np.zeros((0, N_NODES, 1)), np.zeros((0, N_NODES, 6, 1)), np.zeros(n, dtype=np.int64),
-            np.zeros((n, N_NODES)), np.zeros(n),
+            np.zeros(0),
+            np.zeros((0, N_NODES, 1)),
+            np.zeros((0, N_NODES, 6, 1)),
+            np.zeros(n, dtype=np.int64),
+            np.zeros((n, N_NODES)),
+            np.zeros(n),
         )
     sign = 1.0 if leg.forward else -1.0
     step_of = np.searchsorted(sign * leg.tau_d, sign * tau_d, side="right") - 1
@@ -58,8 +66,8 @@ def _leg_arrays(leg: GridLeg | None, tau_d: Floats) -> tuple[Floats, Floats, Flo
 class Neighbourhood:
     """A reference orbit, the records, their noise, and all tables a batch of neighbours needs.
 
-    Build it with `Neighbourhood.around`. A parameter vector is the state at the epoch (au, au/d) followed by the
-    amounts of the free thrust components (au/d2).
+    Build it with `Neighbourhood.around`. A parameter vector is the state at the epoch (au, au/d)
+    followed by the amounts of the free thrust components (au/d2).
     """
 
     epoch_d: float
@@ -89,14 +97,18 @@ class Neighbourhood:
     ) -> "Neighbourhood":
         """Tabulate the surroundings of a track that covers the records.
 
-        ``modes`` (k, 2n): errors shared across station-nights, whose squared products with the whitened
-        residuals are taken off chi2; columns RA, Dec by turns in the order of the records.
+        ``modes`` (k, 2n): errors shared across station-nights, whose squared products with the
+        whitened residuals are taken off chi2; columns RA, Dec by turns in the order of the records.
         """
-        shared = np.zeros((0, 2 * len(records))) if modes is None else np.asarray(modes, dtype=float)
+        shared = (
+            np.zeros((0, 2 * len(records))) if modes is None else np.asarray(modes, dtype=float)
+        )
         span = (float(records.tdb_d.min()), float(records.tdb_d.max()))
         low = min(_lower(track), span[0])
         high = max(_upper(track), span[1])
-        coarse = integrate_track(track.epoch_d, track.state, low, high, thrust, forces, GRID_EPS, GRID_CAP_D)
+        coarse = integrate_track(
+            track.epoch_d, track.state, low, high, thrust, forces, GRID_EPS, GRID_CAP_D
+        )
         partials = partials_along(track, NEIGHBOUR_NAMES, coarse)
         sight = see(track, records)
         behind = np.flatnonzero(sight.tau_d < 0.0)
@@ -112,19 +124,40 @@ class Neighbourhood:
         front = _leg_arrays(partials.ahead, tau)
         columns = np.stack([2 * whitening.order, 2 * whitening.order + 1], axis=1).ravel()
         white = (
-            place[whitening.order], whitening.start, whitening.flat, whitening.flat_start,
+            place[whitening.order],
+            whitening.start,
+            whitening.flat,
+            whitening.flat_start,
             np.ascontiguousarray(shared[:, columns]),
         )
         amounts = np.zeros(3) if thrust is None else thrust.amounts_au_d2
         tables = (
-            float(track.tab.gm[0]), C_AU_D, amounts.copy(), back, front,
-            np.ascontiguousarray(sight.rho_au[order]), np.ascontiguousarray(sight.speed_au_d[order]),
-            np.ascontiguousarray(records.basis[order]), white, int(n_back), order,
+            float(track.tab.gm[0]),
+            C_AU_D,
+            amounts.copy(),
+            back,
+            front,
+            np.ascontiguousarray(sight.rho_au[order]),
+            np.ascontiguousarray(sight.speed_au_d[order]),
+            np.ascontiguousarray(records.basis[order]),
+            white,
+            int(n_back),
+            order,
         )
         free = ["RTN".index(c) for c in components]
         theta = np.concatenate([track.state, amounts[free]])
         return cls(
-            track.epoch_d, theta, thrust, components, forces, records, whitening, shared, sight, partials, tables,
+            track.epoch_d,
+            theta,
+            thrust,
+            components,
+            forces,
+            records,
+            whitening,
+            shared,
+            sight,
+            partials,
+            tables,
             threads or os.cpu_count() or 1,
         )
 
@@ -137,10 +170,19 @@ class Neighbourhood:
             full[:m, 6 + "RTN".index(c)] = thetas[:, 6 + i] - self.theta[6 + i]
         return full
 
-    def chi2(self, thetas: ArrayLike, want_residuals: bool = False) -> Floats | tuple[Floats, Floats]:
+    @overload
+    def chi2(self, thetas: ArrayLike, want_residuals: Literal[False] = False) -> Floats: ...
+
+    @overload
+    def chi2(self, thetas: ArrayLike, want_residuals: Literal[True]) -> tuple[Floats, Floats]: ...
+
+    def chi2(
+        self, thetas: ArrayLike, want_residuals: bool = False
+    ) -> Floats | tuple[Floats, Floats]:
         """chi2 of parameter vectors (m, p); with ``want_residuals`` also O-C (m, n, 2) in radians.
 
-        A vector whose orbit cannot be integrated, or is seen on the other side of the sky, has chi2 = inf.
+        A vector whose orbit cannot be integrated, or is seen on the other side of the sky, has chi2
+        = inf.
         """
         thetas = np.atleast_2d(np.asarray(thetas, dtype=float))
         m = thetas.shape[0]
@@ -159,8 +201,21 @@ class Neighbourhood:
         def work(part: int) -> None:
             low, high = edges[part], edges[part + 1]
             batch(
-                gm, c, amounts, back, front, rho, speed, basis, white, n_back, full[low:high], want_residuals,
-                chi2[low:high], doubt[low:high], keep[low:high] if want_residuals else keep,
+                gm,
+                c,
+                amounts,
+                back,
+                front,
+                rho,
+                speed,
+                basis,
+                white,
+                n_back,
+                full[low:high],
+                want_residuals,
+                chi2[low:high],
+                doubt[low:high],
+                keep[low:high] if want_residuals else keep,
             )
 
         _run(work, parts)
@@ -185,7 +240,20 @@ class Neighbourhood:
         doubt = np.empty((full.shape[0], 2))
         gm, c, amounts, back, front, rho, speed, basis, white, n_back, _ = self.tables
         batch(
-            gm, c, amounts, back, front, rho, speed, basis, white, n_back, full, False, chi2, doubt,
+            gm,
+            c,
+            amounts,
+            back,
+            front,
+            rho,
+            speed,
+            basis,
+            white,
+            n_back,
+            full,
+            False,
+            chi2,
+            doubt,
             np.empty((1, 1, 2)),
         )
         return (doubt[:m, 0] > TOLERANCE_AU) | (doubt[:m, 1] > SETTLED_AU)

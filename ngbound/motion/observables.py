@@ -1,12 +1,15 @@
-"""What an observer sees of a trajectory: light time, direction, residuals in the tangent plane, their partials.
+"""What an observer sees of a trajectory: light time, direction, residuals in the tangent plane,
+their partials.
 
-Imports numpy, constants, errors, sky, and propagate and partials of this room. Places are astrometric: light
-time is applied, stellar aberration is not (it is common to object and comparison stars), nor is the
-deflection of light by the Sun, of which relative astrometry keeps only the small difference between the object's and
-the stars' (below 1 mas further than 40 degrees from the Sun for objects within a few au).
+Imports numpy, constants, errors, sky, and propagate and partials of this room. Places are
+astrometric: light time is applied, stellar aberration is not (it is common to object and comparison
+stars), nor is the deflection of light by the Sun, of which relative astrometry keeps only the small
+difference between the object's and the stars' (below 1 mas further than 40 degrees from the Sun for
+objects within a few au).
 """
 
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
@@ -38,20 +41,24 @@ class Records:
     basis: Floats = field(repr=False)
 
     @classmethod
-    def from_angles(cls, tdb_d: ArrayLike, observer_au: ArrayLike, ra_rad: ArrayLike, dec_rad: ArrayLike) -> "Records":
+    def from_angles(
+        cls, tdb_d: ArrayLike, observer_au: ArrayLike, ra_rad: ArrayLike, dec_rad: ArrayLike
+    ) -> "Records":
         """Records of observed right ascensions and declinations (radians, ICRF)."""
         toward = angles_to_direction(ra_rad, dec_rad)
         east, north = sky_axes(ra_rad, dec_rad)
         basis = np.ascontiguousarray(np.stack([east, north, toward], axis=1))
         return cls(
-            np.ascontiguousarray(tdb_d, dtype=float), np.ascontiguousarray(observer_au, dtype=float), basis
+            np.ascontiguousarray(tdb_d, dtype=float),
+            np.ascontiguousarray(observer_au, dtype=float),
+            basis,
         )
 
     def __len__(self) -> int:
         return self.tdb_d.size
 
-    def subset(self, keep: ArrayLike) -> "Records":
-        """The records of a mask or an index array."""
+    def subset(self, keep: NDArray[Any] | slice) -> "Records":
+        """The records of a mask, an index array or a slice."""
         return Records(self.tdb_d[keep], self.observer_au[keep], self.basis[keep])
 
 
@@ -74,8 +81,9 @@ class Sight:
 def see(track: Track, records: Records, deflection: bool = False) -> Sight:
     """Solve the light time of every record.
 
-    With ``deflection`` the line of sight is bent by what the Sun bends the object's light more or less than the
-    stars'. It is off by default: astrometric places, as published and as reduced, leave it out.
+    With ``deflection`` the line of sight is bent by what the Sun bends the object's light more or
+    less than the stars'. It is off by default: astrometric places, as published and as reduced,
+    leave it out.
 
     Raises
     ------
@@ -109,11 +117,14 @@ def see(track: Track, records: Records, deflection: bool = False) -> Sight:
 
 
 def residuals(sight: Sight, records: Records) -> Floats:
-    """Observed minus computed, (n, 2) radians east and north in the tangent plane at the observed place."""
+    """Observed minus computed, (n, 2) radians east and north in the tangent plane at the observed
+    place.
+    """
     local = np.einsum("nij,nj->ni", records.basis, sight.rho_au)
     if np.any(local[:, 2] <= 0.0):
         raise PropagationError(
-            "The orbit is seen more than 90 degrees from an observed place; it is not the orbit of this arc."
+            "The orbit is seen more than 90 degrees from an observed place; "
+            "it is not the orbit of this arc."
         )
     return -local[:, :2] / local[:, 2:3]
 

@@ -1,4 +1,5 @@
-"""An orbit: a state at an epoch, a thrust and a force model; imports astropy, errors, sky and this room.
+"""An orbit: a state at an epoch, a thrust and a force model; imports astropy, errors, sky and this
+room.
 
 `Orbit` is what fits return and predictions start from. `predict` gives an observer's table.
 """
@@ -66,7 +67,9 @@ class Trajectory:
 
     def to_frame(self) -> pd.DataFrame:
         """Table with the TDB date, the state and the heliocentric distance (au)."""
-        frame = pd.DataFrame(self.state, columns=["x_au", "y_au", "z_au", "vx_au_d", "vy_au_d", "vz_au_d"])
+        frame = pd.DataFrame(
+            self.state, columns=["x_au", "y_au", "z_au", "vx_au_d", "vy_au_d", "vz_au_d"]
+        )
         frame.insert(0, "tdb", tdb_d_to_iso(self.tdb_d))
         frame["r_au"] = np.linalg.norm(self.heliocentric_au, axis=1)
         return frame
@@ -123,12 +126,16 @@ class Orbit:
         e : float
         i, node, argperi : float (degrees) or Quantity
         """
-        degrees = [float(u.Quantity(value, u.deg).to_value(u.rad)) for value in (i, node, argperi)]
+        i_rad, node_rad, argperi_rad = (
+            float(u.Quantity(value, u.deg).to_value(u.rad)) for value in (i, node, argperi)
+        )
         elements = CometaryElements(
             float(parse_time(epoch, scale)),
             float(u.Quantity(q, u.au).value),
             float(e),
-            *degrees,
+            i_rad,
+            node_rad,
+            argperi_rad,
             float(parse_time(tp, scale)),
             centre,
         )
@@ -147,7 +154,9 @@ class Orbit:
             state += np.concatenate(load_ephemeris().posvel("sun", elements.epoch_tdb_d))
         return cls(elements.epoch_tdb_d, state, thrust, forces or ForceModel())
 
-    def elements(self, t: Any = None, centre: str = "heliocentric", scale: str = "tdb") -> CometaryElements:
+    def elements(
+        self, t: Any = None, centre: str = "heliocentric", scale: str = "tdb"
+    ) -> CometaryElements:
         """Osculating cometary elements at the epoch or at another time, ecliptic J2000."""
         when = self.epoch_tdb_d if t is None else float(parse_time(t, scale))
         state = self.state_vector if t is None else self.track(when, when).at(when)[0]
@@ -238,7 +247,7 @@ def predict(
 def predict_for(
     orbit: Orbit, tdb_d: ArrayLike, observer_au: ArrayLike, deflection: bool = False
 ) -> pd.DataFrame:
-    """Astrometric places for observers at barycentric positions (n, 3) au; columns as in `predict`."""
+    """Astrometric places for observers at barycentric positions (n, 3) au; see `predict`."""
     tdb_d = np.atleast_1d(np.asarray(tdb_d, dtype=float))
     observer = np.atleast_2d(np.asarray(observer_au, dtype=float))
     # light takes at most this long, which the span must hold

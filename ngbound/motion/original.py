@@ -1,8 +1,10 @@
-"""Original and future reciprocal semimajor axis, as the comet trade quotes it; imports numpy and this room.
+"""Original and future reciprocal semimajor axis, as the comet trade quotes it; imports numpy and
+this room.
 
-A comet on a nearly parabolic orbit is followed back (original) or ahead (future) under the planets until it is 250 au from
-the barycentre, where 1/a about the barycentre of the whole system has settled (B. G. Marsden, Z. Sekanina &
-E. Everhart 1978, AJ 83, 64, follow to 60 au; 250 au is today's common practice).
+A comet on a nearly parabolic orbit is followed back (original) or ahead (future) under the planets
+until it is 250 au from the barycentre, where 1/a about the barycentre of the whole system has
+settled (B. G. Marsden, Z. Sekanina & E. Everhart 1978, AJ 83, 64, follow to 60 au; 250 au is
+today's common practice).
 """
 
 from dataclasses import asdict, dataclass
@@ -56,7 +58,10 @@ class ReciprocalAxis:
 
 
 def reciprocal_axis(
-    orbit: Orbit, kind: str = "original", covariance: ArrayLike | None = None, distance_au: float = FAR_AU
+    orbit: Orbit,
+    kind: str = "original",
+    covariance: ArrayLike | None = None,
+    distance_au: float = FAR_AU,
 ) -> ReciprocalAxis:
     """Follow an orbit outwards and give its 1/a there.
 
@@ -95,8 +100,9 @@ def reciprocal_axis(
             break
     if not beyond.any():
         raise AnalysisError(
-            f"The orbit does not reach {distance_au:g} au from the barycentre within the ephemeris (it gets to "
-            f"{np.linalg.norm(states[-1, :3]):.0f} au); ask for a smaller distance_au, or use its elements."
+            f"The orbit does not reach {distance_au:g} au from the barycentre within the "
+            f"ephemeris (it gets to {np.linalg.norm(states[-1, :3]):.0f} au); ask for a "
+            "smaller distance_au, or use its elements."
         )
     first = int(np.argmax(beyond))
     low, high = times[max(first - 1, 0)], times[first]

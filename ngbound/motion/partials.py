@@ -1,7 +1,8 @@
 """Variational equations: how the trajectory changes with the state and the thrust.
 
-Imports numpy, the kernels, and propagate of this room. Every partial of the force model is analytic, relativity,
-quadrupoles and thrust included; the columns are solved by collocation on a grid of steps along the trajectory.
+Imports numpy, the kernels, and propagate of this room. Every partial of the force model is
+analytic, relativity, quadrupoles and thrust included; the columns are solved by collocation on a
+grid of steps along the trajectory.
 """
 
 from collections.abc import Sequence
@@ -23,8 +24,9 @@ Floats = NDArray[np.float64]
 class GridLeg:
     """The shared grid of one direction of time: steps, node tables and the columns of the partials.
 
-    ``tau_d``, ``h_d`` (m,): steps, days from the epoch; ``nodes`` (m, 8, ROW): tables of the kernels;
-    ``begin`` (m + 1, 6, p) and ``accel`` (m, 8, 3, p): the columns and their second derivatives.
+    ``tau_d``, ``h_d`` (m,): steps, days from the epoch; ``nodes`` (m, 8, ROW): tables of the
+    kernels; ``begin`` (m + 1, 6, p) and ``accel`` (m, 8, 3, p): the columns and their second
+    derivatives.
     """
 
     tau_d: Floats = field(repr=False)
@@ -57,13 +59,28 @@ def parameter_numbers(names: Sequence[str]) -> NDArray[np.int64]:
     return np.array([PARAMETERS.index(name) for name in names], dtype=np.int64)
 
 
-def grid_leg(track: Track, leg: Leg, columns: NDArray[np.int64], steps: Leg | None = None) -> GridLeg:
-    """The grid of one leg; its steps are those of the leg itself or of a coarser one over the same span."""
+def grid_leg(
+    track: Track, leg: Leg, columns: NDArray[np.int64], steps: Leg | None = None
+) -> GridLeg:
+    """The grid of one leg; its steps are those of the leg itself or of a coarser one over the same
+    span.
+    """
     steps = steps or leg
     nodes = np.empty((steps.n, N_NODES, ROW))
     tabulate(
-        track.tab, track.push, track.physics, track.epoch_d, leg.start_d, leg.length_d, leg.begin,
-        leg.power, leg.n, leg.forward, steps.start_d, steps.length_d, nodes,
+        track.tab,
+        track.push,
+        track.physics,
+        track.epoch_d,
+        leg.start_d,
+        leg.length_d,
+        leg.begin,
+        leg.power,
+        leg.n,
+        leg.forward,
+        steps.start_d,
+        steps.length_d,
+        nodes,
     )
     begin = np.empty((steps.n + 1, 6, columns.size))
     accel = np.empty((steps.n, N_NODES, 3, columns.size))
@@ -75,8 +92,8 @@ def grid_leg(track: Track, leg: Leg, columns: NDArray[np.int64], steps: Leg | No
 class Partials:
     """Partials of the barycentric state of a track with respect to the named parameters.
 
-    Names are of `PARAMETERS`: the state at the epoch (au, au/d), A1, A2, A3 (au/d2), the lag (d), the
-    exponent of a power law, and srp, radiation pressure at 1 au (au/d2).
+    Names are of `PARAMETERS`: the state at the epoch (au, au/d), A1, A2, A3 (au/d2), the lag (d),
+    the exponent of a power law, and srp, radiation pressure at 1 au (au/d2).
     """
 
     track: Track

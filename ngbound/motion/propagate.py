@@ -36,8 +36,8 @@ MARGIN_D = 1e-6
 class Leg:
     """Integration from the epoch in one direction of time: steps and the polynomial of each.
 
-    ``start_d``, ``length_d`` (n,) days from the epoch, signed; ``begin`` (n + 1, 6) barycentric au, au/d;
-    ``power`` (n, 8, 3) coefficients of the acceleration in powers of the step fraction.
+    ``start_d``, ``length_d`` (n,) days from the epoch, signed; ``begin`` (n + 1, 6) barycentric au,
+    au/d; ``power`` (n, 8, 3) coefficients of the acceleration in powers of the step fraction.
     """
 
     start_d: Floats = field(repr=False)
@@ -54,7 +54,9 @@ class Leg:
     def at(self, tau_d: Floats) -> Floats:
         """Barycentric states (m, 6) at days from the epoch."""
         out = np.empty((tau_d.size, 6))
-        dense_many(self.start_d, self.length_d, self.begin, self.power, self.n, self.forward, tau_d, out)
+        dense_many(
+            self.start_d, self.length_d, self.begin, self.power, self.n, self.forward, tau_d, out
+        )
         return out
 
 
@@ -99,13 +101,20 @@ class Track:
 
 
 def _body_names(forces: ForceModel, start_d: float, end_d: float) -> tuple[str, ...]:
-    return load_ephemeris().table(
-        start_d, end_d, asteroids=forces.asteroids, exclude=forces.exclude
-    ).names
+    return (
+        load_ephemeris()
+        .table(start_d, end_d, asteroids=forces.asteroids, exclude=forces.exclude)
+        .names
+    )
 
 
 def _explain(
-    status: int, met: Floats, epoch_d: float, steps: int, forces: ForceModel, span: tuple[float, float]
+    status: int,
+    met: Floats,
+    epoch_d: float,
+    steps: int,
+    forces: ForceModel,
+    span: tuple[float, float],
 ) -> PropagationError:
     when = tdb_d_to_iso(epoch_d + float(met[1]))
     if status == INSIDE_BODY:
@@ -128,7 +137,9 @@ def _explain(
             "the span, or check whether the orbit circles a planet.",
             tau_d=float(met[1]),
         )
-    return PropagationError(f"The integration failed at {when} TDB (status {status}).", status=status)
+    return PropagationError(
+        f"The integration failed at {when} TDB (status {status}).", status=status
+    )
 
 
 def _integrate_leg(
@@ -154,7 +165,9 @@ def _integrate_leg(
         n_max = min(MAX_STEPS, n_max * 8)
     if status != OK:
         raise _explain(int(status), met, epoch_d, n_max, forces, span)
-    return Leg(start[:n].copy(), length[:n].copy(), begin[: n + 1].copy(), power[:n].copy(), tau_d >= 0)
+    return Leg(
+        start[:n].copy(), length[:n].copy(), begin[: n + 1].copy(), power[:n].copy(), tau_d >= 0
+    )
 
 
 def _switch_times(leg: Leg, tab: Perturbers, epoch_d: float, window: tuple[float, float]) -> Floats:
@@ -241,7 +254,8 @@ def integrate_track(
         args = (tab, physics, push, epoch_d, state, tau, forces, eps, cap_d)
         leg = _integrate_leg(*args, breaks, (low, high))
         if push.window_kind == WINDOW_DISTANCE:
-            # the crossings move a little with the thrust they switch, so they are found again until they rest
+            # the crossings move a little with the thrust they switch, so they are found again until
+            # they rest
             for _ in range(4):
                 last = breaks
                 breaks = _switch_times(leg, tab, epoch_d, (push.window_from, push.window_to))

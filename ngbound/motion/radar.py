@@ -1,9 +1,10 @@
 """Radar: two-way delay and Doppler shift of an echo, and their partials.
 
-The model of D. K. Yeomans et al. 1992, AJ 103, 303: the echo received at t left the object's centre one light time
-earlier and the transmitter one more before that; each leg carries the Sun's relativistic delay (I. I. Shapiro 1964,
-Phys. Rev. Lett. 13, 789); both ends are clocked in UTC seconds, so the small change of TDB - TT between them is taken out, the
-station's own term included. The Doppler shift is -f times the rate of the delay. Left out: the troposphere (20 ns at the
+The model of D. K. Yeomans et al. 1992, AJ 103, 303: the echo received at t left the object's centre
+one light time earlier and the transmitter one more before that; each leg carries the Sun's
+relativistic delay (I. I. Shapiro 1964, Phys. Rev. Lett. 13, 789); both ends are clocked in UTC
+seconds, so the small change of TDB - TT between them is taken out, the station's own term included.
+The Doppler shift is -f times the rate of the delay. Left out: the troposphere (20 ns at the
 zenith), the ionosphere and the solar corona. Imports numpy, constants, arc, sky and this room.
 """
 
@@ -63,9 +64,15 @@ def _sun_delay_d(a: Floats, b: Floats, sun: Floats) -> Floats:
 
 
 def _path(
-    track: Track, tdb_d: Floats, transmitter: Place, receiver: Place, own: Mapping[str, Station] | None
+    track: Track,
+    tdb_d: Floats,
+    transmitter: Place,
+    receiver: Place,
+    own: Mapping[str, Station] | None,
 ) -> _Path:
-    """Solve both legs for echoes received at ``tdb_d``; every length is a difference of positions, not of dates."""
+    """Solve both legs for echoes received at ``tdb_d``; every length is a difference of positions,
+    not of dates.
+    """
     ephemeris = load_ephemeris()
     end = station_states(receiver, tdb_d, ephemeris, own)
     back = np.zeros_like(tdb_d)
@@ -74,7 +81,9 @@ def _path(
         state = track.at_offset(bounce)
         sun = ephemeris.position_au("sun", track.epoch_d + bounce)
         down = state[:, :3] - end.position_au
-        new = np.linalg.norm(down, axis=1) / C_AU_D + _sun_delay_d(state[:, :3], end.position_au, sun)
+        new = np.linalg.norm(down, axis=1) / C_AU_D + _sun_delay_d(
+            state[:, :3], end.position_au, sun
+        )
         moved = float(np.max(np.abs(new - back)))
         back = new
         if moved < SETTLED_D:
@@ -85,7 +94,9 @@ def _path(
     for _ in range(SWEEPS):
         start = station_states(transmitter, tdb_d - back - out, ephemeris, own)
         up = state[:, :3] - start.position_au
-        new = np.linalg.norm(up, axis=1) / C_AU_D + _sun_delay_d(state[:, :3], start.position_au, sun)
+        new = np.linalg.norm(up, axis=1) / C_AU_D + _sun_delay_d(
+            state[:, :3], start.position_au, sun
+        )
         moved = float(np.max(np.abs(new - out)))
         out = new
         if moved < SETTLED_D:
@@ -96,9 +107,13 @@ def _path(
     earth_end = ephemeris.posvel("earth", tdb_d)[1]
     earth_start = ephemeris.posvel("earth", sent)[1]
     station_s = (
-        np.einsum("ni,ni->n", earth_end, end.geocentric_au)
-        - np.einsum("ni,ni->n", earth_start, start.geocentric_au)
-    ) / C_AU_D**2 * DAY_S
+        (
+            np.einsum("ni,ni->n", earth_end, end.geocentric_au)
+            - np.einsum("ni,ni->n", earth_start, start.geocentric_au)
+        )
+        / C_AU_D**2
+        * DAY_S
+    )
     clock_s = np.asarray(tdb_minus_tt_s(tdb_d)) - np.asarray(tdb_minus_tt_s(sent)) + station_s
     return _Path(
         (back + out) * DAY_S - clock_s, bounce, down, up, state[:, 3:], start.velocity_au_d
@@ -126,7 +141,9 @@ def echo(
     times = np.atleast_1d(np.asarray(tdb_d, dtype=float))
     here = _path(track, times, transmitter, receiver, own_stations)
     half = HALF_STEP_S / DAY_S
-    sides = [_path(track, times + sign * half, transmitter, receiver, own_stations) for sign in (1, -1)]
+    sides = [
+        _path(track, times + sign * half, transmitter, receiver, own_stations) for sign in (1, -1)
+    ]
     rate = (sides[0].delay_s - sides[1].delay_s) / (2.0 * HALF_STEP_S)
     return Echo(here.delay_s, -rate * frequency_mhz * 1e6, here.bounce_tau_d)
 
@@ -152,12 +169,14 @@ def echo_partials(
     frequency_mhz: float = 0.0,
     own_stations: Mapping[str, Station] | None = None,
 ) -> tuple[Floats, Floats]:
-    """Partials of delay (s) and Doppler shift (Hz) per unit of each parameter, two arrays (n, p)."""
+    """Partials of delay (s) and Doppler shift (Hz) per unit of each parameter, two (n, p)."""
     times = np.atleast_1d(np.asarray(tdb_d, dtype=float))
     half = HALF_STEP_S / DAY_S
     delay = _delay_partials(_path(track, times, transmitter, receiver, own_stations), partials)
     sides = [
-        _delay_partials(_path(track, times + sign * half, transmitter, receiver, own_stations), partials)
+        _delay_partials(
+            _path(track, times + sign * half, transmitter, receiver, own_stations), partials
+        )
         for sign in (1, -1)
     ]
     rate = (sides[0] - sides[1]) / (2.0 * HALF_STEP_S)

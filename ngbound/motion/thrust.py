@@ -1,8 +1,9 @@
-"""Thrust laws g(r), their components, lag and activity window; imports numpy, astropy.units, constants, errors, kernels.
+"""Thrust laws g(r), their components, lag and activity window; imports numpy, astropy.units,
+constants, errors, kernels.
 
-A law is a frozen dataclass with a name and the kernel arrays it stands for; `LAWS` lists the named ones. Adding
-an analytic law is one entry there (or one small class), and, if it is not of the form below, one branch in the
-kernel ``law_of_distance``. The form is
+A law is a frozen dataclass with a name and the kernel arrays it stands for; `LAWS` lists the named
+ones. Adding an analytic law is one entry there (or one small class), and, if it is not of the form
+below, one branch in the kernel ``law_of_distance``. The form is
 
     g(r) = alpha (r / r0)^-m [1 + (r / r0)^n]^-k,   g(1 au) = 1.
 """
@@ -78,8 +79,8 @@ class FormLaw:
 class TableLaw:
     """A law given by the user as a table of r (au) and g, normalised by the user.
 
-    Between the knots ln g is a monotone cubic of ln r (F. N. Fritsch & R. E. Carlson 1980, SIAM J. Numer. Anal. 17,
-    238); outside them the power law of the end slope continues it.
+    Between the knots ln g is a monotone cubic of ln r (F. N. Fritsch & R. E. Carlson 1980, SIAM J.
+    Numer. Anal. 17, 238); outside them the power law of the end slope continues it.
     """
 
     r_au: tuple[float, ...]
@@ -94,14 +95,19 @@ class TableLaw:
         g = np.asarray(self.g, dtype=float)
         if r.size < 2 or r.size != g.size:
             raise CaseError(
-                f"A thrust table needs at least two pairs of r and g; it has {r.size} r and {g.size} g.",
+                f"A thrust table needs at least two pairs of r and g; it has "
+                f"{r.size} r and {g.size} g.",
                 r_au=self.r_au,
                 g=self.g,
             )
         if not (np.all(np.isfinite(r)) and np.all(np.diff(r) > 0) and r[0] > 0):
-            raise CaseError("The r of a thrust table must be positive au in ascending order.", r_au=self.r_au)
+            raise CaseError(
+                "The r of a thrust table must be positive au in ascending order.", r_au=self.r_au
+            )
         if not (np.all(np.isfinite(g)) and np.all(g > 0)):
-            raise CaseError("The g of a thrust table must be positive; end the thrust by a window.", g=self.g)
+            raise CaseError(
+                "The g of a thrust table must be positive; end the thrust by a window.", g=self.g
+            )
 
     def arrays(self) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
         """Kernel arrays (par, table)."""
@@ -112,7 +118,12 @@ class TableLaw:
 
     def to_dict(self) -> dict[str, Any]:
         """Name and knots."""
-        return {"name": self.name, "r_au": list(self.r_au), "g": list(self.g), "source": self.source}
+        return {
+            "name": self.name,
+            "r_au": list(self.r_au),
+            "g": list(self.g),
+            "source": self.source,
+        }
 
 
 def _normalised(name: str, r0_au: float, m: float, n: float, k: float, source: str) -> FormLaw:
@@ -137,7 +148,12 @@ WATER_ICE = FormLaw(
 )
 INVERSE_SQUARE = FormLaw("inverse-square", 1.0, 1.0, 2.0, 0.0, 0.0, "power law")
 CO_5AU = _normalised(
-    "co-5au", 5.0, 2.0, 3.0, 2.6, "form of Marsden et al. 1973 with r0 = 5 au, m = 2, n = 3, k = 2.6 (CO-driven)"
+    "co-5au",
+    5.0,
+    2.0,
+    3.0,
+    2.6,
+    "form of Marsden et al. 1973 with r0 = 5 au, m = 2, n = 3, k = 2.6 (CO-driven)",
 )
 CO_10AU = _normalised(
     "co-10au",
@@ -150,7 +166,15 @@ CO_10AU = _normalised(
 
 LAWS: dict[str, FormLaw] = {
     law.name: law
-    for law in (INVERSE_SQUARE, WATER_ICE, CO_5AU, CO_10AU, power_law(0.0), power_law(1.0), power_law(3.0))
+    for law in (
+        INVERSE_SQUARE,
+        WATER_ICE,
+        CO_5AU,
+        CO_10AU,
+        power_law(0.0),
+        power_law(1.0),
+        power_law(3.0),
+    )
 }
 """The named laws."""
 
@@ -191,9 +215,13 @@ class Window:
 
     def __post_init__(self) -> None:
         if self.by not in ("date", "distance"):
-            raise CaseError(f"An activity window goes by 'date' or by 'distance', not by '{self.by}'.")
+            raise CaseError(
+                f"An activity window goes by 'date' or by 'distance', not by '{self.by}'."
+            )
         if not self.start < self.end:
-            raise CaseError(f"The activity window from {self.start} to {self.end} is empty; swap its ends.")
+            raise CaseError(
+                f"The activity window from {self.start} to {self.end} is empty; swap its ends."
+            )
 
     @classmethod
     def between_dates(cls, start: Any, end: Any, scale: str = "tdb") -> "Window":
@@ -213,7 +241,9 @@ class Window:
 def _per_d2(value: Any) -> NDArray[np.float64]:
     if isinstance(value, u.Quantity):
         return np.atleast_1d(np.asarray(value.to_value(AU_PER_D2), dtype=float))
-    parts = [v.to_value(AU_PER_D2) if isinstance(v, u.Quantity) else v for v in np.atleast_1d(value)]
+    parts = [
+        v.to_value(AU_PER_D2) if isinstance(v, u.Quantity) else v for v in np.atleast_1d(value)
+    ]
     return np.asarray(parts, dtype=float)
 
 
@@ -264,15 +294,14 @@ class Thrust:
         wanted = "".join(c for c in COMPONENTS if c in str(components).upper())
         if not wanted or len(wanted) != len(str(components)):
             raise CaseError(
-                f"The thrust components '{components}' are not a choice of R, T and N; write for instance "
-                "components = \"RTN\" or \"R\".",
+                f"The thrust components '{components}' are not a choice of R, T and N; "
+                "write for instance "
+                'components = "RTN" or "R".',
                 components=components,
             )
         amounts = _per_d2(A)
         if amounts.shape != (3,) or not np.all(np.isfinite(amounts)):
-            raise CaseError(
-                f"A thrust has three amounts A1, A2, A3 in au/d2; got {A!r}.", A=A
-            )
+            raise CaseError(f"A thrust has three amounts A1, A2, A3 in au/d2; got {A!r}.", A=A)
         object.__setattr__(self, "law", find_law(law, exponent))
         object.__setattr__(self, "components", wanted)
         object.__setattr__(self, "A", amounts * AU_PER_D2)
@@ -288,15 +317,18 @@ class Thrust:
     def with_amounts(self, a_au_d2: ArrayLike) -> "Thrust":
         """The same law with other amounts (3,) in au/d2."""
         return Thrust(
-            self.law, self.components, np.asarray(a_au_d2, dtype=float), self.lag, self.window,
-            None, self.area_to_mass,
+            self.law,
+            self.components,
+            np.asarray(a_au_d2, dtype=float),
+            self.lag,
+            self.window,
+            None,
+            self.area_to_mass,
         )
 
     def with_components(self, components: str) -> "Thrust":
         """The same law with other components free."""
-        return Thrust(
-            self.law, components, self.A, self.lag, self.window, None, self.area_to_mass
-        )
+        return Thrust(self.law, components, self.A, self.lag, self.window, None, self.area_to_mass)
 
     def g(self, r_au: ArrayLike) -> NDArray[np.float64]:
         """g(r), dimensionless, for distances in au; the window is not applied."""
@@ -342,7 +374,9 @@ class Thrust:
     def __str__(self) -> str:
         a = ", ".join(f"A{i + 1} = {v:.4g}" for i, v in enumerate(self.amounts_au_d2))
         lag = float(self.lag.to_value(u.day))
-        return f"{self.law.name} thrust ({self.components}): {a} au/d2" + (f", lag {lag:g} d" if lag else "")
+        return f"{self.law.name} thrust ({self.components}): {a} au/d2" + (
+            f", lag {lag:g} d" if lag else ""
+        )
 
 
 def radiation_pressure_au_d2(area_to_mass_m2_kg: float) -> float:
@@ -355,6 +389,15 @@ NO_PUSH = Thrust()
 """Gravity alone, in the kernels' form."""
 
 __all__ = [
-    "AU_PER_D2", "COMPONENTS", "LAWS", "NO_PUSH", "FormLaw", "TableLaw", "Thrust", "Window", "find_law",
-    "power_law", "radiation_pressure_au_d2",
+    "AU_PER_D2",
+    "COMPONENTS",
+    "LAWS",
+    "NO_PUSH",
+    "FormLaw",
+    "TableLaw",
+    "Thrust",
+    "Window",
+    "find_law",
+    "power_law",
+    "radiation_pressure_au_d2",
 ]

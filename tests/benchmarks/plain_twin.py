@@ -1,7 +1,8 @@
 """The plain way, to measure against: SciPy's DOP853 calling jplephem in the right-hand side.
 
-Same equation of motion as the compiled propagator: point masses of the Sun, the planets, the Moon, Pluto and
-(by choice) the 16 asteroids, the Sun's first post-Newtonian term, an inverse-square thrust.
+Same equation of motion as the compiled propagator: point masses of the Sun, the planets, the Moon,
+Pluto and (by choice) the 16 asteroids, the Sun's first post-Newtonian term, an inverse-square
+thrust.
 """
 
 from importlib import resources
@@ -16,7 +17,16 @@ from ngbound.sky import ASTEROID_NUMBERS, MAJOR_BODIES, load_ephemeris
 
 PLANETS = SPK.open(de440)
 ASTEROIDS = SPK.open(str(resources.files("ngbound") / "data" / "sb441_n16_1900_2100.bsp"))
-BARYCENTRES = {"mercury": 1, "venus": 2, "mars": 4, "jupiter": 5, "saturn": 6, "uranus": 7, "neptune": 8, "pluto": 9}
+BARYCENTRES = {
+    "mercury": 1,
+    "venus": 2,
+    "mars": 4,
+    "jupiter": 5,
+    "saturn": 6,
+    "uranus": 7,
+    "neptune": 8,
+    "pluto": 9,
+}
 
 
 def right_hand_side(amounts: np.ndarray, asteroids: bool):
@@ -29,10 +39,17 @@ def right_hand_side(amounts: np.ndarray, asteroids: bool):
         jd = J2000_JD + t
         sun, sun_velocity = PLANETS[0, 10].compute_and_differentiate(jd)
         emb = PLANETS[0, 3].compute(jd)
-        km = {"sun": sun, "earth": emb + PLANETS[3, 399].compute(jd), "moon": emb + PLANETS[3, 301].compute(jd)}
+        km = {
+            "sun": sun,
+            "earth": emb + PLANETS[3, 399].compute(jd),
+            "moon": emb + PLANETS[3, 301].compute(jd),
+        }
         km |= {name: PLANETS[0, code].compute(jd) for name, code in BARYCENTRES.items()}
         if asteroids:
-            km |= {name: sun + ASTEROIDS[10, 2000000 + n].compute(jd) for name, n in ASTEROID_NUMBERS.items()}
+            km |= {
+                name: sun + ASTEROIDS[10, 2000000 + n].compute(jd)
+                for name, n in ASTEROID_NUMBERS.items()
+            }
         places = np.array([km[body] for body in bodies]) / AU_KM
         sun, sun_velocity = sun / AU_KM, sun_velocity / AU_KM
         d = y[:3] - places

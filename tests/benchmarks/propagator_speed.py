@@ -2,9 +2,10 @@
 
     python -m tests.benchmarks.propagator_speed
 
-Prints, for one main-belt year and for the hyperbola q = 0.25 au, e = 1.2 over 120 days, with 500 outputs and the 11
-bodies of DE440: times, errors against steps a thousand times tighter, and ratios to the plain twin; then the whole likelihood of a
-300-record arc with 27 bodies, and the operations it takes.
+Prints, for one main-belt year and for the hyperbola q = 0.25 au, e = 1.2 over 120 days, with 500
+outputs and the 11 bodies of DE440: times, errors against steps a thousand times tighter, and ratios
+to the plain twin; then the whole likelihood of a 300-record arc with 27 bodies, and the operations
+it takes.
 """
 
 import time
@@ -38,7 +39,9 @@ def best_of(work: Callable[[], object], seconds: float = 2.0) -> float:
     return shortest
 
 
-def adaptive(state: np.ndarray, days: float, outputs: np.ndarray, eps: float) -> tuple[float, float, int]:
+def adaptive(
+    state: np.ndarray, days: float, outputs: np.ndarray, eps: float
+) -> tuple[float, float, int]:
     """Time, error and steps of the compiled adaptive integrator with its 500 outputs."""
     track = integrate_track(0.0, state, 0.0, days, THRUST, FORCES, eps)
     reference = integrate_track(0.0, state, 0.0, days, THRUST, FORCES, 1e-10).at(outputs)
@@ -65,7 +68,9 @@ def batch_of(
         track, near.records, near.whitening, near.thrust, "RTN", forces, threads=threads
     )
     rng = np.random.default_rng(3)
-    thetas = near.theta + rng.standard_normal((lanes, 9)) * np.array([1e-7] * 3 + [1e-9] * 3 + [1e-11] * 3)
+    thetas = near.theta + rng.standard_normal((lanes, 9)) * np.array(
+        [1e-7] * 3 + [1e-9] * 3 + [1e-11] * 3
+    )
     assert not near.strays(thetas).any()
     return near, best_of(lambda: near.chi2(thetas)) / lanes
 
@@ -95,11 +100,15 @@ def main() -> None:
         plain = plain_track(state, days, outputs, AMOUNTS, False)
         twin = time.perf_counter() - start
         best = integrate_track(0.0, state, 0.0, days, THRUST, FORCES, 1e-10).at(outputs)
-        print(f"{name}: plain twin {twin * 1e3:.0f} ms, {np.abs(plain - best)[:, :3].max() / metre:.2f} m")
+        print(
+            f"{name}: plain twin {twin * 1e3:.0f} ms, "
+            f"{np.abs(plain - best)[:, :3].max() / metre:.2f} m"
+        )
         for label, eps in (("metre", METRE_EPS), ("default", ForceModel().eps)):
             spent, error, steps = adaptive(state, days, outputs, eps)
             print(
-                f"  adaptive, {label:8s} {spent * 1e6:7.0f} us ({steps} steps, {error / metre:.1e} m): "
+                f"  adaptive, {label:8s} {spent * 1e6:7.0f} us ({steps} steps, "
+                f"{error / metre:.1e} m): "
                 f"{twin / spent:,.0f} times"
             )
         track = integrate_track(0.0, state, 0.0, days, THRUST, FORCES)
@@ -110,7 +119,9 @@ def main() -> None:
         assert leg is not None
         out = np.empty((500, 6, 9))
 
-        def jacobian(track=track, coarse=coarse, names=names, leg=leg, out=out, outputs=outputs) -> None:
+        def jacobian(
+            track=track, coarse=coarse, names=names, leg=leg, out=out, outputs=outputs
+        ) -> None:
             partials_along(track, names, coarse)
             columns_at(leg.tau_d, leg.h_d, leg.begin, leg.accel, True, outputs, out)
 
@@ -123,16 +134,24 @@ def main() -> None:
         many = near.theta + np.zeros((64 * LANES, 1))
         lane = best_of(lambda near=near, many=many: near.chi2(many)) / many.shape[0]
         print(
-            f"  batch with 500 places and chi2, {lane * 1e6:.1f} us a trajectory: {twin / lane:,.0f} times; "
+            f"  batch with 500 places and chi2, {lane * 1e6:.1f} us a trajectory: "
+            f"{twin / lane:,.0f} times; "
             f"one block of {LANES} lanes {one * 1e6:.0f} us"
         )
-        print(f"  grid and 9-parameter Jacobian at 500 outputs {spent * 1e6:.0f} us, {spent / one:.2f} blocks")
-    for name, state, days in (("main belt, 1 yr", BELT, 365.0), ("hyperbola, 120 d", HYPERBOLA, 120.0)):
+        print(
+            f"  grid and 9-parameter Jacobian at 500 outputs {spent * 1e6:.0f} us, "
+            f"{spent / one:.2f} blocks"
+        )
+    for name, state, days in (
+        ("main belt, 1 yr", BELT, 365.0),
+        ("hyperbola, 120 d", HYPERBOLA, 120.0),
+    ):
         for threads in (1, 2):
             near, spent = batch_of(state, days, 300, ForceModel(), 256 * LANES, threads)
             work = operations(near)
             print(
-                f"likelihood of 300 records, 27 bodies, {name}, {threads} thread(s): {1 / spent:,.0f} a second, "
+                f"likelihood of 300 records, 27 bodies, {name}, {threads} thread(s): "
+                f"{1 / spent:,.0f} a second, "
                 f"{work / 1e3:.0f} thousand operations each, {work / spent / 1e9:.1f} Gflop/s"
             )
 

@@ -1,7 +1,8 @@
 """The propagator against ephemerides made elsewhere.
 
-JPL Horizons output is quoted by solution number and site; positions of asteroids and planets are those of sb441-n16
-(D. Farnocchia 2021, JPL IOM 392R-21-005) and DE440 (R. S. Park et al. 2021, AJ 161, 105), read with jplephem.
+JPL Horizons output is quoted by solution number and site; positions of asteroids and planets are
+those of sb441-n16 (D. Farnocchia 2021, JPL IOM 392R-21-005) and DE440 (R. S. Park et al. 2021, AJ
+161, 105), read with jplephem.
 """
 
 import dataclasses
@@ -22,22 +23,26 @@ def own_state(body: str) -> np.ndarray:
     return np.concatenate(load_ephemeris().posvel(body, 0.0))
 
 
-@pytest.mark.parametrize("body", ["ceres", "pallas", "vesta", "hygiea", "juno", "interamnia", "davida"])
+@pytest.mark.parametrize(
+    "body", ["ceres", "pallas", "vesta", "hygiea", "juno", "interamnia", "davida"]
+)
 @pytest.mark.parametrize("relativity", ["sun", "all"])
 def test_asteroid_from_its_own_state_in_2000(body: str, relativity: str) -> None:
     # the orbits of sb441-n16 also feel some 320 smaller asteroids, which nobody ships
     forces = ForceModel(exclude=(body,), relativity=relativity)
     times = np.array([1.0, 10.0, 20.0]) * YEAR_D
     track = integrate_track(0.0, own_state(body), 0.0, times[-1], None, forces)
-    miss = np.linalg.norm(track.at(times)[:, :3] - load_ephemeris().position_au(body, times), axis=1)
+    miss = np.linalg.norm(
+        track.at(times)[:, :3] - load_ephemeris().position_au(body, times), axis=1
+    )
     assert miss[0] < 0.4 * km
     assert miss[2] < 70 * km
 
 
 @pytest.mark.parametrize("body", ["ceres", "vesta", "hygiea"])
 def test_what_remains_is_the_pull_of_other_asteroids(body: str) -> None:
-    # refitting the state takes away most of the miss: it is a slow drift of the orbit, as small kicks
-    # make it, not an error of the force model that would return every revolution
+    # refitting the state takes away most of the miss: it is a slow drift of the orbit, as small
+    # kicks make it, not an error of the force model that would return every revolution
     forces = dataclasses.replace(ALL, exclude=(body,))
     times = np.linspace(0.0, 20 * YEAR_D, 200)
     truth = load_ephemeris().position_au(body, times)
@@ -62,7 +67,9 @@ def test_planet_as_a_test_particle_over_twenty_years(planet: str, tolerance: flo
     forces = dataclasses.replace(ALL, exclude=(planet,))
     end = 20 * YEAR_D
     track = integrate_track(0.0, own_state(planet), 0.0, end, None, forces)
-    assert np.linalg.norm(track.at(end)[0, :3] - load_ephemeris().position_au(planet, end)) < tolerance
+    assert (
+        np.linalg.norm(track.at(end)[0, :3] - load_ephemeris().position_au(planet, end)) < tolerance
+    )
 
 
 def test_frame_dragging_and_sun_quadrupole_bring_mercury_nearer() -> None:
@@ -99,13 +106,19 @@ def test_encke_seen_from_x05() -> None:
     )
     times = tdb_of_jd_tt(np.array([2459417.5, 2459490.50000002, 2460210.026675018]))
     published = np.array(
-        [[343.098376774, -8.254881173], [326.413642876, -13.483322598], [136.698363978, 26.823003125]]
+        [
+            [343.098376774, -8.254881173],
+            [326.413642876, -13.483322598],
+            [136.698363978, 26.823003125],
+        ]
     )
     seen = predict(orbit, times, "X05", scale="tdb")[["ra_deg", "dec_deg"]].to_numpy()
     miss = np.radians(seen - published)
     miss[:, 0] *= np.cos(np.radians(published[:, 1]))
     assert np.abs(miss).max() < 0.2 * mas
-    bare = predict(orbit.with_thrust(None), times, "X05", scale="tdb")[["ra_deg", "dec_deg"]].to_numpy()
+    bare = predict(orbit.with_thrust(None), times, "X05", scale="tdb")[
+        ["ra_deg", "dec_deg"]
+    ].to_numpy()
     assert np.abs(np.radians(bare - published)).max() > 20 * mas
 
 

@@ -59,11 +59,11 @@ def test_posterior_limit_covers_on_average_over_its_prior():
     info = thrust_information(fit)
     random = np.random.default_rng(5)
     top = 6.0 * info.eigenvalues[0] ** -0.5
-    direction = random.standard_normal((600, 3))
+    direction = random.standard_normal((300, 3))
     direction /= np.linalg.norm(direction, axis=1)[:, None]
-    truth = direction * random.uniform(0.0, top, 600)[:, None]
+    truth = direction * random.uniform(0.0, top, 300)[:, None]
     counted = inject_and_recover(
-        LinearRefit.of(fit), truth, n=600, seed=6, prior="isotropic-uniform", upper_au_d2=top
+        LinearRefit.of(fit), truth, n=300, seed=6, prior="isotropic-uniform", upper_au_d2=top
     )
     assert counted.coverage_bayes is not None
     assert agrees(counted.coverage_bayes, 0.95)

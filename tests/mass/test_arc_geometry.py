@@ -4,7 +4,10 @@ import numpy as np
 import pytest
 
 from ngbound.limits import detection_threshold
-from ngbound.mass import audit, audit_geometry, sagitta_sigma
+from ngbound.mass import Geometry, audit, audit_geometry, sagitta_sigma
+from ngbound.mass.arc_geometry import FIRST_D, arc_information, simulated_information
+from ngbound.motion import Orbit, Thrust, propagate_two_body
+from ngbound.sky import load_ephemeris
 
 from .simulated import EARLY, ROUND, SIGMA_ARCSEC, THRUST, fitted
 
@@ -69,3 +72,37 @@ def test_a_given_orbit_is_used(outline):
     assert found.n_simulated < free.n_simulated
     spread = [np.ptp(np.log(x.simulated_au_d2)) for x in (found, free)]
     assert spread[0] < spread[1]
+
+
+CLASSES = {
+    "main belt, 5 yr": ({"q": 2.2, "e": 0.15, "tp": 7400.0}, 1800.0, 200, 60),
+    "near Earth, 60 d": ({"q": 0.85, "e": 0.45, "tp": 7420.0}, 60.0, 80, 20),
+    "hyperbolic, 90 d": ({"q": 0.9, "e": 1.4, "tp": 7250.0}, 90.0, 150, 40),
+    "Centaur, 4 yr": ({"q": 8.0, "e": 0.3, "tp": 7400.0}, 1500.0, 120, 40),
+    "parabolic, inbound": ({"q": 1.5, "e": 1.0, "tp": 7700.0}, 150.0, 100, 30),
+}
+
+
+@pytest.mark.parametrize("name", CLASSES)
+def test_true_arcs_lie_in_the_bracket_of_their_outline(name):
+    elements, span_d, n_obs, nights = CLASSES[name]
+    orbit = Orbit.from_elements(epoch=FIRST_D, i=11.0, node=80.0, argperi=40.0, **elements)
+    ephemeris, thrust = load_ephemeris(), Thrust("inverse-square")
+    sun = np.concatenate(ephemeris.posvel("sun", FIRST_D))
+    times = np.linspace(0.0, span_d, 60)
+    path = propagate_two_body(orbit.state_vector - sun, times)[:, :3]
+    earth = ephemeris.position_au("earth", FIRST_D + times) - ephemeris.position_au(
+        "sun", FIRST_D + times
+    )
+    r, delta = np.linalg.norm(path, axis=1), np.linalg.norm(path - earth, axis=1)
+    outline = Geometry(
+        n_obs=n_obs, nights=nights, span_d=span_d, sigma_arcsec=0.4,
+        r_au=(float(r[0]), float(r[-1])), delta_au=(float(delta.min()), float(delta.max())),
+    )  # fmt: skip
+    true = arc_information(orbit.state_vector - sun, outline, nights, thrust)
+    like = simulated_information(outline, thrust, np.random.default_rng(1))
+    readings = [lambda info: info.eigenvalues[0] ** -0.5]
+    readings += [lambda info, c=c: float(info.sigma_free(c).value) for c in "RTN"]
+    for reading in readings:
+        values = [reading(info) for info in like]
+        assert min(values) / 3.0 < reading(true) < 3.0 * max(values)

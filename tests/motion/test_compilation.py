@@ -1,4 +1,4 @@
-"""Compiled code: where it is kept, what a first run says, read-only folders and two starts at once."""
+"""Compiled code: where it is kept, the notice of a first run, read-only folders, two starts."""
 
 import os
 import shutil
@@ -29,7 +29,12 @@ def probe(environment: dict[str, str], path: Path | None = None) -> list[str]:
     if path is not None:
         clean["PYTHONPATH"] = str(path)
     done = subprocess.run(
-        [sys.executable, "-c", PROBE], env=clean, capture_output=True, text=True, check=True, cwd="/"
+        [sys.executable, "-c", PROBE],
+        env=clean,
+        capture_output=True,
+        text=True,
+        check=True,
+        cwd="/",
     )
     return done.stdout.splitlines()
 
@@ -67,7 +72,9 @@ def test_package_in_a_folder_that_cannot_be_written(tmp_path: Path) -> None:
 def test_two_processes_that_start_at_once(tmp_path: Path) -> None:
     environment = {**os.environ, "NUMBA_CACHE_DIR": str(tmp_path)}
     started = [
-        subprocess.Popen([sys.executable, "-c", PROBE], env=environment, stdout=subprocess.PIPE, text=True)
+        subprocess.Popen(
+            [sys.executable, "-c", PROBE], env=environment, stdout=subprocess.PIPE, text=True
+        )
         for _ in range(2)
     ]
     for process in started:

@@ -50,7 +50,8 @@ def test_round_trip_of_twenty_years() -> None:
 
 
 def test_order_of_convergence() -> None:
-    # the steps follow eps^(1/7); an error that falls at least with the 12th power of the step shows the high order
+    # the steps follow eps^(1/7); an error that falls at least with the 12th power of the step shows
+    # the high order
     times = np.linspace(0.0, 120.0, 50)
     best = integrate_track(0.0, HYPERBOLA, 0.0, 120.0, THRUST, eps=1e-10).at(times)
     steps, errors = [], []

@@ -68,7 +68,9 @@ def test_result_does_not_depend_on_threads_or_company() -> None:
 
 def test_fewer_components_hold_the_others() -> None:
     near, track = neighbourhood(BELT, 365.0, 180.0)
-    radial = Neighbourhood.around(track, near.records, near.whitening, near.thrust, "R", near.forces)
+    radial = Neighbourhood.around(
+        track, near.records, near.whitening, near.thrust, "R", near.forces
+    )
     full = near.theta.copy()
     full[6] += 1e-9
     assert radial.chi2(full[:7]) == pytest.approx(near.chi2(full), rel=1e-12)

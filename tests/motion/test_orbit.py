@@ -5,7 +5,15 @@ import numpy as np
 import pytest
 
 from ngbound.errors import CaseError
-from ngbound.motion import ForceModel, Orbit, Records, Thrust, design_matrix, partials_along, predict
+from ngbound.motion import (
+    ForceModel,
+    Orbit,
+    Records,
+    Thrust,
+    design_matrix,
+    partials_along,
+    predict,
+)
 from ngbound.motion.observables import residuals, see
 from ngbound.sky import astrometric, load_ephemeris
 from tests.motion.orbits import BELT, HYPERBOLA, geocentric_records
@@ -36,7 +44,7 @@ def test_state_and_trajectory_have_units() -> None:
     path = ORBIT.propagate([0.0, 100.0])
     assert path.position.shape == (2, 3) and path.velocity.shape == (2, 3)
     assert path.position[0].value == pytest.approx(BELT[:3], abs=1e-15)
-    assert list(path.to_frame()) [:2] == ["tdb", "x_au"]
+    assert list(path.to_frame())[:2] == ["tdb", "x_au"]
 
 
 def test_epoch_can_be_moved() -> None:
@@ -89,7 +97,10 @@ def test_design_matrix_is_the_slope_of_the_residuals() -> None:
 
 def test_residuals_are_observed_minus_computed() -> None:
     track = ORBIT.track(-1.0, 11.0)
-    sight = see(track, Records.from_angles([5.0], load_ephemeris().position_au("earth", [5.0]), [0.0], [0.0]))
+    sight = see(
+        track,
+        Records.from_angles([5.0], load_ephemeris().position_au("earth", [5.0]), [0.0], [0.0]),
+    )
     place = astrometric(
         lambda t: track.at(t)[:, :3], np.array([5.0]), load_ephemeris().position_au("earth", [5.0])
     )

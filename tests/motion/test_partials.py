@@ -33,7 +33,12 @@ LAWS: dict[str, Callable[..., Thrust]] = {
 
 
 def numeric(
-    name: str, state: np.ndarray, times: np.ndarray, make: Callable[..., Thrust], forces: ForceModel, lag: float
+    name: str,
+    state: np.ndarray,
+    times: np.ndarray,
+    make: Callable[..., Thrust],
+    forces: ForceModel,
+    lag: float,
 ) -> np.ndarray:
     """Central differences extrapolated twice (L. F. Richardson 1911)."""
 
@@ -53,7 +58,9 @@ def numeric(
         else:
             choices["area_to_mass"] = AREA_TO_MASS + change / radiation_pressure_au_d2(1.0)
         thrust = make(A=amounts, **choices)
-        return integrate_track(0.0, moved, 0.0, times[-1], thrust, forces, eps=1e-9).at_offset(times)
+        return integrate_track(0.0, moved, 0.0, times[-1], thrust, forces, eps=1e-9).at_offset(
+            times
+        )
 
     number = PARAMETERS.index(name)
     step = STEP.get(name, 1e-4 if number < 3 else 1e-6)
@@ -63,9 +70,13 @@ def numeric(
 
 
 @pytest.mark.parametrize("law", LAWS)
-@pytest.mark.parametrize(("state", "days"), [(BELT, 365.0), (HYPERBOLA, 120.0)], ids=["belt", "hyperbola"])
+@pytest.mark.parametrize(
+    ("state", "days"), [(BELT, 365.0), (HYPERBOLA, 120.0)], ids=["belt", "hyperbola"]
+)
 @pytest.mark.parametrize("relativity", ["sun", "all"])
-def test_all_parameters_of_all_laws(law: str, state: np.ndarray, days: float, relativity: str) -> None:
+def test_all_parameters_of_all_laws(
+    law: str, state: np.ndarray, days: float, relativity: str
+) -> None:
     lag = 0.0 if law == "power" else 20.0
     names = [n for n in PARAMETERS if n != "exponent" or law == "power"]
     forces = ForceModel(relativity=relativity, sun_j2=True, frame_dragging=True)
@@ -76,7 +87,8 @@ def test_all_parameters_of_all_laws(law: str, state: np.ndarray, days: float, re
     for c, name in enumerate(names):
         truth = numeric(name, state, times, LAWS[law], forces, lag)
         error = np.abs(exact[:, :3, c] - truth[:, :3]).max(axis=1)
-        # differences across a table's knots are themselves no better than 1e-6, those of a lag than 1e-7
+        # differences across a table's knots are themselves no better than 1e-6, those of a lag than
+        # 1e-7
         tolerance = 1e-6 if law == "table" else 1e-7 if name == "lag" else 1e-8
         assert np.all(error < tolerance * np.abs(truth[:, :3]).max(axis=1)), name
 
@@ -100,7 +112,9 @@ def test_switch_by_distance_moves_with_the_orbit(backward: bool) -> None:
             else:
                 amounts[c - 6] += change
             push = Thrust(A=amounts, window=window)
-            return integrate_track(0.0, moved, min(0.0, end), max(0.0, end), push).at_offset([end])[0]
+            return integrate_track(0.0, moved, min(0.0, end), max(0.0, end), push).at_offset([end])[
+                0
+            ]
 
         rough = (at(step) - at(-step)) / (2 * step)
         fine = (at(step / 2) - at(-step / 2)) / step
@@ -108,7 +122,8 @@ def test_switch_by_distance_moves_with_the_orbit(backward: bool) -> None:
         assert np.abs(exact[:3, c] - truth[:3]).max() < 1e-6 * np.abs(truth[:3]).max(), c
         # the kick at the switch is a part of this that the tolerance resolves
     without = partials_along(
-        integrate_track(0.0, state, min(0.0, end), max(0.0, end), Thrust(A=(3e-6, 1e-6, 5e-7))), ("x",)
+        integrate_track(0.0, state, min(0.0, end), max(0.0, end), Thrust(A=(3e-6, 1e-6, 5e-7))),
+        ("x",),
     )
     assert np.abs(without.at_offset([end])[0, :3, 0] - exact[:3, 0]).max() > 1e-5
 

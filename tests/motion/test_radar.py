@@ -31,7 +31,8 @@ def test_delay_is_the_sum_of_both_legs() -> None:
         for _ in range(10):
             start = station_states(SITE, sent, ephemeris).position_au[0]
             sent = bounce - np.linalg.norm(track.at(bounce)[0, :3] - start) / light
-        # the plain legs lack the Sun's delay (some ten to a hundred microseconds) and the clocks' drift
+        # the plain legs lack the Sun's delay (some ten to a hundred microseconds) and the clocks'
+        # drift
         extra = got.delay_s[i] - (t - sent) * DAY_S
         assert 5e-6 < extra < 3e-4
 
@@ -42,12 +43,15 @@ def test_doppler_is_minus_the_rate_of_the_delay() -> None:
     h = 600.0 / DAY_S
     before, after = (echo(track, t + s * h, SITE, SITE).delay_s[0] for s in (-1, 1))
     got = echo(track, t, SITE, SITE, MEGAHERTZ)
-    assert got.doppler_hz[0] == pytest.approx(-MEGAHERTZ * 1e6 * (after - before) / 1200.0, rel=1e-4)
+    assert got.doppler_hz[0] == pytest.approx(
+        -MEGAHERTZ * 1e6 * (after - before) / 1200.0, rel=1e-4
+    )
     assert np.sign(got.doppler_hz[0]) == -np.sign(after - before)
 
 
 def test_sun_delay_near_conjunction() -> None:
-    # I. I. Shapiro 1964: some 200 microseconds for an echo that grazes the Sun at superior conjunction
+    # I. I. Shapiro 1964: some 200 microseconds for an echo that grazes the Sun at superior
+    # conjunction
     ephemeris = load_ephemeris()
     t = 100.0
     sun = np.concatenate(ephemeris.posvel("sun", t))
@@ -72,9 +76,7 @@ def test_partials_against_differences() -> None:
     thrust = Thrust(A=(1e-8, 1e-9, 1e-9))
     track = Orbit(0.0, NEAR_EARTH, thrust).track(-2.0, 60.0)
     t = np.array([20.0, 50.0])
-    delay, doppler = echo_partials(
-        track, partials_along(track, names), t, SITE, OTHER, MEGAHERTZ
-    )
+    delay, doppler = echo_partials(track, partials_along(track, names), t, SITE, OTHER, MEGAHERTZ)
     for c in range(9):
         step = 1e-6 if c < 3 else 1e-8 if c < 6 else 1e-9
         sides = []

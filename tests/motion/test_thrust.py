@@ -85,7 +85,9 @@ def test_distance_at_lag_is_two_body_motion(dt: float, speed: float) -> None:
                 (xs if block == 1 else vs)[j] += sign * h
                 distance_at_lag(gm, xs, vs, dt, scrap)
                 sides.append(scrap[0])
-            assert out[block + j] == pytest.approx((sides[0] - sides[1]) / (2 * h), rel=1e-6, abs=1e-7)
+            assert out[block + j] == pytest.approx(
+                (sides[0] - sides[1]) / (2 * h), rel=1e-6, abs=1e-7
+            )
     assert out[7] == pytest.approx(there[:3] @ there[3:] / out[0], rel=1e-9)
 
 

@@ -1,6 +1,7 @@
 """Where the perturbers are: Chebyshev series evaluated for all bodies at one time.
 
-Clenshaw's recurrence (C. W. Clenshaw 1955, Math. Comp. 9, 118) for position, and its derivative for velocity.
+Clenshaw's recurrence (C. W. Clenshaw 1955, Math. Comp. 9, 118) for position, and its derivative for
+velocity.
 """
 
 from numba import njit
@@ -8,7 +9,9 @@ from numba import njit
 
 @njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
 def series(tab, body, t, pos, vel, with_velocity):
-    """Position (au) and, when asked for, velocity (au/d) of one body into rows of ``pos`` and ``vel``."""
+    """Position (au) and, when asked for, velocity (au/d) of one body into rows of ``pos`` and
+    ``vel``.
+    """
     width = tab.width_d[body]
     u = (t - tab.first_d[body]) / width
     i = int(u)
@@ -42,7 +45,9 @@ def series(tab, body, t, pos, vel, with_velocity):
 
 @njit(cache=True, error_model="numpy")
 def all_positions(tab, t, pos, vel, all_velocities):
-    """Barycentric positions of all bodies into ``pos`` (nb, 3); velocity of the Sun, or of all, into ``vel``."""
+    """Barycentric positions of all bodies into ``pos`` (nb, 3); velocity of the Sun, or of all,
+    into ``vel``.
+    """
     for body in range(tab.gm.size):
         parent = tab.parent[body]
         fast = body == 0 or (all_velocities and parent < 0)

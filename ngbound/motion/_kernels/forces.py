@@ -1,9 +1,10 @@
 """Accelerations of the massless body, their gradients, and the second-order tide.
 
-Newtonian point masses; the Sun's first post-Newtonian term in its isotropic one-body form (T. D. Moyer 2003,
-Formulation for Observed and Computed Values, eq. 4-26 reduced to one static mass); the full point-mass
-equations of A. Einstein, L. Infeld & B. Hoffmann 1938, Ann. Math. 39, 65 in the form of the same eq. 4-26;
-the quadrupoles of the Sun and, near it, of the Earth; the Sun's Lense-Thirring term (IERS Conventions 2010, eq. 10.12).
+Newtonian point masses; the Sun's first post-Newtonian term in its isotropic one-body form (T. D.
+Moyer 2003, Formulation for Observed and Computed Values, eq. 4-26 reduced to one static mass); the
+full point-mass equations of A. Einstein, L. Infeld & B. Hoffmann 1938, Ann. Math. 39, 65 in the
+form of the same eq. 4-26; the quadrupoles of the Sun and, near it, of the Earth; the Sun's
+Lense-Thirring term (IERS Conventions 2010, eq. 10.12).
 """
 
 import math
@@ -70,7 +71,9 @@ def add_sun_relativity_partials(gm, c, x, v, gx, gv):
 
 @njit(cache=True, error_model="numpy")
 def planet_accelerations(gm, parent, pos, acc):
-    """Newtonian acceleration of each body that is not heliocentric in its series, due to the others."""
+    """Newtonian acceleration of each body that is not heliocentric in its series, due to the
+    others.
+    """
     n = 0
     while n < gm.size and parent[n] < 0:
         n += 1
@@ -98,8 +101,8 @@ def planet_accelerations(gm, parent, pos, acc):
 def full_relativity(gm, parent, c, pos, vel, x, v, out, gx, gv, with_partials):
     """Einstein-Infeld-Hoffmann terms of a massless body at barycentric ``x``, ``v``.
 
-    ``out`` (3,) receives the acceleration beyond Newton's; with ``with_partials`` the partials are added to
-    ``gx`` and ``gv``.
+    ``out`` (3,) receives the acceleration beyond Newton's; with ``with_partials`` the partials are
+    added to ``gx`` and ``gv``.
     """
     nb = gm.size
     body_acc = np.empty((nb, 3))
@@ -111,10 +114,10 @@ def full_relativity(gm, parent, c, pos, vel, x, v, out, gx, gv, with_partials):
         d2 = 0.0
         for i in range(3):
             d2 += (x[i] - pos[j, i]) ** 2
-        d = math.sqrt(d2)
-        potential += gm[j] / d
+        near = math.sqrt(d2)
+        potential += gm[j] / near
         for i in range(3):
-            d_pot[i] -= gm[j] * (x[i] - pos[j, i]) / (d2 * d)
+            d_pot[i] -= gm[j] * (x[i] - pos[j, i]) / (d2 * near)
     v2 = v[0] * v[0] + v[1] * v[1] + v[2] * v[2]
     out[:] = 0.0
     d = np.empty(3)
@@ -144,13 +147,7 @@ def full_relativity(gm, parent, c, pos, vel, x, v, out, gx, gv, with_partials):
                     s2 += (pos[j, i] - pos[k, i]) ** 2
                 own += gm[k] / math.sqrt(s2)
         bracket = (
-            -4.0 * potential
-            - own
-            + v2
-            + 2.0 * vj2
-            - 4.0 * vvj
-            - 1.5 * dvj * dvj / d2
-            - 0.5 * daj
+            -4.0 * potential - own + v2 + 2.0 * vj2 - 4.0 * vvj - 1.5 * dvj * dvj / d2 - 0.5 * daj
         ) / c2
         drag = 0.0
         for i in range(3):
@@ -204,7 +201,9 @@ def add_quadrupole_partials(gm, j2_r2, pole, d, gx):
     p = 5.0 * z * z / (d5 * d2) - 1.0 / d5
     for j in range(3):
         dp = (
-            10.0 * z * pole[j] / (d5 * d2) - 35.0 * z * z * d[j] / (d5 * d2 * d2) + 5.0 * d[j] / (d5 * d2)
+            10.0 * z * pole[j] / (d5 * d2)
+            - 35.0 * z * z * d[j] / (d5 * d2 * d2)
+            + 5.0 * d[j] / (d5 * d2)
         )
         for i in range(3):
             gx[i, j] += k * (
@@ -280,10 +279,11 @@ def acceleration(tab, push, phys, active, pos, vel, x, v, acc):
 
 @njit(cache=True, error_model="numpy")
 def tides(tab, pos, x, first, gx, third):
-    """Newtonian gradient of the bodies from row ``first`` on (added to ``gx``) and their third derivative.
+    """Newtonian gradient of the bodies from row ``first`` on (added to ``gx``) and their third
+    derivative.
 
-    ``third`` (10,) receives T_xxx, xxy, xxz, xyy, xyz, xzz, yyy, yyz, yzz, zzz with acceleration to second
-    order T_ijk d_j d_k / 2. Returns the sum of GM/d^5, the scale of the next order.
+    ``third`` (10,) receives T_xxx, xxy, xxz, xyy, xyz, xzz, yyy, yyz, yzz, zzz with acceleration to
+    second order T_ijk d_j d_k / 2. Returns the sum of GM/d^5, the scale of the next order.
     """
     scale = 0.0
     for b in range(first, tab.gm.size):
@@ -322,8 +322,9 @@ def tides(tab, pos, x, first, gx, third):
 def other_partials(tab, push, phys, active, pos, vel, x, v, gx, gv, unit, unit_x, unit_v, extra):
     """Partials of everything but the point masses.
 
-    Relativity, quadrupoles and frame dragging are added to ``gx``, ``gv``, and so is radiation pressure;
-    the thrust goes to ``unit``, ``unit_x``, ``unit_v``, ``extra`` (rows 0, 1; row 2: radiation pressure for srp = 1).
+    Relativity, quadrupoles and frame dragging are added to ``gx``, ``gv``, and so is radiation
+    pressure; the thrust goes to ``unit``, ``unit_x``, ``unit_v``, ``extra`` (rows 0, 1; row 2:
+    radiation pressure for srp = 1).
     """
     h = np.empty(3)
     w = np.empty(3)

@@ -1,8 +1,9 @@
 """The shared grid: everything about a reference orbit that its neighbours and its partials need.
 
-A grid is a list of steps along a reference trajectory, each with the eight Radau nodes. At every node
-stand the gradient of the acceleration, the second-order tide of the planets and the thrust per unit of
-each component with its gradient. The variational equations are solved on it by collocation, all columns at once.
+A grid is a list of steps along a reference trajectory, each with the eight Radau nodes. At every
+node stand the gradient of the acceleration, the second-order tide of the planets and the thrust per
+unit of each component with its gradient. The variational equations are solved on it by collocation,
+all columns at once.
 """
 
 import math
@@ -33,7 +34,9 @@ ROW = 115
 
 
 @njit(cache=True, error_model="numpy")
-def tabulate(tab, push, phys, epoch_d, start, length, begin, power, n, forward, grid_tau, grid_h, out):
+def tabulate(
+    tab, push, phys, epoch_d, start, length, begin, power, n, forward, grid_tau, grid_h, out
+):
     """Fill ``out`` (steps, 8, ROW) along a reference trajectory."""
     every = phys.relativity == RELATIVITY_ALL
     nb = tab.gm.size
@@ -71,7 +74,20 @@ def tabulate(tab, push, phys, epoch_d, start, length, begin, power, n, forward, 
                 third[i] = 0.0
             scale = tides(tab, pos, state[:3], 1, gx, third)
             other_partials(
-                tab, push, phys, active, pos, vel, state[:3], state[3:], gx, gv, unit, unit_x, unit_v, extra
+                tab,
+                push,
+                phys,
+                active,
+                pos,
+                vel,
+                state[:3],
+                state[3:],
+                gx,
+                gv,
+                unit,
+                unit_x,
+                unit_v,
+                extra,
             )
             row = out[k, j]
             r2 = 0.0
@@ -106,13 +122,16 @@ def tabulate(tab, push, phys, epoch_d, start, length, begin, power, n, forward, 
                 row[SECOND_PUSH] = 0.0
             row[SECOND_RELATIVITY] = 30.0 * (tab.gm[0] / (phys.c_au_d * r2)) ** 2 / r
             if j == 0 and k > 0 and active != before and push.window_kind == WINDOW_DISTANCE:
-                # where the distance switches the thrust, a shifted path meets the switch at another time
+                # where the distance switches the thrust, a shifted path meets the switch at another
+                # time
                 speed = 0.0
                 for i in range(3):
                     h[i] = state[i] - pos[0, i]
                     w[i] = state[3 + i] - vel[0, i]
                     speed += h[i] * w[i] / math.sqrt(r2)
-                thrust_partials(push, tab.gm[0], active != before, h, w, unit, unit_x, unit_v, extra)
+                thrust_partials(
+                    push, tab.gm[0], active != before, h, w, unit, unit_x, unit_v, extra
+                )
                 sign = 1.0 if active else -1.0
                 for i in range(3):
                     for m in range(3):
@@ -124,17 +143,22 @@ def tabulate(tab, push, phys, epoch_d, start, length, begin, power, n, forward, 
 def apply_jump(row, amounts, columns):
     """Change of the velocity columns (6, p) where a distance window switches the thrust.
 
-    A path shifted by d meets the switch later by -(R . d) / r', and has the thrust that much longer or shorter.
+    A path shifted by d meets the switch later by -(R . d) / r', and has the thrust that much longer
+    or shorter.
     """
     r = math.sqrt(row[SUN] ** 2 + row[SUN + 1] ** 2 + row[SUN + 2] ** 2)
     for i in range(3):
         jump = (
-            amounts[0] * row[JUMP + i] + amounts[1] * row[JUMP + 3 + i] + amounts[2] * row[JUMP + 6 + i]
+            amounts[0] * row[JUMP + i]
+            + amounts[1] * row[JUMP + 3 + i]
+            + amounts[2] * row[JUMP + 6 + i]
         )
         if jump != 0.0:
             for c in range(columns.shape[1]):
                 along = (
-                    row[SUN] * columns[0, c] + row[SUN + 1] * columns[1, c] + row[SUN + 2] * columns[2, c]
+                    row[SUN] * columns[0, c]
+                    + row[SUN + 1] * columns[1, c]
+                    + row[SUN + 2] * columns[2, c]
                 ) / r
                 columns[3 + i, c] += jump * along
 
@@ -143,8 +167,9 @@ def apply_jump(row, amounts, columns):
 def variations(gm_sun, a_ref, columns, grid_h, nodes, begin, accel):
     """Solve the variational equations for the wanted parameters.
 
-    ``columns`` (p,): parameter numbers as in ``layout.PARAMETERS``. ``begin`` (steps + 1, 6, p) receives the
-    columns at the start of each step, ``accel`` (steps, 8, 3, p) their second derivatives at the nodes.
+    ``columns`` (p,): parameter numbers as in ``layout.PARAMETERS``. ``begin`` (steps + 1, 6, p)
+    receives the columns at the start of each step, ``accel`` (steps, 8, 3, p) their second
+    derivatives at the nodes.
     """
     p = columns.size
     for i in range(6):
@@ -251,7 +276,9 @@ def node_columns(grid_h, begin, accel, out):
 
 @njit(cache=True, error_model="numpy")
 def weights_at(s, wx, wv):
-    """Weights (8,) of the node accelerations for position and velocity at the fraction ``s`` of a step."""
+    """Weights (8,) of the node accelerations for position and velocity at the fraction ``s`` of a
+    step.
+    """
     for j in range(N_NODES):
         px = 0.0
         pv = 0.0

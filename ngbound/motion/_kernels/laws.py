@@ -1,9 +1,10 @@
-"""Thrust laws g(r), their slopes, the lag, and the radial/transverse/normal axes with their partials.
+"""Thrust laws g(r), their slopes, the lag, and the radial/transverse/normal axes with their
+partials.
 
-The form law is alpha (r/r0)^-m [1 + (r/r0)^n]^-k of B. G. Marsden, Z. Sekanina & D. K. Yeomans 1973, AJ 78, 211; a pure
-power law has k = 0. The lag takes g at t - DT (D. K. Yeomans & P. W. Chodas 1989, AJ 98, 1083), with the
-distance then from two-body motion in universal variables (R. H. Battin 1999, An Introduction to the
-Mathematics and Methods of Astrodynamics, ch. 4).
+The form law is alpha (r/r0)^-m [1 + (r/r0)^n]^-k of B. G. Marsden, Z. Sekanina & D. K. Yeomans
+1973, AJ 78, 211; a pure power law has k = 0. The lag takes g at t - DT (D. K. Yeomans & P. W.
+Chodas 1989, AJ 98, 1083), with the distance then from two-body motion in universal variables (R. H.
+Battin 1999, An Introduction to the Mathematics and Methods of Astrodynamics, ch. 4).
 """
 
 import math
@@ -184,7 +185,7 @@ def axes(x, v, e):
 
 @njit(cache=True, error_model="numpy")
 def add_thrust(push, gm_sun, active, x, v, acc):
-    """Add thrust (while ``active``) and radiation pressure (au/d2) at heliocentric x, v to ``acc``."""
+    """Add thrust (while ``active``) and radiation pressure at heliocentric x, v to ``acc``."""
     a1 = push.a[0]
     a2 = push.a[1]
     a3 = push.a[2]
@@ -214,8 +215,8 @@ def thrust_partials(push, gm_sun, active, x, v, unit, unit_x, unit_v, extra):
     """Thrust per unit A along R, T, N and its partials.
 
     ``unit`` (3, 3): g times the axis, row per component; ``unit_x``, ``unit_v`` (3, 3, 3): partials
-    [component, axis, with respect to]; ``extra`` (rows 0 and 1): partial of the thrust with the push's own
-    A with respect to the lag (per day) and to the law's exponent m.
+    [component, axis, with respect to]; ``extra`` (rows 0 and 1): partial of the thrust with the
+    push's own A with respect to the lag (per day) and to the law's exponent m.
     """
     e = np.empty((3, 3))
     r, h = axes(x, v, e)

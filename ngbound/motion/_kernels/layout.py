@@ -1,7 +1,8 @@
 """Layout of the arrays the kernels read, and the numbers of a kernel's status.
 
-``Perturbers`` mirrors ``ngbound.sky.ChebyshevTable``; ``Push`` holds a thrust law and its parameters;
-``Physics`` the switches of the force model. Times are days of TDB past J2000.0, lengths au.
+``Perturbers`` mirrors ``ngbound.sky.ChebyshevTable``; ``Push`` holds a thrust law and its
+parameters; ``Physics`` the switches of the force model. Times are days of TDB past J2000.0, lengths
+au.
 """
 
 from typing import NamedTuple
@@ -35,7 +36,7 @@ N_PARAMETERS = len(PARAMETERS)
 
 
 class Perturbers(NamedTuple):
-    """Chebyshev series of the Sun (row 0), the planets, the Moon and the asteroids, and their GM."""
+    """Chebyshev series of the Sun (row 0), planets, Moon and asteroids, and their GM."""
 
     coef: Floats
     offset: Ints
@@ -51,8 +52,9 @@ class Perturbers(NamedTuple):
 class Push(NamedTuple):
     """A thrust law with its amounts.
 
-    ``par`` of the form law: alpha, r0, m, n, k. ``table`` of a tabulated law: rows ln r, ln g and the slope
-    d ln g/d ln r at the knots (3, m). ``window`` is (kind, from, to) in days past J2000.0 or in au.
+    ``par`` of the form law: alpha, r0, m, n, k. ``table`` of a tabulated law: rows ln r, ln g and
+    the slope d ln g/d ln r at the knots (3, m). ``window`` is (kind, from, to) in days past J2000.0
+    or in au.
     """
 
     law: int
@@ -69,8 +71,9 @@ class Push(NamedTuple):
 class Physics(NamedTuple):
     """Switches of the force model.
 
-    ``sun_j2`` is J2 R^2 of the Sun in au^2 (0: off), ``sun_pole`` its rotation axis in ICRF, ``sun_spin`` the
-    solar angular momentum per mass in au^2/d times G M / GM (0: off), ``earth_j2`` J2 R^2 of the Earth in au^2.
+    ``sun_j2`` is J2 R^2 of the Sun in au^2 (0: off), ``sun_pole`` its rotation axis in ICRF,
+    ``sun_spin`` the solar angular momentum per mass in au^2/d times G M / GM (0: off), ``earth_j2``
+    J2 R^2 of the Earth in au^2.
     """
 
     relativity: int

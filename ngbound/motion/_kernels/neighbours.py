@@ -1,9 +1,10 @@
 """Many neighbours of one reference orbit, sixteen at a time, on the shared grid.
 
-Each lane integrates its offset from the reference (the method of J. F. Encke, Berliner Astron. Jahrbuch
-für 1857) by the same collocation: the Sun's attraction exactly, the planets' to second order in the
-offset, relativity and thrust to first order, thrust amounts exactly. A lane also sums what these orders leave
-out; the caller sends lanes where that is not small to the adaptive integrator.
+Each lane integrates its offset from the reference (the method of J. F. Encke, Berliner Astron.
+Jahrbuch für 1857) by the same collocation: the Sun's attraction exactly, the planets' to second
+order in the offset, relativity and thrust to first order, thrust amounts exactly. A lane also sums
+what these orders leave out; the caller sends lanes where that is not small to the adaptive
+integrator.
 """
 
 import math
@@ -11,7 +12,19 @@ import math
 import numpy as np
 from numba import njit
 
-from .grid import GV, GX, JUMP, SCALE, SECOND_PUSH, SECOND_RELATIVITY, SUN, THIRD, UNIT, UNIT_V, UNIT_X
+from .grid import (
+    GV,
+    GX,
+    JUMP,
+    SCALE,
+    SECOND_PUSH,
+    SECOND_RELATIVITY,
+    SUN,
+    THIRD,
+    UNIT,
+    UNIT_V,
+    UNIT_X,
+)
 from .radau import N_NODES, NODES, V_WEIGHTS, X_WEIGHTS
 
 LANES = 16
@@ -24,7 +37,8 @@ _FAST = {"contract", "nsz", "nnan", "ninf", "arcp"}
 def _offset_acceleration(gm_sun, row, d, w, da, amount, acc):
     """Second derivative of the offsets ``d`` (3, LANES) with their velocities ``w``.
 
-    ``da`` (3, LANES): thrust of the lane less that of the reference; ``amount``: thrust of the lane.
+    ``da`` (3, LANES): thrust of the lane less that of the reference; ``amount``: thrust of the
+    lane.
     """
     sx = row[SUN]
     sy = row[SUN + 1]
@@ -61,16 +75,28 @@ def _offset_acceleration(gm_sun, row, d, w, da, amount, acc):
         xz = x * z
         yz = y * z
         acc[0, lane] += (
-            row[t] * xx + row[t + 3] * yy + row[t + 5] * zz
-            + row[t + 1] * xy + row[t + 2] * xz + row[t + 4] * yz
+            row[t] * xx
+            + row[t + 3] * yy
+            + row[t + 5] * zz
+            + row[t + 1] * xy
+            + row[t + 2] * xz
+            + row[t + 4] * yz
         )
         acc[1, lane] += (
-            row[t + 1] * xx + row[t + 6] * yy + row[t + 8] * zz
-            + row[t + 3] * xy + row[t + 4] * xz + row[t + 7] * yz
+            row[t + 1] * xx
+            + row[t + 6] * yy
+            + row[t + 8] * zz
+            + row[t + 3] * xy
+            + row[t + 4] * xz
+            + row[t + 7] * yz
         )
         acc[2, lane] += (
-            row[t + 2] * xx + row[t + 7] * yy + row[t + 9] * zz
-            + row[t + 4] * xy + row[t + 5] * xz + row[t + 8] * yz
+            row[t + 2] * xx
+            + row[t + 7] * yy
+            + row[t + 9] * zz
+            + row[t + 4] * xy
+            + row[t + 5] * xz
+            + row[t + 8] * yz
         )
         for i in range(3):
             g = GX + 3 * i
@@ -78,36 +104,67 @@ def _offset_acceleration(gm_sun, row, d, w, da, amount, acc):
             p = UNIT_X + 3 * i
             q = UNIT_V + 3 * i
             acc[i, lane] += (
-                row[g] * x + row[g + 1] * y + row[g + 2] * z
-                + row[h] * u + row[h + 1] * v + row[h + 2] * s
+                row[g] * x
+                + row[g + 1] * y
+                + row[g + 2] * z
+                + row[h] * u
+                + row[h + 1] * v
+                + row[h + 2] * s
                 + da[0, lane] * row[UNIT + i]
                 + da[1, lane] * row[UNIT + 3 + i]
                 + da[2, lane] * row[UNIT + 6 + i]
-                + a1 * (
-                    row[p] * x + row[p + 1] * y + row[p + 2] * z
-                    + row[q] * u + row[q + 1] * v + row[q + 2] * s
+                + a1
+                * (
+                    row[p] * x
+                    + row[p + 1] * y
+                    + row[p + 2] * z
+                    + row[q] * u
+                    + row[q + 1] * v
+                    + row[q + 2] * s
                 )
-                + a2 * (
-                    row[p + 9] * x + row[p + 10] * y + row[p + 11] * z
-                    + row[q + 9] * u + row[q + 10] * v + row[q + 11] * s
+                + a2
+                * (
+                    row[p + 9] * x
+                    + row[p + 10] * y
+                    + row[p + 11] * z
+                    + row[q + 9] * u
+                    + row[q + 10] * v
+                    + row[q + 11] * s
                 )
-                + a3 * (
-                    row[p + 18] * x + row[p + 19] * y + row[p + 20] * z
-                    + row[q + 18] * u + row[q + 19] * v + row[q + 20] * s
+                + a3
+                * (
+                    row[p + 18] * x
+                    + row[p + 19] * y
+                    + row[p + 20] * z
+                    + row[q + 18] * u
+                    + row[q + 19] * v
+                    + row[q + 20] * s
                 )
             )
 
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
 def offsets_to_records(
-    gm_sun, a_ref, grid_h, nodes, columns, step_of, weight_x, fraction_h, first, last, theta, out, doubt
+    gm_sun,
+    a_ref,
+    grid_h,
+    nodes,
+    columns,
+    step_of,
+    weight_x,
+    fraction_h,
+    first,
+    last,
+    theta,
+    out,
+    doubt,
 ):
     """Offsets from the reference at the records of one direction of time, for one block of lanes.
 
     ``theta`` (p, LANES): parameter offsets (state, then thrust); ``columns`` (steps, 8, 6, p) the
-    linear solution at the nodes, used as the first guess. Records ``first`` to ``last`` of the sorted list lie in this
-    direction; ``out`` (records, 3, LANES) receives their offsets, ``doubt`` (2, LANES) the estimated error of
-    position (au) and the last change of a sweep (au).
+    linear solution at the nodes, used as the first guess. Records ``first`` to ``last`` of the
+    sorted list lie in this direction; ``out`` (records, 3, LANES) receives their offsets, ``doubt``
+    (2, LANES) the estimated error of position (au) and the last change of a sweep (au).
     """
     p = theta.shape[0]
     steps = grid_h.size
@@ -143,7 +200,9 @@ def offsets_to_records(
                         + amount[2, lane] * row[JUMP + 6 + i]
                     )
                     along = (
-                        row[SUN] * begin[0, lane] + row[SUN + 1] * begin[1, lane] + row[SUN + 2] * begin[2, lane]
+                        row[SUN] * begin[0, lane]
+                        + row[SUN + 1] * begin[1, lane]
+                        + row[SUN + 2] * begin[2, lane]
                     )
                     begin[3 + i, lane] += jump * along / r
         # first guess from the linear solution
@@ -222,11 +281,12 @@ def offsets_to_records(
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
 def sight_residuals(c_au_d, rho, speed, basis, offset, out):
-    """Observed minus computed direction of the lanes, radians in the tangent plane at the observed place.
+    """Observed minus computed direction of the lanes, radians in the tangent plane at the observed
+    place.
 
-    ``rho`` (n, 3) observer to object on the reference at its emission time, ``speed`` (n, 3) its velocity
-    then, ``basis`` (n, 3, 3) rows east, north and the observed direction, ``offset`` (n, 3, LANES);
-    ``out`` (n, 2, LANES).
+    ``rho`` (n, 3) observer to object on the reference at its emission time, ``speed`` (n, 3) its
+    velocity then, ``basis`` (n, 3, 3) rows east, north and the observed direction, ``offset`` (n,
+    3, LANES); ``out`` (n, 2, LANES).
     """
     for k in range(rho.shape[0]):
         x = rho[k, 0]
@@ -258,10 +318,11 @@ def sight_residuals(c_au_d, rho, speed, basis, offset, out):
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
 def whitened_chi2(order, start, flat, flat_start, modes, residual, chi2):
-    """chi2 (LANES,) of residuals (n, 2, LANES) whitened by lower-triangular factors, block by block.
+    """chi2 (LANES,) of residuals (n, 2, LANES) whitened by lower-triangular factors, block by
+    block.
 
-    ``modes`` (k, 2n), columns in the order of the blocks: what the errors shared across blocks take off,
-    |w|^2 - |modes w|^2.
+    ``modes`` (k, 2n), columns in the order of the blocks: what the errors shared across blocks take
+    off, |w|^2 - |modes w|^2.
     """
     for lane in range(LANES):
         chi2[lane] = 0.0
@@ -294,13 +355,27 @@ def whitened_chi2(order, start, flat, flat_start, modes, residual, chi2):
 
 @njit(cache=True, error_model="numpy", nogil=True)
 def batch(
-    gm_sun, c_au_d, a_ref, back, ahead, rho, speed, basis, whiten, n_back, theta, want_residuals, chi2, doubt,
+    gm_sun,
+    c_au_d,
+    a_ref,
+    back,
+    ahead,
+    rho,
+    speed,
+    basis,
+    whiten,
+    n_back,
+    theta,
+    want_residuals,
+    chi2,
+    doubt,
     residuals,
 ):
     """chi2 and doubt of many parameter offsets ``theta`` (m, p); m a multiple of LANES.
 
-    ``back`` and ``ahead``: (grid_h, nodes, columns, step_of, weight_x, fraction_h) of the two directions of time; the records
-    are sorted so that the first ``n_back`` lie before the epoch (latest first), the others after it.
+    ``back`` and ``ahead``: (grid_h, nodes, columns, step_of, weight_x, fraction_h) of the two
+    directions of time; the records are sorted so that the first ``n_back`` lie before the epoch
+    (latest first), the others after it.
     """
     n = rho.shape[0]
     n_none = n - rho.shape[0]  # a variable: a literal would compile the kernel twice
@@ -316,14 +391,39 @@ def batch(
                 lanes[c, lane] = theta[at + lane, c]
         unsure[:] = 0.0
         offsets_to_records(
-            gm_sun, a_ref, back[0], back[1], back[2], back[3], back[4], back[5], n_none, n_back, lanes, offset, unsure
+            gm_sun,
+            a_ref,
+            back[0],
+            back[1],
+            back[2],
+            back[3],
+            back[4],
+            back[5],
+            n_none,
+            n_back,
+            lanes,
+            offset,
+            unsure,
         )
         offsets_to_records(
-            gm_sun, a_ref, ahead[0], ahead[1], ahead[2], ahead[3], ahead[4], ahead[5], n_back, n, lanes, offset,
+            gm_sun,
+            a_ref,
+            ahead[0],
+            ahead[1],
+            ahead[2],
+            ahead[3],
+            ahead[4],
+            ahead[5],
+            n_back,
+            n,
+            lanes,
+            offset,
             unsure,
         )
         sight_residuals(c_au_d, rho, speed, basis, offset, residual)
-        whitened_chi2(whiten[0], whiten[1], whiten[2], whiten[3], whiten[4], residual, chi2[at : at + LANES])
+        whitened_chi2(
+            whiten[0], whiten[1], whiten[2], whiten[3], whiten[4], residual, chi2[at : at + LANES]
+        )
         for lane in range(LANES):
             doubt[at + lane, 0] = unsure[0, lane]
             doubt[at + lane, 1] = unsure[1, lane]

@@ -1,10 +1,11 @@
 """Adaptive Gauss-Radau collocation of order 15, with dense output.
 
-E. Everhart 1985, in Dynamics of Comets (Reidel), p. 185; step control and predictor after H. Rein & D. S.
-Spiegel 2015, MNRAS 446, 1424. The acceleration over a step is the polynomial of degree 7 through eight
-nodes (the start and seven Radau points); here its node values are iterated with integrated Lagrange weights
-instead of divided differences, which has the same fixed point. The state is summed with compensation
-(W. Kahan 1965, Commun. ACM 8, 40), time is counted from the epoch.
+E. Everhart 1985, in Dynamics of Comets (Reidel), p. 185; step control and predictor after H. Rein &
+D. S. Spiegel 2015, MNRAS 446, 1424. The acceleration over a step is the polynomial of degree 7
+through eight nodes (the start and seven Radau points); here its node values are iterated with
+integrated Lagrange weights instead of divided differences, which has the same fixed point. The
+state is summed with compensation (W. Kahan 1965, Commun. ACM 8, 40), time is counted from the
+epoch.
 """
 
 import math
@@ -24,7 +25,9 @@ STEP_CAP_D = 40.0
 EPS_FLOOR = 1e-11
 SAFETY = 0.9
 SMOOTH = 0.01
-"""Below this part of the local dynamical time the last coefficient of a step is rounding, and the step stands."""
+"""Below this part of the local dynamical time the last coefficient of a step is rounding, and the
+step stands.
+"""
 
 
 def node_positions() -> np.ndarray:
@@ -60,7 +63,9 @@ _POINTS = np.concatenate([NODES, [1.0]])
 V_WEIGHTS = np.ascontiguousarray(integrated(_POWERS, _POINTS, 1).astype(np.float64))
 X_WEIGHTS = np.ascontiguousarray(integrated(_POWERS, _POINTS, 2).astype(np.float64))
 TO_POWERS = np.ascontiguousarray(_POWERS.T.astype(np.float64))
-BINOMIAL = np.array([[math.comb(j, k) for j in range(N_NODES)] for k in range(N_NODES)], dtype=np.float64)
+BINOMIAL = np.array(
+    [[math.comb(j, k) for j in range(N_NODES)] for k in range(N_NODES)], dtype=np.float64
+)
 
 
 @njit(cache=True, error_model="numpy")
@@ -79,9 +84,9 @@ def local_time(gm, pos, x):
 def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_max):
     """Integrate a barycentric state from the epoch (tau = 0) to ``tau_end`` days.
 
-    Returns status, number of steps, and per step: start (tau, d), length (d, signed), start state (6),
-    and the power coefficients of the acceleration (8, 3); last, what was met when status is not OK
-    (body row, tau). ``breaks`` are tau at which a step must end.
+    Returns status, number of steps, and per step: start (tau, d), length (d, signed), start state
+    (6), and the power coefficients of the acceleration (8, 3); last, what was met when status is
+    not OK (body row, tau). ``breaks`` are tau at which a step must end.
     """
     start = np.empty(n_max + 1)
     length = np.empty(n_max)
@@ -144,8 +149,9 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_ma
         for j in range(N_NODES):
             for i in range(3):
                 node[j, i] = 0.0
-        # sweep 0 takes the start alone and predicts the rest: the last step's polynomial continued, plus what
-        # it missed by last time; then Gauss-Seidel sweeps over the nodes until nothing moves
+        # sweep 0 takes the start alone and predicts the rest: the last step's polynomial continued,
+        # plus what it missed by last time; then Gauss-Seidel sweeps over the nodes until nothing
+        # moves
         previous = 1e300
         converged = False
         for sweep in range(15):

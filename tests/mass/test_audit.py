@@ -1,0 +1,88 @@
+"""The front door of the audit: files, what it combines, what it refuses."""
+
+import json
+
+import pytest
+
+from ngbound.errors import CaseError
+from ngbound.mass import audit
+
+PAPER = """
+title = "an invented paper"
+
+[numbers]
+acceleration = "1.43e-8 au/d2"
+at = 1.3
+g_at_r = 0.6
+rate = "1.00e27 molecules/s"
+speed = "0.80 km/s"
+collimation = "0.50"
+mass = "{mass}"
+
+[threshold]
+value = "{value}"
+component = "N"
+sigma = 3
+
+[geometry]
+n_obs = 120
+nights = 40
+span_d = 180
+sigma_arcsec = 0.5
+r_au = [2.9, 2.1]
+delta_au = [1.3, 2.6]
+"""
+
+
+@pytest.fixture
+def paper(tmp_path):
+    def write(mass: str = "6.96e10 kg", value: str = "1e-8 au/d2"):
+        path = tmp_path / "paper.toml"
+        path.write_text(PAPER.format(mass=mass, value=value), encoding="utf-8")
+        return path
+
+    return write
+
+
+def test_a_sound_paper(paper):
+    found = audit(paper())
+    assert found.sound, str(found)
+    text = str(found)
+    assert text.startswith("an invented paper: sound") and "simulated arcs" in text
+    record = json.loads(json.dumps(found.to_dict(), allow_nan=False))
+    assert record["numbers"]["verdict"] == "sound"
+    assert record["geometry"]["verdict"] == "plausible" and record["threshold"] is None
+
+
+def test_each_part_can_spoil_it(paper):
+    wrong_mass = audit(paper(mass="6.96e13 kg"))
+    assert not wrong_mass.sound and "factor 1000" in " ".join(wrong_mass.slips)
+    wrong_threshold = audit(paper(value="1e-13 au/d2"))
+    assert not wrong_threshold.sound and wrong_threshold.numbers.verdict == "sound"
+
+
+@pytest.mark.parametrize(
+    ("text", "words"),
+    [
+        ("[numbers]\nmas = 1.0\n", "mas"),
+        ("[numberz]\n", "numberz"),
+        ("[threshold]\nvalue = 1e-9\ncomponent = 'X'\n", "threshold.component"),
+        ("[threshold]\nvalue = 1e-9\n[geometry]\nn_obs = 2\n", "geometry.n_obs"),
+        ("title = \n", "not valid TOML"),
+        ("", "must hold"),
+    ],
+)
+def test_wrong_files_are_told_in_a_sentence(tmp_path, text, words):
+    path = tmp_path / "wrong.toml"
+    path.write_text(text, encoding="utf-8")
+    with pytest.raises(CaseError, match=words):
+        audit(path)
+
+
+def test_binary_and_missing_files(tmp_path):
+    path = tmp_path / "binary.toml"
+    path.write_bytes(b"\xff\xfe\x00")
+    with pytest.raises(CaseError, match="not UTF-8"):
+        audit(path)
+    with pytest.raises(CaseError, match="cannot be read"):
+        audit(tmp_path)
