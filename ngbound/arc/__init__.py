@@ -23,6 +23,7 @@ from ngbound.arc.stations import (
     station,
     user_stations,
 )
+from ngbound.arc.survey import Gap, Range, Survey, survey
 from ngbound.arc.vetting import Finding, vet
 
 __all__ = [
@@ -33,10 +34,13 @@ __all__ = [
     "ErrorModel",
     "Factors",
     "Finding",
+    "Gap",
     "Modes",
     "Noise",
+    "Range",
     "SharedErrors",
     "Station",
+    "Survey",
     "all_stations",
     "geodetic_to_itrf_km",
     "catalogue_priors",
@@ -46,6 +50,7 @@ __all__ = [
     "seasons",
     "station",
     "station_nights",
+    "survey",
     "user_stations",
     "vet",
     "weight_table",

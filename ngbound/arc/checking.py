@@ -308,9 +308,7 @@ class Checker:
             judged = _judge_numbers(rule, pack(coded.values), self.strict)
             judged = Judged(*(facts[coded.codes] for facts in judged))
         value, form_ok, range_ok, self.places[column] = judged
-        self.refuse(
-            filled & ~form_ok, column, _lexical(rule, self.strict), "Correct the value."
-        )
+        self.refuse(filled & ~form_ok, column, _lexical(rule, self.strict), "Correct the value.")
         self.refuse(filled & ~range_ok, column, rule.words, _range_remedy(column))
         return value
 

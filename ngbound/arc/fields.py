@@ -65,9 +65,7 @@ def pack(texts: NDArray[np.object_]) -> Packed:
         packed = packed.astype("S1")
     width = packed.dtype.itemsize
     matrix = packed.view(np.uint8).reshape(len(packed), width)
-    return Packed(
-        np.ascontiguousarray(matrix.T), np.char.str_len(packed).astype(np.int64)
-    )
+    return Packed(np.ascontiguousarray(matrix.T), np.char.str_len(packed).astype(np.int64))
 
 
 def is_digit(matrix: NDArray[np.uint8]) -> BoolArray:
@@ -243,9 +241,7 @@ def parse_times(texts: NDArray[np.object_] | Packed) -> Times:
     has_fraction = length > 20
     ok &= ~has_fraction | ((turned[19] == 46) & (length > 21))
     places = np.where(has_fraction & ok, length - 21, 0)
-    fraction = np.where(
-        has_fraction & ok, figures / _POWERS[np.clip(places, 0, EXACT_DIGITS)], 0.0
-    )
+    fraction = np.where(has_fraction & ok, figures / _POWERS[np.clip(places, 0, EXACT_DIGITS)], 0.0)
 
     def number(*at: int) -> IntArray:
         value = np.zeros(n, dtype=np.int64)

@@ -18,7 +18,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ngbound.arc.ades_rules import OFFSET, OPTICAL, RADAR
-from ngbound.arc.designations import unpack_columns
+from ngbound.arc.designations import to_base62, unpack_columns
 from ngbound.arc.fields import civil_day, format_times, plain_number
 from ngbound.arc.records import Angles, ObjectArray, Records
 from ngbound.errors import ArcError
@@ -52,8 +52,8 @@ Lower-case s, v, r are second lines."""
 SECOND_LINE = {"S": "s", "V": "v", "R": "r"}
 REASON_SUPERSEDED = "a discovery observation that a later measurement supersedes (type X)"
 PROGRAM_CODES = "0123456789!\"#$%&'()*+,-./[\\]^_`{|}~"
-"""Programme codes of column 14 in the order of their two-digit ADES form (0 -> 00, & -> 15); from
-memory."""
+"""Programme codes of column 14 that are no letters, in the order of the MPC's list; ADES numbers
+them in that order with two base-62 digits (0 -> 00, & -> 0F). A letter is taken as a note."""
 HEADER_KEYS = ("COD", "CON", "OBS", "MEA", "TEL", "NET", "ACK", "AC2", "COM", "BND", "NUM", "STD")
 """Keys of the header lines that observers put above 80-column records."""
 MAX_PRECISE_DAY_DIGITS = 8
@@ -270,7 +270,7 @@ class _Reader:
         notes = self.column(14, 14)
         text["notes"] = np.array([c if c.isalpha() else "" for c in notes], dtype=object)
         text["prog"] = np.array(
-            [f"{PROGRAM_CODES.index(c):02d}" if c in PROGRAM_CODES else "" for c in notes],
+            [to_base62(PROGRAM_CODES.index(c), 2) if c in PROGRAM_CODES else "" for c in notes],
             dtype=object,
         )
         text["band"] = np.array([c.strip() for c in self.column(71, 71)], dtype=object)

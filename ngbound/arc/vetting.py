@@ -10,7 +10,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ngbound.arc.errors_model import station_nights
+from ngbound.arc.misplaced import misread, second_tracks
 from ngbound.arc.observations import Arc
+from ngbound.arc.time_stamps import time_shifts
 
 SAME_INSTANT_S = 2.0
 """Two records of one station closer than this are one observation, or a repeated one."""
@@ -21,6 +23,13 @@ JUMP_DEG_D = 10.0
 neighbours."""
 JUMP_SLACK_ARCSEC = 15.0
 FEWEST = 3
+MOST_AT_ONCE = 20
+"""Records of one station at one instant that are compared with each other."""
+READINGS = {
+    "ra-in-hours": "its right ascension, taken as hours, fits",
+    "ra-in-degrees": "its right ascension, divided by 15, fits",
+    "declination-sign": "its declination with the other sign fits",
+}
 
 
 @dataclass(frozen=True)
@@ -42,8 +51,9 @@ class Finding:
 def vet(arc: Arc) -> list[Finding]:
     """Findings about the usable observations of an arc, in the order of their rows.
 
-    Kinds: "exact-duplicate", "near-duplicate", "impossible-rate", "few-observations",
-    "single-station", "surplus-position".
+    Kinds: "exact-duplicate", "near-duplicate", "impossible-rate", "ra-in-hours", "ra-in-degrees",
+    "declination-sign", "second-object", "time-stamps", "few-observations", "single-station",
+    "surplus-position".
     """
     table = arc.table
     rows = np.flatnonzero(table["use"].to_numpy(dtype=bool))
@@ -64,6 +74,8 @@ def vet(arc: Arc) -> list[Finding]:
     time = t["utc_day"].to_numpy() + t["utc_sec"].to_numpy() / 86400.0
     findings.extend(_duplicates(used, rows, time))
     findings.extend(_jumps(used, rows, time))
+    findings.extend(_misread(used, rows, time))
+    findings.extend(_time_stamps(used, rows))
     codes = sorted(set(t["stn"]))
     if len(codes) == 1 and len(rows) >= FEWEST:
         findings.append(
@@ -106,7 +118,7 @@ def _duplicates(arc: Arc, rows: NDArray[np.int64], time: NDArray[np.float64]) ->
     order = np.lexsort((time, stn.astype(str)))
     found = []
     for i, a in enumerate(order):
-        for b in order[i + 1 :]:
+        for b in order[i + 1 : i + 1 + MOST_AT_ONCE]:
             gap = (time[b] - time[a]) * 86400.0
             if stn[a] != stn[b] or gap > SAME_INSTANT_S:
                 break
@@ -136,6 +148,55 @@ def _duplicates(arc: Arc, rows: NDArray[np.int64], time: NDArray[np.float64]) ->
                         "the thrust's error comes out too small.",
                     )
                 )
+    return found
+
+
+def _misread(arc: Arc, rows: NDArray[np.int64], time: NDArray[np.float64]) -> list[Finding]:
+    ra, dec = _sky(arc)
+    line = arc.table["line"].to_numpy()
+    found = []
+    for piece in misread(time, ra, dec):
+        where = ", ".join(str(n) for n in line[list(piece.rows)][:10])
+        found.append(
+            Finding(
+                tuple(int(r) for r in rows[list(piece.rows)]),
+                piece.reading,
+                f"line {where}: the position lies {piece.off_deg:.1f} deg from where its "
+                f"neighbours lead, and {READINGS[piece.reading]}. As it stands it is rejected or "
+                "spoils the orbit; put right it lengthens the arc, on which a thrust's error "
+                "depends most.",
+            )
+        )
+    for track in second_tracks(time, ra, dec):
+        where = ", ".join(str(n) for n in line[track][:10])
+        found.append(
+            Finding(
+                tuple(sorted(int(r) for r in rows[track])),
+                "second-object",
+                f"lines {where} follow a track of their own in that night, "
+                "as a second object would: an orbit through both is no orbit, and a thrust from it "
+                "means nothing. Take the lines out or choose the object.",
+            )
+        )
+    return found
+
+
+def _time_stamps(arc: Arc, rows: NDArray[np.int64]) -> list[Finding]:
+    found = []
+    for shift in time_shifts(arc):
+        early = "early" if shift.fraction > 0.0 else "late"
+        place = "the start" if shift.fraction > 0.0 else "the end"
+        found.append(
+            Finding(
+                tuple(int(r) for r in rows[list(shift.rows)]),
+                "time-stamps",
+                f"the instants of station {shift.station} look {early} by "
+                f"{abs(shift.fraction):.2f} +- {shift.sigma:.2f} of the exposure, as if they stood "
+                f"at {place} of it (0.5) or a whole exposure off (1): a shift of "
+                f"{shift.shift_arcsec:.2f} arcsec along the track, which a fit takes for a "
+                "transverse thrust when the station covers one end of the arc.",
+            )
+        )
     return found
 
 

@@ -179,7 +179,8 @@ class Variation:
 
     def __str__(self) -> str:
         lines = []
-        for row in self.table.to_dict("records"):
+        for record in self.table.to_dict("records"):
+            row = {str(key): value for key, value in record.items()}
             parts = [
                 f"{name} {row[name]:+.2e} +- {row[name + '_sigma']:.1e}"
                 for name in row

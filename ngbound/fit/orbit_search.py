@@ -80,7 +80,9 @@ def settle(
     ``loose`` multiplies the bars of rejection and recovery.
     """
     seen_before: list[bytes] = []
-    for turn in range(1, MAX_ROUNDS + 1):
+    rounds = 0
+    while rounds < MAX_ROUNDS:
+        rounds += 1
         correction = differential_correction(
             theta, epoch_d, records, noise, keep, thrust, components, forces
         )
@@ -99,7 +101,7 @@ def settle(
         seen_before.append(keep.tobytes())
         keep = new
     return Converged(
-        epoch_d, correction, keep, turn, thrust_of(theta, thrust, components), components
+        epoch_d, correction, keep, rounds, thrust_of(theta, thrust, components), components
     )
 
 

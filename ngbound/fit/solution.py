@@ -19,8 +19,8 @@ from ngbound.arc import Arc, ErrorModel, Noise
 from ngbound.constants import ARCSEC_RAD
 from ngbound.errors import FitError
 from ngbound.fit.least_squares import Correction, parameter_names, thrust_of
-from ngbound.fit.orbit_search import Converged, at_epoch, find_orbit, middle_epoch, settle
 from ngbound.fit.noise_scale import StationScale, rescaled
+from ngbound.fit.orbit_search import Converged, at_epoch, find_orbit, middle_epoch, settle
 from ngbound.fit.outliers import residual_chi2
 from ngbound.fit.residuals import motion_rad_d, residual_table, sunward_per_au
 from ngbound.fit.shared_estimates import JointSolution, freed, shared_table, solve_jointly
@@ -411,7 +411,8 @@ def _settle_with_scales(
     """
     stations = used.table["stn"].to_numpy(dtype=object)
     allowed = error_model.rescalable(table_noise)
-    noise, scales = table_noise, ()
+    noise = table_noise
+    scales: tuple[StationScale, ...] = ()
     loose = 1.0
     for turn in range(3):
         found = settle(
@@ -520,7 +521,8 @@ class Comparison:
         favoured = "thrust" if self.delta_bic > 0 else "gravity alone"
         return (
             f"Thrust lowers chi2 by {self.delta_chi2:.2f} for {self.delta_dof} parameters "
-            f"(p = {self.p_value:.3g}); the BIC favours {favoured} by {abs(self.delta_bic):.1f}, over {self.n_obs} observations."
+            f"(p = {self.p_value:.3g}); the BIC favours {favoured} by "
+            f"{abs(self.delta_bic):.1f}, over {self.n_obs} observations."
         )
 
 

@@ -16,10 +16,7 @@ is 50 autocorrelation times long in every quantity, split R-hat is below 1.01 an
 samples asked for are there; or until ``max_steps``, and then says so.
 """
 
-import hashlib
-import json
 import os
-import zipfile
 from collections.abc import Callable
 from dataclasses import dataclass, replace
 from pathlib import Path
@@ -31,9 +28,11 @@ import pandas as pd
 from astropy import units as u
 
 from ngbound.errors import LimitError, SamplingError
+from ngbound.limits.checkpoint import load_whole, mark_of, save_whole
 from ngbound.limits.convergence import autocorrelation_time, split_r_hat
 from ngbound.limits.fit_protocol import ThrustFit
 from ngbound.limits.information import AU_D2, ThrustInformation, thrust_information
+from ngbound.limits.likelihood import deviance_of
 from ngbound.limits.linear_posterior import LinearPosterior, linear_posterior, log_sum_exp
 from ngbound.limits.priors import ThrustPrior, thrust_prior
 
@@ -49,7 +48,6 @@ BURN_SHARE = 0.1
 INFLATIONS = (1.0, 1.5)
 INFLATION_SHARES = (0.8, 0.2)
 CHUNK_STEPS = 200
-CHECKPOINT_FORMAT = 1
 
 Progress = Callable[[int, int, str], None]
 
@@ -97,6 +95,8 @@ class Posterior:
     message : str
         One sentence on convergence.
     seed : int
+    likelihood : str
+        "gaussian", "student" or "contaminated".
     """
 
     names: tuple[str, ...]
@@ -119,6 +119,7 @@ class Posterior:
     converged: bool
     message: str
     seed: int
+    likelihood: str = "gaussian"
 
     @property
     def A(self) -> u.Quantity:
@@ -185,6 +186,7 @@ class Posterior:
         return {
             "prior": self.prior.to_dict(),
             "components": self.components,
+            "likelihood": self.likelihood,
             "seed": self.seed,
             "n_steps": self.n_steps,
             "n_walkers": self.n_walkers,
@@ -230,14 +232,50 @@ class Posterior:
             return arviz.from_dict({"posterior": by_walker, "sample_stats": stats})
         return arviz.from_dict(posterior=by_walker, sample_stats=stats)
 
+    def to_netcdf(self, path: str | Path) -> Path:
+        """Write the samples as netCDF, as ArviZ stores them; the file is never seen half-written.
+
+        Raises
+        ------
+        SamplingError
+            If ArviZ, or a package that writes netCDF for it, is not installed.
+        """
+        target = Path(path)
+        groups = self.to_arviz()
+        beside = target.with_name(f".{target.name}.part")
+        try:
+            groups.to_netcdf(str(beside))
+            os.replace(beside, target)
+        except (ImportError, ValueError) as fault:
+            raise SamplingError(
+                f"The samples cannot be written as netCDF ({fault}); install a writer with pip "
+                "install h5netcdf.",
+                path=str(target),
+            ) from fault
+        finally:
+            beside.unlink(missing_ok=True)
+        return target
+
 
 class _Target:
     """Likelihood in the coordinates u in which the prior is flat."""
 
     def __init__(
-        self, fit: ThrustFit, information: ThrustInformation, prior: ThrustPrior, noise_free: bool
+        self,
+        fit: ThrustFit,
+        information: ThrustInformation,
+        prior: ThrustPrior,
+        noise_free: bool,
+        likelihood: str = "gaussian",
     ) -> None:
         self.fit, self.information, self.prior = fit, information, prior
+        self.likelihood, self.deviance = likelihood, deviance_of(fit, likelihood)
+        if noise_free and likelihood != "gaussian":
+            raise LimitError(
+                f"A free noise scale needs the gaussian likelihood; {likelihood} has its own tails. "
+                "Hold the noise scale, or take the gaussian likelihood.",
+                likelihood=likelihood,
+            )
         self.k = information.k
         self.p = len(fit.names)
         self.thrust = np.arange(fit.n_state, fit.n_state + self.k)
@@ -246,7 +284,7 @@ class _Target:
         self.n_residuals = int(fit.dof) + self.p
         self.noise_free = noise_free
         self.evaluations = 1
-        self.chi2_hat = float(np.asarray(fit.chi2_many(self.theta_hat[None, :]))[0])
+        self.chi2_hat = float(np.asarray(self.deviance(self.theta_hat[None, :]))[0])
         if not np.isfinite(self.chi2_hat) or (noise_free and self.chi2_hat <= 0.0):
             raise SamplingError(
                 f"The exact model gives chi2 = {self.chi2_hat!r} at the least-squares solution "
@@ -283,7 +321,7 @@ class _Target:
         inside = self.prior.inside(A)
         value = np.full(len(coords), -np.inf)
         if np.any(inside):
-            chi2 = np.asarray(self.fit.chi2_many(self.theta(coords[inside])), dtype=float)
+            chi2 = np.asarray(self.deviance(self.theta(coords[inside])), dtype=float)
             self.evaluations += len(chi2)
             # an orbit that cannot be computed explains nothing
             chi2 = np.where(np.isfinite(chi2), chi2, np.inf)
@@ -375,6 +413,7 @@ def sample_posterior(
     n_walkers: int | None = None,
     max_steps: int = 5000,
     noise_scale: bool = False,
+    likelihood: str = "gaussian",
     target_ess: float = 5000.0,
     lower_au_d2: float | None = None,
     upper_au_d2: float | None = None,
@@ -400,6 +439,8 @@ def sample_posterior(
     noise_scale : bool
         Leave a common factor on the noise free, with prior ds / s; it is integrated out
         analytically.
+    likelihood : str
+        "gaussian", "student" or "contaminated"; see `ngbound.limits.likelihood`.
     target_ess : float
         Effective samples wanted of each thrust component and of |A|.
     lower_au_d2, upper_au_d2 : float, optional
@@ -419,7 +460,7 @@ def sample_posterior(
     """
     information = thrust_information(fit)
     belief = thrust_prior(information, prior, lower_au_d2=lower_au_d2, upper_au_d2=upper_au_d2)
-    target = _Target(fit, information, belief, noise_scale)
+    target = _Target(fit, information, belief, noise_scale, likelihood)
     walkers = max(64, 4 * target.p) if n_walkers is None else n_walkers
     if walkers % 2 or walkers < 2 * target.p:
         raise LimitError(
@@ -655,81 +696,61 @@ def _posterior(
         converged=converged,
         message=message,
         seed=seed,
+        likelihood=target.likelihood,
     )
 
 
 def _fingerprint(target: _Target, seed: int, walkers: int) -> str:
-    digest = hashlib.sha256()
-    for array in (target.theta_hat, np.asarray(target.fit.normal, dtype=float)):
-        digest.update(np.ascontiguousarray(array).tobytes())
-    facts = [
-        target.chi2_hat,
-        target.n_residuals,
-        target.prior.to_dict(),
-        target.noise_free,
-        seed,
-        walkers,
-    ]
-    digest.update(json.dumps([CHECKPOINT_FORMAT, *facts]).encode())
-    return digest.hexdigest()
+    return mark_of(
+        [target.theta_hat, target.fit.normal],
+        [
+            target.chi2_hat,
+            target.n_residuals,
+            target.prior.to_dict(),
+            target.noise_free,
+            target.likelihood,
+            seed,
+            walkers,
+        ],
+    )
+
+
+_STORED = ("chain", "log_prob", "counts", "share", "goal", "key", "position", "cached")
 
 
 def _save(path: Path, run: _Run, mark: str) -> None:
-    """Write the chain beside its place, then move it there in one step."""
-    name, key, pos, has_gauss, cached = run.random_state
-    beside = path.with_name(path.name + ".part")
-    with open(beside, "wb") as stream:
-        np.savez(
-            stream,
-            mark=np.array(mark),
-            chain=run.chain,
-            log_prob=run.log_prob,
-            counts=np.array([run.moved, run.pilot_moved, run.evaluations], dtype=np.int64),
-            share=np.array(run.share),
-            goal=np.array(run.goal),
-            key=key,
-            position=np.array([pos, has_gauss], dtype=np.int64),
-            cached=np.array(cached),
-        )
-        stream.flush()
-        os.fsync(stream.fileno())
-    os.replace(beside, path)
+    _, key, pos, has_gauss, cached = run.random_state
+    counts = np.array([run.moved, run.pilot_moved, run.evaluations], dtype=np.int64)
+    arrays = {
+        "chain": run.chain,
+        "log_prob": run.log_prob,
+        "counts": counts,
+        "share": np.array(run.share),
+        "goal": np.array(run.goal),
+        "key": key,
+        "position": np.array([pos, has_gauss], dtype=np.int64),
+        "cached": np.array(cached),
+    }
+    save_whole(path, mark, arrays)
 
 
 def _load(path: Path, mark: str) -> _Run:
-    remedy = "Remove that file, or name another one for this run."
-    try:
-        with np.load(path, allow_pickle=False) as stored:
-            data = {name: stored[name] for name in stored.files}
-        found = str(data["mark"])
-        run = _Run(
-            chain=data["chain"],
-            log_prob=data["log_prob"],
-            moved=int(data["counts"][0]),
-            pilot_moved=int(data["counts"][1]),
-            evaluations=int(data["counts"][2]),
-            share=float(data["share"]),
-            goal=int(data["goal"]),
-            random_state=(
-                "MT19937",
-                data["key"],
-                int(data["position"][0]),
-                int(data["position"][1]),
-                float(data["cached"]),
-            ),
-            start=data["chain"][0],
-            start_log_prob=data["log_prob"][0],
-        )
-    except (OSError, ValueError, KeyError, EOFError, zipfile.BadZipFile) as fault:
-        raise SamplingError(
-            f"The checkpoint {path} cannot be read as a chain of ngbound ({fault}). {remedy}",
-            path=str(path),
-        ) from fault
-    if found != mark:
-        raise SamplingError(
-            f"The checkpoint {path} belongs to another problem: the fit, the prior, the seed or "
-            "the number of walkers "
-            f"differ. {remedy}",
-            path=str(path),
-        )
-    return run
+    data = load_whole(path, mark, "a chain", _STORED)
+    return _Run(
+        chain=data["chain"],
+        log_prob=data["log_prob"],
+        moved=int(data["counts"][0]),
+        pilot_moved=int(data["counts"][1]),
+        evaluations=int(data["counts"][2]),
+        share=float(data["share"]),
+        goal=int(data["goal"]),
+        random_state=(
+            "MT19937",
+            data["key"],
+            int(data["position"][0]),
+            int(data["position"][1]),
+            float(data["cached"]),
+        ),
+        start=data["chain"][0],
+        start_log_prob=data["log_prob"][0],
+    )

@@ -21,7 +21,7 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.spatial.transform import Rotation
 
-from ngbound.constants import ARCSEC_RAD, GM_SUN_AU3_D2
+from ngbound.constants import ARCSEC_RAD, C_AU_D, GM_SUN_AU3_D2
 from ngbound.limits import ThrustInformation, thrust_information
 from ngbound.motion import (
     ForceModel,
@@ -29,11 +29,11 @@ from ngbound.motion import (
     Records,
     Thrust,
     design_matrix,
-    predict_for,
+    partials_along,
     propagate_two_body,
     see,
 )
-from ngbound.sky import load_ephemeris
+from ngbound.sky import direction_to_angles, load_ephemeris
 
 from .distributions import number_text
 from .quoted import Geometry, QuotedThreshold, read_table, size_au_d2
@@ -123,7 +123,7 @@ class GeometryAudit:
             f"arc of this outline: {self.verdict}.\n"
             f"  {self.n_simulated} simulated arcs: {low} to {high} au/d2, median "
             f"{number_text(self.median_au_d2, 2)}\n"
-            f"  sagitta law, thrust across a straight sightline of known length: {below} to {above} "
+            f"  sagitta law, thrust across a straight, known sightline: {below} to {above} "
             "au/d2"
         )
         if self.slips:
@@ -285,14 +285,13 @@ def arc_information(
     orbit = Orbit(FIRST_D + middle, state, thrust, ForceModel(asteroids=False))
     times = FIRST_D + np.linspace(0.0, outline.span_d, nights)
     geocentre = ephemeris.position_au("earth", times)
-    seen = predict_for(orbit, times, geocentre)
-    records = Records.from_angles(
-        times, geocentre, np.radians(seen["ra_deg"]), np.radians(seen["dec_deg"])
-    )
-    reach = 1.0 + float(seen["range_au"].max()) / 100.0
-    track = orbit.track(float(times[0]) - reach, float(times[-1]))
-    partials = orbit.partials(float(times[0]) - reach, float(times[-1]), PARAMETERS)
-    design = design_matrix(see(track, records), records, partials).reshape(-1, 9)
+    # light from twice the largest distance of the arc arrives within this time
+    late = 1.0 + (2.0 + 2.0 * max(outline.r_au)) / C_AU_D
+    track = orbit.track(float(times[0]) - late, float(times[-1]))
+    nowhere = np.zeros(nights)
+    sight = see(track, Records.from_angles(times, geocentre, nowhere, nowhere))
+    records = Records.from_angles(times, geocentre, *direction_to_angles(sight.rho_au))
+    design = design_matrix(sight, records, partials_along(track, PARAMETERS)).reshape(-1, 9)
     sigma = outline.sigma_arcsec * ARCSEC_RAD * math.sqrt(nights / outline.n_obs)
     white = design / sigma
     return thrust_information(LinearArc(white.T @ white, outline.n_obs))

@@ -78,26 +78,39 @@ class Range:
 
 
 EXPONENTS = Range(
-    1.0, 6.0, 0.0, 25.0,
+    1.0,
+    6.0,
+    0.0,
+    25.0,
     "slopes of production rates with distance, mean near 2.7: M. F. A'Hearn et al. 1995, Icarus "
     "118, 223; the water law of B. G. Marsden et al. 1973 steepens from 2.15 to above 20",
     "from memory",
-)  # fmt: skip
+)
 ONSETS_AU = Range(
-    1.0, 25.0, 0.3, 40.0,
+    1.0,
+    25.0,
+    0.3,
+    40.0,
     "water ice from about 3 au inwards (B. G. Marsden et al. 1973, r0 = 2.808 au); activity seen "
     "out to 24 au (D. Jewitt et al. 2017, ApJ 847, L19)",
     "from memory",
-)  # fmt: skip
+)
 PRODUCTION_FACTORS = Range(
-    1 / 3, 3.0, 0.1, 10.0,
+    1 / 3,
+    3.0,
+    0.1,
+    10.0,
     "asymmetry of production about perihelion: M. F. A'Hearn et al. 1995, Icarus 118, 223",
     "from memory",
-)  # fmt: skip
+)
 COLLIMATIONS = Range(
-    0.2 / 0.7, 0.7 / 0.2, 0.1, 10.0,
-    f"ratio of two values between 0.2 and 0.7: {DEFAULT_COLLIMATION_SOURCE}", "from memory",
-)  # fmt: skip
+    0.2 / 0.7,
+    0.7 / 0.2,
+    0.1,
+    10.0,
+    f"ratio of two values between 0.2 and 0.7: {DEFAULT_COLLIMATION_SOURCE}",
+    "from memory",
+)
 DENSITIES = Range(200.0, 800.0, 50.0, 3500.0, DEFAULT_DENSITY_SOURCE, "read in abstracts")
 DUST_TO_GAS = (0.0, 6.0)
 """Dust-to-gas mass ratio where no dust was measured: 4 +- 2 for 67P (A. Rotundi et al. 2015,
@@ -237,9 +250,16 @@ def law(pair: Pair) -> Explanation:
     if told:
         sentence += f", and so would {', '.join(told)}"
     return Explanation(
-        "law", title, verdict, f"{sentence}; {EXPONENTS}", needed, best, pair.dof,
-        pair.probability(best), EXPONENTS,
-    )  # fmt: skip
+        "law",
+        title,
+        verdict,
+        f"{sentence}; {EXPONENTS}",
+        needed,
+        best,
+        pair.dof,
+        pair.probability(best),
+        EXPONENTS,
+    )
 
 
 def onset_distance(pair: Pair) -> Explanation:
@@ -271,9 +291,16 @@ def onset_distance(pair: Pair) -> Explanation:
             sentence += ": both arcs lie at the same distance"
     best = float(values.min()) if values.size else pair.chi2()
     return Explanation(
-        "onset-distance", title, verdict, f"{sentence}; {ONSETS_AU}", needed, best, pair.dof,
-        pair.probability(best), ONSETS_AU,
-    )  # fmt: skip
+        "onset-distance",
+        title,
+        verdict,
+        f"{sentence}; {ONSETS_AU}",
+        needed,
+        best,
+        pair.dof,
+        pair.probability(best),
+        ONSETS_AU,
+    )
 
 
 def _measured_beyond(budget: Outgassing | None, onsets_au: Floats) -> float | None:
@@ -306,9 +333,15 @@ def date(pair: Pair) -> Explanation:
     if not good.size:
         sentence = f"no date at which the thrust {what} makes one thrust fit both"
         return Explanation(
-            "date", title, EXCLUDED, sentence, {"dates": None}, best, pair.dof,
+            "date",
+            title,
+            EXCLUDED,
+            sentence,
+            {"dates": None},
+            best,
+            pair.dof,
             pair.probability(best),
-        )  # fmt: skip
+        )
     ends = [str(tdb_d_to_iso(float(d)))[:10] for d in (good.min(), good.max())]
     sentence = f"a thrust that {what} between {ends[0]} and {ends[1]} would fit both"
     verdict = POSSIBLE
@@ -379,9 +412,7 @@ def rotated(pair: Pair) -> Explanation:
 
     sizes = centre * np.geomspace(0.03, 3.0, 61)
     values = np.array([at(float(size))[0] for size in sizes])
-    sizes = np.concatenate(
-        [sizes, sizes[np.argmin(values)] * np.geomspace(0.93, 1.07, 29)]
-    )
+    sizes = np.concatenate([sizes, sizes[np.argmin(values)] * np.geomspace(0.93, 1.07, 29)])
     values = np.array([at(float(size))[0] for size in sizes])
     best = int(np.argmin(values))
     low, points = at(float(sizes[best]))
@@ -455,9 +486,15 @@ def space_fixed(pair: Pair) -> Explanation:
         f"probability {chance_text(probability)}"
     )
     return Explanation(
-        "space-fixed", title, verdict, sentence,
-        {"size_au_d2": size, "ra_deg": ra, "dec_deg": dec}, value, pair.dof, probability,
-    )  # fmt: skip
+        "space-fixed",
+        title,
+        verdict,
+        sentence,
+        {"size_au_d2": size, "ra_deg": ra, "dec_deg": dec},
+        value,
+        pair.dof,
+        probability,
+    )
 
 
 def amplitude_ratios(pair: Pair) -> tuple[Floats, float, float]:
@@ -484,34 +521,49 @@ def _loss_per_impulse(result: ThrustResult, rng: np.random.Generator) -> tuple[F
     return ratio * (1.0 + dust), "default speed and collimation, and 0 to 6 times as much dust"
 
 
-def mass_change(
-    pair: Pair, ratios: Floats, best: float, value: float
-) -> Explanation:
+def mass_change(pair: Pair, ratios: Floats, best: float, value: float) -> Explanation:
     """A change of mass between the two epochs at the same force."""
     title = "a change of mass"
     probability = pair.probability(value)
     base: dict[str, Any] = {"best_ratio": best}
     if not ratios.size:
         return Explanation(
-            "mass", title, EXCLUDED,
-            "no ratio of the two thrusts, direction kept, fits both", base, value, pair.dof,
+            "mass",
+            title,
+            EXCLUDED,
+            "no ratio of the two thrusts, direction kept, fits both",
+            base,
+            value,
+            pair.dof,
             probability,
-        )  # fmt: skip
+        )
     top = float(ratios.max())
     base["thrust_ratio"] = [float(ratios.min()), top]
     if pair.quiet_is_earlier is False:
         return Explanation(
-            "mass", title, EXCLUDED,
+            "mass",
+            title,
+            EXCLUDED,
             f"the thrust fell to {_interval(ratios)} of what it was, so the mass would have had to "
-            "grow", base, value, pair.dof, probability,
-        )  # fmt: skip
+            "grow",
+            base,
+            value,
+            pair.dof,
+            probability,
+        )
     loss = max(1.0 - top, 0.0)
     lost = f"the object would have had to lose at least {100 * loss:.0f} % of its mass"
     if pair.quiet_is_earlier is None:
         return Explanation(
-            "mass", title, UNTESTABLE, f"{lost}; without dates the loss cannot be counted", base,
-            value, pair.dof, probability,
-        )  # fmt: skip
+            "mass",
+            title,
+            UNTESTABLE,
+            f"{lost}; without dates the loss cannot be counted",
+            base,
+            value,
+            pair.dof,
+            probability,
+        )
     active = pair.active.response
     days = abs(
         0.5 * (active.first_d + active.last_d)
@@ -530,18 +582,17 @@ def mass_change(
     verdict = POSSIBLE if can >= must else STRAINED if 10 * can >= must else EXCLUDED
     base |= {
         "log_mass_ratio_needed": must if math.isfinite(must) else None,
-        "log_mass_ratio_available": can, "days": days,
+        "log_mass_ratio_available": can,
+        "days": days,
         "ground": ground,
-    }  # fmt: skip
+    }
     sentence = (
         f"{lost} in {days:.0f} d; steady loss ({ground}; rocket equation, mean g of the two "
         f"arcs) removes up to {percent(1 - math.exp(-can))}"
     )
     if verdict != POSSIBLE:
         sentence += "; only a splitting could"
-    return Explanation(
-        "mass", title, verdict, sentence, base, value, pair.dof, probability
-    )
+    return Explanation("mass", title, verdict, sentence, base, value, pair.dof, probability)
 
 
 def production(pair: Pair, ratios: Floats, best: float, value: float) -> Explanation:
@@ -551,10 +602,15 @@ def production(pair: Pair, ratios: Floats, best: float, value: float) -> Explana
     needed: dict[str, Any] = {"best_ratio": best}
     if not ratios.size:
         return Explanation(
-            "production", title, EXCLUDED,
-            "no ratio of the two thrusts, direction kept, fits both", needed, value, pair.dof,
+            "production",
+            title,
+            EXCLUDED,
+            "no ratio of the two thrusts, direction kept, fits both",
+            needed,
+            value,
+            pair.dof,
             probability,
-        )  # fmt: skip
+        )
     needed["ratio"] = [float(ratios.min()), float(ratios.max())]
     sentence = (
         f"the force at {pair.quiet.name}, referred to the same law, would have to be "
@@ -579,9 +635,16 @@ def production(pair: Pair, ratios: Floats, best: float, value: float) -> Explana
         )
     verdict = PRODUCTION_FACTORS.verdict(ratios)
     return Explanation(
-        "production", title, verdict, f"{sentence}; {PRODUCTION_FACTORS}", needed, value, pair.dof,
-        probability, PRODUCTION_FACTORS,
-    )  # fmt: skip
+        "production",
+        title,
+        verdict,
+        f"{sentence}; {PRODUCTION_FACTORS}",
+        needed,
+        value,
+        pair.dof,
+        probability,
+        PRODUCTION_FACTORS,
+    )
 
 
 def _measured_ratio(pair: Pair) -> Floats | None:
@@ -620,10 +683,16 @@ def collimation(pair: Pair, ratios: Floats, best: float, value: float) -> Explan
         else "no ratio of the two thrusts, direction kept, fits both"
     )
     return Explanation(
-        "collimation", "a collimation that differs by epoch", verdict,
-        f"{sentence}; {COLLIMATIONS}", needed, value, pair.dof, pair.probability(value),
+        "collimation",
+        "a collimation that differs by epoch",
+        verdict,
+        f"{sentence}; {COLLIMATIONS}",
+        needed,
+        value,
+        pair.dof,
+        pair.probability(value),
         COLLIMATIONS,
-    )  # fmt: skip
+    )
 
 
 def density(
@@ -635,11 +704,15 @@ def density(
     sizes = [r for r in results if r.diameter is not None]
     if not masses or not sizes:
         return Explanation(
-            "density", title, UNTESTABLE,
+            "density",
+            title,
+            UNTESTABLE,
             "no result gives a mass (or a production and a thrust) and none a diameter"
             if not masses and not sizes
-            else "there is no mass" if not masses else "there is no diameter",
-        )  # fmt: skip
+            else "there is no mass"
+            if not masses
+            else "there is no diameter",
+        )
     low, high = 0.0, math.inf
     told = []
     for owner, draws in masses:
@@ -660,8 +733,10 @@ def density(
     if high >= low and not good.size:
         good = np.array([math.sqrt(low * high)])
     return Explanation(
-        "density", title, DENSITIES.verdict(good), f"{'; '.join(told)}; {DENSITIES}",
-        {"density_kg_m3": [low, high if math.isfinite(high) else None]}, plausible=DENSITIES,
-    )  # fmt: skip
-
-
+        "density",
+        title,
+        DENSITIES.verdict(good),
+        f"{'; '.join(told)}; {DENSITIES}",
+        {"density_kg_m3": [low, high if math.isfinite(high) else None]},
+        plausible=DENSITIES,
+    )

@@ -181,14 +181,20 @@ def reconcile(
     probability = float(chi2.sf(value, dof))
     pair = _worst_pair(found, level, np.random.default_rng(seed))
     chance = Explanation(
-        "chance", "chance alone",
-        POSSIBLE if probability >= 1 - level
-        else STRAINED if probability >= THREE_SIGMA
+        "chance",
+        "chance alone",
+        POSSIBLE
+        if probability >= 1 - level
+        else STRAINED
+        if probability >= THREE_SIGMA
         else EXCLUDED,
         f"the same thrust in all results, law as quoted, has the probability "
         f"{why.chance_text(probability)}",
-        {"thrust_au_d2": thrust.tolist()}, value, dof, probability,
-    )  # fmt: skip
+        {"thrust_au_d2": thrust.tolist()},
+        value,
+        dof,
+        probability,
+    )
     ratios, best, scaled = why.amplitude_ratios(pair)
     told = [
         chance,
@@ -204,10 +210,15 @@ def reconcile(
     ]
     told.sort(key=lambda e: (ORDER.index(e.verdict), -(e.probability or 0.0)))
     return Reconciliation(
-        tuple(found), value, dof, probability,
+        tuple(found),
+        value,
+        dof,
+        probability,
         (float(thrust[0]), float(thrust[1]), float(thrust[2])),
-        (pair.quiet.name, pair.active.name), tuple(told), level,
-    )  # fmt: skip
+        (pair.quiet.name, pair.active.name),
+        tuple(told),
+        level,
+    )
 
 
 def _worst_pair(found: list[ThrustResult], level: float, rng: np.random.Generator) -> Pair:

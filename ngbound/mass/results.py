@@ -66,9 +66,13 @@ class ThrustResult:
     ) -> "ThrustResult":
         """The result of a fit; all three components are looked at, whichever were fitted."""
         return cls(
-            name or fit.arc.name, "arc", ArcResponse.of(fit), outgassing,
-            _sized(mass, "mass", u.kg), _sized(diameter, "diameter", u.m),
-        )  # fmt: skip
+            name or fit.arc.name,
+            "arc",
+            ArcResponse.of(fit),
+            outgassing,
+            _sized(mass, "mass", u.kg),
+            _sized(diameter, "diameter", u.m),
+        )
 
     @classmethod
     def from_quoted(
@@ -82,9 +86,7 @@ class ThrustResult:
         if not isinstance(table, QuotedResult):
             table = read_table(table, QuotedResult)[0]
         budget = None if table.outgassing is None else Outgassing.from_dict(table.outgassing)
-        extras = (
-            budget, _sized(table.mass, "mass", u.kg), _sized(table.diameter, "diameter", u.m)
-        )  # fmt: skip
+        extras = (budget, _sized(table.mass, "mass", u.kg), _sized(table.diameter, "diameter", u.m))
         if table.file is not None:
             arc = read_arc((folder or Path()) / table.file, object=table.object)
             if progress:
@@ -100,9 +102,15 @@ class ThrustResult:
         if last < first:
             raise CaseError(f"The dates of {table.name!r} run backwards; swap them.")
         response = QuotedResponse(
-            law_history(table.thrust()), first, last, (min(table.r_au), max(table.r_au)),
-            table.r_au, amounts, matrix, allowed,
-        )  # fmt: skip
+            law_history(table.thrust()),
+            first,
+            last,
+            (min(table.r_au), max(table.r_au)),
+            table.r_au,
+            amounts,
+            matrix,
+            allowed,
+        )
         return cls(table.name, kind, response, *extras, assumed=assumed)
 
     @property

@@ -154,17 +154,21 @@ def readings(
                 apart = (f"the {_WORDS[letter]} component instead of the {quoted.component}",)
             for treatment, value in (("held", one * held), ("free", one * free)):
                 wrong = treatment != quoted.others and quoted.component != "any"
-                axes.append((
-                    f"{_WORDS[letter]} component, others {treatment}",
-                    value,
-                    (*apart, *((f"the other components {treatment}",) if wrong else ())),
-                ))  # fmt: skip
+                axes.append(
+                    (
+                        f"{_WORDS[letter]} component, others {treatment}",
+                        value,
+                        (*apart, *((f"the other components {treatment}",) if wrong else ())),
+                    )
+                )
             if k > 1:
-                axes.append((
-                    f"{_WORDS[letter]} thrust, all components tested together",
-                    together * held,
-                    (*apart, "all components tested together"),
-                ))  # fmt: skip
+                axes.append(
+                    (
+                        f"{_WORDS[letter]} thrust, all components tested together",
+                        together * held,
+                        (*apart, "all components tested together"),
+                    )
+                )
         if k > 1:
             values = information.eigenvalues
             mean = mean_sigma(information)
@@ -368,4 +372,3 @@ def judge(
     if slips:
         return tuple(matching), slips, "slip"
     return tuple(matching), (), "too small" if claimed.ratio < 1 else "too large"
-

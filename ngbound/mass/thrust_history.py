@@ -227,11 +227,22 @@ class ArcResponse:
         law = fit.thrust or Thrust("inverse-square")
         r = np.linalg.norm(state[:, :3], axis=1)
         bare = cls(
-            law_history(law), epoch + float(tau.min()), epoch + float(tau.max()),
-            (float(r.min()), float(r.max())), epoch, grid, r, basis, inverse, tau,
-            design[:, :6], noise.whiten, axes, data,
+            law_history(law),
+            epoch + float(tau.min()),
+            epoch + float(tau.max()),
+            (float(r.min()), float(r.max())),
+            epoch,
+            grid,
+            r,
+            basis,
+            inverse,
+            tau,
+            design[:, :6],
+            noise.whiten,
+            axes,
+            data,
             thrust_design if fit.components == "RTN" else None,
-        )  # fmt: skip
+        )
         return replace(bare, floor=bare.misfit(bare.own).lowest()[0])
 
     @cached_property

@@ -80,7 +80,7 @@ def test_modes(tmp_path: Path, kind: str, mode: str) -> None:
 
 def test_programme_codes(tmp_path: Path) -> None:
     arc = read(tmp_path, line80(note="2"), line80(note="&"), line80(note="Z"))
-    assert arc.table.prog.tolist() == ["02", "15", ""]
+    assert arc.table.prog.tolist() == ["02", "0F", ""]
     assert arc.table.notes.tolist() == ["", "", "Z"]
 
 

@@ -542,7 +542,11 @@ HEADERS = [
     ("# software\n! astrometry own\n! fitOrder 3\n", "# software\n", True),
     ("! fitOrder 3", "! fitOrder " + "3" * 26, False),
     ("# fundingSource Nobody at all", "# fundingSource", False),
-    ("# fundingSource Nobody at all\n", "# coinvestigators\n! name C\n# collaborators\n! name D\n", True),
+    (
+        "# fundingSource Nobody at all\n",
+        "# coinvestigators\n! name C\n# collaborators\n! name D\n",
+        True,
+    ),
     ("# fundingSource Nobody at all\n", "# coinvestigators\n", False),
     ("# fundingSource", "# measurers\n! name A\n# fundingSource", False),
     ("! line made up\n! line twice\n", "", False),
@@ -733,7 +737,11 @@ def drawn_file(draw: st.DrawFn) -> str:
     """A PSV file of several blocks with and without headers, over all kinds and columns."""
     name = draw(
         st.sampled_from(
-            ({"permID": "433"}, {"permID": "73P-C", "provID": "P/1930 J1"}, {"provID": "2014 AA360"})
+            (
+                {"permID": "433"},
+                {"permID": "73P-C", "provID": "P/1930 J1"},
+                {"provID": "2014 AA360"},
+            )
             + ({"artSat": "1998-067A"}, {"provID": "C/2019 Y4-B"})
         )
     )

@@ -48,6 +48,7 @@ def simulate(
     catalogue: str | list[str] = "Gaia2",
     offsets_arcsec: dict[str, tuple[float, float]] | None = None,
     stated: bool = True,
+    timing_s: float = 0.0,
 ) -> Truth:
     """Observe an orbit, with independent, nightly and gross errors and offsets of catalogues."""
     mjd = np.sort(np.asarray(mjd_utc, dtype=float))
@@ -55,6 +56,8 @@ def simulate(
     micro = np.round((mjd % 1.0) * 86400e6).astype(np.int64)
     day = np.floor(mjd).astype(np.int64)
     tdb_d = utc_to_tdb_d(day, micro / 1e6)
+    if timing_s > 0.0:
+        tdb_d = tdb_d + rng.normal(0.0, timing_s, n) / 86400.0
     stn = np.array([stations[i % len(stations)] for i in range(n)], dtype=object)
     if len(stations) > 1:
         stn = np.array([stations[d % len(stations)] for d in day], dtype=object)

@@ -44,7 +44,7 @@ def test_switched_off_the_table_stands(quiet):
         truth.arc, error_model=ErrorModel(rescale_stations=False), initial=truth.orbit
     )
     assert plain.scales == ()
-    assert plain.reduced_chi2 < 0.5
+    assert plain.reduced_chi2 < 0.6
     few = fit_orbit(truth.arc, error_model=ErrorModel(rescale_least=1000), initial=truth.orbit)
     assert few.scales == ()
 

@@ -222,3 +222,36 @@ def test_missing_arviz_is_one_sentence(monkeypatch, flat):
     monkeypatch.setattr(module, "arviz", None)
     with pytest.raises(SamplingError, match=r"ngbound\[arviz\]"):
         flat.to_arviz()
+
+
+class FakeGroups:
+    """Writes, or finds no writer."""
+
+    def __init__(self, works: bool) -> None:
+        self.works = works
+
+    def to_netcdf(self, path: str) -> str:
+        with open(path, "wb") as stream:
+            stream.write(b"CDF")
+        if not self.works:
+            raise ImportError("no netCDF engine")
+        return path
+
+
+@pytest.mark.parametrize("works", [True, False])
+def test_netcdf_is_whole_or_absent(monkeypatch, tmp_path, flat, works):
+    monkeypatch.setattr(Posterior, "to_arviz", lambda self: FakeGroups(works))
+    path = tmp_path / "samples.nc"
+    if works:
+        assert flat.to_netcdf(path).read_bytes() == b"CDF"
+    else:
+        with pytest.raises(SamplingError, match="h5netcdf"):
+            flat.to_netcdf(path)
+    assert [p.name for p in tmp_path.iterdir()] == (["samples.nc"] if works else [])
+
+
+def test_unknown_or_impossible_likelihoods_are_refused():
+    with pytest.raises(LimitError, match="no likelihood called"):
+        sample_posterior(correlated(), seed=1, likelihood="cauchy")
+    with pytest.raises(LimitError, match="residuals of a fitted arc"):
+        sample_posterior(correlated(), seed=1, likelihood="student")

@@ -73,8 +73,9 @@ def test_a_measured_rate_speaks_against_an_onset():
 def test_direction_hidden_from_one_component():
     # a limit on the radial part alone: |cos| < A_lim / A is a tenth of the sphere, blurred by noise
     limit = {**EARLY, "threshold": "1.0e-9", "r_au": [1.5]}
-    found = reconcile(limit, {**LATE, "A": {"R": "(1.0 +- 0.02)e-8", "T": "(0 +- 2)e-10",
-                                            "N": "(0 +- 2)e-10"}})  # fmt: skip
+    found = reconcile(
+        limit, {**LATE, "A": {"R": "(1.0 +- 0.02)e-8", "T": "(0 +- 2)e-10", "N": "(0 +- 2)e-10"}}
+    )
     # P[missed] = E[Phi((3 sigma - A cos) / sigma) ...]: mean edge 3 / 4.645 of the threshold
     assert found["rotated"].needed["missed_fraction"] == pytest.approx(0.3 / 4.645, abs=0.006)
     assert found.verdict("rotated") == "possible"
@@ -92,10 +93,18 @@ def test_mass_change_against_the_rocket_equation():
     assert mass.needed["log_mass_ratio_available"] == pytest.approx(5.617 / 250, rel=0.01)
     assert mass.verdict == "excluded"
     assert found.verdict("law") == "excluded"
-    assert "grow" in reconcile(
-        {**LATE, "A": "(1.0 +- 0.02)e-8"},
-        {**LATE, "name": "before", "A": "(2.0 +- 0.02)e-8", "dates": ["2030-09-01", "2030-12-01"]},
-    )["mass"].sentence  # fmt: skip
+    assert (
+        "grow"
+        in reconcile(
+            {**LATE, "A": "(1.0 +- 0.02)e-8"},
+            {
+                **LATE,
+                "name": "before",
+                "A": "(2.0 +- 0.02)e-8",
+                "dates": ["2030-09-01", "2030-12-01"],
+            },
+        )["mass"].sentence
+    )
 
 
 def test_measured_production_decides():

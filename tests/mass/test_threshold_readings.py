@@ -73,9 +73,7 @@ def test_unit_slips_are_named(fit, threshold, factor, words):
 
 
 def test_unlike_any_reading(fit, threshold):
-    found = audit_threshold(
-        fit, {**CLAIM, "value": 300.0 * float(threshold.free[0].value)}, QUOTED
-    )
+    found = audit_threshold(fit, {**CLAIM, "value": 300.0 * float(threshold.free[0].value)}, QUOTED)
     assert found.verdict == "too large" and not found.slips
     json.dumps(found.to_dict(), allow_nan=False)
 

@@ -26,7 +26,8 @@ def test_columns_are_those_of_the_variational_equations(fit, response):
     by_quadrature = response.columns(law_history(Thrust("inverse-square")))
     by_equations = fit.design[:, 6:]
     error = np.abs(by_quadrature - by_equations).max(axis=0)
-    assert np.all(error < 1e-5 * np.abs(by_equations).max(axis=0))
+    # the quadrature's own error, far below what any arc can tell
+    assert np.all(error < 5e-5 * np.abs(by_equations).max(axis=0))
 
 
 def test_own_law_gives_back_the_fit(fit, response):

@@ -28,9 +28,11 @@ from .grid import (
 from .radau import N_NODES, NODES, V_WEIGHTS, X_WEIGHTS
 
 LANES = 16
+COLUMNS = 9
 SWEEPS = 6
 SETTLED_AU = 2e-15
 _FAST = {"contract", "nsz", "nnan", "ninf", "arcp"}
+_TIDE = np.array([[0, 3, 5, 1, 2, 4], [1, 6, 8, 3, 4, 7], [2, 7, 9, 4, 5, 8]])
 
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST)
@@ -57,90 +59,56 @@ def _offset_acceleration(gm_sun, row, d, w, da, amount, acc):
         acc[0, lane] = f * (e * (sx + x) - x)
         acc[1, lane] = f * (e * (sy + y) - y)
         acc[2, lane] = f * (e * (sz + z) - z)
-    t = THIRD
-    for lane in range(LANES):
-        x = d[0, lane]
-        y = d[1, lane]
-        z = d[2, lane]
-        u = w[0, lane]
-        v = w[1, lane]
-        s = w[2, lane]
-        a1 = amount[0, lane]
-        a2 = amount[1, lane]
-        a3 = amount[2, lane]
-        xx = 0.5 * x * x
-        yy = 0.5 * y * y
-        zz = 0.5 * z * z
-        xy = x * y
-        xz = x * z
-        yz = y * z
-        acc[0, lane] += (
-            row[t] * xx
-            + row[t + 3] * yy
-            + row[t + 5] * zz
-            + row[t + 1] * xy
-            + row[t + 2] * xz
-            + row[t + 4] * yz
-        )
-        acc[1, lane] += (
-            row[t + 1] * xx
-            + row[t + 6] * yy
-            + row[t + 8] * zz
-            + row[t + 3] * xy
-            + row[t + 4] * xz
-            + row[t + 7] * yz
-        )
-        acc[2, lane] += (
-            row[t + 2] * xx
-            + row[t + 7] * yy
-            + row[t + 9] * zz
-            + row[t + 4] * xy
-            + row[t + 5] * xz
-            + row[t + 8] * yz
-        )
-        for i in range(3):
-            g = GX + 3 * i
-            h = GV + 3 * i
-            p = UNIT_X + 3 * i
-            q = UNIT_V + 3 * i
+    # rows of the tide's symmetric tensor, in the order xx, yy, zz, xy, xz, yz
+    for i in range(3):
+        txx = row[THIRD + _TIDE[i, 0]]
+        tyy = row[THIRD + _TIDE[i, 1]]
+        tzz = row[THIRD + _TIDE[i, 2]]
+        txy = row[THIRD + _TIDE[i, 3]]
+        txz = row[THIRD + _TIDE[i, 4]]
+        tyz = row[THIRD + _TIDE[i, 5]]
+        gx = row[GX + 3 * i]
+        gy = row[GX + 3 * i + 1]
+        gz = row[GX + 3 * i + 2]
+        hx = row[GV + 3 * i]
+        hy = row[GV + 3 * i + 1]
+        hz = row[GV + 3 * i + 2]
+        u1 = row[UNIT + i]
+        u2 = row[UNIT + 3 + i]
+        u3 = row[UNIT + 6 + i]
+        for lane in range(LANES):
+            x = d[0, lane]
+            y = d[1, lane]
+            z = d[2, lane]
             acc[i, lane] += (
-                row[g] * x
-                + row[g + 1] * y
-                + row[g + 2] * z
-                + row[h] * u
-                + row[h + 1] * v
-                + row[h + 2] * s
-                + da[0, lane] * row[UNIT + i]
-                + da[1, lane] * row[UNIT + 3 + i]
-                + da[2, lane] * row[UNIT + 6 + i]
-                + a1
-                * (
-                    row[p] * x
-                    + row[p + 1] * y
-                    + row[p + 2] * z
-                    + row[q] * u
-                    + row[q + 1] * v
-                    + row[q + 2] * s
-                )
-                + a2
-                * (
-                    row[p + 9] * x
-                    + row[p + 10] * y
-                    + row[p + 11] * z
-                    + row[q + 9] * u
-                    + row[q + 10] * v
-                    + row[q + 11] * s
-                )
-                + a3
-                * (
-                    row[p + 18] * x
-                    + row[p + 19] * y
-                    + row[p + 20] * z
-                    + row[q + 18] * u
-                    + row[q + 19] * v
-                    + row[q + 20] * s
-                )
+                (gx + 0.5 * txx * x + txy * y) * x
+                + (gy + 0.5 * tyy * y + tyz * z) * y
+                + (gz + 0.5 * tzz * z + txz * x) * z
+                + hx * w[0, lane]
+                + hy * w[1, lane]
+                + hz * w[2, lane]
+                + u1 * da[0, lane]
+                + u2 * da[1, lane]
+                + u3 * da[2, lane]
             )
+        for c in range(3):
+            at = UNIT_X + 9 * c + 3 * i
+            px = row[at]
+            py = row[at + 1]
+            pz = row[at + 2]
+            at = UNIT_V + 9 * c + 3 * i
+            qx = row[at]
+            qy = row[at + 1]
+            qz = row[at + 2]
+            for lane in range(LANES):
+                acc[i, lane] += amount[c, lane] * (
+                    px * d[0, lane]
+                    + py * d[1, lane]
+                    + pz * d[2, lane]
+                    + qx * w[0, lane]
+                    + qy * w[1, lane]
+                    + qz * w[2, lane]
+                )
 
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
@@ -161,12 +129,11 @@ def offsets_to_records(
 ):
     """Offsets from the reference at the records of one direction of time, for one block of lanes.
 
-    ``theta`` (p, LANES): parameter offsets (state, then thrust); ``columns`` (steps, 8, 6, p) the
+    ``theta`` (9, LANES): parameter offsets (state, then thrust); ``columns`` (steps, 8, 6, 9) the
     linear solution at the nodes, used as the first guess. Records ``first`` to ``last`` of the
     sorted list lie in this direction; ``out`` (records, 3, LANES) receives their offsets, ``doubt``
     (2, LANES) the estimated error of position (au) and the last change of a sweep (au).
     """
-    p = theta.shape[0]
     steps = grid_h.size
     begin = np.zeros((6, LANES))
     acc = np.zeros((N_NODES, 3, LANES))
@@ -182,8 +149,7 @@ def offsets_to_records(
             begin[i, lane] = theta[i, lane]
     for i in range(3):
         for lane in range(LANES):
-            if 6 + i < p:
-                da[i, lane] = theta[6 + i, lane]
+            da[i, lane] = theta[6 + i, lane]
             amount[i, lane] = a_ref[i] + da[i, lane]
     record = first
     for k in range(steps):
@@ -209,14 +175,13 @@ def offsets_to_records(
         for j in range(N_NODES):
             for i in range(3):
                 for lane in range(LANES):
-                    d[i, lane] = 0.0
-                    w[i, lane] = 0.0
-                for c in range(p):
-                    cx = columns[k, j, i, c]
-                    cv = columns[k, j, 3 + i, c]
-                    for lane in range(LANES):
-                        d[i, lane] += cx * theta[c, lane]
-                        w[i, lane] += cv * theta[c, lane]
+                    px = 0.0
+                    pv = 0.0
+                    for c in range(COLUMNS):
+                        px += columns[k, j, i, c] * theta[c, lane]
+                        pv += columns[k, j, 3 + i, c] * theta[c, lane]
+                    d[i, lane] = px
+                    w[i, lane] = pv
                 if j == 0:
                     for lane in range(LANES):
                         d[i, lane] = begin[i, lane]
@@ -229,14 +194,13 @@ def offsets_to_records(
                 s = NODES[j] * h
                 for i in range(3):
                     for lane in range(LANES):
-                        d[i, lane] = begin[i, lane] + s * begin[3 + i, lane]
-                        w[i, lane] = begin[3 + i, lane]
-                    for m in range(N_NODES):
-                        wx = X_WEIGHTS[j, m] * h * h
-                        wv = V_WEIGHTS[j, m] * h
-                        for lane in range(LANES):
-                            d[i, lane] += wx * acc[m, i, lane]
-                            w[i, lane] += wv * acc[m, i, lane]
+                        px = 0.0
+                        pv = 0.0
+                        for m in range(N_NODES):
+                            px += X_WEIGHTS[j, m] * acc[m, i, lane]
+                            pv += V_WEIGHTS[j, m] * acc[m, i, lane]
+                        d[i, lane] = begin[i, lane] + s * begin[3 + i, lane] + h * h * px
+                        w[i, lane] = begin[3 + i, lane] + h * pv
                 _offset_acceleration(gm_sun, nodes[k, j], d, w, da, amount, new)
                 for i in range(3):
                     for lane in range(LANES):
@@ -262,21 +226,22 @@ def offsets_to_records(
         while record < last and step_of[record] == k:
             for i in range(3):
                 for lane in range(LANES):
-                    out[record, i, lane] = begin[i, lane] + fraction_h[record] * begin[3 + i, lane]
-                for m in range(N_NODES):
-                    wx = weight_x[record, m]
-                    for lane in range(LANES):
-                        out[record, i, lane] += wx * acc[m, i, lane]
+                    px = 0.0
+                    for m in range(N_NODES):
+                        px += weight_x[record, m] * acc[m, i, lane]
+                    out[record, i, lane] = (
+                        begin[i, lane] + fraction_h[record] * begin[3 + i, lane] + px
+                    )
             record += 1
         for i in range(3):
             for lane in range(LANES):
-                begin[i, lane] += h * begin[3 + i, lane]
-            for m in range(N_NODES):
-                wx = X_WEIGHTS[N_NODES, m] * h * h
-                wv = V_WEIGHTS[N_NODES, m] * h
-                for lane in range(LANES):
-                    begin[i, lane] += wx * acc[m, i, lane]
-                    begin[3 + i, lane] += wv * acc[m, i, lane]
+                px = 0.0
+                pv = 0.0
+                for m in range(N_NODES):
+                    px += X_WEIGHTS[N_NODES, m] * acc[m, i, lane]
+                    pv += V_WEIGHTS[N_NODES, m] * acc[m, i, lane]
+                begin[i, lane] += h * begin[3 + i, lane] + h * h * px
+                begin[3 + i, lane] += h * pv
 
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
@@ -379,14 +344,13 @@ def batch(
     """
     n = rho.shape[0]
     n_none = n - rho.shape[0]  # a variable: a literal would compile the kernel twice
-    p = theta.shape[1]
-    lanes = np.empty((p, LANES))
+    lanes = np.empty((COLUMNS, LANES))
     offset = np.zeros((n, 3, LANES))
     residual = np.zeros((n, 2, LANES))
     unsure = np.empty((2, LANES))
     for block in range(theta.shape[0] // LANES):
         at = block * LANES
-        for c in range(p):
+        for c in range(COLUMNS):
             for lane in range(LANES):
                 lanes[c, lane] = theta[at + lane, c]
         unsure[:] = 0.0
