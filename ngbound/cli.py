@@ -115,9 +115,7 @@ def _step(help_text: str, **settings: Any) -> Callable[[Callable[..., Any]], cli
     return register
 
 
-LAW = click.option(
-    "--law", metavar="LAW", help="Thrust law, instead of the one in the case file."
-)
+LAW = click.option("--law", metavar="LAW", help="Thrust law, instead of the one in the case file.")
 COMPONENTS = click.option(
     "--components", metavar="RTN", help="Free thrust components, any of R, T, N in this order."
 )
@@ -257,3 +255,50 @@ def fan(input_file: Path, **options: Any) -> Any:
 @click.option("--json", "as_json", is_flag=True, help="Print one JSON document instead of text.")
 def simulate(recipe: Path, output: Path | None, as_json: bool) -> None:
     _print(ng.simulate_arc(recipe, output=output), as_json)
+
+
+@main.command(
+    name="sweep",
+    help="Run many cases, and put their results into one table.\n\n"
+    "CASES are case files, or folders of them. Cases whose record stands, made from the same "
+    "inputs, are not run anew, so an interrupted sweep goes on where it was. The exit status is 1 "
+    "when a case could not be done.\n\n"
+    "Example: ngbound sweep data_demo --table results.csv",
+)
+@click.argument(
+    "cases", metavar="CASES...", nargs=-1, required=True, type=click.Path(path_type=Path)
+)
+@click.option(
+    "--workers", type=click.IntRange(min=1), help="Processes at a time; one a core unless given."
+)
+@click.option(
+    "--part",
+    default="1/1",
+    show_default=True,
+    help="Which part of the cases, as 2/8: for cluster nodes.",
+)
+@click.option(
+    "--table",
+    type=click.Path(path_type=Path, dir_okay=False),
+    help="CSV file for the table of results.",
+)
+@click.option("--again", is_flag=True, help="Run cases anew even where their record stands.")
+@click.option("--json", "as_json", is_flag=True, help="Print one JSON document instead of text.")
+@click.option(
+    "--progress/--no-progress",
+    default=None,
+    help="Show progress on stderr; by default only on a terminal.",
+)
+@click.pass_context
+def sweep(
+    ctx: click.Context,
+    cases: tuple[Path, ...],
+    as_json: bool,
+    progress: bool | None,
+    **options: Any,
+) -> None:
+    show = sys.stderr.isatty() if progress is None else progress
+    result = ng.sweep_cases(cases, progress=show, **options)
+    _print(result, as_json)
+    if result.n_failed:
+        ctx.exit(1)

@@ -1,4 +1,5 @@
-"""One definition per constant, its source beside it, and unit conversions; imports only the standard library.
+"""One definition per constant, its source beside it, and unit conversions; imports only the
+standard library.
 
 Distances in au, times in days (86400 s) of TDB, angles in radians unless a name says otherwise.
 """

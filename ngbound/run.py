@@ -36,6 +36,7 @@ from ngbound.limits import (
     verdict,
 )
 from ngbound.mass import MassBound, mass_bound
+from ngbound.motion import compile_notice
 from ngbound.report import (
     Record,
     SmallTable,
@@ -192,6 +193,8 @@ def read_the_arc(case: Case, step: "Steps") -> Arc:
 
 def fit_both(case: Case, arc: Arc, step: "Steps") -> "Fits":
     """Fit by gravity alone from the start the case gives, then with thrust from there."""
+    if notice := compile_notice():
+        step.tell(notice)
     start = case.orbit.orbit(forces=case.forces.force_model()) if case.orbit else None
     common: dict[str, Any] = {
         "error_model": case.errors.error_model(),
@@ -516,6 +519,10 @@ class Steps:
     def __init__(self, show: bool) -> None:
         self.show = show
         self.seconds: dict[str, float] = {}
+
+    def tell(self, sentence: str) -> None:
+        """Say what the user should know at once, on stderr."""
+        tqdm.write(f"ngbound: {sentence}", file=sys.stderr)
 
     @contextmanager
     def __call__(self, what: str) -> Iterator["StepBar"]:

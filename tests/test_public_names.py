@@ -37,7 +37,14 @@ PUBLIC_NAMES = {
     "run_case",
     "sample_posterior",
     "simulate_arc",
+    "sweep_cases",
     "upper_limit",
+    "ForceModel",
+    "TableLaw",
+    "Window",
+    "reciprocal_axis",
+    "vet",
+    "write_xml",
     "write_psv",
 }
 HEAVY = {"numba", "astropy", "pandas", "scipy", "matplotlib", "emcee", "numpy"}

@@ -140,8 +140,8 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
         if loose:
             problem, remedy = f"it has the attribute {loose[0]!r}", "Remove the attribute."
             raise _fail(root, source, "ades", problem, remedy)
-        for text, place in [(root.text, root), *((child.tail, child) for child in root)]:
-            if text and text.strip():
+        for between, place in [(root.text, root), *((child.tail, child) for child in root)]:
+            if between and between.strip():
                 raise _fail(place, source, "ades", "text stands between its elements", "Remove it.")
     for element in root:
         if element.tag in RECORD_KINDS:

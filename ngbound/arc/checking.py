@@ -306,7 +306,7 @@ class Checker:
         else:
             coded = self.coded(column)
             judged = _judge_numbers(rule, pack(coded.values), self.strict)
-            judged = Judged(*(facts[coded.codes] for facts in judged))
+            judged = judged.take(coded.codes)
         value, form_ok, range_ok, self.places[column] = judged
         self.refuse(filled & ~form_ok, column, _lexical(rule, self.strict), "Correct the value.")
         self.refuse(filled & ~range_ok, column, rule.words, _range_remedy(column))
@@ -456,6 +456,12 @@ class Judged(NamedTuple):
     form_ok: BoolArray
     range_ok: BoolArray
     places: NDArray[np.int64]
+
+    def take(self, rows: NDArray[np.int64]) -> "Judged":
+        """The same for some rows, which may repeat."""
+        return Judged(
+            self.value[rows], self.form_ok[rows], self.range_ok[rows], self.places[rows]
+        )
 
 
 def _judge_numbers(rule: ColumnRule, packed: Packed, strict: bool) -> Judged:

@@ -9,7 +9,7 @@ record that cannot be used in a fit stays in the table with ``use`` False and th
 
 import difflib
 from collections.abc import Mapping
-from dataclasses import dataclass, field, replace
+from dataclasses import asdict, dataclass, field, replace
 from typing import Any
 
 import numpy as np
@@ -31,8 +31,10 @@ from ngbound.arc.ades_rules import (
 )
 from ngbound.arc.checking import Checker
 from ngbound.arc.fields import calendar_date, format_times, plain_number
+from ngbound.arc.parquet import read_table, write_table
 from ngbound.arc.records import Angles, Context, ObjectArray, Records
 from ngbound.arc.stations import Station, station, user_stations
+from ngbound.arc.whole_file import PathLike
 from ngbound.errors import ArcError
 
 ALWAYS_TEXT = (
@@ -198,6 +200,33 @@ class Arc:
             text += f"; set aside: {reasons}"
         return text
 
+    def to_parquet(self, path: PathLike) -> None:
+        """Write the arc as Parquet, nothing lost; needs pyarrow (extra "parquet"), else
+        ArcError."""
+        notes = {
+            "source": self.source,
+            "label": self.label,
+            "contexts": self.contexts,
+            "stations": {code: asdict(place) for code, place in self.stations.items()},
+        }
+        write_table(self.table, notes, path)
+
+    @classmethod
+    def from_parquet(cls, path: PathLike) -> "Arc":
+        """An arc that `to_parquet` wrote; ArcError when the file holds none, or without
+        pyarrow."""
+        needed = [*ALWAYS_TEXT, *ALWAYS_NUMBER, *(c for c in DERIVED if c != "corrReported")]
+        table, notes, source = read_table(path, needed, [*COLUMNS, *DERIVED])
+        try:
+            contexts = tuple(_context_of(c) for c in notes["contexts"])
+            places = {code: Station(**place) for code, place in notes["stations"].items()}
+            return cls(table, str(notes["source"]), str(notes["label"]), contexts, places)
+        except (ValueError, KeyError, TypeError, AttributeError) as error:
+            raise ArcError(
+                f"{source}: the metadata of the arc are broken ({error}). Write the file again.",
+                file=source,
+            ) from error
+
     @classmethod
     def from_frame(
         cls,
@@ -270,6 +299,13 @@ class Arc:
             angles=_frame_angles(frame, text) if n and "ra" in known else None,
         )
         return assemble(records, label=name, object=object, stations=stations)
+
+
+def _context_of(listed: Any) -> Context:
+    return tuple(
+        (str(name), str(text), tuple((str(c), str(v)) for c, v in children))
+        for name, text, children in listed
+    )
 
 
 def iso_day(mjd: int) -> str:

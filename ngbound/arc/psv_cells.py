@@ -7,6 +7,7 @@ distinct values come out as codes.
 """
 
 from functools import cached_property
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -120,7 +121,7 @@ class Cells:
         self.counts = after - self.first_pipe + 1
 
     @cached_property
-    def grid(self) -> NDArray[np.signedinteger] | None:
+    def grid(self) -> NDArray[Any] | None:
         """The pipes (n, columns - 1) when every line has the same number of cells and there is
         nothing between the lines."""
         n, width = len(self.rows), int(self.counts[0]) - 1

@@ -271,11 +271,13 @@ def _nights(fit: Fit, rest: _Rest) -> pd.DataFrame:
 def _groups(fit: Fit, rest: _Rest) -> pd.DataFrame:
     table = fit.used.table[fit.keep]
     season = seasons(fit.used)[fit.keep]
-    begin = pd.Series(fit.residuals["utc"].to_numpy()[fit.keep]).groupby(season).min()
+    utc = fit.residuals["utc"].astype(str).to_numpy(dtype=object)[fit.keep]
+    # the observations are in order of time
+    begin = {s: utc[int(np.flatnonzero(season == s)[0])][:7] for s in np.unique(season).tolist()}
     named = {
         "station": table["stn"].to_numpy(dtype=object),
         "catalogue": np.where(table["astCat"] == "", "UNK", table["astCat"]).astype(object),
-        "season": np.array([str(begin[s])[:7] for s in season], dtype=object),
+        "season": np.array([begin[s] for s in season.tolist()], dtype=object),
     }
     rows = []
     for kind, labels in named.items():

@@ -37,9 +37,7 @@ MOVED_ENOUGH = 1e-2
 hundredth of a standard deviation of the parameters."""
 NOISE_FLOOR = 0.1
 """Up to this size of the undamped step, a chi2 that cannot be lowered any more is put down to the
-rounding of the integration."""
-CHI2_SETTLED = 2e-3
-"""A rise of chi2 that does not count: the step control of the integrator moves chi2 by as much."""
+step control of the integrator."""
 MAX_SWEEPS = 60
 MAX_DAMPING = 1e12
 UNDETERMINED = 1e-12
@@ -170,19 +168,30 @@ def _downhill(
     damping: float,
     at: Callable[[Floats], Linearised],
 ) -> tuple[Linearised | None, _Step, float]:
-    """The least damped step that does not raise chi2, or None; with the damping it took."""
+    """The least damped step that lowers chi2, or None; with the damping it took."""
     while damping <= MAX_DAMPING:
         step = full if damping == 0.0 else _Step.of(white, miss, damping)
         if damping > 0.0 and step.size < 0.1 * MOVED_ENOUGH:
             break
-        try:
-            there = at(here.theta + step.step)
-        except PropagationError:
-            there = None
-        if there is not None and there.chi2 <= here.chi2 + CHI2_SETTLED:
+        there = _try(at, here.theta + step.step)
+        if there is not None and here.chi2 - there.chi2 < 0.5 * step.expected:
+            # the valley is curved: go to the lowest point of the parabola along the step
+            bend = there.chi2 - here.chi2 + 2.0 * step.expected
+            fraction = min(1.0, max(0.1, step.expected / bend))
+            short = _try(at, here.theta + fraction * step.step)
+            there = min((there, short or there), key=lambda trial: trial.chi2)
+        if there is not None and there.chi2 < here.chi2:
             return there, step, damping
         damping = max(damping * 10.0, 1e-9)
     return None, full, damping
+
+
+def _try(at: Callable[[Floats], Linearised], theta: Floats) -> Linearised | None:
+    """The orbit linearised at a vector; None where it cannot be integrated or seen."""
+    try:
+        return at(theta)
+    except PropagationError:
+        return None
 
 
 def _settled(here: Linearised, white: Floats, full: _Step, sweep: int) -> Correction:

@@ -41,6 +41,7 @@ GOOD_REDUCED_CHI2 = 3.0
 GOOD_LOST = 0.1
 FEW = 5
 ROOM = 4
+SHORTEST_FOR_THRUST_D = 20.0
 LEAST_GAIN = 30.0
 FEE = 25.0
 
@@ -176,8 +177,9 @@ def _seen_over(
     return local, there
 
 
-def _room_for(components: str, keep: Bools) -> bool:
-    return bool(components) and 2 * int(keep.sum()) >= 6 + len(components) + ROOM
+def _room_for(components: str, keep: Bools, span_d: float) -> bool:
+    enough = 2 * int(keep.sum()) >= 6 + len(components) + ROOM
+    return bool(components) and enough and span_d > SHORTEST_FOR_THRUST_D
 
 
 def _settle_leanest(
@@ -243,7 +245,8 @@ def grow(
     while True:
         part = records.subset(slice(low, high))
         local = noise.mask(np.arange(low, high))
-        wanted = (free,) if free or not _room_for(components, keep) else ("", components)
+        span_d = float(part.tdb_d[-1] - part.tdb_d[0])
+        wanted = (free,) if free or not _room_for(components, keep, span_d) else ("", components)
         found = _settle_leanest(wanted, theta, epoch, part, local, keep, thrust, forces)
         if found.components and not free and say is not None:
             say("gravity alone does not explain the arc any more: thrust is set free")

@@ -32,7 +32,9 @@ Anchor: N observations uniform over T, constant acceleration across the sightlin
 sigma_A -> sigma_theta D sqrt(720 / N) / T^2 (R. L. Gluckstern 1963, NIM 24, 381).
 """
 
-from ngbound.limits.fit_protocol import ThrustFit
+from ngbound.limits.fit_protocol import GaussianFit, ThrustFit
+from ngbound.limits.forecast import Forecast, PlannedNight, forecast
+from ngbound.limits.growth import ThresholdGrowth, threshold_growth
 from ngbound.limits.information import AU_D2, ThrustInformation, thrust_information
 from ngbound.limits.injection import (
     PowerCurve,
@@ -41,6 +43,8 @@ from ngbound.limits.injection import (
     inject_and_recover,
     power_curve,
 )
+from ngbound.limits.laws import LawComparison, compare_laws
+from ngbound.limits.likelihood import LIKELIHOODS
 from ngbound.limits.posterior import Posterior, sample_posterior
 from ngbound.limits.priors import PRIOR_NAMES, ThrustPrior, thrust_prior
 from ngbound.limits.refit import ExactRefit, LinearRefit, Refits, Refitter
@@ -56,29 +60,38 @@ from ngbound.limits.verdict import Verdict, verdict
 
 __all__ = [
     "AU_D2",
+    "LIKELIHOODS",
     "PRIOR_NAMES",
     "DetectionThreshold",
     "DirectionMap",
     "ExactRefit",
+    "Forecast",
+    "GaussianFit",
+    "LawComparison",
     "LinearRefit",
+    "PlannedNight",
     "Posterior",
     "PowerCurve",
     "Rate",
     "Recovery",
     "Refits",
     "Refitter",
+    "ThresholdGrowth",
     "ThrustFit",
     "ThrustInformation",
     "ThrustPrior",
     "UpperLimit",
     "Verdict",
+    "compare_laws",
     "detection_threshold",
     "flat_prior_limit",
+    "forecast",
     "inject_and_recover",
     "noncentrality",
     "power_curve",
     "profile_limit",
     "sample_posterior",
+    "threshold_growth",
     "thrust_information",
     "thrust_prior",
     "unified_interval",

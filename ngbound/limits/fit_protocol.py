@@ -4,6 +4,7 @@ Any object with these attributes will do: the fit of a real arc, or a linear pro
 by hand.
 """
 
+from dataclasses import dataclass
 from typing import Any, Protocol
 
 import numpy as np
@@ -54,3 +55,29 @@ class ThrustFit(Protocol):
     def chi2_many(self, thetas: np.ndarray, /) -> np.ndarray:
         """Exact chi2 (m,) of many parameter vectors (m, p)."""
         ...
+
+
+@dataclass(frozen=True, eq=False)
+class GaussianFit:
+    """A ``ThrustFit`` in linear theory, known by its normal matrix: an arc cut short or grown."""
+
+    components: str
+    names: tuple[str, ...]
+    theta: np.ndarray
+    normal: np.ndarray
+    n_state: int
+    chi2: float
+    dof: int
+
+    def chi2_many(self, thetas: np.ndarray, /) -> np.ndarray:
+        """chi2 (m,) of parameter vectors (m, p): a parabola."""
+        off = np.asarray(thetas) - self.theta
+        return self.chi2 + np.einsum("mi,ij,mj->m", off, self.normal, off)
+
+    @classmethod
+    def of(cls, fit: ThrustFit, normal: np.ndarray, n_obs: int) -> "GaussianFit":
+        """The solution of ``fit`` with another normal matrix, from ``n_obs`` observations."""
+        theta = np.asarray(fit.theta, dtype=float)
+        dof = max(0, 2 * n_obs - theta.size)
+        names = tuple(str(name) for name in fit.names)
+        return cls(fit.components, names, theta, normal, fit.n_state, float(dof), dof)

@@ -437,9 +437,9 @@ class PowerCurve:
             f"{v:+.3f} {c}" for v, c in zip(self.direction, self.components, strict=True)
         )
         lines = [
-            f"Power of the test of {', '.join(self.components)} along ({vector}) at the false-alarm "
-            f"rate {self.false_alarm:g}; threshold {self.threshold.value:.3e} au/d2 at power "
-            f"{self.power:g}",
+            f"Power of the test of {', '.join(self.components)} along ({vector}) at the "
+            f"false-alarm rate {self.false_alarm:g}; threshold {self.threshold.value:.3e} au/d2 at "
+            f"power {self.power:g}",
             "  size, au/d2  of threshold  declared (95 % binomial)  linear theory",
         ]
         for size, each in zip(self.size.value, self.recoveries, strict=True):
@@ -514,6 +514,4 @@ def power_curve(
                 progress=report, checkpoint=path,
             )
         )  # fmt: skip
-    return PowerCurve(
-        refitter.components, axis, reach * AU_D2, false_alarm, power, tuple(found)
-    )
+    return PowerCurve(refitter.components, axis, reach * AU_D2, false_alarm, power, tuple(found))

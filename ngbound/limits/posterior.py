@@ -272,8 +272,8 @@ class _Target:
         self.likelihood, self.deviance = likelihood, deviance_of(fit, likelihood)
         if noise_free and likelihood != "gaussian":
             raise LimitError(
-                f"A free noise scale needs the gaussian likelihood; {likelihood} has its own tails. "
-                "Hold the noise scale, or take the gaussian likelihood.",
+                f"A free noise scale needs the gaussian likelihood; {likelihood} has its own "
+                "tails. Hold the noise scale, or take the gaussian likelihood.",
                 likelihood=likelihood,
             )
         self.k = information.k

@@ -23,7 +23,7 @@ sigma. A rejected record is one more pair of free parameters, a shift of its own
 which is the same as leaving it out and keeps the whitening of its station-night.
 """
 
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Protocol
 
@@ -376,7 +376,7 @@ class ExactRefit:
             chi2 = residual_chi2_many(
                 raw.reshape(len(rows), self.n, 2),
                 self.design_y[:, :, :free],
-                np.linalg.inv(found.normal[rows]),
+                np.asarray(np.linalg.inv(found.normal[rows]), dtype=np.float64),
                 self._error_arcsec2,
                 keep[rows],
             )
@@ -468,9 +468,7 @@ class _Frame:
     second: Floats
 
     @classmethod
-    def about(
-        cls, model: ExactRefit, hood: Neighbourhood, centre: Floats, free: int
-    ) -> "_Frame":
+    def about(cls, model: ExactRefit, hood: Neighbourhood, centre: Floats, free: int) -> "_Frame":
         """Differences of the exact residuals: first (free, 2n), second (free, free, 2n)."""
         h = DIFFERENCE
         one = np.zeros((2 * free, centre.size))

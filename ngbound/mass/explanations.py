@@ -16,6 +16,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.optimize import minimize_scalar
 from scipy.stats import chi2, ncx2
 
 from ngbound.constants import AU_D2_TO_M_S2, DAY_S
@@ -33,6 +34,21 @@ Floats = NDArray[np.float64]
 POSSIBLE, STRAINED, EXCLUDED, UNTESTABLE = "possible", "strained", "excluded", "not testable"
 ORDER = (POSSIBLE, STRAINED, EXCLUDED, UNTESTABLE)
 N_DRAWS = 4000
+FINER_ROUNDS = 4
+FINE_ENOUGH = 9
+"""A scan is made finer about its best value, so many times at most, until so many values fit."""
+
+
+def percent(share: float) -> str:
+    """A share as a percentage, in words where it is next to none."""
+    if share > 0.995:
+        return "nearly all"
+    return "under 0.01 %" if share < 1e-4 else f"{100 * share:.2g} %"
+
+
+def chance_text(probability: float) -> str:
+    """A probability; those beyond the floating-point range as a bound."""
+    return "under 1e-300" if probability < 1e-300 else number_text(probability, 2)
 
 
 @dataclass(frozen=True)
@@ -145,7 +161,10 @@ class Explanation:
     plausible: Range | None = None
 
     def __str__(self) -> str:
-        return f"{self.verdict:12s} {self.title}: {self.sentence}"
+        text = f"{self.verdict:12s} {self.title}: {self.sentence}"
+        if self.probability is None:
+            return text
+        return f"{text} [best case: p = {chance_text(self.probability)}]"
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able description."""
@@ -207,9 +226,23 @@ class Pair:
         return float(chi2.sf(max(value, 0.0), dof or self.dof))
 
 
-def _scan(pair: Pair, grid: Floats, chi2_of: Callable[[float], float]) -> tuple[Floats, Floats]:
+def _scan(
+    pair: Pair, grid: Floats, chi2_of: Callable[[float], float]
+) -> tuple[Floats, Floats, Floats]:
+    """chi2 on a grid, made finer about its minimum while few of its values fit; the grid, the chi2
+    and the values that fit."""
     values = np.array([chi2_of(float(x)) for x in grid])
-    return values, pair.fitting(grid, values)
+    for _ in range(FINER_ROUNDS):
+        if not grid.size or pair.fitting(grid, values).size >= FINE_ENOUGH:
+            break
+        best = int(np.argmin(values))
+        low, high = grid[max(best - 1, 0)], grid[min(best + 1, grid.size - 1)]
+        more = np.linspace(low, high, FINE_ENOUGH + 2)[1:-1]
+        grid = np.concatenate([grid, more])
+        values = np.concatenate([values, [chi2_of(float(x)) for x in more]])
+        order = np.argsort(grid, kind="stable")
+        grid, values = grid[order], values[order]
+    return grid, values, pair.fitting(grid, values)
 
 
 def _interval(values: Any, unit: str = "", text: Callable[[float], str] = number_text) -> str:
@@ -226,7 +259,7 @@ def law(pair: Pair) -> Explanation:
     def power(n: float) -> History:
         return History(f"r^-{n:g}", lambda r: r**-n)
 
-    values, good = _scan(pair, grid, lambda n: pair.chi2(power(n), power(n)))
+    grid, values, good = _scan(pair, grid, lambda n: pair.chi2(power(n), power(n)))
     named = {}
     for name, form in LAWS.items():
         history = law_history(LawThrust(form))
@@ -273,7 +306,7 @@ def onset_distance(pair: Pair) -> Explanation:
         own = result.response.own
         return History(f"{own.words} within {r_au:.3g} au", own.g, within_au=r_au)
 
-    values, good = _scan(
+    grid, values, good = _scan(
         pair, grid, lambda r: pair.chi2(within(pair.quiet, r), within(pair.active, r))
     )
     seen = _measured_beyond(pair.quiet.outgassing, good)
@@ -327,7 +360,9 @@ def date(pair: Pair) -> Explanation:
             return History(f"{own.words} from then", own.g, from_d=when)
         return History(f"{own.words} until then", own.g, until_d=when)
 
-    values, good = _scan(pair, grid, lambda t: pair.chi2(cut(pair.quiet, t), cut(pair.active, t)))
+    grid, values, good = _scan(
+        pair, grid, lambda t: pair.chi2(cut(pair.quiet, t), cut(pair.active, t))
+    )
     best = float(values.min())
     what = "begins" if pair.quiet_is_earlier else "ends"
     if not good.size:
@@ -360,18 +395,6 @@ def _sphere(n: int = 3000) -> Floats:
     angle = np.pi * (1.0 + math.sqrt(5.0)) * np.arange(n)
     ring = np.sqrt(1.0 - z**2)
     return np.stack([ring * np.cos(angle), ring * np.sin(angle), z], axis=1)
-
-
-def percent(share: float) -> str:
-    """A share as a percentage, in words where it is next to none."""
-    if share > 0.995:
-        return "nearly all"
-    return "under 0.01 %" if share < 1e-4 else f"{100 * share:.2g} %"
-
-
-def chance_text(probability: float) -> str:
-    """A probability; those beyond the floating-point range as a bound."""
-    return "under 1e-300" if probability < 1e-300 else number_text(probability, 2)
 
 
 def missed_fraction(found: Misfit, size_au_d2: float, outward: bool = False) -> float:
@@ -410,13 +433,15 @@ def rotated(pair: Pair) -> Explanation:
             where.append(point)
         return value, where
 
-    sizes = centre * np.geomspace(0.03, 3.0, 61)
-    values = np.array([at(float(size))[0] for size in sizes])
-    sizes = np.concatenate([sizes, sizes[np.argmin(values)] * np.geomspace(0.93, 1.07, 29)])
-    values = np.array([at(float(size))[0] for size in sizes])
+    sizes = np.log(centre) + np.linspace(math.log(0.03), math.log(3.0), 61)
+    values = [at(math.exp(x))[0] for x in sizes]
     best = int(np.argmin(values))
-    low, points = at(float(sizes[best]))
-    size = float(sizes[best])
+    around = (float(sizes[max(best - 1, 0)]), float(sizes[min(best + 1, 60)]))
+    found = minimize_scalar(
+        lambda x: at(math.exp(x))[0], bounds=around, method="bounded", options={"xatol": 1e-6}
+    )
+    size = math.exp(float(found.x))
+    low, points = at(size)
     probability = pair.probability(low, dof)
     cosine = float(points[0] @ points[1]) / size**2
     turn = math.degrees(math.acos(max(-1.0, min(1.0, cosine))))
@@ -503,7 +528,7 @@ def amplitude_ratios(pair: Pair) -> tuple[Floats, float, float]:
     responses = [pair.quiet.response, pair.active.response]
     asked = [response.ask(response.own) for response in responses]
     censored = any(response.allowed_sigma for response in responses)
-    values, good = _scan(pair, grid, lambda s: settle(asked, [s, 1.0], censored)[0])
+    grid, values, good = _scan(pair, grid, lambda s: settle(asked, [s, 1.0], censored)[0])
     return good, float(grid[np.argmin(values)]), float(values.min())
 
 

@@ -1,4 +1,4 @@
-"""Invented arcs of five classes with about 300 records each, and fits of them, for tests of the limits room.
+"""Invented arcs of five classes with about 300 records each, and fits of them, for tests.
 
 Nights are drawn where the object stands more than 60 degrees from the Sun; each night one of two
 stations takes a few records, with an independent error of each record and one shared by the night.
@@ -22,7 +22,7 @@ ERRORS = ErrorModel(night_common_arcsec=COMMON_ARCSEC)
 
 @dataclass(frozen=True)
 class ArcClass:
-    """Elements (cometary, epoch and tp in TDB days past J2000.0), first day (MJD), span and nights."""
+    """Elements (cometary; epoch, tp in TDB days past J2000.0), first day (MJD), span, nights."""
 
     name: str
     elements: dict[str, float]

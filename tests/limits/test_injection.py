@@ -124,9 +124,7 @@ def test_interrupted_injection_resumes_to_the_same_numbers(tmp_path, stop_at):
             raise Interrupted
 
     with pytest.raises(Interrupted):
-        inject_and_recover(
-            Fragile(), np.zeros(3), n=300, seed=8, checkpoint=path, progress=kill
-        )
+        inject_and_recover(Fragile(), np.zeros(3), n=300, seed=8, checkpoint=path, progress=kill)
     rest = Fragile()
     resumed = inject_and_recover(rest, np.zeros(3), n=300, seed=8, checkpoint=path)
     assert rest.given == 300 - 64 * stop_at

@@ -92,9 +92,7 @@ def test_one_component_with_the_others_held(push):
 
 def test_noise_of_the_model_has_its_covariance(push):
     model = ExactRefit(push)
-    white = np.array(
-        [model.noise.whiten(model.draw(np.random.default_rng(i))) for i in range(400)]
-    )
+    white = np.array([model.noise.whiten(model.draw(np.random.default_rng(i))) for i in range(400)])
     assert np.mean(white**2) == pytest.approx(1.0, abs=0.02)
     correlation = white.T @ white / len(white) - np.eye(white.shape[1])
     assert np.max(np.abs(correlation)) < 0.4
@@ -103,9 +101,7 @@ def test_noise_of_the_model_has_its_covariance(push):
 
 def test_noise_of_the_residuals_has_their_size(push):
     model = ExactRefit(push, noise="residuals")
-    white = np.array(
-        [model.noise.whiten(model.draw(np.random.default_rng(i))) for i in range(400)]
-    )
+    white = np.array([model.noise.whiten(model.draw(np.random.default_rng(i))) for i in range(400)])
     expected = np.mean([np.mean(np.concatenate(donors) ** 2) for donors in model._donors])
     assert expected == pytest.approx(push.chi2 / push.dof, rel=0.25)
     assert np.mean(white**2) == pytest.approx(expected, rel=0.03)

@@ -1,0 +1,101 @@
+"""Speed of posterior and injections beside the plain twin, in one run.
+
+    python -m tests.benchmarks.limits_speed [--file data_demo/quiet.psv] [--no-twin]
+
+Warm: the arc is fitted and everything compiled before the clock starts. The plain twin evaluates
+the same likelihood with SciPy's DOP853 and jplephem (dense output, light time, tangent plane,
+whitening); its time for the whole job is extrapolated from a few evaluations. An injection costs it
+a Gauss-Newton fit with and without thrust: three sweeps each, a sweep being one evaluation and one
+more for each parameter.
+"""
+
+import argparse
+import time
+from pathlib import Path
+
+import numpy as np
+
+from ngbound.arc import read_arc
+from ngbound.fit import Fit, fit_orbit
+from ngbound.limits import (
+    detection_threshold,
+    inject_and_recover,
+    sample_posterior,
+    upper_limit,
+)
+from ngbound.motion import Sight, Thrust, residuals
+from tests.benchmarks.plain_twin import plain_track
+from tests.limits.arcs import CLASSES, fitted
+
+LIGHT_TIME_SWEEPS = 4
+C_AU_D = 173.14463267424034
+"""IAU 2012 au over the defined speed of light."""
+
+
+def twin_chi2(fit: Fit, theta: np.ndarray) -> float:
+    """chi2 of one parameter vector, the plain way."""
+    records, hood = fit.records.subset(fit.keep), fit.neighbourhood
+    tau = records.tdb_d - hood.epoch_d
+    reach = 2.0 * float(np.max(np.linalg.norm(hood.sight.rho_au, axis=1))) / C_AU_D
+    legs = [plain_track(hood.epoch_d, theta[:6], end, theta[6:], True)
+            for end in (tau.min() - reach, tau.max())]  # fmt: skip
+
+    def state(at: np.ndarray) -> np.ndarray:
+        return np.where(at < 0.0, legs[0](at), legs[1](at)).T
+
+    emitted = tau.copy()
+    for _ in range(LIGHT_TIME_SWEEPS):
+        rho = state(emitted)[:, :3] - records.observer_au
+        emitted = tau - np.linalg.norm(rho, axis=1) / C_AU_D
+    here = state(emitted)
+    seen = residuals(Sight(here[:, :3] - records.observer_au, here[:, 3:], emitted), records)
+    return float(np.sum(fit.noise.mask(fit.keep).whiten(seen.ravel()) ** 2))
+
+
+def measure(name: str, fit: Fit, twin: bool) -> None:
+    """Both jobs on one fit."""
+    print(f"\n{name}: {fit.n_obs} records")
+    fit.chi2_many(np.tile(fit.theta, (64, 1)))
+    begin = time.perf_counter(), time.process_time()
+    posterior = sample_posterior(fit, seed=1)
+    upper_limit(posterior)
+    spent = time.perf_counter() - begin[0], time.process_time() - begin[1]
+    least = min(posterior.ess[c] for c in [*fit.names[6:], "|A|"])
+    print(f"  posterior and limit: {least:.0f} effective samples from {posterior.evaluations} exact "
+          f"orbits, {spent[0]:.2f} s wall, {spent[1]:.2f} s CPU")  # fmt: skip
+    threshold = detection_threshold(fit)
+    pushed = threshold.worst.value * threshold.worst_direction
+    inject_and_recover(fit, pushed, n=64, seed=1)
+    for words, choice in (("", {}), (", outlier rule included", {"reject": True})):
+        begin = time.perf_counter(), time.process_time()
+        found = inject_and_recover(fit, pushed, n=2000, seed=2, **choice)
+        done = time.perf_counter() - begin[0], time.process_time() - begin[1]
+        print(f"  2000 complete injections{words}: {done[0]:.2f} s wall, {done[1]:.2f} s CPU; power "
+              f"{found.declared}")  # fmt: skip
+    if not twin:
+        return
+    begin = time.perf_counter(), time.process_time()
+    n = 3
+    values = [twin_chi2(fit, fit.theta) for _ in range(n)]
+    each = (time.process_time() - begin[1]) / n
+    sweeps = 3 * (1 + 6 + 1 + fit.theta.size)
+    print(f"  plain twin: {each:.2f} s CPU for one orbit (chi2 {values[0]:.3f}, here "
+          f"{fit.chi2:.3f}); the posterior would take it {each * posterior.evaluations / 3600:.1f} h "
+          f"and the injections {each * 2000 * sweeps / 3600:.0f} h")  # fmt: skip
+
+
+def main() -> None:
+    parser = argparse.ArgumentParser(description=__doc__.split("\n")[0])
+    parser.add_argument("--file", type=Path, help="an arc of your own, such as the demo's")
+    parser.add_argument("--no-twin", action="store_true")
+    choice = parser.parse_args()
+    if choice.file is not None:
+        arc = read_arc(choice.file)
+        push = fit_orbit(arc, Thrust("inverse-square"), initial=fit_orbit(arc))
+        measure(arc.name, push, not choice.no_twin)
+    for name in ("hyperbolic, 90 days", "main belt, 10 years"):
+        measure(name, fitted(CLASSES[name]), not choice.no_twin)
+
+
+if __name__ == "__main__":
+    main()
