@@ -10,8 +10,9 @@ from ngbound.arc.ades_psv import write_psv
 from ngbound.arc.ades_rules import COLUMNS as ADES_COLUMNS
 from ngbound.arc.ades_xml import write_xml
 from ngbound.arc.catalogue_offsets import CataloguePrior, catalogue_priors, prior_of, seasons
+from ngbound.arc.checking import offset_arcsec
 from ngbound.arc.errors_model import ErrorModel, Factors, Noise, station_nights, weight_table
-from ngbound.arc.observations import Arc
+from ngbound.arc.observations import REASON_OFFSET, Arc
 from ngbound.arc.reading import read_arc
 from ngbound.arc.shared_errors import Modes, SharedErrors
 from ngbound.arc.stations import (
@@ -37,6 +38,7 @@ __all__ = [
     "Gap",
     "Modes",
     "Noise",
+    "REASON_OFFSET",
     "Range",
     "SharedErrors",
     "Station",
@@ -45,6 +47,7 @@ __all__ = [
     "geodetic_to_itrf_km",
     "catalogue_priors",
     "prior_of",
+    "offset_arcsec",
     "read_arc",
     "record_position_km",
     "seasons",

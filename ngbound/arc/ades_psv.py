@@ -39,9 +39,11 @@ class _Block:
     context: int
     spans: list[tuple[int, int]] = field(default_factory=list)
 
-    def rows(self) -> NDArray[np.int64]:
-        """Every row."""
-        return np.concatenate([np.arange(a, b, dtype=np.int64) for a, b in self.spans])
+    def rows(self, lines: Lines) -> NDArray[np.int64]:
+        """Every row that is not blank."""
+        rows = np.concatenate([np.arange(a, b, dtype=np.int64) for a, b in self.spans])
+        filled = lines.first[rows] != 0
+        return rows if filled.all() else rows[filled]
 
 
 @dataclass
@@ -88,7 +90,7 @@ def psv_records(text: str, source: str) -> Records:
     coded: dict[str, Coded] = {}
     packed: dict[str, Packed] = {}
     for block in blocks:
-        rows.append(block.rows())
+        rows.append(block.rows(lines))
         n = len(rows[-1])
         kinds.append(np.full(n, _kind(block, source), dtype=object))
         texts, coded, packed = _cells(block, lines, rows[-1], source)
@@ -164,17 +166,18 @@ def _split(lines: Lines, source: str) -> tuple[str, list[_Header], list[_Block]]
     blocks: list[_Block] = []
     block: _Block | None = None
     in_header = False
-    special = np.flatnonzero(~lines.plainly_data())
+    filled = lines.first != 0
+    special = np.flatnonzero(~lines.plainly_data() & filled)
     ends = [*special[1:].tolist(), len(lines)] if len(special) else []
-    if not len(special) or special[0] > 0:
-        version = _version(lines.text(0), source, 1)
+    opening = int(np.argmax(filled))
+    if not len(special) or special[0] > opening:
+        version = _version(lines.text(opening), source, opening + 1)
+    count = np.concatenate([[0], np.cumsum(filled)])
     for index, end in zip(special.tolist(), ends, strict=True):
         number, line = index + 1, lines.text(index)
         span = (index + 1, end)
         first = line[:1]
-        if not line:
-            pass
-        elif not version:
+        if not version:
             version = _version(line, source, number)
         elif first == "#":
             if not in_header:
@@ -222,19 +225,19 @@ def _split(lines: Lines, source: str) -> tuple[str, list[_Header], list[_Block]]
             in_header = False
         else:
             span = (index, end)
-        if span[0] < span[1] and block is None:
-            if not version:
-                version = _version(lines.text(span[0]), source, span[0] + 1)
+        if count[span[0]] == count[span[1]]:
+            continue
+        if block is None:
+            number = span[0] + 1 + int(np.argmax(filled[span[0] : span[1]]))
             raise ArcError(
-                f"{source}, line {span[0] + 1}: a record stands before any keyword row. "
+                f"{source}, line {number}: a record stands before any keyword row. "
                 "Put the row of column names (permID|mode|stn|...) above it.",
                 file=source,
-                line=span[0] + 1,
+                line=number,
             )
-        if span[0] < span[1] and block is not None:
-            if block.spans and block.spans[-1][1] == span[0]:
-                span = (block.spans.pop()[0], span[1])
-            block.spans.append(span)
+        if block.spans and block.spans[-1][1] == span[0]:
+            span = (block.spans.pop()[0], span[1])
+        block.spans.append(span)
     return version, headers, blocks
 
 

@@ -188,9 +188,9 @@ def _spell_offset_errors(arc: Arc, cells: dict[str, ObjectArray]) -> None:
         cells[name][polar] = ""
     if "corrReported" in arc.table:
         reported = arc.table["corrReported"].to_numpy(dtype=float)
-        turned = polar & (cells["rmsCorr"] != "") & (cells.get("rmsDist", polar) != "")
+        turned = polar & (cells["rmsDist"] != "") & (cells["rmsPA"] != "")
         rule = COLUMNS["rmsCorr"]
-        for row in np.flatnonzero(turned & (arc.table["kind"] == OCCULTATION).to_numpy()):
+        for row in np.flatnonzero(turned):
             value = reported[row]
             cells["rmsCorr"][row] = "" if value != value else _number(value, rule)
 

@@ -22,6 +22,9 @@ NEAR_DEG = 1.0
 between the neighbours; the report is wrong when it is `FAR` times farther off."""
 NEAR_SHARE = 0.3
 FAR = 4.0
+END_RATES = 1.5
+"""At an end of the arc only one neighbour is there; the prediction may be off by this many times
+the usual motion."""
 TRACK_ARCSEC = 60.0
 TRACK_DEG_D = 5.0
 """Two positions of a night belong to one track when they are no farther apart than this, plus this
@@ -68,11 +71,15 @@ def misread(time_d: FloatArray, ra_rad: FloatArray, dec_rad: FloatArray) -> list
         return []
     edges = [0, *cuts.tolist(), len(t)]
     found = []
-    for low, high in zip(edges[:-1], edges[1:], strict=True):
+    trusted = np.ones(len(t), dtype=bool)
+    pieces = sorted(zip(edges[:-1], edges[1:], strict=True), key=lambda p: p[1] - p[0])
+    for low, high in pieces:
         if 2 * (high - low) > len(t) - (high - low):
             continue
         inside = np.arange(low, high)
-        predicted, slack = _predicted(t, here, low, high)
+        before, behind = np.flatnonzero(trusted[:low]), high + np.flatnonzero(trusted[high:])
+        ends = (int(before[-1]) if len(before) else -1, int(behind[0]) if len(behind) else -1)
+        predicted, slack = _predicted(t, here, inside, ends, usual)
         off = apart_deg(here[inside], predicted)
         for reading, (other_ra, other_dec) in {
             "ra-in-hours": (ra[inside] * 15.0, dec[inside]),
@@ -83,22 +90,27 @@ def misread(time_d: FloatArray, ra_rad: FloatArray, dec_rad: FloatArray) -> list
             right = (there < slack) & (off > FAR * np.maximum(there, 0.25 * slack))
             if right.any():
                 rows = tuple(sorted(int(r) for r in order[inside[right]]))
+                trusted[inside[right]] = False
                 found.append(Misread(rows, reading, float(np.median(off[right]))))
                 break
-    return found
+    return sorted(found, key=lambda piece: piece.rows)
 
 
-def _predicted(t: FloatArray, here: FloatArray, low: int, high: int) -> tuple[FloatArray, float]:
-    """Directions that the neighbours before and behind predict for the rows low..high-1, and how
-    far they may be wrong (deg)."""
-    if low == 0:
-        return np.repeat(here[high : high + 1], high - low, axis=0), NEAR_DEG
-    if high == len(t):
-        return np.repeat(here[low - 1 : low], high - low, axis=0), NEAR_DEG
-    share = ((t[low:high] - t[low - 1]) / max(t[high] - t[low - 1], 1e-9))[:, None]
-    between = (1.0 - share) * here[low - 1] + share * here[high]
+def _predicted(
+    t: FloatArray, here: FloatArray, inside: IntArray, ends: tuple[int, int], usual_deg_d: float
+) -> tuple[FloatArray, float]:
+    """Directions that the neighbours before and behind (-1 when there is none) predict for some
+    rows, and how far they may be wrong (deg)."""
+    before, behind = ends
+    if before < 0 or behind < 0:
+        near = max(before, behind)
+        gap_d = float(np.abs(t[inside] - t[near]).max())
+        slack = NEAR_DEG + END_RATES * usual_deg_d * gap_d
+        return np.repeat(here[near : near + 1], len(inside), axis=0), slack
+    share = ((t[inside] - t[before]) / max(t[behind] - t[before], 1e-9))[:, None]
+    between = (1.0 - share) * here[before] + share * here[behind]
     between /= np.maximum(np.linalg.norm(between, axis=1, keepdims=True), 1e-9)
-    return between, NEAR_DEG + NEAR_SHARE * float(apart_deg(here[low - 1], here[high]))
+    return between, NEAR_DEG + NEAR_SHARE * float(apart_deg(here[before], here[behind]))
 
 
 def second_tracks(time_d: FloatArray, ra_rad: FloatArray, dec_rad: FloatArray) -> list[IntArray]:

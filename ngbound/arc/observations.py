@@ -90,7 +90,7 @@ DERIVED = (
 """Columns that ngbound adds to those of ADES."""
 
 REASON_RADAR = "radar is not used in fits yet"
-REASON_OFFSET = "offsets from another body are not used in fits yet"
+REASON_OFFSET = "an offset from another body, not reduced to a position"
 REASON_RESIDUAL = "a residual record holds no observed position"
 REASON_DEPRECATED = "marked as deprecated"
 REASON_NO_POSITION = "the record gives no position of the {site} station"
@@ -421,8 +421,8 @@ def assemble(
 
 
 def _error_of_offset(columns: dict[str, Any], kind: ObjectArray) -> None:
-    """Errors given as rmsDist (arcsec) and rmsPA (deg), turned into rmsRA, rmsDec, rmsCorr of
-    occultations; the correlation as reported stays in corrReported."""
+    """Errors given as rmsDist (arcsec) and rmsPA (deg), turned into rmsRA, rmsDec and rmsCorr; the
+    correlation as reported stays in corrReported."""
     if not {"dist", "pa", "rmsDist", "rmsPA"} <= set(columns):
         return
     s_d, s_p = columns["rmsDist"], np.radians(columns["rmsPA"]) * columns["dist"]
@@ -433,7 +433,8 @@ def _error_of_offset(columns: dict[str, Any], kind: ObjectArray) -> None:
     var_ra = (s_d * sin) ** 2 + (s_p * cos) ** 2 + 2.0 * cov * sin * cos
     var_dec = (s_d * cos) ** 2 + (s_p * sin) ** 2 - 2.0 * cov * sin * cos
     both = (s_d**2 - s_p**2) * sin * cos + cov * (cos**2 - sin**2)
-    take = (kind == OCCULTATION) & np.isfinite(var_ra) & ~np.isfinite(columns["rmsRA"])
+    polar = np.isin(kind, (OCCULTATION, OFFSET))
+    take = polar & np.isfinite(var_ra) & ~np.isfinite(columns["rmsRA"])
     columns["rmsRA"] = np.where(take, np.sqrt(np.fmax(var_ra, 0.0)), columns["rmsRA"])
     columns["rmsDec"] = np.where(take, np.sqrt(np.fmax(var_dec, 0.0)), columns["rmsDec"])
     with np.errstate(invalid="ignore", divide="ignore"):

@@ -19,6 +19,7 @@ from ngbound.errors import ArcError
 
 KEY = "ngbound"
 
+
 def write_table(table: pd.DataFrame, notes: dict[str, Any], path: PathLike) -> None:
     """Write a table and its notes (JSON-able) in one step; ArcError without pyarrow."""
     _need_pyarrow()

@@ -26,6 +26,9 @@ SMALLEST_ARCSEC = 0.05
 SIGNIFICANT = 4.0
 SMALLEST_FRACTION = 0.25
 LARGEST_FRACTION = 1.5
+ALIKE = 0.8
+"""Stations whose significance is at least this share of the greatest are equally suspect."""
+MOST_STATIONS = 5
 J2000_MJD = 51544.5
 
 
@@ -68,53 +71,77 @@ def time_shifts(arc: Arc) -> list[TimeShift]:
     time_d = time_d[rows]
     stn = table["stn"].to_numpy(dtype=object)[rows]
     exp_d = table["exp"].to_numpy(dtype=float)[rows] / 86400.0
-    told: dict[str, list[tuple[float, float, float]]] = {}
+    windows = []
     begin = 0
     for at in range(1, len(rows) + 1):
         if at < len(rows) and time_d[at] - time_d[begin] <= WINDOW_D:
             continue
         window = np.arange(begin, at)
         begin = at
-        codes = sorted(set(stn[window]))
-        if len(window) < FEWEST_ROWS or len(codes) < 2:
-            continue
-        problem = _Window(arc, rows[window], time_d[window], stn[window])
-        for code in codes:
-            known = (stn[window] == code) & np.isfinite(exp_d[window])
-            if known.any():
-                answer = problem.fraction(known, exp_d[window])
-                if answer is not None:
-                    told.setdefault(code, []).append(answer)
-    found = []
-    for code, answers in told.items():
-        f, s, shift = np.array(answers).T
-        weight = 1.0 / s**2
-        fraction, sigma = float((f * weight).sum() / weight.sum()), float(weight.sum() ** -0.5)
-        spread = float(np.sqrt(max(((f - fraction) ** 2 * weight).sum() / max(len(f) - 1, 1), 1.0)))
-        sigma *= spread
-        if abs(fraction) > SIGNIFICANT * sigma and (
-            SMALLEST_FRACTION <= abs(fraction) <= LARGEST_FRACTION
-        ):
-            mine = rows[(stn == code) & np.isfinite(exp_d)]
-            found.append(
-                TimeShift(
-                    tuple(sorted(int(r) for r in mine)),
-                    code,
-                    fraction,
-                    sigma,
-                    float(np.median(shift)) * abs(fraction),
-                )
-            )
+        if len(window) >= FEWEST_ROWS and len(set(stn[window])) >= 2:
+            windows.append(_Window(arc, rows[window], time_d[window], stn[window], exp_d[window]))
+    found: list[TimeShift] = []
+    while len(found) < MOST_STATIONS:
+        known = [shift.station for shift in found]
+        answers = {code: _average(windows, code, known) for code in sorted(set(stn) - set(known))}
+        worst = _most_doubtful({code: a for code, a in answers.items() if a is not None})
+        if worst is None:
+            break
+        code, (fraction, sigma, motion) = worst
+        mine = rows[(stn == code) & np.isfinite(exp_d)]
+        shifted = tuple(sorted(int(r) for r in mine))
+        found.append(TimeShift(shifted, code, fraction, sigma, motion * abs(fraction)))
     return found
+
+
+Answer = tuple[float, float, float]
+
+
+def _average(windows: list["_Window"], code: str, known: list[str]) -> Answer | None:
+    """Fraction, its standard deviation and motion per exposure (arcsec) of a station over all
+    windows that can tell; the fractions of the stations in ``known`` are left free."""
+    answers = [a for w in windows if (a := w.fraction(code, known)) is not None]
+    if not answers:
+        return None
+    f, s, motion = np.array(answers).T
+    weight = 1.0 / s**2
+    mean, sigma = float((f * weight).sum() / weight.sum()), float(weight.sum() ** -0.5)
+    scatter = float(((f - mean) ** 2 * weight).sum()) / max(len(f) - 1, 1)
+    return mean, sigma * max(scatter, 1.0) ** 0.5, float(np.median(motion))
+
+
+def _most_doubtful(answers: dict[str, Answer]) -> tuple[str, Answer] | None:
+    """The station whose fraction is most significant, among those of a plausible size. Two
+    stations alone accuse each other alike: the early one is taken, for instants are written at the
+    start of an exposure far more often than at its end."""
+    doubtful = {
+        code: answer
+        for code, answer in answers.items()
+        if abs(answer[0]) > SIGNIFICANT * answer[1]
+        and SMALLEST_FRACTION <= abs(answer[0]) <= LARGEST_FRACTION
+    }
+    if not doubtful:
+        return None
+    strength = {code: abs(f) / s for code, (f, s, _) in doubtful.items()}
+    strongest = max(strength.values())
+    alike = [code for code in doubtful if strength[code] > ALIKE * strongest]
+    first = max(alike, key=lambda code: (doubtful[code][0] > 0.0, strength[code]))
+    return first, doubtful[first]
 
 
 class _Window:
     """The positions of one day on the plane that touches the sky at their middle, in arcsec."""
 
     def __init__(
-        self, arc: Arc, rows: NDArray[np.int64], time_d: FloatArray, stn: NDArray[np.object_]
+        self,
+        arc: Arc,
+        rows: NDArray[np.int64],
+        time_d: FloatArray,
+        stn: NDArray[np.object_],
+        exp_d: FloatArray,
     ) -> None:
         table = arc.table
+        self.stn, self.exp_d = stn, exp_d
         ra = table["ra_rad"].to_numpy(dtype=float)[rows]
         dec = table["dec_rad"].to_numpy(dtype=float)[rows]
         self.time_d = time_d - time_d.mean()
@@ -154,26 +181,24 @@ class _Window:
         )
         return -np.stack([east, north])
 
-    def fraction(
-        self, mine: NDArray[np.bool_], exp_d: FloatArray
-    ) -> tuple[float, float, float] | None:
-        """Fraction of the exposure, its standard deviation, and motion times exposure (arcsec);
-        None when the window cannot tell."""
+    def fraction(self, code: str, known: list[str]) -> Answer | None:
+        """Fraction of the exposure for one station, its standard deviation, and motion times
+        exposure (arcsec); None when the window cannot tell."""
         t = self.time_d
-        others = ~mine
-        if others.sum() < 3 or np.ptp(t[others]) <= 0.0:
+        mine = (self.stn == code) & np.isfinite(self.exp_d)
+        others = ~np.isin(self.stn, [code, *known])
+        if not mine.any() or others.sum() < 3 or np.ptp(t[others]) <= 0.0:
             return None
         rate = np.array([np.polyfit(t, axis, 1)[0] for axis in self.sky])
         power = np.stack([np.ones_like(t), t, t * t])
-        shift = rate[:, None] * np.where(mine, exp_d, 0.0)
+        shifts = [
+            rate[:, None] * np.where((self.stn == c) & np.isfinite(self.exp_d), self.exp_d, 0.0)
+            for c in (*[c for c in known if c in self.stn], code)
+        ]
         nothing = np.zeros_like(power)
-        design = np.concatenate(
-            [
-                np.concatenate([power, nothing, self.parallax[:1], shift[:1]]),
-                np.concatenate([nothing, power, self.parallax[1:], shift[1:]]),
-            ],
-            axis=1,
-        ).T
+        along_ra = [power, nothing, self.parallax[:1], *(shift[:1] for shift in shifts)]
+        along_dec = [nothing, power, self.parallax[1:], *(shift[1:] for shift in shifts)]
+        design = np.concatenate([np.concatenate(along_ra), np.concatenate(along_dec)], axis=1).T
         sigma = self.sigma.ravel()
         weighted = design / sigma[:, None]
         scale = np.linalg.norm(weighted, axis=0)
@@ -189,5 +214,5 @@ class _Window:
         spread = max(float(left @ left) / (len(sigma) - rank), 1.0)
         f = float(answer[-1] / scale[-1])
         s = float(np.sqrt(covariance[-1, -1] * spread) / scale[-1])
-        along = float(np.hypot(*rate) * np.median(exp_d[mine]))
+        along = float(np.hypot(*rate) * np.median(self.exp_d[mine]))
         return (f, s, along) if np.isfinite(f) and 0.0 < s < 10.0 else None

@@ -23,7 +23,7 @@ JUMP_DEG_D = 10.0
 neighbours."""
 JUMP_SLACK_ARCSEC = 15.0
 FEWEST = 3
-MOST_AT_ONCE = 20
+MOST_AT_ONCE = 5
 """Records of one station at one instant that are compared with each other."""
 READINGS = {
     "ra-in-hours": "its right ascension, taken as hours, fits",

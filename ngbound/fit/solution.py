@@ -221,6 +221,7 @@ class Fit:
             self.thrust,
             self.components,
             self.orbit.forces,
+            modes=self._kept_noise.mode_rows(),
         )
 
     @cached_property
@@ -229,14 +230,7 @@ class Fit:
 
     def chi2_many(self, thetas: ArrayLike) -> Floats:
         """Exact chi2 (m,) of parameter vectors (m, p); inf where an orbit cannot be integrated."""
-        if self._kept_noise.modes is None:
-            return self.neighbourhood.chi2(thetas)
-        chi2, seen = self.neighbourhood.chi2(thetas, want_residuals=True)
-        good = np.isfinite(chi2)
-        if good.any():
-            white = self._kept_noise.whiten(seen[good].reshape(int(good.sum()), -1).T)
-            chi2[good] = np.sum(white**2, axis=0)
-        return chi2
+        return self.neighbourhood.chi2(thetas)
 
     @property
     def distance_range_au(self) -> tuple[float, float]:

@@ -32,6 +32,7 @@ Anchor: N observations uniform over T, constant acceleration across the sightlin
 sigma_A -> sigma_theta D sqrt(720 / N) / T^2 (R. L. Gluckstern 1963, NIM 24, 381).
 """
 
+from ngbound.limits.degeneracy import Degeneracy, orbit_degeneracy
 from ngbound.limits.fit_protocol import GaussianFit, ThrustFit
 from ngbound.limits.forecast import Forecast, PlannedNight, forecast
 from ngbound.limits.growth import ThresholdGrowth, threshold_growth
@@ -62,6 +63,7 @@ __all__ = [
     "AU_D2",
     "LIKELIHOODS",
     "PRIOR_NAMES",
+    "Degeneracy",
     "DetectionThreshold",
     "DirectionMap",
     "ExactRefit",
@@ -88,6 +90,7 @@ __all__ = [
     "forecast",
     "inject_and_recover",
     "noncentrality",
+    "orbit_degeneracy",
     "power_curve",
     "profile_limit",
     "sample_posterior",

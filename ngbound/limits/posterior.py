@@ -32,7 +32,7 @@ from ngbound.limits.checkpoint import load_whole, mark_of, save_whole
 from ngbound.limits.convergence import autocorrelation_time, split_r_hat
 from ngbound.limits.fit_protocol import ThrustFit
 from ngbound.limits.information import AU_D2, ThrustInformation, thrust_information
-from ngbound.limits.likelihood import deviance_of
+from ngbound.limits.likelihood import Deviance, about_its_mode, deviance_of
 from ngbound.limits.linear_posterior import LinearPosterior, linear_posterior, log_sum_exp
 from ngbound.limits.priors import ThrustPrior, thrust_prior
 
@@ -47,7 +47,8 @@ PILOT_STEPS = 12
 BURN_SHARE = 0.1
 INFLATIONS = (1.0, 1.5)
 INFLATION_SHARES = (0.8, 0.2)
-CHUNK_STEPS = 200
+CHUNK_STEPS = 50
+CHUNK_SHARE = 0.1
 
 Progress = Callable[[int, int, str], None]
 
@@ -266,10 +267,11 @@ class _Target:
         information: ThrustInformation,
         prior: ThrustPrior,
         noise_free: bool,
-        likelihood: str = "gaussian",
+        likelihood: str,
+        deviance: Deviance,
     ) -> None:
         self.fit, self.information, self.prior = fit, information, prior
-        self.likelihood, self.deviance = likelihood, deviance_of(fit, likelihood)
+        self.likelihood, self.deviance = likelihood, deviance
         if noise_free and likelihood != "gaussian":
             raise LimitError(
                 f"A free noise scale needs the gaussian likelihood; {likelihood} has its own "
@@ -458,9 +460,11 @@ def sample_posterior(
     SamplingError
         If the exact model fails about the solution, or the checkpoint belongs to another problem.
     """
+    deviance = deviance_of(fit, likelihood)
+    fit = about_its_mode(fit, likelihood)
     information = thrust_information(fit)
     belief = thrust_prior(information, prior, lower_au_d2=lower_au_d2, upper_au_d2=upper_au_d2)
-    target = _Target(fit, information, belief, noise_scale, likelihood)
+    target = _Target(fit, information, belief, noise_scale, likelihood, deviance)
     walkers = max(64, 4 * target.p) if n_walkers is None else n_walkers
     if walkers % 2 or walkers < 2 * target.p:
         raise LimitError(
@@ -484,7 +488,9 @@ def sample_posterior(
         target.evaluations = run.evaluations
     while True:
         while len(run.chain) < run.goal:
-            steps = min(CHUNK_STEPS, run.goal - len(run.chain))
+            # ever longer, so that writing the whole chain each time costs little
+            chunk = max(CHUNK_STEPS, int(CHUNK_SHARE * len(run.chain)))
+            steps = min(chunk, run.goal - len(run.chain))
             _advance(target, proposal, run, steps, walkers)
             if path is not None:
                 _save(path, run, mark)

@@ -4,6 +4,7 @@ May import: errors, arc, fit, and from its own room arithmetic, arc_geometry, qu
 threshold_readings.
 """
 
+import html
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -70,6 +71,9 @@ class Audit:
             str(part) for part in (self.numbers, self.threshold, self.geometry) if part is not None
         ]
         return "\n".join(parts)
+
+    def _repr_html_(self) -> str:
+        return f"<pre>{html.escape(str(self))}</pre>"
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able record."""

@@ -33,6 +33,8 @@ from .thrust_history import ArcResponse, History, Misfit, joint, law_history, se
 Floats = NDArray[np.float64]
 POSSIBLE, STRAINED, EXCLUDED, UNTESTABLE = "possible", "strained", "excluded", "not testable"
 ORDER = (POSSIBLE, STRAINED, EXCLUDED, UNTESTABLE)
+SHALLOWEST, STEEPEST = -2.0, 30.0
+"""Exponents n of r^-n that are tried."""
 N_DRAWS = 4000
 FINER_ROUNDS = 4
 FINE_ENOUGH = 9
@@ -81,6 +83,8 @@ class Range:
     @property
     def ground(self) -> str:
         """Source and status."""
+        if self.status in self.source:
+            return self.source
         return f"{self.source} ({self.status})"
 
     def to_dict(self) -> dict[str, Any]:
@@ -254,7 +258,7 @@ def _interval(values: Any, unit: str = "", text: Callable[[float], str] = number
 def law(pair: Pair) -> Explanation:
     """Another fall-off of the thrust with distance, the same for both."""
     title = "another thrust law"
-    grid = np.arange(-2.0, 30.01, 0.25)
+    grid = np.arange(SHALLOWEST, STEEPEST + 0.01, 0.25)
 
     def power(n: float) -> History:
         return History(f"r^-{n:g}", lambda r: r**-n)
@@ -276,7 +280,13 @@ def law(pair: Pair) -> Explanation:
         "named_laws": agreeing,
     }
     if good.size:
-        sentence = f"a fall-off as r^-n with n of {_interval(good)} would fit both"
+        low, high = float(good.min()), float(good.max())
+        wanted = _interval(good)
+        if high >= STEEPEST:
+            wanted = f"{number_text(low)} or more"
+        elif low <= SHALLOWEST:
+            wanted = f"{number_text(high)} or less"
+        sentence = f"a fall-off as r^-n with n of {wanted} would fit both"
     else:
         sentence = "no power of r between r^2 and r^-30 makes one thrust fit both"
     told = [name for name in agreeing if not name.startswith("power-")]
@@ -725,7 +735,11 @@ def density(
 ) -> Explanation:
     """The bulk density at which the masses and the diameters of the results agree."""
     title = "a density that makes masses and sizes agree"
-    masses = [(r, draws) for r in results if (draws := r.mass_draws_kg(rng, N_DRAWS)) is not None]
+    masses = [
+        (r, draws)
+        for r in results
+        if (draws := r.mass_draws_kg(rng, N_DRAWS)) is not None and np.all(draws > 0)
+    ]
     sizes = [r for r in results if r.diameter is not None]
     if not masses or not sizes:
         return Explanation(

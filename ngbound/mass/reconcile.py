@@ -3,6 +3,7 @@
 May import: errors, fit, and from its own room explanations, quoted, results, thrust_history.
 """
 
+import html
 import itertools
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
@@ -10,6 +11,7 @@ from pathlib import Path
 from typing import Any
 
 import numpy as np
+import pandas as pd
 from scipy.stats import chi2
 
 from ngbound.errors import CaseError, MassError
@@ -104,6 +106,23 @@ class Reconciliation:
         if assumed:
             lines.append("Assumed: " + "; ".join(assumed) + ".")
         return "\n".join(lines)
+
+    def to_frame(self) -> pd.DataFrame:
+        """The explanations as a table: verdict, best probability and sentence, by key."""
+        rows = {
+            e.key: {
+                "explanation": e.title,
+                "verdict": e.verdict,
+                "probability": e.probability,
+                "sentence": e.sentence,
+            }
+            for e in self.explanations
+        }
+        return pd.DataFrame.from_dict(rows, orient="index")
+
+    def _repr_html_(self) -> str:
+        with pd.option_context("display.max_colwidth", None):
+            return f"<p>{html.escape(self.headline)}</p>{self.to_frame().to_html()}"
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able record."""

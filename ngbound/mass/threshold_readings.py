@@ -14,6 +14,7 @@ from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
+import pandas as pd
 from scipy.stats import chi2, norm
 
 from ngbound.arc import Arc
@@ -272,6 +273,18 @@ class ThresholdAudit:
                 f"{number_text(self.ratio_default_errors)}"
             )
         return "\n".join(lines)
+
+    def to_frame(self) -> pd.DataFrame:
+        """Every reading as a table, the claimed one first: words, value in au/d2, quoted over
+        recomputed, changes from the claim."""
+        return pd.DataFrame(
+            {
+                "reading": [r.words for r in self.all_readings],
+                "value_au_d2": [r.value_au_d2 for r in self.all_readings],
+                "ratio": [r.ratio for r in self.all_readings],
+                "changes": ["; ".join(r.changes) for r in self.all_readings],
+            }
+        )
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able record."""

@@ -32,6 +32,7 @@ from ngbound.sky.ephemeris import (
     naif_body_name,
 )
 from ngbound.sky.observers import Observers, observer_states, station_states
+from ngbound.sky.offsets import reduce_offsets
 from ngbound.sky.sightline import (
     Sightline,
     angles_to_direction,
@@ -72,6 +73,7 @@ __all__ = [
     "naif_body_name",
     "observer_states",
     "parse_time",
+    "reduce_offsets",
     "sky_axes",
     "station_states",
     "tangent_plane_residuals",

@@ -2,8 +2,11 @@
 
 import numpy as np
 import pandas as pd
+import pytest
 
 from ngbound.arc import Arc, vet
+from ngbound.arc.time_stamps import time_shifts
+from ngbound.sky import astrometric, load_ephemeris, station_states, utc_to_tdb_d
 from tests.arc.samples import frame
 
 
@@ -68,3 +71,111 @@ def test_surplus_position() -> None:
     found = vet(Arc.from_frame(table))
     assert [f.kind for f in found] == ["surplus-position"] and len(found[0].rows) == 6
     assert str(found[0]).startswith("surplus-position: 6 records")
+
+
+def long_path(n_nights: int = 12) -> pd.DataFrame:
+    """Three observations a night from two stations in turn, a night a week, 0.4 deg a day."""
+    t0 = np.datetime64("2024-03-01T03:00:00")
+    minutes = np.array([7 * 1440 * k + 20 * i for k in range(n_nights) for i in range(3)])
+    days = minutes / 1440.0
+    return pd.DataFrame(
+        {
+            "permID": "654321",
+            "mode": "CCD",
+            "stn": ["G96" if k % 2 else "703" for k in range(n_nights) for _ in range(3)],
+            "obsTime": [str(t0 + np.timedelta64(int(m), "m")) + "Z" for m in minutes],
+            "ra": 120.0 + 0.4 * days,
+            "dec": 10.0 + 0.1 * days,
+            "astCat": "Gaia2",
+        }
+    )
+
+
+def found(table: pd.DataFrame, kind: str) -> list[tuple[int, ...]]:
+    return [f.rows for f in vet(Arc.from_frame(table)) if f.kind == kind]
+
+
+def test_nothing_is_misread_on_a_clean_path() -> None:
+    assert kinds(long_path()) == []
+
+
+def test_hours_for_degrees() -> None:
+    table = long_path()
+    table.loc[12:14, "ra"] /= 15.0
+    assert found(table, "ra-in-hours") == [(12, 13, 14)]
+    told = [f for f in vet(Arc.from_frame(table)) if f.kind == "ra-in-hours"][0]
+    assert "taken as hours" in told.sentence and "thrust" in told.sentence
+    table = long_path()
+    table["ra"] = table["ra"] - 119.0  # near zero hours, where 15 times the value is in range
+    table.loc[15:17, "ra"] *= 15.0
+    assert found(table, "ra-in-degrees") == [(15, 16, 17)]
+
+
+def test_a_lost_sign() -> None:
+    table = long_path()
+    table.loc[20, "dec"] *= -1.0
+    assert found(table, "declination-sign") == [(20,)]
+    table.loc[0:2, "dec"] *= -1.0
+    assert found(table, "declination-sign") == [(0, 1, 2), (20,)]
+
+
+def test_a_wild_position_is_not_called_misread() -> None:
+    table = long_path()
+    table.loc[12:14, "ra"] += 40.0
+    assert not any(found(table, k) for k in ("ra-in-hours", "ra-in-degrees", "declination-sign"))
+
+
+def test_two_objects_in_one_night() -> None:
+    table = long_path()
+    other = table.iloc[12:14].assign(dec=lambda t: t.dec + 0.3, ra=lambda t: t.ra - 0.2)
+    both = pd.concat([table, other], ignore_index=True)
+    assert found(both, "second-object") == [(36, 37)]
+
+
+@pytest.mark.parametrize(("early", "fraction"), [(0.0, 0.0), (0.5, 0.5), (-0.5, -0.5)])
+def test_instants_at_the_start_of_the_exposure(early: float, fraction: float) -> None:
+    """A body 0.6 au from the Earth over five nights and three stations, one of which is early."""
+    ephemeris = load_ephemeris()
+    rng = np.random.default_rng(5)
+    exposure_s, sigma = 180.0, 0.15
+    place0 = np.array([-0.9, 1.1, 0.5])
+    rate = np.array([-0.009, -0.006, 0.002])
+    rows = []
+    for night in range(5):
+        for code, hours in (("703", (3, 4, 5)), ("H01", (4, 6, 8)), ("V37", (3.5, 5.5, 9))):
+            for hour in hours:
+                sec = hour * 3600.0 + 60.0 * rng.integers(0, 20)
+                true_s = sec + (early * exposure_s if code == "H01" else 0.0)
+                tdb_d = np.atleast_1d(utc_to_tdb_d(60370 + night, true_s))
+                seen = astrometric(
+                    lambda t: place0 + rate * (np.asarray(t)[:, None] - 8826.0),
+                    tdb_d,
+                    station_states(code, tdb_d, ephemeris).position_au,
+                )
+                noise = rng.normal(0.0, sigma / 3600.0, 2)
+                dec = np.degrees(seen.dec_rad[0])
+                rows.append(
+                    {
+                        "permID": "1",
+                        "mode": "CCD",
+                        "stn": code,
+                        "obsTime": pd.Timestamp("2024-03-01")
+                        + pd.Timedelta(days=night, seconds=sec),
+                        "ra": np.degrees(seen.ra_rad[0]) + noise[0] / np.cos(np.radians(dec)),
+                        "dec": dec + noise[1],
+                        "astCat": "Gaia2",
+                        "rmsRA": sigma,
+                        "rmsDec": sigma,
+                        "exp": exposure_s,
+                    }
+                )
+    arc = Arc.from_frame(pd.DataFrame(rows))
+    told = time_shifts(arc)
+    if not fraction:
+        assert told == []
+        return
+    assert [s.station for s in told] == ["H01"]
+    assert abs(told[0].fraction - fraction) < 4.0 * told[0].sigma < 0.4
+    finding = next(f for f in vet(arc) if f.kind == "time-stamps")
+    assert len(finding.rows) == 15 and "station H01" in finding.sentence
+    assert "transverse thrust" in finding.sentence

@@ -14,7 +14,7 @@ import numpy as np
 import pytest
 
 from ngbound.arc import ErrorModel, read_arc
-from ngbound.fit import compare_fits, fit_orbit
+from ngbound.fit import compare_fits, diagnose, fit_orbit
 from ngbound.motion import Thrust
 from ngbound.report import catalogue_table, station_table
 
@@ -41,6 +41,11 @@ def null(arc):
 def uniform(arc, null):
     calm = fit_orbit(arc, error_model=UNIFORM, initial=null)
     return calm, fit_orbit(arc, Thrust("inverse-square"), UNIFORM, initial=calm)
+
+
+@pytest.fixture(scope="module")
+def push(arc, null):
+    return fit_orbit(arc, Thrust("inverse-square"), initial=null)
 
 
 def test_all_records_are_read(arc):
@@ -89,3 +94,40 @@ def test_the_catalogue_table_gives_the_cause_away(uniform):
     assert (north[["UCAC2", "UCAC4", "Gaia1", "2MASS"]].abs() < 0.12).all()
     assert "*" in str(catalogue_table(calm))
     assert "*" in str(station_table(calm))
+
+
+def test_the_default_error_model_explains_every_station(push):
+    told = diagnose(push)
+    assert push.reduced_chi2 == pytest.approx(1.0, abs=0.2)
+    assert push.n_rejected < 0.03 * 1401
+    stations = told.groups[(told.groups["kind"] == "station") & (told.groups["n"] >= 20)]
+    assert len(stations) >= 10
+    assert stations["chi2_per_dof"].between(0.8, 1.2).all()
+    assert told.trusted, told.why
+
+
+def test_the_default_error_model_shows_no_thrust_in_a_dead_rock(null, push, uniform):
+    assert (np.abs(push.A.value / push.A_sigma.value) < 3.0).all()
+    told = compare_fits(null, push)
+    assert told.p_value > 0.0027 and told.delta_bic < 0.0
+    # the price: the normal component is known less well than the naive weights make believe
+    ratio = push.A_sigma.value[2] / uniform[1].A_sigma.value[2]
+    assert 1.5 < ratio < 4.0
+
+
+def test_the_offsets_of_the_catalogues_come_out_beside_what_is_published(push):
+    table = push.offsets.set_index("name")
+    row = table.loc["catalogue USNOA2, Dec"]
+    assert row["unit"] == "arcsec" and "Eggl" in row["published"]
+    assert 0.1 < row["estimate"] < 0.6
+    assert row["sigma"] < 0.6 * row["prior_sigma"]
+    for modern in ("UCAC2", "UCAC4", "2MASS"):
+        assert abs(table.loc[f"catalogue {modern}, Dec", "estimate"]) < 0.1
+    # priors hold: no offset further than 4 standard deviations from what is published
+    assert table["pull"].abs().max() < 4.0
+
+
+def test_the_naive_weights_are_found_out(uniform):
+    told = diagnose(uniform[1])
+    assert not told.trusted
+    assert "USNOA2" in told.why or "704" in told.why

@@ -1,11 +1,13 @@
 """The front door of the audit: files, what it combines, what it refuses."""
 
 import json
+import textwrap
+import tomllib
 
 import pytest
 
 from ngbound.errors import CaseError
-from ngbound.mass import audit
+from ngbound.mass import QuotedPaper, ThrustResult, audit, quoted
 
 PAPER = """
 title = "an invented paper"
@@ -86,3 +88,13 @@ def test_binary_and_missing_files(tmp_path):
         audit(path)
     with pytest.raises(CaseError, match="cannot be read"):
         audit(tmp_path)
+
+
+def test_the_examples_of_the_docstring_are_read():
+    text = textwrap.dedent(quoted.__doc__.partition("\n")[2])
+    paper = text[text.index('    title = "an') : text.index("For `reconcile`")]
+    results = text[text.index("    [[result]]") :]
+    found = QuotedPaper.model_validate(tomllib.loads(textwrap.dedent(paper)))
+    assert found.geometry.nights == 40 and found.arc.file.name == "paper.psv"
+    one = tomllib.loads(textwrap.dedent(results))["result"][0]
+    assert ThrustResult.from_quoted(one).kind == "threshold"

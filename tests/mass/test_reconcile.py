@@ -138,6 +138,14 @@ def test_three_results_name_the_worst_pair():
     assert found.dof == 2 and found.pair == ("early", "late")
 
 
+def test_the_table():
+    found = reconcile(EARLY, LATE)
+    table = found.to_frame()
+    assert table.loc["law", "verdict"] == "possible"
+    assert list(table.index) == [e.key for e in found.explanations]
+    assert "<table" in found._repr_html_()
+
+
 def test_file_with_results(tmp_path):
     path = tmp_path / "results.toml"
     path.write_text(

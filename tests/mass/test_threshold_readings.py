@@ -32,6 +32,7 @@ def test_the_claimed_reading_is_the_detection_threshold(fit, threshold, treatmen
     found = audit_threshold(fit, {**CLAIM, "others": treatment, "value": value})
     assert found.verdict == "holds"
     assert found.claimed.ratio == pytest.approx(1.0, abs=1e-3)
+    assert found.to_frame()["reading"][0] == found.claimed.words
 
 
 @pytest.mark.parametrize(

@@ -282,17 +282,14 @@ def sight_residuals(c_au_d, rho, speed, basis, offset, out):
 
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
-def whitened_chi2(order, start, flat, flat_start, modes, residual, chi2):
-    """chi2 (LANES,) of residuals (n, 2, LANES) whitened by lower-triangular factors, block by
-    block.
+def whitened_chi2(order, start, flat, flat_start, modes, residual, white, chi2):
+    """chi2 (LANES,) of residuals (n, 2, LANES) whitened by lower-triangular factors, block by block.
 
     ``modes`` (k, 2n), columns in the order of the blocks: what the errors shared across blocks take
-    off, |w|^2 - |modes w|^2.
+    off, |w|^2 - |modes w|^2. ``white`` (2n, LANES) is room for the whitened residuals.
     """
     for lane in range(LANES):
         chi2[lane] = 0.0
-    total = np.empty(LANES)
-    shared = np.zeros((modes.shape[0], LANES))
     row = 0
     for b in range(start.size - 1):
         first = start[b]
@@ -300,22 +297,20 @@ def whitened_chi2(order, start, flat, flat_start, modes, residual, chi2):
         at = flat_start[b]
         for i in range(m):
             for lane in range(LANES):
-                total[lane] = 0.0
+                white[row, lane] = 0.0
             for j in range(i + 1):
                 f = flat[at + i * m + j]
                 k = order[first + j // 2]
                 for lane in range(LANES):
-                    total[lane] += f * residual[k, j % 2, lane]
+                    white[row, lane] += f * residual[k, j % 2, lane]
             for lane in range(LANES):
-                chi2[lane] += total[lane] * total[lane]
-            for k in range(modes.shape[0]):
-                f = modes[k, row]
-                for lane in range(LANES):
-                    shared[k, lane] += f * total[lane]
+                chi2[lane] += white[row, lane] * white[row, lane]
             row += 1
-    for k in range(modes.shape[0]):
-        for lane in range(LANES):
-            chi2[lane] -= shared[k, lane] * shared[k, lane]
+    if modes.shape[0] > 0:
+        shared = np.dot(modes, white)
+        for k in range(modes.shape[0]):
+            for lane in range(LANES):
+                chi2[lane] -= shared[k, lane] * shared[k, lane]
 
 
 @njit(cache=True, error_model="numpy", nogil=True)
@@ -347,6 +342,7 @@ def batch(
     lanes = np.empty((COLUMNS, LANES))
     offset = np.zeros((n, 3, LANES))
     residual = np.zeros((n, 2, LANES))
+    white = np.zeros((2 * n, LANES))
     unsure = np.empty((2, LANES))
     for block in range(theta.shape[0] // LANES):
         at = block * LANES
@@ -386,7 +382,14 @@ def batch(
         )
         sight_residuals(c_au_d, rho, speed, basis, offset, residual)
         whitened_chi2(
-            whiten[0], whiten[1], whiten[2], whiten[3], whiten[4], residual, chi2[at : at + LANES]
+            whiten[0],
+            whiten[1],
+            whiten[2],
+            whiten[3],
+            whiten[4],
+            residual,
+            white,
+            chi2[at : at + LANES],
         )
         for lane in range(LANES):
             doubt[at + lane, 0] = unsure[0, lane]
