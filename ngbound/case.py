@@ -20,7 +20,7 @@ from pydantic import BaseModel, ConfigDict, Field, ValidationError, field_valida
 
 from ngbound.arc import ErrorModel, user_stations
 from ngbound.errors import CaseError, StationError
-from ngbound.limits import PRIOR_NAMES
+from ngbound.limits import PRIOR_NAMES, PlannedNight
 from ngbound.mass import Outgassing, Photometry
 from ngbound.motion import LAWS, ForceModel, Orbit, TableLaw, Thrust, Window
 from ngbound.sky import parse_time
@@ -330,6 +330,39 @@ Spec = float | str | dict[str, Any]
 """A number, a text such as "(2.0 +- 0.5)e26", or a table such as {low = 1, high = 2}."""
 
 
+class InjectionTable(Table):
+    """``[injection]``: invented thrusts that try the arc's own detection test."""
+
+    arcs: int = Field(default=400, ge=1, description="Arcs made for each size of the thrust.")
+    direction: str | Vector = Field(
+        default="worst", description='"worst", "best", a letter of R, T, N, or a vector in R, T, N.'
+    )
+    shares: tuple[NotNegative, ...] = Field(
+        default=(0.0, 0.5, 1.0, 1.5),
+        min_length=1,
+        description="Sizes as shares of the detection threshold in that direction.",
+    )
+    noise: Literal["model", "residuals"] = Field(
+        default="model", description="Noise from the error model, or resampled by station-night."
+    )
+    reject: bool = Field(default=False, description="Whether the outlier rule works on each arc.")
+
+
+class PlannedTable(Table):
+    """``[[planned]]``: a night of observations to come, for the forecast."""
+
+    utc: str = Field(description="Middle of the night's records, ISO date and time, UTC.")
+    station: str = Field(default="500", description="Station code; 500 is the geocentre.")
+    n: int = Field(default=4, ge=1, description="Records.")
+    sigma_arcsec: Positive = Field(default=0.3, description="Independent error of each record.")
+    common_arcsec: NotNegative = Field(default=0.1, description="Error the night's records share.")
+    spacing_d: Positive = Field(default=0.02, description="Time between records.")
+
+    def night(self) -> PlannedNight:
+        """The night as the forecast takes it."""
+        return PlannedNight(**self.model_dump())
+
+
 class OutgassingTable(Table):
     """``[[outgassing]]``: one species that leaves the nucleus and pushes it.
 
@@ -404,6 +437,8 @@ class Case(Table):
     fit: FitTable = FitTable()
     detection: DetectionTable = DetectionTable()
     sampling: SamplingTable = SamplingTable()
+    injection: InjectionTable = InjectionTable()
+    planned: tuple[PlannedTable, ...] = ()
     outgassing: tuple[OutgassingTable, ...] = ()
     nucleus: NucleusTable = NucleusTable()
     output: OutputTable = OutputTable()

@@ -239,6 +239,68 @@ def fan(input_file: Path, **options: Any) -> Any:
     return ng.fan_case(input_file, **options)
 
 
+@_step(
+    "Try the arc's own detection test with invented thrusts.\n\n"
+    "Thrusts of several sizes are added to the fitted orbit, observed at the arc's own times with "
+    "fresh noise, and fitted again: how often each is found, the false alarms, the bias. Sizes and "
+    "counts stand in the [injection] table of the case.\n\n"
+    "Example: ngbound inject data_demo/quiet.toml",
+    name="inject",
+)
+@click.option(
+    "--checkpoint",
+    type=click.Path(path_type=Path, dir_okay=False),
+    help="File that keeps the counts, so that an interrupted run goes on from them.",
+)
+@SEED
+@LAW
+@COMPONENTS
+@OBJECT
+def inject(input_file: Path, **options: Any) -> Any:
+    return ng.inject_case(input_file, **options)
+
+
+@_step(
+    "Foresee what planned nights would do to the threshold.\n\n"
+    "The nights stand in [[planned]] tables of the case file.\n\n"
+    "Example: ngbound forecast my_case.toml",
+    name="forecast",
+)
+@LAW
+@COMPONENTS
+@OBJECT
+def forecast(input_file: Path, **options: Any) -> Any:
+    return ng.forecast_case(input_file, **options)
+
+
+def _desk(name: str, help_text: str, function: str) -> None:
+    """Register a verb of the referee's desk: one TOML file of quoted numbers in, text out."""
+
+    @main.command(name=name, help=help_text)
+    @click.argument("quoted", metavar="QUOTED.toml", type=click.Path(path_type=Path))
+    @click.option(
+        "--json", "as_json", is_flag=True, help="Print one JSON document instead of text."
+    )
+    def verb(quoted: Path, as_json: bool) -> None:
+        _print(getattr(ng, function)(quoted), as_json)
+
+
+_desk(
+    "audit",
+    "Test quoted numbers against one another and against their arc.\n\n"
+    "QUOTED.toml holds [numbers], and, where known, [threshold], [arc], [errors] or [geometry].\n\n"
+    "Example: ngbound audit paper.toml",
+    "audit",
+)
+_desk(
+    "reconcile",
+    "Say what would have to be true for two or more results to hold together.\n\n"
+    "QUOTED.toml holds two or more [[result]] tables, of quoted numbers or with their arcs.\n\n"
+    "Example: ngbound reconcile results.toml",
+    "reconcile",
+)
+
+
 @main.command(
     name="simulate",
     help="Make an invented arc from a recipe.\n\n"

@@ -27,10 +27,14 @@ from ngbound.errors import CaseError, NgboundWarning
 from ngbound.fit import Comparison, Fit, compare_fits, fit_orbit
 from ngbound.limits import (
     DetectionThreshold,
+    Forecast,
     Posterior,
+    PowerCurve,
     UpperLimit,
     Verdict,
     detection_threshold,
+    forecast,
+    power_curve,
     sample_posterior,
     upper_limit,
     verdict,
@@ -134,6 +138,62 @@ def mass_case(path: str | Path, *, progress: bool = False, **choices: Any) -> Ma
     found = bound_the_mass(bounds, step)
     assert found is not None
     return found
+
+
+def inject_case(
+    path: str | Path,
+    *,
+    checkpoint: str | Path | None = None,
+    progress: bool = False,
+    **choices: Any,
+) -> "Injected":
+    """Try the arc's own detection test with invented thrusts: false alarms, power, bias, coverage.
+
+    With ``checkpoint`` the counts are kept lot by lot in files of that name, and a run that was
+    interrupted goes on from them to the same numbers.
+    """
+    case, step = case_for(path, **choices), Steps(progress)
+    fits, chosen = fit_both(case, read_the_arc(case, step), step), case.injection
+    with step("inject and recover") as bar:
+        curve = power_curve(
+            fits.push,
+            chosen.direction if isinstance(chosen.direction, str) else list(chosen.direction),
+            n=chosen.arcs,
+            seed=case.sampling.seed,
+            shares=chosen.shares,
+            noise=chosen.noise,
+            reject=chosen.reject,
+            false_alarm=case.detection.false_alarm,
+            power=case.detection.power,
+            progress=bar.report,
+            checkpoint=checkpoint,
+        )
+    return Injected(fits, curve)
+
+
+def forecast_case(path: str | Path, *, progress: bool = False, **choices: Any) -> "Foreseen":
+    """What the planned nights of the case would do to the detection threshold.
+
+    Raises
+    ------
+    CaseError
+        The case plans no night.
+    """
+    case, step = case_for(path, **choices), Steps(progress)
+    if not case.planned:
+        raise CaseError(
+            f"{path} plans no night, so that nothing can be foreseen; add [[planned]] tables with "
+            "utc and station."
+        )
+    fits = fit_both(case, read_the_arc(case, step), step)
+    with step("forecast"):
+        found = forecast(
+            fits.push,
+            [table.night() for table in case.planned],
+            false_alarm=case.detection.false_alarm,
+            power=case.detection.power,
+        )
+    return Foreseen(fits, found)
 
 
 def fan_case(
@@ -484,6 +544,36 @@ class Bounds:
             diameter_m=None if mass is None else float(mass.diameter.value),
             mass_confidence=None if mass is None else mass.confidence,
         )
+
+
+@dataclass(frozen=True, eq=False)
+class Injected:
+    """How often thrusts of several sizes are found on this very arc."""
+
+    fits: Fits = field(repr=False)
+    curve: PowerCurve
+
+    def __str__(self) -> str:
+        return f"{self.fits.arc.name}, {self.fits.push.n_obs} observations\n{self.curve}"
+
+    def to_dict(self) -> dict[str, Any]:
+        """Object and counts."""
+        return {"object": self.fits.arc.name, **self.curve.to_dict()}
+
+
+@dataclass(frozen=True, eq=False)
+class Foreseen:
+    """What planned nights would do to the threshold."""
+
+    fits: Fits = field(repr=False)
+    forecast: Forecast
+
+    def __str__(self) -> str:
+        return f"{self.fits.arc.name}, {self.fits.push.n_obs} observations\n{self.forecast}"
+
+    def to_dict(self) -> dict[str, Any]:
+        """Object and forecast."""
+        return {"object": self.fits.arc.name, **self.forecast.to_dict()}
 
 
 @dataclass(frozen=True, eq=False)

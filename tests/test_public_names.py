@@ -45,6 +45,15 @@ PUBLIC_NAMES = {
     "reciprocal_axis",
     "vet",
     "write_xml",
+    "compare_laws",
+    "forecast",
+    "inject_and_recover",
+    "power_curve",
+    "threshold_growth",
+    "audit",
+    "reconcile",
+    "forecast_case",
+    "inject_case",
     "write_psv",
 }
 HEAVY = {"numba", "astropy", "pandas", "scipy", "matplotlib", "emcee", "numpy"}

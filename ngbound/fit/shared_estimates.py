@@ -114,3 +114,29 @@ def shared_table(noise: Noise, joint: JointSolution, p: int) -> pd.DataFrame:
             "published": shared.source,
         }
     )
+
+
+def shared_text(table: pd.DataFrame, seasons: bool = False) -> str:
+    """The table of shared errors in words: estimate, prior, and what is published about it.
+
+    Parameters
+    ----------
+    table : DataFrame
+        Of `shared_table`.
+    seasons : bool
+        Whether the offsets of single seasons are shown too.
+    """
+    if not len(table):
+        return "No errors shared by many nights are allowed for."
+    lines = ["Errors shared by many nights: estimate +- error (prior), beside what is published"]
+    before = ""
+    for row in table.to_dict("records"):
+        if " season " in row["name"] and not seasons:
+            continue
+        published = "" if row["published"] == before else f"  {row['published']}"
+        before = row["published"]
+        lines.append(
+            f"  {row['name']:34s} {row['estimate']:+.3f} +- {row['sigma']:.3f} "
+            f"({row['prior_sigma']:.3f}) {row['unit']}{published}"
+        )
+    return "\n".join(lines)

@@ -23,7 +23,13 @@ from ngbound.fit.noise_scale import StationScale, rescaled
 from ngbound.fit.orbit_search import Converged, at_epoch, find_orbit, middle_epoch, settle
 from ngbound.fit.outliers import residual_chi2
 from ngbound.fit.residuals import motion_rad_d, residual_table, sunward_per_au
-from ngbound.fit.shared_estimates import JointSolution, freed, shared_table, solve_jointly
+from ngbound.fit.shared_estimates import (
+    JointSolution,
+    freed,
+    shared_table,
+    shared_text,
+    solve_jointly,
+)
 from ngbound.motion import ForceModel, Neighbourhood, Orbit, Records, Thrust
 from ngbound.sky import Observers, load_ephemeris, observer_states
 
@@ -192,6 +198,17 @@ class Fit:
         `ngbound.fit.shared_estimates.shared_table`."""
         return shared_table(self.noise, self.joint, self.theta.size)
 
+    @property
+    def error_report(self) -> str:
+        """In words: the sources of the errors, the scales of the stations before and after, and the
+        shared errors beside what is published."""
+        lines = [str(self.noise)]
+        if self.scales:
+            lines.append("Rescaled by their own scatter:")
+            lines += [f"  {scale}" for scale in self.scales]
+        lines.append(shared_text(self.offsets))
+        return "\n".join(lines)
+
     @cached_property
     def residuals(self) -> pd.DataFrame:
         """The residual table; columns in `ngbound.fit.residuals.residual_table`."""
@@ -259,6 +276,7 @@ class Fit:
             "distance_error": self.distance_error,
             "weakness": self.weakness,
             "station_scales": [scale.to_dict() for scale in self.scales],
+            "shared_errors": self.offsets.to_dict("records"),
         }
 
     def __str__(self) -> str:

@@ -1,3 +1,5 @@
+import json
+
 import numpy as np
 import pytest
 
@@ -81,3 +83,12 @@ def test_the_thrust_under_a_few_error_models(biased):
     assert "a warning" in str(told) and told.to_dict()["table"]
     names = [v.name for v in error_variants()]
     assert len(set(names)) == len(names) >= 8
+
+
+def test_the_errors_are_told_in_words(biased):
+    _, push = biased
+    text = push.error_report
+    assert "catalogue USNOA2, Dec" in text and "Eggl" in text and " season " not in text
+    assert "Errors of" in text
+    record = json.loads(json.dumps(push.to_dict()))
+    assert {row["name"] for row in record["shared_errors"]} == set(push.offsets["name"])
