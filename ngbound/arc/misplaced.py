@@ -113,15 +113,22 @@ def _predicted(
     return between, NEAR_DEG + NEAR_SHARE * float(apart_deg(here[before], here[behind]))
 
 
-def second_tracks(time_d: FloatArray, ra_rad: FloatArray, dec_rad: FloatArray) -> list[IntArray]:
-    """Rows of the smaller tracks in nights where the positions form two or more of at least two
-    observations each."""
-    order = np.argsort(time_d, kind="stable")
+def second_tracks(
+    time_d: FloatArray, ra_rad: FloatArray, dec_rad: FloatArray, stn: NDArray[np.object_]
+) -> list[IntArray]:
+    """Rows of the smaller tracks in nights where the positions of one station form two or more of
+    at least two observations each. (Stations are kept apart, for a spacecraft sees a near object
+    degrees away from where the Earth does.)"""
+    order = np.lexsort((time_d, stn.astype(str)))
     here = unit_vectors(ra_rad, dec_rad)
     found = []
     start = 0
     for at in range(1, len(order) + 1):
-        if at < len(order) and time_d[order[at]] - time_d[order[start]] <= TRACK_WINDOW_D:
+        if (
+            at < len(order)
+            and stn[order[at]] == stn[order[start]]
+            and time_d[order[at]] - time_d[order[start]] <= TRACK_WINDOW_D
+        ):
             continue
         rows = order[start:at]
         start = at

@@ -51,7 +51,8 @@ class Survey:
 
     Counts are of records by their code; ``errors`` holds a `Range` per kind of error: "stated RA",
     "stated Dec", "stated time", "digits RA", "digits Dec", "digits time", "assigned RA",
-    "assigned Dec" (those that occur).
+    "assigned Dec" (those that occur). ``gaps`` are the longest of the ``n_gaps`` gaps of 30 days or
+    more.
     """
 
     name: str
@@ -67,6 +68,7 @@ class Survey:
     last_day: str
     span_d: float
     n_nights: int
+    n_gaps: int
     gaps: tuple[Gap, ...]
     errors: dict[str, Range]
     magnitude: Range | None
@@ -98,14 +100,16 @@ class Survey:
                 listed = [f"{k} {v}" for k, v in list(counts.items())[:12]]
                 more = f", and {len(counts) - 12} more" if len(counts) > 12 else ""
                 lines.append(f"  {title:11s} {', '.join(listed)}{more}")
+        if self.n_gaps > len(self.gaps):
+            lines.append(f"  the longest of {self.n_gaps} gaps of {LONG_GAP_D:.0f} d or more:")
         for gap in self.gaps:
             lines.append(f"  gap         {gap.after} to {gap.before}: {gap.days:.0f} d")
         lines += [f"  {title:13s} {span}" for title, span in self.errors.items()]
         if self.magnitude:
             lines.append(f"  magnitude     {self.magnitude}")
-        lines.append(
-            f"  {len(self.findings)} findings" if self.findings else "  nothing doubtful found"
-        )
+        count = len(self.findings)
+        plural = "" if count == 1 else "s"
+        lines.append(f"  {count} finding{plural}" if count else "  nothing doubtful found")
         lines += [f"  - {finding}" for finding in self.findings]
         return "\n".join(lines)
 
@@ -146,6 +150,7 @@ def survey(arc: Arc) -> Survey:
         last_day=told["last_day"] or "",
         span_d=arc.span_d,
         n_nights=len(np.unique(station_nights(used))) if len(used) else 0,
+        n_gaps=int((np.diff(time_d) >= LONG_GAP_D).sum()),
         gaps=_gaps(time_d),
         errors=errors,
         magnitude=magnitude.get("mag"),

@@ -167,7 +167,8 @@ def _misread(arc: Arc, rows: NDArray[np.int64], time: NDArray[np.float64]) -> li
                 "depends most.",
             )
         )
-    for track in second_tracks(time, ra, dec):
+    stn = arc.table["stn"].to_numpy(dtype=object)
+    for track in second_tracks(time, ra, dec, stn):
         where = ", ".join(str(n) for n in line[track][:10])
         found.append(
             Finding(

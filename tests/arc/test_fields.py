@@ -107,3 +107,39 @@ def test_plain_numbers() -> None:
     assert fields.plain_number(-0.0, 3) == "0.000"
     assert fields.plain_number(1.25, 1) == "1.2"
     assert fields.plain_number(3.0) == "3"
+
+
+@given(st.floats(allow_nan=False, allow_infinity=False))
+def test_doubles_come_back(value: float) -> None:
+    assert float(fields.shortest_double(value, 400)) == value
+
+
+@pytest.mark.parametrize(
+    ("value", "width", "text"),
+    [
+        (1e-5, 6, "1e-5"),
+        (1.23e-7, 6, "123e-9"),
+        (-0.25, 6, "-.25"),
+        (0.0, 6, "0"),
+        (12345.678, 6, "12346"),
+        (1.23456789, 6, "1.2346"),
+        (1e22, 20, "1e22"),
+    ],
+)
+def test_doubles_are_written_short(value: float, width: int, text: str) -> None:
+    assert fields.shortest_double(value, width) == text
+
+
+@pytest.mark.parametrize(
+    ("value", "places", "width", "text"),
+    [
+        (0.1, 99, 7, "0.1"),
+        (0.123456789, 99, 7, "0.12346"),
+        (-0.123456789, 99, 7, "-0.12346"),
+        (12.0, 9, 0, "12"),
+        (1.0 / 3.0, 3, 0, "0.333"),
+        (123456.7, 99, 6, "123457"),
+    ],
+)
+def test_decimals_are_fitted(value: float, places: int, width: int, text: str) -> None:
+    assert fields.fitted_decimal(value, places, width) == text

@@ -18,7 +18,10 @@ def test_counts_spans_gaps_and_errors() -> None:
     assert told.stations == {"G96": 6, "703": 3} and told.kinds == {"optical": 9}
     assert (told.first_day, told.last_day) == ("2024-03-01", "2024-06-01")
     gap = told.gaps[0]
-    assert len(told.gaps) == 1 and (gap.after, gap.before) == ("2024-03-02", "2024-06-01")
+    assert len(told.gaps) == told.n_gaps == 1 and (gap.after, gap.before) == (
+        "2024-03-02",
+        "2024-06-01",
+    )
     np.testing.assert_allclose(gap.days, 91.0 - 40.0 / 1440.0)
     stated = told.errors["stated Dec"]
     assert (stated.n, stated.least, stated.median, stated.most) == (9, 0.1, 0.1, 0.4)
@@ -37,7 +40,7 @@ def test_findings_and_what_is_set_aside_are_told() -> None:
     told = survey(Arc.from_frame(table))
     assert told.set_aside == {"marked as deprecated": 1} and told.n_usable == 3
     assert [f.kind for f in told.findings] == ["single-station"]
-    assert "1 findings" in str(told) and told.to_dict()["findings"][0]["kind"] == "single-station"
+    assert "1 finding\n" in str(told) and told.to_dict()["findings"][0]["kind"] == "single-station"
 
 
 def test_an_arc_without_usable_records() -> None:

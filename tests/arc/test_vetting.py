@@ -130,6 +130,8 @@ def test_two_objects_in_one_night() -> None:
     other = table.iloc[12:14].assign(dec=lambda t: t.dec + 0.3, ra=lambda t: t.ra - 0.2)
     both = pd.concat([table, other], ignore_index=True)
     assert found(both, "second-object") == [(36, 37)]
+    # from another station it may be the parallax
+    assert found(both.assign(stn=[*table["stn"], "W84", "W84"]), "second-object") == []
 
 
 @pytest.mark.parametrize(("early", "fraction"), [(0.0, 0.0), (0.5, 0.5), (-0.5, -0.5)])

@@ -1,11 +1,14 @@
 """Broken observation files from a seeded generator: each must give an Arc or an error of ngbound's
 own tree, never another exception, never a hang.
 
-    python -m tests.benchmarks.ingest_mutations [count] [seed]
+    python -m tests.benchmarks.ingest_mutations [count] [seed] [part parts]
+
+A run can be shared out: part k (from 0) of n takes its share of the count with a stream of its own.
 
 Bytes are flipped, rows cut, doubled and exchanged, columns renamed, encodings broken, numbers
 replaced, files truncated, in all formats that are read. Prints the seed, the count, what came out,
-and the slowest file. An arc that comes out is also vetted, surveyed and written again.
+and the slowest file. One in ten of the arcs that come out is also vetted, surveyed, written and
+read again.
 """
 
 import gzip
@@ -239,7 +242,7 @@ def mutated(rng: np.random.Generator) -> bytes:
     return content
 
 
-def outcome(path: Path, folder: Path) -> str:
+def outcome(path: Path, folder: Path, more: bool) -> str:
     """ "arc", or the name of our own error; any other exception goes through."""
     try:
         arc = read_arc(path)
@@ -249,6 +252,8 @@ def outcome(path: Path, folder: Path) -> str:
         return type(error).__name__
     if len(arc) < 1:
         raise AssertionError("an arc without observations")
+    if not more:
+        return "arc"
     str(arc), arc.used, [str(f) for f in vet(arc)], json.dumps(survey(arc).to_dict())
     for write, name in ((write_psv, "again.psv"), (write_xml, "again.xml")):
         try:
@@ -264,9 +269,11 @@ def too_long(*_: Any) -> None:
     raise TimeoutError(f"more than {LONGEST_S} s on one file")
 
 
-def run(count: int, seed: int, report: bool = False) -> tuple[Counter[str], list[str], float]:
+def run(
+    count: int, seed: int, report: bool = False, part: int = 0
+) -> tuple[Counter[str], list[str], float]:
     """Outcomes, the faults found (trace and content), and the slowest file in s."""
-    rng = np.random.default_rng(seed)
+    rng = np.random.default_rng([seed, part])
     told: Counter[str] = Counter()
     faults: list[str] = []
     slowest = 0.0
@@ -282,7 +289,7 @@ def run(count: int, seed: int, report: bool = False) -> tuple[Counter[str], list
             start = time.perf_counter()
             signal.alarm(LONGEST_S)
             try:
-                told[outcome(path, folder)] += 1
+                told[outcome(path, folder, told["arc"] % 10 == 0)] += 1
             except Exception as error:
                 told[f"FAULT {type(error).__name__}"] += 1
                 faults.append(f"file {i}: {traceback.format_exc()}\n{content[:3000]!r}")
@@ -290,7 +297,9 @@ def run(count: int, seed: int, report: bool = False) -> tuple[Counter[str], list
                 signal.alarm(0)
             slowest = max(slowest, time.perf_counter() - start)
             if report and faults and len(faults) <= 30:
-                print(faults.pop())
+                print(faults.pop(), flush=True)
+            if report and i % 2500 == 2499:
+                print(f"part {part}: {i + 1} files", flush=True)
     return told, faults, slowest
 
 
@@ -298,10 +307,13 @@ def main() -> None:
     """The full run."""
     count = int(sys.argv[1]) if len(sys.argv) > 1 else COUNT
     seed = int(sys.argv[2]) if len(sys.argv) > 2 else SEED
+    part, parts = (int(sys.argv[3]), int(sys.argv[4])) if len(sys.argv) > 4 else (0, 1)
     start = time.perf_counter()
-    told, _, slowest = run(count, seed, report=True)
+    count = count * (part + 1) // parts - count * part // parts
+    told, _, slowest = run(count, seed, report=True, part=part)
     took = time.perf_counter() - start
-    print(f"seed {seed}, {count} files in {took:.0f} s, the slowest {slowest:.2f} s")
+    share = f"seed {seed}, part {part} of {parts}, {count} files"
+    print(f"{share} in {took:.0f} s, the slowest {slowest:.2f} s")
     for name, number in told.most_common():
         print(f"{number:7d} {name}")
 

@@ -13,7 +13,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
-from hypothesis import HealthCheck, given, settings
+from hypothesis import HealthCheck, Phase, given, settings
 from hypothesis import strategies as st
 from lxml import etree
 
@@ -725,7 +725,8 @@ def drawn_record(draw: st.DrawFn, kind: str, name: dict[str, str]) -> dict[str, 
     for column in draw(st.lists(st.sampled_from(options), unique=True)) if options else ():
         cells[column] = draw(values_of(column))
     for column in cells:
-        if cells[column] and column in BASE[kind] and column not in ("permID", "deltaRA"):
+        fixed = ("permID",) if kind != "occultation" else ("permID", "deltaRA", "deltaDec")
+        if cells[column] and column in BASE[kind] and column not in fixed:
             cells[column] = draw(values_of(column))
     if "trkSub" in options or draw(st.booleans()):
         cells.setdefault("trkSub", "ab-1")
@@ -770,6 +771,7 @@ def same(one: Arc, two: Arc) -> None:
 
 @settings(
     max_examples=15,
+    phases=[Phase.explicit, Phase.reuse, Phase.generate],
     deadline=None,
     suppress_health_check=[HealthCheck.function_scoped_fixture, HealthCheck.too_slow],
 )
