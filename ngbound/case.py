@@ -299,6 +299,10 @@ class DetectionTable(Table):
         default=0.95, description="Probability that a thrust at the threshold is detected."
     )
     confidence: Probability = Field(default=0.95, description="Of the upper limits.")
+    vary_errors: bool = Field(
+        default=True,
+        description="Whether run repeats threshold and limit under other defensible error models.",
+    )
 
 
 class SamplingTable(Table):

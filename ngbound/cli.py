@@ -191,8 +191,14 @@ def fit(input_file: Path, **options: Any) -> Any:
 @_step(
     "State detection threshold and upper limit.\n\n"
     "The threshold is what the arc would have shown, the limit what its data allow.\n\n"
-    "Example: ngbound limit data_demo/quiet.psv --seed 7",
+    "Example: ngbound limit data_demo/quiet.psv --seed 7 --vary",
     name="limit",
+)
+@click.option(
+    "--vary",
+    "vary_errors",
+    is_flag=True,
+    help="Also state both under a small set of other defensible error models.",
 )
 @SEED
 @LAW

@@ -10,7 +10,7 @@ import secrets
 import sys
 import time
 import warnings
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -18,13 +18,24 @@ from typing import Any
 
 import matplotlib
 import numpy as np
+import pandas as pd
 from matplotlib.figure import Figure
+from scipy.stats import chi2
 from tqdm import tqdm
 
 from ngbound.arc import Arc, Finding, Noise, read_arc, vet
 from ngbound.case import Case, case_for
 from ngbound.errors import CaseError, NgboundWarning
-from ngbound.fit import Comparison, Fit, compare_fits, fit_orbit
+from ngbound.fit import (
+    Comparison,
+    Diagnostics,
+    Fit,
+    Variation,
+    compare_fits,
+    diagnose,
+    fit_orbit,
+    vary,
+)
 from ngbound.limits import (
     DetectionThreshold,
     Forecast,
@@ -34,6 +45,7 @@ from ngbound.limits import (
     Verdict,
     detection_threshold,
     forecast,
+    orbit_degeneracy,
     power_curve,
     sample_posterior,
     upper_limit,
@@ -90,11 +102,17 @@ def run_case(path: str | Path, *, progress: bool = False, **choices: Any) -> Rec
         check_the_output(case)
         arc = read_the_arc(case, step)
         fits = fit_both(case, arc, step)
-        bounds = bound_the_thrust(fits, step)
+        bounds = bound_the_thrust(fits, step, case.detection.vary_errors)
         mass = bound_the_mass(bounds, step)
         with step("draw the figures"):
             figures = draw_figures(bounds, mass)
-    tables = [station_table(fits.push), catalogue_table(fits.push)]
+    tables: list[SmallTable | str] = [
+        station_table(fits.push),
+        catalogue_table(fits.push),
+        *([variant_table(bounds)] if bounds.variation else []),
+        fits.push.error_report,
+        str(bounds.diagnostics),
+    ]
     record = compose_record(Path(path), bounds, mass, heard, step.seconds)
     with step("write the results"):
         write_results(case, record, fits, tables, figures)
@@ -114,10 +132,16 @@ def fit_case(path: str | Path, *, progress: bool = False, **choices: Any) -> "Fi
     return fit_both(case, read_the_arc(case, step), step)
 
 
-def limit_case(path: str | Path, *, progress: bool = False, **choices: Any) -> "Bounds":
-    """Detection threshold, posterior, upper limit and verdict."""
+def limit_case(
+    path: str | Path, *, vary_errors: bool = False, progress: bool = False, **choices: Any
+) -> "Bounds":
+    """Detection threshold, posterior, upper limit and verdict.
+
+    With ``vary_errors`` also threshold and limit under other defensible error models.
+    """
     case, step = case_for(path, **choices), Steps(progress)
-    return bound_the_thrust(fit_both(case, read_the_arc(case, step), step), step)
+    fits = fit_both(case, read_the_arc(case, step), step)
+    return bound_the_thrust(fits, step, vary_errors)
 
 
 def mass_case(path: str | Path, *, progress: bool = False, **choices: Any) -> MassBound:
@@ -272,7 +296,7 @@ def fit_both(case: Case, arc: Arc, step: "Steps") -> "Fits":
     return Fits(case, arc, null, push, comparison)
 
 
-def bound_the_thrust(fits: "Fits", step: "Steps") -> "Bounds":
+def bound_the_thrust(fits: "Fits", step: "Steps", vary_errors: bool = False) -> "Bounds":
     """Threshold of the arc, posterior of the exact model, upper limit, verdict."""
     case = fits.case
     with step("detection threshold"):
@@ -289,7 +313,15 @@ def bound_the_thrust(fits: "Fits", step: "Steps") -> "Bounds":
         )
     with step("upper limit"):
         limit = upper_limit(posterior, confidence=case.detection.confidence)
+    with step("diagnose the residuals"):
+        diagnostics = diagnose(fits.push)
     suspicions = tuple(residual_suspicions(fits.push))
+    if not diagnostics.trusted:
+        suspicions += (diagnostics.why,)
+    variation = None
+    if vary_errors:
+        with step("vary the error model") as bar:
+            variation = vary(fits.push, progress=bar.say)
     judged = verdict(
         fits.null,
         fits.push,
@@ -297,8 +329,54 @@ def bound_the_thrust(fits: "Fits", step: "Steps") -> "Bounds":
         limit,
         noise_trusted=not suspicions,
         why="; ".join(text.rstrip(".") for text in suspicions),
+        other_p_values=None if variation is None else p_values(variation),
     )
-    return Bounds(fits, threshold, posterior, limit, judged, suspicions)
+    return Bounds(fits, threshold, posterior, limit, judged, suspicions, diagnostics, variation)
+
+
+def p_values(variation: Variation) -> dict[str, float]:
+    """The p-value of the fitted thrust under each defensible error model (Wald test)."""
+    return {
+        variant.name: wald_p(fit)
+        for variant, fit in zip(variation.variants, variation.fits, strict=True)
+        if fit is not None and variant.defensible
+    }
+
+
+def wald_p(fit: Fit) -> float:
+    """Probability of a fitted thrust at least as significant where there is none."""
+    return float(chi2.sf(fit.significance**2, len(fit.components)))
+
+
+def variant_table(bounds: "Bounds") -> SmallTable:
+    """Threshold and limit under each error model, in linear theory."""
+    chosen = bounds.fits.case.detection
+    assert bounds.variation is not None
+    rows = []
+    for variant, fit in zip(bounds.variation.variants, bounds.variation.fits, strict=True):
+        if fit is None:
+            continue
+        threshold = detection_threshold(fit, false_alarm=chosen.false_alarm, power=chosen.power)
+        limit = upper_limit(fit, confidence=chosen.confidence)
+        rows.append(
+            {
+                "error model": variant.name + ("" if variant.defensible else " (warning only)"),
+                "out": fit.n_rejected,
+                "chi2/dof": f"{fit.reduced_chi2:.2f}",
+                "A_det worst": f"{threshold.worst.value:.2e}",
+                "A_det best": f"{threshold.best.value:.2e}",
+                "|A| below": f"{limit.magnitude.value:.2e}",
+                "p of thrust": f"{wald_p(fit):.2g}",
+            }
+        )
+    spread = ", ".join(f"{name} {ratio:.1f}" for name, ratio in bounds.variation.spread().items())
+    return SmallTable(
+        "Threshold and limit under other error models (au/d2, linear theory)",
+        pd.DataFrame(rows),
+        {},
+        {},
+        f"largest over smallest standard error under the defensible models: {spread}",
+    )
 
 
 def threshold_of(fits: "Fits") -> DetectionThreshold:
@@ -366,6 +444,9 @@ def compose_record(
         "verdict": bounds.judged,
         "mass": mass,
         "suspicions": bounds.suspicions,
+        "degeneracies": list(orbit_degeneracy(bounds.fits.push).sentences),
+        "diagnostics": bounds.diagnostics,
+        "error_variants": bounds.variation,
         "findings": vet(fits.arc),
         "warnings": heard,
         "choices": case,
@@ -380,7 +461,7 @@ def write_results(
     case: Case,
     record: Record,
     fits: "Fits",
-    tables: list[SmallTable],
+    tables: Sequence[SmallTable | str],
     figures: dict[str, Figure],
 ) -> None:
     """Write texts, figures and record into the output folder, all of them or none."""
@@ -499,10 +580,14 @@ class Bounds:
     limit: UpperLimit
     judged: Verdict
     suspicions: tuple[str, ...]
+    diagnostics: Diagnostics = field(repr=False)
+    variation: Variation | None = field(default=None, repr=False)
 
     def __str__(self) -> str:
         parts = [self.sentence(), str(self.judged), str(self.threshold), str(self.limit)]
-        return "\n\n".join([*parts, *self.suspicions])
+        if self.variation is not None:
+            parts.append(str(variant_table(self)))
+        return "\n\n".join([*parts, str(self.diagnostics), *self.suspicions])
 
     def to_dict(self) -> dict[str, Any]:
         """Threshold, limit, posterior (without its samples) and verdict."""
@@ -514,6 +599,8 @@ class Bounds:
             "limit": self.limit.to_dict(),
             "verdict": self.judged.to_dict(),
             "suspicions": list(self.suspicions),
+            "diagnostics": self.diagnostics.to_dict(),
+            "error_variants": None if self.variation is None else self.variation.to_dict(),
         }
 
     def sentence(self, mass: MassBound | None = None) -> str:

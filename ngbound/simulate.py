@@ -329,8 +329,7 @@ class Campaign:
             }
         tdb_d = _tdb_d(utc_s)
         km = AU_KM * (
-            _positions(instrument.orbit.orbit())(tdb_d)
-            - self.ephemeris.position_au("earth", tdb_d)
+            _positions(instrument.orbit.orbit())(tdb_d) - self.ephemeris.position_au("earth", tdb_d)
         )
         return {"sys": "ICRF_KM", "ctr": "399"} | {
             f"pos{axis + 1}": [f"{value:.3f}" for value in km[:, axis]] for axis in range(3)
@@ -339,9 +338,7 @@ class Campaign:
     def _visits(self, instrument: Site | Spacecraft) -> list[date]:
         """Nights on which the instrument tries, weather permitting."""
         first, last = self.plan.schedule.first, self.plan.schedule.last
-        days = range(
-            instrument.offset_nights, (last - first).days + 1, instrument.every_nights
-        )
+        days = range(instrument.offset_nights, (last - first).days + 1, instrument.every_nights)
         return [
             first + timedelta(days=day)
             for day in days

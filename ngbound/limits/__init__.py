@@ -28,6 +28,11 @@ and the profile likelihood (``upper_limit``). With no signal and an isotropic F_
 of |A| is 2.7955 sigma under a prior flat in three components, and 1.96 sigma under one uniform in
 |A|.
 
+Injection (``injection``, ``refit``): thrusts put into arcs that have the records and errors of the
+real one, refitted with exact residuals with and without thrust; what is counted proves threshold
+and limits on that very arc. ``growth`` cuts the arc, ``forecast`` lengthens it, ``degeneracy`` says
+what in the orbit imitates a thrust, ``laws`` whether the arc can tell thrust laws apart.
+
 Anchor: N observations uniform over T, constant acceleration across the sightline at distance D:
 sigma_A -> sigma_theta D sqrt(720 / N) / T^2 (R. L. Gluckstern 1963, NIM 24, 381).
 """

@@ -8,8 +8,8 @@ records, so that every pair stands for what its record adds to those before it. 
   R. J. A. Little & J. M. G. Taylor 1989, J. Am. Stat. Assoc. 84, 881).
 - "contaminated": a share of 5 % of the records has errors 5 times as large, -2 ln L = -2 ln[(1 -
   share) exp(-s / 2) + share / 25 exp(-s / 50)] (J. W. Tukey 1960, in Contributions to Probability
-  and Statistics, Stanford, p. 448). Its tails still pull: it
-  is for errors of some ten sigma, where the Student t lets go of any.
+  and Statistics, Stanford, p. 448). Its tails still pull: it is for errors of some ten sigma,
+  where the Student t lets go of any.
 
 The records are those the fit kept; for a robust likelihood fit without the outlier rule.
 """

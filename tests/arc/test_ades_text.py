@@ -1,5 +1,6 @@
 """What the writers refuse, and what they respell."""
 
+from collections.abc import Callable
 from dataclasses import replace
 from pathlib import Path
 
@@ -24,11 +25,11 @@ from tests.arc.samples import PSV, frame, put
     ],
 )
 def test_what_the_standard_does_not_allow_is_not_written(
-    tmp_path: Path, write: object, columns: dict, words: str
+    tmp_path: Path, write: Callable[..., None], columns: dict, words: str
 ) -> None:
     arc = Arc.from_frame(frame(3, **columns))
     with pytest.raises(ArcError, match=words):
-        write(arc, tmp_path / "x")  # type: ignore[operator]
+        write(arc, tmp_path / "x")
     assert not list(tmp_path.iterdir())
 
 
