@@ -23,7 +23,7 @@ from matplotlib.figure import Figure
 from scipy.stats import chi2
 from tqdm import tqdm
 
-from ngbound.arc import Arc, Finding, Noise, read_arc, vet
+from ngbound.arc import Arc, Noise, Survey, read_arc, survey, vet
 from ngbound.case import Case, case_for
 from ngbound.errors import CaseError, NgboundWarning
 from ngbound.fit import (
@@ -123,7 +123,7 @@ def inspect_case(path: str | Path, *, progress: bool = False, **choices: Any) ->
     """What is in an arc at a glance, before any orbit."""
     case = case_for(path, **choices)
     arc = read_the_arc(case, Steps(progress))
-    return Inspection(arc, case.errors.error_model().apply(arc.used), tuple(vet(arc)))
+    return Inspection(survey(arc), case.errors.error_model().apply(arc.used))
 
 
 def fit_case(path: str | Path, *, progress: bool = False, **choices: Any) -> "Fits":
@@ -511,31 +511,15 @@ def summary_of(fits: "Fits") -> dict[str, Any]:
 class Inspection:
     """An arc before any orbit: what is in it, its errors, and what is doubtful."""
 
-    arc: Arc
+    survey: Survey
     noise: Noise
-    findings: tuple[Finding, ...]
 
     def __str__(self) -> str:
-        told = self.to_dict()
-        lines = [str(self.arc)]
-        for title in ("stations", "catalogues", "kinds"):
-            counts = ", ".join(f"{name} {n}" for name, n in told[title].items())
-            lines.append(f"  {title}: {counts}")
-        lines.append(f"  longest gap: {told['longest_gap_d']:.1f} d")
-        lines.append(str(self.noise))
-        lines += [f"  {finding}" for finding in self.findings] or ["  Nothing doubtful was found."]
-        return "\n".join(lines)
+        return f"{self.survey}\n{self.noise}"
 
     def to_dict(self) -> dict[str, Any]:
-        """Counts, gaps, errors and findings."""
-        table = self.arc.used.table
-        day = table["utc_day"].to_numpy() + table["utc_sec"].to_numpy() / 86400.0
-        return {
-            **self.arc.to_dict(),
-            "longest_gap_d": float(np.diff(day).max()) if len(day) > 1 else 0.0,
-            "errors": self.noise.to_dict(),
-            "findings": [finding.to_dict() for finding in self.findings],
-        }
+        """The survey, and the errors that the case's error model assigns."""
+        return {**self.survey.to_dict(), "assigned_errors": self.noise.to_dict()}
 
 
 @dataclass(frozen=True, eq=False)

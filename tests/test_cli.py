@@ -11,8 +11,26 @@ import ngbound as ng
 from ngbound import cli
 from ngbound.errors import CaseError, FitError, NgboundWarning
 
-VERBS = ["fan", "fit", "inspect", "limit", "mass", "run", "simulate"]
-FUNCTIONS = {verb: f"{verb}_case" for verb in VERBS} | {"simulate": "simulate_arc"}
+VERBS = [
+    "audit",
+    "fan",
+    "fit",
+    "forecast",
+    "inject",
+    "inspect",
+    "limit",
+    "mass",
+    "reconcile",
+    "run",
+    "simulate",
+    "sweep",
+]
+FUNCTIONS = {verb: f"{verb}_case" for verb in VERBS} | {
+    "audit": "audit",
+    "reconcile": "reconcile",
+    "simulate": "simulate_arc",
+    "sweep": "sweep_cases",
+}
 HEADER = "# version=2022\n"
 COLUMNS = "trkSub|mode|stn|obsTime|ra|dec|astCat\n"
 ROW = "Ember|CCD|{stn}|{time}|{ra}|12.5|Gaia3\n"
@@ -23,6 +41,8 @@ class Printed:
     """What a verb's function returns in these tests."""
 
     text: str = "all is well"
+
+    n_failed = 0
 
     def __str__(self) -> str:
         return self.text

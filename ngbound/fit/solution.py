@@ -31,7 +31,7 @@ from ngbound.fit.shared_estimates import (
     solve_jointly,
 )
 from ngbound.motion import ForceModel, Neighbourhood, Orbit, Records, Thrust
-from ngbound.sky import Observers, load_ephemeris, observer_states
+from ngbound.sky import Observers, load_ephemeris, observer_states, reduce_offsets
 
 Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
@@ -342,14 +342,14 @@ def fit_orbit(
         keep = initial.keep if keep is None else keep
         initial = initial.orbit
     forces = forces or (initial.forces if initial is not None else ForceModel())
-    used = arc.used
+    ephemeris = load_ephemeris()
+    used = reduce_offsets(arc, ephemeris).used
     if len(used) < MIN_OBSERVATIONS:
         raise FitError(
             f"The arc of {arc.name} has {len(used)} usable observations; an orbit needs at least "
             f"{MIN_OBSERVATIONS}. Add observations.",
             arc=arc,
         )
-    ephemeris = load_ephemeris()
     observers = observer_states(used, ephemeris)
     table = used.table
     records = Records.from_angles(

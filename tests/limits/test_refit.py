@@ -10,7 +10,8 @@ from ngbound.arc import Arc
 from ngbound.errors import LimitError
 from ngbound.fit import fit_orbit
 from ngbound.limits import ExactRefit, detection_threshold, inject_and_recover
-from tests.limits.arcs import CLASSES, ERRORS, fitted
+from ngbound.motion import Thrust
+from tests.limits.arcs import CLASSES, ERRORS, fitted, simulated_arc
 
 COMET = replace(CLASSES["comet, 200 days through perihelion"], n_nights=16, per_night=4)
 
@@ -113,3 +114,19 @@ def test_choices_out_of_range_are_refused(push):
         ExactRefit(push, free="X")
     with pytest.raises(LimitError, match="model, residuals"):
         ExactRefit(push, noise="white")
+
+
+def test_errors_shared_by_many_nights_are_drawn_and_fitted_too():
+    arc, orbit = simulated_arc(COMET)
+    errors = replace(ERRORS, station_offset_arcsec=0.3)
+    push = fit_orbit(arc, Thrust(COMET.law), errors, initial=orbit, reject=False)
+    model = ExactRefit(push)
+    assert model.noise.shared is not None
+    draws = np.array([model.draw(np.random.default_rng(i)) for i in range(400)])
+    white = model.whiten(draws)
+    assert np.mean(white**2) == pytest.approx(1.0, abs=0.02)
+    along = model.noise.modes.axes.T @ model.noise.whiten_nights(draws.T)
+    expected = 1.0 + model.noise.modes.strength**2
+    np.testing.assert_allclose(np.mean(along**2, axis=1) / expected, 1.0, atol=0.3)
+    found = inject_and_recover(push, np.zeros(3), n=100, seed=5, false_alarm=0.05)
+    np.testing.assert_allclose(found.scatter, 1.0, atol=0.25)

@@ -283,8 +283,9 @@ def sight_residuals(c_au_d, rho, speed, basis, offset, out):
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
 def whitened_chi2(order, start, flat, flat_start, modes, residual, white, chi2):
-    """chi2 (LANES,) of residuals (n, 2, LANES) whitened by lower-triangular factors, block by block.
+    """chi2 (LANES,) of residuals (n, 2, LANES) whitened block by block.
 
+    ``flat`` holds the lower-triangular factors;
     ``modes`` (k, 2n), columns in the order of the blocks: what the errors shared across blocks take
     off, |w|^2 - |modes w|^2. ``white`` (2n, LANES) is room for the whitened residuals.
     """
