@@ -459,9 +459,7 @@ class Judged(NamedTuple):
 
     def take(self, rows: NDArray[np.int64]) -> "Judged":
         """The same for some rows, which may repeat."""
-        return Judged(
-            self.value[rows], self.form_ok[rows], self.range_ok[rows], self.places[rows]
-        )
+        return Judged(self.value[rows], self.form_ok[rows], self.range_ok[rows], self.places[rows])
 
 
 def _judge_numbers(rule: ColumnRule, packed: Packed, strict: bool) -> Judged:

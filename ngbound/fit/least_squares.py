@@ -12,7 +12,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ngbound.arc import Noise
-from ngbound.constants import C_AU_D
 from ngbound.errors import FitError, PropagationError
 from ngbound.motion import (
     ForceModel,
@@ -23,6 +22,7 @@ from ngbound.motion import (
     Track,
     design_matrix,
     integrate_track,
+    light_margin_d,
     partials_along,
     residuals,
     see,
@@ -100,12 +100,6 @@ def parameter_names(components: str) -> tuple[str, ...]:
     return STATE_NAMES + tuple(f"A{'RTN'.index(c) + 1}" for c in components)
 
 
-def light_margin_d(records: Records, state: Floats) -> float:
-    """Days of light time that the span must hold before the first record, with room to spare."""
-    far = np.linalg.norm(records.observer_au, axis=1).max() + np.linalg.norm(state[:3])
-    return 3.0 * far / C_AU_D + 0.5
-
-
 def linearise(
     theta: Floats,
     epoch_d: float,
@@ -118,7 +112,7 @@ def linearise(
 ) -> Linearised:
     """Integrate a parameter vector and take residuals and partials at every record."""
     push = thrust_of(theta, thrust, components)
-    start = float(records.tdb_d.min()) - light_margin_d(records, theta)
+    start = float(records.tdb_d.min()) - light_margin_d(records.observer_au, theta)
     track = integrate_track(epoch_d, theta[:6], start, float(records.tdb_d.max()), push, forces)
     sight = see(track, records)
     seen = residuals(sight, records)

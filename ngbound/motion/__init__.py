@@ -21,7 +21,14 @@ from ngbound.motion.gravity import ForceModel
 from ngbound.motion.kepler import propagate_two_body, two_body_sightlines, two_body_transition
 from ngbound.motion.lambert import lambert, two_point_scan
 from ngbound.motion.neighbours import Neighbourhood
-from ngbound.motion.observables import Records, Sight, design_matrix, residuals, see
+from ngbound.motion.observables import (
+    Records,
+    Sight,
+    design_matrix,
+    light_margin_d,
+    residuals,
+    see,
+)
 from ngbound.motion.orbit import Orbit, Trajectory, predict, predict_for
 from ngbound.motion.original import ReciprocalAxis, reciprocal_axis
 from ngbound.motion.partials import Partials, partials_along
@@ -64,6 +71,7 @@ __all__ = [
     "find_law",
     "integrate_track",
     "lambert",
+    "light_margin_d",
     "partials_along",
     "power_law",
     "predict",

@@ -53,9 +53,10 @@ SUN_SPIN_KG_M2_S = 1.90e41
 """Angular momentum of the Sun: F. P. Pijpers 1998, MNRAS 297, L76 (190.0e39 kg m2/s)."""
 SUN_MASS_KG = 1.98841e30
 """Nominal GM over CODATA 2018 G."""
-EARTH_J2 = 1.08262545e-3
+EARTH_J2 = 1.08262539e-3
 EARTH_RADIUS_KM = 6378.1366
-"""Earth's J2 and its radius: IERS Conventions 2010, table 1.1 (J2 tide free to the digits used)."""
+"""Earth's J2: comment block of DE440 (J2E); its radius: IERS Conventions 2010, table 1.1. The pole
+is taken along the ICRF z axis (precession moves it by 0.004 rad in 40 years)."""
 
 
 @dataclass(frozen=True)
@@ -89,6 +90,8 @@ class ForceModel:
     eps: float = 1e-8
 
     def __post_init__(self) -> None:
+        if isinstance(self.exclude, str):
+            object.__setattr__(self, "exclude", (self.exclude,))
         if self.relativity not in RELATIVITY:
             raise CaseError(
                 f"The relativity model '{self.relativity}' is unknown; choose one of "

@@ -1,4 +1,4 @@
-"""The likelihood's engine: chi2 of many orbits near one reference, exact to stated tolerance.
+"""The likelihood's engine: chi2 of many orbits near one reference, each to a stated tolerance.
 
 Imports numpy, constants, errors, the kernels, and the other modules of this room. The neighbours
 run on the shared grid of the reference; those for which the grid's orders are not enough are
@@ -33,6 +33,9 @@ NEIGHBOUR_NAMES = ("x", "y", "z", "vx", "vy", "vz", "A1", "A2", "A3")
 GRID_EPS = 1e-3
 GRID_CAP_D = 100.0
 TOLERANCE_AU = 3e-11
+TOLERANCE_SIGMA = 3e-4
+"""A neighbour is trusted while the estimate of what the batch leaves out stays below the larger of
+the two: au, and a part of the smallest error of a record at the object's distance."""
 SETTLED_AU = 1e-12
 
 
@@ -46,7 +49,7 @@ def _leg_arrays(
             np.zeros((0, N_NODES, 1)),
             np.zeros((0, N_NODES, 6, 1)),
             np.zeros(n, dtype=np.int64),
-            np.zeros((n, N_NODES)),
+            np.zeros((n, 2, N_NODES)),
             np.zeros(n),
         )
     sign = 1.0 if leg.forward else -1.0
@@ -54,11 +57,11 @@ def _leg_arrays(
     step_of = np.clip(step_of, 0, leg.h_d.size - 1).astype(np.int64)
     h = leg.h_d[step_of]
     fraction_h = tau_d - leg.tau_d[step_of]
-    weight = np.empty((n, N_NODES))
-    scrap = np.empty(N_NODES)
+    weight = np.empty((n, 2, N_NODES))
     for i in range(n):
-        weights_at(fraction_h[i] / h[i], weight[i], scrap)
-    weight *= (h**2)[:, None]
+        weights_at(fraction_h[i] / h[i], weight[i, 0], weight[i, 1])
+    weight[:, 0] *= (h**2)[:, None]
+    weight[:, 1] *= h[:, None]
     return leg.h_d, leg.nodes, leg.node_columns(), step_of, weight, fraction_h
 
 
@@ -81,6 +84,7 @@ class Neighbourhood:
     sight: Sight = field(repr=False)
     partials: Partials = field(repr=False)
     tables: tuple = field(repr=False)
+    tolerance_au: float = TOLERANCE_AU
     threads: int = 1
 
     @classmethod
@@ -106,8 +110,16 @@ class Neighbourhood:
         span = (float(records.tdb_d.min()), float(records.tdb_d.max()))
         low = min(_lower(track), span[0])
         high = max(_upper(track), span[1])
-        coarse = integrate_track(
-            track.epoch_d, track.state, low, high, thrust, forces, GRID_EPS, GRID_CAP_D
+        by_distance = (
+            thrust is not None and thrust.window is not None and thrust.window.by == "distance"
+        )
+        # the steps of a distance window end where this very track meets its ends
+        coarse = (
+            None
+            if by_distance
+            else integrate_track(
+                track.epoch_d, track.state, low, high, thrust, forces, GRID_EPS, GRID_CAP_D
+            )
         )
         partials = partials_along(track, NEIGHBOUR_NAMES, coarse)
         sight = see(track, records)
@@ -158,6 +170,7 @@ class Neighbourhood:
             sight,
             partials,
             tables,
+            max(TOLERANCE_AU, TOLERANCE_SIGMA * _smallest_error_au(whitening, sight)),
             threads or os.cpu_count() or 1,
         )
 
@@ -185,13 +198,27 @@ class Neighbourhood:
         = inf.
         """
         thetas = np.atleast_2d(np.asarray(thetas, dtype=float))
-        m = thetas.shape[0]
+        chi2, seen, astray = self._together(thetas, want_residuals)
+        for i in np.flatnonzero(astray):
+            chi2[i], one = self.chi2_alone(thetas[i])
+            if want_residuals:
+                seen[i] = one
+        return (chi2, seen) if want_residuals else chi2
+
+    def strays(self, thetas: ArrayLike) -> NDArray[np.bool_]:
+        """Which parameter vectors (m, p) leave the neighbourhood and are integrated one by one."""
+        return self._together(np.atleast_2d(np.asarray(thetas, dtype=float)), False)[2]
+
+    def _together(
+        self, thetas: Floats, want_residuals: bool
+    ) -> tuple[Floats, Floats, NDArray[np.bool_]]:
+        """chi2, O-C and strays of the batch; a vector that is not finite has chi2 = inf."""
+        m, n = thetas.shape[0], len(self.records)
         full = self._lanes(thetas)
         bad = ~np.all(np.isfinite(full[:m]), axis=1)
         full[:m][bad] = 0.0
         chi2 = np.empty(full.shape[0])
         doubt = np.empty((full.shape[0], 2))
-        n = len(self.records)
         keep = np.empty((full.shape[0] if want_residuals else 1, n if want_residuals else 1, 2))
         gm, c, amounts, back, front, rho, speed, basis, white, n_back, order = self.tables
         blocks = full.shape[0] // LANES
@@ -220,43 +247,17 @@ class Neighbourhood:
 
         _run(work, parts)
         chi2 = chi2[:m]
-        astray = (doubt[:m, 0] > TOLERANCE_AU) | (doubt[:m, 1] > SETTLED_AU) | ~np.isfinite(chi2)
-        seen = np.empty((m, n, 2)) if want_residuals else np.empty((0, 0, 0))
+        trusted = (
+            (doubt[:m, 0] <= self.tolerance_au) & (doubt[:m, 1] <= SETTLED_AU) & np.isfinite(chi2)
+        )
+        if self.thrust is not None and self.thrust.window is not None:
+            # a neighbour may meet a switch by distance that the reference does not
+            trusted &= self.thrust.window.by == "date"
+        seen = np.empty((m if want_residuals else 0, n, 2))
         if want_residuals:
             seen[:, order, :] = keep[:m]
         chi2[bad] = np.inf
-        for i in np.flatnonzero(astray & ~bad):
-            chi2[i], one = self.chi2_alone(thetas[i])
-            if want_residuals:
-                seen[i] = one
-        return (chi2, seen) if want_residuals else chi2
-
-    def strays(self, thetas: ArrayLike) -> NDArray[np.bool_]:
-        """Which parameter vectors (m, p) leave the neighbourhood and are integrated one by one."""
-        thetas = np.atleast_2d(np.asarray(thetas, dtype=float))
-        m = thetas.shape[0]
-        full = self._lanes(thetas)
-        chi2 = np.empty(full.shape[0])
-        doubt = np.empty((full.shape[0], 2))
-        gm, c, amounts, back, front, rho, speed, basis, white, n_back, _ = self.tables
-        batch(
-            gm,
-            c,
-            amounts,
-            back,
-            front,
-            rho,
-            speed,
-            basis,
-            white,
-            n_back,
-            full,
-            False,
-            chi2,
-            doubt,
-            np.empty((1, 1, 2)),
-        )
-        return (doubt[:m, 0] > TOLERANCE_AU) | (doubt[:m, 1] > SETTLED_AU)
+        return chi2, seen, ~trusted & ~bad
 
     def chi2_alone(self, theta: ArrayLike) -> tuple[float, Floats]:
         """chi2 and O-C (n, 2) of one parameter vector by the adaptive integrator: the slow twin."""
@@ -300,6 +301,19 @@ def _run(work: Callable[[int], None], parts: int) -> None:
     with ThreadPoolExecutor(parts) as pool:
         for done in [pool.submit(work, part) for part in range(parts)]:
             done.result()
+
+
+def _smallest_error_au(whitening: Factors, sight: Sight) -> float:
+    """The smallest error of a record, what the others say of it allowed for, at the distance."""
+    distance = np.linalg.norm(sight.rho_au, axis=1)
+    smallest = np.inf
+    for b in range(whitening.start.size - 1):
+        rows = whitening.order[whitening.start[b] : whitening.start[b + 1]]
+        side = 2 * rows.size
+        at = whitening.flat_start[b]
+        weight = whitening.flat[at : at + side * side : side + 1].reshape(-1, 2).max(axis=1)
+        smallest = min(smallest, float(np.min(distance[rows] / weight)))
+    return smallest
 
 
 def _lower(track: Track) -> float:

@@ -62,6 +62,16 @@ class Records:
         return Records(self.tdb_d[keep], self.observer_au[keep], self.basis[keep])
 
 
+def light_margin_d(observer_au: Floats, position_au: Floats) -> float:
+    """Days that a track should reach back before its first record for the light time.
+
+    Three times what the observers (n, 3) and the object (3 or more, the first three used) are from
+    the barycentre together, and a tenth of a day.
+    """
+    far = float(np.linalg.norm(observer_au, axis=1).max() + np.linalg.norm(position_au[:3]))
+    return 3.0 * far / C_AU_D + 0.1
+
+
 @dataclass(frozen=True, eq=False)
 class Sight:
     """A trajectory as seen at the records.

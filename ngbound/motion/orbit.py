@@ -18,7 +18,7 @@ from ngbound.constants import C_AU_D
 from ngbound.errors import CaseError
 from ngbound.motion.elements import CometaryElements, KeplerianElements
 from ngbound.motion.gravity import ForceModel
-from ngbound.motion.observables import Records, see
+from ngbound.motion.observables import Records, light_margin_d, see
 from ngbound.motion.partials import Partials, partials_along
 from ngbound.motion.propagate import Track, integrate_track
 from ngbound.motion.thrust import Thrust
@@ -175,6 +175,8 @@ class Orbit:
     def propagate(self, times: Any, scale: str = "tdb") -> Trajectory:
         """Barycentric states at many times (text, astropy Time or TDB days past J2000.0)."""
         tdb_d = np.atleast_1d(np.asarray(parse_time(times, scale), dtype=float))
+        if not tdb_d.size:
+            raise CaseError("A propagation needs at least one time.")
         track = self.track(float(tdb_d.min()), float(tdb_d.max()))
         return Trajectory(tdb_d, track.at(tdb_d))
 
@@ -250,13 +252,13 @@ def predict_for(
     """Astrometric places for observers at barycentric positions (n, 3) au; see `predict`."""
     tdb_d = np.atleast_1d(np.asarray(tdb_d, dtype=float))
     observer = np.atleast_2d(np.asarray(observer_au, dtype=float))
-    # light takes at most this long, which the span must hold
-    reach = 2.0 + float(np.max(np.linalg.norm(observer, axis=1)))
+    if not tdb_d.size:
+        raise CaseError("A prediction needs at least one time.")
+    reach = light_margin_d(observer, orbit.state_vector)
     track = orbit.track(float(tdb_d.min()) - reach, float(tdb_d.max()))
-    state = track.at(tdb_d)
-    far = float(np.max(np.linalg.norm(state[:, :3] - observer, axis=1)))
-    if far / C_AU_D > reach:
-        track = orbit.track(float(tdb_d.min()) - 2.0 * far / C_AU_D, float(tdb_d.max()))
+    far = float(np.max(np.linalg.norm(track.at(tdb_d)[:, :3] - observer, axis=1)))
+    if 1.1 * far / C_AU_D > reach:
+        track = orbit.track(float(tdb_d.min()) - 1.5 * far / C_AU_D, float(tdb_d.max()))
     zeros = np.zeros(tdb_d.size)
     sight = see(track, Records.from_angles(tdb_d, observer, zeros, zeros), deflection)
     ra, dec = direction_to_angles(sight.rho_au)

@@ -80,6 +80,7 @@ def grid_leg(
         leg.forward,
         steps.start_d,
         steps.length_d,
+        steps.active,
         nodes,
     )
     begin = np.empty((steps.n + 1, 6, columns.size))

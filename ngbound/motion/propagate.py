@@ -3,11 +3,14 @@
 Imports numpy, constants, errors, sky, the kernels, and gravity, thrust of this room.
 """
 
+from collections.abc import Callable
 from dataclasses import dataclass, field
+from functools import partial
 
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from ngbound.constants import C_AU_D
 from ngbound.errors import PropagationError
 from ngbound.motion._kernels.layout import (
     INSIDE_BODY,
@@ -17,6 +20,7 @@ from ngbound.motion._kernels.layout import (
     TOO_MANY_STEPS,
     WINDOW_DATE,
     WINDOW_DISTANCE,
+    WINDOW_NONE,
     Perturbers,
     Physics,
     Push,
@@ -27,9 +31,10 @@ from ngbound.motion.thrust import NO_PUSH, Thrust
 from ngbound.sky import load_ephemeris, tdb_d_to_iso
 
 Floats = NDArray[np.float64]
-MAX_STEPS = 200_000
+MAX_STEPS = 50_000
 FIRST_GUESS_STEPS = 512
-MARGIN_D = 1e-6
+SLACK_D = 1e-6
+WINDOW_PASSES = 12
 
 
 @dataclass(frozen=True, eq=False)
@@ -38,12 +43,14 @@ class Leg:
 
     ``start_d``, ``length_d`` (n,) days from the epoch, signed; ``begin`` (n + 1, 6) barycentric au,
     au/d; ``power`` (n, 8, 3) coefficients of the acceleration in powers of the step fraction.
+    ``active`` (n,): whether the thrust is on over each step.
     """
 
     start_d: Floats = field(repr=False)
     length_d: Floats = field(repr=False)
     begin: Floats = field(repr=False)
     power: Floats = field(repr=False)
+    active: NDArray[np.bool_] = field(repr=False)
     forward: bool
 
     @property
@@ -83,9 +90,30 @@ class Track:
     physics: Physics = field(repr=False)
     push: Push = field(repr=False)
 
+    @property
+    def span_d(self) -> tuple[float, float]:
+        """First and last time covered, days from the epoch."""
+        low = 0.0 if self.back is None else float(self.back.start_d[-1] + self.back.length_d[-1])
+        high = (
+            0.0 if self.ahead is None else float(self.ahead.start_d[-1] + self.ahead.length_d[-1])
+        )
+        return low, high
+
     def at_offset(self, tau_d: ArrayLike) -> Floats:
-        """Barycentric states (m, 6) at days from the epoch."""
+        """Barycentric states (m, 6) at days from the epoch.
+
+        Raises
+        ------
+        PropagationError
+            A time outside the span.
+        """
         tau = np.atleast_1d(np.asarray(tau_d, dtype=float))
+        low, high = self.span_d
+        if tau.size and not (tau.min() >= low - SLACK_D and tau.max() <= high + SLACK_D):
+            raise PropagationError(
+                f"The trajectory is asked for {tau.min():.6f} to {tau.max():.6f} d from its epoch, "
+                f"but covers {low:.6f} to {high:.6f} d; integrate it over a longer span."
+            )
         out = np.empty((tau.size, 6))
         out[:] = self.state
         behind = tau < 0.0
@@ -127,7 +155,7 @@ def _explain(
         )
     if status in (STEP_UNDERFLOW, NOT_CONVERGED):
         return PropagationError(
-            f"The integration stalls at {when} TDB: its step shrinks below a millisecond, as "
+            f"The integration stalls at {when} TDB: its step shrinks below 0.1 ms, as "
             "it does in the centre of a body; check the state or elements.",
             tau_d=float(met[1]),
         )
@@ -153,12 +181,13 @@ def _integrate_leg(
     eps: float,
     cap_d: float,
     breaks: Floats,
+    on: bool,
     span: tuple[float, float],
 ) -> Leg:
     n_max = FIRST_GUESS_STEPS
     while True:
-        status, n, start, length, begin, power, met = integrate(
-            tab, push, physics, epoch_d, state, tau_d, eps, cap_d, breaks, n_max
+        status, n, start, length, begin, power, active, met = integrate(
+            tab, push, physics, epoch_d, state, tau_d, eps, cap_d, breaks, on, n_max
         )
         if status != TOO_MANY_STEPS or n_max >= MAX_STEPS:
             break
@@ -166,37 +195,73 @@ def _integrate_leg(
     if status != OK:
         raise _explain(int(status), met, epoch_d, n_max, forces, span)
     return Leg(
-        start[:n].copy(), length[:n].copy(), begin[: n + 1].copy(), power[:n].copy(), tau_d >= 0
+        start[:n].copy(),
+        length[:n].copy(),
+        begin[: n + 1].copy(),
+        power[:n].copy(),
+        active[:n].copy(),
+        tau_d >= 0,
     )
 
 
-def _switch_times(leg: Leg, tab: Perturbers, epoch_d: float, window: tuple[float, float]) -> Floats:
+def _beyond(sunward: Callable[[Floats], tuple[Floats, Floats]], edge: float, tau: Floats) -> Floats:
+    """How far the heliocentric distance lies beyond an edge, au."""
+    return sunward(tau)[0] - edge
+
+
+def _switch_times(leg: Leg, epoch_d: float, window: tuple[float, float]) -> Floats:
     """Days from the epoch at which the heliocentric distance crosses an end of the window."""
     ephemeris = load_ephemeris()
+
+    def sunward(tau: Floats) -> tuple[Floats, Floats]:
+        position, velocity = ephemeris.posvel("sun", epoch_d + tau)
+        state = leg.at(tau)
+        r = np.linalg.norm(state[:, :3] - position, axis=1)
+        rate = np.einsum("ni,ni->n", state[:, :3] - position, state[:, 3:] - velocity)
+        return r, rate
+
+    def root(
+        low: Floats, high: Floats, rising: NDArray[np.bool_], of: Callable[[Floats], Floats]
+    ) -> Floats:
+        for _ in range(60):
+            middle = 0.5 * (low + high)
+            left = (of(middle) >= 0.0) != rising
+            low, high = np.where(left, middle, low), np.where(left, high, middle)
+        return 0.5 * (low + high)
+
     fractions = np.linspace(0.0, 1.0, 9)
     taus = np.unique((leg.start_d[:, None] + leg.length_d[:, None] * fractions).ravel())
-
-    def distance(tau: Floats) -> Floats:
-        sun = ephemeris.position_au("sun", epoch_d + tau)
-        return np.linalg.norm(leg.at(tau)[:, :3] - sun, axis=1)
-
-    r = distance(taus)
-    found = []
+    rate = sunward(taus)[1]
+    # between its turning points the distance is monotonic, so that no double crossing is missed
+    turns = np.flatnonzero((rate[:-1] >= 0.0) != (rate[1:] >= 0.0))
+    if turns.size:
+        found = root(taus[turns], taus[turns + 1], rate[turns + 1] >= 0.0, lambda t: sunward(t)[1])
+        taus = np.unique(np.concatenate([taus, found]))
+    r = sunward(taus)[0]
+    crossings: list[float] = []
     for edge in window:
-        if not np.isfinite(edge):
+        if not np.isfinite(edge) or edge <= 0.0:
             continue
-        # a sample may fall on the edge itself, where a step was made to end
-        outside = r >= edge
-        for i in np.flatnonzero(outside[:-1] != outside[1:]):
-            low, high = taus[i], taus[i + 1]
-            for _ in range(60):
-                middle = 0.5 * (low + high)
-                if (distance(np.array([middle]))[0] >= edge) == outside[i]:
-                    low = middle
-                else:
-                    high = middle
-            found.append(0.5 * (low + high))
-    return np.array(sorted(found))
+        beyond = r >= edge
+        at = np.flatnonzero(beyond[:-1] != beyond[1:])
+        if at.size:
+            crossings += root(
+                taus[at], taus[at + 1], beyond[at + 1], partial(_beyond, sunward, edge)
+            ).tolist()
+    return np.array(sorted(crossings))
+
+
+def _starts_active(push: Push, epoch_d: float, state: Floats, direction: float) -> bool:
+    """Whether the thrust is on just after (direction 1) or just before (-1) the epoch."""
+    moment = 1e-6 * direction
+    if push.window_kind == WINDOW_NONE:
+        return True
+    if push.window_kind == WINDOW_DATE:
+        at = epoch_d + moment
+    else:
+        sun, velocity = load_ephemeris().posvel("sun", epoch_d)
+        at = float(np.linalg.norm(state[:3] - sun + moment * (state[3:] - velocity)))
+    return bool(push.window_from <= at <= push.window_to)
 
 
 def integrate_track(
@@ -234,9 +299,19 @@ def integrate_track(
     forces = forces or ForceModel()
     eps = forces.eps if eps is None else eps
     state = np.ascontiguousarray(state, dtype=float)
+    if not np.all(np.isfinite([epoch_d, start_d, end_d])):
+        raise PropagationError(
+            f"Epoch and span must be finite days; got {epoch_d}, {start_d} to {end_d}."
+        )
     if state.shape != (6,) or not np.all(np.isfinite(state)):
         raise PropagationError(
             f"A state has six finite numbers (au, au/d); got {state.tolist()}.", state=state
+        )
+    if not np.linalg.norm(state[3:]) < C_AU_D:
+        raise PropagationError(
+            f"The velocity {np.linalg.norm(state[3:]):.6g} au/d is not below that of light "
+            f"({C_AU_D:.1f} au/d); velocities are in au per day.",
+            state=state,
         )
     low = min(start_d, epoch_d)
     high = max(end_d, epoch_d)
@@ -250,17 +325,24 @@ def integrate_track(
         breaks = np.zeros(0)
         if push.window_kind == WINDOW_DATE:
             ends = np.array([push.window_from, push.window_to]) - epoch_d
-            breaks = ends[np.isfinite(ends)]
+            breaks = ends[np.isfinite(ends) & (ends * tau > 0.0)]
+        on = _starts_active(push, epoch_d, state, float(np.sign(tau)))
         args = (tab, physics, push, epoch_d, state, tau, forces, eps, cap_d)
-        leg = _integrate_leg(*args, breaks, (low, high))
+        leg = _integrate_leg(*args, breaks, on, (low, high))
         if push.window_kind == WINDOW_DISTANCE:
-            # the crossings move a little with the thrust they switch, so they are found again until
-            # they rest
-            for _ in range(4):
+            # the crossings move a little with the thrust they switch, so they are found again
+            # until they rest
+            for _ in range(WINDOW_PASSES):
                 last = breaks
-                breaks = _switch_times(leg, tab, epoch_d, (push.window_from, push.window_to))
+                breaks = _switch_times(leg, epoch_d, (push.window_from, push.window_to))
                 if breaks.size == last.size and np.all(np.abs(breaks - last) < 1e-8):
                     break
-                leg = _integrate_leg(*args, breaks, (low, high))
+                leg = _integrate_leg(*args, breaks, on, (low, high))
+            else:
+                raise PropagationError(
+                    "The distances at which the thrust switches do not settle: the orbit grazes an "
+                    f"end of the activity window {push.window_from:g} to {push.window_to:g} au; "
+                    "move that end."
+                )
         legs.append(leg)
     return Track(epoch_d, state, legs[0], legs[1], tab, physics, push)

@@ -140,11 +140,15 @@ def echo(
     """
     times = np.atleast_1d(np.asarray(tdb_d, dtype=float))
     here = _path(track, times, transmitter, receiver, own_stations)
-    half = HALF_STEP_S / DAY_S
-    sides = [
-        _path(track, times + sign * half, transmitter, receiver, own_stations) for sign in (1, -1)
-    ]
-    rate = (sides[0].delay_s - sides[1].delay_s) / (2.0 * HALF_STEP_S)
+    rates = []
+    for half_s in (HALF_STEP_S, 0.5 * HALF_STEP_S):
+        sides = [
+            _path(track, times + sign * half_s / DAY_S, transmitter, receiver, own_stations).delay_s
+            for sign in (1, -1)
+        ]
+        rates.append((sides[0] - sides[1]) / (2.0 * half_s))
+    # one step of L. F. Richardson's extrapolation takes off the third derivative
+    rate = (4.0 * rates[1] - rates[0]) / 3.0
     return Echo(here.delay_s, -rate * frequency_mhz * 1e6, here.bounce_tau_d)
 
 

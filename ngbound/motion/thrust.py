@@ -33,6 +33,8 @@ from ngbound.motion._kernels.layout import (
 from ngbound.sky import parse_time
 
 COMPONENTS = "RTN"
+MAX_LAG_D = 1000.0
+"""Lags of published comet orbits reach some hundred days; beyond this a case holds a slip."""
 AU_PER_D2 = u.au / u.day**2
 
 
@@ -134,6 +136,8 @@ def _normalised(name: str, r0_au: float, m: float, n: float, k: float, source: s
 
 def power_law(exponent: float) -> FormLaw:
     """g = (r / 1 au)^-exponent."""
+    if not np.isfinite(exponent):
+        raise CaseError(f"The exponent of a power law must be a finite number; got {exponent!r}.")
     return FormLaw(f"power-{exponent:g}", 1.0, 1.0, float(exponent), 0.0, 0.0, "power law")
 
 
@@ -302,6 +306,18 @@ class Thrust:
         amounts = _per_d2(A)
         if amounts.shape != (3,) or not np.all(np.isfinite(amounts)):
             raise CaseError(f"A thrust has three amounts A1, A2, A3 in au/d2; got {A!r}.", A=A)
+        lag_d = float(u.Quantity(lag, u.day).value)
+        if not abs(lag_d) <= MAX_LAG_D:
+            raise CaseError(
+                f"The lag of a thrust must lie within {MAX_LAG_D:g} days of zero; got {lag!r}.",
+                lag=lag,
+            )
+        per_mass = float(u.Quantity(area_to_mass, u.m**2 / u.kg).value)
+        if not np.isfinite(per_mass):
+            raise CaseError(
+                f"The area to mass must be a finite number of m2/kg; got {area_to_mass!r}.",
+                area_to_mass=area_to_mass,
+            )
         object.__setattr__(self, "law", find_law(law, exponent))
         object.__setattr__(self, "components", wanted)
         object.__setattr__(self, "A", amounts * AU_PER_D2)

@@ -51,7 +51,7 @@ def adaptive(
 
     def work() -> None:
         _, n, start, length, begin, power, _ = integrate(
-            track.tab, track.push, track.physics, 0.0, state, days, eps, 40.0, none, 256
+            track.tab, track.push, track.physics, 0.0, state, days, eps, 40.0, none, True, 256
         )
         dense_many(start, length, begin, power, n, True, outputs, out)
 

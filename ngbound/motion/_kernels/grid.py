@@ -13,7 +13,7 @@ from numba import njit
 
 from .bodies import all_positions
 from .forces import other_partials, tides
-from .laws import is_active, thrust_partials
+from .laws import thrust_partials
 from .layout import RELATIVITY_ALL, WINDOW_DISTANCE
 from .radau import N_NODES, NODES, TO_POWERS, V_WEIGHTS, X_WEIGHTS, dense, find_step
 
@@ -35,9 +35,25 @@ ROW = 115
 
 @njit(cache=True, error_model="numpy")
 def tabulate(
-    tab, push, phys, epoch_d, start, length, begin, power, n, forward, grid_tau, grid_h, out
+    tab,
+    push,
+    phys,
+    epoch_d,
+    start,
+    length,
+    begin,
+    power,
+    n,
+    forward,
+    grid_tau,
+    grid_h,
+    grid_on,
+    out,
 ):
-    """Fill ``out`` (steps, 8, ROW) along a reference trajectory."""
+    """Fill ``out`` (steps, 8, ROW) along a reference trajectory.
+
+    ``grid_on`` (steps,): whether the thrust is on over each step.
+    """
     every = phys.relativity == RELATIVITY_ALL
     nb = tab.gm.size
     pos = np.empty((nb, 3))
@@ -54,13 +70,7 @@ def tabulate(
     w = np.empty(3)
     before = False
     for k in range(grid_tau.size):
-        tau = grid_tau[k] + 0.5 * grid_h[k]
-        all_positions(tab, epoch_d + tau, pos, vel, every)
-        dense(start, length, begin, power, find_step(start, n, forward, tau), tau, state)
-        middle = math.sqrt(
-            (state[0] - pos[0, 0]) ** 2 + (state[1] - pos[0, 1]) ** 2 + (state[2] - pos[0, 2]) ** 2
-        )
-        active = is_active(push, epoch_d + tau, middle)
+        active = grid_on[k]
         for j in range(N_NODES):
             tau = grid_tau[k] + grid_h[k] * NODES[j]
             t = epoch_d + tau

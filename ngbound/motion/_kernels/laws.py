@@ -12,7 +12,7 @@ import math
 import numpy as np
 from numba import njit
 
-from .layout import LAW_FORM, WINDOW_DATE, WINDOW_NONE
+from .layout import LAW_FORM
 
 
 @njit(cache=True, error_model="numpy")
@@ -153,15 +153,6 @@ def distance_at_lag(gm, x, v, dt, out):
         out[1 + i] = by_r * x[i] / r + by_sigma * v[i] / root - by_alpha * 2.0 * x[i] / (r * r * r)
         out[4 + i] = by_sigma * x[i] / root - by_alpha * 2.0 * v[i] / gm
     out[7] = sigma1 * root / r1
-
-
-@njit(cache=True, error_model="numpy")
-def is_active(push, t, r):
-    """True while the activity window is open."""
-    if push.window_kind == WINDOW_NONE:
-        return True
-    at = t if push.window_kind == WINDOW_DATE else r
-    return push.window_from <= at <= push.window_to
 
 
 @njit(cache=True, error_model="numpy")

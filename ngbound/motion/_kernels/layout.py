@@ -72,7 +72,7 @@ class Physics(NamedTuple):
     """Switches of the force model.
 
     ``sun_j2`` is J2 R^2 of the Sun in au^2 (0: off), ``sun_pole`` its rotation axis in ICRF,
-    ``sun_spin`` the solar angular momentum per mass in au^2/d times G M / GM (0: off), ``earth_j2``
+    ``sun_spin`` the Sun's angular momentum per unit mass in au^2/d (0: off), ``earth_j2``
     J2 R^2 of the Earth in au^2.
     """
 

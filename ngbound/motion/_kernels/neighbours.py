@@ -15,7 +15,6 @@ from numba import njit
 from .grid import (
     GV,
     GX,
-    JUMP,
     SCALE,
     SECOND_PUSH,
     SECOND_RELATIVITY,
@@ -114,12 +113,13 @@ def _offset_acceleration(gm_sun, row, d, w, da, amount, acc):
 @njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
 def offsets_to_records(
     gm_sun,
+    c_au_d,
     a_ref,
     grid_h,
     nodes,
     columns,
     step_of,
-    weight_x,
+    weight,
     fraction_h,
     first,
     last,
@@ -131,7 +131,7 @@ def offsets_to_records(
 
     ``theta`` (9, LANES): parameter offsets (state, then thrust); ``columns`` (steps, 8, 6, 9) the
     linear solution at the nodes, used as the first guess. Records ``first`` to ``last`` of the
-    sorted list lie in this direction; ``out`` (records, 3, LANES) receives their offsets, ``doubt``
+    sorted list lie in this direction; ``out`` (records, 6, LANES) receives their offsets, ``doubt``
     (2, LANES) the estimated error of position (au) and the last change of a sweep (au).
     """
     steps = grid_h.size
@@ -154,23 +154,6 @@ def offsets_to_records(
     record = first
     for k in range(steps):
         h = grid_h[k]
-        row = nodes[k, 0]
-        r = math.sqrt(row[SUN] ** 2 + row[SUN + 1] ** 2 + row[SUN + 2] ** 2)
-        for i in range(3):
-            if row[JUMP + i] != 0.0 or row[JUMP + 3 + i] != 0.0 or row[JUMP + 6 + i] != 0.0:
-                # the switch of a distance window, see ``apply_jump``
-                for lane in range(LANES):
-                    jump = (
-                        amount[0, lane] * row[JUMP + i]
-                        + amount[1, lane] * row[JUMP + 3 + i]
-                        + amount[2, lane] * row[JUMP + 6 + i]
-                    )
-                    along = (
-                        row[SUN] * begin[0, lane]
-                        + row[SUN + 1] * begin[1, lane]
-                        + row[SUN + 2] * begin[2, lane]
-                    )
-                    begin[3 + i, lane] += jump * along / r
         # first guess from the linear solution
         for j in range(N_NODES):
             for i in range(3):
@@ -213,6 +196,7 @@ def offsets_to_records(
                 break
         # what the orders left out, at the last node
         row = nodes[k, N_NODES - 1]
+        here2 = row[SUN] ** 2 + row[SUN + 1] ** 2 + row[SUN + 2] ** 2
         for lane in range(LANES):
             size2 = d[0, lane] ** 2 + d[1, lane] ** 2 + d[2, lane] ** 2
             size = math.sqrt(size2)
@@ -221,17 +205,22 @@ def offsets_to_records(
                 push * row[SECOND_PUSH] + row[SECOND_RELATIVITY]
             )
             drift[lane] += abs(h) * missing
-            doubt[0, lane] += abs(h) * drift[lane]
+            # and what a bent path adds over the change of the light time
+            bend = 0.5 * gm_sun * size2 / (c_au_d * c_au_d * here2)
+            doubt[0, lane] = max(doubt[0, lane] + abs(h) * drift[lane], bend)
             doubt[1, lane] = max(doubt[1, lane], change[lane] * h * h)
         while record < last and step_of[record] == k:
             for i in range(3):
                 for lane in range(LANES):
                     px = 0.0
+                    pv = 0.0
                     for m in range(N_NODES):
-                        px += weight_x[record, m] * acc[m, i, lane]
+                        px += weight[record, 0, m] * acc[m, i, lane]
+                        pv += weight[record, 1, m] * acc[m, i, lane]
                     out[record, i, lane] = (
                         begin[i, lane] + fraction_h[record] * begin[3 + i, lane] + px
                     )
+                    out[record, 3 + i, lane] = begin[3 + i, lane] + pv
             record += 1
         for i in range(3):
             for lane in range(LANES):
@@ -251,26 +240,27 @@ def sight_residuals(c_au_d, rho, speed, basis, offset, out):
 
     ``rho`` (n, 3) observer to object on the reference at its emission time, ``speed`` (n, 3) its
     velocity then, ``basis`` (n, 3, 3) rows east, north and the observed direction, ``offset`` (n,
-    3, LANES); ``out`` (n, 2, LANES).
+    6, LANES) of position and velocity then; ``out`` (n, 2, LANES). A lane's own emission time
+    follows from its longer or shorter path.
     """
     for k in range(rho.shape[0]):
         x = rho[k, 0]
         y = rho[k, 1]
         z = rho[k, 2]
         ref = math.sqrt(x * x + y * y + z * z)
-        vx = speed[k, 0]
-        vy = speed[k, 1]
-        vz = speed[k, 2]
-        slow = 1.0 / (c_au_d + (x * vx + y * vy + z * vz) / ref)
         for lane in range(LANES):
             dx = offset[k, 0, lane]
             dy = offset[k, 1, lane]
             dz = offset[k, 2, lane]
+            vx = speed[k, 0] + offset[k, 3, lane]
+            vy = speed[k, 1] + offset[k, 4, lane]
+            vz = speed[k, 2] + offset[k, 5, lane]
             px = x + dx
             py = y + dy
             pz = z + dz
             far = math.sqrt(px * px + py * py + pz * pz)
-            late = -slow * (dx * (px + x) + dy * (py + y) + dz * (pz + z)) / (far + ref)
+            longer = (dx * (px + x) + dy * (py + y) + dz * (pz + z)) / (far + ref)
+            late = -longer * far / (c_au_d * far + px * vx + py * vy + pz * vz)
             px += vx * late
             py += vy * late
             pz += vz * late
@@ -334,14 +324,14 @@ def batch(
 ):
     """chi2 and doubt of many parameter offsets ``theta`` (m, p); m a multiple of LANES.
 
-    ``back`` and ``ahead``: (grid_h, nodes, columns, step_of, weight_x, fraction_h) of the two
+    ``back`` and ``ahead``: (grid_h, nodes, columns, step_of, weight, fraction_h) of the two
     directions of time; the records are sorted so that the first ``n_back`` lie before the epoch
     (latest first), the others after it.
     """
     n = rho.shape[0]
     n_none = n - rho.shape[0]  # a variable: a literal would compile the kernel twice
     lanes = np.empty((COLUMNS, LANES))
-    offset = np.zeros((n, 3, LANES))
+    offset = np.zeros((n, 6, LANES))
     residual = np.zeros((n, 2, LANES))
     white = np.zeros((2 * n, LANES))
     unsure = np.empty((2, LANES))
@@ -353,6 +343,7 @@ def batch(
         unsure[:] = 0.0
         offsets_to_records(
             gm_sun,
+            c_au_d,
             a_ref,
             back[0],
             back[1],
@@ -368,6 +359,7 @@ def batch(
         )
         offsets_to_records(
             gm_sun,
+            c_au_d,
             a_ref,
             ahead[0],
             ahead[1],

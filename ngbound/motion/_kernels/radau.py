@@ -17,7 +17,6 @@ from scipy.special import roots_jacobi
 
 from .bodies import all_positions
 from .forces import acceleration
-from .laws import is_active
 from .layout import INSIDE_BODY, NOT_CONVERGED, OK, RELATIVITY_ALL, STEP_UNDERFLOW, TOO_MANY_STEPS
 
 N_NODES = 8
@@ -81,13 +80,28 @@ def local_time(gm, pos, x):
 
 
 @njit(cache=True, error_model="numpy")
-def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_max):
+def inside_body(tab, pos, x):
+    """Row of a body whose surface encloses ``x``, or -1."""
+    for b in range(tab.gm.size):
+        d2 = 0.0
+        for i in range(3):
+            d2 += (x[i] - pos[b, i]) ** 2
+        if d2 < tab.radius[b] * tab.radius[b]:
+            return b
+    return -1
+
+
+@njit(cache=True, error_model="numpy")
+def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, first_active, n_max):
     """Integrate a barycentric state from the epoch (tau = 0) to ``tau_end`` days.
 
     Returns status, number of steps, and per step: start (tau, d), length (d, signed), start state
-    (6), and the power coefficients of the acceleration (8, 3); last, what was met when status is
-    not OK (body row, tau). ``breaks`` are tau at which a step must end.
+    (6), the power coefficients of the acceleration (8, 3) and whether the thrust was on; last, what
+    was met when status is not OK (body row, tau). ``breaks`` are tau at which a step must end and
+    the thrust switches; ``first_active``: whether it is on just after the epoch.
     """
+    on = np.empty(n_max, dtype=np.bool_)
+    active = first_active
     start = np.empty(n_max + 1)
     length = np.empty(n_max)
     begin = np.empty((n_max + 1, 6))
@@ -117,10 +131,14 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_ma
         begin[0, i] = x0[i]
         begin[0, 3 + i] = v0[i]
     if tau_end == 0.0:
-        return OK, 0, start, length, begin, power, met
+        return OK, 0, start, length, begin, power, on, met
     last_h = 0.0
     fresh = True
     all_positions(tab, epoch_d, pos[0], vel[0], every)
+    inside = inside_body(tab, pos[0], x0)
+    if inside >= 0:
+        met[0] = inside
+        return INSIDE_BODY, 0, start, length, begin, power, on, met
     pace = local_time(tab.gm, pos[0], x0)
     wanted = direction * min(cap_d, 0.2 * pace)
     while True:
@@ -139,13 +157,9 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_ma
             h = 0.5 * (limit - tau)
         if abs(h) < 1e-9 and not closing:
             met[1] = tau
-            return STEP_UNDERFLOW, n, start, length, begin, power, met
+            return STEP_UNDERFLOW, n, start, length, begin, power, on, met
         for j in range(1, N_NODES):
             all_positions(tab, epoch_d + (tau + h * NODES[j]), pos[j], vel[j], every)
-        for i in range(3):
-            x[i] = x0[i] + 0.5 * h * v0[i] - pos[0, 0, i]
-        middle = math.sqrt(x[0] * x[0] + x[1] * x[1] + x[2] * x[2])
-        active = is_active(push, epoch_d + (tau + 0.5 * h), middle)
         for j in range(N_NODES):
             for i in range(3):
                 node[j, i] = 0.0
@@ -225,7 +239,7 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_ma
         if (factor < 0.5 and abs(h) > SMOOTH * pace) or not converged:
             if abs(h) < 1e-9:
                 met[1] = tau
-                return NOT_CONVERGED, n, start, length, begin, power, met
+                return NOT_CONVERGED, n, start, length, begin, power, on, met
             wanted = h * max(factor, 0.1)
             fresh = True
             for k in range(N_NODES):
@@ -234,9 +248,10 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_ma
             continue
         if n >= n_max:
             met[1] = tau
-            return TOO_MANY_STEPS, n, start, length, begin, power, met
+            return TOO_MANY_STEPS, n, start, length, begin, power, on, met
         start[n] = tau
         length[n] = h
+        on[n] = active
         for k in range(N_NODES):
             for i in range(3):
                 power[n, k, i] = coef[k, i]
@@ -259,6 +274,8 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_ma
         fresh = False
         n += 1
         if closing:
+            if limit != tau_end:
+                active = not active
             tau = limit
             tau_lost = 0.0
         else:
@@ -272,16 +289,13 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, n_ma
             begin[n, 3 + i] = v0[i]
         all_positions(tab, epoch_d + tau, pos[0], vel[0], every)
         pace = local_time(tab.gm, pos[0], x0)
-        for b in range(nb):
-            d2 = 0.0
-            for i in range(3):
-                d2 += (x0[i] - pos[0, b, i]) ** 2
-            if d2 < tab.radius[b] * tab.radius[b]:
-                met[0] = b
-                met[1] = tau
-                return INSIDE_BODY, n, start, length, begin, power, met
+        inside = inside_body(tab, pos[0], x0)
+        if inside >= 0:
+            met[0] = inside
+            met[1] = tau
+            return INSIDE_BODY, n, start, length, begin, power, on, met
         if closing and limit == tau_end:
-            return OK, n, start, length, begin, power, met
+            return OK, n, start, length, begin, power, on, met
         if closing:
             fresh = True
             for k in range(N_NODES):
