@@ -46,7 +46,7 @@ def quick(tmp_path):
     path = tmp_path / "quick.toml"
     path.write_text(
         f'[arc]\nfile = "{DEMO / "quiet.psv"}"\n[orbit]\n{orbit}\n'
-        "[thrust]\ncomponents = \"R\"\n"
+        '[thrust]\ncomponents = "R"\n'
         "[sampling]\nmax_steps = 60\neffective_samples = 200\n",
         encoding="utf-8",
     )
@@ -219,3 +219,23 @@ def test_every_expected_failure_is_of_our_own_tree(tmp_path):
     with pytest.raises(NgboundError):
         run.run_case(tmp_path / "absent.psv", output=tmp_path / "out")
     assert list(tmp_path.iterdir()) == []
+
+
+def test_the_limit_carries_the_law_to_the_mass(quick):
+    bounds = run.limit_case(quick)
+    budget = ng.Outgassing(rate=3e26, at=1.25)
+    carried = ng.mass_bound(bounds.limit, budget)
+    told = ng.mass_bound(bounds.limit, budget, g_at=bounds.fits.push.thrust.g)
+    assert carried.mass == told.mass
+    assert ng.mass_bound(bounds.posterior, budget).mass.value > 0.0
+    with pytest.raises(ng.NgboundError, match="give g_at"):
+        ng.mass_bound(1e-9, budget)
+
+
+def test_limit_under_other_error_models(quick):
+    bounds = run.limit_case(quick, vary_errors=True)
+    assert bounds.variation is not None
+    text = str(bounds)
+    assert "Threshold and limit under other error models" in text and "naive" in text
+    assert bounds.to_dict()["error_variants"]["table"]
+    assert "may be trusted" in text or "not be trusted" in text

@@ -7,6 +7,7 @@ transpose, are the Schur complement. No badly scaled matrix is ever inverted (N.
 Accuracy and Stability of Numerical Algorithms, 2nd ed., chapter 10).
 """
 
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 from typing import Any
 
@@ -75,6 +76,8 @@ class ThrustInformation:
     inflation_by_thrust : (k,) float
         Variance with the other thrust components free over variance with them held, orbit free.
     orbit : OrbitConditional
+    law_g : callable or None
+        g(r) of the thrust law, r in au, where the fit carries its law.
     """
 
     components: str
@@ -88,6 +91,7 @@ class ThrustInformation:
     inflation_by_orbit: np.ndarray
     inflation_by_thrust: np.ndarray
     orbit: OrbitConditional
+    law_g: Callable[[float], float] | None = None
 
     @property
     def k(self) -> int:
@@ -302,6 +306,7 @@ def thrust_information(fit: ThrustFit) -> ThrustInformation:
             gain=gain_scaled * a_scale[None, :] / x_scale[:, None],
             spread=spread_scaled / x_scale[:, None],
         ),
+        law_g=getattr(getattr(fit, "thrust", None), "g", None),
     )
 
 

@@ -13,7 +13,8 @@ different questions:
   with several components this one undercovers, since the profile of a length is not regular there.
 """
 
-from dataclasses import dataclass
+from collections.abc import Callable
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -68,6 +69,8 @@ class UpperLimit:
         "posterior" or "linear theory".
     converged : bool
     message : str
+    law_g : callable or None
+        g(r) of the thrust law, r in au, where the fit carries its law.
     """
 
     confidence: float
@@ -90,6 +93,7 @@ class UpperLimit:
     source: str
     converged: bool
     message: str
+    law_g: Callable[[float], float] | None = field(default=None, repr=False, compare=False)
 
     def __str__(self) -> str:
         c = f"{100.0 * self.confidence:g} %"
@@ -230,6 +234,7 @@ def upper_limit(
         source=source,
         converged=converged,
         message=message,
+        law_g=information.law_g,
     )
 
 

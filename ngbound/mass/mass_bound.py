@@ -274,7 +274,7 @@ def mass_bound(
     limit_or_samples: Any,
     outgassing: Outgassing,
     *,
-    g_at: GAt,
+    g_at: GAt | None = None,
     density: DistributionSpec | None = None,
     confidence: float = 0.95,
     threshold: DetectionThreshold | Quantity | float | None = None,
@@ -293,7 +293,8 @@ def mass_bound(
         one upper limit, at which A is then held. A is the thrust at g = 1.
     outgassing : Outgassing
     g_at : callable or float
-        Thrust law g(r) with r in au; or its value at the one distance of the measurement.
+        Thrust law g(r) with r in au; or its value at the one distance of the measurement. Not
+        needed where the limit or posterior carries the law of its fit.
     density : spec, optional
         Bulk density, kg/m3; default `DEFAULT_DENSITY`.
     confidence : float
@@ -322,6 +323,14 @@ def mass_bound(
             f"confidence = {confidence!r} must be at least 0.5 and below 1, such as 0.95.",
             value=confidence,
         )
+    if g_at is None:
+        carrier = getattr(limit_or_samples, "information", limit_or_samples)
+        g_at = getattr(carrier, "law_g", None)
+        if g_at is None:
+            raise MassError(
+                "A mass needs the thrust law at the distance where the rate was measured, and "
+                "these numbers do not carry it: give g_at, for instance g_at=thrust.g."
+            )
     rng = np.random.default_rng(seed)
     bulk = density_from(density)
     acceleration = _acceleration(limit_or_samples, limit_confidence, n_effective)
