@@ -133,7 +133,7 @@ def main() -> None:
     """Find out how large a non-gravitational acceleration an arc of astrometry would have shown,
     and what mass that demands.
 
-    INPUT is a case file (TOML), or an arc of observations (ADES PSV, ADES XML or 80-column), for
+    INPUT is a case file (TOML), or an arc of observations (ADES PSV, ADES XML, 80-column or JSON), for
     which every choice then has its default.
 
     The exit status is 0 when the work was done, 1 when the analysis could not be done, and 2 when
@@ -269,7 +269,7 @@ def inject(input_file: Path, **options: Any) -> Any:
 @_step(
     "Foresee what planned nights would do to the threshold.\n\n"
     "The nights stand in [[planned]] tables of the case file.\n\n"
-    "Example: ngbound forecast my_case.toml",
+    "Example: ngbound forecast data_demo/forecast.toml",
     name="forecast",
 )
 @LAW
@@ -295,14 +295,14 @@ _desk(
     "audit",
     "Test quoted numbers against one another and against their arc.\n\n"
     "QUOTED.toml holds [numbers], and, where known, [threshold], [arc], [errors] or [geometry].\n\n"
-    "Example: ngbound audit paper.toml",
+    "Example: ngbound audit data_demo/desk/audit.toml",
     "audit",
 )
 _desk(
     "reconcile",
     "Say what would have to be true for two or more results to hold together.\n\n"
     "QUOTED.toml holds two or more [[result]] tables, of quoted numbers or with their arcs.\n\n"
-    "Example: ngbound reconcile results.toml",
+    "Example: ngbound reconcile data_demo/desk/reconcile.toml",
     "reconcile",
 )
 

@@ -60,6 +60,7 @@ from ngbound.report import (
     direction_map,
     mass_figure,
     posterior_figure,
+    prior_name,
     provenance,
     render_report,
     residual_by_station,
@@ -107,7 +108,9 @@ def run_case(path: str | Path, *, progress: bool = False, **choices: Any) -> Rec
         with step("draw the figures"):
             figures = draw_figures(bounds, mass)
     tables: list[SmallTable | str] = [
+        station_table(fits.null),
         station_table(fits.push),
+        catalogue_table(fits.null),
         catalogue_table(fits.push),
         *([variant_table(bounds)] if bounds.variation else []),
         fits.push.error_report,
@@ -606,6 +609,9 @@ class Bounds:
             best_threshold_au_d2=threshold["best_au_d2"],
             confidence=limit["confidence"],
             limit_au_d2=limit["magnitude_au_d2"],
+            limit_prior=prior_name(limit["prior"]),
+            other_limit_au_d2=limit["alternative_magnitude_au_d2"],
+            other_limit_prior=prior_name(limit["alternative_prior"]),
             estimate_au_d2=float(judged.estimate.value),
             estimate_sigma_au_d2=float(judged.estimate_sigma.value),
             found_sigma=judged.significance_sigma,

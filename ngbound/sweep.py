@@ -115,10 +115,10 @@ def sweep_cases(
     CaseError
         No case found, two cases with one output folder, or a wrong part.
     """
+    number, of = _part(part)
     cases = sorted(set(_case_files(paths)))
     if not cases:
         raise CaseError("No case file (*.toml with an [arc] table) was found in what was given.")
-    number, of = _part(part)
     read = {path: case_for(path) for path in cases}
     _refuse_shared_folders(read)
     mine = cases[number - 1 :: of]
@@ -155,7 +155,8 @@ def _case_files(paths: Iterable[str | Path]) -> Iterator[Path]:
         path = Path(given)
         if path.is_dir():
             for found in sorted(path.glob("*.toml")):
-                if re.search(r"^\s*\[arc\]", found.read_text(encoding="utf-8"), re.MULTILINE):
+                text = found.read_bytes().decode("utf-8", errors="replace")
+                if re.search(r"^\s*\[arc\]", text, re.MULTILINE):
                     yield found.resolve()
         elif path.is_file():
             yield path.resolve()

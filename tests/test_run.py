@@ -239,3 +239,8 @@ def test_limit_under_other_error_models(quick):
     assert "Threshold and limit under other error models" in text and "naive" in text
     assert bounds.to_dict()["error_variants"]["table"]
     assert "may be trusted" in text or "not be trusted" in text
+
+
+@pytest.mark.parametrize("name", ["quiet", "pushed"])
+def test_the_demo_arcs_hold_nothing_doubtful(name):
+    assert run.inspect_case(DEMO / f"{name}.psv").survey.findings == ()

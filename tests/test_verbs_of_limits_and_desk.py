@@ -105,3 +105,17 @@ def test_desk_refuses_what_it_cannot_read(verb: str, tmp_path: Path) -> None:
     wrong.write_text("[numbrs]\n")
     status, _, complaint = call(verb, str(wrong))
     assert status == 2 and "Traceback" not in complaint
+
+
+@pytest.mark.parametrize(
+    ("verb", "file", "words"),
+    [
+        ("audit", "desk/audit.toml", "sound"),
+        ("reconcile", "desk/reconcile.toml", "must be explained"),
+        ("forecast", "forecast.toml", "falls from"),
+    ],
+)
+def test_files_of_the_demo(verb: str, file: str, words: str) -> None:
+    status, text, complaint = call(verb, str(DEMO / file))
+    assert status == 0, complaint
+    assert words in text

@@ -167,8 +167,11 @@ def _misread(arc: Arc, rows: NDArray[np.int64], time: NDArray[np.float64]) -> li
                 "depends most.",
             )
         )
+    # the parallax of a spacecraft sets its track apart from those seen from the ground
+    ground = np.flatnonzero((arc.table["site"] != "space").to_numpy(dtype=bool))
     stn = arc.table["stn"].to_numpy(dtype=object)
-    for track in second_tracks(time, ra, dec, stn):
+    tracks = second_tracks(time[ground], ra[ground], dec[ground], stn[ground])
+    for track in (ground[np.asarray(each)] for each in tracks):
         where = ", ".join(str(n) for n in line[track][:10])
         found.append(
             Finding(

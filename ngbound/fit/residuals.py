@@ -30,6 +30,20 @@ def sunward_per_au(sight: Sight, records: Records, epoch_d: float) -> Floats:
     return flat / np.linalg.norm(sight.rho_au, axis=1)[:, None]
 
 
+def station_labels(used: Arc) -> list[str]:
+    """Station code of each record; for a roving observer with its place beside it."""
+    table = used.table
+    codes = table["stn"].astype(str).tolist()
+    if "pos1" not in table or "pos2" not in table:
+        return codes
+    roving = (table["site"] == "roving").to_numpy(dtype=bool)
+    places = zip(codes, roving, table["pos1"], table["pos2"], table["sys"], strict=True)
+    return [
+        f"{code} {float(east):.2f} E {float(north):+.2f}" if moves and frame == "WGS84" else code
+        for code, moves, east, north, frame in places
+    ]
+
+
 def residual_table(
     used: Arc,
     records: Records,
@@ -46,7 +60,8 @@ def residual_table(
     Returns
     -------
     pandas.DataFrame
-        tdb_d, utc, stn, mode, astCat, line; ra_arcsec (times cos dec) and dec_arcsec, observed
+        tdb_d, utc, stn (of a rover with longitude and latitude), mode, astCat, line; ra_arcsec
+        (times cos dec) and dec_arcsec, observed
         minus computed; their sigmas; along_arcsec and across_arcsec, the residual along and 90
         degrees (towards north from east, that is to the left) off the apparent motion; chi, the
         root of the record's chi2, freed of the errors it shares with others; keep;
@@ -63,7 +78,7 @@ def residual_table(
         {
             "tdb_d": records.tdb_d,
             "utc": np.atleast_1d(tdb_d_to_iso(records.tdb_d, scale="utc")),
-            "stn": used.table["stn"].to_numpy(),
+            "stn": station_labels(used),
             "mode": used.table["mode"].to_numpy(),
             "astCat": used.table["astCat"].to_numpy(),
             "line": used.table["line"].to_numpy(),

@@ -194,7 +194,7 @@ class MassBound:
                 " Under the same budget a body lighter than "
                 f"{number_text(self.mass_detection.value)} kg "
                 f"({number_text(self.diameter_detection.value)} m) would have shown a thrust above "
-                "the detection threshold."
+                "the detection threshold, whatever its direction."
             )
         if self.dominant:
             text += (

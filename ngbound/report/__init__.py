@@ -7,7 +7,7 @@ gravity-only refit (``departure``): d = (B - X (X'WX)^-1 X'WB) A, X and B the pa
 to orbit and thrust, W the inverse covariance of the observations.
 """
 
-from ngbound.report.document import render_report, the_sentence
+from ngbound.report.document import prior_name, render_report, the_sentence
 from ngbound.report.figures import (
     direction_map,
     mass_figure,
@@ -34,6 +34,7 @@ __all__ = [
     "load_record",
     "mass_figure",
     "posterior_figure",
+    "prior_name",
     "provenance",
     "render_report",
     "residual_by_station",

@@ -73,6 +73,9 @@ def the_sentence(
     best_threshold_au_d2: float | None = None,
     confidence: float | None = None,
     limit_au_d2: float | None = None,
+    limit_prior: str = "",
+    other_limit_au_d2: float | None = None,
+    other_limit_prior: str = "",
     estimate_au_d2: float | None = None,
     estimate_sigma_au_d2: float | None = None,
     found_sigma: float | None = None,
@@ -100,6 +103,9 @@ def the_sentence(
         In the worst and the best seen direction; the first alone if they are the same.
     confidence, limit_au_d2 : float
         Upper limit on |A|.
+    limit_prior, other_limit_prior : str
+        Names of the priors of the limit, and of the one beside it.
+    other_limit_au_d2 : float
     estimate_au_d2, estimate_sigma_au_d2, found_sigma : float
         Size of the fitted thrust with its error, and its significance in sigma.
     reasons : sequence of str
@@ -137,7 +143,13 @@ def the_sentence(
         )
     if is_number(limit_au_d2):
         at = f"at {percent(confidence)} confidence " if is_number(confidence) else ""
-        clauses.append(f"{at}|A| < {rounded(limit_au_d2, 2, outward='up')} au/d2")
+        belief = ""
+        if limit_prior:
+            belief = f" under the {limit_prior} prior"
+            if is_number(other_limit_au_d2) and other_limit_prior:
+                other = rounded(other_limit_au_d2, 2, outward="up")
+                belief += f" ({other} under {other_limit_prior})"
+        clauses.append(f"{at}|A| < {rounded(limit_au_d2, 2, outward='up')} au/d2{belief}")
     if clauses:
         text = "; ".join(clauses)
         parts.append(text[0].upper() + text[1:] + ".")
@@ -183,6 +195,11 @@ def _estimate(
     at = f" at {found:.{1 if found < 10 else 0}f} sigma" if is_number(found) else ""
     value = with_error(size, sigma if is_number(sigma) else float("nan"))
     return f"A thrust{following} {word}{at}, |A| = {value} au/d2."
+
+
+def prior_name(described: Any) -> str:
+    """The name of a prior out of its description, without its components and edge."""
+    return str(described or "").split(" in ")[0].split(",")[0].strip()
 
 
 def _threshold(
@@ -255,6 +272,9 @@ def sentence_of(record: Mapping[str, Any]) -> str:
         best_threshold_au_d2=threshold.get("best_au_d2"),
         confidence=limit.get("confidence"),
         limit_au_d2=limit.get("magnitude_au_d2"),
+        limit_prior=prior_name(limit.get("prior")),
+        other_limit_au_d2=limit.get("alternative_magnitude_au_d2"),
+        other_limit_prior=prior_name(limit.get("alternative_prior")),
         estimate_au_d2=judged.get("estimate_au_d2"),
         estimate_sigma_au_d2=judged.get("estimate_sigma_au_d2"),
         found_sigma=judged.get("significance_sigma"),
@@ -479,11 +499,17 @@ def _write_verdict(page: _Page, record: Mapping[str, Any]) -> None:
         page.lines.append("")
         for text in warned:
             page.item(text)
+    findings = record.get("findings") or ()
+    if findings:
+        page.lines.append("")
+        page.prose("Found doubtful in the arc before any orbit:")
+        for found in findings:
+            page.item(str(found.get("sentence") if isinstance(found, Mapping) else found))
 
 
 ARC_WORDS = {
     "n_records": "records read",
-    "n_obs": "observations used",
+    "n_obs": "usable observations",
     "n_nights": "station-nights",
     "n_stations": "stations",
     "first_utc": "first (UTC)",
@@ -543,6 +569,8 @@ def _write_fits(page: _Page, record: Mapping[str, Any]) -> None:
     compared = record.get("comparison") or {}
     if is_number(compared.get("delta_chi2")):
         text = f"thrust lowers chi2 by {compared['delta_chi2']:.2f}"
+        if is_number(compared.get("n_obs")):
+            text += f" over the {int(compared['n_obs'])} observations fitted alike by both"
         if is_number(compared.get("delta_dof")):
             text += f" for {counted(int(compared['delta_dof']), 'parameter')}"
         if is_number(compared.get("p_value")):

@@ -240,6 +240,8 @@ def catalogue_table(fit: Any) -> SmallTable:
 
 def _means_table(fit: Any, column: str, name: str, title: str) -> SmallTable:
     means = group_means(fit, fit.residuals[column].to_numpy())
+    free = getattr(fit, "components", "")
+    title = f"{title}, {'fit with ' + free + ' thrust' if free else 'gravity alone'}"
     starred_ra = np.where(np.abs(means["ra_sigma"]) > SUSPICIOUS_SIGMA, "*", "")
     starred_dec = np.where(np.abs(means["dec_sigma"]) > SUSPICIOUS_SIGMA, "*", "")
     frame = pd.DataFrame(
