@@ -133,8 +133,8 @@ def main() -> None:
     """Find out how large a non-gravitational acceleration an arc of astrometry would have shown,
     and what mass that demands.
 
-    INPUT is a case file (TOML), or an arc of observations (ADES PSV, ADES XML, 80-column or JSON), for
-    which every choice then has its default.
+    INPUT is a case file (TOML), or an arc of observations (ADES PSV, ADES XML, 80-column or JSON),
+    for which every choice then has its default.
 
     The exit status is 0 when the work was done, 1 when the analysis could not be done, and 2 when
     the input or the usage is wrong; the reason is one sentence on stderr.
