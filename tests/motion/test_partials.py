@@ -15,7 +15,9 @@ from ngbound.motion import (
     partials_along,
     radiation_pressure_au_d2,
 )
+from ngbound.sky import load_ephemeris
 from tests.motion.orbits import BELT, HYPERBOLA, at_perihelion
+from tests.units import km
 
 AMOUNTS = (1e-6, 3e-7, 2e-7)
 AREA_TO_MASS = 1e-4
@@ -138,3 +140,28 @@ def test_coarse_steps_give_the_same_partials() -> None:
     rough = partials_along(track, PARAMETERS[:9], coarse).at_offset(times)
     scale = np.abs(fine).max(axis=(0, 1))
     assert np.all(np.abs(fine - rough).max(axis=(0, 1)) < 1e-9 * scale)
+
+
+def test_oblate_earth_in_a_close_encounter() -> None:
+    # 40,000 km from the Earth its flattening moves the path by kilometres within days
+    epoch = 50.0
+    position, velocity = load_ephemeris().posvel("earth", epoch)
+    state = np.concatenate([position + [2.7e-4, 0.0, 1e-4], velocity + [0.0, 4.0e-3, 1e-3]])
+    end = np.array([epoch + 3.0])
+    flat = integrate_track(epoch, state, epoch, end[0])
+    round_earth = integrate_track(epoch, state, epoch, end[0], None, ForceModel(earth_j2=False))
+    assert 0.1 * km < np.abs(flat.at(end) - round_earth.at(end))[0, :3].max() < 100.0 * km
+    exact = partials_along(flat, PARAMETERS[:6]).at_offset([3.0])[0]
+    for c in range(6):
+        step = 1e-8 if c < 3 else 1e-7
+        rows = []
+        for k in range(3):
+            sides = []
+            for sign in (1.0, -1.0):
+                moved = state.copy()
+                moved[c] += sign * step / 2**k
+                sides.append(integrate_track(epoch, moved, epoch, end[0]).at(end)[0])
+            rows.append((sides[0] - sides[1]) / (2 * step / 2**k))
+        once = [(4 * rows[k + 1] - rows[k]) / 3 for k in range(2)]
+        truth = (16 * once[1] - once[0]) / 15
+        assert np.abs(exact[:3, c] - truth[:3]).max() < 1e-6 * np.abs(truth[:3]).max(), c
