@@ -9,7 +9,7 @@ import numpy as np
 from astropy import units as u
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
-from matplotlib.ticker import FuncFormatter, LogLocator, NullFormatter
+from matplotlib.ticker import FuncFormatter, NullFormatter
 
 from ngbound.errors import MassError
 from ngbound.report.figures import style
@@ -100,19 +100,33 @@ def _draw_mass(ax: Axes, draws: np.ndarray, bound: Any) -> None:
         at = float(detection.to_value(u.kg))
         if 10.0**left < at < 10.0**right:
             ax.axvline(at, color=style.INK, lw=0.8, ls=(0, (3, 2)), ymax=0.62)
+            # the words go to the side of the line that is free
+            beside = 0.0 < np.log10(low_kg / at) < 0.3 * (right - left)
             ax.annotate(
-                "lighter: thrust\nwould be detected",
+                "lighter:\nthrust would\nbe detected",
                 (at, 0.62),
                 xycoords=("data", "axes fraction"),
-                xytext=(3, -1),
+                xytext=(-3 if beside else 3, -1),
                 textcoords="offset points",
                 va="top",
+                ha="right" if beside else "left",
                 fontsize=6.2,
             )
     ax.set_xlabel("mass (kg)")
     ax.set_yticks([])
     style.tidy(ax)
     ax.spines["left"].set_visible(False)
+
+
+def _few_ticks(low: float, high: float) -> list[float]:
+    """At most four round numbers on a logarithmic axis, far enough apart to be read."""
+    decades = np.arange(np.floor(np.log10(low)), np.ceil(np.log10(high)) + 1)
+    for steps in ((1.0,), (1.0, 3.0), (1.0, 2.0, 5.0), (1.0, 1.2, 1.6, 2.0, 2.5, 3.0, 4.0, 5.0, 6.0, 8.0)):
+        every = [s * 10.0**d for d in decades for s in steps if low <= s * 10.0**d <= high]
+        if len(every) >= 2:
+            break
+    stride = -(-len(every) // 4)
+    return every[::stride] if every else [float(np.sqrt(low * high))]
 
 
 def _draw_inputs(ax: Axes, inputs: list[Any]) -> None:
@@ -141,11 +155,8 @@ def _draw_inputs(ax: Axes, inputs: list[Any]) -> None:
     ax.set_ylim(len(inputs) - 0.4, -0.6)
     ax.tick_params(axis="y", length=0)
     ax.set_xlabel("mass (kg)")
-    few = high / low < 30.0
-    ax.xaxis.set_major_locator(
-        LogLocator(10.0, subs=(1.0, 2.0, 5.0) if few else (1.0,), numticks=8)
-    )
-    ax.xaxis.set_major_formatter(FuncFormatter(lambda kg, _: style.scientific(kg, 1)))
+    ax.set_xticks(_few_ticks(low, high))
+    ax.xaxis.set_major_formatter(FuncFormatter(lambda kg, _: style.scientific(kg, 2)))
     ax.xaxis.set_minor_formatter(NullFormatter())
     ax.tick_params(axis="x", labelsize=6.4)
     ax.set_title(
