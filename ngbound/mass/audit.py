@@ -42,12 +42,19 @@ class Audit:
     geometry: GeometryAudit | None
 
     @property
+    def tested(self) -> bool:
+        """True if at least one relation could be tested."""
+        numbers = self.numbers is not None and self.numbers.verdict != "untestable"
+        return numbers or self.threshold is not None or self.geometry is not None
+
+    @property
     def sound(self) -> bool:
-        """True if nothing that could be tested disagrees."""
+        """True if something could be tested, and nothing that could be disagrees."""
         return (
-            (self.numbers is None or self.numbers.verdict in ("sound", "untestable"))
+            self.tested
+            and (self.numbers is None or self.numbers.verdict in ("sound", "untestable"))
             and (self.threshold is None or self.threshold.verdict == "holds")
-            and (self.geometry is None or self.geometry.verdict != "implausible")
+            and (self.geometry is None or self.geometry.verdict == "plausible")
         )
 
     @property
@@ -66,6 +73,10 @@ class Audit:
 
     def __str__(self) -> str:
         verdict = "sound, as far as it can be tested" if self.sound else "NOT sound"
+        if not self.tested:
+            verdict = "nothing in it could be tested; give more of its numbers, or its arc"
+        elif self.geometry is not None and self.geometry.verdict == "doubtful" and not self.slips:
+            verdict = "doubtful"
         parts = [f"{self.title}: {verdict}."]
         parts += [
             str(part) for part in (self.numbers, self.threshold, self.geometry) if part is not None
@@ -79,6 +90,7 @@ class Audit:
         """JSON-able record."""
         return {
             "title": self.title,
+            "tested": self.tested,
             "sound": self.sound,
             "slips": list(self.slips),
             "numbers": None if self.numbers is None else self.numbers.to_dict(),

@@ -610,8 +610,11 @@ def mass_change(pair: Pair, ratios: Floats, best: float, value: float) -> Explan
     can = float(np.quantile(speed * per_impulse, pair.level))
     masses = pair.active.mass
     if masses is not None and pair.active.outgassing is not None:
-        draws = pair.active.outgassing.draw(pair.rng, N_DRAWS, "limit").mass_loss_kg_s.sum(axis=0)
-        can = float(np.quantile(draws * DAY_S * days / masses.draw(pair.rng, N_DRAWS), 0.95))
+        draws = pair.active.outgassing.draw(pair.rng, N_DRAWS, "limit").mass_loss_kg_s
+        share = _per_species(pair.active, draws) * g
+        # the mass quoted is what is left: the ratio before to after is 1 + loss / rest
+        lost_part = share * DAY_S * days / masses.draw(pair.rng, N_DRAWS)
+        can = float(np.quantile(np.log1p(lost_part), pair.level))
         ground = "the measured outgassing and the quoted mass"
     must = max(-math.log(top), 0.0) if top > 0 else math.inf
     verdict = POSSIBLE if can >= must else STRAINED if 10 * can >= must else EXCLUDED
@@ -622,8 +625,8 @@ def mass_change(pair: Pair, ratios: Floats, best: float, value: float) -> Explan
         "ground": ground,
     }
     sentence = (
-        f"{lost} in {days:.0f} d; steady loss ({ground}; rocket equation, mean g of the two "
-        f"arcs) removes up to {percent(1 - math.exp(-can))}"
+        f"{lost} in {days:.0f} d; steady loss ({ground}, at the mean g of the two arcs) removes up "
+        f"to {percent(1 - math.exp(-can))}"
     )
     if verdict != POSSIBLE:
         sentence += "; only a splitting could"
@@ -696,13 +699,20 @@ def _measured_ratio(pair: Pair) -> Floats | None:
     count = len(budgets[0].emissions) if budgets[0] else 0
     sums = []
     for result, rows in ((pair.quiet, draws[:count]), (pair.active, draws[count:])):
-        emissions = result.outgassing.emissions if result.outgassing else ()
-        g = result.response.own.g(np.array([e.at_au for e in emissions]))
-        distances = {e.at_au for e in emissions}
-        sums.append((rows / g[:, None]).sum(axis=0) / len(distances))
+        sums.append(_per_species(result, rows))
     if not np.all(sums[1] > 0):
         return None
     return sums[0] / sums[1]
+
+
+def _per_species(result: ThrustResult, rows: Floats) -> Floats:
+    """Rates or forces (emissions, draws) referred to g = 1: the mean over the distances at which a
+    species was measured, summed over the species."""
+    emissions = result.outgassing.emissions if result.outgassing else ()
+    g = result.response.own.g(np.array([e.at_au for e in emissions]))
+    names = [e.species for e in emissions]
+    often = np.array([names.count(name) for name in names], dtype=float)
+    return (rows / (g * often)[:, None]).sum(axis=0)
 
 
 def collimation(pair: Pair, ratios: Floats, best: float, value: float) -> Explanation:

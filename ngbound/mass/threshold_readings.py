@@ -333,7 +333,9 @@ def audit_threshold(
     if claim.at_au is not None:
         size /= float(thrust.g(claim.at_au))
     other = None
-    if isinstance(arc, Fit) and arc.components and not errors:
+    own = arc.thrust if isinstance(arc, Fit) else None
+    same_law = own is not None and (own.law, own.lag) == (thrust.law, thrust.lag)
+    if isinstance(arc, Fit) and same_law and not errors:
         fit = arc
     else:
         if progress:

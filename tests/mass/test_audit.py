@@ -98,3 +98,21 @@ def test_the_examples_of_the_docstring_are_read():
     assert found.geometry.nights == 40 and found.arc.file.name == "paper.psv"
     one = tomllib.loads(textwrap.dedent(results))["result"][0]
     assert ThrustResult.from_quoted(one).kind == "threshold"
+
+
+def test_nothing_tested_is_not_sound() -> None:
+    found = audit({"threshold": {"value": "1e-9 au/d2"}})
+    assert not found.tested and not found.sound
+    assert "nothing in it could be tested" in str(found)
+    assert audit({"numbers": {"mass": "1e10 kg", "rate": "1e26 1/s"}}).sound is False
+
+
+def test_doubtful_geometry_is_not_sound() -> None:
+    geometry = {
+        "n_obs": 100, "span_d": 60.0, "sigma_arcsec": 0.3, "r_au": [1.6, 1.4], "delta_au": [0.9, 0.7],
+    }  # fmt: skip
+    sane = audit({"threshold": {"value": "1e-8 au/d2"}, "geometry": geometry})
+    assert sane.geometry is not None
+    far = audit({"threshold": {"value": "1e-5 au/d2"}, "geometry": geometry})
+    assert far.geometry is not None and far.geometry.verdict != "plausible"
+    assert not far.sound

@@ -121,7 +121,8 @@ def _draw_mass(ax: Axes, draws: np.ndarray, bound: Any) -> None:
 def _few_ticks(low: float, high: float) -> list[float]:
     """At most four round numbers on a logarithmic axis, far enough apart to be read."""
     decades = np.arange(np.floor(np.log10(low)), np.ceil(np.log10(high)) + 1)
-    for steps in ((1.0,), (1.0, 3.0), (1.0, 2.0, 5.0), (1.0, 1.2, 1.6, 2.0, 2.5, 3.0, 4.0, 5.0, 6.0, 8.0)):
+    fine = (1.0, 1.2, 1.6, 2.0, 2.5, 3.0, 4.0, 5.0, 6.0, 8.0)
+    for steps in ((1.0,), (1.0, 3.0), (1.0, 2.0, 5.0), fine):
         every = [s * 10.0**d for d in decades for s in steps if low <= s * 10.0**d <= high]
         if len(every) >= 2:
             break
