@@ -109,8 +109,12 @@ def test_nothing_tested_is_not_sound() -> None:
 
 def test_doubtful_geometry_is_not_sound() -> None:
     geometry = {
-        "n_obs": 100, "span_d": 60.0, "sigma_arcsec": 0.3, "r_au": [1.6, 1.4], "delta_au": [0.9, 0.7],
-    }  # fmt: skip
+        "n_obs": 100,
+        "span_d": 60.0,
+        "sigma_arcsec": 0.3,
+        "r_au": [1.6, 1.4],
+        "delta_au": [0.9, 0.7],
+    }
     sane = audit({"threshold": {"value": "1e-8 au/d2"}, "geometry": geometry})
     assert sane.geometry is not None
     far = audit({"threshold": {"value": "1e-5 au/d2"}, "geometry": geometry})
