@@ -83,7 +83,7 @@ def test_a_misspelt_table_gets_the_right_one_with_its_line(write):
 
 
 def test_a_key_in_the_second_of_two_tables_is_found_there(write):
-    budget = '[[outgassing]]\nrate = 1e26\nat = 1.2\n'
+    budget = "[[outgassing]]\nrate = 1e26\nat = 1.2\n"
     message = fault(write(f'[arc]\nfile = "a.psv"\n{budget}{budget}spedd = 800\n'))
     assert "line 9" in message
     assert "did you mean 'speed'?" in message
@@ -105,7 +105,7 @@ def test_several_faults_are_all_told(write):
 
 
 def test_the_arc_is_compulsory(write):
-    assert "arc is missing" in fault(write('[detection]\npower = 0.9\n'))
+    assert "arc is missing" in fault(write("[detection]\npower = 0.9\n"))
 
 
 def test_half_an_orbit_is_refused(write):
@@ -190,9 +190,7 @@ def test_stations_of_the_users_own(write):
 
 
 def test_a_bad_outgassing_rate_is_told_where_it_stands(write):
-    message = fault(
-        write('[arc]\nfile = "a"\n[[outgassing]]\nrate = "some"\nat = 1.0\n')
-    )
+    message = fault(write('[arc]\nfile = "a"\n[[outgassing]]\nrate = "some"\nat = 1.0\n'))
     assert "line 3" in message
     assert "'some'" in message
 

@@ -73,8 +73,10 @@ def told(result, status: int) -> str:
 def rows(n: int, **changes: str) -> str:
     return "".join(
         ROW.format(
-            **({"stn": "500", "time": f"2024-01-{day + 1:02d}T01:02:03Z", "ra": f"{100 + day}.5"}
-               | changes)
+            **(
+                {"stn": "500", "time": f"2024-01-{day + 1:02d}T01:02:03Z", "ra": f"{100 + day}.5"}
+                | changes
+            )
         )
         for day in range(n)
     )
@@ -164,11 +166,17 @@ def test_wrong_usage_is_status_2(ngbound, arguments):
 
 
 BAD_ARCS = {
-    "a missing column": (HEADER + COLUMNS.replace("|dec", "") + "Ember|CCD|500|2024-01-01T00:00:00Z"
-                         "|100.5|Gaia3\n", 2, "dec"),
+    "a missing column": (
+        HEADER + COLUMNS.replace("|dec", "") + "Ember|CCD|500|2024-01-01T00:00:00Z|100.5|Gaia3\n",
+        2,
+        "dec",
+    ),
     "an unknown station": (HEADER + COLUMNS + rows(9, stn="ZQ9"), 2, "ZQ9"),
-    "a date out of the ephemeris": (HEADER + COLUMNS + rows(9, time="0001-01-01T00:00:00Z"), None,
-                                    "1"),
+    "a date out of the ephemeris": (
+        HEADER + COLUMNS + rows(9, time="0001-01-01T00:00:00Z"),
+        None,
+        "1",
+    ),
     "an arc of two observations": (HEADER + COLUMNS + rows(2), 1, "two|2"),
     "an empty file": ("", 2, "empty"),
     "a binary file": (bytes(range(256)).decode("latin1"), 2, ""),

@@ -25,9 +25,7 @@ RANK = {room: rank for rank, rooms in enumerate(ORDER) for room in rooms}
 WITHIN_LAST = {"case": {"case"}, "simulate": {"case", "simulate"}, "run": {"case", "run"}}
 """Inside the room of the whole job: what each of its modules may import."""
 
-MODULES = sorted(
-    path for path in PACKAGE.rglob("*.py") if path != PACKAGE / "__init__.py"
-)
+MODULES = sorted(path for path in PACKAGE.rglob("*.py") if path != PACKAGE / "__init__.py")
 
 
 def room_of(path: Path) -> str:

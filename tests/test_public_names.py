@@ -100,8 +100,7 @@ def test_import_is_light():
 
 def test_help_loads_nothing_heavy():
     names, _ = loaded_after(
-        "from ngbound.cli import main\n"
-        "try:\n    main(['--help'])\nexcept SystemExit:\n    pass"
+        "from ngbound.cli import main\ntry:\n    main(['--help'])\nexcept SystemExit:\n    pass"
     )
     assert names & HEAVY == set()
 

@@ -61,7 +61,10 @@ def test_every_place_and_its_name_are_invented(simulated):
     text = (DEMO / "pushed.psv").read_text(encoding="utf-8")
     assert text.count("! line Invented: object, place and observations.") == 4
     assert set(simulated.records_by_site) == {
-        "Saltpan Camp", "Goat Ridge", "Windmill Yard", "Lantern"
+        "Saltpan Camp",
+        "Goat Ridge",
+        "Windmill Yard",
+        "Lantern",
     }
     assert simulated.arc.table["site"].isin(["roving", "space"]).all()
 
@@ -108,9 +111,7 @@ def test_the_spacecraft_keeps_its_distance_from_the_sun(simulated, recipe):
     sun = load_ephemeris().position_au("sun", observers.tdb_d) - observers.position_au
     ra, dec = arc.table["ra_rad"].to_numpy(), arc.table["dec_rad"].to_numpy()
     line = np.stack([np.cos(dec) * np.cos(ra), np.cos(dec) * np.sin(ra), np.sin(dec)], axis=1)
-    elongation = np.degrees(
-        np.arccos(np.sum(line * sun, axis=1) / np.linalg.norm(sun, axis=1))
-    )
+    elongation = np.degrees(np.arccos(np.sum(line * sun, axis=1) / np.linalg.norm(sun, axis=1)))
     low, high = recipe.spacecraft[0].elongation_deg
     assert low - HORIZON_SLACK_DEG < elongation.min() < elongation.max() < high + HORIZON_SLACK_DEG
     assert np.linalg.norm(observers.geocentric_au, axis=1).min() > 0.1

@@ -44,7 +44,9 @@ def test_a_gzip_bomb_stops_at_the_limit(tmp_path: Path) -> None:
         "<!DOCTYPE ades [<!ENTITY e0 'x'>"
         + "".join(f"<!ENTITY e{i} '{f'&e{i - 1};' * 10}'>" for i in range(1, 12))
         + "]><ades version='2022'>&e11;</ades>",
-        "<!DOCTYPE ades [<!ENTITY a '" + "x" * 100_000 + "'>]><ades version='2022'>"
+        "<!DOCTYPE ades [<!ENTITY a '"
+        + "x" * 100_000
+        + "'>]><ades version='2022'>"
         + "&a;" * 1000
         + "</ades>",
         "<!DOCTYPE ades [<!ENTITY a SYSTEM 'file:///etc/hostname'>]>"
