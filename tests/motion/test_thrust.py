@@ -1,5 +1,7 @@
 """Thrust laws against tabulated values, and the objects around them."""
 
+from collections.abc import Callable
+
 import astropy.units as u
 import numpy as np
 import pytest
@@ -121,6 +123,6 @@ def test_radiation_pressure_of_2009_bd() -> None:
         (lambda: Window("phase", 1.0, 2.0), "by 'date' or by 'distance'"),
     ],
 )
-def test_wrong_choices_are_refused_in_a_sentence(make: object, message: str) -> None:
+def test_wrong_choices_are_refused_in_a_sentence(make: Callable[[], object], message: str) -> None:
     with pytest.raises(CaseError, match=message):
-        make()  # type: ignore[operator]
+        make()
