@@ -16,6 +16,7 @@ from ngbound.fit.diagnostics import Diagnostics, diagnose
 from ngbound.fit.error_variants import ErrorVariant, Variation, error_variants, vary
 from ngbound.fit.first_orbit import Preliminary, preliminary_orbits
 from ngbound.fit.noise_scale import StationScale, student_factor
+from ngbound.fit.outliers import chi2_of_records, judge_in_turns
 from ngbound.fit.solution import Comparison, Fit, compare_fits, fit_orbit
 
 __all__ = [
@@ -26,10 +27,12 @@ __all__ = [
     "Preliminary",
     "StationScale",
     "Variation",
+    "chi2_of_records",
     "compare_fits",
     "diagnose",
     "error_variants",
     "fit_orbit",
+    "judge_in_turns",
     "preliminary_orbits",
     "student_factor",
     "vary",

@@ -24,8 +24,7 @@ from ngbound.fit.least_squares import (
     linearise,
     thrust_of,
 )
-from ngbound.fit.outliers import RECOVER_CHI2, REJECT_CHI2, judge, residual_chi2
-from ngbound.fit.shared_estimates import freed
+from ngbound.fit.outliers import FEW, chi2_of_records, judge_in_turns, residual_chi2
 from ngbound.motion import ForceModel, Records, Thrust, integrate_track
 from ngbound.sky import direction_to_angles, load_ephemeris
 
@@ -35,11 +34,11 @@ Progress = Callable[[str], None]
 
 WIDEN = 1.8
 LINEAR_RAD = 3e-3
-LOOSE = 4.0
-MAX_ROUNDS = 15
+LOOSE = 2.0
+ENTRY_CHI2 = 200.0
+"""Up to which a new record enters a growing arc."""
 GOOD_REDUCED_CHI2 = 3.0
 GOOD_LOST = 0.1
-FEW = 5
 ROOM = 4
 SHORTEST_FOR_THRUST_D = 20.0
 LEAST_GAIN = 30.0
@@ -80,29 +79,25 @@ def settle(
 
     ``loose`` multiplies the bars of rejection and recovery.
     """
-    seen_before: list[bytes] = []
-    rounds = 0
-    while rounds < MAX_ROUNDS:
-        rounds += 1
-        correction = differential_correction(
-            theta, epoch_d, records, noise, keep, thrust, components, forces
+    corrections: list[Correction] = []
+
+    def correct(rows: NDArray[np.int64], keep: Bools) -> Floats:
+        start = corrections[-1].at.theta if corrections else theta
+        now = differential_correction(
+            start, epoch_d, records, noise, keep[0], thrust, components, forces
         )
-        theta = correction.at.theta
-        if not reject:
-            break
-        seen, design, cov = correction.at.seen, correction.at.design, correction.cov
-        if noise.shared is not None:
-            seen, design, cov = freed(seen, design, noise, keep)
-        chi2 = residual_chi2(seen, design, cov, noise, keep)
-        new = judge(chi2, keep, REJECT_CHI2 * loose, RECOVER_CHI2 * loose)
-        if 2 * int(new.sum()) < theta.size + 4 or new.sum() < FEW:
-            break
-        if np.array_equal(new, keep) or new.tobytes() in seen_before:
-            break
-        seen_before.append(keep.tobytes())
-        keep = new
+        corrections.append(now)
+        return chi2_of_records(now.at.seen[None], now.at.design, noise, keep)
+
+    rounds = 1
+    if reject:
+        masks, rounds = judge_in_turns(keep[None], theta.size, correct, loose)
+        keep = masks[0]
+    else:
+        correct(np.zeros(1, dtype=np.int64), keep[None])
+    last = corrections[-1]
     return Converged(
-        epoch_d, correction, keep, rounds, thrust_of(theta, thrust, components), components
+        epoch_d, last, keep, rounds, thrust_of(last.at.theta, thrust, components), components
     )
 
 
@@ -157,7 +152,7 @@ def _next_window(
     old = np.zeros(right - left, dtype=bool)
     old[low - left : high - left] = True
     chi2 = residual_chi2(there.seen, there.design, found.correction.cov, local, inside)
-    keep = np.where(old, inside, chi2 < 25.0 * REJECT_CHI2)
+    keep = np.where(old, inside, chi2 < ENTRY_CHI2)
     if not np.any(keep & ~old):
         # all new records disagree with the orbit: it is the orbit that must move
         keep = keep | ~old

@@ -26,11 +26,11 @@ class JointSolution:
 
     Attributes
     ----------
-    shared : (k,) estimates of the shared errors, in prior standard deviations
+    shared : (..., k) estimates of the shared errors, in prior standard deviations
     cov : (p + k, p + k) covariance of the parameters (in ``scale``) and the shared errors
     scale : (p,) by which the columns of the design were divided
     white : (2m, p + k) whitened patterns of both, kept observations
-    rest : (2m,) whitened residuals of the kept observations, freed of the shared errors
+    rest : (..., 2m) whitened residuals of the kept observations, freed of the shared errors
     leverage : (2m,) H_ii
     """
 
@@ -47,7 +47,7 @@ def solve_jointly(seen: Floats, design: Floats, noise: Noise, keep: Bools) -> Jo
 
     Parameters
     ----------
-    seen : (n, 2) observed minus computed, radians
+    seen : (n, 2), or (m, n, 2) for many arcs, observed minus computed, radians
     design : (n, 2, p) radians per unit
     noise : Noise of all n observations
     keep : (n,) bool
@@ -55,18 +55,18 @@ def solve_jointly(seen: Floats, design: Floats, noise: Noise, keep: Bools) -> Jo
     kept = noise.mask(keep)
     p = design.shape[2]
     x = kept.whiten_nights(design[keep].reshape(-1, p))
-    y = kept.whiten_nights(seen[keep].ravel())
+    y = kept.whiten_nights(seen[..., keep, :].reshape(*seen.shape[:-2], -1).T)
     scale = np.linalg.norm(x, axis=0)
     scale[scale == 0.0] = 1.0
     u = np.zeros((len(y), 0)) if kept.modes is None else kept.modes.whitened
     white = np.concatenate([x / scale, u], axis=1)
-    normal = white.T @ white
-    normal[np.arange(p, len(normal)), np.arange(p, len(normal))] += 1.0
-    values, vectors = np.linalg.eigh(normal)
-    cov = (vectors / np.maximum(values, values[-1] * 1e-15)) @ vectors.T
-    both = cov @ (white.T @ y)
+    prior = np.eye(white.shape[1])[p:]
+    left, s, right = np.linalg.svd(np.concatenate([white, prior]), full_matrices=False)
+    left = left[: len(y)]
+    root = right.T / np.maximum(s, s[0] * 1e-15)
+    both = root @ (left.T @ y)
     return JointSolution(
-        both[p:], cov, scale, white, y - white @ both, np.sum((white @ cov) * white, axis=1)
+        both[p:].T, root @ root.T, scale, white, (y - white @ both).T, np.sum(left**2, axis=1)
     )
 
 
@@ -75,17 +75,18 @@ def freed(seen: Floats, design: Floats, noise: Noise, keep: Bools) -> tuple[Floa
 
     Returns
     -------
-    seen : (n, 2) radians
+    seen : (n, 2) or (m, n, 2) radians
     design : (n, 2, p + k), the parameters in the scale of the solution, then the shared errors
     cov : (p + k, p + k)
     """
     joint = solve_jointly(seen, design, noise, keep)
     n = len(noise)
     pattern = np.zeros((n, 2, 0))
-    if noise.shared is not None and len(joint.shared):
+    if noise.shared is not None and joint.shared.shape[-1]:
         pattern = noise.shared.matrix.reshape(n, 2, -1)
     wide = np.concatenate([design / joint.scale, pattern], axis=2)
-    return seen - pattern @ joint.shared, wide, joint.cov
+    moved = joint.shared @ pattern.reshape(2 * n, -1).T
+    return seen - moved.reshape(seen.shape), wide, joint.cov
 
 
 def shared_table(noise: Noise, joint: JointSolution, p: int) -> pd.DataFrame:
@@ -98,7 +99,7 @@ def shared_table(noise: Noise, joint: JointSolution, p: int) -> pd.DataFrame:
         should have under its prior), published.
     """
     shared = noise.shared
-    if shared is None or not len(joint.shared):
+    if shared is None or not joint.shared.size:
         columns = ["name", "estimate", "sigma", "prior_sigma", "unit", "pull", "published"]
         return pd.DataFrame({c: [] for c in columns})
     own = np.sqrt(np.diag(joint.cov)[p:])

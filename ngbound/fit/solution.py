@@ -21,11 +21,10 @@ from ngbound.errors import FitError
 from ngbound.fit.least_squares import Correction, parameter_names, thrust_of
 from ngbound.fit.noise_scale import StationScale, rescaled
 from ngbound.fit.orbit_search import Converged, at_epoch, find_orbit, middle_epoch, settle
-from ngbound.fit.outliers import residual_chi2
+from ngbound.fit.outliers import chi2_of_records
 from ngbound.fit.residuals import motion_rad_d, residual_table, sunward_per_au
 from ngbound.fit.shared_estimates import (
     JointSolution,
-    freed,
     shared_table,
     shared_text,
     solve_jointly,
@@ -37,9 +36,6 @@ Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
 AU_PER_D2 = u.au / u.day**2
 MIN_OBSERVATIONS = 3
-RESCALED_LOOSE = 2.0
-"""Bars of the outlier rule are this much higher once the errors are the scatter of the residuals:
-chi2 16, which one normal record in 3000 exceeds, not 8, which one in 55 does."""
 WEAK_DISTANCE_ERROR = 0.1
 """Relative error of the distance above which a fit warns that it is only linear theory."""
 HOPELESS_DISTANCE_ERROR = 2.0
@@ -212,10 +208,8 @@ class Fit:
     @cached_property
     def residuals(self) -> pd.DataFrame:
         """The residual table; columns in `ngbound.fit.residuals.residual_table`."""
-        seen, design, cov = freed(
-            self.seen, self.design.reshape(-1, 2, self.theta.size), self.noise, self.keep
-        )
-        chi2 = residual_chi2(seen, design, cov, self.noise, self.keep)
+        design = self.design.reshape(-1, 2, self.theta.size)
+        chi2 = chi2_of_records(self.seen[None], design, self.noise, self.keep[None])[0]
         return residual_table(
             self.used,
             self.records,
@@ -418,18 +412,17 @@ def _settle_with_scales(
 ) -> tuple[Converged, Noise, tuple[StationScale, ...]]:
     """Settle, and rescale the errors of stations with enough records.
 
-    Outliers are judged by the errors of the table first, and once more, by a higher bar, after
-    these have been replaced by the scatter of the very residuals.
+    Outliers are judged by the errors of the table first, and once more after these have been
+    replaced by the scatter of the very residuals.
     """
     stations = used.table["stn"].to_numpy(dtype=object)
     allowed = error_model.rescalable(table_noise)
     noise = table_noise
     scales: tuple[StationScale, ...] = ()
-    loose = 1.0
     for turn in range(3):
         found = settle(
             found.correction.at.theta, found.epoch_d, records, noise, found.keep, thrust,
-            components, forces, reject and turn < 2, loose,
+            components, forces, reject and turn < 2,
         )  # fmt: skip
         at = found.correction.at
         if turn == 2 or not allowed.any():
@@ -440,7 +433,6 @@ def _settle_with_scales(
         )  # fmt: skip
         if not scales:
             break
-        loose = RESCALED_LOOSE
     return found, noise, scales
 
 

@@ -34,10 +34,9 @@ from scipy.linalg import qr, solve_triangular
 from ngbound.arc import Noise
 from ngbound.constants import C_AU_D
 from ngbound.errors import LimitError
-from ngbound.fit import Fit
+from ngbound.fit import Fit, chi2_of_records, judge_in_turns
 from ngbound.limits.fit_protocol import ThrustFit
 from ngbound.limits.information import ThrustInformation, thrust_information
-from ngbound.limits.rejection import judge_many, residual_chi2_many
 from ngbound.motion import Neighbourhood, integrate_track
 
 Floats = NDArray[np.float64]
@@ -53,8 +52,6 @@ BENT = 0.1
 FRAMES_KEPT = 4
 MAX_SWEEPS = 12
 MAX_HALVINGS = 12
-MAX_ROUNDS = 15
-"""Rounds of the outlier rule."""
 FEW_DONORS = 5
 """A station with fewer nights borrows residuals from all nights."""
 NOISES = ("model", "residuals")
@@ -144,8 +141,8 @@ class ExactRefit:
         has fewer than 5), in the order they were taken, and scaled by sqrt(2n / dof) for what the
         fit absorbed.
     reject : bool
-        Apply the outlier rule to each arc and hypothesis; the two are then compared over the
-        records that either kept.
+        Apply the outlier rule of the fit to each arc and hypothesis; the two are then compared
+        over the records that either kept, as `ngbound.fit.compare_fits` does.
 
     Raises
     ------
@@ -204,10 +201,6 @@ class ExactRefit:
                 values, vectors, information.orbit_names, information.correlation[keep],
                 information.inflation_by_orbit[keep], np.ones(self.k), information.orbit,
             )  # fmt: skip
-        sizes = [self.noise.sigma_ra_arcsec, self.noise.sigma_dec_arcsec]
-        self._error_arcsec2 = np.einsum("in,jn->nij", sizes, sizes)
-        self._error_arcsec2[:, 0, 1] *= self.noise.corr
-        self._error_arcsec2[:, 1, 0] *= self.noise.corr
         self._frames: dict[bytes, _Frame] = {}
         self._blocks = self._block_roots()
         self._batches = self._same_size()
@@ -317,6 +310,20 @@ class ExactRefit:
 
     def refit(self, A: Floats, streams: Sequence[np.random.SeedSequence]) -> Refits:
         """See `Refitter`."""
+        fitted = self.fit_both(A, streams)
+        push, ok = fitted.push, fitted.push.ok
+        at = slice(self.n_orbit, self.n_push)
+        theta = self.theta_ref + push.y @ self.to_theta.T
+        root = self.to_theta[at, at]
+        covariance = np.full((len(A), self.k, self.k), np.nan)
+        covariance[ok] = root @ np.linalg.inv(push.normal[ok])[:, at, at] @ root.T
+        A_hat = theta[:, at]
+        A_hat[~ok] = np.nan
+        rejected = self.n - push.keep.sum(axis=1)
+        return Refits(A_hat, covariance, np.where(ok, fitted.delta_chi2, np.nan), rejected, ~ok)
+
+    def fit_both(self, A: Floats, streams: Sequence[np.random.SeedSequence]) -> "BothFits":
+        """Fit arcs without and with thrust, and compare over the records that either kept."""
         m = len(A)
         y_true = np.tile(self.y_null, (m, 1))
         held = np.zeros((m, self.theta_ref.size - self.n_push))
@@ -338,64 +345,46 @@ class ExactRefit:
         start_push = y_true.copy()
         start_push[:, : self.n_push] += white @ self.q[:, : self.n_push]
         ok = np.all(np.isfinite(shift), axis=1)
-        all_in = np.ones((m, self.n), dtype=bool)
-        if self.reject:
-            null = self._settle(start_null, without, shift, ok, all_in)
-            push = self._settle(start_push, about, shift, null.ok, all_in)
-            either = null.keep | push.keep
-            a = self._minimise(null.y, without, shift, push.ok, either)
-            b = self._minimise(push.y, about, shift, a.ok, either)
-            delta, ok = a.chi2 - b.chi2, b.ok
-        else:
-            null = self._minimise(start_null, without, shift, ok, all_in)
-            push = self._minimise(start_push, about, shift, null.ok, all_in)
-            delta, ok = null.chi2 - push.chi2, push.ok
-        at = slice(self.n_orbit, self.n_push)
-        theta = self.theta_ref + push.y @ self.to_theta.T
-        root = self.to_theta[at, at]
-        covariance = np.full((m, self.k, self.k), np.nan)
-        covariance[ok] = root @ np.linalg.inv(push.normal[ok])[:, at, at] @ root.T
-        A_hat = theta[:, at]
-        A_hat[~ok] = np.nan
-        rejected = self.n - push.keep.sum(axis=1)
-        return Refits(A_hat, covariance, np.where(ok, delta, np.nan), rejected, ~ok)
+        null = self._settle(start_null, without, shift, ok)
+        push = self._settle(start_push, about, shift, null.ok)
+        either = null.keep | push.keep
+        a = self._over(either, null, without, shift)
+        b = self._over(either, push, about, shift)
+        push.ok &= a.ok & b.ok
+        return BothFits(null, push, a.chi2 - b.chi2)
 
-    def _settle(
-        self, y: Floats, frame: "_Frame", shift: Floats, ok: Bools, keep: Bools
-    ) -> "_Minima":
-        """Fit and judge by turns until the kept records no longer change."""
-        keep, free = keep.copy(), frame.free
-        found = self._minimise(y, frame, shift, ok, keep)
-        judged = [{row.tobytes()} for row in keep]
-        busy = found.ok.copy()
-        for _ in range(MAX_ROUNDS):
-            rows = np.flatnonzero(busy)
-            if not len(rows):
-                break
-            raw = self.seen(found.y[rows], frame.hood) + shift[rows]
-            chi2 = residual_chi2_many(
-                raw.reshape(len(rows), self.n, 2),
-                self.design_y[:, :, :free],
-                np.asarray(np.linalg.inv(found.normal[rows]), dtype=np.float64),
-                self._error_arcsec2,
-                keep[rows],
-            )
-            for i, new in zip(rows, judge_many(chi2, keep[rows]), strict=True):
-                busy[i] = new.tobytes() not in judged[i] and 2 * int(new.sum()) >= free + 4
-                if busy[i]:
-                    judged[i].add(new.tobytes())
-                    keep[i] = new
-            rows = np.flatnonzero(busy)
-            if not len(rows):
-                break
-            part = self._minimise(found.y[rows], frame, shift[rows], found.ok[rows], keep[rows])
-            found.put(rows, part)
-            busy &= found.ok
+    def _settle(self, y: Floats, frame: "_Frame", shift: Floats, ok: Bools) -> "Minima":
+        """Fit, and with the outlier rule judge by turns until the kept records no longer change."""
+        every = np.ones((len(y), self.n), dtype=bool)
+        found = self._minimise(y, frame, shift, ok, every)
+        if not self.reject:
+            return found
+        design = self.design_y[:, :, : frame.free]
+
+        def fit_again(rows: Ints, keep: Bools) -> Floats:
+            if not keep.all():
+                part = self._minimise(found.y[rows], frame, shift[rows], found.ok[rows], keep)
+                found.put(rows, part)
+            seen = self.seen(found.y[rows], frame.hood) + shift[rows]
+            chi2 = chi2_of_records(seen.reshape(len(rows), self.n, 2), design, self.noise, keep)
+            chi2[~found.ok[rows]] = np.nan
+            return chi2
+
+        judge_in_turns(every, frame.free, fit_again)
         return found
+
+    def _over(self, keep: Bools, found: "Minima", frame: "_Frame", shift: Floats) -> "Minima":
+        """The fits over other records; those of the very same ones are taken as they are."""
+        rows = np.flatnonzero(np.any(keep != found.keep, axis=1))
+        other = found.copy()
+        if len(rows):
+            part = self._minimise(found.y[rows], frame, shift[rows], found.ok[rows], keep[rows])
+            other.put(rows, part)
+        return other
 
     def _minimise(
         self, y: Floats, frame: "_Frame", shift: Floats, ok: Bools, keep: Bools
-    ) -> "_Minima":
+    ) -> "Minima":
         """Least chi2 over the free coordinates of each row of y."""
         m, free = len(y), frame.free
         y, ok = y.copy(), ok.copy()
@@ -444,7 +433,7 @@ class ExactRefit:
             ok[busy[waiting[~finished[waiting]]]] = False
             busy = busy[~finished & ok[busy]]
         ok[busy] = False
-        return _Minima(y, chi2, normal, keep.copy(), ok)
+        return Minima(y, chi2, normal, keep.copy(), ok)
 
     def partials(self, y: Floats, frame: "_Frame") -> Floats:
         """Central differences (free, 2n) of minus the whitened residuals at y (p,)."""
@@ -503,16 +492,42 @@ class _Frame:
 
 
 @dataclass(eq=False)
-class _Minima:
+class Minima:
+    """Least chi2 of m arcs.
+
+    Attributes
+    ----------
+    y : (m, p) coordinates
+    chi2 : (m,)
+    normal : (m, free, free) normal matrices in the free coordinates
+    keep : (m, n) records in the fit
+    ok : (m,) whether the fit was found
+    """
+
     y: Floats
     chi2: Floats
     normal: Floats
     keep: Bools
     ok: Bools
 
-    def put(self, rows: Ints, part: "_Minima") -> None:
-        for name in ("y", "chi2", "normal", "keep", "ok"):
-            getattr(self, name)[rows] = getattr(part, name)
+    def put(self, rows: Ints, part: "Minima") -> None:
+        """Take the results of some of the arcs."""
+        for name, values in vars(part).items():
+            getattr(self, name)[rows] = values
+
+    def copy(self) -> "Minima":
+        """The same in arrays of its own."""
+        return Minima(**{name: values.copy() for name, values in vars(self).items()})
+
+
+@dataclass(frozen=True, eq=False)
+class BothFits:
+    """Injected arcs fitted without and with thrust, each over the records that it kept; and by
+    how much thrust lowers chi2 over the records that either kept, (m,)."""
+
+    null: Minima
+    push: Minima
+    delta_chi2: Floats
 
 
 class _Projector:

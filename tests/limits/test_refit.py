@@ -8,10 +8,11 @@ import pytest
 
 from ngbound.arc import Arc
 from ngbound.errors import LimitError
-from ngbound.fit import fit_orbit
+from ngbound.fit import compare_fits, fit_orbit
 from ngbound.limits import ExactRefit, detection_threshold, inject_and_recover
 from ngbound.motion import Thrust
 from tests.limits.arcs import CLASSES, ERRORS, fitted, simulated_arc
+from tests.units import arcsec
 
 COMET = replace(CLASSES["comet, 200 days through perihelion"], n_nights=16, per_night=4)
 
@@ -66,6 +67,40 @@ def test_an_injection_is_what_the_program_finds_in_that_arc(push, threshold, rej
     null = fit_orbit(arc, None, ERRORS, initial=push.orbit, reject=False, keep=found.keep)
     if not reject:
         assert done.delta_chi2[0] == pytest.approx(null.chi2 - found.chi2, abs=0.02)
+
+
+@pytest.mark.parametrize("station_offset_arcsec", [0.0, 0.3])
+def test_the_outlier_rule_in_the_loop_is_that_of_the_fit(station_offset_arcsec, monkeypatch):
+    arc, orbit = simulated_arc(COMET)
+    errors = replace(ERRORS, station_offset_arcsec=station_offset_arcsec)
+    push = fit_orbit(arc, Thrust(COMET.law), errors, initial=orbit, reject=False)
+    threshold = detection_threshold(push)
+    A = threshold.worst.value * threshold.worst_direction
+    model = ExactRefit(push, reject=True)
+    assert (model.noise.shared is not None) == (station_offset_arcsec > 0.0)
+    draw = model.draw
+
+    def with_gross_errors(random):
+        noise = draw(random)
+        rows = random.choice(noise.size, 6, replace=False)
+        noise[rows] += random.uniform(0.8, 4.0, 6) * arcsec
+        return noise
+
+    monkeypatch.setattr(model, "draw", with_gross_errors)
+    streams = np.random.SeedSequence(11).spawn(4)
+    both = model.fit_both(np.tile(A, (4, 1)), streams)
+    done = model.refit(np.tile(A, (4, 1)), streams)
+    assert done.n_rejected.sum() >= 8
+    for i, stream in enumerate(streams):
+        made = injected_arc(model, A, stream)
+        found = fit_orbit(made, push.thrust, errors, initial=push.orbit)
+        null = fit_orbit(made, None, errors, initial=push.orbit)
+        assert np.array_equal(both.push.keep[i], found.keep)
+        assert np.array_equal(both.null.keep[i], null.keep)
+        sigma = found.A_sigma.value
+        np.testing.assert_allclose(done.A_hat[i] / sigma, found.A.value / sigma, atol=0.01)
+        expected = compare_fits(null, found).delta_chi2
+        assert done.delta_chi2[i] == pytest.approx(expected, abs=0.02)
 
 
 def test_counts_agree_with_linear_theory_and_do_not_depend_on_the_lot(push, threshold):
