@@ -67,6 +67,12 @@ def cells(fit: Fit, n: int, seed: int, part: str) -> Iterator[tuple[str, Recover
         for share in (0.0, 0.5, 1.0):
             what = f"R outward: {share:g} of the threshold"
             yield count(what, model, outward(model, share), prior="outward-radial")
+    if part in ("rule", "all"):
+        for free in ("RTN", "R"):
+            model = ExactRefit(fit, free=free, reject=True)
+            yield count(f"{free}, outlier rule: no thrust", model, np.zeros(len(free)))
+            what = f"{free}, outlier rule: threshold, worst direction"
+            yield count(what, model, worst(model))
     if part in ("more", "all"):
         model = ExactRefit(fit)
         top = 2.0 * float(np.linalg.norm(worst(model)))
@@ -79,11 +85,9 @@ def cells(fit: Fit, n: int, seed: int, part: str) -> Iterator[tuple[str, Recover
         direction /= np.linalg.norm(direction, axis=1)[:, None]
         truth = direction * random.uniform(0.0, top, n)[:, None]
         yield count("RTN posterior limit: truths drawn from the prior", model, truth, **posterior)
-        for words, choice in (("outlier rule", {"reject": True}),
-                              ("residual nights", {"noise": "residuals"})):  # fmt: skip
-            model = ExactRefit(fit, **choice)
-            yield count(f"RTN, {words}: no thrust", model, np.zeros(3))
-            yield count(f"RTN, {words}: threshold, worst direction", model, worst(model))
+        model = ExactRefit(fit, noise="residuals")
+        yield count("RTN, residual nights: no thrust", model, np.zeros(3))
+        yield count("RTN, residual nights: threshold, worst direction", model, worst(model))
 
 
 def share(rate: Rate | None) -> str:
@@ -99,7 +103,7 @@ def main() -> None:
     parser.add_argument("--n", type=int, default=2000)
     parser.add_argument("--seed", type=int, default=2026)
     parser.add_argument("--class", dest="name", default="")
-    parser.add_argument("--part", choices=("core", "more", "all"), default="all")
+    parser.add_argument("--part", choices=("core", "rule", "more", "all"), default="all")
     parser.add_argument("--out", type=Path)
     choice = parser.parse_args()
     record = []

@@ -44,7 +44,9 @@ def test_switched_off_the_table_stands(quiet):
         truth.arc, error_model=ErrorModel(rescale_stations=False), initial=truth.orbit
     )
     assert plain.scales == ()
-    assert plain.reduced_chi2 < 0.6
+    table = {s.station: s.sigma_before_arcsec for s in fit.scales}
+    of_record = plain.used.table["stn"].map(table).to_numpy(dtype=float)
+    np.testing.assert_allclose(plain.noise.sigma_ra_arcsec, of_record, rtol=0.01)
     few = fit_orbit(truth.arc, error_model=ErrorModel(rescale_least=1000), initial=truth.orbit)
     assert few.scales == ()
 
