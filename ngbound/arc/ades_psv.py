@@ -75,16 +75,14 @@ def psv_records(text: str, source: str) -> Records:
     """
     lines = Lines(trimmed_of_odd_blanks(text))
     version, headers, blocks = _split(lines, source)
-    strict = version == "2022"
     filled = [b for b in blocks if b.spans]
     if not filled:
         raise ArcError(
             f"{source}: there is no observation in it; an arc needs at least one.", file=source
         )
     _refuse_the_empty(headers, blocks, source)
-    if strict:
-        for header in headers:
-            _check_header(header, source)
+    for header in headers:
+        _check_header(header, version, source)
     contexts, place = merge_contexts([header.frozen() for header in headers])
     parts, rows, kinds, numbers = [], [], [], []
     coded: dict[str, Coded] = {}
@@ -92,7 +90,7 @@ def psv_records(text: str, source: str) -> Records:
     for block in blocks:
         rows.append(block.rows(lines))
         n = len(rows[-1])
-        kinds.append(np.full(n, _kind(block, source), dtype=object))
+        kinds.append(np.full(n, _kind(block, version, source), dtype=object))
         texts, coded, packed = _cells(block, lines, rows[-1], source)
         parts.append(texts)
         number = int(place[block.context]) if block.context >= 0 else -1
@@ -107,7 +105,7 @@ def psv_records(text: str, source: str) -> Records:
         block=np.concatenate(numbers),
         set_aside=np.full(len(kind), "", dtype=object),
         contexts=contexts,
-        strict=strict,
+        version=version,
         coded=coded if alone else {},
         packed=packed if alone else {},
     )
@@ -134,9 +132,9 @@ def _refuse_the_empty(headers: list[_Header], blocks: list[_Block], source: str)
             )
 
 
-def _check_header(header: _Header, source: str) -> None:
-    """The rules of version 2022 for a header."""
-    problem = context_problem(header.frozen())
+def _check_header(header: _Header, version: str, source: str) -> None:
+    """The rules of a version for a header."""
+    problem = context_problem(header.frozen(), version)
     if problem is not None:
         at, name, value, sentence = problem
         raise ArcError(
@@ -312,8 +310,8 @@ def _check_names(names: list[str], source: str, number: int) -> None:
         )
 
 
-def _kind(block: _Block, source: str) -> str:
-    kind = kind_of_columns(set(block.names))
+def _kind(block: _Block, version: str, source: str) -> str:
+    kind = kind_of_columns(set(block.names), version)
     if kind is None:
         missing = [
             c for c in ("stn", "mode", "obsTime", "ra", "dec", "astCat") if c not in block.names

@@ -2,12 +2,14 @@
 standard library.
 
 Source: A Concise Description of ADES, version 2022 (IAU-ADES repository, 2 May 2024), tables 3 to
-17, and the element types of its schema. Order of the columns is the order that the standard
-prescribes for XML.
+17, and the element types of its schema; for version 2017 what the archived schema of that version
+(past_versions/v2017) has otherwise. Order of the columns is the order that the standard prescribes
+for XML.
 """
 
 import re
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from math import inf
 
 OPTICAL, OFFSET, OCCULTATION, RADAR = "optical", "offset", "occultation", "radar"
 OPTICAL_RESIDUAL, RADAR_RESIDUAL = "opticalResidual", "radarResidual"
@@ -23,7 +25,8 @@ REQUIRED = {
     OPTICAL_RESIDUAL: ("obsTime",),
     RADAR_RESIDUAL: ("obsTime",),
 }
-"""Columns that every record of a kind must fill (an identification comes on top)."""
+"""Columns that every record of a kind must fill (an identification comes on top). In version 2017
+an occultation may do without mode."""
 
 
 @dataclass(frozen=True)
@@ -32,7 +35,7 @@ class ColumnRule:
 
     ``form`` is "text", "time", "decimal", "double" or "integer"; ``pattern`` holds for text;
     ``low``/``high`` bound numbers and are themselves excluded where ``open_low``/``open_high``.
-    The rest are lexical rules of version 2022: ``width`` is the longest form without a sign,
+    The rest are lexical rules: ``width`` is the longest form without a sign,
     ``places`` the most decimals, ``signed`` whether a sign may stand, ``bare_point`` whether the
     digit before the point may be left out, ``zeros`` whether leading zeros may stand, ``values``
     the only values allowed (any, when empty), ``inside`` that the bounds themselves are excluded.
@@ -44,8 +47,8 @@ class ColumnRule:
     unit: str = ""
     pattern: str = ""
     width: int = 0
-    low: float = -float("inf")
-    high: float = float("inf")
+    low: float = -inf
+    high: float = inf
     open_low: bool = False
     open_high: bool = False
     signed: bool = True
@@ -65,11 +68,12 @@ class ColumnRule:
         )
         unit = f" in {self.unit}" if self.unit else ""
         span = ""
-        if self.low > -float("inf") or self.high < float("inf"):
+        if self.high < inf:
             left = "(" if self.open_low else "["
             right = ")" if self.open_high else "]"
-            high = "no upper limit" if self.high == float("inf") else f"{self.high:g}"
-            span = f" in the range {left}{self.low:g}, {high}{right}"
+            span = f" in the range {left}{self.low:g}, {self.high:g}{right}"
+        elif self.low > -inf:
+            span = f" {'above' if self.open_low else 'of at least'} {self.low:g}"
         if self.values:
             span = ", one of " + ", ".join(f"{value:g}" for value in self.values)
         return f"it must be {what}{unit}{span}"
@@ -248,6 +252,50 @@ NUMBER_COLUMNS = tuple(c for c, rule in COLUMNS.items() if rule.form not in ("te
 
 NEW_IN_2022 = ("obsSubID", "trkMPC", "shapeOcc", "fltr", "vel1", "vel2", "vel3")
 """Columns that version 2017 does not have."""
+_TEXT_2017 = {
+    "permID": _PERM.removeprefix(r"(?=.{1,25}\Z)"),
+    "ref": ".{1,16}",
+    **dict.fromkeys(("artSat", "orbProd", "orbID", "photProd"), ".+"),
+}
+_UNBOUNDED_2017 = ("ctr", "mag")
+
+
+def _of_2017(rule: ColumnRule) -> ColumnRule:
+    """What version 2017 asks of a column: numbers in any spelling of a decimal, without limits of
+    digits, and exponents nowhere."""
+    if rule.form in ("text", "time"):
+        return replace(rule, pattern=_TEXT_2017.get(rule.name, rule.pattern))
+    unbounded = rule.name in _UNBOUNDED_2017
+    no_end = unbounded or rule.name == "nStars" or rule.open_low
+    return replace(
+        rule,
+        form="integer" if rule.form == "integer" else "decimal",
+        width=0,
+        low=-inf if unbounded else rule.low,
+        high=inf if no_end else rule.high,
+        open_high=rule.open_high and not no_end,
+        signed=True,
+        places=99,
+        bare_point=True,
+        zeros=True,
+        inside=False,
+        values=() if unbounded else rule.values,
+    )
+
+
+RULES: dict[str, dict[str, ColumnRule]] = {
+    "2017": {c: _of_2017(rule) for c, rule in COLUMNS.items() if c not in NEW_IN_2022},
+    "2022": COLUMNS,
+}
+"""The columns of each version."""
+
+
+def required_columns(kind: str, version: str) -> tuple[str, ...]:
+    """Columns that every record of a kind must fill in a version ("" where none was declared)."""
+    needed = REQUIRED[kind]
+    free = kind == OCCULTATION and version == "2017"
+    return tuple(c for c in needed if not (free and c == "mode"))
+
 
 _LOCATION = ("sys", "ctr", "pos1", "pos2", "pos3")
 _ASTROMETRY = ("resRA", "resDec", "selAst", "sigRA", "sigDec")
@@ -314,9 +362,12 @@ CONTEXT_REQUIRED: dict[str, tuple[str, ...]] = {
     "collaborators": ("name",),
     "comment": ("line",),
 }
-"""Children that an element of obsContext must have (2022)."""
-CONTEXT_ALWAYS = ("observatory", "submitter", "measurers", "telescope")
-"""Elements that every obsContext must have (2022)."""
+"""Children that an element of obsContext must have."""
+CONTEXT_ALWAYS = {
+    "2017": ("observatory", "submitter", "observers", "measurers", "telescope"),
+    "2022": ("observatory", "submitter", "measurers", "telescope"),
+}
+"""Elements that every obsContext must have, by version."""
 CONTEXT_REPEATED = ("observers", "measurers", "coinvestigators", "collaborators", "comment")
 """Elements whose child may be repeated."""
 _CONTEXT_WIDTH = {
@@ -327,31 +378,37 @@ _CONTEXT_WIDTH = {
     ("software", "fitOrder"): 25,
 }
 _CONTEXT_WIDTH_ELSEWHERE = 100
+_DECIMAL = r"[+-]?([0-9]+(\.[0-9]*)?|\.[0-9]+)"
 _CONTEXT_NUMBERS = (("telescope", "aperture"), ("telescope", "fRatio"), ("telescope", "pixelScale"))
 
 
-def context_value_problem(name: str, child: str, text: str) -> str:
-    """What version 2022 has against the text of an element of obsContext ("" for ``child`` when
-    it is the element's own text); "" when nothing."""
+def context_value_problem(name: str, child: str, text: str, version: str) -> str:
+    """What a version has against the text of an element of obsContext ("" for ``child`` when it is
+    the element's own text); "" when nothing."""
+    limited = version == "2022"
     if not text.strip():
         return "it is empty"
     if (name, child) == ("observatory", "mpcCode"):
         return "" if matches(COLUMNS["stn"], text) else _TEXT_WORDS["stn"]
     if (name, child) in _CONTEXT_NUMBERS:
-        good = re.fullmatch(r"(?=.{1,6}\Z)(0|[1-9][0-9]*)(\.[0-9]*)?", text)
-        if good is None or not 0.0 < float(text) < 1e5:
-            return "it must be a positive decimal number of at most 6 characters"
+        form = r"(?=.{1,6}\Z)(0|[1-9][0-9]*)(\.[0-9]*)?" if limited else _DECIMAL
+        good = re.fullmatch(form, text)
+        if good is None or not 0.0 < float(text) < (1e5 if limited else inf):
+            most = " of at most 6 characters" if limited else ""
+            return f"it must be a positive decimal number{most}"
         return ""
     width = _CONTEXT_WIDTH.get((name, child), _CONTEXT_WIDTH_ELSEWHERE)
-    if len(text) > width or "|" in text:
-        return f"it must be a text of at most {width} characters without '|'"
+    if "|" in text or limited and len(text) > width:
+        most = f" of at most {width} characters" if limited else ""
+        return f"it must be a text{most} without '|'"
     return ""
 
 
 def context_problem(
     context: tuple[tuple[str, str, tuple[tuple[str, str], ...]], ...],
+    version: str,
 ) -> tuple[int, str, str, str] | None:
-    """The first thing that version 2022 has against an obsContext.
+    """The first thing that a version has against an obsContext.
 
     Returns
     -------
@@ -365,7 +422,7 @@ def context_problem(
             return at, name, "", "it stands twice in one header. Keep one of them"
         seen.add(name)
         if name == "fundingSource":
-            problem = context_value_problem(name, "", text)
+            problem = context_value_problem(name, "", text, version)
             if problem:
                 return at, name, text, f"{problem}. Correct the text"
         names = [child for child, _ in children]
@@ -375,7 +432,7 @@ def context_problem(
         for child, value in children:
             if names.count(child) > 1 and name not in CONTEXT_REPEATED:
                 return at, f"{name}/{child}", value, "it stands twice. Keep one of them"
-            problem = context_value_problem(name, child, value)
+            problem = context_value_problem(name, child, value, version)
             if problem:
                 return (
                     at,
@@ -383,17 +440,22 @@ def context_problem(
                     value,
                     f"the value {value[:60]!r} is not allowed; {problem}. Correct it",
                 )
-    for name in CONTEXT_ALWAYS:
+    for name in CONTEXT_ALWAYS[version]:
         if name not in seen:
-            return 0, name, "", "the header lacks it, and the standard asks for it. Add it"
+            return (
+                0,
+                name,
+                "",
+                f"the header lacks it, and version {version} of the standard asks for it. Add it",
+            )
     return None
 
 
-def kind_of_columns(names: set[str]) -> str | None:
+def kind_of_columns(names: set[str], version: str = "") -> str | None:
     """The record kind whose required columns are all among ``names`` (None when there is no such
     kind)."""
     for kind in (OPTICAL, OCCULTATION, OFFSET, RADAR):
-        if set(REQUIRED[kind]) <= names:
+        if set(required_columns(kind, version)) <= names:
             return kind
     if "obsTime" in names:
         for kind in (OPTICAL_RESIDUAL, RADAR_RESIDUAL):

@@ -1,7 +1,7 @@
 """An arc as texts that the standard allows, for the writers; imports errors and this room's rules,
 checks, fields and records.
 
-What is written passes the same checks as what is read under version 2022: a value that has no
+What is written passes the same checks as what is read under that version: a value that has no
 allowed spelling is refused, with the row and the rule named.
 """
 
@@ -12,13 +12,13 @@ from numpy.typing import NDArray
 
 from ngbound.arc.ades_rules import (
     COLUMNS,
-    NEW_IN_2022,
     OCCULTATION,
     OPTICAL,
     OPTICAL_RESIDUAL,
     PREC_ANGLE,
     PREC_TIME,
     RADAR_RESIDUAL,
+    RULES,
     VERSIONS,
     ColumnRule,
     context_problem,
@@ -51,15 +51,14 @@ def checked_contexts(arc: Arc, version: str) -> None:
             f"The ADES version {version!r} is not known; it must be {' or '.join(VERSIONS)}.",
             value=version,
         )
-    if version == "2017":
-        return
     for block in np.unique(arc.table["block"].to_numpy()).tolist():
-        problem = context_problem(arc.contexts[block]) if block >= 0 else None
+        problem = context_problem(arc.contexts[block], version) if block >= 0 else None
         if problem is not None:
             _, name, value, sentence = problem
+            other = next(v for v in VERSIONS if v != version)
             raise ArcError(
-                f"{arc.source}: the header of block {block + 1} cannot be written in version 2022; "
-                f"header element {name}: {sentence}, or write version='2017'.",
+                f"{arc.source}: the header of block {block + 1} cannot be written in version "
+                f"{version}; header element {name}: {sentence}, or write version='{other}'.",
                 column=name,
                 value=value,
             )
@@ -73,7 +72,7 @@ def grouped_cells(arc: Arc, version: str) -> list[Run]:
         raise ArcError("There is no observation to write; an arc needs at least one.")
     block, kind = table["block"].to_numpy(), table["kind"].to_numpy(dtype=object)
     change = np.flatnonzero((block[1:] != block[:-1]) | (kind[1:] != kind[:-1])) + 1
-    cells = _ades_cells(arc)
+    cells = _ades_cells(arc, version)
     _check(arc, kind, cells, version)
     runs = []
     for rows in np.split(np.arange(len(table)), change):
@@ -90,12 +89,22 @@ def _check(arc: Arc, kind: ObjectArray, cells: dict[str, ObjectArray], version: 
         alien = np.array([k not in kinds for k in kind], dtype=bool) & (texts != "")
         if alien.any() and name not in ("ra", "dec"):
             texts[alien] = ""
-        if version == "2017" and name in NEW_IN_2022 and (texts != "").any():
+        if name not in RULES[version] and (texts != "").any():
             raise ArcError(
                 f"{arc.source}: the column {name} does not exist in version 2017; write "
                 "version='2022', or drop the column.",
                 column=name,
             )
+    named = (kind == OCCULTATION) & (cells["mode"] != "")
+    if version == "2017" and named.any():
+        row = int(np.argmax(named))
+        raise ArcError(
+            f"{arc.source}, row {row}, column mode: the value {cells['mode'][row]!r} cannot be "
+            "told, for occultations have no mode in version 2017 (all are OCC); write "
+            "version='2022'.",
+            column="mode",
+            value=cells["mode"][row],
+        )
     bare = np.isin(kind, (OPTICAL_RESIDUAL, RADAR_RESIDUAL)) & (arc.table["block"] >= 0)
     if bare.any():
         raise ArcError(
@@ -109,20 +118,20 @@ def _check(arc: Arc, kind: ObjectArray, cells: dict[str, ObjectArray], version: 
         line=np.arange(n, dtype=np.int64),
         block=np.full(n, -1, dtype=np.int64),
         set_aside=np.full(n, "", dtype=object),
-        strict=True,
+        version=version,
         unit_name="row",
     )
     Checker(records).everything()
 
 
-def _ades_cells(arc: Arc) -> dict[str, ObjectArray]:
+def _ades_cells(arc: Arc, version: str) -> dict[str, ObjectArray]:
     """All ADES columns of an arc as texts."""
     table, n = arc.table, len(arc.table)
     cells: dict[str, ObjectArray] = {}
-    for name, rule in COLUMNS.items():
+    for name in COLUMNS:
         if name not in table:
             continue
-        column = table[name]
+        column, rule = table[name], RULES[version].get(name, COLUMNS[name])
         if rule.form in ("text", "time"):
             texts = [v if isinstance(v, str) else "" for v in column.to_numpy(dtype=object)]
         else:
@@ -130,11 +139,11 @@ def _ades_cells(arc: Arc) -> dict[str, ObjectArray]:
             spelled = np.array(["" if v != v else _number(v, rule) for v in values], dtype=object)
             texts = spelled[codes].tolist()
         cells[name] = np.array(texts, dtype=object)
-    _spell_angles(arc, cells)
-    _spell_offset_errors(arc, cells)
+    _spell_angles(arc, cells, version)
+    _spell_offset_errors(arc, cells, RULES[version]["rmsCorr"])
     optical = (table["kind"] == OPTICAL).to_numpy(dtype=bool)
     _spell_precision(arc, cells, optical)
-    cells["obsTime"] = _times(arc)
+    cells["obsTime"] = _times(arc) if version == "2022" else cells["obsTime"]
     if "mag" in cells:
         bare = (cells["mag"] != "") & (cells["band"] == "")
         cells["band"] = np.where(bare, "UNK", cells["band"])
@@ -146,6 +155,12 @@ def _ades_cells(arc: Arc) -> dict[str, ObjectArray]:
         label = "".join(c for c in arc.name if c.isascii() and c.isalnum())[:8] or "object"
         cells["trkSub"] = np.where(named, cells["trkSub"], label)
     cells["mode"] = np.where(optical & (cells["mode"] == ""), "UNK", cells["mode"])
+    occultation = (table["kind"] == OCCULTATION).to_numpy(dtype=bool)
+    cells["mode"] = np.where(
+        occultation & (cells["mode"] == ("OCC" if version == "2017" else "")),
+        "" if version == "2017" else "OCC",
+        cells["mode"],
+    )
     cells["astCat"] = np.where(optical & (cells["astCat"] == ""), "UNK", cells["astCat"])
     return cells
 
@@ -156,8 +171,8 @@ def _number(value: float, rule: ColumnRule) -> str:
     return fitted_decimal(value, rule.places, rule.width)
 
 
-def _spell_angles(arc: Arc, cells: dict[str, ObjectArray]) -> None:
-    """Reported angles in the spelling of 2022: their own digits where those are decimal."""
+def _spell_angles(arc: Arc, cells: dict[str, ObjectArray], version: str) -> None:
+    """Reported angles in the spelling of a version: their own digits where those are decimal."""
     table = arc.table
     ra_text = table["raText"].to_numpy(dtype=object)
     dec_text = table["decText"].to_numpy(dtype=object)
@@ -172,14 +187,14 @@ def _spell_angles(arc: Arc, cells: dict[str, ObjectArray]) -> None:
             values = table[name].to_numpy(dtype=float)
             cells[name] = np.array(
                 [
-                    _angle(t, v) if m and v == v else ""
+                    _angle(t, v, version) if m and v == v else ""
                     for t, v, m in zip(texts, values, mine, strict=True)
                 ],
                 dtype=object,
             )
 
 
-def _spell_offset_errors(arc: Arc, cells: dict[str, ObjectArray]) -> None:
+def _spell_offset_errors(arc: Arc, cells: dict[str, ObjectArray], rule: ColumnRule) -> None:
     """Errors of offsets in distance and angle as they were reported."""
     if "dist" not in cells:
         return
@@ -189,16 +204,17 @@ def _spell_offset_errors(arc: Arc, cells: dict[str, ObjectArray]) -> None:
     if "corrReported" in arc.table:
         reported = arc.table["corrReported"].to_numpy(dtype=float)
         turned = polar & (cells["rmsDist"] != "") & (cells["rmsPA"] != "")
-        rule = COLUMNS["rmsCorr"]
         for row in np.flatnonzero(turned):
             value = reported[row]
             cells["rmsCorr"][row] = "" if value != value else _number(value, rule)
 
 
-def _angle(text: str, value: float) -> str:
-    """The reported decimal text in the spelling of 2022; degrees with nine decimals when it was not
-    decimal."""
+def _angle(text: str, value: float, version: str) -> str:
+    """The reported decimal text in the spelling of a version; degrees with nine decimals when it
+    was not decimal."""
     if text and set(text) <= set("+-.0123456789"):
+        if version == "2017":
+            return text
         whole, point, places = text.lstrip("+-").partition(".")
         if len(places) <= 9:
             return ("-" if text[0] == "-" else "") + (whole.lstrip("0") or "0") + point + places

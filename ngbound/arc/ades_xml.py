@@ -4,6 +4,7 @@ The parser resolves no entity, loads no document type and opens no network conne
 that declares a document type is refused.
 """
 
+import re
 import warnings
 
 import numpy as np
@@ -23,6 +24,9 @@ from ngbound.arc.observations import Arc
 from ngbound.arc.records import Context, ObjectArray, Records, merge_contexts
 from ngbound.arc.whole_file import PathLike, write_whole
 from ngbound.errors import ArcError, NgboundWarning
+
+LINE_BREAKS = re.compile(r"[\t\n\r]")
+"""Breaks and tabs inside free text, which XML allows and PSV cannot hold, are read as blanks."""
 
 
 def xml_records(content: bytes, source: str) -> Records:
@@ -81,7 +85,6 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
     blocks: list[int] = []
     cells: dict[str, dict[int, str]] = {}
     skipped = 0
-    strict = version == "2022"
     order = {name: at for at, name in enumerate(COLUMNS)}
 
     def record(element: etree._Element, block: int) -> None:
@@ -91,8 +94,7 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
         lines.append(element.sourceline or 0)
         blocks.append(block)
         last, behind = -1, ""
-        if strict:
-            _refuse_loose_text(element, source)
+        _refuse_loose_text(element, source)
         for child in element:
             name = child.tag
             if name == "localUse":
@@ -107,7 +109,7 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
                     f"it is not an element of {element.tag} records",
                     "Remove it.",
                 )
-            if strict and order[name] < last and {name, behind} != {"delay", "doppler"}:
+            if order[name] < last and {name, behind} != {"delay", "doppler"}:
                 raise _fail(
                     child,
                     source,
@@ -129,20 +131,21 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
                     child, source, name, "it holds something besides text", "Give plain text."
                 )
             text = (child.text or "").strip()
+            if rule.pattern.startswith("."):
+                text = LINE_BREAKS.sub(" ", text)
             if not text:
                 raise _fail(
                     child, source, name, "it is empty", "Leave out an element that has no value."
                 )
             cells[name][row] = text
 
-    if strict:
-        loose = [name for name in root.attrib if name != "version"]
-        if loose:
-            problem, remedy = f"it has the attribute {loose[0]!r}", "Remove the attribute."
-            raise _fail(root, source, "ades", problem, remedy)
-        for between, place in [(root.text, root), *((child.tail, child) for child in root)]:
-            if between and between.strip():
-                raise _fail(place, source, "ades", "text stands between its elements", "Remove it.")
+    loose = [name for name in root.attrib if name != "version"]
+    if loose:
+        problem, remedy = f"it has the attribute {loose[0]!r}", "Remove the attribute."
+        raise _fail(root, source, "ades", problem, remedy)
+    for between, place in [(root.text, root), *((child.tail, child) for child in root)]:
+        if between and between.strip():
+            raise _fail(place, source, "ades", "text stands between its elements", "Remove it.")
     for element in root:
         if element.tag in RECORD_KINDS:
             record(element, -1)
@@ -156,11 +159,10 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
                     "it must hold obsContext and then obsData, once each",
                     "Correct the block.",
                 )
-            contexts.append(_context(element[0], source, strict))
+            contexts.append(_context(element[0], source, version))
             data = element[1]
-            if strict:
-                _refuse_loose_text(element, source)
-                _refuse_loose_text(data, source)
+            _refuse_loose_text(element, source)
+            _refuse_loose_text(data, source)
             if not len(data):
                 raise _fail(data, source, "obsData", "it holds no record", "Add records.")
             for child in data:
@@ -211,14 +213,13 @@ def _walk(root: etree._Element, source: str, version: str) -> Records:
         block=np.array([place[b] if b >= 0 else -1 for b in blocks], dtype=np.int64),
         set_aside=np.full(n, "", dtype=object),
         contexts=distinct,
-        strict=version == "2022",
+        version=version,
     )
 
 
-def _context(element: etree._Element, source: str, strict: bool) -> Context:
+def _context(element: etree._Element, source: str, version: str) -> Context:
     out = []
-    if strict:
-        _refuse_loose_text(element, source)
+    _refuse_loose_text(element, source)
     for child in element:
         if child.tag not in CONTEXT_ELEMENTS:
             raise _fail(
@@ -228,7 +229,7 @@ def _context(element: etree._Element, source: str, strict: bool) -> Context:
                 "it is not an element of obsContext",
                 f"Use one of {', '.join(CONTEXT_ELEMENTS)}.",
             )
-        if strict and child.tag != "fundingSource":
+        if child.tag != "fundingSource":
             _refuse_loose_text(child, source)
         grand = []
         for leaf in child:
@@ -248,7 +249,7 @@ def _context(element: etree._Element, source: str, strict: bool) -> Context:
         text = " ".join((child.text or "").split()) if child.tag == "fundingSource" else ""
         out.append((str(child.tag), text, tuple(grand)))
     context = tuple(out)
-    problem = context_problem(context) if strict else None
+    problem = context_problem(context, version)
     if problem is not None:
         at, name, _, sentence = problem
         where = element[at] if len(element) else element

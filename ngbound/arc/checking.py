@@ -22,9 +22,11 @@ from ngbound.arc.ades_rules import (
     RADAR,
     RADAR_RESIDUAL,
     REQUIRED,
+    RULES,
     TOGETHER,
     ColumnRule,
     matches,
+    required_columns,
 )
 from ngbound.arc.fields import Packed, pack, parse_decimals, parse_doubles, parse_times
 from ngbound.arc.records import Coded, FloatArray, ObjectArray, Records
@@ -44,7 +46,8 @@ class Checker:
     def __init__(self, records: Records) -> None:
         self.records = records
         self.n = len(records.kind)
-        self.strict = records.strict
+        self.strict = bool(records.version)
+        self.rules = RULES.get(records.version, COLUMNS)
         self.blank = np.full(self.n, "", dtype=object)
         self.never = np.zeros(self.n, dtype=bool)
         found = set(pd.unique(records.kind))
@@ -160,7 +163,7 @@ class Checker:
             mine = self.of_kind(kind)
             if (self.records.set_aside != "").any():
                 mine = mine & np.asarray(self.records.set_aside == "", dtype=bool)
-            for column in REQUIRED[kind]:
+            for column in required_columns(kind, self.records.version):
                 if self.records.angles is not None and column in ("ra", "dec"):
                     continue
                 self._needed(mine, column, kind)
@@ -225,7 +228,7 @@ class Checker:
             )
 
     def groups(self) -> None:
-        """Columns that come together or shut each other out (version 2022)."""
+        """Columns that come together or shut each other out."""
         if not self.strict:
             return
         for members, needed in TOGETHER:
@@ -262,8 +265,9 @@ class Checker:
             return
         optical = self.any_filled(("resRA", "resMag"))
         delay, doppler = self.filled("resDelay"), self.filled("resDoppler")
+        bare_orbit = self.records.version == "2017"  # which lets an orbit stand without residuals
         self.refuse(
-            some & ~radar & ~optical,
+            some & ~radar & ~(optical | (bare_orbit & self.filled("orbProd"))),
             "orbProd",
             "the record names an orbit but gives no residual",
             "Add resRA and its companions, or resMag and its companions.",
@@ -277,12 +281,23 @@ class Checker:
 
     # ------------------------------------------------------------------ what values may be
 
+    def _rule(self, column: str) -> ColumnRule:
+        """The rule of a column; a value in a column that the version does not have is refused."""
+        if column not in self.rules:
+            self.refuse(
+                self.filled(column),
+                column,
+                f"the column does not exist in version {self.records.version}",
+                "Declare version=2022, or leave the column out.",
+            )
+        return COLUMNS[column] if column not in self.rules else self.rules[column]
+
     def text_column(self, column: str) -> ObjectArray:
         """A checked text column."""
         texts = self.text(column)
         if column == "obsTime" or column not in self.records.text:
             return texts
-        rule = COLUMNS[column]
+        rule = self._rule(column)
         coded = self.coded(column)
         control = [bool(UNWRITABLE.search(str(v))) for v in coded.values]
         if any(control):
@@ -300,7 +315,7 @@ class Checker:
         filled = self.filled(column)
         if not filled.any() or (column in ("ra", "dec") and self.records.angles is not None):
             return np.full(self.n, np.nan)
-        rule = COLUMNS[column]
+        rule = self._rule(column)
         if column in self.records.packed:
             judged = _judge_numbers(rule, self.records.packed[column], self.strict)
         else:
@@ -328,7 +343,7 @@ class Checker:
             "there is no such date or time of day",
             "Correct it; a second of 60 exists only in a leap second.",
         )
-        if self.strict:
+        if self.records.version == "2022":
             self.refuse(
                 (parsed.places > 6) & ~parsed.leap,
                 "obsTime",

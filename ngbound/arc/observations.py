@@ -220,7 +220,8 @@ class Arc:
         try:
             contexts = tuple(_context_of(c) for c in notes["contexts"])
             places = {code: Station(**place) for code, place in notes["stations"].items()}
-            return cls(table, str(notes["source"]), str(notes["label"]), contexts, places)
+            columns = {str(name): _plain(table[name]) for name in table}
+            return cls(_table(columns), str(notes["source"]), str(notes["label"]), contexts, places)
         except (ValueError, KeyError, TypeError, AttributeError) as error:
             raise ArcError(
                 f"{source}: the metadata of the arc are broken ({error}). Write the file again.",
@@ -306,6 +307,11 @@ def _context_of(listed: Any) -> Context:
         (str(name), str(text), tuple((str(c), str(v)) for c, v in children))
         for name, text, children in listed
     )
+
+
+def _plain(column: pd.Series) -> NDArray[Any]:
+    """The values of a column, texts as objects."""
+    return column.to_numpy(dtype="object" if pd.api.types.is_string_dtype(column) else None)
 
 
 def iso_day(mjd: int) -> str:
@@ -405,6 +411,9 @@ def assemble(
     for column in NUMBER_COLUMNS:
         if column in ALWAYS_NUMBER or checker.filled(column).any():
             columns[column] = checker.number_column(column)
+    if records.version == "2017" and OCCULTATION in checker.kinds:
+        unsaid = checker.of_kind(OCCULTATION) & (columns["mode"] == "")
+        columns["mode"] = np.where(unsaid, "OCC", columns["mode"])
     checker.groups()
     day, sec, time_step = checker.times()
     columns["utc_day"], columns["utc_sec"] = day, sec
@@ -415,9 +424,19 @@ def assemble(
     columns["object"] = _objects(columns, checker)
     why = _why_not(records, columns, checker)
     columns["why_not"], columns["use"] = why, (why == "").astype(bool)
-    table = pd.DataFrame(columns, copy=False)
-    arc = Arc(table, records.source, label, records.contexts, own)
+    arc = Arc(_table(columns), records.source, label, records.contexts, own)
     return _one_object(arc, object)
+
+
+def _table(columns: Mapping[str, Any]) -> pd.DataFrame:
+    """Columns as a table whose texts are Python objects, whatever kinds of string this pandas has:
+    turning a million rows into another kind takes longer than reading them."""
+    objects = {
+        name: pd.Series(values, dtype="object", copy=False)
+        for name, values in columns.items()
+        if np.asarray(values).dtype == "object"
+    }
+    return pd.DataFrame(dict(columns) | objects, copy=False)
 
 
 def _error_of_offset(columns: dict[str, Any], kind: ObjectArray) -> None:

@@ -49,9 +49,10 @@ class Records:
 
     ``text`` holds an object array of strings per ADES column ("" where absent); ``kind``, ``line``
     and ``block`` (index into ``contexts``, -1 without) stand one per record; ``set_aside`` is a
-    reason, or "". ``strict`` asks for the lexical rules of ADES 2022 (no leading zeros, limited
-    digits), which other sources do not promise. A reader that has a column as codes or as bytes
-    hands them over in ``coded`` and ``packed``, so that they need not be made again.
+    reason, or "". ``version`` is that of ADES whose rules the source declares to keep ("" when it
+    declares none: then columns, ranges and what must be there are checked, not the spelling). A
+    reader that has a column as codes or as bytes hands them over in ``coded`` and ``packed``, so
+    that they need not be made again.
     """
 
     source: str
@@ -62,7 +63,7 @@ class Records:
     set_aside: ObjectArray
     contexts: tuple[Context, ...] = ()
     angles: Angles | None = None
-    strict: bool = False
+    version: str = ""
     unit_name: str = "line"
     coded: Mapping[str, Coded] = field(default_factory=dict)
     packed: Mapping[str, Packed] = field(default_factory=dict)

@@ -50,12 +50,22 @@ def test_versions(tmp_path: Path) -> None:
 
 
 def test_a_header_that_2017_allowed(tmp_path: Path) -> None:
-    text = PSV.replace("2022", "2017", 1).replace("! detector CCD\n", "")
+    text = PSV.replace("2022", "2017", 1).replace("CCD\nperm", "CCD made of three\nperm")
+    text = text.replace("# measurers", "# observers\n! name A. Nobody\n# measurers")
+    text = text.replace("three", "three chips of the old kind")
     arc = read_arc(put(tmp_path, "a.psv", text))
-    with pytest.raises(ArcError, match=r"header of block 1.*telescope.*no detector.*'2017'"):
+    with pytest.raises(ArcError, match=r"header of block 1.*telescope/detector.*'2017'"):
         write_psv(arc, tmp_path / "b.psv")
     write_psv(arc, tmp_path / "b.psv", version="2017")
     assert read_arc(tmp_path / "b.psv").contexts == arc.contexts
+
+
+def test_a_header_that_2022_allowed(tmp_path: Path) -> None:
+    arc = read_arc(put(tmp_path, "a.psv", PSV))
+    with pytest.raises(ArcError, match=r"lacks it.*version 2017.*'2022'"):
+        write_psv(arc, tmp_path / "b.psv", version="2017")
+    with pytest.raises(ArcError, match=r"line 2, header element observers: .*version 2017"):
+        read_arc(put(tmp_path, "c.psv", PSV.replace("2022", "2017", 1)))
 
 
 def test_a_header_that_comes_again_is_the_same_header(tmp_path: Path) -> None:

@@ -9,6 +9,7 @@ import contextlib
 import io
 import re
 import string
+from datetime import datetime
 from pathlib import Path
 
 import numpy as np
@@ -18,6 +19,7 @@ from hypothesis import strategies as st
 from lxml import etree
 
 from ngbound.arc import ADES_COLUMNS, Arc, read_arc, write_psv, write_xml
+from ngbound.arc.ades_rules import RULES
 from ngbound.arc.checking import Checker
 from ngbound.arc.reading import records_of
 from ngbound.errors import ArcError
@@ -324,8 +326,8 @@ def with_value(column: str, value: str) -> tuple[str, dict[str, str]]:
     return kind, record(kind, **(NEEDS.get(column, {}) | {column: value}))
 
 
-def xml_text(records: list[tuple[str, dict[str, str]]]) -> bytes:
-    root = etree.Element("ades", version="2022")
+def xml_text(records: list[tuple[str, dict[str, str]]], version: str = "2022") -> bytes:
+    root = etree.Element("ades", version=version)
     for kind, cells in records:
         element = etree.SubElement(root, kind)
         for name, value in cells.items():
@@ -333,8 +335,8 @@ def xml_text(records: list[tuple[str, dict[str, str]]]) -> bytes:
     return etree.tostring(root, xml_declaration=True, encoding="UTF-8", pretty_print=True)
 
 
-def psv_text(records: list[tuple[str, dict[str, str]]]) -> str:
-    lines = ["# version=2022"]
+def psv_text(records: list[tuple[str, dict[str, str]]], version: str = "2022") -> str:
+    lines = [f"# version={version}"]
     for _, cells in records:
         lines += ["|".join(cells), "|".join(cells.values())]
     return "\n".join(lines) + "\n"
@@ -653,9 +655,18 @@ def number(width: int, signed: bool) -> st.SearchStrategy[str]:
     return drawn()
 
 
-def values_of(column: str) -> st.SearchStrategy[str]:
+def values_of(column: str, version: str = "2022") -> st.SearchStrategy[str]:
     """Values that the standard allows in a column, and that are possible in an arc."""
     good = VALUES[column][0]
+    if version == "2017":
+        if column == "ref":
+            return st.text("abc 09.", min_size=1, max_size=16).map(str.strip).filter(bool)
+        if ADES_COLUMNS[column].form == "double":
+            return st.decimals(-9, 9, places=9).map(lambda d: f"{d:f}")
+        if column in ("rmsTime", "rmsRA", "rmsDec", "exp", "sigRA", "biasRA", "logSNR", "mag"):
+            return st.sampled_from(("+007.250", ".5", "0.12345678901234", "5.", "99999"))
+        if column in ("ra", "dec", "raStar", "decStar"):
+            return st.sampled_from(("+007.250000", ".5", "0.12345678901234", "05.", "+80"))
     rule = ADES_COLUMNS[column]
     if column in ("stn",):
         return st.sampled_from(STATIONS)
@@ -664,8 +675,8 @@ def values_of(column: str) -> st.SearchStrategy[str]:
     if column in ("ra", "raStar", "pa"):
         return st.decimals(0, 359, places=7).map(lambda d: f"{d:f}")
     if column == "obsTime":
-        return st.datetimes(allow_imaginary=False).map(
-            lambda t: t.replace(year=max(t.year, 1800)).strftime("%Y-%m-%dT%H:%M:%S.%fZ")
+        return st.datetimes(datetime(1800, 1, 1), allow_imaginary=False).map(
+            lambda t: t.strftime("%Y-%m-%dT%H:%M:%S.%fZ")
         ) | st.sampled_from(good)
     if rule.form == "text" and len(VALUES[column][1]) == 1:
         return FREE.map(lambda t: t[:20].strip())
@@ -690,7 +701,7 @@ GROUPS = {
 
 
 @st.composite
-def drawn_record(draw: st.DrawFn, kind: str, name: dict[str, str]) -> dict[str, str]:
+def drawn_record(draw: st.DrawFn, kind: str, name: dict[str, str], version: str) -> dict[str, str]:
     cells = {k: v for k, v in BASE[kind].items() if k != "permID"} | name
     optical = kind in ("optical", "offset", "occultation")
     if kind in ("offset", "occultation"):
@@ -700,41 +711,45 @@ def drawn_record(draw: st.DrawFn, kind: str, name: dict[str, str]) -> dict[str, 
         else:
             more = ["rmsRA", "rmsDec", "rmsCorr"]
         for column in draw(st.lists(st.sampled_from(more), unique=True)):
-            cells[column] = draw(values_of(column))
+            cells[column] = draw(values_of(column, version))
     if kind == "radar" and draw(st.booleans()):
         cells |= ECHO
     if kind == "radar" and draw(st.booleans()):
         cells |= ORBIT | draw(st.sampled_from((DELAY_RESIDUAL, DOPPLER_RESIDUAL)))
     for group, (needed, more) in GROUPS.items():
+        more = [c for c in more if c in RULES[version]]
         if optical and draw(st.integers(0, 3)) == 0:
-            cells |= {c: draw(values_of(c)) for c in needed}
+            cells |= {c: draw(values_of(c, version)) for c in needed}
             for column in draw(st.lists(st.sampled_from(more), unique=True)) if more else ():
-                cells[column] = draw(values_of(column))
+                cells[column] = draw(values_of(column, version))
         elif kind == "opticalResidual" and group in ("astrometry", "magnitude"):
             if draw(st.booleans()):
-                cells |= {c: draw(values_of(c)) for c in needed}
+                cells |= {c: draw(values_of(c, version)) for c in needed}
     options = [
         c
         for c in OPTIONAL[kind]
-        if not c.startswith(("rmsRA", "rmsDec", "rmsCorr"))
+        if c in RULES[version]
+        and not c.startswith(("rmsRA", "rmsDec", "rmsCorr"))
         and not (kind == "optical" and c.startswith("rms") and c not in ("rmsTime", "rmsFit"))
         and c not in ("trkSub", "permID", "provID", "artSat")
     ]
     if kind == "optical":
         options += ["rmsRA", "rmsDec", "rmsCorr"]
     for column in draw(st.lists(st.sampled_from(options), unique=True)) if options else ():
-        cells[column] = draw(values_of(column))
+        cells[column] = draw(values_of(column, version))
     for column in cells:
-        fixed = ("permID",) if kind != "occultation" else ("permID", "deltaRA", "deltaDec")
+        fixed: tuple[str, ...] = ("permID",)
+        if kind == "occultation":
+            fixed = ("permID", "deltaRA", "deltaDec") + (("mode",) if version == "2017" else ())
         if cells[column] and column in BASE[kind] and column not in fixed:
-            cells[column] = draw(values_of(column))
+            cells[column] = draw(values_of(column, version))
     if "trkSub" in options or draw(st.booleans()):
         cells.setdefault("trkSub", "ab-1")
     return {c: cells[c] for c in ORDER[kind] if cells.get(c)}
 
 
 @st.composite
-def drawn_file(draw: st.DrawFn) -> str:
+def drawn_file(draw: st.DrawFn, version: str = "2022") -> str:
     """A PSV file of several blocks with and without headers, over all kinds and columns."""
     name = draw(
         st.sampled_from(
@@ -746,10 +761,10 @@ def drawn_file(draw: st.DrawFn) -> str:
             + ({"artSat": "1998-067A"}, {"provID": "C/2019 Y4-B"})
         )
     )
-    lines = ["# version=2022"]
+    lines = [f"# version={version}"]
     for _ in range(draw(st.integers(1, 4))):
         kind = draw(st.sampled_from(list(BASE)))
-        rows = draw(st.lists(drawn_record(kind, name), min_size=1, max_size=4))
+        rows = draw(st.lists(drawn_record(kind, name, version), min_size=1, max_size=4))
         if draw(st.booleans()) and "Residual" not in kind:
             header = HEADER.split("\n")[1:-3]
             lines += [h.replace("Ridge", draw(st.sampled_from(("Ridge", "Peak")))) for h in header]
