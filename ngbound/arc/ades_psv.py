@@ -8,6 +8,7 @@ records then stand without a header.
 import difflib
 import warnings
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
@@ -22,10 +23,18 @@ from ngbound.arc.ades_rules import (
     kind_of_columns,
 )
 from ngbound.arc.ades_text import checked_contexts, grouped_cells
-from ngbound.arc.fields import Packed
+from ngbound.arc.fields import Packed, join_packed
 from ngbound.arc.observations import Arc
 from ngbound.arc.psv_cells import Cells, Lines, trimmed_of_odd_blanks
-from ngbound.arc.records import Coded, Context, ObjectArray, Records, concatenate, merge_contexts
+from ngbound.arc.records import (
+    Coded,
+    Context,
+    ObjectArray,
+    Records,
+    concatenate,
+    join_coded,
+    merge_contexts,
+)
 from ngbound.arc.whole_file import PathLike, write_whole
 from ngbound.errors import ArcError, NgboundWarning
 
@@ -81,34 +90,76 @@ def psv_records(text: str, source: str) -> Records:
             f"{source}: there is no observation in it; an arc needs at least one.", file=source
         )
     _refuse_the_empty(headers, blocks, source)
-    for header in headers:
-        _check_header(header, version, source)
     contexts, place = merge_contexts([header.frozen() for header in headers])
-    parts, rows, kinds, numbers = [], [], [], []
-    coded: dict[str, Coded] = {}
-    packed: dict[str, Packed] = {}
+    for first in np.unique(place, return_index=True)[1]:
+        _check_header(headers[first], version, source)
+    groups: dict[tuple[str, ...], list[_Block]] = {}
     for block in blocks:
-        rows.append(block.rows(lines))
-        n = len(rows[-1])
-        kinds.append(np.full(n, _kind(block, version, source), dtype=object))
-        texts, coded, packed = _cells(block, lines, rows[-1], source)
-        parts.append(texts)
-        number = int(place[block.context]) if block.context >= 0 else -1
-        numbers.append(np.full(n, number, dtype=np.int64))
-    kind = np.concatenate(kinds)
-    alone = len(blocks) == 1
+        groups.setdefault(tuple(block.names), []).append(block)
+    parts = [_part(members, lines, version, source) for members in groups.values()]
+    rows = np.concatenate([part.rows for part in parts])
+    order = np.argsort(rows, kind="stable") if len(parts) > 1 else slice(None)
+    number = np.concatenate([part.context for part in parts])[order]
+    text, coded, packed = _one_table(parts, order)
+    n = len(rows)
     return Records(
         source=source,
-        text=parts[0] if alone else concatenate(parts, [len(r) for r in rows]),
-        kind=kind,
-        line=np.concatenate(rows) + 1,
-        block=np.concatenate(numbers),
-        set_aside=np.full(len(kind), "", dtype=object),
+        text=text,
+        kind=np.concatenate([part.kind for part in parts])[order],
+        line=rows[order] + 1,
+        block=np.where(number >= 0, np.append(place, -1)[number], -1),
+        set_aside=np.full(n, "", dtype=object),
         contexts=contexts,
         version=version,
-        coded=coded if alone else {},
-        packed=packed if alone else {},
+        coded=coded,
+        packed=packed,
     )
+
+
+@dataclass
+class _Part:
+    """All records under keyword rows of the same names: their lines, kinds and headers (positions,
+    -1 without), and their columns as texts and, as far as they came on the way, as codes and
+    bytes."""
+
+    rows: NDArray[np.int64]
+    kind: ObjectArray
+    context: NDArray[np.int64]
+    text: dict[str, ObjectArray]
+    coded: dict[str, Coded]
+    packed: dict[str, Packed]
+
+
+def _part(blocks: list[_Block], lines: Lines, version: str, source: str) -> _Part:
+    spans = [block.rows(lines) for block in blocks]
+    sizes = [len(span) for span in spans]
+    rows = np.concatenate(spans)
+    above = np.repeat([block.names_line for block in blocks], sizes)
+    kinds = np.array([_kind(block, version, source) for block in blocks], dtype=object)
+    text, coded, packed = _cells(blocks[0].names, above, lines, rows, source)
+    context = np.repeat([block.context for block in blocks], sizes)
+    return _Part(rows, np.repeat(kinds, sizes), context, text, coded, packed)
+
+
+def _one_table(
+    parts: list[_Part], order: Any
+) -> tuple[dict[str, ObjectArray], dict[str, Coded], dict[str, Packed]]:
+    """The columns of all parts under one another, their rows put in order."""
+    if len(parts) == 1:
+        return parts[0].text, parts[0].coded, parts[0].packed
+    sizes = [len(part.rows) for part in parts]
+    text = {
+        name: column[order]
+        for name, column in concatenate([part.text for part in parts], sizes).items()
+    }
+    coded, packed = {}, {}
+    for name in text:
+        has = [part for part in parts if name in part.text]
+        if all(name in part.coded for part in has):
+            coded[name] = join_coded([part.coded.get(name) for part in parts], sizes).take(order)
+        elif all(name in part.packed for part in has):
+            packed[name] = join_packed([part.packed.get(name) for part in parts], sizes).take(order)
+    return text, coded, packed
 
 
 def _refuse_the_empty(headers: list[_Header], blocks: list[_Block], source: str) -> None:
@@ -346,16 +397,17 @@ def _kind(block: _Block, version: str, source: str) -> str:
 
 
 def _cells(
-    block: _Block, lines: Lines, rows: NDArray[np.int64], source: str
+    names: list[str], above: NDArray[np.int64], lines: Lines, rows: NDArray[np.int64], source: str
 ) -> tuple[dict[str, ObjectArray], dict[str, Coded], dict[str, Packed]]:
-    width = len(block.names)
+    """The columns of some rows; ``above`` (n,) is the line of the keyword row of each."""
+    width = len(names)
     cells = Cells(lines, rows)
     counts = cells.counts
     if (counts > width).any():
         row = int(np.argmax(counts > width))
         raise ArcError(
             f"{source}, line {rows[row] + 1}: the record has {counts[row]} cells, the keyword "
-            f"row (line {block.names_line}) "
+            f"row (line {above[row]}) "
             f"{width} names. Remove the surplus '|', or name the column.",
             file=source,
             line=int(rows[row]) + 1,
@@ -372,7 +424,7 @@ def _cells(
     texts: dict[str, ObjectArray] = {}
     coded: dict[str, Coded] = {}
     packed: dict[str, Packed] = {}
-    for i, name in enumerate(block.names):
+    for i, name in enumerate(names):
         texts[name], codes, raw = cells.column(i, name)
         if codes is not None:
             coded[name] = codes

@@ -6,6 +6,7 @@ that the lexical rules of the standards cost little. Nothing here raises for bad
 gets masks and words the sentence, because only the caller knows file, line and column.
 """
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from dataclasses import fields as dataclass_fields
 from typing import Any
@@ -51,6 +52,20 @@ class Packed:
         out = np.empty(n, dtype=object)
         out[:] = flat.split("\n")[:-1]
         return out
+
+
+def join_packed(parts: Sequence[Packed | None], sizes: Sequence[int]) -> Packed:
+    """Columns as bytes under one another, empty where a part has none."""
+    width = max(len(part.turned) for part in parts if part is not None)
+    turned = np.zeros((width, sum(sizes)), dtype=np.uint8)
+    length = np.zeros(sum(sizes), dtype=np.int64)
+    at = 0
+    for part, size in zip(parts, sizes, strict=True):
+        if part is not None:
+            turned[: len(part.turned), at : at + size] = part.turned
+            length[at : at + size] = part.length
+        at += size
+    return Packed(turned, length)
 
 
 def pack(texts: NDArray[np.object_]) -> Packed:

@@ -119,6 +119,13 @@ class Cells:
         self.first_pipe = np.searchsorted(self.pipes, low.astype(self.pipes.dtype))
         after = np.searchsorted(self.pipes, high.astype(self.pipes.dtype))
         self.counts = after - self.first_pipe + 1
+        inside = self.counts - 1
+        if int(inside.sum()) < len(pipes):  # other lines between these hold pipes too
+            ahead = np.cumsum(inside) - inside
+            self.pipes = self.pipes[
+                np.repeat(self.first_pipe - ahead, inside) + np.arange(int(inside.sum()))
+            ]
+            self.first_pipe = ahead
 
     @cached_property
     def grid(self) -> NDArray[Any] | None:

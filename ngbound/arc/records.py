@@ -3,8 +3,10 @@ fields."""
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
+from typing import Any
 
 import numpy as np
+import pandas as pd
 from numpy.typing import NDArray
 
 from ngbound.arc.ades_rules import COLUMNS
@@ -27,6 +29,10 @@ class Coded:
     def texts(self) -> ObjectArray:
         """The column itself."""
         return self.values[self.codes]
+
+    def take(self, rows: Any) -> "Coded":
+        """The column at some rows."""
+        return Coded(self.codes[rows], self.values)
 
 
 @dataclass(frozen=True)
@@ -84,6 +90,20 @@ def concatenate(
         )
         for name in ordered
     }
+
+
+def join_coded(parts: Sequence[Coded | None], sizes: Sequence[int]) -> Coded:
+    """Columns as codes under one another, "" where a part has none."""
+    filled = [
+        Coded(np.zeros(size, dtype=np.int64), np.array([""], dtype=object))
+        if part is None
+        else part
+        for part, size in zip(parts, sizes, strict=True)
+    ]
+    place, values = pd.factorize(np.concatenate([part.values for part in filled]))
+    first = np.cumsum([0, *(len(part.values) for part in filled[:-1])])
+    codes = [place[part.codes + at] for part, at in zip(filled, first, strict=True)]
+    return Coded(np.concatenate(codes), np.asarray(values, dtype=object))
 
 
 def merge_contexts(contexts: Sequence[Context]) -> tuple[tuple[Context, ...], NDArray[np.int64]]:

@@ -4,6 +4,7 @@ import gzip
 from pathlib import Path
 
 import numpy as np
+import pandas as pd
 import pytest
 
 from ngbound.arc import Arc, read_arc, write_psv
@@ -85,6 +86,46 @@ def test_several_blocks(tmp_path: Path) -> None:
     again = read_arc(tmp_path / "y.psv")
     assert again.contexts == arc.contexts
     same(arc, again)
+
+
+def test_blocks_of_many_shapes_are_one_table(tmp_path: Path) -> None:
+    """Blocks of three kinds of keyword row in turn, read together and one by one."""
+    names = (
+        "obsTime|ra|dec|astCat",
+        "remarks|obsTime|ra|dec|astCat|mag|band",
+        "obsTime|ra|dec|astCat",
+    )
+    rng = np.random.default_rng(3)
+    pieces = []
+    for k in range(12):
+        header = HEADER.replace("A. Nobody", f"N. {k % 4}") if k % 5 else ""
+        rows = []
+        for _ in range(int(rng.integers(1, 4))):
+            when = f"2024-03-{k + 1:02d}T05:06:{rng.integers(60):02d}{'.125' * (k % 2)}Z"
+            ra, dec = rng.uniform(0.0, 360.0), rng.uniform(-90.0, 90.0)
+            cells = f"123|CCD|G96|{when}|{ra:.{k % 7 + 1}f}|{dec:.5f}|Gaia{k % 3 + 1}"
+            if k % 3 == 1:
+                cells = cells.replace("G96|", f"G96|é {k}|").removesuffix("|") + f"|{k}.5|V"
+            rows.append(cells)
+        pieces.append(header + f"permID|mode|stn|{names[k % 3]}\n" + "\n".join(rows) + "\n")
+    arc = read(tmp_path, "# version=2022\n" + "".join(pieces))
+    apart = [read(tmp_path, "# version=2022\n" + piece) for piece in pieces]
+    assert len(arc) == sum(len(one) for one in apart) and len(arc.contexts) == 4
+    for name in arc.table.columns:
+        if name in ("line", "block"):
+            continue
+        for one, low in zip(apart, np.cumsum([0] + [len(a) for a in apart[:-1]]), strict=True):
+            mine = arc.table[name].to_numpy()[low : low + len(one)]
+            if name in one.table:
+                np.testing.assert_array_equal(mine, one.table[name].to_numpy(), err_msg=name)
+            else:
+                assert pd.isna(mine).all() or (mine == "").all()
+    contexts = [arc.contexts[b] if b >= 0 else () for b in arc.table.block]
+    said = [one.contexts[0] if one.contexts else () for one in apart for _ in range(len(one))]
+    assert contexts == said
+    wrong = "".join(pieces[:8]) + "".join(pieces[8:]).replace("Gaia3\n", "Gaia3|\n", 1)
+    with pytest.raises(ArcError, match=r"line \d+: the record has 8 cells, the keyword row \(line"):
+        read(tmp_path, "# version=2022\n" + wrong)
 
 
 def same(one: Arc, two: Arc) -> None:
