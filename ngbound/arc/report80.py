@@ -5,11 +5,12 @@ temporary label, 13 discovery mark, 14 note or programme code, 15 kind of observ
 (UTC, decimal day), 33-44 RA, 45-56 Dec, 66-70 magnitude, 71 band, 72 catalogue code, 73-77
 reference, 78-80 observatory code. Space-based (S/s), roving (V/v) and radar (R/r) records have a
 second line with the position of the station or the rest of the radar measurement. Source: the Minor
-Planet Center's published description of the format; the layout of the radar lines and the table of
-programme codes are written from memory.
+Planet Center's published description of the format; the layout of the radar lines is written from
+memory. What column 14 means is told below, at `PROGRAM_CODES`.
 """
 
 import csv
+import string
 from dataclasses import dataclass
 from functools import lru_cache
 from importlib.resources import files
@@ -51,9 +52,28 @@ MODES = {
 Lower-case s, v, r are second lines."""
 SECOND_LINE = {"S": "s", "V": "v", "R": "r"}
 REASON_SUPERSEDED = "a discovery observation that a later measurement supersedes (type X)"
-PROGRAM_CODES = "0123456789!\"#$%&'()*+,-./[\\]^_`{|}~"
-"""Programme codes of column 14 that are no letters, in the order of the MPC's list; ADES numbers
-them in that order with two base-62 digits (0 -> 00, & -> 0F). A letter is taken as a note."""
+PROGRAM_CODES = (
+    string.digits
+    + "!\"#$%&'()*+,-./[\\]^_`{|}~:;<=>?@"
+    + string.ascii_uppercase
+    + string.ascii_lowercase
+)
+"""Programme codes of column 14 in the order in which ADES numbers them with two base-62 digits
+(0 -> 00, & -> 0F). Source: the MPC's list of programme codes of 19 March 2024 as the ADES toolkit
+(iau-ades 0.1.3, packUtil.py) carries it."""
+PROGRAM_STATIONS = frozenset(
+    (
+        "010 012 033 071 084 089 094 095 119 121 181 186 246 249 260 261 262 266 267 268 269 274 "
+        "290 309 413 561 568 658 673 675 688 689 695 696 703 705 807 809 851 950 A84 B35 C40 C49 "
+        "C50 C65 D20 D90 E03 E10 E26 F65 G37 G40 G73 G83 G96 H06 I03 I05 I11 I18 I22 I89 J04 J13 "
+        "J75 K91 K92 K93 K99 L28 L80 L81 M49 N50 Q54 Q62 Q63 Q64 T09 T11 T12 T14 T15 U65 U69 U94 "
+        "V07 V26 V37 V39 W11 W38 W57 W76 W84 W85 W86 W87 W88 W98 X06 X07 Z18 Z19 Z20 Z23 Z24 Z28 "
+        "Z31 Z58 Z84"
+    ).split()
+)
+"""Stations where column 14 holds a programme code, letters included (same source, 25 April 2024).
+Elsewhere a letter is a note, a sign can only be a programme code, and a digit may be either: it is
+kept as both."""
 HEADER_KEYS = ("COD", "CON", "OBS", "MEA", "TEL", "NET", "ACK", "AC2", "COM", "BND", "NUM", "STD")
 """Keys of the header lines that observers put above 80-column records."""
 MAX_PRECISE_DAY_DIGITS = 8
@@ -267,12 +287,7 @@ class _Reader:
         text["stn"] = np.array(self.column(78, 80), dtype=object)
         text["disc"] = np.array([c if c in "*+" else "" for c in self.column(13, 13)], dtype=object)
         text["disc"][text["disc"] == " "] = ""
-        notes = self.column(14, 14)
-        text["notes"] = np.array([c if c.isalpha() else "" for c in notes], dtype=object)
-        text["prog"] = np.array(
-            [to_base62(PROGRAM_CODES.index(c), 2) if c in PROGRAM_CODES else "" for c in notes],
-            dtype=object,
-        )
+        self._column_14(text)
         text["band"] = np.array([c.strip() for c in self.column(71, 71)], dtype=object)
         text["ref"] = np.array([c.strip() for c in self.column(73, 77)], dtype=object)
         self._catalogue(text, kind)
@@ -318,6 +333,20 @@ class _Reader:
             for name, value in seen[packed].items():
                 out[name][row] = value
         return out
+
+    def _column_14(self, text: dict[str, ObjectArray]) -> None:
+        """Note or programme code; a character that can be neither goes to the remarks."""
+        for name in ("notes", "prog"):
+            text[name] = np.full(self.n, "", dtype=object)
+        for row, (c, code) in enumerate(zip(self.column(14, 14), text["stn"], strict=True)):
+            programmed = code in PROGRAM_STATIONS and c in PROGRAM_CODES
+            if c.isascii() and c.isalnum() and not programmed:
+                text["notes"][row] = c
+            if programmed or (c in PROGRAM_CODES and not c.isalpha()):
+                text["prog"][row] = to_base62(PROGRAM_CODES.index(c), 2)
+            elif c != " " and not text["notes"][row]:
+                text.setdefault("remarks", np.full(self.n, "", dtype=object))
+                text["remarks"][row] = f"column 14: {c}"
 
     def _catalogue(self, text: dict[str, ObjectArray], kind: ObjectArray) -> None:
         codes = catalogue_codes()
@@ -485,7 +514,7 @@ class _Reader:
     def _offsets(self, text: dict[str, ObjectArray], kind: ObjectArray) -> None:
         rows = kind == OFFSET
         if rows.any():
-            text["remarks"] = np.full(self.n, "", dtype=object)
+            text.setdefault("remarks", np.full(self.n, "", dtype=object))
             for row in np.flatnonzero(rows):
                 text["remarks"][row] = f"80-column offset: {self.firsts[row].text[32:56].strip()}"
 

@@ -6,7 +6,7 @@ from pathlib import Path
 import numpy as np
 import pytest
 
-from ngbound.arc import Arc, read_arc, write_psv
+from ngbound.arc import Arc, read_arc, write_psv, write_xml
 from ngbound.errors import ArcError
 from tests.arc.samples import line80, put
 from tests.units import arcsec, mas
@@ -17,12 +17,12 @@ def read(folder: Path, *lines: str) -> Arc:
 
 
 def test_a_ccd_record(tmp_path: Path) -> None:
-    arc = read(tmp_path, line80(disc="*", note="k", ref="12345"))
+    arc = read(tmp_path, line80(disc="*", note="k", ref="12345", stn="704"))
     row = arc.table.iloc[0]
     assert (row.object, row["mode"], row.stn, row.astCat, row.disc, row.notes, row.ref) == (
         "2024 AB1",
         "CCD",
-        "G96",
+        "704",
         "Gaia2",
         "*",
         "k",
@@ -79,9 +79,20 @@ def test_modes(tmp_path: Path, kind: str, mode: str) -> None:
 
 
 def test_programme_codes(tmp_path: Path) -> None:
-    arc = read(tmp_path, line80(note="2"), line80(note="&"), line80(note="Z"))
-    assert arc.table.prog.tolist() == ["02", "0F", ""]
-    assert arc.table.notes.tolist() == ["", "", "Z"]
+    """Letters are programme codes where the station has such, notes elsewhere; digits where the
+    station has none may be either and are kept as both."""
+    given = [("G96", "2"), ("G96", "&"), ("G96", "Z"), ("G96", "z"), ("G96", " ")]
+    given += [("500", "Z"), ("500", "2"), ("500", "&"), ("500", "é"), ("C49", "H")]
+    arc = read(tmp_path, *(line80(note=c, stn=code) for code, c in given))
+    t = arc.table
+    assert t.prog.tolist() == ["02", "0F", "15", "1V", "", "", "02", "0F", "", "0n"]
+    assert t.notes.tolist() == ["", "", "", "", "", "Z", "2", "", "", ""]
+    assert t.remarks.tolist() == [""] * 8 + ["column 14: é", ""]
+    for write in (write_psv, write_xml):
+        write(arc, tmp_path / "again")
+        again = read_arc(tmp_path / "again").table
+        for name in ("prog", "notes", "remarks"):
+            assert again[name].tolist() == t[name].tolist()
 
 
 def test_catalogues(tmp_path: Path) -> None:

@@ -17,6 +17,8 @@ import numpy as np
 import pytest
 
 from ngbound.arc import Arc, read_arc
+from ngbound.arc.designations import to_base62
+from ngbound.arc.report80 import PROGRAM_CODES, PROGRAM_STATIONS
 from tests.units import arcsec, mas
 
 mpc80coltoxml = pytest.importorskip("ades.mpc80coltoxml", reason="iau-ades is not installed")
@@ -116,3 +118,13 @@ def test_codes_that_the_converter_spells_otherwise(both: tuple[Arc, Arc]) -> Non
         ours["ref"][packed].astype(int), theirs["ref"][packed].str.removeprefix("MPC").astype(int)
     )
     assert (theirs["subFmt"] == "M92").all()
+
+
+def test_programme_codes_are_those_of_the_toolkit() -> None:
+    """Its list of stations and its numbering; a digit at other stations is a note there, and both
+    here, for it may be either."""
+    pack_util = pytest.importorskip("ades.packUtil")
+    assert PROGRAM_STATIONS == pack_util.programCodeSites
+    assert PROGRAM_CODES == pack_util.programCodesArray
+    numbered = [to_base62(PROGRAM_CODES.index(c), 2) for c in PROGRAM_CODES]
+    assert numbered == [pack_util.packProgID(c) for c in PROGRAM_CODES]
