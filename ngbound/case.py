@@ -125,6 +125,10 @@ class ErrorsTable(Table):
     catalogue_scale: float = Field(
         default=ErrorModel.catalogue_scale, description="Factor on the priors of the catalogues."
     )
+    debiasing: str | None = Field(
+        default=ErrorModel.debiasing,
+        description="Your copy of the published table of catalogue offsets (Eggl et al. 2020).",
+    )
     station_offset_arcsec: float | None = Field(
         default=ErrorModel.station_offset_arcsec, description="Prior of each station's offset."
     )
@@ -142,6 +146,12 @@ class ErrorsTable(Table):
     rescale_least: int = Field(
         default=ErrorModel.rescale_least, description="Records that are enough for that."
     )
+
+    def in_folder(self, base: Path) -> "ErrorsTable":
+        """The choices with the path in them counted from a folder."""
+        if self.debiasing is None:
+            return self
+        return self.model_copy(update={"debiasing": str(base / self.debiasing)})
 
     def error_model(self) -> ErrorModel:
         """The error model of these choices."""
@@ -535,6 +545,7 @@ def _in_folder(case: Case, path: Path, base: Path) -> Case:
     return case.model_copy(
         update={
             "arc": case.arc.model_copy(update={"file": base / case.arc.file}),
+            "errors": case.errors.in_folder(base),
             "output": case.output.model_copy(update={"folder": base / folder}),
         }
     )

@@ -23,7 +23,7 @@ from matplotlib.figure import Figure
 from scipy.stats import chi2
 from tqdm import tqdm
 
-from ngbound.arc import Arc, Noise, Survey, read_arc, survey, vet
+from ngbound.arc import Arc, Noise, Survey, read_arc, survey, treatment_text, vet
 from ngbound.case import Case, case_for
 from ngbound.errors import CaseError, NgboundWarning
 from ngbound.fit import (
@@ -126,7 +126,9 @@ def inspect_case(path: str | Path, *, progress: bool = False, **choices: Any) ->
     """What is in an arc at a glance, before any orbit."""
     case = case_for(path, **choices)
     arc = read_the_arc(case, Steps(progress))
-    return Inspection(survey(arc), case.errors.error_model().apply(arc.used))
+    model = case.errors.error_model()
+    used = model.corrected(arc.used)
+    return Inspection(survey(arc), model.apply(used), model.catalogue_treatments(used))
 
 
 def fit_case(path: str | Path, *, progress: bool = False, **choices: Any) -> "Fits":
@@ -435,6 +437,8 @@ def compose_record(
     """Everything found and chosen, with what produced it."""
     fits, case = bounds.fits, bounds.fits.case
     inputs = {"arc": case.arc.file} | ({"case": path} if path != case.arc.file else {})
+    if case.errors.debiasing is not None:
+        inputs["debiasing"] = Path(case.errors.debiasing)
     data = {
         "object": fits.arc.name,
         "law": case.thrust.law,
@@ -516,13 +520,18 @@ class Inspection:
 
     survey: Survey
     noise: Noise
+    catalogue_treatments: dict[str, int]
 
     def __str__(self) -> str:
-        return f"{self.survey}\n{self.noise}"
+        return f"{self.survey}\n{self.noise}\n{treatment_text(self.catalogue_treatments)}"
 
     def to_dict(self) -> dict[str, Any]:
         """The survey, and the errors that the case's error model assigns."""
-        return {**self.survey.to_dict(), "assigned_errors": self.noise.to_dict()}
+        return {
+            **self.survey.to_dict(),
+            "assigned_errors": self.noise.to_dict(),
+            "catalogue_treatments": self.catalogue_treatments,
+        }
 
 
 @dataclass(frozen=True, eq=False)

@@ -203,3 +203,8 @@ def test_several_species_make_one_budget(write):
         )
     )
     assert [one.species for one in case.budget().emissions] == ["H2O", "CO"]
+
+
+def test_the_path_of_the_debiasing_table_counts_from_the_folder_of_the_case(write, tmp_path):
+    case = read_case(write('[arc]\nfile = "a.psv"\n[errors]\ndebiasing = "bias.dat"\n'))
+    assert case.errors.error_model().debiasing == str(tmp_path / "bias.dat")

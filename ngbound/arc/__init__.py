@@ -9,8 +9,15 @@ a station-night is the independent part of each observation plus a part common t
 from ngbound.arc.ades_psv import write_psv
 from ngbound.arc.ades_rules import COLUMNS as ADES_COLUMNS
 from ngbound.arc.ades_xml import write_xml
-from ngbound.arc.catalogue_offsets import CataloguePrior, catalogue_priors, prior_of, seasons
+from ngbound.arc.catalogue_offsets import (
+    CataloguePrior,
+    catalogue_priors,
+    prior_of,
+    seasons,
+    treatment_text,
+)
 from ngbound.arc.checking import offset_arcsec
+from ngbound.arc.debiasing import DebiasingTable, debiased, read_debiasing
 from ngbound.arc.errors_model import ErrorModel, Factors, Noise, station_nights, weight_table
 from ngbound.arc.observations import REASON_OFFSET, Arc
 from ngbound.arc.reading import read_arc
@@ -32,6 +39,7 @@ __all__ = [
     "Arc",
     "EARTH_EQUATORIAL_RADIUS_KM",
     "CataloguePrior",
+    "DebiasingTable",
     "ErrorModel",
     "Factors",
     "Finding",
@@ -46,14 +54,17 @@ __all__ = [
     "all_stations",
     "geodetic_to_itrf_km",
     "catalogue_priors",
+    "debiased",
     "prior_of",
     "offset_arcsec",
     "read_arc",
+    "read_debiasing",
     "record_position_km",
     "seasons",
     "station",
     "station_nights",
     "survey",
+    "treatment_text",
     "user_stations",
     "vet",
     "weight_table",

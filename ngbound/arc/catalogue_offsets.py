@@ -1,8 +1,10 @@
 """Offsets of star catalogues with priors from published sizes; imports numpy, constants and this
 room.
 
-S. Eggl et al. 2020, Icarus 339, 113596 compared 26 catalogues with Gaia DR2 on tiles of the sky:
-their table of tiles is too large to ship, so that here each catalogue has, in RA and in Dec,
+S. Eggl et al. 2020, Icarus 339, 113596 compared 26 catalogues with Gaia DR2 on tiles of the sky.
+Where the user has their table (`ngbound.arc.debiasing`), positions are corrected by it, and a
+fraction of the published size remains; it is too large to ship, so that without it the offsets
+are of the published size. Each catalogue has, in RA and in Dec,
 
 - one offset for the whole arc, its prior the published sky-averaged size, and
 - one more for each season of observation, of the same size: the offset varies over zones of the
@@ -13,6 +15,7 @@ station-night. Sizes, epochs and sources stand in data/catalogue_priors.csv.
 """
 
 import csv
+from collections.abc import Mapping
 from dataclasses import dataclass
 from functools import lru_cache
 from importlib.resources import files
@@ -20,7 +23,7 @@ from importlib.resources import files
 import numpy as np
 from numpy.typing import NDArray
 
-from ngbound.arc.observations import Arc, iso_day
+from ngbound.arc.observations import BIAS_COLUMNS, Arc, iso_day
 from ngbound.arc.shared_errors import SharedErrors
 from ngbound.constants import ARCSEC_RAD
 
@@ -34,6 +37,15 @@ SEASON_LONGEST_D = 200.0
 MJD_2000 = 51544.5
 YEAR_D = 365.25
 AXES = ("RA", "Dec")
+REMAINING = 0.2
+"""What remains of an offset that was corrected tile by tile: the scatter inside a tile, and errors
+of the corrections. No size was found published; a fifth is common practice (from memory)."""
+CORRECTED = "corrected by the debiasing table"
+AS_PUBLISHED = "not corrected, prior of the published size"
+NOT_IN_TABLE = "not in the debiasing table or not in its tile, prior of the published size"
+NO_OFFSET = "no offset: in the frame of Gaia"
+NO_PRIOR = "not corrected, no offset allowed for"
+NO_STARS = "not measured against stars"
 
 
 @dataclass(frozen=True)
@@ -105,6 +117,39 @@ def seasons(arc: Arc) -> IntArray:
     return season
 
 
+def corrected(arc: Arc) -> NDArray[np.bool_]:
+    """Observations (n,) whose positions were corrected by the debiasing table."""
+    if BIAS_COLUMNS[0] not in arc.table:
+        return np.zeros(len(arc), dtype=bool)
+    return np.isfinite(arc.table[BIAS_COLUMNS[0]].to_numpy(dtype=float))
+
+
+def catalogue_treatment(arc: Arc, with_prior: bool) -> NDArray[np.object_]:
+    """In words (n,) how the offset of the star catalogue of each observation was dealt with.
+
+    Parameters
+    ----------
+    with_prior : bool
+        Whether offsets are marginalised.
+    """
+    named = arc.table["astCat"].to_numpy(dtype=object)
+    rest = NOT_IN_TABLE if BIAS_COLUMNS[0] in arc.table else AS_PUBLISHED
+    told = np.full(len(arc), rest if with_prior else NO_PRIOR, dtype=object)
+    for name in set(named.tolist()):
+        prior = prior_of(name)
+        if max(prior.position_arcsec, prior.motion_mas_yr) <= 0.0:
+            told[named == name] = NO_OFFSET
+    told[corrected(arc)] = CORRECTED
+    told[~np.isfinite(arc.table["ra_rad"].to_numpy(dtype=float))] = NO_STARS
+    return told
+
+
+def treatment_text(counts: Mapping[str, int]) -> str:
+    """Counts of observations by treatment, a line each below a title."""
+    rows = [f"  {n:6d}  {words}" for words, n in counts.items()]
+    return "\n".join(["Offsets of star catalogues, observations:", *rows])
+
+
 def catalogue_offsets(arc: Arc, scale: float = 1.0, by_season: bool = True) -> SharedErrors:
     """The offsets of the catalogues of an arc.
 
@@ -120,7 +165,8 @@ def catalogue_offsets(arc: Arc, scale: float = 1.0, by_season: bool = True) -> S
     Returns
     -------
     SharedErrors
-        Those of catalogues without a prior (Gaia) left out.
+        Those of catalogues without a prior (Gaia) left out; corrected observations apart from the
+        others.
     """
     mjd = arc_mjd(arc)
     season = seasons(arc)
@@ -140,20 +186,24 @@ def catalogue_offsets(arc: Arc, scale: float = 1.0, by_season: bool = True) -> S
             sigma.append(float(np.median(size[rows])))
             source.append(where)
 
-    for catalogue in sorted(set(named.tolist())):
+    better = corrected(arc)
+    for catalogue, is_better in sorted(set(zip(named.tolist(), better.tolist(), strict=True))):
         prior = prior_of(catalogue)
-        mine = named == catalogue
-        size = scale * prior.sigma_arcsec(mjd)
+        mine = (named == catalogue) & (better == is_better)
+        size = scale * prior.sigma_arcsec(mjd) * (REMAINING if is_better else 1.0)
         if size[mine].max() <= 0.0:
             continue
-        add(f"catalogue {catalogue}", size, mine, prior.expectation)
+        name, where = f"catalogue {catalogue}", prior.expectation
+        if is_better:
+            name, where = f"{name} corrected", f"{REMAINING:g} of: {where}"
+        add(name, size, mine, where)
         present = np.unique(season[mine])
         if not by_season or len(present) < 2:
             continue
         for number in present.tolist():
             rows = mine & (season == number)
             begin = iso_day(int(mjd[rows].min()))[:7]
-            add(f"catalogue {catalogue} season {begin}", size, rows, prior.expectation)
+            add(f"{name} season {begin}", size, rows, where)
     matrix = np.stack(columns, axis=1) if columns else np.zeros((2 * len(mjd), 0))
     return SharedErrors(
         tuple(names), matrix, np.array(sigma), ("arcsec",) * len(names), tuple(source)

@@ -27,7 +27,8 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from ngbound.arc.catalogue_offsets import catalogue_offsets
+from ngbound.arc.catalogue_offsets import catalogue_offsets, catalogue_treatment
+from ngbound.arc.debiasing import debiased
 from ngbound.arc.fields import civil_day
 from ngbound.arc.instrument_offsets import photocentre_offset, station_clocks, station_offsets
 from ngbound.arc.observations import Arc
@@ -379,6 +380,10 @@ class ErrorModel:
         Whether each catalogue has an offset for each season besides that of the whole arc.
     catalogue_scale : float
         Factor on the priors of the catalogues.
+    debiasing : str, optional
+        Path of the user's copy of the published table of catalogue offsets
+        (`ngbound.arc.debiasing`); positions are corrected by it, and the priors of the corrected
+        ones shrink to what remains.
     station_offset_arcsec : float, optional
         Prior standard deviation of an offset of each station in RA and Dec; 0 for none. None: a
         fifth of sigma where it is implied by the table, nothing where it is stated or uniform.
@@ -405,6 +410,7 @@ class ErrorModel:
     catalogue_offsets: bool | None = None
     catalogue_seasons: bool = True
     catalogue_scale: float = 1.0
+    debiasing: str | None = None
     station_offset_arcsec: float | None = None
     clock_s: float = 0.0
     photocentre_arcsec_au: float = 0.0
@@ -460,6 +466,28 @@ class ErrorModel:
             return np.full(len(noise), self.rescale_stations)
         return np.array([str(label).startswith("table") for label in noise.source], dtype=bool)
 
+    @property
+    def _offsets_wanted(self) -> bool:
+        return (
+            self.scheme != "uniform" if self.catalogue_offsets is None else self.catalogue_offsets
+        )
+
+    def corrected(self, arc: Arc) -> Arc:
+        """The arc with the offsets of its catalogues taken out, where ``debiasing`` names a table.
+
+        Raises
+        ------
+        CaseError
+            The table cannot be read.
+        """
+        return arc if self.debiasing is None else debiased(arc, self.debiasing)
+
+    def catalogue_treatments(self, arc: Arc) -> dict[str, int]:
+        """How many observations of an arc (as `corrected` gave it) got which treatment of their
+        catalogue's offset."""
+        told = catalogue_treatment(arc, self._offsets_wanted).tolist()
+        return {words: told.count(words) for words in sorted(set(told))}
+
     def _shared(
         self,
         arc: Arc,
@@ -468,8 +496,7 @@ class ErrorModel:
         sunward_per_au: FloatArray | None,
     ) -> SharedErrors | None:
         parts = []
-        wanted = self.catalogue_offsets
-        if wanted or (wanted is None and self.scheme != "uniform"):
+        if self._offsets_wanted:
             parts.append(catalogue_offsets(arc, self.catalogue_scale, self.catalogue_seasons))
         if self.station_offset_arcsec is None:
             where = "a fifth of the sigma of the table (from memory)"

@@ -88,6 +88,9 @@ DERIVED = (
     "corrReported",
 )
 """Columns that ngbound adds to those of ADES."""
+BIAS_COLUMNS = ("bias_ra_arcsec", "bias_dec_arcsec")
+"""Columns of an arc corrected for the offsets of its star catalogues: what was subtracted (RA times
+cos dec); nan where nothing was."""
 
 REASON_RADAR = "radar is not used in fits yet"
 REASON_OFFSET = "an offset from another body, not reduced to a position"
@@ -216,7 +219,7 @@ class Arc:
         """An arc that `to_parquet` wrote; ArcError when the file holds none, or without
         pyarrow."""
         needed = [*ALWAYS_TEXT, *ALWAYS_NUMBER, *(c for c in DERIVED if c != "corrReported")]
-        table, notes, source = read_table(path, needed, [*COLUMNS, *DERIVED])
+        table, notes, source = read_table(path, needed, [*COLUMNS, *DERIVED, *BIAS_COLUMNS])
         try:
             contexts = tuple(_context_of(c) for c in notes["contexts"])
             places = {code: Station(**place) for code, place in notes["stations"].items()}

@@ -59,6 +59,11 @@ def error_variants(base: ErrorModel | None = None) -> tuple[ErrorVariant, ...]:
     """
     base = base or ErrorModel()
     station = base.station_offset_arcsec
+    raw = ErrorVariant(
+        "not debiased",
+        "positions left as observed, offsets of the catalogues of the published size",
+        replace(base, debiasing=None),
+    )
     return (
         ErrorVariant("base", "the error model of the analysis", base),
         ErrorVariant(
@@ -86,6 +91,7 @@ def error_variants(base: ErrorModel | None = None) -> tuple[ErrorVariant, ...]:
             "priors of the catalogue offsets doubled",
             replace(base, catalogue_scale=LARGE * base.catalogue_scale),
         ),
+        *([] if base.debiasing is None else [raw]),
         ErrorVariant(
             "no station offsets",
             "stations have no offsets of their own",

@@ -15,7 +15,7 @@ import pandas as pd
 from numpy.typing import ArrayLike, NDArray
 from scipy import stats
 
-from ngbound.arc import Arc, ErrorModel, Noise
+from ngbound.arc import Arc, ErrorModel, Noise, treatment_text
 from ngbound.constants import ARCSEC_RAD
 from ngbound.errors import FitError
 from ngbound.fit.least_squares import Correction, parameter_names, thrust_of
@@ -194,11 +194,16 @@ class Fit:
         `ngbound.fit.shared_estimates.shared_table`."""
         return shared_table(self.noise, self.joint, self.theta.size)
 
+    @cached_property
+    def catalogue_treatments(self) -> dict[str, int]:
+        """How many of the used observations got which treatment of their catalogue's offset."""
+        return self.error_model.catalogue_treatments(self.used)
+
     @property
     def error_report(self) -> str:
         """In words: the sources of the errors, the scales of the stations before and after, and the
         shared errors beside what is published."""
-        lines = [str(self.noise)]
+        lines = [str(self.noise), treatment_text(self.catalogue_treatments)]
         if self.scales:
             lines.append("Rescaled by their own scatter:")
             lines += [f"  {scale}" for scale in self.scales]
@@ -269,6 +274,7 @@ class Fit:
             "condition": self.correction.condition,
             "distance_error": self.distance_error,
             "weakness": self.weakness,
+            "catalogue_treatments": self.catalogue_treatments,
             "station_scales": [scale.to_dict() for scale in self.scales],
             "shared_errors": self.offsets.to_dict("records"),
         }
@@ -337,7 +343,7 @@ def fit_orbit(
         initial = initial.orbit
     forces = forces or (initial.forces if initial is not None else ForceModel())
     ephemeris = load_ephemeris()
-    used = reduce_offsets(arc, ephemeris).used
+    used = error_model.corrected(reduce_offsets(arc, ephemeris).used)
     if len(used) < MIN_OBSERVATIONS:
         raise FitError(
             f"The arc of {arc.name} has {len(used)} usable observations; an orbit needs at least "
