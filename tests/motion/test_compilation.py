@@ -16,7 +16,7 @@ from ngbound.motion.compilation import compile_notice, compiled_code_folder
 print(compile_notice())
 print(compiled_code_folder())
 import numpy as np
-from ngbound.motion._kernels.bodies import inside_table, series
+from ngbound.motion._kernels.bodies import inside_table
 from ngbound.motion.gravity import ForceModel
 tab, _ = ForceModel(asteroids=False).perturbers(0.0, 10.0)
 print(inside_table(tab, 5.0))

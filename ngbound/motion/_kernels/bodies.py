@@ -1,61 +1,118 @@
-"""Where the perturbers are: Chebyshev series evaluated for all bodies at one time.
+"""Where the perturbers are: Chebyshev series evaluated for all bodies at the eight times of a step.
 
-Clenshaw's recurrence (C. W. Clenshaw 1955, Math. Comp. 9, 118) for position, and its derivative for
-velocity.
+The polynomials T_k and their slopes come from the three-term recurrence and serve all bodies that
+share an interval (L. Fox & I. B. Parker 1968, Chebyshev Polynomials in Numerical Analysis). Results
+lie with the times innermost, ``LANES`` a body, so that a whole step's forces are vector code.
 """
 
+import numpy as np
 from numba import njit
 
-
-@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
-def series(tab, body, t, pos, vel, with_velocity):
-    """Position (au) and, when asked for, velocity (au/d) of one body into rows of ``pos`` and
-    ``vel``.
-    """
-    width = tab.width_d[body]
-    u = (t - tab.first_d[body]) / width
-    i = int(u)
-    if u < 0.0:
-        i = 0
-    last = tab.n_interval[body] - 1
-    if i > last:
-        i = last
-    s = 2.0 * (u - i) - 1.0
-    n = tab.n_coef[body]
-    at = tab.offset[body] + i * 3 * n
-    two_s = 2.0 * s
-    for axis in range(3):
-        b1 = 0.0
-        b2 = 0.0
-        d1 = 0.0
-        d2 = 0.0
-        for k in range(n - 1, 0, -1):
-            if with_velocity:
-                d0 = two_s * d1 - d2 + 2.0 * b1
-                d2 = d1
-                d1 = d0
-            b0 = two_s * b1 - b2 + tab.coef[at + k]
-            b2 = b1
-            b1 = b0
-        pos[body, axis] = s * b1 - b2 + tab.coef[at]
-        if with_velocity:
-            vel[body, axis] = (s * d1 - d2 + b1) * 2.0 / width
-        at += n
+LANES = 8
+FAR_AU = 1e6
 
 
 @njit(cache=True, error_model="numpy")
-def all_positions(tab, t, pos, vel, all_velocities):
-    """Barycentric positions of all bodies into ``pos`` (nb, 3); velocity of the Sun, or of all,
-    into ``vel``.
+def room_for_bodies(tab):
+    """Arrays for ``bodies_at``: position and velocity (3, lanes) and three scraps.
+
+    The Sun's eight lanes come first, then those of the others, two bodies to a vector; a missing
+    last one stays far away. Also the GM of every lane.
     """
+    n = tab.gm.size
+    lanes = LANES * (1 + 2 * (n // 2))
+    gm = np.zeros(lanes)
+    for body in range(n):
+        gm[LANES * body : LANES * (body + 1)] = tab.gm[body]
+    most = max(2, tab.n_coef.max())
+    return (
+        np.full((3, lanes), FAR_AU),
+        np.zeros((3, lanes)),
+        np.empty((most, LANES)),
+        np.empty((most, LANES)),
+        np.empty(LANES, dtype=np.int64),
+        gm,
+    )
+
+
+@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
+def _sums(tab, body, interval, polynomial, factor, out):
+    """Sum of a body's series at the eight times, times ``factor``."""
+    n = tab.n_coef[body]
+    coef = tab.coef
+    first = tab.offset[body]
+    for j in range(LANES):
+        at = first + interval[j] * 3 * n
+        cx = coef[at : at + n]
+        cy = coef[at + n : at + 2 * n]
+        cz = coef[at + 2 * n : at + 3 * n]
+        x = 0.0
+        y = 0.0
+        z = 0.0
+        for k in range(n):
+            t = polynomial[k, j]
+            x += cx[k] * t
+            y += cy[k] * t
+            z += cz[k] * t
+        out[0, LANES * body + j] = x * factor
+        out[1, LANES * body + j] = y * factor
+        out[2, LANES * body + j] = z * factor
+
+
+@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
+def bodies_at(tab, times, all_velocities, polynomial, slope, interval, pos, vel):
+    """Barycentric positions (au) of all bodies at eight ``times`` into ``pos``; velocity (au/d) of
+    the Sun, or of all that do not move around it, into ``vel``.
+
+    ``polynomial``, ``slope`` and ``interval`` are scrap of ``room_for_bodies``.
+    """
+    ready = 0
     for body in range(tab.gm.size):
+        n = tab.n_coef[body]
+        width = tab.width_d[body]
         parent = tab.parent[body]
-        fast = body == 0 or (all_velocities and parent < 0)
-        series(tab, body, t, pos, vel, fast)
+        if (
+            body == 0
+            or tab.first_d[body] != tab.first_d[body - 1]
+            or width != tab.width_d[body - 1]
+        ):
+            ready = 2
+            last = tab.n_interval[body] - 1
+            for j in range(LANES):
+                u = (times[j] - tab.first_d[body]) / width
+                i = min(max(int(u), 0), last)
+                interval[j] = i
+                polynomial[1, j] = 2.0 * (u - i) - 1.0
+                polynomial[0, j] = 1.0
+        for k in range(ready, n):
+            for j in range(LANES):
+                two_s = 2.0 * polynomial[1, j]
+                polynomial[k, j] = two_s * polynomial[k - 1, j] - polynomial[k - 2, j]
+        ready = max(ready, n)
+        _sums(tab, body, interval, polynomial, 1.0, pos)
         if parent >= 0:
-            pos[body, 0] += pos[parent, 0]
-            pos[body, 1] += pos[parent, 1]
-            pos[body, 2] += pos[parent, 2]
+            for i in range(3):
+                for j in range(LANES):
+                    pos[i, LANES * body + j] += pos[i, LANES * parent + j]
+        if body == 0 or (all_velocities and parent < 0):
+            for j in range(LANES):
+                slope[1, j] = 1.0
+                slope[0, j] = 0.0
+            for k in range(2, n):
+                for j in range(LANES):
+                    two_s = 2.0 * polynomial[1, j]
+                    slope[k, j] = (
+                        two_s * slope[k - 1, j] - slope[k - 2, j] + 2.0 * polynomial[k - 1, j]
+                    )
+            _sums(tab, body, interval, slope, 2.0 / width, vel)
+
+
+@njit(cache=True, error_model="numpy")
+def bodies_of_lane(lanes, j, out):
+    """Positions or velocities of all bodies at the time ``j`` into ``out`` (bodies, 3)."""
+    for body in range(out.shape[0]):
+        for i in range(3):
+            out[body, i] = lanes[i, LANES * body + j]
 
 
 @njit(cache=True, error_model="numpy")

@@ -12,41 +12,75 @@ import math
 import numpy as np
 from numba import njit
 
-from .laws import add_thrust, thrust_partials
+from .bodies import LANES, bodies_of_lane
+from .laws import PAIR, add_thrust, thrust_partials
 from .layout import RELATIVITY_ALL, RELATIVITY_SUN
 
+EARTH_ZONE_AU = 0.02
+EARTH_POLE = np.array([0.0, 0.0, 1.0])
+_FAST = {"contract", "nsz"}
 
-@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
-def point_masses(gm, pos, x, acc):
-    """Newtonian acceleration (au/d2) of all bodies at barycentric ``x``, written to ``acc``."""
-    ax = 0.0
-    ay = 0.0
-    az = 0.0
-    for b in range(gm.size):
-        dx = x[0] - pos[b, 0]
-        dy = x[1] - pos[b, 1]
-        dz = x[2] - pos[b, 2]
+
+@njit(cache=True, error_model="numpy", fastmath=_FAST)
+def sun_at_nodes(gm_sun, pos, path, acc):
+    """The Sun's Newtonian acceleration (au/d2) at the eight nodes of ``path``, written to ``acc``
+    (3, 8).
+    """
+    for j in range(LANES):
+        dx = path[0, j] - pos[0, j]
+        dy = path[1, j] - pos[1, j]
+        dz = path[2, j] - pos[2, j]
         d2 = dx * dx + dy * dy + dz * dz
-        f = gm[b] / (d2 * math.sqrt(d2))
-        ax -= f * dx
-        ay -= f * dy
-        az -= f * dz
-    acc[0] = ax
-    acc[1] = ay
-    acc[2] = az
+        f = -gm_sun / (d2 * math.sqrt(d2))
+        acc[0, j] = f * dx
+        acc[1, j] = f * dy
+        acc[2, j] = f * dz
 
 
-@njit(cache=True, error_model="numpy")
-def add_sun_relativity(gm, c, x, v, acc):
-    """The Sun's first post-Newtonian acceleration at heliocentric ``x``, ``v``."""
-    r2 = x[0] * x[0] + x[1] * x[1] + x[2] * x[2]
-    r = math.sqrt(r2)
-    rv = x[0] * v[0] + x[1] * v[1] + x[2] * v[2]
-    v2 = v[0] * v[0] + v[1] * v[1] + v[2] * v[2]
-    k = gm / (c * c * r2 * r)
-    s = 4.0 * gm / r - v2
+@njit(cache=True, error_model="numpy", fastmath=_FAST)
+def planets_at_nodes(gm, pos, path, pair, acc):
+    """Newtonian acceleration of all bodies but the Sun at the eight nodes, written to ``acc``
+    (3, 8).
+
+    ``gm``, ``pos`` as of ``room_for_bodies``; ``path`` holds the nodes twice, as two bodies are
+    taken at once; ``pair`` (3, 16) is scrap.
+    """
     for i in range(3):
-        acc[i] += k * (s * x[i] + 4.0 * rv * v[i])
+        for lane in range(PAIR):
+            pair[i, lane] = 0.0
+    for at in range(LANES, gm.size, PAIR):
+        for lane in range(PAIR):
+            dx = path[0, lane] - pos[0, at + lane]
+            dy = path[1, lane] - pos[1, at + lane]
+            dz = path[2, lane] - pos[2, at + lane]
+            d2 = dx * dx + dy * dy + dz * dz
+            f = gm[at + lane] / (d2 * math.sqrt(d2))
+            pair[0, lane] -= f * dx
+            pair[1, lane] -= f * dy
+            pair[2, lane] -= f * dz
+    for i in range(3):
+        for j in range(LANES):
+            acc[i, j] = pair[i, j] + pair[i, LANES + j]
+
+
+@njit(cache=True, error_model="numpy", fastmath=_FAST)
+def add_sun_relativity(gm, c, pos, vel, path, acc):
+    """The Sun's first post-Newtonian acceleration at the eight nodes."""
+    for j in range(LANES):
+        x = path[0, j] - pos[0, j]
+        y = path[1, j] - pos[1, j]
+        z = path[2, j] - pos[2, j]
+        vx = path[0, PAIR + j] - vel[0, j]
+        vy = path[1, PAIR + j] - vel[1, j]
+        vz = path[2, PAIR + j] - vel[2, j]
+        r2 = x * x + y * y + z * z
+        r = math.sqrt(r2)
+        k = gm / (c * c * r2 * r)
+        s = k * (4.0 * gm / r - (vx * vx + vy * vy + vz * vz))
+        q = k * 4.0 * (x * vx + y * vy + z * vz)
+        acc[0, j] += s * x + q * vx
+        acc[1, j] += s * y + q * vy
+        acc[2, j] += s * z + q * vz
 
 
 @njit(cache=True, error_model="numpy")
@@ -236,45 +270,80 @@ def add_frame_dragging(gm, c, spin, pole, x, v, acc, gx, gv, with_partials):
             gv[i, p] += k * (pole[q] - f * x[q])
 
 
-EARTH_ZONE_AU = 0.02
+@njit(cache=True, error_model="numpy")
+def add_rare_terms(tab, phys, pos, vel, path, acc):
+    """Full relativity, quadrupoles and frame dragging, as chosen, at the eight nodes."""
+    nb = tab.gm.size
+    all_pos = np.empty((nb, 3))
+    all_vel = np.empty((nb, 3))
+    x = np.empty(3)
+    v = np.empty(3)
+    h = np.empty(3)
+    w = np.empty(3)
+    d = np.empty(3)
+    extra = np.empty(3)
+    none = np.empty((3, 3))
+    for j in range(LANES):
+        bodies_of_lane(pos, j, all_pos)
+        bodies_of_lane(vel, j, all_vel)
+        for i in range(3):
+            x[i] = path[i, j]
+            v[i] = path[i, PAIR + j]
+            h[i] = x[i] - all_pos[0, i]
+            w[i] = v[i] - all_vel[0, i]
+            extra[i] = 0.0
+        if phys.relativity == RELATIVITY_ALL:
+            full_relativity(
+                tab.gm, tab.parent, phys.c_au_d, all_pos, all_vel, x, v, extra, none, none, False
+            )
+        if phys.sun_j2 != 0.0:
+            add_quadrupole(tab.gm[0], phys.sun_j2, phys.sun_pole, h, extra)
+        if phys.sun_spin != 0.0:
+            add_frame_dragging(
+                tab.gm[0], phys.c_au_d, phys.sun_spin, phys.sun_pole, h, w, extra, none, none, False
+            )
+        if phys.earth_row >= 0 and phys.earth_j2 != 0.0:
+            for i in range(3):
+                d[i] = x[i] - all_pos[phys.earth_row, i]
+            if d[0] * d[0] + d[1] * d[1] + d[2] * d[2] < EARTH_ZONE_AU * EARTH_ZONE_AU:
+                add_quadrupole(tab.gm[phys.earth_row], phys.earth_j2, EARTH_POLE, d, extra)
+        for i in range(3):
+            acc[i, j] += extra[i]
+
+
+@njit(cache=True, error_model="numpy", fastmath=_FAST)
+def near_earth(phys, pos, path):
+    """Whether a node lies where the Earth's flattening counts."""
+    if phys.earth_row < 0 or phys.earth_j2 == 0.0:
+        return False
+    at = LANES * phys.earth_row
+    for j in range(LANES):
+        dx = path[0, j] - pos[0, at + j]
+        dy = path[1, j] - pos[1, at + j]
+        dz = path[2, j] - pos[2, at + j]
+        if dx * dx + dy * dy + dz * dz < EARTH_ZONE_AU * EARTH_ZONE_AU:
+            return True
+    return False
 
 
 @njit(cache=True, error_model="numpy")
-def acceleration(tab, push, phys, active, pos, vel, x, v, acc):
-    """Total acceleration (au/d2) at barycentric ``x``, ``v`` with the bodies at ``pos``, ``vel``.
+def others_at_nodes(tab, gm, push, phys, active, pos, vel, path, pair, acc):
+    """Acceleration (au/d2) beyond the Sun's Newtonian one at the eight nodes, written to ``acc``.
 
-    ``active``: whether the activity window is open over this step.
+    ``path`` (3, 24): barycentric positions, the same again, velocities. ``active``: whether the
+    activity window is open over this step.
     """
-    point_masses(tab.gm, pos, x, acc)
-    h = np.empty(3)
-    w = np.empty(3)
-    for i in range(3):
-        h[i] = x[i] - pos[0, i]
-        w[i] = v[i] - vel[0, i]
-    gm_sun = tab.gm[0]
+    planets_at_nodes(gm, pos, path, pair, acc)
     if phys.relativity == RELATIVITY_SUN:
-        add_sun_relativity(gm_sun, phys.c_au_d, h, w, acc)
-    elif phys.relativity == RELATIVITY_ALL:
-        extra = np.empty(3)
-        none = np.empty((3, 3))
-        full_relativity(tab.gm, tab.parent, phys.c_au_d, pos, vel, x, v, extra, none, none, False)
-        for i in range(3):
-            acc[i] += extra[i]
-    if phys.sun_j2 != 0.0:
-        add_quadrupole(gm_sun, phys.sun_j2, phys.sun_pole, h, acc)
-    if phys.sun_spin != 0.0:
-        none = np.empty((3, 3))
-        add_frame_dragging(
-            gm_sun, phys.c_au_d, phys.sun_spin, phys.sun_pole, h, w, acc, none, none, False
-        )
-    if phys.earth_row >= 0 and phys.earth_j2 != 0.0:
-        d = np.empty(3)
-        for i in range(3):
-            d[i] = x[i] - pos[phys.earth_row, i]
-        if d[0] * d[0] + d[1] * d[1] + d[2] * d[2] < EARTH_ZONE_AU * EARTH_ZONE_AU:
-            pole = np.array([0.0, 0.0, 1.0])
-            add_quadrupole(tab.gm[phys.earth_row], phys.earth_j2, pole, d, acc)
-    add_thrust(push, gm_sun, active, h, w, acc)
+        add_sun_relativity(tab.gm[0], phys.c_au_d, pos, vel, path, acc)
+    if (
+        phys.relativity == RELATIVITY_ALL
+        or phys.sun_j2 != 0.0
+        or phys.sun_spin != 0.0
+        or near_earth(phys, pos, path)
+    ):
+        add_rare_terms(tab, phys, pos, vel, path, acc)
+    add_thrust(push, tab.gm[0], active, pos, vel, path, acc)
 
 
 @njit(cache=True, error_model="numpy")
@@ -348,8 +417,7 @@ def other_partials(tab, push, phys, active, pos, vel, x, v, gx, gv, unit, unit_x
         for i in range(3):
             d[i] = x[i] - pos[phys.earth_row, i]
         if d[0] * d[0] + d[1] * d[1] + d[2] * d[2] < EARTH_ZONE_AU * EARTH_ZONE_AU:
-            pole = np.array([0.0, 0.0, 1.0])
-            add_quadrupole_partials(tab.gm[phys.earth_row], phys.earth_j2, pole, d, gx)
+            add_quadrupole_partials(tab.gm[phys.earth_row], phys.earth_j2, EARTH_POLE, d, gx)
     r2 = h[0] * h[0] + h[1] * h[1] + h[2] * h[2]
     r = math.sqrt(r2)
     thrust_partials(push, gm_sun, active, h, w, unit, unit_x, unit_v, extra)

@@ -11,11 +11,11 @@ import math
 import numpy as np
 from numba import njit
 
-from .bodies import all_positions
+from .bodies import bodies_at, bodies_of_lane, room_for_bodies
 from .forces import other_partials, tides
 from .laws import thrust_partials
 from .layout import RELATIVITY_ALL, WINDOW_DISTANCE
-from .radau import N_NODES, NODES, TO_POWERS, V_WEIGHTS, X_WEIGHTS, dense, find_step
+from .radau import N_NODES, NODES, TO_POWERS, V_WEIGHTS, X_WEIGHTS, dense_many, find_step
 
 # columns of a node's row
 SUN = 0
@@ -57,8 +57,11 @@ def tabulate(
     every = phys.relativity == RELATIVITY_ALL
     nb = tab.gm.size
     pos = np.empty((nb, 3))
-    vel = np.zeros((nb, 3))
-    state = np.empty(6)
+    vel = np.empty((nb, 3))
+    lane_pos, lane_vel, polynomial, rates, interval, _ = room_for_bodies(tab)
+    taus = np.empty(N_NODES)
+    times = np.empty(N_NODES)
+    states = np.empty((N_NODES, 6))
     gx = np.empty((3, 3))
     gv = np.empty((3, 3))
     third = np.empty(10)
@@ -72,10 +75,14 @@ def tabulate(
     for k in range(grid_tau.size):
         active = grid_on[k]
         for j in range(N_NODES):
-            tau = grid_tau[k] + grid_h[k] * NODES[j]
-            t = epoch_d + tau
-            all_positions(tab, t, pos, vel, every)
-            dense(start, length, begin, power, find_step(start, n, forward, tau), tau, state)
+            taus[j] = grid_tau[k] + grid_h[k] * NODES[j]
+            times[j] = epoch_d + taus[j]
+        dense_many(start, length, begin, power, n, forward, taus, states)
+        bodies_at(tab, times, every, polynomial, rates, interval, lane_pos, lane_vel)
+        for j in range(N_NODES):
+            state = states[j]
+            bodies_of_lane(lane_pos, j, pos)
+            bodies_of_lane(lane_vel, j, vel)
             for i in range(3):
                 for m in range(3):
                     gx[i, m] = 0.0

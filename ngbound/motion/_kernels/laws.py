@@ -12,7 +12,10 @@ import math
 import numpy as np
 from numba import njit
 
+from .bodies import LANES
 from .layout import LAW_FORM
+
+PAIR = 2 * LANES
 
 
 @njit(cache=True, error_model="numpy")
@@ -175,30 +178,60 @@ def axes(x, v, e):
 
 
 @njit(cache=True, error_model="numpy")
-def add_thrust(push, gm_sun, active, x, v, acc):
-    """Add thrust (while ``active``) and radiation pressure at heliocentric x, v to ``acc``."""
+def strength_at_nodes(push, gm_sun, pos, vel, path, strength):
+    """g of the law at the eight nodes, at the distance of a lag ago where there is one."""
+    x = np.empty(3)
+    v = np.empty(3)
+    back = np.empty(8)
+    g = np.empty(3)
+    for j in range(LANES):
+        for i in range(3):
+            x[i] = path[i, j] - pos[i, j]
+            v[i] = path[i, PAIR + j] - vel[i, j]
+        if push.lag_d != 0.0:
+            distance_at_lag(gm_sun, x, v, -push.lag_d, back)
+        else:
+            back[0] = math.sqrt(x[0] * x[0] + x[1] * x[1] + x[2] * x[2])
+        law_of_distance(push, back[0], g)
+        strength[j] = g[0]
+
+
+@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
+def add_thrust(push, gm_sun, active, pos, vel, path, acc):
+    """Add thrust (while ``active``) and radiation pressure at the eight nodes to ``acc`` (3, 8)."""
     a1 = push.a[0]
     a2 = push.a[1]
     a3 = push.a[2]
-    if a1 == 0.0 and a2 == 0.0 and a3 == 0.0 and push.srp == 0.0:
+    pushed = active and (a1 != 0.0 or a2 != 0.0 or a3 != 0.0)
+    if not pushed and push.srp == 0.0:
         return
-    e = np.empty((3, 3))
-    r, _ = axes(x, v, e)
-    if push.srp != 0.0:
-        f = push.srp / (r * r)
-        for i in range(3):
-            acc[i] += f * e[0, i]
-    if (a1 == 0.0 and a2 == 0.0 and a3 == 0.0) or not active:
-        return
-    at = r
-    if push.lag_d != 0.0:
-        back = np.empty(8)
-        distance_at_lag(gm_sun, x, v, -push.lag_d, back)
-        at = back[0]
-    g = np.empty(3)
-    law_of_distance(push, at, g)
-    for i in range(3):
-        acc[i] += g[0] * (a1 * e[0, i] + a2 * e[1, i] + a3 * e[2, i])
+    strength = np.zeros(LANES)
+    square = 0.0
+    if pushed:
+        if push.law == LAW_FORM and push.par[2] == 2.0 and push.par[4] == 0.0 and push.lag_d == 0.0:
+            square = push.par[0] * push.par[1] * push.par[1]
+        else:
+            strength_at_nodes(push, gm_sun, pos, vel, path, strength)
+    for j in range(LANES):
+        x = path[0, j] - pos[0, j]
+        y = path[1, j] - pos[1, j]
+        z = path[2, j] - pos[2, j]
+        vx = path[0, PAIR + j] - vel[0, j]
+        vy = path[1, PAIR + j] - vel[1, j]
+        vz = path[2, PAIR + j] - vel[2, j]
+        r2 = x * x + y * y + z * z
+        hx = y * vz - z * vy
+        hy = z * vx - x * vz
+        hz = x * vy - y * vx
+        per_r = 1.0 / math.sqrt(r2)
+        per_h = 1.0 / math.sqrt(hx * hx + hy * hy + hz * hz + 1e-300)
+        g = strength[j] + square / r2
+        along = (g * a1 + push.srp / r2) * per_r
+        across = g * a2 * per_h * per_r
+        normal = g * a3 * per_h
+        acc[0, j] += along * x + across * (hy * z - hz * y) + normal * hx
+        acc[1, j] += along * y + across * (hz * x - hx * z) + normal * hy
+        acc[2, j] += along * z + across * (hx * y - hy * x) + normal * hz
 
 
 @njit(cache=True, error_model="numpy")

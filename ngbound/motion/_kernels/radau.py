@@ -15,11 +15,16 @@ from numba import njit
 from numpy.polynomial import polynomial
 from scipy.special import roots_jacobi
 
-from .bodies import all_positions
-from .forces import acceleration
+from .bodies import bodies_at, bodies_of_lane, room_for_bodies
+from .forces import others_at_nodes, sun_at_nodes
+from .laws import PAIR
 from .layout import INSIDE_BODY, NOT_CONVERGED, OK, RELATIVITY_ALL, STEP_UNDERFLOW, TOO_MANY_STEPS
 
 N_NODES = 8
+PATH = PAIR + N_NODES
+MOST_SWEEPS = 30
+SETTLED = 1e-10
+"""The sweeps over a step end when the acceleration rests within this part of eps."""
 STEP_CAP_D = 40.0
 EPS_FLOOR = 1e-11
 SAFETY = 0.9
@@ -61,34 +66,63 @@ _POWERS = lagrange_powers(NODES)
 _POINTS = np.concatenate([NODES, [1.0]])
 V_WEIGHTS = np.ascontiguousarray(integrated(_POWERS, _POINTS, 1).astype(np.float64))
 X_WEIGHTS = np.ascontiguousarray(integrated(_POWERS, _POINTS, 2).astype(np.float64))
+ONCE = 1.0 / np.arange(1.0, N_NODES + 1.0)
+TWICE = ONCE / np.arange(2.0, N_NODES + 2.0)
+"""Factors of the powers of the acceleration in those of the velocity and of the position."""
 TO_POWERS = np.ascontiguousarray(_POWERS.T.astype(np.float64))
-BINOMIAL = np.array(
-    [[math.comb(j, k) for j in range(N_NODES)] for k in range(N_NODES)], dtype=np.float64
-)
 
 
 @njit(cache=True, error_model="numpy")
-def local_time(gm, pos, x):
-    """The shortest dynamical time sqrt(d^3 / GM) of the bodies around ``x``, days."""
+def surroundings(tab, pos, x):
+    """The shortest dynamical time sqrt(d^3 / GM) of the bodies around ``x``, days, and the row of a
+    body whose surface encloses ``x``, or -1.
+    """
     largest = 0.0
-    for b in range(gm.size):
-        d2 = 0.0
-        for i in range(3):
-            d2 += (x[i] - pos[b, i]) ** 2
-        largest = max(largest, gm[b] / (d2 * math.sqrt(d2)))
-    return 1.0 / math.sqrt(largest)
-
-
-@njit(cache=True, error_model="numpy")
-def inside_body(tab, pos, x):
-    """Row of a body whose surface encloses ``x``, or -1."""
+    inside = -1
     for b in range(tab.gm.size):
-        d2 = 0.0
-        for i in range(3):
-            d2 += (x[i] - pos[b, i]) ** 2
+        dx = x[0] - pos[b, 0]
+        dy = x[1] - pos[b, 1]
+        dz = x[2] - pos[b, 2]
+        d2 = dx * dx + dy * dy + dz * dz
+        largest = max(largest, tab.gm[b] / (d2 * math.sqrt(d2)))
         if d2 < tab.radius[b] * tab.radius[b]:
-            return b
-    return -1
+            inside = b
+    return 1.0 / math.sqrt(largest), inside
+
+
+@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
+def follow(weight, base, acc, path):
+    """Positions, twice, and velocities at the nodes (3, 24) from accelerations (3, 8)."""
+    for i in range(3):
+        for lane in range(PATH):
+            total = base[i, lane]
+            for m in range(N_NODES):
+                total += weight[m, lane] * acc[i, m]
+            path[i, lane] = total
+
+
+@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz", "reassoc"})
+def gap(a, b):
+    """Sum of the absolute differences of two (3, 8) arrays."""
+    total = 0.0
+    for i in range(3):
+        for j in range(N_NODES):
+            total += abs(a[i, j] - b[i, j])
+    return total
+
+
+@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
+def continued(power, q, out):
+    """A step's acceleration polynomial (8, 3) at the nodes of the next step, ``q`` times as long,
+    into ``out`` (3, 8).
+    """
+    for i in range(3):
+        for j in range(N_NODES):
+            s = 1.0 + q * NODES[j]
+            total = power[N_NODES - 1, i]
+            for k in range(N_NODES - 2, -1, -1):
+                total = total * s + power[k, i]
+            out[i, j] = total
 
 
 @njit(cache=True, error_model="numpy")
@@ -108,21 +142,29 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, firs
     power = np.empty((n_max, N_NODES, 3))
     met = np.zeros(2)
     nb = tab.gm.size
-    pos = np.empty((N_NODES, nb, 3))
-    vel = np.zeros((N_NODES, nb, 3))
-    node = np.empty((N_NODES, 3))
-    guess = np.zeros((N_NODES, 3))
-    learnt = np.zeros((N_NODES, 3))
-    coef = np.zeros((N_NODES, 3))
-    x = np.empty(3)
-    v = np.empty(3)
-    acc = np.empty(3)
+    pos, vel, polynomial, slope, interval, gm = room_for_bodies(tab)
+    here = np.empty((2, nb, 3))
+    there = np.empty((2, nb, 3))
+    times = np.full(N_NODES, epoch_d)
+    weight = np.empty((N_NODES, PATH))
+    base = np.empty((3, PATH))
+    path = np.empty((3, PATH))
+    pair = np.empty((3, PAIR))
+    node = np.zeros((3, N_NODES))
+    guess = np.zeros((3, N_NODES))
+    learnt = np.zeros((3, N_NODES))
+    new = np.empty((3, N_NODES))
+    others = np.empty((3, N_NODES))
+    fresh_others = np.empty((3, N_NODES))
+    nothing = np.zeros((3, N_NODES))
+    coef = np.empty((N_NODES, 3))
     x0 = state[:3].copy()
     v0 = state[3:].copy()
     lost = np.zeros(6)
     direction = 1.0 if tau_end >= 0.0 else -1.0
     every = phys.relativity == RELATIVITY_ALL
     eps = max(eps, EPS_FLOOR)
+    settled = min(max(SETTLED * eps, 1e-16), 1e-13)
     tau = 0.0
     tau_lost = 0.0
     n = 0
@@ -134,12 +176,13 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, firs
         return OK, 0, start, length, begin, power, on, met
     last_h = 0.0
     fresh = True
-    all_positions(tab, epoch_d, pos[0], vel[0], every)
-    inside = inside_body(tab, pos[0], x0)
+    bodies_at(tab, times, every, polynomial, slope, interval, pos, vel)
+    bodies_of_lane(pos, 0, here[0])
+    bodies_of_lane(vel, 0, here[1])
+    pace, inside = surroundings(tab, here[0], x0)
     if inside >= 0:
         met[0] = inside
         return INSIDE_BODY, 0, start, length, begin, power, on, met
-    pace = local_time(tab.gm, pos[0], x0)
     wanted = direction * min(cap_d, 0.2 * pace)
     while True:
         # the step ends at the end, or at a break, where one is near
@@ -158,57 +201,61 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, firs
         if abs(h) < 1e-9 and not closing:
             met[1] = tau
             return STEP_UNDERFLOW, n, start, length, begin, power, on, met
+        # the bodies at the end of the step in the first lane; then they give way to those of its
+        # start
+        times[0] = epoch_d + (tau + h)
         for j in range(1, N_NODES):
-            all_positions(tab, epoch_d + (tau + h * NODES[j]), pos[j], vel[j], every)
+            times[j] = epoch_d + (tau + h * NODES[j])
+        bodies_at(tab, times, every, polynomial, slope, interval, pos, vel)
+        bodies_of_lane(pos, 0, there[0])
+        bodies_of_lane(vel, 0, there[1])
+        for body in range(nb):
+            for i in range(3):
+                pos[i, N_NODES * body] = here[0, body, i]
+                vel[i, N_NODES * body] = here[1, body, i]
         for j in range(N_NODES):
             for i in range(3):
-                node[j, i] = 0.0
-        # sweep 0 takes the start alone and predicts the rest: the last step's polynomial continued,
-        # plus what it missed by last time; then Gauss-Seidel sweeps over the nodes until nothing
-        # moves
+                base[i, j] = x0[i] + h * NODES[j] * v0[i]
+                base[i, N_NODES + j] = base[i, j]
+                base[i, PAIR + j] = v0[i]
+            for m in range(N_NODES):
+                weight[m, j] = h * h * X_WEIGHTS[j, m]
+                weight[m, N_NODES + j] = weight[m, j]
+                weight[m, PAIR + j] = h * V_WEIGHTS[j, m]
+        # the last step's polynomial continued, plus what it missed by last time; then sweeps over
+        # all nodes until nothing moves. What comes from other than the Sun rests earlier.
+        if fresh:
+            node[:] = 0.0
+        else:
+            continued(power[n - 1], h / last_h, guess)
+            for i in range(3):
+                for j in range(N_NODES):
+                    node[i, j] = guess[i, j] + learnt[i, j]
         previous = 1e300
+        ratio = 1.0
+        moved = 1e300
         converged = False
-        for sweep in range(15):
-            change = 0.0
-            largest = 0.0
-            first = 0 if sweep == 0 else 1
-            last = 1 if sweep == 0 else N_NODES
-            for j in range(first, last):
-                s = NODES[j]
+        for sweep in range(MOST_SWEEPS):
+            follow(weight, base, node, path)
+            sun_at_nodes(gm[0], pos, path, new)
+            largest = gap(new, nothing)
+            if moved * ratio > settled * largest:
+                others_at_nodes(tab, gm, push, phys, active, pos, vel, path, pair, fresh_others)
+                if sweep > 0:
+                    moved = gap(fresh_others, others)
                 for i in range(3):
-                    px = 0.0
-                    pv = 0.0
-                    for k in range(N_NODES):
-                        px += X_WEIGHTS[j, k] * node[k, i]
-                        pv += V_WEIGHTS[j, k] * node[k, i]
-                    x[i] = x0[i] + h * (s * v0[i] + h * px)
-                    v[i] = v0[i] + h * pv
-                acceleration(tab, push, phys, active, pos[j], vel[j], x, v, acc)
-                for i in range(3):
-                    change = max(change, abs(acc[i] - node[j, i]))
-                    largest = max(largest, abs(acc[i]))
-                    node[j, i] = acc[i]
-            if sweep == 0:
-                q = 0.0 if fresh else h / last_h
-                qk = 1.0
-                for k in range(N_NODES):
-                    for i in range(3):
-                        total = 0.0
-                        if not fresh:
-                            for j in range(k, N_NODES):
-                                total += BINOMIAL[k, j] * power[n - 1, j, i]
-                        guess[k, i] = total * qk
-                    qk *= q
-                for j in range(1, N_NODES):
-                    s = NODES[j]
-                    for i in range(3):
-                        total = 0.0
-                        for k in range(N_NODES - 1, 0, -1):
-                            total = (total + guess[k, i] + learnt[k, i]) * s
-                        node[j, i] = node[0, i] + total
-                continue
+                    for j in range(N_NODES):
+                        others[i, j] = fresh_others[i, j]
+            for i in range(3):
+                for j in range(N_NODES):
+                    new[i, j] += others[i, j]
+            change = gap(new, node)
+            for i in range(3):
+                for j in range(N_NODES):
+                    node[i, j] = new[i, j]
             # the next change is about this one times the last ratio
-            if sweep > 1 and change * min(change / previous, 1.0) <= 1e-16 * largest:
+            ratio = min(change / previous, 1.0)
+            if sweep > 1 and change * ratio <= settled * largest:
                 converged = True
                 break
             if change >= 0.5 * previous and change < 1e-13 * largest:
@@ -222,18 +269,18 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, firs
         tail = 0.0
         for i in range(3):
             for j in range(N_NODES):
-                largest = max(largest, abs(node[j, i]))
+                largest = max(largest, abs(node[i, j]))
             for k in range(N_NODES):
                 total = 0.0
                 for j in range(N_NODES):
-                    total += TO_POWERS[k, j] * node[j, i]
+                    total += TO_POWERS[k, j] * node[i, j]
                 coef[k, i] = total
             tail = max(tail, abs(coef[N_NODES - 1, i]))
-        ratio = tail / largest
-        if not converged or not ratio < 1e300:
+        size = tail / largest
+        if not converged or not size < 1e300:
             factor = 0.25
-        elif ratio > 0.0:
-            factor = SAFETY * (eps / ratio) ** (1.0 / 7.0)
+        elif size > 0.0:
+            factor = SAFETY * (eps / size) ** (1.0 / 7.0)
         else:
             factor = 4.0
         if (factor < 0.5 and abs(h) > SMOOTH * pace) or not converged:
@@ -242,9 +289,7 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, firs
                 return NOT_CONVERGED, n, start, length, begin, power, on, met
             wanted = h * max(factor, 0.1)
             fresh = True
-            for k in range(N_NODES):
-                for i in range(3):
-                    learnt[k, i] = 0.0
+            learnt[:] = 0.0
             continue
         if n >= n_max:
             met[1] = tau
@@ -252,16 +297,15 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, firs
         start[n] = tau
         length[n] = h
         on[n] = active
-        for k in range(N_NODES):
-            for i in range(3):
-                power[n, k, i] = coef[k, i]
-                learnt[k, i] = 0.0 if fresh else coef[k, i] - guess[k, i]
         for i in range(3):
+            for k in range(N_NODES):
+                power[n, k, i] = coef[k, i]
+                learnt[i, k] = 0.0 if fresh else node[i, k] - guess[i, k]
             px = 0.0
             pv = 0.0
             for k in range(N_NODES):
-                px += X_WEIGHTS[N_NODES, k] * node[k, i]
-                pv += V_WEIGHTS[N_NODES, k] * node[k, i]
+                px += X_WEIGHTS[N_NODES, k] * node[i, k]
+                pv += V_WEIGHTS[N_NODES, k] * node[i, k]
             y = h * (v0[i] + h * px) - lost[i]
             total = x0[i] + y
             lost[i] = (total - x0[i]) - y
@@ -287,9 +331,8 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, firs
         for i in range(3):
             begin[n, i] = x0[i]
             begin[n, 3 + i] = v0[i]
-        all_positions(tab, epoch_d + tau, pos[0], vel[0], every)
-        pace = local_time(tab.gm, pos[0], x0)
-        inside = inside_body(tab, pos[0], x0)
+        here, there = there, here
+        pace, inside = surroundings(tab, here[0], x0)
         if inside >= 0:
             met[0] = inside
             met[1] = tau
@@ -298,9 +341,7 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, firs
             return OK, n, start, length, begin, power, on, met
         if closing:
             fresh = True
-            for k in range(N_NODES):
-                for i in range(3):
-                    learnt[k, i] = 0.0
+            learnt[:] = 0.0
             # a step cut short says little about the next
             wanted = direction * max(abs(wanted), abs(h) * min(factor, 4.0))
         else:
@@ -324,22 +365,50 @@ def find_step(start, n, forward, tau):
 
 
 @njit(cache=True, error_model="numpy")
-def dense(start, length, begin, power, k, tau, out):
-    """Barycentric state (6,) at ``tau`` from the polynomial of step ``k``."""
+def path_powers(length, begin, power, k, out):
+    """Power coefficients of position and velocity (9, 6) over step ``k``, in the step fraction."""
     h = length[k]
-    s = (tau - start[k]) / h
     for i in range(3):
-        px = 0.0
-        pv = 0.0
-        for j in range(N_NODES - 1, -1, -1):
-            px = px * s + power[k, j, i] / ((j + 1.0) * (j + 2.0))
-            pv = pv * s + power[k, j, i] / (j + 1.0)
-        out[i] = begin[k, i] + h * s * (begin[k, 3 + i] + h * s * px)
-        out[3 + i] = begin[k, 3 + i] + h * s * pv
+        out[0, i] = begin[k, i]
+        out[1, i] = h * begin[k, 3 + i]
+        out[0, 3 + i] = begin[k, 3 + i]
+        for j in range(N_NODES):
+            out[j + 1, 3 + i] = power[k, j, i] * (h * ONCE[j])
+            out[j + 2, i] = power[k, j, i] * (h * h * TWICE[j])
+        out[N_NODES + 1, 3 + i] = 0.0
 
 
 @njit(cache=True, error_model="numpy")
 def dense_many(start, length, begin, power, n, forward, taus, out):
-    """Barycentric states (m, 6) at many ``taus``."""
-    for i in range(taus.size):
-        dense(start, length, begin, power, find_step(start, n, forward, taus[i]), taus[i], out[i])
+    """Barycentric states (m, 6) at many ``taus``; quickest where they are sorted."""
+    c = np.empty((N_NODES + 2, 6))
+    k = -1
+    low = math.inf
+    high = -math.inf
+    for m in range(taus.size):
+        tau = taus[m]
+        if not low <= tau < high:
+            k = find_step(start, n, forward, tau)
+            low = min(start[k], start[k] + length[k])
+            high = max(start[k], start[k] + length[k])
+            path_powers(length, begin, power, k, c)
+        s = (tau - start[k]) / length[k]
+        x = c[N_NODES + 1, 0]
+        y = c[N_NODES + 1, 1]
+        z = c[N_NODES + 1, 2]
+        vx = c[N_NODES, 3]
+        vy = c[N_NODES, 4]
+        vz = c[N_NODES, 5]
+        for j in range(N_NODES, 0, -1):
+            x = x * s + c[j, 0]
+            y = y * s + c[j, 1]
+            z = z * s + c[j, 2]
+            vx = vx * s + c[j - 1, 3]
+            vy = vy * s + c[j - 1, 4]
+            vz = vz * s + c[j - 1, 5]
+        out[m, 0] = x * s + c[0, 0]
+        out[m, 1] = y * s + c[0, 1]
+        out[m, 2] = z * s + c[0, 2]
+        out[m, 3] = vx
+        out[m, 4] = vy
+        out[m, 5] = vz
