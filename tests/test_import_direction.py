@@ -9,7 +9,7 @@ import ngbound
 
 PACKAGE = Path(ngbound.__file__).parent
 ORDER = [
-    {"constants", "errors"},
+    {"constants", "errors", "rounding"},
     {"arc"},
     {"sky"},
     {"motion"},

@@ -8,50 +8,47 @@ posterior of A reaches zero.
 """
 
 import math
-import warnings
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
-from typing import Any, TypeAlias
+from typing import Any
 
 import astropy.units as u
 import numpy as np
 from astropy.units import Quantity
 
 from ngbound.constants import AU_D2_TO_M_S2
-from ngbound.errors import CaseError, MassError, NgboundWarning
-from ngbound.limits import DetectionThreshold, Posterior, UpperLimit
+from ngbound.errors import MassError
+from ngbound.limits import DetectionThreshold
+from ngbound.rounding import length_text, mass_text, percent, rounded
 
-from .distributions import AtMost, Distribution, DistributionSpec, Fixed, number_text
-from .outgassing import Emission, Outgassing
+from .distributions import AtMost, Distribution, DistributionSpec, Fixed
+from .momentum_model import (
+    ACCELERATION,
+    AU_D2,
+    GAt,
+    LawCheck,
+    MomentumModel,
+    checked_confidence,
+    g_values,
+    in_au_d2,
+    law_of,
+    monte_carlo_size,
+    quantile_and_error,
+    read_acceleration,
+)
+from .notebook import as_columns, as_html
+from .outgassing import Outgassing
 from .size import (
     DEFAULT_DENSITY,
     DEFAULT_DENSITY_SOURCE,
-    Photometry,
+    KnownSize,
     SizeCheck,
     size_check,
     sphere_diameter_m,
 )
-from .size import (
-    density as density_from,
-)
+from .size import density as density_from
 
-AU_D2 = u.au / u.day**2
-ACCELERATION = "acceleration"
 DENSITY = "bulk density"
-MIN_DRAWS = 20_000
-_MAX_POSTERIOR = 200_000
-
-GAt: TypeAlias = Callable[[float], float] | float
-
-
-@dataclass(frozen=True)
-class _Acceleration:
-    """|A| in au/d2, (n,), and what is known about where it comes from."""
-
-    magnitudes: np.ndarray
-    limit_confidence: float | None = None
-    n_effective: float | None = None
-    remarks: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True)
@@ -83,32 +80,6 @@ class InputShare:
         return {
             k: None if isinstance(v, float) and math.isnan(v) else v for k, v in vars(self).items()
         }
-
-
-@dataclass(frozen=True)
-class LawCheck:
-    """One species measured at two distances: do its rates follow the thrust law?
-
-    ``ratio``: force over g at the second distance, divided by the same at the first; 1 if they
-    agree. ``sigma``: its distance from 1 in standard deviations (logarithmic; common inputs
-    cancel).
-    """
-
-    species: str
-    r1_au: float
-    r2_au: float
-    ratio: float
-    sigma: float
-
-    def __str__(self) -> str:
-        return (
-            f"{self.species}: force / g(r) at {self.r2_au:g} au is {self.ratio:.3g} times that at "
-            f"{self.r1_au:g} au ({self.sigma:.1f} sigma)"
-        )
-
-    def to_dict(self) -> dict[str, Any]:
-        """JSON-able description."""
-        return dict(vars(self))
 
 
 @dataclass(frozen=True, eq=False)
@@ -170,36 +141,36 @@ class MassBound:
 
     def sentence(self) -> str:
         """The bound in words, with what it rests on."""
-        sources = "; ".join(str(e) for e in self.outgassing.emissions)
+        sources = "; ".join(
+            str(e) for e in self.outgassing.emissions if not isinstance(e.rate, AtMost)
+        )
         joint = ""
+        upper = rounded(float(self.acceleration_upper.value), 2, outward="up")
         if self.acceleration_kind == "upper limit":
-            held = f"|A| held at its limit of {number_text(self.acceleration_upper.value)} au/d2"
+            held = f"|A| held at its limit of {upper} au/d2"
             if self.joint_confidence < self.confidence:
                 joint = (
-                    f" (at least {100 * self.joint_confidence:g} % together with that of the limit)"
+                    f" (at least {percent(self.joint_confidence)} together with that of the limit)"
                 )
         else:
-            held = (
-                f"the posterior of |A| ({100 * self.confidence:g} % below "
-                f"{number_text(self.acceleration_upper.value)} au/d2)"
-            )
+            held = f"the posterior of |A| ({percent(self.confidence)} below {upper} au/d2)"
         text = (
-            f"With {sources}, and {held}, the mass is above {number_text(self.mass.value)} kg "
-            f"(Monte Carlo error {number_text(self.mass_error.value, 1)} kg) at "
-            f"{100 * self.confidence:g} % confidence{joint}; at a bulk density of {self.density} "
-            f"kg/m3 the diameter is above {number_text(self.diameter.value)} m."
+            f"With {sources}, and {held}, the mass is above {mass_text(float(self.mass.value))} "
+            f"(Monte Carlo error {rounded(float(self.mass_error.value), 1)} kg) at "
+            f"{percent(self.confidence)} confidence{joint}; at a bulk density of {self.density} "
+            f"kg/m3 the diameter is above {length_text(float(self.diameter.value))}."
         )
         if self.mass_detection is not None and self.diameter_detection is not None:
             text += (
                 " Under the same budget a body lighter than "
-                f"{number_text(self.mass_detection.value)} kg "
-                f"({number_text(self.diameter_detection.value)} m) would have shown a thrust above "
-                "the detection threshold, whatever its direction."
+                f"{mass_text(float(self.mass_detection.value))} "
+                f"({length_text(float(self.diameter_detection.value))}) would have shown a thrust "
+                "above the detection threshold, whatever its direction."
             )
         if self.dominant:
             text += (
-                f" The {self.dominant} dominates: {100 * self.inputs[0].total:.0f} % of the "
-                "variance of ln M."
+                f" What matters most is the {self.dominant}: "
+                f"{100 * self.inputs[0].total:.0f} % of the variance of ln M."
             )
         if self.size_check is not None:
             text += f" {str(self.size_check)[0].upper()}{str(self.size_check)[1:]}."
@@ -207,24 +178,18 @@ class MassBound:
 
     def table(self) -> str:
         """The one-at-a-time table and the variance decomposition as aligned text."""
-        head = (
-            f"{'input':32s} {'16 %':>10s} {'median':>10s} {'84 %':>10s} {'M at 16 %':>10s} "
-            f"{'M at 84 %':>10s} {'M> if known':>11s} {'ln M':>6s} {'ln D':>6s}  unit"
-        )
-        rows = [head]
-        for s in self.inputs:
-            rows.append(
-                f"{s.name:32s} {s.low:10.3g} {s.median:10.3g} {s.high:10.3g} {s.mass_at_low:10.3g} "
-                f"{s.mass_at_high:10.3g} {s.bound_if_known:11.3g} {_percent(s.total):>6s} "
-                f"{_percent(s.of_diameter):>6s}  {s.unit}"
-            )
-        return "\n".join(rows)
+        return as_columns(share_rows(self.inputs), left=(0, 7))
 
     def __str__(self) -> str:
         lines = [self.sentence(), "", self.table()]
         lines += [str(check) for check in self.law_checks]
         lines += [f"assumed: {text}" for text in self.assumptions]
         return "\n".join(lines)
+
+    def _repr_html_(self) -> str:
+        checks = [str(check) for check in self.law_checks]
+        assumed = [f"assumed: {text}" for text in self.assumptions]
+        return as_html([self.sentence()], share_rows(self.inputs), [*checks, *assumed])
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able record (without the draws)."""
@@ -264,7 +229,7 @@ class MassBound:
 def momentum_mass(force: Quantity, acceleration: Quantity | float, g: float = 1.0) -> Quantity:
     """Mass (kg) that ``force`` (N) accelerates by ``acceleration`` (Quantity, or au/d2) times
     ``g``."""
-    per_m_s2 = _au_d2(acceleration, "acceleration") * AU_D2_TO_M_S2 * g
+    per_m_s2 = in_au_d2(acceleration, "acceleration") * AU_D2_TO_M_S2 * g
     if np.any(per_m_s2 <= 0):
         raise MassError("The acceleration must be positive for a mass to follow from a force.")
     return force.to_value(u.N) / per_m_s2 * u.kg
@@ -279,7 +244,7 @@ def mass_bound(
     confidence: float = 0.95,
     threshold: DetectionThreshold | Quantity | float | None = None,
     seed: int | np.random.Generator = 1,
-    photometry: Photometry | None = None,
+    photometry: KnownSize | None = None,
     n_draws: int | None = None,
     limit_confidence: float | None = None,
     n_effective: float | None = None,
@@ -303,7 +268,8 @@ def mass_bound(
         A_det at g = 1 (au/d2 if bare); of several values the largest, and of an object with
         ``worst`` that one, so that "would have been detected" holds in every direction.
     seed : int or numpy Generator
-    photometry : Photometry, optional
+    photometry : Photometry or MeasuredDiameter, optional
+        What is known of the size, to be set beside the bound.
     n_draws : int, optional
         Monte Carlo draws; default the number of posterior draws, 20000 at least.
     limit_confidence : float, optional
@@ -318,28 +284,15 @@ def mass_bound(
     CaseError
         A value outside its range.
     """
-    if not 0.5 <= confidence < 1:
-        raise CaseError(
-            f"confidence = {confidence!r} must be at least 0.5 and below 1, such as 0.95.",
-            value=confidence,
-        )
-    if g_at is None:
-        carrier = getattr(limit_or_samples, "information", limit_or_samples)
-        g_at = getattr(carrier, "law_g", None)
-        if g_at is None:
-            raise MassError(
-                "A mass needs the thrust law at the distance where the rate was measured, and "
-                "these numbers do not carry it: give g_at, for instance g_at=thrust.g."
-            )
+    checked_confidence(confidence)
+    g_at = law_of(g_at, limit_or_samples)
     rng = np.random.default_rng(seed)
     bulk = density_from(density)
-    acceleration = _acceleration(limit_or_samples, limit_confidence, n_effective)
+    acceleration = read_acceleration(limit_or_samples, limit_confidence, n_effective)
     samples = acceleration.magnitudes
-    n = max(MIN_DRAWS, min(len(samples), _MAX_POSTERIOR)) if n_draws is None else n_draws
-    if n < 1000:
-        raise CaseError(f"n_draws = {n} must be at least 1000.", value=n)
+    n = monte_carlo_size(samples, n_draws)
     known = _with_measured_rates(outgassing)
-    model = _Model(known, _g_values(g_at, known), samples)
+    model = MomentumModel(known, g_values(g_at, known), samples)
     first, second = model.draw(rng, n), model.draw(rng, n)
     model.weigh(first)
     log_mass = model.log_mass(first)
@@ -349,8 +302,8 @@ def mass_bound(
     level = 1 - confidence
     rho = bulk.draw(rng, n)
     diameter = sphere_diameter_m(mass, rho)
-    mass_low, mass_err = _quantile(mass, level, n_eff)
-    diameter_low, diameter_err = _quantile(diameter, level, n_eff)
+    mass_low, mass_err = quantile_and_error(mass, level, n_eff)
+    diameter_low, diameter_err = quantile_and_error(diameter, level, n_eff)
     single = len(samples) == 1
     joint = confidence
     if single and acceleration.limit_confidence is not None:
@@ -359,7 +312,7 @@ def mass_bound(
     remarks = acceleration.remarks
     if threshold is not None:
         worst = threshold.worst if isinstance(threshold, DetectionThreshold) else threshold
-        a_det = float(np.max(_au_d2(worst, "threshold")))
+        a_det = float(np.max(in_au_d2(worst, "threshold")))
         if not a_det > 0:
             raise MassError(f"The detection threshold {a_det!r} au/d2 must be positive.")
         if not math.isfinite(a_det):
@@ -413,102 +366,8 @@ def _with_measured_rates(outgassing: Outgassing) -> Outgassing:
     return Outgassing(measured)
 
 
-class _Model:
-    """ln M as a function of named inputs; the acceleration is one of them."""
-
-    def __init__(self, outgassing: Outgassing, g: tuple[float, ...], samples: np.ndarray) -> None:
-        self.outgassing = outgassing
-        self.g = np.array(g)[:, np.newaxis]
-        self.samples = np.sort(samples)
-        self.distributions = outgassing.inputs()
-        emissions = outgassing.emissions
-        self.groups = {
-            name: np.array([k for k, e in enumerate(emissions) if e.species == name])
-            for name in dict.fromkeys(e.species for e in emissions)
-        }
-        self.weights = {
-            name: np.full(len(rows), 1.0 / len(rows)) for name, rows in self.groups.items()
-        }
-
-    @property
-    def names(self) -> list[str]:
-        varying = [
-            name for name, found in self.distributions.items() if not isinstance(found, Fixed)
-        ]
-        return varying + ([ACCELERATION] if len(self.samples) > 1 else [])
-
-    def draw(self, rng: np.random.Generator, n: int) -> dict[str, np.ndarray]:
-        values = {name: found.draw(rng, n) for name, found in self.distributions.items()}
-        turns = -(-n // len(self.samples))
-        order = np.concatenate([rng.permutation(len(self.samples)) for _ in range(turns)])[:n]
-        values[ACCELERATION] = self.samples[order]
-        return values
-
-    def quantile(self, name: str, p: float) -> float:
-        if name == ACCELERATION:
-            return float(np.quantile(self.samples, p))
-        return float(self.distributions[name].ppf(np.asarray(p)))
-
-    def medians(self) -> dict[str, np.ndarray]:
-        return {
-            name: np.array([self.quantile(name, 0.5)])
-            for name in [*self.distributions, ACCELERATION]
-        }
-
-    def log_over_g(self, values: dict[str, np.ndarray]) -> np.ndarray:
-        """ln of force over g by emission, (m, n); -inf where the force is zero."""
-        force, _ = self.outgassing.evaluate(values)
-        with np.errstate(divide="ignore"):
-            return np.log(force / self.g)
-
-    def weigh(self, values: dict[str, np.ndarray]) -> None:
-        """Weigh several distances of one species by the inverse variance of ln(force / g)."""
-        logs = self.log_over_g(values)
-        for name, rows in self.groups.items():
-            if len(rows) > 1:
-                weight = 1.0 / np.maximum(logs[rows].var(axis=1), 1e-6)
-                self.weights[name] = weight / weight.sum()
-
-    def log_force(self, values: dict[str, np.ndarray]) -> np.ndarray:
-        """ln of the force at g = 1, (n,): a weighted mean over distances, a sum over species."""
-        logs = self.log_over_g(values)
-        by_species = [self.weights[name] @ logs[rows] for name, rows in self.groups.items()]
-        return np.logaddexp.reduce(np.array(by_species), axis=0)
-
-    def log_mass(self, values: dict[str, np.ndarray]) -> np.ndarray:
-        return self.log_force(values) - np.log(values[ACCELERATION] * AU_D2_TO_M_S2)
-
-    def law_checks(self, values: dict[str, np.ndarray]) -> tuple[LawCheck, ...]:
-        logs = self.log_over_g(values)
-        found = []
-        for species, rows in self.groups.items():
-            emissions = [self.outgassing.emissions[k] for k in rows]
-            order = np.argsort([e.at_au for e in emissions], kind="stable")
-            for i, j in zip(order[:-1], order[1:], strict=True):
-                if emissions[i].at_au == emissions[j].at_au:
-                    continue
-                difference = logs[rows[j]] - logs[rows[i]]
-                spread = float(difference.std())
-                middle = float(np.median(difference))
-                sigma = abs(middle) / spread if spread > 0 else (math.inf if middle else 0.0)
-                found.append(
-                    LawCheck(
-                        species, emissions[i].at_au, emissions[j].at_au, math.exp(middle), sigma
-                    )
-                )
-        for check in found:
-            if check.sigma > 2:
-                warnings.warn(
-                    f"The measured rates do not follow the thrust law: {check}. The mass assumes "
-                    "that they do; try another law, or one distance at a time.",
-                    NgboundWarning,
-                    stacklevel=3,
-                )
-        return tuple(found)
-
-
 def _shares(
-    model: _Model,
+    model: MomentumModel,
     first: dict[str, np.ndarray],
     second: dict[str, np.ndarray],
     bulk: Distribution,
@@ -598,90 +457,19 @@ def _assumptions(outgassing: Outgassing, bulk: Distribution, single: bool) -> tu
     return tuple(lines)
 
 
-def _quantile(values: np.ndarray, level: float, n_effective: float) -> tuple[float, float]:
-    """Quantile and its standard error from the order statistics (binomial ranks)."""
-    half = math.sqrt(level * (1 - level) / n_effective)
-    low, mid, high = np.quantile(values, [max(level - half, 0.0), level, min(level + half, 1.0)])
-    return float(mid), float(high - low) / 2
+def share_rows(inputs: Sequence[InputShare]) -> list[list[str]]:
+    """One-at-a-time table and variance decomposition as text, the head first.
 
-
-def _acceleration(
-    limit_or_samples: Any, limit_confidence: float | None, n_effective: float | None
-) -> _Acceleration:
-    """Read a posterior, a limit, or plain numbers; warn where a chain has not converged."""
-    values: Any = limit_or_samples
-    remarks: tuple[str, ...] = ()
-    if isinstance(limit_or_samples, Posterior):
-        values = limit_or_samples.A_mag
-        n_effective = n_effective or limit_or_samples.ess.get("|A|")
-        remarks = (f"prior of the thrust: {limit_or_samples.prior.name}",)
-    elif isinstance(limit_or_samples, UpperLimit):
-        values = limit_or_samples.magnitude
-        limit_confidence = limit_or_samples.confidence
-        remarks = (f"prior of the thrust: {limit_or_samples.prior}",)
-    if isinstance(limit_or_samples, (Posterior, UpperLimit)) and not limit_or_samples.converged:
-        warnings.warn(
-            f"The mass rests on a posterior that has not converged: {limit_or_samples.message}",
-            NgboundWarning,
-            stacklevel=3,
-        )
-    return _Acceleration(_magnitudes(values), limit_confidence, n_effective, remarks)
-
-
-def _magnitudes(limit_or_samples: Any) -> np.ndarray:
-    """|A| in au/d2, (n,), from a number, a Quantity, draws (n,) or components (n, k)."""
-    values = _au_d2(limit_or_samples, "acceleration")
-    if values.ndim > 2:
-        raise CaseError(
-            f"Draws of the acceleration have the shape {values.shape}; allowed: (n,) magnitudes or "
-            "(n, k) components."
-        )
-    values = np.linalg.norm(values, axis=1) if values.ndim == 2 else np.abs(np.atleast_1d(values))
-    if not len(values) or not np.all(np.isfinite(values)):
-        raise MassError("The acceleration is empty or not finite; no mass follows from it.")
-    if not values.any():
-        raise MassError("The acceleration is zero; no finite mass follows from it.")
-    if 1 < len(values) < 100:
-        raise MassError(
-            f"{len(values)} posterior draws of the acceleration are too few for a quantile; at "
-            "least 100 are needed."
-        )
-    return np.maximum(values, values[values > 0].min())
-
-
-def _au_d2(value: Any, name: str) -> np.ndarray:
-    if isinstance(value, Quantity):
-        try:
-            return np.asarray(value.to_value(AU_D2), dtype=float)
-        except u.UnitConversionError as error:
-            raise CaseError(f"{name} has the unit {value.unit}; allowed: au/d2, m/s2.") from error
-    try:
-        return np.asarray(value, dtype=float)
-    except (TypeError, ValueError) as error:
-        raise CaseError(
-            f"{name} of type {type(value).__name__} cannot be read as numbers in au/d2; give a "
-            "number, an array or a Quantity."
-        ) from error
-
-
-def _g_values(g_at: GAt, outgassing: Outgassing) -> tuple[float, ...]:
-    if not callable(g_at) and len(outgassing.distances_au) > 1:
-        raise CaseError(
-            f"The rates were measured at {len(outgassing.distances_au)} distances, so g_at must be "
-            "a function of the distance in au, not one number."
-        )
-
-    def value(emission: Emission) -> float:
-        g = float(g_at(emission.at_au)) if callable(g_at) else float(g_at)
-        if not (g > 0 and math.isfinite(g)):
-            raise MassError(
-                f"The thrust law gives g = {g:g} at {emission.at_au:g} au, where the "
-                f"{emission.species} rate was measured: the rate says nothing about a thrust that "
-                "is off there. Take a rate inside the window of the law, or another law."
-            )
-        return g
-
-    return tuple(value(emission) for emission in outgassing.emissions)
+    The masses are medians moved by one input (to the nearest digit); "M > if known" is a bound.
+    """
+    head = ["input", "16 %", "median", "84 %", "M at 16 %", "M at 84 %", "M > if known"]
+    rows = [[*head, "unit", "of ln M", "of ln D"]]
+    for s in inputs:
+        numbers = (s.low, s.median, s.high, s.mass_at_low, s.mass_at_high)
+        bound = rounded(s.bound_if_known, 2, outward="down")
+        rows.append([s.name, *(rounded(x, 3) for x in numbers), bound, s.unit])
+        rows[-1] += [_percent(s.total), _percent(s.of_diameter)]
+    return rows
 
 
 def _percent(share: float) -> str:

@@ -1,6 +1,6 @@
 """Mass, bulk density, size and brightness of a sphere.
 
-May import: constants, errors, and from its own room distributions.
+May import: constants, errors, rounding, and from its own room distributions and notebook.
 
 Diameter from absolute magnitude and geometric albedo: D = 1329 km 10^(-H/5) / sqrt(p_V). The
 constant is 2 au 10^(m_sun/5) with m_sun = -26.762 (E. Bowell et al. 1989, in Asteroids II, from
@@ -10,15 +10,17 @@ memory; the value 1329 as on NASA's NEO properties page, and 2 x 149.6e6 km x 10
 
 import math
 from dataclasses import dataclass, field
-from typing import Any
+from typing import Any, TypeAlias
 
 import astropy.units as u
 import numpy as np
 from astropy.units import Quantity
 
 from ngbound.errors import CaseError
+from ngbound.rounding import percent, rounded
 
 from .distributions import (
+    AtMost,
     Distribution,
     DistributionSpec,
     Triangular,
@@ -26,6 +28,7 @@ from .distributions import (
     number_text,
     parse_distribution,
 )
+from .notebook import as_html
 
 ASTEROID_DIAMETER_KM = 1329.0
 """Diameter in km of a white (p_V = 1) sphere of H = 0; see the module's docstring."""
@@ -66,7 +69,7 @@ def density(spec: DistributionSpec | None) -> Distribution:
     """Bulk density in kg/m3 from a spec (default unit kg/m3); None gives `DEFAULT_DENSITY`."""
     if spec is None:
         return DEFAULT_DENSITY
-    found, unit = parse_distribution(spec, "density", lower=0.0)
+    found, unit = _known("density", spec, '"400 to 600 kg/m3"', lower=0.0)
     if unit:
         try:
             found = found.scaled(float(u.Unit(unit).to(u.kg / u.m**3)))
@@ -79,6 +82,59 @@ def density(spec: DistributionSpec | None) -> Distribution:
             value=found.median,
         )
     return found
+
+
+def _known(name: str, spec: DistributionSpec, example: str, **edges: float) -> tuple[Any, str]:
+    """A distribution with a middle; CaseError for a mere upper limit."""
+    found, unit = parse_distribution(spec, name, **edges)
+    if isinstance(found, AtMost):
+        raise CaseError(
+            f"{name} is only an upper limit; a value is needed, with its uncertainty or as a "
+            f"range, such as {example}."
+        )
+    return found, unit
+
+
+def diameter_m(spec: DistributionSpec) -> Distribution:
+    """Diameter in m from a spec (default unit m)."""
+    found, unit = _known("diameter", spec, '"1 to 2 km"', lower=0.0)
+    try:
+        scaled: Distribution = found.scaled(float(u.Unit(unit or "m").to(u.m)))
+    except (ValueError, TypeError, u.UnitConversionError) as error:
+        raise CaseError(f"diameter has the unit {unit!r}; allowed: m, km.") from error
+    if not 0.01 <= scaled.median <= 1e7:
+        raise CaseError(
+            f"diameter = {scaled} m is outside 1 cm to 10000 km; a bare number means m: write "
+            '"2 km" or 2000.',
+            value=scaled.median,
+        )
+    return scaled
+
+
+@dataclass(frozen=True, init=False)
+class MeasuredDiameter:
+    """A diameter that was measured some other way than by H and an albedo, m.
+
+    Parameters
+    ----------
+    diameter : spec
+        Default unit m, for instance "2.1 +- 0.3 km".
+    """
+
+    diameter: Distribution
+    name = "given diameter"
+    remark = ""
+
+    def __init__(self, diameter: DistributionSpec) -> None:
+        object.__setattr__(self, "diameter", diameter_m(diameter))
+
+    def diameter_m(self, rng: np.random.Generator, n: int) -> np.ndarray:
+        """``n`` draws of the diameter in m."""
+        return self.diameter.draw(rng, n)
+
+    def to_dict(self) -> dict[str, Any]:
+        """JSON-able description."""
+        return {"diameter_m": self.diameter.to_dict()}
 
 
 @dataclass(frozen=True, init=False)
@@ -99,16 +155,24 @@ class Photometry:
     absolute_magnitude: Distribution
     albedo: Distribution
     coma: bool = False
+    name = "photometric diameter"
+
+    @property
+    def remark(self) -> str:
+        """What to keep in mind with the size."""
+        if not self.coma:
+            return ""
+        return "the magnitude may hold a coma, so the true size is smaller and the need greater"
 
     def __init__(
         self, H: DistributionSpec, albedo: DistributionSpec | None = None, coma: bool = False
     ) -> None:
-        magnitude, unit = parse_distribution(H, "H")
+        magnitude, unit = _known("H", H, '"18.2 +- 0.3"', lower=-5.0, upper=45.0)
         if unit not in ("", "mag"):
             raise CaseError(f"H has the unit {unit!r}; it is a magnitude.")
         found: Distribution = DEFAULT_ALBEDO
         if albedo is not None:
-            found, unit = parse_distribution(albedo, "albedo", lower=0.0, upper=1.5)
+            found, unit = _known("albedo", albedo, '"0.02 to 0.06"', lower=0.0, upper=1.5)
             if unit:
                 raise CaseError(f"albedo has no unit, but {unit!r} was given.")
         object.__setattr__(self, "absolute_magnitude", magnitude)
@@ -130,9 +194,12 @@ class Photometry:
         }
 
 
+KnownSize: TypeAlias = Photometry | MeasuredDiameter
+
+
 @dataclass(frozen=True)
 class SizeCheck:
-    """A photometric diameter beside a mass bound.
+    """A photometric or given diameter beside a mass bound.
 
     ``diameter`` (median), ``diameter_minus``, ``diameter_plus`` (to the 16th and 84th percentile)
     in m; ``density_needed``: bulk density (kg/m3) that a sphere of the photometric diameter must
@@ -147,13 +214,17 @@ class SizeCheck:
     confidence: float
     verdict: str
     reason: str = field(repr=False)
+    name: str = "photometric diameter"
 
     def __str__(self) -> str:
         return (
-            f"photometric diameter {number_text(self.diameter.value)} "
+            f"{self.name} {number_text(self.diameter.value)} "
             f"+{number_text(self.diameter_plus.value, 2)} "
             f"-{number_text(self.diameter_minus.value, 2)} m: {self.verdict}; {self.reason}"
         )
+
+    def _repr_html_(self) -> str:
+        return as_html([f"{str(self)[0].upper()}{str(self)[1:]}."])
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able description."""
@@ -165,33 +236,32 @@ class SizeCheck:
             "confidence": self.confidence,
             "verdict": self.verdict,
             "reason": self.reason,
+            "name": self.name,
         }
 
 
 def size_check(
     mass_draws_kg: np.ndarray,
-    photometry: Photometry,
+    size: KnownSize,
     bulk: Distribution,
     confidence: float,
     rng: np.random.Generator,
 ) -> SizeCheck:
-    """Compare mass draws (n,) kg with a photometric size under a bulk-density prior (kg/m3).
+    """Compare mass draws (n,) kg with what is known of the size under a density prior (kg/m3).
 
     Verdict: "clash" if the density needed exceeds the 97.5th percentile of the prior, "tension"
     above its 84th, else "agree".
     """
-    diameters = photometry.diameter_m(rng, len(mass_draws_kg))
+    diameters = size.diameter_m(rng, len(mass_draws_kg))
     needed = float(np.quantile(mass_draws_kg / sphere_mass_kg(diameters, 1.0), 1 - confidence))
     high, top = (float(bulk.ppf(np.asarray(p))) for p in (0.84134, 0.975))
     verdict = "clash" if needed > top else "tension" if needed > high else "agree"
     reason = (
-        f"a sphere of that size needs a bulk density above {number_text(needed)} kg/m3 "
-        f"({100 * confidence:g} %) to hold the mass, against an assumed {bulk} kg/m3"
+        f"a sphere of that size needs a bulk density above {rounded(needed, 2, outward='down')} "
+        f"kg/m3 ({percent(confidence)}) to hold the mass, against an assumed {bulk} kg/m3"
     )
-    if photometry.coma:
-        reason += (
-            "; the magnitude may hold a coma, so the true size is smaller and the need greater"
-        )
+    if size.remark:
+        reason += f"; {size.remark}"
     low_d, mid_d, high_d = np.quantile(diameters, [0.15866, 0.5, 0.84134])
     return SizeCheck(
         mid_d * u.m,
@@ -201,4 +271,5 @@ def size_check(
         confidence,
         verdict,
         reason,
+        size.name,
     )

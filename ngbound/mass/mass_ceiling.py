@@ -1,0 +1,165 @@
+"""A thrust that was detected, and all that can push: the mass that the body cannot exceed.
+
+May import: constants, errors, rounding, limits, and from its own room distributions,
+momentum_model, notebook, outgassing and size.
+
+M = F / (A g) as in `mass_bound`, but read from above: F is the whole force the budget allows, so
+that rates known only as upper limits stand at their limit, and A is a thrust whose posterior keeps
+away from zero. Without a detection there is no such bound: a limit on F and a limit on A, both from
+above, exclude no mass at all.
+"""
+
+from dataclasses import dataclass, replace
+from typing import Any
+
+import astropy.units as u
+import numpy as np
+from astropy.units import Quantity
+
+from ngbound.errors import MassError
+from ngbound.rounding import length_text, mass_text, percent, rounded
+
+from .distributions import AtMost, Distribution, DistributionSpec, Fixed
+from .momentum_model import (
+    AU_D2,
+    GAt,
+    MomentumModel,
+    checked_confidence,
+    g_values,
+    law_of,
+    monte_carlo_size,
+    quantile_and_error,
+    read_acceleration,
+)
+from .notebook import as_html
+from .outgassing import Outgassing
+from .size import density as density_from
+from .size import sphere_diameter_m
+
+
+@dataclass(frozen=True)
+class MassCeiling:
+    """Upper bound on mass and diameter, from a detected thrust and all that can push.
+
+    ``mass``, ``diameter``: the ``confidence`` quantile of M and D, with their Monte Carlo errors;
+    ``joint_confidence``: what can be claimed together with the quoted confidence of rates that are
+    upper limits (Bonferroni); ``acceleration_lower``: the (1 - confidence) quantile of |A|, au/d2.
+    """
+
+    mass: Quantity
+    mass_error: Quantity
+    diameter: Quantity
+    diameter_error: Quantity
+    confidence: float
+    joint_confidence: float
+    acceleration_lower: Quantity
+    density: Distribution
+    limits: tuple[str, ...]
+    n_draws: int
+
+    def sentence(self) -> str:
+        """The bound in words, with what it rests on."""
+        held = f" (rates known only as limits held there: {', '.join(self.limits)})"
+        joint = ""
+        if self.joint_confidence < self.confidence:
+            joint = f" (at least {percent(self.joint_confidence)} together with that of the limits)"
+        return (
+            f"The thrust was detected (|A| > "
+            f"{rounded(float(self.acceleration_lower.value), 2, outward='down')} au/d2 at "
+            f"{percent(self.confidence)}), so that the same budget{held if self.limits else ''} "
+            f"bounds the mass from above too: below "
+            f"{mass_text(float(self.mass.value), outward='up')}, a diameter below "
+            f"{length_text(float(self.diameter.value), outward='up')} at a bulk density of "
+            f"{self.density} kg/m3, at {percent(self.confidence)} confidence{joint}, if nothing "
+            "but the species named pushes."
+        )
+
+    def __str__(self) -> str:
+        return self.sentence()
+
+    def _repr_html_(self) -> str:
+        return as_html([self.sentence()])
+
+    def to_dict(self) -> dict[str, Any]:
+        """JSON-able record."""
+        return {
+            "mass_kg": float(self.mass.value),
+            "mass_error_kg": float(self.mass_error.value),
+            "diameter_m": float(self.diameter.value),
+            "diameter_error_m": float(self.diameter_error.value),
+            "confidence": self.confidence,
+            "joint_confidence": self.joint_confidence,
+            "acceleration_lower_au_d2": float(self.acceleration_lower.value),
+            "density_kg_m3": self.density.to_dict(),
+            "limits": list(self.limits),
+            "n_draws": self.n_draws,
+            "sentence": self.sentence(),
+        }
+
+
+def mass_ceiling(
+    samples: Any,
+    outgassing: Outgassing,
+    *,
+    g_at: GAt | None = None,
+    density: DistributionSpec | None = None,
+    confidence: float = 0.95,
+    seed: int | np.random.Generator = 1,
+    n_draws: int | None = None,
+    n_effective: float | None = None,
+) -> MassCeiling:
+    """Upper bound on mass and diameter; only for a thrust that was detected.
+
+    Parameters
+    ----------
+    samples : Posterior or array
+        Posterior of a detected thrust, or draws of |A| (n,) or of its components (n, k), au/d2.
+    outgassing : Outgassing
+        All that can push; rates that are upper limits are held at their limit.
+    g_at, density, confidence, seed, n_draws, n_effective
+        As in `mass_bound`.
+
+    Raises
+    ------
+    MassError
+        One number instead of draws; the law is off at a measurement.
+    CaseError
+        A value outside its range.
+    """
+    checked_confidence(confidence)
+    rng = np.random.default_rng(seed)
+    bulk = density_from(density)
+    acceleration = read_acceleration(samples, None, n_effective)
+    if len(acceleration.magnitudes) == 1:
+        raise MassError(
+            "An upper mass needs the posterior of a detected thrust, not one number: an upper "
+            "limit on the thrust bounds the mass from below only."
+        )
+    n = monte_carlo_size(acceleration.magnitudes, n_draws)
+    whole = Outgassing([replace(e, rate=_at_limit(e.rate)) for e in outgassing.emissions])
+    model = MomentumModel(whole, g_values(law_of(g_at, samples), whole), acceleration.magnitudes)
+    drawn = model.draw(rng, n)
+    model.weigh(drawn)
+    mass = np.exp(model.log_mass(drawn))
+    diameter = sphere_diameter_m(mass, bulk.draw(rng, n))
+    n_eff = float(min(n, acceleration.n_effective or len(acceleration.magnitudes)))
+    mass_high, mass_error = quantile_and_error(mass, confidence, n_eff)
+    diameter_high, diameter_error = quantile_and_error(diameter, confidence, n_eff)
+    limits = [e for e in outgassing.emissions if isinstance(e.rate, AtMost)]
+    quoted = [e.rate.confidence or 1.0 for e in limits if isinstance(e.rate, AtMost)]
+    return MassCeiling(
+        mass_high * u.kg,
+        mass_error * u.kg,
+        diameter_high * u.m,
+        diameter_error * u.m,
+        confidence,
+        max(0.0, confidence - sum(1.0 - c for c in quoted)),
+        float(np.quantile(acceleration.magnitudes, 1 - confidence)) * AU_D2,
+        bulk,
+        tuple(f"{e.species} {e.rate} {e.rate_unit} at {e.at_au:g} au" for e in limits),
+        n,
+    )
+
+
+def _at_limit(rate: Distribution) -> Distribution:
+    return Fixed(rate.limit) if isinstance(rate, AtMost) else rate
