@@ -27,6 +27,7 @@ from .grid import (
 from .radau import N_NODES, NODES, V_WEIGHTS, X_WEIGHTS
 
 LANES = 16
+VECTOR = 3 * LANES
 COLUMNS = 9
 SWEEPS = 6
 SETTLED_AU = 2e-15
@@ -36,10 +37,10 @@ _TIDE = np.array([[0, 3, 5, 1, 2, 4], [1, 6, 8, 3, 4, 7], [2, 7, 9, 4, 5, 8]])
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST)
 def _offset_acceleration(gm_sun, row, d, w, da, amount, acc):
-    """Second derivative of the offsets ``d`` (3, LANES) with their velocities ``w``.
+    """Second derivative of the offsets ``d`` (3 LANES,) with their velocities ``w``.
 
-    ``da`` (3, LANES): thrust of the lane less that of the reference; ``amount``: thrust of the
-    lane.
+    ``da`` (3 LANES,): thrust of the lane less that of the reference; ``amount``: thrust of the
+    lane. All arrays are flat, so that the compiler sees one run of lanes.
     """
     sx = row[SUN]
     sy = row[SUN + 1]
@@ -48,16 +49,16 @@ def _offset_acceleration(gm_sun, row, d, w, da, amount, acc):
     inv_r2 = 1.0 / r2
     f = gm_sun * inv_r2 / math.sqrt(r2)
     for lane in range(LANES):
-        x = d[0, lane]
-        y = d[1, lane]
-        z = d[2, lane]
+        x = d[lane]
+        y = d[LANES + lane]
+        z = d[2 * LANES + lane]
         q = (x * (x + 2.0 * sx) + y * (y + 2.0 * sy) + z * (z + 2.0 * sz)) * inv_r2
         one = 1.0 + q
         root = one * math.sqrt(one)
         e = q * (3.0 + q * (3.0 + q)) / ((1.0 + root) * root)
-        acc[0, lane] = f * (e * (sx + x) - x)
-        acc[1, lane] = f * (e * (sy + y) - y)
-        acc[2, lane] = f * (e * (sz + z) - z)
+        acc[lane] = f * (e * (sx + x) - x)
+        acc[LANES + lane] = f * (e * (sy + y) - y)
+        acc[2 * LANES + lane] = f * (e * (sz + z) - z)
     # rows of the tide's symmetric tensor, in the order xx, yy, zz, xy, xz, yz
     for i in range(3):
         txx = row[THIRD + _TIDE[i, 0]]
@@ -76,19 +77,19 @@ def _offset_acceleration(gm_sun, row, d, w, da, amount, acc):
         u2 = row[UNIT + 3 + i]
         u3 = row[UNIT + 6 + i]
         for lane in range(LANES):
-            x = d[0, lane]
-            y = d[1, lane]
-            z = d[2, lane]
-            acc[i, lane] += (
+            x = d[lane]
+            y = d[LANES + lane]
+            z = d[2 * LANES + lane]
+            acc[i * LANES + lane] += (
                 (gx + 0.5 * txx * x + txy * y) * x
                 + (gy + 0.5 * tyy * y + tyz * z) * y
                 + (gz + 0.5 * tzz * z + txz * x) * z
-                + hx * w[0, lane]
-                + hy * w[1, lane]
-                + hz * w[2, lane]
-                + u1 * da[0, lane]
-                + u2 * da[1, lane]
-                + u3 * da[2, lane]
+                + hx * w[lane]
+                + hy * w[LANES + lane]
+                + hz * w[2 * LANES + lane]
+                + u1 * da[lane]
+                + u2 * da[LANES + lane]
+                + u3 * da[2 * LANES + lane]
             )
         for c in range(3):
             at = UNIT_X + 9 * c + 3 * i
@@ -100,14 +101,29 @@ def _offset_acceleration(gm_sun, row, d, w, da, amount, acc):
             qy = row[at + 1]
             qz = row[at + 2]
             for lane in range(LANES):
-                acc[i, lane] += amount[c, lane] * (
-                    px * d[0, lane]
-                    + py * d[1, lane]
-                    + pz * d[2, lane]
-                    + qx * w[0, lane]
-                    + qy * w[1, lane]
-                    + qz * w[2, lane]
+                acc[i * LANES + lane] += amount[c * LANES + lane] * (
+                    px * d[lane]
+                    + py * d[LANES + lane]
+                    + pz * d[2 * LANES + lane]
+                    + qx * w[lane]
+                    + qy * w[LANES + lane]
+                    + qz * w[2 * LANES + lane]
                 )
+
+
+@njit(cache=True, error_model="numpy", fastmath=_FAST)
+def _places(begin, t, wx, wv, acc, d, w):
+    """Offsets and their velocities (3 LANES,) ``t`` days into a step, from the weighted
+    accelerations (8, 3 LANES) of its nodes.
+    """
+    for lane in range(VECTOR):
+        px = begin[lane] + t * begin[VECTOR + lane]
+        pv = begin[VECTOR + lane]
+        for m in range(N_NODES):
+            px += wx[m] * acc[m, lane]
+            pv += wv[m] * acc[m, lane]
+        d[lane] = px
+        w[lane] = pv
 
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
@@ -135,22 +151,23 @@ def offsets_to_records(
     (2, LANES) the estimated error of position (au) and the last change of a sweep (au).
     """
     steps = grid_h.size
-    begin = np.zeros((6, LANES))
-    acc = np.zeros((N_NODES, 3, LANES))
-    d = np.zeros((3, LANES))
-    w = np.zeros((3, LANES))
-    new = np.zeros((3, LANES))
-    da = np.zeros((3, LANES))
-    amount = np.zeros((3, LANES))
+    begin = theta[:6].copy().reshape(6 * LANES)
+    acc = np.zeros((N_NODES, VECTOR))
+    d = np.zeros(VECTOR)
+    w = np.zeros(VECTOR)
+    new = np.zeros(VECTOR)
+    da = np.zeros(VECTOR)
+    amount = np.zeros(VECTOR)
+    wx = np.empty(N_NODES)
+    wv = np.empty(N_NODES)
+    flat_theta = theta.reshape(theta.size)
+    flat_out = out.reshape(out.shape[0], 6 * LANES)
     drift = np.zeros(LANES)
     change = np.zeros(LANES)
-    for i in range(6):
-        for lane in range(LANES):
-            begin[i, lane] = theta[i, lane]
     for i in range(3):
         for lane in range(LANES):
-            da[i, lane] = theta[6 + i, lane]
-            amount[i, lane] = a_ref[i] + da[i, lane]
+            da[i * LANES + lane] = theta[6 + i, lane]
+            amount[i * LANES + lane] = a_ref[i] + theta[6 + i, lane]
     record = first
     for k in range(steps):
         h = grid_h[k]
@@ -161,34 +178,33 @@ def offsets_to_records(
                     px = 0.0
                     pv = 0.0
                     for c in range(COLUMNS):
-                        px += columns[k, j, i, c] * theta[c, lane]
-                        pv += columns[k, j, 3 + i, c] * theta[c, lane]
-                    d[i, lane] = px
-                    w[i, lane] = pv
-                if j == 0:
-                    for lane in range(LANES):
-                        d[i, lane] = begin[i, lane]
-                        w[i, lane] = begin[3 + i, lane]
+                        px += columns[k, j, i, c] * flat_theta[c * LANES + lane]
+                        pv += columns[k, j, 3 + i, c] * flat_theta[c * LANES + lane]
+                    d[i * LANES + lane] = px
+                    w[i * LANES + lane] = pv
+            if j == 0:
+                for lane in range(VECTOR):
+                    d[lane] = begin[lane]
+                    w[lane] = begin[VECTOR + lane]
             _offset_acceleration(gm_sun, nodes[k, j], d, w, da, amount, acc[j])
         for _ in range(SWEEPS):
             for lane in range(LANES):
                 change[lane] = 0.0
             for j in range(1, N_NODES):
-                s = NODES[j] * h
-                for i in range(3):
-                    for lane in range(LANES):
-                        px = 0.0
-                        pv = 0.0
-                        for m in range(N_NODES):
-                            px += X_WEIGHTS[j, m] * acc[m, i, lane]
-                            pv += V_WEIGHTS[j, m] * acc[m, i, lane]
-                        d[i, lane] = begin[i, lane] + s * begin[3 + i, lane] + h * h * px
-                        w[i, lane] = begin[3 + i, lane] + h * pv
+                for m in range(N_NODES):
+                    wx[m] = h * h * X_WEIGHTS[j, m]
+                    wv[m] = h * V_WEIGHTS[j, m]
+                _places(begin, NODES[j] * h, wx, wv, acc, d, w)
                 _offset_acceleration(gm_sun, nodes[k, j], d, w, da, amount, new)
-                for i in range(3):
-                    for lane in range(LANES):
-                        change[lane] = max(change[lane], abs(new[i, lane] - acc[j, i, lane]))
-                        acc[j, i, lane] = new[i, lane]
+                for lane in range(LANES):
+                    change[lane] = max(
+                        change[lane],
+                        abs(new[lane] - acc[j, lane]),
+                        abs(new[LANES + lane] - acc[j, LANES + lane]),
+                        abs(new[2 * LANES + lane] - acc[j, 2 * LANES + lane]),
+                    )
+                for lane in range(VECTOR):
+                    acc[j, lane] = new[lane]
             worst = 0.0
             for lane in range(LANES):
                 worst = max(worst, change[lane])
@@ -198,9 +214,9 @@ def offsets_to_records(
         row = nodes[k, N_NODES - 1]
         here2 = row[SUN] ** 2 + row[SUN + 1] ** 2 + row[SUN + 2] ** 2
         for lane in range(LANES):
-            size2 = d[0, lane] ** 2 + d[1, lane] ** 2 + d[2, lane] ** 2
+            size2 = d[lane] ** 2 + d[LANES + lane] ** 2 + d[2 * LANES + lane] ** 2
             size = math.sqrt(size2)
-            push = abs(amount[0, lane]) + abs(amount[1, lane]) + abs(amount[2, lane])
+            push = abs(amount[lane]) + abs(amount[LANES + lane]) + abs(amount[2 * LANES + lane])
             missing = 10.0 * row[SCALE] * size2 * size + size2 * (
                 push * row[SECOND_PUSH] + row[SECOND_RELATIVITY]
             )
@@ -210,27 +226,24 @@ def offsets_to_records(
             doubt[0, lane] = max(doubt[0, lane] + abs(h) * drift[lane], bend)
             doubt[1, lane] = max(doubt[1, lane], change[lane] * h * h)
         while record < last and step_of[record] == k:
-            for i in range(3):
-                for lane in range(LANES):
-                    px = 0.0
-                    pv = 0.0
-                    for m in range(N_NODES):
-                        px += weight[record, 0, m] * acc[m, i, lane]
-                        pv += weight[record, 1, m] * acc[m, i, lane]
-                    out[record, i, lane] = (
-                        begin[i, lane] + fraction_h[record] * begin[3 + i, lane] + px
-                    )
-                    out[record, 3 + i, lane] = begin[3 + i, lane] + pv
+            row = flat_out[record]
+            _places(
+                begin,
+                fraction_h[record],
+                weight[record, 0],
+                weight[record, 1],
+                acc,
+                row[:VECTOR],
+                row[VECTOR:],
+            )
             record += 1
-        for i in range(3):
-            for lane in range(LANES):
-                px = 0.0
-                pv = 0.0
-                for m in range(N_NODES):
-                    px += X_WEIGHTS[N_NODES, m] * acc[m, i, lane]
-                    pv += V_WEIGHTS[N_NODES, m] * acc[m, i, lane]
-                begin[i, lane] += h * begin[3 + i, lane] + h * h * px
-                begin[3 + i, lane] += h * pv
+        for m in range(N_NODES):
+            wx[m] = h * h * X_WEIGHTS[N_NODES, m]
+            wv[m] = h * V_WEIGHTS[N_NODES, m]
+        _places(begin, h, wx, wv, acc, d, w)
+        for lane in range(VECTOR):
+            begin[lane] = d[lane]
+            begin[VECTOR + lane] = w[lane]
 
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
@@ -248,27 +261,40 @@ def sight_residuals(c_au_d, rho, speed, basis, offset, out):
         y = rho[k, 1]
         z = rho[k, 2]
         ref = math.sqrt(x * x + y * y + z * z)
+        sx = speed[k, 0]
+        sy = speed[k, 1]
+        sz = speed[k, 2]
+        ex = basis[k, 0, 0]
+        ey = basis[k, 0, 1]
+        ez = basis[k, 0, 2]
+        nx = basis[k, 1, 0]
+        ny = basis[k, 1, 1]
+        nz = basis[k, 1, 2]
+        ux = basis[k, 2, 0]
+        uy = basis[k, 2, 1]
+        uz = basis[k, 2, 2]
+        row = offset[k].reshape(6 * LANES)
+        seen = out[k].reshape(2 * LANES)
         for lane in range(LANES):
-            dx = offset[k, 0, lane]
-            dy = offset[k, 1, lane]
-            dz = offset[k, 2, lane]
-            vx = speed[k, 0] + offset[k, 3, lane]
-            vy = speed[k, 1] + offset[k, 4, lane]
-            vz = speed[k, 2] + offset[k, 5, lane]
+            dx = row[lane]
+            dy = row[LANES + lane]
+            dz = row[2 * LANES + lane]
+            vx = sx + row[3 * LANES + lane]
+            vy = sy + row[4 * LANES + lane]
+            vz = sz + row[5 * LANES + lane]
             px = x + dx
             py = y + dy
             pz = z + dz
             far = math.sqrt(px * px + py * py + pz * pz)
-            longer = (dx * (px + x) + dy * (py + y) + dz * (pz + z)) / (far + ref)
-            late = -longer * far / (c_au_d * far + px * vx + py * vy + pz * vz)
+            longer = dx * (px + x) + dy * (py + y) + dz * (pz + z)
+            approach = c_au_d * far + px * vx + py * vy + pz * vz
+            late = -longer * far / ((far + ref) * approach)
             px += vx * late
             py += vy * late
             pz += vz * late
-            depth = basis[k, 2, 0] * px + basis[k, 2, 1] * py + basis[k, 2, 2] * pz
-            east = basis[k, 0, 0] * px + basis[k, 0, 1] * py + basis[k, 0, 2] * pz
-            north = basis[k, 1, 0] * px + basis[k, 1, 1] * py + basis[k, 1, 2] * pz
-            out[k, 0, lane] = -east / depth
-            out[k, 1, lane] = -north / depth
+            scale = -1.0 / (ux * px + uy * py + uz * pz)
+            seen[lane] = (ex * px + ey * py + ez * pz) * scale
+            seen[LANES + lane] = (nx * px + ny * py + nz * pz) * scale
 
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
