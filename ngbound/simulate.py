@@ -4,7 +4,8 @@ A recipe is a TOML file validated like a case file.  It names an orbit, a thrust
 spacecraft that nobody has, nights, weather and errors, and a seed; the same recipe gives the same
 arc.  A site observes only when the object stands high enough and the Sun low enough, a spacecraft
 only within its range of solar elongations.  Every record brings its own position, and invented
-places carry a code that belongs to no observatory: 247 (roving observer) on the ground.
+places carry a code that belongs to no observatory: 247 (roving observer) on the ground, one that
+is in no list in space.
 
 May import every room to its left and ngbound.case; never run or cli.
 """
@@ -20,9 +21,9 @@ import astropy.units as u
 import numpy as np
 import pandas as pd
 from numpy.typing import NDArray
-from pydantic import Field, model_validator
+from pydantic import Field, field_validator, model_validator
 
-from ngbound.arc import Arc, write_psv
+from ngbound.arc import Arc, all_stations, write_psv
 from ngbound.case import (
     NotNegative,
     OrbitTable,
@@ -110,6 +111,17 @@ class Instrument(Table):
     faintest_mag: float = 21.5
     catalogue: str = "Gaia3"
     aperture_m: Positive = 0.5
+
+    @field_validator("code")
+    @classmethod
+    def _nobodys(cls, code: str) -> str:
+        known = all_stations().get(code)
+        if known is not None and known.kind != "roving":
+            raise ValueError(
+                f"must be the code of no observatory, but {code} is {known.name}; invented places "
+                "carry 247 or a code that is in no list"
+            )
+        return code
 
     def context(self) -> tuple[tuple[str, str, tuple[tuple[str, str], ...]], ...]:
         """ADES header of the instrument's block, which says that all of it is invented."""

@@ -161,3 +161,11 @@ def test_a_wrong_recipe_is_told_in_one_sentence(tmp_path, old, new, words):
     assert words in str(caught.value)
     assert "\n" not in str(caught.value)
     assert list(tmp_path.iterdir()) == [path]
+
+
+@pytest.mark.parametrize(("kind", "code"), [("site", "G96"), ("spacecraft", "250")])
+def test_no_real_observatory_is_credited(recipe, kind, code):
+    table = recipe.model_dump()
+    table[kind][0]["code"] = code
+    with pytest.raises(ValueError, match=rf"code of no observatory, but {code} is"):
+        Recipe.model_validate(table)

@@ -100,11 +100,11 @@ def psv_records(text: str, source: str) -> Records:
     rows = np.concatenate([part.rows for part in parts])
     order = np.argsort(rows, kind="stable") if len(parts) > 1 else slice(None)
     number = np.concatenate([part.context for part in parts])[order]
-    text, coded, packed = _one_table(parts, order)
+    columns, coded, packed = _one_table(parts, order)
     n = len(rows)
     return Records(
         source=source,
-        text=text,
+        text=columns,
         kind=np.concatenate([part.kind for part in parts])[order],
         line=rows[order] + 1,
         block=np.where(number >= 0, np.append(place, -1)[number], -1),

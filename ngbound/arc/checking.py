@@ -30,7 +30,7 @@ from ngbound.arc.ades_rules import (
 )
 from ngbound.arc.fields import Packed, pack, parse_decimals, parse_doubles, parse_times
 from ngbound.arc.records import Coded, FloatArray, ObjectArray, Records
-from ngbound.arc.stations import Station, near_codes, station
+from ngbound.arc.stations import IN_SPACE, ON_EARTH, Station, near_codes, station
 from ngbound.errors import ArcError, StationError
 
 BoolArray = NDArray[np.bool_]
@@ -434,33 +434,47 @@ class Checker:
             )
 
     def sites(self, columns: Mapping[str, Any], own: Mapping[str, Station]) -> ObjectArray:
-        """Kind of the station of every record; unknown codes are refused."""
+        """Kind of the station of every record: a position on ICRF axes means one in space, whatever
+        the code; a position on the Earth one that roves, unless the code has a place of its own.
+        Unknown codes without a position are refused."""
+        system = columns["sys"] if self.filled("sys").any() else self.blank
+        on_earth = np.isin(system, ON_EARTH) if system is not self.blank else self.never
+        in_space = np.isin(system, IN_SPACE) if system is not self.blank else self.never
         site = np.full(self.n, "fixed", dtype=object)
         names = ("trx", "rcv", "stn") if RADAR in self.kinds else ("stn",)
         for column in names:
             if column not in columns:
                 continue
             coded = self.coded(column)
-            kinds = np.full(len(coded.values), "fixed", dtype=object)
-            for i, code in enumerate(coded.values):
-                if code == "":
-                    continue
-                try:
-                    kinds[i] = station(code, own).kind
-                except StationError as error:
-                    row = int(np.argmax(coded.codes == i))
-                    near = ", ".join(near_codes(str(code), own))
-                    raise self.fail(
-                        row,
-                        column,
-                        f"the station {str(code)!r} is not in the list of observatory codes; "
-                        f"near matches: {near}",
-                        "Correct the code, or give the coordinates in a table of your own "
-                        "stations.",
-                    ) from error
+            kinds = np.array([_kind_of(str(code), own) for code in coded.values], dtype=object)
+            of_record = kinds[coded.codes]
+            lost = of_record == "unknown"
             if column == "stn":
-                site = kinds[coded.codes]
+                of_record[on_earth & np.isin(of_record, ("unknown", "space"))] = "roving"
+                of_record[in_space] = "space"
+                lost = of_record == "unknown"
+                site = of_record
+            if lost.any():
+                row = int(np.argmax(lost))
+                code = str(self.text(column)[row])
+                raise self.fail(
+                    row,
+                    column,
+                    f"the station {code!r} is not in the list of observatory codes; near matches: "
+                    f"{', '.join(near_codes(code, own))}",
+                    "Correct the code, give the coordinates in a table of your own stations, or "
+                    "give the position with the record (sys, ctr, pos1, pos2, pos3).",
+                )
         return site
+
+
+def _kind_of(code: str, own: Mapping[str, Station]) -> str:
+    if code == "":
+        return "fixed"
+    try:
+        return station(code, own).kind
+    except StationError:
+        return "unknown"
 
 
 class Judged(NamedTuple):

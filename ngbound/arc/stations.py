@@ -29,6 +29,8 @@ WGS84_FLATTENING = 1.0 / 298.257223563
 
 ROVING_CODES = ("247", "270")
 """Codes whose position stands in each record: roving observer, and the roving network."""
+ON_EARTH, IN_SPACE = ("WGS84", "ITRF", "IAU"), ("ICRF_KM", "ICRF_AU")
+"""Systems of positions that turn with a body, and those that do not."""
 KINDS = ("fixed", "roving", "space", "geocentre")
 
 

@@ -12,7 +12,9 @@ from numpy.typing import NDArray
 from ngbound.arc.errors_model import station_nights
 from ngbound.arc.misplaced import misread, second_tracks
 from ngbound.arc.observations import Arc
+from ngbound.arc.stations import record_position_km
 from ngbound.arc.time_stamps import time_shifts
+from ngbound.errors import StationError
 
 SAME_INSTANT_S = 2.0
 """Two records of one station closer than this are one observation, or a repeated one."""
@@ -23,6 +25,9 @@ JUMP_DEG_D = 10.0
 neighbours."""
 JUMP_SLACK_ARCSEC = 15.0
 FEWEST = 3
+SAME_SITE_KM = 1.0
+"""Positions of one station closer than this differ by less than any astrometry of today sees: a
+kilometre is 1.4 mas at 1 au."""
 MOST_AT_ONCE = 5
 """Records of one station at one instant that are compared with each other."""
 READINGS = {
@@ -87,18 +92,53 @@ def vet(arc: Arc) -> list[Finding]:
                 "told from a thrust.",
             )
         )
-    surplus = (t["site"] == "fixed").to_numpy(dtype=bool) & (t["sys"] != "").to_numpy(dtype=bool)
-    if surplus.any():
-        findings.append(
+    findings.extend(_surplus(used, rows))
+    return sorted(findings, key=lambda f: f.rows[:1])
+
+
+def _surplus(arc: Arc, rows: NDArray[np.int64]) -> list[Finding]:
+    """Positions in records of stations that have a place of their own in the list."""
+    t = arc.table
+    site, given = t["site"].to_numpy(dtype=object), (t["sys"] != "").to_numpy(dtype=bool)
+    codes = t["stn"].to_numpy(dtype=object)
+    found = []
+    for code in sorted(set(codes[given & (site != "roving")])):
+        mine = given & (codes == code)
+        mine &= t["sys"].to_numpy(dtype=object) != "IAU"
+        try:
+            place = arc.station(code)
+        except StationError:
+            continue
+        if not np.isfinite(place.longitude_deg) or not mine.any():
+            continue
+        if (site[mine] == "space").any():
+            words = (
+                "a position in space, which is used in place of the list of stations: if it is "
+                "wrong, the parallax is, and a thrust takes part of that up."
+            )
+        else:
+            off = max(
+                float(np.linalg.norm(record_position_km(*row) - place.itrf_km))
+                for row in set(t.loc[mine, ["sys", "pos1", "pos2", "pos3"]].itertuples(index=False))
+            )
+            words = (
+                "a position of their own, which is passed over in favour of the list of stations; "
+                f"the two lie {off:.1f} km apart"
+                + (
+                    ": if the record is right, the parallax is wrong by that much, and a thrust "
+                    "takes part of it up."
+                    if off > SAME_SITE_KM
+                    else ", which no thrust feels."
+                )
+            )
+        found.append(
             Finding(
-                tuple(int(r) for r in rows[surplus]),
+                tuple(int(r) for r in rows[mine]),
                 "surplus-position",
-                f"{int(surplus.sum())} records of fixed stations give a position of their own, "
-                "which is passed over in favour "
-                "of the list of stations.",
+                f"{int(mine.sum())} records of the fixed station {code} give {words}",
             )
         )
-    return sorted(findings, key=lambda f: f.rows[:1])
+    return found
 
 
 def _sky(arc: Arc) -> tuple[NDArray[np.float64], NDArray[np.float64]]:

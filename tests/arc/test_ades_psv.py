@@ -166,6 +166,30 @@ def test_roving_and_space(tmp_path: Path) -> None:
     assert arc.table.why_not[3] == "the record gives no position of the space station"
 
 
+def test_a_position_tells_where_the_station_is_whatever_its_code(tmp_path: Path) -> None:
+    head = "# version=2022\npermID|mode|stn|sys|ctr|pos1|pos2|pos3|obsTime|ra|dec|astCat\n"
+    cases = [
+        ("XYZ|ICRF_KM|399|6800.5|-45.25|120", "space", True),
+        ("XYZ|ICRF_AU|399|0.1|0.2|-0.1", "space", True),
+        ("XYZ|WGS84|399|12.5|-45.25|1200", "roving", True),
+        ("x_Y2|ITRF|399|12.5|5000.5|3800.25", "roving", True),
+        ("247|ICRF_KM|399|6800.5|-45.25|120", "space", True),
+        ("275|WGS84|399|12.5|-45.25|1200", "roving", True),
+        ("250|ITRF|399|12.5|5000.5|3800.25", "roving", True),
+        ("XYZ|IAU|399|12.5|-45.25|1200", "roving", False),
+        ("G96|WGS84|399|12.5|-45.25|1200", "fixed", True),
+    ]
+    rows = [
+        f"1|CCD|{c}|2024-03-{i + 1:02d}T05:06:07Z|10.5|20.5|Gaia2"
+        for i, (c, _, _) in enumerate(cases)
+    ]
+    table = read(tmp_path, head + "\n".join(rows) + "\n").table
+    assert table.site.tolist() == [site for _, site, _ in cases]
+    assert table.use.tolist() == [use for _, _, use in cases]
+    with pytest.raises(ArcError, match=r"line 3, column stn: the station 'XYZ'.*with the record"):
+        read(tmp_path, head + "1|CCD|XYZ||||||2024-03-01T05:06:07Z|10.5|20.5|Gaia2\n")
+
+
 def test_occultation(tmp_path: Path) -> None:
     text = (
         "# "

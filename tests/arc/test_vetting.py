@@ -1,5 +1,7 @@
 """Findings."""
 
+import re
+
 import numpy as np
 import pandas as pd
 import pytest
@@ -67,10 +69,25 @@ def test_few_and_single() -> None:
 
 
 def test_surplus_position() -> None:
-    table = two_stations().assign(sys="WGS84", ctr=399, pos1=1.0, pos2=2.0, pos3=3.0)
+    place = {"sys": "WGS84", "ctr": 399, "pos1": -110.789, "pos2": 32.443, "pos3": 2510.0}
+    table = two_stations().assign(**place)
     found = vet(Arc.from_frame(table))
-    assert [f.kind for f in found] == ["surplus-position"] and len(found[0].rows) == 6
-    assert str(found[0]).startswith("surplus-position: 6 records")
+    assert [(f.kind, f.rows) for f in found] == [
+        ("surplus-position", (0, 1, 2)),
+        ("surplus-position", (3, 4, 5)),
+    ]
+    assert str(found[0]).startswith("surplus-position: 3 records of the fixed station G96")
+    assert re.search(r" 0\.\d km apart, which no thrust feels\.$", found[0].sentence)
+    assert re.search(r" \d\.\d km apart: if the record is right, the parallax", found[1].sentence)
+
+
+def test_a_position_in_space_beside_the_code_of_a_fixed_station() -> None:
+    place = {"sys": ["", "", "ICRF_KM", "", "", ""], "pos1": 7000.0, "pos2": 1.0, "pos3": 1.0}
+    arc = Arc.from_frame(two_stations().assign(ctr=399, **place))
+    assert arc.table.site.tolist() == ["fixed"] * 2 + ["space"] + ["fixed"] * 3
+    found = vet(arc)
+    assert [(f.kind, f.rows) for f in found] == [("surplus-position", (2,))]
+    assert "used in place of the list" in found[0].sentence and "thrust" in found[0].sentence
 
 
 def long_path(n_nights: int = 12) -> pd.DataFrame:

@@ -11,7 +11,7 @@ from ngbound.simulate import Recipe, simulate_arc
 
 SIGMA_ARCSEC = 0.06
 WATCH = {
-    "code": "275",
+    "code": "LTN",
     "name": "Lantern",
     "every_nights": 5,
     "frames": 3,
