@@ -8,20 +8,38 @@ May import errors, arc, sky, motion, fit, limits, mass and report; never run or 
 """
 
 import difflib
+import math
 import re
 import tomllib
+import warnings
 from collections import Counter
 from collections.abc import Callable
 from pathlib import Path
 from typing import Annotated, Any, Literal, Self, TypeVar
 
 import numpy as np
-from pydantic import BaseModel, ConfigDict, Field, ValidationError, field_validator, model_validator
+from pydantic import (
+    BaseModel,
+    BeforeValidator,
+    ConfigDict,
+    Field,
+    ValidationError,
+    ValidationInfo,
+    field_validator,
+    model_validator,
+)
 
 from ngbound.arc import ErrorModel, user_stations
-from ngbound.errors import CaseError, StationError
+from ngbound.errors import CaseError, NgboundWarning, StationError
 from ngbound.limits import PRIOR_NAMES, PlannedNight
-from ngbound.mass import Outgassing, Photometry
+from ngbound.mass import (
+    DEFAULT_DIAMETERS_M,
+    KnownSize,
+    MeasuredDiameter,
+    Outgassing,
+    Photometry,
+    bulk_density,
+)
 from ngbound.motion import LAWS, ForceModel, Orbit, TableLaw, Thrust, Window
 from ngbound.sky import parse_time
 
@@ -340,8 +358,42 @@ class SamplingTable(Table):
         return prior
 
 
-Spec = float | str | dict[str, Any]
+def _number_text_or_table(value: Any) -> Any:
+    """Refuse what no number with an uncertainty can be; Python would take true for 1."""
+    number = isinstance(value, int | float) and not isinstance(value, bool)
+    if not (isinstance(value, str | dict) or (number and math.isfinite(value))):
+        raise ValueError('must be a number, a text such as "5 +- 1", or a table')
+    return value
+
+
+Spec = Annotated[float | str | dict[str, Any], BeforeValidator(_number_text_or_table)]
 """A number, a text such as "(2.0 +- 0.5)e26", or a table such as {low = 1, high = 2}."""
+
+EXAMPLES = {
+    "rate": 'rate = "(1.0 +- 0.2)e27" or "< 5 kg/s"',
+    "at": "at = 1.4",
+    "speed": 'speed = "0.8 +- 0.1 km/s"',
+    "collimation": 'collimation = "0.2 to 0.7"',
+    "density": 'density = "400 to 600 kg/m3"',
+    "diameter": 'diameter = "2.0 +- 0.3 km"',
+    "H": 'H = "18.2 +- 0.3"',
+    "albedo": 'albedo = "0.02 to 0.06"',
+}
+"""What a fault in one of these keys suggests to write."""
+
+
+def _sound_spec(key: str, make: Callable[..., Any], *arguments: Any, **options: Any) -> None:
+    """Build something from one key; its fault, said once and with an example of what is right."""
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", NgboundWarning)
+        try:
+            make(*arguments, **options)
+        except CaseError as error:
+            text = re.sub(rf"^(\w+ )?{key}(: | = .*? (?=must|is|cannot))", "", str(error))
+            text = text.removeprefix("In a distribution, ").rstrip(".")
+            offered = key in EXAMPLES and not re.search(r"write|such as|for instance|\?", text)
+            advice = f"; write for instance {EXAMPLES[key]}" if offered else ""
+            raise ValueError(text + advice) from error
 
 
 class InjectionTable(Table):
@@ -383,9 +435,9 @@ class OutgassingTable(Table):
     Rate, speed and collimation take a number, a text with an uncertainty, or a table.
     """
 
-    species: str = Field(default="H2O", description="Formula, which gives the molecular mass.")
     rate: Spec = Field(description="Production, molecules/s unless a unit stands beside it.")
-    at: float | str = Field(description="Heliocentric distance at which the rate holds, au.")
+    at: Spec = Field(description="Heliocentric distance at which the rate holds, au.")
+    species: str = Field(default="H2O", description="Formula, which gives the molecular mass.")
     speed: Spec | None = Field(
         default=None, description="Outflow speed, km/s, or the name of a law; default 0.85 r^-0.5."
     )
@@ -396,6 +448,24 @@ class OutgassingTable(Table):
     def given(self) -> dict[str, Any]:
         """The keys that were given, as `Outgassing.from_dict` takes them."""
         return self.model_dump(exclude_none=True)
+
+    @field_validator("rate", "at", "speed", "collimation")
+    @classmethod
+    def _sound_alone(cls, value: Any, info: ValidationInfo) -> Any:
+        """Each key by itself, so that a fault is told where it stands."""
+        if value is not None:
+            key = str(info.field_name)
+            sound = {"rate": "1 kg/s", "at": 1.0, "speed": "1 km/s", "species": "H2O"}
+            _sound_spec(key, Outgassing.from_dict, {**sound, key: value})
+        return value
+
+    @field_validator("species")
+    @classmethod
+    def _known(cls, species: str, info: ValidationInfo) -> str:
+        if "rate" in info.data and species != "dust":
+            table = {"rate": info.data["rate"], "at": 1.0, "species": species}
+            _sound_spec("species", Outgassing.from_dict, table)
+        return species
 
     @model_validator(mode="after")
     def _sound(self) -> Self:
@@ -410,20 +480,97 @@ class NucleusTable(Table):
         default=500.0,
         description="Bulk density, kg/m3; about 500 is common practice for comet nuclei.",
     )
+    diameter: Spec | None = Field(
+        default=None, description="Diameter where it is known otherwise than from H, m."
+    )
     H: Spec | None = Field(default=None, description="Absolute magnitude of the bare nucleus.")
     albedo: Spec | None = Field(
         default=None, description="Geometric albedo, for the diameter from brightness."
     )
-    coma: bool = Field(default=False, description="Whether H may hold light of a coma.")
+    coma: bool = Field(
+        default=False, strict=True, description="Whether H may hold light of a coma."
+    )
+    radiation_coefficient: float = Field(
+        default=1.0,
+        strict=True,
+        gt=0.0,
+        le=2.0,
+        description="C_R of radiation pressure: 1 absorbing sphere, 2 mirror.",
+    )
 
-    def photometry(self) -> Photometry | None:
-        """The brightness of the nucleus, or None when the case gives no H."""
+    def size(self) -> KnownSize | None:
+        """What is known of the size: the diameter if given, else the brightness, else None."""
+        if self.diameter is not None:
+            return MeasuredDiameter(self.diameter)
         return None if self.H is None else Photometry(self.H, self.albedo, self.coma)
 
+    @field_validator("density", "diameter", "H", "albedo")
+    @classmethod
+    def _sound(cls, value: Any, info: ValidationInfo) -> Any:
+        if value is None:
+            return value
+        if info.field_name == "albedo":
+            _sound_spec("albedo", Photometry, 18.0, value)
+        else:
+            makers = {"density": bulk_density, "diameter": MeasuredDiameter, "H": Photometry}
+            _sound_spec(str(info.field_name), makers[str(info.field_name)], value)
+        return value
+
     @model_validator(mode="after")
-    def _sound(self) -> Self:
-        _as_value_error(self.photometry)
+    def _albedo_has_use(self) -> Self:
+        if self.albedo is not None and self.H is None:
+            raise ValueError("albedo says nothing without H; give H beside it, or diameter instead")
         return self
+
+
+class ReachTable(Table):
+    """``[reach]``: which production rates would this arc have revealed?
+
+    What is not given here is taken from ``[nucleus]`` and ``[[outgassing]]``.
+    """
+
+    diameter: Spec | None = Field(
+        default=None, description="Size asked about, m; default that of [nucleus], else a range."
+    )
+    density: Spec | None = Field(default=None, description="Bulk density, kg/m3.")
+    species: tuple[str, ...] | None = Field(
+        default=None,
+        min_length=1,
+        description="Species asked about; default those of [[outgassing]], else H2O, CO2, CO.",
+    )
+    at: Positive | None = Field(
+        default=None,
+        description="Heliocentric distance asked about, au; default that of [[outgassing]], else "
+        "the arc's least.",
+    )
+    speed: Spec | None = Field(default=None, description="As in [[outgassing]].")
+    collimation: Spec | None = Field(default=None, description="As in [[outgassing]].")
+    diameters_m: tuple[Positive, ...] = Field(
+        default=DEFAULT_DIAMETERS_M, min_length=1, description="Sizes of the table and the figure."
+    )
+
+    def size(self) -> KnownSize | None:
+        """The size asked about, or None."""
+        return None if self.diameter is None else MeasuredDiameter(self.diameter)
+
+    def asks_beyond(self) -> bool:
+        """Whether species, distance, speed or collimation are asked about for themselves."""
+        own = (self.species, self.at, self.speed, self.collimation)
+        return any(given is not None for given in own)
+
+    @field_validator("diameter", "density", "species", "speed", "collimation")
+    @classmethod
+    def _sound(cls, value: Any, info: ValidationInfo) -> Any:
+        if value is None:
+            return value
+        name = str(info.field_name)
+        if name in ("diameter", "density"):
+            _sound_spec(name, MeasuredDiameter if name == "diameter" else bulk_density, value)
+        for species in value if name == "species" else ():
+            _sound_spec(name, Outgassing, "1e26 1/s", at=1.0, species=species)
+        if name in ("speed", "collimation"):
+            _sound_spec(name, Outgassing, "1e26 1/s", at=1.0, **{name: value})
+        return value
 
 
 class OutputTable(Table):
@@ -455,6 +602,7 @@ class Case(Table):
     planned: tuple[PlannedTable, ...] = ()
     outgassing: tuple[OutgassingTable, ...] = ()
     nucleus: NucleusTable = NucleusTable()
+    reach: ReachTable | None = None
     output: OutputTable = OutputTable()
 
     def own_stations(self) -> dict[str, dict[str, Any]]:
@@ -597,7 +745,8 @@ CHOICES = {
 
 
 def _lower_first(text: str) -> str:
-    return text[:1].lower() + text[1:]
+    """A sentence as a clause; names such as H2O keep their capital."""
+    return text[:1].lower() + text[1:] if text[1:2].islower() else text
 
 
 def _required_keys(model: type[BaseModel]) -> str:
@@ -680,5 +829,12 @@ def _fault(where: str, model: type[BaseModel], fault: dict[str, Any]) -> str:
         return f"{where}: {table}{key} is missing and has no default."
     message = fault["msg"].removeprefix("Value error, ")
     message = re.sub(r"^(Input|String|List|Tuple|Value) should ", "must ", message)
-    shown = "" if isinstance(given, dict) else f" = {given!r}"
-    return f"{where}: {table}{key}{shown}: {_lower_first(message).rstrip('.')}."
+    message = re.sub(r"a valid boolean.*", "true or false", message)
+    shown = "" if isinstance(given, dict) else f" = {_as_toml(given)}"
+    ending = "" if message.endswith("?") else "."
+    return f"{where}: {table}{key}{shown}: {_lower_first(message).rstrip('.')}{ending}"
+
+
+def _as_toml(value: Any) -> str:
+    """A value as the file spells it, as far as that can be told."""
+    return str(value).lower() if isinstance(value, bool) else repr(value)

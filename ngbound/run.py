@@ -5,12 +5,13 @@ earlier and hand back what they have, which prints itself.  May import every roo
 ngbound.case; never cli.
 """
 
+import html
 import os
 import secrets
 import sys
 import time
 import warnings
-from collections.abc import Iterator, Sequence
+from collections.abc import Callable, Iterator, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -24,8 +25,8 @@ from scipy.stats import chi2
 from tqdm import tqdm
 
 from ngbound.arc import Arc, Noise, Survey, read_arc, survey, treatment_text, vet
-from ngbound.case import Case, case_for
-from ngbound.errors import CaseError, NgboundWarning
+from ngbound.case import Case, ReachTable, case_for
+from ngbound.errors import CaseError, FitError, LimitError, MassError, NgboundWarning
 from ngbound.fit import (
     Comparison,
     Diagnostics,
@@ -51,17 +52,35 @@ from ngbound.limits import (
     upper_limit,
     verdict,
 )
-from ngbound.mass import MassBound, mass_bound
-from ngbound.motion import compile_notice
+from ngbound.mass import (
+    DEFAULT_SPECIES,
+    ActiveArea,
+    AreaToMass,
+    LawDeparture,
+    MassBound,
+    MassCeiling,
+    Outgassing,
+    Reach,
+    active_areas,
+    law_departures,
+    mass_bound,
+    mass_ceiling,
+    radiation_bound,
+    reach,
+)
+from ngbound.motion import Thrust, compile_notice
 from ngbound.report import (
     Record,
     SmallTable,
+    budget_words,
     catalogue_table,
     direction_map,
     mass_figure,
     posterior_figure,
     prior_name,
     provenance,
+    reach_figure,
+    render_mass,
     render_report,
     residual_by_station,
     residual_fan,
@@ -104,9 +123,9 @@ def run_case(path: str | Path, *, progress: bool = False, **choices: Any) -> Rec
         arc = read_the_arc(case, step)
         fits = fit_both(case, arc, step)
         bounds = bound_the_thrust(fits, step, case.detection.vary_errors)
-        mass = bound_the_mass(bounds, step)
+        weighed = weigh(bounds, step)
         with step("draw the figures"):
-            figures = draw_figures(bounds, mass)
+            figures = draw_figures(bounds, weighed)
     tables: list[SmallTable | str] = [
         station_table(fits.null),
         station_table(fits.push),
@@ -116,7 +135,7 @@ def run_case(path: str | Path, *, progress: bool = False, **choices: Any) -> Rec
         fits.push.error_report,
         str(bounds.diagnostics),
     ]
-    record = compose_record(Path(path), bounds, mass, heard, step.seconds)
+    record = compose_record(Path(path), bounds, weighed, heard, step.seconds)
     with step("write the results"):
         write_results(case, record, fits, tables, figures)
     return record
@@ -149,24 +168,22 @@ def limit_case(
     return bound_the_thrust(fits, step, vary_errors)
 
 
-def mass_case(path: str | Path, *, progress: bool = False, **choices: Any) -> MassBound:
-    """The mass and the diameter that the limit demands.
+def mass_case(path: str | Path, *, progress: bool = False, **choices: Any) -> "Weighed":
+    """The mass and the diameter that the limit demands, and what outgassing the arc would reveal.
 
     Raises
     ------
     CaseError
-        The case holds no outgassing budget.
+        The case holds neither an outgassing budget nor a [reach] table.
     """
     case, step = case_for(path, **choices), Steps(progress)
-    if not case.outgassing:
+    if not case.outgassing and case.reach is None:
         raise CaseError(
-            f"{path} holds no outgassing budget, without which no mass follows from a limit; "
-            "add an [[outgassing]] table with rate and at."
+            f"{path} holds no outgassing budget, without which no mass follows from a limit; add "
+            "an [[outgassing]] table with rate and at, or a [reach] table to ask which rate the "
+            "arc would have revealed."
         )
-    bounds = bound_the_thrust(fit_both(case, read_the_arc(case, step), step), step)
-    found = bound_the_mass(bounds, step)
-    assert found is not None
-    return found
+    return weigh(bound_the_thrust(fit_both(case, read_the_arc(case, step), step), step), step)
 
 
 def inject_case(
@@ -390,28 +407,146 @@ def threshold_of(fits: "Fits") -> DetectionThreshold:
     return detection_threshold(fits.push, false_alarm=chosen.false_alarm, power=chosen.power)
 
 
-def bound_the_mass(bounds: "Bounds", step: "Steps") -> MassBound | None:
-    """The mass that the outgassing budget demands, or None where the case gives no budget."""
-    case = bounds.fits.case
-    budget = case.budget()
-    if budget is None:
-        return None
-    nucleus, posterior, thrust = case.nucleus, bounds.posterior, case.thrust.thrust()
-    with step("mass bound"):
-        return mass_bound(
-            posterior.A_mag,
-            budget,
-            g_at=lambda r_au: float(thrust.g(r_au)),
-            density=nucleus.density,
-            confidence=case.detection.confidence,
-            threshold=bounds.threshold,
-            seed=case.sampling.seed,
-            photometry=nucleus.photometry(),
-            n_effective=posterior.ess["|A|"],
+def weigh(bounds: "Bounds", step: "Steps") -> "Weighed":
+    """All that the thrust says of the body; what does not follow is said instead of found."""
+    case, remarks = bounds.fits.case, list[str]()
+    budget, size, g = case.budget(), case.nucleus.size(), law_in_window(case.thrust.thrust())
+    bound = ceiling = found = light = None
+    active: tuple[ActiveArea, ...] = ()
+    departures: tuple[LawDeparture, ...] = ()
+    if budget is not None:
+        common: dict[str, Any] = {
+            "g_at": g,
+            "density": case.nucleus.density,
+            "confidence": case.detection.confidence,
+            "seed": case.sampling.seed,
+            "n_effective": bounds.posterior.ess["|A|"],
+            "photometry": size,
+        }
+        with step("mass bound"):
+            with said_instead(remarks, "No lower bound on the mass"):
+                bound = mass_bound(
+                    bounds.posterior.A_mag,
+                    budget,
+                    threshold=bounds.threshold,
+                    **common,
+                )
+            if bounds.judged.kind == "detection":
+                with said_instead(remarks, "No upper bound on the mass"):
+                    ceiling = mass_ceiling(bounds.posterior.A_mag, budget, **common)
+        with step("active areas"):
+            for emission in budget.emissions:
+                with said_instead(remarks, "No active area"):
+                    active += active_areas(
+                        Outgassing([emission]), diameter=size, seed=case.sampling.seed
+                    )
+            with said_instead(remarks, "Thrust law and sublimation were not compared"):
+                departures = law_departures(budget, g, bounds.fits.r_au)
+    with step("reach of the arc"), said_instead(remarks, "Reach of the arc"):
+        found = reach_of(bounds, budget, g)
+    with step("radiation pressure"), said_instead(remarks, "No bound from radiation pressure"):
+        light = push_of_sunlight(bounds)
+    return Weighed(bounds.fits, bound, ceiling, found, light, active, departures, tuple(remarks))
+
+
+def law_in_window(thrust: Thrust) -> Callable[[float], float]:
+    """g(r) of a thrust, zero outside an activity window that goes by distance."""
+
+    def g(r_au: float) -> float:
+        window = thrust.window
+        if window is not None and window.by == "distance":
+            if not window.start <= r_au <= window.end:
+                return 0.0
+        return float(thrust.g(r_au))
+
+    return g
+
+
+def reach_of(bounds: "Bounds", budget: Outgassing | None, g: Callable[[float], float]) -> Reach:
+    """Which production rates the arc would have revealed, as the case asks it."""
+    case, asked = bounds.fits.case, bounds.fits.case.reach or ReachTable()
+    options: dict[str, Any] = {
+        "g_at": g,
+        "size": asked.size() or case.nucleus.size(),
+        "density": case.nucleus.density if asked.density is None else asked.density,
+        "diameters_m": asked.diameters_m,
+        "seed": case.sampling.seed,
+    }
+    if budget is not None and not asked.asks_beyond():
+        return reach(bounds.threshold, outgassing=budget, **options)
+    known = {} if budget is None else {e.species: e for e in budget.emissions}
+    species = asked.species or tuple(known) or DEFAULT_SPECIES
+    r_au = bounds.fits.r_au
+    strongest = float(r_au[np.argmax([g(float(r)) for r in r_au])])
+    at = asked.at or next((e.at_au for e in known.values()), strongest)
+    shared = {name: known[name] for name in species if name in known}
+    return reach(
+        bounds.threshold,
+        species=species,
+        at=at,
+        speed=asked.speed or {name: e.speed for name, e in shared.items()} or None,
+        collimation=asked.collimation
+        or {name: e.collimation for name, e in shared.items()}
+        or None,
+        **options,
+    )
+
+
+def push_of_sunlight(bounds: "Bounds") -> AreaToMass:
+    """What the limit on a radial thrust says if sunlight pushes.
+
+    Radiation pressure falls as r^-2: under another law, a lag or a window the arc is fitted once
+    more with an inverse-square thrust of the same components, and limited in linear theory.
+
+    Raises
+    ------
+    MassError
+        R is not among the components, or the arc cannot be fitted so.
+    """
+    fits, limit, origin = bounds.fits, bounds.limit, ""
+    thrust = fits.case.thrust.thrust()
+    if "R" not in thrust.components:
+        raise MassError(
+            "The thrust looked for has no radial component; free R among the [thrust] components."
         )
+    r_au = np.array([0.5, 1.0, 2.0, 5.0])
+    plain = np.allclose(thrust.g(r_au) * r_au**2, 1.0, rtol=1e-9)
+    if not plain or thrust.window is not None or float(thrust.lag.value) != 0.0:
+        origin = f"from a fit with an inverse-square thrust instead of the law {thrust.law.name}"
+        try:
+            fit = fit_orbit(
+                fits.arc,
+                thrust=Thrust("inverse-square", components=thrust.components),
+                initial=fits.null.orbit,
+                error_model=fits.case.errors.error_model(),
+                forces=fits.case.forces.force_model(),
+                reject=fits.case.fit.reject,
+            )
+            limit = upper_limit(fit, confidence=fits.case.detection.confidence)
+        except (FitError, LimitError) as error:
+            raise MassError(
+                "Radiation pressure falls as r^-2, and the arc could not be fitted with such a "
+                f"thrust beside the law {thrust.law.name}: {error}"
+            ) from error
+    return radiation_bound(
+        limit,
+        coefficient=fits.case.nucleus.radiation_coefficient,
+        density=fits.case.nucleus.density,
+        origin=origin,
+        size=fits.case.nucleus.size(),
+    )
 
 
-def draw_figures(bounds: "Bounds", mass: MassBound | None) -> dict[str, Figure]:
+@contextmanager
+def said_instead(remarks: list[str], what: str) -> Iterator[None]:
+    """A result that does not follow is said in the report, and costs nothing else."""
+    try:
+        yield
+    except MassError as error:
+        remarks.append(f"{what}: {error}")
+
+
+def draw_figures(bounds: "Bounds", weighed: "Weighed") -> dict[str, Figure]:
     """All figures of the report, by file name without ending."""
     fits = bounds.fits
     with matplotlib.rc_context({"backend": "Agg"}):
@@ -422,15 +557,17 @@ def draw_figures(bounds: "Bounds", mass: MassBound | None) -> dict[str, Figure]:
         }
         if len(fits.push.components) > 1:
             figures["direction_map"] = direction_map(bounds.threshold)
-        if mass is not None:
-            figures["mass"] = mass_figure(mass)
+        if weighed.bound is not None:
+            figures["mass"] = mass_figure(weighed.bound, weighed.ceiling)
+        if weighed.reach is not None:
+            figures["reach"] = reach_figure(weighed.reach)
     return figures
 
 
 def compose_record(
     path: Path,
     bounds: "Bounds",
-    mass: MassBound | None,
+    weighed: "Weighed",
     heard: list[str],
     seconds: dict[str, float],
 ) -> Record:
@@ -449,7 +586,7 @@ def compose_record(
         "posterior": bounds.posterior,
         "limit": bounds.limit,
         "verdict": bounds.judged,
-        "mass": mass,
+        **weighed.found(),
         "suspicions": bounds.suspicions,
         "degeneracies": list(orbit_degeneracy(bounds.fits.push).sentences),
         "diagnostics": bounds.diagnostics,
@@ -461,7 +598,7 @@ def compose_record(
         "provenance": provenance(inputs),
         "timings_s": seconds,
     }
-    return Record({"sentence": bounds.sentence(mass), **data})
+    return Record({"sentence": bounds.sentence(weighed.bound), **data})
 
 
 def write_results(
@@ -477,16 +614,6 @@ def write_results(
     texts = {"report.txt": report, "residuals.csv": residuals_csv(fits.null)}
     assert case.output.folder is not None
     record.write(case.output.folder, figures, texts, formats=(ending,))
-
-
-def budget_in_words(mass: MassBound) -> str:
-    """Median mass loss, speed and collimation of each species."""
-    return "a mass loss of " + " and ".join(
-        f"{emission.rate.median * emission.kg_per_count:.3g} kg/s of {emission.species} at "
-        f"{emission.at_au:g} au (speed {emission.median_speed_m_s:.0f} m/s, collimation "
-        f"{emission.collimation.median:.2g})"
-        for emission in mass.outgassing.emissions
-    )
 
 
 def summary_of(fits: "Fits") -> dict[str, Any]:
@@ -543,6 +670,11 @@ class Fits:
     null: Fit
     push: Fit
     comparison: Comparison
+
+    @property
+    def r_au(self) -> np.ndarray:
+        """Heliocentric distances (n,) of the observations, au."""
+        return self.null.residuals["r_au"].to_numpy(dtype=float)
 
     def __str__(self) -> str:
         return "\n\n".join(
@@ -625,11 +757,65 @@ class Bounds:
             estimate_sigma_au_d2=float(judged.estimate_sigma.value),
             found_sigma=judged.significance_sigma,
             reasons=judged.reasons,
-            budget="" if mass is None else budget_in_words(mass),
+            budget="" if mass is None else budget_words(mass.to_dict()),
             mass_kg=None if mass is None else float(mass.mass.value),
             diameter_m=None if mass is None else float(mass.diameter.value),
             mass_confidence=None if mass is None else mass.confidence,
         )
+
+
+@dataclass(frozen=True, eq=False)
+class Weighed:
+    """What the thrust says of the body: mass, reach, sunlight, active surface.
+
+    Attributes
+    ----------
+    bound : MassBound or None
+        None without a budget, or where no lower bound follows.
+    ceiling : MassCeiling or None
+        Only where the thrust was detected.
+    reach : Reach or None
+    radiation : AreaToMass or None
+    active : tuple of ActiveArea
+    departures : tuple of LawDeparture
+        The thrust law beside the sublimation of the species, over the arc.
+    remarks : tuple of str
+        Why something of this does not follow.
+    """
+
+    fits: Fits = field(repr=False)
+    bound: MassBound | None
+    ceiling: MassCeiling | None
+    reach: Reach | None
+    radiation: AreaToMass | None
+    active: tuple[ActiveArea, ...]
+    departures: tuple[LawDeparture, ...]
+    remarks: tuple[str, ...]
+
+    def found(self) -> dict[str, Any]:
+        """The results under the keys of the record."""
+        return {
+            "mass": self.bound,
+            "mass_ceiling": self.ceiling,
+            "reach": self.reach,
+            "radiation": self.radiation,
+            "active_areas": list(self.active),
+            "law_departures": list(self.departures),
+            "mass_remarks": list(self.remarks),
+        }
+
+    def to_dict(self) -> dict[str, Any]:
+        """Object and results; those of the mass bound stand at the top."""
+        whole = Record({"object": self.fits.arc.name, **self.found()}).data
+        return {**(whole.pop("mass") or {}), **whole}
+
+    def __str__(self) -> str:
+        return render_mass(Record(self.found()).data)
+
+    def _repr_html_(self) -> str:
+        parts = (self.bound, self.ceiling, self.reach, self.radiation, *self.active)
+        shown = [one._repr_html_() for one in (*parts, *self.departures) if one is not None]
+        return "".join([*shown, *(f"<p>{html.escape(text)}</p>" for text in self.remarks)])
 
 
 @dataclass(frozen=True, eq=False)

@@ -55,14 +55,9 @@ from .distributions import (
     parse_distribution,
 )
 from .explanations import Explanation
-from .mass_bound import (
-    InputShare,
-    LawCheck,
-    MassBound,
-    bounds_by_distance,
-    mass_bound,
-    momentum_mass,
-)
+from .mass_bound import InputShare, MassBound, bounds_by_distance, mass_bound, momentum_mass
+from .mass_ceiling import MassCeiling, mass_ceiling
+from .momentum_model import LawCheck
 from .outgassing import (
     DEFAULT_COLLIMATION,
     DEFAULT_SPEED_LAW,
@@ -75,15 +70,26 @@ from .outgassing import (
     thermal_speed,
 )
 from .quoted import Geometry, QuotedPaper, QuotedResult, QuotedThreshold
-from .radiation import AreaToMass, area_to_mass, radiation_acceleration
-from .reach import RevealedRate, revealed_rate
+from .radiation import AreaToMass, area_to_mass, radiation_acceleration, radiation_bound
+from .reach import (
+    DEFAULT_DIAMETERS_M,
+    DEFAULT_SPECIES,
+    Reach,
+    ReachRow,
+    RevealedRate,
+    reach,
+    revealed_rate,
+)
 from .reconcile import Reconciliation, reconcile
 from .results import ThrustResult
 from .size import (
     DEFAULT_ALBEDO,
     DEFAULT_DENSITY,
+    KnownSize,
+    MeasuredDiameter,
     Photometry,
     SizeCheck,
+    bulk_density,
     photometric_diameter_m,
     sphere_diameter_m,
     sphere_mass_kg,
@@ -92,10 +98,12 @@ from .sublimation import (
     ICES,
     ActiveArea,
     Ice,
+    LawDeparture,
     Sublimation,
     active_area,
     active_areas,
     largest_rate,
+    law_departures,
     sublimation,
     sublimation_law,
 )
@@ -113,6 +121,8 @@ __all__ = [
     "DEFAULT_ALBEDO",
     "DEFAULT_COLLIMATION",
     "DEFAULT_DENSITY",
+    "DEFAULT_DIAMETERS_M",
+    "DEFAULT_SPECIES",
     "DEFAULT_SPEED_LAW",
     "Distribution",
     "Emission",
@@ -124,10 +134,14 @@ __all__ = [
     "ICES",
     "Ice",
     "InputShare",
+    "KnownSize",
     "LawCheck",
+    "LawDeparture",
     "LogNormal",
     "LogUniform",
     "MassBound",
+    "MassCeiling",
+    "MeasuredDiameter",
     "Misfit",
     "Normal",
     "NumberAudit",
@@ -137,6 +151,8 @@ __all__ = [
     "QuotedResponse",
     "QuotedResult",
     "QuotedThreshold",
+    "Reach",
+    "ReachRow",
     "Reading",
     "Reconciliation",
     "RelationTest",
@@ -158,14 +174,19 @@ __all__ = [
     "audit_numbers",
     "audit_threshold",
     "bounds_by_distance",
+    "bulk_density",
     "largest_rate",
+    "law_departures",
     "law_history",
     "mass_bound",
+    "mass_ceiling",
     "mass_loss_rate",
     "momentum_mass",
     "parse_distribution",
     "photometric_diameter_m",
     "radiation_acceleration",
+    "radiation_bound",
+    "reach",
     "reconcile",
     "revealed_rate",
     "sagitta_sigma",

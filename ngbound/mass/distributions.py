@@ -40,6 +40,19 @@ def _short(value: float, digits: int = 4) -> str:
     return mantissa + e + exponent
 
 
+def _with_errors(value: float, errors: Mapping[str, float]) -> str:
+    """A value and its errors by sign, with one power of ten: "5 +2 -1", "(3 +- 0.8)e26"."""
+    power = int(f"{value:.3e}".split("e")[1]) if value else 0
+    scale = 1.0 if -4 < power < 5 else float(f"1e{power}")
+    told = " ".join(
+        [
+            _short(value / scale),
+            *(f"{sign}{_short(error / scale, 3)}" for sign, error in errors.items()),
+        ]
+    )
+    return told if scale == 1.0 else f"({told})e{power}"
+
+
 @dataclass(frozen=True)
 class Distribution(ABC):
     """Base of all distributions; values are floats in whatever unit the owner keeps."""
@@ -106,7 +119,7 @@ class Normal(Distribution):
         return self.value + self.sigma * special.ndtri(low + (high - low) * np.asarray(u))
 
     def __str__(self) -> str:
-        return f"{_short(self.value)} +- {_short(self.sigma, 3)}"
+        return _with_errors(self.value, {"+- ": self.sigma})
 
 
 @dataclass(frozen=True)
@@ -141,7 +154,7 @@ class SplitNormal(Distribution):
         return self.value + np.where(z < 0, self.minus, self.plus) * z
 
     def __str__(self) -> str:
-        return f"{_short(self.value)} +{_short(self.plus, 3)} -{_short(self.minus, 3)}"
+        return _with_errors(self.value, {"+": self.plus, "-": self.minus})
 
 
 @dataclass(frozen=True)
@@ -153,7 +166,7 @@ class Uniform(Distribution):
     high: float
 
     def __post_init__(self) -> None:
-        _require(self.high > self.low, "high", self.high, f"above low = {self.low:g}")
+        _require(self.high > self.low, "high", self.high, f"above low = {self.low:g} (swap them)")
 
     def ppf(self, u: np.ndarray) -> np.ndarray:
         return self.low + (self.high - self.low) * np.asarray(u)
@@ -172,7 +185,7 @@ class LogUniform(Distribution):
 
     def __post_init__(self) -> None:
         _require(self.low > 0, "low", self.low, "positive")
-        _require(self.high > self.low, "high", self.high, f"above low = {self.low:g}")
+        _require(self.high > self.low, "high", self.high, f"above low = {self.low:g} (swap them)")
 
     def ppf(self, u: np.ndarray) -> np.ndarray:
         return self.low * (self.high / self.low) ** np.asarray(u)
@@ -191,7 +204,7 @@ class Triangular(Distribution):
     high: float
 
     def __post_init__(self) -> None:
-        _require(self.high > self.low, "high", self.high, f"above low = {self.low:g}")
+        _require(self.high > self.low, "high", self.high, f"above low = {self.low:g} (swap them)")
         _require(
             self.low <= self.mode <= self.high,
             "mode",

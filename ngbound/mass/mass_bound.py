@@ -43,10 +43,10 @@ from .size import (
     DEFAULT_DENSITY_SOURCE,
     KnownSize,
     SizeCheck,
+    bulk_density,
     size_check,
     sphere_diameter_m,
 )
-from .size import density as density_from
 
 DENSITY = "bulk density"
 
@@ -215,6 +215,7 @@ class MassBound:
             "density_kg_m3": self.density.to_dict(),
             "outgassing": self.outgassing.to_dict(),
             "inputs": [s.to_dict() for s in self.inputs],
+            "table": self.table(),
             "dominant": self.dominant,
             "size_check": None if self.size_check is None else self.size_check.to_dict(),
             "law_checks": [c.to_dict() for c in self.law_checks],
@@ -287,7 +288,7 @@ def mass_bound(
     checked_confidence(confidence)
     g_at = law_of(g_at, limit_or_samples)
     rng = np.random.default_rng(seed)
-    bulk = density_from(density)
+    bulk = bulk_density(density)
     acceleration = read_acceleration(limit_or_samples, limit_confidence, n_effective)
     samples = acceleration.magnitudes
     n = monte_carlo_size(samples, n_draws)
@@ -359,9 +360,10 @@ def _with_measured_rates(outgassing: Outgassing) -> Outgassing:
     measured = [e for e in outgassing.emissions if not isinstance(e.rate, AtMost)]
     if not measured:
         raise MassError(
-            "Every rate of the budget is an upper limit: with the thrust limited from above too, "
-            "no mass is excluded. Give a measured rate of at least one species, or ask "
-            "`revealed_rate` which rate this arc would have shown."
+            "Every rate of the budget is an upper limit, so that no mass is excluded from below: a "
+            "body of any mass could have given less gas. Give a measured rate of at least one "
+            "species; or ask which rate this arc would have revealed ([reach], `reach`); a thrust "
+            "that was detected bounds the mass from above (`mass_ceiling`)."
         )
     return Outgassing(measured)
 

@@ -33,8 +33,7 @@ from .momentum_model import (
 )
 from .notebook import as_html
 from .outgassing import Outgassing
-from .size import density as density_from
-from .size import sphere_diameter_m
+from .size import KnownSize, bulk_density, sphere_diameter_m, sphere_mass_kg
 
 
 @dataclass(frozen=True)
@@ -44,6 +43,9 @@ class MassCeiling:
     ``mass``, ``diameter``: the ``confidence`` quantile of M and D, with their Monte Carlo errors;
     ``joint_confidence``: what can be claimed together with the quoted confidence of rates that are
     upper limits (Bonferroni); ``acceleration_lower``: the (1 - confidence) quantile of |A|, au/d2.
+    ``density_allowed`` (kg/m3): the bulk density that a sphere of the known ``size`` cannot exceed;
+    ``verdict`` on it: "clash" below the 2.5th percentile of the density assumed, "tension" below
+    its 16th, else "agree".
     """
 
     mass: Quantity
@@ -56,6 +58,9 @@ class MassCeiling:
     density: Distribution
     limits: tuple[str, ...]
     n_draws: int
+    size: KnownSize | None = None
+    density_allowed: Quantity | None = None
+    verdict: str = ""
 
     def sentence(self) -> str:
         """The bound in words, with what it rests on."""
@@ -63,7 +68,7 @@ class MassCeiling:
         joint = ""
         if self.joint_confidence < self.confidence:
             joint = f" (at least {percent(self.joint_confidence)} together with that of the limits)"
-        return (
+        text = (
             f"The thrust was detected (|A| > "
             f"{rounded(float(self.acceleration_lower.value), 2, outward='down')} au/d2 at "
             f"{percent(self.confidence)}), so that the same budget{held if self.limits else ''} "
@@ -73,6 +78,14 @@ class MassCeiling:
             f"{self.density} kg/m3, at {percent(self.confidence)} confidence{joint}, if nothing "
             "but the species named pushes."
         )
+        if self.size is not None and self.density_allowed is not None:
+            median_m = self.size.distribution.median
+            allowed = rounded(float(self.density_allowed.value), 2, outward="up")
+            text += (
+                f" A sphere of the {self.size.name}, {length_text(median_m, outward='')}, must "
+                f"then have a bulk density below {allowed} kg/m3: {self.verdict}."
+            )
+        return text
 
     def __str__(self) -> str:
         return self.sentence()
@@ -93,6 +106,10 @@ class MassCeiling:
             "density_kg_m3": self.density.to_dict(),
             "limits": list(self.limits),
             "n_draws": self.n_draws,
+            "density_allowed_kg_m3": None
+            if self.density_allowed is None
+            else float(self.density_allowed.value),
+            "verdict": self.verdict,
             "sentence": self.sentence(),
         }
 
@@ -107,6 +124,7 @@ def mass_ceiling(
     seed: int | np.random.Generator = 1,
     n_draws: int | None = None,
     n_effective: float | None = None,
+    photometry: KnownSize | None = None,
 ) -> MassCeiling:
     """Upper bound on mass and diameter; only for a thrust that was detected.
 
@@ -116,7 +134,7 @@ def mass_ceiling(
         Posterior of a detected thrust, or draws of |A| (n,) or of its components (n, k), au/d2.
     outgassing : Outgassing
         All that can push; rates that are upper limits are held at their limit.
-    g_at, density, confidence, seed, n_draws, n_effective
+    g_at, density, confidence, seed, n_draws, n_effective, photometry
         As in `mass_bound`.
 
     Raises
@@ -128,7 +146,7 @@ def mass_ceiling(
     """
     checked_confidence(confidence)
     rng = np.random.default_rng(seed)
-    bulk = density_from(density)
+    bulk = bulk_density(density)
     acceleration = read_acceleration(samples, None, n_effective)
     if len(acceleration.magnitudes) == 1:
         raise MassError(
@@ -145,6 +163,13 @@ def mass_ceiling(
     n_eff = float(min(n, acceleration.n_effective or len(acceleration.magnitudes)))
     mass_high, mass_error = quantile_and_error(mass, confidence, n_eff)
     diameter_high, diameter_error = quantile_and_error(diameter, confidence, n_eff)
+    allowed, verdict = None, ""
+    if photometry is not None:
+        volume = sphere_mass_kg(photometry.diameter_m(rng, n), 1.0)
+        highest = float(np.quantile(mass / volume, confidence))
+        low, bottom = (float(bulk.ppf(np.asarray(p))) for p in (0.15866, 0.025))
+        verdict = "clash" if highest < bottom else "tension" if highest < low else "agree"
+        allowed = highest * u.kg / u.m**3
     limits = [e for e in outgassing.emissions if isinstance(e.rate, AtMost)]
     quoted = [e.rate.confidence or 1.0 for e in limits if isinstance(e.rate, AtMost)]
     return MassCeiling(
@@ -158,6 +183,9 @@ def mass_ceiling(
         bulk,
         tuple(f"{e.species} {e.rate} {e.rate_unit} at {e.at_au:g} au" for e in limits),
         n,
+        photometry,
+        allowed,
+        verdict,
     )
 
 

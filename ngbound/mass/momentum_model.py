@@ -1,6 +1,7 @@
 """ln M as a function of named uncertain inputs, the acceleration among them.
 
-May import: constants, errors, limits, and from its own room distributions and outgassing.
+May import: constants, errors, limits, and from its own room distributions, notebook and
+outgassing.
 
 What `mass_bound` and `mass_ceiling` share: reading a posterior or a limit, the thrust law at the
 distances of the measurements, and the force over g summed over species.
@@ -21,6 +22,7 @@ from ngbound.errors import CaseError, MassError, NgboundWarning
 from ngbound.limits import Posterior, UpperLimit
 
 from .distributions import Fixed
+from .notebook import as_html
 from .outgassing import Emission, Outgassing
 
 AU_D2 = u.au / u.day**2
@@ -62,9 +64,12 @@ class LawCheck:
             f"{self.r1_au:g} au ({self.sigma:.1f} sigma)"
         )
 
+    def _repr_html_(self) -> str:
+        return as_html([f"{self}."])
+
     def to_dict(self) -> dict[str, Any]:
         """JSON-able description."""
-        return dict(vars(self))
+        return {**vars(self), "sentence": str(self)}
 
 
 def read_acceleration(

@@ -1,6 +1,6 @@
 """Outgassing budgets: production rates, speeds and collimation -> force on the nucleus.
 
-May import: constants, errors, and from its own room distributions.
+May import: constants, errors, and from its own room distributions and notebook.
 
 Force of one species at the distance r of its measurement: F = zeta Q m v (N), with Q molecules/s
 of mass m (or a mass-loss rate directly), v the outflow speed and zeta the collimation: the net
@@ -32,8 +32,10 @@ from .distributions import (
     Normal,
     SplitNormal,
     Triangular,
+    number_text,
     parse_distribution,
 )
+from .notebook import as_html
 
 AVOGADRO = 6.02214076e23
 """Molecules per mole: SI, exact."""
@@ -133,11 +135,37 @@ LimitsAs: TypeAlias = Literal["zero", "limit", "uniform"]
 _KIND_LABELS = {"rate": "production rate", "speed": "outflow speed", "collimation": "collimation"}
 
 
+_WORDS = {
+    "water": "H2O",
+    "carbon dioxide": "CO2",
+    "carbon monoxide": "CO",
+    "hydroxyl": "OH",
+    "nitrogen": "N2",
+    "hydrogen": "H2",
+    "oxygen": "O2",
+    "methane": "CH4",
+    "ammonia": "NH3",
+    "methanol": "CH3OH",
+    "ethane": "C2H6",
+    "formaldehyde": "H2CO",
+    "nickel": "Ni",
+}
+
+
+def _meant(species: str) -> str:
+    """The known species that a misspelt one stands for; "" if none is near."""
+    if species.casefold() in _WORDS:
+        return _WORDS[species.casefold()]
+    plain = species.casefold().replace("0", "o")
+    alike = [known for known in MOLAR_MASS_G if known.casefold() == plain]
+    return next(iter(alike or difflib.get_close_matches(species, MOLAR_MASS_G, 1, 0.3)), "")
+
+
 def molecule_mass_kg(species: str) -> float:
     """Mass of one molecule in kg; CaseError for an unknown species."""
     if species not in MOLAR_MASS_G:
-        near = difflib.get_close_matches(species, MOLAR_MASS_G, 1, 0.3)
-        hint = f" Did you mean {near[0]!r}?" if near else ""
+        meant = _meant(species)
+        hint = f" Did you mean {meant!r}?" if meant else ""
         raise CaseError(
             f"Species {species!r} is not known.{hint} Known: {', '.join(MOLAR_MASS_G)}; for "
             "anything else give the rate in kg/s.",
@@ -209,16 +237,22 @@ class Emission:
             return 1e3 * self.speed.speed_km_s(self.at_au)
         return self.speed.median
 
+    @property
+    def speed_words(self) -> str:
+        """The speed with its uncertainty and its law."""
+        if isinstance(self.speed, SpeedLaw):
+            median = number_text(self.median_speed_m_s)
+            return f"{median} m/s */ {self.speed.factor:g} ({self.speed.name} law)"
+        return f"{self.speed} m/s"
+
     def __str__(self) -> str:
-        speed = (
-            f"{self.median_speed_m_s:.4g} m/s */ {self.speed.factor:g} ({self.speed.name} law)"
-            if isinstance(self.speed, SpeedLaw)
-            else f"{self.speed} m/s"
-        )
         return (
-            f"{self.species}: {self.rate} {self.rate_unit} at {self.at_au:g} au, speed {speed}, "
-            f"collimation {self.collimation}"
+            f"{self.species}: {self.rate} {self.rate_unit} at {self.at_au:g} au, speed "
+            f"{self.speed_words}, collimation {self.collimation}"
         )
+
+    def _repr_html_(self) -> str:
+        return as_html([f"{self}."])
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able description."""
@@ -456,21 +490,17 @@ class Outgassing:
 
     def assumptions(self) -> tuple[str, ...]:
         """Which inputs rest on a default or a law, each with its source and status."""
-        lines = []
+        lines: dict[str, dict[str, None]] = {}
         for emission in self.emissions:
             if isinstance(emission.speed, SpeedLaw):
-                lines.append(f"{emission.species} speed: {emission.speed}")
+                lines.setdefault(f"speed: {emission.speed}", {})[emission.species] = None
             if emission.collimation == DEFAULT_COLLIMATION:
-                lines.append(
-                    f"{emission.species} collimation: {emission.collimation}, "
-                    f"{DEFAULT_COLLIMATION_SOURCE}"
-                )
+                text = f"collimation: {emission.collimation}, {DEFAULT_COLLIMATION_SOURCE}"
+                lines.setdefault(text, {})[emission.species] = None
             if isinstance(emission.rate, AtMost):
-                lines.append(
-                    f"{emission.species} rate is an upper limit and counts as zero in a lower mass "
-                    "bound"
-                )
-        return tuple(dict.fromkeys(lines))
+                text = "rate: an upper limit, which counts as zero in a lower mass bound"
+                lines.setdefault(text, {})[emission.species] = None
+        return tuple(f"{', '.join(species)} {text}" for text, species in lines.items())
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able description."""
@@ -481,6 +511,13 @@ class Outgassing:
 
     def __str__(self) -> str:
         return "\n".join(str(e) for e in self.emissions)
+
+    def _repr_html_(self) -> str:
+        rows = [["species", "rate", "unit", "at (au)", "speed", "collimation"]]
+        for e in self.emissions:
+            cells = [e.species, str(e.rate), e.rate_unit, f"{e.at_au:g}", e.speed_words]
+            rows.append([*cells, str(e.collimation)])
+        return as_html([], rows, [f"assumed: {text}" for text in self.assumptions()])
 
 
 def _limited(found: Distribution, limits_as: LimitsAs, u01: np.ndarray) -> np.ndarray:

@@ -23,6 +23,8 @@ from .distributions import (
     AtMost,
     Distribution,
     DistributionSpec,
+    Fixed,
+    SplitNormal,
     Triangular,
     Uniform,
     number_text,
@@ -65,7 +67,7 @@ def photometric_diameter_m(absolute_magnitude: Any, albedo: Any) -> Any:
     )
 
 
-def density(spec: DistributionSpec | None) -> Distribution:
+def bulk_density(spec: DistributionSpec | None) -> Distribution:
     """Bulk density in kg/m3 from a spec (default unit kg/m3); None gives `DEFAULT_DENSITY`."""
     if spec is None:
         return DEFAULT_DENSITY
@@ -125,6 +127,11 @@ class MeasuredDiameter:
     name = "given diameter"
     remark = ""
 
+    @property
+    def distribution(self) -> Distribution:
+        """The diameter, m."""
+        return self.diameter
+
     def __init__(self, diameter: DistributionSpec) -> None:
         object.__setattr__(self, "diameter", diameter_m(diameter))
 
@@ -156,6 +163,15 @@ class Photometry:
     albedo: Distribution
     coma: bool = False
     name = "photometric diameter"
+
+    @property
+    def distribution(self) -> Distribution:
+        """The photometric diameter, m, by its 16th, 50th and 84th percentile."""
+        drawn = self.diameter_m(np.random.default_rng(1), 200_000)
+        low, middle, high = (float(x) for x in np.quantile(drawn, [0.15866, 0.5, 0.84134]))
+        if not high > middle > low:
+            return Fixed(middle)
+        return SplitNormal(middle, middle - low, high - middle, lower=0.0)
 
     @property
     def remark(self) -> str:
@@ -262,7 +278,7 @@ def size_check(
     )
     if size.remark:
         reason += f"; {size.remark}"
-    low_d, mid_d, high_d = np.quantile(diameters, [0.15866, 0.5, 0.84134])
+    low_d, mid_d, high_d = size.distribution.ppf(np.array([0.15866, 0.5, 0.84134]))
     return SizeCheck(
         mid_d * u.m,
         (mid_d - low_d) * u.m,

@@ -1,6 +1,7 @@
 """Sublimation energy balance: the largest flux an ice can give at a distance, and g(r) computed.
 
-May import: constants, errors, and from its own room outgassing.
+May import: constants, errors, rounding, and from its own room distributions, notebook, outgassing
+and size.
 
 A facet lit at zenith angle z satisfies
 
@@ -15,7 +16,9 @@ Equation as in G. J. Fanale & J. R. Salvail 1984, Icarus 60, 476.
 
 import difflib
 import math
-from dataclasses import dataclass
+import warnings
+from collections.abc import Callable
+from dataclasses import dataclass, replace
 from typing import Any, Literal
 
 import astropy.units as u
@@ -23,9 +26,13 @@ import numpy as np
 from astropy.units import Quantity
 
 from ngbound.constants import BOLTZMANN_J_K, SOLAR_CONSTANT_W_M2, STEFAN_BOLTZMANN_W_M2_K4
-from ngbound.errors import CaseError, MassError
+from ngbound.errors import CaseError, MassError, NgboundWarning
+from ngbound.rounding import length_text, percent, rounded
 
-from .outgassing import AVOGADRO, Outgassing, molecule_mass_kg
+from .distributions import AtMost
+from .notebook import as_html
+from .outgassing import AVOGADRO, Emission, Outgassing, SpeedLaw, molecule_mass_kg
+from .size import KnownSize, MeasuredDiameter
 
 Geometry = Literal["subsolar", "sphere", "isothermal"]
 GEOMETRIES: tuple[str, ...] = ("subsolar", "sphere", "isothermal")
@@ -207,6 +214,9 @@ class Sublimation:
             f"m^-2 s^-1, {self.temperature.value:.2f} K"
         )
 
+    def _repr_html_(self) -> str:
+        return as_html([f"{self}."])
+
     def to_dict(self) -> dict[str, Any]:
         """JSON-able description."""
         return {
@@ -332,33 +342,96 @@ def _temperature(ice: Ice, absorbed_w_m2: np.ndarray, emissivity: float) -> np.n
 
 @dataclass(frozen=True)
 class ActiveArea:
-    """Area of exposed ice that a rate needs at least, and the share of a sphere's surface."""
+    """Area of exposed ice that a rate needs at least, and the share of a sphere's surface.
+
+    Attributes
+    ----------
+    ice : str
+    r_au : float
+    area : Quantity
+        Median where the rate is uncertain.
+    fraction : float or None
+        Of 4 pi R^2, median; above 1 more than the whole sphere.
+    diameter : Quantity or None
+        Median.
+    is_limit : bool
+        The rate was an upper limit, so that area and fraction are.
+    area_low, area_high, fraction_low, fraction_high : Quantity, float or None
+        16th and 84th percentile, from the errors of rate and diameter; None where both are fixed.
+    too_large : float or None
+        Probability that the fraction is above 1; None where rate and diameter are fixed.
+    geometry : str
+        Of `sublimation`.
+    """
 
     ice: str
     r_au: float
     area: Quantity
     fraction: float | None
     diameter: Quantity | None
+    is_limit: bool = False
+    area_low: Quantity | None = None
+    area_high: Quantity | None = None
+    fraction_low: float | None = None
+    fraction_high: float | None = None
+    too_large: float | None = None
+    geometry: str = "sphere"
+
+    @property
+    def flagged(self) -> bool:
+        """Whether the whole sphere would not be enough."""
+        return self.fraction is not None and self.fraction > 1 and not self.is_limit
+
+    def sentence(self) -> str:
+        """The active fraction in words."""
+        least = "less than" if self.is_limit else "at least"
+        way = "up" if self.is_limit else ""
+        area = rounded(float(self.area.to_value(u.km**2)), 2, outward=way)
+        text = f"{self.ice} at {self.r_au:g} au needs {least} {area} km2 of exposed ice"
+        if self.area_low is not None and self.area_high is not None:
+            edges = (float(q.to_value(u.km**2)) for q in (self.area_low, self.area_high))
+            text += f" ({' to '.join(rounded(x, 2) for x in edges)})"
+        if self.fraction is not None and self.diameter is not None:
+            text += f", {rounded(100 * self.fraction, 2, outward=way)} %"
+            if self.fraction_low is not None and self.fraction_high is not None:
+                low, high = (rounded(100 * x, 2) for x in (self.fraction_low, self.fraction_high))
+                text += f" ({low} to {high} %)"
+            size = length_text(float(self.diameter.to_value(u.m)), outward="")
+            text += f" of the surface of a sphere of {size}"
+            if self.flagged:
+                text += " (more than the whole sphere: the ice must also leave from grains)"
+            elif self.too_large is not None and self.too_large > 0.05 and not self.is_limit:
+                text += f" (above the whole sphere with probability {percent(self.too_large)})"
+        return text + "."
 
     def __str__(self) -> str:
-        text = f"{self.ice} at {self.r_au:g} au: at least {self.area.to_value(u.km**2):.3g} km2 lit"
-        if self.fraction is not None and self.diameter is not None:
-            text += (
-                f", {100 * self.fraction:.3g} % of the surface of a sphere of "
-                f"{self.diameter.to_value(u.km):.3g} km"
-            )
-            if self.fraction > 1:
-                text += " (more than the whole sphere: the ice must also leave from grains)"
-        return text
+        return self.sentence()
+
+    def _repr_html_(self) -> str:
+        return as_html([self.sentence()])
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able description."""
+
+        def square_metres(area: Quantity | None) -> float | None:
+            return None if area is None else float(area.to_value(u.m**2))
+
         return {
             "ice": self.ice,
             "r_au": self.r_au,
-            "area_m2": float(self.area.to_value(u.m**2)),
+            "area_m2": square_metres(self.area),
+            "area_low_m2": square_metres(self.area_low),
+            "area_high_m2": square_metres(self.area_high),
             "active_fraction": self.fraction,
+            "active_fraction_low": self.fraction_low,
+            "active_fraction_high": self.fraction_high,
+            "above_whole_sphere": self.too_large,
+            "flagged": self.flagged,
+            "is_limit": self.is_limit,
+            "geometry": self.geometry,
             "diameter_m": None if self.diameter is None else float(self.diameter.to_value(u.m)),
+            "source": ICES[self.ice].source,
+            "sentence": self.sentence(),
         }
 
 
@@ -393,7 +466,7 @@ def active_area(
     fraction = None
     if diameter is not None:
         fraction = float(area / (math.pi * diameter.to_value(u.m) ** 2))
-    return ActiveArea(ice, r_au, area * u.m**2, fraction, diameter)
+    return ActiveArea(ice, r_au, area * u.m**2, fraction, diameter, geometry=geometry)
 
 
 def sublimation_law(
@@ -441,17 +514,157 @@ def largest_rate(
 
 
 def active_areas(
-    outgassing: Outgassing, *, diameter: Quantity | None = None, geometry: Geometry = "sphere"
+    outgassing: Outgassing,
+    *,
+    diameter: Quantity | KnownSize | None = None,
+    geometry: Geometry = "sphere",
+    bond_albedo: float = 0.04,
+    emissivity: float = 0.95,
+    seed: int | np.random.Generator = 1,
+    n_draws: int = 20_000,
 ) -> tuple[ActiveArea, ...]:
-    """`active_area` of every emission of a budget whose species is an ice known here."""
-    return tuple(
-        active_area(
-            e.rate.median / (molecule_mass_kg(e.species) if e.rate_in_kg else 1.0),
-            e.species,
-            e.at_au,
-            diameter=diameter,
-            geometry=geometry,
+    """`active_area` of every emission of a budget whose species is an ice known here.
+
+    Errors of the rate and of the diameter (a Quantity, or what is known of the size) are carried
+    through; a rate that is an upper limit is taken at its limit.
+    """
+    rng = np.random.default_rng(seed)
+    size = MeasuredDiameter(diameter) if isinstance(diameter, Quantity) else diameter
+    diameters = None if size is None else size.diameter_m(rng, n_draws)
+    found = []
+    for emission in outgassing.emissions:
+        if emission.species not in ICES:
+            continue
+        is_limit = isinstance(emission.rate, AtMost)
+        rates = (
+            np.full(n_draws, emission.rate.limit)
+            if isinstance(emission.rate, AtMost)
+            else emission.rate.draw(rng, n_draws)
         )
-        for e in outgassing.emissions
-        if e.species in ICES
-    )
+        if emission.rate_in_kg:
+            rates = rates / molecule_mass_kg(emission.species)
+        one = active_area(
+            float(np.median(rates)),
+            emission.species,
+            emission.at_au,
+            diameter=None if diameters is None else float(np.median(diameters)) * u.m,
+            geometry=geometry,
+            bond_albedo=bond_albedo,
+            emissivity=emissivity,
+        )
+        areas = rates * (one.area / float(np.median(rates)))
+        fractions = None if diameters is None else areas.value / (math.pi * diameters**2)
+        found.append(_with_spread(one, areas, fractions, is_limit))
+    return tuple(found)
+
+
+def _with_spread(
+    one: ActiveArea, areas: Quantity, fractions: np.ndarray | None, is_limit: bool
+) -> ActiveArea:
+    """The same area with the spread of its draws, where they vary at all."""
+    more: dict[str, Any] = {"is_limit": is_limit}
+    if float(np.ptp(areas.value)) > 0:
+        more["area_low"], more["area_high"] = np.quantile(areas, [0.15866, 0.84134])
+    if fractions is not None and float(np.ptp(fractions)) > 0:
+        low, middle, high = (float(x) for x in np.quantile(fractions, [0.15866, 0.5, 0.84134]))
+        more |= {"fraction_low": low, "fraction": middle, "fraction_high": high}
+        more["too_large"] = float(np.mean(fractions > 1))
+    return replace(one, **more)
+
+
+@dataclass(frozen=True)
+class LawDeparture:
+    """How a thrust law falls over the arc, beside an exposed ice in its energy balance.
+
+    ``ratio``: the force by the law over that of the ice at ``r_au``, both the same at ``at_au``,
+    where the rate was measured; the distance is the one on the arc at which they differ most, among
+    those where either gives a tenth of its greatest force.
+    """
+
+    species: str
+    at_au: float
+    r_au: float
+    ratio: float
+
+    @property
+    def factor(self) -> float:
+        """By how much they differ, at least 1."""
+        return max(self.ratio, 1.0 / self.ratio) if self.ratio > 0 else math.inf
+
+    def sentence(self) -> str:
+        """The departure in words."""
+        side = "more" if self.ratio > 1 else "less"
+        return (
+            f"At {self.r_au:.3g} au the thrust law gives {self.factor:.2g} times {side} force than "
+            f"{self.species} ice exposed to the Sun would, both set equal at {self.at_au:g} au, "
+            "where the rate was measured"
+        )
+
+    def __str__(self) -> str:
+        return f"{self.sentence()}."
+
+    def _repr_html_(self) -> str:
+        return as_html([str(self)])
+
+    def to_dict(self) -> dict[str, Any]:
+        """JSON-able description."""
+        return {**vars(self), "factor": self.factor, "sentence": str(self)}
+
+
+SUSPICIOUS_FACTOR = 2.0
+"""Beyond this factor a thrust law and the sublimation of the species are said to disagree."""
+
+
+def law_departures(
+    outgassing: Outgassing, g_at: Callable[[float], float], r_au: np.ndarray
+) -> tuple[LawDeparture, ...]:
+    """Does the thrust law fall over the arc as the species measured sublimate?
+
+    Parameters
+    ----------
+    outgassing : Outgassing
+        Species that are no ice known here are passed over.
+    g_at : callable
+        Thrust law g(r), r in au.
+    r_au : (n,) array
+        Heliocentric distances of the arc.
+
+    Returns
+    -------
+    tuple of LawDeparture
+        One a species and distance; a warning for each beyond a factor of 2.
+
+    Notes
+    -----
+    The force of the ice is its mean flux over a sphere times the outflow speed, r^-0.5 by the
+    default law, constant where a speed was measured.
+    """
+    r = np.geomspace(float(np.min(r_au)), float(np.max(r_au)), 25)
+    found = []
+    for e in outgassing.emissions:
+        if e.species in ICES:
+            found.append(_departure(e, np.array([float(g_at(float(x))) for x in r]), g_at, r))
+    unlike = [one for one in found if one.factor > SUSPICIOUS_FACTOR]
+    for one in dict.fromkeys(unlike):
+        warnings.warn(
+            f"{one.sentence()}: the rate and the thrust law do not go together over this arc. "
+            "Take a law that fits the species, or a rate near the distances that decide.",
+            NgboundWarning,
+            stacklevel=2,
+        )
+    return tuple(found)
+
+
+def _departure(
+    e: Emission, g: np.ndarray, g_at: Callable[[float], float], r: np.ndarray
+) -> LawDeparture:
+    flux = sublimation_law(e.species, np.append(r, e.at_au))
+    exponent = e.speed.exponent if isinstance(e.speed, SpeedLaw) else 0.0
+    ice = flux * np.append(r, e.at_au) ** -exponent
+    matters = (g >= 0.1 * g.max()) | (ice[:-1] >= 0.1 * ice[:-1].max())
+    own = float(g_at(e.at_au))
+    with np.errstate(divide="ignore", invalid="ignore"):
+        ratio = (g / own) / (ice[:-1] / ice[-1])
+        size = np.where(matters, np.abs(np.log(ratio)), -1.0)
+    worst = int(np.nanargmax(size))
+    return LawDeparture(e.species, e.at_au, float(r[worst]), float(ratio[worst]))

@@ -7,11 +7,18 @@ gravity-only refit (``departure``): d = (B - X (X'WX)^-1 X'WB) A, X and B the pa
 to orbit and thrust, W the inverse covariance of the observations.
 """
 
-from ngbound.report.document import prior_name, render_report, the_sentence
+from ngbound.report.document import (
+    budget_words,
+    prior_name,
+    render_mass,
+    render_report,
+    the_sentence,
+)
 from ngbound.report.figures import (
     direction_map,
     mass_figure,
     posterior_figure,
+    reach_figure,
     residual_by_station,
     residual_fan,
 )
@@ -29,6 +36,7 @@ from ngbound.report.tables import (
 __all__ = [
     "Record",
     "SmallTable",
+    "budget_words",
     "catalogue_table",
     "direction_map",
     "load_record",
@@ -36,6 +44,8 @@ __all__ = [
     "posterior_figure",
     "prior_name",
     "provenance",
+    "reach_figure",
+    "render_mass",
     "render_report",
     "residual_by_station",
     "residual_fan",

@@ -10,8 +10,10 @@ The record is a plain mapping; every section is written if its key is there and 
 - ``law`` (str), ``fits``: {"null": ..., "push": ...} with chi2, dof, rms_arcsec, n_obs,
   n_rejected, components, A_au_d2, A_sigma_au_d2, weakness; ``comparison``: delta_chi2, delta_dof,
   p_value, delta_bic (positive where it favours thrust)
-- ``threshold``, ``limit``, ``posterior``, ``verdict``, ``mass``: the ``to_dict()`` of the
-  corresponding objects; ``limits``: list of further limits
+- ``threshold``, ``limit``, ``posterior``, ``verdict``, ``mass``, ``mass_ceiling``, ``reach``,
+  ``radiation``: the ``to_dict()`` of the corresponding objects; ``active_areas``,
+  ``law_departures``: lists of such; ``mass_remarks``: why something of these does not follow;
+  ``limits``: list of further limits
 - ``degeneracies``: what each thrust component is confused with, in sentences
 - ``suspicions``, ``caveats``, ``warnings`` (lists of sentences); ``choices``, ``seeds``
   (mappings, nested as one likes); ``provenance`` as `ngbound.report.provenance` gives it
@@ -287,14 +289,18 @@ def sentence_of(record: Mapping[str, Any]) -> str:
 
 
 def budget_words(mass: Mapping[str, Any]) -> str:
-    """The outgassing behind a mass bound in words: ``budget`` if given, else its emission."""
+    """The outgassing behind a mass bound in words: ``budget`` if given, else its emissions.
+
+    Rates that are upper limits are left out, as the bound leaves them out.
+    """
     if mass.get("budget"):
         return str(mass["budget"])
     emissions = list((mass.get("outgassing") or {}).get("emissions") or ())
-    if len(emissions) != 1:
-        names = sorted({str(e.get("species")) for e in emissions})
-        return f"the outgassing of {' and '.join(names)} given" if names else ""
-    one = emissions[0]
+    told = [_emission_words(e) for e in emissions if "limit" not in (e.get("rate") or {})]
+    return "; ".join(text for text in told if text)
+
+
+def _emission_words(one: Mapping[str, Any]) -> str:
     rate = _distribution_words(one.get("rate") or {})
     if not rate:
         return ""
@@ -401,6 +407,12 @@ class _Page:
             text, self.width, break_long_words=False, break_on_hyphens=False
         )
 
+    def paragraph(self, text: str) -> None:
+        """Prose after an empty line."""
+        if self.lines and self.lines[-1]:
+            self.lines.append("")
+        self.prose(text)
+
     def item(self, text: str) -> None:
         if self.lines and self.lines[-1].startswith("    "):
             self.lines.append("")
@@ -468,6 +480,9 @@ def _flat(tree: Mapping[str, Any], stem: str = "") -> list[tuple[str, str]]:
         name = f"{stem}{key}"
         if isinstance(value, Mapping) and set(value) != {"value", "unit"}:
             rows += _flat(value, f"{name}.")
+        elif isinstance(value, (list, tuple)) and any(isinstance(one, Mapping) for one in value):
+            for number, one in enumerate(value, start=1):
+                rows += _flat(one, f"{name}.{number}.")
         else:
             rows.append((name, _show(value)))
     return rows
@@ -590,7 +605,7 @@ def _write_threshold(page: _Page, record: Mapping[str, Any]) -> None:
         "The smallest thrust (au/d2 at 1 au) that a test with false-alarm rate "
         f"{percent(found.get('false_alarm', float('nan')))} finds with probability "
         f"{percent(found.get('power', float('nan')))}: a property of the arc and its noise, "
-        "whatever the estimate."
+        "whatever the estimate. Rounded up."
     )
     letters = str(found.get("components") or "")
     rows = []
@@ -601,7 +616,7 @@ def _write_threshold(page: _Page, record: Mapping[str, Any]) -> None:
     ):
         for letter, value in zip(letters, found.get(key) or (), strict=False):
             if is_number(value):
-                rows.append((f"{letter}: {words}", rounded(value, 3)))
+                rows.append((f"{letter}: {words}", rounded(value, 2, outward="up")))
     for key, words in (
         ("best_au_d2", "best seen direction"),
         ("worst_au_d2", "worst seen direction"),
@@ -612,7 +627,7 @@ def _write_threshold(page: _Page, record: Mapping[str, Any]) -> None:
             along = (
                 f"  along {letters} = ({', '.join(f'{x:+.2f}' for x in where)})" if where else ""
             )
-            rows.append((words, rounded(found[key], 3) + along))
+            rows.append((words, rounded(found[key], 2, outward="up") + along))
     page.pairs(rows)
     for sentence in record.get("degeneracies") or ():
         page.item(sentence)
@@ -689,11 +704,18 @@ def _limit(value: Any, error: Any) -> str:
     return text + (f" +- {rounded(error, 1)}" if is_number(error) and error > 0 else "")
 
 
+def render_mass(record: Mapping[str, Any], *, width: int = WIDTH) -> str:
+    """The section on mass and size alone, as plain text; keys as in a record."""
+    page = _Page(width)
+    _write_mass(page, record)
+    return page.text().rstrip("\n")
+
+
 def _write_mass(page: _Page, record: Mapping[str, Any]) -> None:
-    mass = record.get("mass") or {}
-    if not mass:
-        return
-    page.heading("Mass and size")
+    mass, ceiling = record.get("mass") or {}, record.get("mass_ceiling") or {}
+    remarks = record.get("mass_remarks") or ()
+    if mass or ceiling or remarks or record.get("active_areas"):
+        page.heading("Mass and size")
     if mass.get("sentence"):
         page.prose(str(mass["sentence"]))
     elif is_number(mass.get("mass_kg")):
@@ -706,34 +728,47 @@ def _write_mass(page: _Page, record: Mapping[str, Any]) -> None:
                 None,
             )
         )
-    if mass.get("inputs"):
-        page.lines.append("")
-        page.block(_inputs_table(mass["inputs"]))
+    if ceiling:
+        page.paragraph(str(ceiling["sentence"]))
+    if mass.get("table"):
+        page.paragraph(
+            "Mass (kg) when one input alone moves from its 16th to its 84th percentile, the others "
+            "at their medians; the lower bound if that input were exactly its median; the share of "
+            "each in the variance of ln M and ln D, with its interactions (Sobol's total index):"
+        )
+        page.block(str(mass["table"]))
+    for one in mass.get("law_checks") or ():
+        page.item(f"rates against the thrust law: {one['sentence']}.")
+    for one in record.get("law_departures") or ():
+        page.item(f"thrust law against sublimation: {one['sentence']}")
+    for one in record.get("active_areas") or ():
+        page.item(f"active surface: {one['sentence']}")
+    for text in remarks:
+        page.item(str(text))
     for text in mass.get("assumptions") or ():
         page.item(f"assumed: {text}")
+    _write_reach(page, record.get("reach") or {}, mass.get("assumptions") or ())
+    _write_radiation(page, record.get("radiation") or {})
 
 
-def _inputs_table(inputs: Sequence[Mapping[str, Any]]) -> str:
-    head = ("input", "16 %", "median", "84 %", "unit", "M at 16 %", "M at 84 %", "share of ln M")
-    rows: list[tuple[str, ...]] = [head]
-    for share in inputs:
-        numbers = [
-            rounded(share[k], 3) if is_number(share.get(k)) else "-"
-            for k in ("low", "median", "high", "mass_at_low", "mass_at_high")
-        ]
-        total = share.get("total")
-        part = f"{100 * total:.0f} %" if is_number(total) else "-"
-        rows.append(
-            (str(share.get("name")), *numbers[:3], str(share.get("unit") or ""), *numbers[3:], part)
-        )
-    widths = [max(len(r[j]) for r in rows) for j in range(len(head))]
-    return "\n".join(
-        "  ".join(
-            c.ljust(w) if j in (0, 4) else c.rjust(w)
-            for j, (c, w) in enumerate(zip(row, widths, strict=True))
-        ).rstrip()
-        for row in rows
-    )
+def _write_reach(page: _Page, found: Mapping[str, Any], told: Sequence[str]) -> None:
+    if not found:
+        return
+    page.heading("Reach: the outgassing this arc would have revealed")
+    page.prose(str(found["sentence"]))
+    page.block(str(found["table"]))
+    for text in found.get("assumptions") or ():
+        if text not in told:
+            page.item(f"assumed: {text}")
+
+
+def _write_radiation(page: _Page, found: Mapping[str, Any]) -> None:
+    if not found:
+        return
+    page.heading("Sunlight instead of gas")
+    page.prose(str(found["sentence"]))
+    for text in found.get("assumptions") or ():
+        page.item(f"assumed: {text}")
 
 
 def _write_provenance(page: _Page, record: Mapping[str, Any]) -> None:

@@ -13,13 +13,15 @@ from matplotlib.ticker import FuncFormatter, NullFormatter
 
 from ngbound.errors import MassError
 from ngbound.report.figures import style
-from ngbound.report.rounding import length_text, percent
+from ngbound.report.rounding import length_text, percent, rounded
 
 MOST_INPUTS = 7
 
 
 @style.house_style
-def mass_figure(bound: Any, *, figsize: tuple[float, float] | None = None) -> Figure:
+def mass_figure(
+    bound: Any, ceiling: Any = None, *, figsize: tuple[float, float] | None = None
+) -> Figure:
     """Distribution of the mass with its lower bound, and what moves it.
 
     Parameters
@@ -27,6 +29,8 @@ def mass_figure(bound: Any, *, figsize: tuple[float, float] | None = None) -> Fi
     bound : MassBound
         ``mass_draws_kg``, ``mass``, ``diameter``, ``confidence`` and, where given, ``inputs``
         and ``mass_detection`` are read.
+    ceiling : MassCeiling, optional
+        ``mass`` and ``confidence`` are read, and the mass above is shaded too.
     figsize : (float, float), optional
         Inches; one page width by default.
 
@@ -49,7 +53,7 @@ def mass_figure(bound: Any, *, figsize: tuple[float, float] | None = None) -> Fi
     bottom, top = 0.45 / height, 1.0 - 0.48 / height
     split = 0.50 if inputs else 1.0 - 0.15 / width
     ax = fig.add_axes((0.15 / width, bottom, split - 0.15 / width, top - bottom))
-    _draw_mass(ax, draws, bound)
+    _draw_mass(ax, draws, bound, ceiling)
     if inputs:
         start = split + 1.65 / width
         side = fig.add_axes((start, bottom, 1.0 - start - 0.15 / width, top - bottom))
@@ -65,26 +69,42 @@ def mass_figure(bound: Any, *, figsize: tuple[float, float] | None = None) -> Fi
     return fig
 
 
-def _draw_mass(ax: Axes, draws: np.ndarray, bound: Any) -> None:
+def _draw_mass(ax: Axes, draws: np.ndarray, bound: Any, ceiling: Any) -> None:
     low_kg = float(bound.mass.to_value(u.kg))
     logs = np.log10(draws)
     left, right = np.quantile(logs, [0.0005, 0.98])
     left = min(left, np.log10(low_kg) - 0.15)
+    high_kg = 10.0**right if ceiling is None else float(ceiling.mass.to_value(u.kg))
+    right = max(right, np.log10(high_kg) + (0.0 if ceiling is None else 0.15))
     edges = np.linspace(left, right, 61)
     count, _ = np.histogram(logs, edges, density=True)
     middle = 0.5 * (edges[1:] + edges[:-1])
     ax.stairs(count, 10.0**edges, color=style.BLUE, lw=1.0, fill=False)
-    allowed = np.where(middle >= np.log10(low_kg), count, 0.0)
+    allowed = np.where((middle >= np.log10(low_kg)) & (middle <= np.log10(high_kg)), count, 0.0)
     ax.stairs(allowed, 10.0**edges, color=style.SKY, alpha=0.25, lw=0, fill=True)
     ax.axvspan(10.0**left, low_kg, color="#f1e3dc", lw=0, zorder=0)
     ax.axvline(low_kg, color=style.VERMILION, lw=1.2)
+    if ceiling is not None:
+        ax.axvspan(high_kg, 10.0**right, color="#f1e3dc", lw=0, zorder=0)
+        ax.axvline(high_kg, color=style.VERMILION, lw=1.2, ls=(0, (4, 2)))
+        ax.annotate(
+            rf"$M$ < {_outward(high_kg, 'up')} kg",
+            (high_kg, 1.0),
+            xycoords=("data", "axes fraction"),
+            xytext=(4, -2),
+            textcoords="offset points",
+            rotation=90,
+            va="top",
+            fontsize=7.0,
+            color=style.VERMILION,
+        )
     ax.set_xscale("log")
     ax.set_xlim(10.0**left, 10.0**right)
     ax.set_ylim(0.0, 1.30 * count.max())
     diameter = length_text(float(bound.diameter.to_value(u.m)))
     near_right = (np.log10(low_kg) - left) > 0.55 * (right - left)
     ax.annotate(
-        rf"$M$ > {style.scientific(low_kg)} kg" + f"\nD > {diameter}\n"
+        rf"$M$ > {_outward(low_kg, 'down')} kg" + f"\n$D$ > {diameter}\n"
         f"({percent(bound.confidence)} confidence)",
         (low_kg, 1.0),
         xycoords=("data", "axes fraction"),
@@ -113,9 +133,17 @@ def _draw_mass(ax: Axes, draws: np.ndarray, bound: Any) -> None:
                 fontsize=6.2,
             )
     ax.set_xlabel("mass (kg)")
+    ax.set_xticks(_few_ticks(10.0**left, 10.0**right))
+    ax.xaxis.set_major_formatter(FuncFormatter(lambda kg, _: style.scientific(kg, 2)))
+    ax.xaxis.set_minor_formatter(NullFormatter())
     ax.set_yticks([])
     style.tidy(ax)
     ax.spines["left"].set_visible(False)
+
+
+def _outward(kilogram: float, way: str) -> str:
+    """A bound rounded outward, as every printing of it is, in mathtext."""
+    return style.scientific(float(rounded(kilogram, 2, outward=way)))
 
 
 def _few_ticks(low: float, high: float) -> list[float]:
