@@ -164,6 +164,10 @@ class ErrorsTable(Table):
     rescale_least: int = Field(
         default=ErrorModel.rescale_least, description="Records that are enough for that."
     )
+    student: bool = Field(
+        default=ErrorModel.student,
+        description="Whether tests and limits allow for few degrees of freedom of rescaled errors.",
+    )
 
     def in_folder(self, base: Path) -> "ErrorsTable":
         """The choices with the path in them counted from a folder."""

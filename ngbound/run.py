@@ -21,7 +21,6 @@ import matplotlib
 import numpy as np
 import pandas as pd
 from matplotlib.figure import Figure
-from scipy.stats import chi2
 from tqdm import tqdm
 
 from ngbound.arc import Arc, Noise, Survey, read_arc, survey, treatment_text, vet
@@ -35,6 +34,7 @@ from ngbound.fit import (
     compare_fits,
     diagnose,
     fit_orbit,
+    tail_probability,
     vary,
 )
 from ngbound.limits import (
@@ -367,7 +367,7 @@ def p_values(variation: Variation) -> dict[str, float]:
 
 def wald_p(fit: Fit) -> float:
     """Probability of a fitted thrust at least as significant where there is none."""
-    return float(chi2.sf(fit.significance**2, len(fit.components)))
+    return tail_probability(fit.significance**2, len(fit.components), fit.noise_dof)
 
 
 def variant_table(bounds: "Bounds") -> SmallTable:

@@ -396,7 +396,10 @@ class ErrorModel:
         Whether a fit rescales the errors of stations that have enough records. None: those that
         come from the table, but neither stated nor uniform ones; True: all; False: none.
     rescale_least : int
-        Records that are enough.
+        Records that are enough; where no station has so many, all are rescaled together.
+    student : bool
+        Whether tests, thresholds and limits allow for how few degrees of freedom rescaled errors
+        rest on.
     """
 
     scheme: str = "stated-then-table"
@@ -416,6 +419,7 @@ class ErrorModel:
     photocentre_arcsec_au: float = 0.0
     rescale_stations: bool | None = None
     rescale_least: int = 20
+    student: bool = True
 
     def __post_init__(self) -> None:
         for name, allowed in (("scheme", SCHEMES), ("over_observing", OVER_OBSERVING)):

@@ -6,7 +6,13 @@ of the whitened residuals that it governs: the means of the nights, and what is 
 taken out (variance components by iterated moments: C. R. Rao 1971, J. Multivar. Anal. 1, 257,
 with the pivot moved to the solution). The expectations allow for what parameters and shared errors
 have absorbed (`ngbound.fit.shared_estimates`). Few nights tell too little about the common part:
-then both are scaled alike.
+then both are scaled alike. Where no station has enough records, all are taken together, if their
+nights leave enough degrees of freedom; else the errors stand as they are.
+
+Errors that were estimated from nu degrees of freedom make the tests of a thrust those of Student
+and Fisher (W. S. Gosset 1908, Biometrika 6, 1). Where the variance of an estimate is a sum over
+stations, each a share of it known from its own nu, the whole has 1 / sum(share^2 / nu) degrees of
+freedom (F. E. Satterthwaite 1946, Biometrics Bull. 2, 110).
 """
 
 import math
@@ -18,7 +24,7 @@ from numpy.typing import NDArray
 from scipy import stats
 
 from ngbound.arc import Noise
-from ngbound.fit.shared_estimates import solve_jointly
+from ngbound.fit.shared_estimates import JointSolution, solve_jointly
 
 Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
@@ -29,8 +35,14 @@ SETTLED = 0.01
 MAX_TURNS = 30
 ENOUGH_NIGHTS = 5
 LEAST_WITHIN_DOF = 5.0
-SHORT_DOF = 60
-"""Below so many degrees of freedom Student's t differs noticeably from the normal law."""
+LEAST_TOGETHER_DOF = 4.0
+"""Degrees of freedom of the night means from which on all stations together are rescaled."""
+MANY_DOF = 1000
+"""From so many on the law of Student is the normal one."""
+TOGETHER = "all stations"
+ALL_RANDOM = 0.95
+"""Share of the independent part in the variance of a night mean above which the common part cannot
+be told."""
 
 
 @dataclass(frozen=True)
@@ -48,6 +60,9 @@ class StationScale:
         Median of the part common to a night, before and after.
     scale, error : float
         Of the whole standard deviation.
+    dof : float
+        Degrees of freedom that the scale of an estimate rests on: those of the night means where
+        errors are common to a night, else all.
     """
 
     station: str
@@ -59,14 +74,16 @@ class StationScale:
     common_arcsec: float
     scale: float
     error: float
+    dof: float
 
     def to_dict(self) -> dict[str, Any]:
         """The fields."""
         return dict(vars(self))
 
     def __str__(self) -> str:
+        what = self.station if self.station == TOGETHER else f"station {self.station}"
         return (
-            f"station {self.station}: {self.n} records in {self.nights} nights, sigma "
+            f"{what}: {self.n} records in {self.nights} nights, sigma "
             f"{self.sigma_before_arcsec:.2f} -> {self.sigma_arcsec:.3f} arcsec (times "
             f"{self.scale:.2f} +- {self.error:.2f}), of it common to a night "
             f"{self.common_before_arcsec:.2f} -> {self.common_arcsec:.3f}"
@@ -86,6 +103,12 @@ class _Group:
     dof: float
     random_share: float
 
+    @property
+    def telling_dof(self) -> float:
+        """Degrees of freedom of the night means, or of all where nights share next to nothing."""
+        few = self.dof if self.random_share > ALL_RANDOM else min(self.dof, self.night_dof)
+        return max(few, 1.0)
+
     def factors(self) -> tuple[float, float]:
         """By which the variances of the independent and of the common part should grow."""
         whole = self.chi2 / self.dof
@@ -94,7 +117,7 @@ class _Group:
             return whole, whole
         within = max(self.chi2 - self.night_chi2, 1e-9) / within_dof
         of_nights = self.night_chi2 / self.night_dof
-        if self.random_share > 0.95:
+        if self.random_share > ALL_RANDOM:
             return whole, whole
         share = self.random_share
         return within, max((of_nights - within * share) / (1.0 - share), 1e-2)
@@ -120,15 +143,21 @@ def rescaled(
     least : records that are enough
     """
     before = noise
+    together = False
     codes = [
         code
         for code in sorted(set(stations[keep & allowed].tolist()))
         if ((stations == code) & keep & allowed).sum() >= least
     ]
+    if not codes and (keep & allowed).any():
+        together, codes = True, [TOGETHER]
+        stations = np.full(len(keep), TOGETHER, dtype=object)
     random, common = np.ones(len(noise)), np.ones(len(noise))
     groups: dict[str, _Group] = {}
     for _ in range(MAX_TURNS):
         groups = _groups(seen, design, noise, keep, stations, allowed, codes)
+        if together and groups[TOGETHER].telling_dof < LEAST_TOGETHER_DOF:
+            return before, ()
         moved = 0.0
         for code, group in groups.items():
             mine = (stations == code) & allowed
@@ -215,7 +244,42 @@ def _scale_of(code: str, group: _Group, before: Noise, after: Noise) -> StationS
         float(np.median(after.night_common_arcsec[mine])),
         scale,
         scale / math.sqrt(2.0 * group.dof),
+        group.telling_dof,
     )
+
+
+def student_dof(
+    scales: tuple[StationScale, ...],
+    joint: JointSolution,
+    stations: NDArray[np.object_],
+    wanted: slice,
+) -> int | None:
+    """Degrees of freedom behind the standard errors of some parameters; None for very many.
+
+    Parameters
+    ----------
+    scales : of the stations that were rescaled
+    joint : JointSolution with p parameters
+    stations : (m,) codes of the kept observations, "" where the errors were not rescaled
+    wanted : parameters; the smallest degrees of freedom of any of them count
+    """
+    moved = (joint.cov[wanted] @ joint.white.T) ** 2
+    share = moved.reshape(len(moved), -1, 2).sum(axis=2) / np.diag(joint.cov)[wanted, None]
+    inverse = np.zeros(len(moved))
+    for scale in scales:
+        mine = (stations != "") if scale.station == TOGETHER else stations == scale.station
+        inverse += share[:, mine].sum(axis=1) ** 2 / scale.dof
+    least = float(inverse.max(initial=0.0))
+    return max(1, round(1.0 / least)) if least * MANY_DOF > 1.0 else None
+
+
+def tail_probability(statistic: float, k: int, noise_dof: int | None) -> float:
+    """Chance of a chi2 of k degrees of freedom of at least this size; where the errors rest on
+    ``noise_dof`` degrees of freedom, of F times k."""
+    value = max(statistic, 0.0)
+    if noise_dof is None:
+        return float(stats.chi2.sf(value, k))
+    return float(stats.f.sf(value / k, k, noise_dof))
 
 
 def student_factor(reduced_chi2: float, dof: int, confidence: float = 0.95) -> float:

@@ -19,7 +19,7 @@ from ngbound.arc import Arc, ErrorModel, Noise, treatment_text
 from ngbound.constants import ARCSEC_RAD
 from ngbound.errors import FitError
 from ngbound.fit.least_squares import Correction, parameter_names, thrust_of
-from ngbound.fit.noise_scale import StationScale, rescaled
+from ngbound.fit.noise_scale import StationScale, rescaled, student_dof, tail_probability
 from ngbound.fit.orbit_search import Converged, at_epoch, find_orbit, middle_epoch, settle
 from ngbound.fit.outliers import chi2_of_records
 from ngbound.fit.residuals import motion_rad_d, residual_table, sunward_per_au
@@ -199,6 +199,19 @@ class Fit:
         """How many of the used observations got which treatment of their catalogue's offset."""
         return self.error_model.catalogue_treatments(self.used)
 
+    @cached_property
+    def noise_dof(self) -> int | None:
+        """Degrees of freedom behind the standard errors of the thrust (without thrust, of the
+        orbit) where they rest on the scatter of the residuals: tests are then those of Student and
+        Fisher. None where errors are taken as known, or known as well as that."""
+        if not self.scales or not self.error_model.student:
+            return None
+        codes = self.used.table["stn"].to_numpy(dtype=object)
+        codes = np.where(self.error_model.rescalable(self.noise), codes, "")[self.keep]
+        p = self.theta.size
+        wanted = slice(6 if self.components else 0, p)
+        return student_dof(self.scales, self.joint, codes, wanted)
+
     @property
     def error_report(self) -> str:
         """In words: the sources of the errors, the scales of the stations before and after, and the
@@ -207,6 +220,10 @@ class Fit:
         if self.scales:
             lines.append("Rescaled by their own scatter:")
             lines += [f"  {scale}" for scale in self.scales]
+        if self.noise_dof is not None:
+            lines.append(
+                f"Tests and limits are those of Student with {self.noise_dof} degrees of freedom."
+            )
         lines.append(shared_text(self.offsets))
         return "\n".join(lines)
 
@@ -275,6 +292,7 @@ class Fit:
             "distance_error": self.distance_error,
             "weakness": self.weakness,
             "catalogue_treatments": self.catalogue_treatments,
+            "noise_dof": self.noise_dof,
             "station_scales": [scale.to_dict() for scale in self.scales],
             "shared_errors": self.offsets.to_dict("records"),
         }
@@ -492,7 +510,8 @@ class Comparison:
         How much the richer fit lowers chi2.
     delta_dof : int
     p_value : float
-        Probability of at least this much under the simpler hypothesis (chi2 with delta_dof).
+        Probability of at least this much under the simpler hypothesis: chi2 with delta_dof, or the
+        law of F where the errors rest on few degrees of freedom.
     delta_bic : float
         BIC of the simpler less that of the richer: above 0 favours the richer
         (G. Schwarz 1978, Ann. Statist. 6, 461).
@@ -561,6 +580,7 @@ def compare_fits(null: Fit, push: Fit) -> Comparison:
             f"The second fit must have more parameters than the first; it has {push.theta.size} "
             f"and the first {null.theta.size}. Swap them?"
         )
+    noise_dof = push.noise_dof
     refitted = not np.array_equal(null.keep, push.keep) or null.scales != push.scales
     if refitted:
         either = null.keep | push.keep
@@ -582,7 +602,7 @@ def compare_fits(null: Fit, push: Fit) -> Comparison:
     return Comparison(
         delta,
         extra,
-        float(stats.chi2.sf(max(delta, 0.0), extra)),
+        tail_probability(delta, extra, noise_dof),
         float(delta - extra * math.log(2 * push.n_obs)),
         push.n_obs,
         refitted,

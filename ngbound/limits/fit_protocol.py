@@ -29,6 +29,9 @@ class ThrustFit(Protocol):
         Weighted sum of squares at ``theta``.
     dof : int
         Number of residual components less ``p``.
+
+    A fit may also carry ``noise_dof``, the degrees of freedom that its errors rest on where they
+    were estimated from the residuals (None where they are known), and ``thrust`` with its law.
     """
 
     @property
@@ -68,6 +71,7 @@ class GaussianFit:
     n_state: int
     chi2: float
     dof: int
+    noise_dof: int | None = None
 
     def chi2_many(self, thetas: np.ndarray, /) -> np.ndarray:
         """chi2 (m,) of parameter vectors (m, p): a parabola."""
@@ -80,4 +84,5 @@ class GaussianFit:
         theta = np.asarray(fit.theta, dtype=float)
         dof = max(0, 2 * n_obs - theta.size)
         names = tuple(str(name) for name in fit.names)
-        return cls(fit.components, names, theta, normal, fit.n_state, float(dof), dof)
+        noise_dof = getattr(fit, "noise_dof", None)
+        return cls(fit.components, names, theta, normal, fit.n_state, float(dof), dof, noise_dof)

@@ -78,6 +78,8 @@ class ThrustInformation:
     orbit : OrbitConditional
     law_g : callable or None
         g(r) of the thrust law, r in au, where the fit carries its law.
+    noise_dof : int or None
+        Degrees of freedom that the errors rest on, where they were estimated from the residuals.
     """
 
     components: str
@@ -92,6 +94,7 @@ class ThrustInformation:
     inflation_by_thrust: np.ndarray
     orbit: OrbitConditional
     law_g: Callable[[float], float] | None = None
+    noise_dof: int | None = None
 
     @property
     def k(self) -> int:
@@ -213,6 +216,7 @@ class ThrustInformation:
             "correlation_with_orbit": self.correlation.tolist(),
             "variance_inflation_by_orbit": self.inflation_by_orbit.tolist(),
             "variance_inflation_by_other_thrust": self.inflation_by_thrust.tolist(),
+            "noise_dof": self.noise_dof,
         }
 
 
@@ -307,6 +311,7 @@ def thrust_information(fit: ThrustFit) -> ThrustInformation:
             spread=spread_scaled / x_scale[:, None],
         ),
         law_g=getattr(getattr(fit, "thrust", None), "g", None),
+        noise_dof=getattr(fit, "noise_dof", None),
     )
 
 

@@ -384,6 +384,7 @@ def _information(
     order = slice(None, None, -1)
     return replace(
         base,
+        noise_dof=None,
         A_hat=A,
         covariance=covariance,
         matrix=(vectors / values) @ vectors.T,

@@ -8,18 +8,22 @@ weights N(A_hat; 0, F_A^-1 + s^2 I), all diagonal in the eigenvectors of F_A. Th
 replaced here by a sum over widths in geometric steps; the density of that sum is known exactly, so
 what is left is put right by importance weights (or by the acceptance rule of a Markov chain that
 uses it as its proposal).
+
+Where the errors rest on nu degrees of freedom the Gaussian becomes Student's distribution in k
+dimensions, exp(-q / 2) -> (1 + q / nu)^(-(nu + k) / 2), and the proposal is widened to its tails.
 """
 
 from dataclasses import dataclass
 
 import numpy as np
 from scipy.special import log_ndtr, ndtri, ndtri_exp
-from scipy.stats import qmc
+from scipy.stats import norm, qmc, t
 
 from ngbound.limits.information import ThrustInformation
 from ngbound.limits.priors import ThrustPrior
 
 WIDTHS = 48
+FAR_OUT = 0.999
 _LOG_2PI = float(np.log(2.0 * np.pi))
 
 
@@ -29,6 +33,13 @@ def log_sum_exp(terms: np.ndarray) -> np.ndarray:
     top = np.where(np.isfinite(top), top, 0.0)
     with np.errstate(divide="ignore"):
         return top + np.log(np.sum(np.exp(terms - top[:, None]), axis=1))
+
+
+def student_width(noise_dof: int | None) -> float:
+    """Quantile of Student's law far out over that of the normal one; 1 for known errors."""
+    if noise_dof is None:
+        return 1.0
+    return float(t.ppf(FAR_OUT, noise_dof) / norm.ppf(FAR_OUT))
 
 
 @dataclass(frozen=True)
@@ -81,16 +92,20 @@ class LinearPosterior:
         terms = -0.5 * np.sum(z * z + _LOG_2PI, axis=2) - np.sum(np.log(self.sigma), axis=1)
         return log_sum_exp(terms + self.log_weight)
 
-    def log_target(self, A: np.ndarray) -> np.ndarray:
-        """Logarithm (m,) of likelihood (noise times ``inflation``) times prior at A (m, k), not
-        normalised.
+    def log_target(self, A: np.ndarray, noise_dof: int | None = None) -> np.ndarray:
+        """Logarithm (m,) of likelihood times prior at A (m, k), not normalised: with the noise
+        times ``inflation``, or as it is where it rests on ``noise_dof`` degrees of freedom.
         """
         d = A - self.information.A_hat
-        return -0.5 * np.einsum(
-            "ij,jk,ik->i", d, self.information.matrix, d
-        ) / self.inflation**2 + (self.prior.log_density(A))
+        q = np.einsum("ij,jk,ik->i", d, self.information.matrix, d)
+        if noise_dof is None:
+            return -0.5 * q / self.inflation**2 + self.prior.log_density(A)
+        power = -0.5 * (noise_dof + self.information.k)
+        return power * np.log1p(q / noise_dof) + self.prior.log_density(A)
 
-    def weighted_draws(self, seed: int, n: int) -> tuple[np.ndarray, np.ndarray]:
+    def weighted_draws(
+        self, seed: int, n: int, noise_dof: int | None = None
+    ) -> tuple[np.ndarray, np.ndarray]:
         """Draws A (n, k) and importance weights (n,) that stand for the linear-theory posterior.
 
         The draws come from a scrambled Sobol sequence, so that their averages are better than
@@ -99,7 +114,9 @@ class LinearPosterior:
         points = qmc.Sobol(self.information.k + 1, seed=np.random.default_rng(seed)).random(n)
         A = self.from_uniform(points)
         parts = np.array_split(A, max(1, n // 2048))
-        log_w = np.concatenate([self.log_target(part) - self.log_density(part) for part in parts])
+        log_w = np.concatenate(
+            [self.log_target(part, noise_dof) - self.log_density(part) for part in parts]
+        )
         return A, np.exp(log_w - np.max(log_w))
 
     def _outward(self) -> tuple[int, float, float, np.ndarray, np.ndarray]:

@@ -20,7 +20,7 @@ import os
 from collections.abc import Callable
 from dataclasses import dataclass, replace
 from pathlib import Path
-from typing import Any
+from typing import Any, Literal
 
 import emcee
 import numpy as np
@@ -33,7 +33,12 @@ from ngbound.limits.convergence import autocorrelation_time, split_r_hat
 from ngbound.limits.fit_protocol import ThrustFit
 from ngbound.limits.information import AU_D2, ThrustInformation, thrust_information
 from ngbound.limits.likelihood import Deviance, about_its_mode, deviance_of
-from ngbound.limits.linear_posterior import LinearPosterior, linear_posterior, log_sum_exp
+from ngbound.limits.linear_posterior import (
+    LinearPosterior,
+    linear_posterior,
+    log_sum_exp,
+    student_width,
+)
 from ngbound.limits.priors import ThrustPrior, thrust_prior
 
 try:
@@ -72,7 +77,8 @@ class Posterior:
     log_likelihood : (n,) float
         Relative to the least-squares point.
     noise_scale : (n,) float or None
-        Samples of the noise scale, if it was free.
+        Samples of the noise scale, if it was free or the errors rest on few degrees of freedom
+        (``information.noise_dof``).
     prior : ThrustPrior
     information : ThrustInformation
         Linear theory about the least-squares point.
@@ -283,8 +289,9 @@ class _Target:
         self.thrust = np.arange(fit.n_state, fit.n_state + self.k)
         self.others = np.setdiff1d(np.arange(self.p), self.thrust)
         self.theta_hat = np.asarray(fit.theta, dtype=float)
-        self.n_residuals = int(fit.dof) + self.p
-        self.noise_free = noise_free
+        noise_dof = information.noise_dof
+        self.noise_free = noise_free or noise_dof is not None
+        self.n_residuals = int(fit.dof if noise_dof is None else noise_dof) + self.p
         self.evaluations = 1
         self.chi2_hat = float(np.asarray(self.deviance(self.theta_hat[None, :]))[0])
         if not np.isfinite(self.chi2_hat) or (noise_free and self.chi2_hat <= 0.0):
@@ -294,6 +301,8 @@ class _Target:
                 "nothing to sample about; fit the arc again.",
                 theta=self.theta_hat,
             )
+        # errors that were estimated have their scale about 1, else it is that of the residuals
+        self.rest = self.chi2_hat if noise_dof is None else float(noise_dof)
 
     def split(self, coords: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """v (m, p - k) and A (m, k) of u (m, p)."""
@@ -335,14 +344,12 @@ class _Target:
         out.
         """
         if self.noise_free:
-            return -0.5 * self.n_residuals * np.log(chi2 / self.chi2_hat)
+            return -0.5 * self.n_residuals * np.log1p((chi2 - self.chi2_hat) / self.rest)
         return -0.5 * (chi2 - self.chi2_hat)
 
-    def chi2_of(self, log_likelihood: np.ndarray) -> np.ndarray:
-        """The inverse of ``log_likelihood_of``."""
-        if self.noise_free:
-            return self.chi2_hat * np.exp(-2.0 * log_likelihood / self.n_residuals)
-        return self.chi2_hat - 2.0 * log_likelihood
+    def square_about(self, log_likelihood: np.ndarray) -> np.ndarray:
+        """With a free noise scale, the sum of squares that the scale has to account for."""
+        return self.rest * np.exp(-2.0 * log_likelihood / self.n_residuals)
 
 
 class _IndependenceProposal:
@@ -415,6 +422,7 @@ def sample_posterior(
     n_walkers: int | None = None,
     max_steps: int = 5000,
     noise_scale: bool = False,
+    noise_dof: int | None | Literal["fit"] = "fit",
     likelihood: str = "gaussian",
     target_ess: float = 5000.0,
     lower_au_d2: float | None = None,
@@ -441,6 +449,10 @@ def sample_posterior(
     noise_scale : bool
         Leave a common factor on the noise free, with prior ds / s; it is integrated out
         analytically.
+    noise_dof : int or None, or "fit"
+        Degrees of freedom that the errors rest on: their scale then is as free as that, and the
+        likelihood that of Student. "fit": what the fit says of its own errors. None: known errors.
+        Without effect on a likelihood with tails of its own or where ``noise_scale`` is set.
     likelihood : str
         "gaussian", "student" or "contaminated"; see `ngbound.limits.likelihood`.
     target_ess : float
@@ -463,6 +475,10 @@ def sample_posterior(
     deviance = deviance_of(fit, likelihood)
     fit = about_its_mode(fit, likelihood)
     information = thrust_information(fit)
+    if noise_scale or likelihood != "gaussian":
+        noise_dof = None
+    if noise_dof != "fit":
+        information = replace(information, noise_dof=noise_dof)
     belief = thrust_prior(information, prior, lower_au_d2=lower_au_d2, upper_au_d2=upper_au_d2)
     target = _Target(fit, information, belief, noise_scale, likelihood, deviance)
     walkers = max(64, 4 * target.p) if n_walkers is None else n_walkers
@@ -476,6 +492,7 @@ def sample_posterior(
     if max_steps < 2 * PILOT_STEPS:
         raise LimitError(f"max_steps must be at least {2 * PILOT_STEPS}; {max_steps!r} was given.")
     noise = float(np.sqrt(target.chi2_hat / max(1, fit.dof))) if noise_scale else 1.0
+    noise *= student_width(information.noise_dof)
     proposal = _IndependenceProposal(target, noise)
     start_seed, chain_seed, noise_seed = np.random.SeedSequence(seed).spawn(3)
     mark = _fingerprint(target, seed, walkers)
@@ -662,7 +679,7 @@ def _posterior(
     scale = None
     if target.noise_free:
         draws = np.random.default_rng(noise_seed).chisquare(target.n_residuals, size=len(theta))
-        scale = np.sqrt(target.chi2_of(log_likelihood) / draws)
+        scale = np.sqrt(target.square_about(log_likelihood) / draws)
     count = state.kept * walkers
     tau_max, least = float(np.max(state.tau)), count / _thrust_tau(state)
     facts = (

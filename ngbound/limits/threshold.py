@@ -24,7 +24,7 @@ noncentral t and F.
 
 from collections.abc import Callable
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, Literal
 
 import numpy as np
 from astropy import units as u
@@ -314,7 +314,7 @@ def detection_threshold(
     power: float = 0.95,
     sided: int = 2,
     noise_scale: float = 1.0,
-    noise_dof: int | None = None,
+    noise_dof: int | None | Literal["fit"] = "fit",
     trials: int = 1,
 ) -> DetectionThreshold:
     """Smallest thrust that a test on this arc would find; see the module for the definition.
@@ -329,9 +329,9 @@ def detection_threshold(
         1 or 2, for the tests of one component.
     noise_scale : float
         Factor on every sigma, for instance sqrt(chi2 / dof).
-    noise_dof : int, optional
-        Degrees of freedom behind ``noise_scale`` if it was estimated from the residuals: t and F
-        tests.
+    noise_dof : int or None, or "fit"
+        Degrees of freedom that the errors rest on if they were estimated from the residuals: t and
+        F tests. "fit": what the fit says of its own errors. None: they are known.
     trials : int
         Number of thrust laws tried; the false-alarm rate holds for all of them together.
 
@@ -341,6 +341,8 @@ def detection_threshold(
         If the fit has no thrust or cannot separate it, or an argument is out of range.
     """
     information = thrust_information(fit)
+    if noise_dof == "fit":
+        noise_dof = information.noise_dof
     if not (np.isfinite(noise_scale) and noise_scale > 0.0):
         raise LimitError(f"The noise scale must be positive and finite; {noise_scale!r} was given.")
     if trials < 1:

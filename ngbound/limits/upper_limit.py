@@ -11,6 +11,9 @@ different questions:
 - the profile likelihood in linear theory (W. A. Rolke, A. M. Lopez & J. Conrad 2005, NIM A 551,
   493): the largest |A| whose chi2, all else free, exceeds the minimum by z_C^2. For |A| near zero
   with several components this one undercovers, since the profile of a length is not regular there.
+
+Where the errors rest on few degrees of freedom (``noise_dof`` of the information), the likelihood
+is that of Student, z_C its quantile, and the sigma of the unified interval grows in their ratio.
 """
 
 from collections.abc import Callable
@@ -21,12 +24,13 @@ import numpy as np
 from astropy import units as u
 from scipy.optimize import brentq
 from scipy.special import ndtri
+from scipy.stats import t
 
 from ngbound.errors import LimitError
 from ngbound.limits.convergence import quantile_with_error
 from ngbound.limits.fit_protocol import ThrustFit
 from ngbound.limits.information import AU_D2, ThrustInformation, thrust_information
-from ngbound.limits.linear_posterior import linear_posterior
+from ngbound.limits.linear_posterior import linear_posterior, student_width
 from ngbound.limits.posterior import Posterior
 from ngbound.limits.priors import ThrustPrior, thrust_prior
 from ngbound.limits.unified_interval import unified_interval
@@ -194,7 +198,7 @@ def upper_limit(
     else:
         information = thrust_information(posterior)
         belief = thrust_prior(information, prior)
-        flat, w = linear_posterior(information, belief).weighted_draws(LINEAR_SEED, LINEAR_DRAWS)
+        flat, w = _linear_draws(information, belief)
         A, weights = flat[:, None, :], w[:, None]
         source, converged, message = "linear theory", True, "Linear theory needs no chain."
 
@@ -211,7 +215,7 @@ def upper_limit(
     if weights is None:
         linear, _ = _linear_magnitude(information, belief, confidence)
     outward, outward_error, unified = _outward(information, A, weights, confidence)
-    z = float(ndtri(confidence))
+    z = _quantile(information, confidence)
     sigma_free = np.sqrt(np.diag(information.covariance))
     return UpperLimit(
         confidence=confidence,
@@ -238,10 +242,24 @@ def upper_limit(
     )
 
 
+def _linear_draws(
+    information: ThrustInformation, prior: ThrustPrior
+) -> tuple[np.ndarray, np.ndarray]:
+    dof = information.noise_dof
+    proposal = linear_posterior(information, prior, student_width(dof))
+    return proposal.weighted_draws(LINEAR_SEED, LINEAR_DRAWS, dof)
+
+
+def _quantile(information: ThrustInformation, confidence: float) -> float:
+    """Of the normal law, or of Student's."""
+    dof = information.noise_dof
+    return float(ndtri(confidence) if dof is None else t.ppf(confidence, dof))
+
+
 def _linear_magnitude(
     information: ThrustInformation, prior: ThrustPrior, confidence: float
 ) -> tuple[float, float]:
-    draws, weights = linear_posterior(information, prior).weighted_draws(LINEAR_SEED, LINEAR_DRAWS)
+    draws, weights = _linear_draws(information, prior)
     return quantile_with_error(np.linalg.norm(draws, axis=1)[:, None], confidence, weights[:, None])
 
 
@@ -270,7 +288,8 @@ def _outward(
     sigma = float(information.covariance[i, i] ** 0.5)
     unified = None
     if confidence > 0.5:
-        edges = unified_interval(float(information.A_hat[i]), sigma, confidence)
+        wide = sigma * _quantile(information, confidence) / float(ndtri(confidence))
+        edges = unified_interval(float(information.A_hat[i]), wide, confidence)
         unified = np.array(edges) * AU_D2
     radial = A[:, :, i]
     share = (radial >= 0.0).astype(float)
@@ -287,7 +306,7 @@ def profile_limit(information: ThrustInformation, confidence: float) -> float:
     The farthest point from the origin of an ellipsoid: with the multiplier t > 1 / f_min,
     A = t F (t F - 1)^-1 A_hat, one root in t.
     """
-    z = max(float(ndtri(confidence)), 0.0)
+    z = max(_quantile(information, confidence), 0.0)
     f = information.eigenvalues
     b = information.A_hat @ information.eigenvectors
     # in units of the largest sigma: g = f / f_min >= 1, multiplier s > 1, b_i s g_i / (s g_i - 1)

@@ -1,9 +1,12 @@
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from scipy import stats
 
 from ngbound.arc import ErrorModel
-from ngbound.fit import compare_fits, fit_orbit, student_factor
+from ngbound.fit import compare_fits, fit_orbit, student_factor, tail_probability
+from ngbound.limits import detection_threshold
 from ngbound.motion import Thrust
 from tests.fit.simulated import BELT, MJD_2020, nights, orbit_of, simulate
 
@@ -48,7 +51,7 @@ def test_switched_off_the_table_stands(quiet):
     of_record = plain.used.table["stn"].map(table).to_numpy(dtype=float)
     np.testing.assert_allclose(plain.noise.sigma_ra_arcsec, of_record, rtol=0.01)
     few = fit_orbit(truth.arc, error_model=ErrorModel(rescale_least=1000), initial=truth.orbit)
-    assert few.scales == ()
+    assert [scale.station for scale in few.scales] == ["all stations"]
 
 
 def test_stated_errors_are_rescaled_only_when_asked_for():
@@ -67,6 +70,76 @@ def test_fits_with_different_scales_are_compared_under_common_errors(quiet):
     told = compare_fits(null, push)
     assert told.refitted
     assert -0.1 < told.delta_chi2 < stats.chi2.isf(1e-4, 3)
+
+
+SHORT = nights(MJD_2020, 300, 8, 1)
+ALONG = Thrust("inverse-square", components="T")
+
+
+def short_fit(seed, model=SIMPLE):
+    """Eight nights of one record, whose errors the table takes three times too large."""
+    rng = np.random.default_rng([78, seed])
+    truth = simulate(orbit_of(BELT), SHORT, rng, sigma_arcsec=0.3, stated=False)
+    return fit_orbit(truth.arc, ALONG, model, initial=truth.orbit)
+
+
+def test_few_records_are_rescaled_together_and_say_on_how_little_it_rests():
+    fit = short_fit(0)
+    assert fit.dof == fit.noise_dof == 9
+    assert fit.reduced_chi2 == pytest.approx(1.0, abs=0.01)
+    assert fit.to_dict()["noise_dof"] == 9
+    assert "Student with 9 degrees of freedom" in fit.error_report
+    assert "all stations: 8 records in 8 nights" in fit.error_report
+    plain = short_fit(0, ErrorModel(catalogue_offsets=False, rescale_stations=False))
+    assert plain.scales == () and plain.noise_dof is None
+    held = short_fit(0, replace(SIMPLE, student=False))
+    assert held.scales == fit.scales and held.noise_dof is None
+
+
+@pytest.mark.slow
+def test_the_false_alarm_rate_is_right_where_the_scale_was_estimated_from_few_records():
+    fits = [short_fit(seed) for seed in range(250)]
+    significance = np.array([fit.significance for fit in fits])
+    student = np.array([tail_probability(s**2, 1, 9) for s in significance])
+    assert {fit.noise_dof for fit in fits} == {9}
+    assert stats.kstest(student, "uniform").pvalue > 1e-3
+    for alpha in (0.1, 0.05, 0.01):
+        found = int((student < alpha).sum())
+        assert stats.binomtest(found, len(fits), alpha).pvalue > 1e-3
+    # as if the errors were known, 1 % becomes more
+    known = int((2.0 * stats.norm.sf(significance) < 0.01).sum())
+    assert stats.binomtest(known, len(fits), 0.01).pvalue < 1e-3
+    # the threshold is that of the same test
+    threshold = detection_threshold(fits[0], false_alarm=0.01, power=0.9)
+    assert threshold.noise_dof == 9
+    known_errors = detection_threshold(fits[0], false_alarm=0.01, power=0.9, noise_dof=None)
+    assert threshold.free[0] > 1.2 * known_errors.free[0]
+
+
+def test_long_arcs_have_so_many_degrees_of_freedom_that_little_changes(quiet):
+    _, fit = quiet
+    assert 50 < fit.noise_dof < 2 * len(fit.used)
+
+
+def test_stations_whose_errors_are_known_take_away_from_the_doubt():
+    truth = simulate(
+        orbit_of(BELT), WHEN, np.random.default_rng(33), 0.2, stations=("500", "568"), stated=False
+    )
+    frame = truth.arc.table
+    mine = frame["stn"] == "568"
+    stated = frame.assign(rmsRA=frame["rmsRA"].where(~mine, 0.2))
+    stated["rmsDec"] = stated["rmsRA"]
+    both = fit_orbit(truth.arc, ALONG, SIMPLE, initial=truth.orbit)
+    one = fit_orbit(type(truth.arc).from_frame(stated), ALONG, SIMPLE, initial=truth.orbit)
+    assert [scale.station for scale in one.scales] == ["500"]
+    assert one.noise_dof is None or one.noise_dof > both.noise_dof
+
+
+def test_tail_probability():
+    # quantiles of chi2 and of F: standard tables
+    assert tail_probability(3.841, 1, None) == pytest.approx(0.05, abs=1e-4)
+    assert tail_probability(2.0 * 4.459, 2, 8) == pytest.approx(0.05, abs=1e-4)
+    assert tail_probability(-1e-9, 2, 8) == 1.0
 
 
 def test_student_factor():

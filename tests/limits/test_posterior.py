@@ -121,6 +121,20 @@ def test_free_noise_scale_widens_to_the_residuals():
     assert "noise scale" in free.summary().index
 
 
+def test_errors_that_rest_on_few_degrees_of_freedom_widen_the_posterior_by_themselves():
+    fit = replace(correlated(), noise_dof=12)
+    by_itself = sample_posterior(fit, seed=9, prior="flat-components", target_ess=4000)
+    off = sample_posterior(fit, seed=9, prior="flat-components", target_ess=4000, noise_dof=None)
+    ratio = by_itself.A_samples.std(axis=0) / off.A_samples.std(axis=0)
+    np.testing.assert_allclose(ratio, np.sqrt(12.0 / 10.0), rtol=0.06)
+    assert np.mean(by_itself.noise_scale) == pytest.approx(1.0, abs=0.1)
+    assert off.noise_scale is None and off.information.noise_dof is None
+    robust = sample_posterior(
+        replace(fit, noise_dof=None), seed=9, prior="flat-components", target_ess=4000
+    )
+    assert np.array_equal(robust.samples, off.samples)
+
+
 class Interrupted(Exception):
     """Stands for the process being killed."""
 

@@ -1,4 +1,5 @@
 import json
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -157,6 +158,17 @@ def test_estimate_does_not_enter_and_noise_scale_does():
     scaled = detection_threshold(correlated(), noise_scale=1.5)
     np.testing.assert_allclose(scaled.free.value, 1.5 * quiet.free.value)
     assert scaled.worst.value == pytest.approx(1.5 * quiet.worst.value)
+
+
+def test_errors_that_rest_on_few_degrees_of_freedom_raise_the_threshold_by_themselves():
+    fit = replace(correlated(), noise_dof=8)
+    by_itself, off = detection_threshold(fit), detection_threshold(fit, noise_dof=None)
+    assert (by_itself.noise_dof, off.noise_dof) == (8, None)
+    assert by_itself.delta_one == noncentrality(0.0027, 0.95, 1, noise_dof=8)
+    assert by_itself.worst > 1.3 * off.worst
+    assert off.worst == detection_threshold(correlated()).worst
+    assert "8 degrees of freedom" in str(by_itself)
+    assert by_itself.to_dict()["information"]["noise_dof"] == 8
 
 
 def test_several_laws_tried_cost_threshold():

@@ -1,4 +1,5 @@
 import json
+from dataclasses import replace
 
 import numpy as np
 import pytest
@@ -101,6 +102,20 @@ def test_profile_limit_is_the_farthest_point_of_the_ellipsoid(k, A_sigmas):
 def test_profile_limit_of_a_round_estimate_adds_sigmas():
     fit = isotropic(sigma=SIGMA, A=np.array([3.0, 0.0, 4.0]) * SIGMA)
     assert profile_limit(thrust_information(fit), 0.95) / SIGMA == pytest.approx(5.0 + 1.6448536)
+
+
+def test_errors_that_rest_on_few_degrees_of_freedom_raise_the_limit_by_themselves():
+    fit = replace(isotropic(k=1, sigma=SIGMA), noise_dof=8)
+    limit = upper_limit(fit, confidence=0.95, prior="flat-components")
+    # Student's t with 8 degrees of freedom, standard table: 2.306 two-sided, 1.860 one-sided
+    assert limit.magnitude.value / SIGMA == pytest.approx(2.306, rel=0.01)
+    assert limit.profile_magnitude.value / SIGMA == pytest.approx(1.860, abs=1e-3)
+    known = upper_limit(isotropic(k=1, sigma=SIGMA), confidence=0.95, prior="flat-components")
+    assert known.magnitude.value / SIGMA == pytest.approx(1.960, rel=0.01)
+    assert limit.unified_radial[1] > 1.1 * known.unified_radial[1]
+    several = upper_limit(replace(isotropic(sigma=SIGMA), noise_dof=4), prior="flat-components")
+    # the size of a Student vector in 3 dimensions: sqrt(3 F), F(3, 4) at 95 % is 6.591
+    assert several.magnitude.value / SIGMA == pytest.approx(np.sqrt(3.0 * 6.591), rel=0.02)
 
 
 @pytest.mark.parametrize("confidence", [0.0, 1.0, 1.5])

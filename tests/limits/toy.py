@@ -20,6 +20,7 @@ class ToyFit:
     dof: int
     curvature: float = 0.0
     fails_beyond: float = np.inf
+    noise_dof: int | None = None
 
     def chi2_many(self, thetas: np.ndarray) -> np.ndarray:
         d = np.asarray(thetas) - self.theta
