@@ -59,9 +59,7 @@ def _leg_arrays(
     fraction_h = tau_d - leg.tau_d[step_of]
     weight = np.empty((n, 2, N_NODES))
     for i in range(n):
-        weights_at(fraction_h[i] / h[i], weight[i, 0], weight[i, 1])
-    weight[:, 0] *= (h**2)[:, None]
-    weight[:, 1] *= h[:, None]
+        weights_at(fraction_h[i] / h[i], h[i], weight[i].reshape(-1))
     return leg.h_d, leg.nodes, leg.node_columns(), step_of, weight, fraction_h
 
 

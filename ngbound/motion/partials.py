@@ -12,7 +12,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from ngbound.errors import CaseError
-from ngbound.motion._kernels.grid import ROW, columns_at, node_columns, tabulate, variations
+from ngbound.motion._kernels.grid import ROW, WIDE, columns_at, node_columns, tabulate, variations
 from ngbound.motion._kernels.layout import PARAMETERS
 from ngbound.motion._kernels.radau import N_NODES
 from ngbound.motion.propagate import Leg, Track
@@ -25,8 +25,8 @@ class GridLeg:
     """The shared grid of one direction of time: steps, node tables and the columns of the partials.
 
     ``tau_d``, ``h_d`` (m,): steps, days from the epoch; ``nodes`` (m, 8, ROW): tables of the
-    kernels; ``begin`` (m + 1, 6, p) and ``accel`` (m, 8, 3, p): the columns and their second
-    derivatives.
+    kernels; ``begin`` (m + 1, 2 WIDE) and ``accel`` (m, 8, WIDE): the ``p`` columns and their
+    second derivatives as the kernels keep them.
     """
 
     tau_d: Floats = field(repr=False)
@@ -34,17 +34,18 @@ class GridLeg:
     nodes: Floats = field(repr=False)
     begin: Floats = field(repr=False)
     accel: Floats = field(repr=False)
+    p: int
     forward: bool
 
     def at(self, tau_d: Floats) -> Floats:
         """Columns (k, 6, p) at days from the epoch."""
-        out = np.empty((tau_d.size, 6, self.begin.shape[2]))
+        out = np.empty((tau_d.size, 6, self.p))
         columns_at(self.tau_d, self.h_d, self.begin, self.accel, self.forward, tau_d, out)
         return out
 
     def node_columns(self) -> Floats:
         """Columns at the nodes, (m, 8, 6, p)."""
-        out = np.empty((self.h_d.size, N_NODES, 6, self.begin.shape[2]))
+        out = np.empty((self.h_d.size, N_NODES, 6, self.p))
         node_columns(self.h_d, self.begin, self.accel, out)
         return out
 
@@ -83,10 +84,10 @@ def grid_leg(
         steps.active,
         nodes,
     )
-    begin = np.empty((steps.n + 1, 6, columns.size))
-    accel = np.empty((steps.n, N_NODES, 3, columns.size))
+    begin = np.empty((steps.n + 1, 2 * WIDE))
+    accel = np.empty((steps.n, N_NODES, WIDE))
     variations(track.tab.gm[0], track.push.a, columns, steps.length_d, nodes, begin, accel)
-    return GridLeg(steps.start_d, steps.length_d, nodes, begin, accel, leg.forward)
+    return GridLeg(steps.start_d, steps.length_d, nodes, begin, accel, columns.size, leg.forward)
 
 
 @dataclass(frozen=True, eq=False)

@@ -13,11 +13,12 @@ import numpy as np
 from numba import njit
 
 from .bodies import LANES, bodies_of_lane
-from .laws import PAIR, add_thrust, thrust_partials
+from .laws import PAIR, add_thrust
 from .layout import RELATIVITY_ALL, RELATIVITY_SUN
 
 EARTH_ZONE_AU = 0.02
 EARTH_POLE = np.array([0.0, 0.0, 1.0])
+N_TIDES = 17
 _FAST = {"contract", "nsz"}
 
 
@@ -312,8 +313,12 @@ def add_rare_terms(tab, phys, pos, vel, path, acc):
 
 
 @njit(cache=True, error_model="numpy", fastmath=_FAST)
-def near_earth(phys, pos, path):
-    """Whether a node lies where the Earth's flattening counts."""
+def has_rare_terms(phys, pos, path):
+    """Whether a term of ``add_rare_terms`` counts over this step: one is chosen, or a node lies
+    where the Earth's flattening is felt.
+    """
+    if phys.relativity == RELATIVITY_ALL or phys.sun_j2 != 0.0 or phys.sun_spin != 0.0:
+        return True
     if phys.earth_row < 0 or phys.earth_j2 == 0.0:
         return False
     at = LANES * phys.earth_row
@@ -336,81 +341,67 @@ def others_at_nodes(tab, gm, push, phys, active, pos, vel, path, pair, acc):
     planets_at_nodes(gm, pos, path, pair, acc)
     if phys.relativity == RELATIVITY_SUN:
         add_sun_relativity(tab.gm[0], phys.c_au_d, pos, vel, path, acc)
-    if (
-        phys.relativity == RELATIVITY_ALL
-        or phys.sun_j2 != 0.0
-        or phys.sun_spin != 0.0
-        or near_earth(phys, pos, path)
-    ):
+    if has_rare_terms(phys, pos, path):
         add_rare_terms(tab, phys, pos, vel, path, acc)
     add_thrust(push, tab.gm[0], active, pos, vel, path, acc)
 
 
-@njit(cache=True, error_model="numpy")
-def tides(tab, pos, x, first, gx, third):
-    """Newtonian gradient of the bodies from row ``first`` on (added to ``gx``) and their third
-    derivative.
+@njit(cache=True, error_model="numpy", fastmath=_FAST)
+def tides_at_nodes(gm, pos, path, pair, out):
+    """Newtonian gradient of all bodies but the Sun at the eight nodes, and its slope.
 
-    ``third`` (10,) receives T_xxx, xxy, xxz, xyy, xyz, xzz, yyy, yyz, yzz, zzz with acceleration to
-    second order T_ijk d_j d_k / 2. Returns the sum of GM/d^5, the scale of the next order.
+    ``out`` (17, 8): the gradient's xx, yy, zz, xy, xz, yz; the third derivative's xxx, xxy, xxz,
+    xyy, xyz, xzz, yyy, yyz, yzz, zzz, with acceleration to second order T_ijk d_j d_k / 2; and the
+    sum of GM/d^5, the scale of the next order. ``gm``, ``pos`` as of ``room_for_bodies``; ``path``
+    holds the nodes twice; ``pair`` (17 PAIR,) is scrap.
     """
-    scale = 0.0
-    for b in range(first, tab.gm.size):
-        dx = x[0] - pos[b, 0]
-        dy = x[1] - pos[b, 1]
-        dz = x[2] - pos[b, 2]
-        d2 = dx * dx + dy * dy + dz * dz
-        d = math.sqrt(d2)
-        f = tab.gm[b] / (d2 * d)
-        g = 3.0 * f / d2
-        gx[0, 0] += g * dx * dx - f
-        gx[1, 1] += g * dy * dy - f
-        gx[2, 2] += g * dz * dz - f
-        gx[0, 1] += g * dx * dy
-        gx[0, 2] += g * dx * dz
-        gx[1, 2] += g * dy * dz
-        gx[1, 0] += g * dx * dy
-        gx[2, 0] += g * dx * dz
-        gx[2, 1] += g * dy * dz
-        q = 5.0 * g / d2
-        third[0] += 3.0 * g * dx - q * dx * dx * dx
-        third[1] += g * dy - q * dx * dx * dy
-        third[2] += g * dz - q * dx * dx * dz
-        third[3] += g * dx - q * dx * dy * dy
-        third[4] -= q * dx * dy * dz
-        third[5] += g * dx - q * dx * dz * dz
-        third[6] += 3.0 * g * dy - q * dy * dy * dy
-        third[7] += g * dz - q * dy * dy * dz
-        third[8] += g * dy - q * dy * dz * dz
-        third[9] += 3.0 * g * dz - q * dz * dz * dz
-        scale += f / d2
-    return scale
+    pair[:] = 0.0
+    for at in range(LANES, gm.size, PAIR):
+        for lane in range(PAIR):
+            dx = path[0, lane] - pos[0, at + lane]
+            dy = path[1, lane] - pos[1, at + lane]
+            dz = path[2, lane] - pos[2, at + lane]
+            d2 = dx * dx + dy * dy + dz * dz
+            f = gm[at + lane] / (d2 * math.sqrt(d2))
+            per = 1.0 / d2
+            g = 3.0 * f * per
+            q = 5.0 * g * per
+            xx = dx * dx
+            yy = dy * dy
+            zz = dz * dz
+            pair[lane] += g * xx - f
+            pair[PAIR + lane] += g * yy - f
+            pair[2 * PAIR + lane] += g * zz - f
+            pair[3 * PAIR + lane] += g * dx * dy
+            pair[4 * PAIR + lane] += g * dx * dz
+            pair[5 * PAIR + lane] += g * dy * dz
+            pair[6 * PAIR + lane] += (3.0 * g - q * xx) * dx
+            pair[7 * PAIR + lane] += (g - q * xx) * dy
+            pair[8 * PAIR + lane] += (g - q * xx) * dz
+            pair[9 * PAIR + lane] += (g - q * yy) * dx
+            pair[10 * PAIR + lane] -= q * dx * dy * dz
+            pair[11 * PAIR + lane] += (g - q * zz) * dx
+            pair[12 * PAIR + lane] += (3.0 * g - q * yy) * dy
+            pair[13 * PAIR + lane] += (g - q * yy) * dz
+            pair[14 * PAIR + lane] += (g - q * zz) * dy
+            pair[15 * PAIR + lane] += (3.0 * g - q * zz) * dz
+            pair[16 * PAIR + lane] += f * per
+    for row in range(N_TIDES):
+        for j in range(LANES):
+            out[row, j] = pair[row * PAIR + j] + pair[row * PAIR + LANES + j]
 
 
 @njit(cache=True, error_model="numpy")
-def other_partials(tab, push, phys, active, pos, vel, x, v, gx, gv, unit, unit_x, unit_v, extra):
-    """Partials of everything but the point masses.
-
-    Relativity, quadrupoles and frame dragging are added to ``gx``, ``gv``, and so is radiation
-    pressure; the thrust goes to ``unit``, ``unit_x``, ``unit_v``, ``extra`` (rows 0, 1; row 2:
-    radiation pressure for srp = 1).
-    """
-    h = np.empty(3)
-    w = np.empty(3)
-    for i in range(3):
-        h[i] = x[i] - pos[0, i]
-        w[i] = v[i] - vel[0, i]
-    gm_sun = tab.gm[0]
+def add_rare_partials(tab, phys, pos, vel, x, v, h, w, gx, gv):
+    """Partials of the terms of ``add_rare_terms`` at one node, added to ``gx``, ``gv``."""
     scrap = np.zeros(3)
-    if phys.relativity == RELATIVITY_SUN:
-        add_sun_relativity_partials(gm_sun, phys.c_au_d, h, w, gx, gv)
-    elif phys.relativity == RELATIVITY_ALL:
+    if phys.relativity == RELATIVITY_ALL:
         full_relativity(tab.gm, tab.parent, phys.c_au_d, pos, vel, x, v, scrap, gx, gv, True)
     if phys.sun_j2 != 0.0:
-        add_quadrupole_partials(gm_sun, phys.sun_j2, phys.sun_pole, h, gx)
+        add_quadrupole_partials(tab.gm[0], phys.sun_j2, phys.sun_pole, h, gx)
     if phys.sun_spin != 0.0:
         add_frame_dragging(
-            gm_sun, phys.c_au_d, phys.sun_spin, phys.sun_pole, h, w, scrap, gx, gv, True
+            tab.gm[0], phys.c_au_d, phys.sun_spin, phys.sun_pole, h, w, scrap, gx, gv, True
         )
     if phys.earth_row >= 0 and phys.earth_j2 != 0.0:
         d = np.empty(3)
@@ -418,14 +409,17 @@ def other_partials(tab, push, phys, active, pos, vel, x, v, gx, gv, unit, unit_x
             d[i] = x[i] - pos[phys.earth_row, i]
         if d[0] * d[0] + d[1] * d[1] + d[2] * d[2] < EARTH_ZONE_AU * EARTH_ZONE_AU:
             add_quadrupole_partials(tab.gm[phys.earth_row], phys.earth_j2, EARTH_POLE, d, gx)
+
+
+@njit(cache=True, error_model="numpy")
+def add_pressure_partials(srp, h, gx, out):
+    """Radiation pressure per unit at heliocentric ``h`` into ``out`` (3,), its gradient to
+    ``gx``.
+    """
     r2 = h[0] * h[0] + h[1] * h[1] + h[2] * h[2]
-    r = math.sqrt(r2)
-    thrust_partials(push, gm_sun, active, h, w, unit, unit_x, unit_v, extra)
+    f = 1.0 / (r2 * math.sqrt(r2))
     for i in range(3):
-        extra[2, i] = h[i] / (r2 * r)
-    if push.srp != 0.0:
-        f = push.srp / (r2 * r)
-        for i in range(3):
-            for j in range(3):
-                gx[i, j] -= 3.0 * f * h[i] * h[j] / r2
-            gx[i, i] += f
+        out[i] = f * h[i]
+        gx[i, i] += srp * f
+        for j in range(3):
+            gx[i, j] -= 3.0 * srp * f * h[i] * h[j] / r2

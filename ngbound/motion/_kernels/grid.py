@@ -12,10 +12,27 @@ import numpy as np
 from numba import njit
 
 from .bodies import bodies_at, bodies_of_lane, room_for_bodies
-from .forces import other_partials, tides
-from .laws import thrust_partials
-from .layout import RELATIVITY_ALL, WINDOW_DISTANCE
-from .radau import N_NODES, NODES, TO_POWERS, V_WEIGHTS, X_WEIGHTS, dense_many, find_step
+from .forces import (
+    N_TIDES,
+    add_pressure_partials,
+    add_rare_partials,
+    add_sun_relativity_partials,
+    has_rare_terms,
+    tides_at_nodes,
+)
+from .laws import PAIR, room_for_partials, thrust_partials
+from .layout import RELATIVITY_ALL, RELATIVITY_SUN, WINDOW_DISTANCE
+from .radau import (
+    N_NODES,
+    NODES,
+    ONCE,
+    TO_POWERS,
+    TWICE,
+    V_WEIGHTS,
+    X_WEIGHTS,
+    dense_many,
+    find_step,
+)
 
 # columns of a node's row
 SUN = 0
@@ -31,6 +48,12 @@ SECOND_PUSH = 104
 SECOND_RELATIVITY = 105
 JUMP = 106
 ROW = 115
+
+COLUMNS = 16
+"""Places for the columns of the partials: more than there are parameters, and two whole vectors."""
+WIDE = 3 * COLUMNS
+_FAST = {"contract", "nsz", "nnan", "ninf", "arcp"}
+_PATH_POWERS = np.hstack([TO_POWERS * TWICE[:, None], TO_POWERS * ONCE[:, None]])
 
 
 @njit(cache=True, error_model="numpy")
@@ -58,19 +81,20 @@ def tabulate(
     nb = tab.gm.size
     pos = np.empty((nb, 3))
     vel = np.empty((nb, 3))
-    lane_pos, lane_vel, polynomial, rates, interval, _ = room_for_bodies(tab)
+    lane_pos, lane_vel, polynomial, rates, interval, gm = room_for_bodies(tab)
     taus = np.empty(N_NODES)
     times = np.empty(N_NODES)
     states = np.empty((N_NODES, 6))
+    path = np.empty((3, PAIR))
+    pair = np.empty(N_TIDES * PAIR)
+    tide = np.empty((N_TIDES, N_NODES))
     gx = np.empty((3, 3))
     gv = np.empty((3, 3))
-    third = np.empty(10)
-    unit = np.empty((3, 3))
-    unit_x = np.empty((3, 3, 3))
-    unit_v = np.empty((3, 3, 3))
-    extra = np.empty((3, 3))
     h = np.empty(3)
     w = np.empty(3)
+    pressure = np.empty(3)
+    thrust = np.empty(SCALE - UNIT)
+    room = room_for_partials()
     before = False
     for k in range(grid_tau.size):
         active = grid_on[k]
@@ -80,85 +104,71 @@ def tabulate(
         dense_many(start, length, begin, power, n, forward, taus, states)
         bodies_at(tab, times, every, polynomial, rates, interval, lane_pos, lane_vel)
         for j in range(N_NODES):
-            state = states[j]
-            bodies_of_lane(lane_pos, j, pos)
-            bodies_of_lane(lane_vel, j, vel)
             for i in range(3):
-                for m in range(3):
-                    gx[i, m] = 0.0
-                    gv[i, m] = 0.0
-            for i in range(10):
-                third[i] = 0.0
-            scale = tides(tab, pos, state[:3], 1, gx, third)
-            other_partials(
-                tab,
-                push,
-                phys,
-                active,
-                pos,
-                vel,
-                state[:3],
-                state[3:],
-                gx,
-                gv,
-                unit,
-                unit_x,
-                unit_v,
-                extra,
-            )
-            row = out[k, j]
+                path[i, j] = states[j, i]
+                path[i, N_NODES + j] = states[j, i]
+        tides_at_nodes(gm, lane_pos, path, pair, tide)
+        rare = has_rare_terms(phys, lane_pos, path)
+        for j in range(N_NODES):
             r2 = 0.0
             for i in range(3):
-                row[SUN + i] = state[i] - pos[0, i]
-                r2 += row[SUN + i] * row[SUN + i]
-            for i in range(10):
-                row[THIRD + i] = third[i]
-            for i in range(3):
+                h[i] = states[j, i] - lane_pos[i, j]
+                w[i] = states[j, 3 + i] - lane_vel[i, j]
+                r2 += h[i] * h[i]
+                gx[i, i] = tide[i, j]
                 for m in range(3):
-                    at = 3 * i + m
-                    row[GX + at] = gx[i, m]
-                    row[GV + at] = gv[i, m]
-                    row[UNIT + at] = unit[i, m]
-                    row[EXTRA + at] = extra[i, m]
-                    row[JUMP + at] = 0.0
-                    for n_axis in range(3):
-                        row[UNIT_X + 3 * at + n_axis] = unit_x[i, m, n_axis]
-                        row[UNIT_V + 3 * at + n_axis] = unit_v[i, m, n_axis]
-            row[SCALE] = scale
+                    gv[i, m] = 0.0
+            gx[0, 1] = gx[1, 0] = tide[3, j]
+            gx[0, 2] = gx[2, 0] = tide[4, j]
+            gx[1, 2] = gx[2, 1] = tide[5, j]
+            if phys.relativity == RELATIVITY_SUN:
+                add_sun_relativity_partials(tab.gm[0], phys.c_au_d, h, w, gx, gv)
+            if rare:
+                bodies_of_lane(lane_pos, j, pos)
+                bodies_of_lane(lane_vel, j, vel)
+                add_rare_partials(tab, phys, pos, vel, states[j, :3], states[j, 3:], h, w, gx, gv)
+            add_pressure_partials(push.srp, h, gx, pressure)
+            thrust_partials(push, tab.gm[0], active, h, w, room, thrust)
+            row = out[k, j]
+            for i in range(3):
+                row[SUN + i] = h[i]
+                thrust[EXTRA - UNIT + 6 + i] = pressure[i]
+                for m in range(3):
+                    row[GX + 3 * i + m] = gx[i, m]
+                    row[GV + 3 * i + m] = gv[i, m]
+            for i in range(10):
+                row[THIRD + i] = tide[6 + i, j]
+            for i in range(SCALE - UNIT):
+                row[UNIT + i] = thrust[i]
+            row[SCALE] = tide[16, j]
             # sizes of the second-order terms that the neighbours leave out
             r = math.sqrt(r2)
             g = 0.0
             slope = 0.0
             for i in range(3):
-                g += unit[0, i] ** 2
+                g += thrust[i] ** 2
                 for m in range(3):
-                    slope += (unit_x[0, i, m] * r) ** 2
+                    slope += (thrust[UNIT_X - UNIT + 3 * i + m] * r) ** 2
+            row[SECOND_PUSH] = 0.0
             if g > 0.0:
                 row[SECOND_PUSH] = 0.5 * math.sqrt(g) * (1.0 + math.sqrt(slope / g)) ** 2 / r2
-            else:
-                row[SECOND_PUSH] = 0.0
             row[SECOND_RELATIVITY] = 30.0 * (tab.gm[0] / (phys.c_au_d * r2)) ** 2 / r
+            for i in range(9):
+                row[JUMP + i] = 0.0
             if j == 0 and k > 0 and active != before and push.window_kind == WINDOW_DISTANCE:
                 # where the distance switches the thrust, a shifted path meets the switch at another
                 # time
-                speed = 0.0
-                for i in range(3):
-                    h[i] = state[i] - pos[0, i]
-                    w[i] = state[3 + i] - vel[0, i]
-                    speed += h[i] * w[i] / math.sqrt(r2)
-                thrust_partials(
-                    push, tab.gm[0], active != before, h, w, unit, unit_x, unit_v, extra
-                )
+                radial_speed = (h[0] * w[0] + h[1] * w[1] + h[2] * w[2]) / r
+                thrust_partials(push, tab.gm[0], active != before, h, w, room, thrust)
                 sign = 1.0 if active else -1.0
-                for i in range(3):
-                    for m in range(3):
-                        row[JUMP + 3 * i + m] = sign * unit[i, m] / speed
+                for i in range(9):
+                    row[JUMP + i] = sign * thrust[i] / radial_speed
         before = active
 
 
 @njit(cache=True, error_model="numpy")
 def apply_jump(row, amounts, columns):
-    """Change of the velocity columns (6, p) where a distance window switches the thrust.
+    """Change of the velocity columns (6 COLUMNS,) where a distance window switches the thrust.
 
     A path shifted by d meets the switch later by -(R . d) / r', and has the thrust that much longer
     or shorter.
@@ -171,159 +181,231 @@ def apply_jump(row, amounts, columns):
             + amounts[2] * row[JUMP + 6 + i]
         )
         if jump != 0.0:
-            for c in range(columns.shape[1]):
+            for c in range(COLUMNS):
                 along = (
-                    row[SUN] * columns[0, c]
-                    + row[SUN + 1] * columns[1, c]
-                    + row[SUN + 2] * columns[2, c]
+                    row[SUN] * columns[c]
+                    + row[SUN + 1] * columns[COLUMNS + c]
+                    + row[SUN + 2] * columns[2 * COLUMNS + c]
                 ) / r
-                columns[3 + i, c] += jump * along
+                columns[(3 + i) * COLUMNS + c] += jump * along
+
+
+@njit(cache=True, error_model="numpy", fastmath=_FAST)
+def column_paths(begin, t, wx, wv, accel, dx, dv):
+    """Columns of position and velocity (3 COLUMNS,) ``t`` days into a step, from the weighted
+    accelerations (8, 3 COLUMNS) of its nodes.
+    """
+    for at in range(WIDE):
+        px = begin[at] + t * begin[WIDE + at]
+        pv = begin[WIDE + at]
+        for m in range(N_NODES):
+            px += wx[m] * accel[m, at]
+            pv += wv[m] * accel[m, at]
+        dx[at] = px
+        dv[at] = pv
+
+
+@njit(cache=True, error_model="numpy", fastmath=_FAST)
+def column_forces(g, gv, force, dx, dv, out):
+    """Second derivatives of the columns (3 COLUMNS,) at one node."""
+    for i in range(3):
+        gx = g[i, 0]
+        gy = g[i, 1]
+        gz = g[i, 2]
+        hx = gv[i, 0]
+        hy = gv[i, 1]
+        hz = gv[i, 2]
+        for c in range(COLUMNS):
+            out[i * COLUMNS + c] = (
+                force[i * COLUMNS + c]
+                + gx * dx[c]
+                + gy * dx[COLUMNS + c]
+                + gz * dx[2 * COLUMNS + c]
+                + hx * dv[c]
+                + hy * dv[COLUMNS + c]
+                + hz * dv[2 * COLUMNS + c]
+            )
+
+
+@njit(cache=True, error_model="numpy", fastmath=_FAST)
+def settle(new, old, change, size):
+    """``old`` becomes ``new``; adds what changed and the size of each column."""
+    for c in range(COLUMNS):
+        for i in range(3):
+            at = i * COLUMNS + c
+            change[c] += abs(new[at] - old[at])
+            size[c] += abs(new[at])
+            old[at] = new[at]
+
+
+@njit(cache=True, error_model="numpy")
+def node_partials(gm_sun, a_ref, row, columns, g, gv, force):
+    """Partials of the acceleration at one node with respect to position and velocity (3, 3), and
+    those with respect to the wanted parameters, ``force`` (3 COLUMNS,).
+    """
+    r2 = row[SUN] ** 2 + row[SUN + 1] ** 2 + row[SUN + 2] ** 2
+    f = gm_sun / (r2 * math.sqrt(r2))
+    for i in range(3):
+        for m in range(3):
+            at = 3 * i + m
+            g[i, m] = row[GX + at] + 3.0 * f * row[SUN + i] * row[SUN + m] / r2
+            gv[i, m] = row[GV + at]
+            for a in range(3):
+                g[i, m] += a_ref[a] * row[UNIT_X + 9 * a + at]
+                gv[i, m] += a_ref[a] * row[UNIT_V + 9 * a + at]
+        g[i, i] -= f
+    for c in range(columns.size):
+        which = columns[c]
+        if which >= 6:
+            at = UNIT + 3 * (which - 6) if which < 9 else EXTRA + 3 * (which - 9)
+            for i in range(3):
+                force[i * COLUMNS + c] = row[at + i]
 
 
 @njit(cache=True, error_model="numpy")
 def variations(gm_sun, a_ref, columns, grid_h, nodes, begin, accel):
     """Solve the variational equations for the wanted parameters.
 
-    ``columns`` (p,): parameter numbers as in ``layout.PARAMETERS``. ``begin`` (steps + 1, 6, p)
-    receives the columns at the start of each step, ``accel`` (steps, 8, 3, p) their second
-    derivatives at the nodes.
+    ``columns`` (p,): parameter numbers as in ``layout.PARAMETERS``. ``begin`` (steps + 1, 2 WIDE)
+    receives the columns at the start of each step, position then velocity, ``accel`` (steps, 8,
+    WIDE) their second derivatives at the nodes. Each axis has COLUMNS places, the last ones idle.
     """
-    p = columns.size
-    for i in range(6):
-        for c in range(p):
-            begin[0, i, c] = 0.0
-    for c in range(p):
+    begin[0] = 0.0
+    for c in range(columns.size):
         if columns[c] < 6:
-            begin[0, columns[c], c] = 1.0
+            begin[0, columns[c] * COLUMNS + c] = 1.0
     g = np.empty((N_NODES, 3, 3))
     gv = np.empty((N_NODES, 3, 3))
-    force = np.zeros((N_NODES, 3, p))
-    dx = np.empty((3, p))
-    dv = np.empty((3, p))
+    force = np.zeros((N_NODES, WIDE))
+    wx = np.zeros(N_NODES)
+    wv = np.zeros(N_NODES)
+    dx = np.empty(WIDE)
+    dv = np.empty(WIDE)
+    new = np.empty(WIDE)
+    change = np.empty(COLUMNS)
+    size = np.empty(COLUMNS)
     for k in range(grid_h.size):
         h = grid_h[k]
-        apply_jump(nodes[k, 0], a_ref, begin[k])
+        at_start = begin[k]
+        values = accel[k]
+        values[:] = 0.0
+        apply_jump(nodes[k, 0], a_ref, at_start)
         for j in range(N_NODES):
-            row = nodes[k, j]
-            r2 = row[SUN] ** 2 + row[SUN + 1] ** 2 + row[SUN + 2] ** 2
-            f = gm_sun / (r2 * math.sqrt(r2))
-            for i in range(3):
-                for m in range(3):
-                    at = 3 * i + m
-                    g[j, i, m] = row[GX + at] + 3.0 * f * row[SUN + i] * row[SUN + m] / r2
-                    gv[j, i, m] = row[GV + at]
-                    for a in range(3):
-                        g[j, i, m] += a_ref[a] * row[UNIT_X + 9 * a + at]
-                        gv[j, i, m] += a_ref[a] * row[UNIT_V + 9 * a + at]
-                g[j, i, i] -= f
-            for c in range(p):
-                which = columns[c]
-                if which >= 6:
-                    at = UNIT + 3 * (which - 6) if which < 9 else EXTRA + 3 * (which - 9)
-                    for i in range(3):
-                        force[j, i, c] = row[at + i]
-        # start: the acceleration on a straight path
-        for j in range(N_NODES):
-            s = NODES[j]
-            for i in range(3):
-                for c in range(p):
-                    total = force[j, i, c]
-                    for m in range(3):
-                        total += g[j, i, m] * (begin[k, m, c] + h * s * begin[k, 3 + m, c])
-                        total += gv[j, i, m] * begin[k, 3 + m, c]
-                    accel[k, j, i, c] = total
-        previous = 1e300
-        for _ in range(40):
-            change = 0.0
-            largest = 0.0
-            for j in range(1, N_NODES):
-                s = NODES[j]
-                for i in range(3):
-                    for c in range(p):
-                        dx[i, c] = 0.0
-                        dv[i, c] = 0.0
-                    for m in range(N_NODES):
-                        wx = X_WEIGHTS[j, m] * h * h
-                        wv = V_WEIGHTS[j, m] * h
-                        for c in range(p):
-                            dx[i, c] += wx * accel[k, m, i, c]
-                            dv[i, c] += wv * accel[k, m, i, c]
-                    for c in range(p):
-                        dx[i, c] += begin[k, i, c] + h * s * begin[k, 3 + i, c]
-                        dv[i, c] += begin[k, 3 + i, c]
-                for i in range(3):
-                    for c in range(p):
-                        total = force[j, i, c]
-                        for m in range(3):
-                            total += g[j, i, m] * dx[m, c] + gv[j, i, m] * dv[m, c]
-                        change = max(change, abs(total - accel[k, j, i, c]))
-                        largest = max(largest, abs(total))
-                        accel[k, j, i, c] = total
-            if change <= 1e-15 * largest or (change < 1e-12 * largest and change > 0.3 * previous):
-                break
-            previous = change
-        for i in range(3):
-            for c in range(p):
-                px = 0.0
-                pv = 0.0
+            node_partials(gm_sun, a_ref, nodes[k, j], columns, g[j], gv[j], force[j])
+            # start: the acceleration on a straight path, or the last step's polynomial continued
+            if k == 0 or j == 0:
+                wx[:] = 0.0
+                wv[:] = 0.0
+                column_paths(at_start, NODES[j] * h, wx, wv, values, dx, dv)
+                column_forces(g[j], gv[j], force[j], dx, dv, values[j])
+            else:
+                s = 1.0 + NODES[j] * h / grid_h[k - 1]
                 for m in range(N_NODES):
-                    px += X_WEIGHTS[N_NODES, m] * accel[k, m, i, c]
-                    pv += V_WEIGHTS[N_NODES, m] * accel[k, m, i, c]
-                begin[k + 1, i, c] = begin[k, i, c] + h * (begin[k, 3 + i, c] + h * px)
-                begin[k + 1, 3 + i, c] = begin[k, 3 + i, c] + h * pv
+                    total = 0.0
+                    for i in range(N_NODES - 1, -1, -1):
+                        total = total * s + TO_POWERS[i, m]
+                    wv[m] = total
+                combine(wv, accel[k - 1], values[j])
+        previous = 1e300
+        for sweep in range(40):
+            change[:] = 0.0
+            size[:] = 0.0
+            for j in range(1, N_NODES):
+                for m in range(N_NODES):
+                    wx[m] = h * h * X_WEIGHTS[j, m]
+                    wv[m] = h * V_WEIGHTS[j, m]
+                column_paths(at_start, NODES[j] * h, wx, wv, values, dx, dv)
+                column_forces(g[j], gv[j], force[j], dx, dv, new)
+                settle(new, values[j], change, size)
+            worst = 0.0
+            for c in range(columns.size):
+                if change[c] > worst * size[c]:
+                    worst = change[c] / size[c]
+            # the next change is about this one times the last ratio
+            if sweep > 0 and worst * min(worst / previous, 1.0) <= 1e-16:
+                break
+            if worst < 1e-12 and worst > 0.3 * previous:
+                break
+            previous = worst
+        for m in range(N_NODES):
+            wx[m] = h * h * X_WEIGHTS[N_NODES, m]
+            wv[m] = h * V_WEIGHTS[N_NODES, m]
+        column_paths(at_start, h, wx, wv, values, begin[k + 1, :WIDE], begin[k + 1, WIDE:])
+
+
+@njit(cache=True, error_model="numpy", fastmath=_FAST)
+def combine(weight, values, out):
+    """Weighted sum of eight rows of columns (8, WIDE)."""
+    for at in range(WIDE):
+        total = 0.0
+        for m in range(N_NODES):
+            total += weight[m] * values[m, at]
+        out[at] = total
+
+
+@njit(cache=True, error_model="numpy")
+def unpack(dx, dv, out):
+    """Columns of position and velocity (3 COLUMNS,) as the first columns of ``out`` (6, p)."""
+    for i in range(3):
+        for c in range(out.shape[1]):
+            out[i, c] = dx[i * COLUMNS + c]
+            out[3 + i, c] = dv[i * COLUMNS + c]
 
 
 @njit(cache=True, error_model="numpy")
 def node_columns(grid_h, begin, accel, out):
     """Columns of position and velocity at every node, ``out`` (steps, 8, 6, p)."""
-    p = begin.shape[2]
+    wx = np.empty(N_NODES)
+    wv = np.empty(N_NODES)
+    dx = np.empty(WIDE)
+    dv = np.empty(WIDE)
     for k in range(grid_h.size):
         h = grid_h[k]
         for j in range(N_NODES):
-            for i in range(3):
-                for c in range(p):
-                    px = 0.0
-                    pv = 0.0
-                    for m in range(N_NODES):
-                        px += X_WEIGHTS[j, m] * accel[k, m, i, c]
-                        pv += V_WEIGHTS[j, m] * accel[k, m, i, c]
-                    out[k, j, i, c] = begin[k, i, c] + h * (NODES[j] * begin[k, 3 + i, c] + h * px)
-                    out[k, j, 3 + i, c] = begin[k, 3 + i, c] + h * pv
+            for m in range(N_NODES):
+                wx[m] = h * h * X_WEIGHTS[j, m]
+                wv[m] = h * V_WEIGHTS[j, m]
+            column_paths(begin[k], NODES[j] * h, wx, wv, accel[k], dx, dv)
+            unpack(dx, dv, out[k, j])
 
 
-@njit(cache=True, error_model="numpy")
-def weights_at(s, wx, wv):
-    """Weights (8,) of the node accelerations for position and velocity at the fraction ``s`` of a
-    step.
+@njit(cache=True, error_model="numpy", fastmath=_FAST)
+def weights_at(s, h, out):
+    """Weights (16,) of the node accelerations for position, then velocity, at the fraction ``s`` of
+    a step of ``h`` days.
     """
-    for j in range(N_NODES):
-        px = 0.0
-        pv = 0.0
+    for at in range(2 * N_NODES):
+        total = 0.0
         for k in range(N_NODES - 1, -1, -1):
-            px = px * s + TO_POWERS[k, j] / ((k + 1.0) * (k + 2.0))
-            pv = pv * s + TO_POWERS[k, j] / (k + 1.0)
-        wx[j] = px * s * s
-        wv[j] = pv * s
+            total = total * s + _PATH_POWERS[k, at]
+        out[at] = total
+    for j in range(N_NODES):
+        out[j] *= h * h * s * s
+        out[N_NODES + j] *= h * s
 
 
 @njit(cache=True, error_model="numpy")
 def columns_at(grid_tau, grid_h, begin, accel, forward, taus, out):
-    """Columns of the state, ``out`` (m, 6, p), at many ``taus``."""
-    p = begin.shape[2]
-    wx = np.empty(N_NODES)
-    wv = np.empty(N_NODES)
+    """Columns of the state, ``out`` (m, 6, p), at many ``taus``; quickest where they are sorted."""
+    weight = np.empty(2 * N_NODES)
+    wx = weight[:N_NODES]
+    wv = weight[N_NODES:]
+    dx = np.empty(WIDE)
+    dv = np.empty(WIDE)
     n = grid_h.size
+    k = -1
+    s = 2.0
+    at_start = begin[0]
+    values = accel[0]
     for t in range(taus.size):
-        k = find_step(grid_tau, n, forward, taus[t])
+        if k >= 0:
+            s = (taus[t] - grid_tau[k]) / grid_h[k]
+        if not 0.0 <= s < 1.0:
+            k = find_step(grid_tau, n, forward, taus[t])
+            s = (taus[t] - grid_tau[k]) / grid_h[k]
+            at_start = begin[k]
+            values = accel[k]
         h = grid_h[k]
-        s = (taus[t] - grid_tau[k]) / h
-        weights_at(s, wx, wv)
-        for i in range(3):
-            for c in range(p):
-                px = 0.0
-                pv = 0.0
-                for m in range(N_NODES):
-                    px += wx[m] * accel[k, m, i, c]
-                    pv += wv[m] * accel[k, m, i, c]
-                out[t, i, c] = begin[k, i, c] + h * (s * begin[k, 3 + i, c] + h * px)
-                out[t, 3 + i, c] = begin[k, 3 + i, c] + h * pv
+        weights_at(s, h, weight)
+        column_paths(at_start, s * h, wx, wv, values, dx, dv)
+        unpack(dx, dv, out[t])

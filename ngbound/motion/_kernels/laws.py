@@ -159,6 +159,12 @@ def distance_at_lag(gm, x, v, dt, out):
 
 
 @njit(cache=True, error_model="numpy")
+def room_for_partials():
+    """Scraps of ``thrust_partials``."""
+    return np.empty((3, 3)), np.empty(8), np.empty(3)
+
+
+@njit(cache=True, error_model="numpy")
 def axes(x, v, e):
     """Rows R, T, N into ``e`` (3, 3); returns r and |x cross v|."""
     r = math.sqrt(x[0] * x[0] + x[1] * x[1] + x[2] * x[2])
@@ -235,75 +241,51 @@ def add_thrust(push, gm_sun, active, pos, vel, path, acc):
 
 
 @njit(cache=True, error_model="numpy")
-def thrust_partials(push, gm_sun, active, x, v, unit, unit_x, unit_v, extra):
-    """Thrust per unit A along R, T, N and its partials.
+def thrust_partials(push, gm_sun, active, x, v, room, out):
+    """Thrust per unit A along R, T, N and its partials at heliocentric ``x``, ``v``.
 
-    ``unit`` (3, 3): g times the axis, row per component; ``unit_x``, ``unit_v`` (3, 3, 3): partials
-    [component, axis, with respect to]; ``extra`` (rows 0 and 1): partial of the thrust with the
-    push's own A with respect to the lag (per day) and to the law's exponent m.
+    ``out`` (72,) receives g times the axes [component, axis] (9), the partials [component, axis,
+    with respect to] with position (27) and velocity (27), and the partial of the thrust with the
+    push's own A with respect to the lag (per day) and to the law's exponent m (3 each); the last
+    three places are left alone. ``room`` is that of ``room_for_partials``.
+
+    With h = |x cross v| and the radial speed u: dR = (T T + N N) dx / r, dT = -R (T dx) / r - N
+    (N (u dx - r dv)) / h, dN = -R (N dx) / r + T (N (u dx - r dv)) / h.
     """
-    e = np.empty((3, 3))
-    r, h = axes(x, v, e)
-    for i in range(3):
-        for j in range(3):
-            unit[i, j] = 0.0
-            for k in range(3):
-                unit_x[i, j, k] = 0.0
-                unit_v[i, j, k] = 0.0
-        extra[0, i] = 0.0
-        extra[1, i] = 0.0
+    e, back, g = room
     if not active:
+        out[:69] = 0.0
         return
-    at = r
-    back = np.zeros(8)
+    r, h = axes(x, v, e)
+    u = (x[0] * v[0] + x[1] * v[1] + x[2] * v[2]) / r
     if push.lag_d != 0.0:
         distance_at_lag(gm_sun, x, v, -push.lag_d, back)
-        at = back[0]
+        law_of_distance(push, back[0], g)
     else:
         for i in range(3):
             back[1 + i] = e[0, i]
-        back[7] = (x[0] * v[0] + x[1] * v[1] + x[2] * v[2]) / r
-    g = np.empty(3)
-    law_of_distance(push, at, g)
-    d_n = np.empty(3)
-    d_r = np.empty(3)
-    d_h = np.empty(3)
-    for j in range(6):
-        # change of the angular momentum, then of N, R and T, for a unit change of x_j or v_j
-        k = j % 3
-        p = (k + 1) % 3
-        q = (k + 2) % 3
-        d_h[k] = 0.0
-        if j < 3:
-            d_h[p] = -v[q]
-            d_h[q] = v[p]
-        else:
-            d_h[p] = x[q]
-            d_h[q] = -x[p]
-        along = d_h[0] * e[2, 0] + d_h[1] * e[2, 1] + d_h[2] * e[2, 2]
-        for i in range(3):
-            d_n[i] = (d_h[i] - along * e[2, i]) / h
-            d_r[i] = 0.0
-        if j < 3:
-            for i in range(3):
-                d_r[i] = -e[0, k] * e[0, i] / r
-            d_r[k] += 1.0 / r
-        slope = g[1] * back[1 + j]
-        for i in range(3):
-            a = (i + 1) % 3
-            b = (i + 2) % 3
-            d_t = d_n[a] * e[0, b] - d_n[b] * e[0, a] + e[2, a] * d_r[b] - e[2, b] * d_r[a]
-            if j < 3:
-                unit_x[0, i, k] = slope * e[0, i] + g[0] * d_r[i]
-                unit_x[1, i, k] = slope * e[1, i] + g[0] * d_t
-                unit_x[2, i, k] = slope * e[2, i] + g[0] * d_n[i]
-            else:
-                unit_v[0, i, k] = slope * e[0, i] + g[0] * d_r[i]
-                unit_v[1, i, k] = slope * e[1, i] + g[0] * d_t
-                unit_v[2, i, k] = slope * e[2, i] + g[0] * d_n[i]
+            back[4 + i] = 0.0
+        back[7] = u
+        law_of_distance(push, r, g)
+    turn = u / h
+    swing = r / h
     for i in range(3):
         along = push.a[0] * e[0, i] + push.a[1] * e[1, i] + push.a[2] * e[2, i]
-        for c in range(3):
-            unit[c, i] = g[0] * e[c, i]
-        extra[0, i] = -g[1] * back[7] * along
-        extra[1, i] = g[2] * along
+        out[63 + i] = -g[1] * back[7] * along
+        out[66 + i] = g[2] * along
+        out[i] = g[0] * e[0, i]
+        out[3 + i] = g[0] * e[1, i]
+        out[6 + i] = g[0] * e[2, i]
+        for k in range(3):
+            by_x = g[1] * back[1 + k]
+            by_v = g[1] * back[4 + k]
+            d_r = (e[1, i] * e[1, k] + e[2, i] * e[2, k]) / r
+            d_t = -e[0, i] * e[1, k] / r - turn * e[2, i] * e[2, k]
+            d_n = -e[0, i] * e[2, k] / r + turn * e[1, i] * e[2, k]
+            at = 3 * i + k
+            out[9 + at] = by_x * e[0, i] + g[0] * d_r
+            out[18 + at] = by_x * e[1, i] + g[0] * d_t
+            out[27 + at] = by_x * e[2, i] + g[0] * d_n
+            out[36 + at] = by_v * e[0, i]
+            out[45 + at] = by_v * e[1, i] + g[0] * swing * e[2, i] * e[2, k]
+            out[54 + at] = by_v * e[2, i] - g[0] * swing * e[1, i] * e[2, k]
