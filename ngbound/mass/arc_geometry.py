@@ -1,7 +1,7 @@
 """What an arc of which only the outline is known could have shown.
 
-May import: constants, errors, motion, sky, limits, and from its own room distributions, quoted,
-threshold_readings.
+May import: constants, errors, motion, sky, limits, and from its own room distributions, frames,
+notebook, quoted and threshold_readings.
 
 Two brackets, each of an order of magnitude. The sagitta law (R. L. Gluckstern 1963, NIM 24, 381):
 N points over T at the distance D, constant acceleration across a straight sightline, sigma_A =
@@ -18,6 +18,7 @@ from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
+import pandas as pd
 from numpy.typing import NDArray
 from scipy.spatial.transform import Rotation
 
@@ -36,6 +37,8 @@ from ngbound.motion import (
 from ngbound.sky import direction_to_angles, load_ephemeris
 
 from .distributions import number_text
+from .frames import text_rows
+from .notebook import as_html
 from .quoted import Geometry, QuotedThreshold, read_table, size_au_d2
 from .threshold_readings import acceleration_slips, claimed_level, readings
 
@@ -115,20 +118,42 @@ class GeometryAudit:
     slips: tuple[str, ...]
     level: str
 
+    @property
+    def headline(self) -> str:
+        """The verdict in a sentence."""
+        return (
+            f"The quoted threshold of {number_text(self.quoted_au_d2)} au/d2 ({self.level}) is "
+            f"{self.verdict} for an arc of this outline."
+        )
+
     def __str__(self) -> str:
         low, high = (number_text(x, 2) for x in self.simulated_au_d2)
         below, above = (number_text(x, 2) for x in self.sagitta_au_d2)
         text = (
-            f"Quoted threshold {number_text(self.quoted_au_d2)} au/d2 ({self.level}) against an "
-            f"arc of this outline: {self.verdict}.\n"
-            f"  {self.n_simulated} simulated arcs: {low} to {high} au/d2, median "
-            f"{number_text(self.median_au_d2, 2)}\n"
-            f"  sagitta law, thrust across a straight, known sightline: {below} to {above} "
-            "au/d2"
+            f"{self.headline}\n"
+            f"  {self.n_simulated} simulated arcs of it give {low} to {high} au/d2, median "
+            f'{number_text(self.median_au_d2, 2)}; "plausible" is what lies within a factor '
+            f"{PLAUSIBLE_FACTOR:g} of that range.\n"
+            f"  The sagitta law gives {below} to {above} au/d2: a floor, for thrust across a "
+            "sightline whose direction and length are known."
         )
         if self.slips:
-            text += f"\n  a slip of that size: {'; or '.join(self.slips)}"
+            text += f"\n  A slip of that size: {'; or '.join(self.slips)}."
         return text
+
+    def to_frame(self) -> pd.DataFrame:
+        """The quoted threshold and both brackets as a table, au/d2."""
+        rows = (
+            ("quoted", self.quoted_au_d2, self.quoted_au_d2),
+            (f"{self.n_simulated} simulated arcs", *self.simulated_au_d2),
+            ("median of the simulated arcs", self.median_au_d2, self.median_au_d2),
+            ("sagitta law", *self.sagitta_au_d2),
+        )
+        return pd.DataFrame(rows, columns=["threshold", "lowest au/d2", "highest au/d2"])
+
+    def _repr_html_(self) -> str:
+        notes = [f"A slip of that size: {slip}." for slip in self.slips]
+        return as_html([self.headline], text_rows(self.to_frame()), notes)
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able record."""

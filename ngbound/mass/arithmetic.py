@@ -1,6 +1,7 @@
 """Arithmetic of a set of quoted numbers: do they agree, and if not, which slip explains it?
 
-May import: constants, errors, and from its own room distributions, outgassing and size.
+May import: constants, errors, and from its own room distributions, frames, notebook, outgassing,
+size, slips and written.
 
 Every relation between the quantities of a momentum balance is a product of powers, so it is linear
 in the logarithms:
@@ -12,30 +13,36 @@ in the logarithms:
     diameter = 1329 km 10^(-H/5) / sqrt(albedo)       acceleration = z(confidence) x its sigma
 
 Quantities that are not quoted are eliminated: a set of relations whose unquoted quantities cancel
-is one test. If a test fails, the smallest sets of quoted numbers are sought whose change makes all
-the rest agree, with the value each would need, and the ratio is compared with the usual slips of
-unit and factor.
+is one test. A test holds if the two sides agree within the rounding of the digits written
+(`written`). If a usual slip would hold as well, the digits cannot tell. If a test fails, the
+smallest sets of quoted numbers are sought whose change makes all the rest agree, with the value
+each would need, and the usual slips that would do it.
 """
 
+import difflib
 import itertools
 import math
-import re
-from collections import Counter
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
 import astropy.units as u
 import numpy as np
+import pandas as pd
 from astropy.units import Quantity
+from numpy.typing import NDArray
 from scipy.special import ndtri
 
-from ngbound.constants import AU_D2_TO_M_S2, AU_KM, AU_M, DAY_S, GM_KM3_S2
+from ngbound.constants import AU_M, GM_KM3_S2
 from ngbound.errors import CaseError, MassError
 
-from .distributions import AtMost, Normal, SplitNormal, number_text, parse_distribution
-from .outgassing import AVOGADRO, MOLAR_MASS_G, molecule_mass_kg
+from .distributions import number_text
+from .frames import text_rows
+from .notebook import as_html
+from .outgassing import DUST, molecule_mass_kg
 from .size import ASTEROID_DIAMETER_KM
+from .slips import Setting, powers_of_ten, usual_slips
+from .written import Written, read_written, spread_allowed
 
 _M_S2 = u.m / u.s**2
 UNITS: dict[str, tuple[u.UnitBase, u.UnitBase]] = {
@@ -55,8 +62,11 @@ UNITS: dict[str, tuple[u.UnitBase, u.UnitBase]] = {
     "radius": (u.m, u.m),
     "albedo": (u.dimensionless_unscaled, u.dimensionless_unscaled),
     "absolute_magnitude": (u.mag, u.mag),
+    "at": (u.au, u.au),
 }
 """Quantities by name: the unit of a bare number, and the unit used inside (and in the results)."""
+_LABELS = {"at": "distance", "absolute_magnitude": "H"}
+_OPTIONS = ("at", "g_at_r", "species", "confidence", "tolerance", "H")
 
 _PLAUSIBLE = {
     "speed": (50.0, 3000.0),
@@ -64,32 +74,67 @@ _PLAUSIBLE = {
     "density": (50.0, 3500.0),
     "rate": (1e20, 1e33),
     "albedo": (0.005, 1.0),
-    "acceleration": (1e-16 * AU_D2_TO_M_S2, 1e-5 * AU_D2_TO_M_S2),
+    "acceleration": (2e-15, 2e-4),
     "gravity_fraction": (1e-12, 1.0),
+    "at": (0.05, 60.0),
 }
 """Generous ranges (internal units) outside which a number of a comet or asteroid is suspect."""
+MOST_CHANGES = 12
+"""So many changes are told at most, the best first."""
+_LARGEST_LOG = 690.0
 
 
 @dataclass(frozen=True)
 class RelationTest:
-    """One testable relation: ``ratio`` of its two sides (1 if they agree) and the ratio allowed by
-    rounding."""
+    """One testable relation between quoted numbers.
+
+    Attributes
+    ----------
+    relations : tuple of str
+        The relations that make it.
+    powers : mapping
+        Of each quoted quantity in left side over right side.
+    ratio : float
+        Left side over right side; 1 if they agree.
+    low, high : float
+        Ratios that the digits (and quoted errors) allow.
+    """
 
     relations: tuple[str, ...]
-    quantities: tuple[str, ...]
+    powers: Mapping[str, float]
     ratio: float
-    allowed: float
+    low: float
+    high: float
+
+    @property
+    def quantities(self) -> tuple[str, ...]:
+        """The quoted numbers in it."""
+        return tuple(self.powers)
+
+    @property
+    def formula(self) -> str:
+        """The two sides, constants left out, the left one with the first quantity."""
+        first = next(iter(self.powers.values()))
+        sides: tuple[list[str], list[str]] = ([], [])
+        for name, power in self.powers.items():
+            size = "" if abs(abs(power) - 1.0) < 1e-6 else f"{abs(power):.3g}"
+            shown = f"{_label(name)}{size and '^' + size}"
+            if name == "absolute_magnitude":
+                shown = f"10^(-{size}H/5)"
+            sides[int(power * first < 0)].append(shown)
+        left, right = (" x ".join(side) for side in sides)
+        return f"{left} against {right or 'a constant'}"
 
     @property
     def holds(self) -> bool:
-        """True if the two sides agree within rounding."""
-        return abs(math.log(self.ratio)) <= math.log(self.allowed)
+        """True if the two sides agree within the digits quoted."""
+        return self.low <= self.ratio <= self.high
 
     def __str__(self) -> str:
-        verdict = "holds" if self.holds else "FAILS"
         return (
-            f"{verdict}: {' with '.join(self.relations)} ({', '.join(self.quantities)}): ratio "
-            f"{number_text(self.ratio)}, rounding allows {number_text(self.allowed)}"
+            f"{'holds' if self.holds else 'FAILS'}: {self.formula} ({', '.join(self.relations)}): "
+            f"the two sides are in the ratio {number_text(self.ratio)}, and the digits quoted "
+            f"allow {number_text(self.low)} to {number_text(self.high)}"
         )
 
     def to_dict(self) -> dict[str, Any]:
@@ -97,8 +142,9 @@ class RelationTest:
         return {
             "relations": list(self.relations),
             "quantities": list(self.quantities),
+            "formula": self.formula,
             "ratio": self.ratio,
-            "allowed": self.allowed,
+            "allowed": [self.low, self.high],
             "holds": self.holds,
         }
 
@@ -107,8 +153,10 @@ class RelationTest:
 class Change:
     """A smallest set of quoted numbers whose change makes all the rest agree.
 
-    ``needed`` and ``ratios`` (quoted over needed) by quantity, in internal units; empty for sets of
-    several numbers that the rest does not fix. ``slips``: usual slips that explain the ratio.
+    ``needed`` and ``ratios`` (quoted over needed; quoted less needed for a magnitude) by quantity,
+    in internal units; empty for sets of several numbers that the rest does not fix. ``slips``:
+    usual slips that explain the ratio, all within the digits quoted, the closest first.
+    ``plausibility`` ranks changes: those of equal plausibility cannot be told apart.
     """
 
     quantities: tuple[str, ...]
@@ -121,10 +169,12 @@ class Change:
         parts = []
         for name in self.quantities:
             if name in self.needed:
-                unit = str(UNITS[name][1])
+                ratio = number_text(self.ratios[name])
+                told = f"{ratio} times that"
+                if name == "absolute_magnitude":
+                    told = f"that {float(ratio):+g}"
                 parts.append(
-                    f"{_label(name)} {number_text(self.needed[name])}{' ' + unit if unit else ''} "
-                    f"(quoted / needed = {number_text(self.ratios[name])})"
+                    f"{_label(name)} to {_amount_text(name, self.needed[name])} (quoted: {told})"
                 )
             else:
                 parts.append(_label(name))
@@ -139,71 +189,141 @@ class Change:
             "ratios": dict(self.ratios),
             "units": {name: str(UNITS[name][1]) for name in self.quantities},
             "slips": list(self.slips),
+            "plausibility": self.plausibility,
         }
+
+
+VERDICTS = {
+    "sound": "they agree, within the digits quoted.",
+    "sound in part": "those that could be tested agree, within the digits quoted.",
+    "cannot tell": "they agree, but would with a usual slip too: the digits cannot tell.",
+    "slip": "they disagree, and a usual slip explains it.",
+    "inconsistent": "they disagree, and no usual slip of one number explains it.",
+    "untestable": "no relation connects them, so nothing could be tested.",
+}
+"""What each verdict says."""
 
 
 @dataclass(frozen=True)
 class NumberAudit:
     """Verdict on a set of quoted numbers.
 
-    ``verdict``: "sound" (every testable relation holds), "slip" (they disagree and the best single
-    change is a usual slip), "inconsistent" (they disagree otherwise), "untestable" (no relation
-    among them). ``changes``: best explanation first.
+    Attributes
+    ----------
+    verdict : str
+        A key of `VERDICTS`. "sound" is said only where every number entered a test.
+    quoted : mapping
+        In internal units.
+    tests : tuple of RelationTest
+    changes : tuple of Change
+        If a test fails: best explanation first.
+    doubts : tuple of str
+        If all hold: usual slips under which all would hold as well.
+    untested : tuple of str
+        Quoted numbers that entered no test.
+    exact : tuple of str
+        Numbers that were not given as text and so carry no rounding.
+    assumed : tuple of str
     """
 
     verdict: str
     quoted: Mapping[str, float]
     tests: tuple[RelationTest, ...]
-    changes: tuple[Change, ...]
+    changes: tuple[Change, ...] = ()
+    doubts: tuple[str, ...] = ()
+    untested: tuple[str, ...] = ()
+    exact: tuple[str, ...] = ()
+    assumed: tuple[str, ...] = ()
+
+    @property
+    def tied(self) -> tuple[Change, ...]:
+        """The best changes: several where they cannot be told apart."""
+        return tuple(c for c in self.changes if _rank(c) == _rank(self.changes[0]))
+
+    @property
+    def headline(self) -> str:
+        """The verdict in a sentence."""
+        return f"Quoted numbers: {VERDICTS[self.verdict]}"
 
     def __str__(self) -> str:
-        lines = [f"Quoted numbers: {self.verdict}."]
-        lines += [f"  {test}" for test in self.tests]
+        lines = [self.headline]
+        lines += [f"  {test}." for test in self.tests]
+        if self.doubts:
+            lines.append("These slips would fit the digits as well:")
+            lines += [f"  {doubt}." for doubt in self.doubts]
         if self.changes:
             number = len(self.changes[0].quantities)
             lines.append(
-                f"Changing {'one number' if number == 1 else f'{number} numbers'} is enough; any "
-                "of:"
+                f"Changing {'one number' if number == 1 else f'{number} numbers'} is enough. "
+                + (
+                    "These changes cannot be told apart by the numbers alone:"
+                    if len(self.tied) > 1
+                    else "The likeliest change:"
+                )
             )
-            lines += [f"  {change}" for change in self.changes]
+            lines += [f"  {change}." for change in self.tied]
+            if len(self.changes) > len(self.tied):
+                lines.append("Less likely, but enough as well:")
+                lines += [f"  {change}." for change in self.changes[len(self.tied) :]]
+        lines += self._notes()
         return "\n".join(lines)
+
+    def to_frame(self) -> pd.DataFrame:
+        """The tests as a table."""
+        return pd.DataFrame(
+            [
+                (t.formula, t.ratio, t.low, t.high, "holds" if t.holds else "FAILS")
+                for t in self.tests
+            ],
+            columns=["relation", "ratio", "lowest allowed", "highest allowed", "verdict"],
+        )
+
+    def _repr_html_(self) -> str:
+        text = as_html([self.headline], text_rows(self.to_frame()))
+        if self.changes:
+            rows = [
+                (str(change), "best" if change in self.tied else "less likely")
+                for change in self.changes
+            ]
+            text += as_html(["Changes that would be enough:"], [("needed", "rank"), *rows])
+        return text + as_html((), (), self._notes())
+
+    def _notes(self) -> list[str]:
+        untested, exact = (", ".join(map(_label, n)) for n in (self.untested, self.exact))
+        told = (
+            ("Not tested, because no relation connects them to the rest", untested),
+            ("Taken as exact, because not written as text", exact if self.tests else ""),
+            ("Assumed", "; ".join(self.assumed)),
+        )
+        return [f"{words}: {names}." for words, names in told if names]
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able description; quoted numbers in internal units."""
         return {
             "verdict": self.verdict,
+            "headline": self.headline,
             "quoted": dict(self.quoted),
             "units": {name: str(UNITS[name][1]) for name in self.quoted},
             "tests": [test.to_dict() for test in self.tests],
             "changes": [change.to_dict() for change in self.changes],
+            "tied": len(self.tied),
+            "doubts": list(self.doubts),
+            "untested": list(self.untested),
+            "exact": list(self.exact),
+            "assumed": list(self.assumed),
         }
 
 
-@dataclass(frozen=True)
-class _Relation:
-    """sum of power x ln(quantity) = constant."""
-
-    name: str
-    powers: Mapping[str, float]
-    constant: float
-
-
-@dataclass(frozen=True)
-class _Setting:
-    """What the relations need besides the quantities."""
-
-    r_au: float | None
-    g: float | None
-    species: str
-    confidence: float | None
+def _rank(change: Change) -> tuple[int, bool]:
+    return -change.plausibility, not change.slips
 
 
 def audit_numbers(
     *,
     at: float | str | Quantity | None = None,
-    g_at_r: float | None = None,
+    g_at_r: float | str | None = None,
     species: str = "H2O",
-    confidence: float | None = None,
+    confidence: float | str | None = None,
     tolerance: float = 0.02,
     **quoted: Any,
 ) -> NumberAudit:
@@ -215,6 +335,7 @@ def audit_numbers(
     g_at_r : float
         Thrust law at ``at`` (g = 1 where ``acceleration`` is meant); default r^-2.
     species : str
+        Of the molecules, or "dust".
     confidence : float
         Makes ``acceleration`` = z ``acceleration_sigma`` with the two-sided z of this confidence.
     tolerance : float
@@ -225,362 +346,332 @@ def audit_numbers(
         Keys of `UNITS`: a number in the default unit, a Quantity, or text such as "4.92e-6 m/s2",
         "> 500 m". A limit counts as its edge.
 
-    Returns
-    -------
-    NumberAudit
+    Raises
+    ------
+    CaseError
+        An unknown quantity, unit or species, or a number that cannot be read.
+    MassError
+        The thrust is off at that distance.
     """
-    if "H" in quoted:
+    if quoted.get("H") is not None:
+        if quoted.get("absolute_magnitude") is not None:
+            raise CaseError("H and absolute_magnitude are the same number; give one of them.")
         quoted["absolute_magnitude"] = quoted.pop("H")
-    unknown = [name for name in quoted if name not in UNITS]
-    if unknown:
-        raise CaseError(
-            f"{unknown[0]!r} is not a quantity of the audit; known: {', '.join(UNITS)}."
-        )
-    r_au = None if at is None else _read("at", at, u.au, u.au)[0]
-    setting = _Setting(r_au, _law(g_at_r, r_au), species, confidence)
-    values, errors = {}, {}
-    for name, spec in quoted.items():
-        if spec is None:
-            continue
-        value, error = _read(name, spec, *UNITS[name])
-        if name == "absolute_magnitude":
-            # as the factor 10^(-H/5); its error from the digits, not from H itself
-            value, error = 10 ** (-value / 5), 0.2 * math.log(10) * error * abs(value)
-        values[name], errors[name] = value, error
-    relations = _relations(setting)
-    tests = _tests(relations, values, errors, tolerance)
-    if all(test.holds for test in tests):
-        return NumberAudit("sound" if tests else "untestable", _plain(values), tests, ())
-    changes = _changes(relations, values, errors, tolerance, setting)
-    slip = bool(changes and len(changes[0].quantities) == 1 and changes[0].slips)
-    return NumberAudit("slip" if slip else "inconsistent", _plain(values), tests, changes)
-
-
-def _plain(values: Mapping[str, float]) -> dict[str, float]:
-    return {
-        name: -5 * math.log10(value) if name == "absolute_magnitude" else value
-        for name, value in values.items()
+    for name in quoted:
+        if name not in UNITS and name != "H":
+            known = [*UNITS, *_OPTIONS]
+            near = difflib.get_close_matches(name, known, 1, 0.5)
+            hint = f"did you mean {near[0]!r}?" if near else f"known are {', '.join(known)}."
+            raise CaseError(f"{name!r} is not a quantity of the audit; {hint}", key=name)
+    written = {
+        name: read_written(name, spec, *UNITS[name])
+        for name, spec in {**quoted, "at": at}.items()
+        if spec is not None
     }
+    share = _option("tolerance", tolerance)
+    if not 0 <= share < 1:
+        raise CaseError(f"tolerance = {tolerance!r} must be at least 0 and below 1, such as 0.02.")
+    level = None if confidence is None else _option("confidence", confidence)
+    if level is not None and not 0 < level < 1:
+        raise CaseError(f"confidence = {confidence!r} must be between 0 and 1, such as 0.95.")
+    law = None if g_at_r is None else _option("g_at_r", g_at_r)
+    if law is not None and not 0 < law < math.inf:
+        raise MassError(f"g_at_r = {g_at_r!r} must be positive: the thrust is off there.")
+    r_au = math.exp(written["at"].log) if at is not None else None
+    setting = Setting(r_au, law or (None if r_au is None else r_au**-2), level)
+    web = _Web(_relations(law, at is not None, species, level), written, share)
+    tests = web.tests()
+    tested = {name for test in tests for name in test.quantities}
+    used = {relation for test in tests for relation in test.relations}
+    untested = [name for name in written if name not in tested]
+    if law is not None and "thrust law" not in used:
+        untested.append("g_at_r")
+    if level is not None and "limit and sigma" not in used:
+        untested.append("confidence")
+    common: dict[str, Any] = {
+        "quoted": {name: _plain(name, w.log) for name, w in written.items()},
+        "tests": tests,
+        "untested": tuple(untested),
+        "exact": tuple(name for name, w in written.items() if w.exact and name in tested),
+        "assumed": _assumed(used, law, r_au, species, share),
+    }
+    if not tests:
+        return NumberAudit("untestable", **common)
+    if all(test.holds for test in tests):
+        doubts = _doubts(web, [name for name in written if name in tested], setting)
+        verdict = "cannot tell" if doubts else "sound in part" if untested else "sound"
+        return NumberAudit(verdict, **common, doubts=doubts)
+    changes = web.changes(setting)
+    slip = bool(changes and len(changes[0].quantities) == 1 and changes[0].slips)
+    return NumberAudit("slip" if slip else "inconsistent", **common, changes=changes)
 
 
-def _law(g_at_r: float | None, r_au: float | None) -> float | None:
-    if g_at_r is not None:
-        if not g_at_r > 0:
-            raise MassError(f"g_at_r = {g_at_r!r} must be positive: the thrust is off there.")
-        return float(g_at_r)
-    return None if r_au is None else r_au**-2
+def _doubts(web: "_Web", names: list[str], setting: Setting) -> tuple[str, ...]:
+    """Usual slips under which every test would hold as well, each with the numbers it may be in."""
+    owners: dict[str, list[str]] = {}
+    for name in names:
+        for _, words in web.fitting((name,), setting):
+            owners.setdefault(words, []).append(_label(name))
+    return tuple(f"{words} ({' or '.join(found)})" for words, found in owners.items())
 
 
-def _read(name: str, spec: Any, default: u.UnitBase, inside: u.UnitBase) -> tuple[float, float]:
-    """Value in the inner unit, and its relative error from "+-" or from the digits written."""
-    positive = -math.inf if name == "absolute_magnitude" else 0.0
-    text = spec
-    if isinstance(spec, str):
-        text = re.sub(r"^\s*[<>~≤≥≈]+\s*=?\s*", "", spec)
-    found, unit = parse_distribution(text, name, lower=positive)
-    unit = re.sub(r"\b(molecules?|molec\.?)(?=\W|$)", "", unit).strip()
+def _option(name: str, spec: Any) -> float:
+    """A pure number among the options, given as number or text."""
     try:
-        parsed = u.Unit(re.sub(r"^/", "1/", unit)) if unit else default
-        if parsed.is_equivalent(u.mol / u.s):
-            factor = float(parsed.to(u.mol / u.s)) * AVOGADRO
-        else:
-            factor = float(parsed.to(inside))
-    except (ValueError, TypeError, u.UnitConversionError) as problem:
-        raise CaseError(
-            f"{name} has the unit {unit!r}, which is no unit of it; use for instance "
-            f"{default or 'none'}.",
-            unit=unit,
-        ) from problem
-    middle = found.limit if isinstance(found, AtMost) else found.median
-    if isinstance(found, Normal):
-        error = found.sigma / abs(middle)
-    elif isinstance(found, SplitNormal):
-        error = max(found.minus, found.plus) / abs(middle)
-    else:
-        error = written_rounding(spec)
-    return middle * factor, error
+        if isinstance(spec, bool):
+            raise TypeError
+        return float(spec)
+    except (TypeError, ValueError, OverflowError) as error:
+        raise CaseError(f"{name} = {spec!r} must be a number without a unit.") from error
 
 
-def written_rounding(spec: Any) -> float:
-    """Half a unit of the last digit of a number written as text, relative; else 0: taken as
-    exact."""
-    match = re.search(r"\d[\d.]*", spec) if isinstance(spec, str) else None
-    if match is None:
-        return 0.0
-    digits = match[0].replace(".", "").lstrip("0")
-    if not digits:
-        return 0.0
-    mantissa = float(f"{digits[0]}.{digits[1:] or '0'}")
-    return 0.5 * 10.0 ** (1 - len(digits)) / mantissa
+def _assumed(
+    used: set[str], law: float | None, r_au: float | None, species: str, tolerance: float
+) -> tuple[str, ...]:
+    told = []
+    if "molecular mass" in used:
+        told.append(f"molecules of {species}")
+    if "thrust law" in used and law is None and r_au is not None:
+        told.append(f"a thrust that falls as r^-2, as no g_at_r was given for {r_au:.4g} au")
+    if used and tolerance:
+        told.append(f"{100 * tolerance:g} % forgiven beyond the digits")
+    return tuple(told)
 
 
-def _relations(setting: _Setting) -> tuple[_Relation, ...]:
+def _plain(name: str, log: float) -> float:
+    return -5.0 * log / math.log(10.0) if name == "absolute_magnitude" else math.exp(log)
+
+
+@dataclass(frozen=True)
+class _Relation:
+    """sum of power x ln(quantity) = constant."""
+
+    name: str
+    powers: Mapping[str, float]
+    constant: float
+
+
+def _relations(
+    law: float | None, distance: bool, species: str, confidence: float | None
+) -> tuple[_Relation, ...]:
+    gravity = math.log(GM_KM3_S2["sun"] * 1e9 / AU_M**2)
+    size = math.log(1e3 * ASTEROID_DIAMETER_KM)
     found = [
+        _Relation("momentum balance", {"mass": 1, "local_acceleration": 1, "force": -1}, 0.0),
         _Relation(
-            "momentum balance",
-            {"force": 1, "mass": -1, "local_acceleration": -1},
-            0.0,
-        ),
-        _Relation(
-            "recoil force",
-            {"force": 1, "collimation": -1, "mass_loss": -1, "speed": -1},
-            0.0,
+            "recoil force", {"force": 1, "collimation": -1, "mass_loss": -1, "speed": -1}, 0.0
         ),
         _Relation("sphere", {"mass": 1, "density": -1, "diameter": -3}, math.log(math.pi / 6)),
         _Relation("diameter and radius", {"diameter": 1, "radius": -1}, math.log(2)),
         _Relation("velocity change", {"velocity_change": 1, "local_acceleration": -1}, 0.0),
         _Relation(
-            "photometric size",
-            {"diameter": 1, "absolute_magnitude": -1, "albedo": 0.5},
-            math.log(1e3 * ASTEROID_DIAMETER_KM),
+            "photometric size", {"diameter": 1, "absolute_magnitude": -1, "albedo": 0.5}, size
         ),
     ]
-    if setting.species in MOLAR_MASS_G:
-        found.append(
-            _Relation(
-                "molecular mass",
-                {"mass_loss": 1, "rate": -1},
-                math.log(molecule_mass_kg(setting.species)),
-            )
-        )
-    if setting.g is not None:
-        found.append(
-            _Relation(
-                "thrust law", {"local_acceleration": 1, "acceleration": -1}, math.log(setting.g)
-            )
-        )
-    if setting.r_au is not None:
-        gravity = GM_KM3_S2["sun"] * 1e9 / (setting.r_au * AU_M) ** 2
+    if species != DUST:
+        per_molecule = math.log(molecule_mass_kg(species))
+        found.append(_Relation("molecular mass", {"mass_loss": 1, "rate": -1}, per_molecule))
+    push = {"local_acceleration": 1.0, "acceleration": -1.0}
+    if law is not None:
+        found.append(_Relation("thrust law", push, math.log(law)))
+    elif distance:
+        found.append(_Relation("thrust law", {**push, "at": 2.0}, 0.0))
+    if distance:
         found.append(
             _Relation(
                 "solar gravity",
-                {"local_acceleration": 1, "gravity_fraction": -1},
-                math.log(gravity),
+                {"local_acceleration": 1, "gravity_fraction": -1, "at": 2},
+                gravity,
             )
         )
-    if setting.confidence is not None:
-        if not 0 < setting.confidence < 1:
-            raise CaseError(f"confidence = {setting.confidence!r} must be between 0 and 1.")
-        z = float(ndtri(0.5 + setting.confidence / 2))
-        found.append(
-            _Relation("limit and sigma", {"acceleration": 1, "acceleration_sigma": -1}, math.log(z))
-        )
+    if confidence is not None:
+        z = math.log(float(ndtri(0.5 + confidence / 2)))
+        found.append(_Relation("limit and sigma", {"acceleration": 1, "acceleration_sigma": -1}, z))
     return tuple(found)
 
 
-def _tests(
-    relations: tuple[_Relation, ...],
-    values: Mapping[str, float],
-    errors: Mapping[str, float],
-    tolerance: float,
-) -> tuple[RelationTest, ...]:
-    """Every minimal combination of relations in which all quantities but quoted ones cancel."""
-    found: list[RelationTest] = []
-    for size in range(1, len(relations) + 1):
-        for subset in itertools.combinations(relations, size):
-            weights = _combination(subset, values)
-            if weights is None:
-                continue
-            powers: dict[str, float] = {}
-            for weight, relation in zip(weights, subset, strict=True):
-                for name, power in relation.powers.items():
-                    powers[name] = powers.get(name, 0.0) + weight * power
-            powers = {n: p for n, p in powers.items() if abs(p) > 1e-9 and n in values}
-            if not powers:
-                continue
-            scale = 1.0 / min(abs(p) for p in powers.values())
-            constant = sum(w * r.constant for w, r in zip(weights, subset, strict=True))
-            left = sum(p * math.log(values[n]) for n, p in powers.items())
-            allowed = scale * sum(abs(p) * errors[n] for n, p in powers.items()) + tolerance
-            found.append(
-                RelationTest(
-                    tuple(r.name for r in subset),
-                    tuple(powers),
-                    math.exp(scale * (left - constant)),
-                    math.exp(allowed),
-                )
+class _Web:
+    """The relations between some quoted numbers, and what follows from any part of them."""
+
+    def __init__(
+        self, relations: tuple[_Relation, ...], written: Mapping[str, Written], tolerance: float
+    ) -> None:
+        self.relations, self.written, self.tolerance = relations, written, tolerance
+        self.names = sorted({n for r in relations for n in r.powers})
+        bit = {name: 1 << i for i, name in enumerate(self.names)}
+        self.bits = bit
+        self.subsets = [
+            subset
+            for size in range(1, len(relations) + 1)
+            for subset in itertools.combinations(relations, size)
+        ]
+        once, some = [], []
+        for subset in self.subsets:
+            seen = repeated = 0
+            for relation in subset:
+                mask = sum(bit[n] for n in relation.powers)
+                repeated |= seen & mask
+                seen |= mask
+            once.append(seen & ~repeated)
+            some.append(seen)
+        self.once: NDArray[np.int64] = np.array(once, dtype=np.int64)
+        self.some: NDArray[np.int64] = np.array(some, dtype=np.int64)
+        self.sums: dict[tuple[int, int], RelationTest | None] = {}
+
+    def tests(self, without: Iterable[str] = ()) -> tuple[RelationTest, ...]:
+        """Every minimal combination of relations in which all quantities but quoted ones cancel;
+        ``without`` are taken as not quoted."""
+        kept = set(self.written) - set(without)
+        hidden = sum(b for n, b in self.bits.items() if n not in kept)
+        # a hidden quantity that stands in one relation alone cannot cancel; relations that share
+        # none are tests by themselves
+        likely = np.flatnonzero((self.once & hidden) == 0)
+        found = []
+        for i in likely:
+            key = int(i), int(self.some[i]) & hidden
+            if key not in self.sums:
+                self.sums[key] = self._test(self.subsets[i], kept)
+            test = self.sums[key]
+            if test is not None:
+                found.append(test)
+        return tuple(found)
+
+    def _test(self, subset: tuple[_Relation, ...], kept: set[str]) -> RelationTest | None:
+        weights = _combination(subset, kept)
+        if weights is None:
+            return None
+        sums: dict[str, float] = {}
+        for weight, relation in zip(weights, subset, strict=True):
+            for name, power in relation.powers.items():
+                sums[name] = sums.get(name, 0.0) + weight * power
+        powers = {n: float(p) for n, p in sums.items() if abs(p) > 1e-9 and n in kept}
+        if not powers:
+            return None
+        scale = 1.0 / min(abs(p) for p in powers.values())
+        powers = {n: scale * p for n, p in powers.items()}
+        constant = scale * sum(w * r.constant for w, r in zip(weights, subset, strict=True))
+        off = sum(p * self.written[n].log for n, p in powers.items()) - constant
+        below, above = spread_allowed(
+            [(p, self.written[n]) for n, p in powers.items()], self.tolerance
+        )
+        return RelationTest(
+            tuple(r.name for r in subset),
+            powers,
+            _exp(off),
+            _exp(-below),
+            _exp(above),
+        )
+
+    def fitting(
+        self, names: tuple[str, ...], setting: Setting, tens: bool = False
+    ) -> list[tuple[float, str]]:
+        """Usual slips of some numbers, one in each, under which every test holds: misfit and words,
+        closest first; ``tens``: also nameless powers of ten."""
+        tests = self.tests()
+        lists = []
+        for name in names:
+            connected = {r for t in tests if name in t.quantities for r in t.relations}
+            collimation = self.written.get("collimation")
+            known = usual_slips(
+                name, None if collimation is None else math.exp(collimation.log), setting, connected
             )
-    return tuple(found)
+            lists.append(known + (powers_of_ten(known) if tens else []))
+        powers = np.array([[t.powers.get(n, 0.0) for n in names] for t in tests])
+        off, low, high = (np.log([getattr(t, k) for t in tests]) for k in ("ratio", "low", "high"))
+        found: dict[str, float] = {}
+        for combined in itertools.product(*lists):
+            left = off - powers @ np.log([factor for factor, _ in combined])
+            if np.all((left >= low) & (left <= high)):
+                words = " and ".join(w for _, w in combined)
+                miss = float(np.abs(left).max())
+                found[words] = min(miss, found.get(words, math.inf))
+        return sorted((miss, words) for words, miss in found.items())
+
+    def changes(self, setting: Setting) -> tuple[Change, ...]:
+        """Smallest sets of numbers whose change makes the rest agree, best first."""
+        concerned = [n for n in self.written if any(n in t.quantities for t in self.tests())]
+        for size in range(1, len(concerned) + 1):
+            found = [
+                self._change(names, setting)
+                for names in itertools.combinations(concerned, size)
+                if all(test.holds for test in self.tests(names))
+            ]
+            if found:
+                return tuple(sorted(found, key=_rank)[:MOST_CHANGES])
+        return ()
+
+    def _change(self, names: tuple[str, ...], setting: Setting) -> Change:
+        logs = self._solve(names)
+        slips: list[str] = []
+        if len(logs) == len(names) <= 2:
+            slips = [words for _, words in self.fitting(names, setting, tens=True)[:3]]
+        plausibility = 2 * bool(slips)
+        for name, log in logs.items():
+            if name in _PLAUSIBLE:
+                low, high = _PLAUSIBLE[name]
+                before, after = (_exp(x) for x in (self.written[name].log, log))
+                plausibility += 2 * (low <= after <= high) - 2 * (low <= before <= high)
+        needed = {
+            n: _plain(n, min(max(log, -_LARGEST_LOG), _LARGEST_LOG)) for n, log in logs.items()
+        }
+        ratios = {
+            n: _exp(self.written[n].log - log)
+            if n != "absolute_magnitude"
+            else _plain(n, self.written[n].log) - needed[n]
+            for n, log in logs.items()
+        }
+        return Change(names, needed, ratios, tuple(slips), plausibility)
+
+    def _solve(self, names: tuple[str, ...]) -> dict[str, float]:
+        """Logarithms that the other numbers fix, by least squares; those not fixed are left out."""
+        kept = {n: w.log for n, w in self.written.items() if n not in names}
+        unknown = [n for n in self.names if n not in kept]
+        matrix = np.array([[r.powers.get(n, 0.0) for n in unknown] for r in self.relations])
+        right = np.array(
+            [
+                r.constant - sum(p * kept[n] for n, p in r.powers.items() if n in kept)
+                for r in self.relations
+            ]
+        )
+        _, singular, rows = np.linalg.svd(matrix)
+        free = rows[int((singular > 1e-9).sum()) :]
+        solution = np.linalg.lstsq(matrix, right, rcond=None)[0]
+        return {
+            n: float(solution[unknown.index(n)])
+            for n in names
+            if n in unknown and (not len(free) or np.abs(free[:, unknown.index(n)]).max() < 1e-9)
+        }
 
 
-def _combination(subset: tuple[_Relation, ...], values: Mapping[str, float]) -> np.ndarray | None:
+def _combination(subset: tuple[_Relation, ...], kept: set[str]) -> NDArray[np.float64] | None:
     """Weights, all non-zero and unique up to scale, that cancel the unquoted quantities; else
     None."""
-    uses = Counter(n for r in subset for n in r.powers if n not in values)
-    hidden = sorted(uses)
+    hidden = sorted({n for r in subset for n in r.powers if n not in kept})
     if not hidden:
         return np.ones(1) if len(subset) == 1 else None
-    if min(uses.values()) < 2:
-        return None
     matrix = np.array([[r.powers.get(n, 0.0) for r in subset] for n in hidden])
     _, singular, rows = np.linalg.svd(matrix)
-    rank = int((singular > 1e-9).sum())
-    if rank != len(subset) - 1:
-        return None
-    weights = rows[-1]
-    if np.abs(weights).min() < 1e-9:
+    weights: NDArray[np.float64] = rows[-1]
+    if int((singular > 1e-9).sum()) != len(subset) - 1 or np.abs(weights).min() < 1e-9:
         return None
     return weights / weights[0]
 
 
-def _changes(
-    relations: tuple[_Relation, ...],
-    values: Mapping[str, float],
-    errors: Mapping[str, float],
-    tolerance: float,
-    setting: _Setting,
-) -> tuple[Change, ...]:
-    for size in range(1, len(values) + 1):
-        found = []
-        for names in itertools.combinations(values, size):
-            kept = {n: v for n, v in values.items() if n not in names}
-            if all(t.holds for t in _tests(relations, kept, errors, tolerance)):
-                found.append(_change(names, relations, values, kept, errors, tolerance, setting))
-        if found:
-            found.sort(key=lambda c: (-c.plausibility, not c.slips))
-            return tuple(found)
-    return ()
+def _exp(log: float) -> float:
+    """exp, held within the floating-point range."""
+    return math.exp(min(max(log, -_LARGEST_LOG), _LARGEST_LOG))
 
 
-def _change(
-    names: tuple[str, ...],
-    relations: tuple[_Relation, ...],
-    values: Mapping[str, float],
-    kept: Mapping[str, float],
-    errors: Mapping[str, float],
-    tolerance: float,
-    setting: _Setting,
-) -> Change:
-    needed = _solve(names, relations, kept)
-    ratios = {n: values[n] / v for n, v in needed.items()}
-    slips: list[str] = []
-    plausibility = 0
-    spread = sum(errors.values()) + tolerance
-    for name, value in needed.items():
-        slips += _slips(name, ratios[name], value, min(spread, 0.2), values, setting)
-        if name in _PLAUSIBLE:
-            low, high = _PLAUSIBLE[name]
-            plausibility += 2 * (low <= value <= high) - 2 * (low <= values[name] <= high)
-    if "absolute_magnitude" in needed:
-        quoted, wanted = values["absolute_magnitude"], needed["absolute_magnitude"]
-        needed["absolute_magnitude"] = -5 * math.log10(wanted)
-        ratios["absolute_magnitude"] = math.log(quoted) / math.log(wanted)
-    return Change(names, needed, ratios, tuple(slips), plausibility + 2 * bool(slips))
-
-
-def _solve(
-    names: tuple[str, ...], relations: tuple[_Relation, ...], kept: Mapping[str, float]
-) -> dict[str, float]:
-    """Values that the kept numbers fix, least squares in the logarithm; those not fixed are left
-    out."""
-    unknown = sorted({n for r in relations for n in r.powers if n not in kept})
-    matrix = np.array([[r.powers.get(n, 0.0) for n in unknown] for r in relations])
-    right = np.array(
-        [
-            r.constant - sum(p * math.log(kept[n]) for n, p in r.powers.items() if n in kept)
-            for r in relations
-        ]
+def _amount_text(name: str, value: float) -> str:
+    """A value in internal units, told in the unit of a bare number."""
+    outside, inside = UNITS[name]
+    unit = (
+        "m/s per day"
+        if name == "velocity_change"
+        else str(outside).replace(" ", "").replace("AU", "au")
     )
-    _, singular, rows = np.linalg.svd(matrix)
-    rank = int((singular > 1e-9).sum())
-    free = rows[rank:]
-    solution = np.linalg.lstsq(matrix, right, rcond=None)[0]
-    return {
-        n: math.exp(solution[unknown.index(n)])
-        for n in names
-        if n in unknown and (not len(free) or np.abs(free[:, unknown.index(n)]).max() < 1e-9)
-    }
-
-
-def _slips(
-    name: str,
-    ratio: float,
-    needed: float,
-    spread: float,
-    values: Mapping[str, float],
-    setting: _Setting,
-) -> list[str]:
-    """Usual slips whose factor (quoted over needed) is ``ratio``, best match first."""
-    found = []
-    for factor, words in _factors(name, values, setting):
-        if factor > 0 and abs(math.log(factor)) > 2 * spread:
-            miss = abs(math.log(ratio / factor))
-            if miss <= spread:
-                found.append((miss, words))
-    if name == "collimation" and abs(math.log(needed)) <= spread:
-        found.append((abs(math.log(needed)), "the collimation was left out (as if it were 1)"))
-    return [words for _, words in sorted(found, key=lambda item: item[0])][:3]
-
-
-UNIT_SLIPS: dict[str, tuple[tuple[float, str], ...]] = {
-    "acceleration": (
-        (AU_D2_TO_M_S2, "au/d2 and m/s2 exchanged"),
-        (100.0, "cm/s2 and m/s2 exchanged"),
-        (1000.0, "km and m exchanged (factor 1000)"),
-        (100.0 * AU_D2_TO_M_S2, "au/d2 and cm/s2 exchanged"),
-        (AU_M, "au and m exchanged"),
-        (AU_KM, "au and km exchanged"),
-        (DAY_S, "days and seconds exchanged once"),
-        (DAY_S**2, "days and seconds exchanged (squared)"),
-    ),
-    "rate": (
-        (AVOGADRO, "moles and molecules exchanged"),
-        (1000.0, "factor 1000"),
-        (DAY_S, "per day and per second exchanged"),
-    ),
-    "mass_loss": (
-        (1000.0, "g/s and kg/s exchanged (factor 1000)"),
-        (DAY_S, "per day and per second exchanged"),
-    ),
-    "speed": (
-        (1000.0, "km/s and m/s exchanged (factor 1000)"),
-        (100.0, "cm/s and m/s exchanged"),
-    ),
-    "mass": (
-        (1000.0, "g, kg or t exchanged (factor 1000)"),
-        (8.0, "radius and diameter exchanged in the volume (factor 8)"),
-    ),
-    "density": (
-        (1000.0, "g/cm3 and kg/m3 exchanged (factor 1000)"),
-        (8.0, "radius and diameter exchanged in the volume (factor 8)"),
-    ),
-    "diameter": ((2.0, "radius and diameter exchanged"), (1000.0, "km and m exchanged")),
-    "radius": ((2.0, "radius and diameter exchanged"), (1000.0, "km and m exchanged")),
-    "force": ((1e5, "dyn and N exchanged"), (1000.0, "factor 1000")),
-    "velocity_change": (
-        (DAY_S, "per day and per second exchanged"),
-        (365.25, "per day and per year exchanged"),
-        (1000.0, "km/s and m/s exchanged (factor 1000)"),
-        (100.0, "cm/s and m/s exchanged"),
-    ),
-    "albedo": ((100.0, "per cent and fraction exchanged"),),
-    "gravity_fraction": ((100.0, "per cent and fraction exchanged"),),
-}
-_SAME_SLIPS = {"acceleration_sigma": "acceleration", "local_acceleration": "acceleration"}
-
-
-def _factors(name: str, values: Mapping[str, float], setting: _Setting) -> list[tuple[float, str]]:
-    """(quoted over needed, words) of the usual slips of one quantity, both ways round."""
-    both = list(UNIT_SLIPS.get(_SAME_SLIPS.get(name, name), ()))
-    far = setting.r_au is not None or setting.g is not None
-    if name in ("acceleration", "acceleration_sigma", "local_acceleration") and setting.g and far:
-        both.append((setting.g, "value at the distance of the rate and value at 1 au exchanged"))
-    if name in ("rate", "mass_loss", "force") and setting.g and far:
-        both.append((setting.g, "rate at its distance and rate at 1 au exchanged (wrong distance)"))
-    if name == "gravity_fraction" and setting.r_au:
-        both.append((setting.r_au**2, "solar gravity at 1 au and at the distance exchanged"))
-    if name in ("mass", "rate", "mass_loss", "force", "acceleration") and "collimation" in values:
-        both.append((values["collimation"], "the collimation was left out or applied twice"))
-    if name in ("acceleration", "acceleration_sigma") and setting.confidence:
-        two = float(ndtri(0.5 + setting.confidence / 2))
-        one = float(ndtri(setting.confidence))
-        if one > 0:
-            both.append((one / two, "one-sided and two-sided limits exchanged"))
-    single = [(1.0 / factor, words) for factor, words in both]
-    tens = [(10.0**k, f"a slip of 10^{k:+d}") for k in (-9, -6, -3, -2, -1, 1, 2, 3, 6, 9)]
-    named = both + single
-    return named + [t for t in tens if all(abs(math.log(t[0] / f)) > 1e-6 for f, _ in named)]
+    return f"{number_text(value / float(outside.to(inside)))} {unit}".rstrip()
 
 
 def _label(name: str) -> str:
-    return name.replace("_", " ")
+    return _LABELS.get(name, name.replace("_", " "))

@@ -1,10 +1,9 @@
 """The referee's desk: does a quoted threshold, mass or size follow from what it is said to rest on?
 
-May import: errors, arc, fit, and from its own room arithmetic, arc_geometry, quoted,
-threshold_readings.
+May import: errors, arc, fit, and from its own room arithmetic, arc_geometry,
+notebook, quoted and threshold_readings.
 """
 
-import html
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from pathlib import Path
@@ -15,10 +14,13 @@ from ngbound.fit import Fit
 
 from .arc_geometry import GeometryAudit, audit_geometry
 from .arithmetic import NumberAudit, audit_numbers
+from .notebook import as_html
 from .quoted import QuotedPaper, read_table
 from .threshold_readings import ThresholdAudit, audit_threshold
 
 __all__ = ["Audit", "audit"]
+
+_SOUND_NUMBERS = ("sound", "sound in part", "untestable")
 
 
 @dataclass(frozen=True)
@@ -49,42 +51,66 @@ class Audit:
 
     @property
     def sound(self) -> bool:
-        """True if something could be tested, and nothing that could be disagrees."""
+        """True if something could be tested, nothing that could be disagrees, and the digits
+        quoted do tell this from the usual slips."""
         return (
             self.tested
-            and (self.numbers is None or self.numbers.verdict in ("sound", "untestable"))
+            and (self.numbers is None or self.numbers.verdict in _SOUND_NUMBERS)
             and (self.threshold is None or self.threshold.verdict == "holds")
             and (self.geometry is None or self.geometry.verdict == "plausible")
         )
 
     @property
+    def undecided(self) -> bool:
+        """True if nothing disagrees, but digits are too few, or the bracket too wide, to tell."""
+        faults = (
+            self.numbers is not None and self.numbers.verdict in ("slip", "inconsistent"),
+            self.threshold is not None and self.threshold.verdict not in ("holds", "cannot tell"),
+            self.geometry is not None and self.geometry.verdict == "implausible",
+        )
+        return self.tested and not self.sound and not any(faults)
+
+    @property
     def slips(self) -> tuple[str, ...]:
         """What explains the disagreements, in words, best first."""
         found: list[str] = []
-        if self.numbers is not None and self.numbers.verdict not in ("sound", "untestable"):
+        if self.numbers is not None and self.numbers.verdict in ("slip", "inconsistent"):
             found += [str(change) for change in self.numbers.changes if change.slips]
-        if self.threshold is not None and self.threshold.verdict != "holds":
+        if self.threshold is not None and self.threshold.verdict not in ("holds", "cannot tell"):
             found += self.threshold.slips
             if self.threshold.verdict == "another reading":
-                found += self.threshold.closest.changes
+                found += self.threshold.changes
         if self.geometry is not None:
             found += self.geometry.slips
         return tuple(dict.fromkeys(found))
 
-    def __str__(self) -> str:
-        verdict = "sound, as far as it can be tested" if self.sound else "NOT sound"
+    @property
+    def parts(self) -> tuple[NumberAudit | ThresholdAudit | GeometryAudit, ...]:
+        """The verdicts there are."""
+        listed = (self.numbers, self.threshold, self.geometry)
+        return tuple(part for part in listed if part is not None)
+
+    @property
+    def headline(self) -> str:
+        """The verdict in a sentence."""
         if not self.tested:
             verdict = "nothing in it could be tested; give more of its numbers, or its arc"
-        elif self.geometry is not None and self.geometry.verdict == "doubtful" and not self.slips:
-            verdict = "doubtful"
-        parts = [f"{self.title}: {verdict}."]
-        parts += [
-            str(part) for part in (self.numbers, self.threshold, self.geometry) if part is not None
-        ]
-        return "\n".join(parts)
+        elif self.undecided:
+            verdict = "nothing in it disagrees, but what was quoted is too coarse to tell"
+        elif not self.sound:
+            verdict = "NOT sound"
+        elif self.numbers is not None and self.numbers.untested:
+            verdict = "sound in what could be tested; not everything could"
+        else:
+            verdict = "sound, everything in it was tested"
+        return f"{self.title}: {verdict}."
+
+    def __str__(self) -> str:
+        return "\n".join([self.headline, *map(str, self.parts)])
 
     def _repr_html_(self) -> str:
-        return f"<pre>{html.escape(str(self))}</pre>"
+        shown = [part._repr_html_() for part in self.parts]
+        return "".join([as_html([self.headline]), *shown])
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able record."""
@@ -92,6 +118,8 @@ class Audit:
             "title": self.title,
             "tested": self.tested,
             "sound": self.sound,
+            "undecided": self.undecided,
+            "headline": self.headline,
             "slips": list(self.slips),
             "numbers": None if self.numbers is None else self.numbers.to_dict(),
             "threshold": None if self.threshold is None else self.threshold.to_dict(),

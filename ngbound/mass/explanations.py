@@ -3,21 +3,23 @@
 May import: constants, errors, motion, sky, and from its own room outgassing, size, results,
 thrust_history.
 
-Each function scans one free quantity, keeps the values at which one thrust fits both results (chi2
-above their own best fits within the chosen quantile, else within three sigma), and compares these
-with the published range. Excluded means: no value fits within three sigma, or none that was ever
-published or could be conceived.
+Each function scans one free quantity, keeps the values at which one thrust fits the results (chi2
+above their own best fits within the chosen quantile, else within three sigma; the free quantity
+takes one degree of freedom where there are two or more), and compares these with the published
+range. Excluded means: no value fits within three sigma, or none that was ever published or could be
+conceived. Strained means: only values outside the published range fit, or so small a share of those
+that were tried that it would be a coincidence.
 """
 
 import math
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 from scipy.optimize import minimize_scalar
-from scipy.stats import chi2, ncx2
+from scipy.stats import chi2, ncx2, norm
 
 from ngbound.constants import AU_D2_TO_M_S2, DAY_S
 from ngbound.motion import LAWS
@@ -39,6 +41,15 @@ N_DRAWS = 4000
 FINER_ROUNDS = 4
 FINE_ENOUGH = 9
 """A scan is made finer about its best value, so many times at most, until so many values fit."""
+FINELY_TUNED = 0.05
+"""An onset for which less than this share of the range tried fits is a coincidence, unless ..."""
+PREFERRED = 16.0
+"""... the arcs themselves prefer it to the steady thrust by so much in chi2 (4 sigma). By as much,
+an explanation that fits better makes another one strained."""
+NEAREST = 1e-3
+"""Weight in chi2 of (ln size)^2 where many sizes of a turned thrust fit equally well."""
+RATE_ERROR = 0.2
+"""Relative error of a measured rate that was quoted without one."""
 
 
 def percent(share: float) -> str:
@@ -46,6 +57,11 @@ def percent(share: float) -> str:
     if share > 0.995:
         return "nearly all"
     return "under 0.01 %" if share < 1e-4 else f"{100 * share:.2g} %"
+
+
+def short(value: float) -> str:
+    """Two digits, no zeros behind the point."""
+    return f"{float(f'{value:.2g}'):g}"
 
 
 def chance_text(probability: float) -> str:
@@ -57,6 +73,7 @@ def chance_text(probability: float) -> str:
 class Range:
     """A published range, a wider one that is at least conceivable, source and status."""
 
+    what: str
     low: float
     high: float
     low_edge: float
@@ -76,8 +93,8 @@ class Range:
 
     def __str__(self) -> str:
         return (
-            f"published {number_text(self.low)} to {number_text(self.high)}, conceivable "
-            f"{number_text(self.low_edge)} to {number_text(self.high_edge)}"
+            f"published {self.what}: {short(self.low)} to {short(self.high)}, conceivable "
+            f"{short(self.low_edge)} to {short(self.high_edge)}"
         )
 
     @property
@@ -98,6 +115,7 @@ class Range:
 
 
 EXPONENTS = Range(
+    "values of n",
     1.0,
     6.0,
     0.0,
@@ -107,6 +125,7 @@ EXPONENTS = Range(
     "from memory",
 )
 ONSETS_AU = Range(
+    "onsets in au",
     1.0,
     25.0,
     0.3,
@@ -116,6 +135,7 @@ ONSETS_AU = Range(
     "from memory",
 )
 PRODUCTION_FACTORS = Range(
+    "ratios",
     1 / 3,
     3.0,
     0.1,
@@ -124,6 +144,7 @@ PRODUCTION_FACTORS = Range(
     "from memory",
 )
 COLLIMATIONS = Range(
+    "ratios",
     0.2 / 0.7,
     0.7 / 0.2,
     0.1,
@@ -131,7 +152,9 @@ COLLIMATIONS = Range(
     f"ratio of two values between 0.2 and 0.7: {DEFAULT_COLLIMATION_SOURCE}",
     "from memory",
 )
-DENSITIES = Range(200.0, 800.0, 50.0, 3500.0, DEFAULT_DENSITY_SOURCE, "read in abstracts")
+DENSITIES = Range(
+    "densities in kg/m3", 200.0, 800.0, 50.0, 3500.0, DEFAULT_DENSITY_SOURCE, "read in abstracts"
+)
 DUST_TO_GAS = (0.0, 6.0)
 """Dust-to-gas mass ratio where no dust was measured: 4 +- 2 for 67P (A. Rotundi et al. 2015,
 Science 347, aaa3905; from memory), down to none."""
@@ -168,7 +191,7 @@ class Explanation:
         text = f"{self.verdict:12s} {self.title}: {self.sentence}"
         if self.probability is None:
             return text
-        return f"{text} [best case: p = {chance_text(self.probability)}]"
+        return f"{text} [p of the best fit: {chance_text(self.probability)}]"
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able description."""
@@ -185,11 +208,30 @@ class Explanation:
         }
 
 
+def compared(told: list[Explanation]) -> list[Explanation]:
+    """The same; those that fit far worse than the best possible one are strained at most."""
+    fits = [(e.chi2, e.title) for e in told if e.verdict == POSSIBLE and e.chi2 is not None]
+    best, title = min(fits, default=(math.inf, ""))
+    out = []
+    for found in told:
+        if found.verdict == POSSIBLE and found.chi2 is not None:
+            worse = found.chi2 - best
+            if worse > PREFERRED:
+                found = replace(
+                    found,
+                    verdict=STRAINED,
+                    sentence=f"{found.sentence}; {title} fits better, by {short(worse)} in chi2",
+                )
+        out.append(found)
+    return out
+
+
 @dataclass(frozen=True)
 class Pair:
     """The two results that agree least: ``quiet`` shows the smaller thrust, ``active`` the larger.
 
-    ``level`` is the confidence of every interval, ``dof`` the number of axes both measured.
+    ``level`` is the confidence of every interval, ``dof`` the number of axes both measured;
+    ``results`` are all there are, and ``dof_all`` their degrees of freedom.
     """
 
     quiet: ThrustResult
@@ -197,15 +239,8 @@ class Pair:
     level: float
     dof: int
     rng: np.random.Generator
-
-    def fitting(self, grid: Floats, values: Floats) -> Floats:
-        """Values of a grid at which a thrust fits both: within ``level``, or, if there are none,
-        within three sigma."""
-        for tail in (1.0 - self.level, THREE_SIGMA):
-            good = grid[values <= float(chi2.isf(tail, self.dof))]
-            if good.size:
-                return good
-        return grid[:0]
+    results: tuple[ThrustResult, ...]
+    dof_all: int
 
     @property
     def size_au_d2(self) -> float:
@@ -218,26 +253,66 @@ class Pair:
         mid = [0.5 * (r.response.first_d + r.response.last_d) for r in (self.quiet, self.active)]
         return None if not all(map(math.isfinite, mid)) else mid[0] < mid[1]
 
-    def chi2(self, quiet: History | None = None, active: History | None = None) -> float:
-        """Lowest chi2 of one thrust in both, under given histories (default: their own)."""
-        responses = [self.quiet.response, self.active.response]
-        return joint(
-            responses, [quiet or self.quiet.response.own, active or self.active.response.own]
-        )[0]
+    @property
+    def all_words(self) -> str:
+        """ "both", or "all three" and so on."""
+        return "both" if len(self.results) == 2 else f"all {len(self.results)}"
 
-    def probability(self, value: float, dof: int | None = None) -> float:
+    def chi2(self, history: History | Callable[[ThrustResult], History]) -> float:
+        """Lowest chi2 of one thrust in all results, under one history or one for each."""
+        responses = [result.response for result in self.results]
+        histories = [history if isinstance(history, History) else history(r) for r in self.results]
+        return joint(responses, histories)[0]
+
+    def likelihood(self, value: float, dof: int | None = None) -> float:
         """Chance of at least so large a chi2."""
         return float(chi2.sf(max(value, 0.0), dof or self.dof))
 
 
+@dataclass(frozen=True, eq=False)
+class Scan:
+    """chi2 over the values of one quantity; ``good`` are those that fit.
+
+    ``share`` of the range tried that fits, in the scale of the grid (``log``: its logarithm).
+    """
+
+    grid: Floats
+    values: Floats
+    good: Floats
+    dof: int
+    share: float
+
+    @property
+    def lowest(self) -> float:
+        """Smallest chi2; infinite for an empty grid."""
+        return float(self.values.min()) if self.values.size else math.inf
+
+    @property
+    def best(self) -> float:
+        """Where that is."""
+        return float(self.grid[np.argmin(self.values)])
+
+
+def fitting(grid: Floats, values: Floats, level: float, dof: int) -> Floats:
+    """Values of a grid at which a thrust fits: within ``level``, or, if there are none, within
+    three sigma. Where an arc prefers some value to the law it was fitted with, chi2 is negative
+    there and counts from its lowest."""
+    floor = min(float(values.min(initial=0.0)), 0.0)
+    for tail in (1.0 - level, THREE_SIGMA):
+        good = grid[values - floor <= float(chi2.isf(tail, dof))]
+        if good.size:
+            return good
+    return grid[:0]
+
+
 def _scan(
-    pair: Pair, grid: Floats, chi2_of: Callable[[float], float]
-) -> tuple[Floats, Floats, Floats]:
-    """chi2 on a grid, made finer about its minimum while few of its values fit; the grid, the chi2
-    and the values that fit."""
+    grid: Floats, chi2_of: Callable[[float], float], level: float, dof: int, log: bool = False
+) -> Scan:
+    """chi2 on a grid, made finer about its minimum while few of its values fit."""
+    dof = max(dof - 1, 1)
     values = np.array([chi2_of(float(x)) for x in grid])
     for _ in range(FINER_ROUNDS):
-        if not grid.size or pair.fitting(grid, values).size >= FINE_ENOUGH:
+        if not grid.size or fitting(grid, values, level, dof).size >= FINE_ENOUGH:
             break
         best = int(np.argmin(values))
         low, high = grid[max(best - 1, 0)], grid[min(best + 1, grid.size - 1)]
@@ -246,7 +321,26 @@ def _scan(
         values = np.concatenate([values, [chi2_of(float(x)) for x in more]])
         order = np.argsort(grid, kind="stable")
         grid, values = grid[order], values[order]
-    return grid, values, pair.fitting(grid, values)
+    good = fitting(grid, values, level, dof)
+    share = math.nan
+    if grid.size > 1:
+        widths = np.gradient(np.log(grid) if log else grid)
+        share = float(widths[np.isin(grid, good)].sum() / widths.sum())
+    return Scan(grid, values, good, dof, share)
+
+
+def _tuned(scan: Scan) -> bool:
+    """Whether a fit is a coincidence: a small share of the range, which no arc asks for."""
+    return scan.share < FINELY_TUNED and scan.lowest > -PREFERRED
+
+
+def _share_text(scan: Scan, what: str) -> str:
+    text = f"{percent(scan.share)} of the {what} tried"
+    if _tuned(scan):
+        return f"only {text}, which would be a coincidence"
+    if scan.share < FINELY_TUNED:
+        return f"{text}, and the arcs themselves ask for it"
+    return text
 
 
 def _interval(values: Any, unit: str = "", text: Callable[[float], str] = number_text) -> str:
@@ -256,42 +350,60 @@ def _interval(values: Any, unit: str = "", text: Callable[[float], str] = number
 
 
 def law(pair: Pair) -> Explanation:
-    """Another fall-off of the thrust with distance, the same for both."""
+    """Another fall-off of the thrust with distance, the same for all; rates measured at several
+    distances, upper limits among them, have a say."""
     title = "another thrust law"
-    grid = np.arange(SHALLOWEST, STEEPEST + 0.01, 0.25)
+    gas = _rates(pair.results)
 
     def power(n: float) -> History:
         return History(f"r^-{n:g}", lambda r: r**-n)
 
-    grid, values, good = _scan(pair, grid, lambda n: pair.chi2(power(n), power(n)))
+    def gas_misfit(g: Callable[[Floats], Floats]) -> float:
+        return sum(_rate_misfit(rows, g) for rows in gas)
+
+    grid = np.arange(SHALLOWEST, STEEPEST + 0.01, 0.25)
+    gas_alone = np.array([gas_misfit(power(n).g) for n in grid])
+    floor = float(gas_alone.min())
+    dof = pair.dof_all + bool(gas)
+    scan = _scan(
+        grid,
+        lambda n: pair.chi2(power(n)) + gas_misfit(power(n).g) - floor,
+        pair.level,
+        dof,
+    )
     named = {}
     for name, form in LAWS.items():
         history = law_history(LawThrust(form))
-        named[name] = pair.chi2(history, history)
-    names = np.array(list(named))
-    agreeing = [str(name) for name in pair.fitting(names, np.array(list(named.values())))]
-    best = min(float(values.min()), min(named.values()))
+        named[name] = pair.chi2(history) + gas_misfit(history.g) - floor
+    names, good = np.array(list(named)), scan.good
+    found = fitting(names, np.array(list(named.values())), pair.level, scan.dof)
+    agreeing = [str(name) for name in found]
+    best = min(scan.lowest, min(named.values()))
     verdict = EXPONENTS.verdict(good)
     if agreeing and verdict != POSSIBLE:
         verdict = POSSIBLE
     needed: dict[str, Any] = {
-        "best_exponent": float(grid[np.argmin(values)]),
+        "best_exponent": scan.best,
         "exponents": [float(good.min()), float(good.max())] if good.size else None,
         "named_laws": agreeing,
+        "exponents_of_rates": None,
     }
     if good.size:
-        low, high = float(good.min()), float(good.max())
-        wanted = _interval(good)
-        if high >= STEEPEST:
-            wanted = f"{number_text(low)} or more"
-        elif low <= SHALLOWEST:
-            wanted = f"{number_text(high)} or less"
-        sentence = f"a fall-off as r^-n with n of {wanted} would fit both"
+        sentence = f"a fall-off as r^-n with n of {_exponents(good)} would fit {pair.all_words}"
     else:
-        sentence = "no power of r between r^2 and r^-30 makes one thrust fit both"
+        sentence = (
+            f"no power of r between r^2 and r^-30 makes one thrust fit {pair.all_words}"
+            f"{' and the rates' if gas else ''}"
+        )
     told = [name for name in agreeing if not name.startswith("power-")]
     if told:
         sentence += f", and so would {', '.join(told)}"
+    if gas:
+        allowed = grid[gas_alone - floor <= float(chi2.isf(1.0 - pair.level, 1))]
+        needed["exponents_of_rates"] = [float(allowed.min()), float(allowed.max())]
+        limits = sum(row.limit for rows in gas for row in rows)
+        among = f", {limits} of them upper limit{'s' * (limits > 1)}," if limits else ""
+        sentence += f"; the rates{among} by themselves ask for n of {_exponents(allowed)}"
     return Explanation(
         "law",
         title,
@@ -299,40 +411,118 @@ def law(pair: Pair) -> Explanation:
         f"{sentence}; {EXPONENTS}",
         needed,
         best,
-        pair.dof,
-        pair.probability(best),
+        scan.dof,
+        pair.likelihood(best, scan.dof),
         EXPONENTS,
     )
+
+
+def _exponents(good: Floats) -> str:
+    low, high = float(good.min()), float(good.max())
+    if low <= SHALLOWEST and high >= STEEPEST:
+        return "any size"
+    if high >= STEEPEST:
+        return f"{number_text(low)} or more"
+    if low <= SHALLOWEST:
+        return f"{number_text(high)} or less"
+    return _interval(good)
+
+
+@dataclass(frozen=True)
+class _Rate:
+    """Force of one emission, up to a factor common to its species: ln of it with its error, or of
+    its upper limit, which is so many sigma."""
+
+    r_au: float
+    log: float
+    sigma: float
+    limit: bool
+
+
+def _rates(results: tuple[ThrustResult, ...]) -> list[list[_Rate]]:
+    """Rates times speeds, by species, where several distances constrain the law: at least one
+    measured."""
+    found: dict[str, list[_Rate]] = {}
+    for result in results:
+        for one in result.outgassing.emissions if result.outgassing else ():
+            rate = one.rate
+            scale = math.log(one.kg_per_count * one.median_speed_m_s)
+            if isinstance(rate, AtMost):
+                sigmas = float(norm.isf(1.0 - (rate.confidence or 0.95)))
+                row = _Rate(one.at_au, scale + math.log(rate.limit), sigmas, True)
+            else:
+                low, middle, high = np.log(rate.ppf(np.array([0.16, 0.5, 0.84])))
+                error = 0.5 * float(high - low) or RATE_ERROR
+                row = _Rate(one.at_au, scale + float(middle), error, False)
+            found.setdefault(one.species, []).append(row)
+    return [
+        rows
+        for rows in found.values()
+        if len({row.r_au for row in rows}) > 1 and any(not row.limit for row in rows)
+    ]
+
+
+def _rate_misfit(rows: list[_Rate], g: Callable[[Floats], Floats]) -> float:
+    """chi2 of the rates of one species under a law, its amount free.
+
+    A measured rate is Gaussian in its logarithm; an upper limit at so many sigma stands for an
+    estimate of zero, so that it speaks against large rates only.
+    """
+    law = np.log(np.maximum(g(np.array([row.r_au for row in rows])), 1e-300))
+    logs, sigmas = (np.array([getattr(row, k) for row in rows]) for k in ("log", "sigma"))
+    limit = np.array([row.limit for row in rows])
+    offsets = (logs - law)[~limit]
+
+    def at(amount: float) -> float:
+        off = (logs - law - amount) / np.where(limit, 1.0, sigmas)
+        above = sigmas * np.exp(np.minimum(-off, 50.0))
+        return float(np.sum(np.where(limit, above, off) ** 2))
+
+    # between the least that the limits allow and the most that the measured rates ask for
+    low = float(offsets.min() - 10.0 * sigmas[~limit].max() - 1.0)
+    found = minimize_scalar(at, bounds=(low, float(offsets.max()) + 1.0), method="bounded")
+    return float(found.fun)
 
 
 def onset_distance(pair: Pair) -> Explanation:
     """A thrust that acts only within some distance of the Sun."""
     title = "an onset distance"
-    low = min(r.response.r_au[0] for r in (pair.quiet, pair.active))
-    high = max(r.response.r_au[1] for r in (pair.quiet, pair.active))
+    low = min(r.response.r_au[0] for r in pair.results)
+    high = max(r.response.r_au[1] for r in pair.results)
     grid = np.geomspace(low, high, 161)[1:-1] if high > 1.001 * low else np.zeros(0)
 
     def within(result: ThrustResult, r_au: float) -> History:
         own = result.response.own
         return History(f"{own.words} within {r_au:.3g} au", own.g, within_au=r_au)
 
-    grid, values, good = _scan(
-        pair, grid, lambda r: pair.chi2(within(pair.quiet, r), within(pair.active, r))
+    scan = _scan(
+        grid,
+        lambda r: pair.chi2(lambda result: within(result, r)),
+        pair.level,
+        pair.dof_all,
+        log=True,
     )
+    good = scan.good
     seen = _measured_beyond(pair.quiet.outgassing, good)
     if seen is not None:
         good = good[good > seen]
     verdict = ONSETS_AU.verdict(good)
+    needed: dict[str, Any] = {"onset_au": None, "share_of_range": None}
     if good.size:
-        sentence = f"a thrust that sets in within {_interval(good, 'au')} would fit both"
-        needed: dict[str, Any] = {"onset_au": [float(good.min()), float(good.max())]}
+        sentence = (
+            f"a thrust that sets in within {_interval(good, 'au')} would fit {pair.all_words} "
+            f"({_share_text(scan, 'distances')})"
+        )
+        needed = {"onset_au": [float(good.min()), float(good.max())], "share_of_range": scan.share}
+        if _tuned(scan) and verdict == POSSIBLE:
+            verdict = STRAINED
     else:
-        sentence, needed = "no onset distance makes one thrust fit both", {"onset_au": None}
+        sentence = f"no onset distance makes one thrust fit {pair.all_words}"
         if seen is not None:
             sentence = f"gas was measured at {seen:g} au, where there should be none yet"
         elif not grid.size:
-            sentence += ": both arcs lie at the same distance"
-    best = float(values.min()) if values.size else pair.chi2()
+            sentence += ": the arcs lie at the same distance"
+    best = scan.lowest if grid.size else pair.chi2(lambda result: result.response.own)
     return Explanation(
         "onset-distance",
         title,
@@ -340,8 +530,8 @@ def onset_distance(pair: Pair) -> Explanation:
         f"{sentence}; {ONSETS_AU}",
         needed,
         best,
-        pair.dof,
-        pair.probability(best),
+        scan.dof,
+        pair.likelihood(best, scan.dof),
         ONSETS_AU,
     )
 
@@ -358,11 +548,10 @@ def _measured_beyond(budget: Outgassing | None, onsets_au: Floats) -> float | No
 def date(pair: Pair) -> Explanation:
     """A thrust that begins, or ends, at some date."""
     title = "a date of onset" if pair.quiet_is_earlier in (True, None) else "a date of ending"
-    if pair.quiet_is_earlier is None:
+    spans = [(r.response.first_d, r.response.last_d) for r in pair.results]
+    if not np.all(np.isfinite(spans)):
         return Explanation("date", title, UNTESTABLE, "a result has no dates")
-    first = min(r.response.first_d for r in (pair.quiet, pair.active))
-    last = max(r.response.last_d for r in (pair.quiet, pair.active))
-    grid = np.linspace(first, last, 152)[1:-1]
+    grid = np.linspace(float(np.min(spans)), float(np.max(spans)), 152)[1:-1]
 
     def cut(result: ThrustResult, when: float) -> History:
         own = result.response.own
@@ -370,33 +559,29 @@ def date(pair: Pair) -> Explanation:
             return History(f"{own.words} from then", own.g, from_d=when)
         return History(f"{own.words} until then", own.g, until_d=when)
 
-    grid, values, good = _scan(
-        pair, grid, lambda t: pair.chi2(cut(pair.quiet, t), cut(pair.active, t))
-    )
-    best = float(values.min())
+    scan = _scan(grid, lambda t: pair.chi2(lambda result: cut(result, t)), pair.level, pair.dof_all)
+    found: dict[str, Any] = {
+        "chi2": scan.lowest,
+        "dof": scan.dof,
+        "probability": pair.likelihood(scan.lowest, scan.dof),
+    }
     what = "begins" if pair.quiet_is_earlier else "ends"
-    if not good.size:
-        sentence = f"no date at which the thrust {what} makes one thrust fit both"
-        return Explanation(
-            "date",
-            title,
-            EXCLUDED,
-            sentence,
-            {"dates": None},
-            best,
-            pair.dof,
-            pair.probability(best),
-        )
-    ends = [str(tdb_d_to_iso(float(d)))[:10] for d in (good.min(), good.max())]
-    sentence = f"a thrust that {what} between {ends[0]} and {ends[1]} would fit both"
-    verdict = POSSIBLE
+    if not scan.good.size:
+        sentence = f"no date at which the thrust {what} makes one thrust fit {pair.all_words}"
+        needed: dict[str, Any] = {"dates": None, "share_of_range": None}
+        return Explanation("date", title, EXCLUDED, sentence, needed, **found)
+    ends = [str(tdb_d_to_iso(float(d)))[:10] for d in (scan.good.min(), scan.good.max())]
+    sentence = (
+        f"a thrust that {what} between {ends[0]} and {ends[1]} would fit {pair.all_words} "
+        f"({_share_text(scan, 'dates')})"
+    )
+    verdict = STRAINED if _tuned(scan) else POSSIBLE
     budget = pair.quiet.outgassing
     if budget is not None and any(not isinstance(e.rate, AtMost) for e in budget.emissions):
         verdict = STRAINED
-        sentence += f", but gas was measured at the epoch of {pair.quiet.name}"
-    return Explanation(
-        "date", title, verdict, sentence, {"dates": ends}, best, pair.dof, pair.probability(best)
-    )
+        sentence += f", but gas was measured at the epoch of {pair.quiet.name!r}"
+    needed = {"dates": ends, "share_of_range": scan.share}
+    return Explanation("date", title, verdict, sentence, needed, **found)
 
 
 def _sphere(n: int = 3000) -> Floats:
@@ -443,16 +628,17 @@ def rotated(pair: Pair) -> Explanation:
             where.append(point)
         return value, where
 
+    def cost(log_size: float) -> float:
+        # of sizes that fit as well, the one nearest to what the active result shows
+        return at(math.exp(log_size))[0] + NEAREST * (log_size - math.log(centre)) ** 2
+
     sizes = np.log(centre) + np.linspace(math.log(0.03), math.log(3.0), 61)
-    values = [at(math.exp(x))[0] for x in sizes]
-    best = int(np.argmin(values))
+    best = int(np.argmin([cost(float(x)) for x in sizes]))
     around = (float(sizes[max(best - 1, 0)]), float(sizes[min(best + 1, 60)]))
-    found = minimize_scalar(
-        lambda x: at(math.exp(x))[0], bounds=around, method="bounded", options={"xatol": 1e-6}
-    )
+    found = minimize_scalar(cost, bounds=around, method="bounded", options={"xatol": 1e-6})
     size = math.exp(float(found.x))
     low, points = at(size)
-    probability = pair.probability(low, dof)
+    probability = pair.likelihood(low, dof)
     cosine = float(points[0] @ points[1]) / size**2
     turn = math.degrees(math.acos(max(-1.0, min(1.0, cosine))))
     own = pair.quiet.response.misfit(pair.quiet.response.own)
@@ -467,9 +653,9 @@ def rotated(pair: Pair) -> Explanation:
         "missed_fraction_space_fixed": None,
     }
     hidden = (
-        f"{percent(fraction)} of the directions that follow the Sun "
-        f"({percent(needed['missed_fraction_outward'])} of the outward ones) would have escaped "
-        f"{pair.quiet.name}"
+        f"of all directions that are fixed with respect to Sun and orbit, {percent(fraction)} "
+        f"({percent(needed['missed_fraction_outward'])} of those with an outward part) would have "
+        f"escaped {pair.quiet.name!r} at 3 sigma"
     )
     if isinstance(pair.quiet.response, ArcResponse):
         spin = History("fixed in space", pair.quiet.response.own.g, frame="inertial")
@@ -477,7 +663,7 @@ def rotated(pair: Pair) -> Explanation:
         needed["missed_fraction_space_fixed"] = averaged
         hidden += (
             f"; of the spin axes fixed in space, along which rotation leaves the mean thrust, "
-            f"{percent(averaged)}"
+            f"{percent(averaged)} would have"
         )
     if probability < THREE_SIGMA:
         verdict = EXCLUDED
@@ -485,18 +671,18 @@ def rotated(pair: Pair) -> Explanation:
     elif pair.quiet.is_detection:
         verdict = POSSIBLE
         sentence = (
-            f"a thrust of {number_text(size)} au/d2 turned by about {turn:.0f} degrees between the "
-            "two fits both"
+            f"a thrust of {number_text(size)} au/d2, turned by about {turn:.0f} degrees between "
+            "the two, fits both"
         )
     else:
         verdict = POSSIBLE if fraction >= 0.05 else STRAINED if fraction >= 0.003 else EXCLUDED
-        sentence = f"a thrust of {number_text(size)} au/d2 could hide in some directions"
+        sentence = f"a thrust of {number_text(size)} au/d2 could have hidden: {hidden}"
+        if verdict == EXCLUDED:
+            sentence = f"a thrust of {number_text(size)} au/d2 could hardly have hidden: {hidden}"
     inward = points[0][0] < 0 <= points[1][0]
     if inward and verdict != EXCLUDED:
-        sentence += f"; it would point towards the Sun at {pair.quiet.name}"
-    return Explanation(
-        "rotated", title, verdict, f"{sentence}; {hidden}", needed, low, dof, probability
-    )
+        sentence += f"; it would point towards the Sun at {pair.quiet.name!r}"
+    return Explanation("rotated", title, verdict, sentence, needed, low, dof, probability)
 
 
 def space_fixed(pair: Pair) -> Explanation:
@@ -511,15 +697,12 @@ def space_fixed(pair: Pair) -> Explanation:
         History("fixed in space", response.own.g, frame="inertial") for response in responses
     ]
     value, amounts = joint(responses, histories)
-    probability = pair.probability(value)
+    probability = pair.likelihood(value)
     verdict = POSSIBLE if probability >= THREE_SIGMA else EXCLUDED
     size = float(np.linalg.norm(amounts))
     ra = math.degrees(math.atan2(amounts[1], amounts[0])) % 360.0
     dec = math.degrees(math.asin(amounts[2] / size)) if size > 0 else 0.0
-    sentence = (
-        f"{number_text(size)} au/d2 along RA {ra:.0f}, Dec {dec:.0f} degrees fits best, with the "
-        f"probability {chance_text(probability)}"
-    )
+    sentence = f"{number_text(size)} au/d2 along RA {ra:.0f}, Dec {dec:.0f} degrees fits best"
     return Explanation(
         "space-fixed",
         title,
@@ -532,14 +715,13 @@ def space_fixed(pair: Pair) -> Explanation:
     )
 
 
-def amplitude_ratios(pair: Pair) -> tuple[Floats, float, float]:
-    """Ratios quiet / active of one thrust, direction kept, that fit both; the best; its chi2."""
+def amplitude_ratios(pair: Pair) -> Scan:
+    """chi2 of ratios quiet / active of one thrust, direction kept."""
     grid = np.concatenate([[0.0], np.geomspace(1e-3, 10.0, 241)])
     responses = [pair.quiet.response, pair.active.response]
     asked = [response.ask(response.own) for response in responses]
     censored = any(response.allowed_sigma for response in responses)
-    grid, values, good = _scan(pair, grid, lambda s: settle(asked, [s, 1.0], censored)[0])
-    return good, float(grid[np.argmin(values)]), float(values.min())
+    return _scan(grid, lambda s: settle(asked, [s, 1.0], censored)[0], pair.level, pair.dof)
 
 
 def _loss_per_impulse(result: ThrustResult, rng: np.random.Generator) -> tuple[Floats, str]:
@@ -556,34 +738,34 @@ def _loss_per_impulse(result: ThrustResult, rng: np.random.Generator) -> tuple[F
     return ratio * (1.0 + dust), "default speed and collimation, and 0 to 6 times as much dust"
 
 
-def mass_change(pair: Pair, ratios: Floats, best: float, value: float) -> Explanation:
+def mass_change(pair: Pair, scan: Scan) -> Explanation:
     """A change of mass between the two epochs at the same force."""
     title = "a change of mass"
-    probability = pair.probability(value)
-    base: dict[str, Any] = {"best_ratio": best}
-    if not ratios.size:
+    probability = pair.likelihood(scan.lowest, scan.dof)
+    base: dict[str, Any] = {"best_ratio": scan.best}
+    if not scan.good.size:
         return Explanation(
             "mass",
             title,
             EXCLUDED,
             "no ratio of the two thrusts, direction kept, fits both",
             base,
-            value,
-            pair.dof,
+            scan.lowest,
+            scan.dof,
             probability,
         )
-    top = float(ratios.max())
-    base["thrust_ratio"] = [float(ratios.min()), top]
+    top = float(scan.good.max())
+    base["thrust_ratio"] = [float(scan.good.min()), top]
     if pair.quiet_is_earlier is False:
         return Explanation(
             "mass",
             title,
             EXCLUDED,
-            f"the thrust fell to {_interval(ratios)} of what it was, so the mass would have had to "
-            "grow",
+            f"the thrust fell to {_interval(scan.good)} of what it was, so the mass would have had "
+            "to grow",
             base,
-            value,
-            pair.dof,
+            scan.lowest,
+            scan.dof,
             probability,
         )
     loss = max(1.0 - top, 0.0)
@@ -593,10 +775,10 @@ def mass_change(pair: Pair, ratios: Floats, best: float, value: float) -> Explan
             "mass",
             title,
             UNTESTABLE,
-            f"{lost}; without dates the loss cannot be counted",
+            f"{lost}; whether it could is not to be said without dates",
             base,
-            value,
-            pair.dof,
+            scan.lowest,
+            scan.dof,
             probability,
         )
     active = pair.active.response
@@ -630,29 +812,29 @@ def mass_change(pair: Pair, ratios: Floats, best: float, value: float) -> Explan
     )
     if verdict != POSSIBLE:
         sentence += "; only a splitting could"
-    return Explanation("mass", title, verdict, sentence, base, value, pair.dof, probability)
+    return Explanation("mass", title, verdict, sentence, base, scan.lowest, scan.dof, probability)
 
 
-def production(pair: Pair, ratios: Floats, best: float, value: float) -> Explanation:
+def production(pair: Pair, scan: Scan) -> Explanation:
     """A production that differs between the epochs from what the law predicts."""
     title = "a production that differs by epoch"
-    probability = pair.probability(value)
-    needed: dict[str, Any] = {"best_ratio": best}
-    if not ratios.size:
+    probability = pair.likelihood(scan.lowest, scan.dof)
+    needed: dict[str, Any] = {"best_ratio": scan.best}
+    if not scan.good.size:
         return Explanation(
             "production",
             title,
             EXCLUDED,
             "no ratio of the two thrusts, direction kept, fits both",
             needed,
-            value,
-            pair.dof,
+            scan.lowest,
+            scan.dof,
             probability,
         )
-    needed["ratio"] = [float(ratios.min()), float(ratios.max())]
+    needed["ratio"] = [float(scan.good.min()), float(scan.good.max())]
     sentence = (
-        f"the force at {pair.quiet.name}, referred to the same law, would have to be "
-        f"{_interval(ratios)} of that at {pair.active.name}"
+        f"the force at {pair.quiet.name!r}, referred to the same law, would have to be "
+        f"{_interval(scan.good)} times that at {pair.active.name!r}"
     )
     measured = _measured_ratio(pair)
     if measured is not None:
@@ -660,26 +842,26 @@ def production(pair: Pair, ratios: Floats, best: float, value: float) -> Explana
             float(x) for x in np.quantile(measured, [0.5 - pair.level / 2, 0.5 + pair.level / 2])
         )
         needed["measured_ratio"] = [low, high]
-        inside = (ratios >= low) & (ratios <= high)
-        near = (ratios >= low / 2) & (ratios <= high * 2)
-        crossing = ratios.min() <= low and ratios.max() >= high
+        inside = (scan.good >= low) & (scan.good <= high)
+        near = (scan.good >= low / 2) & (scan.good <= high * 2)
+        crossing = scan.good.min() <= low and scan.good.max() >= high
         verdict = POSSIBLE if inside.any() or crossing else STRAINED if near.any() else EXCLUDED
         sentence += (
             f"; the measured rates give {number_text(low)} to {number_text(high)} at "
             f"{100 * pair.level:g} %"
         )
         return Explanation(
-            "production", title, verdict, sentence, needed, value, pair.dof, probability
+            "production", title, verdict, sentence, needed, scan.lowest, scan.dof, probability
         )
-    verdict = PRODUCTION_FACTORS.verdict(ratios)
+    verdict = PRODUCTION_FACTORS.verdict(scan.good)
     return Explanation(
         "production",
         title,
         verdict,
         f"{sentence}; {PRODUCTION_FACTORS}",
         needed,
-        value,
-        pair.dof,
+        scan.lowest,
+        scan.dof,
         probability,
         PRODUCTION_FACTORS,
     )
@@ -715,16 +897,17 @@ def _per_species(result: ThrustResult, rows: Floats) -> Floats:
     return (rows / (g * often)[:, None]).sum(axis=0)
 
 
-def collimation(pair: Pair, ratios: Floats, best: float, value: float) -> Explanation:
+def collimation(pair: Pair, scan: Scan) -> Explanation:
     """A collimation that differs between the epochs, all else equal."""
-    verdict = COLLIMATIONS.verdict(ratios)
+    verdict = COLLIMATIONS.verdict(scan.good)
     needed = {
-        "best_ratio": best,
-        "ratio": [float(ratios.min()), float(ratios.max())] if ratios.size else None,
+        "best_ratio": scan.best,
+        "ratio": [float(scan.good.min()), float(scan.good.max())] if scan.good.size else None,
     }
     sentence = (
-        f"it would have to be {_interval(ratios)} of that at {pair.active.name}"
-        if ratios.size
+        f"at {pair.quiet.name!r} it would have to be {_interval(scan.good)} times that at "
+        f"{pair.active.name!r}"
+        if scan.good.size
         else "no ratio of the two thrusts, direction kept, fits both"
     )
     return Explanation(
@@ -733,9 +916,9 @@ def collimation(pair: Pair, ratios: Floats, best: float, value: float) -> Explan
         verdict,
         f"{sentence}; {COLLIMATIONS}",
         needed,
-        value,
-        pair.dof,
-        pair.probability(value),
+        scan.lowest,
+        scan.dof,
+        pair.likelihood(scan.lowest, scan.dof),
         COLLIMATIONS,
     )
 
@@ -772,7 +955,7 @@ def density(
             open_ended = owner.mass is None and not owner.is_detection
             low, high = max(low, float(edges[0])), min(high, np.inf if open_ended else edges[1])
             told.append(
-                f"mass of {owner.name} and diameter of {other.name} need "
+                f"the mass of {owner.name!r} and the diameter of {other.name!r} need "
                 f"{'above ' if open_ended else ''}{number_text(float(edges[0]))}"
                 + ("" if open_ended else f" to {number_text(float(edges[1]))}")
                 + " kg/m3"

@@ -1,9 +1,9 @@
 """What would have to be true for two or more results about one object to hold together?
 
-May import: errors, fit, and from its own room explanations, quoted, results, thrust_history.
+May import: errors, fit, and from its own room explanations, frames, notebook,
+quoted, results and thrust_history.
 """
 
-import html
 import itertools
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass
@@ -20,6 +20,8 @@ from ngbound.fit import Fit
 from . import explanations as why
 from .distributions import number_text
 from .explanations import EXCLUDED, ORDER, POSSIBLE, STRAINED, Explanation, Pair
+from .frames import text_rows
+from .notebook import as_html
 from .quoted import Results, read_table
 from .results import THREE_SIGMA, ThrustResult
 from .thrust_history import freedom, joint
@@ -95,17 +97,40 @@ class Reconciliation:
         )
         if self.probability >= 1.0 - self.level:
             return text + ": the results agree, and nothing needs explaining."
-        return text + f": it must be explained. {self.pair[0]} shows less than {self.pair[1]}."
+        return (
+            f"{text}: it must be explained. {self.pair[0]!r} shows less thrust than "
+            f"{self.pair[1]!r}."
+        )
+
+    @property
+    def tied(self) -> tuple[str, ...]:
+        """Keys of the possible explanations that fit as well as the best of them: within the chi2
+        that chance moves at the chosen level. These results cannot tell them apart."""
+        fits = {
+            e.key: e.chi2 for e in self.explanations if e.verdict == POSSIBLE and e.chi2 is not None
+        }
+        edge = min(fits.values(), default=0.0) + float(chi2.isf(1.0 - self.level, 1))
+        return tuple(e.key for e in self.explanations if fits.get(e.key, np.inf) <= edge)
 
     def __str__(self) -> str:
-        lines = [self.headline, *(f"  {result}" for result in self.results), "Explanations:"]
+        lines = [self.headline, *(f"  {result}." for result in self.results), "Explanations:"]
         lines += [f"  {found}." for found in self.explanations]
-        grounds = {e.title: e.plausible.ground for e in self.explanations if e.plausible}
-        lines += ["Published ranges:", *(f"  {title}: {g}." for title, g in grounds.items())]
+        return "\n".join([*lines, *self._notes()])
+
+    def _notes(self) -> list[str]:
+        notes = []
+        if len(self.tied) > 1:
+            titles = [self[key].title for key in self.tied]
+            notes.append(
+                f"These fit about equally well and cannot be told apart by the results: "
+                f"{'; '.join(titles)}."
+            )
+        grounds = [f"{e.title}: {e.plausible.ground}." for e in self.explanations if e.plausible]
+        notes += ["Where the published ranges come from:", *(f"  {ground}" for ground in grounds)]
         assumed = [text for result in self.results for text in result.assumed]
         if assumed:
-            lines.append("Assumed: " + "; ".join(assumed) + ".")
-        return "\n".join(lines)
+            notes.append("Assumed: " + "; ".join(assumed) + ".")
+        return notes
 
     def to_frame(self) -> pd.DataFrame:
         """The explanations as a table: verdict, best probability and sentence, by key."""
@@ -121,8 +146,8 @@ class Reconciliation:
         return pd.DataFrame.from_dict(rows, orient="index")
 
     def _repr_html_(self) -> str:
-        with pd.option_context("display.max_colwidth", None):
-            return f"<p>{html.escape(self.headline)}</p>{self.to_frame().to_html()}"
+        results = as_html([self.headline], (), [f"{result}." for result in self.results])
+        return results + as_html((), text_rows(self.to_frame()), self._notes())
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able record."""
@@ -135,6 +160,7 @@ class Reconciliation:
             "thrust_au_d2": list(self.thrust_au_d2),
             "pair": list(self.pair),
             "level": self.level,
+            "tied": list(self.tied),
             "explanations": [found.to_dict() for found in self.explanations],
         }
 
@@ -198,7 +224,7 @@ def reconcile(
     value, thrust = joint(responses, [response.own for response in responses])
     value = max(value, 0.0)
     probability = float(chi2.sf(value, dof))
-    pair = _worst_pair(found, level, np.random.default_rng(seed))
+    pair = _worst_pair(tuple(found), level, np.random.default_rng(seed), dof)
     chance = Explanation(
         "chance",
         "chance alone",
@@ -207,14 +233,13 @@ def reconcile(
         else STRAINED
         if probability >= THREE_SIGMA
         else EXCLUDED,
-        f"the same thrust in all results, law as quoted, has the probability "
-        f"{why.chance_text(probability)}",
+        "one and the same thrust in all results, under the laws quoted",
         {"thrust_au_d2": thrust.tolist()},
         value,
         dof,
         probability,
     )
-    ratios, best, scaled = why.amplitude_ratios(pair)
+    ratios = why.amplitude_ratios(pair)
     told = [
         chance,
         why.law(pair),
@@ -222,11 +247,12 @@ def reconcile(
         why.date(pair),
         why.rotated(pair),
         why.space_fixed(pair),
-        why.mass_change(pair, ratios, best, scaled),
-        why.production(pair, ratios, best, scaled),
-        why.collimation(pair, ratios, best, scaled),
+        why.mass_change(pair, ratios),
+        why.production(pair, ratios),
+        why.collimation(pair, ratios),
         why.density(tuple(found), pair.rng, level),
     ]
+    told = why.compared(told)
     told.sort(key=lambda e: (ORDER.index(e.verdict), -(e.probability or 0.0)))
     return Reconciliation(
         tuple(found),
@@ -240,7 +266,9 @@ def reconcile(
     )
 
 
-def _worst_pair(found: list[ThrustResult], level: float, rng: np.random.Generator) -> Pair:
+def _worst_pair(
+    found: tuple[ThrustResult, ...], level: float, rng: np.random.Generator, dof_all: int
+) -> Pair:
     worst: tuple[float, Pair] | None = None
     for one, other in itertools.combinations(found, 2):
         responses = [one.response, other.response]
@@ -254,7 +282,7 @@ def _worst_pair(found: list[ThrustResult], level: float, rng: np.random.Generato
         if one.is_detection != other.is_detection:
             quiet, active = (other, one) if one.is_detection else (one, other)
         if worst is None or probability < worst[0]:
-            worst = probability, Pair(quiet, active, level, dof, rng)
+            worst = probability, Pair(quiet, active, level, dof, rng, found, dof_all)
     if worst is None:
         raise MassError("No two of the results measure the thrust along a common axis.")
     return worst[1]

@@ -154,8 +154,9 @@ class ThrustResult:
         return self.outgassing.draw(rng, n).force.value / (push * g * AU_D2_TO_M_S2)
 
     def __str__(self) -> str:
-        a = self.amounts_au_d2
-        matrix = self.response.misfit(self.response.own).matrix
+        found = self.response.misfit(self.response.own)
+        a, matrix = found.lowest()[1], found.matrix
+        spread = np.sqrt(np.diagonal(np.linalg.pinv(matrix, hermitian=True)))
         low, high = self.response.r_au
         where = f"{low:.3g} au" if low == high else f"{low:.3g} to {high:.3g} au"
         when = ""
@@ -165,12 +166,12 @@ class ThrustResult:
         parts = []
         for i, letter in enumerate(AXES):
             if matrix[i, i] > 0:
-                sigma = matrix[i, i] ** -0.5
-                parts.append(f"A{letter} = {number_text(a[i])} +- {number_text(sigma, 2)}")
-        seen = "detection" if self.is_detection else "no detection"
+                parts.append(f"A_{letter} = {number_text(a[i])} +- {number_text(spread[i], 2)}")
+        seen = "a detection" if self.is_detection else "no detection"
+        free = " (each with the others free)" if len(parts) > 1 else ""
         return (
-            f"{self.name} ({self.kind}, {self.response.own.words}, {where}{when}): "
-            f"{', '.join(parts)} au/d2 (each with the others held); {seen}"
+            f"{self.name!r} ({self.kind}, {self.response.own.words}, {where}{when}): "
+            f"{', '.join(parts)} au/d2{free}; {seen} at 3 sigma"
         )
 
     def to_dict(self) -> dict[str, Any]:

@@ -1,16 +1,17 @@
 """What a quoted detection threshold can mean, and which meaning the arc bears out.
 
-May import: errors, arc, fit, limits, and from its own room arithmetic, distributions,
-quoted.
+May import: errors, arc, fit, limits, and from its own room distributions, frames, notebook, quoted,
+slips and written.
 
 A threshold "A at 3 sigma" may be of one component with the others held at zero or free, of all
 together along one axis or the worst one; one- or two-sided; with or without a chance of detection
-beyond one half. Each reading is one number that follows from the thrust information F_A of the arc.
+beyond one half; with errors as quoted or scaled to the scatter of the residuals. Each reading is
+one number that follows from the thrust information F_A of the arc.
 """
 
 import math
 from collections.abc import Callable, Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Any
 
 import numpy as np
@@ -22,15 +23,35 @@ from ngbound.errors import LimitError
 from ngbound.fit import Fit, fit_orbit
 from ngbound.limits import ThrustInformation, noncentrality, thrust_information
 
-from .arithmetic import UNIT_SLIPS, written_rounding
 from .distributions import number_text
+from .frames import text_rows
+from .notebook import as_html
 from .quoted import QuotedThreshold, error_model, read_table, size_au_d2
+from .slips import UNIT_SLIPS
+from .written import Written, rounding, spread_allowed
 
 HOLDS = 0.05
 """Relative disagreement that is always forgiven."""
 MATCHES = 0.03
 """The same for a reading that was not claimed."""
+CLOSE = 0.01
+"""Readings whose misfits differ by less come equally close."""
 _WORDS = {"R": "radial", "T": "transverse", "N": "normal"}
+_OTHERS = {"held": "the other components held at zero", "free": "the other components free"}
+_NOT = {"held": " not free", "free": " not held at zero"}
+_TOGETHER = "all components tested together (direction-free)"
+_SIDES = ("two-sided instead of one-sided", "one-sided instead of two-sided")
+_SCALED = "errors scaled to the scatter of the residuals"
+VERDICTS = {
+    "holds": "follows from the arc as claimed.",
+    "cannot tell": "follows from the arc as claimed, but other readings come as close: the digits "
+    "cannot tell.",
+    "another reading": "does not follow from the arc as claimed; another reading does.",
+    "slip": "does not follow from the arc; a slip of unit or factor would explain it.",
+    "too small": "is smaller than the arc gives under the claim or any one change of it.",
+    "too large": "is larger than the arc gives under the claim or any one change of it.",
+}
+"""What each verdict says of the quoted threshold."""
 
 
 @dataclass(frozen=True)
@@ -70,9 +91,14 @@ class Reading:
 
     def __str__(self) -> str:
         return (
-            f"{self.words}: {number_text(self.value_au_d2)} au/d2, quoted / recomputed = "
+            f"{self.words}: {number_text(self.value_au_d2)} au/d2, and quoted over recomputed is "
             f"{number_text(self.ratio)}"
         )
+
+    @property
+    def miss(self) -> float:
+        """How far quoted and recomputed lie apart, in ln."""
+        return abs(math.log(self.ratio))
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able description."""
@@ -109,10 +135,7 @@ def _levels(quoted: QuotedThreshold) -> list[tuple[Level, tuple[str, ...]]]:
     claimed = claimed_level(quoted)
     listed: list[tuple[Level, tuple[str, ...]]] = [(claimed, ())]
     if quoted.confidence is not None or quoted.false_alarm is not None:
-        other = 1 if quoted.sided == 2 else 2
-        names = {1: "one-sided", 2: "two-sided"}
-        change = f"{names[other]} instead of {names[quoted.sided]}"
-        listed.append((_level(quoted, other, quoted.power), (change,)))
+        listed.append((_level(quoted, 3 - quoted.sided, quoted.power), (_SIDES[quoted.sided - 1],)))
     for power in (0.5, 0.95):
         if power != quoted.power:
             word = (
@@ -122,16 +145,17 @@ def _levels(quoted: QuotedThreshold) -> list[tuple[Level, tuple[str, ...]]]:
             )
             listed.append((_level(quoted, quoted.sided, power), (word,)))
     for z in (1.0, 2.0, 3.0, 5.0):
-        if abs(z - claimed.z) > 0.02 or quoted.power != 0.5:
+        if abs(z - claimed.z) > 0.02:
             level = Level(f"{z:g} sigma", z, 2.0 * float(norm.sf(z)), 0.5)
             listed.append((level, (f"{z:g} sigma instead of the claimed level",)))
     return listed
 
 
 def readings(
-    information: ThrustInformation, quoted: QuotedThreshold, size: float
+    information: ThrustInformation, quoted: QuotedThreshold, size: float, noise_scale: float = 1.0
 ) -> tuple[Reading, ...]:
-    """Every reading of a threshold of ``size`` au/d2, the claimed one first."""
+    """Every reading of a threshold of ``size`` au/d2, the claimed one first; ``noise_scale``: how
+    many times larger the residuals say the errors are."""
     k = information.k
     out: list[Reading] = []
     letters = list(information.components)
@@ -152,22 +176,24 @@ def readings(
             if quoted.component == "any":
                 apart = (f"the {_WORDS[letter]} component alone instead of any direction",)
             elif letter != quoted.component:
-                apart = (f"the {_WORDS[letter]} component instead of the {quoted.component}",)
+                apart = (
+                    f"the {_WORDS[letter]} component instead of the {_WORDS[quoted.component]}",
+                )
             for treatment, value in (("held", one * held), ("free", one * free)):
                 wrong = treatment != quoted.others and quoted.component != "any"
                 axes.append(
                     (
-                        f"{_WORDS[letter]} component, others {treatment}",
+                        f"{_WORDS[letter]} component, {_OTHERS[treatment]}",
                         value,
-                        (*apart, *((f"the other components {treatment}",) if wrong else ())),
+                        (*apart, *((f"{_OTHERS[treatment]},{_NOT[treatment]}",) if wrong else ())),
                     )
                 )
             if k > 1:
                 axes.append(
                     (
-                        f"{_WORDS[letter]} thrust, all components tested together",
+                        f"{_WORDS[letter]} thrust, {_TOGETHER}",
                         together * held,
-                        (*apart, "all components tested together"),
+                        (*apart, _TOGETHER),
                     )
                 )
         if k > 1:
@@ -180,11 +206,23 @@ def readings(
                 ("mean over directions", together * mean, False),
             ):
                 change = () if fit_any and claim else (f"{words} of all",)
-                axes.append((f"{words}, all components tested together", value, change))
+                axes.append((f"{words}, {_TOGETHER}", value, change))
         out += [
             Reading(f"{words}, {level.words}", value, size / value, (*change, *changed))
             for words, value, change in axes
+            # a joint test has no sides
+            if not (_TOGETHER in words and changed and changed[0] in _SIDES)
         ]
+        if not changed and abs(math.log(noise_scale)) > MATCHES:
+            out += [
+                Reading(
+                    f"{words}, {level.words}, {_SCALED}",
+                    noise_scale * value,
+                    size / (noise_scale * value),
+                    (*change, _SCALED),
+                )
+                for words, value, change in axes
+            ]
     out.sort(key=lambda reading: len(reading.changes))
     return tuple(out)
 
@@ -227,11 +265,13 @@ class ThresholdAudit:
     ratio_error : float
         Relative standard error of quoted over recomputed: rounding of the quoted numbers, and the
         noise level where it was not quoted.
-    closest : Reading
-        The reading that comes closest; of several that match, the one with the fewest changes.
+    closest : tuple of Reading
+        If the claim holds: the claimed one, and those with one change that come as close. If not:
+        of the readings that match, the one with the fewest changes, and those that come as close
+        with no more changes; or the nearest of all, if none matches.
     matching : tuple of Reading
     verdict : str
-        "holds", "another reading", "slip", "too small", "too large".
+        A key of `VERDICTS`.
     slips : tuple of str
     noise_scale : float
         sqrt(chi2 / dof) of the fit under these errors: how many times larger the residuals say
@@ -243,7 +283,7 @@ class ThresholdAudit:
     quoted_au_d2: float
     claimed: Reading
     ratio_error: float
-    closest: Reading
+    closest: tuple[Reading, ...]
     matching: tuple[Reading, ...]
     all_readings: tuple[Reading, ...]
     verdict: str
@@ -251,28 +291,48 @@ class ThresholdAudit:
     noise_scale: float
     ratio_default_errors: float | None
 
+    @property
+    def headline(self) -> str:
+        """The verdict in a sentence."""
+        return (
+            f"The quoted threshold of {number_text(self.quoted_au_d2)} au/d2 "
+            f"{VERDICTS[self.verdict]}"
+        )
+
+    @property
+    def changes(self) -> tuple[str, ...]:
+        """What the closest readings change of the claim, one text a reading."""
+        return tuple("; ".join(r.changes) for r in self.closest if r.changes)
+
     def __str__(self) -> str:
         error = number_text(self.claimed.ratio * self.ratio_error, 2)
-        lines = [
-            f"Quoted threshold {number_text(self.quoted_au_d2)} au/d2: {self.verdict}.",
-            f"  as claimed: {self.claimed} +- {error}",
-        ]
-        if self.verdict != "holds":
-            lines.append(f"  closest:    {self.closest}")
+        lines = [self.headline, f"  As claimed: {self.claimed} +- {error}."]
+        near = [r for r in self.closest if r is not self.claimed]
+        if len(near) > 1 or (near and self.verdict == "cannot tell"):
+            lines.append("  These readings come equally close and cannot be told apart:")
+            lines += [f"    {reading}." for reading in near]
+        else:
+            lines += [f"  Closest: {reading}." for reading in near]
         if self.verdict == "another reading":
-            lines.append(f"  differs by: {'; '.join(self.closest.changes)}")
+            lines.append(f"  Unlike the claim: {'; or '.join(self.changes)}.")
         if self.slips:
-            lines.append(f"  slip:       {'; or '.join(self.slips)}")
-        lines.append(
-            f"  residuals are {number_text(self.noise_scale)} times what these errors say; scaled "
-            f"so, the ratio is {number_text(self.claimed.ratio / self.noise_scale)}"
-        )
+            lines.append(f"  The slip: {'; or '.join(self.slips)}.")
+        return "\n".join([*lines, *(f"  {note}" for note in self._notes())])
+
+    def _notes(self) -> list[str]:
+        notes = [
+            f"The residuals scatter {number_text(self.noise_scale)} times as much as these errors "
+            "say; with errors scaled to them the ratio is "
+            f"{number_text(self.claimed.ratio / self.noise_scale)}."
+        ]
+        if not math.isfinite(self.noise_scale):
+            notes = []
         if self.ratio_default_errors is not None:
-            lines.append(
-                "  under the program's own error model the ratio is "
-                f"{number_text(self.ratio_default_errors)}"
+            notes.append(
+                "Under the program's own error model the ratio is "
+                f"{number_text(self.ratio_default_errors)}."
             )
-        return "\n".join(lines)
+        return notes
 
     def to_frame(self) -> pd.DataFrame:
         """Every reading as a table, the claimed one first: words, value in au/d2, quoted over
@@ -286,18 +346,22 @@ class ThresholdAudit:
             }
         )
 
+    def _repr_html_(self) -> str:
+        return as_html([self.headline], text_rows(self.to_frame()), self._notes())
+
     def to_dict(self) -> dict[str, Any]:
         """JSON-able record."""
         return {
             "quoted_au_d2": self.quoted_au_d2,
             "verdict": self.verdict,
+            "headline": self.headline,
             "claimed": self.claimed.to_dict(),
             "ratio_error": self.ratio_error,
-            "closest": self.closest.to_dict(),
+            "closest": [reading.to_dict() for reading in self.closest],
             "matching": [reading.to_dict() for reading in self.matching],
             "readings": [reading.to_dict() for reading in self.all_readings],
             "slips": list(self.slips),
-            "noise_scale": self.noise_scale,
+            "noise_scale": self.noise_scale if math.isfinite(self.noise_scale) else None,
             "ratio_default_errors": self.ratio_default_errors,
         }
 
@@ -348,42 +412,56 @@ def audit_threshold(
             plain = fit_orbit(observed, thrust, initial=fit.orbit, progress=progress)
             found = readings(thrust_information(plain), claim, size)[0]
             other = found.ratio
-    information = thrust_information(fit)
-    listed = readings(information, claim, size)
-    claimed = listed[0]
-    error = written_rounding(claim.value) ** 2
-    if errors and "arcsec" in errors:
-        error += written_rounding(errors["arcsec"]) ** 2
-    elif fit.dof > 0:
-        error += 0.5 / fit.dof
-    error = math.sqrt(error)
-    r_au = math.sqrt(math.prod(fit.distance_range_au))
-    matching, slips, verdict = judge(
-        listed, max(HOLDS, 2 * error), max(MATCHES, 2 * error), float(thrust.g(r_au))
-    )
-    closest = matching[0] if matching else min(listed, key=lambda x: abs(math.log(x.ratio)))
     scale = math.sqrt(fit.reduced_chi2) if fit.dof > 0 else math.nan
+    listed = readings(thrust_information(fit), claim, size, scale if math.isfinite(scale) else 1.0)
+    written = [(1.0, rounding(claim.value))]
+    if errors and "arcsec" in errors:
+        written.append((-1.0, rounding(errors["arcsec"])))
+    elif fit.dof > 0:
+        written.append((-1.0, Written(0.0, 0.0, 0.0, math.sqrt(0.5 / fit.dof), False)))
+    r_au = math.sqrt(math.prod(fit.distance_range_au))
+    digits = max(spread_allowed([(p, replace(w, sigma=0.0)) for p, w in written], 0.0))
+    matching, closest, slips, verdict = judge(
+        listed, max(spread_allowed(written, 0.0)), digits, float(thrust.g(r_au))
+    )
+    error = math.sqrt(sum((w.down + w.up) ** 2 / 12.0 + w.sigma**2 for _, w in written))
     return ThresholdAudit(
-        size, claimed, error, closest, matching, listed, verdict, slips, scale, other
+        size, listed[0], error, closest, matching, listed, verdict, slips, scale, other
     )
 
 
 def judge(
-    listed: tuple[Reading, ...], holds: float, matches: float, g: float | None
-) -> tuple[tuple[Reading, ...], tuple[str, ...], str]:
-    """Readings that match (fewest changes first), slips, and the verdict.
+    listed: tuple[Reading, ...], reach: float, digits: float, g: float | None
+) -> tuple[tuple[Reading, ...], tuple[Reading, ...], tuple[str, ...], str]:
+    """Readings that match (fewest changes first), those that come closest, slips, and the verdict.
 
-    Only a reading with one change gives the verdict "another reading": among the many with more,
-    some come close by chance.
+    ``reach`` is how far quoted over recomputed may lie from 1, in ln, and ``digits`` the part of it
+    that comes from rounding. Only a reading with one change gives the verdict "another reading", or
+    a doubt: among the many with more, some come close by chance.
     """
-    claimed = listed[0]
-    if abs(math.log(claimed.ratio)) <= holds:
-        return (claimed,), (), "holds"
-    matching = [r for r in listed[1:] if abs(math.log(r.ratio)) <= matches]
-    matching.sort(key=lambda r: (len(r.changes), abs(math.log(r.ratio))))
-    slips = acceleration_slips(claimed.ratio, holds, g)
-    if matching and len(matching[0].changes) == 1:
-        return tuple(matching), (), "another reading"
-    if slips:
-        return tuple(matching), slips, "slip"
-    return tuple(matching), (), "too small" if claimed.ratio < 1 else "too large"
+    claimed, single = listed[0], [r for r in listed[1:] if len(r.changes) == 1]
+    if claimed.miss <= max(HOLDS, reach):
+        near = max(digits, claimed.miss) + CLOSE
+        doubts = [
+            r
+            for r in single
+            if r.miss <= near and abs(math.log(r.value_au_d2 / claimed.value_au_d2)) > HOLDS
+        ]
+        verdict = "cannot tell" if doubts else "holds"
+        return (claimed, *doubts), (claimed, *doubts), (), verdict
+    matching = [r for r in listed[1:] if r.miss <= max(MATCHES, reach)]
+    matching.sort(key=lambda r: (len(r.changes), r.miss))
+    slips = acceleration_slips(claimed.ratio, max(HOLDS, reach), g)
+    if not matching:
+        verdict = "slip" if slips else "too small" if claimed.ratio < 1 else "too large"
+        return (), (min(listed, key=lambda r: r.miss),), slips, verdict
+    best = matching[0]
+    tied = tuple(
+        r
+        for r in matching
+        if len(r.changes) == len(best.changes) and r.miss <= max(digits, best.miss) + CLOSE
+    )
+    if len(best.changes) == 1:
+        return tuple(matching), tied, (), "another reading"
+    verdict = "slip" if slips else "too small" if claimed.ratio < 1 else "too large"
+    return tuple(matching), tied, slips, verdict

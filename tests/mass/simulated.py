@@ -1,6 +1,8 @@
 """Invented arcs of an invented object, Wisp, seen from an invented spacecraft: what reconcile and
 audit are tried on."""
 
+from typing import Any
+
 import numpy as np
 
 from ngbound.arc import Arc
@@ -37,14 +39,24 @@ THRUST = np.array([4e-8, 1.2e-8, 0.6e-8])
 
 
 def observe(
-    first: str, last: str, amounts: np.ndarray, seed: int, orbit: dict, law: str = "inverse-square"
+    first: str,
+    last: str,
+    amounts: np.ndarray,
+    seed: int,
+    orbit: dict,
+    law: str = "inverse-square",
+    window_au: tuple[float, float] | None = None,
 ) -> tuple[Arc, Recipe]:
-    """An arc of Wisp and the truth behind it."""
+    """An arc of Wisp and the truth behind it; the thrust may act in a window of distances only."""
     recipe = Recipe.model_validate(
         {
             "object": {"name": "Wisp", "H": 14.0},
             "orbit": orbit,
-            "thrust": {"law": law, "A_au_d2": tuple(float(a) for a in amounts)},
+            "thrust": {
+                "law": law,
+                "A_au_d2": tuple(float(a) for a in amounts),
+                "window_au": window_au,
+            },
             "schedule": {"first": first, "last": last, "seed": seed},
             "spacecraft": [WATCH],
         }
@@ -52,8 +64,8 @@ def observe(
     return simulate_arc(recipe).arc, recipe
 
 
-def fitted(first: str, last: str, amounts: np.ndarray, seed: int, orbit: dict, **law: str) -> Fit:
-    """The arc fitted under the inverse-square law, whatever the true one."""
+def fitted(first: str, last: str, amounts: np.ndarray, seed: int, orbit: dict, **law: Any) -> Fit:
+    """The arc fitted under the inverse-square law at all distances, whatever the true one."""
     arc, recipe = observe(first, last, amounts, seed, orbit, **law)
     true = recipe.orbit.orbit().with_thrust(Thrust("inverse-square", A=recipe.thrust.A_au_d2))
     return fit_orbit(arc, Thrust("inverse-square"), initial=true, reject=False)
@@ -108,14 +120,23 @@ def rotated_jet(seed: int) -> tuple[ThrustResult, ThrustResult]:
     )
 
 
+INBOUND_ARCS = (("2020-01-01", "2021-06-20"), ("2021-07-01", "2021-12-20"))
+ONSET_AU = 1.8
+
+
+def onset_on_the_way(seed: int) -> tuple[ThrustResult, ThrustResult]:
+    """A strong thrust that sets in at 1.8 au, in the midst of the later arc."""
+    early, late = (
+        fitted(*dates, 10 * THRUST, noise, INBOUND, window_au=(0.0, ONSET_AU))
+        for dates, noise in zip(INBOUND_ARCS, (seed, seed + 1000), strict=True)
+    )
+    return ThrustResult.from_fit(early, "early"), ThrustResult.from_fit(late, "late")
+
+
 def changed_law(seed: int) -> tuple[ThrustResult, ThrustResult]:
     """Water ice, far out and then nearer, both taken as inverse-square."""
-    water = {"law": "water-ice"}
-    return (
-        ThrustResult.from_fit(
-            fitted("2020-01-01", "2021-06-20", 3 * THRUST, seed, INBOUND, **water), "early"
-        ),
-        ThrustResult.from_fit(
-            fitted("2021-07-01", "2021-12-20", 3 * THRUST, seed + 1000, INBOUND, **water), "late"
-        ),
+    early, late = (
+        fitted(*dates, 3 * THRUST, noise, INBOUND, law="water-ice")
+        for dates, noise in zip(INBOUND_ARCS, (seed, seed + 1000), strict=True)
     )
+    return ThrustResult.from_fit(early, "early"), ThrustResult.from_fit(late, "late")

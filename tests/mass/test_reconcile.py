@@ -54,6 +54,64 @@ def test_exponent_needed_for_a_non_detection_farther_out():
     assert found.verdict("law") == "possible" and "water-ice" in found["law"].needed["named_laws"]
 
 
+def gas(result: dict, rate: str, r_au: float) -> dict:
+    return {**result, "outgassing": {"rate": rate, "at": r_au}}
+
+
+def test_upper_limits_of_the_rate_speak_on_one_side_only():
+    late = gas(LATE, "(1.0 +- 0.1)e27", 1.5)
+    # a tenth of the rate, at most, twice as far out, at 0.85 km/s r^-0.5: n of log2(10) + 0.5 or
+    # more. At 1.96 sigma of the limit, itself 1.645 sigma, and with the error of the rate a little
+    # less
+    far = reconcile(gas(EARLY, "< 1.0e26", 3.0), late)["law"]
+    low, high = far.needed["exponents_of_rates"]
+    edge = math.log2(10 * 1.645 / 1.96) + 0.5
+    assert edge - 0.5 < low <= edge + 0.25 and high == 30.0
+    assert "1 of them upper limit," in far.sentence and "or more" in far.sentence
+    assert far.needed["exponents"][0] >= low
+    # the same limit half as far out allows any steepness below
+    near = reconcile(gas({**EARLY, "r_au": [0.75]}, "< 1.0e28", 0.75), late)["law"]
+    low, high = near.needed["exponents_of_rates"]
+    assert low == -2.0 and math.log2(10) < high < math.log2(10) + 1.25
+    loose = reconcile(gas(EARLY, "< 1.0e30", 3.0), late)["law"]
+    assert "any size" in loose.sentence
+
+
+def test_measured_rates_can_exclude_the_law_that_the_thrust_asks_for():
+    # the thrust asks for n of 4 or more, the rates for 2.5 +- 0.2
+    early, late = gas(EARLY, "(2.5 +- 0.2)e26", 3.0), gas(LATE, "(1.0 +- 0.1)e27", 1.5)
+    alone, both = reconcile(EARLY, LATE)["law"], reconcile(early, late)["law"]
+    assert alone.verdict == "possible" and alone.needed["exponents_of_rates"] is None
+    assert both.verdict == "excluded", both
+    assert both.needed["exponents_of_rates"] == pytest.approx([2.5, 2.5], abs=0.6)
+
+
+def test_the_law_must_fit_all_results():
+    # a third result at the distance of the second, half as strong, fits no law
+    third = {**LATE, "name": "third", "A": "(0.5 +- 0.02)e-8"}
+    strong = {**LATE, "A": "(1.0 +- 0.02)e-8"}
+    assert reconcile(EARLY, strong).verdict("law") == "possible"
+    found = reconcile(EARLY, strong, third)
+    assert found.verdict("law") == "excluded" and "all 3" in found["law"].sentence
+
+
+def test_explanations_are_ranked_and_ties_are_told():
+    found = reconcile(EARLY, LATE)
+    order = ["possible", "strained", "excluded", "not testable"]
+    verdicts = [order.index(e.verdict) for e in found.explanations]
+    assert verdicts == sorted(verdicts)
+    for verdict in order:
+        chances = [e.probability or 0.0 for e in found.explanations if e.verdict == verdict]
+        assert chances == sorted(chances, reverse=True)
+    assert len(found.tied) > 1 and set(found.tied) <= set(found.possible)
+    assert "cannot be told apart" in str(found)
+    best = min(e.chi2 for e in found.explanations if e.key in found.possible)
+    for key in found.possible:
+        assert (key in found.tied) == (found[key].chi2 <= best + chi2.isf(0.05, 1))
+    alone = reconcile(LATE, {**LATE, "name": "again", "A": "(1.1 +- 0.2)e-8"})
+    assert "chance" in alone.tied
+
+
 def test_onset_lies_between_the_two():
     found = reconcile(EARLY, LATE)
     low, high = found["onset-distance"].needed["onset_au"]
@@ -143,7 +201,7 @@ def test_the_table():
     table = found.to_frame()
     assert table.loc["law", "verdict"] == "possible"
     assert list(table.index) == [e.key for e in found.explanations]
-    assert "<table" in found._repr_html_()
+    assert "<table" in found._repr_html_() and "Where the published" in found._repr_html_()
 
 
 def test_file_with_results(tmp_path):

@@ -164,5 +164,5 @@ def test_one_sided_called_two_sided_is_named(fit):
     # 1.645 sigma is the one-sided 95 % multiple, quoted as two-sided
     found = audit(quoted_limit(fit, 1.645), arc=fit)
     assert not found.sound and found.threshold.verdict == "another reading", str(found)
-    assert found.threshold.closest.changes == ("one-sided instead of two-sided",)
+    assert found.threshold.changes == ("one-sided instead of two-sided",)
     assert "one-sided instead of two-sided" in found.slips
