@@ -129,7 +129,7 @@ def test_1i_as_a_thin_sheet():
 
 def test_1i_as_a_fractal():
     # A. Moro-Martin 2019, ApJ 872, L32 (abstract, MEMORY): for radiation pressure to do it, 1I
-    # needs a density of about 1e-5 g/cm3. A sphere with a mean radius of 50 to 110 m, as its brightness
+    # needs a density of about 1e-5 g/cm3. A sphere of 50 to 110 m mean radius, as its brightness
     # allows; the printed number is a power of ten.
     found = area_to_mass(4.92e-6 * u.m / u.s**2)
     for radius_m in (50.0, 80.0, 110.0):
