@@ -29,7 +29,7 @@ from ngbound.fit.shared_estimates import (
     shared_text,
     solve_jointly,
 )
-from ngbound.motion import ForceModel, Neighbourhood, Orbit, Records, Thrust
+from ngbound.motion import Atlas, ForceModel, Neighbourhood, Orbit, Records, Thrust
 from ngbound.sky import Observers, load_ephemeris, observer_states, reduce_offsets
 
 Floats = NDArray[np.float64]
@@ -258,12 +258,17 @@ class Fit:
         )
 
     @cached_property
+    def atlas(self) -> Atlas:
+        """The neighbourhood, with others about it where the uncertainty reaches further."""
+        return Atlas.around(self.neighbourhood, self.theta_cov)
+
+    @cached_property
     def _kept_noise(self) -> Noise:
         return self.noise.mask(self.keep)
 
     def chi2_many(self, thetas: ArrayLike) -> Floats:
         """Exact chi2 (m,) of parameter vectors (m, p); inf where an orbit cannot be integrated."""
-        return self.neighbourhood.chi2(thetas)
+        return self.atlas.chi2(thetas)
 
     @property
     def distance_range_au(self) -> tuple[float, float]:

@@ -63,7 +63,7 @@ def about_its_mode(fit: ThrustFit, name: str) -> ThrustFit:
     """
     if name == "gaussian" or not isinstance(fit, Fit):
         return fit
-    hood, noise = fit.neighbourhood, fit.noise.mask(fit.keep)
+    hood, noise = fit.atlas, fit.noise.mask(fit.keep)
     p = fit.theta.size
     design = np.asarray(fit.design).reshape(len(fit.keep), 2, p)[fit.keep].reshape(-1, p)
     white = noise.whiten(design)
@@ -104,7 +104,7 @@ def deviance_of(fit: ThrustFit, name: str) -> Deviance:
             f"The likelihood {name} needs the residuals of a fitted arc; use gaussian here.",
             likelihood=name,
         )
-    hood, noise = fit.neighbourhood, fit.noise.mask(fit.keep)
+    hood, noise = fit.atlas, fit.noise.mask(fit.keep)
 
     def deviance(thetas: np.ndarray) -> np.ndarray:
         found: list[Any] = []

@@ -1,9 +1,11 @@
 """The posterior of orbit and thrust, by emcee on the exact model; may import errors, this room.
 
 Sampler: D. Foreman-Mackey et al. 2013, PASP 125, 306. Walkers live in coordinates u = (v, w): v is
-the orbit about its linear-theory value at the walker's own thrust, in units of its conditional
-sigma; w is the thrust in the coordinates in which its prior is flat. In u the target is the
-likelihood alone, and near enough round.
+the orbit about its best value at the walker's own thrust, in units of its conditional sigma; w is
+the thrust in the coordinates in which its prior is flat. In u the target is the likelihood alone,
+and near enough round. The best orbit at a thrust is that of linear theory and a quadratic form of
+the thrust, taken by differences of the exact chi2: a short arc bends there by many conditional
+sigmas. Both shift the orbit by a function of the thrust alone, which leaves volumes as they are.
 
 Moves, mixed:
 - an independence move (W. K. Hastings 1970, Biometrika 57, 97) that proposes from the
@@ -52,6 +54,10 @@ PILOT_STEPS = 12
 BURN_SHARE = 0.1
 INFLATIONS = (1.0, 1.5)
 INFLATION_SHARES = (0.8, 0.2)
+BEND_STEP_SIGMA = 2.0
+"""Step of the differences that give the bend of the orbit with the thrust."""
+BEND_REACH_SIGMA = 6.0
+"""Thrusts further out than this bend the orbit less than in proportion to their square."""
 CHUNK_STEPS = 50
 CHUNK_SHARE = 0.1
 
@@ -303,6 +309,34 @@ class _Target:
             )
         # errors that were estimated have their scale about 1, else it is that of the residuals
         self.rest = self.chi2_hat if noise_dof is None else float(noise_dof)
+        self.bend = np.zeros((self.k, self.k, self.p - self.k))
+        self.bend = self._bend()
+
+    def _bend(self) -> np.ndarray:
+        """The quadratic form (k, k, p - k) of the thrust, in sigmas along the eigenvectors of its
+        information, by which v moves.
+
+        Along v chi2 is a parabola of unit width, so that its minimum is minus a quarter of the
+        difference of chi2 at v = +1 and -1; the mean of it at two opposite thrusts is quadratic.
+        """
+        k, n = self.k, self.p - self.k
+        i, j = np.triu_indices(k)
+        ends = (np.eye(k)[i] + np.eye(k)[j]) / np.where(i == j, 2.0, np.sqrt(2.0))[:, None]
+        sides = BEND_STEP_SIGMA * np.concatenate([ends, -ends])
+        root = self.information.eigenvectors / np.sqrt(self.information.eigenvalues)
+        A = np.repeat(self.information.A_hat + sides @ root.T, 2 * n, axis=0)
+        v = np.tile(np.concatenate([np.eye(n), -np.eye(n)]), (len(sides), 1))
+        chi2 = np.asarray(self.deviance(self._theta(v, A)), dtype=float).reshape(2, -1, 2, n)
+        if not np.all(np.isfinite(chi2)):
+            return np.zeros((k, k, n))
+        form = -0.125 * np.sum(chi2[:, :, 0] - chi2[:, :, 1], axis=0) / BEND_STEP_SIGMA**2
+        bend = np.zeros((k, k, n))
+        alone = i == j
+        bend[i[alone], j[alone]] = form[alone]
+        own = np.einsum("iin->in", bend)
+        mixed = form - 0.5 * (own[i] + own[j])
+        bend[i[~alone], j[~alone]] = bend[j[~alone], i[~alone]] = mixed[~alone]
+        return bend
 
     def split(self, coords: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """v (m, p - k) and A (m, k) of u (m, p)."""
@@ -315,14 +349,18 @@ class _Target:
 
     def theta(self, coords: np.ndarray) -> np.ndarray:
         """Parameters (m, p) of u."""
-        v, A = self.split(coords)
-        theta = np.empty((len(coords), self.p))
-        orbit = self.information.orbit
+        return self._theta(*self.split(coords))
+
+    def _theta(self, v: np.ndarray, A: np.ndarray) -> np.ndarray:
+        theta = np.empty((len(A), self.p))
+        info = self.information
+        orbit, off = info.orbit, A - info.A_hat
+        a = off @ (info.eigenvectors * np.sqrt(info.eigenvalues))
+        less = 1.0 + np.sum(a * a, axis=1, keepdims=True) / BEND_REACH_SIGMA**2
+        v = v + np.einsum("mi,mj,ijn->mn", a, a, self.bend) / less
         theta[:, self.thrust] = A
         theta[:, self.others] = (
-            self.theta_hat[self.others]
-            + (A - self.information.A_hat) @ orbit.gain.T
-            + v @ orbit.spread.T
+            self.theta_hat[self.others] + off @ orbit.gain.T + v @ orbit.spread.T
         )
         return theta
 
@@ -725,7 +763,7 @@ def _posterior(
 
 def _fingerprint(target: _Target, seed: int, walkers: int) -> str:
     return mark_of(
-        [target.theta_hat, target.fit.normal],
+        [target.theta_hat, target.fit.normal, target.bend],
         [
             target.chi2_hat,
             target.n_residuals,

@@ -32,12 +32,11 @@ from numpy.typing import NDArray
 from scipy.linalg import qr, solve_triangular
 
 from ngbound.arc import Noise
-from ngbound.constants import C_AU_D
 from ngbound.errors import LimitError
 from ngbound.fit import Fit, chi2_of_records, judge_in_turns
 from ngbound.limits.fit_protocol import ThrustFit
 from ngbound.limits.information import ThrustInformation, thrust_information
-from ngbound.motion import Neighbourhood, integrate_track
+from ngbound.motion import Atlas
 
 Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
@@ -276,30 +275,20 @@ class ExactRefit:
         if key not in self._frames:
             if len(self._frames) >= FRAMES_KEPT:
                 self._frames.pop(next(iter(self._frames)))
-            hood = self._hood_at(self.theta(y[None, :])[0])
+            hood = self._hood_at(self.theta(y[None, :])[0], free)
             self._frames[key] = _Frame.about(self, hood, y, free)
         return self._frames[key]
 
-    def _hood_at(self, theta: Floats) -> Neighbourhood:
-        """The fit's own neighbourhood moved to another orbit and thrust."""
+    def _hood_at(self, theta: Floats, free: int) -> Atlas:
+        """The fit's own neighbourhood moved to another orbit and thrust, and those about it."""
         own = self.fit.neighbourhood
-        if np.array_equal(theta, own.theta) or own.thrust is None:
-            return own
-        amounts = own.thrust.amounts_au_d2.copy()
-        for i, c in enumerate(own.components):
-            amounts["RTN".index(c)] = theta[6 + i]
-        thrust = own.thrust.with_amounts(amounts)
-        times = own.records.tdb_d
-        margin = 2.0 * float(np.max(np.linalg.norm(own.sight.rho_au, axis=1))) / C_AU_D + 0.5
-        track = integrate_track(
-            own.epoch_d, theta[:6], float(times.min()) - margin, float(times.max()), thrust,
-            own.forces,
-        )  # fmt: skip
-        return Neighbourhood.around(
-            track, own.records, own.whitening, thrust, own.components, own.forces
-        )
+        if not np.array_equal(theta, own.theta):
+            own = own.moved_to(theta)
+        root = np.zeros((theta.size, free))
+        root[self.order] = self.to_theta[:, :free]
+        return Atlas.around(own, root @ root.T)
 
-    def seen(self, y: Floats, hood: Neighbourhood) -> Floats:
+    def seen(self, y: Floats, hood: Atlas) -> Floats:
         """Exact residuals (m, 2n) of the real records at y (m, p), radians."""
         _, seen = hood.chi2(self.theta(y), want_residuals=True)
         return np.asarray(seen).reshape(len(y), 2 * self.n)
@@ -450,14 +439,14 @@ class ExactRefit:
 class _Frame:
     """Exact model about one orbit: minus the whitened residuals to second order in y - centre."""
 
-    hood: Neighbourhood
+    hood: Atlas
     centre: Floats
     free: int
     first: Floats
     second: Floats
 
     @classmethod
-    def about(cls, model: ExactRefit, hood: Neighbourhood, centre: Floats, free: int) -> "_Frame":
+    def about(cls, model: ExactRefit, hood: Atlas, centre: Floats, free: int) -> "_Frame":
         """Differences of the exact residuals: first (free, 2n), second (free, free, 2n)."""
         h = DIFFERENCE
         one = np.zeros((2 * free, centre.size))

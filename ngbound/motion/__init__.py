@@ -11,10 +11,12 @@ Hoffmann. g is evaluated at t - DT where a lag DT is given (D. K. Yeomans & P. W
 98, 1083).
 
 One orbit is integrated adaptively (Gauss-Radau, order 15); its partials and its neighbours run on a
-shared grid of the same nodes (`partials_along`, `Neighbourhood`).
+shared grid of the same nodes (`partials_along`, `Neighbourhood`; `Atlas` where the orbits that fit
+reach further than one reference).
 """
 
 from ngbound.motion._kernels.layout import PARAMETERS
+from ngbound.motion.atlas import Atlas
 from ngbound.motion.compilation import compile_notice
 from ngbound.motion.elements import CometaryElements, KeplerianElements
 from ngbound.motion.gravity import ForceModel
@@ -48,6 +50,7 @@ from ngbound.motion.thrust import (
 __all__ = [
     "LAWS",
     "PARAMETERS",
+    "Atlas",
     "CometaryElements",
     "Echo",
     "ForceModel",

@@ -172,6 +172,36 @@ class Neighbourhood:
             threads or os.cpu_count() or 1,
         )
 
+    def moved_to(self, theta: Floats) -> "Neighbourhood":
+        """The same records and noise about another parameter vector (p,).
+
+        Raises
+        ------
+        PropagationError
+            If that orbit cannot be integrated.
+        """
+        track = integrate_track(
+            self.epoch_d,
+            theta[:6],
+            float(self.records.tdb_d.min()) - _light_margin(self.sight) - 0.5,
+            float(self.records.tdb_d.max()),
+            self._push(theta),
+            self.forces,
+        )
+        return Neighbourhood.around(
+            track, self.records, self.whitening, self._push(theta), self.components, self.forces,
+            self.threads, self.modes,
+        )  # fmt: skip
+
+    def _push(self, theta: Floats) -> Thrust | None:
+        """The thrust of a parameter vector."""
+        if self.thrust is None:
+            return None
+        amounts = self.thrust.amounts_au_d2.copy()
+        for i, c in enumerate(self.components):
+            amounts["RTN".index(c)] = theta[6 + i]
+        return self.thrust.with_amounts(amounts)
+
     def _lanes(self, thetas: Floats) -> Floats:
         """Offsets from the reference, all nine parameters, padded to whole blocks of lanes."""
         m = thetas.shape[0]
@@ -260,17 +290,13 @@ class Neighbourhood:
     def chi2_alone(self, theta: ArrayLike) -> tuple[float, Floats]:
         """chi2 and O-C (n, 2) of one parameter vector by the adaptive integrator: the slow twin."""
         theta = np.asarray(theta, dtype=float)
-        thrust = self.thrust
-        if thrust is not None:
-            amounts = thrust.amounts_au_d2.copy()
-            for i, c in enumerate(self.components):
-                amounts["RTN".index(c)] = theta[6 + i]
-            thrust = thrust.with_amounts(amounts)
         low = float(self.records.tdb_d.min()) - 0.2
         high = float(self.records.tdb_d.max())
         try:
             span = _light_margin(self.sight)
-            track = integrate_track(self.epoch_d, theta[:6], low - span, high, thrust, self.forces)
+            track = integrate_track(
+                self.epoch_d, theta[:6], low - span, high, self._push(theta), self.forces
+            )
             seen = residuals(see(track, self.records), self.records)
         except PropagationError:
             return np.inf, np.full((len(self.records), 2), np.nan)
