@@ -302,11 +302,7 @@ def fit_both(case: Case, arc: Arc, step: "Steps") -> "Fits":
     if notice := compile_notice():
         step.tell(notice)
     start = case.orbit.orbit(forces=case.forces.force_model()) if case.orbit else None
-    common: dict[str, Any] = {
-        "error_model": case.errors.error_model(),
-        "forces": case.forces.force_model(),
-        "reject": case.fit.reject,
-    }
+    common = how_to_fit(case)
     with step("fit by gravity alone") as bar:
         null = fit_orbit(arc, initial=start, progress=bar.say, **common)
     with step("fit with thrust") as bar:
@@ -316,6 +312,15 @@ def fit_both(case: Case, arc: Arc, step: "Steps") -> "Fits":
     with step("compare the fits"):
         comparison = compare_fits(null, push)
     return Fits(case, arc, null, push, comparison)
+
+
+def how_to_fit(case: Case) -> dict[str, Any]:
+    """What every fit of a case has in common, as `fit_orbit` takes it."""
+    return {
+        "error_model": case.errors.error_model(),
+        "forces": case.forces.force_model(),
+        "reject": case.fit.reject,
+    }
 
 
 def bound_the_thrust(fits: "Fits", step: "Steps", vary_errors: bool = False) -> "Bounds":
@@ -518,9 +523,7 @@ def push_of_sunlight(bounds: "Bounds") -> AreaToMass:
                 fits.arc,
                 thrust=Thrust("inverse-square", components=thrust.components),
                 initial=fits.null.orbit,
-                error_model=fits.case.errors.error_model(),
-                forces=fits.case.forces.force_model(),
-                reject=fits.case.fit.reject,
+                **how_to_fit(fits.case),
             )
             limit = upper_limit(fit, confidence=fits.case.detection.confidence)
         except (FitError, LimitError) as error:

@@ -207,3 +207,92 @@ def test_several_species_make_one_budget(write):
 def test_the_path_of_the_debiasing_table_counts_from_the_folder_of_the_case(write, tmp_path):
     case = read_case(write('[arc]\nfile = "a.psv"\n[errors]\ndebiasing = "bias.dat"\n'))
     assert case.errors.error_model().debiasing == str(tmp_path / "bias.dat")
+
+
+@pytest.mark.parametrize(
+    ("table", "key", "text", "words"),
+    [
+        ("nucleus", "density", "true", "must be a number"),
+        ("nucleus", "density", "-500", "above 0; write for instance density ="),
+        ("nucleus", "density", "0", "above 0"),
+        ("nucleus", "density", '"800 to 200"', "swap them"),
+        ("nucleus", "density", "{low = 800, high = 200}", "swap them"),
+        ("nucleus", "density", "0.5", "1 to 25000 kg/m3"),
+        ("nucleus", "density", '"< 500"', "only an upper limit"),
+        ("nucleus", "density", '"500 km"', "allowed: kg/m3, g/cm3"),
+        ("nucleus", "density", "nan", "must be a number"),
+        ("nucleus", "diameter", "0", "above 0"),
+        ("nucleus", "diameter", '"2 kg"', "allowed: m, km"),
+        ("nucleus", "H", "false", "must be a number"),
+        ("nucleus", "H", "[17, 18]", "must be a number"),
+        ("nucleus", "H", "99", "between -5 and 45"),
+        ("nucleus", "H", '"17.4 +- -0.2"', "cannot be read"),
+        ("nucleus", "radiation_coefficient", "3", "2"),
+        ("nucleus", "coma", '"yes"', "true or false"),
+        ("nucleus", "albido", "0.04", "did you mean 'albedo'?"),
+        ("reach", "diameter", "-2", "above 0"),
+        ("reach", "species", '["CO3"]', "Did you mean 'CO'?"),
+        ("reach", "at", "0", "greater than 0"),
+        ("reach", "diametre", "1", "did you mean 'diameter'?"),
+    ],
+)
+def test_what_is_assumed_about_the_body_is_tried_when_the_case_is_read(
+    write, table, key, text, words
+):
+    message = fault(write(f'[arc]\nfile = "a"\n[{table}]\n{key} = {text}\n'))
+    assert f"line 4: [{table}] " in message
+    assert key in message and words in message
+
+
+@pytest.mark.parametrize(
+    "albedo", ["-0.04", "4", '"0.06 to 0.02"', "true", "{value = 0.04, sgma = 1}"]
+)
+def test_an_albedo_out_of_its_range_is_told_where_it_stands(write, albedo):
+    message = fault(write(f'[arc]\nfile = "a"\n[nucleus]\nH = 18\nalbedo = {albedo}\n'))
+    assert "line 5: [nucleus] albedo" in message
+
+
+def test_an_albedo_without_a_magnitude_is_told(write):
+    assert "without H" in fault(write('[arc]\nfile = "a"\n[nucleus]\nalbedo = 0.04\n'))
+
+
+@pytest.mark.parametrize(
+    ("key", "text", "words"),
+    [
+        ("rate", "true", "must be a number"),
+        ("rate", "-1e26", "above 0; write for instance rate ="),
+        ("rate", '"3e26 to 1e26"', "swap them"),
+        ("rate", '"5 furlong"', "allowed: molecules/s"),
+        ("at", '"1 to 2"', "one heliocentric distance"),
+        ("at", "0", "above 0"),
+        ("speed", "-1", "above 0"),
+        ("speed", "800", '"800 m/s" or 0.8'),
+        ("speed", '"delsem"', "Did you mean 'delsemme'?"),
+        ("collimation", "1.4", "between 0 and 1"),
+        ("species", '"H20"', "Did you mean 'H2O'?"),
+        ("species", '"h2o"', "Did you mean 'H2O'?"),
+        ("species", '"water"', "Did you mean 'H2O'?"),
+        ("colimation", "0.5", "did you mean 'collimation'?"),
+    ],
+)
+def test_a_fault_in_the_budget_is_told_by_its_key(write, key, text, words):
+    keys = {"rate": "1e26", "at": "1.2", key: text}
+    lines = "".join(f"{name} = {value}\n" for name, value in keys.items())
+    message = fault(write(f'[arc]\nfile = "a"\n[[outgassing]]\n{lines}'))
+    line = 4 + list(keys).index(key)
+    assert f"line {line}: [outgassing] " in message
+    assert key in message and words in message
+
+
+def test_the_size_of_the_nucleus_comes_from_its_diameter_or_its_brightness(write):
+    def size(text):
+        return read_case(write(f'[arc]\nfile = "a"\n[nucleus]\n{text}\n')).nucleus.size()
+
+    assert size("coma = false") is None
+    assert size("H = 17.4\nalbedo = 0.04").name == "photometric diameter"
+    assert size('H = 17.4\ndiameter = "2 km"').distribution.median == 2000.0
+
+
+def test_a_limit_on_the_rate_is_a_rate(write):
+    case = read_case(write('[arc]\nfile = "a"\n[[outgassing]]\nrate = "< 3e25"\nat = 1.2\n'))
+    assert str(case.budget().emissions[0].rate) == "< 3e25"

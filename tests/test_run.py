@@ -3,6 +3,7 @@
 import hashlib
 import json
 import tomllib
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -13,6 +14,7 @@ import ngbound as ng
 from ngbound import run
 from ngbound.errors import CaseError, NgboundError
 from ngbound.report import load_record
+from ngbound.rounding import length_text, mass_text
 
 DEMO = Path(__file__).parent.parent / "data_demo"
 WITHIN = 0.9973
@@ -78,6 +80,27 @@ def test_the_pushed_arc_is_a_detection_of_the_thrust_that_was_put_in(results):
 
 
 @pytest.mark.slow
+def test_the_record_holds_reach_sunlight_active_surface_and_where_detected_a_ceiling(results):
+    quiet, pushed = results["quiet"][0], results["pushed"][0]
+    for record in (quiet, pushed):
+        (row,) = record["reach"]["rows"]
+        assert (row["species"], row["at_au"]) == ("H2O", 1.25)
+        assert record["reach"]["power"] == 0.95
+        assert row["revealed"]["rate_low_per_s"] < row["revealed"]["rate_per_s"]
+        sun = record["radiation"]
+        assert sun["acceleration_au_d2"] == record["limit"]["outward_radial_au_d2"]
+        assert sun["density_times_diameter_kg_m2"] > 0.0
+        (area,) = record["active_areas"]
+        assert 0.0 < area["active_fraction_low"] < area["active_fraction_high"] < 1.0
+        assert record["law_departures"][0]["factor"] < 2.0
+        assert record["mass_remarks"] == []
+    assert quiet["mass_ceiling"] is None
+    # the recipe's jet: 5e27 /s at 1.25 au; mass between the bounds, and the size fits it
+    assert pushed["mass"]["mass_kg"] < pushed["mass_ceiling"]["mass_kg"]
+    assert pushed["mass_ceiling"]["verdict"] == "agree"
+
+
+@pytest.mark.slow
 @pytest.mark.parametrize("history", ["quiet", "pushed"])
 def test_the_fits_describe_the_residuals(results, history):
     push = results[history][0]["fits"]["push"]
@@ -101,7 +124,7 @@ def test_the_record_tells_inputs_versions_seeds_and_every_choice(results):
 
 @pytest.mark.slow
 def test_the_folder_holds_report_figures_and_record_and_nothing_else(results):
-    _, folder = results["quiet"]
+    record, folder = results["quiet"]
     written = {path.name for path in folder.iterdir()}
     assert written == {
         "record.json",
@@ -112,11 +135,24 @@ def test_the_folder_holds_report_figures_and_record_and_nothing_else(results):
         "posterior.png",
         "direction_map.png",
         "mass.png",
+        "reach.png",
     }
     assert [path.name for path in folder.parent.iterdir()] == ["quiet"]
     report = (folder / "report.txt").read_text(encoding="utf-8")
-    for heading in ("Verdict", "Detection thresholds", "Upper limits", "Residuals by station"):
+    for heading in (
+        "Verdict",
+        "Detection thresholds",
+        "Upper limits",
+        "Mass and size",
+        "Reach: the outgassing this arc would have revealed",
+        "Sunlight instead of gas",
+        "Residuals by station",
+    ):
         assert heading in report
+    mass, flat = record["mass"], " ".join(report.split())
+    for bound in (mass_text(mass["mass_kg"]), length_text(mass["diameter_m"])):
+        assert record["sentence"].count(f"above {bound}") == 1
+        assert flat.count(f"above {bound}") >= 2
     json.loads((folder / "record.json").read_text(encoding="utf-8"))
 
 
@@ -244,3 +280,74 @@ def test_limit_under_other_error_models(quick):
 @pytest.mark.parametrize("name", ["quiet", "pushed"])
 def test_the_demo_arcs_hold_nothing_doubtful(name):
     assert run.inspect_case(DEMO / f"{name}.psv").survey.findings == ()
+
+
+def with_more(path: Path, text: str) -> Path:
+    """The same case with more tables, beside it."""
+    other = path.with_name("more.toml")
+    other.write_text(path.read_text(encoding="utf-8") + text, encoding="utf-8")
+    return other
+
+
+def test_rates_known_only_as_limits_are_said_to_exclude_no_mass(quick):
+    more = '[[outgassing]]\nrate = "< 3e25"\nat = 1.25\n[nucleus]\ndiameter = "2 km"\n'
+    weighed = run.mass_case(with_more(quick, more))
+    assert weighed.bound is None and weighed.ceiling is None
+    (remark,) = weighed.remarks
+    assert remark.startswith(
+        "No lower bound on the mass: Every rate of the budget is an upper limit"
+    )
+    assert remark in " ".join(str(weighed).split())
+    assert weighed.active[0].is_limit
+    # the rate that would have been seen is told all the same, beside the limit
+    assert weighed.reach.rows[0].measured == "< 3e25 molecules/s"
+    told = weighed.to_dict()
+    assert "mass_kg" not in told and told["mass_remarks"] == [remark]
+    json.dumps(told, allow_nan=False)
+    assert "less than" in weighed._repr_html_()
+
+
+def test_the_reach_is_asked_for_without_any_budget(quick):
+    more = '[reach]\ndiameter = "1 to 2 km"\nspecies = ["H2O", "CO"]\ndensity = 400\n'
+    weighed = run.mass_case(with_more(quick, more))
+    rows = weighed.reach.rows
+    assert [row.species for row in rows] == ["H2O", "CO"]
+    # the distance is the arc's least, where the law is strongest
+    assert rows[0].at_au == pytest.approx(weighed.fits.r_au.min())
+    assert rows[0].revealed.diameter.median == 1500.0
+    assert weighed.reach.density.median == 400.0
+    assert "Reach: the outgassing" in str(weighed) and "Mass and size" not in str(weighed)
+
+
+def test_radiation_pressure_under_another_law_is_fitted_for_itself(quick):
+    more = "[reach]\nat = 1.3\n"
+    path = with_more(quick, more)
+    path.write_text(path.read_text().replace("[thrust]", '[thrust]\nlaw = "water-ice"'))
+    weighed = run.mass_case(path)
+    assert "from a fit with an inverse-square thrust instead of the law water-ice" in str(weighed)
+    plain = run.mass_case(with_more(quick, more))
+    assert "instead of the law" not in plain.radiation.sentence()
+    # the same question asked of the same arc: linear theory against the posterior
+    assert weighed.radiation.acceleration.value == pytest.approx(
+        plain.radiation.acceleration.value, rel=0.15
+    )
+
+
+def test_without_a_radial_component_sunlight_is_said_not_to_be_bounded(quick):
+    path = with_more(quick, "[reach]\nat = 1.3\n")
+    path.write_text(path.read_text().replace('components = "R"', 'components = "N"'))
+    weighed = run.mass_case(path)
+    assert weighed.radiation is None
+    assert "no radial component" in " ".join(str(weighed).split())
+
+
+def test_a_law_off_where_the_rate_was_measured_costs_the_mass_but_nothing_else(quick):
+    bounds = run.limit_case(quick)
+    more = "[[outgassing]]\nrate = 3e26\nat = 4.0\n"
+    path = with_more(quick, more)
+    path.write_text(path.read_text().replace("[thrust]", "[thrust]\nwindow_au = [0.5, 3.0]"))
+    windowed = replace(bounds, fits=replace(bounds.fits, case=run.case_for(path)))
+    weighed = run.weigh(windowed, run.Steps(False))
+    assert weighed.bound is None and weighed.reach is None
+    assert any("g = 0 at 4 au" in remark for remark in weighed.remarks)
+    assert weighed.active and weighed.radiation is not None

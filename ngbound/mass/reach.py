@@ -468,28 +468,25 @@ def reach(
     if outgassing is None:
         outgassing = Outgassing({name: "1e26 1/s" for name in species}, speed, collimation, at)
     rho = bulk.draw(rng, n_draws)
-    sizes = None if size is None else size.diameter_m(rng, n_draws)
-    rows: list[ReachRow] = []
-    for emission in outgassing.emissions:
-        if any((row.species, row.at_au) == (emission.species, emission.at_au) for row in rows):
-            continue
-        g = float(g_at(emission.at_au))
-        if not (worst > 0 and math.isfinite(worst) and g > 0):
-            raise MassError(
-                f"The threshold {worst:g} au/d2 and g = {g:g} at {emission.at_au:g} au must both "
-                "be positive for a rate to follow."
-            )
-        row, cube, full = _row(emission, worst * g, rho, g, diameters_m, confidence, rng)
-        if size is not None and sizes is not None:
-            revealed = _revealed(row, cube * sizes**3, size, bulk, worst, confidence, full)
-            row = replace(row, revealed=replace(revealed, false_alarm=false_alarm, power=power))
-        if measured:
-            row = replace(
+    probes = {(e.species, e.at_au): e for e in reversed(outgassing.emissions)}
+    found = [
+        _row(emission, worst, float(g_at(emission.at_au)), rho, diameters_m, confidence, rng)
+        for emission in reversed(probes.values())
+    ]
+    rows = [row for row, _, _ in found]
+    if size is not None:
+        cubes = size.diameter_m(rng, n_draws) ** 3
+        for k, (row, cube, full) in enumerate(found):
+            revealed = _revealed(row, cube * cubes, size, bulk, worst, confidence, full)
+            revealed = replace(revealed, false_alarm=false_alarm, power=power)
+            rows[k] = replace(row, revealed=revealed)
+    if measured:
+        for k, (row, emission) in enumerate(zip(rows, reversed(probes.values()), strict=True)):
+            rows[k] = replace(
                 row,
                 measured=f"{emission.rate} {emission.rate_unit}",
                 measured_rate=_measured(emission, row.unit),
             )
-        rows.append(row)
     asked = Outgassing([replace(e, rate=Fixed(1.0)) for e in outgassing.emissions])
     return Reach(
         worst * AU_D2,
@@ -530,9 +527,9 @@ def _threshold(
 
 def _row(
     emission: Emission,
-    acceleration_au_d2: float,
-    rho: np.ndarray,
+    threshold_au_d2: float,
     g: float,
+    rho: np.ndarray,
     diameters_m: Sequence[float],
     confidence: float,
     rng: np.random.Generator,
@@ -542,12 +539,17 @@ def _row(
     Rates are molecules/s, or kg/s where the species has no molecular mass here; the flux that of a
     sphere of 1 m.
     """
+    if not (threshold_au_d2 > 0 and math.isfinite(threshold_au_d2) and g > 0):
+        raise MassError(
+            f"The threshold {threshold_au_d2:g} au/d2 and g = {g:g} at {emission.at_au:g} au must "
+            "both be positive for a rate to follow."
+        )
     in_kg = emission.species not in MOLAR_MASS_G
     one = Outgassing([replace(emission, rate=Fixed(1.0), rate_in_kg=in_kg)])
     with np.errstate(divide="ignore"):
         cube = (
             sphere_mass_kg(1.0, rho)
-            * (acceleration_au_d2 * AU_D2_TO_M_S2)
+            * (threshold_au_d2 * g * AU_D2_TO_M_S2)
             / one.draw(rng, len(rho)).force_n[0]
         )
     half = (1 - confidence) / 2

@@ -577,8 +577,10 @@ class LawDeparture:
     """How a thrust law falls over the arc, beside an exposed ice in its energy balance.
 
     ``ratio``: the force by the law over that of the ice at ``r_au``, both the same at ``at_au``,
-    where the rate was measured; the distance is the one on the arc at which they differ most, among
-    those where either gives a tenth of its greatest force.
+    where the rate was measured. The ice is a sphere between two extremes, every facet in its own
+    balance and all at one temperature; the ratio is 1 between them and counts from the nearer one
+    outside. The distance is the one on the arc at which they differ most, among those where either
+    gives a tenth of its greatest force.
     """
 
     species: str
@@ -593,6 +595,10 @@ class LawDeparture:
 
     def sentence(self) -> str:
         """The departure in words."""
+        if self.factor < 1.05:
+            return (
+                f"Over the arc the thrust law falls as {self.species} ice exposed to the Sun would"
+            )
         side = "more" if self.ratio > 1 else "less"
         return (
             f"At {self.r_au:.3g} au the thrust law gives {self.factor:.2g} times {side} force than "
@@ -636,8 +642,8 @@ def law_departures(
 
     Notes
     -----
-    The force of the ice is its mean flux over a sphere times the outflow speed, r^-0.5 by the
-    default law, constant where a speed was measured.
+    The force of the ice is its mean flux over the sphere times the outflow speed, which falls as
+    r^-0.5 by the default law and is constant where a speed was measured.
     """
     r = np.geomspace(float(np.min(r_au)), float(np.max(r_au)), 25)
     found = []
@@ -658,13 +664,22 @@ def law_departures(
 def _departure(
     e: Emission, g: np.ndarray, g_at: Callable[[float], float], r: np.ndarray
 ) -> LawDeparture:
-    flux = sublimation_law(e.species, np.append(r, e.at_au))
     exponent = e.speed.exponent if isinstance(e.speed, SpeedLaw) else 0.0
-    ice = flux * np.append(r, e.at_au) ** -exponent
-    matters = (g >= 0.1 * g.max()) | (ice[:-1] >= 0.1 * ice[:-1].max())
-    own = float(g_at(e.at_au))
+    all_r, own = np.append(r, e.at_au), float(g_at(e.at_au))
+    if not own > 0:
+        raise MassError(
+            f"The thrust law is off at {e.at_au:g} au, where the {e.species} rate was measured."
+        )
+    geometries: tuple[Geometry, ...] = ("sphere", "isothermal")
+    curves = []
+    for geometry in geometries:
+        force = sublimation_law(e.species, all_r, geometry=geometry) * all_r**-exponent
+        curves.append(force[:-1] / force[-1])
+    low, high = np.min(curves, axis=0), np.max(curves, axis=0)
     with np.errstate(divide="ignore", invalid="ignore"):
-        ratio = (g / own) / (ice[:-1] / ice[-1])
-        size = np.where(matters, np.abs(np.log(ratio)), -1.0)
-    worst = int(np.nanargmax(size))
+        law = g / own
+        ratio = np.where(law > high, law / high, np.where(law < low, law / low, 1.0))
+        size = np.abs(np.log(ratio))
+    matters = (law >= 0.1 * law.max()) | (high >= 0.1 * high.max())
+    worst = int(np.nanargmax(np.where(matters, size, -1.0)))
     return LawDeparture(e.species, e.at_au, float(r[worst]), float(ratio[worst]))

@@ -297,7 +297,7 @@ def budget_words(mass: Mapping[str, Any]) -> str:
         return str(mass["budget"])
     emissions = list((mass.get("outgassing") or {}).get("emissions") or ())
     told = [_emission_words(e) for e in emissions if "limit" not in (e.get("rate") or {})]
-    return "; ".join(text for text in told if text)
+    return "; and ".join(text for text in told if text)
 
 
 def _emission_words(one: Mapping[str, Any]) -> str:

@@ -13,6 +13,7 @@ from ngbound.errors import CaseError, MassError, NgboundWarning
 from ngbound.limits import DetectionThreshold, Posterior, UpperLimit
 from ngbound.mass import (
     Fixed,
+    MeasuredDiameter,
     Outgassing,
     Photometry,
     SpeedLaw,
@@ -20,6 +21,8 @@ from ngbound.mass import (
     mass_bound,
     momentum_mass,
 )
+from ngbound.report import Record, mass_figure, render_report, the_sentence
+from ngbound.rounding import length_text, mass_text, rounded
 
 AU_D2 = u.au / u.day**2
 WATER_KG = 2.99150e-26
@@ -324,3 +327,83 @@ def test_refusals_say_why(arguments, error, words):
         mass_bound(arguments.pop("limit_or_samples"), arguments.pop("outgassing"), **arguments)
     for word in words:
         assert word in str(caught.value)
+
+
+def test_variance_shares_with_a_posterior_that_is_log_normal_too():
+    # ln M = ln zeta + ln Q + ln v - ln A: every share is its own squared width over the sum
+    draws = 1e-8 * np.exp(0.25 * np.random.default_rng(5).standard_normal(60_000))
+    bound = mass_bound(draws, log_normal_budget(), g_at=1.0, density="500 */ 1.4", seed=6)
+    squares = {"acceleration": 0.25**2} | {
+        name: math.log(f) ** 2
+        for name, f in zip(
+            ("production rate", "outflow speed", "collimation"), (1.3, 1.2, 1.1), strict=True
+        )
+    }
+    whole = sum(squares.values())
+    shares = {s.name: s for s in bound.inputs}
+    for name, square in squares.items():
+        assert shares[name].total == pytest.approx(square / whole, abs=0.015)
+        assert shares[name].first_order == pytest.approx(square / whole, abs=0.025)
+        # one at a time: one sigma either way moves ln M by that sigma
+        step = math.log(shares[name].mass_at_high / shares[name].mass_at_low)
+        assert abs(step) == pytest.approx(2 * math.sqrt(square), rel=0.02)
+    assert shares["acceleration"].mass_at_high < shares["acceleration"].mass_at_low
+    with_density = whole + math.log(1.4) ** 2
+    assert shares["bulk density"].of_diameter == pytest.approx(
+        math.log(1.4) ** 2 / with_density, abs=0.015
+    )
+    assert bound.dominant == "production rate"
+    # a rate known exactly leaves the rest of the variance
+    rest = math.sqrt(whole - squares["production rate"])
+    assert shares["production rate"].bound_if_known / bound.mass_median.value == pytest.approx(
+        math.exp(-1.644854 * rest), rel=0.02
+    )
+
+
+def test_the_two_species_of_a_sum_interact_in_the_total_index():
+    # ln(Q1 + Q2) is not additive: totals exceed first orders, and all stay within [0, 1]
+    budget = Outgassing(
+        {"H2O": {"value": 1e27, "factor": 3.0}, "CO": {"value": 6.4e26, "factor": 3.0}},
+        **NO_SPREAD,
+        at=1.0,
+    )
+    bound = mass_bound(1e-8, budget, g_at=1.0, n_draws=100_000)
+    first, second = bound.inputs[:2]
+    assert first.total + second.total > 1.0 > first.first_order + second.first_order
+    assert first.total == pytest.approx(second.total, abs=0.03)
+
+
+def test_every_printing_of_the_bound_is_rounded_alike_and_outward():
+    draws = np.random.default_rng(0).uniform(0, 1e-8, 40_000)
+    bound = mass_bound(draws, log_normal_budget(), g_at=1.0, density=500.0, threshold=3e-8)
+    mass, diameter = mass_text(bound.mass.value), length_text(bound.diameter.value)
+    assert float(mass.split()[0]) <= bound.mass.value < 1.1 * float(mass.split()[0])
+    headline = the_sentence(
+        name="X", n_obs=9, span_d=9.0, mass_kg=bound.mass.value, diameter_m=bound.diameter.value
+    )
+    record = Record({"mass": bound, "object": "X"}).data
+    report = " ".join(render_report({**record, "sentence": headline}).split())
+    figure = mass_figure(bound)
+    words = " ".join(t.get_text() for ax in figure.axes for t in ax.texts)
+    assert f"a mass above {mass}, a diameter above {diameter}." in headline
+    for text in (bound.sentence(), bound._repr_html_().replace("&gt;", ">"), report):
+        assert f"the mass is above {mass} (" in text
+        assert f"the diameter is above {diameter}." in text
+    mantissa, power = mass.split()[0].split("e")
+    assert rf"{mantissa}\times10^{{{power}}}" in words and f"> {diameter}" in words
+    # the posterior's edge is an upper limit and goes up, the mass revealed goes down
+    upper = rounded(float(bound.acceleration_upper.value), 2, outward="up")
+    assert f"95 % below {upper} au/d2" in bound.sentence()
+    assert f"lighter than {mass_text(bound.mass_detection.value)} (" in bound.sentence()
+
+
+def test_a_given_diameter_is_set_beside_the_bound_as_a_photometric_one_is():
+    bound = mass_bound(
+        1e-8,
+        Outgassing("1e27 1/s", **NO_SPREAD, at=1.0),
+        g_at=1.0,
+        photometry=MeasuredDiameter("(300 +- 10) m"),
+        density="(500 +- 100) kg/m3",
+    )
+    assert bound.size_check.verdict == "clash"
+    assert "Given diameter 300" in bound.sentence()

@@ -4,22 +4,26 @@ Comparison with published fluxes: tests/external/test_published_masses.py.
 """
 
 import math
+import warnings
 
 import astropy.units as u
 import numpy as np
 import pytest
 
 from ngbound.constants import STEFAN_BOLTZMANN_W_M2_K4
-from ngbound.errors import CaseError, MassError
+from ngbound.errors import CaseError, MassError, NgboundWarning
 from ngbound.mass import (
     ICES,
+    MeasuredDiameter,
     Outgassing,
     active_area,
     active_areas,
     largest_rate,
+    law_departures,
     sublimation,
     sublimation_law,
 )
+from ngbound.motion import Thrust
 
 
 @pytest.mark.parametrize("ice", ICES)
@@ -126,3 +130,62 @@ def test_other_refusals():
         active_area(1e27, "H2O", 40.0)
     with pytest.raises(CaseError, match="facet"):
         largest_rate("H2O", 1.0, 1 * u.km, geometry="subsolar")
+
+
+def test_the_active_fraction_carries_the_errors_of_rate_and_size():
+    # log-normal rate and diameter: ln f has the variance of ln Q plus four times that of ln D
+    budget = Outgassing({"value": 1e27, "factor": 1.3}, at=1.5)
+    size = MeasuredDiameter("2 */ 1.2 km")
+    (found,) = active_areas(budget, diameter=size, n_draws=100_000)
+    middle = active_area(1e27, "H2O", 1.5, diameter=2 * u.km)
+    width = math.sqrt(math.log(1.3) ** 2 + 4 * math.log(1.2) ** 2)
+    assert found.fraction == pytest.approx(middle.fraction, rel=0.01)
+    assert found.fraction_high / found.fraction_low == pytest.approx(math.exp(2 * width), rel=0.02)
+    assert float(found.area_high / found.area_low) == pytest.approx(1.3**2, rel=0.01)
+    over = 0.5 * math.erfc(-math.log(found.fraction) / width / math.sqrt(2))
+    assert found.too_large == pytest.approx(over, abs=0.005)
+    assert found.to_dict()["active_fraction_high"] == found.fraction_high
+
+
+def test_a_fraction_above_one_is_flagged_and_a_limit_is_a_limit():
+    small = MeasuredDiameter("(100 +- 10) m")
+    (found,) = active_areas(Outgassing("(1.0 +- 0.1)e27 1/s", at=1.5), diameter=small)
+    assert found.flagged and found.too_large > 0.99
+    assert "more than the whole sphere" in found.sentence()
+    (limit,) = active_areas(Outgassing("< 1e27 1/s", at=1.5), diameter=small)
+    assert limit.is_limit and not limit.flagged
+    assert "needs less than" in limit.sentence() and "more than" not in limit.sentence()
+    (kilos,) = active_areas(Outgassing("29.915 kg/s", at=1.5))
+    assert kilos.area.value == pytest.approx(
+        float(active_area(1e27, "H2O", 1.5).area.value), rel=1e-4
+    )
+
+
+def test_a_law_computed_from_the_ice_does_not_depart_from_it():
+    budget = Outgassing("1e27 1/s", speed="0.8 km/s", at=1.5)
+
+    def g(r_au):
+        return float(sublimation_law("H2O", np.array([r_au]))[0])
+
+    (same,) = law_departures(budget, g, np.array([1.2, 3.5]))
+    assert same.ratio == pytest.approx(1.0, abs=1e-9)
+
+
+def test_a_law_that_departs_over_the_arc_is_warned_about():
+    budget = Outgassing("1e27 1/s", speed="0.8 km/s", at=1.5)
+    with pytest.warns(NgboundWarning, match="do not go together over this arc"):
+        (found,) = law_departures(budget, lambda r: r**-2, np.array([1.2, 3.5]))
+    assert found.r_au == pytest.approx(3.5)
+    z = sublimation_law("H2O", np.array([1.5, 3.5]))
+    assert found.ratio == pytest.approx((1.5 / 3.5) ** 2 / (z[1] / z[0]))
+    assert "more force than H2O ice" in found.sentence()
+    with warnings.catch_warnings():
+        warnings.simplefilter("error")
+        (near,) = law_departures(budget, lambda r: r**-2, np.array([1.2, 1.8]))
+    assert 1.0 < near.factor < 2.0
+    # the published law of water ice lies between a warm and a cold sphere; beyond 4 au, where
+    # neither gives any force, nothing is compared
+    water_ice = Thrust("water-ice").g
+    with warnings.catch_warnings():
+        warnings.simplefilter("error")
+        law_departures(budget, water_ice, np.array([1.0, 30.0]))

@@ -116,8 +116,11 @@ def test_budget_words():
         "a production rate of 1.00 +- 0.30 kg/s (H2O) at 1.3 au, a speed of 520 m/s and a "
         "collimation of 0.5 (0.2 to 0.7)"
     )
-    two = {"outgassing": {"emissions": [emission, {**emission, "species": "CO"}]}}
-    assert budget_words(two) == "the outgassing of CO and H2O given"
+    limit = {**emission, "species": "CO2", "rate": {"distribution": "upper-limit", "limit": 2.0}}
+    three = {"outgassing": {"emissions": [emission, {**emission, "species": "CO"}, limit]}}
+    told = budget_words(three)
+    assert "(H2O)" in told and "; and a production rate of 1.00 +- 0.30 kg/s (CO)" in told
+    assert "CO2" not in told  # a limit counts as zero in the bound
     assert budget_words({"budget": "as told"}) == "as told"
     assert budget_words({}) == ""
 

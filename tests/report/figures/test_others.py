@@ -8,10 +8,12 @@ from astropy import units as u
 
 from ngbound.errors import LimitError, MassError
 from ngbound.limits import detection_threshold, sample_posterior, upper_limit
+from ngbound.mass import Outgassing, Photometry, reach
 from ngbound.report import (
     direction_map,
     mass_figure,
     posterior_figure,
+    reach_figure,
     residual_by_station,
 )
 from tests.report.standins import archive_pair, demo_pair
@@ -98,3 +100,32 @@ def test_residual_by_station():
     assert "USNOA2" in catalogues
     assert len(fig.axes[2].get_yticklabels()) == 10
     assert "not shown" in texts(fig)
+
+
+def test_reach_figure():
+    budget = Outgassing(
+        {"H2O": "(3.0 +- 0.8)e26 1/s", "CO": "< 1e26 1/s", "dust": "5 kg/s"},
+        {"dust": "5 m/s"},
+        at=1.25,
+    )
+    found = reach(3e-9, g_at=lambda r: r**-2, outgassing=budget, size=Photometry("17.4 +- 0.2"))
+    fig = reach_figure(found)
+    fig.canvas.draw()
+    assert [ax.get_title(loc="left") for ax in fig.axes] == [
+        "H$_{2}$O at 1.25 au",
+        "CO at 1.25 au",
+        "dust at 1.25 au",
+    ]
+    assert {"measured", "upper limit", "unseen"} <= {
+        t.get_text() for a in fig.axes for t in a.texts
+    }
+    assert fig.axes[0].get_xscale() == fig.axes[0].get_yscale() == "log"
+    one = reach_figure(reach(3e-9, g_at=lambda r: r**-2, at=1.25, species=("H2O",)))
+    assert len(one.axes) == 1 and "revealed" in texts(one)
+
+
+def test_mass_figure_with_a_ceiling():
+    fig = mass_figure(a_bound(), SimpleNamespace(mass=9.11e11 * u.kg, confidence=0.95))
+    fig.canvas.draw()
+    assert r"9.2\times10^{11}" in texts(fig)
+    assert fig.axes[0].get_xlim()[1] > 9.11e11
