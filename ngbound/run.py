@@ -425,20 +425,19 @@ def weigh(bounds: "Bounds", step: "Steps") -> "Weighed":
             "density": case.nucleus.density,
             "confidence": case.detection.confidence,
             "seed": case.sampling.seed,
-            "n_effective": bounds.posterior.ess["|A|"],
             "photometry": size,
         }
         with step("mass bound"):
             with said_instead(remarks, "No lower bound on the mass"):
                 bound = mass_bound(
-                    bounds.posterior.A_mag,
+                    bounds.posterior,
                     budget,
                     threshold=bounds.threshold,
                     **common,
                 )
             if bounds.judged.kind == "detection":
                 with said_instead(remarks, "No upper bound on the mass"):
-                    ceiling = mass_ceiling(bounds.posterior.A_mag, budget, **common)
+                    ceiling = mass_ceiling(bounds.posterior, budget, **common)
         with step("active areas"):
             for emission in budget.emissions:
                 with said_instead(remarks, "No active area"):
