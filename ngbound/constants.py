@@ -18,6 +18,10 @@ J2000_JD = 2451545.0
 """Julian date of the epoch J2000.0 (in TDB wherever ngbound counts days from it)."""
 J2000_MJD = 51544.5
 
+EPHEMERIS_MJD = (-112816.0, 288976.0)
+"""First and last day of DE440, 1549-12-31 and 2650-01-25: JD 2287184.5 and 2688976.5 of its file;
+R. S. Park et al. 2021, AJ 161, 105."""
+
 KM3_S2_TO_AU3_D2 = DAY_S**2 / AU_KM**3
 
 GM_KM3_S2 = {

@@ -35,6 +35,7 @@ from ngbound.arc.parquet import read_table, write_table
 from ngbound.arc.records import Angles, Context, ObjectArray, Records
 from ngbound.arc.stations import Station, station, user_stations
 from ngbound.arc.whole_file import PathLike
+from ngbound.constants import EPHEMERIS_MJD
 from ngbound.errors import ArcError
 
 ALWAYS_TEXT = (
@@ -100,7 +101,10 @@ REASON_NO_POSITION = "the record gives no position of the {site} station"
 REASON_NO_ANGLES = "the record gives no position of the object"
 REASON_SYSTEM = "the position system {system} of the station cannot be used"
 REASON_CENTRE = "the station's position is not counted from the Earth"
+REASON_EPHEMERIS = "the date lies outside the planetary ephemeris (1550 to 2650)"
 EARTH_CENTRE = 399
+LIGHT_TIME_D = 7.0
+"""The ephemeris is asked for the places of bodies so many days earlier and later, too."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -194,9 +198,9 @@ class Arc:
     def __str__(self) -> str:
         told = self.to_dict()
         text = (
-            f"Arc of {self.name}: {told['n_records']} observations from {len(told['stations'])} "
-            "stations, "
-            f"{told['first_day']} to {told['last_day']} ({self.span_d:.1f} d)"
+            f"Arc of {self.name}: {counted(len(self), 'observation')} from "
+            f"{counted(len(told['stations']), 'station')}, {told['first_day']} to "
+            f"{told['last_day']} ({self.span_d:.1f} d)"
         )
         if told["set_aside"]:
             reasons = "; ".join(f"{count} {reason}" for reason, count in told["set_aside"].items())
@@ -315,6 +319,11 @@ def _context_of(listed: Any) -> Context:
 def _plain(column: pd.Series) -> NDArray[Any]:
     """The values of a column, texts as objects."""
     return column.to_numpy(dtype="object" if pd.api.types.is_string_dtype(column) else None)
+
+
+def counted(number: int, noun: str) -> str:
+    """``1 station``, ``2 stations``."""
+    return f"{number} {noun}" if number == 1 else f"{number} {noun}s"
 
 
 def iso_day(mjd: int) -> str:
@@ -502,6 +511,8 @@ def _why_not(records: Records, columns: Mapping[str, Any], checker: Checker) -> 
     residual = checker.of_kind(OPTICAL_RESIDUAL) | checker.of_kind(RADAR_RESIDUAL)
     set_aside(residual, REASON_RESIDUAL)
     set_aside(checker.filled("deprecated"), REASON_DEPRECATED)
+    day, (first, last) = columns["utc_day"], EPHEMERIS_MJD
+    set_aside((day < first + LIGHT_TIME_D) | (day > last - LIGHT_TIME_D), REASON_EPHEMERIS)
     lost = ~(np.isfinite(columns["ra_rad"]) & np.isfinite(columns["dec_rad"]))
     set_aside(lost, REASON_NO_ANGLES)
     site = columns["site"]

@@ -12,12 +12,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ngbound.arc.errors_model import ErrorModel, station_nights
-from ngbound.arc.observations import Arc, iso_day
+from ngbound.arc.observations import Arc, counted, iso_day
 from ngbound.arc.vetting import Finding, vet
 
 LONG_GAP_D = 30.0
 """Gaps of at least this many days are told."""
 MOST_GAPS = 5
+MOST_LINES = 8
 
 
 @dataclass(frozen=True)
@@ -41,7 +42,8 @@ class Range:
 
     def __str__(self) -> str:
         return (
-            f"{self.median:.3g} {self.unit} ({self.least:.3g} to {self.most:.3g}, {self.n} values)"
+            f"{self.median:.3g} {self.unit} ({self.least:.3g} to {self.most:.3g}, "
+            f"{counted(self.n, 'value')})"
         )
 
 
@@ -49,10 +51,11 @@ class Range:
 class Survey:
     """The contents of an arc.
 
-    Counts are of records by their code; ``errors`` holds a `Range` per kind of error: "stated RA",
-    "stated Dec", "stated time", "digits RA", "digits Dec", "digits time", "assigned RA",
-    "assigned Dec" (those that occur). ``gaps`` are the longest of the ``n_gaps`` gaps of 30 days or
-    more.
+    Counts are of records by their code (the receiver's for radar); ``set_aside`` counts those that
+    no fit uses by the reason, and ``set_aside_lines`` names their lines; ``errors`` holds a `Range`
+    per kind of error: "stated RA", "stated Dec", "stated time", "digits RA", "digits Dec",
+    "digits time", "assigned RA", "assigned Dec" (those that occur). ``gaps`` are the longest of the
+    ``n_gaps`` gaps of 30 days or more.
     """
 
     name: str
@@ -64,6 +67,7 @@ class Survey:
     catalogues: dict[str, int]
     modes: dict[str, int]
     set_aside: dict[str, int]
+    set_aside_lines: dict[str, tuple[int, ...]]
     first_day: str
     last_day: str
     span_d: float
@@ -85,21 +89,29 @@ class Survey:
 
     def __str__(self) -> str:
         lines = [
-            f"{self.name}: {self.n_records} records from {self.source}, {self.n_usable} usable",
-            f"  {self.first_day} to {self.last_day}: {self.span_d:.1f} d, {self.n_nights} "
-            "station-nights",
+            f"{self.name}: {counted(self.n_records, 'record')} from {self.source}, {self.n_usable} "
+            "usable",
+            f"  {self.first_day} to {self.last_day}: {self.span_d:.1f} d, "
+            f"{counted(self.n_nights, 'station-night')}",
         ]
         for title, counts in (
             ("kinds", self.kinds),
             ("stations", self.stations),
             ("catalogues", self.catalogues),
             ("modes", self.modes),
-            ("set aside", self.set_aside),
         ):
             if counts:
                 listed = [f"{k} {v}" for k, v in list(counts.items())[:12]]
                 more = f", and {len(counts) - 12} more" if len(counts) > 12 else ""
                 lines.append(f"  {title:11s} {', '.join(listed)}{more}")
+        for reason, count in self.set_aside.items():
+            named = self.set_aside_lines[reason]
+            some = ", ".join(str(line) for line in named[:MOST_LINES])
+            more = f" and {len(named) - MOST_LINES} more" if len(named) > MOST_LINES else ""
+            word = "line" if len(named) == 1 else "lines"
+            lines.append(
+                f"  set aside   {counted(count, 'record')} ({word} {some}{more}): {reason}"
+            )
         if self.n_gaps > len(self.gaps):
             lines.append(f"  the longest of {self.n_gaps} gaps of {LONG_GAP_D:.0f} d or more:")
         for gap in self.gaps:
@@ -108,8 +120,7 @@ class Survey:
         if self.magnitude:
             lines.append(f"  magnitude     {self.magnitude}")
         count = len(self.findings)
-        plural = "" if count == 1 else "s"
-        lines.append(f"  {count} finding{plural}" if count else "  nothing doubtful found")
+        lines.append(f"  {counted(count, 'finding')}" if count else "  nothing doubtful found")
         lines += [f"  - {finding}" for finding in self.findings]
         return "\n".join(lines)
 
@@ -142,10 +153,14 @@ def survey(arc: Arc) -> Survey:
         n_records=told["n_records"],
         n_usable=told["n_usable"],
         kinds=told["kinds"],
-        stations=told["stations"],
+        stations=_stations(arc),
         catalogues=told["catalogues"],
         modes=told["modes"],
         set_aside=told["set_aside"],
+        set_aside_lines={
+            reason: tuple(int(n) for n in arc.table["line"][arc.table["why_not"] == reason])
+            for reason in told["set_aside"]
+        },
         first_day=told["first_day"] or "",
         last_day=told["last_day"] or "",
         span_d=arc.span_d,
@@ -156,6 +171,14 @@ def survey(arc: Arc) -> Survey:
         magnitude=magnitude.get("mag"),
         findings=tuple(vet(arc)),
     )
+
+
+def _stations(arc: Arc) -> dict[str, int]:
+    """Records by station, those of radar by the receiver's, the most frequent first."""
+    codes = arc.table["stn"]
+    if "rcv" in arc.table:
+        codes = codes.where(codes != "", arc.table["rcv"])
+    return {str(code): int(n) for code, n in codes.value_counts().items() if code}
 
 
 def _put(

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from ngbound.arc.errors_model import station_nights
 from ngbound.arc.misplaced import misread, second_tracks
-from ngbound.arc.observations import Arc
+from ngbound.arc.observations import Arc, counted
 from ngbound.arc.stations import record_position_km
 from ngbound.arc.time_stamps import time_shifts
 from ngbound.errors import StationError
@@ -68,7 +68,7 @@ def vet(arc: Arc) -> list[Finding]:
             Finding(
                 tuple(int(r) for r in rows),
                 "few-observations",
-                f"only {len(rows)} usable observations: an orbit needs at least {FEWEST}, and a "
+                f"only {counted(len(rows), 'usable observation')}: an orbit needs at least {FEWEST}, and a "
                 "thrust more.",
             )
         )

@@ -20,7 +20,7 @@ def test_from_frame() -> None:
     told = arc.to_dict()
     assert json.loads(json.dumps(told))["n_usable"] == 6
     assert (told["first_day"], told["last_day"]) == ("2024-03-01", "2024-03-02")
-    assert "6 observations from 1 stations, 2024-03-01 to 2024-03-02 (1.0 d)" in str(arc)
+    assert "6 observations from 1 station, 2024-03-01 to 2024-03-02 (1.0 d)" in str(arc)
 
 
 def test_from_frame_texts_state_a_precision() -> None:

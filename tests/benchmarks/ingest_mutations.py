@@ -96,7 +96,59 @@ JSON_ADES = json.dumps(
         for day in (1, 2)
     ]
 )
+HEADER = (
+    PSV.split("permID")[0]
+    .removeprefix("# version=2022\n")
+    .replace("# measurers", "# observers\n! name B. Nobody\n# measurers")
+)
+BLOCKS = "# version=2017\n" + "".join(
+    f"{HEADER.replace('G96', code) if code != 'I41' else ''}"
+    f"permID|{more}mode|stn|obsTime|ra|dec|astCat\n"
+    f"433|{'a#b!|' if more else ''}CCD|{code}|2024-03-01T05:06:07.1234567Z|+010.5|-05.5|UNK\n"
+    for code, more in (("G96", ""), ("703", "remarks|"), ("F51", ""), ("I41", "remarks|"))
+)
+XML_KINDS = """<?xml version="1.0" encoding="ISO-8859-1"?>
+<ades version="2017"><radar><permID>433</permID><trx>251</trx><rcv>253</rcv>
+<obsTime>2024-03-01T05:06:00Z</obsTime><delay>12.5</delay><rmsDelay>2</rmsDelay><com>0</com>
+<frq>2380</frq></radar><radar><permID>433</permID><trx>251</trx><rcv>251</rcv>
+<obsTime>2024-03-01T05:06:00Z</obsTime><doppler>-15.5</doppler><rmsDoppler>.2</rmsDoppler>
+<frq>2380</frq><orbProd>Me</orbProd><orbID>1</orbID><resDoppler>0.1</resDoppler>
+<selDoppler>A</selDoppler><sigDoppler>1</sigDoppler></radar>
+<offset><permID>433</permID><mode>CCD</mode><stn>G96</stn><obsTime>2024-03-01T05:06:00Z</obsTime>
+<obsCenter>Jupiter</obsCenter><dist>1.5</dist><pa>350</pa><rmsDist>0.1</rmsDist></offset>
+<occultation><permID>433</permID><stn>275</stn><sys>ITRF</sys><ctr>399</ctr><pos1>012.5</pos1>
+<pos2>5000.1</pos2><pos3>3800.2</pos3><obsTime>2024-03-01T05:06:07.12Z</obsTime>
+<raStar>10.0</raStar><decStar>-0.0</decStar><deltaRA>0</deltaRA><deltaDec>0</deltaDec>
+<rmsRA>0.001</rmsRA><rmsDec>0.001</rmsDec><astCat>Gaia3</astCat></occultation>
+<opticalResidual><permID>433</permID><obsTime>2024-03-01T05:06:00Z</obsTime><orbProd>Me</orbProd>
+<orbID>1</orbID></opticalResidual></ades>
+"""
+ECHO80 = f"{'00433':14s}%s{'2000 01 21.500000':17s}"
+RADAR80 = "\n".join(
+    [
+        line80(kind="c", note="&", desig="00433"),
+        line80(desig="00433", kind="O", ra="J   +12.3", dec="-4.5"),
+        f"{ECHO80 % 'R'}  1234567891234{'':15s} 2380 253{'':6s}253",
+        f"{ECHO80 % 'r'}S{'1250':>10s}{'':34s}253",
+        f"{ECHO80 % 'R'}{'':15s}+    148301{'':4s} 2380 251 JPLRS251",
+        f"{ECHO80 % 'r'}C{'':14s}{'1':>11s}{'000':4s}{'':15s}251",
+        line80(desig="00433", disc="*", kind="X", date="1898 08 13.9", mag="", band=" "),
+        "",
+    ]
+)
+JSON_KINDS = json.dumps(
+    {
+        "data": [
+            {"permID": "433", "stn": "XYZ", "mode": "CCD", "obsTime": "2024-03-01T00:00:00Z"}
+            | {"ra": 359.9999999, "dec": -0.5, "astCat": "UNK", "sys": "ICRF_AU", "ctr": 399}
+            | {"pos1": 0.1, "pos2": -0.2, "pos3": 1e-05, "notes": "K", "rmsRA": 0.1, "rmsDec": 0.1},
+            {"permID": "433", "trx": "251", "rcv": "251", "obsTime": "2024-03-02T00:00:00Z"}
+            | {"delay": 12.5, "rmsDelay": 2, "frq": 2380.0, "com": True},
+        ]
+    }
+)
 SEEDS = [t.encode() for t in (PSV, ROVING, KINDS, XML, REPORT80, JSON80, JSON_ADES)]
+SEEDS += [t.encode() for t in (BLOCKS, XML_KINDS, RADAR80, JSON_KINDS)]
 NUMBERS = (
     "NaN",
     "-0",
