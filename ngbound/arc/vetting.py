@@ -68,8 +68,8 @@ def vet(arc: Arc) -> list[Finding]:
             Finding(
                 tuple(int(r) for r in rows),
                 "few-observations",
-                f"only {counted(len(rows), 'usable observation')}: an orbit needs at least {FEWEST}, and a "
-                "thrust more.",
+                f"only {counted(len(rows), 'usable observation')}: an orbit needs at least "
+                f"{FEWEST}, and a thrust more.",
             )
         )
     if len(rows) == 0:
