@@ -8,6 +8,7 @@ do not disturb each other.
 
 from pathlib import Path
 
+from ngbound.motion._kernels.compiled import is_compiled
 from ngbound.motion._kernels.grid import tabulate, variations
 from ngbound.motion._kernels.neighbours import batch
 from ngbound.motion._kernels.radau import dense_many, integrate
@@ -21,13 +22,12 @@ def compiled_code_folder() -> Path:
 
 
 def missing_kernels() -> list[str]:
-    """Names of the main kernels that have not been compiled on this machine yet."""
+    """Names of the main kernels that have yet to be compiled from the present files."""
     missing = []
     for kernel in KERNELS:
-        name = f"{Path(kernel.py_func.__code__.co_filename).stem}.{kernel.py_func.__qualname__}"
-        folder = Path(str(kernel.stats.cache_path))
-        if not kernel.signatures and not any(folder.glob(f"{name}-*.nbi")):
-            missing.append(name)
+        if not is_compiled(kernel):
+            source = Path(kernel.py_func.__code__.co_filename).stem
+            missing.append(f"{source}.{kernel.py_func.__qualname__}")
     return missing
 
 

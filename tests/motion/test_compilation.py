@@ -69,6 +69,26 @@ def test_package_in_a_folder_that_cannot_be_written(tmp_path: Path) -> None:
     assert probe(environment, tmp_path / "site")[3] == "1 0"
 
 
+def test_an_edit_in_one_kernel_file_compiles_the_others_anew(tmp_path: Path) -> None:
+    package = tmp_path / "site" / "ngbound"
+    source = Path(ngbound.__file__).parent
+    shutil.copytree(source, package, ignore=shutil.ignore_patterns("__pycache__"))
+    environment = {"NUMBA_CACHE_DIR": str(tmp_path / "cache")}
+    assert probe(environment, tmp_path / "site")[3] == "0 1"
+    assert probe(environment, tmp_path / "site")[3] == "1 0"
+    # as after a checkout: another time, the same content
+    (package / "motion" / "_kernels" / "laws.py").touch()
+    assert probe(environment, tmp_path / "site")[3] == "1 0"
+    with (package / "motion" / "_kernels" / "laws.py").open("a") as file:
+        file.write("\n")
+    assert probe(environment, tmp_path / "site")[3] == "0 1"
+
+
+def test_every_kernel_bears_the_decorator_that_sees_all_files() -> None:
+    for path in (Path(ngbound.__file__).parent / "motion" / "_kernels").glob("*.py"):
+        assert path.name == "compiled.py" or "njit" not in path.read_text(), path.name
+
+
 def test_two_processes_that_start_at_once(tmp_path: Path) -> None:
     environment = {**os.environ, "NUMBA_CACHE_DIR": str(tmp_path)}
     started = [

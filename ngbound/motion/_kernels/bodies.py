@@ -6,13 +6,14 @@ lie with the times innermost, ``LANES`` a body, so that a whole step's forces ar
 """
 
 import numpy as np
-from numba import njit
+
+from .compiled import kernel
 
 LANES = 8
 FAR_AU = 1e6
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def room_for_bodies(tab):
     """Arrays for ``bodies_at``: position and velocity (3, lanes) and three scraps.
 
@@ -35,7 +36,7 @@ def room_for_bodies(tab):
     )
 
 
-@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
+@kernel(fastmath={"contract", "nsz"})
 def _sums(tab, body, interval, polynomial, factor, out):
     """Sum of a body's series at the eight times, times ``factor``."""
     n = tab.n_coef[body]
@@ -59,7 +60,7 @@ def _sums(tab, body, interval, polynomial, factor, out):
         out[2, LANES * body + j] = z * factor
 
 
-@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
+@kernel(fastmath={"contract", "nsz"})
 def bodies_at(tab, times, all_velocities, polynomial, slope, interval, pos, vel):
     """Barycentric positions (au) of all bodies at eight ``times`` into ``pos``; velocity (au/d) of
     the Sun, or of all that do not move around it, into ``vel``.
@@ -107,7 +108,7 @@ def bodies_at(tab, times, all_velocities, polynomial, slope, interval, pos, vel)
             _sums(tab, body, interval, slope, 2.0 / width, vel)
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def bodies_of_lane(lanes, j, out):
     """Positions or velocities of all bodies at the time ``j`` into ``out`` (bodies, 3)."""
     for body in range(out.shape[0]):
@@ -115,7 +116,7 @@ def bodies_of_lane(lanes, j, out):
             out[body, i] = lanes[i, LANES * body + j]
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def inside_table(tab, t):
     """True if every series covers the time ``t`` (with a second of slack)."""
     slack = 1.2e-5

@@ -10,9 +10,9 @@ Lense-Thirring term (IERS Conventions 2010, eq. 10.12).
 import math
 
 import numpy as np
-from numba import njit
 
 from .bodies import LANES, bodies_of_lane
+from .compiled import kernel
 from .laws import PAIR, add_thrust
 from .layout import RELATIVITY_ALL, RELATIVITY_SUN
 
@@ -22,7 +22,7 @@ N_TIDES = 17
 _FAST = {"contract", "nsz"}
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def sun_at_nodes(gm_sun, pos, path, acc):
     """The Sun's Newtonian acceleration (au/d2) at the eight nodes of ``path``, written to ``acc``
     (3, 8).
@@ -38,7 +38,7 @@ def sun_at_nodes(gm_sun, pos, path, acc):
         acc[2, j] = f * dz
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def planets_at_nodes(gm, pos, path, pair, acc):
     """Newtonian acceleration of all bodies but the Sun at the eight nodes, written to ``acc``
     (3, 8).
@@ -64,7 +64,7 @@ def planets_at_nodes(gm, pos, path, pair, acc):
             acc[i, j] = pair[i, j] + pair[i, LANES + j]
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def add_sun_relativity(gm, c, pos, vel, path, acc):
     """The Sun's first post-Newtonian acceleration at the eight nodes."""
     for j in range(LANES):
@@ -84,7 +84,7 @@ def add_sun_relativity(gm, c, pos, vel, path, acc):
         acc[2, j] += s * z + q * vz
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def add_sun_relativity_partials(gm, c, x, v, gx, gv):
     """Partials of the Sun's post-Newtonian term, added to ``gx``, ``gv`` (3, 3)."""
     r2 = x[0] * x[0] + x[1] * x[1] + x[2] * x[2]
@@ -104,7 +104,7 @@ def add_sun_relativity_partials(gm, c, x, v, gx, gv):
         gv[i, i] += 4.0 * k * rv
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def planet_accelerations(gm, parent, pos, acc):
     """Newtonian acceleration of each body that is not heliocentric in its series, due to the
     others.
@@ -132,7 +132,7 @@ def planet_accelerations(gm, parent, pos, acc):
     return n
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def full_relativity(gm, parent, c, pos, vel, x, v, out, gx, gv, with_partials):
     """Einstein-Infeld-Hoffmann terms of a massless body at barycentric ``x``, ``v``.
 
@@ -214,7 +214,7 @@ def full_relativity(gm, parent, c, pos, vel, x, v, out, gx, gv, with_partials):
                 gv[i, i] += f * drag / c2
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def add_quadrupole(gm, j2_r2, pole, d, acc):
     """Quadrupole acceleration of an oblate body at the vector ``d`` from its centre."""
     d2 = d[0] * d[0] + d[1] * d[1] + d[2] * d[2]
@@ -225,7 +225,7 @@ def add_quadrupole(gm, j2_r2, pole, d, acc):
         acc[i] += f * ((5.0 * s * s - 1.0) * d[i] / dist - 2.0 * s * pole[i])
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def add_quadrupole_partials(gm, j2_r2, pole, d, gx):
     """Partials of the quadrupole acceleration, added to ``gx``."""
     d2 = d[0] * d[0] + d[1] * d[1] + d[2] * d[2]
@@ -247,7 +247,7 @@ def add_quadrupole_partials(gm, j2_r2, pole, d, gx):
         gx[j, j] += k * p
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def add_frame_dragging(gm, c, spin, pole, x, v, acc, gx, gv, with_partials):
     """The Sun's Lense-Thirring acceleration at heliocentric ``x``, ``v``; ``spin`` in au2/d."""
     r2 = x[0] * x[0] + x[1] * x[1] + x[2] * x[2]
@@ -271,7 +271,7 @@ def add_frame_dragging(gm, c, spin, pole, x, v, acc, gx, gv, with_partials):
             gv[i, p] += k * (pole[q] - f * x[q])
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def add_rare_terms(tab, phys, pos, vel, path, acc):
     """Full relativity, quadrupoles and frame dragging, as chosen, at the eight nodes."""
     nb = tab.gm.size
@@ -312,7 +312,7 @@ def add_rare_terms(tab, phys, pos, vel, path, acc):
             acc[i, j] += extra[i]
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def has_rare_terms(phys, pos, path):
     """Whether a term of ``add_rare_terms`` counts over this step: one is chosen, or a node lies
     where the Earth's flattening is felt.
@@ -331,7 +331,7 @@ def has_rare_terms(phys, pos, path):
     return False
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def others_at_nodes(tab, gm, push, phys, active, pos, vel, path, pair, acc):
     """Acceleration (au/d2) beyond the Sun's Newtonian one at the eight nodes, written to ``acc``.
 
@@ -346,7 +346,7 @@ def others_at_nodes(tab, gm, push, phys, active, pos, vel, path, pair, acc):
     add_thrust(push, tab.gm[0], active, pos, vel, path, acc)
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def tides_at_nodes(gm, pos, path, pair, out):
     """Newtonian gradient of all bodies but the Sun at the eight nodes, and its slope.
 
@@ -391,7 +391,7 @@ def tides_at_nodes(gm, pos, path, pair, out):
             out[row, j] = pair[row * PAIR + j] + pair[row * PAIR + LANES + j]
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def add_rare_partials(tab, phys, pos, vel, x, v, h, w, gx, gv):
     """Partials of the terms of ``add_rare_terms`` at one node, added to ``gx``, ``gv``."""
     scrap = np.zeros(3)
@@ -411,7 +411,7 @@ def add_rare_partials(tab, phys, pos, vel, x, v, h, w, gx, gv):
             add_quadrupole_partials(tab.gm[phys.earth_row], phys.earth_j2, EARTH_POLE, d, gx)
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def add_pressure_partials(srp, h, gx, out):
     """Radiation pressure per unit at heliocentric ``h`` into ``out`` (3,), its gradient to
     ``gx``.

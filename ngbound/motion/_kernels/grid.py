@@ -9,9 +9,9 @@ all columns at once.
 import math
 
 import numpy as np
-from numba import njit
 
 from .bodies import bodies_at, bodies_of_lane, room_for_bodies
+from .compiled import kernel
 from .forces import (
     N_TIDES,
     add_pressure_partials,
@@ -56,7 +56,7 @@ _FAST = {"contract", "nsz", "nnan", "ninf", "arcp"}
 _PATH_POWERS = np.hstack([TO_POWERS * TWICE[:, None], TO_POWERS * ONCE[:, None]])
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def tabulate(
     tab,
     push,
@@ -166,7 +166,7 @@ def tabulate(
         before = active
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def apply_jump(row, amounts, columns):
     """Change of the velocity columns (6 COLUMNS,) where a distance window switches the thrust.
 
@@ -190,7 +190,7 @@ def apply_jump(row, amounts, columns):
                 columns[(3 + i) * COLUMNS + c] += jump * along
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def column_paths(begin, t, wx, wv, accel, dx, dv):
     """Columns of position and velocity (3 COLUMNS,) ``t`` days into a step, from the weighted
     accelerations (8, 3 COLUMNS) of its nodes.
@@ -205,7 +205,7 @@ def column_paths(begin, t, wx, wv, accel, dx, dv):
         dv[at] = pv
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def column_forces(g, gv, force, dx, dv, out):
     """Second derivatives of the columns (3 COLUMNS,) at one node."""
     for i in range(3):
@@ -227,7 +227,7 @@ def column_forces(g, gv, force, dx, dv, out):
             )
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def settle(new, old, change, size):
     """``old`` becomes ``new``; adds what changed and the size of each column."""
     for c in range(COLUMNS):
@@ -238,7 +238,7 @@ def settle(new, old, change, size):
             old[at] = new[at]
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def node_partials(gm_sun, a_ref, row, columns, g, gv, force):
     """Partials of the acceleration at one node with respect to position and velocity (3, 3), and
     those with respect to the wanted parameters, ``force`` (3 COLUMNS,).
@@ -262,7 +262,7 @@ def node_partials(gm_sun, a_ref, row, columns, g, gv, force):
                 force[i * COLUMNS + c] = row[at + i]
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def variations(gm_sun, a_ref, columns, grid_h, nodes, begin, accel):
     """Solve the variational equations for the wanted parameters.
 
@@ -333,7 +333,7 @@ def variations(gm_sun, a_ref, columns, grid_h, nodes, begin, accel):
         column_paths(at_start, h, wx, wv, values, begin[k + 1, :WIDE], begin[k + 1, WIDE:])
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def combine(weight, values, out):
     """Weighted sum of eight rows of columns (8, WIDE)."""
     for at in range(WIDE):
@@ -343,7 +343,7 @@ def combine(weight, values, out):
         out[at] = total
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def unpack(dx, dv, out):
     """Columns of position and velocity (3 COLUMNS,) as the first columns of ``out`` (6, p)."""
     for i in range(3):
@@ -352,7 +352,7 @@ def unpack(dx, dv, out):
             out[3 + i, c] = dv[i * COLUMNS + c]
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def node_columns(grid_h, begin, accel, out):
     """Columns of position and velocity at every node, ``out`` (steps, 8, 6, p)."""
     wx = np.empty(N_NODES)
@@ -369,7 +369,7 @@ def node_columns(grid_h, begin, accel, out):
             unpack(dx, dv, out[k, j])
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def weights_at(s, h, out):
     """Weights (16,) of the node accelerations for position, then velocity, at the fraction ``s`` of
     a step of ``h`` days.
@@ -384,7 +384,7 @@ def weights_at(s, h, out):
         out[N_NODES + j] *= h * s
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def columns_at(grid_tau, grid_h, begin, accel, forward, taus, out):
     """Columns of the state, ``out`` (m, 6, p), at many ``taus``; quickest where they are sorted."""
     weight = np.empty(2 * N_NODES)

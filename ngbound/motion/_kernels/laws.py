@@ -10,15 +10,15 @@ Battin 1999, An Introduction to the Mathematics and Methods of Astrodynamics, ch
 import math
 
 import numpy as np
-from numba import njit
 
 from .bodies import LANES
+from .compiled import kernel
 from .layout import LAW_FORM
 
 PAIR = 2 * LANES
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def law_of_distance(push, r, out):
     """g, dg/dr and dg/dm into ``out``; r in au."""
     if push.law == LAW_FORM:
@@ -72,7 +72,7 @@ def law_of_distance(push, r, out):
         out[2] = 0.0
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def stumpff(z, c):
     """Stumpff functions c0..c5 of z into ``c``."""
     halvings = 0
@@ -105,7 +105,7 @@ def stumpff(z, c):
         c[0] = 1.0 - z * c[2]
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def distance_at_lag(gm, x, v, dt, out):
     """Two-body distance after ``dt`` days, and its partials.
 
@@ -158,13 +158,13 @@ def distance_at_lag(gm, x, v, dt, out):
     out[7] = sigma1 * root / r1
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def room_for_partials():
     """Scraps of ``thrust_partials``."""
     return np.empty((3, 3)), np.empty(8), np.empty(3)
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def axes(x, v, e):
     """Rows R, T, N into ``e`` (3, 3); returns r and |x cross v|."""
     r = math.sqrt(x[0] * x[0] + x[1] * x[1] + x[2] * x[2])
@@ -183,7 +183,7 @@ def axes(x, v, e):
     return r, h
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def strength_at_nodes(push, gm_sun, pos, vel, path, strength):
     """g of the law at the eight nodes, at the distance of a lag ago where there is one."""
     x = np.empty(3)
@@ -202,7 +202,7 @@ def strength_at_nodes(push, gm_sun, pos, vel, path, strength):
         strength[j] = g[0]
 
 
-@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
+@kernel(fastmath={"contract", "nsz"})
 def add_thrust(push, gm_sun, active, pos, vel, path, acc):
     """Add thrust (while ``active``) and radiation pressure at the eight nodes to ``acc`` (3, 8)."""
     a1 = push.a[0]
@@ -240,7 +240,7 @@ def add_thrust(push, gm_sun, active, pos, vel, path, acc):
         acc[2, j] += along * z + across * (hx * y - hy * x) + normal * hz
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def thrust_partials(push, gm_sun, active, x, v, room, out):
     """Thrust per unit A along R, T, N and its partials at heliocentric ``x``, ``v``.
 

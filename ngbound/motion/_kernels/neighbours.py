@@ -10,8 +10,8 @@ integrator.
 import math
 
 import numpy as np
-from numba import njit
 
+from .compiled import kernel
 from .grid import (
     GV,
     GX,
@@ -35,7 +35,7 @@ _FAST = {"contract", "nsz", "nnan", "ninf", "arcp"}
 _TIDE = np.array([[0, 3, 5, 1, 2, 4], [1, 6, 8, 3, 4, 7], [2, 7, 9, 4, 5, 8]])
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def _offset_acceleration(gm_sun, row, d, w, da, amount, acc):
     """Second derivative of the offsets ``d`` (3 LANES,) with their velocities ``w``.
 
@@ -111,7 +111,7 @@ def _offset_acceleration(gm_sun, row, d, w, da, amount, acc):
                 )
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST)
+@kernel(fastmath=_FAST)
 def _places(begin, t, wx, wv, acc, d, w):
     """Offsets and their velocities (3 LANES,) ``t`` days into a step, from the weighted
     accelerations (8, 3 LANES) of its nodes.
@@ -126,7 +126,7 @@ def _places(begin, t, wx, wv, acc, d, w):
         w[lane] = pv
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
+@kernel(fastmath=_FAST, nogil=True)
 def offsets_to_records(
     gm_sun,
     c_au_d,
@@ -246,7 +246,7 @@ def offsets_to_records(
             begin[VECTOR + lane] = w[lane]
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
+@kernel(fastmath=_FAST, nogil=True)
 def sight_residuals(c_au_d, rho, speed, basis, offset, out):
     """Observed minus computed direction of the lanes, radians in the tangent plane at the observed
     place.
@@ -297,7 +297,7 @@ def sight_residuals(c_au_d, rho, speed, basis, offset, out):
             seen[LANES + lane] = (nx * px + ny * py + nz * pz) * scale
 
 
-@njit(cache=True, error_model="numpy", fastmath=_FAST, nogil=True)
+@kernel(fastmath=_FAST, nogil=True)
 def whitened_chi2(order, start, flat, flat_start, modes, residual, white, chi2):
     """chi2 (LANES,) of residuals (n, 2, LANES) whitened block by block.
 
@@ -330,7 +330,7 @@ def whitened_chi2(order, start, flat, flat_start, modes, residual, white, chi2):
                 chi2[lane] -= shared[k, lane] * shared[k, lane]
 
 
-@njit(cache=True, error_model="numpy", nogil=True)
+@kernel(nogil=True)
 def batch(
     gm_sun,
     c_au_d,

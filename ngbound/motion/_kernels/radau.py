@@ -11,11 +11,11 @@ epoch.
 import math
 
 import numpy as np
-from numba import njit
 from numpy.polynomial import polynomial
 from scipy.special import roots_jacobi
 
 from .bodies import bodies_at, bodies_of_lane, room_for_bodies
+from .compiled import kernel
 from .forces import others_at_nodes, sun_at_nodes
 from .laws import PAIR
 from .layout import INSIDE_BODY, NOT_CONVERGED, OK, RELATIVITY_ALL, STEP_UNDERFLOW, TOO_MANY_STEPS
@@ -72,7 +72,7 @@ TWICE = ONCE / np.arange(2.0, N_NODES + 2.0)
 TO_POWERS = np.ascontiguousarray(_POWERS.T.astype(np.float64))
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def surroundings(tab, pos, x):
     """The shortest dynamical time sqrt(d^3 / GM) of the bodies around ``x``, days, and the row of a
     body whose surface encloses ``x``, or -1.
@@ -90,7 +90,7 @@ def surroundings(tab, pos, x):
     return 1.0 / math.sqrt(largest), inside
 
 
-@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
+@kernel(fastmath={"contract", "nsz"})
 def follow(weight, base, acc, path):
     """Positions, twice, and velocities at the nodes (3, 24) from accelerations (3, 8)."""
     for i in range(3):
@@ -101,7 +101,7 @@ def follow(weight, base, acc, path):
             path[i, lane] = total
 
 
-@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz", "reassoc"})
+@kernel(fastmath={"contract", "nsz", "reassoc"})
 def gap(a, b):
     """Sum of the absolute differences of two (3, 8) arrays."""
     total = 0.0
@@ -111,7 +111,7 @@ def gap(a, b):
     return total
 
 
-@njit(cache=True, error_model="numpy", fastmath={"contract", "nsz"})
+@kernel(fastmath={"contract", "nsz"})
 def continued(power, q, out):
     """A step's acceleration polynomial (8, 3) at the nodes of the next step, ``q`` times as long,
     into ``out`` (3, 8).
@@ -125,7 +125,7 @@ def continued(power, q, out):
             out[i, j] = total
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, first_active, n_max):
     """Integrate a barycentric state from the epoch (tau = 0) to ``tau_end`` days.
 
@@ -349,7 +349,7 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, firs
         wanted = direction * min(cap_d, max(abs(wanted), SMOOTH * pace))
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def find_step(start, n, forward, tau):
     """Row of the step that holds ``tau`` (clamped to the first and last)."""
     low = 0
@@ -364,7 +364,7 @@ def find_step(start, n, forward, tau):
     return low
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def path_powers(length, begin, power, k, out):
     """Power coefficients of position and velocity (9, 6) over step ``k``, in the step fraction."""
     h = length[k]
@@ -378,7 +378,7 @@ def path_powers(length, begin, power, k, out):
         out[N_NODES + 1, 3 + i] = 0.0
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def dense_many(start, length, begin, power, n, forward, taus, out):
     """Barycentric states (m, 6) at many ``taus``; quickest where they are sorted."""
     c = np.empty((N_NODES + 2, 6))
