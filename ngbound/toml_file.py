@@ -102,11 +102,23 @@ def with_choices(model: Model, where: str, choices: Mapping[tuple[str, str], Any
     content = model.model_dump()
     for (table, key), value in choices.items():
         content[table][key] = value
+    return hold(content, type(model), where)
+
+
+def hold(content: Mapping[str, Any], model: type[Model], where: str) -> Model:
+    """Hold what would stand in such a file, given as a mapping, against a model of its tables;
+    ``where`` begins what a fault says.
+
+    Raises
+    ------
+    CaseError
+        A key that does not exist, or a value that is not allowed.
+    """
     try:
-        return type(model).model_validate(content)
+        return model.model_validate(dict(content))
     except ValidationError as error:
-        place, fault = _each_once(error, type(model))[0]
-        raise CaseError(_sentence(where, content, type(model), place, fault)) from error
+        place, fault = _each_once(error, model)[0]
+        raise CaseError(_sentence(where, content, model, place, fault)) from error
 
 
 def _text(path: Path) -> str:

@@ -10,6 +10,7 @@ import ngbound
 PACKAGE = Path(ngbound.__file__).parent
 ORDER = [
     {"constants", "errors", "rounding"},
+    {"toml_file"},
     {"arc"},
     {"sky"},
     {"motion"},

@@ -15,7 +15,7 @@ from ngbound.fit import Fit
 from .arc_geometry import GeometryAudit, audit_geometry
 from .arithmetic import NumberAudit, audit_numbers
 from .notebook import as_html
-from .quoted import QuotedPaper, read_table
+from .quoted import QuotedPaper, placed, read_table
 from .threshold_readings import ThresholdAudit, audit_threshold
 
 __all__ = ["Audit", "audit"]
@@ -156,10 +156,15 @@ def audit(
         paper, folder = read_table(paper, QuotedPaper)
     if arc is None and paper.arc is not None:
         arc = read_arc(folder / paper.arc.file, object=paper.arc.object)
-    numbers = audit_numbers(**paper.numbers) if paper.numbers else None
-    threshold = geometry = None
+    file = f"{quoted}, " if isinstance(quoted, str | Path) else ""
+    numbers = threshold = geometry = None
+    if paper.numbers:
+        with placed(f"{file}[numbers]"):
+            numbers = audit_numbers(**paper.numbers)
     if paper.threshold is not None and arc is not None:
-        threshold = audit_threshold(arc, paper.threshold, paper.errors or None, progress)
+        with placed(f"{file}[threshold] against the arc"):
+            threshold = audit_threshold(arc, paper.threshold, paper.errors or None, progress)
     if paper.threshold is not None and paper.geometry is not None:
-        geometry = audit_geometry(paper.geometry, paper.threshold, paper.seed)
+        with placed(f"{file}[threshold] against [geometry]"):
+            geometry = audit_geometry(paper.geometry, paper.threshold, paper.seed)
     return Audit(paper.title, numbers, threshold, geometry)

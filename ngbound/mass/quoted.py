@@ -1,6 +1,6 @@
 """What a paper says of a thrust, as tables of a TOML file, checked on reading.
 
-May import: errors, arc, motion, and from its own room distributions.
+May import: errors, toml_file, arc, motion, and from its own room distributions.
 
 For `audit` (every table but one of numbers and threshold may be left out):
 
@@ -45,18 +45,20 @@ For `reconcile`, two or more tables:
 """
 
 import math
-import tomllib
-from collections.abc import Mapping
+from collections.abc import Iterator, Mapping
+from contextlib import contextmanager
+from dataclasses import fields
 from pathlib import Path
-from typing import Annotated, Any, Literal, Self, TypeVar
+from typing import Annotated, Any, Literal, Self
 
 import astropy.units as u
 from astropy.units import Quantity
-from pydantic import BaseModel, ConfigDict, Field, ValidationError, model_validator
+from pydantic import Field, model_validator
 
 from ngbound.arc import ErrorModel
-from ngbound.errors import CaseError
+from ngbound.errors import ArcError, CaseError, InputError, MassError
 from ngbound.motion import Thrust
+from ngbound.toml_file import Model, Table, hold, nearest, read_toml, see_whether, shown
 
 from .distributions import AtMost, Distribution, Normal, SplitNormal, parse_distribution
 
@@ -64,12 +66,6 @@ AU_D2 = u.au / u.day**2
 Spec = str | float | dict[str, Any]
 Positive = Annotated[float, Field(gt=0.0)]
 Probability = Annotated[float, Field(gt=0.0, lt=1.0)]
-
-
-class Table(BaseModel):
-    """Any table: frozen, finite numbers only, no unknown keys."""
-
-    model_config = ConfigDict(extra="forbid", frozen=True, allow_inf_nan=False)
 
 
 class LawTable(Table):
@@ -81,6 +77,11 @@ class LawTable(Table):
     def thrust(self, components: str = "RTN") -> Thrust:
         """The thrust of the law."""
         return Thrust(self.law, components, exponent=self.exponent)
+
+    @model_validator(mode="after")
+    def _known_law(self) -> Self:
+        see_whether(self.thrust)
+        return self
 
 
 class QuotedResult(LawTable):
@@ -112,20 +113,26 @@ class QuotedResult(LawTable):
         given = [k for k in ("file", "A", "upper_limit", "threshold") if getattr(self, k)]
         if len(given) != 1:
             raise ValueError(
-                "must hold exactly one of file, A, upper_limit and threshold; it holds "
-                f"{', '.join(given) or 'none'}"
+                "it must hold exactly one of file, A, upper_limit and threshold, but holds "
+                f"{' and '.join(given) or 'none'}"
             )
         if not self.file and not self.r_au:
-            raise ValueError("needs r_au, the heliocentric distances of the arc in au")
+            raise ValueError("it needs r_au, the heliocentric distances of the arc in au")
         return self
 
 
 class Results(Table):
     """A file for `reconcile`."""
 
-    result: tuple[QuotedResult, ...] = Field(min_length=2)
+    result: tuple[QuotedResult, ...]
     level: Probability = Field(default=0.95, description="Confidence of every interval.")
     seed: int = Field(default=1, ge=0)
+
+    @model_validator(mode="after")
+    def _several(self) -> Self:
+        if len(self.result) < 2:
+            raise ValueError("reconciling needs at least two [[result]] tables; add the other one")
+        return self
 
 
 class QuotedThreshold(LawTable):
@@ -151,7 +158,7 @@ class QuotedThreshold(LawTable):
     def _one_level(self) -> Self:
         given = [k for k in ("sigma", "confidence", "false_alarm") if getattr(self, k) is not None]
         if len(given) > 1:
-            raise ValueError(f"gives {' and '.join(given)}; give one of them")
+            raise ValueError(f"it gives {' and '.join(given)}; give one of them")
         return self
 
 
@@ -159,17 +166,27 @@ class Geometry(Table):
     """``[geometry]``: an arc of which only this is known."""
 
     n_obs: int = Field(ge=3)
-    span_d: Positive
+    span_d: Annotated[float, Field(gt=0.0, le=36525.0)]
     sigma_arcsec: Positive
     nights: int | None = Field(default=None, ge=2, description="All observations apart by default.")
     r_au: tuple[Positive, ...] = Field(
-        min_length=1, max_length=2, description="Heliocentric distance at the start and end."
+        min_length=1, description="Heliocentric distance at the start and end."
     )
     delta_au: tuple[Positive, ...] = Field(
-        min_length=1, max_length=2, description="Smallest and largest geocentric distance."
+        min_length=1, description="Smallest and largest geocentric distance."
     )
     q_au: Positive | None = None
     e: float | None = Field(default=None, ge=0.0)
+
+    @model_validator(mode="after")
+    def _ends(self) -> Self:
+        for key in ("r_au", "delta_au"):
+            if len(getattr(self, key)) > 2:
+                raise ValueError(
+                    f"{key} = {shown(getattr(self, key))} must be one or two distances in au: "
+                    f"{type(self).model_fields[key].description}"
+                )
+        return self
 
 
 class ArcTable(Table):
@@ -197,13 +214,10 @@ class QuotedPaper(Table):
     @model_validator(mode="after")
     def _something(self) -> Self:
         if not self.numbers and self.threshold is None:
-            raise ValueError("must hold a [numbers] or a [threshold] table")
+            raise ValueError("it must hold a [numbers] or a [threshold] table")
         if (self.arc or self.geometry) and self.threshold is None:
-            raise ValueError("has an [arc] or [geometry] table but no [threshold] to hold to it")
+            raise ValueError("it has an [arc] or [geometry] table but no [threshold] to hold to it")
         return self
-
-
-Model = TypeVar("Model", bound=BaseModel)
 
 
 def read_table(source: str | Path | Mapping[str, Any], model: type[Model]) -> tuple[Model, Path]:
@@ -214,33 +228,21 @@ def read_table(source: str | Path | Mapping[str, Any], model: type[Model]) -> tu
     CaseError
         When it cannot be read, is not TOML, or holds an unknown or impossible choice.
     """
-    content: Any
     if isinstance(source, Mapping):
-        name, content, folder = "The table", dict(source), Path()
-    else:
-        path = Path(source)
-        name, folder = str(path), path.parent
-        try:
-            content = tomllib.loads(path.read_bytes().decode("utf-8"))
-        except OSError as error:
-            raise CaseError(
-                f"{path} cannot be read: {error.strerror or error}; give the path of a TOML file."
-            ) from error
-        except UnicodeDecodeError as error:
-            raise CaseError(
-                f"{path} is not a TOML file: byte {error.start} is not UTF-8 text."
-            ) from error
-        except tomllib.TOMLDecodeError as error:
-            raise CaseError(f"{path} is not valid TOML: {error}.") from error
+        return hold(source, model, "The table given"), Path()
+    return read_toml(source, model), Path(source).parent
+
+
+@contextmanager
+def placed(where: str) -> Iterator[None]:
+    """Say ``where`` in the input a fault lies that was found after the tables were read; those of
+    an arc name its file themselves."""
     try:
-        return model.model_validate(content), folder
-    except ValidationError as error:
-        faults = []
-        for fault in error.errors():
-            where = ".".join(str(part) for part in fault["loc"])
-            given = "" if isinstance(fault["input"], dict) else f" ({fault['input']!r} was given)"
-            faults.append(f"{where + ': ' if where else ''}{fault['msg']}{given}")
-        raise CaseError(f"{name}: {'; '.join(faults)}.", faults=faults) from error
+        yield
+    except ArcError:
+        raise
+    except (InputError, MassError) as error:
+        raise type(error)(f"{where}: {error}", **error.data) from error
 
 
 def amount_au_d2(spec: Any, name: str) -> tuple[Distribution, float]:
@@ -250,7 +252,9 @@ def amount_au_d2(spec: Any, name: str) -> tuple[Distribution, float]:
         factor = float(Quantity(1.0, u.Unit(unit) if unit else AU_D2).to_value(AU_D2))
     except (ValueError, TypeError, u.UnitConversionError) as error:
         raise CaseError(
-            f"{name} has the unit {unit!r}; allowed: au/d2, m/s2 and the like.", unit=unit
+            f"{name} has the unit {unit!r}, which is none of an acceleration; write au/d2, m/s2 or "
+            "the like.",
+            unit=unit,
         ) from error
     found = found.scaled(factor)
     if isinstance(found, Normal):
@@ -265,7 +269,7 @@ def size_au_d2(spec: Any, name: str) -> float:
     found, _ = amount_au_d2(spec, name)
     value = found.limit if isinstance(found, AtMost) else found.median
     if not (math.isfinite(value) and value > 0):
-        raise CaseError(f"{name} = {spec!r} must be positive.", value=spec)
+        raise CaseError(f"{name} = {shown(spec)} must be positive; give its size.", value=spec)
     return value
 
 
@@ -275,10 +279,8 @@ def error_model(choices: Mapping[str, Any]) -> ErrorModel:
     if "arcsec" in options:
         value, _ = parse_distribution(options.pop("arcsec"), "errors.arcsec", lower=0.0)
         options = {"scheme": "uniform", "uniform_arcsec": value.median, **options}
-    try:
-        return ErrorModel(**options)
-    except TypeError as error:
-        raise CaseError(
-            f"The errors table has an unknown key: {error}; allowed: arcsec and the keys of the "
-            "error model."
-        ) from error
+    known = ["arcsec", *(field.name for field in fields(ErrorModel))]
+    for key in choices:
+        if key not in known:
+            raise CaseError(f"[errors] has no key {key!r}; {nearest(key, known)}", key=key)
+    return ErrorModel(**options)

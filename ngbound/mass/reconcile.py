@@ -22,7 +22,7 @@ from .distributions import number_text
 from .explanations import EXCLUDED, ORDER, POSSIBLE, STRAINED, Explanation, Pair
 from .frames import text_rows
 from .notebook import as_html
-from .quoted import Results, read_table
+from .quoted import Results, placed, read_table
 from .results import THREE_SIGMA, ThrustResult
 from .thrust_history import freedom, joint
 
@@ -196,7 +196,9 @@ def reconcile(
     if len(results) == 1 and isinstance(results[0], str | Path):
         table, folder = read_table(results[0], Results)
         level, seed = table.level, table.seed
-        found = [ThrustResult.from_quoted(one, folder, progress) for one in table.result]
+        for quoted in table.result:
+            with placed(f"{results[0]}, [[result]] {quoted.name!r}"):
+                found.append(ThrustResult.from_quoted(quoted, folder, progress))
     else:
         for number, one in enumerate(results, 1):
             if isinstance(one, ThrustResult):

@@ -1,7 +1,7 @@
 """One result about the thrust of an object: a fitted arc or quoted numbers, and what goes with it.
 
-May import: constants, errors, arc, sky, motion, fit, limits, and from its own room distributions,
-outgassing, quoted and thrust_history.
+May import: constants, errors, toml_file, arc, sky, motion, fit, limits, and from its own room
+distributions, outgassing, quoted and thrust_history.
 """
 
 import math
@@ -21,6 +21,7 @@ from ngbound.errors import CaseError
 from ngbound.fit import Fit, fit_orbit
 from ngbound.limits import noncentrality
 from ngbound.sky import parse_time, tdb_d_to_iso
+from ngbound.toml_file import shown
 
 from .distributions import Distribution, number_text, parse_distribution
 from .outgassing import Outgassing
@@ -203,7 +204,9 @@ def _sized(spec: Any, name: str, unit: u.UnitBase) -> Distribution | None:
     try:
         return found.scaled(float((u.Unit(text) if text else unit).to(unit)))
     except (ValueError, TypeError, u.UnitConversionError) as error:
-        raise CaseError(f"{name} has the unit {text!r}, which is no unit of it.") from error
+        raise CaseError(
+            f"{name} has the unit {text!r}, which is no unit of it; use for instance {unit}."
+        ) from error
 
 
 def _numbers(
@@ -215,13 +218,17 @@ def _numbers(
         scale = float(table.thrust().g(table.at_au))
     amounts, matrix = np.zeros(3), np.zeros((3, 3))
     if table.A is not None:
-        named = isinstance(table.A, dict) and set(table.A) <= set(AXES)
+        named = isinstance(table.A, dict) and not set(table.A).isdisjoint(AXES)
         given = table.A if named and isinstance(table.A, dict) else {table.component: table.A}
         for letter, spec in given.items():
+            if letter not in (*AXES, "any"):
+                raise CaseError(
+                    f"A of {table.name!r} has no component {letter!r}; there are R, T and N."
+                )
             found, sigma = amount_au_d2(spec, f"A of {table.name!r}")
             if sigma == 0.0:
                 raise CaseError(
-                    f"A = {spec!r} of {table.name!r} has no error; write for instance "
+                    f"A = {shown(spec)} of {table.name!r} has no error; write for instance "
                     '"(1.0 +- 0.2)e-8 au/d2", or give it as upper_limit or threshold.'
                 )
             i = AXES.index("R" if letter == "any" else letter)

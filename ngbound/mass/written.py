@@ -52,16 +52,19 @@ class Written:
 
 
 def half_unit(spec: Any) -> tuple[float, float]:
-    """Half a unit of the last digit of the first number in a text, and that number without its
-    power of ten; (0, 1) for what is not text or holds no digits."""
-    match = re.search(r"(\d+)(\.\d*)?|\.\d+", spec) if isinstance(spec, str) else None
+    """Half a unit of the last digit of the first number in a text, and that number; (0, 1) for what
+    is not text or holds no digits."""
+    number = r"(\d+\.?\d*|\.\d+)(?:[eE]([+-]?\d{1,3}))?"
+    match = re.search(number, spec) if isinstance(spec, str) else None
     if match is None:
         return 0.0, 1.0
-    whole, _, decimals = match[0].partition(".")
+    whole, _, decimals = match[1].partition(".")
     zeros = 0
-    if "." not in match[0] and whole.strip("0"):
+    if "." not in match[1] and whole.strip("0"):
         zeros = len(whole) - len(whole.rstrip("0"))
-    return 0.5 * 10.0 ** (zeros - len(decimals)), float(match[0])
+    # a power of ten beyond the floating-point range is refused where the number is read
+    scale = 10.0 ** max(min(int(match[2] or 0), 200), -200)
+    return 0.5 * 10.0 ** (zeros - len(decimals)) * scale, float(match[1]) * scale
 
 
 def written_rounding(spec: Any) -> float:

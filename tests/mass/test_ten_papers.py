@@ -5,6 +5,8 @@ out apart from the program and rounded as a paper would. Thresholds come from th
 object with errors of 0.06 arcsec.
 """
 
+import re
+
 import pytest
 
 from ngbound.mass import audit
@@ -166,3 +168,113 @@ def test_one_sided_called_two_sided_is_named(fit):
     assert not found.sound and found.threshold.verdict == "another reading", str(found)
     assert found.threshold.changes == ("one-sided instead of two-sided",)
     assert "one-sided instead of two-sided" in found.slips
+
+
+def with_digits(numbers: dict, digits: int) -> dict:
+    """The same paper with every number rounded to so many digits."""
+
+    def rounded(text: str) -> str:
+        number = re.match(r"[\d.e+-]+", text)
+        assert number is not None
+        return f"{float(number[0]):.{digits - 1}e}{text[number.end() :]}"
+
+    return {
+        key: rounded(value) if isinstance(value, str) and value[0].isdigit() else value
+        for key, value in numbers.items()
+    }
+
+
+SOUND_PAPERS = [NEARBY, DISTANT_CO, MASS_LOSS, PHOTOMETRIC]
+SLIPS = [
+    (GRAMS, "mass", "factor 1000"),
+    (METRES, "acceleration", "au/d2 and m/s2 exchanged"),
+    (RADIUS, "mass", "radius and diameter exchanged"),
+    (WRONG_DISTANCE, "rate", "wrong distance"),
+]
+
+
+@pytest.mark.parametrize("digits", [1, 2, 3])
+@pytest.mark.parametrize("numbers", SOUND_PAPERS)
+def test_sound_papers_with_fewer_digits_are_never_called_wrong(numbers, digits):
+    found = audit({"title": "rounded", "numbers": with_digits(numbers, digits)})
+    assert found.sound or found.undecided, str(found)
+    assert found.slips == ()
+    if digits > 1:
+        assert found.sound, str(found)
+
+
+@pytest.mark.parametrize("digits", [1, 2, 3])
+@pytest.mark.parametrize(("numbers", "quantity", "words"), SLIPS)
+def test_planted_slips_with_fewer_digits_are_named_or_in_doubt(numbers, quantity, words, digits):
+    found = audit({"title": "rounded", "numbers": with_digits(numbers, digits)})
+    assert not found.sound, str(found)
+    if digits > 1:
+        assert not found.undecided, str(found)
+        named = {c.quantities: c for c in found.numbers.tied}
+        assert any(words in slip for slip in named[(quantity,)].slips), str(found)
+    elif found.undecided:
+        assert any(words in doubt for doubt in found.numbers.doubts), str(found)
+
+
+FACTOR_TWO = {
+    # radius for diameter, one number with one digit
+    "radius for diameter": {"mass": "3.77e10 kg", "density": "600 kg/m3", "diameter": "247 m"},
+    # M = 0.5 Q m v / A, quoted with a collimation of 1
+    "collimation": {
+        "force": "6.0e3 N",
+        "mass_loss": "20.0 kg/s",
+        "speed": "600 m/s",
+        "collimation": "1",
+    },
+    # 1.645 sigma called two-sided
+    "one-sided": {"acceleration": "1.6e-9", "acceleration_sigma": "1.0e-9", "confidence": 0.95},
+}
+
+
+@pytest.mark.parametrize("name", FACTOR_TWO)
+def test_slips_of_two_and_less_are_named_where_the_digits_allow(name):
+    found = audit({"title": name, "numbers": FACTOR_TWO[name]})
+    assert found.numbers.verdict == "slip" and not found.undecided, str(found)
+    words = {
+        "radius for diameter": "radius and diameter",
+        "collimation": "half a beam",
+        "one-sided": "one-sided",
+    }[name]
+    assert any(words in slip for change in found.numbers.tied for slip in change.slips)
+
+
+def test_where_the_digits_do_not_allow_it_the_audit_says_so():
+    # all of one digit: the force agrees with a collimation of 1 and of 0.5
+    found = audit(
+        {
+            "title": "coarse",
+            "numbers": {
+                "force": "7e3 N",
+                "mass_loss": "1e1 kg/s",
+                "speed": "1 km/s",
+                "collimation": "1",
+            },
+        }
+    )
+    assert found.undecided and not found.sound, str(found)
+    assert "too coarse to tell" in found.headline and "digits cannot tell" in str(found)
+    assert any("half a beam" in doubt for doubt in found.numbers.doubts), str(found)
+    # with a second digit they do
+    finer = dict(force="7.0e3 N", mass_loss="1.0e1 kg/s", speed="1.0 km/s", collimation="1.0")
+    assert audit({"numbers": finer}).numbers.verdict == "inconsistent"
+
+
+def test_numbers_that_entered_no_test_are_told():
+    found = audit({"title": "t", "numbers": {**PHOTOMETRIC, "speed": "0.8 km/s"}})
+    assert found.sound and found.numbers.verdict == "sound in part"
+    assert found.numbers.untested == ("speed",)
+    assert "not everything could" in found.headline and "Not tested" in str(found)
+    assert "everything in it was tested" in audit({"numbers": PHOTOMETRIC}).headline
+
+
+def test_a_magnitude_of_zero_is_a_number_like_any_other():
+    # 1329 km / sqrt(0.1) = 4203 km
+    found = audit({"numbers": {"H": "0.0 +- 0.1", "albedo": "0.100", "diameter": "4.2e3 km"}})
+    assert found.sound, str(found)
+    for size in ("0", "0.0", "-0.0"):
+        assert audit({"numbers": {"H": size, "albedo": "0.10", "diameter": "4.20e3 km"}}).tested
