@@ -356,7 +356,7 @@ class _Target:
         info = self.information
         orbit, off = info.orbit, A - info.A_hat
         a = off @ (info.eigenvectors * np.sqrt(info.eigenvalues))
-        less = 1.0 + np.sum(a * a, axis=1, keepdims=True) / BEND_REACH_SIGMA**2
+        less = np.hypot(1.0, np.sum(a * a, axis=1, keepdims=True) / BEND_REACH_SIGMA**2)
         v = v + np.einsum("mi,mj,ijn->mn", a, a, self.bend) / less
         theta[:, self.thrust] = A
         theta[:, self.others] = (

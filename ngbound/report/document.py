@@ -36,12 +36,6 @@ from ngbound.report.rounding import (
 
 WIDTH = 96
 
-PRIOR_CAVEAT = (
-    "The isotropic-uniform prior gives most room to small thrusts: its limit holds as often as it "
-    "says on average over that prior, but less often for one given thrust between zero and the "
-    "threshold. Where the limit is to hold whatever the thrust, quote the flat-components or "
-    "profile limit beside it."
-)
 STANDING_CAVEATS = (
     "A limit on the thrust is not an impact-hazard assessment; nothing here says where the "
     "object will be beyond its arc.",
@@ -685,8 +679,8 @@ def _write_limits(page: _Page, record: Mapping[str, Any]) -> None:
             )
         )
     page.pairs(rows)
-    if "isotropic-uniform" in str(limit.get("prior")) and len(letters) > 1:
-        page.item(PRIOR_CAVEAT)
+    if limit.get("caveat"):
+        page.item(str(limit["caveat"]))
     if limit.get("message"):
         page.item(str(limit["message"]))
     for other in record.get("limits") or ():

@@ -11,6 +11,7 @@ more for each parameter.
 
 import argparse
 import time
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -92,6 +93,23 @@ def measure(name: str, fit: Fit, twin: bool) -> None:
           f"and the injections {each * 2000 * sweeps / 3600:.0f} h")  # fmt: skip
 
 
+def measure_curved(span_d: float, n_nights: int, per_night: int) -> None:
+    """The posterior of a short near-Earth arc with three components, which bends and strays."""
+    kind = replace(
+        CLASSES["near-Earth, 60 days"], span_d=span_d, n_nights=n_nights, per_night=per_night
+    )
+    fit = fitted(kind)
+    begin = time.perf_counter(), time.process_time()
+    posterior = sample_posterior(fit, seed=1, prior="flat-components")
+    spent = time.perf_counter() - begin[0], time.process_time() - begin[1]
+    some = posterior.samples[:: max(1, len(posterior.samples) // 512)]
+    print(f"near-Earth, {span_d:g} days, {fit.n_obs} records: {min(posterior.ess.values()):.0f} "
+          f"effective samples in {spent[0]:.1f} s wall, {spent[1]:.1f} s CPU; acceptance "
+          f"{posterior.acceptance:.2f}, autocorrelation {max(posterior.tau.values()):.1f} steps, "
+          f"strays {100.0 * fit.neighbourhood.strays(some).mean():.1f} % of one reference, "
+          f"{100.0 * fit.atlas.strays(some).mean():.1f} % of the atlas")  # fmt: skip
+
+
 def main() -> None:
     parser = argparse.ArgumentParser(description=__doc__.split("\n")[0])
     parser.add_argument("--file", type=Path, help="an arc of your own, such as the demo's")
@@ -103,6 +121,9 @@ def main() -> None:
         measure(arc.name, push, not choice.no_twin)
     for name in ("hyperbolic, 90 days", "main belt, 10 years"):
         measure(name, fitted(CLASSES[name]), not choice.no_twin)
+    print()
+    for span_d, n_nights, per_night in ((40.0, 20, 10), (30.0, 15, 10), (25.0, 12, 4)):
+        measure_curved(span_d, n_nights, per_night)
 
 
 if __name__ == "__main__":

@@ -1,5 +1,5 @@
 import json
-from dataclasses import replace
+from dataclasses import dataclass, replace
 
 import numpy as np
 import pytest
@@ -7,6 +7,7 @@ import pytest
 from ngbound.errors import LimitError, SamplingError
 from ngbound.limits import Posterior, sample_posterior, thrust_information, upper_limit
 from ngbound.limits import posterior as module
+from ngbound.limits.priors import thrust_prior
 from tests.limits.toy import ToyFit, correlated, isotropic
 
 SIGMA = 1e-9
@@ -43,6 +44,39 @@ def test_convergence_is_reached_and_told(flat):
 def test_few_evaluations_are_needed_on_a_nearly_linear_arc(flat):
     assert flat.evaluations < 3.0 * min(flat.ess.values())
     assert flat.acceptance_independence > 0.7
+
+
+@dataclass(frozen=True)
+class BentFit(ToyFit):
+    """An orbit that follows the thrust along a parabola many conditional sigmas deep."""
+
+    def chi2_many(self, thetas):
+        d = (np.asarray(thetas) - self.theta) * np.sqrt(np.diag(self.normal))
+        a = d[:, self.n_state :]
+        d[:, 0] -= 2.0 * a[:, 0] ** 2 - 1.5 * a[:, 0] * a[:, 1]
+        d[:, 4] += 0.5 * a[:, 2] ** 2
+        return self.chi2 + np.sum(d**2, axis=1)
+
+
+def test_an_orbit_that_bends_with_the_thrust_is_followed():
+    fit = BentFit(**vars(isotropic(sigma=SIGMA)))
+    prior = thrust_prior(thrust_information(fit), "flat-components")
+    target = module._Target(fit, thrust_information(fit), prior, False, "gaussian", fit.chi2_many)
+    bend = np.zeros((3, 3, 6))
+    bend[0, 0, 0], bend[0, 1, 0], bend[1, 0, 0], bend[2, 2, 4] = 2.0, -0.75, -0.75, -0.5
+    turn = target.information.eigenvectors
+    form = np.einsum("ip,jq,pqn->ijn", turn, turn, target.bend)
+    orbit = np.einsum("ijn,mn->ijm", form, target.information.orbit.spread)
+    np.testing.assert_allclose(orbit * np.sqrt(np.diag(fit.normal))[:6], bend, atol=1e-6)
+    post = sample_posterior(fit, seed=1, prior="flat-components")
+    # straight coordinates would not get anywhere: sigma of the first element is 3.8 of its own
+    assert post.acceptance_independence > 0.5 and post.converged
+    a = post.A_samples / SIGMA
+    np.testing.assert_allclose(a.std(axis=0), 1.0, atol=0.05)
+    x = (post.samples[:, 0] - 1.0) * np.sqrt(fit.normal[0, 0])
+    # x = 2 a^2 - 1.5 a b + noise of unit variance: mean 2, variance 8 + 2.25 + 1
+    assert x.mean() == pytest.approx(2.0, abs=0.2)
+    assert x.std() == pytest.approx(np.sqrt(11.25), rel=0.08)
 
 
 def test_isotropic_flat_components_limit_is_2_7955_sigma():

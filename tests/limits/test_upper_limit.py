@@ -7,7 +7,10 @@ from scipy.optimize import minimize
 
 from ngbound.errors import LimitError
 from ngbound.limits import (
+    LinearRefit,
+    detection_threshold,
     flat_prior_limit,
+    inject_and_recover,
     profile_limit,
     sample_posterior,
     thrust_information,
@@ -116,6 +119,29 @@ def test_errors_that_rest_on_few_degrees_of_freedom_raise_the_limit_by_themselve
     several = upper_limit(replace(isotropic(sigma=SIGMA), noise_dof=4), prior="flat-components")
     # the size of a Student vector in 3 dimensions: sqrt(3 F), F(3, 4) at 95 % is 6.591
     assert several.magnitude.value / SIGMA == pytest.approx(np.sqrt(3.0 * 6.591), rel=0.02)
+
+
+def test_the_limit_says_what_its_prior_does_not_promise():
+    limit = upper_limit(isotropic(sigma=SIGMA))
+    assert "holds as often" in limit.caveat and limit.caveat in str(limit)
+    assert limit.to_dict()["caveat"] == limit.caveat
+    assert upper_limit(isotropic(k=1, sigma=SIGMA)).caveat == ""
+    assert upper_limit(isotropic(sigma=SIGMA), prior="flat-components").caveat == ""
+
+
+@pytest.mark.parametrize("prior, low, high", [("isotropic-uniform", 0.1, 0.8),
+                                              ("flat-components", 0.93, 1.0)])  # fmt: skip
+@pytest.mark.parametrize("share", [0.25, 0.5, 1.0])
+def test_coverage_at_fixed_truths_is_as_the_caveat_says(prior, low, high, share):
+    fit = correlated()
+    threshold = detection_threshold(fit)
+    found = inject_and_recover(
+        LinearRefit.of(fit), share * threshold.worst.value * threshold.worst_direction, n=600,
+        seed=1, prior=prior, upper_au_d2=20.0 * threshold.worst.value,
+    )  # fmt: skip
+    assert found.coverage_bayes.interval[0] >= low - 0.02
+    if share < 0.9:
+        assert found.coverage_bayes.value <= high
 
 
 @pytest.mark.parametrize("confidence", [0.0, 1.0, 1.5])
