@@ -481,7 +481,7 @@ class NucleusTable(Table):
     """``[nucleus]``: what is assumed about the body."""
 
     density: Spec = Field(
-        default=500.0,
+        default={"low": 200.0, "mode": 500.0, "high": 800.0},
         description="Bulk density, kg/m3; about 500 is common practice for comet nuclei.",
     )
     diameter: Spec | None = Field(

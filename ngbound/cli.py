@@ -211,7 +211,7 @@ def limit(input_file: Path, **options: Any) -> Any:
 @_step(
     "State the mass that the limit demands.\n\n"
     "The outgassing budget stands in the case file, in one [[outgassing]] table for each "
-    "species.\n\n"
+    "species; a [reach] table asks which rate the arc would have revealed.\n\n"
     "Example: ngbound mass data_demo/quiet.toml",
     name="mass",
 )

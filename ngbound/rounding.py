@@ -1,7 +1,9 @@
 """Rounding of numbers and bounds, one rule for every room; imports the standard library only.
 
-A bound keeps two digits and is rounded outward, lower bounds down and upper limits up, so that the
-printed statement is never stronger than the computed one, and every printing of it is the same.
+A bound keeps two digits and is rounded outward, lower bounds down, upper limits and thresholds up,
+so that the printed statement is never stronger than the computed one, and every printing of it is
+the same. An uncertainty keeps two digits when its first three lie below 355, else one (the habit of
+the Particle Data Group), and its value ends at the same digit.
 """
 
 import math
@@ -67,6 +69,28 @@ def percent(fraction: float) -> str:
         if abs(float(text) - value) <= 0.005 * min(value, 100.0 - value) + 1e-12:
             return f"{text} %"
     return f"{value:.5g} %"
+
+
+def with_error(value: float, error: float) -> str:
+    """A value with its 1-sigma uncertainty: "2.60 +- 0.17" or "(2.60 +- 0.17)e-10"."""
+    if not is_number(value):
+        return "not available"
+    if not is_number(error) or error <= 0:
+        return rounded(value, 3)
+    lead = power_of_ten(error)
+    mantissa = over_power(error, lead)
+    if mantissa >= 9.5:
+        lead, mantissa = lead + 1, 1.0
+    last = lead - (1 if mantissa < 3.55 else 0)
+    exponent = max(power_of_ten(value), lead) if value else lead
+    if -4 <= exponent < 6:
+        places = max(-last, 0)
+        return f"{value:.{places}f} +- {error:.{places}f}"
+    places = max(exponent - last, 0)
+    return (
+        f"({over_power(value, exponent):.{places}f} +- {over_power(error, exponent):.{places}f})"
+        f"e{exponent}"
+    )
 
 
 def mass_text(kilogram: float, *, outward: str = "down") -> str:

@@ -89,6 +89,7 @@ from ngbound.report import (
     station_table,
     the_sentence,
 )
+from ngbound.rounding import rounded
 
 FIGURE_ENDINGS = (".png", ".pdf", ".svg")
 
@@ -390,15 +391,15 @@ def variant_table(bounds: "Bounds") -> SmallTable:
                 "error model": variant.name + ("" if variant.defensible else " (warning only)"),
                 "out": fit.n_rejected,
                 "chi2/dof": f"{fit.reduced_chi2:.2f}",
-                "A_det worst": f"{threshold.worst.value:.2e}",
-                "A_det best": f"{threshold.best.value:.2e}",
-                "|A| below": f"{limit.magnitude.value:.2e}",
+                "A_det worst": rounded(float(threshold.worst.value), 3, outward="up"),
+                "A_det best": rounded(float(threshold.best.value), 3, outward="up"),
+                "|A| below": rounded(float(limit.magnitude.value), 3, outward="up"),
                 "p of thrust": f"{wald_p(fit):.2g}",
             }
         )
     spread = ", ".join(f"{name} {ratio:.1f}" for name, ratio in bounds.variation.spread().items())
     return SmallTable(
-        "Threshold and limit under other error models (au/d2, linear theory)",
+        "Threshold and limit under other error models (au/d2, linear theory; rounded up)",
         pd.DataFrame(rows),
         {},
         {},

@@ -35,6 +35,7 @@ from scipy.stats import chi2, f, ncf, nct, ncx2, norm, t
 from ngbound.errors import LimitError
 from ngbound.limits.fit_protocol import ThrustFit
 from ngbound.limits.information import AU_D2, ThrustInformation, thrust_information
+from ngbound.rounding import rounded
 
 
 def _solve(power_of: Callable[[float], float], power: float) -> float:
@@ -254,11 +255,9 @@ class DetectionThreshold:
             f"  alone, others held  {_row(self.held)}",
             f"  alone, others free  {_row(self.free)}",
             f"  direction-free      {_row(self.direction_free)}",
-            f"  worst direction     {self.worst.value:.3e} along "
-            f"{self._vector(self.worst_direction)}",
-            f"  best direction      {self.best.value:.3e} along "
-            f"{self._vector(self.best_direction)}",
-            f"  isotropic mean      {self.isotropic_mean.value:.3e}",
+            f"  worst direction     {_row(self.worst)} along {self._vector(self.worst_direction)}",
+            f"  best direction      {_row(self.best)} along {self._vector(self.best_direction)}",
+            f"  isotropic mean      {_row(self.isotropic_mean)}",
         ]
         if self.noise_scale != 1.0:
             lines.append(f"  every sigma multiplied by the noise scale {self.noise_scale:.4g}")
@@ -304,7 +303,8 @@ class DetectionThreshold:
 
 
 def _row(values: u.Quantity) -> str:
-    return "  ".join(f"{v:.3e}" for v in values.value)
+    """Thresholds, rounded up."""
+    return "  ".join(rounded(float(v), 2, outward="up") for v in np.atleast_1d(values.value))
 
 
 def detection_threshold(

@@ -34,6 +34,7 @@ from ngbound.limits.linear_posterior import linear_posterior, student_width
 from ngbound.limits.posterior import Posterior
 from ngbound.limits.priors import ThrustPrior, thrust_prior
 from ngbound.limits.unified_interval import unified_interval
+from ngbound.rounding import rounded
 
 LINEAR_DRAWS = 16384
 PRIOR_CAVEAT = (
@@ -119,20 +120,21 @@ class UpperLimit:
             f"({self.source}; prior {self.prior})",
             f"  {_pm(self.alternative_magnitude, self.alternative_error)} under the prior "
             f"{self.alternative_prior} ({self.alternative_source}); "
-            f"{self.profile_magnitude.value:.3e} by profile likelihood in linear theory",
+            f"{_up(self.profile_magnitude)} by profile likelihood in linear theory",
         ]
         for i, letter in enumerate(self.components):
             lines.append(
                 f"  |A_{letter}| < {_pm(self.component[i], self.component_error[i])}; "
-                f"{self.profile_component[i].value:.3e} by profile likelihood"
+                f"{_up(self.profile_component[i])} by profile likelihood"
             )
         if self.outward_radial is not None and self.outward_radial_error is not None:
             lines.append(
                 f"  outward only: A_R < {_pm(self.outward_radial, self.outward_radial_error)}"
             )
         if self.unified_radial is not None:
-            low, high = self.unified_radial.value
-            lines.append(f"  outward only, unified interval: {low:.3e} to {high:.3e}")
+            low = rounded(float(self.unified_radial[0].value), 2, outward="down")
+            high = _up(self.unified_radial[1])
+            lines.append(f"  outward only, unified interval: {low} to {high}")
         if not self.converged:
             lines.append(f"  {self.message}")
         if self.caveat:
@@ -171,7 +173,12 @@ class UpperLimit:
 
 
 def _pm(value: u.Quantity, error: u.Quantity) -> str:
-    return f"{value.value:.3e} +- {error.value:.0e}"
+    """A limit rounded up, with its Monte Carlo error."""
+    return f"{_up(value)} +- {rounded(float(error.value), 1)}"
+
+
+def _up(value: u.Quantity) -> str:
+    return rounded(float(value.value), 2, outward="up")
 
 
 def upper_limit(

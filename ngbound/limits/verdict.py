@@ -30,6 +30,7 @@ from ngbound.limits.information import AU_D2
 from ngbound.limits.posterior import Posterior
 from ngbound.limits.threshold import DetectionThreshold
 from ngbound.limits.upper_limit import UpperLimit, upper_limit
+from ngbound.rounding import percent, rounded, with_error
 
 KINDS = ("detection", "non-detection", "arc cannot tell", "not trustworthy")
 
@@ -173,34 +174,31 @@ def verdict(
                 reasons.append(f"it vanishes under the error model {name} (p = {p_other:.2g})")
         if plausible is not None and size > plausible:
             reasons.append(
-                f"it is larger than the largest plausible acceleration, {plausible:.2e} au/d2"
+                f"it is larger than the largest plausible acceleration, {rounded(plausible)} au/d2"
             )
         kind = "not trustworthy" if reasons else "detection"
     else:
         if plausible is not None and float(threshold.worst.value) > plausible:
             reasons.append(
                 "a thrust in the worst seen direction would have to exceed "
-                f"{threshold.worst.value:.2e} au/d2 to be "
-                f"found, more than the largest plausible acceleration, {plausible:.2e} au/d2"
+                f"{_up(threshold.worst)} au/d2 to be found, more than the largest plausible "
+                f"acceleration, {rounded(plausible)} au/d2"
             )
         kind = "arc cannot tell" if reasons else "non-detection"
 
     numbers = (
-        f"|A| = {size:.2e} +- {error:.1e} au/d2, p = {p_value:.2g} ({sigma:.1f} sigma, {test} "
+        f"|A| = {with_error(size, error)} au/d2, p = {p_value:.2g} ({sigma:.1f} sigma, {test} "
         "test of "
         f"{', '.join(information.components)})"
     )
     found = (
-        f"a thrust in that direction is found with probability {threshold.power:g} from "
-        f"{along.value:.2e} au/d2 on, in "
-        f"any direction from {threshold.worst.value:.2e} on, at the false-alarm rate {alpha:.2g}"
+        f"a thrust in that direction is found with probability {percent(threshold.power)} from "
+        f"{_up(along)} au/d2 on, in any direction from {_up(threshold.worst)} on, at a false-alarm "
+        f"rate of {percent(alpha)}"
     )
     bound = ""
     if isinstance(limit, UpperLimit):
-        bound = (
-            f"; |A| < {limit.magnitude.value:.2e} au/d2 at {100.0 * limit.confidence:g} % "
-            "confidence"
-        )
+        bound = f"; |A| < {_up(limit.magnitude)} au/d2 at {percent(limit.confidence)} confidence"
         if not limit.converged:
             bound += " (from a chain that has not converged)"
     because = f", because {' and '.join(reasons)}" if reasons else ""
@@ -227,6 +225,11 @@ def verdict(
         limit=limit.magnitude if isinstance(limit, UpperLimit) else None,
         confidence=limit.confidence if isinstance(limit, UpperLimit) else None,
     )
+
+
+def _up(value: u.Quantity) -> str:
+    """A threshold or an upper limit, rounded up."""
+    return rounded(float(value.value), 2, outward="up")
 
 
 def _acceleration(value: u.Quantity | float | None) -> float | None:

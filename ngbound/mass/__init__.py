@@ -16,13 +16,17 @@ where they disagree with g by more than two standard deviations.
 Posterior draws of A times independent draws of Q, v and zeta give draws of M. The posterior of A
 reaches zero, so M has no upper bound: the quoted number is the (1 - C) quantile of M, with the
 binomial error of the order statistics. With a quoted limit A_up instead of draws, A is held there;
-then P(M > M_low) >= C + C_A - 1 (Bonferroni). Rates that are upper limits count as zero.
+then P(M > M_low) >= C + C_A - 1 (Bonferroni). Rates that are upper limits count as zero. Where the
+thrust was detected its posterior keeps away from zero, and with every rate at its limit M has an
+upper bound too (`mass_ceiling`).
 
     D = (6 M / (pi rho))^(1/3)                      size of a sphere of bulk density rho
     D_phot = 1329 km 10^(-H/5) / sqrt(p_V)          size from brightness
     rho needed = M / (pi/6 D_phot^3)                what would make the two agree
     D_det, M_det = the same with A_det for A        what this budget would have revealed
     Q_det = M A_det g(r) / (zeta m v)               the rate this arc would have revealed
+    Q_full = pi D^2 Z(r)                            the most a sphere of ice can give (below)
+    D_max : Q_det = Q_full                          beyond it the arc says nothing of outgassing
 
 Variance of ln M is shared out by Sobol's first-order and total indices (M. J. W. Jansen 1999). As
 ln D = (ln M - ln rho + const)/3, the density adds exactly its own variance.

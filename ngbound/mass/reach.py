@@ -26,7 +26,14 @@ from ngbound.rounding import length_text, percent, rounded
 from .distributions import AtMost, Distribution, DistributionSpec, Fixed
 from .notebook import as_columns, as_html
 from .outgassing import MOLAR_MASS_G, Emission, Outgassing, molecule_mass_kg
-from .size import KnownSize, MeasuredDiameter, Photometry, bulk_density, sphere_mass_kg
+from .size import (
+    KnownSize,
+    MeasuredDiameter,
+    Photometry,
+    bulk_density,
+    size_words,
+    sphere_mass_kg,
+)
 from .sublimation import ICES, largest_rate
 
 AU_D2 = u.au / u.day**2
@@ -75,7 +82,7 @@ class RevealedRate:
     def body(self) -> str:
         """Size and density in words."""
         name = self.name or "diameter"
-        return f"{name} {self.diameter} m and bulk density {self.density} kg/m3"
+        return f"{name} {size_words(self.diameter)} and bulk density {self.density} kg/m3"
 
     @property
     def where(self) -> str:

@@ -97,6 +97,14 @@ def _known(name: str, spec: DistributionSpec, example: str, **edges: float) -> t
     return found, unit
 
 
+def size_words(diameter: Distribution) -> str:
+    """A diameter (m) with its errors, these to two digits."""
+    if not isinstance(diameter, SplitNormal):
+        return f"{diameter} m"
+    plus, minus = number_text(diameter.plus, 2), number_text(diameter.minus, 2)
+    return f"{number_text(diameter.value)} +{plus} -{minus} m"
+
+
 def diameter_m(spec: DistributionSpec) -> Distribution:
     """Diameter in m from a spec (default unit m)."""
     found, unit = _known("diameter", spec, '"1 to 2 km"', lower=0.0)

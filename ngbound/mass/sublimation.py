@@ -362,6 +362,7 @@ class ActiveArea:
         Probability that the fraction is above 1; None where rate and diameter are fixed.
     geometry : str
         Of `sublimation`.
+    bond_albedo, emissivity : float
     """
 
     ice: str
@@ -375,7 +376,37 @@ class ActiveArea:
     fraction_low: float | None = None
     fraction_high: float | None = None
     too_large: float | None = None
-    geometry: str = "sphere"
+    geometry: Geometry = "sphere"
+    bond_albedo: float = 0.04
+    emissivity: float = 0.95
+    size_name: str = ""
+
+    @property
+    def assumption(self) -> str:
+        """What the flux rests on."""
+        facing = sublimation(
+            self.ice, self.r_au, bond_albedo=self.bond_albedo, emissivity=self.emissivity
+        )
+        whole = sublimation(
+            self.ice,
+            self.r_au,
+            geometry=self.geometry,
+            bond_albedo=self.bond_albedo,
+            emissivity=self.emissivity,
+        )
+        spread = {
+            "sphere": "spread evenly over a sphere that does not rotate",
+            "isothermal": "spread evenly over a sphere of one temperature",
+            "subsolar": "facing the Sun",
+        }
+        least = rounded(100 * float((whole.flux / facing.flux).value), 2)
+        patch = f"; a patch that always faces the Sun needs {least} % of it"
+        return (
+            f"active surface: pure {self.ice} ice in its own energy balance (Bond albedo "
+            f"{self.bond_albedo:g}, emissivity {self.emissivity:g}; vapour pressure "
+            f"{ICES[self.ice].source}), {spread[self.geometry]}"
+            f"{'' if self.geometry == 'subsolar' else patch}"
+        )
 
     @property
     def flagged(self) -> bool:
@@ -397,7 +428,8 @@ class ActiveArea:
                 low, high = (rounded(100 * x, 2) for x in (self.fraction_low, self.fraction_high))
                 text += f" ({low} to {high} %)"
             size = length_text(float(self.diameter.to_value(u.m)), outward="")
-            text += f" of the surface of a sphere of {size}"
+            name = f"the {self.size_name}, " if self.size_name else ""
+            text += f" of the surface of a sphere of {name}{size}"
             if self.flagged:
                 text += " (more than the whole sphere: the ice must also leave from grains)"
             elif self.too_large is not None and self.too_large > 0.05 and not self.is_limit:
@@ -408,7 +440,7 @@ class ActiveArea:
         return self.sentence()
 
     def _repr_html_(self) -> str:
-        return as_html([self.sentence()])
+        return as_html([self.sentence()], (), [f"assumed: {self.assumption}"])
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able description."""
@@ -431,6 +463,7 @@ class ActiveArea:
             "geometry": self.geometry,
             "diameter_m": None if self.diameter is None else float(self.diameter.to_value(u.m)),
             "source": ICES[self.ice].source,
+            "assumption": self.assumption,
             "sentence": self.sentence(),
         }
 
@@ -466,7 +499,16 @@ def active_area(
     fraction = None
     if diameter is not None:
         fraction = float(area / (math.pi * diameter.to_value(u.m) ** 2))
-    return ActiveArea(ice, r_au, area * u.m**2, fraction, diameter, geometry=geometry)
+    return ActiveArea(
+        ice,
+        r_au,
+        area * u.m**2,
+        fraction,
+        diameter,
+        geometry=geometry,
+        bond_albedo=bond_albedo,
+        emissivity=emissivity,
+    )
 
 
 def sublimation_law(
@@ -554,6 +596,8 @@ def active_areas(
         )
         areas = rates * (one.area / float(np.median(rates)))
         fractions = None if diameters is None else areas.value / (math.pi * diameters**2)
+        if size is not None:
+            one = replace(one, size_name=size.name)
         found.append(_with_spread(one, areas, fractions, is_limit))
     return tuple(found)
 

@@ -734,12 +734,14 @@ def _write_mass(page: _Page, record: Mapping[str, Any]) -> None:
     for one in mass.get("law_checks") or ():
         page.item(f"rates against the thrust law: {one['sentence']}.")
     for one in record.get("law_departures") or ():
-        page.item(f"thrust law against sublimation: {one['sentence']}")
+        told = str(one["sentence"])
+        page.item(f"thrust law against sublimation: {told[0].lower()}{told[1:]}")
     for one in record.get("active_areas") or ():
         page.item(f"active surface: {one['sentence']}")
     for text in remarks:
         page.item(str(text))
-    for text in mass.get("assumptions") or ():
+    areas = [str(one["assumption"]) for one in record.get("active_areas") or ()]
+    for text in dict.fromkeys([*(mass.get("assumptions") or ()), *areas]):
         page.item(f"assumed: {text}")
     _write_reach(page, record.get("reach") or {}, mass.get("assumptions") or ())
     _write_radiation(page, record.get("radiation") or {})
