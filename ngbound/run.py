@@ -601,7 +601,7 @@ def compose_record(
         "provenance": provenance(inputs),
         "timings_s": seconds,
     }
-    return Record({"sentence": bounds.sentence(weighed.bound), **data})
+    return Record({"sentence": bounds.sentence(weighed.bound, weighed.ceiling), **data})
 
 
 def write_results(
@@ -734,7 +734,7 @@ class Bounds:
             "error_variants": None if self.variation is None else self.variation.to_dict(),
         }
 
-    def sentence(self, mass: MassBound | None = None) -> str:
+    def sentence(self, mass: MassBound | None = None, ceiling: MassCeiling | None = None) -> str:
         """The sentence the program exists to write."""
         arc = summary_of(self.fits)
         judged, threshold, limit = self.judged, self.threshold.to_dict(), self.limit.to_dict()
@@ -764,6 +764,8 @@ class Bounds:
             mass_kg=None if mass is None else float(mass.mass.value),
             diameter_m=None if mass is None else float(mass.diameter.value),
             mass_confidence=None if mass is None else mass.confidence,
+            mass_below_kg=None if ceiling is None else float(ceiling.mass.value),
+            diameter_below_m=None if ceiling is None else float(ceiling.diameter.value),
         )
 
 
@@ -796,24 +798,27 @@ class Weighed:
     remarks: tuple[str, ...]
 
     def found(self) -> dict[str, Any]:
-        """The results under the keys of the record."""
-        return {
+        """The results under the keys of the record, JSON-able."""
+        single = {
             "mass": self.bound,
             "mass_ceiling": self.ceiling,
             "reach": self.reach,
             "radiation": self.radiation,
-            "active_areas": list(self.active),
-            "law_departures": list(self.departures),
+        }
+        return {
+            **{key: None if one is None else one.to_dict() for key, one in single.items()},
+            "active_areas": [one.to_dict() for one in self.active],
+            "law_departures": [one.to_dict() for one in self.departures],
             "mass_remarks": list(self.remarks),
         }
 
     def to_dict(self) -> dict[str, Any]:
         """Object and results; those of the mass bound stand at the top."""
-        whole = Record({"object": self.fits.arc.name, **self.found()}).data
+        whole = {"object": self.fits.arc.name, **self.found()}
         return {**(whole.pop("mass") or {}), **whole}
 
     def __str__(self) -> str:
-        return render_mass(Record(self.found()).data)
+        return render_mass(self.found())
 
     def _repr_html_(self) -> str:
         parts = (self.bound, self.ceiling, self.reach, self.radiation, *self.active)

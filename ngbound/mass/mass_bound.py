@@ -361,9 +361,9 @@ def _with_measured_rates(outgassing: Outgassing) -> Outgassing:
     if not measured:
         raise MassError(
             "Every rate of the budget is an upper limit, so that no mass is excluded from below: a "
-            "body of any mass could have given less gas. Give a measured rate of at least one "
-            "species; or ask which rate this arc would have revealed ([reach], `reach`); a thrust "
-            "that was detected bounds the mass from above (`mass_ceiling`)."
+            "body of any mass could have given less gas. A measured rate of at least one species "
+            "would give a lower bound; the reach of the arc tells which rate it would have "
+            "revealed, and a thrust that was detected bounds the mass from above."
         )
     return Outgassing(measured)
 

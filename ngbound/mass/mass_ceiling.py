@@ -181,7 +181,7 @@ def mass_ceiling(
         max(0.0, confidence - sum(1.0 - c for c in quoted)),
         float(np.quantile(acceleration.magnitudes, 1 - confidence)) * AU_D2,
         bulk,
-        tuple(f"{e.species} {e.rate} {e.rate_unit} at {e.at_au:g} au" for e in limits),
+        tuple(f"{e.species} {e.rate_words} at {e.at_au:g} au" for e in limits),
         n,
         photometry,
         allowed,

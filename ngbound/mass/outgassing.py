@@ -245,9 +245,17 @@ class Emission:
             return f"{median} m/s */ {self.speed.factor:g} ({self.speed.name} law)"
         return f"{self.speed} m/s"
 
+    @property
+    def rate_words(self) -> str:
+        """The rate with its uncertainty, its unit and, of an upper limit, its confidence."""
+        if isinstance(self.rate, AtMost) and self.rate.confidence is not None:
+            limit = AtMost(self.rate.limit)
+            return f"{limit} {self.rate_unit} ({100 * self.rate.confidence:g} %)"
+        return f"{self.rate} {self.rate_unit}"
+
     def __str__(self) -> str:
         return (
-            f"{self.species}: {self.rate} {self.rate_unit} at {self.at_au:g} au, speed "
+            f"{self.species}: {self.rate_words} at {self.at_au:g} au, speed "
             f"{self.speed_words}, collimation {self.collimation}"
         )
 

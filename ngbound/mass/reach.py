@@ -491,7 +491,7 @@ def reach(
         for k, (row, emission) in enumerate(zip(rows, reversed(probes.values()), strict=True)):
             rows[k] = replace(
                 row,
-                measured=f"{emission.rate} {emission.rate_unit}",
+                measured=emission.rate_words,
                 measured_rate=_measured(emission, row.unit),
             )
     asked = Outgassing([replace(e, rate=Fixed(1.0)) for e in outgassing.emissions])

@@ -80,6 +80,8 @@ def the_sentence(
     mass_kg: float | None = None,
     diameter_m: float | None = None,
     mass_confidence: float | None = None,
+    mass_below_kg: float | None = None,
+    diameter_below_m: float | None = None,
 ) -> str:
     """The sentence the program exists to write; what is not known leaves no gap.
 
@@ -110,6 +112,8 @@ def the_sentence(
         The outgassing in words, "a mass-loss rate of ... and a collimation of ...".
     mass_kg, diameter_m, mass_confidence : float
         Lower bounds.
+    mass_below_kg, diameter_below_m : float
+        Upper bounds, where a thrust was detected.
 
     Notes
     -----
@@ -151,6 +155,12 @@ def the_sentence(
         parts.append(text[0].upper() + text[1:] + ".")
     mass = _mass(budget, mass_kg, diameter_m, mass_confidence, confidence)
     parts += [mass] if mass else []
+    if is_number(mass_below_kg) and is_number(diameter_below_m):
+        parts.append(
+            f"If nothing but the outgassing given pushes, the mass is below "
+            f"{mass_text(mass_below_kg, outward='up')}, the diameter below "
+            f"{length_text(diameter_below_m, outward='up')}."
+        )
     return " ".join(parts)
 
 
@@ -252,6 +262,7 @@ def sentence_of(record: Mapping[str, Any]) -> str:
     arc, fits = record.get("arc") or {}, record.get("fits") or {}
     threshold, limit = record.get("threshold") or {}, record.get("limit") or {}
     judged, mass = record.get("verdict") or {}, record.get("mass") or {}
+    ceiling = record.get("mass_ceiling") or {}
     null = fits.get("null") or {}
     return the_sentence(
         name=str(record.get("object") or "the object"),
@@ -279,6 +290,8 @@ def sentence_of(record: Mapping[str, Any]) -> str:
         mass_kg=mass.get("mass_kg"),
         diameter_m=mass.get("diameter_m"),
         mass_confidence=mass.get("confidence"),
+        mass_below_kg=ceiling.get("mass_kg"),
+        diameter_below_m=ceiling.get("diameter_m"),
     )
 
 

@@ -2,12 +2,26 @@
 
 import re
 
+import numpy as np
 import pytest
 
+from ngbound.errors import NgboundWarning
 from ngbound.limits import detection_threshold, upper_limit, verdict
+from ngbound.mass import (
+    Outgassing,
+    Photometry,
+    active_areas,
+    area_to_mass,
+    law_departures,
+    mass_bound,
+    mass_ceiling,
+    reach,
+)
+from ngbound.motion import Thrust
 from ngbound.report import (
     Record,
     provenance,
+    render_mass,
     render_report,
     residual_suspicions,
     station_table,
@@ -198,3 +212,57 @@ def test_an_empty_record_still_makes_a_report():
 def test_suspicions_are_told_under_the_verdict():
     text = render_report({**whole_record(), "suspicions": ["The 99 records of station 500 lie."]})
     assert text.index("Verdict") < text.index("station 500 lie") < text.index("Fits")
+
+
+def test_an_upper_mass_is_said_where_a_thrust_was_detected():
+    told = the_sentence(**QUIET, mass_below_kg=3.91e12, diameter_below_m=2412.0)
+    clean(told)
+    assert told.endswith("the mass is below 4.0e12 kg, the diameter below 2.5 km.")
+
+
+def test_the_mass_half_of_the_report_holds_all_that_was_found():
+    budget = Outgassing(["(4 +- 0.4)e27 1/s", "(4 +- 0.4)e27 1/s"], None, 0.5, [1.0, 2.0])
+    draws = 1e-8 * np.exp(0.1 * np.random.default_rng(0).standard_normal(4000))
+    size = Photometry("17.4 +- 0.2", 0.04)
+    g = Thrust("inverse-square").g
+    with pytest.warns(NgboundWarning):
+        bound = mass_bound(draws, budget, g_at=g, photometry=size)
+        ceiling = mass_ceiling(draws, budget, g_at=g)
+        departures = law_departures(budget, g, np.array([1.0, 3.0]))
+    record = Record(
+        {
+            "mass": bound,
+            "mass_ceiling": ceiling,
+            "reach": reach(3e-9, g_at=g, outgassing=budget, size=size),
+            "radiation": area_to_mass(1e-9, confidence=0.95, density=500.0),
+            "active_areas": active_areas(budget, diameter=size),
+            "law_departures": departures,
+            "mass_remarks": ["This does not follow."],
+        }
+    ).data
+    text = render_mass(record)
+    flat = " ".join(text.split())
+    for words in (
+        bound.sentence(),
+        ceiling.sentence(),
+        "rates against the thrust law: H2O: force / g(r) at 2 au",
+        "active surface: H2O at 1 au needs at least",
+        "thrust law against sublimation: at 3 au",
+        "This does not follow.",
+        "If sunlight pushes",
+        "A body of photometric diameter",
+    ):
+        assert words in flat
+    # every input of the variance decomposition has its line, each assumption stands once
+    for share in bound.inputs:
+        assert any(line.strip().startswith(share.name) for line in text.splitlines())
+    assert flat.count("A. H. Delsemme 1982") == 1
+    titles = ["Mass and size", "Reach: the outgassing this arc would have revealed"]
+    assert [line for line in text.splitlines() if line in titles] == titles
+
+
+def test_several_tables_of_a_case_are_listed_key_by_key():
+    choices = {"outgassing": [{"species": "H2O", "at": 1.2}, {"species": "CO", "at": 2.0}]}
+    text = render_report({"choices": choices})
+    assert "outgassing.1.species  H2O" in text and "outgassing.2.at       2" in text
+    assert "{" not in text

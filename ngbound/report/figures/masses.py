@@ -76,6 +76,11 @@ def _draw_mass(ax: Axes, draws: np.ndarray, bound: Any, ceiling: Any) -> None:
     left = min(left, np.log10(low_kg) - 0.15)
     high_kg = 10.0**right if ceiling is None else float(ceiling.mass.to_value(u.kg))
     right = max(right, np.log10(high_kg) + (0.0 if ceiling is None else 0.15))
+    detection = getattr(bound, "mass_detection", None)
+    if detection is not None:
+        seen = np.log10(float(detection.to_value(u.kg)))
+        if left < seen < np.log10(low_kg):  # room for its words on the left of its line
+            left = min(left, seen - 0.22 * (right - seen))
     edges = np.linspace(left, right, 61)
     count, _ = np.histogram(logs, edges, density=True)
     middle = 0.5 * (edges[1:] + edges[:-1])
@@ -115,7 +120,6 @@ def _draw_mass(ax: Axes, draws: np.ndarray, bound: Any, ceiling: Any) -> None:
         fontsize=7.0,
         color=style.VERMILION,
     )
-    detection = getattr(bound, "mass_detection", None)
     if detection is not None:
         at = float(detection.to_value(u.kg))
         if 10.0**left < at < 10.0**right:
