@@ -157,6 +157,13 @@ class ErrorsTable(Table):
         default=ErrorModel.photocentre_arcsec_au,
         description="Prior of the photocentre's offset towards the Sun, at 1 au.",
     )
+    radius_km: float | None = Field(
+        default=ErrorModel.radius_km,
+        description="Radius by which radar delays to the surface are referred to the centre.",
+    )
+    radius_sigma_km: float | None = Field(
+        default=ErrorModel.radius_sigma_km, description="Its error; a fifth of it by default."
+    )
     rescale_stations: bool | None = Field(
         default=ErrorModel.rescale_stations,
         description="Whether the arc rescales the errors of stations with enough records.",

@@ -75,6 +75,7 @@ from ngbound.report import (
     budget_words,
     catalogue_table,
     direction_map,
+    echo_table,
     mass_figure,
     posterior_figure,
     prior_name,
@@ -132,6 +133,7 @@ def run_case(path: str | Path, *, progress: bool = False, **choices: Any) -> Rec
         station_table(fits.push),
         catalogue_table(fits.null),
         catalogue_table(fits.push),
+        *([echo_table(fits.null), echo_table(fits.push)] if fits.push.echo_summary else []),
         *([variant_table(bounds)] if bounds.variation else []),
         fits.push.error_report,
         str(bounds.diagnostics),
@@ -145,8 +147,8 @@ def run_case(path: str | Path, *, progress: bool = False, **choices: Any) -> Rec
 def inspect_case(path: str | Path, *, progress: bool = False, **choices: Any) -> "Inspection":
     """What is in an arc at a glance, before any orbit."""
     case = case_for(path, **choices)
-    arc = read_the_arc(case, Steps(progress))
     model = case.errors.error_model()
+    arc = model.usable(read_the_arc(case, Steps(progress)))
     used = model.corrected(arc.used)
     return Inspection(survey(arc), model.apply(used), model.catalogue_treatments(used))
 
@@ -688,6 +690,7 @@ class Fits:
                 str(self.comparison),
                 str(station_table(self.push)),
                 str(catalogue_table(self.push)),
+                *([str(echo_table(self.push))] if self.push.echo_summary else []),
             ]
         )
 

@@ -441,7 +441,8 @@ class Checker:
         on_earth = np.isin(system, ON_EARTH) if system is not self.blank else self.never
         in_space = np.isin(system, IN_SPACE) if system is not self.blank else self.never
         site = np.full(self.n, "fixed", dtype=object)
-        names = ("trx", "rcv", "stn") if RADAR in self.kinds else ("stn",)
+        names = ("stn", "trx", "rcv") if RADAR in self.kinds else ("stn",)
+        radar = self.of_kind(RADAR)
         for column in names:
             if column not in columns:
                 continue
@@ -454,6 +455,10 @@ class Checker:
                 of_record[in_space] = "space"
                 lost = of_record == "unknown"
                 site = of_record
+            else:
+                # an echo stands where its less settled end does
+                moving = radar & np.isin(of_record, ("roving", "space"))
+                site[moving] = of_record[moving]
             if lost.any():
                 row = int(np.argmax(lost))
                 code = str(self.text(column)[row])

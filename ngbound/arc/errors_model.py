@@ -19,7 +19,7 @@ for the mean of the night) and is the default.
 """
 
 import csv
-from dataclasses import asdict, dataclass
+from dataclasses import asdict, dataclass, replace
 from functools import cached_property, lru_cache
 from importlib.resources import files
 from typing import Any
@@ -27,11 +27,13 @@ from typing import Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
+from ngbound.arc.ades_rules import RADAR
 from ngbound.arc.catalogue_offsets import catalogue_offsets, catalogue_treatment
 from ngbound.arc.debiasing import debiased
 from ngbound.arc.fields import civil_day
 from ngbound.arc.instrument_offsets import photocentre_offset, station_clocks, station_offsets
 from ngbound.arc.observations import Arc
+from ngbound.arc.radar_centre import RADIUS_FRACTION, radius_error, referred_to_centre
 from ngbound.arc.shared_errors import Modes, SharedErrors, joined
 from ngbound.constants import ARCSEC_RAD
 from ngbound.errors import ArcError, CaseError
@@ -50,10 +52,17 @@ COMMON_FRACTION = 0.5
 """Common part of the night as a fraction of an implied sigma."""
 STATION_FRACTION = 0.2
 """Offset of a station over the whole arc as a fraction of an implied sigma (from memory)."""
-OPTIONAL = ("uniform_before_1996_arcsec", "night_common_arcsec", "station_offset_arcsec")
+OPTIONAL = (
+    "uniform_before_1996_arcsec",
+    "night_common_arcsec",
+    "station_offset_arcsec",
+    "radius_km",
+    "radius_sigma_km",
+)
 TOO_MANY = 4
 """Observations of a station-night from which the sqrt(N/4) rule counts (Veres et al. 2017, from
 memory)."""
+RADAR_SOURCE = "radar, stated"
 JANUARY_1996 = 50083
 """MJD of 1996-01-01."""
 
@@ -156,6 +165,9 @@ class Noise:
     shared : SharedErrors, optional
         Errors that observations of many nights share; not in the sigmas above, but in the
         whitening.
+    there : ndarray (n, 2) of bool, optional
+        Which of its two numbers an observation has; both when absent. A radar echo has one, in the
+        unit of `ngbound.motion.echoes`: its sigma is 1 arcsec.
     """
 
     sigma_ra_arcsec: FloatArray
@@ -165,9 +177,68 @@ class Noise:
     night: IntArray
     source: NDArray[np.object_]
     shared: SharedErrors | None = None
+    there: NDArray[np.bool_] | None = None
 
     def __len__(self) -> int:
         return len(self.sigma_ra_arcsec)
+
+    @property
+    def given(self) -> NDArray[np.bool_]:
+        """(n, 2) which numbers there are."""
+        return np.ones((len(self), 2), dtype=bool) if self.there is None else self.there
+
+    @property
+    def count(self) -> IntArray:
+        """Numbers (n,) of each observation: 2, of a radar echo 1."""
+        return np.asarray(self.given.sum(axis=1))
+
+    @property
+    def optical(self) -> NDArray[np.bool_]:
+        """(n,) where the observation is a direction, not an echo."""
+        return np.asarray(self.given.all(axis=1))
+
+    def with_echoes(
+        self, optical: NDArray[np.bool_], there: NDArray[np.bool_], night: IntArray, scale: float
+    ) -> "Noise":
+        """This noise of the directions and that of radar echoes among them, which share no error.
+
+        Parameters
+        ----------
+        optical : (n,) bool
+            Which of n observations are those of this noise.
+        there : (n - m, 2) bool
+            Which number each echo has.
+        night : (n - m,) int
+            Of the echoes, counted from 0.
+        scale : float
+            Standard deviation of an echo in stated ones.
+        """
+        n = len(optical)
+
+        def spread(values: NDArray[Any], rest: Any) -> NDArray[Any]:
+            out = np.full(n, rest, dtype=values.dtype)
+            out[optical] = values
+            return out
+
+        nights = spread(self.night, 0)
+        nights[~optical] = night + self.night.max(initial=-1) + 1
+        given = np.ones((n, 2), dtype=bool)
+        given[~optical] = there
+        shared = self.shared
+        if shared is not None:
+            matrix = np.zeros((n, 2, len(shared)))
+            matrix[optical] = shared.matrix.reshape(-1, 2, len(shared))
+            shared = replace(shared, matrix=matrix.reshape(2 * n, len(shared)))
+        return Noise(
+            spread(self.sigma_ra_arcsec, scale),
+            spread(self.sigma_dec_arcsec, scale),
+            spread(self.corr, 0.0),
+            spread(self.night_common_arcsec, 0.0),
+            nights,
+            spread(self.source, RADAR_SOURCE),
+            shared,
+            given,
+        )
 
     def covariance_rad2(self, rows: IntArray) -> FloatArray:
         """Dense covariance (..., 2m, 2m) in rad^2 of some observations (..., m), interleaved; zero
@@ -293,6 +364,7 @@ class Noise:
             night.astype(np.int64),
             self.source[keep],
             None if self.shared is None else self.shared.rows(keep),
+            None if self.there is None else self.there[keep],
         )
 
     def scaled(self, f: ArrayLike) -> "Noise":
@@ -308,6 +380,7 @@ class Noise:
             self.night,
             self.source,
             self.shared,
+            self.there,
         )
 
     def with_parts_scaled(self, random: ArrayLike, common: ArrayLike) -> "Noise":
@@ -319,7 +392,7 @@ class Noise:
         ra = np.sqrt(f**2 * (self.sigma_ra_arcsec**2 - old2) + shared2)
         dec = np.sqrt(f**2 * (self.sigma_dec_arcsec**2 - old2) + shared2)
         corr = self.corr * f**2 * self.sigma_ra_arcsec * self.sigma_dec_arcsec / (ra * dec)
-        return Noise(ra, dec, corr, new_common, self.night, self.source, self.shared)
+        return Noise(ra, dec, corr, new_common, self.night, self.source, self.shared, self.there)
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able summary: counts by source with the median sigma of each."""
@@ -337,12 +410,14 @@ class Noise:
     def __str__(self) -> str:
         told = self.to_dict()
         lines = [f"Errors of {told['n']} observations in {told['n_nights']} station-nights:"]
-        lines += [
-            f"  {v['n']:6d}  {v['median_sigma_ra_arcsec']:.3f} x "
-            f"{v['median_sigma_dec_arcsec']:.3f} arcsec, "
-            f"common {v['median_night_common_arcsec']:.3f}  {k}"
-            for k, v in told["sources"].items()
-        ]
+        for k, v in told["sources"].items():
+            size = (
+                f"{v['median_sigma_ra_arcsec']:.3f} stated sigma"
+                if k == RADAR_SOURCE
+                else f"{v['median_sigma_ra_arcsec']:.3f} x {v['median_sigma_dec_arcsec']:.3f} "
+                f"arcsec, common {v['median_night_common_arcsec']:.3f}"
+            )
+            lines.append(f"  {v['n']:6d}  {size}  {k}")
         return "\n".join(lines)
 
 
@@ -362,7 +437,7 @@ class ErrorModel:
     floor_arcsec : float
         No sigma is taken smaller than this.
     scale : float
-        Factor on all errors, at the end.
+        Factor on all errors, at the end; that of radar echoes, otherwise as stated, included.
     night_common_arcsec : float, optional
         Common error of each station-night, added to the rest. None: nothing where sigma is stated
         or uniform, half of sigma (taken out of it) where it is implied by the table and
@@ -392,6 +467,11 @@ class ErrorModel:
     photocentre_arcsec_au : float
         Prior standard deviation of the photocentre's offset along the direction to the Sun, arcsec
         at 1 au; 0 for none.
+    radius_km : float, optional
+        Radius of the body, by which radar delays to its surface are referred to its centre; None:
+        they are set aside.
+    radius_sigma_km : float, optional
+        Prior standard deviation of its error, which those delays share. None: a fifth of it.
     rescale_stations : bool, optional
         Whether a fit rescales the errors of stations that have enough records. None: those that
         come from the table, but neither stated nor uniform ones; True: all; False: none.
@@ -417,6 +497,8 @@ class ErrorModel:
     station_offset_arcsec: float | None = None
     clock_s: float = 0.0
     photocentre_arcsec_au: float = 0.0
+    radius_km: float | None = None
+    radius_sigma_km: float | None = None
     rescale_stations: bool | None = None
     rescale_least: int = 20
     student: bool = True
@@ -441,6 +523,8 @@ class ErrorModel:
             "station_offset_arcsec": (0.0, False),
             "clock_s": (0.0, False),
             "photocentre_arcsec_au": (0.0, False),
+            "radius_km": (0.0, True),
+            "radius_sigma_km": (0.0, True),
             "rescale_least": (2, False),
         }
         for name, (low, is_open) in limits.items():
@@ -467,7 +551,7 @@ class ErrorModel:
     def rescalable(self, noise: Noise) -> NDArray[np.bool_]:
         """Observations (n,) whose errors a fit may rescale."""
         if self.rescale_stations is not None:
-            return np.full(len(noise), self.rescale_stations)
+            return noise.optical & self.rescale_stations
         return np.array([str(label).startswith("table") for label in noise.source], dtype=bool)
 
     @property
@@ -475,6 +559,11 @@ class ErrorModel:
         return (
             self.scheme != "uniform" if self.catalogue_offsets is None else self.catalogue_offsets
         )
+
+    def usable(self, arc: Arc) -> Arc:
+        """The arc with its radar delays referred to the body's centre, where ``radius_km`` allows
+        it."""
+        return arc if self.radius_km is None else referred_to_centre(arc, self.radius_km)
 
     def corrected(self, arc: Arc) -> Arc:
         """The arc with the offsets of its catalogues taken out, where ``debiasing`` names a table.
@@ -538,6 +627,14 @@ class ErrorModel:
         """
         table = arc_used.table
         n = len(table)
+        optical = (table["kind"] != RADAR).to_numpy(dtype=bool)
+        if not optical.all():
+            return self._with_echoes(
+                arc_used,
+                optical,
+                _pairs(motion_arcsec_s, n, "motion_arcsec_s"),
+                _pairs(sunward_per_au, n, "sunward_per_au"),
+            )
         night = station_nights(arc_used)
         ra, dec, stated_ra, stated_dec, source = self._sigmas(arc_used)
         implied = ~stated_ra & ~stated_dec & (self.scheme != "uniform")
@@ -592,6 +689,36 @@ class ErrorModel:
                 _pairs(sunward_per_au, n, "sunward_per_au"),
             ),
         )
+
+    def _with_echoes(
+        self,
+        arc: Arc,
+        optical: NDArray[np.bool_],
+        motion_arcsec_s: FloatArray | None,
+        sunward_per_au: FloatArray | None,
+    ) -> Noise:
+        """The noise of the directions as if alone, and that of the echoes beside it."""
+        motion, sunward = (
+            None if pairs is None else pairs[optical] for pairs in (motion_arcsec_s, sunward_per_au)
+        )
+        echoes = arc.select(~optical)
+        there = np.stack(
+            [
+                np.isfinite(echoes.table[name].to_numpy(dtype=float))
+                if name in echoes.table
+                else np.zeros(len(echoes), dtype=bool)
+                for name in ("delay", "doppler")
+            ],
+            axis=1,
+        )
+        noise = self.apply(arc.select(optical), motion, sunward).with_echoes(
+            optical, there, station_nights(echoes), self.scale
+        )
+        if self.radius_km is None:
+            return noise
+        sigma_km = self.radius_sigma_km or RADIUS_FRACTION * self.radius_km
+        parts = [part for part in (noise.shared, radius_error(arc, sigma_km)) if part is not None]
+        return replace(noise, shared=joined(parts))
 
     def _sigmas(
         self, arc: Arc

@@ -93,7 +93,12 @@ BIAS_COLUMNS = ("bias_ra_arcsec", "bias_dec_arcsec")
 """Columns of an arc corrected for the offsets of its star catalogues: what was subtracted (RA times
 cos dec); nan where nothing was."""
 
-REASON_RADAR = "radar is not used in fits yet"
+REASON_MOVING_RADAR = "a radar record of a {site} station, whose position it cannot give"
+REASON_LEADING_EDGE = (
+    "a delay to the point of strongest echo, one radius nearer than the centre of mass; "
+    "radius_km of the error model makes it usable"
+)
+REASON_NO_ECHO = "the radar record gives no delay or Doppler shift with its error"
 REASON_OFFSET = "an offset from another body, not reduced to a position"
 REASON_RESIDUAL = "a residual record holds no observed position"
 REASON_DEPRECATED = "marked as deprecated"
@@ -148,8 +153,12 @@ class Arc:
 
     @property
     def used(self) -> "Arc":
-        """The records that a fit can use, sorted by time (stable), with a fresh index."""
+        """The records that a fit can use, sorted by time (stable), with a fresh index; ``stn`` of
+        a radar record is its receiver, where and when it was timed."""
         kept = self.table[self.table["use"].to_numpy(dtype=bool)]
+        radar = (kept["kind"] == RADAR).to_numpy(dtype=bool)
+        if radar.any():
+            kept = kept.assign(stn=np.where(radar, kept["rcv"], kept["stn"]))
         kept = kept.sort_values(["utc_day", "utc_sec"], kind="stable").reset_index(drop=True)
         return replace(self, table=kept)
 
@@ -178,6 +187,9 @@ class Arc:
     def to_dict(self) -> dict[str, Any]:
         """JSON-able summary of the arc."""
         table = self.table
+        stations = table["stn"]
+        if "rcv" in table:
+            stations = stations.where(stations != "", table["rcv"])
         days = table["utc_day"].to_numpy()
         aside = table.loc[~table["use"].to_numpy(dtype=bool), "why_not"]
         return {
@@ -187,7 +199,7 @@ class Arc:
             "n_usable": int(table["use"].sum()),
             "set_aside": {str(k): int(v) for k, v in aside.value_counts().items()},
             "kinds": {str(k): int(v) for k, v in table["kind"].value_counts().items()},
-            "stations": {str(k): int(v) for k, v in table["stn"].value_counts().items() if k},
+            "stations": {str(k): int(v) for k, v in stations.value_counts().items() if k},
             "catalogues": {str(k): int(v) for k, v in table["astCat"].value_counts().items() if k},
             "modes": {str(k): int(v) for k, v in table["mode"].value_counts().items() if k},
             "first_day": iso_day(int(days.min())) if len(days) else None,
@@ -506,16 +518,23 @@ def _why_not(records: Records, columns: Mapping[str, Any], checker: Checker) -> 
             why[mask] = reason
             free[mask] = False
 
-    set_aside(checker.of_kind(RADAR), REASON_RADAR)
     set_aside(checker.of_kind(OFFSET), REASON_OFFSET)
     residual = checker.of_kind(OPTICAL_RESIDUAL) | checker.of_kind(RADAR_RESIDUAL)
     set_aside(residual, REASON_RESIDUAL)
     set_aside(checker.filled("deprecated"), REASON_DEPRECATED)
     day, (first, last) = columns["utc_day"], EPHEMERIS_MJD
     set_aside((day < first + LIGHT_TIME_D) | (day > last - LIGHT_TIME_D), REASON_EPHEMERIS)
-    lost = ~(np.isfinite(columns["ra_rad"]) & np.isfinite(columns["dec_rad"]))
-    set_aside(lost, REASON_NO_ANGLES)
     site = columns["site"]
+    radar = checker.of_kind(RADAR)
+    if radar.any():
+        for kind in ("roving", "space"):
+            set_aside(radar & (site == kind), REASON_MOVING_RADAR.format(site=kind))
+        delay, doppler = (_echo_given(columns, name) for name in ("delay", "doppler"))
+        set_aside(radar & ~(delay | doppler), REASON_NO_ECHO)
+        edge = np.asarray(columns["com"] == 0) if "com" in columns else ~radar
+        set_aside(radar & edge & delay, REASON_LEADING_EDGE)
+    lost = ~(np.isfinite(columns["ra_rad"]) & np.isfinite(columns["dec_rad"]))
+    set_aside(lost & ~radar, REASON_NO_ANGLES)
     moving = np.asarray(site != "fixed", dtype=bool)
     if not moving.any():
         return why
@@ -531,6 +550,13 @@ def _why_not(records: Records, columns: Mapping[str, Any], checker: Checker) -> 
     elsewhere = np.isfinite(columns["ctr"]) & (columns["ctr"] != EARTH_CENTRE)
     set_aside(moving & elsewhere, REASON_CENTRE)
     return why
+
+
+def _echo_given(columns: Mapping[str, Any], name: str) -> NDArray[np.bool_]:
+    """Where a delay or a Doppler shift stands beside a positive error."""
+    nan = np.full(len(columns["site"]), np.nan)
+    error = columns.get("rms" + name.capitalize(), nan)
+    return np.asarray(np.isfinite(columns.get(name, nan)) & np.isfinite(error) & (error > 0.0))
 
 
 def _one_object(arc: Arc, wanted: str | None) -> Arc:

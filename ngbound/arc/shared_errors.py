@@ -41,7 +41,7 @@ class SharedErrors:
     sigma : ndarray (k,)
         That standard deviation, in ``unit``.
     unit : tuple of str, (k,)
-        "arcsec" or "s" or "arcsec au".
+        "arcsec", "s", "arcsec au" or "km".
     source : tuple of str, (k,)
         Where the prior comes from.
     """

@@ -141,10 +141,16 @@ def survey(arc: Arc) -> Survey:
         ("digits time", "digits_time_s", "s"),
     ):
         _put(errors, title, table[column].to_numpy(dtype=float), unit)
+    for title, column, unit in (
+        ("stated delay", "rmsDelay", "microseconds"),
+        ("stated Doppler", "rmsDoppler", "Hz"),
+    ):
+        if column in table:
+            _put(errors, title, table[column].to_numpy(dtype=float), unit)
     if len(used):
         noise = ErrorModel().apply(used)
-        _put(errors, "assigned RA", noise.sigma_ra_arcsec, "arcsec")
-        _put(errors, "assigned Dec", noise.sigma_dec_arcsec, "arcsec")
+        _put(errors, "assigned RA", noise.sigma_ra_arcsec[noise.optical], "arcsec")
+        _put(errors, "assigned Dec", noise.sigma_dec_arcsec[noise.optical], "arcsec")
     magnitude: dict[str, Range] = {}
     _put(magnitude, "mag", table["mag"].to_numpy(dtype=float), "mag", positive=False)
     return Survey(

@@ -9,6 +9,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from ngbound.arc.ades_rules import RADAR
 from ngbound.arc.errors_model import station_nights
 from ngbound.arc.misplaced import misread, second_tracks
 from ngbound.arc.observations import Arc, counted
@@ -74,6 +75,12 @@ def vet(arc: Arc) -> list[Finding]:
         )
     if len(rows) == 0:
         return findings
+    radar = (table["kind"] == RADAR).to_numpy(dtype=bool)[rows]
+    findings.extend(_echoes_twice(arc, rows[radar]))
+    # what follows is about directions
+    rows = rows[~radar]
+    if len(rows) == 0:
+        return findings
     used = arc.select(rows)
     t = used.table
     time = t["utc_day"].to_numpy() + t["utc_sec"].to_numpy() / 86400.0
@@ -87,7 +94,7 @@ def vet(arc: Arc) -> list[Finding]:
             Finding(
                 (),
                 "single-station",
-                f"all {len(rows)} observations come from station {codes[0]}: an error of its clock "
+                f"all {len(rows)} directions come from station {codes[0]}: an error of its clock "
                 "or catalogue cannot be "
                 "told from a thrust.",
             )
@@ -188,6 +195,30 @@ def _duplicates(arc: Arc, rows: NDArray[np.int64], time: NDArray[np.float64]) ->
                         "the thrust's error comes out too small.",
                     )
                 )
+    return found
+
+
+def _echoes_twice(arc: Arc, rows: NDArray[np.int64]) -> list[Finding]:
+    """Echoes of one pair of stations and one instant that are both delays or both Doppler
+    shifts."""
+    seen: dict[tuple[Any, ...], int] = {}
+    found = []
+    for row in rows.tolist():
+        record = arc.table.iloc[row]
+        is_delay = bool(np.isfinite(record.get("delay", np.nan)))
+        time = (int(record["utc_day"]), float(record["utc_sec"]))
+        first = seen.setdefault((record["trx"], record["rcv"], *time, is_delay), row)
+        if first != row:
+            lines = f"lines {arc.table['line'].iloc[first]} and {record['line']}"
+            found.append(
+                Finding(
+                    (first, row),
+                    "exact-duplicate",
+                    f"{lines} are {'delays' if is_delay else 'Doppler shifts'} of one echo "
+                    f"(stations {record['trx']} and {record['rcv']}): it would count twice, and "
+                    "the thrust's error come out too small.",
+                )
+            )
     return found
 
 

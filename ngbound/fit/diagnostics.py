@@ -7,6 +7,10 @@ residuals (the mean of a night, of a station) then has the standard normal value
 
     z = w' e / sqrt(w' (I - H) w).
 
+The means of a group in RA and in Dec are, of radar echoes, those of delay and Doppler shift, over
+their stated errors; a number that an echo does not have counts nowhere. Whiteness and the groups of
+catalogues and seasons are of directions alone.
+
 Whiteness of the night means in order of time: the runs of their signs (A. Wald & J. Wolfowitz 1940,
 Ann. Math. Statist. 11, 147) and their autocorrelation (G. M. Ljung & G. E. P. Box 1978, Biometrika
 65, 297). Normality: C. M. Jarque & A. K. Bera 1980, Econ. Lett. 6, 255. Leaving out the rows R of
@@ -30,6 +34,7 @@ from ngbound.fit.solution import Fit
 Floats = NDArray[np.float64]
 
 MOST_LAGS = 10
+RADAR_GROUP = "radar"
 FALSE_ALARM = 1e-3
 """Chance of a false alarm of each kind of test, over all its members together."""
 FEWEST = 20
@@ -60,9 +65,9 @@ class Diagnostics:
     groups : DataFrame
         kind (station, catalogue, season), name, n, nights, chi2_per_dof, z_ra, z_dec of the mean.
     nights : DataFrame
-        utc_day, stn, n, chi2_per_dof, z_ra, z_dec; with thrust also moved_sigma (largest change
-        of a component of A without the night, in its standard errors) and threshold_ratio (largest
-        growth of a standard error).
+        utc_day, stn, radar, n, chi2_per_dof, z_ra, z_dec; with thrust also moved_sigma (largest
+        change of a component of A without the night, in its standard errors) and threshold_ratio
+        (largest growth of a standard error).
     left_out : DataFrame
         One row a station: A and its errors without it, change_sigma (largest change over the
         standard deviation it should have), threshold_ratio; empty without thrust.
@@ -141,19 +146,19 @@ class _Rest:
         g, n = len(names), len(self.noise)
         ones = np.zeros((n, 2, g, 2))
         for axis in (0, 1):
-            ones[np.arange(n), axis, group, axis] = 1.0
+            ones[np.arange(n), axis, group, axis] = self.noise.given[:, axis]
         w = self.noise.whiten_nights(ones.reshape(2 * n, 2 * g))
         seen = self.joint.white.T @ w
         length2 = np.sum(w**2, axis=0)
         variance = length2 - np.sum(seen * (self.joint.cov @ seen), axis=0)
         # a mean that the fit absorbs altogether cannot be judged
-        sure = variance > 1e-6 * length2
+        sure = variance > np.maximum(1e-6 * length2, 1e-300)
         z = np.where(sure, self.joint.rest @ w / np.sqrt(np.where(sure, variance, 1.0)), 0.0)
         return names, z.reshape(g, 2)
 
     def chi2_per_dof(self, rows: NDArray[np.bool_]) -> float:
         both = np.repeat(rows, 2)
-        dof = float(np.sum(1.0 - self.joint.leverage[both]))
+        dof = float(np.sum((self.noise.given.ravel() - self.joint.leverage)[both]))
         return float(np.sum(self.joint.rest[both] ** 2)) / dof if dof > 1e-6 else math.nan
 
     def without(self, rows: NDArray[np.bool_], p: int) -> tuple[Floats, Floats]:
@@ -172,10 +177,10 @@ def diagnose(fit: Fit) -> Diagnostics:
     """Examine the residuals of a fit; with thrust also how far A rests on single nights."""
     kept = fit.noise.mask(fit.keep)
     rest = _Rest(kept, fit.joint)
-    free = np.maximum(1.0 - fit.joint.leverage, 1e-9)
+    free = np.maximum(kept.given.ravel() - fit.joint.leverage, 1e-9)
     standard = (fit.joint.rest / np.sqrt(free))[free > 0.05]
     nights = _nights(fit, rest)
-    means = nights[["z_ra", "z_dec"]].to_numpy()
+    means = nights.loc[~nights["radar"], ["z_ra", "z_dec"]].to_numpy()
     lags = _autocorrelation(means)
     groups = _groups(fit, rest)
     left_out = _stations_left_out(fit, rest)
@@ -255,6 +260,7 @@ def _nights(fit: Fit, rest: _Rest) -> pd.DataFrame:
         row = {
             "utc_day": int(day[first]),
             "stn": str(stn[first]),
+            "radar": not rest.noise.optical[first],
             "n": int(mine.sum()),
             "chi2_per_dof": rest.chi2_per_dof(mine),
             "z_ra": z_ra,
@@ -281,9 +287,13 @@ def _groups(fit: Fit, rest: _Rest) -> pd.DataFrame:
     }
     rows = []
     for kind, labels in named.items():
+        if kind != "station":
+            labels = np.where(rest.noise.optical, labels, RADAR_GROUP)
         names, z = rest.z(labels.astype(str))
         for name, (z_ra, z_dec) in zip(names.tolist(), z.tolist(), strict=True):
             mine = labels == name
+            if name == RADAR_GROUP:
+                continue
             rows.append(
                 {
                     "kind": kind,

@@ -113,7 +113,7 @@ def linearise(
     """Integrate a parameter vector and take residuals and partials at every record."""
     push = thrust_of(theta, thrust, components)
     start = float(records.tdb_d.min()) - light_margin_d(records.observer_au, theta)
-    track = integrate_track(epoch_d, theta[:6], start, float(records.tdb_d.max()), push, forces)
+    track = integrate_track(epoch_d, theta[:6], start, records.end_d, push, forces)
     sight = see(track, records)
     seen = residuals(sight, records)
     partials = partials_along(track, parameter_names(components))
@@ -233,9 +233,10 @@ def differential_correction(
         No convergence, too few records, or an orbit that the records do not determine.
     """
     theta = np.array(theta, dtype=float)
-    if 2 * int(keep.sum()) < theta.size:
+    numbers = int(noise.count[keep].sum())
+    if numbers < theta.size:
         raise FitError(
-            f"{int(keep.sum())} observations give {2 * int(keep.sum())} numbers, fewer than the "
+            f"{int(keep.sum())} observations give {numbers} numbers, fewer than the "
             f"{theta.size} parameters of the fit; observe longer or fit fewer thrust components.",
             theta=theta,
         )

@@ -58,7 +58,7 @@ class Converged:
 
     @property
     def reduced_chi2(self) -> float:
-        """chi2 per degree of freedom of the kept records."""
+        """chi2 per degree of freedom of the kept directions."""
         dof = 2 * int(self.keep.sum()) - self.correction.at.theta.size
         return self.correction.at.chi2 / max(dof, 1)
 
@@ -91,7 +91,7 @@ def settle(
 
     rounds = 1
     if reject:
-        masks, rounds = judge_in_turns(keep[None], theta.size, correct, loose)
+        masks, rounds = judge_in_turns(keep[None], theta.size, noise.count, correct, loose)
         keep = masks[0]
     else:
         correct(np.zeros(1, dtype=np.int64), keep[None])
@@ -265,11 +265,19 @@ def find_orbit(
 ) -> Converged:
     """An orbit over all records, from the angles alone; with thrust only where gravity alone fails.
 
+    Echoes are only judged: those that the orbit cannot mean are not kept.
+
     Raises
     ------
     FirstOrbitError
         If no preliminary orbit exists or none grows over the arc.
     """
+    if records.echoes is not None:
+        angles = noise.optical
+        found = find_orbit(
+            records.subset(angles), noise.mask(angles), forces, say, thrust, components
+        )
+        return replace(found, keep=_with_echoes(records, noise, found, forces))
     # shared errors are small against what tells one orbit from another
     noise = replace(noise, shared=None)
     sun = load_ephemeris().position_au("sun", records.tdb_d)
@@ -300,6 +308,21 @@ def find_orbit(
             candidates=candidates,
         )
     return best
+
+
+def _with_echoes(records: Records, noise: Noise, found: Converged, forces: ForceModel) -> Bools:
+    """The records to keep: what an orbit from the angles kept, and the echoes near where it has
+    them, its own uncertainty allowed for; all echoes where it has none of them.
+    """
+    keep = np.zeros(len(records), dtype=bool)
+    keep[noise.optical] = found.keep
+    there = linearise(
+        found.correction.at.theta, found.epoch_d, records, noise, np.ones_like(keep), found.thrust,
+        found.components, forces,
+    )  # fmt: skip
+    chi2 = residual_chi2(there.seen, there.design, found.correction.cov, noise, keep)
+    near = ~noise.optical & (chi2 < ENTRY_CHI2)
+    return keep | (near if near.any() else ~noise.optical)
 
 
 def _explains(found: Converged) -> bool:

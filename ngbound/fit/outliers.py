@@ -1,5 +1,5 @@
-"""Rejection of outliers, with recovery, in one arc or in many; imports numpy, constants, arc and
-this room.
+"""Rejection of outliers, with recovery, in one arc or in many; imports numpy, scipy, constants, arc
+and this room.
 
 M. Carpino, A. Milani & S. R. Chesley 2003, Icarus 166, 248: a record is rejected where the chi2 of
 its residual, with the covariance the residual should have (noise less what the fit absorbed for a
@@ -20,12 +20,16 @@ does not take its neighbours with it. Where more than half of the records miss b
 should, it is the orbit or the sigmas that are wrong, not the records: the bars are multiplied by
 the median chi2 over its expectation, so that a gravity-only fit does not throw out the very records
 that show a thrust.
+
+A radar echo has one number: its chi2 is exchanged for that of two numbers with the same
+probability.
 """
 
 from collections.abc import Callable
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.special import log_ndtr
 
 from ngbound.arc import Noise
 from ngbound.constants import ARCSEC_RAD
@@ -46,7 +50,7 @@ FEW = 5
 
 
 def residual_chi2(seen: Floats, design: Floats, cov: Floats, noise: Noise, keep: Bools) -> Floats:
-    """chi2 of each record's two residuals, (..., n).
+    """chi2 of each record's two residuals, (..., n); of an echo, of two residuals as improbable.
 
     Parameters
     ----------
@@ -64,12 +68,23 @@ def residual_chi2(seen: Floats, design: Floats, cov: Floats, noise: Noise, keep:
     error[:, 0, 1] = error[:, 1, 0] = noise.corr * noise.sigma_ra_arcsec * noise.sigma_dec_arcsec
     error *= ARCSEC_RAD**2
     total = error + sign * own
+    # the number that an echo does not have is given the error of the one it has
+    echo = ~noise.optical
+    one = np.where(noise.given[:, 0], total[:, 0, 0], total[:, 1, 1])
+    total[echo] = one[echo, None, None] * np.eye(2)
     # a record that alone pins the orbit leaves no residual to judge: its noise then stands
     trace = np.trace(total, axis1=1, axis2=2)
     det = total[:, 0, 0] * total[:, 1, 1] - total[:, 0, 1] ** 2
     weak = (det <= 1e-4 * trace**2) | (trace <= 0.02 * np.trace(error, axis1=1, axis2=2))
     total[weak] = error[weak]
-    return np.einsum("...ni,nij,...nj->...n", seen, np.linalg.inv(total), seen)
+    chi2 = np.einsum("...ni,nij,...nj->...n", seen, np.linalg.inv(total), seen)
+    return np.where(noise.optical, chi2, as_of_two(chi2))
+
+
+def as_of_two(chi2: Floats) -> Floats:
+    """chi2 with two degrees of freedom that is as improbable as ``chi2`` with one."""
+    size = np.sqrt(np.maximum(chi2, 0.0))
+    return np.asarray(-2.0 * (np.log(2.0) + log_ndtr(-size)))
 
 
 def chi2_of_records(seen: Floats, design: Floats, noise: Noise, keep: Bools) -> Floats:
@@ -103,7 +118,11 @@ def judge(chi2: Floats, keep: Bools, loose: float = 1.0) -> Bools:
 
 
 def judge_in_turns(
-    keep: Bools, n_free: int, fit_again: Callable[[Ints, Bools], Floats], loose: float = 1.0
+    keep: Bools,
+    n_free: int,
+    numbers: Ints,
+    fit_again: Callable[[Ints, Bools], Floats],
+    loose: float = 1.0,
 ) -> tuple[Bools, int]:
     """Fit and judge m arcs by turns until the kept records of each no longer change.
 
@@ -111,6 +130,7 @@ def judge_in_turns(
     ----------
     keep : (m, n) records to start with
     n_free : parameters of a fit
+    numbers : (n,) that each record gives
     fit_again : callable(rows, keep[rows])
         Fits some of the arcs to those records and returns the chi2 (len(rows), n) of the residuals
         of all; nan for an arc that cannot be fitted, which then stays as it is.
@@ -135,7 +155,7 @@ def judge_in_turns(
         fresh = np.array(
             [mask.tobytes() not in tried[i] for i, mask in zip(rows, new, strict=True)]
         )
-        go = fresh & (2 * count >= n_free + 4) & (count >= FEW) & np.isfinite(chi2).all(axis=1)
+        go = fresh & (new @ numbers >= n_free + 4) & (count >= FEW) & np.isfinite(chi2).all(axis=1)
         rows, new = rows[go], new[go]
         keep[rows] = new
         for i, mask in zip(rows, new, strict=True):

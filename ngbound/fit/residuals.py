@@ -65,7 +65,9 @@ def residual_table(
         minus computed; their sigmas; along_arcsec and across_arcsec, the residual along and 90
         degrees (towards north from east, that is to the left) off the apparent motion; chi, the
         root of the record's chi2, freed of the errors it shares with others; keep;
-        motion_ra_arcsec_h, motion_dec_arcsec_h; r_au and delta_au.
+        motion_ra_arcsec_h, motion_dec_arcsec_h; r_au and delta_au; kind; delay_us, doppler_hz
+        (observed minus computed) and their sigmas. What an echo or a direction does not have is
+        nan.
     """
     motion = motion_rad_d(sight, records, observers)
     speed = np.linalg.norm(motion, axis=1)
@@ -74,6 +76,12 @@ def residual_table(
     emitted = epoch_d + sight.tau_d
     sun = load_ephemeris().position_au("sun", emitted)
     body = sight.rho_au + records.observer_au
+    directions = noise.optical
+    missed, error = _echoes_missed(records, sight, noise)
+
+    def of_direction(values: Floats) -> Floats:
+        return np.where(directions, values, np.nan)
+
     return pd.DataFrame(
         {
             "tdb_d": records.tdb_d,
@@ -82,17 +90,35 @@ def residual_table(
             "mode": used.table["mode"].to_numpy(),
             "astCat": used.table["astCat"].to_numpy(),
             "line": used.table["line"].to_numpy(),
-            "ra_arcsec": arcsec[:, 0],
-            "dec_arcsec": arcsec[:, 1],
-            "sigma_ra_arcsec": noise.sigma_ra_arcsec,
-            "sigma_dec_arcsec": noise.sigma_dec_arcsec,
-            "along_arcsec": np.einsum("ni,ni->n", arcsec, ahead),
-            "across_arcsec": arcsec[:, 1] * ahead[:, 0] - arcsec[:, 0] * ahead[:, 1],
+            "ra_arcsec": of_direction(arcsec[:, 0]),
+            "dec_arcsec": of_direction(arcsec[:, 1]),
+            "sigma_ra_arcsec": of_direction(noise.sigma_ra_arcsec),
+            "sigma_dec_arcsec": of_direction(noise.sigma_dec_arcsec),
+            "along_arcsec": of_direction(np.einsum("ni,ni->n", arcsec, ahead)),
+            "across_arcsec": of_direction(arcsec[:, 1] * ahead[:, 0] - arcsec[:, 0] * ahead[:, 1]),
             "chi": np.sqrt(np.maximum(chi2, 0.0)),
             "keep": keep,
-            "motion_ra_arcsec_h": motion[:, 0] / ARCSEC_RAD / 24.0,
-            "motion_dec_arcsec_h": motion[:, 1] / ARCSEC_RAD / 24.0,
+            "motion_ra_arcsec_h": of_direction(motion[:, 0] / ARCSEC_RAD / 24.0),
+            "motion_dec_arcsec_h": of_direction(motion[:, 1] / ARCSEC_RAD / 24.0),
             "r_au": np.linalg.norm(body - sun, axis=1),
             "delta_au": np.linalg.norm(sight.rho_au, axis=1),
+            "kind": used.table["kind"].to_numpy(),
+            "delay_us": missed[:, 0] * 1e6,
+            "doppler_hz": missed[:, 1],
+            "sigma_delay_us": error[:, 0] * 1e6,
+            "sigma_doppler_hz": error[:, 1],
         }
     )
+
+
+def _echoes_missed(records: Records, sight: Sight, noise: Noise) -> tuple[Floats, Floats]:
+    """Observed minus computed delay (s) and Doppler shift (Hz) and their errors, (n, 2) each; nan
+    where there is none."""
+    missed = np.full((len(records), 2), np.nan)
+    error = missed.copy()
+    echoes = records.echoes
+    if echoes is not None and sight.path is not None:
+        missed[echoes.rows] = echoes.missed(sight.path)
+        stated = np.stack([echoes.sigma_delay_s, echoes.sigma_doppler_hz], axis=1)
+        error[echoes.rows] = stated * noise.sigma_ra_arcsec[echoes.rows, None]
+    return missed, np.where(np.isfinite(missed), error, np.nan)

@@ -29,7 +29,7 @@ from ngbound.fit.shared_estimates import (
     shared_text,
     solve_jointly,
 )
-from ngbound.motion import Atlas, ForceModel, Neighbourhood, Orbit, Records, Thrust
+from ngbound.motion import Atlas, Echoes, ForceModel, Neighbourhood, Orbit, Records, Thrust
 from ngbound.sky import Observers, load_ephemeris, observer_states, reduce_offsets
 
 Floats = NDArray[np.float64]
@@ -112,9 +112,14 @@ class Fit:
         return int((~self.keep).sum())
 
     @property
+    def n_numbers(self) -> int:
+        """Numbers in the fit: two of a direction, one of a radar echo."""
+        return int(self.noise.count[self.keep].sum())
+
+    @property
     def dof(self) -> int:
-        """Degrees of freedom: two per kept observation less the parameters."""
-        return 2 * self.n_obs - self.theta.size
+        """Degrees of freedom: numbers less parameters."""
+        return self.n_numbers - self.theta.size
 
     @property
     def reduced_chi2(self) -> float:
@@ -123,19 +128,42 @@ class Fit:
 
     @property
     def rms_arcsec(self) -> float:
-        """Root mean square of both coordinates of the kept residuals, arcsec."""
-        return float(np.sqrt(np.mean(self.seen[self.keep] ** 2)) / ARCSEC_RAD)
+        """Root mean square of both coordinates of the kept directions' residuals, arcsec; nan
+        without any."""
+        kept = self.seen[self.keep & self.noise.optical]
+        return float(np.sqrt(np.mean(kept**2)) / ARCSEC_RAD) if kept.size else math.nan
 
     @property
     def weighted_rms_arcsec(self) -> float:
-        """Root of the mean of the squared kept residuals, weighted by 1/sigma^2, arcsec."""
-        sigma = np.stack([self.noise.sigma_ra_arcsec, self.noise.sigma_dec_arcsec], axis=1)[
-            self.keep
-        ]
+        """Root of the mean of the directions' squared kept residuals, weighted by 1/sigma^2,
+        arcsec; nan without any."""
+        kept = self.keep & self.noise.optical
+        if not kept.any():
+            return math.nan
+        sigma = np.stack([self.noise.sigma_ra_arcsec, self.noise.sigma_dec_arcsec], axis=1)[kept]
         weight = sigma**-2
-        return float(
-            np.sqrt(np.sum(weight * (self.seen[self.keep] / ARCSEC_RAD) ** 2) / weight.sum())
-        )
+        return float(np.sqrt(np.sum(weight * (self.seen[kept] / ARCSEC_RAD) ** 2) / weight.sum()))
+
+    @cached_property
+    def echo_summary(self) -> dict[str, Any]:
+        """Of the kept radar echoes: n_delay, n_doppler, n_rejected, the root mean squares
+        rms_delay_us and rms_doppler_hz (nan without any), and chi_delay, chi_doppler, the root mean
+        squares over the stated errors. Empty without echoes."""
+        echoes, path = self.records.echoes, self.correction.at.sight.path
+        if echoes is None or path is None:
+            return {}
+        missed = echoes.missed(path) * [1e6, 1.0]
+        kept = np.isfinite(missed) & self.keep[echoes.rows][:, None]
+        chi = self.seen[echoes.rows] / ARCSEC_RAD
+        out: dict[str, Any] = {"n_rejected": int((~self.keep[echoes.rows]).sum())}
+        for i, (name, unit) in enumerate((("delay", "us"), ("doppler", "hz"))):
+            mine = kept[:, i]
+            some = bool(mine.any())
+            out[f"n_{name}"] = int(mine.sum())
+            for label, table in ((f"rms_{name}_{unit}", missed), (f"chi_{name}", chi)):
+                value = float(np.sqrt(np.mean(table[mine, i] ** 2))) if some else math.nan
+                out[label] = value
+        return out
 
     @property
     def A(self) -> u.Quantity:
@@ -270,6 +298,21 @@ class Fit:
         """Exact chi2 (m,) of parameter vectors (m, p); inf where an orbit cannot be integrated."""
         return self.atlas.chi2(thetas)
 
+    def _echo_sentence(self) -> str:
+        told = self.echo_summary
+        parts = []
+        if told["n_delay"]:
+            parts.append(
+                f"{told['n_delay']} delays, rms {told['rms_delay_us']:.3g} microseconds "
+                f"({told['chi_delay']:.2f} sigma)"
+            )
+        if told["n_doppler"]:
+            parts.append(
+                f"{told['n_doppler']} Doppler shifts, rms {told['rms_doppler_hz']:.3g} Hz "
+                f"({told['chi_doppler']:.2f} sigma)"
+            )
+        return f"radar: {'; '.join(parts) or 'none kept'}; {told['n_rejected']} rejected"
+
     @property
     def distance_range_au(self) -> tuple[float, float]:
         """Smallest and largest heliocentric distance at the used observations."""
@@ -290,6 +333,7 @@ class Fit:
             "n_rejected": self.n_rejected,
             "rms_arcsec": self.rms_arcsec,
             "weighted_rms_arcsec": self.weighted_rms_arcsec,
+            "radar": self.echo_summary,
             "A_au_d2": self.theta[6:].tolist(),
             "A_sigma_au_d2": np.sqrt(np.diag(self.theta_cov)[6:]).tolist(),
             "significance_sigma": self.significance,
@@ -309,6 +353,8 @@ class Fit:
             f"{self.rms_arcsec:.3f} arcsec, weighted {self.weighted_rms_arcsec:.3f} arcsec, chi2 "
             f"{self.chi2:.2f} for {self.dof} degrees of freedom",
         ]
+        if self.echo_summary:
+            lines.append("  " + self._echo_sentence())
         for c, a, s in zip(
             self.components, self.theta[6:], np.sqrt(np.diag(self.theta_cov)[6:]), strict=True
         ):
@@ -366,7 +412,7 @@ def fit_orbit(
         initial = initial.orbit
     forces = forces or (initial.forces if initial is not None else ForceModel())
     ephemeris = load_ephemeris()
-    used = error_model.corrected(reduce_offsets(arc, ephemeris).used)
+    used = error_model.corrected(reduce_offsets(error_model.usable(arc), ephemeris).used)
     if len(used) < MIN_OBSERVATIONS:
         raise FitError(
             f"The arc of {arc.name} has {len(used)} usable observations; an orbit needs at least "
@@ -380,6 +426,7 @@ def fit_orbit(
         observers.position_au,
         table["ra_rad"].to_numpy(),
         table["dec_rad"].to_numpy(),
+        Echoes.of(used),
     )
     given = noise
     noise = error_model.apply(used) if given is None else given
@@ -387,6 +434,13 @@ def fit_orbit(
     mask = np.ones(len(used), dtype=bool) if keep is None else np.asarray(keep, dtype=bool).copy()
     epoch = middle_epoch(records) if epoch_tdb_d is None else float(epoch_tdb_d)
     if initial is None:
+        if noise.optical.sum() < MIN_OBSERVATIONS:
+            raise FitError(
+                f"The arc of {arc.name} has {int(noise.optical.sum())} directions and "
+                f"{len(used)} usable observations; radar echoes alone give no first orbit. Give an "
+                "initial state or elements, or add directions.",
+                arc=arc,
+            )
         fallback = thrust if components else Thrust("inverse-square")
         start = find_orbit(records, noise, forces, progress, fallback, components or "RTN")
         theta = at_epoch(start.correction.at.theta, start.epoch_d, epoch, start.thrust, forces)
@@ -608,7 +662,7 @@ def compare_fits(null: Fit, push: Fit) -> Comparison:
         delta,
         extra,
         tail_probability(delta, extra, noise_dof),
-        float(delta - extra * math.log(2 * push.n_obs)),
+        float(delta - extra * math.log(push.n_numbers)),
         push.n_obs,
         refitted,
     )

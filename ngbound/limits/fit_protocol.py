@@ -79,10 +79,11 @@ class GaussianFit:
         return self.chi2 + np.einsum("mi,ij,mj->m", off, self.normal, off)
 
     @classmethod
-    def of(cls, fit: ThrustFit, normal: np.ndarray, n_obs: int) -> "GaussianFit":
-        """The solution of ``fit`` with another normal matrix, from ``n_obs`` observations."""
+    def of(cls, fit: ThrustFit, normal: np.ndarray, n_numbers: int) -> "GaussianFit":
+        """The solution of ``fit`` with another normal matrix, from so many numbers (two of a
+        direction, one of a radar echo)."""
         theta = np.asarray(fit.theta, dtype=float)
-        dof = max(0, 2 * n_obs - theta.size)
+        dof = max(0, n_numbers - theta.size)
         names = tuple(str(name) for name in fit.names)
         noise_dof = getattr(fit, "noise_dof", None)
         return cls(fit.components, names, theta, normal, fit.n_state, float(dof), dof, noise_dof)

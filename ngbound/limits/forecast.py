@@ -201,8 +201,8 @@ def forecast(
     )  # fmt: skip
     white = noise.whiten(design.reshape(2 * night.size, -1))
     twice = np.repeat(night, 2)
-    normal, n_obs = np.asarray(fit.normal, dtype=float), fit.n_obs
-    grown, count = normal.copy(), n_obs
+    normal, numbers = np.asarray(fit.normal, dtype=float), fit.n_numbers
+    grown, count = normal.copy(), numbers
     after, alone = [], []
 
     def threshold_of(total: np.ndarray, n: int) -> DetectionThreshold:
@@ -211,9 +211,9 @@ def forecast(
 
     for i, each in enumerate(nights):
         part = white[twice == i].T @ white[twice == i]
-        grown, count = grown + part, count + each.n
+        grown, count = grown + part, count + 2 * each.n
         after.append(threshold_of(grown, count))
-        alone.append(threshold_of(normal + part, n_obs + each.n))
+        alone.append(threshold_of(normal + part, numbers + 2 * each.n))
     table = _table(fit, nights, night, tdb_d, observer, rho, design)
     worst = np.array([float(t.worst.value) for t in after])
     single = np.array([float(t.worst.value) for t in alone])

@@ -129,7 +129,8 @@ def threshold_growth(
     kept = kept[np.argsort(push.records.tdb_d[kept], kind="stable")]
     tdb_d = push.records.tdb_d[kept]
     ends = np.append(np.flatnonzero(np.diff(np.floor(tdb_d)) > 0), len(kept) - 1)
-    first = np.searchsorted(2 * (ends + 1), push.theta.size, side="right")
+    numbers = np.cumsum(push.noise.count[kept])
+    first = np.searchsorted(numbers[ends], push.theta.size, side="right")
     ends = ends[min(first, len(ends) - 1) :]
     ends = ends[np.unique(np.linspace(0, len(ends) - 1, n_cuts).round().astype(int))]
     design = np.asarray(push.design).reshape(len(push.keep), 2, -1)
@@ -137,7 +138,7 @@ def threshold_growth(
     for end in ends:
         rows = kept[: end + 1]
         white = push.noise.mask(rows).whiten(design[rows].reshape(2 * len(rows), -1))
-        cut = GaussianFit.of(push, white.T @ white, len(rows))
+        cut = GaussianFit.of(push, white.T @ white, int(numbers[end]))
         try:
             found.append(detection_threshold(cut, false_alarm=false_alarm, power=power))
         except LimitError:

@@ -198,7 +198,7 @@ def compare_laws(
         upper_au_d2 = max(thrust_prior(info).upper_au_d2 for info in infos.values())
     seeds = np.random.SeedSequence(seed).spawn(len(fits) + 1)
     base, base_error = _log_evidence(null, None, n_draws, np.random.default_rng(seeds[0]))
-    n = 2 * null.n_obs
+    n = null.n_numbers
     rows: dict[str, dict[str, float]] = {
         "gravity alone": {
             "chi2": null.chi2, "n_parameters": 6, "delta_chi2": 0.0, "delta_bic": 0.0,

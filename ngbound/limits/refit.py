@@ -137,8 +137,8 @@ class ExactRefit:
         "model": drawn from the error model of the fit, errors shared by nights and by many nights
         included. "residuals": whole station-nights of the fit's own whitened residuals, drawn with
         replacement and random sign among the nights of the same station (of all stations where it
-        has fewer than 5), in the order they were taken, and scaled by sqrt(2n / dof) for what the
-        fit absorbed.
+        has fewer than 5), in the order they were taken, and scaled by the root of numbers over
+        degrees of freedom for what the fit absorbed; radar echoes are drawn from the error model.
     reject : bool
         Apply the outlier rule of the fit to each arc and hypothesis; the two are then compared
         over the records that either kept, as `ngbound.fit.compare_fits` does.
@@ -204,6 +204,7 @@ class ExactRefit:
         self._blocks = self._block_roots()
         self._batches = self._same_size()
         self._donors = self._donor_nights() if noise == "residuals" else []
+        self._there = self.noise.given.ravel()
 
     # ------------------------------------------------------------------------------- noise
 
@@ -230,15 +231,24 @@ class ExactRefit:
     def _donor_nights(self) -> list[list[Floats]]:
         """For each station-night the whitened residuals (2 m,) of the nights it may borrow."""
         white = self.noise.whiten(np.asarray(self.fit.seen)[self.fit.keep].ravel())
-        white = white * np.sqrt(2.0 * self.n / max(1, self.fit.dof))
+        white = white * np.sqrt(self.fit.n_numbers / max(1, self.fit.dof))
         station = self.fit.used.table["stn"].to_numpy()[self.fit.keep]
         of_block = [station[rows[0] // 2] for rows, _ in self._blocks]
+        directions = [bool(self.noise.optical[rows[0] // 2]) for rows, _ in self._blocks]
         every = [white[rows] for rows, _ in self._blocks]
+        seen = [w for w, direct in zip(every, directions, strict=True) if direct]
         mine = {
-            code: [w for w, c in zip(every, of_block, strict=True) if c == code]
+            code: [
+                w
+                for w, c, direct in zip(every, of_block, directions, strict=True)
+                if c == code and direct
+            ]
             for code in set(of_block)
         }
-        return [mine[code] if len(mine[code]) >= FEW_DONORS else every for code in of_block]
+        return [
+            (mine[code] if len(mine[code]) >= FEW_DONORS else seen) if direct else []
+            for code, direct in zip(of_block, directions, strict=True)
+        ]
 
     def draw(self, random: np.random.Generator) -> Floats:
         """Noise (2n,) of one arc, radians."""
@@ -248,12 +258,16 @@ class ExactRefit:
         else:
             z = np.empty(2 * self.n)
             for (rows, _), donors in zip(self._blocks, self._donors, strict=True):
+                if not donors:
+                    z[rows] = random.standard_normal(rows.size)
+                    continue
                 pieces: list[Floats] = []
                 while sum(piece.size for piece in pieces) < rows.size:
                     pieces.append(
                         random.choice([-1.0, 1.0]) * donors[int(random.integers(len(donors)))]
                     )
                 z[rows] = np.concatenate(pieces)[: rows.size]
+        z = np.where(self._there, z, 0.0)
         for rows_of, roots in self._batches:
             noise[rows_of] = (roots @ z[rows_of][:, :, None])[:, :, 0]
         shared = self.noise.shared
@@ -359,7 +373,7 @@ class ExactRefit:
             chi2[~found.ok[rows]] = np.nan
             return chi2
 
-        judge_in_turns(every, frame.free, fit_again)
+        judge_in_turns(every, frame.free, self.noise.count, fit_again)
         return found
 
     def _over(self, keep: Bools, found: "Minima", frame: "_Frame", shift: Floats) -> "Minima":

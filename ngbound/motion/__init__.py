@@ -18,6 +18,7 @@ reach further than one reference).
 from ngbound.motion._kernels.layout import PARAMETERS
 from ngbound.motion.atlas import Atlas
 from ngbound.motion.compilation import compile_notice
+from ngbound.motion.echoes import Echoes
 from ngbound.motion.elements import CometaryElements, KeplerianElements
 from ngbound.motion.gravity import ForceModel
 from ngbound.motion.kepler import propagate_two_body, two_body_sightlines, two_body_transition
@@ -53,6 +54,7 @@ __all__ = [
     "Atlas",
     "CometaryElements",
     "Echo",
+    "Echoes",
     "ForceModel",
     "FormLaw",
     "KeplerianElements",

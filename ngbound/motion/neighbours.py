@@ -15,7 +15,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from ngbound.arc import Factors
-from ngbound.constants import C_AU_D
+from ngbound.constants import ARCSEC_RAD, C_AU_D, DAY_S
 from ngbound.errors import PropagationError
 from ngbound.motion._kernels.grid import weights_at
 from ngbound.motion._kernels.neighbours import LANES, batch
@@ -35,8 +35,11 @@ GRID_CAP_D = 100.0
 TOLERANCE_AU = 3e-11
 TOLERANCE_SIGMA = 3e-4
 """A neighbour is trusted while the estimate of what the batch leaves out stays below the larger of
-the two: au, and a part of the smallest error of a record at the object's distance."""
+the two: au, and a part of the smallest error of a record at the object's distance; with echoes
+among the records, below that part of the smallest error of an echo."""
 SETTLED_AU = 1e-12
+STEADY_D = 1.0
+"""An error of position is taken to come about in no less time."""
 
 
 def _leg_arrays(
@@ -107,7 +110,7 @@ class Neighbourhood:
         )
         span = (float(records.tdb_d.min()), float(records.tdb_d.max()))
         low = min(_lower(track), span[0])
-        high = max(_upper(track), span[1])
+        high = max(_upper(track), records.end_d)
         by_distance = (
             thrust is not None and thrust.window is not None and thrust.window.by == "distance"
         )
@@ -150,6 +153,7 @@ class Neighbourhood:
             np.ascontiguousarray(sight.rho_au[order]),
             np.ascontiguousarray(sight.speed_au_d[order]),
             np.ascontiguousarray(records.basis[order]),
+            _echo_tables(records, sight, place),
             white,
             int(n_back),
             order,
@@ -168,7 +172,7 @@ class Neighbourhood:
             sight,
             partials,
             tables,
-            max(TOLERANCE_AU, TOLERANCE_SIGMA * _smallest_error_au(whitening, sight)),
+            _tolerance_au(whitening, sight, records),
             threads or os.cpu_count() or 1,
         )
 
@@ -184,7 +188,7 @@ class Neighbourhood:
             self.epoch_d,
             theta[:6],
             float(self.records.tdb_d.min()) - _light_margin(self.sight) - 0.5,
-            float(self.records.tdb_d.max()),
+            self.records.end_d,
             self._push(theta),
             self.forces,
         )
@@ -248,7 +252,7 @@ class Neighbourhood:
         chi2 = np.empty(full.shape[0])
         doubt = np.empty((full.shape[0], 2))
         keep = np.empty((full.shape[0] if want_residuals else 1, n if want_residuals else 1, 2))
-        gm, c, amounts, back, front, rho, speed, basis, white, n_back, order = self.tables
+        gm, c, amounts, back, front, rho, speed, basis, echoes, white, n_back, order = self.tables
         blocks = full.shape[0] // LANES
         parts = min(self.threads, blocks)
         edges = np.linspace(0, blocks, parts + 1).astype(int) * LANES
@@ -264,6 +268,7 @@ class Neighbourhood:
                 rho,
                 speed,
                 basis,
+                echoes,
                 white,
                 n_back,
                 full[low:high],
@@ -276,7 +281,9 @@ class Neighbourhood:
         _run(work, parts)
         chi2 = chi2[:m]
         trusted = (
-            (doubt[:m, 0] <= self.tolerance_au) & (doubt[:m, 1] <= SETTLED_AU) & np.isfinite(chi2)
+            (doubt[:m, 0] <= self.tolerance_au)
+            & (doubt[:m, 1] <= min(SETTLED_AU, self.tolerance_au))
+            & np.isfinite(chi2)
         )
         if self.thrust is not None and self.thrust.window is not None:
             # a neighbour may meet a switch by distance that the reference does not
@@ -291,7 +298,7 @@ class Neighbourhood:
         """chi2 and O-C (n, 2) of one parameter vector by the adaptive integrator: the slow twin."""
         theta = np.asarray(theta, dtype=float)
         low = float(self.records.tdb_d.min()) - 0.2
-        high = float(self.records.tdb_d.max())
+        high = self.records.end_d
         try:
             span = _light_margin(self.sight)
             track = integrate_track(
@@ -327,17 +334,68 @@ def _run(work: Callable[[int], None], parts: int) -> None:
             done.result()
 
 
-def _smallest_error_au(whitening: Factors, sight: Sight) -> float:
-    """The smallest error of a record, what the others say of it allowed for, at the distance."""
+def _echo_tables(records: Records, sight: Sight, place: Ints) -> tuple:
+    """What the kernel of the echoes needs; ``place`` (n,) of each record in the sorted list."""
+    echoes, path = records.echoes, sight.path
+    if echoes is None or path is None:
+        return (
+            np.zeros(0, dtype=np.int64),
+            np.zeros((0, 7, 3)),
+            np.zeros(0),
+            np.zeros((0, 2)),
+            np.zeros(0),
+            np.zeros(0),
+        )
+    legs = [
+        path.down,
+        path.up,
+        path.receiver_speed,
+        path.transmitter_speed,
+        path.transmitter_push,
+        path.push,
+        path.sun_slope,
+    ]
+    per_unit = echoes.per_unit
+    return (
+        place[echoes.rows].astype(np.int64),
+        np.ascontiguousarray(np.stack(legs, axis=1)),
+        path.plain_rate,
+        echoes.pairs(path),
+        per_unit[:, 0] * DAY_S,
+        per_unit[:, 1] * echoes.frequency_mhz * 1e6,
+    )
+
+
+def _tolerance_au(whitening: Factors, sight: Sight, records: Records) -> float:
+    """What the batch may leave out of a position, au."""
+    error = _errors_au(whitening, sight)
+    if records.echoes is None or sight.path is None:
+        return max(TOLERANCE_AU, TOLERANCE_SIGMA * float(np.min(error)))
+    seen = np.ones(error.size, dtype=bool)
+    seen[records.echoes.rows] = False
+    angles = max(TOLERANCE_AU, TOLERANCE_SIGMA * float(np.min(error[seen], initial=np.inf)))
+    # as if stated: an echo shares no error with another record
+    of_pair = records.echoes.per_unit / ARCSEC_RAD
+    of_pair[:, 1] *= records.echoes.frequency_mhz * 1e6
+    with np.errstate(divide="ignore"):
+        delay = 0.5 * C_AU_D / (of_pair[:, 0] * DAY_S)
+        speed = 0.5 * C_AU_D / of_pair[:, 1]
+    past = np.linalg.norm(sight.path.speed - sight.path.receiver_speed, axis=1)
+    time = np.minimum(STEADY_D, np.linalg.norm(sight.path.down, axis=1) / past)
+    return min(angles, TOLERANCE_SIGMA * float(np.min([delay, speed * time])))
+
+
+def _errors_au(whitening: Factors, sight: Sight) -> Floats:
+    """The error (n,) of each record, what the others say of it allowed for, at the distance."""
     distance = np.linalg.norm(sight.rho_au, axis=1)
-    smallest = np.inf
+    error = np.empty(distance.size)
     for b in range(whitening.start.size - 1):
         rows = whitening.order[whitening.start[b] : whitening.start[b + 1]]
         side = 2 * rows.size
         at = whitening.flat_start[b]
         weight = whitening.flat[at : at + side * side : side + 1].reshape(-1, 2).max(axis=1)
-        smallest = min(smallest, float(np.min(distance[rows] / weight)))
-    return smallest
+        error[rows] = distance[rows] / weight
+    return error
 
 
 def _lower(track: Track) -> float:

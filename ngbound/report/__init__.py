@@ -26,6 +26,7 @@ from ngbound.report.record import Record, load_record, provenance
 from ngbound.report.tables import (
     SmallTable,
     catalogue_table,
+    echo_table,
     residual_suspicions,
     residuals_csv,
     station_table,
@@ -39,6 +40,7 @@ __all__ = [
     "budget_words",
     "catalogue_table",
     "direction_map",
+    "echo_table",
     "load_record",
     "mass_figure",
     "posterior_figure",

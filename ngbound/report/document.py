@@ -574,6 +574,16 @@ def _write_fits(page: _Page, record: Mapping[str, Any]) -> None:
             told.append(counted(int(fit["n_obs"]), "observation") + " kept")
         if is_number(fit.get("n_rejected")):
             told.append(f"{int(fit['n_rejected'])} rejected")
+        radar = fit.get("radar") or {}
+        told += [
+            f"{counted(int(radar[f'n_{name}']), words)}, rms {radar[key]:.3g} {unit} "
+            f"({radar[f'chi_{name}']:.2f} sigma)"
+            for name, words, key, unit in (
+                ("delay", "radar delay", "rms_delay_us", "microseconds"),
+                ("doppler", "Doppler shift", "rms_doppler_hz", "Hz"),
+            )
+            if radar.get(f"n_{name}")
+        ]
         page.item(f"{title}: {', '.join(told)}")
         if fit.get("weakness"):
             page.item(str(fit["weakness"]))

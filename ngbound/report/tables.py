@@ -152,7 +152,7 @@ def group_means(fit: Any, labels: Sequence[Any]) -> pd.DataFrame:
     ----------
     fit : Fit
     labels : (n,) sequence
-        Group of each observation.
+        Group of each observation; radar echoes are passed over.
 
     Returns
     -------
@@ -166,11 +166,12 @@ def group_means(fit: Any, labels: Sequence[Any]) -> pd.DataFrame:
     names = np.asarray([str(x) if str(x).strip() else "(none)" for x in labels])
     keep = np.asarray(table["keep"], dtype=bool)
     residual = table[["ra_arcsec", "dec_arcsec"]].to_numpy(dtype=float)
+    seen = np.isfinite(residual).all(axis=1)
     utc = table["utc"].astype(str).to_numpy()
     night = np.asarray(fit.noise.night)
     rows = []
-    for name in pd.unique(names):
-        here = names == name
+    for name in pd.unique(names[seen]):
+        here = (names == name) & seen
         used = here & keep
         row: dict[str, Any] = {
             "group": name,
@@ -182,11 +183,12 @@ def group_means(fit: Any, labels: Sequence[Any]) -> pd.DataFrame:
         }
         row.update(_mean_of(fit.noise, used, residual) if used.any() else _NO_MEAN)
         rows.append(row)
-    frame = pd.DataFrame(rows)
+    frame = pd.DataFrame(rows, columns=["group", *_COUNTS, *_NO_MEAN])
     order = np.lexsort((frame["group"].to_numpy(), -frame["n"].to_numpy()))
     return frame.iloc[order].reset_index(drop=True)
 
 
+_COUNTS = ("n", "n_rejected", "nights", "first", "last")
 _NO_MEAN = {
     name: float("nan")
     for name in (
@@ -229,6 +231,43 @@ def _mean_of(noise: Any, used: np.ndarray, residual: np.ndarray) -> dict[str, fl
 def station_table(fit: Any) -> SmallTable:
     """Mean residual, scatter and chi2 of each station; offsets beyond 3 sigma carry a star."""
     return _means_table(fit, "stn", "station", "Residuals by station (observed - computed, arcsec)")
+
+
+def echo_table(fit: Any) -> SmallTable:
+    """Every radar echo with its residual, observed - computed; those not kept carry a star."""
+    table = fit.residuals
+    echoes = table[table["kind"] == "radar"]
+    frame = pd.DataFrame(
+        {
+            "utc": [str(utc)[:19] for utc in echoes["utc"]],
+            "receiver": echoes["stn"].to_numpy(),
+            "delay_us": echoes["delay_us"].to_numpy(),
+            "sigma_delay_us": echoes["sigma_delay_us"].to_numpy(),
+            "doppler_hz": echoes["doppler_hz"].to_numpy(),
+            "sigma_doppler_hz": echoes["sigma_doppler_hz"].to_numpy(),
+            "flag": np.where(echoes["keep"], "", "*"),
+        }
+    )
+    free = getattr(fit, "components", "")
+    return SmallTable(
+        "Radar echoes (observed - computed), "
+        + (f"fit with {free} thrust" if free else "gravity alone"),
+        frame,
+        {
+            "delay_us": "+.3f",
+            "sigma_delay_us": ".3f",
+            "doppler_hz": "+.4f",
+            "sigma_doppler_hz": ".4f",
+        },
+        {
+            "delay_us": "delay (us)",
+            "sigma_delay_us": "+-",
+            "doppler_hz": "Doppler (Hz)",
+            "sigma_doppler_hz": "+-",
+            "flag": "",
+        },
+        "* rejected",
+    )
 
 
 def catalogue_table(fit: Any) -> SmallTable:

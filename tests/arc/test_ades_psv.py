@@ -227,8 +227,8 @@ def test_other_kinds_are_kept(tmp_path: Path) -> None:
     text += "123|2024-03-01T05:06:07Z|Me|1|1e-2|0.1|A|0.1|0.1\n"
     arc = read(tmp_path, text)
     assert arc.table.kind.tolist() == ["optical", "radar", "radar", "offset", "opticalResidual"]
-    assert arc.table.use.tolist() == [True, False, False, False, False]
-    assert all(arc.table.why_not[1:] != "") and len(arc.used) == 1
+    assert arc.table.use.tolist() == [True, True, True, False, False]
+    assert all(arc.table.why_not[3:] != "") and len(arc.used) == 3
     write_psv(arc, tmp_path / "y.psv")
     same(arc, read_arc(tmp_path / "y.psv"))
 

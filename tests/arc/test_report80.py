@@ -133,7 +133,7 @@ def test_a_roving_observer(tmp_path: Path) -> None:
     )
 
 
-def test_radar_is_kept_but_not_used(tmp_path: Path) -> None:
+def test_radar_record_becomes_delay_and_doppler(tmp_path: Path) -> None:
     desig = "12345       "
     first = f"{desig}  R2024 03 01.000000   123456789123 +   12345123 02380  251 JPLRS251"
     first = (
@@ -167,15 +167,18 @@ def test_radar_is_kept_but_not_used(tmp_path: Path) -> None:
     assert len(first) == len(second) == 80
     arc = read(tmp_path, line80(desig=desig), first, second)
     radar = arc.table[arc.table.kind == "radar"]
-    assert len(radar) == 2 and not radar.use.any()
-    assert set(radar.why_not) == {"radar is not used in fits yet"}
+    assert len(radar) == 2 and radar.use.all()
     assert radar.delay.iloc[0] == pytest.approx(123.4567891234, abs=1e-12)
     assert radar.doppler.iloc[1] == pytest.approx(123456.789, abs=1e-9)
     assert radar.frq.tolist() == [2380.0, 2380.0] and radar.trx.tolist() == ["251", "251"]
     assert radar.rmsDelay.iloc[0] == pytest.approx(1.25) and radar.rmsDoppler.iloc[
         1
     ] == pytest.approx(0.5)
-    assert len(arc.used) == 1
+    assert arc.used.table.stn.tolist().count("251") == 2
+    surface = second.replace("C        1", "S        1")
+    on_surface = read(tmp_path, line80(desig=desig), first, surface).table
+    why = on_surface.why_not[on_surface.kind == "radar"].tolist()
+    assert "one radius nearer" in why[0] and why[1] == ""
 
 
 def test_set_aside_with_a_reason(tmp_path: Path) -> None:

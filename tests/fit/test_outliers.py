@@ -135,7 +135,7 @@ def test_turns_end_where_the_records_no_longer_change():
         now[rows == 2, 9] = np.where(keep[rows == 2, 9], 30.0, 2.0)
         return now
 
-    keep, rounds = judge_in_turns(np.ones((3, n), dtype=bool), 6, fit_again)
+    keep, rounds = judge_in_turns(np.ones((3, n), dtype=bool), 6, np.full(n, 2), fit_again)
     assert asked == [[0, 1, 2], [1, 2]] and rounds == 2
     assert keep[0].all() and np.flatnonzero(~keep[1]).tolist() == [7]
     assert np.flatnonzero(~keep[2]).tolist() == [9]

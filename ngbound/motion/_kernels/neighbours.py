@@ -12,6 +12,7 @@ import math
 import numpy as np
 
 from .compiled import kernel
+from .echoes import echo_residuals
 from .grid import (
     GV,
     GX,
@@ -340,6 +341,7 @@ def batch(
     rho,
     speed,
     basis,
+    echoes,
     whiten,
     n_back,
     theta,
@@ -352,7 +354,7 @@ def batch(
 
     ``back`` and ``ahead``: (grid_h, nodes, columns, step_of, weight, fraction_h) of the two
     directions of time; the records are sorted so that the first ``n_back`` lie before the epoch
-    (latest first), the others after it.
+    (latest first), the others after it. ``echoes``: what ``echo_residuals`` needs.
     """
     n = rho.shape[0]
     n_none = n - rho.shape[0]  # a variable: a literal would compile the kernel twice
@@ -400,6 +402,18 @@ def batch(
             unsure,
         )
         sight_residuals(c_au_d, rho, speed, basis, offset, residual)
+        echo_residuals(
+            c_au_d,
+            echoes[0],
+            echoes[1],
+            echoes[2],
+            echoes[3],
+            echoes[4],
+            echoes[5],
+            speed,
+            offset,
+            residual,
+        )
         whitened_chi2(
             whiten[0],
             whiten[1],

@@ -155,12 +155,16 @@ def _drawn(
     figsize: tuple[float, float] | None,
 ) -> Figure:
     table: pd.DataFrame = null.residuals
-    keep = np.asarray(table["keep"], dtype=bool)
-    if not keep.any():
-        raise FitError("The fit keeps no observation, so there is no residual to draw.")
+    fitted_to = np.asarray(table["keep"], dtype=bool)
+    # radar echoes have no place on the sky
+    drawn = np.isfinite(table["ra_arcsec"].to_numpy(dtype=float))
+    if not (fitted_to & drawn).any():
+        raise FitError("The fit keeps no direction, so there is no residual to draw.")
+    table, keep = table[drawn], fitted_to[drawn]
+    noise = null.noise if drawn.all() else null.noise.mask(drawn)
     date = np.asarray(table["tdb_d"], dtype=float) + J2000_MJD - UNIX_EPOCH_MJD
     turn = _turn(table)
-    night = np.asarray(null.noise.night)
+    night = np.asarray(noise.night)
     blocks = np.unique(night[keep])
     clock = _Clock.of(date[keep])
     night_date = np.array([date[keep & (night == b)].mean() for b in blocks])
@@ -170,18 +174,18 @@ def _drawn(
     per_thrust = np.zeros((len(table), 2))
     fitted = None
     if push is not None:
-        unit = refit_departure(push, keep)
+        unit = refit_departure(push, fitted_to)[drawn]
         information = thrust_information(push)
         direction, single = _direction(information, component)
         per_thrust = np.einsum("nij,njk,k->ni", turn, unit, direction) / ARCSEC_RAD
         a_det, how = _threshold(threshold, push, direction, single)
         night_unit = np.array([per_thrust[keep & (night == b)].mean(axis=0) for b in blocks])
-        rungs = _rungs(ladder, a_det, night_unit, _night_error(turn, null.noise, keep))
+        rungs = _rungs(ladder, a_det, night_unit, _night_error(turn, noise, keep))
         multiples = rungs / a_det
         fitted = _fitted(information, unit, turn)
         note = _direction_note(direction, single, push) + how
 
-    panels = _panels(table, turn, keep, null.noise, blocks, per_thrust, rungs)
+    panels = _panels(table, turn, keep, noise, blocks, per_thrust, rungs)
     fig = style.HouseFigure(figsize=figsize or (style.PAGE_INCH, 4.7))
     width, height = fig.get_size_inches()
     lines = _wrapped(note, width)
