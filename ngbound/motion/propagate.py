@@ -33,6 +33,9 @@ from ngbound.sky import load_ephemeris, tdb_d_to_iso
 Floats = NDArray[np.float64]
 MAX_STEPS = 50_000
 FIRST_GUESS_STEPS = 512
+HOPELESS = 4.0
+"""Beyond this many times MAX_STEPS, judged by how far a good part of them has come, an integration
+is not carried on."""
 SLACK_D = 1e-6
 WINDOW_PASSES = 12
 
@@ -160,9 +163,15 @@ def _explain(
             tau_d=float(met[1]),
         )
     if status == TOO_MANY_STEPS:
+        limit = f"needed more than {MAX_STEPS} steps"
+        if steps < MAX_STEPS:
+            limit = (
+                f"came {abs(float(met[1])):.4g} d far in {steps} steps, so that the span would "
+                f"need far more than the {MAX_STEPS} allowed,"
+            )
         return PropagationError(
-            f"The integration needed more than {steps} steps and stopped at {when} TDB; shorten "
-            "the span, or check whether the orbit circles a planet.",
+            f"The integration {limit} and stopped at {when} TDB; shorten the span, or check "
+            "whether the orbit circles a planet or grazes the Sun.",
             tau_d=float(met[1]),
         )
     return PropagationError(
@@ -190,6 +199,8 @@ def _integrate_leg(
             tab, push, physics, epoch_d, state, tau_d, eps, cap_d, breaks, on, n_max
         )
         if status != TOO_MANY_STEPS or n_max >= MAX_STEPS:
+            break
+        if n_max > FIRST_GUESS_STEPS and n_max * abs(tau_d) > HOPELESS * MAX_STEPS * abs(met[1]):
             break
         n_max = min(MAX_STEPS, n_max * 8)
     if status != OK:

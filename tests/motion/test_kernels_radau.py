@@ -1,15 +1,18 @@
 """The integrator against itself: convergence, round trips, breaks, failures."""
 
+import time
+
 import numpy as np
 import pytest
 
+from ngbound.constants import GM_SUN_AU3_D2
 from ngbound.errors import EphemerisRangeError, PropagationError
 from ngbound.motion import ForceModel, Thrust, Window, integrate_track
 from ngbound.motion._kernels.radau import NODES, TO_POWERS, V_WEIGHTS, X_WEIGHTS
 from ngbound.sky import load_ephemeris
 from tests.benchmarks.plain_twin import plain_track
 from tests.motion.orbits import BELT, HYPERBOLA, at_perihelion
-from tests.units import metre
+from tests.units import km, metre
 
 THRUST = Thrust(A=(1e-8, 1e-9, 1e-9))
 
@@ -221,6 +224,31 @@ def test_orbit_into_the_sun_is_refused_in_a_sentence() -> None:
     sun[3:] = 0.0
     with pytest.raises(PropagationError, match=r"runs into the sun at 2000-.* TDB"):
         integrate_track(0.0, sun, 0.0, 100.0)
+
+
+@pytest.mark.parametrize(("share", "years"), [(1.0, 90.0), (0.5, 60.0)])
+def test_too_many_revolutions_are_refused_early(share: float, years: float) -> None:
+    # around the Sun at 0.05 au, on a circle and on an orbit that comes within 1.5 solar radii
+    sun = np.concatenate(load_ephemeris().posvel("sun", 0.0))
+    speed = share * np.sqrt(GM_SUN_AU3_D2 / 0.05)
+    state = sun + [0.05, 0.0, 0.0, 0.0, speed, 0.0]
+    integrate_track(0.0, state, 0.0, 10.0)
+    started = time.process_time()
+    with pytest.raises(PropagationError, match="far more than the 50000 allowed"):
+        integrate_track(0.0, state, 0.0, 365.25 * years)
+    assert time.process_time() - started < 0.5
+    # a span that can be had is not refused
+    track = integrate_track(0.0, state, 0.0, 365.25)
+    assert track.ahead is not None and track.ahead.n > 1000
+
+
+def test_satellite_of_the_earth_is_refused_early() -> None:
+    position, velocity = load_ephemeris().posvel("earth", 0.0)
+    height = 7000.0 * km
+    speed = np.sqrt(load_ephemeris().gm_au3_d2("earth") / height)
+    state = np.concatenate([position + [height, 0.0, 0.0], velocity + [0.0, speed, 0.0]])
+    with pytest.raises(PropagationError, match="check whether the orbit circles a planet"):
+        integrate_track(0.0, state, 0.0, 3652.0)
 
 
 def test_span_outside_the_ephemeris_is_refused() -> None:
