@@ -50,14 +50,16 @@ def _sums(tab, body, interval, polynomial, factor, out):
         x = 0.0
         y = 0.0
         z = 0.0
-        for k in range(n):
+        for k in range(1, n):
             t = polynomial[k, j]
             x += cx[k] * t
             y += cy[k] * t
             z += cz[k] * t
-        out[0, LANES * body + j] = x * factor
-        out[1, LANES * body + j] = y * factor
-        out[2, LANES * body + j] = z * factor
+        # the largest term comes last, so that its rounding comes once
+        t = polynomial[0, j]
+        out[0, LANES * body + j] = (x + cx[0] * t) * factor
+        out[1, LANES * body + j] = (y + cy[0] * t) * factor
+        out[2, LANES * body + j] = (z + cz[0] * t) * factor
 
 
 @kernel(fastmath={"contract", "nsz"})
