@@ -95,7 +95,7 @@ class MassBound:
     confidence : float
         Of the quantile. Where the acceleration is one quoted limit (``acceleration_kind`` "upper
         limit"), it is that of the budget alone; ``joint_confidence`` is what can be claimed
-        together.
+        together, None where the limit came without a confidence.
     mass_median : Quantity, kg
         Median of the draws, for orientation; no estimate (it depends on the prior of A).
     mass_detection, diameter_detection : Quantity or None
@@ -112,7 +112,7 @@ class MassBound:
     diameter: Quantity
     diameter_error: Quantity
     confidence: float
-    joint_confidence: float
+    joint_confidence: float | None
     mass_median: Quantity
     mass_detection: Quantity | None
     diameter_detection: Quantity | None
@@ -148,7 +148,9 @@ class MassBound:
         upper = rounded(float(self.acceleration_upper.value), 2, outward="up")
         if self.acceleration_kind == "upper limit":
             held = f"|A| held at its limit of {upper} au/d2"
-            if self.joint_confidence < self.confidence:
+            if self.joint_confidence is None:
+                joint = " (of the budget; the limit came without one, so none holds for both)"
+            elif self.joint_confidence < self.confidence:
                 joint = (
                     f" (at least {percent(self.joint_confidence)} together with that of the limit)"
                 )
@@ -306,9 +308,10 @@ def mass_bound(
     mass_low, mass_err = quantile_and_error(mass, level, n_eff)
     diameter_low, diameter_err = quantile_and_error(diameter, level, n_eff)
     single = len(samples) == 1
-    joint = confidence
-    if single and acceleration.limit_confidence is not None:
-        joint = max(0.0, confidence + acceleration.limit_confidence - 1)
+    joint: float | None = confidence
+    if single:
+        of_limit = acceleration.limit_confidence
+        joint = None if of_limit is None else max(0.0, confidence + of_limit - 1)
     mass_detection = diameter_detection = a_det = None
     remarks = acceleration.remarks
     if threshold is not None:

@@ -93,7 +93,8 @@ class Reconciliation:
         chance = why.chance_text(self.probability)
         text = (
             f"One and the same thrust in all results gives chi2 = {number_text(self.chi2)} for "
-            f"{self.dof}; a tension at least this large has the probability {chance}"
+            f"{self.dof} degree{'s' * (self.dof > 1)} of freedom; a tension at least this large "
+            f"has the probability {chance}"
         )
         if self.probability >= 1.0 - self.level:
             return text + ": the results agree, and nothing needs explaining."

@@ -64,6 +64,11 @@ class Level:
     alpha: float
     power: float
 
+    @property
+    def joint_words(self) -> str:
+        """For a test of several components together, which has no sides."""
+        return self.words.removeprefix("one-sided ").removeprefix("two-sided ")
+
     def one(self) -> float:
         """Non-centrality of a test of one component."""
         return self.z + float(norm.ppf(self.power))
@@ -156,7 +161,6 @@ def readings(
 ) -> tuple[Reading, ...]:
     """Every reading of a threshold of ``size`` au/d2, the claimed one first; ``noise_scale``: how
     many times larger the residuals say the errors are."""
-    k = information.k
     out: list[Reading] = []
     letters = list(information.components)
     if quoted.component != "any":
@@ -167,64 +171,77 @@ def readings(
             )
         letters.sort(key=lambda c: c != quoted.component)
     for level, changed in _levels(quoted):
-        one, together = level.one(), level.joint(k)
-        axes: list[tuple[str, float, tuple[str, ...]]] = []
-        for letter in letters:
-            held = float(information.sigma_held(letter).value)
-            free = float(information.sigma_free(letter).value)
-            apart: tuple[str, ...] = ()
-            if quoted.component == "any":
-                apart = (f"the {_WORDS[letter]} component alone instead of any direction",)
-            elif letter != quoted.component:
-                apart = (
-                    f"the {_WORDS[letter]} component instead of the {_WORDS[quoted.component]}",
+        axes = _single(information, quoted, letters, level)
+        if not set(changed) & set(_SIDES):  # a joint test has no sides
+            axes += _joint(information, quoted, letters, level)
+        for words, value, change in axes:
+            out.append(Reading(words, value, size / value, (*change, *changed)))
+            if not changed and abs(math.log(noise_scale)) > MATCHES:
+                scaled = noise_scale * value
+                out.append(
+                    Reading(f"{words}, {_SCALED}", scaled, size / scaled, (*change, _SCALED))
                 )
-            for treatment, value in (("held", one * held), ("free", one * free)):
-                wrong = treatment != quoted.others and quoted.component != "any"
-                axes.append(
-                    (
-                        f"{_WORDS[letter]} component, {_OTHERS[treatment]}",
-                        value,
-                        (*apart, *((f"{_OTHERS[treatment]},{_NOT[treatment]}",) if wrong else ())),
-                    )
-                )
-            if k > 1:
-                axes.append(
-                    (
-                        f"{_WORDS[letter]} thrust, {_TOGETHER}",
-                        together * held,
-                        (*apart, _TOGETHER),
-                    )
-                )
-        if k > 1:
-            values = information.eigenvalues
-            mean = mean_sigma(information)
-            fit_any = quoted.component == "any"
-            for words, value, claim in (
-                ("worst direction", together * float(values[0]) ** -0.5, True),
-                ("best direction", together * float(values[-1]) ** -0.5, False),
-                ("mean over directions", together * mean, False),
-            ):
-                change = () if fit_any and claim else (f"{words} of all",)
-                axes.append((f"{words}, {_TOGETHER}", value, change))
-        out += [
-            Reading(f"{words}, {level.words}", value, size / value, (*change, *changed))
-            for words, value, change in axes
-            # a joint test has no sides
-            if not (_TOGETHER in words and changed and changed[0] in _SIDES)
-        ]
-        if not changed and abs(math.log(noise_scale)) > MATCHES:
-            out += [
-                Reading(
-                    f"{words}, {level.words}, {_SCALED}",
-                    noise_scale * value,
-                    size / (noise_scale * value),
-                    (*change, _SCALED),
-                )
-                for words, value, change in axes
-            ]
     out.sort(key=lambda reading: len(reading.changes))
     return tuple(out)
+
+
+_Axis = tuple[str, float, tuple[str, ...]]
+"""Words, value in au/d2, what differs from the claim."""
+
+
+def _single(
+    information: ThrustInformation, quoted: QuotedThreshold, letters: list[str], level: Level
+) -> list[_Axis]:
+    """One component tested by itself, the others held at zero or free."""
+    axes: list[_Axis] = []
+    for letter in letters:
+        for treatment, sigma in (
+            ("held", information.sigma_held(letter)),
+            ("free", information.sigma_free(letter)),
+        ):
+            words = f"{_WORDS[letter]} component, {_OTHERS[treatment]}"
+            change: tuple[str, ...] = ()
+            if quoted.component == "any":
+                change = (f"the {words}, instead of any direction",)
+            else:
+                if letter != quoted.component:
+                    change = (_instead(letter, quoted.component),)
+                if treatment != quoted.others:
+                    change += (f"{_OTHERS[treatment]},{_NOT[treatment]}",)
+            value = level.one() * float(sigma.value)
+            axes.append((f"{words}, {level.words}", value, change))
+    return axes
+
+
+def _joint(
+    information: ThrustInformation, quoted: QuotedThreshold, letters: list[str], level: Level
+) -> list[_Axis]:
+    """All components tested together, for a thrust along one axis, the worst, the best, any."""
+    if information.k < 2:
+        return []
+    reach, values = level.joint(information.k), information.eigenvalues
+    any_of = quoted.component == "any"
+    axes: list[_Axis] = []
+    for letter in letters:
+        change = () if letter == quoted.component else (_instead(letter, quoted.component),)
+        held = float(information.sigma_held(letter).value)
+        axes.append((f"{_WORDS[letter]} thrust", reach * held, (*change, _TOGETHER)))
+        if any_of:
+            change = (f"the {_WORDS[letter]} direction instead of any",)
+            axes[-1] = (*axes[-1][:2], change)
+    for words, sigma in (
+        ("worst direction", float(values[0]) ** -0.5),
+        ("best direction", float(values[-1]) ** -0.5),
+        ("mean over directions", mean_sigma(information)),
+    ):
+        claimed = any_of and words == "worst direction"
+        axes.append((words, reach * sigma, () if claimed else (f"{words} of all",)))
+    told = level.joint_words
+    return [(f"{words}, {_TOGETHER}, {told}", value, change) for words, value, change in axes]
+
+
+def _instead(letter: str, claimed: str) -> str:
+    return f"the {_WORDS[letter]} component instead of the {_WORDS.get(claimed, claimed)}"
 
 
 def mean_sigma(information: ThrustInformation) -> float:

@@ -63,6 +63,11 @@ def test_the_same_seed_gives_the_same_bracket(outline):
     assert one == two and one != other
 
 
+def test_the_table_of_a_notebook(outline):
+    shown = audit_geometry(outline, {**CLAIM, "value": 1e-8})._repr_html_()
+    assert "<table>" in shown and "sagitta law" in shown
+
+
 def test_a_given_orbit_is_used(outline):
     # round, as the object's own orbit: fewer arcs, a narrower bracket
     given = {**outline, "q_au": 1.9, "e": 0.04}

@@ -11,6 +11,7 @@ import pytest
 
 from ngbound.errors import CaseError, MassError
 from ngbound.mass import audit_numbers
+from ngbound.mass.written import written_rounding
 
 # zeta Q m v = 0.5 x 1e27 x 2.9915e-26 x 800 = 11966 N; A = 1.43e-8 au/d2 = 2.866e-7 m/s2, times
 # 0.6:
@@ -161,6 +162,53 @@ def test_magnitude_needed():
     change = by_name["absolute_magnitude",]
     assert change.needed["absolute_magnitude"] == pytest.approx(18.0, abs=0.01)
     assert change.ratios["absolute_magnitude"] == pytest.approx(2.0, abs=0.01)
+
+
+def test_an_unknown_species_is_told_with_its_neighbours():
+    with pytest.raises(CaseError, match="'H20' is not known. Did you mean 'H2O'"):
+        audit_numbers(mass_loss="3 kg/s", species="H20")
+    # dust has no molecules: a rate of it enters no test
+    dusty = audit_numbers(mass_loss="3 kg/s", rate="1e26", species="dust")
+    assert dusty.verdict == "untestable" and set(dusty.untested) == {"mass_loss", "rate"}
+
+
+def test_the_distance_is_one_of_the_numbers():
+    # 1.25^-2 = 0.64; with 2.5 au it is 0.16
+    push = {"acceleration": "1.00e-8 au/d2", "local_acceleration": "1.283e-7 m/s2"}
+    assert audit_numbers(**push, at="1.25 au").verdict == "sound"
+    found = audit_numbers(**push, at="2.50 au")
+    needed = {c.quantities: c.needed for c in found.changes}
+    assert needed["at",]["at"] == pytest.approx(1.25, rel=0.01)
+    # its digits count: 1.2 au is 1.15 to 1.25
+    assert audit_numbers(**push, at="1.2 au").verdict == "sound"
+
+
+def test_rounding_is_the_half_unit_of_the_last_digit():
+    for text, half in (
+        ("4.0", 0.0125),
+        ("4.00e-9", 0.00125),
+        ("(4.0 +- 0.3)e5", 0.0125),
+        ("400", 0.125),
+        ("400.", 0.00125),
+        ("> 0.040 km", 0.0125),
+        ("1", 0.25),
+        ("0.0", 0.0),
+        (4.0, 0.0),
+    ):
+        assert written_rounding(text) == pytest.approx(half), text
+
+
+def test_quoted_errors_count_twice_their_size():
+    # 5.236e8 kg; 20 % off is within two sigma of 12 %, 30 % is not
+    for mass, holds in (("(6.3 +- 0.6)e8 kg", True), ("(6.9 +- 0.6)e8 kg", False)):
+        found = audit_numbers(mass=mass, density="1.000e3 kg/m3", diameter="100.0 m")
+        assert found.tests[0].holds is holds, str(found)
+
+
+def test_the_tables_of_a_notebook():
+    for paper in (COMET, {**COMET, "mass": "1e13 kg"}):
+        shown = audit_numbers(**paper)._repr_html_()
+        assert "<table>" in shown and "Not tested" in shown
 
 
 def test_the_record_is_json():

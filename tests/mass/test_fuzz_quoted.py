@@ -50,7 +50,7 @@ OPTIONS = st.fixed_dictionaries(
 LIKELY = st.dictionaries(st.sampled_from(sorted(UNITS)), SPECS | texts(), min_size=1, max_size=6)
 
 
-@settings(max_examples=500, deadline=None)
+@settings(max_examples=200, deadline=None)
 @given(SPECS | st.binary(max_size=4) | st.lists(st.floats(), max_size=3))
 def test_any_number_is_read_or_refused_in_words(spec):
     try:
@@ -61,7 +61,7 @@ def test_any_number_is_read_or_refused_in_words(spec):
         assert isinstance(unit, str) and str(found)
 
 
-@settings(max_examples=500, deadline=None)
+@settings(max_examples=200, deadline=None)
 @given(LIKELY, OPTIONS)
 def test_any_set_of_numbers_has_a_verdict_or_is_refused_in_words(numbers, options):
     try:
@@ -76,7 +76,7 @@ def test_any_set_of_numbers_has_a_verdict_or_is_refused_in_words(numbers, option
     assert set(found.quoted) == entered | (set(found.untested) & set(UNITS))
 
 
-@settings(max_examples=150, deadline=None)
+@settings(max_examples=100, deadline=None)
 @given(
     st.dictionaries(
         st.sampled_from(sorted(set(UNITS) - {"at", "absolute_magnitude"})),
@@ -140,7 +140,7 @@ RESULTS = st.fixed_dictionaries(
 )
 
 
-@settings(max_examples=200, deadline=None)
+@settings(max_examples=100, deadline=None)
 @given(PAPERS)
 def test_any_paper_is_audited_or_refused_in_words(paper):
     try:
@@ -149,7 +149,7 @@ def test_any_paper_is_audited_or_refused_in_words(paper):
         sentence(str(error))
 
 
-@settings(max_examples=200, deadline=None)
+@settings(max_examples=100, deadline=None)
 @given(RESULTS, RESULTS)
 @pytest.mark.filterwarnings("ignore")
 def test_any_results_are_reconciled_or_refused_in_words(one, other):

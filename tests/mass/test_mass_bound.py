@@ -150,6 +150,9 @@ def test_a_quoted_limit_says_what_its_confidence_covers():
     bound = mass_bound(1e-8, log_normal_budget(), g_at=1.0, limit_confidence=0.95)
     assert bound.joint_confidence == pytest.approx(0.90)
     assert "at least 90 % together" in bound.sentence()
+    bare = mass_bound(1e-8, log_normal_budget(), g_at=1.0)
+    assert bare.joint_confidence is None and bare.to_dict()["joint_confidence"] is None
+    assert "the limit came without one" in bare.sentence()
     assert any("held at the quoted limit" in a for a in bound.assumptions)
 
 

@@ -112,13 +112,13 @@ def fit():
     return fitted(*EARLY, 0 * THRUST, 5, ROUND)
 
 
-def quoted_limit(fit, sigmas: float) -> dict:
+def quoted_limit(fit, sigmas: float, digits: int = 4) -> dict:
     """A 95 % limit on the transverse thrust, the others free: so many sigma of the fit."""
     sigma = float(fit.A_sigma[1].value)
     return {
         "title": "limit from an arc",
         "threshold": {
-            "value": f"{sigmas * sigma:.3e} au/d2",
+            "value": f"{sigmas * sigma:.{digits - 1}e} au/d2",
             "component": "T",
             "others": "free",
             "confidence": 0.95,
@@ -168,6 +168,17 @@ def test_one_sided_called_two_sided_is_named(fit):
     assert not found.sound and found.threshold.verdict == "another reading", str(found)
     assert found.threshold.changes == ("one-sided instead of two-sided",)
     assert "one-sided instead of two-sided" in found.slips
+
+
+@pytest.mark.parametrize("digits", [1, 2, 3])
+def test_limits_with_fewer_digits_hold_or_are_in_doubt(fit, digits):
+    found = audit(quoted_limit(fit, 1.960, digits), arc=fit)
+    assert found.sound or found.undecided, str(found)
+    assert found.sound or digits == 1
+    wrong = audit(quoted_limit(fit, 1.645, digits), arc=fit)
+    assert not wrong.sound, str(wrong)
+    assert any("one-sided" in change for change in wrong.threshold.changes), str(wrong)
+    assert digits == 1 or not wrong.undecided
 
 
 def with_digits(numbers: dict, digits: int) -> dict:

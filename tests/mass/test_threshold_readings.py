@@ -169,5 +169,5 @@ def test_refusals(fit):
         audit({"title": "nothing"})
     with pytest.raises(CaseError, match="no \\[threshold\\]"):
         audit({"numbers": {"mass": 1.0}, "arc": {"file": "x.psv"}})
-    with pytest.raises(CaseError, match="unknown key"):
+    with pytest.raises(CaseError, match="did you mean 'arcsec'"):
         audit_threshold(fit, {"value": 1e-9}, {"arcsecs": 1.0})
