@@ -12,8 +12,8 @@ from scipy.stats import chi2
 
 import ngbound as ng
 from ngbound import run
-from ngbound.errors import CaseError, NgboundError
-from ngbound.report import load_record
+from ngbound.errors import CaseError, NgboundError, NgboundWarning
+from ngbound.report import load_record, render_report
 from ngbound.rounding import length_text, mass_text
 
 DEMO = Path(__file__).parent.parent / "data_demo"
@@ -351,3 +351,18 @@ def test_a_law_off_where_the_rate_was_measured_costs_the_mass_but_nothing_else(q
     assert weighed.bound is None and weighed.reach is None
     assert any("g = 0 at 4 au" in remark for remark in weighed.remarks)
     assert weighed.active and weighed.radiation is not None
+
+
+def test_rates_that_do_not_follow_the_law_are_warned_about_in_the_report(quick):
+    more = "".join(f'[[outgassing]]\nrate = "(4.0 +- 0.2)e26"\nat = {at}\n' for at in (1.25, 2.5))
+    bounds = run.limit_case(quick)
+    case = run.case_for(with_more(quick, more))
+    with pytest.warns(NgboundWarning), run.hear_warnings() as heard:
+        weighed = run.weigh(replace(bounds, fits=replace(bounds.fits, case=case)), run.Steps(False))
+    (told,) = [text for text in heard if "do not follow the thrust law" in text]
+    assert "H2O: force / g(r) at 2.5 au" in told
+    assert "rates against the thrust law: H2O: force / g(r) at 2.5 au" in " ".join(
+        str(weighed).split()
+    )
+    record = {**weighed.found(), "warnings": heard}
+    assert told in " ".join(render_report(record).split())
