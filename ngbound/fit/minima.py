@@ -1,0 +1,403 @@
+"""Other orbits that explain the same arc: a scan for several minima of chi2.
+
+Imports numpy, errors, arc, motion and this room. Between apparitions far apart the number of
+revolutions may be uncertain (A. Milani & G. F. Gronchi 2010, Theory of Orbit Determination, ch. 7
+and 8, on the linkage of arcs; from memory), with a thrust more so, because it changes the period.
+The apparitions are therefore linked anew, from the one that tells most outwards.
+With C the covariance of what is linked so far and X the partials of the next records, the line
+
+    theta + z C^(1/2) v,    v the first eigenvector of C^(1/2)' X' X C^(1/2),
+
+is the one along which their foretold places are most uncertain, z in standard deviations of it. It
+is walked in steps that move those places by a few degrees; from every dip of chi2 the orbit is
+corrected, and every orbit that explains what is linked goes on to the next apparition. The thrust
+has a wide Gaussian prior until the whole arc is linked, and none in the end.
+"""
+
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ngbound.errors import FitError, NgboundError, PropagationError
+from ngbound.fit.least_squares import Linearised, differential_correction, linearise, thrust_of
+from ngbound.fit.orbit_search import at_epoch
+from ngbound.fit.solution import Fit
+from ngbound.motion import Orbit, integrate_track, light_margin_d, residuals, see
+
+Floats = NDArray[np.float64]
+Bools = NDArray[np.bool_]
+
+APPARITION_GAP_D = 100.0
+REACH_SIGMA = 4.0
+STEP_RAD = 0.12
+LINEAR_RAD = 0.03
+"""Foretold places known better than this need no walk."""
+MOST_STEPS = 240
+MOST_DIPS = 16
+MOST_ORBITS = 12
+WORTH = 400.0
+"""Orbits whose chi2 exceeds the best one's by more are given up on the way."""
+RIVAL = 25.0
+"""Up to so much more chi2 another minimum is a rival: 5 sigma in one parameter."""
+THRUST_AU_D2 = 5e-9
+"""Standard deviation of the prior of each thrust component, or twice the fitted one where that is
+more. Comets have up to some 1e-8 (from memory)."""
+LOOSE_STATE = np.array([1.0, 1.0, 1.0, 0.02, 0.02, 0.02])
+"""au and au/d: only keeps the covariance of a lone night finite."""
+SWEEPS = 25
+SETTLED = 0.02
+SAME_SIGMA = 0.5
+
+
+@dataclass(frozen=True, eq=False)
+class Minimum:
+    """One orbit that explains the arc.
+
+    Attributes
+    ----------
+    theta : (p,) state at the epoch of the fit, then the thrust
+    chi2 : of the records that the fit kept, with its errors
+    period_d : osculating period at that epoch; nan for an open orbit
+    distance_sigma : from the fit, in its own standard errors
+    """
+
+    theta: Floats = field(repr=False)
+    chi2: float
+    period_d: float
+    distance_sigma: float
+
+    def to_dict(self) -> dict[str, Any]:
+        """Plain values."""
+        return {**vars(self), "theta": self.theta.tolist()}
+
+
+@dataclass(frozen=True, eq=False)
+class MinimaScan:
+    """The minima of chi2 that a scan found.
+
+    Attributes
+    ----------
+    fit : Fit
+        About which the scan was made.
+    minima : tuple of Minimum
+        By chi2; that of the fit is among them.
+    n_apparitions, n_starts : int
+        Starts are the corrections tried.
+    complete : bool
+        False where an apparition foretells the next one so badly that the walk is too coarse, or
+        open in two directions.
+    """
+
+    fit: Fit = field(repr=False)
+    minima: tuple[Minimum, ...]
+    n_apparitions: int
+    n_starts: int
+    complete: bool
+
+    @property
+    def best(self) -> Minimum:
+        """The lowest."""
+        return self.minima[0]
+
+    @property
+    def fit_is_best(self) -> bool:
+        """Whether none lies lower than the fit."""
+        return self.best.distance_sigma == 0.0
+
+    @property
+    def rivals(self) -> tuple[Minimum, ...]:
+        """Others whose chi2 exceeds the lowest by less than 25."""
+        return tuple(m for m in self.minima[1:] if m.chi2 - self.best.chi2 < RIVAL)
+
+    def orbit(self, minimum: Minimum) -> Orbit:
+        """The orbit of one of the minima."""
+        fit = self.fit
+        return Orbit(
+            fit.orbit.epoch_tdb_d,
+            minimum.theta[:6].copy(),
+            thrust_of(minimum.theta, fit.thrust, fit.components),
+            fit.orbit.forces,
+        )
+
+    @property
+    def warning(self) -> str:
+        """A sentence where the orbit is not the only one; "" else."""
+        if not self.rivals:
+            return ""
+        one = self.rivals[0]
+        count = len(self.rivals)
+        return (
+            f"The arc allows {count} other orbit{'s' if count > 1 else ''} "
+            f"{self._what()} with a chi2 higher by less than {RIVAL:g} (the next by "
+            f"{one.chi2 - self.best.chi2:.1f}, period {one.period_d:.1f} d instead of "
+            f"{self.best.period_d:.1f} d): estimate, threshold and limit are those of one of them. "
+            "Observations between the apparitions would tell."
+        )
+
+    def _what(self) -> str:
+        return "with thrust" if self.fit.components else "without thrust"
+
+    def to_dict(self) -> dict[str, Any]:
+        """Plain values."""
+        return {
+            "n_apparitions": self.n_apparitions,
+            "n_starts": self.n_starts,
+            "complete": self.complete,
+            "fit_is_best": self.fit_is_best,
+            "minima": [
+                {**m.to_dict(), "delta_chi2": m.chi2 - self.best.chi2} for m in self.minima
+            ],
+            "warning": self.warning,
+        }
+
+    def __str__(self) -> str:
+        count = len(self.minima)
+        lines = [
+            f"Minima of chi2 {self._what()}: {count} found from {self.n_starts} starts over "
+            f"{self.n_apparitions} apparition{'s' if self.n_apparitions > 1 else ''}"
+            f"{'' if self.complete else ', the scan is not complete'}"
+        ]
+        for m in self.minima if count > 1 else ():
+            thrust = ", ".join(
+                f"{name} {a:+.3g}"
+                for name, a in zip(self.fit.names[6:], m.theta[6:].tolist(), strict=True)
+            )
+            lines.append(
+                f"  chi2 {m.chi2:.2f} (+{m.chi2 - self.best.chi2:.2f}), period {m.period_d:.2f} d"
+                f"{', ' + thrust if thrust else ''}{', the fit' if m.distance_sigma == 0 else ''}"
+            )
+        return "\n".join([*lines, *([self.warning] if self.warning else [])])
+
+
+def apparitions(fit: Fit) -> tuple[Bools, ...]:
+    """Kept records (n,) of each apparition, in order of time."""
+    day = fit.records.tdb_d
+    label = np.concatenate([[0], np.cumsum(np.diff(day) > APPARITION_GAP_D)])
+    masks = (fit.keep & (label == number) for number in range(int(label[-1]) + 1))
+    return tuple(mask for mask in masks if mask.any())
+
+
+def scan_minima(fit: Fit, progress: Callable[[str], None] | None = None) -> MinimaScan:
+    """Look for other orbits that explain the records a fit kept, with its errors.
+
+    Parameters
+    ----------
+    fit : Fit
+        With or without thrust.
+    progress : callable, optional
+        Is given a sentence now and then.
+    """
+    parts = apparitions(fit)
+    walk = _Walk(fit)
+    found = walk.link(parts, _most_telling(fit, parts), progress)
+    minima = [_minimum(fit, fit.theta, fit.chi2)]
+    for epoch_d, theta in found:
+        other = walk.converge(epoch_d, theta)
+        if other is not None and all(not _same(fit, other[1], m.theta) for m in minima):
+            minima.append(_minimum(fit, other[1], other[0]))
+    minima.sort(key=lambda m: m.chi2)
+    return MinimaScan(fit, tuple(minima), len(parts), walk.n_starts, walk.complete)
+
+
+def _minimum(fit: Fit, theta: Floats, chi2: float) -> Minimum:
+    off = theta - fit.theta
+    orbit = Orbit(
+        fit.orbit.epoch_tdb_d,
+        theta[:6].copy(),
+        thrust_of(theta, fit.thrust, fit.components),
+        fit.orbit.forces,
+    )
+    period = orbit.elements().period_d
+    return Minimum(theta, chi2, period, float(np.sqrt(max(off @ fit.normal @ off, 0.0))))
+
+
+def _same(fit: Fit, one: Floats, other: Floats) -> bool:
+    off = one - other
+    return float(off @ fit.normal @ off) < SAME_SIGMA**2
+
+
+def _root(white: Floats) -> Floats:
+    """A matrix R with R R' = (white' white)^-1, never squaring what is badly conditioned."""
+    scale = np.linalg.norm(white, axis=0)
+    _, s, vt = np.linalg.svd(white / scale, full_matrices=False)
+    return (vt.T / np.maximum(s, s[0] * 1e-15)) / scale[:, None]
+
+
+def _foretold(root: Floats, design: Floats) -> tuple[Floats, Floats]:
+    """Uncertainty (p,) of foretold places, radians, largest first, and the steps (p, p) to it."""
+    moved = design.reshape(-1, design.shape[-1]) @ root
+    values, vectors = np.linalg.eigh(moved.T @ moved)
+    size = np.sqrt(np.maximum(values[::-1], 0.0) / len(design))
+    return size, root @ vectors[:, ::-1]
+
+
+def _most_telling(fit: Fit, parts: tuple[Bools, ...]) -> int:
+    """The apparition whose records alone tell most of the orbit: the bend of an arc is known as
+    its length squared times the root of its number of records."""
+    days = [np.ptp(fit.records.tdb_d[part]) for part in parts]
+    told = [day**2 * np.sqrt(part.sum()) for day, part in zip(days, parts, strict=True)]
+    return int(np.argmax(told))
+
+
+class _Walk:
+    """The steps of a scan, and what they cost."""
+
+    def __init__(self, fit: Fit) -> None:
+        self.fit = fit
+        self.n_starts = 0
+        self.complete = True
+        thrust = np.maximum(THRUST_AU_D2, 2.0 * np.abs(fit.theta[6:]))
+        self.centre = np.concatenate([np.zeros(6), fit.theta[6:]])
+        self.tight = np.diag(np.concatenate([np.zeros(6), 1.0 / thrust]))[6:]
+        self.prior = np.concatenate([1.0 / LOOSE_STATE, 1.0 / thrust])
+
+    def link(
+        self,
+        parts: tuple[Bools, ...],
+        first: int,
+        progress: Callable[[str], None] | None,
+    ) -> list[tuple[float, Floats]]:
+        """Epoch and parameters of every orbit that explains all apparitions."""
+        fit = self.fit
+        epoch_d = float(np.mean(fit.records.tdb_d[parts[first]]))
+        start = at_epoch(
+            fit.theta, fit.orbit.epoch_tdb_d, epoch_d, fit.thrust, fit.orbit.forces
+        )
+        mask = parts[first].copy()
+        rest = [i for i in range(len(parts)) if i != first]
+        orbits = [start]
+        while rest and orbits:
+            middle = [float(np.mean(fit.records.tdb_d[parts[i]])) for i in rest]
+            reach = fit.records.tdb_d[mask]
+            away = [max(reach[0] - day, day - reach[-1], 0.0) for day in middle]
+            near = rest.pop(int(np.argmin(away)))
+            mask = mask | parts[near]
+            orbits = self._linked(orbits, epoch_d, mask, parts[near])
+            if progress is not None:
+                progress(
+                    f"{len(orbits)} orbits explain {len(parts) - len(rest)} of {len(parts)} "
+                    "apparitions"
+                )
+        return [(epoch_d, theta) for theta in orbits] if len(parts) > 1 else []
+
+    def _linked(
+        self, orbits: list[Floats], epoch_d: float, mask: Bools, new: Bools
+    ) -> list[Floats]:
+        """Orbits over the wider set of records."""
+        found: list[tuple[float, Floats, Floats]] = []  # value, parameters, whitened design
+        for theta in orbits:
+            for start in self._starts(theta, epoch_d, mask, new):
+                self.n_starts += 1
+                solved = self._correct(start, epoch_d, mask)
+                if solved is None:
+                    continue
+                _, there, white = solved
+                if all(np.linalg.norm(white @ (there - o)) > SAME_SIGMA for _, o, _ in found):
+                    found.append(solved)
+        found.sort(key=lambda solved: solved[0])
+        if len(found) > MOST_ORBITS:
+            self.complete = False
+        return [theta for value, theta, _ in found[:MOST_ORBITS] if value < found[0][0] + WORTH]
+
+    def _starts(self, theta: Floats, epoch_d: float, mask: Bools, new: Bools) -> list[Floats]:
+        """The dips of chi2 along the line on which the new places are most uncertain."""
+        try:
+            here = self._linearise(theta, epoch_d, mask)
+        except PropagationError:
+            return []
+        old = mask & ~new
+        white = self.fit.noise.mask(old).whiten(here.design[old].reshape(-1, theta.size))
+        root = _root(np.concatenate([white, np.diag(self.prior)]))
+        size, steps = _foretold(root, here.design[new])
+        if size[0] < LINEAR_RAD:
+            return [theta]
+        count = int(np.ceil(REACH_SIGMA * size[0] / STEP_RAD))
+        if count > MOST_STEPS // 2 or size[1] > 5.0 * STEP_RAD:
+            self.complete = False
+        z = np.linspace(-REACH_SIGMA, REACH_SIGMA, 2 * min(count, MOST_STEPS // 2) + 1)
+        line = theta + z[:, None] * steps[:, 0]
+        chi2 = np.array([self._chi2(each, epoch_d, mask) for each in line])
+        wall = np.concatenate([[np.inf], chi2, [np.inf]])
+        dips = np.flatnonzero((chi2 <= wall[:-2]) & (chi2 < wall[2:]) & np.isfinite(chi2))
+        dips = dips[np.argsort(chi2[dips])]
+        if len(dips) > MOST_DIPS:
+            self.complete = False
+        return [theta, *line[dips[:MOST_DIPS]]]
+
+    def _linearise(self, theta: Floats, epoch_d: float, mask: Bools) -> Linearised:
+        fit = self.fit
+        return linearise(
+            theta, epoch_d, fit.records, fit.noise.mask(mask), mask, fit.thrust, fit.components,
+            fit.orbit.forces,
+        )  # fmt: skip
+
+    def _chi2(self, theta: Floats, epoch_d: float, mask: Bools) -> float:
+        fit = self.fit
+        records = fit.records.subset(mask)
+        push = thrust_of(theta, fit.thrust, fit.components)
+        start = float(records.tdb_d.min()) - light_margin_d(records.observer_au, theta)
+        try:
+            track = integrate_track(
+                epoch_d, theta[:6], start, float(records.tdb_d.max()), push, fit.orbit.forces
+            )
+            seen = residuals(see(track, records), records)
+        except NgboundError:
+            return np.inf
+        return float(np.sum(fit.noise.mask(mask).whiten(seen.ravel()) ** 2))
+
+    def _correct(
+        self, theta: Floats, epoch_d: float, mask: Bools
+    ) -> tuple[float, Floats, Floats] | None:
+        """chi2, parameters and whitened design with the prior of the thrust; None if it fails."""
+        noise = self.fit.noise.mask(mask)
+        damping, here, value = 0.0, None, np.inf
+        trial = theta
+        for _ in range(SWEEPS):
+            try:
+                there = self._linearise(trial, epoch_d, mask)
+            except PropagationError:
+                there = None
+            new = np.inf if there is None else there.chi2 + self._cost(trial)
+            if there is not None and new <= value:
+                here, value, theta, damping = there, new, trial, 0.1 * damping
+                white = noise.whiten(here.design[mask].reshape(-1, theta.size))
+                miss = noise.whiten(here.seen[mask].ravel())
+                white = np.concatenate([white, self.tight])
+                miss = np.concatenate([miss, self.tight @ (self.centre - theta)])
+            elif here is None:
+                return None
+            else:
+                damping = max(10.0 * damping, 1e-6)
+            step = _solved(white, miss, damping)
+            if np.linalg.norm(white @ step) < SETTLED:
+                return value, theta, white
+            trial = theta + step
+        return None
+
+    def _cost(self, theta: Floats) -> float:
+        return float(np.sum((self.tight @ (theta - self.centre)) ** 2))
+
+    def converge(self, epoch_d: float, theta: Floats) -> tuple[float, Floats] | None:
+        """The minimum over the whole arc without any prior: chi2, and parameters at the epoch of
+        the fit."""
+        fit = self.fit
+        try:
+            at = differential_correction(
+                theta, epoch_d, fit.records, fit.noise, fit.keep, fit.thrust, fit.components,
+                fit.orbit.forces,
+            ).at  # fmt: skip
+            push = thrust_of(at.theta, fit.thrust, fit.components)
+            moved = at_epoch(at.theta, epoch_d, fit.orbit.epoch_tdb_d, push, fit.orbit.forces)
+        except (FitError, PropagationError):
+            return None
+        return at.chi2, moved
+
+
+def _solved(white: Floats, miss: Floats, damping: float) -> Floats:
+    scale = np.linalg.norm(white, axis=0)
+    u, s, vt = np.linalg.svd(white / scale, full_matrices=False)
+    s = np.maximum(s, s[0] * 1e-15)
+    return (vt.T @ (s / (s**2 + damping * s[0] ** 2) * (u.T @ miss))) / scale
