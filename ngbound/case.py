@@ -7,30 +7,17 @@ folder of the case file.
 May import errors, arc, sky, motion, fit, limits, mass and report; never run or cli.
 """
 
-import difflib
-import math
 import re
-import tomllib
 import warnings
-from collections import Counter
 from collections.abc import Callable
 from pathlib import Path
-from typing import Annotated, Any, Literal, Self, TypeVar
+from typing import Annotated, Any, Literal, Self
 
 import numpy as np
-from pydantic import (
-    BaseModel,
-    BeforeValidator,
-    ConfigDict,
-    Field,
-    ValidationError,
-    ValidationInfo,
-    field_validator,
-    model_validator,
-)
+from pydantic import Field, PrivateAttr, ValidationInfo, field_validator, model_validator
 
-from ngbound.arc import ErrorModel, user_stations
-from ngbound.errors import CaseError, NgboundWarning, StationError
+from ngbound.arc import ErrorModel, station, user_stations
+from ngbound.errors import CaseError, NgboundWarning
 from ngbound.limits import PRIOR_NAMES, PlannedNight
 from ngbound.mass import (
     DEFAULT_DIAMETERS_M,
@@ -41,34 +28,13 @@ from ngbound.mass import (
     bulk_density,
 )
 from ngbound.motion import LAWS, ForceModel, Orbit, TableLaw, Thrust, Window
-from ngbound.sky import parse_time
-
-MODEL_CONFIG = ConfigDict(extra="forbid", frozen=True, allow_inf_nan=False)
+from ngbound.sky import body_name, parse_time
+from ngbound.toml_file import Table, nearest, read_toml, see_whether, with_choices
 
 Positive = Annotated[float, Field(gt=0.0)]
 NotNegative = Annotated[float, Field(ge=0.0)]
 Probability = Annotated[float, Field(gt=0.0, lt=1.0)]
 Vector = tuple[float, float, float]
-
-
-def nearest(word: str, known: list[str]) -> str:
-    """``"did you mean 'x'?"`` when a known word is near, else the list of the known words."""
-    near = difflib.get_close_matches(word, known, n=1, cutoff=0.5)
-    return f"did you mean {near[0]!r}?" if near else f"known are {', '.join(known)}."
-
-
-def _as_value_error(make: Callable[..., Any], *arguments: Any, **options: Any) -> None:
-    """Build something from choices only to see whether they are sound."""
-    try:
-        make(*arguments, **options)
-    except (CaseError, StationError) as error:
-        raise ValueError(str(error)) from error
-
-
-class Table(BaseModel):
-    """Any table of a case file: frozen, finite numbers only, no unknown keys."""
-
-    model_config = MODEL_CONFIG
 
 
 class ObjectTable(Table):
@@ -100,7 +66,7 @@ class ArcTable(Table):
     @field_validator("stations")
     @classmethod
     def _sound(cls, stations: dict[str, StationTable]) -> dict[str, StationTable]:
-        _as_value_error(user_stations, {code: s.model_dump() for code, s in stations.items()})
+        see_whether(user_stations, {code: s.model_dump() for code, s in stations.items()})
         return stations
 
 
@@ -188,7 +154,7 @@ class ErrorsTable(Table):
 
     @model_validator(mode="after")
     def _sound(self) -> Self:
-        _as_value_error(self.error_model)
+        see_whether(self.error_model)
         return self
 
 
@@ -208,6 +174,13 @@ class ForcesTable(Table):
     def force_model(self) -> ForceModel:
         """The force model of these choices."""
         return ForceModel(**self.model_dump())
+
+    @model_validator(mode="after")
+    def _sound(self) -> Self:
+        for body in self.exclude:
+            see_whether(body_name, body, key="exclude")
+        see_whether(self.force_model)
+        return self
 
 
 class OrbitTable(Table):
@@ -238,9 +211,12 @@ class OrbitTable(Table):
         started = [any(x is not None for x in kind) for kind in (state, elements)]
         if complete != started or sum(complete) != 1:
             raise ValueError(
-                "must hold either position_au and velocity_au_d, "
+                "give either position_au and velocity_au_d, "
                 "or all of q_au, e, i_deg, node_deg, argperi_deg and tp"
             )
+        for key, when in (("epoch", self.epoch), ("tp", self.tp)):
+            if when is not None:
+                see_whether(parse_time, when, "tdb", key=key)
         return self
 
     def orbit(self, thrust: Thrust | None = None, forces: ForceModel | None = None) -> Orbit:
@@ -318,7 +294,7 @@ class ThrustTable(Table):
 
     @model_validator(mode="after")
     def _sound(self) -> Self:
-        _as_value_error(self.thrust)
+        see_whether(self.thrust)
         return self
 
 
@@ -365,21 +341,12 @@ class SamplingTable(Table):
     @classmethod
     def _known(cls, prior: str) -> str:
         if prior not in PRIOR_NAMES:
-            raise ValueError(f"there is no such prior; {nearest(prior, list(PRIOR_NAMES))}")
+            raise ValueError(f"there is no such prior; {nearest(prior, PRIOR_NAMES)}")
         return prior
 
 
-def _number_text_or_table(value: Any) -> Any:
-    """Refuse what no number with an uncertainty can be; Python would take true for 1."""
-    number = isinstance(value, int | float) and not isinstance(value, bool)
-    if not (isinstance(value, str | dict) or (number and math.isfinite(value))):
-        raise ValueError('must be a number, a text such as "5 +- 1", or a table')
-    return value
-
-
-Spec = Annotated[float | str | dict[str, Any], BeforeValidator(_number_text_or_table)]
+Spec = float | str | dict[str, Any]
 """A number, a text such as "(2.0 +- 0.5)e26", or a table such as {low = 1, high = 2}."""
-
 EXAMPLES = {
     "rate": 'rate = "(1.0 +- 0.2)e27" or "< 5 kg/s"',
     "at": "at = 1.4",
@@ -424,6 +391,14 @@ class InjectionTable(Table):
     )
     reject: bool = Field(default=False, description="Whether the outlier rule works on each arc.")
 
+    @field_validator("direction")
+    @classmethod
+    def _known(cls, direction: str | Vector) -> str | Vector:
+        words = ("worst", "best", "R", "T", "N")
+        if isinstance(direction, str) and direction not in words:
+            raise ValueError(f"there is no such direction; {nearest(direction, words)}")
+        return direction
+
 
 class PlannedTable(Table):
     """``[[planned]]``: a night of observations to come, for the forecast."""
@@ -438,6 +413,12 @@ class PlannedTable(Table):
     def night(self) -> PlannedNight:
         """The night as the forecast takes it."""
         return PlannedNight(**self.model_dump())
+
+    @model_validator(mode="after")
+    def _sound(self) -> Self:
+        see_whether(parse_time, self.utc, "utc", key="utc")
+        see_whether(station, self.station, key="station")
+        return self
 
 
 class OutgassingTable(Table):
@@ -480,7 +461,7 @@ class OutgassingTable(Table):
 
     @model_validator(mode="after")
     def _sound(self) -> Self:
-        _as_value_error(Outgassing.from_dict, self.given())
+        see_whether(Outgassing.from_dict, self.given())
         return self
 
 
@@ -615,6 +596,12 @@ class Case(Table):
     nucleus: NucleusTable = NucleusTable()
     reach: ReachTable | None = None
     output: OutputTable = OutputTable()
+    _notice: str = PrivateAttr(default="")
+
+    @property
+    def notice(self) -> str:
+        """What its user should know of the case as a whole; "" where there is nothing."""
+        return self._notice
 
     def own_stations(self) -> dict[str, dict[str, Any]]:
         """The user's own stations, as `read_arc` takes them."""
@@ -638,43 +625,6 @@ class Case(Table):
     def to_dict(self) -> dict[str, Any]:
         """All choices, defaults included, as JSON-able values."""
         return self.model_dump(mode="json")
-
-
-Model = TypeVar("Model", bound=BaseModel)
-
-
-def read_toml(path: str | Path, model: type[Model]) -> Model:
-    """Read a TOML file into a pydantic model, every fault told as a sentence.
-
-    Raises
-    ------
-    CaseError
-        When the file cannot be read, is not TOML, or holds an unknown or impossible choice.
-    """
-    path = Path(path)
-    try:
-        text = path.read_bytes().decode("utf-8")
-    except OSError as error:
-        reason = error.strerror or str(error)
-        raise CaseError(
-            f"{path} cannot be read: {reason}; give the path of a TOML file."
-        ) from error
-    except UnicodeDecodeError as error:
-        raise CaseError(
-            f"{path} is not a TOML file: byte {error.start} is not UTF-8 text."
-        ) from error
-    try:
-        content = tomllib.loads(text)
-    except tomllib.TOMLDecodeError as error:
-        raise CaseError(f"{path} is not valid TOML: {_lower_first(str(error))}.") from error
-    if not content:
-        raise CaseError(f"{path} is empty; it must hold at least {_required_keys(model)}.")
-    try:
-        return model.model_validate(content)
-    except ValidationError as error:
-        problems = [_sentence(path, text, model, dict(fault)) for fault in error.errors()]
-        more = f"  ({len(problems) - 1} more: {' '.join(problems[1:])})" if problems[1:] else ""
-        raise CaseError(problems[0] + more, problems=problems) from error
 
 
 def read_case(path: str | Path) -> Case:
@@ -732,17 +682,25 @@ def case_for(path: str | Path, **choices: Any) -> Case:
     else:
         case = _in_folder(Case(arc=ArcTable(file=path)), path, Path())
     given = {name: value for name, value in choices.items() if value is not None}
-    if not given:
-        return case
-    content = case.model_dump()
-    for name, value in given.items():
-        table, key = CHOICES[name]
-        content[table][key] = value
-    try:
-        return Case.model_validate(content)
-    except ValidationError as error:
-        fault = error.errors()[0]
-        raise CaseError(_fault("the command line", Case, dict(fault))) from error
+    if given:
+        said = " ".join(f"--{name.removesuffix('_name')} {value}" for name, value in given.items())
+        case = with_choices(
+            case, f"{path} with {said}", {CHOICES[name]: value for name, value in given.items()}
+        )
+    if path.suffix != ".toml":
+        case._notice = _bare(path, case)
+    return case
+
+
+def _bare(path: Path, case: Case) -> str:
+    """What the user of an arc without a case file should know."""
+    beside = path.with_suffix(".toml")
+    other = f"; {beside} beside it may choose otherwise" if beside.is_file() else ""
+    return (
+        f"{path} is an arc without a case file, so that every choice has its default, the thrust "
+        f"law {case.thrust.law} and the errors of the error model {case.errors.scheme} among "
+        f"them{other}."
+    )
 
 
 CHOICES = {
@@ -753,99 +711,3 @@ CHOICES = {
     "output": ("output", "folder"),
 }
 """Choices that can be made beside a case file: their table and key in it."""
-
-
-def _lower_first(text: str) -> str:
-    """A sentence as a clause; names such as H2O keep their capital."""
-    return text[:1].lower() + text[1:] if text[1:2].islower() else text
-
-
-def _required_keys(model: type[BaseModel]) -> str:
-    names = [name for name, field in model.model_fields.items() if field.is_required()]
-    return " and ".join(f"[{name}]" for name in names) or "one table"
-
-
-def _model_at(model: type[BaseModel], loc: list[Any]) -> type[BaseModel] | None:
-    """The model of the table that a location of pydantic lies in."""
-    current: type[BaseModel] | None = model
-    for part in loc:
-        if isinstance(part, int) or current is None:
-            continue
-        field = current.model_fields.get(part)
-        if field is None:
-            return None
-        current = next(iter(_models_in(field.annotation)), None)
-    return current
-
-
-def _models_in(annotation: Any) -> list[type[BaseModel]]:
-    """Pydantic models mentioned anywhere in a type annotation."""
-    if isinstance(annotation, type) and issubclass(annotation, BaseModel):
-        return [annotation]
-    found = []
-    for part in getattr(annotation, "__args__", ()):
-        found += _models_in(part)
-    return found
-
-
-def _line_of(text: str, loc: list[Any]) -> int | None:
-    """Line (from 1) where a key of a TOML text stands, or else the head of its table."""
-    names = tuple(part for part in loc if isinstance(part, str))
-    index = loc[1] if len(loc) > 1 and isinstance(loc[1], int) else 0
-    head: tuple[str, ...] = ()
-    seen: Counter[tuple[str, ...]] = Counter()
-    parent = None
-    for number, line in enumerate(text.splitlines(), start=1):
-        opened = re.match(r"\s*\[\[?\s*([^\[\]=]+?)\s*\]\]?\s*(#.*)?$", line)
-        key = re.match(r"\s*([\w.\"' -]+?)\s*=", line)
-        if opened:
-            head = _dotted(opened.group(1))
-            seen[head] += 1
-            here = head
-        elif key:
-            here = head + _dotted(key.group(1))
-        else:
-            continue
-        if not head or seen[head] == index + 1:
-            if here == names:
-                return number
-            if here == names[:-1]:
-                parent = number
-    return parent
-
-
-def _dotted(text: str) -> tuple[str, ...]:
-    return tuple(part.strip("\"' ") for part in text.split("."))
-
-
-def _sentence(path: Path, text: str, model: type[BaseModel], fault: dict[str, Any]) -> str:
-    """One fault that pydantic found, as a sentence with file, line, table and key."""
-    line = _line_of(text, list(fault["loc"]))
-    return _fault(f"{path}, line {line}" if line else str(path), model, fault)
-
-
-def _fault(where: str, model: type[BaseModel], fault: dict[str, Any]) -> str:
-    """One fault that pydantic found, as a sentence that begins with ``where``."""
-    loc = list(fault["loc"])
-    names = [part for part in loc if isinstance(part, str)]
-    table = f"[{'.'.join(names[:-1])}] " if len(names) > 1 else ""
-    key = names[-1] if names else "the file"
-    given = fault.get("input")
-    if fault["type"] == "extra_forbidden":
-        home = _model_at(model, loc[:-1]) or model
-        noun = "table" if isinstance(given, dict | list) else "key"
-        holder = f"{table}has no" if table else "there is no"
-        return f"{where}: {holder} {noun} {key!r}; {nearest(key, list(home.model_fields))}"
-    if fault["type"] == "missing":
-        return f"{where}: {table}{key} is missing and has no default."
-    message = fault["msg"].removeprefix("Value error, ")
-    message = re.sub(r"^(Input|String|List|Tuple|Value) should ", "must ", message)
-    message = re.sub(r"a valid boolean.*", "true or false", message)
-    shown = "" if isinstance(given, dict) else f" = {_as_toml(given)}"
-    ending = "" if message.endswith("?") else "."
-    return f"{where}: {table}{key}{shown}: {_lower_first(message).rstrip('.')}{ending}"
-
-
-def _as_toml(value: Any) -> str:
-    """A value as the file spells it, as far as that can be told."""
-    return str(value).lower() if isinstance(value, bool) else repr(value)

@@ -1,14 +1,18 @@
-"""Rounding of numbers and bounds, one rule for every room; imports the standard library only.
+"""Numbers as people read them: rounded by their uncertainty; imports the standard library only.
 
-A bound keeps two digits and is rounded outward, lower bounds down, upper limits and thresholds up,
-so that the printed statement is never stronger than the computed one, and every printing of it is
-the same. An uncertainty keeps two digits when its first three lie below 355, else one (the habit of
-the Particle Data Group), and its value ends at the same digit.
+Rounding rules, the same in sentence, report, tables and figures: an uncertainty keeps two digits
+when its first three lie below 355, else one (the habit of the Particle Data Group), and its value
+ends at the same digit. Thresholds, limits and bounds keep two digits and are rounded outward (`up`,
+`down`), so that the printed statement is never stronger than the computed one. In text a power of
+ten is written 3.2e-10 and a unit au/d2; figures write both as mathematics.
 """
 
 import math
+from collections.abc import Iterable
 from numbers import Real
 from typing import TypeGuard
+
+MINUS = "-"
 
 
 def is_number(value: object) -> TypeGuard[float]:
@@ -16,13 +20,11 @@ def is_number(value: object) -> TypeGuard[float]:
     return isinstance(value, Real) and not isinstance(value, bool) and math.isfinite(value)
 
 
-def power_of_ten(value: float) -> int:
-    """Power of ten of the first digit; 0 for zero."""
+def _exponent(value: float) -> int:
     return math.floor(math.log10(abs(value))) if value else 0
 
 
-def over_power(value: float, exponent: int) -> float:
-    """``value`` / 10^exponent, without overflow."""
+def _scaled(value: float, exponent: int) -> float:
     return value / 10.0**exponent if exponent > -300 else value * 10.0 ** (-exponent)
 
 
@@ -41,8 +43,8 @@ def rounded(value: float, digits: int = 2, *, outward: str = "") -> str:
         return "not available"
     if value == 0:
         return "0"
-    exponent = power_of_ten(value)
-    mantissa = over_power(value, exponent)
+    exponent = _exponent(value)
+    mantissa = _scaled(value, exponent)
     step = 10.0 ** (1 - digits)
     steps = mantissa / step
     if outward == "up":
@@ -59,6 +61,55 @@ def rounded(value: float, digits: int = 2, *, outward: str = "") -> str:
     return f"{mantissa:.{digits - 1}f}e{exponent}"
 
 
+def up(value: float) -> str:
+    """A detection threshold or an upper limit: two digits, rounded up."""
+    return rounded(value, 2, outward="up")
+
+
+def down(value: float) -> str:
+    """A lower bound: two digits, rounded down."""
+    return rounded(value, 2, outward="down")
+
+
+def along(components: str, vector: Iterable[float]) -> str:
+    """A direction as "(+0.44 R, +0.89 T, -0.15 N)"."""
+    parts = (
+        f"{round(float(x), 2) + 0.0:+.2f} {c}" for x, c in zip(vector, components, strict=True)
+    )
+    return f"({', '.join(parts)})"
+
+
+def with_error(value: float, error: float) -> str:
+    """A value with its 1-sigma uncertainty: "2.60 +- 0.17" or "(2.60 +- 0.17)e-10"."""
+    if not is_number(value):
+        return "not available"
+    if not is_number(error) or error <= 0:
+        return rounded(value, 3)
+    lead = _exponent(error)
+    mantissa = _scaled(error, lead)
+    if mantissa >= 9.5:
+        lead, mantissa = lead + 1, 1.0
+    last = lead - (1 if mantissa < 3.55 else 0)
+    exponent = max(_exponent(value), lead) if value else lead
+    if -4 <= exponent < 6:
+        places = max(-last, 0)
+        return f"{value:.{places}f} +- {error:.{places}f}"
+    places = max(exponent - last, 0)
+    return (
+        f"({_scaled(value, exponent):.{places}f} +- {_scaled(error, exponent):.{places}f})"
+        f"e{exponent}"
+    )
+
+
+def with_asymmetric_error(value: float, lower: float, upper: float) -> str:
+    """A value with unequal uncertainties: "2.6 (+0.4, -0.2)"; both given as positive numbers."""
+    if is_number(lower) and is_number(upper) and abs(lower - upper) <= 0.05 * max(lower, upper):
+        return with_error(value, 0.5 * (lower + upper))
+    if not (is_number(lower) and is_number(upper)):
+        return rounded(value, 3)
+    return f"{rounded(value, 3)} (+{rounded(upper, 2)}, {MINUS}{rounded(lower, 2)})"
+
+
 def percent(fraction: float) -> str:
     """A probability as per cent: 0.95 -> "95 %", 0.0027 -> "0.27 %"; never 100 % by rounding."""
     if not is_number(fraction):
@@ -71,26 +122,11 @@ def percent(fraction: float) -> str:
     return f"{value:.5g} %"
 
 
-def with_error(value: float, error: float) -> str:
-    """A value with its 1-sigma uncertainty: "2.60 +- 0.17" or "(2.60 +- 0.17)e-10"."""
-    if not is_number(value):
-        return "not available"
-    if not is_number(error) or error <= 0:
-        return rounded(value, 3)
-    lead = power_of_ten(error)
-    mantissa = over_power(error, lead)
-    if mantissa >= 9.5:
-        lead, mantissa = lead + 1, 1.0
-    last = lead - (1 if mantissa < 3.55 else 0)
-    exponent = max(power_of_ten(value), lead) if value else lead
-    if -4 <= exponent < 6:
-        places = max(-last, 0)
-        return f"{value:.{places}f} +- {error:.{places}f}"
-    places = max(exponent - last, 0)
-    return (
-        f"({over_power(value, exponent):.{places}f} +- {over_power(error, exponent):.{places}f})"
-        f"e{exponent}"
-    )
+def counted(number: int, singular: str, plural: str = "") -> str:
+    """ "1 night", "1 401 nights": a count with its noun."""
+    noun = singular if number == 1 else (plural or singular + "s")
+    text = f"{number:,}".replace(",", " ") if number >= 10000 else str(number)
+    return f"{text} {noun}"
 
 
 def mass_text(kilogram: float, *, outward: str = "down") -> str:

@@ -34,7 +34,6 @@ from ngbound.fit import (
     compare_fits,
     diagnose,
     fit_orbit,
-    tail_probability,
     vary,
 )
 from ngbound.limits import (
@@ -90,7 +89,7 @@ from ngbound.report import (
     station_table,
     the_sentence,
 )
-from ngbound.rounding import rounded
+from ngbound.rounding import up
 
 FIGURE_ENDINGS = (".png", ".pdf", ".svg")
 
@@ -268,7 +267,8 @@ def fan_case(
     case, step = case_for(path, **choices), Steps(progress)
     fits = fit_both(case, read_the_arc(case, step), step)
     threshold = threshold_of(fits)
-    save_whole(residual_fan(fits.null, fits.push, threshold=threshold), target)
+    fan = residual_fan(fits.null, fits.push, threshold=threshold, comparison=fits.comparison)
+    save_whole(fan, target)
     return Drawing(target, fits, threshold)
 
 
@@ -297,7 +297,10 @@ def check_the_output(case: Case) -> None:
 def read_the_arc(case: Case, step: "Steps") -> Arc:
     """The arc that the case names, own stations included."""
     with step("read the arc"):
-        return read_arc(case.arc.file, object=case.object.name, stations=case.own_stations())
+        arc = read_arc(case.arc.file, object=case.object.name, stations=case.own_stations())
+    if case.notice:
+        warnings.warn(case.notice, NgboundWarning, stacklevel=2)
+    return arc
 
 
 def fit_both(case: Case, arc: Arc, step: "Steps") -> "Fits":
@@ -360,6 +363,7 @@ def bound_the_thrust(fits: "Fits", step: "Steps", vary_errors: bool = False) -> 
         noise_trusted=not suspicions,
         why="; ".join(text.rstrip(".") for text in suspicions),
         other_p_values=None if variation is None else p_values(variation),
+        comparison=fits.comparison,
     )
     return Bounds(fits, threshold, posterior, limit, judged, suspicions, diagnostics, variation)
 
@@ -367,15 +371,10 @@ def bound_the_thrust(fits: "Fits", step: "Steps", vary_errors: bool = False) -> 
 def p_values(variation: Variation) -> dict[str, float]:
     """The p-value of the fitted thrust under each defensible error model (Wald test)."""
     return {
-        variant.name: wald_p(fit)
+        variant.name: fit.p_value
         for variant, fit in zip(variation.variants, variation.fits, strict=True)
         if fit is not None and variant.defensible
     }
-
-
-def wald_p(fit: Fit) -> float:
-    """Probability of a fitted thrust at least as significant where there is none."""
-    return tail_probability(fit.significance**2, len(fit.components), fit.noise_dof)
 
 
 def variant_table(bounds: "Bounds") -> SmallTable:
@@ -393,10 +392,10 @@ def variant_table(bounds: "Bounds") -> SmallTable:
                 "error model": variant.name + ("" if variant.defensible else " (warning only)"),
                 "out": fit.n_rejected,
                 "chi2/dof": f"{fit.reduced_chi2:.2f}",
-                "A_det worst": rounded(float(threshold.worst.value), 3, outward="up"),
-                "A_det best": rounded(float(threshold.best.value), 3, outward="up"),
-                "|A| below": rounded(float(limit.magnitude.value), 3, outward="up"),
-                "p of thrust": f"{wald_p(fit):.2g}",
+                "A_det worst": up(threshold.worst.value),
+                "A_det best": up(threshold.best.value),
+                "|A| below": up(limit.magnitude.value),
+                "p of thrust": f"{fit.p_value:.2g}",
             }
         )
     spread = ", ".join(f"{name} {ratio:.1f}" for name, ratio in bounds.variation.spread().items())
@@ -556,16 +555,18 @@ def draw_figures(bounds: "Bounds", weighed: "Weighed") -> dict[str, Figure]:
     fits = bounds.fits
     with matplotlib.rc_context({"backend": "Agg"}):
         figures = {
-            "residual_fan": residual_fan(fits.null, fits.push, threshold=bounds.threshold),
+            "residual_fan": residual_fan(
+                fits.null, fits.push, threshold=bounds.threshold, comparison=fits.comparison
+            ),
             "residuals_by_station": residual_by_station(fits.push),
-            "posterior": posterior_figure(bounds.posterior, bounds.limit),
+            "posterior": posterior_figure(bounds.posterior, bounds.limit, name=fits.arc.name),
         }
         if len(fits.push.components) > 1:
-            figures["direction_map"] = direction_map(bounds.threshold)
+            figures["direction_map"] = direction_map(bounds.threshold, name=fits.arc.name)
         if weighed.bound is not None:
-            figures["mass"] = mass_figure(weighed.bound, weighed.ceiling)
+            figures["mass"] = mass_figure(weighed.bound, weighed.ceiling, name=fits.arc.name)
         if weighed.reach is not None:
-            figures["reach"] = reach_figure(weighed.reach)
+            figures["reach"] = reach_figure(weighed.reach, name=fits.arc.name)
     return figures
 
 

@@ -24,15 +24,7 @@ from numpy.typing import NDArray
 from pydantic import Field, field_validator, model_validator
 
 from ngbound.arc import Arc, all_stations, write_psv
-from ngbound.case import (
-    NotNegative,
-    OrbitTable,
-    Positive,
-    Table,
-    ThrustTable,
-    Vector,
-    read_toml,
-)
+from ngbound.case import NotNegative, OrbitTable, Positive, ThrustTable, Vector
 from ngbound.constants import ARCSEC_RAD, AU_KM, DAY_S
 from ngbound.errors import CaseError
 from ngbound.motion import Orbit
@@ -45,6 +37,7 @@ from ngbound.sky import (
     station_states,
     utc_to_tdb_d,
 )
+from ngbound.toml_file import Table, read_toml
 
 Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
@@ -172,7 +165,7 @@ class Recipe(Table):
     @model_validator(mode="after")
     def _somebody_observes(self) -> Self:
         if not self.site and not self.spacecraft:
-            raise ValueError("must hold at least one [[site]] or [[spacecraft]]")
+            raise ValueError("a recipe needs at least one [[site]] or [[spacecraft]]")
         return self
 
 

@@ -23,6 +23,7 @@ from tqdm import tqdm
 from ngbound.case import Case, case_for
 from ngbound.errors import CaseError, NgboundError
 from ngbound.report import load_record
+from ngbound.rounding import down, is_number, up
 from ngbound.run import run_case
 
 DONE = "done"
@@ -78,7 +79,16 @@ class Sweep:
                 "mass_kg",
             ]
         ]
-        lines = [shown.to_string(index=False, na_rep="-", float_format=lambda v: f"{v:.3g}")]
+        written = {"threshold_worst_au_d2": up, "limit_au_d2": up, "mass_kg": down}
+        text = shown.to_string(
+            index=False,
+            na_rep="-",
+            formatters={
+                name: lambda x, write=write: write(x) if is_number(x) else "-"
+                for name, write in written.items()
+            },
+        )
+        lines = [text]
         for _, row in self.table[self.table["status"] == FAILED].iterrows():
             lines.append(f"{row['case']}: {row['problem']}")
         return "\n".join(lines)

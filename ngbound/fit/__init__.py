@@ -17,6 +17,7 @@ from ngbound.fit.error_variants import ErrorVariant, Variation, error_variants, 
 from ngbound.fit.first_orbit import Preliminary, preliminary_orbits
 from ngbound.fit.noise_scale import StationScale, student_factor, tail_probability
 from ngbound.fit.outliers import chi2_of_records, judge_in_turns
+from ngbound.fit.significance import sigma_of_chance, significance_sigma
 from ngbound.fit.solution import Comparison, Fit, compare_fits, fit_orbit
 
 __all__ = [
@@ -34,6 +35,8 @@ __all__ = [
     "fit_orbit",
     "judge_in_turns",
     "preliminary_orbits",
+    "sigma_of_chance",
+    "significance_sigma",
     "student_factor",
     "tail_probability",
     "vary",

@@ -15,6 +15,7 @@ import pandas as pd
 from ngbound.arc import ErrorModel
 from ngbound.errors import NgboundError
 from ngbound.fit.solution import Fit, fit_orbit
+from ngbound.rounding import with_error
 
 SMALL, LARGE = 0.5, 2.0
 
@@ -188,7 +189,7 @@ class Variation:
         for record in self.table.to_dict("records"):
             row = {str(key): value for key, value in record.items()}
             parts = [
-                f"{name} {row[name]:+.2e} +- {row[name + '_sigma']:.1e}"
+                f"{name} {with_error(row[name], row[name + '_sigma'])}"
                 for name in row
                 if name + "_sigma" in row
             ]

@@ -39,9 +39,18 @@ def station_labels(used: Arc) -> list[str]:
     roving = (table["site"] == "roving").to_numpy(dtype=bool)
     places = zip(codes, roving, table["pos1"], table["pos2"], table["sys"], strict=True)
     return [
-        f"{code} {float(east):.2f} E {float(north):+.2f}" if moves and frame == "WGS84" else code
+        f"{code} {_place(float(east), float(north))}" if moves and frame == "WGS84" else code
         for code, moves, east, north, frame in places
     ]
+
+
+def _place(east_deg: float, north_deg: float) -> str:
+    """A place on the Earth as "104.29 W 29.88 N"."""
+    east = (east_deg + 180.0) % 360.0 - 180.0
+    return (
+        f"{abs(east):.2f} {'W' if east < 0 else 'E'} "
+        f"{abs(north_deg):.2f} {'S' if north_deg < 0 else 'N'}"
+    )
 
 
 def residual_table(
@@ -50,6 +59,7 @@ def residual_table(
     observers: Observers,
     sight: Sight,
     seen: Floats,
+    shared: Floats,
     noise: Noise,
     keep: Bools,
     chi2: Floats,
@@ -60,14 +70,15 @@ def residual_table(
     Returns
     -------
     pandas.DataFrame
-        tdb_d, utc, stn (of a rover with longitude and latitude), mode, astCat, line; ra_arcsec
-        (times cos dec) and dec_arcsec, observed
-        minus computed; their sigmas; along_arcsec and across_arcsec, the residual along and 90
-        degrees (towards north from east, that is to the left) off the apparent motion; chi, the
-        root of the record's chi2, freed of the errors it shares with others; keep;
-        motion_ra_arcsec_h, motion_dec_arcsec_h; r_au and delta_au; kind; delay_us, doppler_hz
-        (observed minus computed) and their sigmas. What an echo or a direction does not have is
-        nan.
+        tdb_d, utc, stn (of a rover with longitude and latitude), site, mode, astCat, line;
+        ra_arcsec (times cos dec) and dec_arcsec, observed minus computed; shared_ra_arcsec and
+        shared_dec_arcsec, the part of them that is an estimated error shared with other nights
+        (offsets of catalogues and stations); their sigmas; along_arcsec and across_arcsec, the
+        residual along and 90 degrees (towards north from east, that is to the left) off the
+        apparent motion; chi, the root of the record's chi2, freed of the errors it shares with
+        others; keep; motion_ra_arcsec_h, motion_dec_arcsec_h; r_au and delta_au; kind; delay_us,
+        doppler_hz (observed minus computed) and their sigmas. What an echo or a direction does not
+        have is nan.
     """
     motion = motion_rad_d(sight, records, observers)
     speed = np.linalg.norm(motion, axis=1)
@@ -87,11 +98,14 @@ def residual_table(
             "tdb_d": records.tdb_d,
             "utc": np.atleast_1d(tdb_d_to_iso(records.tdb_d, scale="utc")),
             "stn": station_labels(used),
+            "site": used.table["site"].to_numpy(),
             "mode": used.table["mode"].to_numpy(),
             "astCat": used.table["astCat"].to_numpy(),
             "line": used.table["line"].to_numpy(),
             "ra_arcsec": of_direction(arcsec[:, 0]),
             "dec_arcsec": of_direction(arcsec[:, 1]),
+            "shared_ra_arcsec": of_direction(shared[:, 0] / ARCSEC_RAD),
+            "shared_dec_arcsec": of_direction(shared[:, 1] / ARCSEC_RAD),
             "sigma_ra_arcsec": of_direction(noise.sigma_ra_arcsec),
             "sigma_dec_arcsec": of_direction(noise.sigma_dec_arcsec),
             "along_arcsec": of_direction(np.einsum("ni,ni->n", arcsec, ahead)),

@@ -13,7 +13,6 @@ import astropy.units as u
 import numpy as np
 import pandas as pd
 from numpy.typing import ArrayLike, NDArray
-from scipy import stats
 
 from ngbound.arc import Arc, ErrorModel, Noise, treatment_text
 from ngbound.constants import ARCSEC_RAD
@@ -25,11 +24,14 @@ from ngbound.fit.outliers import chi2_of_records
 from ngbound.fit.residuals import motion_rad_d, residual_table, sunward_per_au
 from ngbound.fit.shared_estimates import (
     JointSolution,
+    freed,
     shared_table,
     shared_text,
     solve_jointly,
 )
+from ngbound.fit.significance import significance_sigma
 from ngbound.motion import Atlas, Echoes, ForceModel, Neighbourhood, Orbit, Records, Thrust
+from ngbound.rounding import with_error
 from ngbound.sky import Observers, load_ephemeris, observer_states, reduce_offsets
 
 Floats = NDArray[np.float64]
@@ -181,14 +183,28 @@ class Fit:
         return np.sqrt(np.diag(self.theta_cov)[6:]) * AU_PER_D2
 
     @property
-    def significance(self) -> float:
-        """sqrt(A' C^-1 A) of the fitted thrust; 0 without thrust."""
+    def wald(self) -> float:
+        """A' C^-1 A of the fitted thrust; 0 without thrust."""
         if not self.components:
             return 0.0
         a = self.theta[6:]
         scale = np.sqrt(np.diag(self.theta_cov)[6:])
         c = self.theta_cov[6:, 6:] / np.outer(scale, scale)
-        return float(np.sqrt((a / scale) @ np.linalg.solve(c, a / scale)))
+        return float((a / scale) @ np.linalg.solve(c, a / scale))
+
+    @property
+    def p_value(self) -> float:
+        """Chance of so large a Wald statistic without thrust; 1 for gravity alone."""
+        if not self.components:
+            return 1.0
+        return tail_probability(self.wald, len(self.components), self.noise_dof)
+
+    @property
+    def significance(self) -> float:
+        """The p-value as two-sided Gaussian sigma; 0 for gravity alone."""
+        if not self.components:
+            return 0.0
+        return significance_sigma(self.wald, len(self.components), self.noise_dof)
 
     @cached_property
     def distance_error(self) -> float:
@@ -260,12 +276,14 @@ class Fit:
         """The residual table; columns in `ngbound.fit.residuals.residual_table`."""
         design = self.design.reshape(-1, 2, self.theta.size)
         chi2 = chi2_of_records(self.seen[None], design, self.noise, self.keep[None])[0]
+        free, _, _ = freed(self.seen, design, self.noise, self.keep)
         return residual_table(
             self.used,
             self.records,
             self.observers,
             self.correction.at.sight,
             self.seen,
+            self.seen - free,
             self.noise,
             self.keep,
             chi2,
@@ -336,6 +354,8 @@ class Fit:
             "radar": self.echo_summary,
             "A_au_d2": self.theta[6:].tolist(),
             "A_sigma_au_d2": np.sqrt(np.diag(self.theta_cov)[6:]).tolist(),
+            "wald": self.wald,
+            "p_value": self.p_value,
             "significance_sigma": self.significance,
             "condition": self.correction.condition,
             "distance_error": self.distance_error,
@@ -359,7 +379,7 @@ class Fit:
             self.components, self.theta[6:], np.sqrt(np.diag(self.theta_cov)[6:]), strict=True
         ):
             lines.append(
-                f"  A{'RTN'.index(c) + 1} ({c}) = {a:+.4g} +- {s:.2g} au/d2 ({a / s:+.1f} sigma)"
+                f"  A_{c} (A{'RTN'.index(c) + 1}) = {with_error(a, s)} au/d2 ({a / s:+.1f} sigma)"
             )
         if self.weakness:
             lines.append("  " + self.weakness)
@@ -579,6 +599,8 @@ class Comparison:
     refitted : bool
         Whether outlier rule or station scales had come out differently, so that both were fitted
         anew to common observations with common errors.
+    noise_dof : int or None
+        Degrees of freedom the errors rest on, where they are few.
     """
 
     delta_chi2: float
@@ -587,11 +609,12 @@ class Comparison:
     delta_bic: float
     n_obs: int
     refitted: bool
+    noise_dof: int | None = None
 
     @property
     def sigma(self) -> float:
-        """The two-sided normal quantile of the p-value."""
-        return float(stats.norm.isf(max(self.p_value, 1e-300) / 2.0))
+        """The p-value as two-sided Gaussian sigma."""
+        return significance_sigma(max(self.delta_chi2, 0.0), self.delta_dof, self.noise_dof)
 
     def to_dict(self) -> dict[str, Any]:
         """Plain values."""
@@ -599,17 +622,18 @@ class Comparison:
             "delta_chi2": self.delta_chi2,
             "delta_dof": self.delta_dof,
             "p_value": self.p_value,
-            "sigma": self.sigma,
+            "significance_sigma": self.sigma,
             "delta_bic": self.delta_bic,
             "n_obs": self.n_obs,
             "refitted": self.refitted,
+            "noise_dof": self.noise_dof,
         }
 
     def __str__(self) -> str:
         favoured = "thrust" if self.delta_bic > 0 else "gravity alone"
         return (
             f"Thrust lowers chi2 by {self.delta_chi2:.2f} for {self.delta_dof} parameters "
-            f"(p = {self.p_value:.3g}); the BIC favours {favoured} by "
+            f"(p = {self.p_value:.2g}, {self.sigma:.1f} sigma); the BIC favours {favoured} by "
             f"{abs(self.delta_bic):.1f}, over {self.n_obs} observations."
         )
 
@@ -665,4 +689,5 @@ def compare_fits(null: Fit, push: Fit) -> Comparison:
         float(delta - extra * math.log(push.n_numbers)),
         push.n_obs,
         refitted,
+        noise_dof,
     )

@@ -1,4 +1,5 @@
-"""What more observations would buy; may import arc, errors, fit, motion, sky and this room.
+"""What more observations would buy; may import arc, errors, rounding, fit,
+motion, sky and this room.
 
 Planned records are observed on the fitted orbit: their partials, whitened with their planned
 errors, add to the normal matrix of the fit, and the threshold follows as for a real arc. Every
@@ -29,6 +30,7 @@ from ngbound.motion import (
     partials_along,
     see,
 )
+from ngbound.rounding import counted, up
 from ngbound.sky import (
     direction_to_angles,
     load_ephemeris,
@@ -131,12 +133,17 @@ class Forecast:
 
     def __str__(self) -> str:
         last, best = self.after[-1], self.table.iloc[self.best_night]
+        plan = counted(len(self.nights), "planned night")
         return (
-            f"The threshold in the worst seen direction falls from {self.now.worst.value:.3e} to "
-            f"{last.worst.value:.3e} au/d2 with all {len(self.nights)} nights; the mass it bounds "
-            f"grows {self.table['mass_reach'].iloc[-1]:.3g}-fold. The night that buys most alone "
+            f"The threshold in the worst seen direction falls from {up(self.now.worst.value)} to "
+            f"{up(last.worst.value)} au/d2 with {plan}; the mass it bounds grows "
+            f"{self.table['mass_reach'].iloc[-1]:.3g}-fold. The night that buys most alone "
             f"is {best['utc']} at {best['station']} ({best['alone_gain']:.3g}-fold).\n"
-            + self.table.to_string(float_format=lambda value: f"{value:.4g}")
+            + self.table.to_string(
+                index=False,
+                float_format=lambda value: f"{value:.4g}",
+                formatters=dict.fromkeys(("worst", "best", "alone_worst"), up),
+            )
         )
 
     def to_dict(self) -> dict[str, Any]:

@@ -1,4 +1,5 @@
-"""What an arc knows of the thrust, the orbit left free; may import errors and this room.
+"""What an arc knows of the thrust, the orbit left free; may import errors, rounding and this
+room.
 
 With F the normal matrix of (orbit x, thrust A), the information on A that is left when x is
 marginalised is the Schur complement F_A = F_AA - F_Ax F_xx^-1 F_xA. It is read off the Cholesky
@@ -17,6 +18,7 @@ from scipy.linalg import LinAlgError, cholesky, solve_triangular
 
 from ngbound.errors import LimitError
 from ngbound.limits.fit_protocol import ThrustFit
+from ngbound.rounding import along, rounded
 
 AU_D2 = u.au / u.d**2
 """Unit of every acceleration of this room."""
@@ -188,16 +190,13 @@ class ThrustInformation:
         lines = []
         for letter in self.components:
             lines.append(
-                f"A_{letter}: sigma {self.sigma_held(letter).value:.3e} au/d2 (others held), "
-                f"{self.sigma_free(letter).value:.3e} (others free)"
+                f"A_{letter}: sigma {rounded(self.sigma_held(letter).value)} au/d2 (others held), "
+                f"{rounded(self.sigma_free(letter).value)} (others free)"
             )
         for i in range(self.k):
-            vector = ", ".join(
-                f"{self.eigenvectors[j, i]:+.3f} {letter}"
-                for j, letter in enumerate(self.components)
-            )
             lines.append(
-                f"axis {i + 1}: sigma {self.eigenvalues[i] ** -0.5:.3e} au/d2 along ({vector})"
+                f"axis {i + 1}: sigma {rounded(self.eigenvalues[i] ** -0.5)} au/d2 along "
+                f"{along(self.components, self.eigenvectors[:, i])}"
             )
         return "\n".join([*lines, *self.sentences])
 

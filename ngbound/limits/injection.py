@@ -1,4 +1,5 @@
-"""Put a known thrust in, fit again, count; may import errors, fit and this room.
+"""Put a known thrust in, fit again, count; may import errors, rounding, fit and
+this room.
 
 What is counted, over n arcs made with the same thrust (or each with its own): how often the test of
 k components declares a thrust (delta chi2 above the chi2_k quantile: the false-alarm rate without
@@ -30,6 +31,7 @@ from ngbound.limits.refit import ExactRefit, Refits, Refitter
 from ngbound.limits.threshold import noncentrality
 from ngbound.limits.unified_interval import unified_interval
 from ngbound.limits.upper_limit import profile_limit
+from ngbound.rounding import along, percent, rounded, up, with_error
 
 LOT = 64
 """Arcs made and fitted together; a checkpoint is written after each lot."""
@@ -131,14 +133,14 @@ class Recovery:
     def __str__(self) -> str:
         size = np.linalg.norm(np.atleast_2d(self.injected.value), axis=1)
         what = (
-            f"Thrust of {size[0]:.3e} au/d2"
+            f"Thrust of {rounded(size[0])} au/d2"
             if self.injected.ndim == 1
-            else f"Thrusts of {size.min():.3e} to {size.max():.3e} au/d2"
+            else f"Thrusts of {rounded(size.min())} to {rounded(size.max())} au/d2"
         )
         lines = [
-            f"{what} injected: declared at the false-alarm rate {self.false_alarm:g} in a share of "
-            f"{self.declared}; {self.expected:.4f} in linear theory",
-            f"  |A| held by the {100.0 * self.confidence:g} % profile likelihood limit: "
+            f"{what} injected: declared at a false-alarm rate of {percent(self.false_alarm)} in a "
+            f"share of {self.declared}; {self.expected:.4f} in linear theory",
+            f"  |A| held by the {percent(self.confidence)} profile likelihood limit: "
             f"{self.coverage_magnitude}",
         ]
         if self.coverage_bayes is not None:
@@ -149,7 +151,7 @@ class Recovery:
             lines.append(f"  A_R held by the unified interval: {self.coverage_unified}")
         for i, letter in enumerate(self.components):
             lines.append(
-                f"  A_{letter}: bias {self.bias[i].value:+.2e} +- {self.bias_error[i].value:.1e} "
+                f"  A_{letter}: bias {with_error(self.bias[i].value, self.bias_error[i].value)} "
                 f"au/d2, scatter {self.scatter[i]:.3f} sigma"
             )
         if self.n_rejected:
@@ -434,18 +436,16 @@ class PowerCurve:
         return tuple(r.declared for r in self.recoveries)
 
     def __str__(self) -> str:
-        vector = ", ".join(
-            f"{v:+.3f} {c}" for v, c in zip(self.direction, self.components, strict=True)
-        )
         lines = [
-            f"Power of the test of {', '.join(self.components)} along ({vector}) at the "
-            f"false-alarm rate {self.false_alarm:g}; threshold {self.threshold.value:.3e} au/d2 at "
-            f"power {self.power:g}",
-            "  size, au/d2  of threshold  declared (95 % binomial)  linear theory",
+            f"Power of the test of {', '.join(self.components)} along "
+            f"{along(self.components, self.direction)} at a false-alarm rate of "
+            f"{percent(self.false_alarm)}; threshold {up(self.threshold.value)} au/d2 at a power "
+            f"of {percent(self.power)}",
+            "  size (au/d2)  of threshold  declared (95 % binomial)  linear theory",
         ]
         for size, each in zip(self.size.value, self.recoveries, strict=True):
             lines.append(
-                f"  {size:.3e}      {size / self.threshold.value:.3f}      {each.declared}  "
+                f"  {rounded(size, 3):12s}  {size / self.threshold.value:12.2f}  {each.declared}  "
                 f"{each.expected:.4f}"
             )
         return "\n".join(lines)

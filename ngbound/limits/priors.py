@@ -1,4 +1,5 @@
-"""What is believed of a thrust before the arc is looked at; may import errors and this room.
+"""What is believed of a thrust before the arc is looked at; may import errors,
+rounding and this room.
 
 Every prior comes with coordinates w in which it is flat, so that the sampler never meets a
 singular density:
@@ -20,6 +21,7 @@ import numpy as np
 
 from ngbound.errors import LimitError
 from ngbound.limits.information import ThrustInformation
+from ngbound.rounding import down, up
 
 PriorName = Literal["isotropic-uniform", "flat-components", "outward-radial", "log-uniform"]
 PRIOR_NAMES: tuple[str, ...] = get_args(PriorName)
@@ -105,8 +107,8 @@ class ThrustPrior:
 
     def __str__(self) -> str:
         edges = {
-            "isotropic-uniform": f", |A| below {self.upper_au_d2:.3e} au/d2",
-            "log-uniform": f", |A| from {self.lower_au_d2:.3e} to {self.upper_au_d2:.3e} au/d2",
+            "isotropic-uniform": f", |A| below {up(self.upper_au_d2)} au/d2",
+            "log-uniform": f", |A| from {down(self.lower_au_d2)} to {up(self.upper_au_d2)} au/d2",
         }.get(self.name, "")
         return f"{self.name} in {', '.join(self.components)}{edges}"
 

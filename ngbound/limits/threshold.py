@@ -1,4 +1,5 @@
-"""The smallest thrust an arc would have shown; may import errors and this room.
+"""The smallest thrust an arc would have shown; may import errors, rounding,
+fit and this room.
 
 Definition after V. L. Kashyap et al. 2010, ApJ 719, 900: the detection threshold is a property of
 the arc, its noise and the test, not of the estimate. A test of false-alarm rate alpha is fixed
@@ -33,9 +34,10 @@ from scipy.special import elliprf
 from scipy.stats import chi2, f, ncf, nct, ncx2, norm, t
 
 from ngbound.errors import LimitError
+from ngbound.fit import sigma_of_chance
 from ngbound.limits.fit_protocol import ThrustFit
 from ngbound.limits.information import AU_D2, ThrustInformation, thrust_information
-from ngbound.rounding import rounded
+from ngbound.rounding import along, percent, up
 
 
 def _solve(power_of: Callable[[float], float], power: float) -> float:
@@ -138,7 +140,7 @@ class DirectionMap:
         return (
             f"Direction map over {', '.join(self.components)}: {value.shape[0]} x "
             f"{value.shape[1]} directions, "
-            f"threshold {value.min():.3e} to {value.max():.3e} au/d2"
+            f"threshold {up(value.min())} to {up(value.max())} au/d2"
         )
 
     def to_dict(self) -> dict[str, Any]:
@@ -246,18 +248,20 @@ class DetectionThreshold:
         )
 
     def __str__(self) -> str:
-        c = ", ".join(self.components)
+        c = "  ".join(f"{letter:7s}" for letter in self.components).rstrip()
         lines = [
-            f"Thrust that would have been detected at {self.significance_sigma:.2f} sigma "
-            "(false-alarm rate "
-            f"{self.false_alarm_per_trial:.3g}) with probability {self.power:g}, au/d2:",
+            f"Thrust that would have been detected at {self.significance_sigma:.1f} sigma "
+            f"(false-alarm rate {percent(self.false_alarm_per_trial)}) with probability "
+            f"{percent(self.power)}, au/d2:",
             f"  components          {c}",
             f"  alone, others held  {_row(self.held)}",
             f"  alone, others free  {_row(self.free)}",
             f"  direction-free      {_row(self.direction_free)}",
-            f"  worst direction     {_row(self.worst)} along {self._vector(self.worst_direction)}",
-            f"  best direction      {_row(self.best)} along {self._vector(self.best_direction)}",
-            f"  isotropic mean      {_row(self.isotropic_mean)}",
+            f"  worst direction     {up(self.worst.value)} along "
+            f"{along(self.components, self.worst_direction)}",
+            f"  best direction      {up(self.best.value)} along "
+            f"{along(self.components, self.best_direction)}",
+            f"  isotropic mean      {up(self.isotropic_mean.value)}",
         ]
         if self.noise_scale != 1.0:
             lines.append(f"  every sigma multiplied by the noise scale {self.noise_scale:.4g}")
@@ -268,13 +272,6 @@ class DetectionThreshold:
         if self.trials > 1:
             lines.append(f"  corrected for {self.trials} laws tried")
         return "\n".join(lines)
-
-    def _vector(self, vector: np.ndarray) -> str:
-        return (
-            "("
-            + ", ".join(f"{v:+.3f} {c}" for v, c in zip(vector, self.components, strict=True))
-            + ")"
-        )
 
     def to_dict(self) -> dict[str, Any]:
         """JSON-able record; accelerations in au/d2."""
@@ -303,8 +300,7 @@ class DetectionThreshold:
 
 
 def _row(values: u.Quantity) -> str:
-    """Thresholds, rounded up."""
-    return "  ".join(rounded(float(v), 2, outward="up") for v in np.atleast_1d(values.value))
+    return "  ".join(f"{up(v):7s}" for v in values.value).rstrip()
 
 
 def detection_threshold(
@@ -373,7 +369,7 @@ def detection_threshold(
         false_alarm_per_trial=each,
         trials=trials,
         sided=sided,
-        significance_sigma=float(norm.isf(0.5 * each)),
+        significance_sigma=sigma_of_chance(each),
         held=delta_one * held * AU_D2,
         free=delta_one * free * AU_D2,
         direction_free=delta_all * held * AU_D2,

@@ -1,4 +1,4 @@
-"""How large the thrust of this arc may be; may import errors and this room.
+"""How large the thrust of this arc may be; may import errors, rounding and this room.
 
 Definition of an upper limit as V. L. Kashyap et al. 2010, ApJ 719, 900, use the word: the edge of
 what the data at hand allow, not a property of the test. Given side by side, because they answer
@@ -34,7 +34,7 @@ from ngbound.limits.linear_posterior import linear_posterior, student_width
 from ngbound.limits.posterior import Posterior
 from ngbound.limits.priors import ThrustPrior, thrust_prior
 from ngbound.limits.unified_interval import unified_interval
-from ngbound.rounding import rounded
+from ngbound.rounding import down, percent, rounded, up
 
 LINEAR_DRAWS = 16384
 PRIOR_CAVEAT = (
@@ -114,27 +114,26 @@ class UpperLimit:
         return PRIOR_CAVEAT if several and self.prior.startswith("isotropic-uniform") else ""
 
     def __str__(self) -> str:
-        c = f"{100.0 * self.confidence:g} %"
+        c = percent(self.confidence)
         lines = [
             f"At {c} confidence |A| < {_pm(self.magnitude, self.magnitude_error)} au/d2 "
             f"({self.source}; prior {self.prior})",
             f"  {_pm(self.alternative_magnitude, self.alternative_error)} under the prior "
             f"{self.alternative_prior} ({self.alternative_source}); "
-            f"{_up(self.profile_magnitude)} by profile likelihood in linear theory",
+            f"{up(self.profile_magnitude.value)} by profile likelihood in linear theory",
         ]
         for i, letter in enumerate(self.components):
             lines.append(
                 f"  |A_{letter}| < {_pm(self.component[i], self.component_error[i])}; "
-                f"{_up(self.profile_component[i])} by profile likelihood"
+                f"{up(self.profile_component[i].value)} by profile likelihood"
             )
         if self.outward_radial is not None and self.outward_radial_error is not None:
             lines.append(
                 f"  outward only: A_R < {_pm(self.outward_radial, self.outward_radial_error)}"
             )
         if self.unified_radial is not None:
-            low = rounded(float(self.unified_radial[0].value), 2, outward="down")
-            high = _up(self.unified_radial[1])
-            lines.append(f"  outward only, unified interval: {low} to {high}")
+            low, high = self.unified_radial.value
+            lines.append(f"  outward only, unified interval: A_R from {down(low)} to {up(high)}")
         if not self.converged:
             lines.append(f"  {self.message}")
         if self.caveat:
@@ -173,12 +172,7 @@ class UpperLimit:
 
 
 def _pm(value: u.Quantity, error: u.Quantity) -> str:
-    """A limit rounded up, with its Monte Carlo error."""
-    return f"{_up(value)} +- {rounded(float(error.value), 1)}"
-
-
-def _up(value: u.Quantity) -> str:
-    return rounded(float(value.value), 2, outward="up")
+    return f"{up(value.value)} (+- {rounded(error.value, 1)})"
 
 
 def upper_limit(

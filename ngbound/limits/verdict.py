@@ -1,4 +1,4 @@
-"""One line that cannot mislead; may import errors and this room.
+"""One line that cannot mislead; may import errors, rounding, fit and this room.
 
 Four answers, decided in this order:
 
@@ -11,9 +11,13 @@ Four answers, decided in this order:
   the noise is not as the error model says, so that the threshold means nothing.
 - "non-detection": it is not significant, and a thrust above the threshold would have been seen.
 
-The test is the likelihood ratio of the two fits, chi2 with k degrees of freedom without thrust (S.
-S. Wilks 1938, Ann. Math. Stat. 9, 60); where the two fits kept different observations it is the
-Wald statistic A_hat' F_A A_hat instead.
+The test is the likelihood ratio of the two fits, of their comparison where one is given; where the
+two fits kept different observations and none is given it is the Wald statistic A_hat' F_A A_hat.
+What significant means stands in `ngbound.fit`.
+
+The size |A_hat| is the norm of a vector, which noise only makes longer (S. O. Rice 1945, Bell Syst.
+Tech. J. 24, 46): without thrust it is about as large as its errors, never zero. A verdict that is
+no detection therefore states the components with their errors instead.
 """
 
 from collections.abc import Mapping
@@ -22,15 +26,15 @@ from typing import Any
 
 import numpy as np
 from astropy import units as u
-from scipy.stats import chi2, f, norm
 
 from ngbound.errors import LimitError
+from ngbound.fit import Comparison, significance_sigma, tail_probability
 from ngbound.limits.fit_protocol import ThrustFit
 from ngbound.limits.information import AU_D2
 from ngbound.limits.posterior import Posterior
 from ngbound.limits.threshold import DetectionThreshold
 from ngbound.limits.upper_limit import UpperLimit, upper_limit
-from ngbound.rounding import percent, rounded, with_error
+from ngbound.rounding import percent, rounded, up, with_error
 
 KINDS = ("detection", "non-detection", "arc cannot tell", "not trustworthy")
 
@@ -57,7 +61,7 @@ class Verdict:
     false_alarm : float
         Rate at which the thrust is called significant.
     estimate, estimate_sigma : Quantity
-        |A_hat| and its sigma along A_hat, others free.
+        |A_hat| and its sigma along A_hat, others free; biased high where nothing is detected.
     threshold_here : Quantity
         Direction-free threshold along A_hat.
     threshold_best, threshold_worst : Quantity
@@ -115,6 +119,7 @@ def verdict(
     why: str = "",
     largest_plausible: u.Quantity | float | None = None,
     other_p_values: Mapping[str, float] | None = None,
+    comparison: Comparison | None = None,
 ) -> Verdict:
     """Judge a pair of fits; see the module for the rules.
 
@@ -134,6 +139,8 @@ def verdict(
         The largest acceleration that makes physical sense for such an object.
     other_p_values : mapping, optional
         p-value of the same test under other defensible error models, by name.
+    comparison : Comparison, optional
+        Of the two fits over observations common to both, whose likelihood ratio is then the test.
 
     Raises
     ------
@@ -149,14 +156,14 @@ def verdict(
         )
     plausible = _acceleration(largest_plausible)
     k = information.k
-    statistic, test = _statistic(fit_null, fit_push, information.wald)
-    scaled = statistic / threshold.noise_scale**2
-    if threshold.noise_dof is None:
-        p_value = float(chi2.sf(scaled, k))
+    if comparison is None:
+        statistic, test = _statistic(fit_null, fit_push, information.wald)
     else:
-        p_value = float(f.sf(scaled / k, k, threshold.noise_dof))
+        statistic, test = max(0.0, comparison.delta_chi2), "likelihood ratio"
+    scaled = statistic / threshold.noise_scale**2
+    p_value = tail_probability(scaled, k, threshold.noise_dof)
+    sigma = significance_sigma(scaled, k, threshold.noise_dof)
     alpha = threshold.false_alarm_per_trial
-    sigma = _sigma(p_value, scaled, k)
     size = float(np.linalg.norm(information.A_hat))
     axis = information.A_hat if size > 0.0 else threshold.worst_direction
     along = threshold.along(axis)
@@ -181,24 +188,36 @@ def verdict(
         if plausible is not None and float(threshold.worst.value) > plausible:
             reasons.append(
                 "a thrust in the worst seen direction would have to exceed "
-                f"{_up(threshold.worst)} au/d2 to be found, more than the largest plausible "
+                f"{up(threshold.worst.value)} au/d2 to be found, more than the largest plausible "
                 f"acceleration, {rounded(plausible)} au/d2"
             )
         kind = "arc cannot tell" if reasons else "non-detection"
 
+    errors = np.sqrt(np.diag(information.covariance)) * threshold.noise_scale
+    estimate = ", ".join(
+        f"A_{letter} = {with_error(value, each)}"
+        for letter, value, each in zip(
+            information.components, information.A_hat, errors, strict=True
+        )
+    )
+    if significant and k > 1:
+        estimate = f"|A| = {with_error(size, error)} au/d2 ({estimate})"
+    else:
+        estimate += " au/d2"
     numbers = (
-        f"|A| = {with_error(size, error)} au/d2, p = {p_value:.2g} ({sigma:.1f} sigma, {test} "
-        "test of "
+        f"{estimate}, p = {p_value:.2g} ({sigma:.1f} sigma, {test} test of "
         f"{', '.join(information.components)})"
     )
     found = (
-        f"a thrust in that direction is found with probability {percent(threshold.power)} from "
-        f"{_up(along)} au/d2 on, in any direction from {_up(threshold.worst)} on, at a false-alarm "
-        f"rate of {percent(alpha)}"
+        f"a thrust is found with probability {percent(threshold.power)} from {up(along.value)} "
+        "au/d2 on in the direction of the estimate, in any direction from "
+        f"{up(threshold.worst.value)} on, at a false-alarm rate of {percent(alpha)}"
     )
     bound = ""
     if isinstance(limit, UpperLimit):
-        bound = f"; |A| < {_up(limit.magnitude)} au/d2 at {percent(limit.confidence)} confidence"
+        bound = (
+            f"; |A| < {up(limit.magnitude.value)} au/d2 at {percent(limit.confidence)} confidence"
+        )
         if not limit.converged:
             bound += " (from a chain that has not converged)"
     because = f", because {' and '.join(reasons)}" if reasons else ""
@@ -227,11 +246,6 @@ def verdict(
     )
 
 
-def _up(value: u.Quantity) -> str:
-    """A threshold or an upper limit, rounded up."""
-    return rounded(float(value.value), 2, outward="up")
-
-
 def _acceleration(value: u.Quantity | float | None) -> float | None:
     if value is None:
         return None
@@ -255,17 +269,3 @@ def _statistic(fit_null: ThrustFit | None, fit_push: ThrustFit, wald: float) -> 
     if not same:
         return wald, "Wald"
     return max(0.0, float(fit_null.chi2 - fit_push.chi2)), "likelihood ratio"
-
-
-def _sigma(p_value: float, statistic: float, k: int) -> float:
-    """Two-sided Gaussian sigma of a p-value; beyond the smallest double, from the logarithm of the
-    chi2 tail.
-    """
-    if p_value > 1e-300:
-        return max(0.0, float(norm.isf(0.5 * p_value)))
-    # leading terms of the two tails, equated
-    log_p = 0.5 * (k - 2) * np.log(0.5 * statistic) - 0.5 * statistic
-    x = np.sqrt(-2.0 * log_p)
-    for _ in range(20):
-        x = np.sqrt(max(1.0, -2.0 * (log_p + np.log(x) + 0.5 * np.log(0.5 * np.pi))))
-    return float(x)

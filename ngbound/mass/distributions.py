@@ -1,6 +1,6 @@
 """How sure an assumed number is: small frozen distributions, and their reading from text or TOML.
 
-May import: constants and errors only (with numpy and scipy).
+May import: constants, errors and rounding only (with numpy and scipy).
 
 Every distribution is defined by its quantile function ``ppf``; a draw is ``ppf(uniform)``. That
 makes truncation, one-at-a-time tables and variance decompositions use one and the same definition.
@@ -19,17 +19,12 @@ from astropy.units import Quantity
 from scipy import special
 
 from ngbound.errors import CaseError
+from ngbound.rounding import rounded
 
 
 def number_text(value: float, digits: int = 3) -> str:
     """A number to so many significant digits, as "517", "0.47" or "3.9e10"."""
-    if not math.isfinite(value) or value == 0:
-        return f"{value:g}"
-    mantissa, exponent = f"{value:.{digits - 1}e}".split("e")
-    power = int(exponent)
-    if -4 < power < 5:
-        return f"{float(f'{mantissa}e{exponent}'):.{max(digits - 1 - power, 0)}f}"
-    return f"{mantissa}e{power}"
+    return rounded(value, digits) if math.isfinite(value) else f"{value:g}"
 
 
 def _short(value: float, digits: int = 4) -> str:

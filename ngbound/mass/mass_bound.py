@@ -19,7 +19,7 @@ from astropy.units import Quantity
 from ngbound.constants import AU_D2_TO_M_S2
 from ngbound.errors import MassError
 from ngbound.limits import DetectionThreshold
-from ngbound.rounding import length_text, mass_text, percent, rounded
+from ngbound.rounding import length_text, mass_text, percent, rounded, up
 
 from .distributions import AtMost, Distribution, DistributionSpec, Fixed
 from .momentum_model import (
@@ -145,7 +145,7 @@ class MassBound:
             str(e) for e in self.outgassing.emissions if not isinstance(e.rate, AtMost)
         )
         joint = ""
-        upper = rounded(float(self.acceleration_upper.value), 2, outward="up")
+        upper = up(float(self.acceleration_upper.value))
         if self.acceleration_kind == "upper limit":
             held = f"|A| held at its limit of {upper} au/d2"
             if self.joint_confidence is None:

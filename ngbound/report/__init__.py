@@ -31,7 +31,6 @@ from ngbound.report.tables import (
     residuals_csv,
     station_table,
     threshold_table,
-    values_table,
 )
 
 __all__ = [
@@ -56,5 +55,4 @@ __all__ = [
     "station_table",
     "the_sentence",
     "threshold_table",
-    "values_table",
 ]

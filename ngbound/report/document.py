@@ -23,13 +23,16 @@ import textwrap
 from collections.abc import Iterable, Mapping, Sequence
 from typing import Any
 
-from ngbound.report.rounding import (
+from ngbound.rounding import (
+    along,
     counted,
+    down,
     is_number,
     length_text,
     mass_text,
     percent,
     rounded,
+    up,
     with_asymmetric_error,
     with_error,
 )
@@ -147,9 +150,9 @@ def the_sentence(
         if limit_prior:
             belief = f" under the {limit_prior} prior"
             if is_number(other_limit_au_d2) and other_limit_prior:
-                other = rounded(other_limit_au_d2, 2, outward="up")
+                other = up(other_limit_au_d2)
                 belief += f" ({other} under {other_limit_prior})"
-        clauses.append(f"{at}|A| < {rounded(limit_au_d2, 2, outward='up')} au/d2{belief}")
+        clauses.append(f"{at}|A| < {up(limit_au_d2)} au/d2{belief}")
     if clauses:
         text = "; ".join(clauses)
         parts.append(text[0].upper() + text[1:] + ".")
@@ -227,10 +230,10 @@ def _threshold(
     chance = ""
     if is_number(power):
         chance = f" with probability {percent(power)}"
-    high = rounded(worst, 2, outward="up")
+    high = up(worst)
     value = f"{high} au/d2"
     if is_number(best):
-        low = rounded(best, 2, outward="up")
+        low = up(best)
         value += (
             " in any direction"
             if low == high
@@ -607,6 +610,8 @@ def _write_fits(page: _Page, record: Mapping[str, Any]) -> None:
             text += f" for {counted(int(compared['delta_dof']), 'parameter')}"
         if is_number(compared.get("p_value")):
             text += f", p = {compared['p_value']:.2g}"
+            if is_number(compared.get("significance_sigma")):
+                text += f" ({compared['significance_sigma']:.1f} sigma)"
         if is_number(compared.get("delta_bic")):
             better = "thrust" if compared["delta_bic"] > 0 else "gravity alone"
             text += f"; the BIC favours {better} by {abs(compared['delta_bic']):.1f}"
@@ -633,7 +638,7 @@ def _write_threshold(page: _Page, record: Mapping[str, Any]) -> None:
     ):
         for letter, value in zip(letters, found.get(key) or (), strict=False):
             if is_number(value):
-                rows.append((f"{letter}: {words}", rounded(value, 2, outward="up")))
+                rows.append((f"{letter}: {words}", up(value)))
     for key, words in (
         ("best_au_d2", "best seen direction"),
         ("worst_au_d2", "worst seen direction"),
@@ -641,10 +646,9 @@ def _write_threshold(page: _Page, record: Mapping[str, Any]) -> None:
     ):
         if is_number(found.get(key)):
             where = found.get(key.replace("_au_d2", "_direction"))
-            along = (
-                f"  along {letters} = ({', '.join(f'{x:+.2f}' for x in where)})" if where else ""
+            rows.append(
+                (words, up(found[key]) + (f"  along {along(letters, where)}" if where else ""))
             )
-            rows.append((words, rounded(found[key], 2, outward="up") + along))
     page.pairs(rows)
     for sentence in record.get("degeneracies") or ():
         page.item(sentence)
@@ -697,8 +701,7 @@ def _write_limits(page: _Page, record: Mapping[str, Any]) -> None:
         rows.append(
             (
                 "A_R, outward only",
-                f"{rounded(low, 2, outward='down')} to "
-                f"{rounded(high, 2, outward='up')}  (unified interval)",
+                f"{down(low)} to {up(high)}  (unified interval)",
             )
         )
     page.pairs(rows)
@@ -717,8 +720,8 @@ def _write_limits(page: _Page, record: Mapping[str, Any]) -> None:
 def _limit(value: Any, error: Any) -> str:
     if not is_number(value):
         return "not available"
-    text = f"< {rounded(value, 2, outward='up')}"
-    return text + (f" +- {rounded(error, 1)}" if is_number(error) and error > 0 else "")
+    text = f"< {up(value)}"
+    return text + (f" (+- {rounded(error, 1)})" if is_number(error) and error > 0 else "")
 
 
 def render_mass(record: Mapping[str, Any], *, width: int = WIDTH) -> str:

@@ -5,7 +5,8 @@ May import constants, errors and the public names of the rooms to the left of re
 
 import csv
 import io
-from collections.abc import Mapping, Sequence
+import re
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -15,7 +16,7 @@ from astropy import units as u
 from scipy.stats import norm
 
 from ngbound.constants import ARCSEC_RAD
-from ngbound.report.rounding import counted, is_number, percent, rounded
+from ngbound.rounding import counted, is_number, percent, up
 
 SUSPICIOUS_SIGMA = 3.0
 SUSPICIOUS_LEAST_RECORDS = 10
@@ -33,7 +34,8 @@ class SmallTable:
     frame : DataFrame
         The numbers, one column each, unrounded.
     formats : mapping
-        Of a column: a format such as ".2f"; columns not named are shown as they are.
+        Of a column: a format such as ".2f", or a function that writes a number; columns not named
+        are shown as they are.
     headings : mapping
         Of a column: what stands above it; its name where none is given.
     note : str
@@ -42,7 +44,7 @@ class SmallTable:
 
     title: str
     frame: pd.DataFrame
-    formats: Mapping[str, str]
+    formats: Mapping[str, str | Callable[[float], str]]
     headings: Mapping[str, str]
     note: str = ""
 
@@ -57,7 +59,8 @@ class SmallTable:
     def _cell(self, column: str, value: Any) -> str:
         if isinstance(value, (float, np.floating)) and not np.isfinite(value):
             return "-"
-        return format(value, self.formats[column]) if column in self.formats else str(value)
+        write = self.formats.get(column, str)
+        return format(value, write) if isinstance(write, str) else write(value)
 
     def to_text(self) -> str:
         """Aligned plain text, numbers to the right."""
@@ -137,7 +140,7 @@ def _latex(text: str) -> str:
         ("$\\pm$", r"$\pm$"),
     ):
         text = text.replace(plain, escaped)
-    return text
+    return re.sub(r"(?<![\w.])(\d+(?:\.\d+)?)e(-?\d+)", r"$\1\\times10^{\2}$", text)
 
 
 def group_means(fit: Any, labels: Sequence[Any]) -> pd.DataFrame:
@@ -397,7 +400,7 @@ def threshold_table(threshold: Any) -> SmallTable:
     return SmallTable(
         "Detection thresholds",
         pd.DataFrame(rows),
-        {"value": ".2e"},
+        {"value": up},
         {"value": "A_det (au/d2)"},
         f"false-alarm rate {percent(threshold.false_alarm)}, power {percent(threshold.power)}",
     )
@@ -428,9 +431,3 @@ def _column_format(column: str) -> str:
     if column.endswith("_au"):
         return ".8f"
     return ".4f" if column == "chi" else ""
-
-
-def values_table(title: str, rows: Mapping[str, Any], note: str = "") -> SmallTable:
-    """A two-column table of named values, numbers rounded to four digits."""
-    shown = [rounded(v, 4) if isinstance(v, float) else str(v) for v in rows.values()]
-    return SmallTable(title, pd.DataFrame({"quantity": list(rows), "value": shown}), {}, {}, note)

@@ -35,7 +35,7 @@ def test_edges_are_kept_and_recorded():
     A = np.array([[0.5e-12, 0.0, 0.0], [1e-11, 0.0, 0.0], [2e-9, 0.0, 0.0]])
     assert prior.inside(A).tolist() == [False, True, False]
     assert prior.to_dict()["upper_au_d2"] == 1e-9
-    assert "1.000e-12" in str(prior)
+    assert "1.0e-12" in str(prior)
     worst = info.eigenvalues[0] ** -0.5
     assert thrust_prior(info).upper_au_d2 == pytest.approx(50.0 * worst)
 

@@ -195,6 +195,7 @@ def make_pair(
                 "tdb_d": tdb_d,
                 "utc": Time(tdb_d + 51544.5, format="mjd", scale="tdb").isot,
                 "stn": stn,
+                "site": np.where(stn == "SPC", "space", "fixed"),
                 "astCat": cat,
                 "ra_arcsec": left[0::2],
                 "dec_arcsec": left[1::2],

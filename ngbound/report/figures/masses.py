@@ -13,14 +13,18 @@ from matplotlib.ticker import FuncFormatter, NullFormatter
 
 from ngbound.errors import MassError
 from ngbound.report.figures import style
-from ngbound.report.rounding import length_text, percent, rounded
+from ngbound.rounding import down, length_text, percent, up
 
 MOST_INPUTS = 7
 
 
 @style.house_style
 def mass_figure(
-    bound: Any, ceiling: Any = None, *, figsize: tuple[float, float] | None = None
+    bound: Any,
+    ceiling: Any = None,
+    *,
+    name: str = "",
+    figsize: tuple[float, float] | None = None,
 ) -> Figure:
     """Distribution of the mass with its lower bound, and what moves it.
 
@@ -31,6 +35,8 @@ def mass_figure(
         and ``mass_detection`` are read.
     ceiling : MassCeiling, optional
         ``mass`` and ``confidence`` are read, and the mass above is shaded too.
+    name : str
+        Of the object, for the title.
     figsize : (float, float), optional
         Inches; one page width by default.
 
@@ -58,14 +64,8 @@ def mass_figure(
         start = split + 1.65 / width
         side = fig.add_axes((start, bottom, 1.0 - start - 0.15 / width, top - bottom))
         _draw_inputs(side, inputs)
-    fig.text(
-        0.15 / width,
-        1.0 - 0.10 / height,
-        "Mass this arc and outgassing budget demand",
-        va="top",
-        fontsize=8.5,
-        fontweight="bold",
-    )
+    title = "mass that this arc and the outgassing budget demand"
+    style.head(fig, f"{name}: {title}" if name else title.capitalize(), (), 0.15)
     return fig
 
 
@@ -93,7 +93,7 @@ def _draw_mass(ax: Axes, draws: np.ndarray, bound: Any, ceiling: Any) -> None:
         ax.axvspan(high_kg, 10.0**right, color="#f1e3dc", lw=0, zorder=0)
         ax.axvline(high_kg, color=style.VERMILION, lw=1.2, ls=(0, (4, 2)))
         ax.annotate(
-            rf"$M$ < {_outward(high_kg, 'up')} kg",
+            rf"$M$ < {style.scientific(up(high_kg))} kg",
             (high_kg, 1.0),
             xycoords=("data", "axes fraction"),
             xytext=(4, -2),
@@ -109,7 +109,7 @@ def _draw_mass(ax: Axes, draws: np.ndarray, bound: Any, ceiling: Any) -> None:
     diameter = length_text(float(bound.diameter.to_value(u.m)))
     near_right = (np.log10(low_kg) - left) > 0.55 * (right - left)
     ax.annotate(
-        rf"$M$ > {_outward(low_kg, 'down')} kg" + f"\n$D$ > {diameter}\n"
+        rf"$M$ > {style.scientific(down(low_kg))} kg" + f"\n$D$ > {diameter}\n"
         f"({percent(bound.confidence)} confidence)",
         (low_kg, 1.0),
         xycoords=("data", "axes fraction"),
@@ -143,11 +143,6 @@ def _draw_mass(ax: Axes, draws: np.ndarray, bound: Any, ceiling: Any) -> None:
     ax.set_yticks([])
     style.tidy(ax)
     ax.spines["left"].set_visible(False)
-
-
-def _outward(kilogram: float, way: str) -> str:
-    """A bound rounded outward, as every printing of it is, in mathtext."""
-    return style.scientific(float(rounded(kilogram, 2, outward=way)))
 
 
 def _few_ticks(low: float, high: float) -> list[float]:

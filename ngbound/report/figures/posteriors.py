@@ -11,7 +11,7 @@ from scipy.stats import norm
 
 from ngbound.limits import AU_D2, Posterior, UpperLimit
 from ngbound.report.figures import style
-from ngbound.report.rounding import percent
+from ngbound.rounding import percent, up
 
 NAMES = {"R": "radial", "T": "transverse", "N": "normal"}
 BINS = 50
@@ -24,6 +24,7 @@ def posterior_figure(
     limit: UpperLimit,
     *,
     alternative: Posterior | None = None,
+    name: str = "",
     figsize: tuple[float, float] | None = None,
 ) -> Figure:
     """Marginal posteriors of the thrust components and of |A|, with the upper limits.
@@ -35,6 +36,8 @@ def posterior_figure(
         Computed from ``post``.
     alternative : Posterior, optional
         Sampled under the second prior; without it flat components are drawn in linear theory.
+    name : str
+        Of the object, for the title.
     figsize : (float, float), optional
         Inches; one page width by default.
 
@@ -63,23 +66,13 @@ def posterior_figure(
     for i, letter in enumerate(post.components):
         _component(grid[i], post, limit, i, letter)
     _size(grid[-1], post, limit, alternative)
-    fig.text(
-        0.15 / width,
-        1.0 - 0.10 / height,
-        "Thrust: posterior and upper limits",
-        va="top",
-        fontsize=8.5,
-        fontweight="bold",
+    note = (
+        f"accelerations at 1 au; filled: posterior under {_prior_name(limit.prior)}; thin curves: "
+        f"linear theory without prior; dotted lines: limits at {percent(limit.confidence)} "
+        "confidence"
     )
-    fig.text(
-        0.15 / width,
-        1.0 - 0.27 / height,
-        f"acceleration at 1 au in {style.ACCELERATION_UNIT}; dotted lines: limits at "
-        f"{percent(limit.confidence)} confidence; thin curves: linear theory",
-        va="top",
-        fontsize=6.4,
-        color="#555555",
-    )
+    title = "posterior of the thrust, and upper limits"
+    style.head(fig, f"{name}: {title}" if name else title.capitalize(), [note], 0.15)
     return fig
 
 
@@ -106,14 +99,14 @@ def _component(ax: Axes, post: Posterior, limit: UpperLimit, i: int, letter: str
         if low < sign * bound < high:
             ax.axvline(sign * bound / scale, color=style.VERMILION, lw=0.9, ls=(0, (1, 1.2)))
     ax.set_title(
-        f"{NAMES[letter]}\n" rf"$|A_{letter}|$ < {style.scientific(bound)}",
+        f"{NAMES[letter]}\n" rf"$|A_{letter}|$ < {style.scientific(up(bound))}",
         fontsize=7.0,
         loc="left",
         pad=4,
     )
     ax.set_ylim(0.0, 1.1 * max(count.max(), norm.pdf(0.0, 0.0, sigma)) * scale)
     ax.xaxis.set_major_locator(MaxNLocator(4))
-    ax.set_xlabel(rf"$A_{letter}$  ($10^{{{power}}}$ {style.ACCELERATION_UNIT})")
+    ax.set_xlabel(f"$A_{letter}$  ({style.acceleration(f'1e{power}')})")
     _bare(ax)
 
 
@@ -144,14 +137,15 @@ def _size(ax: Axes, post: Posterior, limit: UpperLimit, alternative: Posterior |
         ax.text(
             0.0,
             1.03 + 0.095 * (1 - row),
-            rf"$|A|$ < {style.scientific(bound)}   prior {name}",
+            rf"$|A|$ < {style.scientific(up(bound))}   prior {name}",
             transform=ax.transAxes,
             fontsize=6.8,
             color=colour,
             va="bottom",
         )
     ax.set_xlim(low / scale, high / scale)
-    ax.set_xlabel(rf"$|A|$  ($10^{{{power}}}$ {style.ACCELERATION_UNIT})")
+    ax.set_xlabel(f"$|A|$  ({style.acceleration(f'1e{power}')})")
+    ax.xaxis.set_major_locator(MaxNLocator(6))
     _bare(ax)
 
 

@@ -11,18 +11,22 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 from ngbound.report.figures import style
-from ngbound.report.rounding import percent
+from ngbound.rounding import percent
 
 COLOURS = (style.BLUE, style.VERMILION, style.GREEN, style.PURPLE, style.ORANGE)
 
 
 @style.house_style
-def reach_figure(reach: Any, *, figsize: tuple[float, float] | None = None) -> Figure:
+def reach_figure(
+    reach: Any, *, name: str = "", figsize: tuple[float, float] | None = None
+) -> Figure:
     """Production rate revealed against diameter, beside what a whole surface of ice could give.
 
     Parameters
     ----------
     reach : Reach
+    name : str
+        Of the object, for the title.
     figsize : (float, float), optional
         Inches; a column wide for one species, a page for three by default.
 
@@ -53,31 +57,16 @@ def reach_figure(reach: Any, *, figsize: tuple[float, float] | None = None) -> F
     for number, (row, ax) in enumerate(zip(rows, panels.ravel(), strict=False)):
         _draw(ax, row, COLOURS[number % len(COLOURS)])
         if number % across == 0:
-            ax.set_ylabel("rate (kg/s)" if row.unit == "kg/s" else "rate (molecules s$^{-1}$)")
+            ax.set_ylabel("rate (kg/s)" if row.unit == "kg/s" else "rate (molecules s\u207b\u00b9)")
         if number >= len(rows) - across:
             ax.set_xlabel("diameter (m)")
     chance = "" if reach.power is None else f" with probability {percent(reach.power)}"
     lines = (
-        ("Outgassing this arc would have revealed", 0.08, 8.5, "bold", style.INK),
-        (f"a thrust in any direction{chance};", 0.25, 6.4, "regular", "#555555"),
-        (
-            f"band: {percent(reach.confidence)} interval of density, speed and collimation",
-            0.37,
-            6.4,
-            "regular",
-            "#555555",
-        ),
+        f"a thrust in any direction{chance};",
+        f"band: {percent(reach.confidence)} interval of density, speed and collimation",
     )
-    for text, below, points, weight, colour in lines:
-        fig.text(
-            0.10 / width,
-            1.0 - below / height,
-            text,
-            va="top",
-            fontsize=points,
-            fontweight=weight,
-            color=colour,
-        )
+    title = "outgassing this arc would have revealed"
+    style.head(fig, f"{name}: {title}" if name else title.capitalize(), lines, 0.10, name)
     return fig
 
 

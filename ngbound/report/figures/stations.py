@@ -9,9 +9,11 @@ import numpy as np
 import pandas as pd
 from matplotlib.axes import Axes
 from matplotlib.figure import Figure
+from matplotlib.ticker import MaxNLocator
 
 from ngbound.report.figures import style
 from ngbound.report.tables import SUSPICIOUS_LEAST_RECORDS, SUSPICIOUS_SIGMA, group_means
+from ngbound.rounding import counted
 
 MOST_ROWS = 24
 
@@ -33,7 +35,7 @@ def residual_by_station(
     Returns
     -------
     matplotlib Figure
-        RA cos(dec) left, Dec right; offsets beyond 3 sigma filled and in vermilion.
+        RA cos(dec) left, Dec right; offsets beyond 3 sigma are filled diamonds.
     """
     table = fit.residuals
     catalogues = group_means(fit, table["astCat"].to_numpy())
@@ -46,6 +48,8 @@ def residual_by_station(
     rows = sum(len(p) for _, p in parts)
     high = 1.15 + 0.145 * rows + 0.35
     fig = style.HouseFigure(figsize=figsize or (style.PAGE_INCH, high))
+    names = [str(group) for _, means in parts for group in means["group"]]
+    left = 0.15 + max((style.text_inch(name, 7.0) for name in names), default=0.5)
     width, height = fig.get_size_inches()
     grid = fig.subplots(
         2,
@@ -53,7 +57,7 @@ def residual_by_station(
         sharey="row",
         sharex="col",
         gridspec_kw={
-            "left": 0.95 / width,
+            "left": left / width,
             "right": 1.0 - 0.85 / width,
             "bottom": 0.45 / height,
             "top": 1.0 - 0.62 / height,
@@ -85,21 +89,31 @@ def residual_by_station(
         grid[0][1].text(
             x, 1.0, word, transform=grid[0][1].transAxes, va="bottom", fontsize=6.4, color="#555555"
         )
+    for ax in grid[1]:
+        ax.xaxis.set_major_locator(MaxNLocator(5, symmetric=True))
     grid[1][0].set_xlabel(r"mean residual in RA cos$\,\delta$ (arcsec)")
     grid[1][1].set_xlabel("mean residual in Dec (arcsec)")
-    _heads(fig, fit, left_out, width, height)
+    note = (
+        f"\u25c6 beyond {SUSPICIOUS_SIGMA:g} sigma, common errors of a night allowed for; "
+        "\u25b6 goes on beyond the scale"
+    )
+    if left_out > 0:
+        note += f"; {counted(left_out, 'station')} with fewer observations not shown"
+    free = getattr(fit, "components", "")
+    model = f"with {free} thrust" if free else "by gravity alone"
+    title = f"{fit.arc.name}: mean residuals of the fit {model}, observed \u2212 computed"
+    style.head(fig, title, [note], 0.12, f"{fit.arc.name}: mean residuals")
     return fig
 
 
 def _reach(parts: list[tuple[str, pd.DataFrame]], axis: str) -> float:
-    """Half the width of a column, arcsec: what is significant and most of what is well known."""
+    """Half the width of a column, arcsec: error bars of all that is well known, within reason."""
     means = pd.concat([p for _, p in parts])
     mean = np.abs(means[f"mean_{axis}_arcsec"].to_numpy(float))
-    error = means[f"mean_{axis}_error_arcsec"].to_numpy(float)
+    end = mean + means[f"mean_{axis}_error_arcsec"].to_numpy(float)
     solid = means["n"].to_numpy() >= SUSPICIOUS_LEAST_RECORDS
-    far = solid & (mean > SUSPICIOUS_SIGMA * error)
-    most = np.quantile((mean + error)[solid] if solid.any() else mean + error, 0.8)
-    return 1.2 * max(float(most), float(np.max((mean + error)[far], initial=0.0)))
+    known = end[solid] if solid.any() else end
+    return 1.08 * float(min(known.max(), 4.0 * np.median(known)))
 
 
 def _draw(ax: Axes, means: pd.DataFrame, axis: str, reach: float) -> None:
@@ -125,35 +139,23 @@ def _draw(ax: Axes, means: pd.DataFrame, axis: str, reach: float) -> None:
             zorder=3,
         )
     ax.set_xlim(-reach, reach)
-    for out, edge, arrow in ((mean > reach, 0.985, ">"), (mean < -reach, 0.015, "<")):
-        ax.plot(
-            np.full(out.sum(), edge),
-            y[out],
-            arrow,
-            ms=3.4,
-            mew=0,
-            color=style.BLUE,
-            transform=ax.get_yaxis_transform(),
-            zorder=4,
-        )
+    # an arrowhead where a bar goes on beyond the edge, a larger one where its middle does
+    for sign, edge, arrow in ((1.0, 1.0, ">"), (-1.0, 0.0, "<")):
+        for out, size in (
+            ((sign * mean + error > reach) & (sign * mean <= reach), 2.4),
+            (sign * mean > reach, 4.2),
+        ):
+            ax.plot(
+                np.full(out.sum(), edge),
+                y[out],
+                arrow,
+                ms=size,
+                mew=0,
+                color=style.BLUE,
+                transform=ax.get_yaxis_transform(),
+                clip_on=False,
+                zorder=4,
+            )
     style.tidy(ax)
     ax.spines["left"].set_visible(False)
     ax.tick_params(axis="y", length=0)
-
-
-def _heads(fig: Figure, fit: Any, left_out: int, width: float, height: float) -> None:
-    fig.text(
-        0.12 / width,
-        1.0 - 0.10 / height,
-        f"{fit.arc.name}: mean residuals, observed \u2212 computed",
-        va="top",
-        fontsize=8.5,
-        fontweight="bold",
-    )
-    note = (
-        f"filled diamonds: beyond {SUSPICIOUS_SIGMA:g} sigma, common errors of a night allowed "
-        "for; arrowheads: off the scale"
-    )
-    if left_out > 0:
-        note += f"; {left_out} stations with fewer observations not shown"
-    fig.text(0.12 / width, 1.0 - 0.27 / height, note, va="top", fontsize=6.4, color="#555555")

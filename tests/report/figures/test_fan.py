@@ -8,10 +8,13 @@ import pytest
 from astropy import units as u
 
 from ngbound.errors import FitError, LimitError
+from ngbound.fit import Comparison
 from ngbound.limits import detection_threshold
 from ngbound.report import residual_fan
-from ngbound.report.figures.fan import LADDER, _Clock
+from ngbound.report.figures.fan_contents import LADDER
+from ngbound.report.figures.seasons import Clock
 from ngbound.report.figures.style import spread
+from ngbound.rounding import along
 from tests.report.standins import archive_pair, demo_pair, tiny_pair
 
 AU_D2 = u.au / u.d**2
@@ -34,6 +37,9 @@ def test_two_panels_with_dates_labels_and_a_rung_each():
         "Q02",
         "Q03",
         "SPC",
+        "night mean \u00b1 1\u03c3",
+        "single record",
+        "fan seen from SPC",
         "rejected",
     }
 
@@ -75,10 +81,10 @@ def test_the_ladder_in_multiples_of_the_threshold():
     fig = residual_fan(
         null, push, ladder=np.array([1, 3]) * held * AU_D2, component="normal", threshold=threshold
     )
-    assert [t.get_text().split("$")[0] for t in rung_texts(fig)] == ["1", "3"]
+    assert [t.get_text().split("\u00d7")[0] for t in rung_texts(fig)] == ["1", "3"]
     assert any("50 %" in t.get_text() for t in fig.texts)
     given = residual_fan(null, push, ladder=[5e-9], component="T", threshold=1e-9 * AU_D2)
-    assert rung_texts(given)[0].get_text().startswith("5$")
+    assert rung_texts(given)[0].get_text().startswith("5\u00d7")
 
 
 def test_a_dwarfing_ladder_goes_to_symlog_and_alike_stays_linear():
@@ -94,8 +100,54 @@ def test_only_residuals_without_a_thrust_fit():
 
 
 def test_a_detected_thrust_is_drawn_too():
-    labels = [t.get_text() for t in residual_fan(*demo_pair(1.5e-8)).legends[0].get_texts()]
-    assert "fitted thrust" in labels
+    null, push = demo_pair(1.5e-8)
+    fig = residual_fan(null, push)
+    assert "fitted thrust" in [t.get_text() for t in fig.legends[0].get_texts()]
+    note = " ".join(t.get_text() for t in fig.texts)
+    unit = push.A.value / np.linalg.norm(push.A.value)
+    assert f"along the fitted thrust {along('RTN', unit)}" in note
+    best = residual_fan(null, push, component="best")
+    assert "in the direction this arc shows best" in " ".join(t.get_text() for t in best.texts)
+
+
+def test_the_ladder_is_the_fitted_thrust_times_a_number():
+    null, push = demo_pair(1.5e-8)
+    size = float(np.linalg.norm(push.A.value))
+    fig = residual_fan(null, push, ladder=[size])
+    for ax in fig.axes:
+        rung = [line.get_ydata() for line in ax.lines if line.get_gid() == "fan"]
+        fitted = [line for line in ax.lines if line.get_linestyle() == "--"][0].get_ydata()
+        assert np.nanmax(np.abs(fitted)) == pytest.approx(np.nanmax(np.abs(rung[0])), rel=1e-9)
+
+
+def test_a_comparison_decides_whether_the_thrust_is_significant():
+    null, push = demo_pair(1.5e-8)
+    weak = Comparison(1.0, 3, 0.8, -10.0, 100, True)
+    fig = residual_fan(null, push, comparison=weak)
+    assert "fitted thrust" not in [t.get_text() for t in fig.legends[0].get_texts()]
+
+
+def test_platforms_are_drawn_apart():
+    fig = residual_fan(*demo_pair())
+    for ax in fig.axes:
+        ids = [line.get_gid() for line in ax.lines]
+        assert ids.count("fan") == ids.count("fan from elsewhere") == 2 * len(LADDER)
+
+
+def test_a_narrow_figure_writes_the_accelerations_into_the_note():
+    fig = residual_fan(*demo_pair(), figsize=(3.5, 4.2))
+    assert [t.get_text() for t in rung_texts(fig)] == ["0.5\u00d7", "1\u00d7", "2\u00d7", "4\u00d7"]
+    assert "1\u00d7 = " in " ".join(t.get_text() for t in fig.texts)
+
+
+def test_the_file_knows_what_it_shows():
+    page = io.BytesIO()
+    residual_fan(*demo_pair()).savefig(page, format="pdf")
+    assert b"residuals of the gravity-only fit" in page.getvalue()
+    assert b"/CreationDate" not in page.getvalue()
+    svg = io.StringIO()
+    residual_fan(tiny_pair()[0]).savefig(svg, format="svg")
+    assert "<dc:title>" in svg.getvalue() and "<dc:date>" not in svg.getvalue()
 
 
 def test_ten_observations():
@@ -109,18 +161,21 @@ def test_decades_of_seasons_stand_side_by_side():
     fig = residual_fan(null, push)
     years = [t.get_text() for t in fig.axes[1].get_xticklabels()]
     assert years[0] == "1983" and years == sorted(years) and len(years) > 15
-    assert {t.get_text() for t in fig.legends[0].get_texts()} >= {"station-night mean", "single"}
+    assert {t.get_text() for t in fig.legends[0].get_texts()} >= {
+        "night mean \u00b1 1\u03c3",
+        "single record",
+    }
 
 
 def test_the_cut_time_axis_keeps_the_order_of_time():
     rng = np.random.default_rng(1)
     date = np.sort(np.concatenate([c + 40 * rng.random(30) for c in (0.0, 500.0, 1100.0, 4000.0)]))
-    clock = _Clock.of(date)
+    clock = Clock.of(date)
     assert clock.cut and len(clock.first) == 4
     assert np.all(np.diff(clock.place(date)) > 0)
     inside = np.diff(date) < 100
     assert np.diff(clock.place(date))[inside] == pytest.approx(np.diff(date)[inside])
-    short = _Clock.of(np.linspace(0, 240, 50))
+    short = Clock.of(np.linspace(0, 240, 50))
     assert not short.cut and short.place(np.array([3.5]))[0] == 3.5
 
 

@@ -16,6 +16,7 @@ from ngbound.report import (
     reach_figure,
     residual_by_station,
 )
+from ngbound.report.figures import style
 from tests.report.standins import archive_pair, demo_pair
 
 
@@ -30,7 +31,14 @@ def test_direction_map(pair):
     assert fig.axes[0].name == "mollweide"
     assert {"R", "T", "N", "\u2212R", "\u2212T", "\u2212N"} <= set(texts(fig).split())
     assert "95 %" in texts(fig) and "best" in texts(fig)
-    assert "threshold" in fig.axes[1].get_xlabel()
+    assert "threshold" in fig.axes[1].get_xlabel() and "au d" in fig.axes[1].get_xlabel()
+    labels = [t.get_text() for t in fig.axes[1].get_xticklabels()]
+    assert 3 <= len(labels) <= 9 and len(set(labels)) == len(labels)
+
+
+def test_the_map_grows_darker_as_the_threshold_grows_so_that_it_survives_in_grey():
+    grey = style.MAP_RAMP(np.linspace(0, 1, 64))[:, :3] @ [0.299, 0.587, 0.114]
+    assert np.all(np.diff(grey) < 0.0)
 
 
 def without(push, keep: str):
@@ -100,6 +108,9 @@ def test_residual_by_station():
     assert "USNOA2" in catalogues
     assert len(fig.axes[2].get_yticklabels()) == 10
     assert "not shown" in texts(fig)
+    for ax in fig.axes:
+        for label in ax.get_yticklabels():
+            assert label.get_window_extent().x0 >= 0.0
 
 
 def test_reach_figure():
@@ -127,5 +138,5 @@ def test_reach_figure():
 def test_mass_figure_with_a_ceiling():
     fig = mass_figure(a_bound(), SimpleNamespace(mass=9.11e11 * u.kg, confidence=0.95))
     fig.canvas.draw()
-    assert r"9.2\times10^{11}" in texts(fig)
+    assert "9.2\u2009\u00d7\u200910\u00b9\u00b9 kg" in texts(fig)
     assert fig.axes[0].get_xlim()[1] > 9.11e11

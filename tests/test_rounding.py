@@ -4,12 +4,15 @@ import math
 
 import pytest
 
-from ngbound.report.rounding import (
+from ngbound.rounding import (
+    along,
     counted,
+    down,
     is_number,
     length_text,
     percent,
     rounded,
+    up,
     with_asymmetric_error,
     with_error,
 )
@@ -63,3 +66,9 @@ def test_words():
     assert length_text(1234.0) == "1.2 km"
     assert with_asymmetric_error(2.6, 0.2, 0.4) == "2.60 (+0.40, -0.20)"
     assert not is_number(None) and not is_number(math.inf) and not is_number(True)
+
+
+def test_bounds_and_directions_are_written_alike_everywhere():
+    assert up(1.601e-9) == "1.7e-9"
+    assert down(1.99e11) == "1.9e11"
+    assert along("RTN", [-0.0012, 0.4371, -0.139]) == "(+0.00 R, +0.44 T, -0.14 N)"
