@@ -22,8 +22,19 @@ INTERRUPTED = 130
 """Exit status after Ctrl-C, as shells have it (128 + SIGINT)."""
 
 
+GO_ON = {
+    "sweep": "the same command goes on with the cases that have no record yet",
+    "inject": "with --checkpoint FILE the same command goes on from the counts kept there",
+}
+"""What to do after an interruption, where it is not to begin anew."""
+
+
 class Verbs(click.Group):
     """The group of verbs; every expected failure of a verb becomes a sentence and a status."""
+
+    def list_commands(self, ctx: click.Context) -> list[str]:
+        """The verbs in the order of the work, as they stand in this file."""
+        return list(self.commands)
 
     def invoke(self, ctx: click.Context) -> Any:
         try:
@@ -45,8 +56,14 @@ class Verbs(click.Group):
                 "[sampling] walkers and max_steps.",
                 1,
             )
+        except click.UsageError as error:
+            path = error.ctx.command_path if error.ctx else "ngbound"
+            text = error.format_message()
+            text += "" if text.endswith((".", "?")) else "."
+            _end(ctx, f"{text} See {path} --help.", error.exit_code)
         except KeyboardInterrupt:
-            _end(ctx, "Interrupted; no record was written.", INTERRUPTED)
+            again = GO_ON.get(ctx.invoked_subcommand or "", "the same command begins anew")
+            _end(ctx, f"Interrupted, nothing half-written is left; {again}.", INTERRUPTED)
 
 
 def _end(ctx: click.Context, sentence: str, status: int) -> NoReturn:
@@ -279,10 +296,10 @@ def forecast(input_file: Path, **options: Any) -> Any:
     return ng.forecast_case(input_file, **options)
 
 
-def _desk(name: str, help_text: str, function: str) -> None:
+def _desk(name: str, help_text: str, function: str, short: str | None = None) -> None:
     """Register a verb of the referee's desk: one TOML file of quoted numbers in, text out."""
 
-    @main.command(name=name, help=help_text)
+    @main.command(name=name, help=help_text, short_help=short)
     @click.argument("quoted", metavar="QUOTED.toml", type=click.Path(path_type=Path))
     @click.option(
         "--json", "as_json", is_flag=True, help="Print one JSON document instead of text."
@@ -304,6 +321,7 @@ _desk(
     "QUOTED.toml holds two or more [[result]] tables, of quoted numbers or with their arcs.\n\n"
     "Example: ngbound reconcile data_demo/desk/reconcile.toml",
     "reconcile",
+    "Say what lets two or more results hold together.",
 )
 
 

@@ -85,6 +85,7 @@ def rows(n: int, **changes: str) -> str:
 def test_the_group_lists_every_verb(ngbound):
     result = ngbound("--help")
     assert result.exit_code == 0
+    assert "..." not in result.stdout.split("Commands:")[1]
     assert sorted(cli.main.commands) == VERBS
     for verb in VERBS:
         assert f"  {verb} " in result.stdout
@@ -160,9 +161,19 @@ def test_warnings_of_ngbound_are_sentences(ngbound, monkeypatch):
     "arguments", [["run"], ["run", "a", "b"], ["runn"], ["run", "--what", "a"]]
 )
 def test_wrong_usage_is_status_2(ngbound, arguments):
-    result = ngbound(*arguments)
-    assert result.exit_code == 2
-    assert "Usage" in result.stderr
+    assert "--help." in told(ngbound(*arguments), 2)
+
+
+@pytest.mark.parametrize(
+    ("verb", "hint"),
+    [("run", "begins anew"), ("sweep", "that have no record yet"), ("inject", "--checkpoint")],
+)
+def test_an_interruption_says_how_to_go_on(ngbound, monkeypatch, verb, hint):
+    def stop(path, **options):
+        raise KeyboardInterrupt
+
+    monkeypatch.setattr(ng, FUNCTIONS[verb], stop, raising=False)
+    assert hint in told(ngbound(verb, "x.toml"), cli.INTERRUPTED)
 
 
 BAD_ARCS = {
