@@ -418,7 +418,7 @@ def weigh(bounds: "Bounds", step: "Steps") -> "Weighed":
     """All that the thrust says of the body; what does not follow is said instead of found."""
     case, remarks = bounds.fits.case, list[str]()
     budget, size, g = case.budget(), case.nucleus.size(), law_in_window(case.thrust.thrust())
-    bound = ceiling = found = light = None
+    bound = other = ceiling = found = light = None
     active: tuple[ActiveArea, ...] = ()
     departures: tuple[LawDeparture, ...] = ()
     if budget is not None:
@@ -437,6 +437,14 @@ def weigh(bounds: "Bounds", step: "Steps") -> "Weighed":
                     threshold=bounds.threshold,
                     **common,
                 )
+                with warnings.catch_warnings():
+                    warnings.simplefilter("ignore", NgboundWarning)  # the same as just above
+                    other = mass_bound(
+                        bounds.limit.alternative_magnitude,
+                        budget,
+                        limit_confidence=bounds.limit.confidence,
+                        **common,
+                    )
             if bounds.judged.kind == "detection":
                 with said_instead(remarks, "No upper bound on the mass"):
                     ceiling = mass_ceiling(bounds.posterior, budget, **common)
@@ -452,7 +460,7 @@ def weigh(bounds: "Bounds", step: "Steps") -> "Weighed":
         found = reach_of(bounds, budget, g)
     with step("radiation pressure"), said_instead(remarks, "No bound from radiation pressure"):
         light = push_of_sunlight(bounds)
-    return Weighed(bounds.fits, bound, ceiling, found, light, active, departures, tuple(remarks))
+    return Weighed(bounds, bound, other, ceiling, found, light, active, departures, tuple(remarks))
 
 
 def law_in_window(thrust: Thrust) -> Callable[[float], float]:
@@ -781,6 +789,8 @@ class Weighed:
     ----------
     bound : MassBound or None
         None without a budget, or where no lower bound follows.
+    other : MassBound or None
+        The same with |A| held at its limit under the other prior.
     ceiling : MassCeiling or None
         Only where the thrust was detected.
     reach : Reach or None
@@ -792,8 +802,9 @@ class Weighed:
         Why something of this does not follow.
     """
 
-    fits: Fits = field(repr=False)
+    bounds: Bounds = field(repr=False)
     bound: MassBound | None
+    other: MassBound | None
     ceiling: MassCeiling | None
     reach: Reach | None
     radiation: AreaToMass | None
@@ -805,12 +816,15 @@ class Weighed:
         """The results under the keys of the record, JSON-able."""
         single = {
             "mass": self.bound,
+            "mass_other_prior": self.other,
             "mass_ceiling": self.ceiling,
             "reach": self.reach,
             "radiation": self.radiation,
         }
+        limit = self.bounds.limit
         return {
             **{key: None if one is None else one.to_dict() for key, one in single.items()},
+            "mass_priors": [prior_name(limit.prior), prior_name(limit.alternative_prior)],
             "active_areas": [one.to_dict() for one in self.active],
             "law_departures": [one.to_dict() for one in self.departures],
             "mass_remarks": list(self.remarks),
@@ -818,7 +832,7 @@ class Weighed:
 
     def to_dict(self) -> dict[str, Any]:
         """Object and results; those of the mass bound stand at the top."""
-        whole = {"object": self.fits.arc.name, **self.found()}
+        whole = {"object": self.bounds.fits.arc.name, **self.found()}
         return {**(whole.pop("mass") or {}), **whole}
 
     def __str__(self) -> str:

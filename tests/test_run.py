@@ -94,6 +94,13 @@ def test_the_record_holds_reach_sunlight_active_surface_and_where_detected_a_cei
         assert 0.0 < area["active_fraction_low"] < area["active_fraction_high"] < 1.0
         assert record["law_departures"][0]["factor"] < 2.0
         assert record["mass_remarks"] == []
+        # held at the limit under the other prior, the mass bound scales with it
+        other = record["mass_other_prior"]
+        assert other["acceleration_upper_au_d2"] == record["limit"]["alternative_magnitude_au_d2"]
+        assert other["joint_confidence"] == pytest.approx(0.90)
+        assert record["mass_priors"] == ["isotropic-uniform", "flat-components"]
+    # a wider limit, a smaller mass: by the ratio of the limits, or less where A varies besides
+    assert 0.3 < quiet["mass_other_prior"]["mass_kg"] / quiet["mass"]["mass_kg"] < 0.8
     assert quiet["mass_ceiling"] is None
     # the recipe's jet: 5e27 /s at 1.25 au; mass between the bounds, and the size fits it
     assert pushed["mass"]["mass_kg"] < pushed["mass_ceiling"]["mass_kg"]
@@ -313,7 +320,7 @@ def test_the_reach_is_asked_for_without_any_budget(quick):
     rows = weighed.reach.rows
     assert [row.species for row in rows] == ["H2O", "CO"]
     # the distance is the arc's least, where the law is strongest
-    assert rows[0].at_au == pytest.approx(weighed.fits.r_au.min())
+    assert rows[0].at_au == pytest.approx(weighed.bounds.fits.r_au.min())
     assert rows[0].revealed.diameter.median == 1500.0
     assert weighed.reach.density.median == 400.0
     assert "Reach: the outgassing" in str(weighed) and "Mass and size" not in str(weighed)

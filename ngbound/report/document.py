@@ -13,6 +13,7 @@ The record is a plain mapping; every section is written if its key is there and 
 - ``threshold``, ``limit``, ``posterior``, ``verdict``, ``mass``, ``mass_ceiling``, ``reach``,
   ``radiation``: the ``to_dict()`` of the corresponding objects; ``active_areas``,
   ``law_departures``: lists of such; ``mass_remarks``: why something of these does not follow;
+  ``mass_other_prior``, ``mass_priors``: the mass under another prior, and the names of both;
   ``limits``: list of further limits
 - ``degeneracies``: what each thrust component is confused with, in sentences
 - ``suspicions``, ``caveats``, ``warnings`` (lists of sentences); ``choices``, ``seeds``
@@ -747,6 +748,16 @@ def _write_mass(page: _Page, record: Mapping[str, Any]) -> None:
                 mass.get("confidence"),
                 None,
             )
+        )
+    other, priors = record.get("mass_other_prior") or {}, record.get("mass_priors") or ("", "")
+    if other:
+        upper = rounded(other["acceleration_upper_au_d2"], 2, outward="up")
+        page.paragraph(
+            f"The posterior is that of the {priors[0]} prior. With |A| held at its limit under "
+            f"{priors[1]} instead, {upper} au/d2, the mass is above {mass_text(other['mass_kg'])}, "
+            f"the diameter above {length_text(other['diameter_m'])}, at "
+            f"{percent(other['confidence'])} confidence of the budget (at least "
+            f"{percent(other['joint_confidence'])} together with that of the limit)."
         )
     if ceiling:
         page.paragraph(str(ceiling["sentence"]))
