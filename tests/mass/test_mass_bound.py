@@ -22,6 +22,7 @@ from ngbound.mass import (
     momentum_mass,
 )
 from ngbound.report import Record, mass_figure, render_report, the_sentence
+from ngbound.report.figures import style
 from ngbound.rounding import length_text, mass_text, rounded
 
 AU_D2 = u.au / u.day**2
@@ -392,8 +393,7 @@ def test_every_printing_of_the_bound_is_rounded_alike_and_outward():
     for text in (bound.sentence(), bound._repr_html_().replace("&gt;", ">"), report):
         assert f"the mass is above {mass} (" in text
         assert f"the diameter is above {diameter}." in text
-    mantissa, power = mass.split()[0].split("e")
-    assert rf"{mantissa}\times10^{{{power}}}" in words and f"> {diameter}" in words
+    assert f"> {style.scientific(mass.split()[0])} kg" in words and f"> {diameter}" in words
     # the posterior's edge is an upper limit and goes up, the mass revealed goes down
     upper = rounded(float(bound.acceleration_upper.value), 2, outward="up")
     assert f"95 % below {upper} au/d2" in bound.sentence()
