@@ -1,6 +1,7 @@
 """The command line: statuses, one sentence on stderr, JSON, and no traceback ever."""
 
 import json
+import re
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -89,6 +90,14 @@ def test_the_group_lists_every_verb(ngbound):
     assert sorted(cli.main.commands) == VERBS
     for verb in VERBS:
         assert f"  {verb} " in result.stdout
+
+
+def test_the_readme_lists_every_verb_and_its_case_can_be_read(tmp_path):
+    text = (Path(__file__).parents[1] / "README.md").read_text(encoding="utf-8")
+    assert sorted(set(re.findall(r"^\| `ngbound (\w+) ", text, re.MULTILINE))) == VERBS
+    case = tmp_path / "readme.toml"
+    case.write_text(re.findall(r"```toml\n(.*?)```", text, re.DOTALL)[0], encoding="utf-8")
+    assert ng.read_case(case).budget() is not None
 
 
 @pytest.mark.parametrize("verb", VERBS)

@@ -17,6 +17,7 @@ The elements are then still a faithful image of the state, but their partials do
 """
 
 import math
+from abc import ABC, abstractmethod
 from dataclasses import asdict, dataclass
 from typing import Any, Self
 
@@ -78,8 +79,35 @@ def _table(title: str, rows: list[tuple[str, str, str]]) -> str:
     return "\n".join(lines)
 
 
+class _Elements(ABC):
+    """What all elements do with covariances."""
+
+    e: float
+    i_rad: float
+
+    @abstractmethod
+    def jacobian(self) -> FloatArray:
+        """d(state)/d(elements), (6, 6)."""
+
+    def state_covariance(self, covariance: ArrayLike) -> FloatArray:
+        """Covariance (6, 6) of the ICRF state from that of the elements in their order."""
+        jacobian = self.jacobian()
+        return jacobian @ np.asarray(covariance, dtype=float) @ jacobian.T
+
+    def elements_covariance(self, state_covariance: ArrayLike) -> FloatArray:
+        """Covariance (6, 6) of the elements in their order from that of the ICRF state.
+
+        Raises
+        ------
+        AnalysisError
+            The orbit is a circle or lies in the ecliptic, so that an element has no partials.
+        """
+        jacobian = elements_jacobian(self)
+        return jacobian @ np.asarray(state_covariance, dtype=float) @ jacobian.T
+
+
 @dataclass(frozen=True)
-class CometaryElements:
+class CometaryElements(_Elements):
     """q, e, i, node, argument of perihelion and time of perihelion: fit for every conic.
 
     Attributes
@@ -126,22 +154,6 @@ class CometaryElements:
     def jacobian(self) -> FloatArray:
         """d(state)/d(q, e, i, node, argperi, tp), (6, 6); au, au/d, rad, d. Analytic."""
         return _state_and_partials(self)[1]
-
-    def state_covariance(self, covariance: ArrayLike) -> FloatArray:
-        """Covariance (6, 6) of the ICRF state from that of (q, e, i, node, argperi, tp)."""
-        jacobian = self.jacobian()
-        return jacobian @ np.asarray(covariance, dtype=float) @ jacobian.T
-
-    def elements_covariance(self, state_covariance: ArrayLike) -> FloatArray:
-        """Covariance (6, 6) of (q, e, i, node, argperi, tp) from that of the ICRF state.
-
-        Raises
-        ------
-        AnalysisError
-            The orbit is a circle or lies in the ecliptic, so that an element has no partials.
-        """
-        jacobian = elements_jacobian(self)
-        return jacobian @ np.asarray(state_covariance, dtype=float) @ jacobian.T
 
     @property
     def gm_au3_d2(self) -> float:
@@ -224,7 +236,7 @@ class CometaryElements:
 
 
 @dataclass(frozen=True)
-class KeplerianElements:
+class KeplerianElements(_Elements):
     """a, e, i, node, argument of perihelion and mean anomaly: ellipses and hyperbolas.
 
     Attributes
@@ -303,22 +315,6 @@ class KeplerianElements:
         """d(state)/d(a, e, i, node, argperi, M), (6, 6); au, au/d, rad. Analytic."""
         return self.to_cometary().jacobian() @ self._cometary_partials()
 
-    def state_covariance(self, covariance: ArrayLike) -> FloatArray:
-        """Covariance (6, 6) of the ICRF state from that of (a, e, i, node, argperi, M)."""
-        jacobian = self.jacobian()
-        return jacobian @ np.asarray(covariance, dtype=float) @ jacobian.T
-
-    def elements_covariance(self, state_covariance: ArrayLike) -> FloatArray:
-        """Covariance (6, 6) of (a, e, i, node, argperi, M) from that of the ICRF state.
-
-        Raises
-        ------
-        AnalysisError
-            The orbit is a circle or lies in the ecliptic, so that an element has no partials.
-        """
-        jacobian = elements_jacobian(self)
-        return jacobian @ np.asarray(state_covariance, dtype=float) @ jacobian.T
-
     def _cometary_partials(self) -> FloatArray:
         """d(q, e, i, node, argperi, tp)/d(a, e, i, node, argperi, M)."""
         cometary = self.to_cometary()
@@ -347,7 +343,7 @@ class KeplerianElements:
         return _table(f"Keplerian elements, {self.centre}, ecliptic J2000", rows)
 
 
-def elements_jacobian(elements: CometaryElements | KeplerianElements) -> FloatArray:
+def elements_jacobian(elements: _Elements) -> FloatArray:
     """d(elements)/d(state), (6, 6): the inverse of the analytic d(state)/d(elements).
 
     Raises
