@@ -389,7 +389,7 @@ class InjectionTable(Table):
     noise: Literal["model", "residuals"] = Field(
         default="model", description="Noise from the error model, or resampled by station-night."
     )
-    reject: bool = Field(default=False, description="Whether the outlier rule works on each arc.")
+    reject: bool = Field(default=True, description="Whether the outlier rule works on each arc.")
 
     @field_validator("direction")
     @classmethod

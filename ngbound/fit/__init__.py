@@ -15,7 +15,7 @@ scales of the stations included.
 from ngbound.fit.diagnostics import Diagnostics, diagnose
 from ngbound.fit.error_variants import ErrorVariant, Variation, error_variants, vary
 from ngbound.fit.first_orbit import Preliminary, preliminary_orbits
-from ngbound.fit.noise_scale import StationScale, student_factor, tail_probability
+from ngbound.fit.noise_scale import StationScale, rescaled, student_factor, tail_probability
 from ngbound.fit.outliers import chi2_of_records, judge_in_turns
 from ngbound.fit.significance import sigma_of_chance, significance_sigma
 from ngbound.fit.solution import Comparison, Fit, compare_fits, fit_orbit
@@ -35,6 +35,7 @@ __all__ = [
     "fit_orbit",
     "judge_in_turns",
     "preliminary_orbits",
+    "rescaled",
     "sigma_of_chance",
     "significance_sigma",
     "student_factor",

@@ -55,6 +55,8 @@ class Fit:
     error_model : ErrorModel
     noise : Noise
         Of the used observations, rejected ones included, as rescaled by ``scales``.
+    stated_noise : Noise
+        The same before it was rescaled.
     scales : tuple of StationScale
         Stations whose errors were rescaled.
     orbit : Orbit
@@ -80,6 +82,7 @@ class Fit:
     used: Arc = field(repr=False)
     error_model: ErrorModel = field(repr=False)
     noise: Noise = field(repr=False)
+    stated_noise: Noise = field(repr=False)
     orbit: Orbit
     components: str
     names: tuple[str, ...]
@@ -483,13 +486,16 @@ def fit_orbit(
         sight = found.correction.at.sight
         motion = motion_rad_d(sight, records, observers) / ARCSEC_RAD / 86400.0
         sunward = sunward_per_au(sight, records, epoch)
-        noise = error_model.apply(used, motion, sunward)
+        stated = error_model.apply(used, motion, sunward)
         found, noise, scales = _settle_with_scales(
-            used, error_model, noise, found, records, guess, components, forces, reject
+            used, error_model, stated, found, records, guess, components, forces, reject
         )
+    else:
+        stated = noise
     fit = _as_fit(
-        arc, used, error_model, noise, records, observers, found, guess, components, forces, scales
-    )
+        arc, used, error_model, noise, stated, records, observers, found, guess, components, forces,
+        scales,
+    )  # fmt: skip
     if fit.distance_error > HOPELESS_DISTANCE_ERROR:
         raise FitError(
             f"The {fit.n_obs} observations of {arc.name} over {arc.used.span_d:.3g} d do not "
@@ -544,6 +550,7 @@ def _as_fit(
     used: Arc,
     error_model: ErrorModel,
     noise: Noise,
+    stated_noise: Noise,
     records: Records,
     observers: Observers,
     found: Converged,
@@ -561,6 +568,7 @@ def _as_fit(
         used=used,
         error_model=error_model,
         noise=noise,
+        stated_noise=stated_noise,
         orbit=orbit,
         components=components,
         names=parameter_names(components),

@@ -19,13 +19,13 @@ from typing import Any
 
 import numpy as np
 from astropy import units as u
-from scipy.stats import beta, chi2, ncx2
+from scipy.stats import beta, chi2, f, ncf, ncx2, norm, t
 
 from ngbound.errors import LimitError
 from ngbound.fit import Fit
 from ngbound.limits.checkpoint import load_whole, mark_of, save_whole
 from ngbound.limits.information import AU_D2, ThrustInformation
-from ngbound.limits.linear_posterior import linear_posterior
+from ngbound.limits.linear_posterior import linear_posterior, student_width
 from ngbound.limits.priors import thrust_prior
 from ngbound.limits.refit import ExactRefit, Refits, Refitter
 from ngbound.limits.threshold import noncentrality
@@ -197,6 +197,7 @@ def inject_and_recover(
     free: str | None = None,
     noise: str = "model",
     reject: bool = False,
+    rescale: bool | None = None,
     false_alarm: float = 0.0027,
     confidence: float = 0.95,
     prior: str | None = None,
@@ -210,13 +211,13 @@ def inject_and_recover(
     ----------
     push : Fit or Refitter
         A fit with thrust, whose records, errors and orbit are used; or another way to refit, such
-        as ``LinearRefit``, to which ``free``, ``noise`` and ``reject`` do not apply.
+        as ``LinearRefit``, to which ``free``, ``noise``, ``reject`` and ``rescale`` do not apply.
     A : (k,) or (n, k) float au/d2 or Quantity
         In the order of the free components; one thrust for all arcs, or one for each.
     n, seed : int
-    free, noise, reject
+    free, noise, reject, rescale
         See ``ExactRefit``: which components are fitted (and injected), where the noise comes from,
-        and whether the outlier rule applies.
+        whether the outlier rule applies and whether stations are rescaled.
     false_alarm : float
         Rate of the chi2 test of the k components.
     confidence : float
@@ -237,10 +238,13 @@ def inject_and_recover(
         If the checkpoint belongs to another problem.
     """
     refitter: Refitter = (
-        ExactRefit(push, free=free, noise=noise, reject=reject) if isinstance(push, Fit) else push
+        ExactRefit(push, free=free, noise=noise, reject=reject, rescale=rescale)
+        if isinstance(push, Fit)
+        else push
     )
     injected = _checked(A, n, refitter, false_alarm, confidence)
     facts = [n, seed, refitter.components, type(refitter).__name__, noise, reject]
+    facts.append(refitter.noise_dof)
     path = None if checkpoint is None else Path(checkpoint)
     done = _refit_all(refitter, injected, seed, facts, path, progress)
     return _counted(
@@ -327,10 +331,11 @@ def _counted(
     truth, A_hat = injected[good], done.A_hat[good]
     sigma = np.sqrt(np.einsum("mii->mi", done.covariance[good]))
     infos = [
-        _information(refitter.information, a, c)
-        for a, c in zip(A_hat, done.covariance[good], strict=True)
+        _information(refitter, a, c) for a, c in zip(A_hat, done.covariance[good], strict=True)
     ]
     size = np.linalg.norm(truth, axis=1)
+    dof = refitter.noise_dof
+    wide = 1.0 if dof is None else float(t.ppf(confidence, dof) / norm.ppf(confidence))
     held = sum(
         bool(profile_limit(each, confidence) >= s) for each, s in zip(infos, size, strict=True)
     )
@@ -338,11 +343,11 @@ def _counted(
     if "R" in components and np.all(injected[:, components.index("R")] >= 0.0):
         j = components.index("R")
         edges = [
-            unified_interval(a, s, confidence)
+            unified_interval(a, s * wide, confidence)
             for a, s in zip(A_hat[:, j], sigma[:, j], strict=True)
         ]
         unified = Rate(
-            sum(bool(lo <= t <= hi) for (lo, hi), t in zip(edges, truth[:, j], strict=True)), m
+            sum(bool(lo <= x <= hi) for (lo, hi), x in zip(edges, truth[:, j], strict=True)), m
         )
     bayes, name = None, ""
     if prior is not None:
@@ -354,15 +359,21 @@ def _counted(
             m,
         )
         name = str(thrust_prior(refitter.information, prior, upper_au_d2=upper_au_d2))
-    critical = float(chi2.isf(false_alarm, k))
+    critical = float(chi2.isf(false_alarm, k) if dof is None else k * f.isf(false_alarm, k, dof))
     noncentral = np.einsum("mi,ij,mj->m", truth, refitter.information.matrix, truth)
+    noncentral = np.maximum(noncentral, 1e-12)
+    power = (
+        ncx2.sf(critical, k, noncentral)
+        if dof is None
+        else ncf.sf(critical / k, k, dof, noncentral)
+    )
     return Recovery(
         components=components,
         injected=(injected[0] if single else injected) * AU_D2,
         false_alarm=false_alarm,
         confidence=confidence,
         declared=Rate(int(np.sum(done.delta_chi2[good] > critical)), m),
-        expected=float(np.mean(ncx2.sf(critical, k, np.maximum(noncentral, 1e-12)))),
+        expected=float(np.mean(power)),
         coverage_magnitude=Rate(held, m),
         coverage_unified=unified,
         coverage_bayes=bayes,
@@ -378,15 +389,13 @@ def _counted(
     )
 
 
-def _information(
-    base: ThrustInformation, A: np.ndarray, covariance: np.ndarray
-) -> ThrustInformation:
+def _information(refitter: Refitter, A: np.ndarray, covariance: np.ndarray) -> ThrustInformation:
     """The information of one arc: its own estimate and covariance."""
     values, vectors = np.linalg.eigh(covariance)
     order = slice(None, None, -1)
     return replace(
-        base,
-        noise_dof=None,
+        refitter.information,
+        noise_dof=refitter.noise_dof,
         A_hat=A,
         covariance=covariance,
         matrix=(vectors / values) @ vectors.T,
@@ -400,7 +409,8 @@ def _posterior_share(
 ) -> float:
     """Posterior probability that |A| is below ``size``."""
     belief = thrust_prior(info, prior, upper_au_d2=upper_au_d2)
-    draws, weights = linear_posterior(info, belief).weighted_draws(0, BAYES_DRAWS)
+    proposal = linear_posterior(info, belief, student_width(info.noise_dof))
+    draws, weights = proposal.weighted_draws(0, BAYES_DRAWS, info.noise_dof)
     return float(weights[np.linalg.norm(draws, axis=1) < size].sum() / weights.sum())
 
 
@@ -472,6 +482,7 @@ def power_curve(
     free: str | None = None,
     noise: str = "model",
     reject: bool = False,
+    rescale: bool | None = None,
     false_alarm: float = 0.0027,
     power: float = 0.95,
     progress: Progress | None = None,
@@ -491,14 +502,17 @@ def power_curve(
         As in ``inject_and_recover``.
     """
     refitter: Refitter = (
-        ExactRefit(push, free=free, noise=noise, reject=reject) if isinstance(push, Fit) else push
+        ExactRefit(push, free=free, noise=noise, reject=reject, rescale=rescale)
+        if isinstance(push, Fit)
+        else push
     )
     info = refitter.information
     if isinstance(direction, str) and direction in ("worst", "best"):
         axis = info.eigenvectors[:, 0 if direction == "worst" else -1].copy()
     else:
         axis = info.direction(direction)
-    reach = noncentrality(false_alarm, power, info.k) / float(np.sqrt(axis @ info.matrix @ axis))
+    delta = noncentrality(false_alarm, power, info.k, noise_dof=refitter.noise_dof)
+    reach = delta / float(np.sqrt(axis @ info.matrix @ axis))
     found = []
     for i, (share, child) in enumerate(
         zip(shares, np.random.SeedSequence(seed).generate_state(len(shares)), strict=True)

@@ -19,8 +19,9 @@ partials of its own orbit: J0 + H (y - y0), with J0 and the second derivatives H
 differences of exact residuals about the injected truth (about its best orbit without thrust, for
 the fit without); where that changes a column by more than a tenth, by central differences at the
 arc's own orbit. A step that raises chi2 is halved, and an arc is done when its step is below 1e-3
-sigma. A rejected record is one more pair of free parameters, a shift of its own,
-which is the same as leaving it out and keeps the whitening of its station-night.
+sigma. Where the fit took its errors from the scatter of its residuals, each injected arc can have
+its own errors in the same way. A rejected record is one more pair of free parameters, a shift of
+its own, which is the same as leaving it out and keeps the whitening of its station-night.
 """
 
 from collections.abc import Sequence
@@ -33,7 +34,7 @@ from scipy.linalg import qr, solve_triangular
 
 from ngbound.arc import Noise
 from ngbound.errors import LimitError
-from ngbound.fit import Fit, chi2_of_records, judge_in_turns
+from ngbound.fit import Fit, chi2_of_records, judge_in_turns, rescaled
 from ngbound.limits.fit_protocol import ThrustFit
 from ngbound.limits.information import ThrustInformation, thrust_information
 from ngbound.motion import Atlas
@@ -82,6 +83,11 @@ class Refitter(Protocol):
     components: str
     information: ThrustInformation
 
+    @property
+    def noise_dof(self) -> int | None:
+        """Degrees of freedom behind the errors of the arcs; None where they are known."""
+        ...
+
     def refit(self, A: Floats, streams: Sequence[np.random.SeedSequence]) -> Refits:
         """Fit arcs with the thrusts A (m, k), each with noise of its own random stream."""
         ...
@@ -97,6 +103,8 @@ class LinearRefit:
     """
 
     information: ThrustInformation
+
+    noise_dof = None
 
     @classmethod
     def of(cls, fit: ThrustFit) -> "LinearRefit":
@@ -143,6 +151,11 @@ class ExactRefit:
         Apply the outlier rule of the fit to each arc and hypothesis; the two are then compared
         over the records that either kept, as `ngbound.fit.compare_fits` does.
 
+    rescale : bool, optional
+        Rescale the errors of stations by the residuals of each arc, as the fit did. None: where
+        few degrees of freedom are behind the errors of the fit, so that it matters; it takes ten
+        times as long.
+
     Raises
     ------
     LimitError
@@ -150,7 +163,13 @@ class ExactRefit:
     """
 
     def __init__(
-        self, fit: Fit, *, free: str | None = None, noise: str = "model", reject: bool = False
+        self,
+        fit: Fit,
+        *,
+        free: str | None = None,
+        noise: str = "model",
+        reject: bool = False,
+        rescale: bool | None = None,
     ) -> None:
         information = thrust_information(fit)
         free = fit.components if free is None else free
@@ -166,6 +185,8 @@ class ExactRefit:
                 noise=noise,
             )
         self.fit, self.noise_kind, self.reject = fit, noise, reject
+        self.rescale = fit.noise_dof is not None if rescale is None else rescale
+        self.noise_dof = fit.noise_dof if self.rescale else None
         self.components = "".join(c for c in fit.components if c in free)
         self.noise = fit.noise.mask(fit.keep)
         p, n_state = fit.theta.size, fit.n_state
@@ -348,56 +369,122 @@ class ExactRefit:
         start_push = y_true.copy()
         start_push[:, : self.n_push] += white @ self.q[:, : self.n_push]
         ok = np.all(np.isfinite(shift), axis=1)
-        null = self._settle(start_null, without, shift, ok)
-        push = self._settle(start_push, about, shift, null.ok)
+        every = np.ones((m, self.n), dtype=bool)
+        # as in the fit: judged by the stated errors first
+        own = [self.fit.stated_noise.mask(self.fit.keep)] * m if self.rescale else None
+        null = self._settle(start_null, without, shift, ok, every, self.reject, own)
+        push = self._settle(start_push, about, shift, null.ok, every, self.reject, own)
+        if self.rescale:
+            null, _ = self._with_own_errors(null, without, shift)
+            push, own = self._with_own_errors(push, about, shift)
         either = null.keep | push.keep
-        a = self._over(either, null, without, shift)
-        b = self._over(either, push, about, shift)
+        differs = np.any(null.keep != either, axis=1) | self.rescale
+        a = self._again(differs, either, null, without, shift, own)
+        b = self._again(np.any(push.keep != either, axis=1), either, push, about, shift, own)
         push.ok &= a.ok & b.ok
         return BothFits(null, push, a.chi2 - b.chi2)
 
-    def _settle(self, y: Floats, frame: "_Frame", shift: Floats, ok: Bools) -> "Minima":
+    def _settle(
+        self,
+        y: Floats,
+        frame: "_Frame",
+        shift: Floats,
+        ok: Bools,
+        keep: Bools,
+        reject: bool,
+        own: list[Noise] | None = None,
+    ) -> "Minima":
         """Fit, and with the outlier rule judge by turns until the kept records no longer change."""
-        every = np.ones((len(y), self.n), dtype=bool)
-        found = self._minimise(y, frame, shift, ok, every)
-        if not self.reject:
+        found = self._minimise(y, frame, shift, ok, keep, own)
+        if not reject:
             return found
         design = self.design_y[:, :, : frame.free]
 
-        def fit_again(rows: Ints, keep: Bools) -> Floats:
-            if not keep.all():
-                part = self._minimise(found.y[rows], frame, shift[rows], found.ok[rows], keep)
+        def fit_again(rows: Ints, kept: Bools) -> Floats:
+            if not np.array_equal(kept, found.keep[rows]):
+                part = self._minimise(
+                    found.y[rows], frame, shift[rows], found.ok[rows], kept, _some(own, rows)
+                )
                 found.put(rows, part)
             seen = self.seen(found.y[rows], frame.hood) + shift[rows]
-            chi2 = chi2_of_records(seen.reshape(len(rows), self.n, 2), design, self.noise, keep)
+            seen = seen.reshape(len(rows), self.n, 2)
+            if own is None:
+                chi2 = chi2_of_records(seen, design, self.noise, kept)
+            else:
+                chi2 = np.concatenate(
+                    [
+                        chi2_of_records(seen[j : j + 1], design, own[i], kept[j : j + 1])
+                        for j, i in enumerate(rows)
+                    ]
+                )
             chi2[~found.ok[rows]] = np.nan
             return chi2
 
-        judge_in_turns(every, frame.free, self.noise.count, fit_again)
+        judge_in_turns(keep, frame.free, self.noise.count, fit_again)
         return found
 
-    def _over(self, keep: Bools, found: "Minima", frame: "_Frame", shift: Floats) -> "Minima":
-        """The fits over other records; those of the very same ones are taken as they are."""
-        rows = np.flatnonzero(np.any(keep != found.keep, axis=1))
+    def _with_own_errors(
+        self, found: "Minima", frame: "_Frame", shift: Floats
+    ) -> tuple["Minima", list[Noise]]:
+        """The fits with the errors of stations rescaled by the residuals of each arc: once before
+        the records are judged for the last time, and once after."""
+        fit = self.fit
+        stations = fit.used.table["stn"].to_numpy(dtype=object)[fit.keep]
+        stated = fit.stated_noise.mask(fit.keep)
+        allowed = fit.error_model.rescalable(stated)
+        design = self.design_y[:, :, : frame.free]
+        own = [stated] * len(found.y)
+        for reject in (self.reject, False):
+            seen = (self.seen(found.y, frame.hood) + shift).reshape(-1, self.n, 2)
+            own = [
+                rescaled(
+                    seen[i], design, stated, found.keep[i], stations, allowed,
+                    fit.error_model.rescale_least,
+                )[0]
+                if found.ok[i] else stated
+                for i in range(len(seen))
+            ]  # fmt: skip
+            found = self._settle(found.y, frame, shift, found.ok, found.keep, reject, own)
+        return found, own
+
+    def _again(
+        self,
+        which: Bools,
+        keep: Bools,
+        found: "Minima",
+        frame: "_Frame",
+        shift: Floats,
+        own: list[Noise] | None,
+    ) -> "Minima":
+        """Some of the fits over other records or with other errors; the others as they are."""
+        rows = np.flatnonzero(which)
         other = found.copy()
         if len(rows):
-            part = self._minimise(found.y[rows], frame, shift[rows], found.ok[rows], keep[rows])
+            part = self._minimise(
+                found.y[rows], frame, shift[rows], found.ok[rows], keep[rows], _some(own, rows)
+            )
             other.put(rows, part)
         return other
 
     def _minimise(
-        self, y: Floats, frame: "_Frame", shift: Floats, ok: Bools, keep: Bools
+        self,
+        y: Floats,
+        frame: "_Frame",
+        shift: Floats,
+        ok: Bools,
+        keep: Bools,
+        own: list[Noise] | None = None,
     ) -> "Minima":
         """Least chi2 over the free coordinates of each row of y."""
         m, free = len(y), frame.free
         y, ok = y.copy(), ok.copy()
-        outside = _Projector(self.noise, keep)
+        errors = _CommonErrors(self, keep) if own is None else _OwnErrors(own, keep)
         chi2 = np.full(m, np.inf)
         normal = np.tile(np.eye(free), (m, 1, 1))
         white = np.zeros((m, 2 * self.n))
 
         def at(rows: Ints, points: Floats) -> Floats:
-            return outside(self.whiten(self.seen(points, frame.hood) + shift[rows]), rows)
+            return errors.whiten(self.seen(points, frame.hood) + shift[rows], rows)
 
         busy = np.flatnonzero(ok)
         if len(busy):
@@ -408,11 +495,11 @@ class ExactRefit:
         for _ in range(MAX_SWEEPS):
             if not len(busy):
                 break
-            partials = frame.partials_at(y[busy])
+            partials = frame.partials_at(y[busy], white=own is None)
             bent = np.flatnonzero(frame.bend(y[busy]) > BENT)
             for i in bent:
-                partials[i] = self.partials(y[busy[i]], frame)
-            partials = outside.columns(partials, busy)
+                partials[i] = self.partials(y[busy[i]], frame, white=own is None)
+            partials = errors.columns(partials, busy)
             normal[busy] = partials @ partials.transpose(0, 2, 1)
             gradient = (partials @ white[busy][:, :, None])[:, :, 0]
             step = np.linalg.solve(normal[busy], gradient[:, :, None])[:, :, 0]
@@ -438,26 +525,34 @@ class ExactRefit:
         ok[busy] = False
         return Minima(y, chi2, normal, keep.copy(), ok)
 
-    def partials(self, y: Floats, frame: "_Frame") -> Floats:
-        """Central differences (free, 2n) of minus the whitened residuals at y (p,)."""
+    def partials(self, y: Floats, frame: "_Frame", white: bool) -> Floats:
+        """Central differences (free, 2n) of minus the residuals, whitened or not, at y (p,)."""
         free = frame.free
         points = np.tile(y, (2, free, 1))
         turn = np.arange(free)
         points[0, turn, turn] -= DIFFERENCE
         points[1, turn, turn] += DIFFERENCE
-        white = self.whiten(self.seen(points.reshape(2 * free, -1), frame.hood))
-        return (white[:free] - white[free:]) / (2.0 * DIFFERENCE)
+        seen = self.seen(points.reshape(2 * free, -1), frame.hood)
+        seen = self.whiten(seen) if white else seen
+        return (seen[:free] - seen[free:]) / (2.0 * DIFFERENCE)
+
+
+def _some(own: list[Noise] | None, rows: Ints) -> list[Noise] | None:
+    return None if own is None else [own[i] for i in rows]
 
 
 @dataclass(frozen=True, eq=False)
 class _Frame:
-    """Exact model about one orbit: minus the whitened residuals to second order in y - centre."""
+    """Exact model about one orbit: minus the residuals to second order in y - centre, whitened and
+    as they are."""
 
     hood: Atlas
     centre: Floats
     free: int
     first: Floats
     second: Floats
+    raw_first: Floats
+    raw_second: Floats
 
     @classmethod
     def about(cls, model: ExactRefit, hood: Atlas, centre: Floats, free: int) -> "_Frame":
@@ -472,21 +567,24 @@ class _Frame:
         pair[0, rows, i], pair[0, rows, j] = h, h
         pair[1, rows, i], pair[1, rows, j] = -h, -h
         points = np.concatenate([np.zeros((1, centre.size)), one, pair.reshape(-1, centre.size)])
-        white = -model.whiten(model.seen(centre + points, hood))
-        zero, up, down = white[0], white[1 : free + 1], white[free + 1 : 2 * free + 1]
-        both = white[2 * free + 1 :].reshape(2, i.size, -1).sum(axis=0)
+        raw = -model.seen(centre + points, hood)
+        zero, up, down = raw[0], raw[1 : free + 1], raw[free + 1 : 2 * free + 1]
+        both = raw[2 * free + 1 :].reshape(2, i.size, -1).sum(axis=0)
         second = np.zeros((free, free, zero.size))
         second[turn, turn] = (up + down - 2.0 * zero) / h**2
         ends = up + down
         second[i, j] = (both + 2.0 * zero - ends[i] - ends[j]) / (2.0 * h**2)
         second[j, i] = second[i, j]
-        return cls(hood, centre, free, (up - down) / (2.0 * h), second)
+        first = (up - down) / (2.0 * h)
+        white = model.whiten(second.reshape(free * free, -1)).reshape(second.shape)
+        return cls(hood, centre, free, model.whiten(first), white, first, second)
 
-    def partials_at(self, y: Floats) -> Floats:
+    def partials_at(self, y: Floats, white: bool = True) -> Floats:
         """Partials (m, free, 2n) at y (m, p)."""
+        first, second = (self.first, self.second) if white else (self.raw_first, self.raw_second)
         off = y[:, : self.free] - self.centre[: self.free]
-        f, n = self.free, self.first.shape[1]
-        return self.first + (off @ self.second.reshape(f, f * n)).reshape(-1, f, n)
+        f, n = first.shape
+        return first + (off @ second.reshape(f, f * n)).reshape(-1, f, n)
 
     def bend(self, y: Floats) -> Floats:
         """Largest change (m,) of a column between the centre and y (m, p)."""
@@ -533,10 +631,34 @@ class BothFits:
     delta_chi2: Floats
 
 
-class _Projector:
-    """Takes the shifts of rejected records out of whitened residuals."""
+class _OwnErrors:
+    """Whitens the kept residuals of each arc with errors of its own; zero for the others."""
 
-    def __init__(self, noise: Noise, keep: Bools) -> None:
+    def __init__(self, own: list[Noise], keep: Bools) -> None:
+        self.kept = [noise.mask(mask) for noise, mask in zip(own, keep, strict=True)]
+        self.rows = np.repeat(keep, 2, axis=1)
+
+    def whiten(self, raw: Floats, rows: Ints) -> Floats:
+        return self.columns(raw[:, None, :], rows)[:, 0]
+
+    def columns(self, raw: Floats, rows: Ints) -> Floats:
+        """Whitened (len(rows), c, 2n) of residuals or partials (len(rows), c, 2n)."""
+        white = np.zeros_like(raw)
+        for place, i in enumerate(rows):
+            mine = self.rows[i]
+            if np.all(np.isfinite(raw[place])):
+                white[place][:, mine] = self.kept[i].whiten(raw[place][:, mine].T).T
+            else:
+                white[place] = np.inf
+        return white
+
+
+class _CommonErrors:
+    """Whitens residuals with the errors of the fit and takes the shifts of rejected records out."""
+
+    def __init__(self, model: ExactRefit, keep: Bools) -> None:
+        noise = model.noise
+        self.model = model
         self.any = not bool(np.all(keep))
         self.bases: list[Floats | None] = [None] * len(keep)
         if not self.any:
@@ -551,7 +673,8 @@ class _Projector:
                 columns = np.repeat(~mask[needed], 2)
                 self.bases[i] = np.linalg.qr(white[:, columns])[0]
 
-    def __call__(self, white: Floats, rows: Ints) -> Floats:
+    def whiten(self, raw: Floats, rows: Ints) -> Floats:
+        white = self.model.whiten(raw)
         if not self.any:
             return white
         for place, i in enumerate(rows):
@@ -561,7 +684,7 @@ class _Projector:
         return white
 
     def columns(self, partials: Floats, rows: Ints) -> Floats:
-        """The same of partials (len(rows), free, 2n)."""
+        """The same of partials (len(rows), free, 2n) that are whitened already."""
         if not self.any:
             return partials
         for place, i in enumerate(rows):

@@ -91,6 +91,8 @@ class Fragile:
         self.inner, self.lose, self.given = LinearRefit.of(correlated()), lose, 0
         self.components, self.information = self.inner.components, self.inner.information
 
+    noise_dof = None
+
     def refit(self, A, streams):
         self.given += len(A)
         done = self.inner.refit(A, streams)

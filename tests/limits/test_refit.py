@@ -6,7 +6,7 @@ import numpy as np
 import pandas as pd
 import pytest
 
-from ngbound.arc import Arc
+from ngbound.arc import Arc, ErrorModel
 from ngbound.errors import LimitError
 from ngbound.fit import compare_fits, fit_orbit
 from ngbound.limits import ExactRefit, detection_threshold, inject_and_recover
@@ -28,13 +28,15 @@ def threshold(push):
     return found.worst.value * found.worst_direction
 
 
-def injected_arc(model: ExactRefit, A: np.ndarray, stream: np.random.SeedSequence) -> Arc:
+def injected_arc(
+    model: ExactRefit, A: np.ndarray, stream: np.random.SeedSequence, stated: bool = True
+) -> Arc:
     """The arc that the model makes in its head, written down: real places moved by minus r_i."""
     y = model.y_null.copy()
     y[6:] += model._tail @ A
     frame = model.frame(y, 9)
     shift = model.draw(np.random.default_rng(stream)) - model.seen(y[None, :], frame.hood)[0]
-    table = model.fit.used.table
+    table = model.fit.used.table[model.fit.keep]
     dec = table["dec_rad"].to_numpy()
     places = pd.DataFrame(
         {
@@ -45,10 +47,11 @@ def injected_arc(model: ExactRefit, A: np.ndarray, stream: np.random.SeedSequenc
             "ra": np.degrees(table["ra_rad"].to_numpy() + shift[0::2] / np.cos(dec)),
             "dec": np.degrees(dec + shift[1::2]),
             "astCat": "Gaia2",
-            "rmsRA": table["rmsRA"].to_numpy(),
-            "rmsDec": table["rmsDec"].to_numpy(),
         }
     )
+    if stated:
+        places["rmsRA"] = table["rmsRA"].to_numpy()
+        places["rmsDec"] = table["rmsDec"].to_numpy()
     return Arc.from_frame(places, name="injected")
 
 
@@ -165,3 +168,51 @@ def test_errors_shared_by_many_nights_are_drawn_and_fitted_too():
     np.testing.assert_allclose(np.mean(along**2, axis=1) / expected, 1.0, atol=0.3)
     found = inject_and_recover(push, np.zeros(3), n=100, seed=5, false_alarm=0.05)
     np.testing.assert_allclose(found.scatter, 1.0, atol=0.25)
+
+
+SMALL = replace(COMET, n_nights=10, per_night=4)
+
+
+@pytest.fixture(scope="module")
+def from_table():
+    """A fit whose errors are those of the table, rescaled by the scatter of the residuals."""
+    arc, orbit = simulated_arc(SMALL)
+    frame = arc.table[["permID", "mode", "stn", "obsTime", "ra", "dec"]].copy()
+    frame["astCat"] = "Gaia2"
+    bare = Arc.from_frame(frame, name="bare")
+    errors = ErrorModel(rescale_least=12)
+    return fit_orbit(bare, Thrust(SMALL.law), errors, initial=orbit), errors, orbit
+
+
+def test_errors_are_rescaled_in_each_arc_as_the_fit_does(from_table):
+    push, errors, _ = from_table
+    assert push.scales and push.noise_dof is not None
+    model = ExactRefit(push, reject=True)
+    assert model.rescale and model.noise_dof == push.noise_dof
+    streams = np.random.SeedSequence(21).spawn(3)
+    nothing = np.zeros((3, 3))
+    both = model.fit_both(nothing, streams)
+    done = model.refit(nothing, streams)
+    known = ExactRefit(push, reject=True, rescale=False).refit(nothing, streams)
+    for i, stream in enumerate(streams):
+        made = injected_arc(model, nothing[i], stream, stated=False)
+        found = fit_orbit(made, push.thrust, errors, initial=push.orbit)
+        null = fit_orbit(made, None, errors, initial=push.orbit)
+        assert np.array_equal(both.push.keep[i], found.keep)
+        sigma = found.A_sigma.value
+        own = np.sqrt(np.diag(done.covariance[i]))
+        # the scales of the stations are settled to 1 %
+        np.testing.assert_allclose(own, sigma, rtol=0.01)
+        np.testing.assert_allclose(done.A_hat[i] / sigma, found.A.value / sigma, atol=0.02)
+        expected = compare_fits(null, found).delta_chi2
+        assert done.delta_chi2[i] == pytest.approx(expected, rel=0.02, abs=0.02)
+    spread = np.sqrt(np.einsum("mii->mi", done.covariance) / np.einsum("mii->mi", known.covariance))
+    assert np.ptp(spread[:, 0]) > 0.05
+
+
+def test_the_test_of_fisher_keeps_its_false_alarms_where_errors_are_estimated(from_table):
+    push, _, _ = from_table
+    found = inject_and_recover(push, np.zeros(3), n=150, seed=8, false_alarm=0.05)
+    low, high = found.declared.interval
+    assert low < 0.05 < high
+    assert found.expected == pytest.approx(0.05, abs=1e-6)
