@@ -275,6 +275,8 @@ class Campaign:
             utc_s, night = self._nights_on_ground(instrument)
         else:
             utc_s, night = self._nights_in_space(instrument)
+        if not len(utc_s):
+            return pd.DataFrame()
         utc_s = np.round(utc_s, TIME_DIGITS)
         frame = pd.DataFrame(
             {
@@ -288,8 +290,6 @@ class Campaign:
                 "astCat": instrument.catalogue,
             }
         )
-        if frame.empty:
-            return frame
         observers = observer_states(Arc.from_frame(frame), self.ephemeris)
         late_s = instrument.timing_s * self.rng.standard_normal(len(frame))
         seen = astrometric(

@@ -382,6 +382,8 @@ class Checker:
             if kind not in self.kinds or (kind == OPTICAL and (given is not None or self.one_kind)):
                 continue
             mine = self.of_kind(kind)
+            if given is not None and np.isfinite(given.ra_deg[mine]).all():
+                continue
             ra[mine], dec[mine] = columns[ra_column][mine], columns[dec_column][mine]
             ra_text[mine], dec_text[mine] = self.text(ra_column)[mine], self.text(dec_column)[mine]
             ra_step[mine] = self._step_arcsec(ra_column)[mine]

@@ -14,12 +14,12 @@ from numpy.typing import NDArray
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
 
-JUMP_DEG = 2.0
-JUMP_RATES = 5.0
+JUMP_DEG = 1.0
+JUMP_RATES = 2.5
 """A cut: a step larger than this many degrees plus this many times the usual motion."""
 NEAR_DEG = 1.0
 """A reading is right when it lies within this of the prediction, plus `NEAR_SHARE` of the step
-between the neighbours; the report is wrong when it is `FAR` times farther off."""
+between the neighbours; the report is wrong when it is farther off than `FAR` times that."""
 NEAR_SHARE = 0.3
 FAR = 4.0
 END_RATES = 1.5
@@ -87,7 +87,7 @@ def misread(time_d: FloatArray, ra_rad: FloatArray, dec_rad: FloatArray) -> list
             "declination-sign": (ra[inside], -dec[inside]),
         }.items():
             there = apart_deg(unit_vectors(other_ra, other_dec), predicted)
-            right = (there < slack) & (off > FAR * np.maximum(there, 0.25 * slack))
+            right = (there < slack) & (off > FAR * slack)
             if right.any():
                 rows = tuple(sorted(int(r) for r in order[inside[right]]))
                 trusted[inside[right]] = False

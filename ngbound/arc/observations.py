@@ -290,6 +290,7 @@ class Arc:
                 )
         n = len(frame)
         text = {c: texts_of(frame[c]) for c in known}
+        _undo_error_of_offset(frame, text)
         if n == 0:
             raise ArcError("data frame: it has no rows; an arc needs at least one observation.")
         if "kind" in frame:
@@ -316,7 +317,7 @@ class Arc:
             block=np.full(n, -1, dtype=np.int64),
             set_aside=np.array([""] * n, dtype="O"),
             unit_name="row",
-            angles=_frame_angles(frame, text) if n and "ra" in known else None,
+            angles=_frame_angles(frame, text, kind),
         )
         return assemble(records, label=name, object=object, stations=stations)
 
@@ -373,34 +374,48 @@ def texts_of(column: pd.Series) -> ObjectArray:
     return out
 
 
-def _frame_angles(frame: pd.DataFrame, text: Mapping[str, ObjectArray]) -> Angles | None:
-    """Angles given as numbers, which state no precision; None when they were given as text."""
-    if not {"ra", "dec"} <= set(frame.columns):
-        return None
-    if not (
-        pd.api.types.is_numeric_dtype(frame["ra"]) and pd.api.types.is_numeric_dtype(frame["dec"])
-    ):
+def _frame_angles(
+    frame: pd.DataFrame, text: Mapping[str, ObjectArray], kind: ObjectArray
+) -> Angles | None:
+    """Angles given as numbers, which state no precision; None when they were given as text. Those
+    of an occultation are the star's."""
+    star = np.asarray(kind == OCCULTATION, dtype=bool)
+    pairs = {}
+    for ra, dec, mine in (("ra", "dec", ~star), ("raStar", "decStar", star)):
+        if mine.any() and {ra, dec} <= set(frame.columns):
+            pairs[ra, dec] = mine
+    if not pairs or not all(pd.api.types.is_numeric_dtype(frame[c]) for p in pairs for c in p):
         return None
     n = len(frame)
-    ra = frame["ra"].to_numpy(dtype=np.float64, copy=True)
-    dec = frame["dec"].to_numpy(dtype=np.float64, copy=True)
-    timed_by_text = "obsTime" in frame and pd.api.types.is_string_dtype(frame["obsTime"])
-    again = "digits_ra_arcsec" in frame and "raText" in frame
-    ra_step = np.zeros(n)
-    if again:
+    again = {"digits_ra_arcsec", "digits_dec_arcsec", "raText", "decText", "ra", "dec"}
+    known = again <= set(frame.columns)
+    blank = np.full(n, "", dtype=object)
+    made = Angles(np.full(n, np.nan), np.full(n, np.nan), blank, blank.copy(), *np.zeros((3, n)))
+    for (ra, dec), mine in pairs.items():
+        made.ra_deg[mine] = frame[ra].to_numpy(dtype=np.float64)[mine]
+        made.dec_deg[mine] = frame[dec].to_numpy(dtype=np.float64)[mine]
+        made.ra_text[mine] = (frame["raText"].to_numpy(dtype=object) if known else text[ra])[mine]
+        made.dec_text[mine] = (frame["decText"].to_numpy(dtype=object) if known else text[dec])[
+            mine
+        ]
+    if known:
+        cos = np.cos(np.radians(frame["dec"].to_numpy(dtype=float)))
         with np.errstate(invalid="ignore", divide="ignore"):
-            ra_step = frame["digits_ra_arcsec"].to_numpy(dtype=float) / np.cos(np.radians(dec))
-    return Angles(
-        ra_deg=ra,
-        dec_deg=dec,
-        ra_text=frame["raText"].to_numpy(dtype=object) if again else text["ra"],
-        dec_text=frame["decText"].to_numpy(dtype=object) if again else text["dec"],
-        ra_step_arcsec=ra_step,
-        dec_step_arcsec=frame["digits_dec_arcsec"].to_numpy(dtype=float, copy=True)
-        if again
-        else np.zeros(n),
-        time_step_s=np.full(n, np.nan if timed_by_text else 0.0),
-    )
+            made.ra_step_arcsec[:] = frame["digits_ra_arcsec"].to_numpy(dtype=float) / np.abs(cos)
+        made.dec_step_arcsec[:] = frame["digits_dec_arcsec"].to_numpy(dtype=float)
+    if "obsTime" in frame and pd.api.types.is_string_dtype(frame["obsTime"]):
+        made.time_step_s[:] = np.nan
+    return made
+
+
+def _undo_error_of_offset(frame: pd.DataFrame, text: dict[str, ObjectArray]) -> None:
+    """What `_error_of_offset` derived in the table of an arc is left to be derived anew."""
+    if not {"corrReported", "rmsDist", "rmsPA", "rmsRA", "rmsDec"} <= set(frame.columns):
+        return
+    turned = (text["rmsDist"] != "") & (text["rmsPA"] != "") & (text["dist"] != "")
+    for name in ("rmsRA", "rmsDec"):
+        text[name] = np.where(turned, "", text[name])
+    text["rmsCorr"] = np.where(turned, texts_of(frame["corrReported"]), text["rmsCorr"])
 
 
 # --------------------------------------------------------------------------- from text to an arc

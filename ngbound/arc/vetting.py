@@ -88,19 +88,27 @@ def vet(arc: Arc) -> list[Finding]:
     findings.extend(_jumps(used, rows, time))
     findings.extend(_misread(used, rows, time))
     findings.extend(_time_stamps(used, rows))
-    codes = sorted(set(t["stn"]))
-    if len(codes) == 1 and len(rows) >= FEWEST:
+    if len(set(_observers(used))) == 1 and len(rows) >= FEWEST:
         findings.append(
             Finding(
                 (),
                 "single-station",
-                f"all {len(rows)} directions come from station {codes[0]}: an error of its clock "
-                "or catalogue cannot be "
-                "told from a thrust.",
+                f"all {len(rows)} directions come from station {t['stn'].iloc[0]}: an error of "
+                "its clock or catalogue cannot be told from a thrust.",
             )
         )
     findings.extend(_surplus(used, rows))
     return sorted(findings, key=lambda f: f.rows[:1])
+
+
+def _observers(arc: Arc) -> NDArray[np.object_]:
+    """Who observed each row (n,): the code, and for roving observers, who share one, the place to
+    a hundredth of a degree."""
+    t = arc.table
+    who = t["stn"].to_numpy(dtype=object).copy()
+    for row in np.flatnonzero((t["site"] == "roving").to_numpy(dtype=bool)).tolist():
+        who[row] += f" at {t['pos1'].iat[row]:.2f}, {t['pos2'].iat[row]:.2f}"
+    return who
 
 
 def _surplus(arc: Arc, rows: NDArray[np.int64]) -> list[Finding]:
@@ -160,7 +168,7 @@ def _step_arcsec(ra: NDArray, dec: NDArray, a: int, b: int) -> NDArray[np.float6
 
 def _duplicates(arc: Arc, rows: NDArray[np.int64], time: NDArray[np.float64]) -> list[Finding]:
     ra, dec = _sky(arc)
-    stn = arc.table["stn"].to_numpy(dtype=object)
+    stn = _observers(arc)
     line = arc.table["line"].to_numpy()
     order = np.lexsort((time, stn.astype(str)))
     found = []
@@ -225,24 +233,27 @@ def _echoes_twice(arc: Arc, rows: NDArray[np.int64]) -> list[Finding]:
 def _misread(arc: Arc, rows: NDArray[np.int64], time: NDArray[np.float64]) -> list[Finding]:
     ra, dec = _sky(arc)
     line = arc.table["line"].to_numpy()
-    found = []
-    for piece in misread(time, ra, dec):
-        where = ", ".join(str(n) for n in line[list(piece.rows)][:10])
-        found.append(
-            Finding(
-                tuple(int(r) for r in rows[list(piece.rows)]),
-                piece.reading,
-                f"line {where}: the position lies {piece.off_deg:.1f} deg from where its "
-                f"neighbours lead, and {READINGS[piece.reading]}. As it stands it is rejected or "
-                "spoils the orbit; put right it lengthens the arc, on which a thrust's error "
-                "depends most.",
-            )
-        )
+    stn = _observers(arc)
     # the parallax of a spacecraft sets its track apart from those seen from the ground
-    ground = np.flatnonzero((arc.table["site"] != "space").to_numpy(dtype=bool))
-    stn = arc.table["stn"].to_numpy(dtype=object)
-    tracks = second_tracks(time[ground], ra[ground], dec[ground], stn[ground])
-    for track in (ground[np.asarray(each)] for each in tracks):
+    in_space = (arc.table["site"] == "space").to_numpy(dtype=bool)
+    ground = np.flatnonzero(~in_space)
+    crafts = [np.flatnonzero(in_space & (stn == code)) for code in sorted(set(stn[in_space]))]
+    found = []
+    for seen in (ground, *crafts):
+        for piece in misread(time[seen], ra[seen], dec[seen]):
+            mine = seen[list(piece.rows)]
+            where = ", ".join(str(n) for n in line[mine][:10])
+            found.append(
+                Finding(
+                    tuple(int(r) for r in rows[mine]),
+                    piece.reading,
+                    f"line {where}: the position lies {piece.off_deg:.1f} deg from where its "
+                    f"neighbours lead, and {READINGS[piece.reading]}. As it stands it is "
+                    "rejected or spoils the orbit; put right it lengthens the arc, on which a "
+                    "thrust's error depends most.",
+                )
+            )
+    for track in second_tracks(time, ra, dec, stn):
         where = ", ".join(str(n) for n in line[track][:10])
         found.append(
             Finding(

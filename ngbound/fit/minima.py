@@ -147,9 +147,7 @@ class MinimaScan:
             "n_starts": self.n_starts,
             "complete": self.complete,
             "fit_is_best": self.fit_is_best,
-            "minima": [
-                {**m.to_dict(), "delta_chi2": m.chi2 - self.best.chi2} for m in self.minima
-            ],
+            "minima": [{**m.to_dict(), "delta_chi2": m.chi2 - self.best.chi2} for m in self.minima],
             "warning": self.warning,
         }
 
@@ -263,9 +261,7 @@ class _Walk:
         """Epoch and parameters of every orbit that explains all apparitions."""
         fit = self.fit
         epoch_d = float(np.mean(fit.records.tdb_d[parts[first]]))
-        start = at_epoch(
-            fit.theta, fit.orbit.epoch_tdb_d, epoch_d, fit.thrust, fit.orbit.forces
-        )
+        start = at_epoch(fit.theta, fit.orbit.epoch_tdb_d, epoch_d, fit.thrust, fit.orbit.forces)
         mask = parts[first].copy()
         rest = [i for i in range(len(parts)) if i != first]
         orbits = [start]

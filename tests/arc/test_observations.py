@@ -108,3 +108,14 @@ def test_missing_and_empty() -> None:
         Arc.from_frame(frame(2).drop(columns="stn"))
     with pytest.raises(ArcError, match="no rows"):
         Arc.from_frame(frame(2).iloc[:0])
+
+
+def test_the_star_of_an_occultation_given_as_numbers_states_no_precision() -> None:
+    table = frame(3).assign(raStar=10.0, decStar=20.0, deltaRA=1.0, deltaDec=0.0, mode="OCC")
+    table = table.drop(columns=["ra", "dec"])
+    arc = Arc.from_frame(table)
+    assert arc.table.kind.tolist() == ["occultation"] * 3
+    assert (arc.table.digits_ra_arcsec == 0.0).all() and (arc.table.digits_dec_arcsec == 0.0).all()
+    np.testing.assert_allclose(arc.table.ra, 10.0 + 1.0 / 3600.0 / np.cos(np.radians(20.0)))
+    as_text = Arc.from_frame(table.assign(raStar="10.00000", decStar="20.0000"))
+    np.testing.assert_allclose(as_text.table.digits_dec_arcsec, 0.36)

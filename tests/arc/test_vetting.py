@@ -1,15 +1,20 @@
 """Findings."""
 
 import re
+from collections.abc import Callable
+from dataclasses import replace
+from pathlib import Path
 
 import numpy as np
 import pandas as pd
 import pytest
 
-from ngbound.arc import Arc, vet
+from ngbound.arc import Arc, read_arc, vet
 from ngbound.arc.time_stamps import time_shifts
 from ngbound.sky import astrometric, load_ephemeris, station_states, utc_to_tdb_d
 from tests.arc.samples import frame
+
+DEMO = Path(__file__).parents[2] / "data_demo"
 
 
 def kinds(table: pd.DataFrame) -> list[tuple[str, tuple[int, ...]]]:
@@ -149,6 +154,72 @@ def test_two_objects_in_one_night() -> None:
     assert found(both, "second-object") == [(36, 37)]
     # from another station it may be the parallax
     assert found(both.assign(stn=[*table["stn"], "W84", "W84"]), "second-object") == []
+
+
+def test_roving_observers_under_one_code_are_several() -> None:
+    """Two places are no single station, and see no duplicates of each other."""
+    place = {"sys": "WGS84", "ctr": 399, "pos2": 45.0, "pos3": 100.0}
+    table = frame(6, stn="247").assign(pos1=[10.0] * 3 + [30.0] * 3, **place)
+    assert kinds(table) == []
+    assert [k for k, _ in kinds(table.assign(pos1=10.0))] == ["single-station"]
+    twice = pd.concat([table, table.iloc[[1]].assign(pos1=30.0)], ignore_index=True)
+    assert kinds(twice) == []
+    assert kinds(pd.concat([table, table.iloc[[1]]])) == [("exact-duplicate", (1, 6))]
+
+
+def test_the_parallax_of_a_spacecraft_is_not_misread() -> None:
+    """A craft sees the object 25 deg away from where the ground does; taken as hours its right
+    ascension may happen to fall near the ground's."""
+    table = long_path().assign(sys="", ctr=np.nan, pos1=np.nan, pos2=np.nan, pos3=np.nan)
+    craft = (table["stn"] == "G96") & (table.index >= 15) & (table.index < 24)
+    table.loc[craft, "stn"] = "LTN"
+    table.loc[craft, "sys"] = "ICRF_KM"
+    table.loc[craft, ["ctr", "pos1", "pos2", "pos3"]] = [399.0, 4e7, 1e7, 1e6]
+    table.loc[craft, "ra"] += 25.0
+    assert kinds(table) == []
+    table["ra"] = np.where(craft, (table["ra"] - 25.0) / 15.0, table["ra"])
+    assert not any(k.startswith("ra-in") for k, _ in kinds(table))
+
+
+@pytest.mark.parametrize("path", ["quiet", "pushed"])
+def test_every_fault_is_found_in_the_demo_and_nothing_else(path: str) -> None:
+    """One fault after the other in an arc of 317 records from three sites and a spacecraft."""
+    arc = read_arc(DEMO / f"{path}.psv")
+    assert vet(arc) == []
+    t = arc.table
+    n, visit = len(t), [0, 1, 2]
+
+    def moved(rows: list[int], **by: Callable[[float], float]) -> pd.DataFrame:
+        made = t.copy()
+        for axis, change in by.items():
+            made.loc[rows, axis] = made.loc[rows, axis].map(change)
+            made.loc[rows, f"{axis}_rad"] = np.radians(made.loc[rows, axis])
+        return made
+
+    def more(rows: list[int], dec_deg: float = 0.0, later_s: float = 0.0) -> pd.DataFrame:
+        new = t.iloc[rows].assign(utc_sec=lambda x: x.utc_sec + later_s)
+        new = new.assign(dec=new.dec + dec_deg, dec_rad=np.radians(new.dec + dec_deg))
+        return pd.concat([t, new], ignore_index=True)
+
+    cases: list[tuple[str, pd.DataFrame, set[int], set[str]]] = [
+        ("exact-duplicate", more([5], later_s=1.0), {5, n}, set()),
+        ("near-duplicate", more([5], dec_deg=0.5 / 3600.0), {5, n}, set()),
+        ("impossible-rate", moved([1], dec=lambda d: d + 0.5), {0, 1, 2}, set()),
+        ("ra-in-hours", moved(visit, ra=lambda a: a / 15.0), set(visit), set()),
+        ("declination-sign", moved(visit, dec=lambda d: -d), set(visit), set()),
+        (
+            "second-object",
+            more(visit, dec_deg=0.4, later_s=30.0),
+            {n, n + 1, n + 2},
+            {"impossible-rate"},
+        ),
+    ]
+    for kind, table, rows, besides in cases:
+        found = vet(replace(arc, table=table))
+        assert {f.kind for f in found} - besides == {kind}
+        assert set().union(*(f.rows for f in found if f.kind == kind)) == rows
+        for finding in found:
+            assert "thrust" in finding.sentence or "orbit" in finding.sentence
 
 
 @pytest.mark.parametrize(("early", "fraction"), [(0.0, 0.0), (0.5, 0.5), (-0.5, -0.5)])

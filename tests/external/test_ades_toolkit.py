@@ -6,9 +6,12 @@ A Concise Description of ADES (2 May 2024); the verdict on every one is asked of
 """
 
 import contextlib
+import importlib.util
 import io
+import json
 import re
 import string
+from dataclasses import replace
 from datetime import datetime
 from pathlib import Path
 
@@ -804,3 +807,30 @@ def test_what_we_write_is_valid_and_reads_back_as_the_arc(
     assert schema.validate(etree.parse(str(tmp_path / "b.xml"))), schema.error_log
     same(arc, read_arc(tmp_path / "b.psv"))
     same(arc, read_arc(tmp_path / "b.xml"))
+
+
+@settings(
+    max_examples=15,
+    phases=[Phase.explicit, Phase.reuse, Phase.generate],
+    deadline=None,
+    suppress_health_check=[HealthCheck.function_scoped_fixture, HealthCheck.too_slow],
+)
+@given(drawn_file())
+def test_frames_json_and_parquet_hold_the_arc(tmp_path: Path, text: str) -> None:
+    """The same records as a data frame of the arc, as JSON in ADES fields, and through Parquet."""
+    (tmp_path / "a.psv").write_text(text)
+    arc = read_arc(tmp_path / "a.psv")
+    names: list[str] = []
+    records = []
+    for line in text.splitlines():
+        if "|" in line and line[0].isalpha() and "obsTime" in line.split("|"):
+            names = line.split("|")
+        elif "|" in line:
+            records.append(dict(zip(names, line.split("|"), strict=True)))
+    (tmp_path / "a.json").write_text(json.dumps(records))
+    anonymous = replace(arc, table=arc.table.assign(block=-1), contexts=())
+    same(anonymous, read_arc(tmp_path / "a.json"))
+    same(anonymous, Arc.from_frame(arc.table))
+    if importlib.util.find_spec("pyarrow"):
+        arc.to_parquet(tmp_path / "a.parquet")
+        same(arc, Arc.from_parquet(tmp_path / "a.parquet"))
