@@ -78,7 +78,7 @@ def residual_chi2(seen: Floats, design: Floats, cov: Floats, noise: Noise, keep:
     weak = (det <= 1e-4 * trace**2) | (trace <= 0.02 * np.trace(error, axis1=1, axis2=2))
     total[weak] = error[weak]
     chi2 = np.einsum("...ni,nij,...nj->...n", seen, np.linalg.inv(total), seen)
-    return np.where(noise.optical, chi2, as_of_two(chi2))
+    return chi2 if noise.there is None else np.where(noise.optical, chi2, as_of_two(chi2))
 
 
 def as_of_two(chi2: Floats) -> Floats:
