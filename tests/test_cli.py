@@ -194,8 +194,8 @@ BAD_ARCS = {
     "an unknown station": (HEADER + COLUMNS + rows(9, stn="ZQ9"), 2, "ZQ9"),
     "a date out of the ephemeris": (
         HEADER + COLUMNS + rows(9, time="0001-01-01T00:00:00Z"),
-        None,
-        "1",
+        1,
+        "1550 to 2650",
     ),
     "an arc of two observations": (HEADER + COLUMNS + rows(2), 1, "two|2"),
     "an empty file": ("", 2, "empty"),

@@ -214,10 +214,14 @@ class Arc:
             f"{counted(len(told['stations']), 'station')}, {told['first_day']} to "
             f"{told['last_day']} ({self.span_d:.1f} d)"
         )
-        if told["set_aside"]:
-            reasons = "; ".join(f"{count} {reason}" for reason, count in told["set_aside"].items())
-            text += f"; set aside: {reasons}"
-        return text
+        return text + self.told_set_aside()
+
+    def told_set_aside(self) -> str:
+        """How many records no fit uses, and why, as the end of a sentence; "" for none."""
+        reasons = "; ".join(
+            f"{count} ({reason})" for reason, count in self.to_dict()["set_aside"].items()
+        )
+        return f"; set aside: {reasons}" if reasons else ""
 
     def to_parquet(self, path: PathLike) -> None:
         """Write the arc as Parquet, nothing lost; needs pyarrow (extra "parquet"), else

@@ -437,9 +437,10 @@ def fit_orbit(
     ephemeris = load_ephemeris()
     used = error_model.corrected(reduce_offsets(error_model.usable(arc), ephemeris).used)
     if len(used) < MIN_OBSERVATIONS:
+        aside = arc.told_set_aside()
         raise FitError(
-            f"The arc of {arc.name} has {len(used)} usable observations; an orbit needs at least "
-            f"{MIN_OBSERVATIONS}. Add observations.",
+            f"The arc of {arc.name} has {len(used)} usable observations, an orbit needs at least "
+            f"{MIN_OBSERVATIONS}{aside}. Add observations{' or mend these' if aside else ''}.",
             arc=arc,
         )
     observers = observer_states(used, ephemeris)
