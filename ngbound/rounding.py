@@ -25,7 +25,9 @@ def _exponent(value: float) -> int:
 
 
 def _scaled(value: float, exponent: int) -> float:
-    return value / 10.0**exponent if exponent > -300 else value * 10.0 ** (-exponent)
+    if exponent > -300:
+        return value / 10.0**exponent
+    return value * 1e300 * 10.0 ** (-exponent - 300)
 
 
 def rounded(value: float, digits: int = 2, *, outward: str = "") -> str:

@@ -38,7 +38,7 @@ def _short(value: float, digits: int = 4) -> str:
 def _with_errors(value: float, errors: Mapping[str, float]) -> str:
     """A value and its errors by sign, with one power of ten: "5 +2 -1", "(3 +- 0.8)e26"."""
     power = int(f"{value:.3e}".split("e")[1]) if value else 0
-    scale = 1.0 if -4 < power < 5 else float(f"1e{power}")
+    scale = 1.0 if -4 < power < 5 or power < -300 else float(f"1e{power}")
     told = " ".join(
         [
             _short(value / scale),

@@ -156,3 +156,8 @@ def test_errors_say_what_and_how(spec, words):
         parse_distribution(spec, "rate", lower=0.0)
     for word in words:
         assert word in str(caught.value)
+
+
+def test_the_smallest_floats_are_told():
+    for text in ("0 +- 1e-320", "5e-324 +- 5e-324", "(1 +- 1)e300", "5e-324 +1e-322 -1e-323"):
+        assert str(parse_distribution(text, "a number")[0])
