@@ -42,7 +42,8 @@ class MassCeiling:
 
     ``mass``, ``diameter``: the ``confidence`` quantile of M and D, with their Monte Carlo errors;
     ``joint_confidence``: what can be claimed together with the quoted confidence of rates that are
-    upper limits (Bonferroni); ``acceleration_lower``: the (1 - confidence) quantile of |A|, au/d2.
+    upper limits (Bonferroni), None where one of these has no confidence;
+    ``acceleration_lower``: the (1 - confidence) quantile of |A|, au/d2.
     ``density_allowed`` (kg/m3): the bulk density that a sphere of the known ``size`` cannot exceed;
     ``verdict`` on it: "clash" below the 2.5th percentile of the density assumed, "tension" below
     its 16th, else "agree".
@@ -53,7 +54,7 @@ class MassCeiling:
     diameter: Quantity
     diameter_error: Quantity
     confidence: float
-    joint_confidence: float
+    joint_confidence: float | None
     acceleration_lower: Quantity
     density: Distribution
     limits: tuple[str, ...]
@@ -66,7 +67,9 @@ class MassCeiling:
         """The bound in words, with what it rests on."""
         held = f" (rates known only as limits held there: {', '.join(self.limits)})"
         joint = ""
-        if self.joint_confidence < self.confidence:
+        if self.joint_confidence is None:
+            joint = " (a limit came without one, so none holds for all together)"
+        elif self.joint_confidence < self.confidence:
             joint = f" (at least {percent(self.joint_confidence)} together with that of the limits)"
         text = (
             f"The thrust was detected (|A| > "
@@ -171,14 +174,17 @@ def mass_ceiling(
         verdict = "clash" if highest < bottom else "tension" if highest < low else "agree"
         allowed = highest * u.kg / u.m**3
     limits = [e for e in outgassing.emissions if isinstance(e.rate, AtMost)]
-    quoted = [e.rate.confidence or 1.0 for e in limits if isinstance(e.rate, AtMost)]
+    joint: float | None = confidence
+    for emission in limits:
+        level = emission.rate.confidence if isinstance(emission.rate, AtMost) else None
+        joint = None if joint is None or level is None else max(0.0, joint - (1.0 - level))
     return MassCeiling(
         mass_high * u.kg,
         mass_error * u.kg,
         diameter_high * u.m,
         diameter_error * u.m,
         confidence,
-        max(0.0, confidence - sum(1.0 - c for c in quoted)),
+        joint,
         float(np.quantile(acceleration.magnitudes, 1 - confidence)) * AU_D2,
         bulk,
         tuple(f"{e.species} {e.rate_words} at {e.at_au:g} au" for e in limits),
