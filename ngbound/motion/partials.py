@@ -95,7 +95,7 @@ class Partials:
     """Partials of the barycentric state of a track with respect to the named parameters.
 
     Names are of `PARAMETERS`: the state at the epoch (au, au/d), A1, A2, A3 (au/d2), the lag (d),
-    the exponent of a power law, and srp, radiation pressure at 1 au (au/d2).
+    the exponent m of an analytic law at fixed g(1 au), and srp, radiation pressure at 1 au (au/d2).
     """
 
     track: Track

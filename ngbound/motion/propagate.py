@@ -166,8 +166,8 @@ def _explain(
         limit = f"needed more than {MAX_STEPS} steps"
         if steps < MAX_STEPS:
             limit = (
-                f"came {abs(float(met[1])):.4g} d far in {steps} steps, so that the span would "
-                f"need far more than the {MAX_STEPS} allowed,"
+                f"came {abs(float(met[1])):.4g} d far in {steps} steps and would need far more "
+                f"than the {MAX_STEPS} allowed, or too many tries for each,"
             )
         return PropagationError(
             f"The integration {limit} and stopped at {when} TDB; shorten the span, or check "
@@ -200,11 +200,12 @@ def _integrate_leg(
         )
         if status != TOO_MANY_STEPS or n_max >= MAX_STEPS:
             break
-        if n_max > FIRST_GUESS_STEPS and n_max * abs(tau_d) > HOPELESS * MAX_STEPS * abs(met[1]):
+        hopeless = n_max * abs(tau_d) > HOPELESS * MAX_STEPS * abs(met[1])
+        if n_max > FIRST_GUESS_STEPS and (hopeless or n < n_max):
             break
         n_max = min(MAX_STEPS, n_max * 8)
     if status != OK:
-        raise _explain(int(status), met, epoch_d, n_max, forces, span)
+        raise _explain(int(status), met, epoch_d, int(n), forces, span)
     return Leg(
         start[:n].copy(),
         length[:n].copy(),

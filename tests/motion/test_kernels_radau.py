@@ -292,6 +292,16 @@ def test_satellite_of_the_earth_is_refused_early() -> None:
         integrate_track(0.0, state, 0.0, 3652.0)
 
 
+def test_lag_that_makes_no_sense_ends_in_a_sentence() -> None:
+    # the thrust outweighs the Sun, so that two-body motion back by the lag grazes it time and again
+    thrust = Thrust("water-ice", A=(1e-4, 0.0, 0.0), lag=20.0)
+    integrate_track(0.0, HYPERBOLA, 0.0, 1.0, thrust)
+    started = time.process_time()
+    with pytest.raises(PropagationError, match="too many tries"):
+        integrate_track(0.0, HYPERBOLA, 0.0, 120.0, thrust)
+    assert time.process_time() - started < 5.0
+
+
 def test_span_outside_the_ephemeris_is_refused() -> None:
     with pytest.raises(EphemerisRangeError, match="covers 1549-12-31 to 2650"):
         integrate_track(0.0, BELT, 0.0, 365.25 * 700, forces=ForceModel(asteroids=False))

@@ -1,11 +1,12 @@
 """Analytic partials against Richardson-extrapolated differences of the same trajectory."""
 
-from collections.abc import Callable
+from dataclasses import replace
 
 import numpy as np
 import pytest
 
 from ngbound.motion import (
+    LAWS,
     PARAMETERS,
     ForceModel,
     TableLaw,
@@ -21,33 +22,39 @@ from tests.units import km
 
 AMOUNTS = (1e-6, 3e-7, 2e-7)
 AREA_TO_MASS = 1e-4
-STEP = {"lag": 0.5, "exponent": 1e-2, "srp": 1e-6}
+STEP = {"exponent": 1e-2, "srp": 1e-6}
 KNOTS = np.geomspace(0.1, 10.0, 9)
-LAWS: dict[str, Callable[..., Thrust]] = {
-    "power": lambda **k: Thrust("power", **({"exponent": 2.3} | k)),
-    "water-ice": lambda **k: Thrust("water-ice", **{n: v for n, v in k.items() if n != "exponent"}),
-    "co-5au": lambda **k: Thrust("co-5au", **{n: v for n, v in k.items() if n != "exponent"}),
-    "table": lambda **k: Thrust(
-        TableLaw(tuple(KNOTS), tuple(KNOTS**-2.0)),
-        **{n: v for n, v in k.items() if n != "exponent"},
-    ),
-}
+CURVED = TableLaw(tuple(KNOTS), tuple(Thrust("water-ice").g(float(r)) for r in KNOTS))
+EXPONENT = {"power": 2.3, "water-ice": LAWS["water-ice"].m, "co-5au": LAWS["co-5au"].m}
+
+
+def make_thrust(law: str, exponent: float | None = None, **choices: object) -> Thrust:
+    """A thrust of a law, whose exponent may be moved while g(1 au) keeps its value."""
+    if law == "table":
+        return Thrust(CURVED, **choices)
+    if law == "power":
+        return Thrust("power", exponent=exponent or EXPONENT[law], **choices)
+    form = LAWS[law]
+    m = exponent or form.m
+    return Thrust(replace(form, m=m, alpha=form.alpha * form.r0_au ** (form.m - m)), **choices)
 
 
 def numeric(
     name: str,
     state: np.ndarray,
     times: np.ndarray,
-    make: Callable[..., Thrust],
+    law: str,
     forces: ForceModel,
     lag: float,
+    cap_d: float,
+    area_to_mass: float = AREA_TO_MASS,
 ) -> np.ndarray:
     """Central differences extrapolated twice (L. F. Richardson 1911)."""
 
     def at(change: float) -> np.ndarray:
         moved = state.copy()
         amounts = list(AMOUNTS)
-        choices: dict[str, object] = {"lag": lag, "area_to_mass": AREA_TO_MASS}
+        choices: dict[str, object] = {"lag": lag, "area_to_mass": area_to_mass}
         number = PARAMETERS.index(name)
         if number < 6:
             moved[number] += change
@@ -56,22 +63,24 @@ def numeric(
         elif name == "lag":
             choices["lag"] = lag + change
         elif name == "exponent":
-            choices["exponent"] = 2.3 + change
+            choices["exponent"] = EXPONENT[law] + change
         else:
-            choices["area_to_mass"] = AREA_TO_MASS + change / radiation_pressure_au_d2(1.0)
-        thrust = make(A=amounts, **choices)
-        return integrate_track(0.0, moved, 0.0, times[-1], thrust, forces, eps=1e-9).at_offset(
-            times
-        )
+            choices["area_to_mass"] = area_to_mass + change / radiation_pressure_au_d2(1.0)
+        thrust = make_thrust(law, A=amounts, **choices)
+        track = integrate_track(0.0, moved, 0.0, times[-1], thrust, forces, 1e-9, cap_d)
+        return track.at_offset(times)
 
     number = PARAMETERS.index(name)
     step = STEP.get(name, 1e-4 if number < 3 else 1e-6)
+    if name == "lag":
+        # far from the Sun a lag does little, and little of it drowns in rounding
+        step = 5.0 if times[-1] > 200.0 else 0.5
     rows = [(at(step / 2**k) - at(-step / 2**k)) / (2 * step / 2**k) for k in range(3)]
     once = [(4 * rows[k + 1] - rows[k]) / 3 for k in range(2)]
     return (16 * once[1] - once[0]) / 15
 
 
-@pytest.mark.parametrize("law", LAWS)
+@pytest.mark.parametrize("law", [*EXPONENT, "table"])
 @pytest.mark.parametrize(
     ("state", "days"), [(BELT, 365.0), (HYPERBOLA, 120.0)], ids=["belt", "hyperbola"]
 )
@@ -79,20 +88,40 @@ def numeric(
 def test_all_parameters_of_all_laws(
     law: str, state: np.ndarray, days: float, relativity: str
 ) -> None:
-    lag = 0.0 if law == "power" else 20.0
-    names = [n for n in PARAMETERS if n != "exponent" or law == "power"]
+    # the hyperbola passes knots of the table, where the second derivative of g jumps: paths and
+    # partials are only as good as their steps there, which are therefore kept short
+    knots = law == "table" and days < 200.0
+    lag = 0.0 if law == "power" or knots else 20.0
+    cap_d = 0.1 if knots else 40.0
+    names = [n for n in PARAMETERS if n != "exponent" or law in EXPONENT]
     forces = ForceModel(relativity=relativity, sun_j2=True, frame_dragging=True)
-    thrust = LAWS[law](A=AMOUNTS, lag=lag, area_to_mass=AREA_TO_MASS)
-    track = integrate_track(0.0, state, 0.0, days, thrust, forces)
+    thrust = make_thrust(law, A=AMOUNTS, lag=lag, area_to_mass=AREA_TO_MASS)
+    track = integrate_track(0.0, state, 0.0, days, thrust, forces, cap_d=cap_d)
     times = np.array([days / 3, days])
     exact = partials_along(track, names).at_offset(times)
     for c, name in enumerate(names):
-        truth = numeric(name, state, times, LAWS[law], forces, lag)
+        truth = numeric(name, state, times, law, forces, lag, cap_d)
         error = np.abs(exact[:, :3, c] - truth[:, :3]).max(axis=1)
-        # differences across a table's knots are themselves no better than 1e-6, those of a lag than
-        # 1e-7
-        tolerance = 1e-6 if law == "table" else 1e-7 if name == "lag" else 1e-8
-        assert np.all(error < tolerance * np.abs(truth[:, :3]).max(axis=1)), name
+        assert np.all(error < 1e-8 * np.abs(truth[:, :3]).max(axis=1)), name
+
+
+def test_lag_across_the_knots_of_a_table() -> None:
+    # with short steps the partials are as exact as elsewhere; the steps an orbit takes by itself
+    # leave 1e-6 of the lag's and 1e-8 of the others', as a thrust of 1e-6 au/d2 turns a corner
+    thrust = make_thrust("table", A=AMOUNTS, lag=20.0)
+    times = np.array([40.0, 120.0])
+    names = ("x", "vy", "A1", "A2", "lag")
+    forces = ForceModel()
+    own = integrate_track(0.0, HYPERBOLA, 0.0, 120.0, thrust, forces)
+    short = integrate_track(0.0, HYPERBOLA, 0.0, 120.0, thrust, forces, 1e-10, 0.05)
+    rough = partials_along(own, names).at_offset(times)
+    exact = partials_along(short, names).at_offset(times)
+    for c, name in enumerate(names):
+        size = np.abs(exact[:, :3, c]).max(axis=1)
+        truth = numeric(name, HYPERBOLA, times, "table", forces, 20.0, 0.05, 0.0)
+        assert np.all(np.abs(exact - truth[..., None])[:, :3, c].max(axis=1) < 1e-8 * size), name
+        loose = 1e-6 if name == "lag" else 1e-8
+        assert np.all(np.abs(exact - rough)[:, :3, c].max(axis=1) < loose * size), name
 
 
 @pytest.mark.parametrize("backward", [False, True])

@@ -20,7 +20,7 @@ PAIR = 2 * LANES
 
 @kernel()
 def law_of_distance(push, r, out):
-    """g, dg/dr and dg/dm into ``out``; r in au."""
+    """g, dg/dr and dg/dm at fixed g(1 au) into ``out``; r in au."""
     if push.law == LAW_FORM:
         alpha = push.par[0]
         u = r / push.par[1]
@@ -36,10 +36,8 @@ def law_of_distance(push, r, out):
             slope -= n * k * un / (1.0 + un)
         out[0] = g
         out[1] = slope * g / r
-        out[2] = -log_u * g
-        # a law normalised at 1 au by alpha = r0^m keeps g(1) = 1 when m varies
-        if k == 0.0:
-            out[2] = -math.log(r) * g
+        # alpha moves with m so that g(1 au) stays what it is: d ln alpha / dm = -ln r0
+        out[2] = -math.log(r) * g
     else:
         knots = push.table
         last = knots.shape[1] - 1
@@ -74,7 +72,10 @@ def law_of_distance(push, r, out):
 
 @kernel()
 def stumpff(z, c):
-    """Stumpff functions c0..c5 of z into ``c``."""
+    """Stumpff functions c0..c5 of z into ``c``; not a number where z is absurdly large."""
+    if not abs(z) < 1e12:
+        c[:] = math.nan
+        return
     halvings = 0
     while abs(z) > 0.1:
         z *= 0.25

@@ -23,6 +23,9 @@ from .layout import INSIDE_BODY, NOT_CONVERGED, OK, RELATIVITY_ALL, STEP_UNDERFL
 N_NODES = 8
 PATH = PAIR + N_NODES
 MOST_SWEEPS = 30
+SWEEPS_A_STEP = 20
+"""Sweeps allowed for the average step, refused ones included; an ordinary step takes three or four.
+"""
 SETTLED = 1e-10
 """The sweeps over a step end when the acceleration rests within this part of eps."""
 STEP_CAP_D = 40.0
@@ -175,6 +178,7 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, firs
     if tau_end == 0.0:
         return OK, 0, start, length, begin, power, on, met
     last_h = 0.0
+    sweeps = 0
     fresh = True
     bodies_at(tab, times, every, polynomial, slope, interval, pos, vel)
     bodies_of_lane(pos, 0, here[0])
@@ -236,6 +240,7 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, firs
         moved = 1e300
         converged = False
         for sweep in range(MOST_SWEEPS):
+            sweeps += 1
             follow(weight, base, node, path)
             sun_at_nodes(gm[0], pos, path, new)
             largest = gap(new, nothing)
@@ -284,6 +289,9 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, firs
         else:
             factor = 4.0
         if (factor < 0.5 and abs(h) > SMOOTH * pace) or not converged:
+            if sweeps > SWEEPS_A_STEP * n_max:
+                met[1] = tau
+                return TOO_MANY_STEPS, n, start, length, begin, power, on, met
             if abs(h) < 1e-9:
                 met[1] = tau
                 return NOT_CONVERGED, n, start, length, begin, power, on, met
@@ -291,7 +299,7 @@ def integrate(tab, push, phys, epoch_d, state, tau_end, eps, cap_d, breaks, firs
             fresh = True
             learnt[:] = 0.0
             continue
-        if n >= n_max:
+        if n >= n_max or sweeps > SWEEPS_A_STEP * n_max:
             met[1] = tau
             return TOO_MANY_STEPS, n, start, length, begin, power, on, met
         start[n] = tau
