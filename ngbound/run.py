@@ -351,6 +351,7 @@ def bound_the_thrust(fits: "Fits", step: "Steps", vary_errors: bool = False) -> 
     suspicions = tuple(residual_suspicions(fits.push))
     if not diagnostics.trusted:
         suspicions += (diagnostics.why,)
+    suspicions += diagnostics.remarks
     variation = None
     if vary_errors:
         with step("vary the error model") as bar:

@@ -76,6 +76,8 @@ class Diagnostics:
         One line.
     reasons : tuple of str
         What speaks against trust.
+    remarks : tuple of str
+        What the reader should know though it speaks against nothing: a night that decides alone.
     """
 
     reduced_chi2: float
@@ -93,6 +95,7 @@ class Diagnostics:
     trusted: bool
     why: str
     reasons: tuple[str, ...]
+    remarks: tuple[str, ...]
 
     def to_dict(self) -> dict[str, Any]:
         """Plain values; of the nights the ten that move A most."""
@@ -117,11 +120,12 @@ class Diagnostics:
             "trusted": self.trusted,
             "why": self.why,
             "reasons": list(self.reasons),
+            "remarks": list(self.remarks),
         }
 
     def __str__(self) -> str:
         lines = [
-            self.why,
+            " ".join((self.why, *self.remarks)),
             f"  chi2 per degree of freedom {self.reduced_chi2:.3f}, noise scale "
             f"{self.noise_scale:.3f} +- {self.noise_scale_error:.3f}",
             f"  night means, RA and Dec: runs z {self.runs_z[0]:+.1f}, {self.runs_z[1]:+.1f}; "
@@ -189,7 +193,7 @@ def diagnose(fit: Fit) -> Diagnostics:
     scale = math.sqrt(reduced) if reduced > 0.0 else math.nan
     runs = np.array([_runs_z(column) for column in means.T])
     box = np.array([_ljung_box_p(row, len(means)) for row in lags])
-    reasons = _reasons(fit, reduced, runs, box, groups, nights, left_out)
+    reasons = _reasons(fit, reduced, runs, box, groups, left_out)
     return Diagnostics(
         reduced_chi2=reduced,
         noise_scale=scale,
@@ -206,6 +210,7 @@ def diagnose(fit: Fit) -> Diagnostics:
         trusted=not reasons,
         why=_verdict(fit, reduced, box, reasons),
         reasons=reasons,
+        remarks=_remarks(nights),
     )
 
 
@@ -351,7 +356,6 @@ def _reasons(
     runs: Floats,
     box: Floats,
     groups: pd.DataFrame,
-    nights: pd.DataFrame,
     left_out: pd.DataFrame,
 ) -> tuple[str, ...]:
     out = []
@@ -385,14 +389,20 @@ def _reasons(
                 f"without station {worst['stn']} the thrust moves by {worst['change_sigma']:.1f} "
                 "times what it should"
             )
-    if "threshold_ratio" in nights and len(nights) > 1:
-        worst = nights.sort_values("threshold_ratio", ascending=False).iloc[0]
-        if worst["threshold_ratio"] > MOST_INFORMATION:
-            out.append(
-                f"without the night of {worst['stn']} on MJD {worst['utc_day']} the threshold "
-                f"would be {worst['threshold_ratio']:.1f} times larger"
-            )
     return tuple(out)
+
+
+def _remarks(nights: pd.DataFrame) -> tuple[str, ...]:
+    if "threshold_ratio" not in nights or len(nights) < 2:
+        return ()
+    worst = nights.sort_values("threshold_ratio", ascending=False).iloc[0]
+    if worst["threshold_ratio"] <= MOST_INFORMATION:
+        return ()
+    return (
+        f"The threshold rests on the night of {worst['stn']} on MJD {worst['utc_day']}: without "
+        f"it, it would be {worst['threshold_ratio']:.1f} times larger, so that no other night can "
+        "vouch for its errors.",
+    )
 
 
 def _verdict(fit: Fit, reduced: float, box: Floats, reasons: tuple[str, ...]) -> str:
@@ -406,5 +416,5 @@ def _verdict(fit: Fit, reduced: float, box: Floats, reasons: tuple[str, ...]) ->
     return (
         "The residuals may be trusted at the level of the threshold: chi2 per degree of freedom "
         f"{reduced:.2f}{scaled}, night means white (Ljung-Box p {box.min():.2g}), no station or "
-        "catalogue off, none decides alone."
+        "catalogue off."
     )

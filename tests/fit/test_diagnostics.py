@@ -25,7 +25,7 @@ def good():
 
 def test_honest_errors_are_trusted(good):
     fit, told = good
-    assert told.trusted and told.reasons == ()
+    assert told.trusted and told.reasons == () and told.remarks == ()
     assert told.why.startswith("The residuals may be trusted")
     assert told.noise_scale == pytest.approx(1.0, abs=5 * told.noise_scale_error)
     assert (np.abs(told.runs_z) < 4.0).all() and (told.ljung_box_p > 1e-3).all()
@@ -92,3 +92,14 @@ def test_gravity_only_has_no_influence_on_thrust():
     truth = simulate(orbit_of(BELT), WHEN[:60], np.random.default_rng(24))
     told = diagnose(fit_orbit(truth.arc, error_model=SIMPLE, initial=truth.orbit))
     assert "moved_sigma" not in told.nights and told.left_out.empty
+
+
+def test_a_night_that_decides_alone_is_a_remark_and_no_doubt_of_the_noise():
+    # one night at the far end of an arc that is dense elsewhere
+    when = np.concatenate([nights(MJD_2020, 300, 30, 4), [MJD_2020 + 1200.0]])
+    truth = simulate(orbit_of(BELT), when, np.random.default_rng(22))
+    told = diagnose(pushed(truth))
+    assert told.trusted
+    (remark,) = told.remarks
+    assert "the night of 500" in remark and remark in str(told)
+    assert told.nights["threshold_ratio"].max() > 2.0
