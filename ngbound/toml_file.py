@@ -24,6 +24,9 @@ from ngbound.errors import CaseError, NgboundError
 LONGEST_VALUE = 60
 """Longer values are shown cut, letters."""
 
+MORE_FAULTS = 3
+"""So many faults are told beside the first; the error carries all of them."""
+
 Model = TypeVar("Model", bound=BaseModel)
 Place = tuple[str | int, ...]
 """Where something stands in a file: names of tables and keys, numbers in arrays of tables."""
@@ -87,7 +90,10 @@ def read_toml(path: str | Path, model: type[Model]) -> Model:
             at = _line_of(text, place, fault.get("ctx", {}).get("keys", ()))
             where = f"{path}, line {at}" if at else str(path)
             problems.append(_sentence(where, content, model, place, fault))
-        more = f" ({len(problems) - 1} more: {' '.join(problems[1:])})" if problems[1:] else ""
+        others = problems[1 : 1 + MORE_FAULTS]
+        left = len(problems) - 1 - len(others)
+        told = " ".join(others) + (f" And {left} more." if left else "")
+        more = f" ({len(problems) - 1} more: {told})" if others else ""
         raise CaseError(problems[0] + more, problems=problems) from error
 
 

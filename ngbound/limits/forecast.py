@@ -76,6 +76,9 @@ class PlannedNight:
             )
 
 
+_WITH_UNIT = {name: f"{name}_au_d2" for name in ("worst", "best", "alone_worst")}
+
+
 @dataclass(frozen=True, eq=False)
 class Forecast:
     """Thresholds after each planned night.
@@ -151,7 +154,7 @@ class Forecast:
         return {
             "now": self.now.to_dict(),
             "best_night": self.best_night,
-            "nights": self.table.to_dict(orient="records"),
+            "nights": self.table.rename(columns=_WITH_UNIT).to_dict(orient="records"),
         }
 
 
