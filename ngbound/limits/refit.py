@@ -52,6 +52,8 @@ BENT = 0.1
 FRAMES_KEPT = 4
 MAX_SWEEPS = 12
 MAX_HALVINGS = 12
+LEAST_LEFT = 0.05
+"""A share of a night's variance below this is not scaled up further: the fit went through it."""
 FEW_DONORS = 5
 """A station with fewer nights borrows residuals from all nights."""
 NOISES = ("model", "residuals")
@@ -145,8 +147,9 @@ class ExactRefit:
         "model": drawn from the error model of the fit, errors shared by nights and by many nights
         included. "residuals": whole station-nights of the fit's own whitened residuals, drawn with
         replacement and random sign among the nights of the same station (of all stations where it
-        has fewer than 5), in the order they were taken, and scaled by the root of numbers over
-        degrees of freedom for what the fit absorbed; radar echoes are drawn from the error model.
+        has fewer than 5), in the order they were taken, each night given back what the fit
+        absorbed of it (R. M. Bell & D. F. McCaffrey 2002, Survey Methodology 28, 169): most of that
+        is in the means of the nights. Radar echoes are drawn from the error model.
     reject : bool
         Apply the outlier rule of the fit to each arc and hypothesis; the two are then compared
         over the records that either kept, as `ngbound.fit.compare_fits` does.
@@ -252,11 +255,10 @@ class ExactRefit:
     def _donor_nights(self) -> list[list[Floats]]:
         """For each station-night the whitened residuals (2 m,) of the nights it may borrow."""
         white = self.noise.whiten(np.asarray(self.fit.seen)[self.fit.keep].ravel())
-        white = white * np.sqrt(self.fit.n_numbers / max(1, self.fit.dof))
         station = self.fit.used.table["stn"].to_numpy()[self.fit.keep]
         of_block = [station[rows[0] // 2] for rows, _ in self._blocks]
         directions = [bool(self.noise.optical[rows[0] // 2]) for rows, _ in self._blocks]
-        every = [white[rows] for rows, _ in self._blocks]
+        every = [_given_back(white[rows], self.q[rows]) for rows, _ in self._blocks]
         seen = [w for w, direct in zip(every, directions, strict=True) if direct]
         mine = {
             code: [
@@ -535,6 +537,13 @@ class ExactRefit:
         seen = self.seen(points.reshape(2 * free, -1), frame.hood)
         seen = self.whiten(seen) if white else seen
         return (seen[:free] - seen[free:]) / (2.0 * DIFFERENCE)
+
+
+def _given_back(white: Floats, q: Floats) -> Floats:
+    """(I - H)^(-1/2) w of the whitened residuals w (2m,) of a night, whose covariance after the fit
+    is I - H; q (2m, p) its rows of the orthonormal design."""
+    values, vectors = np.linalg.eigh(np.eye(len(q)) - q @ q.T)
+    return np.asarray(vectors @ ((vectors.T @ white) / np.sqrt(np.maximum(values, LEAST_LEFT))))
 
 
 def _some(own: list[Noise] | None, rows: Ints) -> list[Noise] | None:

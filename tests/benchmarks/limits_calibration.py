@@ -68,7 +68,7 @@ def cells(fit: Fit, n: int, seed: int, part: str) -> Iterator[tuple[str, Recover
             what = f"R outward: {share:g} of the threshold"
             yield count(what, model, outward(model, share), prior="outward-radial")
     if part in ("rule", "all"):
-        for free in ("RTN", "R"):
+        for free in ("RTN", "RT", "R", "T", "N"):
             model = ExactRefit(fit, free=free, reject=True)
             yield count(f"{free}, outlier rule: no thrust", model, np.zeros(len(free)))
             what = f"{free}, outlier rule: threshold, worst direction"

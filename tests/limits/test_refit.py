@@ -10,6 +10,7 @@ from ngbound.arc import Arc, ErrorModel
 from ngbound.errors import LimitError
 from ngbound.fit import compare_fits, fit_orbit
 from ngbound.limits import ExactRefit, detection_threshold, inject_and_recover
+from ngbound.limits.refit import _given_back
 from ngbound.motion import Thrust
 from tests.limits.arcs import CLASSES, ERRORS, fitted, simulated_arc
 from tests.units import arcsec
@@ -145,6 +146,17 @@ def test_noise_of_the_residuals_has_their_size(push):
     assert expected == pytest.approx(push.chi2 / push.dof, rel=0.25)
     assert np.mean(white**2) == pytest.approx(expected, rel=0.03)
     assert abs(np.mean(white)) < 0.03
+
+
+def test_a_night_is_given_back_what_the_fit_absorbed():
+    random = np.random.default_rng(4)
+    q = np.linalg.qr(random.standard_normal((24, 5)))[0]
+    rest = np.eye(24) - q @ q.T
+    night = slice(6, 12)
+    drawn = random.standard_normal((20000, 24)) @ rest
+    back = np.array([_given_back(each[night], q[night]) for each in drawn])
+    np.testing.assert_allclose(back.T @ back / len(back), np.eye(6), atol=0.04)
+    assert np.mean(drawn[:, night] ** 2) < 0.9
 
 
 def test_choices_out_of_range_are_refused(push):
