@@ -116,9 +116,9 @@ class Survey:
             lines.append(f"  the longest of {self.n_gaps} gaps of {LONG_GAP_D:.0f} d or more:")
         for gap in self.gaps:
             lines.append(f"  gap         {gap.after} to {gap.before}: {gap.days:.0f} d")
-        lines += [f"  {title:13s} {span}" for title, span in self.errors.items()]
+        lines += [f"  {title:14s} {span}" for title, span in self.errors.items()]
         if self.magnitude:
-            lines.append(f"  magnitude     {self.magnitude}")
+            lines.append(f"  {'magnitude':14s} {self.magnitude}")
         count = len(self.findings)
         lines.append(f"  {counted(count, 'finding')}" if count else "  nothing doubtful found")
         lines += [f"  - {finding}" for finding in self.findings]
