@@ -223,6 +223,8 @@ def scientific(value: float | str, digits: int = 2) -> str:
     mantissa, e, exponent = text.partition("e")
     if not e:
         return text
+    if not isinstance(value, str):  # a tick, whose last zeros say nothing
+        mantissa = mantissa.rstrip("0").rstrip(".") if "." in mantissa else mantissa
     power = f"10{exponent.translate(SUPERSCRIPT)}"
     return power if mantissa == "1" else f"{mantissa}\u2009\u00d7\u2009{power}"
 
