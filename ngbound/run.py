@@ -30,10 +30,12 @@ from ngbound.fit import (
     Comparison,
     Diagnostics,
     Fit,
+    MinimaScan,
     Variation,
     compare_fits,
     diagnose,
     fit_orbit,
+    scan_minima,
     vary,
 )
 from ngbound.limits import (
@@ -134,6 +136,7 @@ def run_case(path: str | Path, *, progress: bool = False, **choices: Any) -> Rec
         catalogue_table(fits.push),
         *([echo_table(fits.null), echo_table(fits.push)] if fits.push.echo_summary else []),
         *([variant_table(bounds)] if bounds.variation else []),
+        *(str(scan) for scan in fits.minima),
         fits.push.error_report,
         str(bounds.diagnostics),
     ]
@@ -311,13 +314,29 @@ def fit_both(case: Case, arc: Arc, step: "Steps") -> "Fits":
     common = how_to_fit(case)
     with step("fit by gravity alone") as bar:
         null = fit_orbit(arc, initial=start, progress=bar.say, **common)
+    with step("look for other orbits") as bar:
+        null, null_scan = lowest(null, bar, common)
     with step("fit with thrust") as bar:
         push = fit_orbit(
             arc, thrust=case.thrust.thrust(), initial=null.orbit, progress=bar.say, **common
         )
+    with step("look for other orbits with thrust") as bar:
+        push, push_scan = lowest(push, bar, common)
     with step("compare the fits"):
         comparison = compare_fits(null, push)
-    return Fits(case, arc, null, push, comparison)
+    for scan in (null_scan, push_scan):
+        if scan.warning:
+            warnings.warn(scan.warning, NgboundWarning, stacklevel=2)
+    return Fits(case, arc, null, push, comparison, (null_scan, push_scan))
+
+
+def lowest(fit: Fit, bar: "StepBar", common: dict[str, Any]) -> tuple[Fit, MinimaScan]:
+    """The fit of the lowest minimum of chi2, and the scan that looked for others."""
+    scan = scan_minima(fit, progress=bar.say)
+    if not scan.fit_is_best:
+        better = scan.orbit(scan.best)
+        fit = fit_orbit(fit.arc, thrust=fit.thrust, initial=better, keep=fit.keep, **common)
+    return fit, scan
 
 
 def how_to_fit(case: Case) -> dict[str, Any]:
@@ -597,6 +616,7 @@ def compose_record(
         "arc": summary_of(fits),
         "fits": {"null": fits.null, "push": fits.push},
         "comparison": fits.comparison,
+        "minima": list(fits.minima),
         "threshold": bounds.threshold,
         "posterior": bounds.posterior,
         "limit": bounds.limit,
@@ -685,6 +705,7 @@ class Fits:
     null: Fit
     push: Fit
     comparison: Comparison
+    minima: tuple[MinimaScan, ...] = ()
 
     @property
     def r_au(self) -> np.ndarray:
@@ -698,6 +719,7 @@ class Fits:
                 f"Gravity alone\n{self.null}",
                 f"With thrust\n{self.push}",
                 str(self.comparison),
+                *(str(scan) for scan in self.minima),
                 str(station_table(self.push)),
                 str(catalogue_table(self.push)),
                 *([str(echo_table(self.push))] if self.push.echo_summary else []),
@@ -711,6 +733,7 @@ class Fits:
             "null": self.null.to_dict(),
             "push": self.push.to_dict(),
             "comparison": self.comparison.to_dict(),
+            "minima": [scan.to_dict() for scan in self.minima],
         }
 
 

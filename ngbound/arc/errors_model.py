@@ -51,7 +51,8 @@ polar sites."""
 COMMON_FRACTION = 0.5
 """Common part of the night as a fraction of an implied sigma."""
 STATION_FRACTION = 0.2
-"""Offset of a station over the whole arc as a fraction of an implied sigma (from memory)."""
+"""Offset of a station over the whole arc as a fraction of an implied sigma: a choice, see
+`ngbound.arc.instrument_offsets`."""
 OPTIONAL = (
     "uniform_before_1996_arcsec",
     "night_common_arcsec",
@@ -592,7 +593,7 @@ class ErrorModel:
         if self._offsets_wanted:
             parts.append(catalogue_offsets(arc, self.catalogue_scale, self.catalogue_seasons))
         if self.station_offset_arcsec is None:
-            where = "a fifth of the sigma of the table (from memory)"
+            where = "a fifth of the sigma of the table (no published size found; a choice)"
             parts.append(station_offsets(arc, STATION_FRACTION * implied_arcsec, where))
         elif self.station_offset_arcsec > 0.0:
             parts.append(station_offsets(arc, np.full(len(arc), self.station_offset_arcsec)))

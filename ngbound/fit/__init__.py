@@ -15,6 +15,7 @@ scales of the stations included.
 from ngbound.fit.diagnostics import Diagnostics, diagnose
 from ngbound.fit.error_variants import ErrorVariant, Variation, error_variants, vary
 from ngbound.fit.first_orbit import Preliminary, preliminary_orbits
+from ngbound.fit.minima import MinimaScan, Minimum, scan_minima
 from ngbound.fit.noise_scale import StationScale, rescaled, student_factor, tail_probability
 from ngbound.fit.outliers import chi2_of_records, judge_in_turns
 from ngbound.fit.significance import sigma_of_chance, significance_sigma
@@ -25,6 +26,8 @@ __all__ = [
     "Diagnostics",
     "ErrorVariant",
     "Fit",
+    "MinimaScan",
+    "Minimum",
     "Preliminary",
     "StationScale",
     "Variation",
@@ -36,6 +39,7 @@ __all__ = [
     "judge_in_turns",
     "preliminary_orbits",
     "rescaled",
+    "scan_minima",
     "sigma_of_chance",
     "significance_sigma",
     "student_factor",

@@ -1,19 +1,23 @@
 """Other orbits that explain the same arc: a scan for several minima of chi2.
 
-Imports numpy, errors, arc, motion and this room. Between apparitions far apart the number of
-revolutions may be uncertain (A. Milani & G. F. Gronchi 2010, Theory of Orbit Determination, ch. 7
-and 8, on the linkage of arcs; from memory), with a thrust more so, because it changes the period.
-The apparitions are therefore linked anew, from the one that tells most outwards.
-With C the covariance of what is linked so far and X the partials of the next records, the line
+Imports numpy, errors, sky, motion and this room. Between apparitions far apart the number of
+revolutions may be uncertain, with a thrust more so, because it changes the period. The apparitions
+are therefore linked anew, from the one that tells most outwards, along lines of variations (A.
+Milani et al. 2005, A&A 431, 729). Deviation: with C the covariance of what is linked so far and X
+the partials of the next records, the direction of the line is
 
-    theta + z C^(1/2) v,    v the first eigenvector of C^(1/2)' X' X C^(1/2),
+    C^(1/2) v,    v the first eigenvector of C^(1/2)' X' X C^(1/2),
 
-is the one along which their foretold places are most uncertain, z in standard deviations of it. It
-is walked in steps that move those places by a few degrees; from every dip of chi2 the orbit is
-corrected, and every orbit that explains what is linked goes on to the next apparition. The thrust
-has a wide Gaussian prior until the whole arc is linked, and none in the end.
+along which the foretold places of these records are most uncertain. It is followed in steps that
+move those places by a few degrees; each step is corrected across the line so that what is linked
+stays explained, and the line ends where it is not. Wherever the places come near the observed ones
+the orbit is corrected for good, and every orbit that explains what is linked goes on to the next
+apparition. The thrust has a wide Gaussian prior until the whole arc is linked, and none in the end.
+All steps are taken in direction, its rate, logarithm of distance and its rate at the epoch, in
+which the orbits that explain a short arc lie on a nearly straight line.
 """
 
+import math
 from collections.abc import Callable
 from dataclasses import dataclass, field
 from typing import Any
@@ -21,11 +25,25 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from ngbound.errors import FitError, NgboundError, PropagationError
-from ngbound.fit.least_squares import Linearised, differential_correction, linearise, thrust_of
+from ngbound.errors import PropagationError
+from ngbound.fit.least_squares import (
+    Linearised,
+    linearise,
+    parameter_names,
+    thrust_of,
+)
 from ngbound.fit.orbit_search import at_epoch
 from ngbound.fit.solution import Fit
-from ngbound.motion import Orbit, integrate_track, light_margin_d, residuals, see
+from ngbound.motion import (
+    Orbit,
+    Records,
+    design_matrix,
+    integrate_track,
+    light_margin_d,
+    partials_along,
+    see,
+)
+from ngbound.sky import direction_to_angles, load_ephemeris
 
 Floats = NDArray[np.float64]
 Bools = NDArray[np.bool_]
@@ -35,7 +53,13 @@ REACH_SIGMA = 4.0
 STEP_RAD = 0.12
 LINEAR_RAD = 0.03
 """Foretold places known better than this need no walk."""
-MOST_STEPS = 240
+MOST_STEPS = 150
+MOST_OFF_RAD = 0.3
+"""A dip whose places lie further off than this is none."""
+MOST_SIGMA = 0.25
+"""Longest step along a line, in its standard deviations."""
+OPEN_RAD = 0.3
+"""Where foretold places are this uncertain in a second direction too, one line is not enough."""
 MOST_DIPS = 16
 MOST_ORBITS = 12
 WORTH = 400.0
@@ -45,9 +69,9 @@ RIVAL = 25.0
 THRUST_AU_D2 = 5e-9
 """Standard deviation of the prior of each thrust component, or twice the fitted one where that is
 more. Comets have up to some 1e-8 (from memory)."""
-LOOSE_STATE = np.array([1.0, 1.0, 1.0, 0.02, 0.02, 0.02])
-"""au and au/d: only keeps the covariance of a lone night finite."""
-SWEEPS = 25
+LOOSE = np.array([1.0, 1.0, 3.0, 0.1, 0.1, 0.03])
+"""rad, rad, 1, rad/d, rad/d, au/d: only keeps the covariance of a lone night finite."""
+SWEEPS = 40
 SETTLED = 0.02
 SAME_SIGMA = 0.5
 
@@ -235,9 +259,44 @@ def _foretold(root: Floats, design: Floats) -> tuple[Floats, Floats]:
 def _most_telling(fit: Fit, parts: tuple[Bools, ...]) -> int:
     """The apparition whose records alone tell most of the orbit: the bend of an arc is known as
     its length squared times the root of its number of records."""
-    days = [np.ptp(fit.records.tdb_d[part]) for part in parts]
-    told = [day**2 * np.sqrt(part.sum()) for day, part in zip(days, parts, strict=True)]
+    days = [float(np.ptp(fit.records.tdb_d[part])) for part in parts]
+    told = [day**2 * math.sqrt(int(part.sum())) for day, part in zip(days, parts, strict=True)]
     return int(np.argmax(told))
+
+
+class _Local:
+    """Direction, rates and distance about a state, as an observer at the Earth's centre sees it."""
+
+    def __init__(self, theta: Floats, epoch_d: float) -> None:
+        self.theta = theta
+        self.stand, self.drift = load_ephemeris().posvel("earth", epoch_d)
+        rho, speed = theta[:3] - self.stand, theta[3:6] - self.drift
+        self.far = float(np.linalg.norm(rho))
+        self.toward = rho / self.far
+        self.axes = np.linalg.svd(self.toward[None])[2][1:]
+        self.radial = float(speed @ self.toward)
+        self.turn = self.axes @ speed / self.far
+        jacobian = np.eye(theta.size)
+        jacobian[:6, :6] = 0.0
+        jacobian[:3, :2] = jacobian[3:6, 3:5] = self.far * self.axes.T
+        jacobian[:3, 2] = rho
+        jacobian[3:6, 2] = self.far * (self.turn @ self.axes)
+        jacobian[3:6, 5] = self.toward
+        jacobian[3:6, :2] = self.radial * self.axes.T - self.far * np.outer(self.toward, self.turn)
+        self.jacobian = jacobian
+
+    def moved(self, step: Floats) -> Floats:
+        """The parameters after a step in two directions, ln distance, their rates, and thrust."""
+        out = self.theta + np.concatenate([np.zeros(6), step[6:]])
+        line = self.toward + step[:2] @ self.axes
+        length = float(np.linalg.norm(line))
+        line = line / length
+        far = self.far * np.exp(np.clip(step[2], -1.0, 1.0))
+        turn = (self.turn + step[3:5]) @ self.axes
+        turn = (turn - line * (line @ turn)) / length
+        out[:3] = self.stand + far * line
+        out[3:6] = self.drift + (self.radial + step[5]) * line + far * turn
+        return out
 
 
 class _Walk:
@@ -246,11 +305,14 @@ class _Walk:
     def __init__(self, fit: Fit) -> None:
         self.fit = fit
         self.n_starts = 0
+        self.echoes = np.zeros(len(fit.records), dtype=bool)
+        if fit.records.echoes is not None:
+            self.echoes[fit.records.echoes.rows] = True
         self.complete = True
         thrust = np.maximum(THRUST_AU_D2, 2.0 * np.abs(fit.theta[6:]))
         self.centre = np.concatenate([np.zeros(6), fit.theta[6:]])
         self.tight = np.diag(np.concatenate([np.zeros(6), 1.0 / thrust]))[6:]
-        self.prior = np.concatenate([1.0 / LOOSE_STATE, 1.0 / thrust])
+        self.prior = np.concatenate([1.0 / LOOSE, 1.0 / thrust])
 
     def link(
         self,
@@ -287,7 +349,7 @@ class _Walk:
         for theta in orbits:
             for start in self._starts(theta, epoch_d, mask, new):
                 self.n_starts += 1
-                solved = self._correct(start, epoch_d, mask)
+                solved = self._correct(start, epoch_d, mask, mask & ~new, self.tight)
                 if solved is None:
                     continue
                 _, there, white = solved
@@ -299,55 +361,91 @@ class _Walk:
         return [theta for value, theta, _ in found[:MOST_ORBITS] if value < found[0][0] + WORTH]
 
     def _starts(self, theta: Floats, epoch_d: float, mask: Bools, new: Bools) -> list[Floats]:
-        """The dips of chi2 along the line on which the new places are most uncertain."""
-        try:
-            here = self._linearise(theta, epoch_d, mask)
-        except PropagationError:
-            return []
-        old = mask & ~new
-        white = self.fit.noise.mask(old).whiten(here.design[old].reshape(-1, theta.size))
-        root = _root(np.concatenate([white, np.diag(self.prior)]))
-        size, steps = _foretold(root, here.design[new])
-        if size[0] < LINEAR_RAD:
-            return [theta]
-        count = int(np.ceil(REACH_SIGMA * size[0] / STEP_RAD))
-        if count > MOST_STEPS // 2 or size[1] > 5.0 * STEP_RAD:
-            self.complete = False
-        z = np.linspace(-REACH_SIGMA, REACH_SIGMA, 2 * min(count, MOST_STEPS // 2) + 1)
-        line = theta + z[:, None] * steps[:, 0]
-        chi2 = np.array([self._chi2(each, epoch_d, mask) for each in line])
-        wall = np.concatenate([[np.inf], chi2, [np.inf]])
-        dips = np.flatnonzero((chi2 <= wall[:-2]) & (chi2 < wall[2:]) & np.isfinite(chi2))
-        dips = dips[np.argsort(chi2[dips])]
-        if len(dips) > MOST_DIPS:
-            self.complete = False
-        return [theta, *line[dips[:MOST_DIPS]]]
+        """The dips of the distance of foretold from observed places along the line of variations,
+        the given orbit first."""
+        starts = [theta]
+        old, angles = mask & ~new, new & ~self.echoes
+        for sense in (1.0, -1.0) if angles.any() else ():
+            line, away = self._line(theta, epoch_d, old, angles, sense)
+            if len(line) < 3:
+                continue
+            off = np.array(away)
+            dips = 1 + np.flatnonzero((off[1:-1] <= off[:-2]) & (off[1:-1] < off[2:]))
+            dips = dips[off[dips] < MOST_OFF_RAD]
+            starts += [line[i] for i in dips[np.argsort(off[dips])][:MOST_DIPS]]
+            if len(dips) > MOST_DIPS:
+                self.complete = False
+        return starts
+
+    def _line(
+        self, theta: Floats, epoch_d: float, old: Bools, new: Bools, sense: float
+    ) -> tuple[list[Floats], list[float]]:
+        """Orbits along one sense of the line of variations, and how far foretold places then lie
+        from the observed ones, radians."""
+        noise = self.fit.noise.mask(old)
+        line: list[Floats] = []
+        away: list[float] = []
+        ahead, bar = np.zeros(0), np.inf
+        while len(line) < MOST_STEPS:
+            try:
+                here = self._linearise(theta, epoch_d, old)
+                design, off_rad = self._foresee(theta, epoch_d, new)
+            except PropagationError:
+                return line, away
+            local = _Local(theta, epoch_d)
+            white = noise.whiten(here.design.reshape(-1, theta.size) @ local.jacobian)
+            miss = noise.whiten(here.seen.ravel())
+            root = _root(np.concatenate([white, np.diag(self.prior)]))
+            size, steps = _foretold(root, design @ local.jacobian)
+            if not line:
+                if size[0] < LINEAR_RAD:
+                    return [], []
+                bar = float(miss @ miss) + REACH_SIGMA**2
+                self.complete = self.complete and bool(size[1] < OPEN_RAD)
+            elif float(miss @ miss) > bar:
+                return line, away
+            line.append(theta)
+            away.append(off_rad)
+            first = steps[:, 0] * self.prior
+            turned = -1.0 if ahead.size and first @ ahead < 0.0 else 1.0
+            ahead = turned * first
+            pace = turned * sense * min(STEP_RAD / size[0], MOST_SIGMA)
+            right = white.T @ miss + self.tight.T @ (self.tight @ (self.centre - theta))
+            theta = local.moved(pace * steps[:, 0] + steps[:, 1:] @ (steps[:, 1:].T @ right))
+        self.complete = False
+        return line, away
 
     def _linearise(self, theta: Floats, epoch_d: float, mask: Bools) -> Linearised:
         fit = self.fit
+        count = int(mask.sum())
         return linearise(
-            theta, epoch_d, fit.records, fit.noise.mask(mask), mask, fit.thrust, fit.components,
-            fit.orbit.forces,
+            theta, epoch_d, fit.records.subset(mask), fit.noise.mask(mask),
+            np.ones(count, dtype=bool), fit.thrust, fit.components, fit.orbit.forces,
         )  # fmt: skip
 
-    def _chi2(self, theta: Floats, epoch_d: float, mask: Bools) -> float:
+    def _foresee(self, theta: Floats, epoch_d: float, rows: Bools) -> tuple[Floats, float]:
+        """Partials (m, 2, p) of foretold places, each in its own tangent plane, and their root mean
+        square distance from the observed ones, radians."""
         fit = self.fit
-        records = fit.records.subset(mask)
-        push = thrust_of(theta, fit.thrust, fit.components)
+        records = fit.records.subset(rows)
         start = float(records.tdb_d.min()) - light_margin_d(records.observer_au, theta)
-        try:
-            track = integrate_track(
-                epoch_d, theta[:6], start, float(records.tdb_d.max()), push, fit.orbit.forces
-            )
-            seen = residuals(see(track, records), records)
-        except NgboundError:
-            return np.inf
-        return float(np.sum(fit.noise.mask(mask).whiten(seen.ravel()) ** 2))
+        track = integrate_track(
+            epoch_d, theta[:6], start, records.end_d,
+            thrust_of(theta, fit.thrust, fit.components), fit.orbit.forces,
+        )  # fmt: skip
+        sight = see(track, records)
+        ra, dec = direction_to_angles(sight.rho_au)
+        there = Records.from_angles(records.tdb_d, records.observer_au, ra, dec)
+        cosine = np.sum(there.basis[:, 2] * records.basis[:, 2], axis=1)
+        partials = partials_along(track, parameter_names(fit.components))
+        off_rad = float(np.sqrt(np.mean(np.arccos(np.clip(cosine, -1.0, 1.0)) ** 2)))
+        return design_matrix(sight, there, partials), off_rad
 
     def _correct(
-        self, theta: Floats, epoch_d: float, mask: Bools
+        self, theta: Floats, epoch_d: float, mask: Bools, old: Bools | None, tight: Floats
     ) -> tuple[float, Floats, Floats] | None:
-        """chi2, parameters and whitened design with the prior of the thrust; None if it fails."""
+        """chi2, parameters and whitened design with the prior of the thrust (j, p); None if it
+        fails."""
         noise = self.fit.noise.mask(mask)
         damping, here, value = 0.0, None, np.inf
         trial = theta
@@ -356,40 +454,58 @@ class _Walk:
                 there = self._linearise(trial, epoch_d, mask)
             except PropagationError:
                 there = None
-            new = np.inf if there is None else there.chi2 + self._cost(trial)
+            cost = float(np.sum((tight @ (trial - self.centre)) ** 2))
+            new = np.inf if there is None else there.chi2 + cost
             if there is not None and new <= value:
                 here, value, theta, damping = there, new, trial, 0.1 * damping
-                white = noise.whiten(here.design[mask].reshape(-1, theta.size))
-                miss = noise.whiten(here.seen[mask].ravel())
-                white = np.concatenate([white, self.tight])
-                miss = np.concatenate([miss, self.tight @ (self.centre - theta)])
+                local = _Local(theta, epoch_d)
+                plain = noise.whiten(here.design.reshape(-1, theta.size))
+                miss = noise.whiten(here.seen.ravel())
+                white = np.concatenate([plain @ local.jacobian, tight])
+                miss = np.concatenate([miss, tight @ (self.centre - theta)])
             elif here is None:
                 return None
             else:
                 damping = max(10.0 * damping, 1e-6)
             step = _solved(white, miss, damping)
             if np.linalg.norm(white @ step) < SETTLED:
-                return value, theta, white
-            trial = theta + step
+                return value, theta, plain
+            trial = local.moved(step)
+            if old is not None:
+                aim = here.seen[old[mask]] - here.design[old[mask]] @ (local.jacobian @ step)
+                trial = self._bent(trial, epoch_d, old, aim)
         return None
 
-    def _cost(self, theta: Floats) -> float:
-        return float(np.sum((self.tight @ (theta - self.centre)) ** 2))
+    def _bent(self, theta: Floats, epoch_d: float, old: Bools, aim: Floats) -> Floats:
+        """The parameters moved so that the old records have the residuals (m, 2) that linear theory
+        aimed at: without it steps would have to creep along a narrow, bent valley."""
+        try:
+            here = self._linearise(theta, epoch_d, old)
+        except PropagationError:
+            return theta
+        local, noise = _Local(theta, epoch_d), self.fit.noise.mask(old)
+        white = noise.whiten(here.design.reshape(-1, theta.size) @ local.jacobian) / self.prior
+        u, s, vt = np.linalg.svd(white, full_matrices=False)
+        firm = s > 1.0
+        firm[-1:] = False
+        gain = np.where(firm, 1.0 / np.where(firm, s, 1.0), 0.0)
+        missed = noise.whiten((here.seen - aim).ravel())
+        return local.moved((vt.T @ (gain * (u.T @ missed))) / self.prior)
 
     def converge(self, epoch_d: float, theta: Floats) -> tuple[float, Floats] | None:
         """The minimum over the whole arc without any prior: chi2, and parameters at the epoch of
         the fit."""
         fit = self.fit
-        try:
-            at = differential_correction(
-                theta, epoch_d, fit.records, fit.noise, fit.keep, fit.thrust, fit.components,
-                fit.orbit.forces,
-            ).at  # fmt: skip
-            push = thrust_of(at.theta, fit.thrust, fit.components)
-            moved = at_epoch(at.theta, epoch_d, fit.orbit.epoch_tdb_d, push, fit.orbit.forces)
-        except (FitError, PropagationError):
+        solved = self._correct(theta, epoch_d, fit.keep, None, np.zeros((0, theta.size)))
+        if solved is None:
             return None
-        return at.chi2, moved
+        chi2, there, _ = solved
+        push = thrust_of(there, fit.thrust, fit.components)
+        try:
+            moved = at_epoch(there, epoch_d, fit.orbit.epoch_tdb_d, push, fit.orbit.forces)
+        except PropagationError:
+            return None
+        return chi2, moved
 
 
 def _solved(white: Floats, miss: Floats, damping: float) -> Floats:
