@@ -93,6 +93,8 @@ from ngbound.report import (
 )
 from ngbound.rounding import up
 
+MOST_SCANS = 3
+"""Scans that may each lead to a better orbit."""
 FIGURE_ENDINGS = (".png", ".pdf", ".svg")
 
 
@@ -333,9 +335,21 @@ def fit_both(case: Case, arc: Arc, step: "Steps") -> "Fits":
 def lowest(fit: Fit, bar: "StepBar", common: dict[str, Any]) -> tuple[Fit, MinimaScan]:
     """The fit of the lowest minimum of chi2, and the scan that looked for others."""
     scan = scan_minima(fit, progress=bar.say)
-    if not scan.fit_is_best:
+    for _ in range(MOST_SCANS):
+        if scan.fit_is_best:
+            break
         better = scan.orbit(scan.best)
-        fit = fit_orbit(fit.arc, thrust=fit.thrust, initial=better, keep=fit.keep, **common)
+        try:
+            fit = fit_orbit(fit.arc, thrust=fit.thrust, initial=better, keep=fit.keep, **common)
+        except FitError as error:
+            warnings.warn(
+                f"A better orbit was found, with chi2 {scan.best.chi2:.1f} instead of "
+                f"{fit.chi2:.1f}, but no fit settles there: {error}",
+                NgboundWarning,
+                stacklevel=2,
+            )
+            break
+        scan = scan_minima(fit, progress=bar.say)
     return fit, scan
 
 

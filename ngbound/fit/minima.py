@@ -71,9 +71,13 @@ THRUST_AU_D2 = 5e-9
 more. Comets have up to some 1e-8 (from memory)."""
 LOOSE = np.array([1.0, 1.0, 3.0, 0.1, 0.1, 0.03])
 """rad, rad, 1, rad/d, rad/d, au/d: only keeps the covariance of a lone night finite."""
-SWEEPS = 40
+SWEEPS = 60
 SETTLED = 0.02
+LATE, SLOW = 15, 2.0
+"""An orbit that the last so many sweeps improved by less in chi2 counts as a minimum."""
 SAME_SIGMA = 0.5
+APART = 0.25
+"""Revolutions over the arc by which minima differ; what is nearer is the slope of one valley."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -83,7 +87,8 @@ class Minimum:
     Attributes
     ----------
     theta : (p,) state at the epoch of the fit, then the thrust
-    chi2 : of the records that the fit kept, with its errors
+    chi2 : of the records that the fit kept, with its errors; where the valley is narrow and bent,
+        up to about 2 above its very floor
     period_d : osculating period at that epoch; nan for an open orbit
     distance_sigma : from the fit, in its own standard errors
     """
@@ -220,7 +225,7 @@ def scan_minima(fit: Fit, progress: Callable[[str], None] | None = None) -> Mini
         other = walk.converge(epoch_d, theta)
         if other is not None and all(not _same(fit, other[1], m.theta) for m in minima):
             minima.append(_minimum(fit, other[1], other[0]))
-    minima.sort(key=lambda m: m.chi2)
+    minima = _apart(minima, float(np.ptp(fit.records.tdb_d[fit.keep])))
     return MinimaScan(fit, tuple(minima), len(parts), walk.n_starts, walk.complete)
 
 
@@ -233,7 +238,18 @@ def _minimum(fit: Fit, theta: Floats, chi2: float) -> Minimum:
         fit.orbit.forces,
     )
     period = orbit.elements().period_d
-    return Minimum(theta, chi2, period, float(np.sqrt(max(off @ fit.normal @ off, 0.0))))
+    return Minimum(theta, chi2, period, math.sqrt(max(float(off @ fit.normal @ off), 0.0)))
+
+
+def _apart(minima: list[Minimum], span_d: float) -> list[Minimum]:
+    """By chi2, each with a number of revolutions of its own; the fit itself stays."""
+    out: list[Minimum] = []
+    for m in sorted(minima, key=lambda m: m.chi2):
+        turns = span_d / m.period_d
+        alone = all(abs(turns - span_d / o.period_d) > APART for o in out)
+        if m.distance_sigma == 0.0 or alone or not math.isfinite(turns):
+            out.append(m)
+    return out
 
 
 def _same(fit: Fit, one: Floats, other: Floats) -> bool:
@@ -305,6 +321,7 @@ class _Walk:
     def __init__(self, fit: Fit) -> None:
         self.fit = fit
         self.n_starts = 0
+        self.first = fit.keep
         self.echoes = np.zeros(len(fit.records), dtype=bool)
         if fit.records.echoes is not None:
             self.echoes[fit.records.echoes.rows] = True
@@ -324,6 +341,7 @@ class _Walk:
         fit = self.fit
         epoch_d = float(np.mean(fit.records.tdb_d[parts[first]]))
         start = at_epoch(fit.theta, fit.orbit.epoch_tdb_d, epoch_d, fit.thrust, fit.orbit.forces)
+        self.first = parts[first]
         mask = parts[first].copy()
         rest = [i for i in range(len(parts)) if i != first]
         orbits = [start]
@@ -442,12 +460,13 @@ class _Walk:
         return design_matrix(sight, there, partials), off_rad
 
     def _correct(
-        self, theta: Floats, epoch_d: float, mask: Bools, old: Bools | None, tight: Floats
+        self, theta: Floats, epoch_d: float, mask: Bools, old: Bools, tight: Floats
     ) -> tuple[float, Floats, Floats] | None:
         """chi2, parameters and whitened design with the prior of the thrust (j, p); None if it
         fails."""
         noise = self.fit.noise.mask(mask)
         damping, here, value = 0.0, None, np.inf
+        values: list[float] = []
         trial = theta
         for _ in range(SWEEPS):
             try:
@@ -467,14 +486,15 @@ class _Walk:
                 return None
             else:
                 damping = max(10.0 * damping, 1e-6)
-            step = _solved(white, miss, damping)
-            if np.linalg.norm(white @ step) < SETTLED:
+            if np.linalg.norm(white @ _solved(white, miss, 0.0)) < SETTLED:
                 return value, theta, plain
+            values.append(value)
+            step = _solved(white, miss, damping)
             trial = local.moved(step)
-            if old is not None:
-                aim = here.seen[old[mask]] - here.design[old[mask]] @ (local.jacobian @ step)
-                trial = self._bent(trial, epoch_d, old, aim)
-        return None
+            aim = here.seen[old[mask]] - here.design[old[mask]] @ (local.jacobian @ step)
+            trial = self._bent(trial, epoch_d, old, aim)
+        # the floor of a narrow, bent valley is a minimum for the purpose, however slow the last bit
+        return (value, theta, plain) if values[-LATE] - value < SLOW else None
 
     def _bent(self, theta: Floats, epoch_d: float, old: Bools, aim: Floats) -> Floats:
         """The parameters moved so that the old records have the residuals (m, 2) that linear theory
@@ -496,7 +516,8 @@ class _Walk:
         """The minimum over the whole arc without any prior: chi2, and parameters at the epoch of
         the fit."""
         fit = self.fit
-        solved = self._correct(theta, epoch_d, fit.keep, None, np.zeros((0, theta.size)))
+        free = np.zeros((0, theta.size))
+        solved = self._correct(theta, epoch_d, fit.keep, self.first, free)
         if solved is None:
             return None
         chi2, there, _ = solved
