@@ -61,7 +61,7 @@ def test_thrust_is_set_free_where_gravity_fails():
 def test_degenerate_arcs_are_refused_in_one_sentence():
     rng = np.random.default_rng(1)
     two = simulate(orbit_of(BELT), nights(MJD_2020, 3, 2, 1), rng).arc
-    with pytest.raises(FitError, match="2 usable observations; an orbit needs at least 3"):
+    with pytest.raises(FitError, match="2 usable observations, an orbit needs at least 3"):
         fit_orbit(two)
     three = simulate(orbit_of(BELT), nights(MJD_2020, 0, 1, 3), rng).arc
     with pytest.raises((FitError, FirstOrbitError), match="determine|longer time"):
