@@ -655,7 +655,7 @@ def _in_folder(case: Case, path: Path, base: Path) -> Case:
         update={
             "arc": case.arc.model_copy(update={"file": base / case.arc.file}),
             "errors": case.errors.in_folder(base),
-            "output": case.output.model_copy(update={"folder": base / folder}),
+            "output": case.output.model_copy(update={"folder": (base / folder).resolve()}),
         }
     )
 

@@ -37,6 +37,7 @@ from ngbound.arc.radar_centre import RADIUS_FRACTION, radius_error, referred_to_
 from ngbound.arc.shared_errors import Modes, SharedErrors, joined
 from ngbound.constants import ARCSEC_RAD
 from ngbound.errors import ArcError, CaseError
+from ngbound.rounding import counted
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
@@ -410,7 +411,10 @@ class Noise:
 
     def __str__(self) -> str:
         told = self.to_dict()
-        lines = [f"Errors of {told['n']} observations in {told['n_nights']} station-nights:"]
+        lines = [
+            f"Errors of {counted(told['n'], 'observation')} in "
+            f"{counted(told['n_nights'], 'station-night')}:"
+        ]
         for k, v in told["sources"].items():
             size = (
                 f"{v['median_sigma_ra_arcsec']:.3f} stated sigma"

@@ -37,6 +37,7 @@ from ngbound.arc.stations import Station, station, user_stations
 from ngbound.arc.whole_file import PathLike
 from ngbound.constants import EPHEMERIS_MJD
 from ngbound.errors import ArcError
+from ngbound.rounding import counted
 
 ALWAYS_TEXT = (
     "permID",
@@ -336,11 +337,6 @@ def _context_of(listed: Any) -> Context:
 def _plain(column: pd.Series) -> NDArray[Any]:
     """The values of a column, texts as objects."""
     return column.to_numpy(dtype="object" if pd.api.types.is_string_dtype(column) else None)
-
-
-def counted(number: int, noun: str) -> str:
-    """``1 station``, ``2 stations``."""
-    return f"{number} {noun}" if number == 1 else f"{number} {noun}s"
 
 
 def iso_day(mjd: int) -> str:

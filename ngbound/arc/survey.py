@@ -12,8 +12,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ngbound.arc.errors_model import ErrorModel, station_nights
-from ngbound.arc.observations import Arc, counted, iso_day
+from ngbound.arc.observations import Arc, iso_day
 from ngbound.arc.vetting import Finding, vet
+from ngbound.rounding import counted
 
 LONG_GAP_D = 30.0
 """Gaps of at least this many days are told."""

@@ -12,10 +12,11 @@ from numpy.typing import NDArray
 from ngbound.arc.ades_rules import RADAR
 from ngbound.arc.errors_model import station_nights
 from ngbound.arc.misplaced import misread, second_tracks
-from ngbound.arc.observations import Arc, counted
+from ngbound.arc.observations import Arc
 from ngbound.arc.stations import record_position_km
 from ngbound.arc.time_stamps import time_shifts
 from ngbound.errors import StationError
+from ngbound.rounding import counted
 
 SAME_INSTANT_S = 2.0
 """Two records of one station closer than this are one observation, or a repeated one."""

@@ -8,6 +8,7 @@ W_A; its square is the information on the component, and it is summed over the s
 when the arc earned it.
 """
 
+import math
 from dataclasses import dataclass
 from typing import Any
 
@@ -67,6 +68,7 @@ class Degeneracy:
             row = np.abs(self.correlation.iloc[i].to_numpy())
             element = ELEMENTS[int(np.argmax(row))]
             value = float(self.correlation.iloc[i].to_numpy()[int(np.argmax(row))])
+            digits = 1 + math.ceil(-math.log10(max(1.0 - abs(value), 1e-9)))
             strength = (
                 "is absorbed by"
                 if row.max() > 0.99
@@ -77,7 +79,7 @@ class Degeneracy:
             first, last = self.core_utc[i]
             told.append(
                 f"A {_THRUST[letter]} thrust {strength} {_WORDS[element]} (correlation "
-                f"{value:+.5f}); leaving the orbit free widens its sigma "
+                f"{value:+.{max(2, digits)}f}); leaving the orbit free widens its sigma "
                 f"{self.sigma_growth[i]:.3g}-fold. Half of what separates them comes from "
                 f"{first} to {last}, {100.0 * self.core_share_of_nights[i]:.0f} % of the nights."
             )

@@ -99,8 +99,7 @@ SPEED_LAWS = {
             0.85,
             0.5,
             "A. H. Delsemme 1982, in Comets (Tucson)",
-            "as cited by other codes; used so by A. L. Cochran & D. G. Schleicher 1993 (from "
-            "memory)",
+            "as cited elsewhere; used so by A. L. Cochran & D. G. Schleicher 1993 (from memory)",
         ),
         SpeedLaw("budzien", 0.8, 0.6, "S. A. Budzien et al. 1994, Icarus 107, 164", "from memory"),
         SpeedLaw(
