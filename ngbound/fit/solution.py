@@ -31,7 +31,7 @@ from ngbound.fit.shared_estimates import (
 )
 from ngbound.fit.significance import significance_sigma
 from ngbound.motion import Atlas, Echoes, ForceModel, Neighbourhood, Orbit, Records, Thrust
-from ngbound.rounding import with_error
+from ngbound.rounding import rounded, with_error
 from ngbound.sky import Observers, load_ephemeris, observer_states, reduce_offsets
 
 Floats = NDArray[np.float64]
@@ -41,6 +41,9 @@ MIN_OBSERVATIONS = 3
 WEAK_DISTANCE_ERROR = 0.1
 """Relative error of the distance above which a fit warns that it is only linear theory."""
 HOPELESS_DISTANCE_ERROR = 2.0
+MISFIT = 3.0
+"""chi2 per degree of freedom above which a fit says that it explains nothing, with 4 sigma of its
+own scatter on top."""
 """Relative error of the distance above which there is no orbit to speak of."""
 
 
@@ -229,6 +232,18 @@ class Fit:
             "limits from the exact posterior, or observe longer."
         )
 
+    @property
+    def misfit(self) -> str:
+        """A sentence about an orbit that does not explain its arc; "" for one that does."""
+        reduced = self.chi2 / max(self.dof, 1)
+        if reduced <= MISFIT + 4.0 * np.sqrt(2.0 / max(self.dof, 1)):
+            return ""
+        causes = "the errors are larger than stated, many records are wrong or of another object"
+        return (
+            f"This orbit does not explain the arc: chi2 is {rounded(reduced)} times its degrees of "
+            f"freedom; {causes}{'' if self.components else ', or a thrust is missing'}."
+        )
+
     @cached_property
     def joint(self) -> JointSolution:
         """Parameters and shared errors solved together."""
@@ -363,6 +378,7 @@ class Fit:
             "condition": self.correction.condition,
             "distance_error": self.distance_error,
             "weakness": self.weakness,
+            "misfit": self.misfit,
             "catalogue_treatments": self.catalogue_treatments,
             "noise_dof": self.noise_dof,
             "station_scales": [scale.to_dict() for scale in self.scales],
@@ -384,8 +400,7 @@ class Fit:
             lines.append(
                 f"  A_{c} (A{'RTN'.index(c) + 1}) = {with_error(a, s)} au/d2 ({a / s:+.1f} sigma)"
             )
-        if self.weakness:
-            lines.append("  " + self.weakness)
+        lines += [f"  {said}" for said in (self.weakness, self.misfit) if said]
         lines.append(str(self.orbit.elements()))
         return "\n".join(lines)
 

@@ -52,6 +52,14 @@ def test_a_quiet_arc_shows_no_thrust():
     assert "favours gravity alone" in str(told)
 
 
+def test_an_orbit_that_does_not_explain_the_arc_says_so():
+    truth = simulate(orbit_of(NEAR_EARTH), WHEN, np.random.default_rng(4), outliers=0.3)
+    whole = fit_orbit(truth.arc, initial=truth.orbit, reject=False)
+    assert "does not explain the arc" in whole.misfit and whole.misfit in str(whole)
+    assert whole.to_dict()["misfit"] == whole.misfit
+    assert fit_orbit(truth.arc, initial=truth.orbit).misfit == ""
+
+
 def test_some_components_only(pushed):
     truth, null, push = pushed
     fit = fit_orbit(truth.arc, Thrust("inverse-square", components="T"), initial=null)
