@@ -14,7 +14,13 @@ in the logarithms:
 
 Quantities that are not quoted are eliminated: a set of relations whose unquoted quantities cancel
 is one test. A test holds if the two sides agree within the rounding of the digits written
-(`written`). If a usual slip would hold as well, the digits cannot tell. If a test fails, the
+(`written`). A bound ("> 5 km") is held to its side only: what the other numbers give must lie on
+the side it allows. Where two bounds in one test pull opposite ways, one follows from the other (a
+limit on the thrust and the lower bound on the mass, and on the diameter), and they are compared at
+their edges. Where they pull the same way neither follows from the other, although both may be true:
+edges that agree are then doubted (a lower bound on the mass "from" an upper limit on the rate).
+
+If a usual slip would hold as well, the digits cannot tell. If a test fails, the
 smallest sets of quoted numbers are sought whose change makes all the rest agree, with the value
 each would need, and the usual slips that would do it.
 """
@@ -97,7 +103,11 @@ class RelationTest:
     ratio : float
         Left side over right side; 1 if they agree.
     low, high : float
-        Ratios that the digits (and quoted errors) allow.
+        Ratios that the digits (and quoted errors) allow, bounds taken at their edges.
+    bound : {-1, 0, 1}
+        Bounds quoted allow the ratio to lie anywhere above (-1) or below (1); 0 neither.
+    bounds : tuple of str
+        The quantities in it that were quoted as bounds.
     """
 
     relations: tuple[str, ...]
@@ -105,6 +115,8 @@ class RelationTest:
     ratio: float
     low: float
     high: float
+    bound: int = 0
+    bounds: tuple[str, ...] = ()
 
     @property
     def quantities(self) -> tuple[str, ...]:
@@ -126,15 +138,36 @@ class RelationTest:
         return f"{left} against {right or 'a constant'}"
 
     @property
+    def lowest(self) -> float | None:
+        """Lowest ratio allowed; None where a bound leaves it open."""
+        return None if self.bound > 0 else self.low
+
+    @property
+    def highest(self) -> float | None:
+        """Highest ratio allowed; None where a bound leaves it open."""
+        return None if self.bound < 0 else self.high
+
+    @property
     def holds(self) -> bool:
-        """True if the two sides agree within the digits quoted."""
-        return self.low <= self.ratio <= self.high
+        """True if the two sides agree within the digits quoted, or a bound has its side."""
+        return (self.lowest or 0.0) <= self.ratio <= (self.highest or math.inf)
+
+    @property
+    def slack(self) -> bool:
+        """True if it holds only because a bound is one: at its edge the sides disagree."""
+        return self.holds and not self.low <= self.ratio <= self.high
 
     def __str__(self) -> str:
+        allowed = f"{number_text(self.low)} to {number_text(self.high)}"
+        source = "the digits quoted"
+        if self.bound:
+            edge = f"most {number_text(self.high)}"
+            allowed = f"at {edge if self.bound > 0 else f'least {number_text(self.low)}'}"
+            source += f" and the bound on {' and '.join(map(_label, self.bounds))}"
         return (
             f"{'holds' if self.holds else 'FAILS'}: {self.formula} ({', '.join(self.relations)}): "
-            f"the two sides are in the ratio {number_text(self.ratio)}, and the digits quoted "
-            f"allow {number_text(self.low)} to {number_text(self.high)}"
+            f"the two sides are in the ratio {number_text(self.ratio)}, and {source} "
+            f"allow {allowed}"
         )
 
     def to_dict(self) -> dict[str, Any]:
@@ -144,7 +177,8 @@ class RelationTest:
             "quantities": list(self.quantities),
             "formula": self.formula,
             "ratio": self.ratio,
-            "allowed": [self.low, self.high],
+            "allowed": [self.lowest, self.highest],
+            "bounds": list(self.bounds),
             "holds": self.holds,
         }
 
@@ -218,7 +252,7 @@ class NumberAudit:
     changes : tuple of Change
         If a test fails: best explanation first.
     doubts : tuple of str
-        If all hold: usual slips under which all would hold as well.
+        If all hold: usual slips under which all would hold as well (at the edges of bounds).
     untested : tuple of str
         Quoted numbers that entered no test.
     exact : tuple of str
@@ -272,7 +306,13 @@ class NumberAudit:
         """The tests as a table."""
         return pd.DataFrame(
             [
-                (t.formula, t.ratio, t.low, t.high, "holds" if t.holds else "FAILS")
+                (
+                    t.formula,
+                    t.ratio,
+                    0.0 if t.lowest is None else t.lowest,
+                    math.inf if t.highest is None else t.highest,
+                    "holds" if t.holds else "FAILS",
+                )
                 for t in self.tests
             ],
             columns=["relation", "ratio", "lowest allowed", "highest allowed", "verdict"],
@@ -343,8 +383,8 @@ def audit_numbers(
         "+-" given. Numbers given as text carry the rounding of their last digit; floats
         and Quantities are taken as exact.
     **quoted
-        Keys of `UNITS`: a number in the default unit, a Quantity, or text such as "4.92e-6 m/s2",
-        "> 500 m". A limit counts as its edge.
+        Keys of `UNITS`: a number in the default unit, a Quantity, or text such as "4.92e-6 m/s2".
+        "> 500 m" is a bound: it agrees with all that lies on its side.
 
     Raises
     ------
@@ -378,7 +418,9 @@ def audit_numbers(
     if law is not None and not 0 < law < math.inf:
         raise MassError(f"g_at_r = {g_at_r!r} must be positive: the thrust is off there.")
     r_au = math.exp(written["at"].log) if at is not None else None
-    setting = Setting(r_au, law or (None if r_au is None else r_au**-2), level)
+    albedo = math.exp(written["albedo"].log) if "albedo" in written else None
+    g = law or (None if r_au is None else r_au**-2)
+    setting = Setting(r_au, g, level, species, albedo)
     web = _Web(_relations(law, at is not None, species, level), written, share)
     tests = web.tests()
     tested = {name for test in tests for name in test.quantities}
@@ -398,7 +440,7 @@ def audit_numbers(
     if not tests:
         return NumberAudit("untestable", **common)
     if all(test.holds for test in tests):
-        doubts = _doubts(web, [name for name in written if name in tested], setting)
+        doubts = _doubts(web, tests, setting)
         verdict = "cannot tell" if doubts else "sound in part" if untested else "sound"
         return NumberAudit(verdict, **common, doubts=doubts)
     changes = web.changes(setting)
@@ -406,13 +448,23 @@ def audit_numbers(
     return NumberAudit("slip" if slip else "inconsistent", **common, changes=changes)
 
 
-def _doubts(web: "_Web", names: list[str], setting: Setting) -> tuple[str, ...]:
-    """Usual slips under which every test would hold as well, each with the numbers it may be in."""
+def _doubts(web: "_Web", tests: tuple[RelationTest, ...], setting: Setting) -> tuple[str, ...]:
+    """Usual slips under which every test would hold as well, each with the numbers it may be in;
+    numbers that bounds alone are held to stay out."""
+    tight = {name for test in tests if not test.slack for name in test.quantities}
     owners: dict[str, list[str]] = {}
-    for name in names:
+    for name in (n for n in web.written if n in tight):
         for _, words in web.fitting((name,), setting):
             owners.setdefault(words, []).append(_label(name))
-    return tuple(f"{words} ({' or '.join(found)})" for words, found in owners.items())
+    told = [f"{words} ({' or '.join(found)})" for words, found in owners.items()]
+    told += [
+        f"bounds taken from one another that point the wrong way ({' and '.join(names)})"
+        for names in dict.fromkeys(
+            tuple(map(_label, t.bounds)) for t in tests if t.bound and not t.slack
+        )
+        if len(names) > 1
+    ]
+    return tuple(told)
 
 
 def _option(name: str, spec: Any) -> float:
@@ -554,12 +606,16 @@ class _Web:
         below, above = spread_allowed(
             [(p, self.written[n]) for n, p in powers.items()], self.tolerance
         )
+        bounds = tuple(n for n in powers if self.written[n].bound)
+        pulls = {int(math.copysign(1, powers[n])) * self.written[n].bound for n in bounds}
         return RelationTest(
             tuple(r.name for r in subset),
             powers,
             _exp(off),
             _exp(-below),
             _exp(above),
+            pulls.pop() if len(pulls) == 1 else 0,
+            bounds,
         )
 
     def fitting(
@@ -578,6 +634,9 @@ class _Web:
             lists.append(known + (powers_of_ten(known) if tens else []))
         powers = np.array([[t.powers.get(n, 0.0) for n in names] for t in tests])
         off, low, high = (np.log([getattr(t, k) for t in tests]) for k in ("ratio", "low", "high"))
+        # a slip must explain the numbers at the edges of bounds, unless they were far from them
+        low[[t.slack and t.bound > 0 for t in tests]] = -math.inf
+        high[[t.slack and t.bound < 0 for t in tests]] = math.inf
         found: dict[str, float] = {}
         for combined in itertools.product(*lists):
             left = off - powers @ np.log([factor for factor, _ in combined])

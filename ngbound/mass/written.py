@@ -4,7 +4,8 @@ May import: errors, and from its own room distributions and outgassing.
 
 Rounding is the interval of half a unit of the last digit written, no more. Zeros that end a whole
 number without a point are not counted as digits ("500" is one digit, "500." and "5.00e2" three).
-Numbers not given as text are taken as exact.
+Numbers not given as text are taken as exact. A bound may have been rounded to its safe side, so its
+rounding reaches a whole unit there ("> 5 km" may stand for more than 5.9 km).
 """
 
 import math
@@ -42,6 +43,8 @@ class Written:
         Quoted error, one standard deviation.
     exact : bool
         It was not given as text, nor with an error: it carries no rounding.
+    bound : {-1, 0, 1}
+        The true logarithm lies at or below it (-1), at or above it (1), or is it (0).
     """
 
     log: float
@@ -49,6 +52,7 @@ class Written:
     up: float
     sigma: float
     exact: bool
+    bound: int = 0
 
 
 def half_unit(spec: Any) -> tuple[float, float]:
@@ -88,7 +92,8 @@ def read_written(name: str, spec: Any, default: u.UnitBase, inside: u.UnitBase) 
     name : str
         What it is, for messages.
     spec : number, Quantity, mapping or text
-        As `parse_distribution`, and with a sign such as ">" or "~" before it, which counts as "=".
+        As `parse_distribution`, and with ">", ">=", "<" or "<=" before it, which makes it a bound,
+        or "~", which counts as "=".
     default, inside : Unit
         Of a bare number, and of the result.
 
@@ -97,8 +102,12 @@ def read_written(name: str, spec: Any, default: u.UnitBase, inside: u.UnitBase) 
     CaseError
     """
     magnitude = inside == u.mag
-    text = re.sub(r"^\s*[<>~≤≥≈]+\s*=?\s*", "", spec) if isinstance(spec, str) else spec
+    sign = re.match(r"\s*([<>~≤≥≲≳≈]*)\s*=?\s*", spec) if isinstance(spec, str) else None
+    text = spec[sign.end() :] if sign is not None else spec
     found, unit = parse_distribution(text, name, lower=-math.inf if magnitude else 0.0)
+    bound = -1 if isinstance(found, AtMost) else 0
+    if sign is not None and sign[1]:
+        bound = bool(re.search("[>≥≳]", sign[1])) - bool(re.search("[<≤≲]", sign[1]))
     factor = unit_factor(name, unit, default, inside)
     middle = found.limit if isinstance(found, AtMost) else found.median
     half = half_unit(spec)[0] if magnitude else written_rounding(spec)
@@ -117,6 +126,11 @@ def read_written(name: str, spec: Any, default: u.UnitBase, inside: u.UnitBase) 
             )
         log, scale = math.log(value), 1.0 / middle
         down, up = -math.log1p(-half), math.log1p(half)
+    bound = -bound if magnitude else bound
+    if bound < 0:
+        down = 2.0 * down if magnitude else -math.log1p(-2.0 * half)
+    elif bound > 0:
+        up = 2.0 * up if magnitude else math.log1p(2.0 * half)
     sigma = 0.0
     if isinstance(found, Normal):
         sigma = found.sigma * scale
@@ -125,7 +139,7 @@ def read_written(name: str, spec: Any, default: u.UnitBase, inside: u.UnitBase) 
     elif not isinstance(found, Fixed | AtMost):
         down, up = _reach(found, middle, magnitude, scale)
     exact = not isinstance(spec, str) and sigma == 0.0 and down == up == 0.0
-    return Written(log, down, up, min(sigma, 100.0), exact)
+    return Written(log, down, up, min(sigma, 100.0), exact, bound)
 
 
 def _reach(

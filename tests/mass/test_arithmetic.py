@@ -108,6 +108,20 @@ def test_sound_papers_are_called_sound(paper):
         (DISTANT, {"gravity_fraction": "1.88e-7"}, "gravity_fraction", "gravity at 1 au"),
         (DISTANT, {"rate": "1.66e4 molecules/s"}, "rate", "moles"),
         (LIMIT, {"albedo": "4.0"}, "albedo", "per cent"),
+        (LIMIT, {"H": "19.51"}, "absolute_magnitude", "photometric size"),
+        (LIMIT, {"confidence": 0.9973}, "acceleration", "2 sigma quoted as a limit of 99.73 %"),
+        (COMET, {"species": "CO"}, "rate", "molecules of CO given the mass of H2O"),
+        (COMET, {"acceleration": "1.908e-3 au/d2"}, "acceleration", "au/d2 and au/yr2"),
+        (INTERSTELLAR, {"mass_loss": "311 kg/s"}, "mass_loss", "t/d and kg/s"),
+        (DISTANT, {"velocity_change": "3.51e-2 m / (s d)"}, "velocity_change", "per year"),
+        (DISTANT, {"velocity_change": "4.01e-6 m / (s d)"}, "velocity_change", "per hour"),
+        # 1329 km / 0.04 at H = 18.00 is 8345 m
+        (
+            {"H": "18.00", "albedo": "0.040", "diameter": "8345 m"},
+            {},
+            "diameter",
+            "square root of the albedo was left out",
+        ),
     ],
 )
 def test_planted_slips_are_named(paper, planted, quantity, words):
@@ -145,6 +159,73 @@ def test_limits_and_quantities_are_read():
     found = audit_numbers(mass="> 5.24e8 kg", density=1 * u.g / u.cm**3, diameter=100.0)
     assert found.verdict == "sound"
     assert found.quoted["density"] == pytest.approx(1000)
+
+
+SPHERE = {"density": "1000. kg/m3", "diameter": "100.0 m"}
+"""5.236e8 kg."""
+
+
+@pytest.mark.parametrize(
+    ("mass", "holds"),
+    [
+        ("5.24e8 kg", True),
+        ("> 5.24e8 kg", True),
+        ("> 5.0e6 kg", True),
+        ("≥ 5.0e6 kg", True),
+        ("< 5.0e6 kg", False),
+        ("< 5.0e10 kg", True),
+        ("> 5.0e10 kg", False),
+        ("~ 5.0e10 kg", False),
+        ({"limit": 5.0e10}, True),
+        # rounded to the safe side, by nearly a unit, and to the other
+        ("> 4e8 kg", True),
+        ("> 4.5e8 kg", True),
+        ("> 5.7e8 kg", False),
+        ("< 4.7e8 kg", False),
+    ],
+)
+def test_a_bound_agrees_with_all_that_lies_on_its_side(mass, holds):
+    found = audit_numbers(**SPHERE, mass=mass)
+    assert found.tests[0].holds is holds, str(found)
+    assert (found.verdict == "sound") is holds and not found.doubts
+    json.dumps(found.to_dict(), allow_nan=False)
+    if mass != "5.24e8 kg" and "~" not in mass:
+        words = str(found)
+        assert "the bound on mass allow at " in words, words
+        below = "<" not in mass and "limit" not in mass
+        assert (found.tests[0].lowest is None) is below
+
+
+def test_a_bound_on_the_other_side_of_the_relation():
+    # 5.236e8 kg in a body under 200 m, and not in one over 200 m or under 50 m
+    for diameter, holds in (("< 200. m", True), ("> 200. m", False), ("< 50. m", False)):
+        found = audit_numbers(mass="5.236e8 kg", density="1000. kg/m3", diameter=diameter)
+        assert (found.verdict == "sound") is holds, str(found)
+    # 100 m at p = 0.1 is H = 23.12; a fainter body is smaller
+    for size, holds in (("> 21.0", True), ("< 25.0", True), ("> 25.0", False), ("< 21.0", False)):
+        found = audit_numbers(H=size, albedo="0.100", diameter="100.0 m")
+        assert (found.verdict == "sound") is holds, str(found)
+
+
+def test_a_bound_that_follows_from_another_is_held_to_its_edge():
+    # a limit on the thrust makes a lower mass, and that a lower diameter
+    limit = {"acceleration": "< 1.43e-8 au/d2", "mass": "> 6.96e10 kg", "diameter": "> 643 m"}
+    found = audit_numbers(**{**COMET, **limit})
+    assert found.verdict == "sound in part", str(found)
+    planted = audit_numbers(**{**COMET, **limit, "diameter": "> 322 m"})
+    assert planted.verdict == "slip" and planted.tied[0].quantities == ("diameter",)
+    assert "radius and diameter" in planted.tied[0].slips[0]
+
+
+def test_a_lower_mass_does_not_follow_from_an_upper_limit_on_the_rate():
+    wrong = audit_numbers(**{**COMET, "rate": "< 1.00e27 1/s", "mass": "> 6.96e10 kg"})
+    assert wrong.verdict == "cannot tell", str(wrong)
+    assert any("point the wrong way" in doubt for doubt in wrong.doubts)
+    # an upper mass does
+    upper = audit_numbers(
+        **{**COMET, "rate": "< 1.00e27 1/s", "mass": "< 6.96e10 kg", "diameter": "< 643 m"}
+    )
+    assert upper.verdict == "sound in part", str(upper)
 
 
 def test_rounding_is_forgiven_only_as_far_as_the_digits_go():
