@@ -1,7 +1,7 @@
 """What could reconcile two results about one object: one function an explanation.
 
-May import: constants, errors, motion, sky, and from its own room outgassing, size, results,
-thrust_history.
+May import: constants, errors, motion, rounding, sky, and from its own room distributions,
+outgassing, size, results and thrust_history.
 
 Each function scans one free quantity, keeps the values at which one thrust fits the results (chi2
 above their own best fits within the chosen quantile, else within three sigma; the free quantity
@@ -24,6 +24,7 @@ from scipy.stats import chi2, ncx2, norm
 from ngbound.constants import AU_D2_TO_M_S2, DAY_S
 from ngbound.motion import LAWS
 from ngbound.motion import Thrust as LawThrust
+from ngbound.rounding import up
 from ngbound.sky import tdb_d_to_iso
 
 from .distributions import AtMost, number_text
@@ -52,11 +53,11 @@ RATE_ERROR = 0.2
 """Relative error of a measured rate that was quoted without one."""
 
 
-def percent(share: float) -> str:
-    """A share as a percentage, in words where it is next to none."""
+def percent(share: float, text: Callable[[float], str] = "{:.2g}".format) -> str:
+    """A share as a percentage, in words where it is next to none or all."""
     if share > 0.995:
         return "nearly all"
-    return "under 0.01 %" if share < 1e-4 else f"{100 * share:.2g} %"
+    return "under 0.01 %" if share < 1e-4 else f"{text(100 * share)} %"
 
 
 def short(value: float) -> str:
@@ -769,7 +770,8 @@ def mass_change(pair: Pair, scan: Scan) -> Explanation:
             probability,
         )
     loss = max(1.0 - top, 0.0)
-    lost = f"the object would have had to lose at least {100 * loss:.0f} % of its mass"
+    least = math.floor(100 * loss + 1e-9)
+    lost = f"the object would have had to lose at least {least} % of its mass"
     if pair.quiet_is_earlier is None:
         return Explanation(
             "mass",
@@ -791,7 +793,8 @@ def mass_change(pair: Pair, scan: Scan) -> Explanation:
     per_impulse, ground = _loss_per_impulse(pair.active, pair.rng)
     can = float(np.quantile(speed * per_impulse, pair.level))
     masses = pair.active.mass
-    if masses is not None and pair.active.outgassing is not None:
+    # an upper bound on the mass tells nothing of how little of it was lost
+    if masses is not None and pair.active.mass_bound >= 0 and pair.active.outgassing is not None:
         draws = pair.active.outgassing.draw(pair.rng, N_DRAWS, "limit").mass_loss_kg_s
         share = _per_species(pair.active, draws) * g
         # the mass quoted is what is left: the ratio before to after is 1 + loss / rest
@@ -808,7 +811,7 @@ def mass_change(pair: Pair, scan: Scan) -> Explanation:
     }
     sentence = (
         f"{lost} in {days:.0f} d; steady loss ({ground}, at the mean g of the two arcs) removes up "
-        f"to {percent(1 - math.exp(-can))}"
+        f"to {percent(-math.expm1(-can), up)}"
     )
     if verdict != POSSIBLE:
         sentence += "; only a splitting could"
@@ -923,6 +926,16 @@ def collimation(pair: Pair, scan: Scan) -> Explanation:
     )
 
 
+def _density_text(bottom: float, top: float) -> str:
+    if bottom > 0 and math.isfinite(top):
+        return f"need {number_text(bottom)} to {number_text(top)} kg/m3"
+    if bottom > 0:
+        return f"need above {number_text(bottom)} kg/m3"
+    if math.isfinite(top):
+        return f"need below {number_text(top)} kg/m3"
+    return "are bounds that leave it open"
+
+
 def density(
     results: tuple[ThrustResult, ...], rng: np.random.Generator, level: float
 ) -> Explanation:
@@ -952,13 +965,15 @@ def density(
             assert other.diameter is not None
             needed = draws / sphere_mass_kg(other.diameter.draw(rng, N_DRAWS), 1.0)
             edges = np.quantile(needed, [0.5 - level / 2, 0.5 + level / 2])
-            open_ended = owner.mass is None and not owner.is_detection
-            low, high = max(low, float(edges[0])), min(high, np.inf if open_ended else edges[1])
+            undetected = owner.mass is None and not owner.is_detection
+            no_top = undetected or owner.mass_bound > 0 or other.diameter_bound < 0
+            no_bottom = owner.mass_bound < 0 or other.diameter_bound > 0
+            bottom = 0.0 if no_bottom else float(edges[0])
+            top = math.inf if no_top else float(edges[1])
+            low, high = max(low, bottom), min(high, top)
             told.append(
-                f"the mass of {owner.name!r} and the diameter of {other.name!r} need "
-                f"{'above ' if open_ended else ''}{number_text(float(edges[0]))}"
-                + ("" if open_ended else f" to {number_text(float(edges[1]))}")
-                + " kg/m3"
+                f"the mass of {owner.name!r} and the diameter of {other.name!r} "
+                f"{_density_text(bottom, top)}"
             )
     grid = np.geomspace(DENSITIES.low_edge / 10, DENSITIES.high_edge * 10, 600)
     good = grid[(grid >= low) & (grid <= high)]

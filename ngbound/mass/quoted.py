@@ -11,7 +11,7 @@ For `audit` (every table but one of numbers and threshold may be left out):
     rate = "1.00e27 molecules/s"
     speed = "0.80 km/s"
     collimation = "0.50"
-    mass = "4.0e10 kg"
+    mass = "4.0e10 kg"              # "> 4.0e10 kg" is a bound: it is held to its side
     [threshold]
     value = "2.1e-9 au/d2"
     component = "R"                 # R, T, N or any
@@ -105,8 +105,8 @@ class QuotedResult(LawTable):
     dates: tuple[str, str] | None = Field(default=None, description="First and last, TDB.")
     r_au: tuple[Positive, ...] = Field(default=(), description="Distances along the arc, in order.")
     outgassing: dict[str, Any] | None = None
-    mass: Spec | None = None
-    diameter: Spec | None = None
+    mass: Spec | None = Field(default=None, description='"> 1e12 kg" is a bound.')
+    diameter: Spec | None = Field(default=None, description='"< 2 km" is a bound.')
 
     @model_validator(mode="after")
     def _one_kind(self) -> Self:

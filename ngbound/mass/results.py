@@ -1,7 +1,7 @@
 """One result about the thrust of an object: a fitted arc or quoted numbers, and what goes with it.
 
 May import: constants, errors, toml_file, arc, sky, motion, fit, limits, and from its own room
-distributions, outgassing, quoted and thrust_history.
+distributions, outgassing, quoted, thrust_history and written.
 """
 
 import math
@@ -23,10 +23,11 @@ from ngbound.limits import noncentrality
 from ngbound.sky import parse_time, tdb_d_to_iso
 from ngbound.toml_file import shown
 
-from .distributions import Distribution, number_text, parse_distribution
+from .distributions import AtMost, Distribution, Fixed, number_text, parse_distribution
 from .outgassing import Outgassing
 from .quoted import QuotedResult, amount_au_d2, error_model, read_table, size_au_d2
 from .thrust_history import ArcResponse, QuotedResponse, Response, law_history
+from .written import without_sign
 
 THREE_SIGMA = 0.0027
 AXES = "RTN"
@@ -45,7 +46,9 @@ class ThrustResult:
     outgassing : Outgassing or None
         Measured at its epoch.
     mass, diameter : Distribution or None
-        kg, m.
+        kg, m; of a bound, its edge.
+    mass_bound, diameter_bound : {-1, 0, 1}
+        Whether it is an upper (-1) or a lower (1) bound.
     """
 
     name: str
@@ -54,6 +57,8 @@ class ThrustResult:
     outgassing: Outgassing | None = None
     mass: Distribution | None = None
     diameter: Distribution | None = None
+    mass_bound: int = 0
+    diameter_bound: int = 0
     assumed: tuple[str, ...] = field(default=())
 
     @classmethod
@@ -71,8 +76,8 @@ class ThrustResult:
             "arc",
             ArcResponse.of(fit),
             outgassing,
-            _sized(mass, "mass", u.kg),
-            _sized(diameter, "diameter", u.m),
+            **_sized(mass, "mass", u.kg),
+            **_sized(diameter, "diameter", u.m),
         )
 
     @classmethod
@@ -87,13 +92,17 @@ class ThrustResult:
         if not isinstance(table, QuotedResult):
             table = read_table(table, QuotedResult)[0]
         budget = None if table.outgassing is None else Outgassing.from_dict(table.outgassing)
-        extras = (budget, _sized(table.mass, "mass", u.kg), _sized(table.diameter, "diameter", u.m))
+        extras: dict[str, Any] = {
+            "outgassing": budget,
+            **_sized(table.mass, "mass", u.kg),
+            **_sized(table.diameter, "diameter", u.m),
+        }
         if table.file is not None:
             arc = read_arc((folder or Path()) / table.file, object=table.object)
             if progress:
                 progress(f"fitting {table.name}")
             fit = fit_orbit(arc, table.thrust(), error_model(table.errors), progress=progress)
-            return cls(table.name, "arc", ArcResponse.of(fit), *extras)
+            return cls(table.name, "arc", ArcResponse.of(fit), **extras)
         amounts, matrix, allowed, kind, assumed = _numbers(table)
         first, last = (
             tuple(float(parse_time(date, "tdb")) for date in table.dates)
@@ -112,7 +121,7 @@ class ThrustResult:
             matrix,
             allowed,
         )
-        return cls(table.name, kind, response, *extras, assumed=assumed)
+        return cls(table.name, kind, response, **extras, assumed=assumed)
 
     @property
     def amounts_au_d2(self) -> np.ndarray:
@@ -193,16 +202,23 @@ class ThrustResult:
             "outgassing": None if self.outgassing is None else self.outgassing.to_dict(),
             "mass_kg": None if self.mass is None else self.mass.to_dict(),
             "diameter_m": None if self.diameter is None else self.diameter.to_dict(),
+            "mass_bound": self.mass_bound,
+            "diameter_bound": self.diameter_bound,
             "assumed": list(self.assumed),
         }
 
 
-def _sized(spec: Any, name: str, unit: u.UnitBase) -> Distribution | None:
+def _sized(spec: Any, name: str, unit: u.UnitBase) -> dict[str, Any]:
+    """A mass or diameter and whether it is a bound, as fields of a `ThrustResult`."""
     if spec is None:
-        return None
-    found, text = parse_distribution(spec, name, lower=0.0)
+        return {}
+    plain, bound = without_sign(spec)
+    found, text = parse_distribution(plain, name, lower=0.0)
+    if isinstance(found, AtMost):
+        found, bound = Fixed(found.limit), -1
     try:
-        return found.scaled(float((u.Unit(text) if text else unit).to(unit)))
+        factor = float((u.Unit(text) if text else unit).to(unit))
+        return {name: found.scaled(factor), f"{name}_bound": bound}
     except (ValueError, TypeError, u.UnitConversionError) as error:
         raise CaseError(
             f"{name} has the unit {text!r}, which is no unit of it; use for instance {unit}."

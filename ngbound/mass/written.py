@@ -84,6 +84,16 @@ def rounding(spec: Any) -> Written:
     return Written(0.0, -math.log1p(-half), math.log1p(half), 0.0, not isinstance(spec, str))
 
 
+def without_sign(spec: Any) -> tuple[Any, int]:
+    """A spec without the "<", ">=" or "~" before it, and which bound that makes it: -1 an upper, 1
+    a lower one, 0 none."""
+    sign = re.match(r"\s*([<>~≤≥≲≳≈]*)\s*=?\s*", spec) if isinstance(spec, str) else None
+    if sign is None:
+        return spec, 0
+    bound = bool(re.search("[>≥≳]", sign[1])) - bool(re.search("[<≤≲]", sign[1]))
+    return spec[sign.end() :], bound
+
+
 def read_written(name: str, spec: Any, default: u.UnitBase, inside: u.UnitBase) -> Written:
     """Read a quoted number.
 
@@ -102,12 +112,10 @@ def read_written(name: str, spec: Any, default: u.UnitBase, inside: u.UnitBase) 
     CaseError
     """
     magnitude = inside == u.mag
-    sign = re.match(r"\s*([<>~≤≥≲≳≈]*)\s*=?\s*", spec) if isinstance(spec, str) else None
-    text = spec[sign.end() :] if sign is not None else spec
+    text, bound = without_sign(spec)
     found, unit = parse_distribution(text, name, lower=-math.inf if magnitude else 0.0)
-    bound = -1 if isinstance(found, AtMost) else 0
-    if sign is not None and sign[1]:
-        bound = bool(re.search("[>≥≳]", sign[1])) - bool(re.search("[<≤≲]", sign[1]))
+    if isinstance(found, AtMost):
+        bound = -1
     factor = unit_factor(name, unit, default, inside)
     middle = found.limit if isinstance(found, AtMost) else found.median
     half = half_unit(spec)[0] if magnitude else written_rounding(spec)

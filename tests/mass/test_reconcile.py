@@ -191,6 +191,34 @@ def test_density_that_makes_mass_and_size_agree():
     assert found.verdict("density") == "possible"
 
 
+@pytest.mark.parametrize(
+    ("mass", "diameter", "edges", "verdict", "words"),
+    [
+        # 2e11 kg in a sphere of 800 m: 746 kg/m3; of 300 m: 14147 kg/m3; of 2 km: 47.7 kg/m3
+        ("> 2.0e11 kg", "800 m", (746, None), "possible", "need above 746 kg/m3"),
+        ("< 2.0e11 kg", "800 m", (0, 746), "possible", "need below 746 kg/m3"),
+        ("2.0e11 kg", "< 800 m", (746, None), "possible", "need above 746 kg/m3"),
+        ("2.0e11 kg", "> 800 m", (0, 746), "possible", "need below 746 kg/m3"),
+        ("> 2.0e11 kg", "< 300 m", (14147, None), "excluded", "need above"),
+        ("2.0e11 kg", "≥ 2 km", (0, 47.7), "excluded", "need below"),
+        ("< 2.0e11 kg", "< 800 m", (0, None), "possible", "leave it open"),
+        ({"limit": 2.0e11, "unit": "kg"}, "800 m", (0, 746), "possible", "need below"),
+    ],
+)
+def test_bounds_on_mass_and_size_bound_the_density_on_one_side(
+    mass, diameter, edges, verdict, words
+):
+    found = reconcile(
+        {**LATE, "name": "heavy", "mass": mass},
+        {**LATE, "name": "seen", "A": "(1.1 +- 0.1)e-8", "diameter": diameter},
+    )
+    low, high = found["density"].needed["density_kg_m3"]
+    assert low == pytest.approx(edges[0], rel=0.01)
+    assert high == (edges[1] if edges[1] is None else pytest.approx(edges[1], rel=0.01))
+    assert found.verdict("density") == verdict and words in found["density"].sentence
+    json.dumps(found.to_dict(), allow_nan=False)
+
+
 def test_three_results_name_the_worst_pair():
     found = reconcile(EARLY, LATE, {**LATE, "name": "third", "A": "(1.2 +- 0.2)e-8"})
     assert found.dof == 2 and found.pair == ("early", "late")
