@@ -9,11 +9,13 @@ makes truncation, one-at-a-time tables and variance decompositions use one and t
 import difflib
 import math
 import re
+import warnings
 from abc import ABC, abstractmethod
 from collections.abc import Mapping
 from dataclasses import asdict, dataclass, fields
 from typing import Any, ClassVar, TypeAlias
 
+import astropy.units as u
 import numpy as np
 from astropy.units import Quantity
 from scipy import special
@@ -373,6 +375,13 @@ def parse_distribution(
         )
     _check_range(found, name, lower, upper)
     return found, unit
+
+
+def unit_named(text: str) -> u.UnitBase:
+    """The unit of a text such as "m/s/day" or "m/s per day"; ValueError or TypeError for none."""
+    with warnings.catch_warnings():
+        warnings.simplefilter("ignore", u.UnitsWarning)  # it dislikes two strokes
+        return u.Unit(re.sub(r"\s+per\s+", "/", text))
 
 
 def _from_text(text: str, name: str, lower: float, upper: float) -> tuple[Distribution, str]:

@@ -60,7 +60,7 @@ from ngbound.errors import ArcError, CaseError, InputError, MassError
 from ngbound.motion import Thrust
 from ngbound.toml_file import Model, Table, hold, nearest, read_toml, see_whether, shown
 
-from .distributions import AtMost, Distribution, Normal, SplitNormal, parse_distribution
+from .distributions import AtMost, Distribution, Normal, SplitNormal, parse_distribution, unit_named
 
 AU_D2 = u.au / u.day**2
 Spec = str | float | dict[str, Any]
@@ -249,7 +249,7 @@ def amount_au_d2(spec: Any, name: str) -> tuple[Distribution, float]:
     """A quoted acceleration: its distribution in au/d2, and one standard deviation (0: none)."""
     found, unit = parse_distribution(spec, name)
     try:
-        factor = float(Quantity(1.0, u.Unit(unit) if unit else AU_D2).to_value(AU_D2))
+        factor = float(Quantity(1.0, unit_named(unit) if unit else AU_D2).to_value(AU_D2))
     except (ValueError, TypeError, u.UnitConversionError) as error:
         raise CaseError(
             f"{name} has the unit {unit!r}, which is none of an acceleration; write au/d2, m/s2 or "

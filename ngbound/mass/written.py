@@ -18,7 +18,15 @@ import numpy as np
 
 from ngbound.errors import CaseError
 
-from .distributions import AtMost, Distribution, Fixed, Normal, SplitNormal, parse_distribution
+from .distributions import (
+    AtMost,
+    Distribution,
+    Fixed,
+    Normal,
+    SplitNormal,
+    parse_distribution,
+    unit_named,
+)
 from .outgassing import AVOGADRO
 
 COARSEST = 0.25
@@ -167,7 +175,7 @@ def unit_factor(name: str, unit: str, default: u.UnitBase, inside: u.UnitBase) -
     """What a number in a unit, given as text, is to be multiplied by; molecules count as 1."""
     bare = re.sub(r"\b(molecules?|molec\.?)(?=\W|$)", "", unit).strip()
     try:
-        parsed = u.Unit(re.sub(r"^/", "1/", bare)) if bare else default
+        parsed = unit_named(re.sub(r"^/", "1/", bare)) if bare else default
         if inside == u.mag and parsed != u.mag:
             raise ValueError(unit)
         if parsed.is_equivalent(u.mol / u.s):
@@ -175,6 +183,8 @@ def unit_factor(name: str, unit: str, default: u.UnitBase, inside: u.UnitBase) -
         return float(parsed.to(inside))
     except (ValueError, TypeError, OverflowError, ZeroDivisionError, u.UnitsError) as problem:
         wanted = f"use for instance {default}" if str(default) else "leave it out"
+        if name == "rate":
+            wanted += ", or give a rate in kg/s as mass_loss"
         raise CaseError(
             f"{name} has the unit {unit!r}, which is no unit of it; {wanted}.", unit=unit
         ) from problem

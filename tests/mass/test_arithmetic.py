@@ -151,6 +151,22 @@ def test_two_slips_need_two_changes():
     assert "2 numbers" in str(found)
 
 
+@pytest.mark.filterwarnings("error")
+def test_a_velocity_change_may_be_written_as_people_write_it():
+    # 9.62e-5 m/s a day is 0.0351 m/s a year
+    for text in (
+        "9.62e-5 m/s/day",
+        "9.62e-5 m/s per day",
+        "9.62e-3 cm/s/d",
+        "9.62e-5 m s-1 d-1",
+        "0.0351 m/s/yr",
+        "0.0351 m/s per year",
+    ):
+        assert audit_numbers(**{**DISTANT, "velocity_change": text}).verdict == "sound", text
+    with pytest.raises(CaseError, match="give a rate in kg/s as mass_loss"):
+        audit_numbers(**{**DISTANT, "rate": "5 kg/s"})
+
+
 def test_no_relation_is_said_to_be_untestable():
     assert audit_numbers(speed="1 km/s", density="500 kg/m3").verdict == "untestable"
 
