@@ -33,6 +33,7 @@ from .momentum_model import (
     in_au_d2,
     law_of,
     monte_carlo_size,
+    only_along,
     quantile_and_error,
     read_acceleration,
 )
@@ -104,6 +105,8 @@ class MassBound:
         Largest share first. ``dominant`` is the name of the first ("" if nothing varies).
     size_check : SizeCheck or None
     law_checks : tuple of LawCheck
+    components : str
+        Letters of the thrust components that were looked for; "" where that is not known.
     mass_draws_kg : ndarray (n,)
     """
 
@@ -120,6 +123,7 @@ class MassBound:
     acceleration_median: Quantity
     acceleration_upper: Quantity
     threshold: Quantity | None
+    components: str
     force: Quantity
     density: Distribution
     outgassing: Outgassing
@@ -156,6 +160,10 @@ class MassBound:
                 )
         else:
             held = f"the posterior of |A| ({percent(self.confidence)} below {upper} au/d2)"
+        along, direction = only_along(self.components), "whatever its direction"
+        if along:
+            held += f" of a thrust {along}"
+            direction = f"if it acts {along}"
         text = (
             f"With {sources}, and {held}, the mass is above {mass_text(float(self.mass.value))} "
             f"(Monte Carlo error {rounded(float(self.mass_error.value), 1)} kg) at "
@@ -167,7 +175,7 @@ class MassBound:
                 " Under the same budget a body lighter than "
                 f"{mass_text(float(self.mass_detection.value))} "
                 f"({length_text(float(self.diameter_detection.value))}) would have shown a thrust "
-                "above the detection threshold, whatever its direction."
+                f"above the detection threshold, {direction}."
             )
         if self.dominant:
             text += (
@@ -213,6 +221,7 @@ class MassBound:
             "acceleration_median_au_d2": number(self.acceleration_median),
             "acceleration_upper_au_d2": number(self.acceleration_upper),
             "threshold_au_d2": number(self.threshold),
+            "components": self.components,
             "force_over_g_n": number(self.force),
             "density_kg_m3": self.density.to_dict(),
             "outgassing": self.outgassing.to_dict(),
@@ -312,6 +321,9 @@ def mass_bound(
     if single:
         of_limit = acceleration.limit_confidence
         joint = None if of_limit is None else max(0.0, confidence + of_limit - 1)
+    components = acceleration.components
+    if isinstance(threshold, DetectionThreshold):
+        components = components or threshold.components
     mass_detection = diameter_detection = a_det = None
     remarks = acceleration.remarks
     if threshold is not None:
@@ -344,6 +356,7 @@ def mass_bound(
         acceleration_median=float(np.median(samples)) * AU_D2,
         acceleration_upper=float(np.quantile(samples, confidence)) * AU_D2,
         threshold=None if a_det is None else a_det * AU_D2,
+        components=components,
         force=float(np.exp(np.median(model.log_force(first)))) * u.N,
         density=bulk,
         outgassing=outgassing,

@@ -41,6 +41,17 @@ class Acceleration:
     limit_confidence: float | None = None
     n_effective: float | None = None
     remarks: tuple[str, ...] = ()
+    components: str = ""
+
+
+def only_along(components: str) -> str:
+    """In which directions a thrust was looked for: "along R alone", "in the plane of R and T
+    alone"; "" for all three, and where it is not known."""
+    if not 0 < len(components) < 3:
+        return ""
+    if len(components) == 1:
+        return f"along {components} alone"
+    return f"in the plane of {' and '.join(components)} alone"
 
 
 @dataclass(frozen=True)
@@ -78,6 +89,9 @@ def read_acceleration(
     """Read a posterior, a limit, or plain numbers; warn where a chain has not converged."""
     values: Any = limit_or_samples
     remarks: tuple[str, ...] = ()
+    components = ""
+    if isinstance(limit_or_samples, (Posterior, UpperLimit)):
+        components = limit_or_samples.components
     if isinstance(limit_or_samples, Posterior):
         values = limit_or_samples.A_mag
         n_effective = n_effective or limit_or_samples.ess.get("|A|")
@@ -92,7 +106,12 @@ def read_acceleration(
             NgboundWarning,
             stacklevel=3,
         )
-    return Acceleration(_magnitudes(values), limit_confidence, n_effective, remarks)
+    if along := only_along(components):
+        remarks += (
+            f"direction of the thrust: {along}, as the fit had no other component; one with "
+            "another part could be larger and the body lighter",
+        )
+    return Acceleration(_magnitudes(values), limit_confidence, n_effective, remarks, components)
 
 
 def _magnitudes(limit_or_samples: Any) -> np.ndarray:

@@ -1,7 +1,7 @@
 """The inverse question: which production rate would this arc have revealed, for a given body?
 
-May import: constants, errors, rounding, limits, and from its own room distributions, notebook,
-outgassing, size and sublimation.
+May import: constants, errors, rounding, limits, and from its own room distributions,
+momentum_model, notebook, outgassing, size and sublimation.
 
 Q_det(r) = M A_det g(r) / (zeta m v(r)), with M = pi/6 rho D^3. A sphere of exposed ice gives at
 most Q_full(r) = pi D^2 Z(r), with Z the mean flux of the energy balance. As Q_det grows with D^3
@@ -24,6 +24,7 @@ from ngbound.limits import DetectionThreshold
 from ngbound.rounding import length_text, percent, rounded
 
 from .distributions import AtMost, Distribution, DistributionSpec, Fixed
+from .momentum_model import only_along
 from .notebook import as_columns, as_html
 from .outgassing import MOLAR_MASS_G, Emission, Outgassing, molecule_mass_kg
 from .size import (
@@ -254,6 +255,8 @@ class Reach:
         Of the intervals.
     rows : tuple of ReachRow
     assumptions : tuple of str
+    components : str
+        Letters of the thrust components that the threshold tests; "" where that is not known.
     """
 
     threshold: Quantity
@@ -264,6 +267,7 @@ class Reach:
     confidence: float
     rows: tuple[ReachRow, ...]
     assumptions: tuple[str, ...]
+    components: str = ""
 
     @property
     def radial_share(self) -> float | None:
@@ -274,6 +278,7 @@ class Reach:
 
     def sentence(self) -> str:
         """The reach in words: rates for the size given, and up to which size it reaches at all."""
+        along, whatever = only_along(self.components), "whatever the direction of the thrust"
         test = "" if self.power is None else f" with probability {percent(self.power)}"
         if self.false_alarm is not None:
             test += f" (false-alarm rate {percent(self.false_alarm)})"
@@ -282,13 +287,14 @@ class Reach:
         if told:
             rates = ", ".join(f"{one.rate_words()} of {one.where}" for one in told)
             parts.append(
-                f"A body of {told[0].body} would have shown a thrust{test}, whatever its "
-                f"direction, had it lost more than about {rates}."
+                f"A body of {told[0].body} would have shown a thrust{test}, "
+                f"{f'if it acts {along}' if along else 'whatever its direction'}, had it lost "
+                f"more than about {rates}."
             )
         largest = [words for row in self.rows if (words := row.largest_words())]
         if largest:
             if not told:
-                test += ", whatever the direction of the thrust,"
+                test += f", {f'by a thrust {along}' if along else whatever},"
             parts.append(
                 f"A body whose whole surface sublimates would have been revealed"
                 f"{'' if told else test} up to a diameter of {', '.join(largest)}, at a bulk "
@@ -351,6 +357,7 @@ class Reach:
             "radial_threshold_au_d2": None
             if self.radial_threshold is None
             else float(self.radial_threshold.value),
+            "components": self.components,
             "false_alarm": self.false_alarm,
             "power": self.power,
             "density_kg_m3": self.density.to_dict(),
@@ -508,6 +515,7 @@ def reach(
             "a whole surface: a dark sphere of pure ice that does not rotate, each facet in its "
             "own energy balance, the most that sublimation can give",
         ),
+        threshold.components if isinstance(threshold, DetectionThreshold) else "",
     )
 
 

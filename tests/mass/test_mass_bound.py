@@ -169,6 +169,7 @@ def test_a_posterior_brings_its_draws_its_prior_and_its_effective_size():
     components = np.random.default_rng(1).normal(0, 1e-8, (30_000, 3))
     posterior = blank(
         Posterior,
+        components="RTN",
         A_samples=components,
         ess={"|A|": 400.0},
         prior=SimpleNamespace(name="isotropic-uniform"),
@@ -185,6 +186,7 @@ def test_a_posterior_brings_its_draws_its_prior_and_its_effective_size():
 def test_a_limit_brings_its_confidence_and_a_warning_where_it_is_not_converged():
     limit = blank(
         UpperLimit,
+        components="RTN",
         magnitude=1e-8 * AU_D2,
         confidence=0.9,
         prior="uniform in |A|",
@@ -199,9 +201,10 @@ def test_a_limit_brings_its_confidence_and_a_warning_where_it_is_not_converged()
 
 
 def test_threshold_gives_the_mass_that_would_have_been_revealed():
-    bound = mass_bound(
-        1e-8, log_normal_budget(), g_at=1.0, threshold=blank(DetectionThreshold, worst=4e-8 * AU_D2)
+    threshold = blank(
+        DetectionThreshold, worst=4e-8 * AU_D2, information=SimpleNamespace(components="RTN")
     )
+    bound = mass_bound(1e-8, log_normal_budget(), g_at=1.0, threshold=threshold)
     assert bound.mass_detection is not None and bound.diameter_detection is not None
     assert bound.mass_detection.value == pytest.approx(bound.mass.value / 4, rel=1e-9)
     assert bound.diameter_detection.value == pytest.approx(bound.diameter.value / 4 ** (1 / 3))
@@ -210,6 +213,39 @@ def test_threshold_gives_the_mass_that_would_have_been_revealed():
     )
     assert several.threshold == bound.threshold
     assert "would have shown a thrust" in bound.sentence()
+
+
+@pytest.mark.parametrize(
+    ("components", "words"),
+    [
+        ("R", "a thrust along R alone"),
+        ("RT", "a thrust in the plane of R and T alone"),
+        ("RTN", "whatever its direction"),
+    ],
+)
+def test_a_bound_claims_no_direction_that_was_not_looked_for(components, words):
+    limit = blank(
+        UpperLimit,
+        components=components,
+        magnitude=1e-8 * AU_D2,
+        confidence=0.9,
+        prior="uniform in |A|",
+        converged=True,
+        message="",
+    )
+    threshold = blank(
+        DetectionThreshold,
+        worst=4e-8 * AU_D2,
+        information=SimpleNamespace(components=components),
+    )
+    bound = mass_bound(limit, log_normal_budget(), g_at=1.0, threshold=threshold)
+    said, partial = bound.sentence(), components != "RTN"
+    assert words in said and ("whatever" not in said) is partial
+    assert any("direction of the thrust" in a for a in bound.assumptions) is partial
+    assert bound.to_dict()["components"] == components
+    # the threshold alone tells it too
+    plain = mass_bound(1e-8, log_normal_budget(), g_at=1.0, threshold=threshold)
+    assert words in plain.sentence()
 
 
 def test_a_direction_the_arc_cannot_see_leaves_no_revealed_mass():

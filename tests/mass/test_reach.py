@@ -3,6 +3,7 @@
 import json
 import math
 import re
+from types import SimpleNamespace
 
 import astropy.units as u
 import pytest
@@ -105,6 +106,19 @@ def test_threshold_brings_its_power_and_its_radial_direction():
     assert "A radial thrust is seen better" in found.sentence()
     worst = reach(float(threshold.worst.value), g_at=lambda r: r**-2, at=1.3)
     assert worst.rows[0].rate == found.rows[0].rate
+
+
+def test_the_reach_claims_no_direction_that_was_not_looked_for():
+    threshold = detection_threshold(demo_pair()[1])
+    radial = object.__new__(type(threshold))
+    for name, value in vars(threshold).items():
+        object.__setattr__(radial, name, value)
+    object.__setattr__(radial, "information", SimpleNamespace(components="R"))
+    common = {"g_at": lambda r: r**-2, "at": 1.3}
+    for size in ({"size": MeasuredDiameter("2 km")}, {}):
+        assert "whatever" in reach(threshold, **common, **size).sentence()
+        said = reach(radial, **common, **size).sentence()
+        assert "along R alone" in said and "whatever" not in said
 
 
 def test_a_budget_asks_about_its_own_species_distances_and_speeds():
