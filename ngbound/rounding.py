@@ -73,6 +73,16 @@ def down(value: float) -> str:
     return rounded(value, 2, outward="down")
 
 
+def only_along(components: str) -> str:
+    """In which directions a thrust was looked for: "along R alone", "in the plane of R and T
+    alone"; "" for all three, and where it is not known."""
+    if not 0 < len(components) < 3:
+        return ""
+    if len(components) == 1:
+        return f"along {components} alone"
+    return f"in the plane of {' and '.join(components)} alone"
+
+
 def along(components: str, vector: Iterable[float]) -> str:
     """A direction as "(+0.44 R, +0.89 T, -0.15 N)"."""
     parts = (

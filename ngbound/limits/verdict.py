@@ -34,7 +34,7 @@ from ngbound.limits.information import AU_D2
 from ngbound.limits.posterior import Posterior
 from ngbound.limits.threshold import DetectionThreshold
 from ngbound.limits.upper_limit import UpperLimit, upper_limit
-from ngbound.rounding import percent, rounded, up, with_error
+from ngbound.rounding import only_along, percent, rounded, up, with_error
 
 KINDS = ("detection", "non-detection", "arc cannot tell", "not trustworthy")
 
@@ -208,11 +208,15 @@ def verdict(
         f"{estimate}, p = {p_value:.2g} ({sigma:.1f} sigma, {test} test of "
         f"{', '.join(information.components)})"
     )
+    axes = only_along(information.components)
+    chance = f"is found with probability {percent(threshold.power)} from"
     found = (
-        f"a thrust is found with probability {percent(threshold.power)} from {up(along.value)} "
-        "au/d2 on in the direction of the estimate, in any direction from "
-        f"{up(threshold.worst.value)} on, at a false-alarm rate of {percent(alpha)}"
+        f"a thrust {chance} {up(along.value)} au/d2 on in the direction of the estimate, in any "
+        f"direction{axes and ' '}{axes} from {up(threshold.worst.value)} on"
+        if k > 1
+        else f"a thrust {axes} {chance} {up(threshold.worst.value)} au/d2 on"
     )
+    found += f", at a false-alarm rate of {percent(alpha)}"
     bound = ""
     if isinstance(limit, UpperLimit):
         bound = (

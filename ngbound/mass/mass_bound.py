@@ -19,7 +19,7 @@ from astropy.units import Quantity
 from ngbound.constants import AU_D2_TO_M_S2
 from ngbound.errors import MassError
 from ngbound.limits import DetectionThreshold
-from ngbound.rounding import length_text, mass_text, percent, rounded, up
+from ngbound.rounding import length_text, mass_text, only_along, percent, rounded, up
 
 from .distributions import AtMost, Distribution, DistributionSpec, Fixed
 from .momentum_model import (
@@ -33,7 +33,6 @@ from .momentum_model import (
     in_au_d2,
     law_of,
     monte_carlo_size,
-    only_along,
     quantile_and_error,
     read_acceleration,
 )

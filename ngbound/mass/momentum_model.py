@@ -1,6 +1,6 @@
 """ln M as a function of named uncertain inputs, the acceleration among them.
 
-May import: constants, errors, limits, and from its own room distributions, notebook and
+May import: constants, errors, limits, rounding, and from its own room distributions, notebook and
 outgassing.
 
 What `mass_bound` and `mass_ceiling` share: reading a posterior or a limit, the thrust law at the
@@ -20,6 +20,7 @@ from astropy.units import Quantity
 from ngbound.constants import AU_D2_TO_M_S2
 from ngbound.errors import CaseError, MassError, NgboundWarning
 from ngbound.limits import Posterior, UpperLimit
+from ngbound.rounding import only_along
 
 from .distributions import Fixed
 from .notebook import as_html
@@ -42,16 +43,6 @@ class Acceleration:
     n_effective: float | None = None
     remarks: tuple[str, ...] = ()
     components: str = ""
-
-
-def only_along(components: str) -> str:
-    """In which directions a thrust was looked for: "along R alone", "in the plane of R and T
-    alone"; "" for all three, and where it is not known."""
-    if not 0 < len(components) < 3:
-        return ""
-    if len(components) == 1:
-        return f"along {components} alone"
-    return f"in the plane of {' and '.join(components)} alone"
 
 
 @dataclass(frozen=True)

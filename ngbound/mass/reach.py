@@ -1,7 +1,7 @@
 """The inverse question: which production rate would this arc have revealed, for a given body?
 
-May import: constants, errors, rounding, limits, and from its own room distributions,
-momentum_model, notebook, outgassing, size and sublimation.
+May import: constants, errors, rounding, limits, and from its own room distributions, notebook,
+outgassing, size and sublimation.
 
 Q_det(r) = M A_det g(r) / (zeta m v(r)), with M = pi/6 rho D^3. A sphere of exposed ice gives at
 most Q_full(r) = pi D^2 Z(r), with Z the mean flux of the energy balance. As Q_det grows with D^3
@@ -21,10 +21,9 @@ from astropy.units import Quantity
 from ngbound.constants import AU_D2_TO_M_S2
 from ngbound.errors import CaseError, MassError
 from ngbound.limits import DetectionThreshold
-from ngbound.rounding import length_text, percent, rounded
+from ngbound.rounding import length_text, only_along, percent, rounded
 
 from .distributions import AtMost, Distribution, DistributionSpec, Fixed
-from .momentum_model import only_along
 from .notebook import as_columns, as_html
 from .outgassing import MOLAR_MASS_G, Emission, Outgassing, molecule_mass_kg
 from .size import (

@@ -31,6 +31,7 @@ from ngbound.rounding import (
     is_number,
     length_text,
     mass_text,
+    only_along,
     percent,
     rounded,
     up,
@@ -71,6 +72,7 @@ def the_sentence(
     power: float | None = None,
     threshold_au_d2: float | None = None,
     best_threshold_au_d2: float | None = None,
+    components: str = "",
     confidence: float | None = None,
     limit_au_d2: float | None = None,
     limit_prior: str = "",
@@ -103,6 +105,8 @@ def the_sentence(
         Of the test that the threshold belongs to.
     threshold_au_d2, best_threshold_au_d2 : float
         In the worst and the best seen direction; the first alone if they are the same.
+    components : str
+        Letters of the thrust components that were looked for.
     confidence, limit_au_d2 : float
         Upper limit on |A|.
     limit_prior, other_limit_prior : str
@@ -137,6 +141,7 @@ def the_sentence(
     if is_number(threshold_au_d2):
         clauses.append(
             _threshold(
+                only_along(components),
                 "" if estimate else law,
                 significance_sigma,
                 false_alarm,
@@ -213,6 +218,7 @@ def prior_name(described: Any) -> str:
 
 
 def _threshold(
+    axes: str,
     law: str,
     sigma: float | None,
     false_alarm: float | None,
@@ -220,7 +226,8 @@ def _threshold(
     worst: float,
     best: float | None,
 ) -> str:
-    following = f" following {_law(law)}" if law else ""
+    following = f" {axes}" if axes else ""
+    following += f" following {_law(law)}" if law else ""
     at = ""
     if is_number(sigma):
         at = f" at {sigma:.1f} sigma"
@@ -236,7 +243,7 @@ def _threshold(
     if is_number(best):
         low = up(best)
         value += (
-            " in any direction"
+            ("" if axes else " in any direction")
             if low == high
             else (f" in the direction this arc sees worst, {low} au/d2 in the one it sees best")
         )
@@ -281,6 +288,7 @@ def sentence_of(record: Mapping[str, Any]) -> str:
         power=threshold.get("power"),
         threshold_au_d2=threshold.get("worst_au_d2"),
         best_threshold_au_d2=threshold.get("best_au_d2"),
+        components=str(threshold.get("components") or ""),
         confidence=limit.get("confidence"),
         limit_au_d2=limit.get("magnitude_au_d2"),
         limit_prior=prior_name(limit.get("prior")),

@@ -72,6 +72,18 @@ def test_a_non_detection():
     )
 
 
+def test_the_sentence_claims_no_direction_that_was_not_looked_for():
+    one = {**QUIET, "best_threshold_au_d2": QUIET["threshold_au_d2"]}
+    assert "exceeded 6.1e-9 au/d2 in any direction;" in the_sentence(**one, components="RTN")
+    radial = the_sentence(**one, components="R")
+    assert "A thrust along R alone following an inverse-square law would have been" in radial
+    assert "exceeded 6.1e-9 au/d2;" in radial and "any direction" not in radial
+    plane = the_sentence(**QUIET, components="RT")
+    assert "A thrust in the plane of R and T alone following" in plane and "sees worst" in plane
+    clean(radial)
+    clean(plane)
+
+
 def test_a_detection_says_the_estimate_and_not_gravity_alone():
     text = the_sentence(
         **QUIET,

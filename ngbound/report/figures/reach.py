@@ -11,7 +11,7 @@ from matplotlib.axes import Axes
 from matplotlib.figure import Figure
 
 from ngbound.report.figures import style
-from ngbound.rounding import percent
+from ngbound.rounding import only_along, percent
 
 COLOURS = (style.BLUE, style.VERMILION, style.GREEN, style.PURPLE, style.ORANGE)
 
@@ -62,7 +62,7 @@ def reach_figure(
             ax.set_xlabel("diameter (m)")
     chance = "" if reach.power is None else f" with probability {percent(reach.power)}"
     lines = (
-        f"a thrust in any direction{chance};",
+        f"a thrust {only_along(reach.components) or 'in any direction'}{chance};",
         f"band: {percent(reach.confidence)} interval of density, speed and collimation",
     )
     title = "outgassing this arc would have revealed"
