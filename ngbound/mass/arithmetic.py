@@ -88,6 +88,7 @@ _PLAUSIBLE = {
 MOST_CHANGES = 12
 """So many changes are told at most, the best first."""
 _LARGEST_LOG = 690.0
+_LIMIT = "limit and sigma"
 
 
 @dataclass(frozen=True)
@@ -163,7 +164,8 @@ class RelationTest:
         if self.bound:
             edge = f"most {number_text(self.high)}"
             allowed = f"at {edge if self.bound > 0 else f'least {number_text(self.low)}'}"
-            source += f" and the bound on {' and '.join(map(_label, self.bounds))}"
+            several = "s" * (len(self.bounds) > 1)
+            source += f" and the bound{several} on {' and '.join(map(_label, self.bounds))}"
         return (
             f"{'holds' if self.holds else 'FAILS'}: {self.formula} ({', '.join(self.relations)}): "
             f"the two sides are in the ratio {number_text(self.ratio)}, and {source} "
@@ -428,7 +430,7 @@ def audit_numbers(
     untested = [name for name in written if name not in tested]
     if law is not None and "thrust law" not in used:
         untested.append("g_at_r")
-    if level is not None and "limit and sigma" not in used:
+    if level is not None and _LIMIT not in used:
         untested.append("confidence")
     common: dict[str, Any] = {
         "quoted": {name: _plain(name, w.log) for name, w in written.items()},
@@ -538,7 +540,7 @@ def _relations(
         )
     if confidence is not None:
         z = math.log(float(ndtri(0.5 + confidence / 2)))
-        found.append(_Relation("limit and sigma", {"acceleration": 1, "acceleration_sigma": -1}, z))
+        found.append(_Relation(_LIMIT, {"acceleration": 1, "acceleration_sigma": -1}, z))
     return tuple(found)
 
 
@@ -607,6 +609,9 @@ class _Web:
             [(p, self.written[n]) for n, p in powers.items()], self.tolerance
         )
         bounds = tuple(n for n in powers if self.written[n].bound)
+        if any(relation.name == _LIMIT for relation in subset):
+            # there the acceleration is the limit itself, not what lies below it
+            bounds = tuple(n for n in bounds if n != "acceleration")
         pulls = {int(math.copysign(1, powers[n])) * self.written[n].bound for n in bounds}
         return RelationTest(
             tuple(r.name for r in subset),

@@ -41,6 +41,15 @@ def test_quiet_arc_is_a_non_detection_with_threshold_and_limit_in_the_sentence()
     json.dumps(told.to_dict())
 
 
+def test_the_sentence_claims_no_direction_that_was_not_looked_for():
+    assert "in any direction from" in judged(1.0).sentence
+    push = isotropic(k=1, sigma=SIGMA, A=SIGMA, dof=400)
+    null = replace(isotropic(k=0, dof=403), chi2=push.chi2 + 1.0)
+    said = verdict(null, push, detection_threshold(push)).sentence
+    axis = detection_threshold(push).components
+    assert f"a thrust along {axis} alone is found" in said and "any direction" not in said
+
+
 def test_strong_thrust_is_a_detection_and_only_above_the_false_alarm_rate():
     assert judged(8.0).kind == "detection"
     assert "|A| = (8.0 +- 1.0)e-9 au/d2 (A_R = " in judged(8.0).sentence

@@ -233,6 +233,18 @@ def test_a_bound_that_follows_from_another_is_held_to_its_edge():
     assert "radius and diameter" in planted.tied[0].slips[0]
 
 
+def test_a_limit_is_itself_the_multiple_of_its_sigma():
+    for size, verdict in (("< 1.96e-9", "sound"), ("< 3.00e-9", "slip"), ("< 9.1e-9", None)):
+        found = audit_numbers(
+            acceleration=f"{size} au/d2", acceleration_sigma="1.00e-9 au/d2", confidence=0.95
+        )
+        assert found.verdict == (verdict or "inconsistent"), str(found)
+    found = audit_numbers(
+        acceleration="< 3.00e-9 au/d2", acceleration_sigma="1.00e-9 au/d2", confidence=0.95
+    )
+    assert "3 sigma quoted as a limit of 95 %" in str(found)
+
+
 def test_a_lower_mass_does_not_follow_from_an_upper_limit_on_the_rate():
     wrong = audit_numbers(**{**COMET, "rate": "< 1.00e27 1/s", "mass": "> 6.96e10 kg"})
     assert wrong.verdict == "cannot tell", str(wrong)
