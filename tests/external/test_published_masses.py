@@ -296,9 +296,9 @@ def test_density_from_mass_and_volume(mass_kg, volume_km3, density, tolerance):
     [
         # 10P, as above: (1.6 +- 0.5)e14 kg, 500 km3 without an error: 0.3 +- 0.1 g/cm3 (READ)
         ("(1.6 +- 0.5)e14 kg", 500.0, 0.0, 300.0, 100.0, 50.0),
-        # 67P: F. Preusker et al. 2017, 537.8 +- 0.7 from 18.56 +- 0.02 km3 (READ): 0.58 of the volume
-        # and 0.16 of the mass are 0.60. The 532 +- 7 of L. Jorda et al. 2016 from 18.8 +- 0.3 km3
-        # does not follow: 0.3 km3 make 8.5 kg/m3, and the middle is 531
+        # 67P: F. Preusker et al. 2017, 537.8 +- 0.7 from 18.56 +- 0.02 km3 (READ): 0.58 of the
+        # volume and 0.16 of the mass are 0.60. The 532 +- 7 of L. Jorda et al. 2016 from
+        # 18.8 +- 0.3 km3 does not follow: 0.3 km3 make 8.5 kg/m3, and the middle is 531
         ("(9.982 +- 0.003)e12 kg", 18.56, 0.02, 537.8, 0.7, 0.1),
     ],
     ids=["10P", "67P"],
