@@ -279,7 +279,15 @@ class NumberAudit:
     @property
     def headline(self) -> str:
         """The verdict in a sentence."""
-        return f"Quoted numbers: {VERDICTS[self.verdict]}"
+        told = f"Quoted numbers: {VERDICTS[self.verdict]}"
+        loose = [test.bounds for test in self.tests if test.slack]
+        if loose:
+            names = dict.fromkeys(_label(name) for bounds in loose for name in bounds)
+            told += (
+                f" What was quoted of {' and '.join(names)} is true as a bound, but looser than the "
+                "rest allows."
+            )
+        return told
 
     def __str__(self) -> str:
         lines = [self.headline]

@@ -212,6 +212,12 @@ def test_a_bound_agrees_with_all_that_lies_on_its_side(mass, holds):
         assert (found.tests[0].lowest is None) is below
 
 
+def test_a_loose_bound_is_told_from_one_that_follows():
+    loose, tight = (audit_numbers(**SPHERE, mass=f"> {m} kg") for m in ("5.0e6", "5.2e8"))
+    assert "of mass is true as a bound, but looser" in loose.headline
+    assert "looser" not in tight.headline
+
+
 def test_a_bound_on_the_other_side_of_the_relation():
     # 5.236e8 kg in a body under 200 m, and not in one over 200 m or under 50 m
     for diameter, holds in (("< 200. m", True), ("> 200. m", False), ("< 50. m", False)):
