@@ -284,8 +284,8 @@ class NumberAudit:
         if loose:
             names = dict.fromkeys(_label(name) for bounds in loose for name in bounds)
             told += (
-                f" What was quoted of {' and '.join(names)} is true as a bound, but looser than the "
-                "rest allows."
+                f" What was quoted of {' and '.join(names)} is true as a bound, but looser than "
+                "the rest allows."
             )
         return told
 
