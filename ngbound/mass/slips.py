@@ -97,7 +97,7 @@ def usual_slips(
     """
     both: list[Slip] = []
     one_way: list[Slip] = []
-    if setting.g and name in _PUSH:
+    if setting.g and name in (*_PUSH, "velocity_change"):
         both.append((setting.g, "value at the distance of the rate and value at 1 au exchanged"))
     if setting.g and name in _GAS:
         both.append((setting.g, "rate at its distance and rate at 1 au exchanged (wrong distance)"))

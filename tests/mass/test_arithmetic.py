@@ -115,6 +115,7 @@ def test_sound_papers_are_called_sound(paper):
         (INTERSTELLAR, {"mass_loss": "311 kg/s"}, "mass_loss", "t/d and kg/s"),
         (DISTANT, {"velocity_change": "3.51e-2 m / (s d)"}, "velocity_change", "per year"),
         (DISTANT, {"velocity_change": "4.01e-6 m / (s d)"}, "velocity_change", "per hour"),
+        (DISTANT, {"velocity_change": "3.46e-3 m / (s d)"}, "velocity_change", "value at 1 au"),
         # 1329 km / 0.04 at H = 18.00 is 8345 m
         (
             {"H": "18.00", "albedo": "0.040", "diameter": "8345 m"},
