@@ -92,6 +92,7 @@ from ngbound.report import (
     the_sentence,
 )
 from ngbound.rounding import up
+from ngbound.sky import load_ephemeris, reduce_offsets
 
 MOST_SCANS = 3
 """Scans that may each lead to a better orbit."""
@@ -152,7 +153,7 @@ def inspect_case(path: str | Path, *, progress: bool = False, **choices: Any) ->
     """What is in an arc at a glance, before any orbit."""
     case = case_for(path, **choices)
     model = case.errors.error_model()
-    arc = model.usable(read_the_arc(case, Steps(progress)))
+    arc = reduce_offsets(model.usable(read_the_arc(case, Steps(progress))), load_ephemeris())
     used = model.corrected(arc.used)
     return Inspection(survey(arc), model.apply(used), model.catalogue_treatments(used))
 

@@ -221,6 +221,17 @@ def test_inspect_tells_what_is_in_the_arc():
     json.dumps(told)
 
 
+def test_inspect_uses_the_offsets_that_a_fit_uses(tmp_path):
+    path = tmp_path / "offsets.psv"
+    row = "433|CCD|704|2022-01-20T0{}:00:00Z|{}|10.0|5.0|0.2|0.2"
+    names = "permID|mode|stn|obsTime|obsCenter|deltaRA|deltaDec|rmsRA|rmsDec"
+    rows = [row.format(hour, body) for hour, body in enumerate(("Mars", "Moon", "719"))]
+    path.write_text("\n".join(["# version=2022", names, *rows]) + "\n")
+    told = run.inspect_case(path).to_dict()
+    assert told["n_usable"] == told["assigned_errors"]["n"] == 2
+    assert told["set_aside_lines"] == {"an offset from 719, which is not in the ephemeris": (5,)}
+
+
 def test_fit_reads_the_starting_orbit_of_the_case(quick):
     fits = run.fit_case(quick)
     assert fits.push.components == "R"

@@ -100,6 +100,7 @@ _TEXT_WORDS = {
     "astCat": "it must be a catalogue name of at most 8 characters such as Gaia2, UCAC4 or UNK",
     "sys": "it must be WGS84, ITRF, IAU, ICRF_AU or ICRF_KM",
     "disc": "it must be * or +",
+    "obsCenter": "it must be a planet, Moon, or an unpacked designation such as 433 or Jupiter 3",
     "deprecated": "it must be X",
     "band": "it must be a band of at most 3 letters or digits",
 }

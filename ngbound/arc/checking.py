@@ -423,7 +423,8 @@ class Checker:
 
     def _step_arcsec(self, column: str) -> FloatArray:
         step = 3600.0 * 10.0 ** -np.arange(100.0)
-        return step[self.places[column]]
+        unstated = self.records.unstated.get(column, self.never)
+        return np.where(unstated, 0.0, step[self.places[column]])
 
     def _refuse_angle(self, bad: BoolArray, column: str, texts: ObjectArray, span: str) -> None:
         if bad.any():
@@ -464,13 +465,16 @@ class Checker:
             if lost.any():
                 row = int(np.argmax(lost))
                 code = str(self.text(column)[row])
+                with_record = " or give the position with the record (sys, ctr, pos1, pos2, pos3)."
+                own_table = "Correct the code, give the coordinates in a table of your own stations"
                 raise self.fail(
                     row,
                     column,
                     f"the station {code!r} is not in the list of observatory codes; near matches: "
                     f"{', '.join(near_codes(code, own))}",
-                    "Correct the code, give the coordinates in a table of your own stations, or "
-                    "give the position with the record (sys, ctr, pos1, pos2, pos3).",
+                    f"{own_table},{with_record}"
+                    if column == "stn"
+                    else f"{own_table.replace(',', ' or')}.",
                 )
         return site
 

@@ -397,16 +397,27 @@ class Noise:
         return Noise(ra, dec, corr, new_common, self.night, self.source, self.shared, self.there)
 
     def to_dict(self) -> dict[str, Any]:
-        """JSON-able summary: counts by source with the median sigma of each."""
+        """JSON-able summary: counts by source with the median sigma of each, that of echoes in
+        units of the stated one."""
         sources = {}
         for label in dict.fromkeys(self.source.tolist()):
             mine = self.source == label
-            sources[str(label)] = {
-                "n": int(mine.sum()),
-                "median_sigma_ra_arcsec": float(np.median(self.sigma_ra_arcsec[mine])),
-                "median_sigma_dec_arcsec": float(np.median(self.sigma_dec_arcsec[mine])),
-                "median_night_common_arcsec": float(np.median(self.night_common_arcsec[mine])),
+            ra, dec, common = (
+                float(np.median(column[mine]))
+                for column in (
+                    self.sigma_ra_arcsec,
+                    self.sigma_dec_arcsec,
+                    self.night_common_arcsec,
+                )
+            )
+            sizes = {
+                "median_sigma_ra_arcsec": ra,
+                "median_sigma_dec_arcsec": dec,
+                "median_night_common_arcsec": common,
             }
+            if label == RADAR_SOURCE:
+                sizes = {"median_stated_sigmas": ra}
+            sources[str(label)] = {"n": int(mine.sum()), **sizes}
         return {"n": len(self), "n_nights": len(np.unique(self.night)), "sources": sources}
 
     def __str__(self) -> str:
@@ -417,7 +428,7 @@ class Noise:
         ]
         for k, v in told["sources"].items():
             size = (
-                f"{v['median_sigma_ra_arcsec']:.3f} stated sigma"
+                f"{v['median_stated_sigmas']:.3f} stated sigma"
                 if k == RADAR_SOURCE
                 else f"{v['median_sigma_ra_arcsec']:.3f} x {v['median_sigma_dec_arcsec']:.3f} "
                 f"arcsec, common {v['median_night_common_arcsec']:.3f}"

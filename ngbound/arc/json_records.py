@@ -3,10 +3,11 @@
 Either a list of records, or an object that holds one. A record has an 80-column string under
 ``original_record`` or ``obs80`` (both lines of a two-line record may be joined in it), or ADES
 fields by name in any case. The 80-column text of a whole arc, under one of those keys, is taken
-too.
+too. Of an angle given as a number and not as a text the digits state no precision.
 """
 
 import json
+import warnings
 from typing import Any
 
 import numpy as np
@@ -15,9 +16,11 @@ from ngbound.arc.ades_rules import COLUMNS, OPTICAL, kind_of_columns
 from ngbound.arc.fields import plain_number
 from ngbound.arc.records import ObjectArray, Records, concatenate
 from ngbound.arc.report80 import report80_records
-from ngbound.errors import ArcError
+from ngbound.errors import ArcError, NgboundWarning
 
 KEYS_80 = ("original_record", "obs80", "obs_80")
+ANGLES = ("ra", "dec", "raStar", "decStar")
+MOST_KEYS = 12
 _ADES = {name.lower(): name for name in COLUMNS}
 
 
@@ -81,11 +84,17 @@ def _find_records(content: Any) -> list[dict[str, Any]] | str:
         return []
     if isinstance(content, dict):
         whole = _whole_text(content)
-        for value in content.values():
-            if isinstance(value, list) and value and all(isinstance(item, dict) for item in value):
+        lists = [
+            value
+            for value in content.values()
+            if isinstance(value, list) and value and all(isinstance(item, dict) for item in value)
+        ]
+        observed = {*KEYS_80, "obstime"}
+        for value in lists:
+            if observed & {str(k).lower() for k in value[0]}:
                 return value
-        if whole:
-            return whole
+        if lists or whole:
+            return lists[0] if lists else whole
     return []
 
 
@@ -100,12 +109,20 @@ def _whole_text(record: dict[str, Any]) -> str:
 def _ades_records(listed: list[dict[str, Any]], source: str) -> Records:
     parts: list[dict[str, ObjectArray]] = []
     kinds = np.full(len(listed), OPTICAL, dtype=object)
+    unstated = {name: np.zeros(len(listed), dtype=bool) for name in ANGLES}
+    strange: dict[str, None] = {}
     for row, record in enumerate(listed):
         cells: dict[str, ObjectArray] = {}
         for key, value in record.items():
             name = _ADES.get(str(key).lower())
-            if name is None or value is None or isinstance(value, list | dict):
+            if name is None or isinstance(value, list | dict):
+                if value is not None:
+                    strange[str(key)] = None
                 continue
+            if value is None:
+                continue
+            if name in unstated:
+                unstated[name][row] = not isinstance(value, str)
             if isinstance(value, bool):
                 text = str(int(value))
             elif isinstance(value, float):
@@ -122,6 +139,14 @@ def _ades_records(listed: list[dict[str, Any]], source: str) -> Records:
             "the two.",
             file=source,
         )
+    if strange:
+        more = f" and {len(strange) - MOST_KEYS} more" if len(strange) > MOST_KEYS else ""
+        warnings.warn(
+            f"{source}: the records hold keys that are no ADES fields, which were passed over: "
+            f"{', '.join(list(strange)[:MOST_KEYS])}{more}.",
+            NgboundWarning,
+            stacklevel=2,
+        )
     n = len(listed)
     return Records(
         source=source,
@@ -131,4 +156,5 @@ def _ades_records(listed: list[dict[str, Any]], source: str) -> Records:
         block=np.full(n, -1, dtype=np.int64),
         set_aside=np.full(n, "", dtype=object),
         unit_name="record",
+        unstated=unstated,
     )

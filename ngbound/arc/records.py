@@ -58,7 +58,8 @@ class Records:
     reason, or "". ``version`` is that of ADES whose rules the source declares to keep ("" when it
     declares none: then columns, ranges and what must be there are checked, not the spelling). A
     reader that has a column as codes or as bytes hands them over in ``coded`` and ``packed``, so
-    that they need not be made again.
+    that they need not be made again. ``unstated`` tells where the digits of a column state no
+    precision, as those of a JSON number do, which is written without its trailing zeros.
     """
 
     source: str
@@ -73,6 +74,7 @@ class Records:
     unit_name: str = "line"
     coded: Mapping[str, Coded] = field(default_factory=dict)
     packed: Mapping[str, Packed] = field(default_factory=dict)
+    unstated: Mapping[str, NDArray[np.bool_]] = field(default_factory=dict)
 
 
 def concatenate(

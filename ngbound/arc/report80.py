@@ -369,6 +369,12 @@ class _Reader:
         text["band"] = np.where((mags != "") & (text["band"] == ""), BAND_UNKNOWN, text["band"])
 
     def _time(self) -> tuple[ObjectArray, NDArray[np.float64]]:
+        """Instants as texts and the step of their digits, s.
+
+        Echoes are timed at whole seconds of UTC, which decimals of a day cannot tell (0.000001 d
+        are 0.09 s, in which a delay changes by many times its error): where the digits leave one
+        open, it is taken.
+        """
         n = self.n
         year, month, day = (np.zeros(n, dtype=np.int64) for _ in range(3))
         micro = np.zeros(n, dtype=np.int64)
@@ -401,10 +407,14 @@ class _Reader:
                 "is not a date of the calendar",
                 "Correct year, month or day.",
             )
+        places = np.array([0, 0, 0, 1, 2, 3, 4, 5, 6])[np.minimum(digits, MAX_PRECISE_DAY_DIGITS)]
+        step = 86400.0 * 10.0 ** -digits.astype(float)
+        whole_s = (micro + 500_000) // 1_000_000 * 1_000_000
+        echo = (self.type80 == "R") & (np.abs(micro - whole_s) <= 1e6 * step)
+        micro[echo], places[echo], step[echo] = whole_s[echo], 0, 0.0
         over = micro >= 86_400_000_000
         mjd, micro = mjd + over, np.where(over, 0, micro)
-        places = np.array([0, 0, 0, 1, 2, 3, 4, 5, 6])[np.minimum(digits, MAX_PRECISE_DAY_DIGITS)]
-        return format_times(mjd, micro / 1e6, places), 86400.0 * 10.0 ** -digits.astype(float)
+        return format_times(mjd, micro / 1e6, places), step
 
     def _angles(self, kind: ObjectArray, time_step: NDArray[np.float64]) -> Angles:
         n = self.n

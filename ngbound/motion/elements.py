@@ -5,7 +5,7 @@ or the barycentre of the solar system); elements are referred to the ecliptic an
 the sense of the comet trade: the ICRF axes turned about x by the obliquity of IAU 1976.
 
 Nothing is lost near e = 1: the perihelion time comes from the universal anomaly
-(_kepler_kernels.py), never from 1 - e as a divisor.
+(_kernels/kepler.py), never from 1 - e as a divisor.
 
 Degenerate cases, by convention:
 
@@ -32,7 +32,7 @@ from ngbound.constants import (
     OBLIQUITY_J2000_RAD,
 )
 from ngbound.errors import AnalysisError, InputError, PropagationError
-from ngbound.motion._kepler_kernels import solve_universal_kepler, universal_functions
+from ngbound.motion._kernels.kepler import solve_universal_kepler, universal_functions
 
 FloatArray = NDArray[np.float64]
 

@@ -1,6 +1,6 @@
 """Two-body motion: any eccentricity, with the state transition; imports constants and errors only.
 
-Universal variables throughout (see _kepler_kernels.py), so ellipse, parabola and hyperbola share
+Universal variables throughout (see _kernels/kepler.py), so ellipse, parabola and hyperbola share
 one formula and nothing is lost near e = 1. The frame is whatever the caller's states are in; with
 the default gm it is heliocentric, au and days.
 """
@@ -10,7 +10,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from ngbound.constants import C_AU_D, GM_SUN_AU3_D2
 from ngbound.errors import PropagationError
-from ngbound.motion._kepler_kernels import (
+from ngbound.motion._kernels.kepler import (
     map_conic,
     map_kepler,
     propagate_many,

@@ -11,8 +11,8 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from ngbound.constants import C_AU_D, GM_SUN_AU3_D2
-from ngbound.motion._kepler_kernels import lambert_many
-from ngbound.motion._kepler_kernels import two_point_scan as _scan
+from ngbound.motion._kernels.kepler import lambert_many
+from ngbound.motion._kernels.kepler import two_point_scan as _scan
 
 FloatArray = NDArray[np.float64]
 

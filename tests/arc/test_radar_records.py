@@ -108,6 +108,8 @@ def test_noise_of_echoes_stands_beside_that_of_directions() -> None:
     assert white[radar] == pytest.approx(1.0 / 1.5, rel=1e-12)
     assert not ErrorModel(rescale_stations=True).rescalable(noise)[radar].any()
     assert "stated sigma" in str(noise)
+    told = noise.to_dict()["sources"]["radar, stated"]
+    assert told == {"n": int(radar.sum()), "median_stated_sigmas": 1.5}
 
 
 def test_an_echo_reported_twice_is_found() -> None:

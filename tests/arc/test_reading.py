@@ -10,7 +10,7 @@ from hypothesis import HealthCheck, given, settings
 from hypothesis import strategies as st
 
 from ngbound.arc import Arc, read_arc, write_psv, write_xml
-from ngbound.errors import ArcError, NgboundError
+from ngbound.errors import ArcError, NgboundError, NgboundWarning
 from tests.arc.samples import PSV, ROVING, line80, put
 from tests.arc.test_ades_psv import same
 
@@ -102,12 +102,22 @@ def test_json_with_ades_fields(tmp_path: Path) -> None:
             "astcat": "Gaia2",
         },
     ]
-    arc = read_arc(put(tmp_path, "a.json", json.dumps([{"ADES_DF": listed}])))
+    with pytest.warns(NgboundWarning, match="no ADES fields.*passed over: created"):
+        arc = read_arc(put(tmp_path, "a.json", json.dumps([{"ADES_DF": listed}])))
     assert arc.table.dec.tolist() == [20.5, -20.5] and arc.table.use.all()
+    # a number in JSON has lost its trailing zeros, a text has not
+    assert arc.table.digits_dec_arcsec.tolist() == [0.0, pytest.approx(360.0)]
+    cos = np.cos(np.radians(20.5))
+    assert arc.table.digits_ra_arcsec.tolist() == pytest.approx([36.0 * cos] * 2)
     assert arc.table.rmsRA[0] == 0.2 and np.isnan(arc.table.rmsRA[1])
     listed[1]["dec"] = "95"
     with pytest.raises(ArcError, match="record 2, column dec: the value '95'"):
         read_arc(put(tmp_path, "a.json", json.dumps(listed)))
+
+
+def test_json_takes_the_list_that_holds_observations(tmp_path: Path) -> None:
+    content = {"notes": [{"by": "x"}], "observations": records()}
+    assert len(read_arc(put(tmp_path, "a.json", json.dumps(content)))) == 2
 
 
 @pytest.mark.parametrize("value", ["a|b", "a\nb", "a\ud800"])

@@ -175,6 +175,16 @@ def test_radar_record_becomes_delay_and_doppler(tmp_path: Path) -> None:
         1
     ] == pytest.approx(0.5)
     assert arc.used.table.stn.tolist().count("251") == 2
+    # echoes are timed at whole seconds, of which six decimals tell no more than hundredths:
+    # 0.236111 d are 20399.99 s
+    assert radar.utc_sec.tolist() == [0.0, 0.0]
+    dated = [text.replace("01.000000", "01.236111") for text in (first, second)]
+    timed = read(tmp_path, line80(desig=desig), *dated).table
+    assert timed.obsTime[timed.kind == "radar"].tolist() == ["2024-03-01T05:40:00Z"] * 2
+    # an instant that no whole second can be stays as it is
+    dated = [text.replace("01.000000", "01.236117") for text in (first, second)]
+    timed = read(tmp_path, line80(desig=desig), *dated).table
+    assert timed.utc_sec[timed.kind == "radar"].tolist() == pytest.approx([20400.5088] * 2)
     surface = second.replace("C        1", "S        1")
     on_surface = read(tmp_path, line80(desig=desig), first, surface).table
     why = on_surface.why_not[on_surface.kind == "radar"].tolist()

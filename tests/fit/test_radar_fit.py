@@ -215,8 +215,8 @@ def line80_of(delay: pd.Series, doppler: pd.Series) -> list[str]:
 def test_eighty_column_radar_reaches_the_same_fit(tmp_path: Path) -> None:
     arc, orbit = mixed_arc(seed=9)
     echoes = (arc.table["kind"] == "radar").to_numpy()
-    # days that six decimals of a day state exactly
-    days = FIRST_MJD + np.array([20.125, 21.25, 70.5, 71.625])
+    # whole seconds, of which six decimals of a day tell no more than hundredths
+    days = FIRST_MJD + np.array([20.125, 21.25, 70.5, 71.625]) + np.array([17, 1, 29, 3]) / 86400.0
     frame = radar_frame(orbit, days, np.random.default_rng(1))
     lines = []
     for i in range(4):

@@ -7,9 +7,11 @@ import sys
 from pathlib import Path
 
 import ngbound
+from ngbound.motion._kernels.compiled import is_compiled, kept_in
 from ngbound.motion.compilation import compile_notice, compiled_code_folder, missing_kernels
 from tests.motion.orbits import BELT, neighbourhood
 
+HERE = Path(ngbound.__file__).parents[1]
 PROBE = """
 import sys
 from ngbound.motion.compilation import compile_notice, compiled_code_folder
@@ -24,12 +26,13 @@ print(sum(inside_table.stats.cache_hits.values()), sum(inside_table.stats.cache_
 """
 
 
-def probe(environment: dict[str, str], path: Path | None = None) -> list[str]:
-    clean = {k: v for k, v in os.environ.items() if k != "PYTHONPATH"} | environment
-    if path is not None:
-        clean["PYTHONPATH"] = str(path)
+def probe(
+    environment: dict[str, str], path: Path | None = None, lines: int | None = None
+) -> list[str]:
+    """What the first lines of the probe print; all of them by default."""
+    clean = os.environ | {"PYTHONPATH": str(path or HERE)} | environment
     done = subprocess.run(
-        [sys.executable, "-c", PROBE],
+        [sys.executable, "-c", "\n".join(PROBE.splitlines()[:lines])],
         env=clean,
         capture_output=True,
         text=True,
@@ -54,15 +57,19 @@ def test_a_first_run_says_that_it_compiles_and_the_second_finds_the_code(tmp_pat
     assert probe({"NUMBA_CACHE_DIR": str(tmp_path)})[3] == "1 0"
 
 
+def block_caches(package: Path) -> None:
+    """A file where numba would put its folder keeps even the superuser from writing there."""
+    for folder in [package, *[p for p in package.rglob("*") if p.is_dir()]]:
+        (folder / "__pycache__").write_text("")
+
+
 def test_package_in_a_folder_that_cannot_be_written(tmp_path: Path) -> None:
     package = tmp_path / "site" / "ngbound"
     source = Path(ngbound.__file__).parent
     shutil.copytree(source, package, ignore=shutil.ignore_patterns("__pycache__"))
     home = tmp_path / "home"
     home.mkdir()
-    # a file where numba would put its folder keeps even the superuser from writing there
-    for folder in [package, *[p for p in package.rglob("*") if p.is_dir()]]:
-        (folder / "__pycache__").write_text("")
+    block_caches(package)
     environment = {"HOME": str(home), "XDG_CACHE_HOME": str(home / "cache")}
     first = probe(environment, tmp_path / "site")
     assert first[2] == "True" and str(home) in first[1]
@@ -85,12 +92,12 @@ def test_an_edit_in_one_kernel_file_compiles_the_others_anew(tmp_path: Path) -> 
 
 
 def test_every_kernel_bears_the_decorator_that_sees_all_files() -> None:
-    for path in (Path(ngbound.__file__).parent / "motion" / "_kernels").glob("*.py"):
+    for path in Path(ngbound.__file__).parent.rglob("*.py"):
         assert path.name == "compiled.py" or "njit" not in path.read_text(), path.name
 
 
 def test_two_processes_that_start_at_once(tmp_path: Path) -> None:
-    environment = {**os.environ, "NUMBA_CACHE_DIR": str(tmp_path)}
+    environment = {**os.environ, "PYTHONPATH": str(HERE), "NUMBA_CACHE_DIR": str(tmp_path)}
     started = [
         subprocess.Popen(
             [sys.executable, "-c", PROBE], env=environment, stdout=subprocess.PIPE, text=True
@@ -104,3 +111,43 @@ def test_two_processes_that_start_at_once(tmp_path: Path) -> None:
     # one may have overwritten the other's index, which costs one compilation more and no more
     probe({"NUMBA_CACHE_DIR": str(tmp_path)})
     assert probe({"NUMBA_CACHE_DIR": str(tmp_path)})[3] == "1 0"
+
+
+def without_cache(tmp_path: Path) -> tuple[dict[str, str], Path]:
+    """Environment and place of a package where neither its folder nor a home can be written."""
+    package = tmp_path / "site" / "ngbound"
+    source = Path(ngbound.__file__).parent
+    shutil.copytree(source, package, ignore=shutil.ignore_patterns("__pycache__"))
+    block_caches(package)
+    home = tmp_path / "no folder"
+    home.write_text("")
+    return {"HOME": str(home), "XDG_CACHE_HOME": str(home)}, tmp_path / "site"
+
+
+def test_no_folder_can_be_written_at_all(tmp_path: Path) -> None:
+    for _ in range(2):
+        told = probe(*without_cache(tmp_path))
+        assert "in every run" in told[0] and "NUMBA_CACHE_DIR" in told[0]
+        assert told[1:] == ["None", "True", "0 1"]
+        shutil.rmtree(tmp_path / "site")
+
+
+def test_uncompiled_kernels_need_no_notice() -> None:
+    told = probe({"NUMBA_DISABLE_JIT": "1"}, lines=5)
+    assert told == ["", "None"]
+
+
+def test_numba_without_the_attributes_that_keep_the_mark() -> None:
+    # another numba may name them otherwise: code is then kept and looked up as numba does it
+    class Other:
+        signatures: tuple[str, ...] = ()
+
+    assert not is_compiled(Other()) and kept_in(Other()) == ""
+    Other.signatures = ("(f8)",)
+    assert is_compiled(Other())
+
+    class Cache:
+        _cache_file = object()
+
+    Other._cache, Other.signatures = Cache(), ()
+    assert not is_compiled(Other())

@@ -34,7 +34,11 @@ def kernel(
     """``numba.njit`` with NumPy's rules for division, kept until a file of this folder changes."""
 
     def compiled(function: Callable[..., Any]) -> Any:
-        made = njit(cache=True, error_model="numpy", fastmath=fastmath, nogil=nogil)(function)
+        rules = {"error_model": "numpy", "fastmath": fastmath, "nogil": nogil}
+        try:
+            made = njit(cache=True, **rules)(function)
+        except RuntimeError:  # numba finds no folder that it may write to
+            return njit(**rules)(function)
         kept = _kept(made)
         if kept is not None:
             kept._source_stamp = MARK
@@ -44,6 +48,14 @@ def kernel(
 
 
 def is_compiled(made: Any) -> bool:
-    """Whether a kernel has been compiled from the present files, now or by an earlier run."""
-    kept = _kept(made)
-    return bool(made.signatures) or (kept is not None and bool(kept._load_index()))
+    """Whether a kernel has been compiled from the present files, now or by an earlier run, or needs
+    no compiling (NUMBA_DISABLE_JIT)."""
+    if getattr(made, "signatures", True):
+        return True
+    index = getattr(_kept(made), "_load_index", dict)
+    return bool(index())
+
+
+def kept_in(made: Any) -> str:
+    """The folder for the compiled code of a kernel; "" where it is not kept."""
+    return str(getattr(getattr(made, "stats", None), "cache_path", None) or "")

@@ -12,12 +12,13 @@ Everything below is regular through beta = 0, so the parabola is no special case
 import math
 
 import numpy as np
-from numba import njit
+
+from .compiled import kernel
 
 _MAX_ITERATIONS = 120
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def stumpff(psi):
     """c_0 .. c_5 of psi; a series for |psi| < 4, closed forms outside."""
     if abs(psi) < 4.0:
@@ -50,7 +51,7 @@ def stumpff(psi):
     return c0, c1, c2, c3, c4, c5
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def universal_functions(beta, s):
     """U_0 .. U_5 of the universal anomaly s."""
     c0, c1, c2, c3, c4, c5 = stumpff(beta * s * s)
@@ -58,7 +59,7 @@ def universal_functions(beta, s):
     return c0, s * c1, s2 * c2, s2 * s * c3, s2 * s2 * c4, s2 * s2 * s * c5
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def solve_universal_kepler(r0, sigma0, beta, mu, dt):
     """Universal anomaly after dt: (s within half a revolution, s of the whole revolutions).
 
@@ -122,7 +123,7 @@ def solve_universal_kepler(r0, sigma0, beta, mu, dt):
     return math.nan, math.nan
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def propagate(x, y, z, vx, vy, vz, dt, mu):
     """State after dt by Lagrange's f and g: (x, y, z, vx, vy, vz); nan where nothing follows."""
     r0 = math.sqrt(x * x + y * y + z * z)
@@ -145,7 +146,7 @@ def propagate(x, y, z, vx, vy, vz, dt, mu):
     )
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def propagate_many(states, dts, mus, out):
     """`propagate` row by row: states (n, 6), dts (n,), mus (n,) -> out (n, 6)."""
     for i in range(states.shape[0]):
@@ -155,7 +156,7 @@ def propagate_many(states, dts, mus, out):
         )
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def transition(state, dt, mu, out, phi):
     """State after dt into out (6,), its partials by the start into phi (6, 6).
 
@@ -209,14 +210,14 @@ def transition(state, dt, mu, out, phi):
             )
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def transition_many(states, dts, mus, out, phi):
     """`transition` row by row: out (n, 6), phi (n, 6, 6)."""
     for i in range(states.shape[0]):
         transition(states[i], dts[i], mus[i], out[i], phi[i])
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def kepler_elliptic(mean_anomaly, e):
     """Eccentric anomaly for 0 <= e < 1, on the same turn as the mean anomaly."""
     turns = np.rint(mean_anomaly / (2.0 * math.pi))
@@ -252,7 +253,7 @@ def kepler_elliptic(mean_anomaly, e):
     return sign * x + turns * 2.0 * math.pi
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def kepler_hyperbolic(mean_anomaly, e):
     """Hyperbolic anomaly H for e > 1: e sinh H - H = M."""
     sign = 1.0
@@ -290,7 +291,7 @@ def kepler_hyperbolic(mean_anomaly, e):
     return sign * x
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def map_kepler(mean_anomaly, e, out):
     """`kepler_elliptic` or `kepler_hyperbolic` row by row."""
     for i in range(out.shape[0]):
@@ -300,7 +301,7 @@ def map_kepler(mean_anomaly, e, out):
             out[i] = kepler_hyperbolic(mean_anomaly[i], e[i])
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def conic_from_perihelion(q, e, dt, mu):
     """(true anomaly, r) at dt from the perihelion of a conic of any e >= 0."""
     beta = mu * (1.0 - e) / q
@@ -311,14 +312,14 @@ def conic_from_perihelion(q, e, dt, mu):
     return math.atan2(y, x), q + mu * e * u2
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def map_conic(q, e, dt, mu, nu, r):
     """`conic_from_perihelion` row by row."""
     for i in range(nu.shape[0]):
         nu[i], r[i] = conic_from_perihelion(q[i], e[i], dt[i], mu)
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def _lambert_eta(x, lam, one_minus_lam2):
     """(y, y - lam x) of Izzo's curve, the difference without cancellation."""
     y = math.sqrt(one_minus_lam2 + lam * lam * x * x)
@@ -327,7 +328,7 @@ def _lambert_eta(x, lam, one_minus_lam2):
     return y, y - lam * x
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def lambert_time(x, lam, one_minus_lam2):
     """Non-dimensional flight time T(x) without a full revolution."""
     y, eta = _lambert_eta(x, lam, one_minus_lam2)
@@ -351,7 +352,7 @@ def lambert_time(x, lam, one_minus_lam2):
     return (psi / math.sqrt(-w) - x + lam * y) / w
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def lambert(r1, r2, tof, mu, long_way, v1, v2):
     """Velocities at both ends of the arc from r1 to r2 in tof > 0; False when there is none.
 
@@ -438,14 +439,14 @@ def lambert(r1, r2, tof, mu, long_way, v1, v2):
     return True
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def lambert_many(r1, r2, tof, mu, long_way, v1, v2, good):
     """`lambert` row by row."""
     for i in range(r1.shape[0]):
         good[i] = lambert(r1[i], r2[i], tof[i], mu, long_way[i], v1[i], v2[i])
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def sightline(state, t0, t, ox, oy, oz, mu, light_speed):
     """Light-time solved (x, y, z of the target relative to the observer, time of emission).
 
@@ -475,7 +476,7 @@ def sightline(state, t0, t, ox, oy, oz, mu, light_speed):
     return dx, dy, dz, t - tau
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def sightlines(state, t0, times, observers, mu, light_speed, direction, partials):
     """Unit vectors (n, 3) and, when partials has n rows, their partials by the state (n, 3, 6)."""
     end = np.empty(6)
@@ -513,7 +514,7 @@ def sightlines(state, t0, times, observers, mu, light_speed, direction, partials
                     ) / rho
 
 
-@njit(cache=True, error_model="numpy")
+@kernel()
 def two_point_scan(
     rho1, rho2, long_way, t1, t2, u1, u2, o1, o2, times, observers, seen, mu, light_speed,
     width, excess_weight, cost, states,
