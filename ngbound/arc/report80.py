@@ -77,6 +77,7 @@ kept as both."""
 HEADER_KEYS = ("COD", "CON", "OBS", "MEA", "TEL", "NET", "ACK", "AC2", "COM", "BND", "NUM", "STD")
 """Keys of the header lines that observers put above 80-column records."""
 MAX_PRECISE_DAY_DIGITS = 8
+NUMERIC = "+-." + string.digits
 BAND_UNKNOWN = "UNK"
 """ADES asks for a band beside every magnitude; a blank column 71 does not name one."""
 
@@ -345,8 +346,12 @@ class _Reader:
             if programmed or (c in PROGRAM_CODES and not c.isalpha()):
                 text["prog"][row] = to_base62(PROGRAM_CODES.index(c), 2)
             elif c != " " and not text["notes"][row]:
-                text.setdefault("remarks", np.full(self.n, "", dtype=object))
-                text["remarks"][row] = f"column 14: {c}"
+                self._remark(text, row, f"column 14: {c}")
+
+    def _remark(self, text: dict[str, ObjectArray], row: int, words: str) -> None:
+        """What no ADES field can hold."""
+        remarks = text.setdefault("remarks", np.full(self.n, "", dtype=object))
+        remarks[row] += "; " * bool(remarks[row]) + words
 
     def _catalogue(self, text: dict[str, ObjectArray], kind: ObjectArray) -> None:
         codes = catalogue_codes()
@@ -366,6 +371,9 @@ class _Reader:
                     row, "66-70", "is not a magnitude", "Write a number such as 19.3, or blanks."
                 )
         text["mag"] = mags
+        for row in np.flatnonzero((mags == "") & (text["band"] != "")).tolist():
+            self._remark(text, row, f"column 71: {text['band'][row]}")
+            text["band"][row] = ""
         text["band"] = np.where((mags != "") & (text["band"] == ""), BAND_UNKNOWN, text["band"])
 
     def _time(self) -> tuple[ObjectArray, NDArray[np.float64]]:
@@ -460,18 +468,20 @@ class _Reader:
                 if unit not in "12":
                     raise self._second_fail(second, "33", "the unit must be 1 (km) or 2 (au)")
                 values = [_signed(line[a:b]) for a, b in ((34, 46), (46, 58), (58, 70))]
-                if any(v is None for v in values):
+                if line[33] in NUMERIC or any(v is None for v in values):
                     raise self._second_fail(
-                        second, "35-70", "this is not a geocentric position in x, y, z"
+                        second, "34-70", "this is not a geocentric position in x, y, z"
                     )
                 text["sys"][row] = "ICRF_KM" if unit == "1" else "ICRF_AU"
             else:
                 values = [_signed(line[34:44]), _signed(line[45:55]), _signed(line[56:61])]
-                if unit not in "1 " or any(v is None for v in values):
+                between = line[33] + line[44] + line[55] + line[61:71]
+                if unit not in "1 " or between.strip() or any(v is None for v in values):
                     raise self._second_fail(
                         second,
-                        "33-61",
-                        "this is not an east longitude, a latitude (deg) and an altitude (m)",
+                        "33-71",
+                        "this is not an east longitude (35-44), a latitude (46-55, deg) and an "
+                        "altitude (57-61, m) with blanks between them",
                     )
                 text["sys"][row] = "WGS84"
             text["ctr"][row] = "399"
@@ -523,10 +533,8 @@ class _Reader:
 
     def _offsets(self, text: dict[str, ObjectArray], kind: ObjectArray) -> None:
         rows = kind == OFFSET
-        if rows.any():
-            text.setdefault("remarks", np.full(self.n, "", dtype=object))
-            for row in np.flatnonzero(rows):
-                text["remarks"][row] = f"80-column offset: {self.firsts[row].text[32:56].strip()}"
+        for row in np.flatnonzero(rows).tolist():
+            self._remark(text, row, f"80-column offset: {self.firsts[row].text[32:56].strip()}")
 
 
 def _is_number(text: str) -> bool:

@@ -15,6 +15,7 @@ from ngbound.arc.misplaced import misread, second_tracks
 from ngbound.arc.observations import Arc
 from ngbound.arc.stations import record_position_km
 from ngbound.arc.time_stamps import time_shifts
+from ngbound.constants import AU_KM
 from ngbound.errors import StationError
 from ngbound.rounding import counted
 
@@ -30,8 +31,23 @@ FEWEST = 3
 SAME_SITE_KM = 1.0
 """Positions of one station closer than this differ by less than any astrometry of today sees: a
 kilometre is 1.4 mas at 1 au."""
+PLACE_KM = {
+    "WGS84": (6300.0, 6500.0),
+    "ITRF": (6300.0, 6500.0),
+    "ICRF_KM": (6300.0, 100.0 * AU_KM),
+    "ICRF_AU": (6300.0, 100.0 * AU_KM),
+}
+"""Distances from the Earth's centre at which observers stand, by the system of the position."""
+RADAR_MHZ = (5.0, 1e5)
+"""What the ionosphere and the air let through."""
 MOST_AT_ONCE = 5
 """Records of one station at one instant that are compared with each other."""
+SYSTEM_UNITS = {
+    "WGS84": "east longitude and latitude in degrees, altitude in m",
+    "ITRF": "east longitude in degrees, distances from axis and equator in km",
+    "ICRF_KM": "x, y, z in km",
+    "ICRF_AU": "x, y, z in au",
+}
 READINGS = {
     "ra-in-hours": "its right ascension, taken as hours, fits",
     "ra-in-degrees": "its right ascension, divided by 15, fits",
@@ -60,7 +76,7 @@ def vet(arc: Arc) -> list[Finding]:
 
     Kinds: "exact-duplicate", "near-duplicate", "impossible-rate", "ra-in-hours", "ra-in-degrees",
     "declination-sign", "second-object", "time-stamps", "few-observations", "single-station",
-    "surplus-position".
+    "surplus-position", "impossible-position", "impossible-frequency".
     """
     table = arc.table
     rows = np.flatnonzero(table["use"].to_numpy(dtype=bool))
@@ -78,6 +94,7 @@ def vet(arc: Arc) -> list[Finding]:
         return findings
     radar = (table["kind"] == RADAR).to_numpy(dtype=bool)[rows]
     findings.extend(_echoes_twice(arc, rows[radar]))
+    findings.extend(_frequencies(arc, rows[radar]))
     # what follows is about directions
     rows = rows[~radar]
     if len(rows) == 0:
@@ -99,6 +116,7 @@ def vet(arc: Arc) -> list[Finding]:
             )
         )
     findings.extend(_surplus(used, rows))
+    findings.extend(_places(used, rows))
     return sorted(findings, key=lambda f: f.rows[:1])
 
 
@@ -155,6 +173,54 @@ def _surplus(arc: Arc, rows: NDArray[np.int64]) -> list[Finding]:
             )
         )
     return found
+
+
+def _places(arc: Arc, rows: NDArray[np.int64]) -> list[Finding]:
+    """Positions of observers where none can stand: another unit, or another order."""
+    t = arc.table
+    codes = t["stn"].to_numpy(dtype=object)
+    moving = np.isin(t["site"].to_numpy(dtype=object), ("roving", "space"))
+    found = []
+    for system, (least, most) in PLACE_KM.items():
+        mine = np.flatnonzero(moving & (t["sys"] == system).to_numpy(dtype=bool))
+        one, two, three = (t[f"pos{k}"].to_numpy(dtype=float)[mine] for k in (1, 2, 3))
+        far_km = np.linalg.norm(record_position_km(system, one, two, three), axis=1)
+        wrong = ~((far_km >= least) & (far_km <= most))
+        if system == "WGS84":
+            wrong |= np.abs(two) > 90.0
+        for code in sorted(set(codes[mine[wrong]])):
+            of_code = mine[wrong & (codes[mine] == code)]
+            first = t.iloc[of_code[0]]
+            found.append(
+                Finding(
+                    tuple(int(r) for r in rows[of_code]),
+                    "impossible-position",
+                    f"{counted(len(of_code), 'record')} of station {code}, the first in line "
+                    f"{first['line']}: no observer stands at pos1 {first['pos1']:g}, pos2 "
+                    f"{first['pos2']:g}, pos3 {first['pos3']:g} of the system {system} "
+                    f"({SYSTEM_UNITS[system]}): the parallax is wrong, and a thrust takes part of "
+                    "that up.",
+                )
+            )
+    return found
+
+
+def _frequencies(arc: Arc, rows: NDArray[np.int64]) -> list[Finding]:
+    """Frequencies of echoes that no radar sends, as those in Hz or GHz."""
+    t = arc.table.iloc[rows]
+    wrong = rows[~t["frq"].between(*RADAR_MHZ).to_numpy()] if len(rows) else rows
+    if not len(wrong):
+        return []
+    first = arc.table.iloc[wrong[0]]
+    return [
+        Finding(
+            tuple(int(r) for r in wrong),
+            "impossible-frequency",
+            f"{counted(len(wrong), 'echo record')}, the first in line {first['line']}: no radar "
+            f"sends at {first['frq']:g} MHz, the unit of frq; the Doppler shift computed is wrong "
+            "by as large a factor, and so is the thrust.",
+        )
+    ]
 
 
 def _sky(arc: Arc) -> tuple[NDArray[np.float64], NDArray[np.float64]]:

@@ -89,9 +89,8 @@ def reduce_offsets(arc: Arc, ephemeris: Ephemeris) -> Arc:
         why[here] = ""
         if name in NOT_THE_PLANET:
             warnings.warn(
-                f"{arc.source}: {len(here)} offsets are counted from {name.capitalize()}, for "
-                "which the barycentre of its system is taken; the positions can be off by 0.1 "
-                "arcsec.",
+                f"{arc.source}: the offsets from {name.capitalize()} ({len(here)}) are counted "
+                "from the barycentre of its system; the positions can be off by 0.1 arcsec.",
                 NgboundWarning,
                 stacklevel=2,
             )

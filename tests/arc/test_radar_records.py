@@ -121,6 +121,13 @@ def test_an_echo_reported_twice_is_found() -> None:
     assert "Doppler shifts of one echo" in found[1].sentence
 
 
+@pytest.mark.parametrize("frequency", [2.38, 2.38e9])
+def test_a_frequency_in_another_unit_is_found(frequency: float) -> None:
+    found = [f for f in vet(radar_arc(frq=frequency)) if f.kind == "impossible-frequency"]
+    assert [f.rows for f in found] == [(0,)]
+    assert "impossible-frequency" not in [f.kind for f in vet(radar_arc())]
+
+
 def test_inspection_of_a_mixed_arc() -> None:
     arc, _ = mixed_arc()
     told = survey(arc)

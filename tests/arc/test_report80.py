@@ -133,6 +133,30 @@ def test_a_roving_observer(tmp_path: Path) -> None:
     )
 
 
+@pytest.mark.parametrize(
+    ("kind", "stn", "position"),
+    [
+        # one column to the left: the sign of the latitude would be lost, or the thousand metres
+        ("V", "247", "1  12.345678-12.345678   1234"),
+        ("V", "247", "1  12.345678  12.34567812345"),
+        ("V", "247", "1  12.345678  12.345678  12345"),
+        ("S", "250", "1- 6490.4555 + 2183.2275 +  914.7962 "),
+    ],
+)
+def test_positions_out_of_their_columns(tmp_path: Path, kind: str, stn: str, position: str) -> None:
+    second = f"     K24A01B  {kind.lower()}2024 03 01.12345 {position:45s}{stn}"
+    with pytest.raises(ArcError, match="line 2, columns 3.* of the second line"):
+        read(tmp_path, line80(kind=kind, stn=stn), second)
+
+
+def test_a_band_without_a_magnitude_goes_to_the_remarks(tmp_path: Path) -> None:
+    arc = read(tmp_path, line80(mag=""), line80(note="\u00a7", mag="", stn="703"), line80(mag="20"))
+    assert arc.table.band.tolist() == ["", "", "V"]
+    assert arc.table.remarks.tolist() == ["column 71: V", "column 14: \u00a7; column 71: V", ""]
+    write_psv(arc, tmp_path / "again.psv")
+    assert read_arc(tmp_path / "again.psv").table.remarks.tolist() == arc.table.remarks.tolist()
+
+
 def test_radar_record_becomes_delay_and_doppler(tmp_path: Path) -> None:
     desig = "12345       "
     first = f"{desig}  R2024 03 01.000000   123456789123 +   12345123 02380  251 JPLRS251"
@@ -226,7 +250,7 @@ def test_header_lines_and_gzip(tmp_path: Path) -> None:
         ([S1, line80()], r"needs a second line"),
         ([S2], r"no first line"),
         ([S1, S2.replace("01.123456", "02.123456")], r"differ from the first"),
-        ([S1, S2.replace("6490", "64x0")], r"columns 35-70 of the second line"),
+        ([S1, S2.replace("6490", "64x0")], r"columns 34-70 of the second line"),
         ([line80(), line80(desig="     K24B01C")], r"2 objects in it: .*object="),
     ],
 )

@@ -73,6 +73,29 @@ def test_few_and_single() -> None:
     assert [k for k, _ in kinds(frame(6))] == ["single-station"]
 
 
+@pytest.mark.parametrize(
+    ("stn", "system", "good", "bad"),
+    [
+        ("247", "WGS84", (190.0, -45.0, 100.0), (-45.0, 190.0, 100.0)),
+        ("247", "WGS84", (190.0, -45.0, 8000.0), (190.0, -45.0, 6.4e6)),
+        ("247", "ITRF", (10.0, 4500.0, 4500.0), (10.0, 4.5e6, 4.5e6)),
+        ("250", "ICRF_KM", (0.0, -7000.0, 0.0), (0.0, -7000.0 / 1.496e8, 0.0)),
+        ("250", "ICRF_AU", (0.0, -0.01, 0.0), (0.0, -7000.0, 0.0)),
+    ],
+)
+def test_positions_in_another_unit(
+    stn: str, system: str, good: tuple[float, ...], bad: tuple[float, ...]
+) -> None:
+    table = two_stations().assign(sys="", ctr=np.nan, pos1=np.nan, pos2=np.nan, pos3=np.nan)
+    table.loc[2:4, "stn"] = stn
+    for rows, place in ((2, good), (3, bad), (4, bad)):
+        table.loc[rows, ["pos1", "pos2", "pos3"]] = place
+        table.loc[rows, ["sys", "ctr"]] = (system, 399)
+    found = [f for f in vet(Arc.from_frame(table)) if f.kind == "impossible-position"]
+    assert [f.rows for f in found] == [(3, 4)]
+    assert str(found[0]).startswith(f"impossible-position: 2 records of station {stn}, the first")
+
+
 def test_surplus_position() -> None:
     place = {"sys": "WGS84", "ctr": 399, "pos1": -110.789, "pos2": 32.443, "pos3": 2510.0}
     table = two_stations().assign(**place)

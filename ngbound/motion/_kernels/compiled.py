@@ -34,7 +34,7 @@ def kernel(
     """``numba.njit`` with NumPy's rules for division, kept until a file of this folder changes."""
 
     def compiled(function: Callable[..., Any]) -> Any:
-        rules = {"error_model": "numpy", "fastmath": fastmath, "nogil": nogil}
+        rules: dict[str, Any] = {"error_model": "numpy", "fastmath": fastmath, "nogil": nogil}
         try:
             made = njit(cache=True, **rules)(function)
         except RuntimeError:  # numba finds no folder that it may write to
