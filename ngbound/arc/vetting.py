@@ -217,8 +217,8 @@ def _frequencies(arc: Arc, rows: NDArray[np.int64]) -> list[Finding]:
             tuple(int(r) for r in wrong),
             "impossible-frequency",
             f"{counted(len(wrong), 'echo record')}, the first in line {first['line']}: no radar "
-            f"sends at {first['frq']:g} MHz, the unit of frq; the Doppler shift computed is wrong "
-            "by as large a factor, and so is the thrust.",
+            f"sends at {first['frq']:g} MHz, the unit of frq; its Doppler shift is then computed "
+            "wrong by as large a factor, and rejected or taken for a thrust.",
         )
     ]
 
