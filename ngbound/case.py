@@ -117,7 +117,8 @@ class ErrorsTable(Table):
         default=ErrorModel.station_offset_arcsec, description="Prior of each station's offset."
     )
     clock_s: float = Field(
-        default=ErrorModel.clock_s, description="Prior of each station's clock error."
+        default=ErrorModel.clock_s,
+        description="Prior of each station's clock error where none is stated.",
     )
     photocentre_arcsec_au: float = Field(
         default=ErrorModel.photocentre_arcsec_au,

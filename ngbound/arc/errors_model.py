@@ -479,7 +479,8 @@ class ErrorModel:
         Prior standard deviation of an offset of each station in RA and Dec; 0 for none. None: a
         fifth of sigma where it is implied by the table, nothing where it is stated or uniform.
     clock_s : float
-        Prior standard deviation of a clock error of each station; 0 for none.
+        Prior standard deviation of a clock error of each station where it states none (uncTime);
+        0 for none.
     photocentre_arcsec_au : float
         Prior standard deviation of the photocentre's offset along the direction to the Sun, arcsec
         at 1 au; 0 for none.
@@ -612,7 +613,7 @@ class ErrorModel:
             parts.append(station_offsets(arc, STATION_FRACTION * implied_arcsec, where))
         elif self.station_offset_arcsec > 0.0:
             parts.append(station_offsets(arc, np.full(len(arc), self.station_offset_arcsec)))
-        if self.clock_s > 0.0 and motion_arcsec_s is not None:
+        if motion_arcsec_s is not None:
             parts.append(station_clocks(arc, self.clock_s, motion_arcsec_s))
         if self.photocentre_arcsec_au > 0.0 and sunward_per_au is not None:
             parts.append(photocentre_offset(self.photocentre_arcsec_au, sunward_per_au))

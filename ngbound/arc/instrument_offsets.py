@@ -11,7 +11,8 @@ therefore a choice, and it was made after an arc had shown the need: without it 
 12893 shows a normal thrust of 3.7 sigma. Whoever asks for published priors only sets it to 0; the
 variant "no station offsets" (`ngbound.fit.error_variants`) says beside every limit what it costs.
 
-The others are off unless asked for. A clock error moves the observed place along the motion; the
+The others are off unless asked for or, a clock error, stated (uncTime). A clock error moves the
+observed place along the motion; the
 photocentre of a comet lies off its nucleus along the direction to the Sun, by an angle that goes
 as 1/distance (for example D. K. Yeomans et al. 2004, in Comets II, p. 137; the size is the
 user's).
@@ -50,26 +51,40 @@ def station_offsets(arc: Arc, sigma_arcsec: FloatArray, source: str = USER) -> S
             names.append(f"station {code}, {letter}")
             columns.append(column.ravel())
             sigma.append(float(np.median(sigma_arcsec[mine])))
-    return _made(names, columns, np.array(sigma), "arcsec", source)
+    return _made(names, columns, np.array(sigma), "arcsec", [source] * len(names))
 
 
 def _made(
-    names: list[str], columns: list[FloatArray], sigma: FloatArray, unit: str, source: str
+    names: list[str], columns: list[FloatArray], sigma: FloatArray, unit: str, source: list[str]
 ) -> SharedErrors:
     k = len(names)
     matrix = np.stack(columns, axis=1) if columns else np.zeros((0, 0))
-    return SharedErrors(tuple(names), matrix, sigma, (unit,) * k, (source,) * k)
+    return SharedErrors(tuple(names), matrix, sigma, (unit,) * k, tuple(source))
 
 
 def station_clocks(arc: Arc, sigma_s: float, motion_arcsec_s: FloatArray) -> SharedErrors:
-    """A clock error for each station: along the motion (n, 2), arcsec/s in RA cos dec and Dec."""
+    """A clock error for each station: along the motion (n, 2), arcsec/s in RA cos dec and Dec.
+
+    Its prior standard deviation is the stated uncTime of a record, and ``sigma_s`` where a record
+    states none; stations where all are 0 have none.
+    """
     stn = arc.table["stn"].to_numpy(dtype=object)
-    names, columns = [], []
+    chosen = np.full(len(stn), sigma_s)
+    stated = (
+        arc.table["uncTime"].to_numpy(dtype=float) if "uncTime" in arc.table else chosen * np.nan
+    )
+    sizes = np.where(np.isfinite(stated), stated, chosen)
+    names, columns, sigma, source = [], [], [], []
     for code in sorted(set(stn.tolist())):
-        column = np.where((stn == code)[:, None], motion_arcsec_s, 0.0) * sigma_s * ARCSEC_RAD
+        mine = stn == code
+        if sizes[mine].max() <= 0.0:
+            continue
+        column = np.where(mine[:, None], motion_arcsec_s * sizes[:, None], 0.0) * ARCSEC_RAD
         names.append(f"clock of station {code}")
         columns.append(column.ravel())
-    return _made(names, columns, np.full(len(names), sigma_s), "s", USER)
+        sigma.append(float(np.median(sizes[mine])))
+        source.append("stated as uncTime" if np.isfinite(stated[mine]).any() else USER)
+    return _made(names, columns, np.array(sigma), "s", source)
 
 
 def photocentre_offset(sigma_arcsec_au: float, sunward_per_au: FloatArray) -> SharedErrors:
@@ -85,4 +100,4 @@ def photocentre_offset(sigma_arcsec_au: float, sunward_per_au: FloatArray) -> Sh
     """
     column = sigma_arcsec_au * ARCSEC_RAD * sunward_per_au
     sigma = np.array([sigma_arcsec_au])
-    return _made(["photocentre sunward"], [column.ravel()], sigma, "arcsec au", USER)
+    return _made(["photocentre sunward"], [column.ravel()], sigma, "arcsec au", [USER])

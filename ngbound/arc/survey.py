@@ -54,9 +54,9 @@ class Survey:
 
     Counts are of records by their code (the receiver's for radar); ``set_aside`` counts those that
     no fit uses by the reason, and ``set_aside_lines`` names their lines; ``errors`` holds a `Range`
-    per kind of error: "stated RA", "stated Dec", "stated time", "digits RA", "digits Dec",
-    "digits time", "assigned RA", "assigned Dec" (those that occur). ``gaps`` are the longest of the
-    ``n_gaps`` gaps of 30 days or more.
+    per kind of error: "stated RA", "stated Dec", "stated time", "stated clock", "digits RA",
+    "digits Dec", "digits time", "assigned RA", "assigned Dec" (those that occur). ``gaps`` are the
+    longest of the ``n_gaps`` gaps of 30 days or more.
     """
 
     name: str
@@ -145,6 +145,7 @@ def survey(arc: Arc) -> Survey:
     for title, column, unit in (
         ("stated delay", "rmsDelay", "microseconds"),
         ("stated Doppler", "rmsDoppler", "Hz"),
+        ("stated clock", "uncTime", "s"),
     ):
         if column in table:
             _put(errors, title, table[column].to_numpy(dtype=float), unit)

@@ -1,5 +1,7 @@
 """Errors of observations and whitening, against dense covariances and worked numbers."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
 from hypothesis import given, settings
@@ -126,6 +128,22 @@ def test_over_observing() -> None:
     np.testing.assert_allclose(noise.sigma_ra_arcsec, [0.5 * 1.5] * 9 + [0.5])
     np.testing.assert_array_equal(noise.night_common_arcsec, 0.0)
     np.testing.assert_allclose(ErrorModel(over_observing="none").apply(a).sigma_ra_arcsec, 0.5)
+
+
+def test_stated_uncertainty_of_the_clock_is_shared_by_the_station() -> None:
+    a = arc(4, rmsRA=0.1, rmsDec=0.1, uncTime=[0.5, 2.0, np.nan, np.nan])
+    motion = np.array([[3.0, 4.0], [0.3, 0.4], [1.0, 0.0], [0.0, 0.0]])
+    plain = ErrorModel(catalogue_offsets=False, station_offset_arcsec=0.0)
+    shared = plain.apply(a, motion).shared
+    assert shared is not None and shared.names == ("clock of station G96",)
+    assert shared.source == ("stated as uncTime",) and shared.unit == ("s",)
+    shift = shared.matrix.reshape(4, 2) / ARCSEC_RAD
+    np.testing.assert_allclose(shift, [[1.5, 2.0], [0.6, 0.8], [0.0, 0.0], [0.0, 0.0]])
+    # where the observer states none, the user's prior stands
+    shared = replace(plain, clock_s=0.2).apply(a, motion).shared
+    assert shared is not None
+    np.testing.assert_allclose(shared.matrix.reshape(4, 2)[2] / ARCSEC_RAD, [0.2, 0.0])
+    assert plain.apply(a).shared is None and plain.apply(arc(4), motion).shared is None
 
 
 def test_timing_error_lies_along_the_motion() -> None:
