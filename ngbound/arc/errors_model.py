@@ -32,7 +32,7 @@ from ngbound.arc.catalogue_offsets import catalogue_offsets, catalogue_treatment
 from ngbound.arc.debiasing import debiased
 from ngbound.arc.fields import civil_day
 from ngbound.arc.instrument_offsets import photocentre_offset, station_clocks, station_offsets
-from ngbound.arc.observations import Arc
+from ngbound.arc.observations import Arc, observers_of
 from ngbound.arc.radar_centre import RADIUS_FRACTION, radius_error, referred_to_centre
 from ngbound.arc.shared_errors import Modes, SharedErrors, joined
 from ngbound.constants import ARCSEC_RAD
@@ -843,17 +843,7 @@ def station_nights(arc: Arc) -> IntArray:
     if n == 0:
         return night
     time = table["utc_day"].to_numpy() + table["utc_sec"].to_numpy() / 86400.0
-    stn = table["stn"].to_numpy(dtype=object)
-    roving = (table["site"] == "roving").to_numpy(dtype=bool)
-    if roving.any():
-        pos = table[["pos1", "pos2"]].to_numpy(dtype=float)
-        stn = np.array(
-            [
-                f"{s} {p[0]:.3f} {p[1]:.3f}" if r else s
-                for s, p, r in zip(stn, pos, roving, strict=True)
-            ],
-            dtype=object,
-        )
+    stn = observers_of(arc)
     current: dict[str, tuple[float, float, int]] = {}
     count = 0
     for row in np.argsort(time, kind="stable"):

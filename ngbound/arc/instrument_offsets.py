@@ -21,7 +21,7 @@ user's).
 import numpy as np
 from numpy.typing import NDArray
 
-from ngbound.arc.observations import Arc
+from ngbound.arc.observations import Arc, observers_of
 from ngbound.arc.shared_errors import SharedErrors
 from ngbound.constants import ARCSEC_RAD
 
@@ -30,7 +30,8 @@ USER = "chosen by the user"
 
 
 def station_offsets(arc: Arc, sigma_arcsec: FloatArray, source: str = USER) -> SharedErrors:
-    """An offset in RA and one in Dec for each station, over the whole arc.
+    """An offset in RA and one in Dec for each station, over the whole arc; each place of roving
+    observers, who share a code, is a station.
 
     Parameters
     ----------
@@ -39,7 +40,7 @@ def station_offsets(arc: Arc, sigma_arcsec: FloatArray, source: str = USER) -> S
     source : str
         Where the prior comes from.
     """
-    stn = arc.table["stn"].to_numpy(dtype=object)
+    stn = observers_of(arc)
     names, columns, sigma = [], [], []
     for code in sorted(set(stn.tolist())):
         mine = stn == code
@@ -68,7 +69,7 @@ def station_clocks(arc: Arc, sigma_s: float, motion_arcsec_s: FloatArray) -> Sha
     Its prior standard deviation is the stated uncTime of a record, and ``sigma_s`` where a record
     states none; stations where all are 0 have none.
     """
-    stn = arc.table["stn"].to_numpy(dtype=object)
+    stn = observers_of(arc)
     chosen = np.full(len(stn), sigma_s)
     stated = (
         arc.table["uncTime"].to_numpy(dtype=float) if "uncTime" in arc.table else chosen * np.nan

@@ -339,6 +339,16 @@ def _plain(column: pd.Series) -> NDArray[Any]:
     return column.to_numpy(dtype="object" if pd.api.types.is_string_dtype(column) else None)
 
 
+def observers_of(arc: Arc) -> ObjectArray:
+    """Who observed each row (n,): the code, and for roving observers, who share one, the place to
+    a hundredth of a degree."""
+    table = arc.table
+    who = table["stn"].to_numpy(dtype=object).copy()
+    for row in np.flatnonzero((table["site"] == "roving").to_numpy(dtype=bool)).tolist():
+        who[row] += f" at {table['pos1'].iat[row]:.2f}, {table['pos2'].iat[row]:.2f}"
+    return who
+
+
 def iso_day(mjd: int) -> str:
     """Calendar date of an MJD day number."""
     year, month, day = calendar_date(np.array([mjd]))

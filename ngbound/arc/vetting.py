@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from ngbound.arc.ades_rules import RADAR
 from ngbound.arc.errors_model import station_nights
 from ngbound.arc.misplaced import misread, second_tracks
-from ngbound.arc.observations import Arc
+from ngbound.arc.observations import Arc, observers_of
 from ngbound.arc.stations import record_position_km
 from ngbound.arc.time_stamps import time_shifts
 from ngbound.constants import AU_KM
@@ -106,7 +106,7 @@ def vet(arc: Arc) -> list[Finding]:
     findings.extend(_jumps(used, rows, time))
     findings.extend(_misread(used, rows, time))
     findings.extend(_time_stamps(used, rows))
-    if len(set(_observers(used))) == 1 and len(rows) >= FEWEST:
+    if len(set(observers_of(used))) == 1 and len(rows) >= FEWEST:
         findings.append(
             Finding(
                 (),
@@ -118,16 +118,6 @@ def vet(arc: Arc) -> list[Finding]:
     findings.extend(_surplus(used, rows))
     findings.extend(_places(used, rows))
     return sorted(findings, key=lambda f: f.rows[:1])
-
-
-def _observers(arc: Arc) -> NDArray[np.object_]:
-    """Who observed each row (n,): the code, and for roving observers, who share one, the place to
-    a hundredth of a degree."""
-    t = arc.table
-    who = t["stn"].to_numpy(dtype=object).copy()
-    for row in np.flatnonzero((t["site"] == "roving").to_numpy(dtype=bool)).tolist():
-        who[row] += f" at {t['pos1'].iat[row]:.2f}, {t['pos2'].iat[row]:.2f}"
-    return who
 
 
 def _surplus(arc: Arc, rows: NDArray[np.int64]) -> list[Finding]:
@@ -235,7 +225,7 @@ def _step_arcsec(ra: NDArray, dec: NDArray, a: int, b: int) -> NDArray[np.float6
 
 def _duplicates(arc: Arc, rows: NDArray[np.int64], time: NDArray[np.float64]) -> list[Finding]:
     ra, dec = _sky(arc)
-    stn = _observers(arc)
+    stn = observers_of(arc)
     line = arc.table["line"].to_numpy()
     order = np.lexsort((time, stn.astype(str)))
     found = []
@@ -274,33 +264,36 @@ def _duplicates(arc: Arc, rows: NDArray[np.int64], time: NDArray[np.float64]) ->
 
 
 def _echoes_twice(arc: Arc, rows: NDArray[np.int64]) -> list[Finding]:
-    """Echoes of one pair of stations and one instant that are both delays or both Doppler
-    shifts."""
-    seen: dict[tuple[Any, ...], int] = {}
+    """Echoes of one pair of stations and one instant, to within a clock, that are both delays or
+    both Doppler shifts."""
+    last: dict[tuple[Any, ...], tuple[int, float]] = {}
     found = []
-    for row in rows.tolist():
+    time = arc.table["utc_day"].to_numpy() * 86400.0 + arc.table["utc_sec"].to_numpy()
+    for row in rows[np.argsort(time[rows], kind="stable")].tolist():
         record = arc.table.iloc[row]
         is_delay = bool(np.isfinite(record.get("delay", np.nan)))
-        time = (int(record["utc_day"]), float(record["utc_sec"]))
-        first = seen.setdefault((record["trx"], record["rcv"], *time, is_delay), row)
-        if first != row:
-            lines = f"lines {arc.table['line'].iloc[first]} and {record['line']}"
+        echo = (record["trx"], record["rcv"], is_delay)
+        before, then = last.get(echo, (row, -np.inf))
+        if time[row] - then <= SAME_INSTANT_S:
+            pair = tuple(sorted((before, row)))
+            lines = " and ".join(str(arc.table["line"].iloc[r]) for r in pair)
             found.append(
                 Finding(
-                    (first, row),
+                    pair,
                     "exact-duplicate",
-                    f"{lines} are {'delays' if is_delay else 'Doppler shifts'} of one echo "
+                    f"lines {lines} are {'delays' if is_delay else 'Doppler shifts'} of one echo "
                     f"(stations {record['trx']} and {record['rcv']}): it would count twice, and "
                     "the thrust's error come out too small.",
                 )
             )
+        last[echo] = row, time[row]
     return found
 
 
 def _misread(arc: Arc, rows: NDArray[np.int64], time: NDArray[np.float64]) -> list[Finding]:
     ra, dec = _sky(arc)
     line = arc.table["line"].to_numpy()
-    stn = _observers(arc)
+    stn = observers_of(arc)
     # the parallax of a spacecraft sets its track apart from those seen from the ground
     in_space = (arc.table["site"] == "space").to_numpy(dtype=bool)
     ground = np.flatnonzero(~in_space)

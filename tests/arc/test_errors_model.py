@@ -146,6 +146,16 @@ def test_stated_uncertainty_of_the_clock_is_shared_by_the_station() -> None:
     assert plain.apply(a).shared is None and plain.apply(arc(4), motion).shared is None
 
 
+def test_roving_observers_share_a_code_but_no_errors() -> None:
+    a = arc(4, stn="247", sys="WGS84", ctr=399, pos1=[10.0, 10.0, 20.0, 20.0], pos2=5.0, pos3=0.0)
+    shared = ErrorModel(catalogue_offsets=False, station_offset_arcsec=0.3).apply(a).shared
+    assert shared is not None
+    assert shared.names[::2] == ("station 247 at 10.00, 5.00, RA", "station 247 at 20.00, 5.00, RA")
+    assert (shared.matrix.reshape(4, 2, 4)[:, 0, ::2] > 0.0).tolist() == [
+        [True, False], [True, False], [False, True], [False, True]
+    ]  # fmt: skip
+
+
 def test_timing_error_lies_along_the_motion() -> None:
     a = arc(3, rmsRA=0.1, rmsDec=0.1, rmsTime=[0.5, np.nan, np.nan])
     motion = np.array([[3.0, 4.0], [0.3, 0.4], [0.0, 0.0]])

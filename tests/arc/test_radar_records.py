@@ -119,6 +119,14 @@ def test_an_echo_reported_twice_is_found() -> None:
     assert [finding.rows for finding in found] == [(61, 68), (66, 69)]
     assert "delays of one echo" in found[0].sentence
     assert "Doppler shifts of one echo" in found[1].sentence
+    # the same echo out of a format that tells its second less well
+    table = again.table.assign(
+        utc_sec=again.table["utc_sec"]
+        .where(again.table.index < 68)
+        .fillna(again.table["utc_sec"] - 0.01)
+    )
+    found = [f.rows for f in vet(replace(again, table=table)) if f.kind == "exact-duplicate"]
+    assert found == [(61, 68), (66, 69)]
 
 
 @pytest.mark.parametrize("frequency", [2.38, 2.38e9])
