@@ -18,7 +18,13 @@ from ngbound.arc import Arc, ErrorModel, Noise, treatment_text
 from ngbound.constants import ARCSEC_RAD
 from ngbound.errors import FitError
 from ngbound.fit.least_squares import Correction, parameter_names, thrust_of
-from ngbound.fit.noise_scale import StationScale, rescaled, student_dof, tail_probability
+from ngbound.fit.noise_scale import (
+    StationScale,
+    noise_excess,
+    rescaled,
+    student_dof,
+    tail_probability,
+)
 from ngbound.fit.orbit_search import Converged, at_epoch, find_orbit, middle_epoch, settle
 from ngbound.fit.outliers import chi2_of_records
 from ngbound.fit.residuals import motion_rad_d, residual_table, sunward_per_au
@@ -268,11 +274,22 @@ class Fit:
         Fisher. None where errors are taken as known, or known as well as that."""
         if not self.scales or not self.error_model.student:
             return None
+        return student_dof(self.scales, self.joint, *self._rescaled_part)
+
+    @cached_property
+    def noise_excess(self) -> float:
+        """By how much the square of those standard errors is too large on average, because the
+        part common to a night cannot be estimated below zero; 1 where errors are as known."""
+        if self.noise_dof is None:
+            return 1.0
+        return noise_excess(self.scales, self.joint, *self._rescaled_part)
+
+    @property
+    def _rescaled_part(self) -> tuple[NDArray[np.object_], slice]:
+        """Stations of the kept observations, "" where not rescaled; parameters that matter."""
         codes = self.used.table["stn"].to_numpy(dtype=object)
         codes = np.where(self.error_model.rescalable(self.noise), codes, "")[self.keep]
-        p = self.theta.size
-        wanted = slice(6 if self.components else 0, p)
-        return student_dof(self.scales, self.joint, codes, wanted)
+        return codes, slice(6 if self.components else 0, self.theta.size)
 
     @property
     def error_report(self) -> str:
@@ -381,6 +398,7 @@ class Fit:
             "misfit": self.misfit,
             "catalogue_treatments": self.catalogue_treatments,
             "noise_dof": self.noise_dof,
+            "noise_excess": self.noise_excess,
             "station_scales": [scale.to_dict() for scale in self.scales],
             "shared_errors": self.offsets.to_dict("records"),
         }

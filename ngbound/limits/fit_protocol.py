@@ -31,7 +31,8 @@ class ThrustFit(Protocol):
         Number of residual components less ``p``.
 
     A fit may also carry ``noise_dof``, the degrees of freedom that its errors rest on where they
-    were estimated from the residuals (None where they are known), and ``thrust`` with its law.
+    were estimated from the residuals (None where they are known), ``noise_excess``, by
+    which the squares of those errors are too large on average, and ``thrust`` with its law.
     """
 
     @property
@@ -72,6 +73,7 @@ class GaussianFit:
     chi2: float
     dof: int
     noise_dof: int | None = None
+    noise_excess: float = 1.0
 
     def chi2_many(self, thetas: np.ndarray, /) -> np.ndarray:
         """chi2 (m,) of parameter vectors (m, p): a parabola."""
@@ -86,4 +88,7 @@ class GaussianFit:
         dof = max(0, n_numbers - theta.size)
         names = tuple(str(name) for name in fit.names)
         noise_dof = getattr(fit, "noise_dof", None)
-        return cls(fit.components, names, theta, normal, fit.n_state, float(dof), dof, noise_dof)
+        excess = getattr(fit, "noise_excess", 1.0)
+        return cls(
+            fit.components, names, theta, normal, fit.n_state, float(dof), dof, noise_dof, excess
+        )

@@ -82,6 +82,8 @@ class ThrustInformation:
         g(r) of the thrust law, r in au, where the fit carries its law.
     noise_dof : int or None
         Degrees of freedom that the errors rest on, where they were estimated from the residuals.
+    noise_excess : float
+        Expected square of such an error over the true one.
     """
 
     components: str
@@ -97,6 +99,7 @@ class ThrustInformation:
     orbit: OrbitConditional
     law_g: Callable[[float], float] | None = None
     noise_dof: int | None = None
+    noise_excess: float = 1.0
 
     @property
     def k(self) -> int:
@@ -216,6 +219,7 @@ class ThrustInformation:
             "variance_inflation_by_orbit": self.inflation_by_orbit.tolist(),
             "variance_inflation_by_other_thrust": self.inflation_by_thrust.tolist(),
             "noise_dof": self.noise_dof,
+            "noise_excess": self.noise_excess,
         }
 
 
@@ -311,6 +315,7 @@ def thrust_information(fit: ThrustFit) -> ThrustInformation:
         ),
         law_g=getattr(getattr(fit, "thrust", None), "g", None),
         noise_dof=getattr(fit, "noise_dof", None),
+        noise_excess=getattr(fit, "noise_excess", 1.0),
     )
 
 

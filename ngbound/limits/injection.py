@@ -243,7 +243,7 @@ def inject_and_recover(
         else push
     )
     injected = _checked(A, n, refitter, false_alarm, confidence)
-    facts = [n, seed, refitter.components, type(refitter).__name__, noise, reject]
+    facts = [n, seed, refitter.components, type(refitter).__name__, refitter.choices]
     facts.append(refitter.noise_dof)
     path = None if checkpoint is None else Path(checkpoint)
     done = _refit_all(refitter, injected, seed, facts, path, progress)
@@ -361,7 +361,7 @@ def _counted(
         name = str(thrust_prior(refitter.information, prior, upper_au_d2=upper_au_d2))
     critical = float(chi2.isf(false_alarm, k) if dof is None else k * f.isf(false_alarm, k, dof))
     noncentral = np.einsum("mi,ij,mj->m", truth, refitter.information.matrix, truth)
-    noncentral = np.maximum(noncentral, 1e-12)
+    noncentral = np.maximum(noncentral / refitter.noise_excess, 1e-12)
     power = (
         ncx2.sf(critical, k, noncentral)
         if dof is None
@@ -512,7 +512,7 @@ def power_curve(
     else:
         axis = info.direction(direction)
     delta = noncentrality(false_alarm, power, info.k, noise_dof=refitter.noise_dof)
-    reach = delta / float(np.sqrt(axis @ info.matrix @ axis))
+    reach = delta * float(np.sqrt(refitter.noise_excess / (axis @ info.matrix @ axis)))
     found = []
     for i, (share, child) in enumerate(
         zip(shares, np.random.SeedSequence(seed).generate_state(len(shares)), strict=True)

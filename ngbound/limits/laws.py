@@ -1,11 +1,15 @@
 """Which thrust law does the arc prefer, and can it tell at all? May import arc, errors, fit, motion
 and this room.
 
-All laws are fitted to the same records: those that the outlier rule keeps with gravity alone or
-with any of them. BIC: G. Schwarz 1978, Ann. Statist. 6, 461. Evidence: the integral of exact
-likelihood times prior by importance sampling from linear theory, orbit flat, thrust isotropic in
-direction and uniform in |A| (at the distance where the law is 1) up to one edge common to all laws;
-the edge is part of the answer, an edge twice as far takes ln 2 off the evidence of every thrust.
+All laws are fitted to the same records, those that the outlier rule keeps with gravity alone or
+with any of them, under the same errors: where a fit takes them from the scatter of its residuals,
+those of the law that leaves least scatter. Each fit under its own would have a chi2 of about one a
+degree of freedom, whatever it explains. BIC and evidence take these errors as known.
+
+BIC: G. Schwarz 1978, Ann. Statist. 6, 461. Evidence: the integral of exact likelihood times prior
+by importance sampling from linear theory, orbit flat, thrust isotropic in direction and uniform in
+|A| (at the distance where the law is 1) up to one edge common to all laws; the edge is part of the
+answer, an edge twice as far takes ln 2 off the evidence of every thrust.
 
 Two laws differ on the sky by the separation D = |(1 - P_j) W_i A|, in sigma: the whitened
 displacement by law i's thrust that no orbit and thrust of law j imitates (P_j projects on the
@@ -23,7 +27,7 @@ from scipy.special import gammaln
 
 from ngbound.arc import Arc, ErrorModel
 from ngbound.errors import LimitError
-from ngbound.fit import Fit, fit_orbit
+from ngbound.fit import Fit, fit_orbit, significance_sigma
 from ngbound.limits.information import thrust_information
 from ngbound.limits.linear_posterior import linear_posterior, log_sum_exp
 from ngbound.limits.priors import thrust_prior
@@ -187,7 +191,15 @@ def compare_laws(
         for name, thrust in thrusts.items()
     }
     keep = np.any([null.keep, *[each.keep for each in found.values()]], axis=0)
-    same = {"forces": forces, "reject": False, "keep": keep}
+    same: dict[str, Any] = {"forces": forces, "reject": False, "keep": keep}
+    noise_dof = None
+    if any(each.scales for each in [null, *found.values()]):
+        own = [
+            fit_orbit(arc, thrusts[name], error_model, initial=each.orbit, **same)
+            for name, each in found.items()
+        ]
+        least = min(own, key=_log_errors)
+        same["noise"], noise_dof = least.noise, least.noise_dof
     null = fit_orbit(arc, None, error_model, initial=null.orbit, **same)
     fits = {
         name: fit_orbit(arc, thrusts[name], error_model, initial=each.orbit, **same)
@@ -212,13 +224,19 @@ def compare_laws(
             "chi2": each.chi2, "n_parameters": each.theta.size, "delta_chi2": delta,
             "delta_bic": delta - (each.theta.size - 6) * float(np.log(n)),
             "ln_evidence": value - base, "ln_evidence_error": float(np.hypot(error, base_error)),
-            "significance_sigma": each.significance,
+            "significance_sigma": significance_sigma(each.wald, infos[name].k, noise_dof),
         }  # fmt: skip
     table = pd.DataFrame.from_dict(rows, orient="index")
     log_z = table["ln_evidence"].to_numpy()
     table["probability"] = np.exp(log_z - log_sum_exp(log_z[None, :])[0])
     at_fit, at_threshold = _separations(fits)
     return LawComparison(null, fits, table, at_fit, at_threshold, float(upper_au_d2), seed)
+
+
+def _log_errors(fit: Fit) -> float:
+    """Sum of the logarithms of the standard deviations of the kept records."""
+    noise = fit.noise.mask(fit.keep)
+    return float(np.sum(np.log(noise.sigma_ra_arcsec) + np.log(noise.sigma_dec_arcsec)))
 
 
 def _log_evidence(

@@ -26,7 +26,7 @@ its own, which is the same as leaving it out and keeps the whitening of its stat
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from typing import Protocol
+from typing import Any, Protocol
 
 import numpy as np
 from numpy.typing import NDArray
@@ -90,6 +90,16 @@ class Refitter(Protocol):
         """Degrees of freedom behind the errors of the arcs; None where they are known."""
         ...
 
+    @property
+    def noise_excess(self) -> float:
+        """Expected square of the errors of the arcs, as estimated, over the true one."""
+        ...
+
+    @property
+    def choices(self) -> dict[str, Any]:
+        """What else decides the results, JSON-able: work may only be resumed with the same."""
+        ...
+
     def refit(self, A: Floats, streams: Sequence[np.random.SeedSequence]) -> Refits:
         """Fit arcs with the thrusts A (m, k), each with noise of its own random stream."""
         ...
@@ -107,6 +117,12 @@ class LinearRefit:
     information: ThrustInformation
 
     noise_dof = None
+    noise_excess = 1.0
+
+    @property
+    def choices(self) -> dict[str, Any]:
+        """See `Refitter`."""
+        return {}
 
     @classmethod
     def of(cls, fit: ThrustFit) -> "LinearRefit":
@@ -190,6 +206,7 @@ class ExactRefit:
         self.fit, self.noise_kind, self.reject = fit, noise, reject
         self.rescale = fit.noise_dof is not None if rescale is None else rescale
         self.noise_dof = fit.noise_dof if self.rescale else None
+        self.noise_excess = fit.noise_excess if self.rescale else 1.0
         self.components = "".join(c for c in fit.components if c in free)
         self.noise = fit.noise.mask(fit.keep)
         p, n_state = fit.theta.size, fit.n_state
@@ -229,6 +246,11 @@ class ExactRefit:
         self._batches = self._same_size()
         self._donors = self._donor_nights() if noise == "residuals" else []
         self._there = self.noise.given.ravel()
+
+    @property
+    def choices(self) -> dict[str, Any]:
+        """See `Refitter`."""
+        return {"noise": self.noise_kind, "reject": self.reject, "rescale": self.rescale}
 
     # ------------------------------------------------------------------------------- noise
 

@@ -20,7 +20,8 @@ R_F Carlson's elliptic integral (B. C. Carlson 1979, Numer. Math. 33, 1); over t
 R_F(0, f1, f2).
 
 Where the noise scale is itself estimated from nu degrees of freedom, normal and chi2 become
-noncentral t and F.
+noncentral t and F; where the squared errors so estimated are too large on average, the thrust that
+the test declares grows with the root of that excess.
 """
 
 from collections.abc import Callable
@@ -178,7 +179,8 @@ class DetectionThreshold:
     isotropic_mean : Quantity
         Mean of the direction-free threshold over all directions.
     delta_one, delta_all : float
-        Non-centrality in sigma of the one-component and of the direction-free test.
+        Threshold in sigma of the one-component and of the direction-free test: the root of the
+        non-centrality, times that of the excess of the errors where they were estimated.
     noise_scale : float
         Factor on every sigma.
     noise_dof : int or None
@@ -350,8 +352,9 @@ def detection_threshold(
         )
     each = float(-np.expm1(np.log1p(-false_alarm) / trials))
     k = information.k
-    delta_one = noncentrality(each, power, 1, sided=sided, noise_dof=noise_dof)
-    delta_all = noncentrality(each, power, k, noise_dof=noise_dof)
+    wide = 1.0 if noise_dof is None else information.noise_excess**0.5
+    delta_one = wide * noncentrality(each, power, 1, sided=sided, noise_dof=noise_dof)
+    delta_all = wide * noncentrality(each, power, k, noise_dof=noise_dof)
     held = np.diag(information.matrix) ** -0.5 * noise_scale
     free = np.diag(information.covariance) ** 0.5 * noise_scale
     values = information.eigenvalues

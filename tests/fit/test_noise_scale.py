@@ -5,8 +5,9 @@ import pytest
 from scipy import stats
 
 from ngbound.arc import ErrorModel
-from ngbound.fit import compare_fits, fit_orbit, student_factor, tail_probability
-from ngbound.limits import detection_threshold
+from ngbound.constants import ARCSEC_RAD
+from ngbound.fit import compare_fits, fit_orbit, rescaled, student_factor, tail_probability
+from ngbound.limits import detection_threshold, noncentrality
 from ngbound.motion import Thrust
 from tests.fit.simulated import BELT, MJD_2020, nights, orbit_of, simulate
 
@@ -149,3 +150,45 @@ def test_student_factor():
     # two-sided 95 % quantile of Student's t with 5 degrees of freedom: 2.571 (W. S. Gosset's table)
     assert student_factor(4.0, 5) == pytest.approx(2.0 * 2.571 / 1.960, abs=1e-3)
     assert student_factor(1.0, 0) == np.inf
+
+
+NO_COMMON = nights(MJD_2020, 400, 16, 4)
+
+
+def test_variances_that_cannot_be_negative_are_too_large_on_average_by_what_is_said():
+    """Arcs whose errors are as the fit found them, each estimated from its own residuals."""
+    truth = simulate(orbit_of(BELT), NO_COMMON, np.random.default_rng(39), 0.25, stated=False)
+    fit = fit_orbit(truth.arc, ALONG, SIMPLE, initial=truth.orbit, reject=False)
+    n, p = len(fit.noise), fit.theta.size
+    design = np.asarray(fit.design).reshape(2 * n, p)
+    length = np.linalg.norm(design, axis=0)
+
+    def variance(noise):
+        white = noise.whiten(design) / length
+        return np.linalg.inv(white.T @ white)[-1, -1]
+
+    common = fit.noise.night_common_arcsec
+    own = np.sqrt(fit.noise.sigma_ra_arcsec**2 - common**2)
+    stations, every = np.full(n, "500", dtype=object), np.ones(n, dtype=bool)
+    random = np.random.default_rng(37)
+    found = []
+    for _ in range(400):
+        shared = random.standard_normal((n, 2))[fit.noise.night] * common[:, None]
+        seen = ARCSEC_RAD * (random.standard_normal((n, 2)) * own[:, None] + shared)
+        noise, _ = rescaled(
+            seen, design.reshape(n, 2, p), fit.stated_noise, every, stations, every, 20
+        )
+        found.append(variance(noise))
+    ratio = np.array(found) / variance(fit.noise)
+    error = ratio.std() / np.sqrt(len(ratio))
+    assert 1.05 < fit.noise_excess < 1.3
+    assert fit.noise_excess == pytest.approx(ratio.mean(), abs=4.0 * error)
+    with_it, known_errors = detection_threshold(fit), detection_threshold(fit, noise_dof=None)
+    plain = noncentrality(0.0027, 0.95, 1, noise_dof=fit.noise_dof)
+    assert with_it.delta_one == pytest.approx(plain * fit.noise_excess**0.5, rel=1e-9)
+    assert known_errors.delta_one == pytest.approx(noncentrality(0.0027, 0.95, 1), rel=1e-9)
+
+
+def test_where_nights_share_errors_the_variance_is_right_on_average(quiet):
+    _, fit = quiet
+    assert 1.0 <= fit.noise_excess < 1.02

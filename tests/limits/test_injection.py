@@ -91,7 +91,8 @@ class Fragile:
         self.inner, self.lose, self.given = LinearRefit.of(correlated()), lose, 0
         self.components, self.information = self.inner.components, self.inner.information
 
-    noise_dof = None
+    noise_dof, noise_excess = None, 1.0
+    choices = {}
 
     def refit(self, A, streams):
         self.given += len(A)
@@ -151,3 +152,22 @@ def test_binomial_interval_at_the_ends():
     # rule of three of the exact interval: 0 of 100 -> 0.0362 (Clopper & Pearson 1934)
     assert Rate(0, 100).interval == pytest.approx((0.0, 0.0362), abs=1e-4)
     assert Rate(100, 100).interval == pytest.approx((0.9638, 1.0), abs=1e-4)
+
+
+def test_counts_are_not_resumed_with_another_way_to_fit(tmp_path):
+    class Other(Fragile):
+        choices = {"reject": True}
+
+    path = tmp_path / "counts"
+    power_curve(Fragile(), n=20, seed=3, shares=(1.0,), checkpoint=path)
+    with pytest.raises(SamplingError, match="another problem"):
+        power_curve(Other(), n=20, seed=3, shares=(1.0,), checkpoint=path)
+
+
+def test_errors_that_are_too_large_on_average_raise_the_threshold_of_the_power_curve():
+    class Wide(Fragile):
+        noise_excess = 1.21
+
+    plain, wide = (power_curve(kind(), n=20, seed=3, shares=(1.0,)) for kind in (Fragile, Wide))
+    assert wide.threshold.value == pytest.approx(1.1 * plain.threshold.value, rel=1e-9)
+    assert wide.recoveries[0].expected == pytest.approx(0.95, abs=1e-6)

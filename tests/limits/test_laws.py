@@ -4,10 +4,13 @@ from dataclasses import replace
 import numpy as np
 import pytest
 
+from ngbound.arc import ErrorModel
 from ngbound.errors import LimitError
+from ngbound.fit import compare_fits, fit_orbit
 from ngbound.limits import compare_laws
 from ngbound.limits.laws import _log_evidence
 from ngbound.motion import Thrust
+from tests.fit.simulated import BELT, MJD_2020, nights, orbit_of, simulate
 from tests.limits.arcs import CLASSES, ERRORS, simulated_arc
 
 # far enough inbound that water ice shuts down and the inverse square does not
@@ -34,6 +37,24 @@ def test_laws_are_told_apart_where_they_differ():
     difference = found.table.loc["inverse-square", "chi2"] - found.table.loc["water-ice", "chi2"]
     assert abs(difference - distance**2) < 4.0 * 2.0 * distance
     json.dumps(found.to_dict())
+
+
+def test_laws_are_compared_under_common_errors_where_these_come_from_the_scatter():
+    thrust = Thrust("inverse-square", components="T", A=(0.0, 2.85e-9, 0.0))
+    arc = simulate(
+        orbit_of(BELT, thrust), nights(MJD_2020, 700, 50, 4), np.random.default_rng(5), stated=False
+    )
+    errors = ErrorModel(catalogue_offsets=False, station_offset_arcsec=0.0)
+    start = {"error_model": errors, "initial": arc.orbit}
+    found = compare_laws(arc.arc, LAWS, seed=1, components="T", n_draws=512, **start)
+    null = fit_orbit(arc.arc, None, **start)
+    push = fit_orbit(arc.arc, Thrust("inverse-square", components="T"), **start)
+    assert push.scales and push.scales != null.scales
+    two = compare_fits(null, push)
+    row = found.table.loc["inverse-square"]
+    assert row["delta_chi2"] == pytest.approx(two.delta_chi2, rel=0.01) and row["delta_chi2"] > 100
+    assert row["significance_sigma"] == pytest.approx(two.sigma, abs=0.1)
+    assert found.preferred == "inverse-square"
 
 
 def test_an_arc_without_thrust_prefers_gravity_and_cannot_tell():
