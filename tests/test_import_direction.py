@@ -9,7 +9,7 @@ import ngbound
 
 PACKAGE = Path(ngbound.__file__).parent
 ORDER = [
-    {"constants", "errors", "rounding"},
+    {"blas", "constants", "errors", "rounding"},
     {"toml_file"},
     {"arc"},
     {"sky"},

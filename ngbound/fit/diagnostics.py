@@ -28,6 +28,7 @@ from numpy.typing import NDArray
 from scipy import stats
 
 from ngbound.arc import Noise, seasons
+from ngbound.blas import on_one_thread
 from ngbound.fit.shared_estimates import JointSolution
 from ngbound.fit.solution import Fit
 
@@ -177,6 +178,7 @@ class _Rest:
         return -vw @ (inverse @ self.joint.rest[both]), vw @ inverse @ vw.T
 
 
+@on_one_thread
 def diagnose(fit: Fit) -> Diagnostics:
     """Examine the residuals of a fit; with thrust also how far A rests on single nights."""
     kept = fit.noise.mask(fit.keep)

@@ -13,6 +13,7 @@ import numpy as np
 import pandas as pd
 
 from ngbound.arc import ErrorModel
+from ngbound.blas import on_one_thread
 from ngbound.errors import NgboundError
 from ngbound.fit.solution import Fit, fit_orbit
 from ngbound.rounding import with_error
@@ -202,6 +203,7 @@ class Variation:
         return "\n".join(lines)
 
 
+@on_one_thread
 def vary(
     push: Fit,
     variants: Sequence[ErrorVariant] | None = None,

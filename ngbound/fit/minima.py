@@ -25,6 +25,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from ngbound.blas import on_one_thread
 from ngbound.errors import PropagationError
 from ngbound.fit.least_squares import (
     Linearised,
@@ -207,6 +208,7 @@ def apparitions(fit: Fit) -> tuple[Bools, ...]:
     return tuple(mask for mask in masks if mask.any())
 
 
+@on_one_thread
 def scan_minima(fit: Fit, progress: Callable[[str], None] | None = None) -> MinimaScan:
     """Look for other orbits that explain the records a fit kept, with its errors.
 

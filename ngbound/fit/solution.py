@@ -15,6 +15,7 @@ import pandas as pd
 from numpy.typing import ArrayLike, NDArray
 
 from ngbound.arc import Arc, ErrorModel, Noise, treatment_text
+from ngbound.blas import on_one_thread
 from ngbound.constants import ARCSEC_RAD
 from ngbound.errors import FitError
 from ngbound.fit.least_squares import Correction, parameter_names, thrust_of
@@ -423,6 +424,7 @@ class Fit:
         return "\n".join(lines)
 
 
+@on_one_thread
 def fit_orbit(
     arc: Arc,
     thrust: Thrust | None = None,

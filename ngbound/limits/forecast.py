@@ -17,6 +17,7 @@ from astropy import units as u
 from astropy.time import Time
 
 from ngbound.arc import Noise
+from ngbound.blas import on_one_thread
 from ngbound.constants import ARCSEC_RAD, C_AU_D
 from ngbound.errors import LimitError
 from ngbound.fit import Fit
@@ -158,6 +159,7 @@ class Forecast:
         }
 
 
+@on_one_thread
 def forecast(
     fit: Fit,
     plan: Sequence[PlannedNight],

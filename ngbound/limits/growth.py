@@ -12,6 +12,7 @@ import numpy as np
 import pandas as pd
 from astropy import units as u
 
+from ngbound.blas import on_one_thread
 from ngbound.errors import LimitError
 from ngbound.fit import Fit
 from ngbound.limits.fit_protocol import GaussianFit
@@ -103,6 +104,7 @@ class ThresholdGrowth:
         }
 
 
+@on_one_thread
 def threshold_growth(
     push: Fit, *, false_alarm: float = 0.0027, power: float = 0.95, n_cuts: int = 30
 ) -> ThresholdGrowth:

@@ -21,6 +21,7 @@ import numpy as np
 from astropy import units as u
 from scipy.stats import beta, chi2, f, ncf, ncx2, norm, t
 
+from ngbound.blas import on_one_thread
 from ngbound.errors import LimitError
 from ngbound.fit import Fit
 from ngbound.limits.checkpoint import load_whole, mark_of, save_whole
@@ -188,6 +189,7 @@ class Recovery:
         }
 
 
+@on_one_thread
 def inject_and_recover(
     push: "Fit | Refitter",
     A: "np.ndarray | u.Quantity | list[float]",
@@ -472,6 +474,7 @@ class PowerCurve:
         }
 
 
+@on_one_thread
 def power_curve(
     push: "Fit | Refitter",
     direction: "str | np.ndarray | list[float]" = "worst",

@@ -29,6 +29,7 @@ import numpy as np
 import pandas as pd
 from astropy import units as u
 
+from ngbound.blas import on_one_thread
 from ngbound.errors import LimitError, SamplingError
 from ngbound.limits.checkpoint import load_whole, mark_of, save_whole
 from ngbound.limits.convergence import autocorrelation_time, split_r_hat
@@ -452,6 +453,7 @@ class _Run:
     start_log_prob: np.ndarray
 
 
+@on_one_thread
 def sample_posterior(
     fit: ThrustFit,
     *,
