@@ -106,11 +106,13 @@ class Partials:
     def at_offset(self, tau_d: ArrayLike) -> Floats:
         """Partials (m, 6, p) at days from the epoch."""
         tau = np.atleast_1d(np.asarray(tau_d, dtype=float))
+        behind = tau < 0.0
+        if self.ahead is not None and not behind.any():
+            return self.ahead.at(tau)
         out = np.zeros((tau.size, 6, len(self.names)))
         for c, name in enumerate(self.names):
             if PARAMETERS.index(name) < 6:
                 out[:, PARAMETERS.index(name), c] = 1.0
-        behind = tau < 0.0
         if self.back is not None:
             out[behind] = self.back.at(tau[behind])
         if self.ahead is not None:
