@@ -289,6 +289,13 @@ def inject(input_file: Path, **options: Any) -> Any:
     "Example: ngbound forecast data_demo/forecast.toml",
     name="forecast",
 )
+@click.option(
+    "--acceleration",
+    "acceleration_au_d2",
+    type=click.FloatRange(min=0.0, min_open=True),
+    metavar="AU_D2",
+    help="Also say from when on a thrust of this size, au/d2, would be detected.",
+)
 @LAW
 @COMPONENTS
 @OBJECT

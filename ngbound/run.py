@@ -225,8 +225,16 @@ def inject_case(
     return Injected(fits, curve)
 
 
-def forecast_case(path: str | Path, *, progress: bool = False, **choices: Any) -> "Foreseen":
+def forecast_case(
+    path: str | Path,
+    *,
+    acceleration_au_d2: float | None = None,
+    progress: bool = False,
+    **choices: Any,
+) -> "Foreseen":
     """What the planned nights of the case would do to the detection threshold.
+
+    With ``acceleration_au_d2`` also from when on a thrust of that size would be detected.
 
     Raises
     ------
@@ -247,7 +255,7 @@ def forecast_case(path: str | Path, *, progress: bool = False, **choices: Any) -
             false_alarm=case.detection.false_alarm,
             power=case.detection.power,
         )
-    return Foreseen(fits, found)
+    return Foreseen(fits, found, acceleration_au_d2)
 
 
 def fan_case(
@@ -904,13 +912,21 @@ class Foreseen:
 
     fits: Fits = field(repr=False)
     forecast: Forecast
+    acceleration_au_d2: float | None = None
 
     def __str__(self) -> str:
-        return f"{self.fits.arc.name}, {self.fits.push.n_obs} observations\n{self.forecast}"
+        text = f"{self.fits.arc.name}, {self.fits.push.n_obs} observations\n{self.forecast}"
+        if self.acceleration_au_d2 is None:
+            return text
+        return f"{text}\n{self.forecast.detectable_sentence(self.acceleration_au_d2)}"
 
     def to_dict(self) -> dict[str, Any]:
         """Object and forecast."""
-        return {"object": self.fits.arc.name, **self.forecast.to_dict()}
+        told = {"object": self.fits.arc.name, **self.forecast.to_dict()}
+        if self.acceleration_au_d2 is not None:
+            told["acceleration_au_d2"] = self.acceleration_au_d2
+            told["detectable_from"] = self.forecast.detectable(self.acceleration_au_d2)
+        return told
 
 
 @dataclass(frozen=True, eq=False)

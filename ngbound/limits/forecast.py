@@ -31,7 +31,7 @@ from ngbound.motion import (
     partials_along,
     see,
 )
-from ngbound.rounding import counted, up
+from ngbound.rounding import counted, rounded, up
 from ngbound.sky import (
     direction_to_angles,
     load_ephemeris,
@@ -95,10 +95,11 @@ class Forecast:
     nights : tuple of PlannedNight
         In order of time.
     table : DataFrame
-        utc, station, n, elongation_deg (from the Sun), delta_au, ra_deg, dec_deg,
-        sky_sigma_arcsec (how well the arc predicts the place), worst and best (threshold by then,
-        au/d2), mass_reach (how many times larger a mass the worst-direction threshold by then
-        bounds, at the same outgassing), alone_worst and alone_gain (the same of that night alone).
+        utc (middle of the night's records), station, n; of the middle record elongation_deg (from
+        the Sun), delta_au, ra_deg, dec_deg, sky_sigma_arcsec (how well the arc predicts the place);
+        worst and best (threshold by then, au/d2), mass_reach (how many times larger a mass the
+        worst-direction threshold by then bounds, at the same outgassing), alone_worst and
+        alone_gain (the same of that night alone).
     """
 
     now: DetectionThreshold
@@ -134,6 +135,19 @@ class Forecast:
             if size >= float((each.worst if whatever else each.along(direction)).value):
                 return str(when)
         return None
+
+    def detectable_sentence(self, acceleration: "u.Quantity | float") -> str:
+        """In words: from when on a thrust of this size (au/d2) would be detected in any
+        direction."""
+        when = self.detectable(acceleration)
+        size = rounded(float(u.Quantity(acceleration, AU_D2).value), 3)
+        if when is None:
+            return (
+                f"A thrust of {size} au/d2 in the worst seen direction stays below the threshold "
+                "to the end of the plan."
+            )
+        since = "already" if when == "now" else f"from {when} on"
+        return f"A thrust of {size} au/d2 is above the threshold in any direction {since}."
 
     def __str__(self) -> str:
         last, best = self.after[-1], self.table.iloc[self.best_night]
@@ -227,6 +241,7 @@ def forecast(
         after.append(threshold_of(grown, count))
         alone.append(threshold_of(normal + part, numbers + 2 * each.n))
     table = _table(fit, nights, night, tdb_d, observer, rho, design)
+    table.insert(0, "utc", np.atleast_1d(tdb_d_to_iso(np.array(middle)[order], scale="utc")))
     worst = np.array([float(t.worst.value) for t in after])
     single = np.array([float(t.worst.value) for t in alone])
     table["worst"] = worst
@@ -264,7 +279,8 @@ def _table(
     rho: np.ndarray,
     design: np.ndarray,
 ) -> pd.DataFrame:
-    first = np.searchsorted(night, np.arange(len(nights)))
+    """Of the middle record of each night."""
+    middle = np.searchsorted(night, np.arange(len(nights))) + np.array([x.n // 2 for x in nights])
     toward = rho / np.linalg.norm(rho, axis=1)[:, None]
     sun = load_ephemeris().position_au("sun", tdb_d) - observer
     cosine = np.sum(toward * sun, axis=1) / np.linalg.norm(sun, axis=1)
@@ -272,13 +288,12 @@ def _table(
     ra, dec = direction_to_angles(rho)
     return pd.DataFrame(
         {
-            "utc": np.atleast_1d(tdb_d_to_iso(tdb_d[first], scale="utc")),
             "station": [each.station for each in nights],
             "n": [each.n for each in nights],
-            "elongation_deg": np.degrees(np.arccos(np.clip(cosine, -1.0, 1.0)))[first],
-            "delta_au": np.linalg.norm(rho, axis=1)[first],
-            "ra_deg": np.degrees(ra)[first] % 360.0,
-            "dec_deg": np.degrees(dec)[first],
-            "sky_sigma_arcsec": spread[first],
+            "elongation_deg": np.degrees(np.arccos(np.clip(cosine, -1.0, 1.0)))[middle],
+            "delta_au": np.linalg.norm(rho, axis=1)[middle],
+            "ra_deg": np.degrees(ra)[middle] % 360.0,
+            "dec_deg": np.degrees(dec)[middle],
+            "sky_sigma_arcsec": spread[middle],
         }
     )

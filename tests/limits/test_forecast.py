@@ -2,6 +2,7 @@ import json
 
 import numpy as np
 import pytest
+from astropy import units as u
 
 from ngbound.errors import LimitError, StationError
 from ngbound.fit import fit_orbit
@@ -27,7 +28,10 @@ PLAN = (
 def test_nights_add_up_and_are_compared(push):
     found = forecast(push, PLAN)
     worst = found.table["worst"].to_numpy()
-    assert list(found.table["utc"].str[:10]) == ["2020-05-01", "2020-06-01", "2020-07-10"]
+    # the middle of each night, as it was planned, whatever the number of records
+    assert [utc[:16] for utc in found.table["utc"]] == [
+        "2020-05-01T04:00", "2020-06-01T04:00", "2020-07-10T04:00",
+    ]  # fmt: skip
     assert np.all(np.diff([found.now.worst.value, *worst]) < 0.0)
     assert np.all(found.table["alone_worst"] >= worst[-1])
     assert found.best_night == 2
@@ -48,6 +52,9 @@ def test_date_when_an_acceleration_becomes_detectable(push):
     assert found.detectable(1.01 * found.now.along("R").value, "R") == "now"
     with pytest.raises(LimitError):
         found.detectable(0.0)
+    assert "in any direction already" in found.detectable_sentence(1.01 * now)
+    assert "in any direction from 2020-07-10" in found.detectable_sentence(1.001 * last)
+    assert "below the threshold" in found.detectable_sentence(0.9 * last * u.au / u.d**2)
 
 
 def test_the_forecast_is_what_the_longer_arc_then_has():

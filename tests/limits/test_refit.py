@@ -5,6 +5,7 @@ from dataclasses import replace
 import numpy as np
 import pandas as pd
 import pytest
+from scipy.stats import binom
 
 from ngbound.arc import Arc, ErrorModel
 from ngbound.errors import LimitError
@@ -228,3 +229,17 @@ def test_the_test_of_fisher_keeps_its_false_alarms_where_errors_are_estimated(fr
     low, high = found.declared.interval
     assert low < 0.05 < high
     assert found.expected == pytest.approx(0.05, abs=1e-6)
+
+
+@pytest.mark.slow
+def test_the_stated_threshold_has_its_power_where_errors_are_estimated(from_table):
+    """The variance common to a night cannot be found below zero, so that there are fewer false
+    alarms than stated; the threshold makes up for that."""
+    push, _, _ = from_table
+    assert push.noise_excess > 1.1
+    threshold = detection_threshold(push)
+    worst = threshold.worst.value * threshold.worst_direction
+    found = inject_and_recover(push, worst, n=1000, seed=5, reject=True)
+    low, high = binom.interval(0.9999, found.declared.trials, 0.95)
+    assert low <= found.declared.hits <= high
+    assert found.expected == pytest.approx(0.95, abs=0.001)
