@@ -78,7 +78,7 @@ def test_forecast_needs_planned_nights_and_uses_them(tmp_path: Path) -> None:
     status, text, _ = call("forecast", str(case))
     assert status == 0 and "falls from" in text and "in any direction" not in text
     text = call("forecast", str(case), "--acceleration", "1e-3")[1]
-    assert "A thrust of 1.00e-3 au/d2 is above the threshold in any direction already" in text
+    assert "A thrust of 0.00100 au/d2 is above the threshold in any direction already" in text
     told = json.loads(call("forecast", str(case), "--acceleration", "1e-20", "--json")[1])
     assert told["acceleration_au_d2"] == 1e-20 and told["detectable_from"] is None
     assert call("forecast", str(case), "--acceleration", "0")[0] == 2
