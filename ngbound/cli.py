@@ -24,7 +24,10 @@ INTERRUPTED = 130
 
 GO_ON = {
     "sweep": "the same command goes on with the cases that have no record yet",
-    "inject": "with --checkpoint FILE the same command goes on from the counts kept there",
+    **{
+        verb: f"with --checkpoint FILE the same command goes on from the {what} kept there"
+        for verb, what in (("run", "chain"), ("limit", "chain"), ("inject", "counts"))
+    },
 }
 """What to do after an interruption, where it is not to begin anew."""
 
@@ -136,6 +139,12 @@ LAW = click.option("--law", metavar="LAW", help="Thrust law, instead of the one 
 COMPONENTS = click.option(
     "--components", metavar="RTN", help="Free thrust components, any of R, T, N in this order."
 )
+CHECKPOINT = click.option(
+    "--checkpoint",
+    type=click.Path(path_type=Path, dir_okay=False),
+    help="File that keeps the long part of the work (chain or counts), so that an interrupted run "
+    "goes on from there.",
+)
 SEED = click.option(
     "--seed", type=click.IntRange(min=0), help="Seed of every random number of the analysis."
 )
@@ -173,6 +182,7 @@ def main() -> None:
     type=click.Path(path_type=Path),
     help="Output folder, instead of the one in the case file.",
 )
+@CHECKPOINT
 @SEED
 @LAW
 @COMPONENTS
@@ -217,6 +227,7 @@ def fit(input_file: Path, **options: Any) -> Any:
     is_flag=True,
     help="Also state both under a small set of other defensible error models.",
 )
+@CHECKPOINT
 @SEED
 @LAW
 @COMPONENTS
@@ -270,11 +281,7 @@ def fan(input_file: Path, **options: Any) -> Any:
     "Example: ngbound inject data_demo/quiet.toml",
     name="inject",
 )
-@click.option(
-    "--checkpoint",
-    type=click.Path(path_type=Path, dir_okay=False),
-    help="File that keeps the counts, so that an interrupted run goes on from them.",
-)
+@CHECKPOINT
 @SEED
 @LAW
 @COMPONENTS

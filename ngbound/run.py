@@ -99,13 +99,22 @@ MOST_SCANS = 3
 FIGURE_ENDINGS = (".png", ".pdf", ".svg")
 
 
-def run_case(path: str | Path, *, progress: bool = False, **choices: Any) -> Record:
+def run_case(
+    path: str | Path,
+    *,
+    checkpoint: str | Path | None = None,
+    progress: bool = False,
+    **choices: Any,
+) -> Record:
     """Do the whole job and write report, figures and record into the output folder.
 
     Parameters
     ----------
     path : path
         A case file (TOML), or an arc, for which every choice then has its default.
+    checkpoint : path, optional
+        Keeps the chain of the sampler; a run that was interrupted goes on from it to the same
+        numbers.
     progress : bool
         Show the steps on stderr.
     **choices
@@ -128,7 +137,7 @@ def run_case(path: str | Path, *, progress: bool = False, **choices: Any) -> Rec
         check_the_output(case)
         arc = read_the_arc(case, step)
         fits = fit_both(case, arc, step)
-        bounds = bound_the_thrust(fits, step, case.detection.vary_errors)
+        bounds = bound_the_thrust(fits, step, case.detection.vary_errors, checkpoint)
         weighed = weigh(bounds, step)
         with step("draw the figures"):
             figures = draw_figures(bounds, weighed)
@@ -165,15 +174,22 @@ def fit_case(path: str | Path, *, progress: bool = False, **choices: Any) -> "Fi
 
 
 def limit_case(
-    path: str | Path, *, vary_errors: bool = False, progress: bool = False, **choices: Any
+    path: str | Path,
+    *,
+    vary_errors: bool = False,
+    checkpoint: str | Path | None = None,
+    progress: bool = False,
+    **choices: Any,
 ) -> "Bounds":
     """Detection threshold, posterior, upper limit and verdict.
 
-    With ``vary_errors`` also threshold and limit under other defensible error models.
+    With ``vary_errors`` also threshold and limit under other defensible error models. With
+    ``checkpoint`` the chain is kept there, and a run that was interrupted goes on from it to the
+    same numbers.
     """
     case, step = case_for(path, **choices), Steps(progress)
     fits = fit_both(case, read_the_arc(case, step), step)
-    return bound_the_thrust(fits, step, vary_errors)
+    return bound_the_thrust(fits, step, vary_errors, checkpoint)
 
 
 def mass_case(path: str | Path, *, progress: bool = False, **choices: Any) -> "Weighed":
@@ -371,7 +387,12 @@ def how_to_fit(case: Case) -> dict[str, Any]:
     }
 
 
-def bound_the_thrust(fits: "Fits", step: "Steps", vary_errors: bool = False) -> "Bounds":
+def bound_the_thrust(
+    fits: "Fits",
+    step: "Steps",
+    vary_errors: bool = False,
+    checkpoint: str | Path | None = None,
+) -> "Bounds":
     """Threshold of the arc, posterior of the exact model, upper limit, verdict."""
     case = fits.case
     with step("detection threshold"):
@@ -385,6 +406,7 @@ def bound_the_thrust(fits: "Fits", step: "Steps", vary_errors: bool = False) -> 
             max_steps=case.sampling.max_steps,
             target_ess=case.sampling.effective_samples,
             progress=bar.report,
+            checkpoint=checkpoint,
         )
     with step("upper limit"):
         limit = upper_limit(posterior, confidence=case.detection.confidence)

@@ -175,7 +175,13 @@ def test_wrong_usage_is_status_2(ngbound, arguments):
 
 @pytest.mark.parametrize(
     ("verb", "hint"),
-    [("run", "begins anew"), ("sweep", "that have no record yet"), ("inject", "--checkpoint")],
+    [
+        ("fit", "begins anew"),
+        ("run", "--checkpoint"),
+        ("limit", "--checkpoint"),
+        ("inject", "--checkpoint"),
+        ("sweep", "that have no record yet"),
+    ],
 )
 def test_an_interruption_says_how_to_go_on(ngbound, monkeypatch, verb, hint):
     def stop(path, **options):

@@ -13,6 +13,7 @@ from scipy.stats import chi2
 import ngbound as ng
 from ngbound import run
 from ngbound.errors import CaseError, NgboundError, NgboundWarning
+from ngbound.limits import sample_posterior
 from ngbound.report import load_record, render_report
 from ngbound.rounding import length_text, mass_text
 
@@ -169,6 +170,26 @@ def test_the_same_seed_gives_the_same_numbers_and_another_does_not(quick):
     assert first.limit.to_dict() == again.limit.to_dict()
     assert first.limit.magnitude != other.limit.magnitude
     assert first.threshold.to_dict() == other.threshold.to_dict()
+
+
+@pytest.mark.slow
+def test_the_chain_of_an_interrupted_limit_goes_on(quick, tmp_path, monkeypatch):
+    whole = run.limit_case(quick)
+    chain = tmp_path / "chain"
+
+    def stopped(*arguments, progress, **options):
+        def interrupt(step, total, message):
+            raise KeyboardInterrupt
+
+        return sample_posterior(*arguments, progress=interrupt, **options)
+
+    with monkeypatch.context() as patch:
+        patch.setattr(run, "sample_posterior", stopped)
+        with pytest.raises(KeyboardInterrupt):
+            run.limit_case(quick, checkpoint=chain)
+    assert chain.exists()
+    again = run.limit_case(quick, checkpoint=chain)
+    assert again.limit.to_dict() == whole.limit.to_dict()
 
 
 @pytest.mark.parametrize("moment", ["fit_orbit", "sample_posterior", "residual_fan"])
