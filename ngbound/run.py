@@ -327,14 +327,13 @@ def check_the_output(case: Case) -> None:
 def read_the_arc(case: Case, step: "Steps") -> Arc:
     """The arc that the case names, own stations included."""
     with step("read the arc"):
-        arc = read_arc(case.arc.file, object=case.object.name, stations=case.own_stations())
-    if case.notice:
-        warnings.warn(case.notice, NgboundWarning, stacklevel=2)
-    return arc
+        return read_arc(case.arc.file, object=case.object.name, stations=case.own_stations())
 
 
 def fit_both(case: Case, arc: Arc, step: "Steps") -> "Fits":
     """Fit by gravity alone from the start the case gives, then with thrust from there."""
+    if case.notice:
+        warnings.warn(case.notice, NgboundWarning, stacklevel=2)
     if notice := compile_notice():
         step.tell(notice)
     start = case.orbit.orbit(forces=case.forces.force_model()) if case.orbit else None
