@@ -15,7 +15,6 @@ OWN = {"Q99": {"longitude_deg": 1.0, "latitude_deg": 2.0, "altitude_m": 3.0}}
 
 @pytest.mark.parametrize("text", [PSV, ROVING])
 def test_round_trip(tmp_path: Path, text: str) -> None:
-    pytest.importorskip("pyarrow")
     arc = read_arc(put(tmp_path, "a.psv", text))
     arc.to_parquet(tmp_path / "a.parquet")
     again = Arc.from_parquet(tmp_path / "a.parquet")
@@ -24,7 +23,6 @@ def test_round_trip(tmp_path: Path, text: str) -> None:
 
 
 def test_own_stations_and_label_travel(tmp_path: Path) -> None:
-    pytest.importorskip("pyarrow")
     arc = Arc.from_frame(frame(3, stn="Q99"), name="Peter", stations=OWN)
     arc.to_parquet(tmp_path / "a.parquet")
     again = Arc.from_parquet(tmp_path / "a.parquet")
@@ -33,7 +31,6 @@ def test_own_stations_and_label_travel(tmp_path: Path) -> None:
 
 
 def test_what_is_no_arc(tmp_path: Path) -> None:
-    pytest.importorskip("pyarrow")
     with pytest.raises(ArcError, match=r"x: this is no Parquet file.*Write it again"):
         Arc.from_parquet(put(tmp_path, "x", "PAR1 nonsense PAR1"))
     frame(3).to_parquet(tmp_path / "f.parquet")
