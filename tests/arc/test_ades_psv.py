@@ -2,6 +2,7 @@
 
 import gzip
 from pathlib import Path
+from typing import Any
 
 import numpy as np
 import pandas as pd
@@ -19,8 +20,8 @@ HEAD = "# version=2022\npermID|mode|stn|obsTime|ra|dec|astCat\n"
 ROW = "123|CCD|G96|2024-03-01T05:06:07Z|10.5|20.5|Gaia2"
 
 
-def read(folder: Path, text: str | bytes, **more: object) -> Arc:
-    return read_arc(put(folder, "x.psv", text), **more)  # type: ignore[arg-type]
+def read(folder: Path, text: str | bytes, **more: Any) -> Arc:
+    return read_arc(put(folder, "x.psv", text), **more)
 
 
 def test_the_sample(tmp_path: Path) -> None:
