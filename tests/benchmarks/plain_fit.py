@@ -8,10 +8,8 @@ outlier rule and takes the records that the fast fit kept, and its errors.
 """
 
 import argparse
-import importlib.util
 import time
 from collections.abc import Callable
-from pathlib import Path
 from typing import Any
 
 import numpy as np
@@ -21,6 +19,7 @@ from ngbound.arc import read_arc
 from ngbound.constants import AU_KM, C_AU_D
 from ngbound.fit import Fit, fit_orbit
 from tests.benchmarks.plain_twin import right_hand_side
+from tests.external.records_12893 import file_12893
 
 STEPS = np.array([1e-7, 1e-7, 1e-7, 1e-9, 1e-9, 1e-9])
 TOLERANCE = 1e-12
@@ -87,10 +86,7 @@ def main() -> None:
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("--plain-steps", type=int, default=2)
     steps = parser.parse_args().plain_steps
-    spec = importlib.util.find_spec("astroquery")
-    if spec is None or spec.origin is None:
-        raise SystemExit("Install the PyPI package astroquery, which carries the records.")
-    arc = read_arc(Path(spec.origin).parent / "mpc" / "tests" / "data" / "mpc_obs.dat")
+    arc = read_arc(file_12893())
     fit_orbit(arc)
     fit = timed("ngbound from nothing", lambda: fit_orbit(arc))
     timed("ngbound from a known start", lambda: fit_orbit(arc, initial=fit.orbit))

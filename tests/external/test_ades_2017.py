@@ -12,6 +12,7 @@ import re
 from pathlib import Path
 
 import pytest
+from ades import adesutility, xmlutility
 from hypothesis import HealthCheck, Phase, given, settings
 from lxml import etree
 
@@ -21,9 +22,6 @@ from ngbound.arc.checking import Checker
 from ngbound.arc.reading import records_of
 from ngbound.errors import ArcError
 from tests.external import test_ades_toolkit as toolkit
-
-adesutility = pytest.importorskip("ades.adesutility", reason="iau-ades is not installed")
-xmlutility = pytest.importorskip("ades.xmlutility", reason="iau-ades is not installed")
 
 TYPES = {
     **dict.fromkeys(("DecimalType", "DoubleType"), "xsd:decimal"),

@@ -17,6 +17,7 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+from ades import adesutility, psvtoxml
 from hypothesis import HealthCheck, Phase, given, settings
 from hypothesis import strategies as st
 from lxml import etree
@@ -26,9 +27,6 @@ from ngbound.arc.ades_rules import RULES
 from ngbound.arc.checking import Checker
 from ngbound.arc.reading import records_of
 from ngbound.errors import ArcError
-
-adesutility = pytest.importorskip("ades.adesutility", reason="iau-ades is not installed")
-psvtoxml = pytest.importorskip("ades.psvtoxml", reason="iau-ades is not installed")
 
 ORDER = adesutility.getAdesTables()[0]
 

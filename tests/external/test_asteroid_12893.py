@@ -7,9 +7,6 @@ off in declination: two independent programs written for this purpose agree on
 A3 = (2.63 +- 0.17)e-10 au/d2.
 """
 
-import importlib.util
-from pathlib import Path
-
 import numpy as np
 import pytest
 
@@ -17,6 +14,7 @@ from ngbound.arc import ErrorModel, read_arc
 from ngbound.fit import compare_fits, diagnose, fit_orbit
 from ngbound.motion import Thrust
 from ngbound.report import catalogue_table, station_table
+from tests.external.records_12893 import file_12893
 
 pytestmark = pytest.mark.slow
 
@@ -26,10 +24,7 @@ USNO_A_FAMILY = ("USNOA1", "USNOSA1", "USNOA2", "USNOSA2")
 
 @pytest.fixture(scope="module")
 def arc():
-    spec = importlib.util.find_spec("astroquery")
-    if spec is None or spec.origin is None:
-        pytest.skip("the PyPI package astroquery, which carries the records, is not installed")
-    return read_arc(Path(spec.origin).parent / "mpc" / "tests" / "data" / "mpc_obs.dat")
+    return read_arc(file_12893())
 
 
 @pytest.fixture(scope="module")

@@ -8,20 +8,18 @@ package iau-ades 0.1.3 (ades.mpc80coltoxml).
 """
 
 import contextlib
-import importlib.util
 import io
 import json
-from pathlib import Path
 
 import numpy as np
 import pytest
+from ades import mpc80coltoxml, packUtil
 
 from ngbound.arc import Arc, read_arc
 from ngbound.arc.designations import to_base62
 from ngbound.arc.report80 import PROGRAM_CODES, PROGRAM_STATIONS
+from tests.external.records_12893 import file_12893
 from tests.units import arcsec, mas
-
-mpc80coltoxml = pytest.importorskip("ades.mpc80coltoxml", reason="iau-ades is not installed")
 
 N = 1401
 EQUAL = (
@@ -34,10 +32,7 @@ EQUAL = (
 
 @pytest.fixture(scope="module")
 def both(tmp_path_factory: pytest.TempPathFactory) -> tuple[Arc, Arc]:
-    spec = importlib.util.find_spec("astroquery")
-    if spec is None or spec.origin is None:
-        pytest.skip("the PyPI package astroquery, which carries the records, is not installed")
-    source = Path(spec.origin).parent / "mpc" / "tests" / "data" / "mpc_obs.dat"
+    source = file_12893()
     folder = tmp_path_factory.mktemp("a12893")
     texts = [r["original_record"] for r in json.loads(source.read_text())]
     lines = [t[i : i + 80].ljust(80) for t in texts for i in range(0, len(t), 80)]
@@ -123,8 +118,7 @@ def test_codes_that_the_converter_spells_otherwise(both: tuple[Arc, Arc]) -> Non
 def test_programme_codes_are_those_of_the_toolkit() -> None:
     """Its list of stations and its numbering; a digit at other stations is a note there, and both
     here, for it may be either."""
-    pack_util = pytest.importorskip("ades.packUtil")
-    assert PROGRAM_STATIONS == pack_util.programCodeSites
-    assert PROGRAM_CODES == pack_util.programCodesArray
+    assert PROGRAM_STATIONS == packUtil.programCodeSites
+    assert PROGRAM_CODES == packUtil.programCodesArray
     numbered = [to_base62(PROGRAM_CODES.index(c), 2) for c in PROGRAM_CODES]
-    assert numbered == [pack_util.packProgID(c) for c in PROGRAM_CODES]
+    assert numbered == [packUtil.packProgID(c) for c in PROGRAM_CODES]
