@@ -39,7 +39,7 @@ YEAR_D = 365.25
 AXES = ("RA", "Dec")
 REMAINING = 0.2
 """What remains of an offset that was corrected tile by tile: the scatter inside a tile, and errors
-of the corrections. No size was found published; a fifth is common practice (from memory)."""
+of the corrections. No size was found published: a fifth is a choice of ours."""
 CORRECTED = "corrected by the debiasing table"
 AS_PUBLISHED = "not corrected, prior of the published size"
 NOT_IN_TABLE = "not in the debiasing table or not in its tile, prior of the published size"
@@ -195,7 +195,7 @@ def catalogue_offsets(arc: Arc, scale: float = 1.0, by_season: bool = True) -> S
             continue
         name, where = f"catalogue {catalogue}", prior.expectation
         if is_better:
-            name, where = f"{name} corrected", f"{REMAINING:g} of: {where}"
+            name, where = f"{name} corrected", f"{REMAINING:g} (a choice of ours) of: {where}"
         add(name, size, mine, where)
         present = np.unique(season[mine])
         if not by_season or len(present) < 2:
